@@ -1,0 +1,1 @@
+"""The commands of ``calibration``: one file each, which parses, calls and prints."""

@@ -1,0 +1,1 @@
+"""The commands of ``firmware_bridge``: one file each, which parses, calls and prints."""

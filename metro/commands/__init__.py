@@ -1,0 +1,1 @@
+"""The commands of ``metro``: one file each, which parses, calls and prints."""

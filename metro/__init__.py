@@ -7,13 +7,21 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from metro.bench import Bench as Bench
+    from metro.bench import load_bench as load_bench
     from metro.errors import MetroError as MetroError
+    from metro.measured import Measured as Measured
+    from metro.units import Quantity as Quantity
 
 _HOMES = {
+    "load_bench": "metro.bench",
+    "Quantity": "metro.units",
+    "Measured": "metro.measured",
+    "Bench": "metro.bench",
     "MetroError": "metro.errors",
 }
 
-__all__ = ["MetroError"]
+__all__ = ["Bench", "Measured", "MetroError", "Quantity", "load_bench"]
 
 
 def __getattr__(name: str) -> Any:  # noqa: ANN401  # PEP 562: any public name of the package

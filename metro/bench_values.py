@@ -1,0 +1,191 @@
+"""From the text of a bench file to checked entries."""
+
+from collections.abc import Mapping
+from typing import Any
+
+from metro.bench import BenchError, BenchLine, Entry, _nearest
+from metro.bench_keys import KEYS, LINE_KEYS, Key
+from metro.errors import MetroError
+from metro.measured import Measured
+from metro.units import si
+
+__all__ = ["read_entry", "read_sections"]
+
+_TABLE_KEYS = ("value", "u", "distribution", "source")
+_DISTRIBUTIONS = ("normal", "rectangular")
+
+
+def read_sections(
+    document: Mapping[str, Any], path: str
+) -> tuple[dict[str, Entry], tuple[BenchLine, ...]]:
+    """Return the entries and lines of a bench file's document.
+
+    Parameters
+    ----------
+    document : mapping
+        As TOML gives it.
+    path : str
+        The file, for messages.
+
+    Returns
+    -------
+    tuple of (dict of str to Entry, tuple of BenchLine)
+        The values by ``section.key``, and the drive lines.
+
+    Raises
+    ------
+    BenchError
+        If a key is unknown or a value breaks its rule.
+    """
+    entries: dict[str, Entry] = {}
+    lines: tuple[BenchLine, ...] = ()
+    for section, content in document.items():
+        if section == "line":
+            lines = _read_lines(content, path)
+        elif section == "format":
+            _check_format(content, path)
+        else:
+            entries.update(_read_section(section, content, path))
+    return entries, lines
+
+
+def _check_format(version: object, path: str) -> None:
+    if version != 1:
+        raise BenchError(
+            f"{path}: format must be 1, the only one this version reads, got {version!r}"
+        )
+
+
+def _read_section(section: str, content: object, path: str) -> dict[str, Entry]:
+    sections = dict.fromkeys([key.partition(".")[0] for key in KEYS] + ["line"])
+    if section not in sections:
+        raise BenchError(f"{path}: unknown section [{section}]{_nearest(section, sections)}")
+    if not isinstance(content, dict):
+        raise BenchError(f"{path}: {section} must be a section [{section}], got {content!r}")
+    names = [key.partition(".")[2] for key in KEYS if key.startswith(section + ".")]
+    entries = {}
+    for name, value in content.items():
+        where = f"{path}, [{section}] {name}"
+        if name not in names:
+            raise BenchError(f"{path}, [{section}]: unknown key {name!r}{_nearest(name, names)}")
+        entries[f"{section}.{name}"] = read_entry(f"{section}.{name}", value, where, where)
+    return entries
+
+
+def _read_lines(content: object, path: str) -> tuple[BenchLine, ...]:
+    if not isinstance(content, list) or not all(isinstance(item, dict) for item in content):
+        raise BenchError(f"{path}: drive lines must be written as [[line]], got {content!r}")
+    return tuple(_read_line(item, f"{path}, [[line]] {n}") for n, item in enumerate(content, 1))
+
+
+def _read_line(item: Mapping[str, Any], where: str) -> BenchLine:
+    for name in item:
+        if name not in LINE_KEYS:
+            raise BenchError(f"{where}: unknown key {name!r}{_nearest(name, LINE_KEYS)}")
+    if "frequency" not in item:
+        raise BenchError(f'{where}: must give a frequency, such as frequency = "87.1 Hz"')
+    frequency = _number(LINE_KEYS["frequency"], item["frequency"], f"{where} frequency")
+    if "drive" not in item:
+        return BenchLine(frequency)
+    return BenchLine(frequency, _number(LINE_KEYS["drive"], item["drive"], f"{where} drive"))
+
+
+def read_entry(key: str, value: object, where: str, source: str) -> Entry:
+    """Return the checked entry of one key.
+
+    Parameters
+    ----------
+    key : str
+        ``section.key``.
+    value : object
+        Text with a unit, a number, or a table with ``value``, ``u``, ``distribution``, ``source``.
+    where : str
+        What the message calls it.
+    source : str
+        Where it came from.
+
+    Returns
+    -------
+    Entry
+        In SI units.
+
+    Raises
+    ------
+    BenchError
+        If it breaks the key's rule.
+    """
+    rule = KEYS[key]
+    if not rule.unit:
+        return Entry(_text(rule, value, where), source)
+    if isinstance(value, Measured):
+        return Entry(value, source)
+    if not isinstance(value, Mapping):
+        return Entry(Measured.of(_number(rule, value, where), rule.unit), source)
+    return _read_table(rule, value, where, source)
+
+
+def _read_table(rule: Key, value: Mapping[str, Any], where: str, source: str) -> Entry:
+    for name in value:
+        if name not in _TABLE_KEYS:
+            raise BenchError(f"{where}: unknown key {name!r}{_nearest(name, list(_TABLE_KEYS))}")
+    if "value" not in value:
+        raise BenchError(f"{where}: must give a value, such as {{ value = {rule.example!r} }}")
+    distribution = value.get("distribution", "normal")
+    if distribution not in _DISTRIBUTIONS:
+        raise BenchError(
+            f"{where}: distribution must be 'normal' or 'rectangular', got {distribution!r}"
+        )
+    note = value.get("source", "")
+    if not isinstance(note, str):
+        raise BenchError(f"{where}: source must be text, got {note!r}")
+    number = _number(rule, value["value"], where)
+    u = None if value.get("u") is None else _uncertainty(rule, value["u"], number, where)
+    return Entry(Measured.of(number, rule.unit, u), source, distribution, note)
+
+
+def _uncertainty(rule: Key, u: object, number: float, where: str) -> float:
+    """Return u in the key's unit; a percentage or ppm of a value with a unit is relative to it."""
+    if isinstance(u, str) and rule.unit != "1":
+        try:
+            return abs(number) * float(_si(u, f"{where} u", Key("1", "")))
+        except BenchError:
+            pass
+    if isinstance(u, str) and rule.unit == "K":
+        u = u.replace("°C", "K").replace("degC", "K")  # a difference of temperatures
+    return float(_si(u, f"{where} u", Key(rule.unit, rule.example, minimum=0.0)))
+
+
+def _number(rule: Key, value: object, where: str) -> float:
+    number = float(_si(value, where, rule))
+    if rule.whole and number != int(number):
+        raise BenchError(f"{where} must be a whole number, got {value!r}")
+    if rule.whole and rule.minimum == -1.0 and number == 0:
+        raise BenchError(f"{where} must be +1 or -1, got {value!r}")
+    return number
+
+
+def _si(value: Any, where: str, rule: Key) -> Any:  # noqa: ANN401  # TOML gives anything
+    if not isinstance(value, (str, int, float)) and not hasattr(value, "magnitude"):
+        raise BenchError(f"{where} must be a value such as {rule.example!r}, got {value!r}")
+    try:
+        return si(
+            value,
+            where,
+            rule.unit,
+            minimum=rule.minimum,
+            maximum=rule.maximum,
+            above=rule.above,
+        )
+    except MetroError as error:
+        raise BenchError(str(error)) from None
+
+
+def _text(rule: Key, value: object, where: str) -> str:
+    if isinstance(value, int) and not isinstance(value, bool) and not rule.choices:
+        value = str(value)  # a channel may be named by its number
+    if not isinstance(value, str):
+        raise BenchError(f"{where} must be text such as {rule.example!r}, got {value!r}")
+    if rule.choices and value not in rule.choices:
+        allowed = " or ".join(repr(choice) for choice in rule.choices)
+        raise BenchError(f"{where} must be {allowed}, got {value!r}")
+    return value

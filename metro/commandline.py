@@ -1,0 +1,256 @@
+"""The command line: finds commands by entry points, loads the one that is called, ends with a code.
+
+Exit codes: 0 done; 1 done, but a result must not be trusted; 2 wrong input; 3 a device or file failed
+midway; 130 interrupted. With 2 there is exactly one line on stderr.
+"""
+
+import errno
+import os
+import sys
+from collections.abc import Sequence
+from difflib import get_close_matches
+from functools import cached_property
+from importlib import import_module
+from importlib.metadata import EntryPoint, distribution
+from typing import NoReturn
+
+import click
+
+from metro.errors import MidfringeError
+
+__all__ = ["LazyGroup", "cli", "main", "run"]
+
+PROGRAM = "midfringe"
+GROUP = "midfringe.commands"
+# The order of the work, not of the alphabet; commands named nowhere here follow.
+ORDER = (
+    *("expect", "air", "plan", "record", "inspect", "export", "fringe", "lines", "calibrate"),
+    *("convert", "spectrum", "ledger", "log", "report", "watch", "emit", "rehearse"),
+)
+
+
+class LazyGroup(click.Group):
+    """A group whose commands are the distribution's entry points, loaded when called.
+
+    An entry point's name is ``"name: one-line help"``, so that help loads no command.
+    """
+
+    @cached_property
+    def found(self) -> dict[str, tuple[str, EntryPoint]]:
+        """The one-line help and entry point of every command, by name, in the order of the work."""
+        found = {}
+        for entry in distribution(PROGRAM).entry_points.select(group=GROUP):
+            name, _, line = entry.name.partition(":")
+            found[name.strip()] = (line.strip(), entry)
+        order = {name: place for place, name in enumerate(ORDER)}
+        names = sorted(found, key=lambda name: (order.get(name, len(ORDER)), name))
+        return {name: found[name] for name in names}
+
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002  # click's signature
+        """Return the names of the commands.
+
+        Parameters
+        ----------
+        ctx : click.Context
+            Not used.
+
+        Returns
+        -------
+        list of str
+            In the order of the work.
+        """
+        return list(self.found)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002  # click's signature
+        """Return a command, its module loaded now.
+
+        Parameters
+        ----------
+        ctx : click.Context
+            Not used.
+        cmd_name : str
+            The command's name.
+
+        Returns
+        -------
+        click.Command or None
+            None where there is no such command.
+        """
+        if cmd_name not in self.found:
+            return None
+        _, entry = self.found[cmd_name]
+        command: click.Command = getattr(import_module(entry.module), entry.attr)
+        return command
+
+    def resolve_command(
+        self, ctx: click.Context, args: list[str]
+    ) -> tuple[str | None, click.Command | None, list[str]]:
+        """Return the command that the arguments name.
+
+        Parameters
+        ----------
+        ctx : click.Context
+            Of the group.
+        args : list of str
+            The command's name and its arguments.
+
+        Returns
+        -------
+        tuple of (str, click.Command, list of str)
+            Name, command, arguments.
+
+        Raises
+        ------
+        click.UsageError
+            If there is no such command; the nearest is named.
+        """
+        if args and args[0] not in self.found:
+            if args[0].startswith("-"):
+                raise click.NoSuchOption(args[0], ctx=ctx)
+            close = get_close_matches(args[0], list(self.found), 1, 0.5)
+            hint = f"; the nearest is {close[0]!r}" if close else ""
+            raise click.UsageError(f"unknown command {args[0]!r}{hint}", ctx)
+        return super().resolve_command(ctx, args)
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:  # noqa: ARG002  # click's signature
+        """Write the list of commands without loading one.
+
+        Parameters
+        ----------
+        ctx : click.Context
+            Not used.
+        formatter : click.HelpFormatter
+            Takes the text.
+        """
+        with formatter.section("Commands"):
+            formatter.write_dl([(name, line) for name, (line, _) in self.found.items()])
+
+
+@click.command(
+    cls=LazyGroup,
+    name=PROGRAM,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
+    epilog=f"'{PROGRAM} COMMAND --help' shows an example to run.",
+)
+@click.version_option(package_name=PROGRAM, prog_name=PROGRAM, message="%(prog)s %(version)s")
+def cli() -> None:
+    """From photodiode bytes to metres per volt, for a laser interferometer on a bench."""
+
+
+def run(arguments: Sequence[str] | None = None) -> int:
+    """Run the program and return its exit code.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        Without the program's name; default: the process's own.
+
+    Returns
+    -------
+    int
+        The exit code.
+    """
+    arguments = list(sys.argv[1:] if arguments is None else arguments)
+    if "_MIDFRINGE_COMPLETE" in os.environ:
+        from click.shell_completion import shell_complete
+
+        instruction = os.environ["_MIDFRINGE_COMPLETE"]
+        return shell_complete(cli, {}, PROGRAM, "_MIDFRINGE_COMPLETE", instruction)
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")  # a terminal without µ shows ? and goes on
+    try:
+        code = _invoke(arguments or ["--help"])
+        sys.stdout.flush()
+    except BaseException as error:  # noqa: BLE001  # every end of the program gets its code here
+        return _end(error)
+    return code
+
+
+def _invoke(arguments: list[str]) -> int:
+    try:
+        with cli.make_context(PROGRAM, arguments) as context:
+            cli.invoke(context)
+    except click.exceptions.Exit as end:
+        return end.exit_code
+    return 0
+
+
+def _end(error: BaseException) -> int:
+    """Say in one line why the program ends, and return its exit code."""
+    if os.environ.get("MIDFRINGE_DEBUG") == "1" and not isinstance(error, SystemExit):
+        import traceback
+
+        traceback.print_exception(error)
+    if isinstance(error, OSError) and error.errno == errno.EPIPE:
+        _silence_stdout()  # whoever read our output has seen enough
+        return 0
+    if isinstance(error, SystemExit):
+        return error.code if isinstance(error.code, int) else int(error.code is not None)
+    if isinstance(error, (KeyboardInterrupt, click.Abort, EOFError)):
+        _say("interrupted")
+        return 130
+    message, code = _explain(error)
+    _say(message)
+    return code
+
+
+def _explain(error: BaseException) -> tuple[str, int]:
+    if isinstance(error, MidfringeError):
+        return str(error), error.exit_code
+    if isinstance(error, click.ClickException):
+        return _usage(error), 2
+    if isinstance(error, OSError):
+        _silence_stdout()  # what it still holds would fail again at exit
+        named = f": {error.filename}" if error.filename else ""
+        return f"{(error.strerror or str(error)).lower()}{named}", 3
+    if isinstance(error, MemoryError):
+        return "not enough memory", 3
+    kind = type(error).__name__
+    return f"unexpected {kind}: {error} (MIDFRINGE_DEBUG=1 shows where)", 3
+
+
+def _usage(error: click.ClickException) -> str:
+    if isinstance(error, click.NoSuchOption):
+        close = error.possibilities or _near_options(error)
+        hint = f"; the nearest is {min(close)!r}" if close else ""
+        message = f"unknown option {error.option_name!r}{hint}"
+    else:
+        message = error.format_message().rstrip(".")
+    context = getattr(error, "ctx", None)
+    path = context.command_path if context is not None else PROGRAM
+    return f"{message} (see '{path} --help')"
+
+
+def _near_options(error: click.NoSuchOption) -> list[str]:
+    if error.ctx is None:
+        return []
+    known = [o for p in error.ctx.command.get_params(error.ctx) for o in p.opts if o[:2] == "--"]
+    return get_close_matches(error.option_name, known, 1, 0.5)
+
+
+def _say(message: str) -> None:
+    try:
+        click.echo(f"{PROGRAM}: {' '.join(message.split())}", err=True)
+    except OSError:
+        return  # nobody listens on stderr; the exit code still tells
+
+
+def _silence_stdout() -> None:
+    try:
+        descriptor = os.open(os.devnull, os.O_WRONLY)
+        os.dup2(descriptor, sys.stdout.fileno())
+        os.close(descriptor)
+    except (OSError, ValueError):
+        return  # stdout is no file, as under a test runner
+
+
+def main(arguments: Sequence[str] | None = None) -> NoReturn:
+    """Run the program and end the process with its exit code.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        Without the program's name; default: the process's own.
+    """
+    sys.exit(run(arguments))

@@ -7,13 +7,54 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from firmware_bridge.announcement import Announcement as Announcement
+    from firmware_bridge.announcement import ChannelInfo as ChannelInfo
+    from firmware_bridge.announcement import encode_announcement as encode_announcement
+    from firmware_bridge.decoder import Decoder as Decoder
+    from firmware_bridge.decoder import Samples as Samples
+    from firmware_bridge.envelope import Discarded as Discarded
     from firmware_bridge.errors import BridgeError as BridgeError
+    from firmware_bridge.errors import DeviceFailedError as DeviceFailedError
+    from firmware_bridge.frame import encode_frame as encode_frame
+    from firmware_bridge.frame import encode_stream as encode_stream
+    from firmware_bridge.message import Note as Note
+    from firmware_bridge.trace import Gap as Gap
+    from firmware_bridge.trace import Recording as Recording
+    from firmware_bridge.trace import Trace as Trace
 
 _HOMES = {
+    "Announcement": "firmware_bridge.announcement",
     "BridgeError": "firmware_bridge.errors",
+    "ChannelInfo": "firmware_bridge.announcement",
+    "Decoder": "firmware_bridge.decoder",
+    "DeviceFailedError": "firmware_bridge.errors",
+    "Discarded": "firmware_bridge.envelope",
+    "Gap": "firmware_bridge.trace",
+    "Note": "firmware_bridge.message",
+    "Recording": "firmware_bridge.trace",
+    "Samples": "firmware_bridge.decoder",
+    "Trace": "firmware_bridge.trace",
+    "encode_announcement": "firmware_bridge.announcement",
+    "encode_frame": "firmware_bridge.frame",
+    "encode_stream": "firmware_bridge.frame",
 }
 
-__all__ = ["BridgeError"]
+__all__ = [
+    "Announcement",
+    "BridgeError",
+    "ChannelInfo",
+    "Decoder",
+    "DeviceFailedError",
+    "Discarded",
+    "Gap",
+    "Note",
+    "Recording",
+    "Samples",
+    "Trace",
+    "encode_announcement",
+    "encode_frame",
+    "encode_stream",
+]
 
 
 def __getattr__(name: str) -> Any:  # noqa: ANN401  # PEP 562: any public name of the package

@@ -1,0 +1,216 @@
+"""Bytes in, events out: samples, gaps, announcements, notes, and what was discarded.
+
+No input or output happens here, and no content raises.
+"""
+
+import struct
+from dataclasses import dataclass
+from typing import Any
+
+from numpy.typing import NDArray
+
+from firmware_bridge.announcement import Announcement, parse_announcement
+from firmware_bridge.cobs import encode
+from firmware_bridge.envelope import Discarded, Unwrapper
+from firmware_bridge.frame import HEADER, OVER_RANGE, unpack_samples
+from firmware_bridge.message import (
+    WIRE_VERSION,
+    Command,
+    LockIn,
+    MessageError,
+    MessageType,
+    Note,
+    Reply,
+    parse_message,
+)
+from firmware_bridge.order import StreamOrder
+from firmware_bridge.trace import Gap
+
+__all__ = [
+    "Announcement",
+    "Command",
+    "Decoder",
+    "Discarded",
+    "Event",
+    "Gap",
+    "LockIn",
+    "Note",
+    "Reply",
+    "Samples",
+]
+
+_HEADER = struct.Struct("<BBHIIBBHQQHH")
+_STREAMS_KEPT = 4
+_BESIDE = (MessageType.NOTE, MessageType.COMMAND, MessageType.REPLY, MessageType.LOCK_IN)
+
+
+@dataclass(eq=False, slots=True)
+class Samples:
+    """The samples of one frame.
+
+    Parameters
+    ----------
+    index : int
+        Index of the first sample, counted by the board.
+    data : ndarray of int16 or int32, shape (n, channels)
+        Counts.
+    over_range : bool
+        True if the board flagged a sample of this frame as over-range.
+    clock : int
+        Board clock at the first sample.
+    stream, sequence, flags : int
+        As in the frame.
+    """
+
+    index: int
+    data: NDArray[Any]
+    over_range: bool
+    clock: int
+    stream: int = 0
+    sequence: int = 0
+    flags: int = 0
+
+
+Event = Samples | Gap | Discarded | Announcement | Note | Command | Reply | LockIn
+
+
+class Decoder:
+    """Incremental decoder of the wire; events do not depend on how the bytes are cut.
+
+    Frames of a stream come out in the order of their indices. A frame that is ahead of its turn is
+    held until the missing ones have come, or until ``window`` frames, or 2 s of the board's
+    time, are held; only then is the gap reported. A frame that comes later still is kept: its
+    `Samples` comes out late, with an index inside the gap reported before, which it closes (wholly
+    or in part). Frames received twice are dropped and reported as `Discarded`.
+
+    A new stream id is a restart of the board: what is held comes out, then a `Gap` of length 0 that
+    is not exact, at the index where the old stream ended; its length is the host's to find.
+
+    Parameters
+    ----------
+    window : int
+        Frames held while one is missing; 0 reports each gap at once.
+    """
+
+    def __init__(self, window: int = 64) -> None:
+        self._unwrapper = Unwrapper()
+        self._window = window
+        self._orders: dict[int, StreamOrder[Samples]] = {}
+        self._current: int | None = None
+        self._rates: dict[int, float] = {}
+
+    def feed(self, data: bytes) -> list[Event]:
+        """Return the events that ``data`` completes.
+
+        Parameters
+        ----------
+        data : bytes
+            Whatever has arrived, cut anywhere.
+
+        Returns
+        -------
+        list of Samples, Gap, Discarded, Announcement, Note, Command, Reply or LockIn
+            In order.
+        """
+        return self._opened(self._unwrapper.feed(data))
+
+    def close(self) -> list[Event]:
+        """Return what was still held, and count the bytes of an unfinished frame as discarded."""
+        events = self._opened(self._unwrapper.close())
+        for order in self._orders.values():
+            events += order.flush()
+        return events
+
+    def _opened(self, pieces: list[bytes | Discarded]) -> list[Event]:
+        events: list[Event] = []
+        for piece in pieces:
+            if isinstance(piece, Discarded):
+                events.append(piece)
+            else:
+                events += self.accept(piece)
+        return events
+
+    def accept(self, message: bytes) -> list[Event]:
+        """Return the events of one message that is already unwrapped and checked.
+
+        Parameters
+        ----------
+        message : bytes
+            Content and CRC, as `Unwrapper.feed` returns it.
+
+        Returns
+        -------
+        list of Samples, Gap, Discarded, Announcement, Note, Command, Reply or LockIn
+            In order.
+        """
+        kind, version = message[0], message[1]
+        if version != WIRE_VERSION:
+            return [_refused(message, f"wire version {version}; this program knows {WIRE_VERSION}")]
+        try:
+            if kind == MessageType.SAMPLES:
+                return self._samples(message)
+            if kind == MessageType.ANNOUNCEMENT:
+                announcement = parse_announcement(message)
+                self._rates[announcement.stream] = announcement.rate_hz
+                return [announcement]
+            if kind in _BESIDE:
+                return [parse_message(message)]
+        except MessageError as error:
+            return [_refused(message, str(error))]
+        return [_refused(message, f"unknown message type {kind:#04x}")]
+
+    def _samples(self, message: bytes) -> list[Event]:
+        frame = parse_samples(message)
+        events: list[Event] = []
+        order = self._orders.get(frame.stream)
+        if order is None:
+            events += self._restart(frame.stream)
+            order = self._orders[frame.stream]
+        events += order.put(frame.index, len(frame.data), frame, message)
+        return events
+
+    def _restart(self, stream: int) -> list[Event]:
+        events: list[Event] = []
+        if self._current is not None:
+            old = self._orders[self._current]
+            events += old.flush()
+            events.append(Gap(old.expected, 0, exact=False))
+        rate_hz = self._rates.get(stream)
+        span = round(2 * rate_hz) if rate_hz else None
+        self._orders[stream] = StreamOrder(self._window, span)
+        self._current = stream
+        if len(self._orders) > _STREAMS_KEPT:
+            del self._orders[next(iter(self._orders))]
+        return events
+
+
+def parse_samples(message: bytes) -> Samples:
+    """Return the samples of one unwrapped frame.
+
+    Raises
+    ------
+    MessageError
+        If its fields do not fit each other.
+    """
+    if len(message) < _HEADER.size + 4:
+        raise MessageError(f"a samples frame of {len(message)} bytes is too short")
+    (_, _, flags, stream, sequence, channels, width, slots, index, clock, filled, _) = (
+        _HEADER.unpack_from(message)
+    )
+    room = slots * channels * width
+    if width not in (2, 3, 4) or not channels or filled > slots:
+        raise MessageError(
+            f"a samples frame with {channels} channels, format {width}, {filled} of {slots} filled"
+        )
+    if len(message) != _HEADER.size + room + 4:
+        raise MessageError(f"a samples frame of {len(message)} bytes, its header says {room + 40}")
+    end = _HEADER.size + filled * channels * width
+    data = unpack_samples(message[_HEADER.size : end], channels, width)
+    return Samples(index, data, bool(flags & OVER_RANGE), clock, stream, sequence, flags)
+
+
+def _refused(message: bytes, reason: str) -> Discarded:
+    return Discarded(len(encode(message)), reason)
+
+
+assert _HEADER.size == HEADER.itemsize  # noqa: S101  # one layout, written twice for speed

@@ -7,21 +7,57 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from metro.air import refractive_index as refractive_index
     from metro.bench import Bench as Bench
     from metro.bench import load_bench as load_bench
+    from metro.chain import Chain as Chain
     from metro.errors import MetroError as MetroError
+    from metro.fringe import displacement as displacement
+    from metro.fringe import fringes as fringes
+    from metro.fringe import phase as phase
     from metro.measured import Measured as Measured
+    from metro.strain import antenna_response as antenna_response
+    from metro.strain import arm_displacement as arm_displacement
+    from metro.strain import arm_response as arm_response
+    from metro.strain import arm_strain as arm_strain
+    from metro.strain import one_arm_displacement as one_arm_displacement
     from metro.units import Quantity as Quantity
 
 _HOMES = {
-    "load_bench": "metro.bench",
-    "Quantity": "metro.units",
-    "Measured": "metro.measured",
+    "refractive_index": "metro.air",
     "Bench": "metro.bench",
+    "load_bench": "metro.bench",
+    "Chain": "metro.chain",
     "MetroError": "metro.errors",
+    "displacement": "metro.fringe",
+    "fringes": "metro.fringe",
+    "phase": "metro.fringe",
+    "Measured": "metro.measured",
+    "antenna_response": "metro.strain",
+    "arm_displacement": "metro.strain",
+    "arm_response": "metro.strain",
+    "arm_strain": "metro.strain",
+    "one_arm_displacement": "metro.strain",
+    "Quantity": "metro.units",
 }
 
-__all__ = ["Bench", "Measured", "MetroError", "Quantity", "load_bench"]
+__all__ = [
+    "Bench",
+    "Chain",
+    "Measured",
+    "MetroError",
+    "Quantity",
+    "antenna_response",
+    "arm_displacement",
+    "arm_response",
+    "arm_strain",
+    "displacement",
+    "fringes",
+    "load_bench",
+    "one_arm_displacement",
+    "phase",
+    "refractive_index",
+]
 
 
 def __getattr__(name: str) -> Any:  # noqa: ANN401  # PEP 562: any public name of the package

@@ -1,0 +1,277 @@
+"""Refractive index of air with its uncertainty, from temperature, pressure and humidity."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+from metro.air_state import (
+    EQUATIONS,
+    HUMIDITY_KINDS,
+    LIMITS,
+    AirState,
+    check_equation,
+    check_state,
+    check_vapour,
+    range_remarks,
+)
+from metro.elementwise import elementwise
+from metro.errors import MetroError
+from metro.measured import Measured
+
+if TYPE_CHECKING:
+    from metro.units import Quantity
+
+__all__ = [
+    "EQUATIONS",
+    "HUMIDITY_KINDS",
+    "AirResult",
+    "AirState",
+    "index_measured",
+    "refractive_index",
+    "solve_air",
+]
+
+
+@dataclass(frozen=True, slots=True)
+class AirResult:
+    """The refractive index of air, and what it rests on.
+
+    Parameters
+    ----------
+    index : Measured
+        Phase index n.
+    wavelength_in_air : Measured
+        Vacuum wavelength over n [m].
+    equation : str
+        Name of the equation.
+    equation_u : float
+        Standard uncertainty of the equation itself.
+    sensitivities : dict of str to Measured
+        Derivative of n by each input, SI units.
+    contributions : dict of str to float
+        Standard uncertainty of n from each input and from the equation.
+    remarks : tuple of str
+        Where the equation is outside its own range, and what was assumed.
+    """
+
+    index: Measured
+    wavelength_in_air: Measured
+    equation: str
+    equation_u: float
+    sensitivities: dict[str, Measured]
+    contributions: dict[str, float]
+    remarks: tuple[str, ...]
+
+
+def refractive_index(
+    temperature: Quantity | str,
+    pressure: Quantity | str,
+    humidity: Quantity | float | str,
+    wavelength: Quantity | str,
+    co2: Quantity | float | str = "450 umol/mol",
+    equation: str = "ciddor",
+) -> Quantity:
+    """Return the phase refractive index of moist air.
+
+    Parameters
+    ----------
+    temperature : Quantity or str
+        −40 … 100 °C; scalar or array.
+    pressure : Quantity or str
+        10 … 140 kPa; scalar or array.
+    humidity : Quantity, float or str
+        Relative humidity, ``0.5`` or ``"50%"``; 0 … 1. Below 0 °C it is over ice.
+    wavelength : Quantity or str
+        Vacuum wavelength, 300 … 1700 nm.
+    co2 : Quantity, float or str, default "450 umol/mol"
+        Mole fraction of carbon dioxide, 0 … 2000 µmol/mol.
+    equation : str, default "ciddor"
+        ``"ciddor"``, ``"edlen"`` (as NIST uses it) or ``"edlen1994"`` (as printed).
+
+    Returns
+    -------
+    Quantity
+        Index n, dimensionless.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+
+    References
+    ----------
+    P. E. Ciddor, Appl. Opt. 35 (1996) 1566; K. P. Birch and M. J. Downs, Metrologia 30 (1993) 155
+    and 31 (1994) 315; NIST Engineering Metrology Toolbox, *Index of Refraction of Air*.
+    """
+    from metro.units import quantity, si
+
+    check_equation(equation)
+    t, p, lam = (
+        si(value, name, unit, minimum=low, maximum=high)
+        for (name, (unit, low, high)), value in zip(
+            LIMITS.items(), (temperature, pressure, wavelength), strict=True
+        )
+    )
+    rh = si(humidity, "humidity", "1", minimum=0.0, maximum=1.0)
+    xc = si(co2, "co2", "1", minimum=0.0, maximum=2e-3)
+
+    def index(t_k: float, p_pa: float, rh: float, lam_m: float, xc: float) -> float:
+        state = AirState(t_k, p_pa, rh, lam_m, xc)
+        check_vapour(state)
+        return 1.0 + state.refractivity(equation)
+
+    return quantity(elementwise(index, t, p, rh, lam, xc), "1")
+
+
+def index_measured(
+    temperature: Measured,
+    pressure: Measured,
+    humidity: Measured,
+    wavelength: Measured,
+    *,
+    co2: Measured | None = None,
+    equation: str = "ciddor",
+    kind: str = "relative",
+) -> Measured:
+    """Return the index of air with its standard uncertainty, from measured inputs.
+
+    Parameters
+    ----------
+    temperature, pressure : Measured
+        In K and Pa.
+    humidity : Measured
+        As ``kind`` says.
+    wavelength : Measured
+        Vacuum wavelength [m].
+    co2 : Measured, optional
+        Mole fraction of carbon dioxide; 450e-6 where not given.
+    equation : str, default "ciddor"
+        Name of the equation.
+    kind : str, default "relative"
+        Which of :data:`HUMIDITY_KINDS` the humidity is.
+
+    Returns
+    -------
+    Measured
+        Index n; its uncertainty takes in the inputs and the equation itself.
+
+    Raises
+    ------
+    MetroError
+        If a value is out of range.
+    """
+    inputs = {
+        "temperature": temperature,
+        "pressure": pressure,
+        "humidity": humidity,
+        "wavelength": wavelength,
+        "co2": co2 if co2 is not None else Measured.of(450e-6, "1"),
+    }
+    return solve_air(inputs, equation, kind).index
+
+
+def solve_air(inputs: dict[str, Measured], equation: str, kind: str = "relative") -> AirResult:
+    """Return the index of air, the wavelength in it, sensitivities and contributions.
+
+    Parameters
+    ----------
+    inputs : dict of str to Measured
+        ``temperature`` [K], ``pressure`` [Pa], ``humidity`` (as ``kind`` says), ``wavelength`` [m] and
+        ``co2`` (mole fraction).
+    equation : str
+        Name of the equation.
+    kind : str, default "relative"
+        Which of :data:`HUMIDITY_KINDS` the humidity is.
+
+    Returns
+    -------
+    AirResult
+        Index and what it rests on.
+
+    Raises
+    ------
+    MetroError
+        If a value is out of range or a name unknown.
+    """
+    check_equation(equation)
+    state = _state(inputs, kind)
+    refractivity = state.refractivity(equation)
+    slopes = {name: _slope(state, name, equation) for name in _FIELDS}
+    contributions = {
+        name: abs(slopes[name]) * float(inputs[name].u_magnitude)
+        for name in _FIELDS
+        if inputs[name].u_magnitude is not None
+    }
+    contributions["equation"] = state.equation_u(equation)
+    u = math.sqrt(sum(c * c for c in contributions.values()))
+    index = Measured.of(1.0 + refractivity, "1", u)
+    return AirResult(
+        index=index,
+        wavelength_in_air=_wavelength_in_air(inputs["wavelength"], index, slopes, contributions),
+        equation=equation,
+        equation_u=contributions["equation"],
+        sensitivities=_with_units(slopes, kind),
+        contributions=contributions,
+        remarks=range_remarks(state, equation),
+    )
+
+
+# Each input's field of the state, and the step for its derivative: large enough for twelve digits.
+_FIELDS = {
+    "temperature": ("temperature_k", 0.05),
+    "pressure": ("pressure_pa", 50.0),
+    "humidity": ("humidity", 0.0),
+    "wavelength": ("wavelength_m", 1e-11),
+    "co2": ("co2", 1e-5),
+}
+_HUMIDITY_STEPS = {
+    "relative": (1e-3, "1"),
+    "dew point": (0.05, "1/K"),
+    "vapour pressure": (1.0, "1/Pa"),
+    "mole fraction": (1e-5, "1"),
+}
+
+
+def _slope(state: AirState, name: str, equation: str) -> float:
+    """Return ∂n/∂input by a central difference of the refractivity."""
+    field, step = _FIELDS[name]
+    step = _HUMIDITY_STEPS[state.kind][0] if name == "humidity" else step
+    middle = getattr(state, field)
+    above = replace(state, **{field: middle + step}).refractivity(equation)
+    below = replace(state, **{field: middle - step}).refractivity(equation)
+    return (above - below) / (2.0 * step)
+
+
+def _with_units(slopes: dict[str, float], kind: str) -> dict[str, Measured]:
+    units = {"temperature": "1/K", "pressure": "1/Pa", "wavelength": "1/m", "co2": "1"}
+    units["humidity"] = _HUMIDITY_STEPS[kind][1]
+    return {name: Measured.of(slope, units[name]) for name, slope in slopes.items()}
+
+
+def _wavelength_in_air(
+    vacuum: Measured, index: Measured, slopes: dict[str, float], contributions: dict[str, float]
+) -> Measured:
+    """Return λ/n; the wavelength's own uncertainty acts twice, on λ and through dispersion."""
+    lam, n = float(vacuum.magnitude), float(index.magnitude)
+    rest = sum(c * c for name, c in contributions.items() if name != "wavelength")
+    direct = (1.0 - lam * slopes["wavelength"] / n) * float(vacuum.u_magnitude or 0.0)
+    u = math.sqrt(direct * direct + rest * (lam / n) ** 2) / n
+    return Measured.of(lam / n, "m", u)
+
+
+def _state(inputs: dict[str, Measured], kind: str) -> AirState:
+    if kind not in HUMIDITY_KINDS:
+        raise MetroError(f"humidity must be one of {', '.join(HUMIDITY_KINDS)}, got {kind!r}")
+    numbers = {name: float(value.magnitude) for name, value in inputs.items()}
+    state = AirState(
+        numbers["temperature"],
+        numbers["pressure"],
+        numbers["humidity"],
+        numbers["wavelength"],
+        numbers["co2"],
+        kind,
+    )
+    check_state(state)
+    return state

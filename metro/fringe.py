@@ -1,0 +1,355 @@
+"""Displacement, phase and fringes, and the fringe law, with values that carry units."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING, Any
+
+from metro.elementwise import is_array
+from metro.errors import MetroError
+from metro.kernel import fringe as kernel
+from metro.units import quantity, si
+
+if TYPE_CHECKING:
+    from metro.units import Quantity
+
+__all__ = [
+    "SLOPES",
+    "contrast",
+    "displacement",
+    "fringe_slope",
+    "fringe_voltage",
+    "fringes",
+    "phase",
+    "phase_on_slope",
+    "phases_on_slope_rad",
+    "slope_phase_rad",
+    "voltage_slopes",
+    "voltages",
+]
+
+SLOPES = ("rising", "falling")
+
+
+def phase(
+    displacement: Quantity | str,
+    wavelength: Quantity | str,
+    index: Quantity | float = 1.0,
+    round_trips: Quantity | float = 1,
+) -> Quantity:
+    """Return the phase of a differential displacement.
+
+    Parameters
+    ----------
+    displacement : Quantity or str
+        Length of the x arm less that of the y arm, as a change; scalar or array.
+    wavelength : Quantity or str
+        Vacuum wavelength; > 0.
+    index : Quantity or float, default 1
+        Refractive index between the mirrors; at least 1.
+    round_trips : Quantity or float, default 1
+        Round trips of the light in each arm; > 0, 1 in a simple Michelson.
+
+    Returns
+    -------
+    Quantity
+        Phase [rad], not wrapped: 2π · 2·round_trips · index · displacement / wavelength.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+
+    References
+    ----------
+    BIPM, *Mise en pratique for the definition of the metre in the SI*, 2019: Δφ = 2πΔz/(λ/2).
+    """
+    x = si(displacement, "displacement", "m")
+    return quantity(kernel.phase_rad(x, *_light(wavelength, index, round_trips)), "rad")
+
+
+def fringes(
+    displacement: Quantity | str,
+    wavelength: Quantity | str,
+    index: Quantity | float = 1.0,
+    round_trips: Quantity | float = 1,
+) -> Quantity:
+    """Return the number of fringes of a differential displacement.
+
+    Parameters
+    ----------
+    displacement : Quantity or str
+        Differential displacement; scalar or array.
+    wavelength : Quantity or str
+        Vacuum wavelength; > 0.
+    index : Quantity or float, default 1
+        Refractive index between the mirrors; at least 1.
+    round_trips : Quantity or float, default 1
+        Round trips of the light in each arm; > 0.
+
+    Returns
+    -------
+    Quantity
+        Fringes, signed, as a pure number; half a wavelength is one fringe of a simple Michelson.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+    """
+    x = si(displacement, "displacement", "m")
+    return quantity(kernel.fringes(x, *_light(wavelength, index, round_trips)), "1")
+
+
+def displacement(
+    phase: Quantity | str,
+    wavelength: Quantity | str,
+    index: Quantity | float = 1.0,
+    round_trips: Quantity | float = 1,
+) -> Quantity:
+    """Return the differential displacement of a phase.
+
+    Parameters
+    ----------
+    phase : Quantity or str
+        Phase, not wrapped, in rad, deg or fringe; scalar or array.
+    wavelength : Quantity or str
+        Vacuum wavelength; > 0.
+    index : Quantity or float, default 1
+        Refractive index between the mirrors; at least 1.
+    round_trips : Quantity or float, default 1
+        Round trips of the light in each arm; > 0.
+
+    Returns
+    -------
+    Quantity
+        Differential displacement [m].
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+    """
+    angle = si(phase, "phase", "rad")
+    return quantity(kernel.displacement_m(angle, *_light(wavelength, index, round_trips)), "m")
+
+
+def _light(wavelength: Any, index: Any, round_trips: Any) -> tuple[Any, Any, Any]:  # noqa: ANN401  # as the public functions take them
+    return (
+        si(wavelength, "wavelength", "m", above=0.0),
+        si(index, "index", "1", minimum=1.0),
+        si(round_trips, "round_trips", "1", above=0.0),
+    )
+
+
+def fringe_voltage(phase: Quantity | str, low: Quantity | str, high: Quantity | str) -> Quantity:
+    """Return the voltage at a phase, (high+low)/2 + (high−low)/2·cos φ.
+
+    Parameters
+    ----------
+    phase : Quantity or str
+        Phase, 0 at this detector's maximum; scalar or array.
+    low, high : Quantity or str
+        Extremes of the fringe; low < high.
+
+    Returns
+    -------
+    Quantity
+        Voltage [V].
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or low is not below high.
+    """
+    return quantity(voltages(si(phase, "phase", "rad"), *_extremes(low, high)), "V")
+
+
+def fringe_slope(phase: Quantity | str, low: Quantity | str, high: Quantity | str) -> Quantity:
+    """Return the slope of the fringe at a phase, −(high−low)/2·sin φ.
+
+    Parameters
+    ----------
+    phase : Quantity or str
+        Phase, 0 at this detector's maximum; scalar or array.
+    low, high : Quantity or str
+        Extremes of the fringe; low < high.
+
+    Returns
+    -------
+    Quantity
+        Slope [V/rad], positive on the rising slope.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or low is not below high.
+    """
+    return quantity(voltage_slopes(si(phase, "phase", "rad"), *_extremes(low, high)), "V/rad")
+
+
+def phase_on_slope(
+    voltage: Quantity | str,
+    low: Quantity | str,
+    high: Quantity | str,
+    slope: str = "rising",
+) -> Quantity:
+    """Return the phase at which the detector shows a voltage, on a named slope.
+
+    Parameters
+    ----------
+    voltage : Quantity or str
+        Voltage from low to high; scalar or array.
+    low, high : Quantity or str
+        Extremes of the fringe; low < high.
+    slope : str, default "rising"
+        ``"rising"`` (phase in −π … 0) or ``"falling"`` (0 … π).
+
+    Returns
+    -------
+    Quantity
+        Phase [rad], modulo 2π.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension, the slope another name, or the voltage lies outside
+        the extremes.
+    """
+    low_v, high_v = _extremes(low, high)
+    volts = si(voltage, "voltage", "V", minimum=low_v, maximum=high_v)
+    rising = _is_rising(slope)
+    return quantity(phases_on_slope_rad(volts, low_v, high_v, rising=rising), "rad")
+
+
+def contrast(low: Quantity | str, high: Quantity | str, dark: Quantity | str = "0 V") -> Quantity:
+    """Return the contrast of a fringe, (high − low)/(high + low − 2·dark).
+
+    Parameters
+    ----------
+    low, high : Quantity or str
+        Extremes of the fringe; low < high.
+    dark : Quantity or str, default "0 V"
+        Voltage without light; below the middle of the fringe.
+
+    Returns
+    -------
+    Quantity
+        Contrast, dimensionless; above 1 only if the dark voltage is wrong.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+    """
+    low_v, high_v = _extremes(low, high)
+    dark_v = si(dark, "dark", "V", below=0.5 * (low_v + high_v))
+    return quantity(kernel.contrast(low_v, high_v, dark_v), "1")
+
+
+def _extremes(low: Any, high: Any) -> tuple[float, float]:  # noqa: ANN401  # as the public functions take them
+    low_v = _scalar(si(low, "low", "V"), "low")
+    return low_v, _scalar(si(high, "high", "V", above=low_v), "high")
+
+
+def _scalar(value: Any, name: str) -> float:  # noqa: ANN401  # what si() gave
+    if is_array(value):
+        raise MetroError(f"{name} must be one value, got {value.size}")
+    return float(value)
+
+
+def _is_rising(slope: str) -> bool:
+    if slope not in SLOPES:
+        raise MetroError(f"slope must be 'rising' or 'falling', got {slope!r}")
+    return slope == "rising"
+
+
+def slope_phase_rad(slope: str) -> float:
+    """Return the phase in the middle of a named slope.
+
+    Parameters
+    ----------
+    slope : str
+        ``"rising"`` or ``"falling"``.
+
+    Returns
+    -------
+    float
+        −π/2 or π/2 [rad].
+
+    Raises
+    ------
+    MetroError
+        If the slope has another name.
+    """
+    return -0.5 * math.pi if _is_rising(slope) else 0.5 * math.pi
+
+
+def voltages(phase_rad: Any, low: float, high: float) -> Any:  # noqa: ANN401  # floats and arrays alike
+    """Return the fringe law over plain numbers.
+
+    Parameters
+    ----------
+    phase_rad : float or ndarray
+        Phase [rad], 0 at this detector's maximum.
+    low, high : float
+        Extremes of the fringe [V].
+
+    Returns
+    -------
+    float or ndarray
+        Voltage [V].
+    """
+    if not is_array(phase_rad):
+        return kernel.voltage(phase_rad, low, high)
+    import numpy as np
+
+    return kernel.voltage_of_cosine(np.cos(phase_rad), low, high)
+
+
+def voltage_slopes(phase_rad: Any, low: float, high: float) -> Any:  # noqa: ANN401  # floats and arrays alike
+    """Return the slope of the fringe law over plain numbers.
+
+    Parameters
+    ----------
+    phase_rad : float or ndarray
+        Phase [rad], 0 at this detector's maximum.
+    low, high : float
+        Extremes of the fringe [V].
+
+    Returns
+    -------
+    float or ndarray
+        Slope [V/rad].
+    """
+    if not is_array(phase_rad):
+        return kernel.voltage_slope(phase_rad, low, high)
+    import numpy as np
+
+    return kernel.voltage_slope_of_sine(np.sin(phase_rad), low, high)
+
+
+def phases_on_slope_rad(voltage_v: Any, low: float, high: float, *, rising: bool) -> Any:  # noqa: ANN401  # floats and arrays alike
+    """Return the inverse of the fringe law over plain numbers, on a named slope.
+
+    Parameters
+    ----------
+    voltage_v : float or ndarray
+        Voltage [V].
+    low, high : float
+        Extremes of the fringe [V].
+    rising : bool
+        Whether the slope is the rising one.
+
+    Returns
+    -------
+    float or ndarray
+        Phase [rad]; in an array NaN where the voltage lies outside the extremes.
+    """
+    if not is_array(voltage_v):
+        return kernel.phase_of_voltage(voltage_v, low, high, rising)
+    import numpy as np
+
+    with np.errstate(invalid="ignore"):  # outside the extremes, or missing samples
+        angles = 2.0 * np.arctan2(np.sqrt(high - voltage_v), np.sqrt(voltage_v - low))
+    return -angles if rising else angles

@@ -1,6 +1,5 @@
 """The bench: what the file, the command line and the defaults say about it, with where from."""
 
-import math
 import os
 import tomllib
 from collections.abc import Mapping
@@ -35,10 +34,13 @@ class BenchLine:
         Line frequency [Hz].
     drive_v : float or None
         Drive amplitude as ``[drive] reading`` says it is read [V]; None where not given.
+    drive_u_v : float
+        Its standard uncertainty [V]; 0 where not given.
     """
 
     frequency_hz: float
     drive_v: float | None = None
+    drive_u_v: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,12 +57,18 @@ class Entry:
         ``"normal"`` or ``"rectangular"``.
     note : str
         What the file says of its origin, such as a certificate; empty where it says nothing.
+    given : str
+        The value as it was written; empty where it was computed.
     """
 
     value: Measured | str
     source: str
     distribution: str = NORMAL
     note: str = ""
+    given: str = ""
+
+    def __str__(self) -> str:
+        return self.given or str(self.value)
 
 
 @dataclass(frozen=True)
@@ -348,10 +356,10 @@ class Bench:
         Returns
         -------
         list of (str, str, str)
-            Key, value for people, source.
+            Key, value as written, source.
         """
         return [
-            (key, str(self.entries[key].value), self.entries[key].source)
+            (key, str(self.entries[key]), self.entries[key].source)
             for key in KEYS
             if key in self.entries
         ]
@@ -381,6 +389,12 @@ def _checked(bench: Bench) -> Bench:
         raise BenchError(
             f"low must be < high, got {low.magnitude:g} V and {high.magnitude:g} V ({where})"
         )
+    if bench.text("air.medium") == "vacuum":
+        for key in ("air.temperature", "air.pressure", "air.humidity"):
+            if bench.source(key).startswith("option"):
+                option = bench.source(key).removeprefix("option ")
+                where = bench.source("air.medium")
+                raise BenchError(f"{option} has no use: the arms are in vacuum ({where})")
     return bench
 
 
@@ -418,19 +432,3 @@ def load_bench(path: str | os.PathLike[str]) -> Bench:
         raise BenchError(f"{path} is not valid TOML: {reason}") from None
     entries, lines = read_sections(document, str(path))
     return _checked(Bench(entries, lines, str(path)))
-
-
-def rectangular_u(half_width: float) -> float:
-    """Return the standard uncertainty of a rectangular distribution.
-
-    Parameters
-    ----------
-    half_width : float
-        Half of its width.
-
-    Returns
-    -------
-    float
-        half_width/√3 (JCGM 100:2008, 4.3.7).
-    """
-    return half_width / math.sqrt(3.0)

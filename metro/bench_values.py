@@ -1,5 +1,6 @@
 """From the text of a bench file to checked entries."""
 
+import re
 from collections.abc import Mapping
 from typing import Any
 
@@ -84,10 +85,20 @@ def _read_line(item: Mapping[str, Any], where: str) -> BenchLine:
             raise BenchError(f"{where}: unknown key {name!r}{_nearest(name, LINE_KEYS)}")
     if "frequency" not in item:
         raise BenchError(f'{where}: must give a frequency, such as frequency = "87.1 Hz"')
-    frequency = _number(LINE_KEYS["frequency"], item["frequency"], f"{where} frequency")
+    frequency, _ = _line_value(item, "frequency", where)
     if "drive" not in item:
         return BenchLine(frequency)
-    return BenchLine(frequency, _number(LINE_KEYS["drive"], item["drive"], f"{where} drive"))
+    return BenchLine(frequency, *_line_value(item, "drive", where))
+
+
+def _line_value(item: Mapping[str, Any], name: str, where: str) -> tuple[float, float]:
+    rule, value, where = LINE_KEYS[name], item[name], f"{where} {name}"
+    if not isinstance(value, Mapping):
+        return _number(rule, value, where), 0.0
+    measured = _read_table(rule, value, where, where).value
+    if not isinstance(measured, Measured):
+        raise TypeError(where)  # a line's keys all have units
+    return measured.magnitude, measured.u_magnitude or 0.0
 
 
 def read_entry(key: str, value: object, where: str, source: str) -> Entry:
@@ -116,12 +127,19 @@ def read_entry(key: str, value: object, where: str, source: str) -> Entry:
     """
     rule = KEYS[key]
     if not rule.unit:
-        return Entry(_text(rule, value, where), source)
+        text = _text(rule, value, where)
+        return Entry(text, source, given=text)
     if isinstance(value, Measured):
         return Entry(value, source)
     if not isinstance(value, Mapping):
-        return Entry(Measured.of(_number(rule, value, where), rule.unit), source)
+        measured = Measured.of(_number(rule, value, where), rule.unit)
+        return Entry(measured, source, given=_written(value))
     return _read_table(rule, value, where, source)
+
+
+def _written(value: object, u: object = None) -> str:
+    text = f"{value:~}" if hasattr(value, "magnitude") else str(value)
+    return text if u is None else f"{text}, u = {_written(u)}"
 
 
 def _read_table(rule: Key, value: Mapping[str, Any], where: str, source: str) -> Entry:
@@ -140,19 +158,28 @@ def _read_table(rule: Key, value: Mapping[str, Any], where: str, source: str) ->
         raise BenchError(f"{where}: source must be text, got {note!r}")
     number = _number(rule, value["value"], where)
     u = None if value.get("u") is None else _uncertainty(rule, value["u"], number, where)
-    return Entry(Measured.of(number, rule.unit, u), source, distribution, note)
+    given = _written(value["value"], value.get("u"))
+    return Entry(Measured.of(number, rule.unit, u), source, distribution, note, given)
+
+
+_RELATIVE = re.compile(r".*\d\s*(%|‰|percent|permille|ppm|ppb)\s*", re.DOTALL)
 
 
 def _uncertainty(rule: Key, u: object, number: float, where: str) -> float:
     """Return u in the key's unit; a percentage or ppm of a value with a unit is relative to it."""
-    if isinstance(u, str) and rule.unit != "1":
-        try:
-            return abs(number) * float(_si(u, f"{where} u", Key("1", "")))
-        except BenchError:
-            pass
-    if isinstance(u, str) and rule.unit == "K":
-        u = u.replace("°C", "K").replace("degC", "K")  # a difference of temperatures
-    return float(_si(u, f"{where} u", Key(rule.unit, rule.example, minimum=0.0)))
+    where = f"{where} u"
+    if not (isinstance(u, str) and _RELATIVE.fullmatch(u)):
+        return float(_si(u, where, Key(rule.unit, rule.example, minimum=0.0), difference=True))
+    share = float(_si(u, where, Key("1", rule.example, minimum=0.0)))
+    if rule.unit == "1":
+        if abs(number) > 1.0:  # 10 with u = 0.15 %: is it 0.015 or 0.0015?
+            raise BenchError(
+                f"{where} must be a bare number, as the value {number:g} is, got {u!r}"
+            )
+        return share
+    if number == 0.0:
+        raise BenchError(f"{where} must be in {rule.unit}, as a share of 0 is nothing, got {u!r}")
+    return abs(number) * share
 
 
 def _number(rule: Key, value: object, where: str) -> float:
@@ -164,7 +191,7 @@ def _number(rule: Key, value: object, where: str) -> float:
     return number
 
 
-def _si(value: Any, where: str, rule: Key) -> Any:  # noqa: ANN401  # TOML gives anything
+def _si(value: Any, where: str, rule: Key, *, difference: bool = False) -> Any:  # noqa: ANN401  # TOML gives anything
     if not isinstance(value, (str, int, float)) and not hasattr(value, "magnitude"):
         raise BenchError(f"{where} must be a value such as {rule.example!r}, got {value!r}")
     try:
@@ -175,6 +202,7 @@ def _si(value: Any, where: str, rule: Key) -> Any:  # noqa: ANN401  # TOML gives
             minimum=rule.minimum,
             maximum=rule.maximum,
             above=rule.above,
+            difference=difference,
         )
     except MetroError as error:
         raise BenchError(str(error)) from None

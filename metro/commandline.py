@@ -16,6 +16,7 @@ from typing import NoReturn
 
 import click
 
+from metro.diagnostics import set_up_logging
 from metro.errors import MidfringeError
 
 __all__ = ["LazyGroup", "cli", "main", "run"]
@@ -159,6 +160,7 @@ def run(arguments: Sequence[str] | None = None) -> int:
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")  # a terminal without µ shows ? and goes on
+    set_up_logging()
     try:
         code = _invoke(arguments or ["--help"])
         sys.stdout.flush()

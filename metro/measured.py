@@ -237,7 +237,7 @@ def _difference(u: "Quantity", unit: str) -> Any:  # noqa: ANN401  # float or nd
     own, factor, _ = _si_unit(u)
     if own == unit:
         return u.magnitude * factor
-    return si(u, "u", unit)
+    return si(u, "u", unit, difference=True)
 
 
 def _any_negative(u: Any) -> bool:  # noqa: ANN401  # float or ndarray

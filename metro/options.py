@@ -9,6 +9,7 @@ import click
 
 from metro.bench import Bench, BenchError, load_bench
 from metro.bench_keys import KEYS, OPTIONS
+from metro.diagnostics import set_up_logging
 from metro.errors import MetroError
 from metro.units import si
 
@@ -58,15 +59,27 @@ class ValueType(_ParamType):
     unit : str
         The SI unit, such as ``"m"``.
     name : str, optional
-        What help shows for the value; default: an upper-case word of its unit's kind.
-    **bounds : float
-        ``minimum``, ``maximum``, ``above``, ``below``, as for :func:`metro.units.si`.
+        What help shows for the value.
+    minimum, maximum : float, optional
+        Closed bounds, in ``unit``.
+    above, below : float, optional
+        Open bounds, in ``unit``.
     """
 
-    def __init__(self, unit: str, name: str = "VALUE", **bounds: float | None) -> None:
+    def __init__(
+        self,
+        unit: str,
+        name: str = "VALUE",
+        *,
+        minimum: float | None = None,
+        maximum: float | None = None,
+        above: float | None = None,
+        below: float | None = None,
+    ) -> None:
         self.unit = unit
         self.name = name
-        self.bounds = bounds
+        self.minimum, self.maximum = minimum, maximum
+        self.above, self.below = above, below
 
     def convert(
         self,
@@ -100,7 +113,15 @@ class ValueType(_ParamType):
         name = option_name(param)
         if isinstance(value, str) and value.startswith("--"):
             raise MetroError(f"{name} needs a value, got the option {value!r}")
-        return si(value, name, self.unit, **self.bounds)
+        return si(
+            value,
+            name,
+            self.unit,
+            minimum=self.minimum,
+            maximum=self.maximum,
+            above=self.above,
+            below=self.below,
+        )
 
 
 def option_name(param: click.Parameter | None) -> str:
@@ -302,9 +323,7 @@ def _remember(meta: str, ctx: click.Context, param: click.Parameter, value: bool
         level = logging.ERROR
     elif ctx.meta.get(_VERBOSE):
         level = logging.INFO
-    logging.basicConfig(format="%(levelname)s: %(message)s")
-    logging.getLogger().setLevel(level)
-    logging.captureWarnings(True)
+    set_up_logging(level)
 
 
 def is_quiet() -> bool:

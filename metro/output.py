@@ -3,6 +3,8 @@
 import json
 import math
 import os
+import secrets
+import shutil
 import unicodedata
 from collections.abc import Sequence
 from pathlib import Path
@@ -15,6 +17,12 @@ __all__ = ["OutputError", "check_writable", "table", "to_json", "write_whole"]
 
 class OutputError(MetroError):
     """A file that cannot be written; nothing was left in its place."""
+
+
+class OutputFailedError(OutputError):
+    """A file that failed while it was written, as on a full disk."""
+
+    exit_code = 3
 
 
 def table(rows: Sequence[Sequence[Any]], header: Sequence[str] | None = None) -> str:
@@ -74,7 +82,20 @@ def to_json(document: Any) -> str:  # noqa: ANN401  # any document
     str
         Two-space indented, UTF-8 letters kept; what is not finite is null.
     """
-    return json.dumps(plain(document), indent=2, ensure_ascii=False, allow_nan=False)
+    ready = plain(document)
+    # Indented for people; a spectrum of a million points is for programs and stays on one line.
+    indent = None if _longest_list(ready) > 1000 else 2
+    return json.dumps(ready, indent=indent, ensure_ascii=False, allow_nan=False)
+
+
+def _longest_list(value: Any) -> int:  # noqa: ANN401  # plain JSON types
+    if isinstance(value, dict):
+        return max((_longest_list(item) for item in value.values()), default=0)
+    if isinstance(value, list):
+        if len(value) > 1000:
+            return len(value)
+        return max((_longest_list(item) for item in value), default=len(value))
+    return 0
 
 
 def plain(value: Any) -> Any:  # noqa: ANN401  # any document; one return a kind
@@ -137,18 +158,33 @@ def check_writable(path: str | os.PathLike[str], overwrite: bool = False) -> Pat
         If it exists, is a directory, or its directory is missing or closed to us.
     """
     path = Path(path)
+    try:
+        problem = _problem(path, overwrite)
+    except OSError as error:
+        problem = f"cannot write {path}: {_reason(error)}"
+    if problem:
+        raise OutputError(problem)
+    return path
+
+
+def _problem(path: Path, overwrite: bool) -> str:
+    """Return why a file cannot be written; empty where nothing speaks against it."""
     parent = path.parent
     if path.is_dir():
-        raise OutputError(f"cannot write {path}: it is a directory")
+        return f"cannot write {path}: it is a directory"
+    if _is_device(path):
+        return ""
     if not parent.exists():
-        raise OutputError(f"cannot write {path}: there is no directory {parent}")
+        return f"cannot write {path}: there is no directory {parent}"
     if not parent.is_dir():
-        raise OutputError(f"cannot write {path}: {parent} is not a directory")
+        return f"cannot write {path}: {parent} is not a directory"
     if path.exists() and not overwrite:
-        raise OutputError(f"{path} exists; give --overwrite to replace it")
+        return f"{path} exists; give --overwrite to replace it"
     if not os.access(parent, os.W_OK | os.X_OK):
-        raise OutputError(f"cannot write {path}: no permission to write in {parent}")
-    return path
+        return f"cannot write {path}: no permission to write in {parent}"
+    if len(os.fsencode(path.name)) > 255:  # what Linux and macOS file systems take
+        return f"cannot write {path}: file name too long"
+    return ""
 
 
 def write_whole(
@@ -159,7 +195,7 @@ def write_whole(
     Parameters
     ----------
     path : path
-        The file to be.
+        The file to be; a device such as ``/dev/null`` is written to directly.
     data : bytes or str
         Its content; text as UTF-8.
     overwrite : bool
@@ -168,34 +204,57 @@ def write_whole(
     Raises
     ------
     OutputError
-        If it exists, or cannot be written; what was there before is then still there.
+        If it exists or cannot be written; what was there before is then still there.
     """
-    path = check_writable(path, overwrite)
+    path = check_writable(path, overwrite).resolve()  # a link stays, its target is replaced
     content = data.encode() if isinstance(data, str) else data
+    if _is_device(path):
+        _fill(path, path, content, "wb")
+        return
     # In the same directory, so that the final rename stays within one file system.
-    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
+    temporary = path.with_name(f".midfringe-{os.getpid()}-{secrets.token_hex(4)}.part")
     try:
-        with temporary.open("xb") as file:
-            file.write(content)
-            file.flush()
-            os.fsync(file.fileno())
+        _fill(temporary, path, content, "xb")
         _put_in_place(temporary, path, overwrite)
-    except OSError as error:
-        raise OutputError(f"cannot write {path}: {_reason(error)}") from None
     finally:
         temporary.unlink(missing_ok=True)
 
 
-def _put_in_place(temporary: Path, path: Path, overwrite: bool) -> None:  # private
-    if overwrite:
-        temporary.replace(path)
-        return
+def _is_device(path: Path) -> bool:
+    return path.exists() and not path.is_file()
+
+
+def _fill(target: Path, named: Path, content: bytes, mode: str) -> None:
     try:
+        file = target.open(mode)
+    except OSError as error:
+        raise OutputError(f"cannot write {named}: {_reason(error)}") from None
+    try:
+        with file:
+            file.write(content)
+            file.flush()
+            if mode == "xb":
+                os.fsync(file.fileno())
+    except OSError as error:
+        raise OutputFailedError(
+            f"writing {named} failed: {_reason(error)}; nothing was left there"
+        ) from None
+
+
+def _put_in_place(temporary: Path, path: Path, overwrite: bool) -> None:
+    try:
+        if overwrite:
+            if path.exists():
+                shutil.copymode(path, temporary)
+            temporary.replace(path)
+            return
         os.link(temporary, path)  # refuses a file that appeared meanwhile; a rename would not
     except FileExistsError:
         raise OutputError(f"{path} exists; give --overwrite to replace it") from None
-    except OSError:  # a file system without hard links
-        temporary.replace(path)
+    except OSError as error:
+        if overwrite or path.exists():
+            raise OutputError(f"cannot write {path}: {_reason(error)}") from None
+        temporary.replace(path)  # a file system without hard links
 
 
 def _reason(error: OSError) -> str:

@@ -249,6 +249,19 @@ def _factor(unit: Any, wanted: str) -> float | None:  # noqa: ANN401  # pint's U
     return None
 
 
+@cache
+def _scale(unit: Any, wanted: str) -> tuple[float, float] | None:  # noqa: ANN401  # pint's Unit is generic
+    """Return multiplier and divisor to ``wanted``: 632.8/1e9 is the nearest float, 632.8·1e-9 not."""
+    factor = _factor(unit, wanted)
+    if factor is None or factor == 0 or factor >= 1:
+        return None if factor is None else (factor, 1.0)
+    divisor = float(round(1 / factor))
+    # Powers of ten are exact floats up to 1e22; a factor whose inverse is none stays as it is.
+    if divisor <= 1e22 and abs(factor * divisor - 1) < 1e-15:
+        return 1.0, divisor
+    return factor, 1.0
+
+
 def _without_counts(unit: Any) -> dict[str, float]:  # noqa: ANN401  # pint's Unit is generic
     powers = dict(unit._units)  # noqa: SLF001  # pint's only way to the exponents
     for name in ("count", "bit"):
@@ -265,6 +278,7 @@ def si(
     maximum: float | None = None,
     above: float | None = None,
     below: float | None = None,
+    difference: bool = False,
 ) -> Any:  # noqa: ANN401  # a float for a scalar, an ndarray for an array
     """Return the magnitude of a value in a unit, its dimension, finiteness and range checked.
 
@@ -281,6 +295,8 @@ def si(
         Closed bounds, in ``unit``.
     above, below : float, optional
         Open bounds, in ``unit``.
+    difference : bool
+        Take ``degC`` as a difference of temperatures, as in an uncertainty of ``"0.3 degC"``.
 
     Returns
     -------
@@ -293,22 +309,17 @@ def si(
         If the value has no unit, another dimension, is not finite or out of range.
     """
     magnitude, given = _magnitude_and_unit(value, name, unit)
-    if str(given) in _OFFSETS and unit == "K":
-        scale, offset = _OFFSETS[str(given)]
-        result = magnitude * scale + offset
-    else:
-        factor = _factor(given, unit)
-        if factor is None:
-            raise MetroError(_wrong_dimension(value, name, unit))
-        result = magnitude * factor
+    offset = 0.0 if difference or unit != "K" else _OFFSETS.get(str(given), 0.0)
+    scale = _scale(given, unit)
+    if scale is None:
+        raise MetroError(_wrong_dimension(value, name, unit))
+    result = magnitude * scale[0] / scale[1] + offset
     _check_range(result, value, name, unit, (minimum, maximum, above, below))
     return result
 
 
-_OFFSETS = {
-    "degree_Celsius": (1.0, 273.15),
-    "degree_Fahrenheit": (5 / 9, 459.67 * 5 / 9),
-}
+# Where the zero of a temperature scale lies, in kelvin.
+_OFFSETS = {"degree_Celsius": 273.15, "degree_Fahrenheit": 459.67 * 5 / 9}
 
 
 def _magnitude_and_unit(value: object, name: str, unit: str) -> tuple[Any, Any]:

@@ -78,6 +78,7 @@ KEYS: dict[str, Key] = {
     "adc.quadratic": Key("1", "{ value = 0, u = 2e-5 }", minimum=-0.5, maximum=0.5),
     "adc.cubic": Key("1", "{ value = 0, u = 2e-5 }", minimum=-0.5, maximum=0.5),
     "adc.antialias": _positive("Hz", "4 kHz"),
+    "adc.aperture": _not_negative("s", "10 us"),
     "adc.channel_delay": Key("s", "5 us"),
     "adc.clock": Key("1", '{ value = 0, u = "20 ppm" }', minimum=-0.5, maximum=0.5),
     "actuator.arm": Key("", "x", choices=("x", "y")),

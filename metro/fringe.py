@@ -21,8 +21,10 @@ __all__ = [
     "fringe_voltage",
     "fringes",
     "phase",
+    "phase_changes",
     "phase_on_slope",
     "phases_on_slope_rad",
+    "signal_changes",
     "slope_phase_rad",
     "voltage_slopes",
     "voltages",
@@ -353,3 +355,57 @@ def phases_on_slope_rad(voltage_v: Any, low: float, high: float, *, rising: bool
     with np.errstate(invalid="ignore"):  # outside the extremes, or missing samples
         angles = 2.0 * np.arctan2(np.sqrt(high - voltage_v), np.sqrt(voltage_v - low))
     return -angles if rising else angles
+
+
+def signal_changes(phase_change_rad: Any, working_phase_rad: float) -> Any:  # noqa: ANN401  # floats and arrays alike
+    """Return the change of the fringe law over half its height, over plain numbers.
+
+    Parameters
+    ----------
+    phase_change_rad : float or ndarray
+        Change of the phase from the working point [rad].
+    working_phase_rad : float
+        Phase of the working point [rad].
+
+    Returns
+    -------
+    float or ndarray
+        Change in units of (high−low)/2.
+    """
+    if not is_array(phase_change_rad):
+        return kernel.signal_change(phase_change_rad, working_phase_rad)
+    import numpy as np
+
+    half = 0.5 * phase_change_rad
+    return -2.0 * np.sin(working_phase_rad + half) * np.sin(half)
+
+
+def phase_changes(signal_change: Any, working_phase_rad: float) -> Any:  # noqa: ANN401  # floats and arrays alike
+    """Return the phase change behind a change of the fringe law, over plain numbers.
+
+    Parameters
+    ----------
+    signal_change : float or ndarray
+        Change in units of (high−low)/2.
+    working_phase_rad : float
+        Phase of the working point [rad]; its slope is the branch.
+
+    Returns
+    -------
+    float or ndarray
+        Change of the phase [rad]; in an array NaN where the signal leaves the extremes.
+    """
+    if not is_array(signal_change):
+        try:
+            return kernel.phase_change(signal_change, working_phase_rad)
+        except ValueError as error:
+            raise MetroError(str(error)) from None
+    import numpy as np
+
+    s, c = math.cos(working_phase_rad), math.sin(working_phase_rad)
+    v = s + signal_change
+    with np.errstate(invalid="ignore"):  # beyond the extremes, or missing samples
+        w = np.sqrt((1.0 - v) * (1.0 + v))
+        sine = signal_change * (abs(c) + s * (2.0 * s + signal_change) / (abs(c) + w))
+    changes = np.arctan2(sine, abs(c) * w + s * v)
+    return changes if c < 0.0 else -changes

@@ -15,10 +15,12 @@ __all__ = [
     "fringes",
     "harmonic_amplitude",
     "line_responses",
+    "phase_change",
     "phase_of_voltage",
     "phase_per_metre",
     "phase_rad",
     "power_w",
+    "signal_change",
     "voltage",
     "voltage_of_cosine",
     "voltage_slope",
@@ -225,6 +227,66 @@ def phase_of_voltage(signal: float, low: float, high: float, rising: bool = True
         raise ValueError(f"signal must lie between the extremes {low} and {high}, got {signal}")
     phase = 2.0 * atan2(sqrt(high - signal), sqrt(signal - low))
     return -phase if rising else phase
+
+
+def signal_change(phase_change_rad: float, working_phase_rad: float) -> float:
+    """Return the change of the fringe law over half its height, cos(φ0+δ) − cos φ0.
+
+    Parameters
+    ----------
+    phase_change_rad : float
+        Change δ of the phase from the working point [rad], however large.
+    working_phase_rad : float
+        Phase φ0 of the working point [rad].
+
+    Returns
+    -------
+    float
+        Change in units of (high−low)/2.
+
+    Notes
+    -----
+    Written −2 sin(φ0 + δ/2) sin(δ/2), which keeps the digits of the smallest δ.
+    """
+    half = 0.5 * phase_change_rad
+    return -2.0 * sin(working_phase_rad + half) * sin(half)
+
+
+def phase_change(signal_change: float, working_phase_rad: float) -> float:
+    """Return the phase change behind a change of the fringe law, on the working point's slope.
+
+    Parameters
+    ----------
+    signal_change : float
+        Change u in units of (high−low)/2; cos φ0 + u within −1 … 1.
+    working_phase_rad : float
+        Phase φ0 of the working point [rad]; its slope, rising or falling, is the branch.
+
+    Returns
+    -------
+    float
+        Change δ of the phase [rad].
+
+    Raises
+    ------
+    ValueError
+        If the signal would lie outside the extremes.
+
+    Notes
+    -----
+    With s = cos φ0, c = |sin φ0|, v = s + u and w = √(1 − v²): sin δ = uc + su(2s+u)/(c+w) on the
+    rising slope, in which nothing cancels for small u, and cos δ = cw + sv.
+    """
+    s, c = cos(working_phase_rad), sin(working_phase_rad)
+    v = s + signal_change
+    if not -1.0 <= v <= 1.0:
+        raise ValueError(f"signal must stay within the extremes, -1 … 1, got {v}")
+    size, w = abs(c), sqrt((1.0 - v) * (1.0 + v))
+    if size + w == 0.0:
+        return 0.0  # on an extreme, and no change
+    sine = signal_change * (size + s * (2.0 * s + signal_change) / (size + w))
+    change = atan2(sine, size * w + s * v)
+    return change if c < 0.0 else -change
 
 
 def power_w(phase_rad: float, mean_power_w: float, contrast: float) -> float:

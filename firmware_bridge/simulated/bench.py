@@ -1,0 +1,59 @@
+"""A simulated bench: the truth of one seed and a new stream of samples for every recording."""
+
+from firmware_bridge.simulated.setup import Setup
+from firmware_bridge.simulated.stream import Converter, Electronics, SampleStream
+from firmware_bridge.simulated.truth import Truth, draw_truth
+from metro.bench import Bench
+
+__all__ = ["SimulatedBench"]
+
+
+class SimulatedBench:
+    """The physical side of a rehearsal: what a bench file describes, with one drawn truth.
+
+    Parameters
+    ----------
+    bench : Bench
+        The bench file: nominal values and their uncertainties.
+    seed : int
+        Seed of the truth and of all noise.
+
+    Attributes
+    ----------
+    truth : Truth
+        The drawn values; the analysis must never see them.
+    rate_hz : float
+        Nominal sample rate [Hz].
+    """
+
+    def __init__(self, bench: Bench, seed: int) -> None:
+        self.truth: Truth = draw_truth(bench, seed)
+        self.rate_hz = bench.magnitude("adc.rate")
+        self.converter = _converter(bench)
+        self._electronics = Electronics(
+            transimpedance_v_per_a=bench.magnitude("photodiode.transimpedance"),
+            mains_hz=50.0
+            if bench.get("mains.frequency") is None
+            else bench.magnitude("mains.frequency"),
+        )
+        self._seed = seed
+        self._recordings = 0
+
+    def start(self, setup: Setup) -> SampleStream:
+        """Return the stream of the next recording; each recording has noise of its own."""
+        self._recordings += 1
+        return SampleStream(
+            setup,
+            self.truth,
+            self.converter,
+            self._electronics,
+            self.rate_hz,
+            [self._seed, self._recordings],
+        )
+
+
+def _converter(bench: Bench) -> Converter:
+    bits, range_v = int(bench.magnitude("adc.bits")), bench.magnitude("adc.range")
+    step_v = range_v / 2**bits
+    noise = bench.get("adc.noise")
+    return Converter(bits, range_v, step_v if noise is None else float(noise.magnitude))

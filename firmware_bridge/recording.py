@@ -1,0 +1,259 @@
+"""A recording in an .mfr file: opened once with every CRC checked, then read in any stretch."""
+
+import os
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from firmware_bridge.host_note import End, Join, Pieces, Remark, Stamp, parse_host_note
+from firmware_bridge.message import MessageError, MessageType, Note, parse_message
+from firmware_bridge.record_file import RecordFile
+from firmware_bridge.record_index import RecordIndex, lengths
+from firmware_bridge.recording_header import RecordingError
+from firmware_bridge.trace import Channel, Gap, Recording, Span
+
+__all__ = ["MfrRecording", "open_mfr"]
+
+
+class MfrRecording(Recording):
+    """An .mfr recording; see `Recording` and, for the file, SPEC.md.
+
+    Parameters
+    ----------
+    path : path-like
+        The file.
+
+    Raises
+    ------
+    RecordingError
+        If it is no recording, is damaged in its header, or holds no sample.
+    """
+
+    def __init__(self, path: str | os.PathLike[str]) -> None:
+        self.file = RecordFile(path)
+        self.header = self.file.header
+        self.stamps: list[Stamp] = []
+        """The host's clock beside the board's counting."""
+        self.notes: list[Note | Remark] = []
+        self.damaged = 0
+        """Records whose CRC does not fit."""
+        self.duplicates = 0
+        """Samples records that were there twice."""
+        self._joins: dict[int, Join] = {}
+        self._end: End | None = None
+        index = self._scan()
+        self._flagged = index.flagged
+        self._runs, length, gaps = self._place(index)
+        announced = self.header.announcement
+        super().__init__(
+            path=str(path),
+            format="mfr",
+            rate_hz=announced.rate_hz,
+            channels=[Channel(c.name, c.unit, c.scale, c.offset) for c in announced.channels],
+            length=length,
+            gaps=gaps,
+            remarks=self._say(),
+            start_unix_s=self._started(),
+        )
+        self.over_range = self._count_over_range()
+
+    def _scan(self) -> RecordIndex:
+        index, pieces = RecordIndex(self.file.slots), Pieces()
+        for chunk in self.file.chunks():
+            self.damaged += chunk.damaged
+            index.add(chunk)
+            for _, message in chunk.messages:
+                self._take(message, pieces)
+        return index
+
+    def _take(self, message: bytes, pieces: Pieces) -> None:
+        try:
+            if message[0] == MessageType.PIECE:
+                whole = pieces.put(message)
+                if whole is not None:
+                    self._take(whole, pieces)
+                return
+            if message[0] < MessageType.PIECE:
+                if message[0] == MessageType.NOTE:
+                    note = parse_message(message)
+                    assert isinstance(note, Note)  # noqa: S101  # the type byte says so
+                    self.notes.append(note)
+                return
+            host = parse_host_note(message)
+        except MessageError:
+            self.damaged += 1
+            return
+        match host:
+            case Stamp():
+                self.stamps.append(host)
+            case Join():
+                self._joins[host.stream] = host
+            case End():
+                self._end = host
+            case Remark():
+                self.notes.append(host)
+
+    def _place(self, index: RecordIndex) -> tuple[NDArray[Any], int, list[Gap]]:
+        """Put the streams one behind the other on the grid; return runs, length and gaps."""
+        placed: list[NDArray[Any]] = []
+        gaps: list[Gap] = []
+        reached = 0
+        for stream in index.streams():
+            found = index.placed(stream)
+            self.duplicates += found.duplicates
+            runs = found.runs
+            first = int(runs["index"][0])
+            start, length_u = reached, 0.0
+            join = self._joins.get(stream)
+            if join is not None and placed:
+                start, length_u = max(reached, join.grid + first - join.index), join.grid_u
+            if placed:
+                gaps.append(Gap(reached, start - reached, exact=False, length_u=length_u))
+            runs["index"] = runs["index"] - np.uint64(first) + np.uint64(start)
+            gaps += _gaps_inside(runs, self.file.slots)
+            reached = int(runs["index"][-1]) + int(lengths(runs[-1:], self.file.slots)[0])
+            if self._end is not None and self._end.stream == stream:
+                end = self._end.index - first + start
+                if end > reached:
+                    gaps.append(Gap(reached, end - reached))
+                    reached = end
+            placed.append(runs)
+        if not placed:
+            raise RecordingError(f"{self.file.path} holds no sample")
+        return np.concatenate(placed), reached, gaps
+
+    def _started(self) -> float | None:
+        for stamp in self.stamps[:1]:
+            first = self._board_index(stamp.stream)
+            speed = self.header.announcement.speed * self.header.announcement.rate_hz
+            if first is not None:
+                return stamp.unix_ns / 1e9 - (stamp.index - first) / speed
+        return self.header.created_ns / 1e9 if self.header.created_ns else None
+
+    def _board_index(self, stream: int) -> int | None:
+        join = self._joins.get(stream)
+        return None if join is None else join.index - join.grid
+
+    def _say(self) -> list[str]:
+        said = [
+            (self.damaged, f"{self.damaged} damaged records were left out"),
+            (self.duplicates, f"{self.duplicates} records were there twice"),
+            (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
+            (len(self._joins) > 1, "the board was restarted or reconnected"),
+            (self.header.announcement.simulated, "recorded from a simulated board"),
+        ]
+        return [text for is_so, text in said if is_so]
+
+    def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
+        """Return samples ``start`` to ``stop`` (not included) of some channels; see `Recording`."""
+        wanted = list(channels)
+        values = np.full((stop - start, len(wanted)), np.nan)
+        over_range = 0
+        ends = self._runs["index"].astype(np.int64) + lengths(self._runs, self.file.slots)
+        first = int(np.searchsorted(ends, start, "right"))
+        for run in self._runs[first:]:
+            if int(run["index"]) >= stop:
+                break
+            over_range += self._read_run(run, wanted, start, stop, values)
+        return Span(values, over_range)
+
+    def _read_run(
+        self,
+        run: Any,
+        wanted: list[int],
+        start: int,
+        stop: int,
+        values: NDArray[np.float64],  # noqa: ANN401  # a row of RUN
+    ) -> int:
+        slots, origin = self.file.slots, int(run["index"])
+        length = (int(run["records"]) - 1) * slots + int(run["last"])
+        begin, end = max(start, origin), min(stop, origin + length)
+        record = (begin - origin) // slots
+        over_range = 0
+        while begin < end:
+            last = (end - 1 - origin) // slots
+            rows = self.file.rows(int(run["record"]) + record, last - record + 1)
+            counts = self.file.counts(rows)
+            skip = begin - origin - record * slots
+            take = min(end - begin, len(counts) - skip)
+            part = values[begin - start : begin - start + take]
+            self._scale(counts[skip : skip + take], wanted, part)
+            hit = self._over(int(run["record"]) + record, counts, skip, take)
+            if hit is not None:
+                part[hit[:, wanted]] = np.nan
+                over_range += int(np.count_nonzero(hit[:, wanted]))
+            begin += take
+            record += len(rows)
+        return over_range
+
+    def _scale(self, counts: NDArray[Any], wanted: list[int], out: NDArray[np.float64]) -> None:
+        for column, position in enumerate(wanted):
+            channel = self.channels[position]
+            np.multiply(counts[:, position], channel.scale, out=out[:, column])
+            if channel.offset:
+                out[:, column] += channel.offset
+
+    def _over(
+        self, record: int, counts: NDArray[Any], skip: int, take: int
+    ) -> NDArray[np.bool_] | None:
+        """Return which of the samples are over-range, shape (take, channels), or None if none."""
+        slots = self.file.slots
+        near = slice(*np.searchsorted(self._flagged, [record, record + len(counts) // slots]))
+        rows = self._flagged[near] - record
+        if not rows.size:
+            return None
+        low, high = self._limits()
+        framed = counts.reshape(-1, slots, counts.shape[1])[rows]
+        hit = (framed <= low) | (framed >= high)
+        # A flagged frame with no sample at an end of the range: any of them may be the one.
+        hit[~hit.any(axis=(1, 2))] = True
+        marks = np.zeros((len(counts) // slots, slots, counts.shape[1]), bool)
+        marks[rows] = hit
+        return marks.reshape(counts.shape)[skip : skip + take]
+
+    def _limits(self) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+        announced = self.header.announcement
+        low, high = announced.code_limits
+        lows = [low if c.low is None else c.low for c in announced.channels]
+        highs = [high if c.high is None else c.high for c in announced.channels]
+        return np.array(lows), np.array(highs)
+
+    def _count_over_range(self) -> int:
+        total = 0
+        everything = list(range(len(self.channels)))
+        for run in self._runs if self._flagged.size else self._runs[:0]:
+            inside = np.searchsorted(self._flagged, [run["record"], run["record"] + run["records"]])
+            for flagged in self._flagged[slice(*inside)].tolist():
+                start = int(run["index"]) + (flagged - int(run["record"])) * self.file.slots
+                stop = min(start + self.file.slots, self.length)
+                total += self.read(everything, start, stop).over_range
+        return total
+
+
+def _gaps_inside(runs: NDArray[Any], slots: int) -> list[Gap]:
+    ends = runs["index"][:-1] + lengths(runs, slots)[:-1].astype(np.uint64)
+    missing = runs["index"][1:] - ends
+    return [Gap(int(ends[k]), int(missing[k])) for k in np.flatnonzero(missing).tolist()]
+
+
+def open_mfr(path: str | os.PathLike[str]) -> MfrRecording:
+    """Open an .mfr recording; every CRC in it is checked here, once.
+
+    Parameters
+    ----------
+    path : path-like
+        The file.
+
+    Returns
+    -------
+    MfrRecording
+        Ready to be read.
+
+    Raises
+    ------
+    RecordingError
+        If it is no recording, is damaged in its header, or holds no sample.
+    """
+    return MfrRecording(path)

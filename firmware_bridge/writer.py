@@ -1,0 +1,117 @@
+"""Write a recording: append only, in whole records, on the disk twice a second."""
+
+import os
+import time
+from contextlib import suppress
+from pathlib import Path
+
+from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.host_note import HostNote, cut, seal_host_note
+from firmware_bridge.recording_header import Header, encode_header
+
+__all__ = ["SYNC_S", "Writer"]
+
+SYNC_S = 0.5
+"""Longest time [s] that records wait before they are on the disk."""
+
+_BUFFER_BYTES = 1 << 18
+
+
+class Writer:
+    """Append sealed messages to a new recording.
+
+    Parameters
+    ----------
+    path : path-like
+        The file; it must not exist unless ``overwrite``.
+    header : Header
+        What the recording begins with.
+    overwrite : bool
+        Replace an existing file.
+
+    Raises
+    ------
+    BridgeError
+        If the file exists or cannot be made.
+    """
+
+    def __init__(
+        self, path: str | os.PathLike[str], header: Header, *, overwrite: bool = False
+    ) -> None:
+        self.path = Path(path)
+        self.records = 0
+        """Records written so far."""
+        self._record_bytes = header.record_bytes
+        self._buffer = bytearray()
+        self._number = 0
+        self._synced_s = time.monotonic()
+        flags = os.O_WRONLY | os.O_CREAT | (os.O_TRUNC if overwrite else os.O_EXCL)
+        try:
+            self._file = os.open(self.path, flags | getattr(os, "O_BINARY", 0), 0o644)
+        except FileExistsError:
+            raise BridgeError(f"{path} exists; --overwrite replaces it") from None
+        except OSError as error:
+            raise BridgeError(f"{path} cannot be written: {error.strerror}") from None
+        self._write(encode_header(header))
+        self.sync()
+
+    def append(self, message: bytes) -> None:
+        """Append one sealed message, in one record or, where it is longer, in several.
+
+        Raises
+        ------
+        DeviceFailedError
+            If the disk is full or gone; the message says what was kept.
+        """
+        if len(message) > self._record_bytes:
+            for piece in cut(message, self._number, self._record_bytes):
+                self.append(piece)
+            self._number += 1
+            return
+        self._buffer += message.ljust(self._record_bytes, b"\0")
+        self.records += 1
+        if len(self._buffer) >= _BUFFER_BYTES:
+            self.flush()
+
+    def note(self, note: HostNote) -> None:
+        """Append a note of the host."""
+        self.append(seal_host_note(note))
+
+    def flush(self) -> None:
+        """Hand the records to the operating system: they survive the end of this program."""
+        data, self._buffer = self._buffer, bytearray()
+        self._write(data)
+
+    def sync(self, *, if_due: bool = False) -> None:
+        """Have the records on the disk: they survive a power cut.
+
+        Parameters
+        ----------
+        if_due : bool
+            Only if `SYNC_S` have passed since the last time.
+        """
+        now_s = time.monotonic()
+        if if_due and now_s - self._synced_s < SYNC_S:
+            return
+        self.flush()
+        with suppress(OSError):  # a pipe or a file system without fsync keeps what it can
+            os.fsync(self._file)
+        self._synced_s = now_s
+
+    def close(self) -> None:
+        """Flush, sync and close."""
+        try:
+            self.sync()
+        finally:
+            os.close(self._file)
+
+    def _write(self, data: bytes | bytearray) -> None:
+        view = memoryview(data)
+        try:
+            while view:
+                view = view[os.write(self._file, view) :]
+        except OSError as error:
+            raise DeviceFailedError(
+                f"{self.path} cannot be written any further: {error.strerror}; what was written "
+                "before is kept"
+            ) from error

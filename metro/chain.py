@@ -7,18 +7,17 @@ exactly. Everything that predicts, inverts or converts uses this one object.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from metro.elementwise import elementwise
 from metro.errors import MetroError
-from metro.kernel import fringe as kernel
 from metro.kernel.arms import arm_response
 from metro.kernel.strain import strain_exact
 from metro.measured import Measured
 from metro.readout import Readout
-from metro.stages import STAGES, UNITS, Link, Links, bench_links, responsivity
+from metro.stages import STAGES, UNITS, Link, Links, bench_links, stage_si
+from metro.working_point import WorkingPoint, rest
 
 if TYPE_CHECKING:
     from metro.bench import Bench
@@ -31,28 +30,6 @@ MID_FRINGE_RISING_RAD = -0.5 * math.pi
 
 class ChainError(MetroError):
     """A way along the chain that the bench does not determine, or that has no inverse."""
-
-
-@dataclass(frozen=True, slots=True)
-class WorkingPoint:
-    """Where the interferometer rests.
-
-    Parameters
-    ----------
-    phase_rad : float
-        Phase, 0 at this detector's maximum [rad].
-    power_w, current_a, voltage_v : float or None
-        Mean power, photocurrent and voltage; None where unknown.
-    slope_v_rad, slope_v_m : float or None
-        dV/dφ [V/rad] and dV/dx [V/m]; None where unknown.
-    """
-
-    phase_rad: float
-    power_w: float | None
-    current_a: float | None
-    voltage_v: float | None
-    slope_v_rad: float | None
-    slope_v_m: float | None
 
 
 class Chain:
@@ -245,14 +222,14 @@ class Chain:
         str
             Options or places in the bench file.
         """
+        if any(link.gain == 0.0 for link in self.links.known):
+            return "a working point off the fringe's extremes, where the slope is zero"
         first, last = STAGES.index(start), STAGES.index(to)
         stages = STAGES[first : last + 1] if first <= last else STAGES[last : first + 1][::-1]
         reached = max(i for i, s in enumerate(stages) if self.maybe_way(start, s) is not None)
         ends = stages[reached + 1 :] if first <= last else stages[reached:-1]
         wanted = [self.links.missing[s] for s in ends if s in self.links.missing]
-        if wanted:
-            return ", ".join(dict.fromkeys(wanted))
-        return "a working point off the fringe's extremes, where the slope is zero"
+        return ", ".join(dict.fromkeys(wanted))
 
     def gain(self, start: str, to: str, frequency_hz: float = 0.0) -> Measured:
         """Return the linear change at one stage per change at another, with its uncertainty.
@@ -360,38 +337,7 @@ class Chain:
         WorkingPoint
             None for what the bench does not determine.
         """
-        cosine = math.cos(self.working_phase_rad)
-        amps_per_watt = responsivity(self.bench)
-        transimpedance = self._maybe("photodiode.transimpedance")
-        dark = self.bench.magnitude("photodiode.dark", 0.0)
-        low, high = self._maybe("fringe.low"), self._maybe("fringe.high")
-        power = self._maybe("laser.power")
-        voltage = None
-        if low is not None and high is not None:
-            voltage = kernel.voltage_of_cosine(cosine, low, high)
-            if amps_per_watt and transimpedance:
-                power = (0.5 * (low + high) - dark) / (transimpedance * amps_per_watt)
-        if power is not None:
-            power *= 1.0 + self.bench.magnitude("arms.contrast", 1.0) * cosine
-        current = power * amps_per_watt if power is not None and amps_per_watt else None
-        if voltage is None and current is not None and transimpedance:
-            voltage = current * transimpedance + dark
-        return WorkingPoint(
-            self.working_phase_rad,
-            power,
-            current,
-            voltage,
-            self._maybe_gain("phase", "voltage"),
-            self._maybe_gain("displacement", "voltage"),
-        )
-
-    def _maybe(self, key: str) -> float | None:
-        value = self.bench.get(key)
-        return None if value is None else float(value.magnitude)
-
-    def _maybe_gain(self, start: str, to: str) -> float | None:
-        known = self.maybe_way(start, to) is not None
-        return float(self.convert(1.0, start, to)) if known else None
+        return rest(self)
 
     def _pass_exactly(self, value: Any, link: Link, with_it: bool) -> Any:  # noqa: ANN401  # floats and arrays alike
         if link.law == "length":
@@ -419,36 +365,6 @@ def _fringe_change(value: Any, half_height: float, phase_rad: float, with_it: bo
     if with_it:
         return half_height * signal_changes(value, phase_rad)
     return phase_changes(value / half_height, phase_rad)
-
-
-def stage_si(stage: str, value: Quantity | float | str) -> Any:  # noqa: ANN401  # float or ndarray
-    """Return the plain number of a value given for a stage.
-
-    Parameters
-    ----------
-    stage : str
-        Name of the stage.
-    value : Quantity, float or str
-        As people give it; bare only for strain, fringes and counts.
-
-    Returns
-    -------
-    float or ndarray
-        In the stage's unit of :data:`metro.stages.UNITS`.
-
-    Raises
-    ------
-    MetroError
-        If the dimension is another or the value not finite.
-    """
-    from metro.units import si
-
-    special = {"fringes": "fringe", "counts": "count"}.get(stage)
-    if special is not None and not getattr(value, "dimensionless", False):
-        return si(value, stage, special)
-    if stage == "fringes" and str(getattr(value, "units", "")) in {"fringe", "radian", "degree"}:
-        return si(value, stage, "fringe")
-    return si(value, stage, UNITS[stage])
 
 
 def _ratio_unit(above: str, below: str) -> str:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from metro.bench_keys import OPTIONS
 from metro.kernel import fringe, photodiode
@@ -13,8 +13,18 @@ if TYPE_CHECKING:
     from collections.abc import Callable
 
     from metro.bench import Bench
+    from metro.units import Quantity
 
-__all__ = ["STAGES", "UNITS", "Link", "Links", "bench_links", "responsivity", "ways_to_give"]
+__all__ = [
+    "STAGES",
+    "UNITS",
+    "Link",
+    "Links",
+    "bench_links",
+    "responsivity",
+    "stage_si",
+    "ways_to_give",
+]
 
 UNITS = {
     "strain": "1",
@@ -77,6 +87,36 @@ class Links:
     known: tuple[Link, ...]
     missing: dict[str, str]
     remarks: tuple[str, ...]
+
+
+def stage_si(stage: str, value: Quantity | float | str) -> Any:  # noqa: ANN401  # float or ndarray
+    """Return the plain number of a value given for a stage.
+
+    Parameters
+    ----------
+    stage : str
+        Name of the stage.
+    value : Quantity, float or str
+        As people give it; bare only for strain, fringes and counts.
+
+    Returns
+    -------
+    float or ndarray
+        In the stage's unit of :data:`UNITS`.
+
+    Raises
+    ------
+    MetroError
+        If the dimension is another or the value not finite.
+    """
+    from metro.units import si
+
+    special = {"fringes": "fringe", "counts": "count"}.get(stage)
+    if special is not None and not getattr(value, "dimensionless", False):
+        return si(value, stage, special)
+    if stage == "fringes" and str(getattr(value, "units", "")) in {"fringe", "radian", "degree"}:
+        return si(value, stage, "fringe")
+    return si(value, stage, UNITS[stage])
 
 
 def ways_to_give(*keys: str) -> str:
@@ -191,11 +231,9 @@ def _fringes_link(_bench: Bench, _phase: float) -> Link | str:
 def _power_link(bench: Bench, phase: float) -> Link | str:
     if bench.get("laser.power") is None:
         return ways_to_give("laser.power")
-    contrast = bench.magnitude("arms.contrast", 1.0)
-    gain = -bench.magnitude("laser.power") * contrast * math.sin(phase)
-    return Link(
-        "phase", "power", gain, _effects(bench, laser__power=1.0, arms__contrast=1.0), "fringe"
-    )
+    half = bench.magnitude("laser.power") * bench.magnitude("arms.contrast", 1.0)
+    effects = _effects(bench, laser__power=1.0, arms__contrast=1.0)
+    return _fringe_link("power", half, effects, phase)
 
 
 def responsivity(bench: Bench) -> float | None:

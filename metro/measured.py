@@ -39,8 +39,8 @@ class Measured:
     def __init__(
         self, value: "Quantity", u: "Quantity | None" = None, dof: float = math.inf
     ) -> None:
-        unit, factor, offset = _si_unit(value)
-        self._magnitude: Any = value.magnitude * factor + offset
+        unit, multiplier, divisor, offset = _si_unit(value)
+        self._magnitude: Any = value.magnitude * multiplier / divisor + offset
         self._unit = unit
         self._u: Any = None if u is None else _difference(u, unit)
         self.dof = dof
@@ -225,18 +225,20 @@ def _coverage_factor(p: float, dof: float) -> float:
     return t_quantile(p, dof)
 
 
-def _si_unit(value: "Quantity") -> tuple[str, float, float]:
+def _si_unit(value: "Quantity") -> tuple[str, float, float, float]:
     from metro.si_form import si_form
+    from metro.units import multiplier_and_divisor
 
-    return si_form(value.units)
+    unit, factor, offset = si_form(value.units)
+    return unit, *multiplier_and_divisor(factor), offset
 
 
 def _difference(u: "Quantity", unit: str) -> Any:  # noqa: ANN401  # float or ndarray
     from metro.units import si
 
-    own, factor, _ = _si_unit(u)
+    own, multiplier, divisor, _ = _si_unit(u)
     if own == unit:
-        return u.magnitude * factor
+        return u.magnitude * multiplier / divisor
     return si(u, "u", unit, difference=True)
 
 

@@ -251,10 +251,26 @@ def _factor(unit: Any, wanted: str) -> float | None:  # noqa: ANN401  # pint's U
 
 @cache
 def _scale(unit: Any, wanted: str) -> tuple[float, float] | None:  # noqa: ANN401  # pint's Unit is generic
-    """Return multiplier and divisor to ``wanted``: 632.8/1e9 is the nearest float, 632.8·1e-9 not."""
     factor = _factor(unit, wanted)
-    if factor is None or factor == 0 or factor >= 1:
-        return None if factor is None else (factor, 1.0)
+    return None if factor is None else multiplier_and_divisor(factor)
+
+
+def multiplier_and_divisor(factor: float) -> tuple[float, float]:
+    """Return a factor as ``multiplier / divisor`` such that decimal prefixes lose no digit.
+
+    Parameters
+    ----------
+    factor : float
+        Such as 1e-9, which no float is: ``632.8 / 1e9`` is the float nearest to 6.328e-7, while
+        ``632.8 * 1e-9`` is its neighbour.
+
+    Returns
+    -------
+    tuple of (float, float)
+        Multiplier and divisor, one of them 1.
+    """
+    if not 0 < factor < 1:
+        return factor, 1.0
     divisor = float(round(1 / factor))
     # Powers of ten are exact floats up to 1e22; a factor whose inverse is none stays as it is.
     if divisor <= 1e22 and abs(factor * divisor - 1) < 1e-15:

@@ -84,8 +84,16 @@ def t_two_sided(t: float, dof: float) -> float:
     if dof > _NORMAL_DOF:
         return math.erf(t / math.sqrt(2.0))
     square = t * t
-    # 1 − I_{dof/(dof+t²)}(dof/2, 1/2) written so that small t loses no digits
     return incomplete_beta(square / (dof + square), 0.5, 0.5 * dof)
+
+
+def _lies_below(t: float, p: float, dof: float) -> bool:
+    """Whether less than p lies within ±t; beyond t² = dof judged by the tail, which keeps digits."""
+    if dof > _NORMAL_DOF:
+        return math.erfc(t / math.sqrt(2.0)) > 1.0 - p
+    if t * t < dof:
+        return t_two_sided(t, dof) < p
+    return incomplete_beta(dof / (dof + t * t), 0.5 * dof, 0.5) > 1.0 - p
 
 
 def t_quantile(p_two_sided: float, dof: float) -> float:
@@ -114,16 +122,16 @@ def t_quantile(p_two_sided: float, dof: float) -> float:
         raise ValueError("dof must be > 0, got " + repr(dof))
     low = 0.0
     high = 1.0
-    while t_two_sided(high, dof) < p_two_sided:
+    while _lies_below(high, p_two_sided, dof):
         low = high
         high *= 2.0
-        if high > 1e300:
+        if high > 1e150:  # its square must stay a float
             return math.inf
     for _ in range(200):
         middle = 0.5 * (low + high)
         if middle in (low, high):
             break
-        if t_two_sided(middle, dof) < p_two_sided:
+        if _lies_below(middle, p_two_sided, dof):
             low = middle
         else:
             high = middle

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from firmware_bridge.frame import encode_frame as encode_frame
     from firmware_bridge.frame import encode_stream as encode_stream
     from firmware_bridge.message import Note as Note
+    from firmware_bridge.opening import open_recording as open_recording
     from firmware_bridge.trace import Gap as Gap
     from firmware_bridge.trace import Recording as Recording
     from firmware_bridge.trace import Trace as Trace
@@ -37,6 +38,7 @@ _HOMES = {
     "encode_announcement": "firmware_bridge.announcement",
     "encode_frame": "firmware_bridge.frame",
     "encode_stream": "firmware_bridge.frame",
+    "open_recording": "firmware_bridge.opening",
 }
 
 __all__ = [
@@ -54,6 +56,7 @@ __all__ = [
     "encode_announcement",
     "encode_frame",
     "encode_stream",
+    "open_recording",
 ]
 
 

@@ -1,0 +1,137 @@
+"""Names and units of columns, as the headers of recordings write them."""
+
+import re
+from functools import cache
+
+from metro.errors import MetroError
+
+__all__ = ["is_unit_word", "si_unit", "split_header", "time_unit_s"]
+
+# Words that instruments and sketches print, beside what the unit registry reads.
+_SYNONYMS = {
+    "V": "volt volts",
+    "mV": "millivolt millivolts",
+    "uV": "microvolt microvolts",
+    "A": "ampere amperes amp amps",
+    "W": "watt watts",
+    "s": "second seconds sec secs sekunde sekunden",
+    "ms": "millisecond milliseconds msec millis",
+    "us": "microsecond microseconds usec micros",
+    "ns": "nanosecond nanoseconds nsec",
+    "min": "minute minutes",
+    "h": "hour hours",
+    "Hz": "hertz",
+    "ohm": "ohms",
+    "deg": "degrees",
+    "m": "metres meters",
+    "count": "counts lsb lsbs",
+    "1": "- -- 1 none a.u. arb",
+}
+_WORDS = {word: unit for unit, words in _SYNONYMS.items() for word in words.split()} | {"": "1"}
+_TIME_UNITS_S = {"s": 1.0, "ms": 1e-3, "us": 1e-6, "ns": 1e-9, "min": 60.0, "h": 3600.0}
+_TIME_NAME = re.compile(
+    r"(?:rel(?:ative)?|abs(?:olute)?|elapsed|unix|board|host|sample)?[ _-]*"
+    r"(?:t|times?|time[ _-]?stamps?|zeit|temps|tiempo|tempo|clock|seconds?|secs?|millis|micros"
+    r"|milliseconds?|microseconds?|elapsed)(?:[ _-]+(?P<unit>s|secs?|ms|msec|us|µs|ns|min|h|seconds?"
+    r"|millis|micros|milliseconds?|microseconds?))?",
+    re.IGNORECASE,
+)
+_WITH_UNIT = re.compile(
+    r"(?P<name>.*?)\s*(?:\[(?P<a>[^\]]*)\]|\((?P<b>[^()]*)\)|\s/\s*(?P<c>\S+)|/(?P<d>[^\s/]+)"
+    r"|\s+in\s+(?P<e>\S+))\s*"
+)
+
+
+def split_header(header: str) -> tuple[str, str]:
+    """Return name and unit of a header such as ``photodiode [V]`` or ``Time (ms)``.
+
+    Parameters
+    ----------
+    header : str
+        One field of a header line.
+
+    Returns
+    -------
+    tuple of (str, str)
+        The name, and the word for the unit (empty where there is none).
+    """
+    match = _WITH_UNIT.fullmatch(header)
+    if match and match["name"] and not is_unit_word(header):
+        word = next((part for part in match.group("a", "b", "c", "d", "e") if part is not None), "")
+        if is_unit_word(word):
+            return match["name"].strip(), word.strip()
+    return header.strip(), ""
+
+
+def is_unit_word(word: str) -> bool:
+    """Tell whether a word is a unit that the program knows.
+
+    Parameters
+    ----------
+    word : str
+        Such as ``"Volt"``, ``"mV"``, ``"-"``.
+
+    Returns
+    -------
+    bool
+        True for a known unit, also for a mark of no unit.
+    """
+    return si_unit(word) is not None
+
+
+@cache
+def si_unit(word: str) -> tuple[str, float, float] | None:
+    """Return the SI unit that a word stands for, and what brings a magnitude there.
+
+    Parameters
+    ----------
+    word : str
+        Such as ``"Volt"`` or ``"mV"``.
+
+    Returns
+    -------
+    tuple of (str, float, float), or None
+        Unit, factor and offset, ``magnitude * factor + offset`` in that unit; None where the word
+        is no known unit.
+    """
+    bare = word.strip().strip("[]()").strip()
+    spelled = _WORDS.get(bare.lower(), bare)
+    if spelled in {"1", "count"}:
+        return "1", 1.0, 0.0
+    if len(spelled) > 40 or not re.match(r"[^\W\d_]|[%°‰√/1]", spelled):
+        return None
+    from metro.si_form import si_form
+    from metro.units import parse_quantity
+
+    try:
+        return si_form(parse_quantity(f"1 {spelled}").units)
+    except MetroError:
+        return None
+
+
+def time_unit_s(name: str, word: str) -> tuple[float, bool] | None:
+    """Return the unit of a time column.
+
+    Parameters
+    ----------
+    name : str
+        The column's name.
+    word : str
+        The word for its unit, empty where there is none.
+
+    Returns
+    -------
+    tuple of (float, bool), or None
+        The unit in seconds and whether it was stated (else seconds are assumed); None where
+        neither name nor unit is one of time.
+    """
+    if word.strip(" -[]()"):
+        found = si_unit(word)
+        return (found[1], True) if found and found[0] == "s" else None
+    match = _TIME_NAME.fullmatch(name.strip())
+    if match is None:
+        return None
+    stated = match["unit"] or re.sub(r"^.*[ _-]", "", name.strip())
+    spelled = _WORDS.get(stated.lower(), stated.lower().replace("µ", "u"))
+    unit_s = _TIME_UNITS_S.get(spelled)
+    return (unit_s or 1.0, unit_s is not None)

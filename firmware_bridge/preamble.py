@@ -1,0 +1,54 @@
+"""What the lines before the data say: the sampling rate that an instrument writes there."""
+
+import re
+from collections.abc import Sequence
+
+from firmware_bridge.column_name import si_unit
+
+__all__ = ["maybe_stated_rate_hz"]
+
+_VALUE = (
+    r"[^\d\n]*?[\s,;:=\t\"]+(?P<value>[+-]?[\d.]+(?:[eE][+-]?\d+)?)[\s,;\"]*(?P<unit>[^\W\d_]*)"
+)
+_INTERVAL = re.compile(
+    r"(?:sampl\w*[ _-]*(?:interval|period|time)|x[ _-]?incr\w*|delta[ _-]?[tx]|\bd[tx])\b" + _VALUE,
+    re.IGNORECASE,
+)
+_RATE = re.compile(
+    r"(?:sampl\w*[ _-]*(?:rate|freq\w*)|\brate|\bfs|\brate_hz)\b" + _VALUE, re.IGNORECASE
+)
+
+
+def maybe_stated_rate_hz(preamble: Sequence[str]) -> float | None:
+    """Return the sampling rate that the lines before the data state.
+
+    Parameters
+    ----------
+    preamble : sequence of str
+        The lines before the data.
+
+    Returns
+    -------
+    float or None
+        Samples per second; None where no line states a rate or a sampling interval.
+    """
+    for line in preamble:
+        rate = _RATE.search(line)
+        if rate and (value := _in_unit(rate, "Hz")):
+            return value
+        interval = _INTERVAL.search(line)
+        if interval and (value := _in_unit(interval, "s")):
+            return 1.0 / value
+    return None
+
+
+def _in_unit(match: re.Match[str], unit: str) -> float | None:
+    """Return the positive value of a match in a unit, None where it has another dimension."""
+    try:
+        value = float(match["value"])
+    except ValueError:
+        return None
+    found = si_unit(match["unit"]) if match["unit"] else (unit, 1.0, 0.0)
+    if found is None or found[0] != unit or not 0 < value * found[1] < float("inf"):
+        return None
+    return value * found[1]

@@ -1,0 +1,241 @@
+"""Options that commands share to read a recording: columns, rate, and the stretch of time.
+
+Use it on any command that takes a recording::
+
+    @command(example="midfringe lines scope.csv --channel 3 --drive 2 --line 1kHz")
+    @click.argument("file")
+    @recording_options
+    def lines(file: str, reading: Reading, ...) -> None:
+        recording = reading.open(file)
+        signal = reading.signal(recording)  # Trace of --channel, from --from to --to
+        drive = reading.drive(recording)  # Trace of --drive, or None
+        ...
+        reading.tell(recording)  # its remarks on stderr, once nothing can be refused any more
+"""
+
+import functools
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from firmware_bridge.trace import ChannelError
+from metro.options import ValueType, is_quiet
+
+if TYPE_CHECKING:
+    from firmware_bridge.trace import Recording, Trace
+
+__all__ = ["Reading", "recording_options"]
+
+F = TypeVar("F", bound=Callable[..., Any])
+
+_USUAL = ("photodiode", "pd", "signal")  # what --channel means where it is not given
+
+_OPTIONS: dict[str, tuple[tuple[str, ...], dict[str, Any]]] = {
+    "time": (
+        ("--time", "time"),
+        {"metavar": "COLUMN", "help": "The time column, by header or number from 1."},
+    ),
+    "channel": (
+        ("--channel", "channel"),
+        {"metavar": "COLUMN", "help": "The photodiode's column; name:3 is the header '3'."},
+    ),
+    "drive": (
+        ("--drive", "drive_channel"),
+        {"metavar": "COLUMN", "help": "The column of the drive monitor."},
+    ),
+    "rate": (
+        ("--rate", "rate_hz"),
+        {
+            "metavar": "VALUE",
+            "type": ValueType("Hz", above=0.0),
+            "help": "Samples per second, where there is no time column. Such as 4kHz.",
+        },
+    ),
+    "from": (
+        ("--from", "from_s"),
+        {
+            "metavar": "VALUE",
+            "type": ValueType("s"),
+            "help": "Begin here, counted from the first sample.",
+        },
+    ),
+    "to": (
+        ("--to", "to_s"),
+        {
+            "metavar": "VALUE",
+            "type": ValueType("s"),
+            "help": "End here, counted from the first sample.",
+        },
+    ),
+    "own-time": (
+        ("--own-time", "own_time"),
+        {"is_flag": True, "help": "--from and --to are the file's own time stamps."},
+    ),
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """How a recording is to be read: the values of the options.
+
+    Parameters
+    ----------
+    time, channel, drive_channel : str, optional
+        Columns, by header or number.
+    rate_hz : float, optional
+        Samples per second [Hz].
+    from_s, to_s : float, optional
+        The stretch [s].
+    own_time : bool
+        Whether the stretch is in the file's own stamps.
+    """
+
+    time: str | None = None
+    channel: str | None = None
+    drive_channel: str | None = None
+    rate_hz: float | None = None
+    from_s: float | None = None
+    to_s: float | None = None
+    own_time: bool = False
+
+    def open(self, path: str) -> "Recording":
+        """Open a recording as the options say.
+
+        Parameters
+        ----------
+        path : str
+            The file, "-" for standard input.
+
+        Returns
+        -------
+        Recording
+            Opened.
+
+        Raises
+        ------
+        BridgeError
+            As :func:`firmware_bridge.open_recording`.
+        """
+        from firmware_bridge.opening import open_recording
+        from metro.units import quantity
+
+        rate = None if self.rate_hz is None else quantity(self.rate_hz, "Hz")
+        return open_recording(path, time=self.time, rate=rate, own_time=self.own_time)
+
+    def channel_name(self, recording: "Recording") -> str:
+        """Return the channel that is meant: the one given, the only one, or the photodiode.
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+
+        Returns
+        -------
+        str
+            A name for `Recording.find`.
+
+        Raises
+        ------
+        ChannelError
+            If none was given and it is not clear.
+        """
+        if self.channel is not None:
+            return self.channel
+        names = [channel.name for channel in recording.channels]
+        if len(names) == 1:
+            return str(recording.columns[0])
+        usual = [k for k, name in enumerate(names) if name.lower() in _USUAL]
+        if len(usual) == 1:
+            return str(recording.columns[usual[0]])
+        listed = ", ".join(f"{k} {n!r}" for k, n in zip(recording.columns, names, strict=True))
+        raise ChannelError(f"{recording.path} has several channels; give --channel: {listed}")
+
+    def signal(self, recording: "Recording") -> "Trace":
+        """Return the photodiode's trace over the stretch asked for.
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+
+        Returns
+        -------
+        Trace
+            NaN where missing or over-range.
+
+        Raises
+        ------
+        BridgeError
+            If there is no such channel or no sample in the stretch.
+        """
+        return recording.trace(self.channel_name(recording), self.from_s, self.to_s)
+
+    def drive(self, recording: "Recording") -> "Trace | None":
+        """Return the drive monitor's trace over the same stretch.
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+
+        Returns
+        -------
+        Trace or None
+            None where no drive was named.
+
+        Raises
+        ------
+        BridgeError
+            If there is no such channel.
+        """
+        if self.drive_channel is None:
+            return None
+        return recording.trace(self.drive_channel, self.from_s, self.to_s)
+
+    def tell(self, recording: "Recording") -> None:
+        """Write the remarks of a recording on standard error, unless ``--quiet``.
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+        """
+        if not is_quiet():
+            for remark in recording.remarks:
+                click.echo(f"{recording.path}: {remark}", err=True)
+
+
+def recording_options(
+    function: F | None = None,
+    *,
+    omit: tuple[str, ...] = (),
+) -> Any:  # noqa: ANN401  # the function itself, or the decorator
+    """Add ``--time --channel --drive --rate --from --to --own-time``; pass them as ``reading``.
+
+    Parameters
+    ----------
+    function : callable
+        Takes ``reading``, a `Reading`.
+    omit : tuple of str
+        Options that the command does not have, such as ``("drive",)``.
+
+    Returns
+    -------
+    callable
+        Takes the options instead. Also used as ``@recording_options(omit=("drive",))``.
+    """
+    if function is None:
+        return functools.partial(recording_options, omit=omit)
+    chosen = {key: value for key, value in _OPTIONS.items() if key not in omit}
+
+    @functools.wraps(function)
+    def with_reading(*args: Any, **kwargs: Any) -> Any:  # noqa: ANN401  # any command
+        given = {names[1]: kwargs.pop(names[1]) for names, _ in chosen.values()}
+        return function(*args, reading=Reading(**given), **kwargs)
+
+    for names, settings in reversed(chosen.values()):
+        with_reading = click.option(*names, **settings)(with_reading)
+    return with_reading

@@ -1,0 +1,248 @@
+"""Printed time stamps to a regular grid: rate, places of the samples, gaps."""
+
+import math
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from firmware_bridge.errors import BridgeError
+from firmware_bridge.steady_rate import (
+    fit_step,
+    is_steady,
+    maybe_single_step_s,
+    pleasing_rate_hz,
+)
+from firmware_bridge.trace import Gap
+
+__all__ = ["Grid", "StampsError", "fit_grid"]
+
+_LAG_ROWS = 64  # rows within which a late stamp must have caught up
+_SHORT_GAP = 3  # steps: over longer gaps the grid is not taken to hold
+_LONGEST = 2_000_000_000  # samples: a grid longer than that comes of a wrong stamp
+
+
+class StampsError(BridgeError):
+    """Time stamps that tell no rate."""
+
+
+@dataclass(eq=False)
+class Grid:
+    """Where the rows of a table lie on a regular grid.
+
+    Attributes
+    ----------
+    rate_hz, rate_u_hz : float
+        Samples per second of the clock that made the stamps, and its standard uncertainty from
+        their scatter and rounding; how wrong that clock is the stamps cannot tell.
+    rows : ndarray, shape (n,)
+        The rows used, in order.
+    index : ndarray, shape (n,)
+        The place of each on the grid, from 0, strictly increasing.
+    start_s : float
+        The stamp of the first sample.
+    gaps : list of Gap
+        Samples that the stamps tell of and the table does not hold.
+    remarks : list of str
+        What is odd about the stamps.
+    """
+
+    rate_hz: float
+    rate_u_hz: float
+    rows: NDArray[np.int64]
+    index: NDArray[np.int64]
+    start_s: float
+    gaps: list[Gap] = field(default_factory=list)
+    remarks: list[str] = field(default_factory=list)
+
+
+def fit_grid(stamps_s: NDArray[np.float64], resolution_s: float, name: str) -> Grid:
+    """Find the regular grid on which the stamps of a recording lie.
+
+    Parameters
+    ----------
+    stamps_s : ndarray, shape (n,)
+        Time stamps [s]; rows without a finite stamp are left out.
+    resolution_s : float
+        The last printed digit [s], 0 if not rounded.
+    name : str
+        The recording, for messages.
+
+    Returns
+    -------
+    Grid
+        The rate, the place of each row, and the gaps.
+
+    Raises
+    ------
+    StampsError
+        If fewer than two stamps increase, or they span no plausible grid.
+    """
+    remarks: list[str] = []
+    rows = _usable_rows(stamps_s, remarks)
+    stamps = stamps_s[rows]
+    if rows.size < 2 or stamps[-1] <= stamps[0]:
+        raise StampsError(f"{name}: the time column must increase over at least two samples")
+    if not 1e-15 < (stamps[-1] - stamps[0]) / rows.size < 1e15:
+        raise StampsError(f"{name}: the time stamps must be between 1e-15 s and 1e15 s apart")
+    # Rounding in the computer limits stamps too, such as seconds since 1970 with decimals.
+    resolution_s = max(resolution_s, float(np.spacing(np.abs(stamps).max())))
+    index, kept = _places(stamps, resolution_s, name, remarks)
+    rows, stamps, index = rows[kept], stamps[kept], index[kept]
+    return _grid(rows, stamps, index, resolution_s, remarks)
+
+
+def _usable_rows(stamps_s: NDArray[np.float64], remarks: list[str]) -> NDArray[np.int64]:
+    """Return the rows with a stamp, without stray stamps, up to where the clock starts anew."""
+    rows = np.flatnonzero(np.isfinite(stamps_s))
+    if rows.size < stamps_s.size:
+        count = stamps_s.size - rows.size
+        remarks.append(
+            f"{count} of {stamps_s.size} rows have no readable time stamp and are left out"
+        )
+    stamps = stamps_s[rows]
+    stray = _strays(stamps)
+    if stray.any():
+        first = rows[np.argmax(stray)] + 1
+        remarks.append(
+            f"{np.count_nonzero(stray)} rows with a stray time stamp are left out (first: row {first})"
+        )
+        rows, stamps = rows[~stray], stamps[~stray]
+    backwards = np.flatnonzero(np.diff(stamps) < 0)
+    if backwards.size:
+        row = int(backwards[0]) + 1
+        remarks.append(
+            f"the time stamps go back at row {rows[row] + 1}: the {row} rows before it are read, "
+            f"the {rows.size - row} from there on are not"
+        )
+        rows = rows[:row]
+    return rows
+
+
+def _strays(stamps: NDArray[np.float64]) -> NDArray[np.bool_]:
+    """Return which stamps alone break the order of their neighbours."""
+    before = np.concatenate(([-np.inf], stamps[:-1]))
+    after = np.concatenate((stamps[1:], [np.inf]))
+    ordered = before <= after
+    stray = ordered & ((stamps > after) | (stamps < before))
+    # Of two neighbours that break the order between them, the earlier one is the stray.
+    stray[1:] &= ~stray[:-1]
+    return np.asarray(stray)
+
+
+def _places(
+    stamps: NDArray[np.float64], resolution_s: float, name: str, remarks: list[str]
+) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
+    """Return the place of each stamp on the grid, and which rows are kept."""
+    rows = np.arange(stamps.size)
+    everything = np.ones(stamps.size, dtype=bool)
+    if is_steady(stamps, rows, resolution_s):
+        return rows, everything
+    steps = np.diff(stamps)
+    step_s = maybe_single_step_s(steps, resolution_s)
+    if step_s is None:
+        return _places_by_breaks(stamps, steps, resolution_s, name, remarks), everything
+    counts = np.rint(steps / step_s)
+    step_s = fit_step(stamps, _cumulated(counts, name), 0.0, counts > _SHORT_GAP).step_s
+    return _without_lags(_cumulated(np.rint(steps / step_s), name), step_s, remarks)
+
+
+def _cumulated(counts: NDArray[np.float64], name: str) -> NDArray[np.int64]:
+    if counts.sum() > _LONGEST:
+        at = int(np.argmax(counts)) + 1
+        raise StampsError(
+            f"{name}: the time stamps leave {counts.max():.3g} samples missing after row {at}; a "
+            f"recording may span at most {_LONGEST:.0e} samples"
+        )
+    return np.concatenate(([0], np.cumsum(counts))).astype(np.int64)
+
+
+def _without_lags(
+    index: NDArray[np.int64], step_s: float, remarks: list[str]
+) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
+    """Move late stamps back to where their samples were taken, and drop samples sent twice.
+
+    A stamp may be late but never early: what is missing so far is the least of what the stamps
+    soon after say. What is then still in one place with another sample is a duplicate.
+    """
+    everything = np.ones(index.size, dtype=bool)
+    if (np.diff(index) > 0).all():
+        return index, everything
+    missing = index - np.arange(index.size)
+    ahead = np.concatenate((missing, np.repeat(missing[-1], _LAG_ROWS)))
+    windows = np.lib.stride_tricks.sliding_window_view(ahead, _LAG_ROWS + 1)
+    placed = np.asarray(windows.min(axis=1)) + np.arange(index.size)
+    late = int(np.count_nonzero(placed != index))
+    if late:
+        worst = float((index - placed).max()) * step_s
+        remarks.append(
+            f"{late} time stamps are late, by up to {worst:.3g} s; the samples are put back"
+        )
+    kept = np.concatenate(([True], placed[1:] > np.maximum.accumulate(placed)[:-1]))
+    if not kept.all():
+        remarks.append(f"{np.count_nonzero(~kept)} rows repeat a time stamp and are left out")
+    return placed, kept
+
+
+def _places_by_breaks(
+    stamps: NDArray[np.float64],
+    steps: NDArray[np.float64],
+    resolution_s: float,
+    name: str,
+    remarks: list[str],
+) -> NDArray[np.int64]:
+    """Return places where stamps are too coarse or too uneven to tell single missing samples."""
+    usual = float(np.percentile(steps, 99))
+    broken = steps > max(2.5 * usual, 2.5 * resolution_s)
+    rows = np.arange(stamps.size)
+    step_s = fit_step(stamps, rows, resolution_s, broken).step_s
+    counts = np.where(broken, np.maximum(np.rint(steps / step_s), 1), 1)
+    spread = f"from {steps.min():.3g} s to {steps[~broken].max():.3g} s apart"
+    if resolution_s > 0.25 * step_s:
+        remarks.append(
+            f"the time stamps are rounded to {resolution_s:.3g} s, {resolution_s / step_s:.3g} samples: "
+            "shorter gaps cannot be seen"
+        )
+    else:
+        remarks.append(
+            f"the time stamps are irregular ({spread}): the samples are taken as evenly spaced at "
+            "the mean rate, and gaps of a few samples cannot be told from late stamps"
+        )
+    return _cumulated(counts, name)
+
+
+def _grid(
+    rows: NDArray[np.int64],
+    stamps: NDArray[np.float64],
+    index: NDArray[np.int64],
+    resolution_s: float,
+    remarks: list[str],
+) -> Grid:
+    steps = np.diff(index)
+    fit = fit_step(stamps, index, resolution_s, steps > _SHORT_GAP)
+    if fit.scatter_s > 0.2 * fit.step_s and fit.scatter_s > resolution_s:
+        remarks.append(
+            f"the time stamps scatter by {fit.scatter_s:.3g} s (rms) about a steady rate, "
+            f"{fit.scatter_s / fit.step_s:.2g} of a sample"
+        )
+    rate_hz = pleasing_rate_hz(fit, stamps, index)
+    # A long pause need not be a whole number of samples: what is left over is uncertain too.
+    excess = np.abs(np.diff(stamps) / fit.step_s - steps)
+    scatter = np.maximum(excess, max(fit.scatter_s, resolution_s / math.sqrt(12)) / fit.step_s)
+    gaps = _gaps(index, scatter, fit.step_u_s / fit.step_s)
+    rate_u_hz = fit.step_u_s * rate_hz**2
+    return Grid(rate_hz, rate_u_hz, rows, index - index[0], float(stamps[0]), gaps, remarks)
+
+
+def _gaps(index: NDArray[np.int64], scatter: NDArray[np.float64], step_u: float) -> list[Gap]:
+    """Return the gaps; the length is uncertain by the stamps' scatter and by the rate."""
+    before = np.flatnonzero(np.diff(index) > 1)
+    first = index[before] + 1 - index[0]
+    lengths = index[before + 1] - index[before] - 1
+    uncertain = np.hypot(scatter[before], lengths * step_u)
+    return [
+        Gap(start, length, exact=False, length_u=u)
+        for start, length, u in zip(
+            first.tolist(), lengths.tolist(), uncertain.tolist(), strict=True
+        )
+    ]

@@ -1,0 +1,206 @@
+"""The steady rate behind time stamps: step, its uncertainty, and a rate people would write."""
+
+import math
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+__all__ = [
+    "StepFit",
+    "fit_step",
+    "is_steady",
+    "maybe_single_step_s",
+    "pleasing_rate_hz",
+]
+
+_BLOCKS = 32
+_SMALLEST_BLOCK = 8  # rows
+_WHOLE = 0.2  # steps: how far a multiple of the step may be from a whole number
+_LONG = 20  # steps: longer ones are gaps and tell nothing about the step
+_SLACK = 1.05  # of the last printed digit: rounding is at most half a digit on each side
+
+
+@dataclass(frozen=True, slots=True)
+class StepFit:
+    """A straight line through stamps over their places.
+
+    Attributes
+    ----------
+    step_s, step_u_s : float
+        Time between samples and its standard uncertainty [s].
+    scatter_s, worst_s : float
+        Rms and largest distance of the stamps from the line [s].
+    is_rounding : bool
+        True where the rounding of the stamps explains their scatter.
+    """
+
+    step_s: float
+    step_u_s: float
+    scatter_s: float
+    worst_s: float
+    is_rounding: bool
+
+
+def fit_step(
+    stamps: NDArray[np.float64],
+    index: NDArray[np.int64],
+    resolution_s: float,
+    broken: NDArray[np.bool_] | None = None,
+) -> StepFit:
+    """Fit straight lines of one slope to stamps over their places on the grid.
+
+    Parameters
+    ----------
+    stamps : ndarray, shape (n,)
+        Time stamps [s].
+    index : ndarray, shape (n,)
+        Their places.
+    resolution_s : float
+        The last printed digit [s].
+    broken : ndarray of bool, shape (n - 1,), optional
+        Where a step parts two pieces, each with a line of its own: a long gap need not be a whole
+        number of samples.
+
+    Returns
+    -------
+    StepFit
+        By least squares. The uncertainty grows with how slowly the stamps wander (the scatter of
+        block means against that of single stamps); where rounding is all there is, it is that of
+        two rounded end points (rectangular, GUM 4.3.7), since the rounding errors of a regular
+        grid are not independent.
+    """
+    starts = np.concatenate(([0], [] if broken is None else np.flatnonzero(broken) + 1)).astype(int)
+    places, times = _centred(index, starts), _centred(stamps - stamps[0], starts)
+    square = float(places @ places)
+    if square == 0:  # single samples only
+        return StepFit(float(np.median(np.diff(stamps))), math.inf, 0.0, 0.0, False)
+    step = float(places @ times) / square
+    residual = times - step * places
+    scatter = math.sqrt(float(residual @ residual) / max(1, stamps.size - 2))
+    worst = float(np.abs(residual).max())
+    rounded_u = resolution_s / math.sqrt(6) / float(index[-1] - index[0])
+    u = max(scatter * _wander(residual) / math.sqrt(square), rounded_u)
+    return StepFit(step, u, scatter, worst, worst <= _SLACK * resolution_s)
+
+
+def _centred(values: NDArray[Any], starts: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Return values less the mean of their piece."""
+    sizes = np.diff(np.concatenate((starts, [values.size])))
+    centred: NDArray[np.float64] = values - np.repeat(
+        np.add.reduceat(values, starts) / sizes, sizes
+    )
+    return centred
+
+
+def _wander(residual: NDArray[np.float64]) -> float:
+    """Return by how much slow wander widens a mean: block means against independent values."""
+    size = max(residual.size // _BLOCKS, 1)
+    if size < _SMALLEST_BLOCK:
+        return 1.0
+    means = residual[: size * _BLOCKS].reshape(_BLOCKS, size).mean(axis=1)
+    variance = float(residual @ residual) / residual.size
+    return (
+        math.sqrt(max(1.0, size * float(means @ means) / _BLOCKS / variance)) if variance else 1.0
+    )
+
+
+def is_steady(stamps: NDArray[np.float64], index: NDArray[np.int64], resolution_s: float) -> bool:
+    """Tell whether stamps lie on a straight line as well as their rounding or a quarter step allow.
+
+    Parameters
+    ----------
+    stamps : ndarray, shape (n,)
+        Time stamps [s].
+    index : ndarray, shape (n,)
+        Their places.
+    resolution_s : float
+        The last printed digit [s].
+
+    Returns
+    -------
+    bool
+        A sample missing anywhere moves some stamp by at least half a step off any line.
+    """
+    fit = fit_step(stamps, index, resolution_s)
+    return fit.step_s > 0 and fit.worst_s <= max(_SLACK * resolution_s, 0.25 * fit.step_s)
+
+
+def maybe_single_step_s(steps: NDArray[np.float64], resolution_s: float) -> float | None:
+    """Return the time between neighbouring samples, where nearly all steps are multiples of it.
+
+    Parameters
+    ----------
+    steps : ndarray, shape (n - 1,)
+        Differences of the stamps [s].
+    resolution_s : float
+        The last printed digit [s].
+
+    Returns
+    -------
+    float or None
+        The step; None where the stamps are too coarse or too uneven.
+    """
+    rising = steps[steps > 2.5 * resolution_s]
+    if rising.size < 0.5 * steps.size:
+        return None
+    median, low = np.percentile(rising, [50, 10])
+    for guess in (median, low):
+        near = rising[np.abs(rising - guess) < _WHOLE * guess]
+        step = float(np.mean(near)) if near.size else float(guess)
+        multiples = steps[steps < _LONG * step] / step
+        if multiples.size < 0.5 * steps.size:
+            continue
+        whole = np.abs(multiples - np.rint(multiples)) < _WHOLE
+        # Late stamps give steps that are no multiples; they must stay the exception.
+        if np.mean(whole) > 0.9 and np.mean(multiples < 0.5) < 0.1:
+            return step
+    return None
+
+
+def pleasing_rate_hz(fit: StepFit, stamps: NDArray[np.float64], index: NDArray[np.int64]) -> float:
+    """Return the rate, as the number of fewest digits that the stamps do not tell from the fit.
+
+    Parameters
+    ----------
+    fit : StepFit
+        The fit of the stamps.
+    stamps : ndarray, shape (n,)
+        Time stamps [s].
+    index : ndarray, shape (n,)
+        Their places.
+
+    Returns
+    -------
+    float
+        The rate [Hz]; exactly the rate that made the stamps where they are ``index / rate``
+        unrounded.
+    """
+    rate = 1.0 / fit.step_s
+    u = fit.step_u_s * rate**2
+    tolerance = max(1e-13 * rate, u if fit.is_rounding else 0.05 * u)
+    digits = range(1, 18)
+    nice = (value for d in digits for value in (_rounded(rate, d), 1 / _rounded(fit.step_s, d)))
+    best = next((value for value in nice if abs(value - rate) <= tolerance), rate)
+    return _maybe_exact(best, stamps, index) or best
+
+
+def _rounded(value: float, digits: int) -> float:
+    return float(f"{value:.{digits - 1}e}")
+
+
+def _maybe_exact(
+    rate: float, stamps: NDArray[np.float64], index: NDArray[np.int64]
+) -> float | None:
+    """Return the rate with ``stamps == places / rate`` in every bit, if there is one."""
+    start = round(float(stamps[0]) * rate)
+    places = index - index[0] + start
+    if places[-1] <= 0 or abs(float(places[-1]) / rate - float(stamps[-1])) > 0.5 / rate:
+        return None
+    near = float(places[-1]) / float(stamps[-1])
+    ulp = math.ulp(near)
+    for candidate in (rate, *(near + k * ulp for k in (0, 1, -1, 2, -2))):
+        if np.array_equal(places / candidate, stamps):
+            return candidate
+    return None

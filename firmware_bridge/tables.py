@@ -1,0 +1,257 @@
+"""Tables to recordings: one column becomes the time, the others channels on a regular grid."""
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from firmware_bridge.column_name import si_unit
+from firmware_bridge.errors import BridgeError
+from firmware_bridge.stamps import Grid, fit_grid
+from firmware_bridge.table import Table
+from firmware_bridge.time_column import TimeColumn, maybe_find_time, named_time
+from firmware_bridge.trace import Channel, Gap, Recording, Span
+
+__all__ = ["RateError", "TableRecording", "to_recording"]
+
+
+class RateError(BridgeError):
+    """A recording without a time column and without a rate."""
+
+
+class TableRecording(Recording):
+    """A recording from a table: its rows on a regular grid, what is between them missing.
+
+    Parameters
+    ----------
+    path : str
+        Where it came from.
+    table : Table
+        What the file holds.
+    positions : sequence of int
+        Which of its columns are channels.
+    grid : Grid
+        Where the rows lie.
+    remarks : sequence of str
+        What a reader should know.
+    own_time : bool
+        Whether ``from_s`` and ``to_s`` are the file's own stamps.
+    """
+
+    def __init__(
+        self,
+        path: str,
+        table: Table,
+        positions: Sequence[int],
+        grid: Grid,
+        remarks: Sequence[str],
+        own_time: bool = False,
+    ) -> None:
+        self._columns = [table.columns[k] for k in positions]
+        self._grid = grid
+        self._is_whole = grid.rows.size == table.rows and not grid.gaps
+        self.start_s = grid.start_s
+        self._offset_s = grid.start_s if own_time else 0.0
+        super().__init__(
+            path=path,
+            format=table.format,
+            rate_hz=grid.rate_hz,
+            rate_u_hz=grid.rate_u_hz,
+            channels=[_channel(table, k) for k in positions],
+            length=int(grid.index[-1]) + 1,
+            gaps=grid.gaps,
+            over_range=sum(int(np.isinf(column[grid.rows]).sum()) for column in self._columns),
+            remarks=remarks,
+            columns=[k + 1 for k in positions],
+        )
+
+    def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
+        """Return samples ``start`` to ``stop`` (not included) of some channels.
+
+        Parameters
+        ----------
+        channels : sequence of int
+            Positions in ``self.channels``.
+        start, stop : int
+            Grid indices, 0 ≤ start ≤ stop ≤ length.
+
+        Returns
+        -------
+        Span
+            ``values`` of shape (stop − start, len(channels)).
+        """
+        values = np.full((len(channels), stop - start), np.nan)
+        first, last = np.searchsorted(self._grid.index, (start, stop))
+        over_range = 0
+        for row, position in zip(values, channels, strict=True):
+            column = self._stored(position, slice(first, last))
+            beyond = np.isinf(column)
+            over_range += int(np.count_nonzero(beyond))
+            column = np.where(beyond, np.nan, column)
+            channel = self.channels[position]
+            row[self._grid.index[first:last] - start] = column * channel.scale + channel.offset
+        return Span(values.T, over_range)
+
+    def _stored(self, position: int, part: slice) -> NDArray[np.float64]:
+        column = self._columns[position]
+        return column[part] if self._is_whole else column[self._grid.rows[part]]
+
+    def span(self, from_s: float | None = None, to_s: float | None = None) -> tuple[int, int]:
+        """Return the grid indices (start, stop) of the samples with ``from_s`` ≤ t < ``to_s``.
+
+        Parameters
+        ----------
+        from_s, to_s : float, optional
+            Times [s] from the first sample, or the file's own stamps where it was opened so.
+
+        Returns
+        -------
+        tuple of (int, int)
+            First sample and the one after the last.
+        """
+        moved = (None if t is None else t - self._offset_s for t in (from_s, to_s))
+        return super().span(*moved)
+
+
+def to_recording(
+    table: Table,
+    path: str,
+    *,
+    time: str | None = None,
+    rate_hz: float | None = None,
+    own_time: bool = False,
+) -> TableRecording:
+    """Return a table as a recording.
+
+    Parameters
+    ----------
+    table : Table
+        What the file holds.
+    path : str
+        Where it came from.
+    time : str, optional
+        The time column, by header or number; by default it is found out.
+    rate_hz : float, optional
+        Samples per second, for a table without a time column; beside one it takes precedence.
+    own_time : bool
+        Whether stretches are asked for in the file's own stamps.
+
+    Returns
+    -------
+    TableRecording
+        The channels on a regular grid.
+
+    Raises
+    ------
+    BridgeError
+        If there is no time column and no rate, or no channel beside the time.
+    """
+    found = named_time(table, time, path) if time else maybe_find_time(table)
+    remarks = [*(found.remarks if found else []), *table.remarks]
+    grid = _grid(table, found, rate_hz, path, remarks)
+    taken = found.positions if found else ()
+    positions = [k for k in range(len(table.names)) if k not in taken]
+    if not positions:
+        raise RateError(f"{path} has a time column and no channel beside it")
+    table = _with_missing(table, positions, grid)
+    remarks += _unit_remarks(table, positions)
+    return TableRecording(path, table, positions, grid, remarks, own_time)
+
+
+def _grid(
+    table: Table, found: TimeColumn | None, rate_hz: float | None, path: str, remarks: list[str]
+) -> Grid:
+    """Return the grid from the stamps, else from the rate given, else from the file's own."""
+    if found is not None and not found.is_counter:
+        grid = fit_grid(found.stamps_s, found.resolution_s, path)
+        remarks += grid.remarks
+        return _with_rate(table, grid, rate_hz, remarks)
+    if rate_hz is None and table.rate_hz is not None:
+        rate_hz = table.rate_hz
+        remarks.append(f"rate {rate_hz:.10g} Hz as the file states it")
+    if rate_hz is None:
+        what = "the first column counts samples" if found else "it has no time column"
+        raise RateError(
+            f"{path}: {what}; give --rate, or --time and one of its columns: {_names(table)}"
+        )
+    if found is not None:
+        grid = fit_grid(found.stamps_s, 0.0, path)
+        remarks += grid.remarks
+        gaps = [Gap(gap.index, gap.length) for gap in grid.gaps]
+        start_s = grid.start_s / rate_hz
+        return Grid(rate_hz, table.rate_u_hz or 0.0, grid.rows, grid.index, start_s, gaps)
+    rows = np.arange(table.rows)
+    return Grid(rate_hz, table.rate_u_hz or 0.0, rows, rows, 0.0)
+
+
+def _with_rate(table: Table, grid: Grid, rate_hz: float | None, remarks: list[str]) -> Grid:
+    """Return the grid with the rate given, or the file's, in place of what the stamps say."""
+    stated = table.rate_hz if rate_hz is None else rate_hz
+    if stated is None:
+        return grid
+    agrees = abs(stated - grid.rate_hz) <= max(3 * grid.rate_u_hz, 1e-9 * stated)
+    if rate_hz is None and not agrees:
+        remarks.append(
+            f"the file states {stated:.10g} Hz; its time stamps say {grid.rate_hz:.10g} Hz, used here"
+        )
+        return grid
+    if not agrees:
+        remarks.append(
+            f"the rate given, {stated:.10g} Hz, is used; the time stamps say {grid.rate_hz:.10g} Hz"
+        )
+    u = 0.0 if rate_hz is not None else table.rate_u_hz or 0.0
+    return replace(grid, rate_hz=stated, rate_u_hz=u)
+
+
+def _with_missing(table: Table, positions: Sequence[int], grid: Grid) -> Table:
+    """Complete the gaps of the grid, and mark over-range values where the file counts them."""
+    columns = [table.columns[k] for k in positions]
+    if table.gaps is None:
+        grid.gaps = _gaps_with_empty_rows(columns, grid)
+        return table
+    grid.gaps = [Gap(start, length, u == 0, u) for start, length, u in table.gaps]
+    inside = np.zeros(table.rows, dtype=bool)
+    for gap in grid.gaps:
+        inside[gap.index : gap.index + gap.length] = True
+    beyond = [np.isnan(column) & ~inside for column in columns]
+    # The file gives the number only: they are told from missing values where the numbers agree.
+    if not table.over_range or sum(map(np.count_nonzero, beyond)) != table.over_range:
+        return table
+    marked = list(table.columns)
+    for k, where in zip(positions, beyond, strict=True):
+        marked[k] = np.where(where, np.inf, marked[k])
+    return replace(table, columns=marked)
+
+
+def _gaps_with_empty_rows(columns: Sequence[NDArray[np.float64]], grid: Grid) -> list[Gap]:
+    """Return the gaps of the grid and the rows without any value, in order."""
+    empty = np.ones(columns[0].size, dtype=bool)
+    for column in columns:
+        empty &= np.isnan(column)
+    kept = ~empty[grid.rows]
+    if kept.all() or not kept.any():
+        return grid.gaps
+    known = {(gap.index, gap.length): gap for gap in grid.gaps}
+    full = np.concatenate(([-1], grid.index[kept], [grid.index[-1] + 1]))
+    before = np.flatnonzero(np.diff(full) > 1)
+    starts, lengths = full[before] + 1, np.diff(full)[before] - 1
+    spans = list(zip(starts.tolist(), lengths.tolist(), strict=True))
+    return [known.get(span) or Gap(*span) for span in spans]
+
+
+def _channel(table: Table, position: int) -> Channel:
+    unit, factor, offset = si_unit(table.units[position]) or ("1", 1.0, 0.0)
+    return Channel(table.names[position] or f"column {position + 1}", unit, factor, offset)
+
+
+def _unit_remarks(table: Table, positions: Sequence[int]) -> list[str]:
+    return [
+        f"column {k + 1} has the unknown unit {table.units[k]!r}: taken as a pure number"
+        for k in positions
+        if si_unit(table.units[k]) is None
+    ]
+
+
+def _names(table: Table) -> str:
+    return ", ".join(f"{k} {text!r}" if text else str(k) for k, text in enumerate(table.names, 1))

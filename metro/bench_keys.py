@@ -62,11 +62,16 @@ KEYS: dict[str, Key] = {
     "air.co2": Key("1", "450 umol/mol", minimum=0.0, maximum=1.0),
     "air.equation": Key("", "ciddor", choices=("ciddor", "edlen", "edlen1994")),
     "air.medium": Key("", "vacuum", choices=("vacuum", "air")),
+    "air.common_noise": _not_negative("1/Hz**0.5", "1e-9 /√Hz"),
+    "air.differential_noise": _not_negative("1/Hz**0.5", "1e-11 /√Hz"),
     "air.index": Key("1", "1.00027", minimum=1.0, maximum=1.01),
     "photodiode.responsivity": _positive("A/W", "0.4 A/W"),
     "photodiode.quantum_efficiency": _fraction("0.8"),
     "photodiode.transimpedance": _positive("V/A", "20 kohm"),
     "photodiode.bandwidth": _positive("Hz", "100 kHz"),
+    "photodiode.amplifier_voltage_noise": _not_negative("V/Hz**0.5", "5 nV/√Hz"),
+    "photodiode.amplifier_current_noise": _not_negative("A/Hz**0.5", "10 fA/√Hz"),
+    "photodiode.capacitance": _not_negative("F", "100 pF"),
     "photodiode.dark": Key("V", "1 mV"),
     "adc.bits": Key("1", "16", minimum=1.0, maximum=32.0, whole=True),
     "adc.range": _positive("V", "3.3 V"),
@@ -84,6 +89,7 @@ KEYS: dict[str, Key] = {
     "actuator.arm": Key("", "x", choices=("x", "y")),
     "actuator.polarity": Key("1", "1", minimum=-1.0, maximum=1.0, whole=True),
     "actuator.drive_limit": _positive("V", "5 V"),
+    "actuator.tilt": Key("1/V", '{ value = "0 1/V", u = "2e-4 1/V" }'),
     "actuator.resonance": _positive("Hz", "2 kHz"),
     "actuator.q": _positive("1", "30"),
     "drive.point": Key(
@@ -102,7 +108,6 @@ KEYS: dict[str, Key] = {
     "fringe.high": Key("V", "9.69 V"),
     "fringe.drift": Key("1", '{ value = 0, u = "0.03%" }'),
     "simulated.gain": Key("m/V", "35 nm/V"),
-    "simulated.tilt": Key("1/V", "2e-4 1/V"),
     "mains.frequency": Key("Hz", "50 Hz", minimum=40.0, maximum=70.0),
 }
 """Every key but those of ``[[line]]``, as ``section.key``."""

@@ -65,6 +65,11 @@ class Truth:
         return self.swing_v * self.phase_per_metre
 
     @property
+    def clock_offset(self) -> float:
+        """Where lines appear in the board's own time: at f·(1 + offset)."""
+        return 1.0 / (1.0 + self.clock) - 1.0
+
+    @property
     def readout_corners_hz(self) -> tuple[float, ...]:
         """Corners of the photodiode channel's poles [Hz], those at infinity left out."""
         return tuple(c for c in (self.amplifier_hz, self.antialias_hz) if np.isfinite(c))
@@ -141,7 +146,7 @@ def _draw_actuator(bench: Bench, rng: np.random.Generator) -> dict[str, Any]:
         * (1.0 + float(rng.uniform(-0.1, 0.1))),
         "quality": bench.magnitude("actuator.q", 20.0) * (1.0 + float(rng.uniform(-0.2, 0.2))),
         "actuator_delay_s": float(rng.uniform(5e-6, 50e-6)),
-        "tilt_per_v": float(rng.normal(0.0, bench.magnitude("simulated.tilt", 2e-4))),
+        "tilt_per_v": _draw(bench, "actuator.tilt", rng, 0.0),
         "pickup_v_per_v": pickup,
     }
 

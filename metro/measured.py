@@ -39,8 +39,10 @@ class Measured:
     def __init__(
         self, value: "Quantity", u: "Quantity | None" = None, dof: float = math.inf
     ) -> None:
-        unit, multiplier, divisor, offset = _si_unit(value)
-        self._magnitude: Any = value.magnitude * multiplier / divisor + offset
+        from metro.units import scaled
+
+        unit, *scale = _si_unit(value)
+        self._magnitude: Any = scaled(value.magnitude, *scale)
         self._unit = unit
         self._u: Any = None if u is None else _difference(u, unit)
         self.dof = dof
@@ -234,11 +236,11 @@ def _si_unit(value: "Quantity") -> tuple[str, float, float, float]:
 
 
 def _difference(u: "Quantity", unit: str) -> Any:  # noqa: ANN401  # float or ndarray
-    from metro.units import si
+    from metro.units import scaled, si
 
     own, multiplier, divisor, _ = _si_unit(u)
     if own == unit:
-        return u.magnitude * multiplier / divisor
+        return scaled(u.magnitude, multiplier, divisor, 0.0)
     return si(u, "u", unit, difference=True)
 
 

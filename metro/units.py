@@ -7,6 +7,7 @@ pint is imported on the first value that needs it, never by importing this modul
 
 import math
 import re
+from decimal import Decimal
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
@@ -278,6 +279,28 @@ def multiplier_and_divisor(factor: float) -> tuple[float, float]:
     return factor, 1.0
 
 
+def scaled(magnitude: Any, multiplier: float, divisor: float, offset: float) -> Any:  # noqa: ANN401  # float or ndarray
+    """Return ``magnitude * multiplier / divisor + offset``, rounded once for a single number.
+
+    Parameters
+    ----------
+    magnitude : float or ndarray
+        What is converted.
+    multiplier, divisor, offset : float
+        As :func:`multiplier_and_divisor` gives them; the offset of a temperature scale.
+
+    Returns
+    -------
+    float or ndarray
+        For a float the result of decimal arithmetic on what people wrote: 632.99 nm is 6.3299e-07,
+        -40 degC is 233.15; an array is computed in floats.
+    """
+    if not isinstance(magnitude, (int, float)):
+        return magnitude * multiplier / divisor + offset
+    number = Decimal(repr(float(magnitude))) * Decimal(repr(multiplier)) / Decimal(repr(divisor))
+    return float(number + Decimal(repr(offset)))
+
+
 def _without_counts(unit: Any) -> dict[str, float]:  # noqa: ANN401  # pint's Unit is generic
     powers = dict(unit._units)  # noqa: SLF001  # pint's only way to the exponents
     for name in ("count", "bit"):
@@ -329,7 +352,7 @@ def si(
     scale = _scale(given, unit)
     if scale is None:
         raise MetroError(_wrong_dimension(value, name, unit))
-    result = magnitude * scale[0] / scale[1] + offset
+    result = scaled(magnitude, *scale, offset)
     _check_range(result, value, name, unit, (minimum, maximum, above, below))
     return result
 

@@ -84,6 +84,9 @@ def test_si(text, unit, expected):
 def test_decimal_prefixes_lose_no_digit():
     """1e-9 is no exact float: 632.8 nm must be the float 6.328e-7, not its neighbour."""
     assert si("632.8 nm", "value", "m") == 6.328e-7
+    assert si("632.99 nm", "value", "m") == 6.3299e-7
+    assert si("-40 degC", "value", "K") == 233.15
+    assert si("4.35 hPa", "value", "Pa") == 435.0
     assert si("5 ppm", "value", "1") == 5e-6
     assert si("0.3 pm/√Hz", "value", "m/Hz**0.5") == 3e-13
 

@@ -260,3 +260,8 @@ def test_every_unit_has_its_si_form():
 def test_parse_quantity_keeps_the_unit():
     assert str(parse_quantity("632.8 nm").units) == "nanometer"
     assert spell_unit("m/√Hz") == "m/Hz**0.5"
+
+
+def test_the_registry_is_built_without_a_warning(caplog):
+    registry.__wrapped__()
+    assert caplog.records == []

@@ -89,7 +89,7 @@ class Links:
     remarks: tuple[str, ...]
 
 
-def stage_si(stage: str, value: Quantity | float | str) -> Any:  # noqa: ANN401  # float or ndarray
+def stage_si(stage: str, value: Quantity | float | str, name: str = "") -> Any:  # noqa: ANN401  # float or ndarray
     """Return the plain number of a value given for a stage.
 
     Parameters
@@ -98,6 +98,8 @@ def stage_si(stage: str, value: Quantity | float | str) -> Any:  # noqa: ANN401 
         Name of the stage.
     value : Quantity, float or str
         As people give it; bare only for strain, fringes and counts.
+    name : str, optional
+        What messages call it; the stage's name if empty.
 
     Returns
     -------
@@ -111,12 +113,10 @@ def stage_si(stage: str, value: Quantity | float | str) -> Any:  # noqa: ANN401 
     """
     from metro.units import si
 
-    special = {"fringes": "fringe", "counts": "count"}.get(stage)
-    if special is not None and not getattr(value, "dimensionless", False):
-        return si(value, stage, special)
-    if stage == "fringes" and str(getattr(value, "units", "")) in {"fringe", "radian", "degree"}:
-        return si(value, stage, "fringe")
-    return si(value, stage, UNITS[stage])
+    unit = {"fringes": "fringe", "counts": "count"}.get(stage, UNITS[stage])
+    if str(getattr(value, "units", "")) == "dimensionless":
+        unit = UNITS[stage]
+    return si(value, name or stage, unit)
 
 
 def ways_to_give(*keys: str) -> str:

@@ -55,6 +55,7 @@ def rest(chain: Chain) -> WorkingPoint:
     amps_per_watt, ohms = responsivity(bench), _maybe(bench, "photodiode.transimpedance")
     dark = bench.magnitude("photodiode.dark", 0.0)
     voltage = _measured_voltage(bench, phase)
+    power: float | None
     if voltage is not None and amps_per_watt and ohms:
         power = (voltage - dark) / (ohms * amps_per_watt)
     else:

@@ -1,0 +1,159 @@
+"""``midfringe expect``: one stage in, every stage out, with noise and detectability."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from metro.errors import MetroError
+from metro.options import ValueType, bench_options, command, output_options
+
+if TYPE_CHECKING:
+    from metro.bench import Bench
+    from metro.expectation import Expectation
+    from metro.measured import Measured
+
+__all__ = ["expect"]
+
+_GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
+
+
+@command(
+    'midfringe expect --displacement 1pm --wavelength "632.9908 nm" --power 80uW --responsivity 0.4A/W'
+)
+@click.option("--strain", metavar="VALUE", help="Strain amplitude h, such as 1e-21.")
+@click.option("--displacement", metavar="VALUE", help="Differential displacement, such as 1pm.")
+@click.option("--phase", metavar="VALUE", help="Phase, such as 0.02rad.")
+@click.option("--fringes", metavar="VALUE", help="Fringes, such as 0.25.")
+@click.option("--voltage", metavar="VALUE", help="Voltage change, such as 3mV.")
+@click.option("--counts", metavar="VALUE", help="ADC counts, such as 12.")
+@click.option(
+    "--frequency",
+    type=ValueType("Hz", above=0.0),
+    help="Where noise and corrections are evaluated.",
+)
+@click.option(
+    "--duration",
+    type=ValueType("s", above=0.0),
+    default=1.0,
+    help="Averaging time; 1 s if not given.",
+)
+@click.option(
+    "--slope",
+    type=click.Choice(["rising", "falling"]),
+    default="rising",
+    help="Slope of mid-fringe.",
+)
+@click.option(
+    "--working-phase", type=ValueType("rad"), help="Working point elsewhere than mid-fringe."
+)
+@click.option("--theta", type=ValueType("rad"), help="Polar angle of a wave's source.")
+@click.option("--phi", type=ValueType("rad"), help="Azimuth of a wave's source, the x arm at 0.")
+@click.option("--psi", type=ValueType("rad"), help="Polarisation angle of a wave.")
+@click.option(
+    "--lines",
+    type=click.IntRange(1, 1000),
+    default=1,
+    help="Lines of this amplitude driven at once.",
+)
+@click.option(
+    "--background",
+    type=ValueType("rad", minimum=0.0),
+    default=0.0,
+    help="RMS phase of other motion.",
+)
+@bench_options
+@output_options("out", "json", "overwrite")
+def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option each
+    """Tell what a strain, a displacement or a signal is at every stage, with the noise.
+
+    Exactly one stage is given; the others are changes about the working point, linear.
+    """
+    from metro.chain import Chain
+    from metro.expectation import expect as expect_of
+    from metro.fringe import slope_phase_rad
+    from metro.output import check_writable, to_json, write_whole
+    from metro.stages import stage_si
+
+    stage, text = _one_stage(options)
+    value = stage_si(stage, text, f"--{stage}")
+    if options["out"]:
+        check_writable(options["out"], options["overwrite"])
+    working_phase = options["working_phase"]
+    if working_phase is None:
+        working_phase = slope_phase_rad(options["slope"])
+    expectation = expect_of(
+        Chain(bench, working_phase),
+        stage,
+        value,
+        frequency_hz=options["frequency"],
+        duration_s=options["duration"],
+        direction=_direction(options),
+        lines=options["lines"],
+        background_rad=options["background"],
+    )
+    document = to_json(expectation.to_dict())
+    if options["out"]:
+        write_whole(options["out"], document + "\n", overwrite=options["overwrite"])
+    click.echo(document if options["as_json"] else _page(expectation))
+
+
+def _one_stage(options: dict[str, Any]) -> tuple[str, str]:
+    given = [name for name in _GIVEN if options[name] is not None]
+    if len(given) != 1:
+        names = ", ".join(f"--{name}" for name in _GIVEN)
+        got = " and ".join(f"--{name}" for name in given) or "none"
+        raise MetroError(f"exactly one of {names} must be given, got {got}")
+    return given[0], options[given[0]]
+
+
+def _direction(options: dict[str, Any]) -> Any:  # noqa: ANN401  # a Direction or None
+    from metro.corrections import Direction
+
+    angles = [options[name] for name in ("theta", "phi", "psi")]
+    return None if angles == [None, None, None] else Direction(*(angle or 0.0 for angle in angles))
+
+
+def _page(expectation: Expectation) -> str:
+    """Return the tables for people."""
+    from metro.output import table
+
+    parts = [
+        table(_rows(expectation.stages), ("stage", "change")),
+        table(_rows(expectation.working_point), ("working point", "")),
+        table(_rows(expectation.noise), ("noise", "displacement density")),
+        table(_rows(expectation.snr), ("signal to noise", "")),
+        _texts("corrections", [c.text for c in expectation.corrections.values()]),
+        _texts(
+            "conventions", [f"{name}: {text}" for name, text in expectation.conventions.items()]
+        ),
+        _texts("cautions", expectation.cautions),
+    ]
+    if expectation.sources:
+        rows = [
+            (key, entry["value"], entry["source"]) for key, entry in expectation.sources.items()
+        ]
+        parts.append(table(rows, ("the bench", "value", "from")))
+    return "\n\n".join(part for part in parts if part)
+
+
+def _rows(values: dict[str, Measured | None]) -> list[tuple[str, str]]:
+    """Return names and values; no word of uncertainty where the bench gives none."""
+    from metro.display import show, show_measured
+
+    return [
+        (
+            name.replace("_", " "),
+            "unknown"
+            if value is None
+            else show(value.magnitude, value.unit, 10)
+            if value.u_magnitude is None
+            else show_measured(value),
+        )
+        for name, value in values.items()
+    ]
+
+
+def _texts(title: str, texts: list[str]) -> str:
+    return "\n".join([title, *(f"  {text}" for text in texts)]) if texts else ""

@@ -1,0 +1,237 @@
+"""What a bench should show: one stage given, every stage, the noise and what is left out."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from metro.cautions import bench_cautions
+from metro.corrections import Correction, Direction, corrections
+from metro.kernel.noise import averaging_time_s, signal_to_noise
+from metro.measured import Measured
+from metro.sensitivity import Sensitivity, displacement_noise, strain_density
+from metro.stages import STAGES, UNITS
+
+if TYPE_CHECKING:
+    from metro.chain import Chain
+
+__all__ = ["Expectation", "expect"]
+
+DENSITY = "m/Hz**0.5"
+
+
+@dataclass(frozen=True, slots=True)
+class Expectation:
+    """Everything that ``midfringe expect`` prints.
+
+    Parameters
+    ----------
+    stages : dict of str to Measured or None
+        Change at every stage; None where unknown.
+    working_point : dict of str to Measured or None
+        ``phase``, ``power``, ``current``, ``voltage``, ``slope`` [V/rad] and ``slope_per_metre`` [V/m].
+    noise : dict of str to Measured or None
+        Displacement density of each source, and ``total`` of those known.
+    snr : dict of str to Measured or None
+        ``value``, ``duration``, ``noise``, ``frequency``, and the amplitudes that reach 1:
+        ``detectable_displacement``, ``detectable_strain``; ``time_to_one`` for the motion asked for.
+    conventions : dict of str to str
+        What the numbers mean.
+    corrections : dict of str to Correction
+        What they leave out.
+    cautions : list of str
+        What to beware of, and how to make unknown stages known.
+    sources : dict of str to dict
+        Every value of the bench and where it came from.
+    """
+
+    stages: dict[str, Measured | None]
+    working_point: dict[str, Measured | None]
+    noise: dict[str, Measured | None]
+    snr: dict[str, Measured | None]
+    conventions: dict[str, str]
+    corrections: dict[str, Correction]
+    cautions: list[str]
+    sources: dict[str, dict[str, str]]
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the JSON form.
+
+        Returns
+        -------
+        dict
+            One key an attribute.
+        """
+        return {name: getattr(self, name) for name in self.__slots__}
+
+
+def expect(
+    chain: Chain,
+    stage: str,
+    value: float,
+    *,
+    frequency_hz: float | None = None,
+    duration_s: float = 1.0,
+    direction: Direction | None = None,
+    lines: int = 1,
+    background_rad: float = 0.0,
+) -> Expectation:
+    """Return what a change at one stage should look like at every other.
+
+    Parameters
+    ----------
+    chain : Chain
+        The signal chain at its working point.
+    stage : str
+        Name of the stage given.
+    value : float
+        Change there, in its SI unit.
+    frequency_hz : float, optional
+        Frequency at which noise and corrections are evaluated [Hz]; without it at low frequency.
+    duration_s : float, default 1
+        Averaging time for the signal-to-noise ratio [s].
+    direction : Direction, optional
+        Direction and polarisation of the wave.
+    lines : int, default 1
+        Lines driven at once with the same amplitude.
+    background_rad : float, default 0
+        Root-mean-square phase of all other motion [rad].
+
+    Returns
+    -------
+    Expectation
+        Stages, working point, noise, detectability, conventions, corrections, cautions.
+
+    Raises
+    ------
+    MetroError
+        If the bench contradicts itself, as an incomplete air entry does.
+    """
+    stages = {name: _stage(chain, stage, value, name) for name in STAGES}
+    plain = {name: None if m is None else float(m.magnitude) for name, m in stages.items()}
+    noise = displacement_noise(chain, frequency_hz or 0.0)
+    found = corrections(
+        chain,
+        plain,
+        frequency_hz=frequency_hz,
+        direction=direction,
+        lines=lines,
+        background_rad=background_rad,
+    )
+    return Expectation(
+        stages=stages,
+        working_point=_working_point(chain),
+        noise=_noise(noise),
+        snr=_snr(chain, plain["displacement"], noise, duration_s),
+        conventions=_conventions(chain),
+        corrections=found,
+        cautions=_cautions(chain, stage, plain, noise),
+        sources={
+            key: {"value": text, "source": source} for key, text, source in chain.bench.provenance()
+        },
+    )
+
+
+def _stage(chain: Chain, given: str, value: float, name: str) -> Measured | None:
+    if chain.maybe_way(given, name) is None:
+        return None
+    relative = sum(e * e for e in chain.effects(given, name).values()) ** 0.5
+    number = float(chain.convert(value, given, name))
+    return Measured.of(number, UNITS[name], abs(number) * relative if relative else None)
+
+
+def _maybe(value: float | None, unit: str) -> Measured | None:
+    return None if value is None else Measured.of(value, unit)
+
+
+def _working_point(chain: Chain) -> dict[str, Measured | None]:
+    here = chain.working_point()
+    return {
+        "phase": Measured.of(here.phase_rad, "rad"),
+        "power": _maybe(here.power_w, "W"),
+        "current": _maybe(here.current_a, "A"),
+        "voltage": _maybe(here.voltage_v, "V"),
+        "slope": _maybe(here.slope_v_rad, "V/rad"),
+        "slope_per_metre": _maybe(here.slope_v_m, "V/m"),
+    }
+
+
+def _noise(noise: Sensitivity) -> dict[str, Measured | None]:
+    made = {name: _maybe(density, DENSITY) for name, density in noise.densities.items()}
+    return {**made, "total": _maybe(noise.total, DENSITY)}
+
+
+def _snr(
+    chain: Chain, amplitude_m: float | None, noise: Sensitivity, duration_s: float
+) -> dict[str, Measured | None]:
+    density = noise.total
+    known = density is not None and density > 0.0
+    floor_m = density / duration_s**0.5 if known and density is not None else None
+    ratio = time_s = floor_strain = None
+    if known and density is not None:
+        strain = strain_density(chain, density, noise.frequency_hz)
+        floor_strain = None if strain is None else strain / duration_s**0.5
+        if amplitude_m is not None:
+            ratio = signal_to_noise(amplitude_m, density, duration_s)
+            time_s = averaging_time_s(amplitude_m, density, 1.0) if amplitude_m else None
+    return {
+        "value": _maybe(ratio, "1"),
+        "duration": Measured.of(duration_s, "s"),
+        "noise": _maybe(density, DENSITY),
+        "frequency": Measured.of(noise.frequency_hz, "Hz"),
+        "detectable_displacement": _maybe(floor_m, "m"),
+        "detectable_strain": _maybe(floor_strain, "1"),
+        "time_to_one": _maybe(time_s, "s"),
+    }
+
+
+def _conventions(chain: Chain) -> dict[str, str]:
+    bench = chain.bench
+    trips = bench.magnitude("arms.round_trips", 1.0)
+    index = "n = 1 (arms in vacuum)"
+    if not bench.in_vacuum or bench.get("air.index") is not None:
+        index = f"n = {float(bench.index().magnitude):.9f} ({_equation(chain)})"
+    slope = "rising" if math.sin(chain.working_phase_rad) < 0.0 else "falling"
+    return {
+        "stages": "changes about the working point, signed, linear, zero to peak",
+        "strain": "gravitational-wave amplitude h: the arms change by +hL/2 and −hL/2, together hL",
+        "displacement": "differential arm length, positive when the x arm grows",
+        "phase": f"4π·N·n·x/λ, unwrapped, with N = {trips:g} round trips, {index} and λ in vacuum",
+        "fringes": "phase over 2π",
+        "power": "on this photodiode; the mean at mid-fringe is what --power gives",
+        "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope} slope",
+        "noise": "one-sided amplitude density of differential displacement",
+        "snr": "A/√(S/T), S one-sided, over the averaging time",
+        "uncertainty": "u is the standard uncertainty from the u of the bench's values; null where none",
+    }
+
+
+def _equation(chain: Chain) -> str:
+    if chain.bench.get("air.index") is not None:
+        return "index as given"
+    from metro.air_state import EQUATIONS
+
+    return EQUATIONS[chain.bench.text("air.equation") or "ciddor"]
+
+
+def _cautions(
+    chain: Chain, given: str, plain: dict[str, float | None], noise: Sensitivity
+) -> list[str]:
+    cautions = bench_cautions(chain.bench)
+    cautions += [
+        f"{name} is unknown: give {chain.what_is_missing(given, name)}"
+        for name, value in plain.items()
+        if value is None
+    ]
+    cautions += chain.links.remarks
+    if noise.missing:
+        wanted = "; ".join(f"{name}: {what}" for name, what in noise.missing.items())
+        cautions.append(f"the total noise leaves out what is not given ({wanted})")
+    cautions += noise.remarks
+    phase = plain["phase"]
+    if phase is not None and abs(phase) > 0.3:
+        cautions.append(
+            f"phase {phase:.3g} rad is beyond the linear range of the fringe; see the compression"
+        )
+    return cautions

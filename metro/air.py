@@ -4,16 +4,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from metro.air_state import (
     EQUATIONS,
     HUMIDITY_KINDS,
-    LIMITS,
     AirState,
     check_equation,
     check_state,
-    check_vapour,
     range_remarks,
 )
 from metro.elementwise import elementwise
@@ -64,6 +62,30 @@ class AirResult:
     contributions: dict[str, float]
     remarks: tuple[str, ...]
 
+    @property
+    def reference(self) -> str:
+        """Where the equation is published."""
+        return EQUATIONS[self.equation]
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the JSON form.
+
+        Returns
+        -------
+        dict
+            ``index``, ``equation``, ``wavelength_in_air``, ``sensitivities``, ``contributions`` (standard
+            uncertainty of n from each input and from the equation), ``reference``, ``remarks``.
+        """
+        return {
+            "index": self.index,
+            "equation": self.equation,
+            "wavelength_in_air": self.wavelength_in_air,
+            "sensitivities": self.sensitivities,
+            "contributions": {name: Measured.of(u, "1") for name, u in self.contributions.items()},
+            "reference": self.reference,
+            "remarks": list(self.remarks),
+        }
+
 
 def refractive_index(
     temperature: Quantity | str,
@@ -108,18 +130,15 @@ def refractive_index(
     from metro.units import quantity, si
 
     check_equation(equation)
-    t, p, lam = (
-        si(value, name, unit, minimum=low, maximum=high)
-        for (name, (unit, low, high)), value in zip(
-            LIMITS.items(), (temperature, pressure, wavelength), strict=True
-        )
-    )
+    t = si(temperature, "temperature", "K")
+    p = si(pressure, "pressure", "Pa")
     rh = si(humidity, "humidity", "1", minimum=0.0, maximum=1.0)
-    xc = si(co2, "co2", "1", minimum=0.0, maximum=2e-3)
+    lam = si(wavelength, "wavelength", "m")
+    xc = si(co2, "co2", "1")
 
     def index(t_k: float, p_pa: float, rh: float, lam_m: float, xc: float) -> float:
         state = AirState(t_k, p_pa, rh, lam_m, xc)
-        check_vapour(state)
+        check_state(state)
         return 1.0 + state.refractivity(equation)
 
     return quantity(elementwise(index, t, p, rh, lam, xc), "1")
@@ -214,8 +233,15 @@ def solve_air(inputs: dict[str, Measured], equation: str, kind: str = "relative"
         equation_u=contributions["equation"],
         sensitivities=_with_units(slopes, kind),
         contributions=contributions,
-        remarks=range_remarks(state, equation),
+        remarks=(*range_remarks(state, equation), *_exact_inputs(inputs)),
     )
+
+
+def _exact_inputs(inputs: dict[str, Measured]) -> tuple[str, ...]:
+    exact = [name for name in _FIELDS if inputs[name].u_magnitude is None]
+    if not exact:
+        return ()
+    return (f"no uncertainty was given for {', '.join(exact)}: the u of n takes them as exact",)
 
 
 # Each input's field of the state, and the step for its derivative: large enough for twelve digits.

@@ -244,7 +244,7 @@ def _outside(state: AirState, equation: str) -> list[tuple[str, str, float, floa
     return [
         (name, LIMITS[name][0], low, high)
         for name, (low, high) in ranges.items()
-        if not low <= _value(state, name) <= high
+        if not _inside(_value(state, name), low, high)
     ]
 
 
@@ -257,5 +257,11 @@ def _value(state: AirState, name: str) -> float:
 
 
 def _within(name: str, value: float, low: float, high: float, unit: str) -> None:
-    if not low <= value <= high:
+    if not _inside(value, low, high):
         raise MetroError(f"{name} must be {low:.10g} … {high:.10g}{unit}, got {value:.10g}{unit}")
+
+
+def _inside(value: float, low: float, high: float) -> bool:
+    """Return whether a value is in a closed range; −40 °C and 1700 nm are, whatever rounding says."""
+    slack = 1e-12 * high
+    return low - slack <= value <= high + slack

@@ -39,7 +39,7 @@ class Measured:
     def __init__(
         self, value: "Quantity", u: "Quantity | None" = None, dof: float = math.inf
     ) -> None:
-        from metro.units import scaled
+        from metro.unit_scale import scaled
 
         unit, *scale = _si_unit(value)
         self._magnitude: Any = scaled(value.magnitude, *scale)
@@ -229,14 +229,15 @@ def _coverage_factor(p: float, dof: float) -> float:
 
 def _si_unit(value: "Quantity") -> tuple[str, float, float, float]:
     from metro.si_form import si_form
-    from metro.units import multiplier_and_divisor
+    from metro.unit_scale import multiplier_and_divisor
 
     unit, factor, offset = si_form(value.units)
     return unit, *multiplier_and_divisor(factor), offset
 
 
 def _difference(u: "Quantity", unit: str) -> Any:  # noqa: ANN401  # float or ndarray
-    from metro.units import scaled, si
+    from metro.unit_scale import scaled
+    from metro.units import si
 
     own, multiplier, divisor, _ = _si_unit(u)
     if own == unit:

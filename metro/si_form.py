@@ -4,7 +4,7 @@ import re
 from functools import cache
 from typing import Any
 
-from metro.units import registry, root_units
+from metro.unit_registry import registry, root_units
 
 __all__ = ["si_form", "unit_text"]
 

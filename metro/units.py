@@ -6,12 +6,12 @@ pint is imported on the first value that needs it, never by importing this modul
 """
 
 import math
-import re
-from decimal import Decimal
-from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from metro.errors import MetroError
+from metro.unit_registry import parse_unit, parsed_unit, registry
+from metro.unit_scale import scale_to, scaled
+from metro.value_text import spell_unit, split_value
 
 if TYPE_CHECKING:
     from typing import TypeAlias
@@ -24,36 +24,6 @@ if TYPE_CHECKING:
 
 __all__ = ["Quantity", "parse_quantity", "quantity", "registry", "si", "split_value"]
 
-_NUMBER = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*)", re.DOTALL)
-_COMMA = re.compile(r"[+-]?\d*,\d")
-_NOT_FINITE = re.compile(r"[+-]?(nan|inf|infinity)\b", re.IGNORECASE)
-_UNIT = re.compile(
-    r"(?:1?/)?[A-Za-z_]+(?:\*\*-?(?:\d+(?:\.\d+)?))?(?:(?: ?[*/] ?| )[A-Za-z_]+(?:\*\*-?(?:\d+(?:\.\d+)?))?)*"
-)
-_SPELLINGS = (
-    ("µ", "u"),
-    ("μ", "u"),
-    ("Ω", "ohm"),
-    ("Ω", "ohm"),
-    ("°C", "degC"),
-    ("℃", "degC"),
-    ("°F", "degF"),
-    ("°", "deg"),
-    ("Å", "angstrom"),
-    ("Å", "angstrom"),
-    ("%", "percent"),
-    ("‰", "permille"),
-    ("²", "**2"),
-    ("³", "**3"),
-    ("⁻¹", "**-1"),
-    ("⁻²", "**-2"),
-    ("·", "*"),
-    ("⋅", "*"),
-    ("^", "**"),
-    ("(1/2)", "0.5"),
-    ("**1/2", "**0.5"),
-)
-_ROOT = re.compile(r"√\s*\(?([A-Za-z]+)\)?|\bsqrt\(\s*([A-Za-z]+)\s*\)")
 _RATIO_UNITS = frozenset({"1", "fringe", "count", "bit"})
 # What a unit measures and how a value of it is written, for messages.
 _EXAMPLES = {
@@ -88,224 +58,6 @@ def __getattr__(name: str) -> Any:  # noqa: ANN401  # the class exists once the 
     if name == "Quantity":
         return registry().Quantity
     raise AttributeError(f"module 'metro.units' has no attribute {name!r}")
-
-
-@cache
-def registry() -> "pint.UnitRegistry[Any]":
-    """Return the one registry of the program, built on the first call.
-
-    Returns
-    -------
-    pint.UnitRegistry
-        Knows the units of :mod:`metro.unit_definitions` and no others.
-    """
-    import pint
-
-    from metro.unit_definitions import DEFINITIONS
-
-    ureg: pint.UnitRegistry[Any] = pint.UnitRegistry(None, autoconvert_offset_to_baseunit=True)
-    for definition in DEFINITIONS:
-        ureg.define(definition)
-    return ureg
-
-
-def split_value(text: str, name: str = "value") -> tuple[float, str]:
-    """Split a value into its number and the text of its unit.
-
-    Parameters
-    ----------
-    text : str
-        One number, an optional space, one unit: ``"42cm"``, ``"632.8 nm"``, ``"-3pm"``, ``"0.5"``.
-    name : str
-        What the value is, for the message.
-
-    Returns
-    -------
-    tuple of (float, str)
-        The number, and the unit in the spelling pint reads (``""`` without a unit).
-
-    Raises
-    ------
-    MetroError
-        If there is no finite number, a decimal comma, or more than one number.
-    """
-    stripped = text.strip().replace("−", "-")
-    match = _NUMBER.fullmatch(stripped)
-    if match is None or _COMMA.match(stripped):
-        raise MetroError(_why_no_number(text, stripped, name))
-    number = float(match[1])
-    if not math.isfinite(number):
-        raise MetroError(f"{name} must be a finite number, got {text!r}")
-    unit = spell_unit(match[2])
-    if unit and not _UNIT.fullmatch(unit):
-        raise MetroError(
-            f"{name} must be one number and one unit (such as '632.8 nm'), without arithmetic, got {text!r}"
-        )
-    return number, unit
-
-
-def spell_unit(unit: str) -> str:
-    """Return a unit in the spelling pint reads: ``m/√Hz`` becomes ``m/Hz**0.5``.
-
-    Parameters
-    ----------
-    unit : str
-        A unit as people write it.
-
-    Returns
-    -------
-    str
-        The same unit in ASCII.
-    """
-    unit = _ROOT.sub(lambda m: f"{m[1] or m[2]}**0.5", unit.strip())
-    for written, spelled in _SPELLINGS:
-        unit = unit.replace(written, spelled)
-    return unit.strip()
-
-
-def _why_no_number(text: str, stripped: str, name: str) -> str:
-    if _COMMA.match(stripped):
-        return f"{name} must be written with a decimal point, not a comma, got {text!r}"
-    if _NOT_FINITE.match(stripped):
-        return f"{name} must be a finite number, got {text!r}"
-    return f"{name} must be one number and one unit (such as '632.8 nm'), got {text!r}"
-
-
-def _parse_unit(unit: str, name: str, given: object) -> Any:  # noqa: ANN401  # pint's Unit is generic
-    try:
-        return _parsed_unit(unit)
-    except MetroError as error:
-        raise MetroError(f"{name} {error}, got {given!r}") from None
-
-
-@cache
-def _parsed_unit(unit: str) -> Any:  # noqa: ANN401  # pint's Unit is generic
-    import pint
-
-    if unit in {"", "1"}:
-        return registry().dimensionless
-    try:
-        return registry().parse_units("1" + unit if unit.startswith("/") else unit)
-    except pint.UndefinedUnitError as error:
-        names = error.unit_names
-        unknown = names if isinstance(names, str) else names[0]
-        raise MetroError(f"has an unknown unit {unknown!r}{_nearest_unit(unknown)}") from None
-    except Exception:  # noqa: BLE001  # whatever pint makes of odd text, it is not a unit
-        raise MetroError(f"has a unit that cannot be read, {unit!r}") from None
-
-
-def _nearest_unit(unknown: str) -> str:
-    from difflib import get_close_matches
-
-    known = [u for u in _COMMON_UNITS if u != unknown]
-    close = get_close_matches(unknown, known, 1, 0.5)
-    return f" (nearest known: {close[0]!r})" if close else ""
-
-
-_COMMON_UNITS = (
-    *("m", "km", "cm", "mm", "um", "nm", "pm", "fm", "am", "angstrom", "micron", "inch", "ft"),
-    *("s", "ms", "us", "ns", "min", "h", "d", "hour", "minute", "second", "meter", "metre"),
-    *("Hz", "kHz", "MHz", "GHz", "mHz", "rad", "mrad", "urad", "deg", "fringe", "turn"),
-    *("W", "mW", "uW", "nW", "A", "mA", "uA", "nA", "pA", "V", "mV", "uV", "kV", "volt", "watt"),
-    *("ohm", "kohm", "Mohm", "F", "pF", "nF", "K", "mK", "degC", "degF", "celsius", "kelvin"),
-    *("Pa", "hPa", "kPa", "bar", "mbar", "atm", "torr", "mmHg", "psi", "counts", "bit"),
-    *("percent", "ppm", "ppb", "permille", "mol", "umol", "kg", "g", "N", "J", "eV"),
-)
-
-
-def root_units(unit: Any) -> tuple[float, Any]:  # noqa: ANN401  # pint's Unit is generic
-    """Return a unit in the registry's base units: the factor and the product of base units.
-
-    Parameters
-    ----------
-    unit : pint.Unit
-        Of the program's registry.
-
-    Returns
-    -------
-    tuple of (float, pint.Unit)
-        Without the offset of a temperature scale.
-    """
-    factor: Any
-    factor, root = registry().get_root_units(unit, check_nonmult=False)
-    return float(factor), root
-
-
-@cache
-def _factor(unit: Any, wanted: str) -> float | None:  # noqa: ANN401  # pint's Unit is generic
-    """Return what a magnitude is multiplied with to be in ``wanted``, None if dimensions differ."""
-    given_factor, given = root_units(unit)
-    wanted_factor, target = root_units(_parsed_unit(wanted))
-    powers = _without_counts(given)
-    targets = _without_counts(target)
-    excess = powers.pop("radian", 0) - targets.pop("radian", 0)
-    if powers != targets:
-        return None
-    factor = given_factor / wanted_factor
-    if excess == 0:
-        return factor
-    # A cycle is 2π rad: rad/s for hertz (and the other way) is the one angle that may be converted.
-    if abs(targets.get("second", 0)) == abs(excess):
-        return factor * float((2 * math.pi) ** -excess)
-    return None
-
-
-@cache
-def _scale(unit: Any, wanted: str) -> tuple[float, float] | None:  # noqa: ANN401  # pint's Unit is generic
-    factor = _factor(unit, wanted)
-    return None if factor is None else multiplier_and_divisor(factor)
-
-
-def multiplier_and_divisor(factor: float) -> tuple[float, float]:
-    """Return a factor as ``multiplier / divisor`` such that decimal prefixes lose no digit.
-
-    Parameters
-    ----------
-    factor : float
-        Such as 1e-9, which no float is: ``632.8 / 1e9`` is the float nearest to 6.328e-7, while
-        ``632.8 * 1e-9`` is its neighbour.
-
-    Returns
-    -------
-    tuple of (float, float)
-        Multiplier and divisor, one of them 1.
-    """
-    if not 0 < factor < 1:
-        return factor, 1.0
-    divisor = float(round(1 / factor))
-    # Powers of ten are exact floats up to 1e22; a factor whose inverse is none stays as it is.
-    if divisor <= 1e22 and abs(factor * divisor - 1) < 1e-15:
-        return 1.0, divisor
-    return factor, 1.0
-
-
-def scaled(magnitude: Any, multiplier: float, divisor: float, offset: float) -> Any:  # noqa: ANN401  # float or ndarray
-    """Return ``magnitude * multiplier / divisor + offset``, rounded once for a single number.
-
-    Parameters
-    ----------
-    magnitude : float or ndarray
-        What is converted.
-    multiplier, divisor, offset : float
-        As :func:`multiplier_and_divisor` gives them; the offset of a temperature scale.
-
-    Returns
-    -------
-    float or ndarray
-        For a float the result of decimal arithmetic on what people wrote: 632.99 nm is 6.3299e-07,
-        -40 degC is 233.15; an array is computed in floats.
-    """
-    if not isinstance(magnitude, (int, float)):
-        return magnitude * multiplier / divisor + offset
-    number = Decimal(repr(float(magnitude))) * Decimal(repr(multiplier)) / Decimal(repr(divisor))
-    return float(number + Decimal(repr(offset)))
-
-
-def _without_counts(unit: Any) -> dict[str, float]:  # noqa: ANN401  # pint's Unit is generic
-    powers = dict(unit._units)  # noqa: SLF001  # pint's only way to the exponents
-    for name in ("count", "bit"):
-        powers.pop(name, None)
-    return powers
 
 
 def si(
@@ -349,7 +101,7 @@ def si(
     """
     magnitude, given = _magnitude_and_unit(value, name, unit)
     offset = 0.0 if difference or unit != "K" else _OFFSETS.get(str(given), 0.0)
-    scale = _scale(given, unit)
+    scale = scale_to(given, unit)
     if scale is None:
         raise MetroError(_wrong_dimension(value, name, unit))
     result = scaled(magnitude, *scale, offset)
@@ -366,19 +118,21 @@ def _magnitude_and_unit(value: object, name: str, unit: str) -> tuple[Any, Any]:
         number, text = split_value(value, name)
         if not text and unit not in _RATIO_UNITS:
             raise MetroError(_wrong_dimension(value, name, unit))
-        return number, _parse_unit(text or unit, name, value)
+        return number, parse_unit(text or unit, name, value)
     magnitude = getattr(value, "magnitude", None)
+    if magnitude is not None and hasattr(value, "unit"):  # a measured value
+        return _real(magnitude, name), parsed_unit(value.unit)
     if magnitude is not None:
         return _real(magnitude, name), _own_unit(value, name)
     if value is None or isinstance(value, bool) or unit not in _RATIO_UNITS:
         raise MetroError(_wrong_dimension(value, name, unit))
-    return _real(value, name), _parsed_unit(unit)
+    return _real(value, name), parsed_unit(unit)
 
 
 def _own_unit(value: Any, name: str) -> Any:  # noqa: ANN401  # any registry's quantity
     if value._REGISTRY is registry():  # noqa: SLF001  # pint's name for it
         return value.units
-    return _parse_unit(spell_unit(str(value.units).replace("dimensionless", "")), name, value)
+    return parse_unit(spell_unit(str(value.units).replace("dimensionless", "")), name, value)
 
 
 def _real(magnitude: Any, name: str) -> "float | np.ndarray[Any, Any]":  # noqa: ANN401  # any number
@@ -401,7 +155,7 @@ def _wrong_dimension(value: object, name: str, unit: str) -> str:
 
 
 def _shown(value: object) -> str:
-    if hasattr(value, "magnitude"):
+    if hasattr(value, "units"):
         return f"'{value:~}'".replace("\n", " ")
     return " ".join(repr(value).split())
 
@@ -454,7 +208,7 @@ def parse_quantity(text: str, name: str = "value") -> "Quantity":
         If the text is no such value.
     """
     number, unit = split_value(text, name)
-    return quantity(number, _parse_unit(unit, name, text))
+    return quantity(number, parse_unit(unit, name, text))
 
 
 def quantity(magnitude: Any, unit: Any) -> "Quantity":  # noqa: ANN401  # numbers, arrays; str or Unit
@@ -472,6 +226,6 @@ def quantity(magnitude: Any, unit: Any) -> "Quantity":  # noqa: ANN401  # number
     Quantity
         ``magnitude`` in ``unit``.
     """
-    parsed = _parsed_unit(unit) if isinstance(unit, str) else unit
+    parsed = parsed_unit(unit) if isinstance(unit, str) else unit
     made: Quantity = registry().Quantity(magnitude, parsed)
     return made

@@ -8,8 +8,11 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from metro.errors import MetroError
+from metro.measured import Measured
 from metro.unit_definitions import DEFINITIONS, SI_NAMES
-from metro.units import parse_quantity, quantity, registry, si, spell_unit, split_value
+from metro.unit_registry import registry
+from metro.units import parse_quantity, quantity, si, split_value
+from metro.value_text import spell_unit
 
 
 @pytest.mark.parametrize(
@@ -265,3 +268,14 @@ def test_parse_quantity_keeps_the_unit():
 def test_the_registry_is_built_without_a_warning(caplog):
     registry.__wrapped__()
     assert caplog.records == []
+
+
+def test_radians_are_turned_into_cycles_only_beside_hertz():
+    with pytest.raises(MetroError, match="speed must have a unit of"):
+        si("1 m*rad/s", "speed", "m/s")
+
+
+def test_a_measured_value_is_taken():
+    assert si(Measured.of(1.5, "m", 0.1), "x", "m") == 1.5
+    with pytest.raises(MetroError, match="x must have a unit of time"):
+        si(Measured.of(1.5, "m", 0.1), "x", "s")

@@ -7,68 +7,14 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from metro.bench_entry import NORMAL, BenchError, BenchLine, Entry, nearest
 from metro.bench_keys import KEYS, OPTIONS
-from metro.errors import MetroError
 from metro.measured import Measured
 
 if TYPE_CHECKING:
     from metro.chain import Chain
 
 __all__ = ["Bench", "BenchError", "BenchLine", "load_bench"]
-
-NORMAL = "normal"
-RECTANGULAR = "rectangular"
-
-
-class BenchError(MetroError):
-    """A bench file that breaks a rule, or a bench that does not say what is needed."""
-
-
-@dataclass(frozen=True, slots=True)
-class BenchLine:
-    """One drive line of the bench.
-
-    Parameters
-    ----------
-    frequency_hz : float
-        Line frequency [Hz].
-    drive_v : float or None
-        Drive amplitude as ``[drive] reading`` says it is read [V]; None where not given.
-    drive_u_v : float
-        Its standard uncertainty [V]; 0 where not given.
-    """
-
-    frequency_hz: float
-    drive_v: float | None = None
-    drive_u_v: float = 0.0
-
-
-@dataclass(frozen=True, slots=True)
-class Entry:
-    """One value of the bench.
-
-    Parameters
-    ----------
-    value : Measured or str
-        The value, in SI units; text for a text key.
-    source : str
-        Where it came from: the file and key, the option, or a default.
-    distribution : str
-        ``"normal"`` or ``"rectangular"``.
-    note : str
-        What the file says of its origin, such as a certificate; empty where it says nothing.
-    given : str
-        The value as it was written; empty where it was computed.
-    """
-
-    value: Measured | str
-    source: str
-    distribution: str = NORMAL
-    note: str = ""
-    given: str = ""
-
-    def __str__(self) -> str:
-        return self.given or str(self.value)
 
 
 @dataclass(frozen=True)
@@ -168,7 +114,7 @@ class Bench:
         entries = dict(self.entries)
         for key, value in values.items():
             if key not in KEYS:
-                raise BenchError(f"the bench has no key {key!r}{_nearest(key, KEYS)}")
+                raise BenchError(f"the bench has no key {key!r}{nearest(key, KEYS)}")
             if value.unit != KEYS[key].unit:
                 raise BenchError(f"{key} must be in {KEYS[key].unit}, got {value.unit}")
             entries[key] = Entry(value, source, self.distribution(key))
@@ -283,7 +229,7 @@ class Bench:
 
     def _entry(self, key: str) -> Entry | None:
         if key not in KEYS:
-            raise BenchError(f"the bench has no key {key!r}{_nearest(key, KEYS)}")
+            raise BenchError(f"the bench has no key {key!r}{nearest(key, KEYS)}")
         return self.entries.get(key)
 
     def _missing(self, key: str) -> str:
@@ -372,14 +318,7 @@ def _key_of(name: str) -> str:
     key = name.replace("__", ".")
     if key in KEYS:
         return key
-    raise BenchError(f"the bench has no value {name!r}{_nearest(name, [*OPTIONS, *KEYS])}")
-
-
-def _nearest(name: str, known: "Mapping[str, Any] | list[str]") -> str:
-    from difflib import get_close_matches
-
-    close = get_close_matches(name, list(known), 1, 0.5)
-    return f"; the nearest known is {close[0]!r}" if close else ""
+    raise BenchError(f"the bench has no value {name!r}{nearest(name, [*OPTIONS, *KEYS])}")
 
 
 def _checked(bench: Bench) -> Bench:

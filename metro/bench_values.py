@@ -4,7 +4,7 @@ import re
 from collections.abc import Mapping
 from typing import Any
 
-from metro.bench import BenchError, BenchLine, Entry, _nearest
+from metro.bench_entry import NORMAL, RECTANGULAR, BenchError, BenchLine, Entry, nearest
 from metro.bench_keys import KEYS, LINE_KEYS, Key
 from metro.errors import MetroError
 from metro.measured import Measured
@@ -13,7 +13,7 @@ from metro.units import si
 __all__ = ["read_entry", "read_sections"]
 
 _TABLE_KEYS = ("value", "u", "distribution", "source")
-_DISTRIBUTIONS = ("normal", "rectangular")
+_DISTRIBUTIONS = (NORMAL, RECTANGULAR)
 
 
 def read_sections(
@@ -60,7 +60,7 @@ def _check_format(version: object, path: str) -> None:
 def _read_section(section: str, content: object, path: str) -> dict[str, Entry]:
     sections = dict.fromkeys([key.partition(".")[0] for key in KEYS] + ["line"])
     if section not in sections:
-        raise BenchError(f"{path}: unknown section [{section}]{_nearest(section, sections)}")
+        raise BenchError(f"{path}: unknown section [{section}]{nearest(section, sections)}")
     if not isinstance(content, dict):
         raise BenchError(f"{path}: {section} must be a section [{section}], got {content!r}")
     names = [key.partition(".")[2] for key in KEYS if key.startswith(section + ".")]
@@ -68,7 +68,7 @@ def _read_section(section: str, content: object, path: str) -> dict[str, Entry]:
     for name, value in content.items():
         where = f"{path}, [{section}] {name}"
         if name not in names:
-            raise BenchError(f"{path}, [{section}]: unknown key {name!r}{_nearest(name, names)}")
+            raise BenchError(f"{path}, [{section}]: unknown key {name!r}{nearest(name, names)}")
         entries[f"{section}.{name}"] = read_entry(f"{section}.{name}", value, where, where)
     return entries
 
@@ -82,7 +82,7 @@ def _read_lines(content: object, path: str) -> tuple[BenchLine, ...]:
 def _read_line(item: Mapping[str, Any], where: str) -> BenchLine:
     for name in item:
         if name not in LINE_KEYS:
-            raise BenchError(f"{where}: unknown key {name!r}{_nearest(name, LINE_KEYS)}")
+            raise BenchError(f"{where}: unknown key {name!r}{nearest(name, LINE_KEYS)}")
     if "frequency" not in item:
         raise BenchError(f'{where}: must give a frequency, such as frequency = "87.1 Hz"')
     frequency, _ = _line_value(item, "frequency", where)
@@ -145,7 +145,7 @@ def _written(value: object, u: object = None) -> str:
 def _read_table(rule: Key, value: Mapping[str, Any], where: str, source: str) -> Entry:
     for name in value:
         if name not in _TABLE_KEYS:
-            raise BenchError(f"{where}: unknown key {name!r}{_nearest(name, list(_TABLE_KEYS))}")
+            raise BenchError(f"{where}: unknown key {name!r}{nearest(name, list(_TABLE_KEYS))}")
     if "value" not in value:
         raise BenchError(f"{where}: must give a value, such as {{ value = {rule.example!r} }}")
     distribution = value.get("distribution", "normal")

@@ -3,30 +3,27 @@
 import functools
 import logging
 from collections.abc import Callable, Sequence
-from typing import TYPE_CHECKING, Any, NoReturn, TypeVar
+from typing import Any, NoReturn, TypeVar
 
 import click
 
 from metro.bench import Bench, BenchError, load_bench
 from metro.bench_keys import KEYS, OPTIONS
 from metro.diagnostics import set_up_logging
-from metro.errors import MetroError
-from metro.units import si
+from metro.example_command import ExampleCommand, command
+from metro.value_type import ValueType, option_name
 
 __all__ = [
+    "ExampleCommand",
     "ValueType",
     "bench_options",
     "command",
     "distrust",
     "is_quiet",
     "is_verbose",
+    "option_name",
     "output_options",
 ]
-
-if TYPE_CHECKING:
-    _ParamType = click.ParamType[Any]
-else:
-    _ParamType = click.ParamType  # not generic before click 8.2
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -49,178 +46,6 @@ _OVERRIDE_HELP = {
 }
 _QUIET = "metro.quiet"
 _VERBOSE = "metro.verbose"
-
-
-class ValueType(_ParamType):
-    """An option value with a unit, returned as a float in SI.
-
-    Parameters
-    ----------
-    unit : str
-        The SI unit, such as ``"m"``.
-    name : str, optional
-        What help shows for the value.
-    minimum, maximum : float, optional
-        Closed bounds, in ``unit``.
-    above, below : float, optional
-        Open bounds, in ``unit``.
-    """
-
-    def __init__(
-        self,
-        unit: str,
-        name: str = "VALUE",
-        *,
-        minimum: float | None = None,
-        maximum: float | None = None,
-        above: float | None = None,
-        below: float | None = None,
-    ) -> None:
-        self.unit = unit
-        self.name = name
-        self.minimum, self.maximum = minimum, maximum
-        self.above, self.below = above, below
-
-    def convert(
-        self,
-        value: Any,  # noqa: ANN401  # text from the command line, or a default
-        param: click.Parameter | None,
-        ctx: click.Context | None,  # noqa: ARG002  # click's signature
-    ) -> Any:  # noqa: ANN401  # a float
-        """Return the value in SI.
-
-        Parameters
-        ----------
-        value : str or float
-            As given; a float is a default already in SI.
-        param : click.Parameter, optional
-            The option, for its name.
-        ctx : click.Context, optional
-            Not used.
-
-        Returns
-        -------
-        float
-            In the unit of this type.
-
-        Raises
-        ------
-        MetroError
-            If it is no such value.
-        """
-        if isinstance(value, float):
-            return value
-        name = option_name(param)
-        if isinstance(value, str) and value.startswith("--"):
-            raise MetroError(f"{name} needs a value, got the option {value!r}")
-        return si(
-            value,
-            name,
-            self.unit,
-            minimum=self.minimum,
-            maximum=self.maximum,
-            above=self.above,
-            below=self.below,
-        )
-
-
-def option_name(param: click.Parameter | None) -> str:
-    """Return what messages call a parameter.
-
-    Parameters
-    ----------
-    param : click.Parameter, optional
-        An option or an argument.
-
-    Returns
-    -------
-    str
-        Such as ``"--arm"``.
-    """
-    if param is None:
-        return "value"
-    if isinstance(param, click.Option):
-        return max(param.opts, key=len)
-    return (param.name or "value").upper()
-
-
-class ExampleCommand(click.Command):
-    """A command whose help ends with the bench's options apart and one example to run.
-
-    Parameters
-    ----------
-    *args : object
-        As click.Command takes them.
-    example : str
-        One line that can be run.
-    **kwargs : object
-        As click.Command takes them.
-    """
-
-    def __init__(self, *args: Any, example: str = "", **kwargs: Any) -> None:  # noqa: ANN401  # click's own
-        super().__init__(*args, **kwargs)
-        self.example = example
-
-    def format_options(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
-        """Write the options, those of the bench in a section of their own.
-
-        Parameters
-        ----------
-        ctx : click.Context
-            Of this command.
-        formatter : click.HelpFormatter
-            Takes the text.
-        """
-        bench = {"bench", *(name.replace("-", "_") for name in OPTIONS)}
-        own: list[tuple[str, str]] = []
-        shared: list[tuple[str, str]] = []
-        has_bench = any(param.name == "bench_file" for param in self.params)
-        for param in self.get_params(ctx):
-            record = param.get_help_record(ctx)
-            if record is not None:
-                of_bench = has_bench and param.name in bench | {"bench_file"}
-                (shared if of_bench else own).append(record)
-        for title, records in (("Options", own), ("The bench", shared)):
-            if records:
-                with formatter.section(title):
-                    formatter.write_dl(records)
-
-    def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
-        """Write the example, unwrapped so that it can be copied.
-
-        Parameters
-        ----------
-        ctx : click.Context
-            Of this command.
-        formatter : click.HelpFormatter
-            Takes the text.
-        """
-        super().format_epilog(ctx, formatter)
-        if self.example:
-            formatter.write(f"\nExample:\n  {self.example}\n")
-
-
-def command(example: str, **settings: Any) -> Callable[[F], click.Command]:  # noqa: ANN401  # click's own
-    """Return the decorator that makes a function a command with an example in its help.
-
-    Parameters
-    ----------
-    example : str
-        One line that can be run.
-    **settings : object
-        As click.command takes them.
-
-    Returns
-    -------
-    callable
-        The decorator.
-    """
-    return click.command(
-        cls=ExampleCommand,
-        example=example,
-        context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
-        **settings,
-    )
 
 
 def bench_options(function: F) -> F:

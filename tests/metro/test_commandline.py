@@ -68,7 +68,7 @@ def with_probe(monkeypatch):
         module, attr = __name__, "probe"
 
     monkeypatch.setitem(cli.found, "probe", ("show what arrived", Entry))
-    monkeypatch.setattr("metro.commandline.import_module", lambda name: sys.modules[name])
+    monkeypatch.setattr("metro.lazy_group.import_module", lambda name: sys.modules[name])
     monkeypatch.setitem(sys.modules, __name__, sys.modules.get(__name__) or _here())
     monkeypatch.delenv("MIDFRINGE_BENCH", raising=False)
     monkeypatch.delenv("MIDFRINGE_DEBUG", raising=False)

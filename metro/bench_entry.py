@@ -1,0 +1,85 @@
+"""What the bench holds: one value with where it came from, one drive line."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+from metro.errors import MetroError
+from metro.measured import Measured
+
+__all__ = ["NORMAL", "RECTANGULAR", "BenchError", "BenchLine", "Entry", "nearest"]
+
+NORMAL = "normal"
+RECTANGULAR = "rectangular"
+"""The distributions from which the error of a value may come."""
+
+
+class BenchError(MetroError):
+    """A bench file that breaks a rule, or a bench that does not say what is needed."""
+
+
+@dataclass(frozen=True, slots=True)
+class BenchLine:
+    """One drive line of the bench.
+
+    Parameters
+    ----------
+    frequency_hz : float
+        Line frequency [Hz].
+    drive_v : float or None
+        Drive amplitude as ``[drive] reading`` says it is read [V]; None where not given.
+    drive_u_v : float
+        Its standard uncertainty [V]; 0 where not given.
+    """
+
+    frequency_hz: float
+    drive_v: float | None = None
+    drive_u_v: float = 0.0
+
+
+@dataclass(frozen=True, slots=True)
+class Entry:
+    """One value of the bench.
+
+    Parameters
+    ----------
+    value : Measured or str
+        The value, in SI units; text for a text key.
+    source : str
+        Where it came from: the file and key, the option, or a default.
+    distribution : str
+        ``"normal"`` or ``"rectangular"``.
+    note : str
+        What the file says of its origin, such as a certificate; empty where it says nothing.
+    given : str
+        The value as it was written; empty where it was computed.
+    """
+
+    value: Measured | str
+    source: str
+    distribution: str = NORMAL
+    note: str = ""
+    given: str = ""
+
+    def __str__(self) -> str:
+        return self.given or str(self.value)
+
+
+def nearest(name: str, known: Iterable[str]) -> str:
+    """Return the end of a message that names the nearest known name.
+
+    Parameters
+    ----------
+    name : str
+        What was given.
+    known : iterable of str
+        The known names.
+
+    Returns
+    -------
+    str
+        Such as ``"; the nearest known is 'laser'"``; empty where none is near.
+    """
+    from difflib import get_close_matches
+
+    close = get_close_matches(name, list(known), 1, 0.5)
+    return f"; the nearest known is {close[0]!r}" if close else ""

@@ -1,0 +1,144 @@
+"""Files written whole or not at all, and never over another unasked."""
+
+import os
+import secrets
+import shutil
+from pathlib import Path
+
+from metro.errors import MetroError
+
+__all__ = ["OutputError", "OutputFailedError", "check_writable", "write_whole"]
+
+
+class OutputError(MetroError):
+    """A file that cannot be written; nothing was left in its place."""
+
+
+class OutputFailedError(OutputError):
+    """A file that failed while it was written, as on a full disk."""
+
+    exit_code = 3
+
+
+def check_writable(path: str | os.PathLike[str], overwrite: bool = False) -> Path:  # as the option
+    """Refuse a file that could not be written, before long work is begun.
+
+    Parameters
+    ----------
+    path : path
+        The file to be.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Returns
+    -------
+    Path
+        The same path.
+
+    Raises
+    ------
+    OutputError
+        If it exists, is a directory, or its directory is missing or closed to us.
+    """
+    path = Path(path)
+    try:
+        problem = _problem(path, overwrite)
+    except OSError as error:
+        problem = f"cannot write {path}: {_reason(error)}"
+    if problem:
+        raise OutputError(problem)
+    return path
+
+
+def _problem(path: Path, overwrite: bool) -> str:
+    """Return why a file cannot be written; empty where nothing speaks against it."""
+    parent = path.parent
+    if path.is_dir():
+        return f"cannot write {path}: it is a directory"
+    if _is_device(path):
+        return ""
+    if not parent.exists():
+        return f"cannot write {path}: there is no directory {parent}"
+    if not parent.is_dir():
+        return f"cannot write {path}: {parent} is not a directory"
+    if path.exists() and not overwrite:
+        return f"{path} exists; give --overwrite to replace it"
+    if not os.access(parent, os.W_OK | os.X_OK):
+        return f"cannot write {path}: no permission to write in {parent}"
+    if len(os.fsencode(path.name)) > 255:  # what Linux and macOS file systems take
+        return f"cannot write {path}: file name too long"
+    return ""
+
+
+def write_whole(
+    path: str | os.PathLike[str], data: bytes | str, *, overwrite: bool = False
+) -> None:
+    """Write a file whole or not at all.
+
+    Parameters
+    ----------
+    path : path
+        The file to be; a device such as ``/dev/null`` is written to directly.
+    data : bytes or str
+        Its content; text as UTF-8.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Raises
+    ------
+    OutputError
+        If it exists or cannot be written; what was there before is then still there.
+    """
+    path = check_writable(path, overwrite).resolve()  # a link stays, its target is replaced
+    content = data.encode() if isinstance(data, str) else data
+    if _is_device(path):
+        _fill(path, path, content, "wb")
+        return
+    # In the same directory, so that the final rename stays within one file system.
+    temporary = path.with_name(f".midfringe-{os.getpid()}-{secrets.token_hex(4)}.part")
+    try:
+        _fill(temporary, path, content, "xb")
+        _put_in_place(temporary, path, overwrite)
+    finally:
+        temporary.unlink(missing_ok=True)
+
+
+def _is_device(path: Path) -> bool:
+    return path.exists() and not path.is_file()
+
+
+def _fill(target: Path, named: Path, content: bytes, mode: str) -> None:
+    try:
+        file = target.open(mode)
+    except OSError as error:
+        raise OutputError(f"cannot write {named}: {_reason(error)}") from None
+    try:
+        with file:
+            file.write(content)
+            file.flush()
+            if mode == "xb":
+                os.fsync(file.fileno())
+    except OSError as error:
+        raise OutputFailedError(
+            f"writing {named} failed: {_reason(error)}; nothing was left there"
+        ) from None
+
+
+def _put_in_place(temporary: Path, path: Path, overwrite: bool) -> None:
+    try:
+        if overwrite:
+            if path.exists():
+                shutil.copymode(path, temporary)
+            temporary.replace(path)
+            return
+        os.link(temporary, path)  # refuses a file that appeared meanwhile; a rename would not
+    except FileExistsError:
+        raise OutputError(f"{path} exists; give --overwrite to replace it") from None
+    except OSError as error:
+        if overwrite or path.exists():
+            raise OutputError(f"cannot write {path}: {_reason(error)}") from None
+        temporary.replace(path)  # a file system without hard links
+
+
+def _reason(error: OSError) -> str:
+    return (error.strerror or str(error)).lower()

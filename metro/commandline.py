@@ -16,6 +16,7 @@ import click
 from metro.diagnostics import set_up_logging
 from metro.errors import MidfringeError
 from metro.lazy_group import PROGRAM, LazyGroup
+from metro.unit_registry import load_lean
 
 __all__ = ["cli", "main", "run"]
 
@@ -54,6 +55,7 @@ def run(arguments: Sequence[str] | None = None) -> int:
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")  # a terminal without µ shows ? and goes on
     set_up_logging()
+    load_lean()
     try:
         code = _invoke(arguments or ["--help"])
         sys.stdout.flush()

@@ -3,15 +3,47 @@
 pint is imported on the first value that needs it, never by importing this module.
 """
 
+import sys
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from metro.errors import MetroError
+from metro.value_text import spell_unit
 
 if TYPE_CHECKING:
     import pint
 
-__all__ = ["parse_unit", "parsed_unit", "registry", "root_units"]
+__all__ = ["import_pint", "load_lean", "parse_unit", "parsed_unit", "registry", "root_units"]
+
+_lean: list[bool] = []
+
+
+def load_lean() -> None:
+    """Let pint be imported without scipy and Babel, for a process that is ours alone.
+
+    pint loads both where they are installed; the program asks pint for nothing that needs them,
+    and they cost a tenth of its start-up.
+    """
+    _lean.append(True)
+
+
+def import_pint() -> Any:  # noqa: ANN401  # the module
+    """Return the module pint, imported now.
+
+    Returns
+    -------
+    module
+        As :func:`load_lean` left it, or whole.
+    """
+    hidden = [name for name in ("scipy", "babel") if _lean and name not in sys.modules]
+    for name in hidden:
+        sys.modules[name] = None  # type: ignore[assignment]  # import then says it is not there
+    try:
+        import pint
+    finally:
+        for name in hidden:
+            del sys.modules[name]
+    return pint
 
 
 @cache
@@ -23,14 +55,23 @@ def registry() -> "pint.UnitRegistry[Any]":
     pint.UnitRegistry
         Knows the units of :mod:`metro.unit_definitions` and no others.
     """
-    import pint
-
+    pint_module = import_pint()
     from metro.unit_definitions import DEFINITIONS
 
-    ureg: pint.UnitRegistry[Any] = pint.UnitRegistry(None, autoconvert_offset_to_baseunit=True)
+    ureg: pint.UnitRegistry[Any] = pint_module.UnitRegistry(
+        None, autoconvert_offset_to_baseunit=True
+    )
     for definition in DEFINITIONS:
         ureg.define(definition)
+    ureg.preprocessors.append(_careful)
     return ureg
+
+
+def _careful(text: str) -> str:
+    """Spell out what pint is given as text: "1,5 mm" would be 15 mm, "3 nm/√Hz" nm/Hz."""
+    if "," in text:
+        raise MetroError(f"a value must be written with a decimal point, not a comma, got {text!r}")
+    return spell_unit(text)
 
 
 def parse_unit(unit: str, name: str, given: object) -> Any:  # noqa: ANN401  # pint's Unit is generic
@@ -80,18 +121,16 @@ def parsed_unit(unit: str) -> Any:  # noqa: ANN401  # pint's Unit is generic
     MetroError
         If there is no such unit; the message is the end of a sentence.
     """
-    import pint
-
     if unit in {"", "1"}:
         return registry().dimensionless
     try:
         return registry().parse_units("1" + unit if unit.startswith("/") else unit)
-    except pint.UndefinedUnitError as error:
-        names = error.unit_names
+    except Exception as error:  # noqa: BLE001  # whatever pint makes of odd text, it is not a unit
+        names = getattr(error, "unit_names", None)
+        if not names:
+            raise MetroError(f"has a unit that cannot be read, {unit!r}") from None
         unknown = names if isinstance(names, str) else names[0]
         raise MetroError(f"has an unknown unit {unknown!r}{_nearest_unit(unknown)}") from None
-    except Exception:  # noqa: BLE001  # whatever pint makes of odd text, it is not a unit
-        raise MetroError(f"has a unit that cannot be read, {unit!r}") from None
 
 
 def _nearest_unit(unknown: str) -> str:

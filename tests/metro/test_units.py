@@ -279,3 +279,14 @@ def test_a_measured_value_is_taken():
     assert si(Measured.of(1.5, "m", 0.1), "x", "m") == 1.5
     with pytest.raises(MetroError, match="x must have a unit of time"):
         si(Measured.of(1.5, "m", 0.1), "x", "s")
+
+
+def test_quantities_made_from_text_are_read_with_care():
+    import metro
+
+    assert metro.Quantity("3 nm/√Hz").units == registry().parse_units("nm/Hz**0.5")
+    assert metro.Quantity("632.8 nm").to("m").magnitude == pytest.approx(6.328e-7)
+    assert metro.Quantity("20 °C").to("K").magnitude == pytest.approx(293.15)
+    assert isinstance(quantity(1.0, "m"), metro.Quantity)
+    with pytest.raises(MetroError, match="decimal point, not a comma, got '1,5 mm'"):
+        metro.Quantity("1,5 mm")

@@ -109,8 +109,8 @@ def _explain(error: BaseException) -> tuple[str, int]:
 
 def _usage(error: click.ClickException) -> str:
     if isinstance(error, click.NoSuchOption):
-        close = error.possibilities or _near_options(error)
-        hint = f"; the nearest is {min(close)!r}" if close else ""
+        close = _near_options(error)
+        hint = f"; the nearest is {close[0]!r}" if close else ""
         message = f"unknown option {error.option_name!r}{hint}"
     else:
         message = error.format_message().rstrip(".")

@@ -149,6 +149,7 @@ BAD = [
     (["--versoin"], "unknown option '--versoin'; the nearest is '--version' (see 'midfringe --help')"),
     (["-x"], "unknown option '-x' (see 'midfringe --help')"),
     (["probe", "--dispalcement", "1pm"], f"unknown option '--dispalcement'; the nearest is '--displacement'{USAGE}"),
+    (["probe", "--lwo", "1V"], f"unknown option '--lwo'; the nearest is '--low'{USAGE}"),
     (["probe", "-z"], f"unknown option '-z'{USAGE}"),
     (["probe", "--json=yes"], None),
     (["probe", "--displacement"], None),

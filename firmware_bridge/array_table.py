@@ -77,12 +77,13 @@ def arrays_to_table(
     stated = {**(attributes or {}), **{k: a for k, a in arrays.items() if a.size == 1}}
     own = metadata_of(stated, name)
     remarks = [f"{', '.join(left_out)}: of another length, not read"] if left_out else []
-    parts = {key: split_header(key) for key in chosen}
-    words = units or own.get("units", {})
+    # Our own names hold no units; others may, such as "U (mV)".
+    parts = {key: (key, "") if own else split_header(key) for key in chosen}
+    words = {key: word for key, word in (units or own.get("units", {})).items() if word}
     return Table(
         format=format,
         columns=[_as_float(column) for column in chosen.values()],
-        names=[parts[key][0] for key in chosen],
+        names=[parts[key][0].strip() for key in chosen],
         units=[str(words.get(key, parts[key][1])) for key in chosen],
         resolutions=[0.0] * len(chosen),
         rate_hz=own.get("rate_hz") or _maybe_rate_hz(stated),

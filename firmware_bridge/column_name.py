@@ -28,6 +28,76 @@ _SYNONYMS = {
     "1": "- -- 1 none a.u. arb",
 }
 _WORDS = {word: unit for unit, words in _SYNONYMS.items() for word in words.split()} | {"": "1"}
+# Single words are units only if they are among these: the registry would read "pd" as a picoday.
+_SYMBOLS = frozenset(
+    [
+        "V",
+        "mV",
+        "uV",
+        "nV",
+        "kV",
+        "A",
+        "mA",
+        "uA",
+        "nA",
+        "pA",
+        "W",
+        "mW",
+        "uW",
+        "nW",
+        "s",
+        "ms",
+        "us",
+        "ns",
+        "min",
+        "h",
+        "Hz",
+        "mHz",
+        "kHz",
+        "MHz",
+        "GHz",
+        "m",
+        "km",
+        "cm",
+        "mm",
+        "um",
+        "nm",
+        "pm",
+        "fm",
+        "rad",
+        "mrad",
+        "urad",
+        "deg",
+        "degC",
+        "degF",
+        "K",
+        "mK",
+        "Pa",
+        "hPa",
+        "kPa",
+        "bar",
+        "mbar",
+        "ohm",
+        "kohm",
+        "Mohm",
+        "F",
+        "pF",
+        "nF",
+        "uF",
+        "N",
+        "mN",
+        "J",
+        "g",
+        "kg",
+        "T",
+        "mT",
+        "percent",
+        "ppm",
+        "ppb",
+        "bit",
+        "fringe",
+    ]
+)
 _TIME_UNITS_S = {"s": 1.0, "ms": 1e-3, "us": 1e-6, "ns": 1e-9, "min": 60.0, "h": 3600.0}
 _TIME_NAME = re.compile(
     r"(?:rel(?:ative)?|abs(?:olute)?|elapsed|unix|board|host|sample)?[ _-]*"
@@ -56,7 +126,9 @@ def split_header(header: str) -> tuple[str, str]:
         The name, and the word for the unit (empty where there is none).
     """
     match = _WITH_UNIT.fullmatch(header)
-    if match and match["name"] and not is_unit_word(header):
+    # "V/rad" is a unit; "T / ms" is a name and a unit, though it could be read as one.
+    is_unit = " / " not in header and is_unit_word(header)
+    if match and match["name"] and not is_unit:
         word = next((part for part in match.group("a", "b", "c", "d", "e") if part is not None), "")
         if is_unit_word(word):
             return match["name"].strip(), word.strip()
@@ -98,11 +170,14 @@ def si_unit(word: str) -> tuple[str, float, float] | None:
     spelled = _WORDS.get(bare.lower(), bare)
     if spelled in {"1", "count"}:
         return "1", 1.0, 0.0
-    if len(spelled) > 40 or not re.match(r"[^\W\d_]|[%°‰√/1]", spelled):
-        return None
     from metro.si_form import si_form
     from metro.units import parse_quantity
+    from metro.value_text import spell_unit
 
+    if len(spelled) > 40 or not re.match(r"[^\W\d_]|[%°‰√/1]", spelled):
+        return None
+    if spell_unit(spelled).isalnum() and spell_unit(spelled) not in _SYMBOLS:
+        return None
     try:
         return si_form(parse_quantity(f"1 {spelled}").units)
     except MetroError:

@@ -16,7 +16,7 @@ Use it on any command that takes a recording::
 import functools
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, TypeVar
+from typing import TYPE_CHECKING, Any, TypeVar, overload
 
 import click
 
@@ -39,7 +39,10 @@ _OPTIONS: dict[str, tuple[tuple[str, ...], dict[str, Any]]] = {
     ),
     "channel": (
         ("--channel", "channel"),
-        {"metavar": "COLUMN", "help": "The photodiode's column; name:3 is the header '3'."},
+        {
+            "metavar": "COLUMN",
+            "help": "The column to read, the photodiode's; name:3 is the header '3'.",
+        },
     ),
     "drive": (
         ("--drive", "drive_channel"),
@@ -208,11 +211,13 @@ class Reading:
                 click.echo(f"{recording.path}: {remark}", err=True)
 
 
+@overload
+def recording_options(function: F) -> F: ...
+@overload
+def recording_options(*, omit: tuple[str, ...]) -> Callable[[F], F]: ...
 def recording_options(
-    function: F | None = None,
-    *,
-    omit: tuple[str, ...] = (),
-) -> Any:  # noqa: ANN401  # the function itself, or the decorator
+    function: Callable[..., Any] | None = None, *, omit: tuple[str, ...] = ()
+) -> Callable[..., Any]:
     """Add ``--time --channel --drive --rate --from --to --own-time``; pass them as ``reading``.
 
     Parameters
@@ -228,7 +233,11 @@ def recording_options(
         Takes the options instead. Also used as ``@recording_options(omit=("drive",))``.
     """
     if function is None:
-        return functools.partial(recording_options, omit=omit)
+        return functools.partial(_with_options, omit=omit)
+    return _with_options(function, omit)
+
+
+def _with_options(function: F, omit: tuple[str, ...]) -> F:
     chosen = {key: value for key, value in _OPTIONS.items() if key not in omit}
 
     @functools.wraps(function)
@@ -238,4 +247,4 @@ def recording_options(
 
     for names, settings in reversed(chosen.values()):
         with_reading = click.option(*names, **settings)(with_reading)
-    return with_reading
+    return with_reading  # type: ignore[return-value]  # the options stand for ``reading``

@@ -160,28 +160,39 @@ def _cumulated(counts: NDArray[np.float64], name: str) -> NDArray[np.int64]:
 def _without_lags(
     index: NDArray[np.int64], step_s: float, remarks: list[str]
 ) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
-    """Move late stamps back to where their samples were taken, and drop samples sent twice.
+    """Leave out samples sent twice, and move late stamps back to where their samples were taken.
 
     A stamp may be late but never early: what is missing so far is the least of what the stamps
-    soon after say. What is then still in one place with another sample is a duplicate.
+    soon after say. After a duplicate that is for good less than it was before.
     """
-    everything = np.ones(index.size, dtype=bool)
-    if (np.diff(index) > 0).all():
-        return index, everything
+    kept = np.ones(index.size, dtype=bool)
+    still = np.diff(index) <= 0
+    if not still.any():
+        return index, kept
     missing = index - np.arange(index.size)
-    ahead = np.concatenate((missing, np.repeat(missing[-1], _LAG_ROWS)))
-    windows = np.lib.stride_tricks.sliding_window_view(ahead, _LAG_ROWS + 1)
-    placed = np.asarray(windows.min(axis=1)) + np.arange(index.size)
+    before = _least_ahead(missing[::-1])[::-1]
+    kept[1:] = ~(still & (_least_ahead(missing)[1:] < before[:-1]))
+    if not kept.all():
+        remarks.append(f"{np.count_nonzero(~kept)} rows repeat a time stamp and are left out")
+    index = index[kept]
+    rows = np.arange(index.size)
+    placed = np.maximum.accumulate(_least_ahead(index - rows)) + rows
     late = int(np.count_nonzero(placed != index))
     if late:
-        worst = float((index - placed).max()) * step_s
+        worst = float(np.abs(index - placed).max()) * step_s
         remarks.append(
             f"{late} time stamps are late, by up to {worst:.3g} s; the samples are put back"
         )
-    kept = np.concatenate(([True], placed[1:] > np.maximum.accumulate(placed)[:-1]))
-    if not kept.all():
-        remarks.append(f"{np.count_nonzero(~kept)} rows repeat a time stamp and are left out")
-    return placed, kept
+    whole = np.zeros(kept.size, dtype=np.int64)
+    whole[kept] = placed
+    return whole, kept
+
+
+def _least_ahead(values: NDArray[np.int64]) -> NDArray[np.int64]:
+    """Return the least of each value and those that follow soon."""
+    padded = np.concatenate((values, np.repeat(values[-1], _LAG_ROWS)))
+    windows = np.lib.stride_tricks.sliding_window_view(padded, _LAG_ROWS + 1)
+    return np.asarray(windows.min(axis=1))
 
 
 def _places_by_breaks(
@@ -196,7 +207,12 @@ def _places_by_breaks(
     broken = steps > max(2.5 * usual, 2.5 * resolution_s)
     rows = np.arange(stamps.size)
     step_s = fit_step(stamps, rows, resolution_s, broken).step_s
-    counts = np.where(broken, np.maximum(np.rint(steps / step_s), 1), 1)
+    # From line to line: a single rounded or late stamp beside a gap would be a second off.
+    starts = np.concatenate(([0], np.flatnonzero(broken) + 1))
+    sizes = np.diff(np.concatenate((starts, [rows.size])))
+    offsets = np.add.reduceat(stamps - stamps[0] - step_s * rows, starts) / sizes
+    counts = np.ones(steps.size)
+    counts[broken] = np.maximum(1 + np.rint(np.diff(offsets) / step_s), 1)
     spread = f"from {steps.min():.3g} s to {steps[~broken].max():.3g} s apart"
     if resolution_s > 0.25 * step_s:
         remarks.append(
@@ -227,7 +243,7 @@ def _grid(
         )
     rate_hz = pleasing_rate_hz(fit, stamps, index)
     # A long pause need not be a whole number of samples: what is left over is uncertain too.
-    excess = np.abs(np.diff(stamps) / fit.step_s - steps)
+    excess = np.abs(np.diff(stamps) / fit.step_s - steps) * (resolution_s < 0.25 * fit.step_s)
     scatter = np.maximum(excess, max(fit.scatter_s, resolution_s / math.sqrt(12)) / fit.step_s)
     gaps = _gaps(index, scatter, fit.step_u_s / fit.step_s)
     rate_u_hz = fit.step_u_s * rate_hz**2

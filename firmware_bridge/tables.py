@@ -147,7 +147,8 @@ def to_recording(
     BridgeError
         If there is no time column and no rate, or no channel beside the time.
     """
-    found = named_time(table, time, path) if time else maybe_find_time(table)
+    has_rate = rate_hz is not None or table.rate_hz is not None
+    found = named_time(table, time, path) if time else maybe_find_time(table, has_rate)
     remarks = [*(found.remarks if found else []), *table.remarks]
     grid = _grid(table, found, rate_hz, path, remarks)
     taken = found.positions if found else ()

@@ -150,7 +150,7 @@ def _first_block(counts: list[int], lines: Sequence[str]) -> tuple[int, int]:
     for index, count in enumerate(counts):
         if runs and count == runs[-1][1]:
             runs[-1][2] += 1
-        elif lines[index].strip():
+        elif lines[index].strip(" \t,;|"):
             runs.append([index, count, 1])
     blocks = [run for run in runs if run[1]]
     long_ones = [run for run in blocks if run[2] >= _MINIMUM_RUN]
@@ -215,11 +215,10 @@ def _find_header(
     fields = [_header_fields(line, delimiter, columns) for line in rows]
     if not fields or not fields[-1]:
         return (), ()
-    if len(fields) == 2 and fields[0] and _is_units_line(fields[1]):
-        return tuple(fields[0]), tuple(fields[1])
-    if _is_units_line(fields[-1]) and len(fields) == 1:
-        return (), tuple(fields[-1])
-    return tuple(fields[-1]), ()
+    share = _share_of_units(fields[-1])
+    if len(fields) == 2 and fields[0] and share >= 0.5 > _share_of_units(fields[0]):
+        return tuple(fields[0]), tuple(fields[-1])
+    return tuple(fields[-1]), tuple(fields[-1]) if share == 1 else ()
 
 
 def _header_fields(line: str, delimiter: str | None, columns: int) -> list[str]:
@@ -238,6 +237,7 @@ def _header_fields(line: str, delimiter: str | None, columns: int) -> list[str]:
     return []
 
 
-def _is_units_line(fields: Sequence[str]) -> bool:
+def _share_of_units(fields: Sequence[str]) -> float:
+    """Return how many of the words that are there are units, from 0 to 1."""
     words = [field.strip("()[]") for field in fields if field.strip("()[]")]
-    return bool(words) and all(is_unit_word(word) for word in words)
+    return sum(map(is_unit_word, words)) / len(words) if words else 0.0

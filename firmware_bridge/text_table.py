@@ -1,5 +1,6 @@
 """CSV and text files to a table: the first section is read, the rest reported."""
 
+import math
 import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
@@ -102,6 +103,8 @@ def _maybe_read_section(data: bytes, offset: int, line: int) -> _Section | None:
             reader.faults = [fault for fault in reader.faults if fault.line < cut.line]
             return section
     if data[stop:].strip():
+        while data[stop : stop + 1] == b"\n":
+            stop += 1
         section.rest = (stop, section.first_line + data.count(b"\n", start, stop))
     return section
 
@@ -239,4 +242,5 @@ def _last_digit(text: str) -> float:
     match = _PRINTED.fullmatch(text)
     if match is None or not text:
         return 0.0
-    return float(10.0 ** (int(match["exponent"] or 0) - len(match["decimals"])))
+    digit = float(f"1e{int(match['exponent'] or 0) - len(match['decimals'])}")
+    return digit if math.isfinite(digit) else 0.0

@@ -12,6 +12,7 @@ from firmware_bridge.table import Table
 __all__ = ["TimeColumn", "TimeColumnError", "maybe_find_time", "named_time"]
 
 _UNIX_S = (5e8, 5e9)  # seconds since 1970 from 1985 to 2128
+_NEUTRAL = ("", "x", "x-axis", "n", "k", "i", "no", "nr", "index", "sample", "samples", "#")
 _FEW = 3  # rows: fewer cannot look regular
 
 
@@ -93,13 +94,17 @@ def _listed(table: Table) -> str:
     return ", ".join(f"{k} {text!r}" for k, text in enumerate(table.names, 1))
 
 
-def maybe_find_time(table: Table) -> TimeColumn | None:
+def maybe_find_time(
+    table: Table, has_rate: bool = False
+) -> TimeColumn | None:  # a fact of the table
     """Return the column that is the time by name, by unit, or by being regular and increasing.
 
     Parameters
     ----------
     table : Table
         What the file holds.
+    has_rate : bool
+        Whether a rate is known: then a regular column with a name of its own is a channel.
 
     Returns
     -------
@@ -115,6 +120,8 @@ def maybe_find_time(table: Table) -> TimeColumn | None:
         pair = _maybe_microseconds(table, position)
         if pair is not None:
             return pair
+    if has_rate and table.names[0].lower() not in _NEUTRAL:
+        return None
     return _maybe_regular(table)
 
 

@@ -1,0 +1,42 @@
+"""``midfringe export``: recording to CSV, NPZ or HDF5."""
+
+import click
+
+from firmware_bridge.reading import Reading, recording_options
+from metro.options import command, is_quiet, output_options
+
+__all__ = ["export"]
+
+
+@command(example="midfringe export night.mfr --out night.csv")
+@click.argument("file")
+@recording_options(omit=("drive",))
+@output_options("out", "json", "overwrite")
+def export(file: str, reading: Reading, out: str | None, as_json: bool, overwrite: bool) -> None:
+    """Write the recording FILE as CSV, NPZ or HDF5; the suffix of --out says which.
+
+    There is a column time_s, seconds from the first sample, and one for each channel; samples
+    that are missing or out of range are nan. NPZ and HDF5 also hold units, gaps, rate and source.
+    """
+    from firmware_bridge.export import export_recording
+
+    if out is None:
+        raise click.UsageError("--out is needed: a file ending in .csv, .npz or .h5")
+    recording = reading.open(file)
+    channels = None if reading.channel is None else [reading.channel]
+    samples = export_recording(
+        recording,
+        out,
+        channels=channels,
+        from_s=reading.from_s,
+        to_s=reading.to_s,
+        overwrite=overwrite,
+    )
+    reading.tell(recording)
+    if as_json:
+        from metro.output import to_json
+
+        click.echo(to_json({"file": out, "samples": samples}))
+    elif not is_quiet():
+        missing = sum(gap.length for gap in recording.gaps)
+        click.echo(f"{out}: {samples} samples ({missing} missing in the recording)")

@@ -39,7 +39,11 @@ _KEYS = {
 @click.option(
     "--mole-fraction", type=ValueType("1"), help="Mole fraction of water vapour, such as 0.0116."
 )
-@click.option("--co2", metavar="VALUE", help="Carbon dioxide; 450 umol/mol if not given.")
+@click.option(
+    "--co2",
+    type=ValueType("1", minimum=0.0, maximum=2e-3),
+    help="Carbon dioxide; 450 umol/mol if not given.",
+)
 @click.option(
     "--equation",
     type=click.Choice(["ciddor", "edlen", "edlen1994"]),
@@ -57,7 +61,7 @@ def air(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option eac
     from metro.output import check_writable, to_json, write_whole
 
     if options["co2"] is not None:
-        bench = bench.override({"air.co2": options["co2"]})
+        bench = bench.override({"air.co2": _plain(options["co2"], "1")})
     humidity, kind = _humidity(bench, options)
     result = solve_air(
         {

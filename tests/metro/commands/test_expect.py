@@ -1,0 +1,235 @@
+"""``midfringe expect``: the figures it must give, what it says, and what it loads."""
+
+import json
+import subprocess
+import sys
+import time
+
+import pytest
+
+from metro.commandline import run
+
+STAGES = ("strain", "displacement", "phase", "fringes", "power", "current", "voltage", "counts")
+
+
+@pytest.fixture(autouse=True)
+def no_bench(monkeypatch):
+    monkeypatch.delenv("MIDFRINGE_BENCH", raising=False)
+
+
+def expect(capsys, *arguments):
+    code = run(["expect", "--json", *arguments])
+    captured = capsys.readouterr()
+    assert (code, captured.err) == (0, "")
+    return json.loads(captured.out)
+
+
+def test_kilometre_arms(capsys):
+    document = expect(capsys, "--strain", "1e-21", "--arm", "4km", "--wavelength", "1064nm")
+    stages = document["stages"]
+    assert tuple(stages) == STAGES
+    assert stages["displacement"]["value"] == pytest.approx(4e-18, rel=1e-14)
+    assert stages["displacement"]["unit"] == "m"
+    assert stages["phase"]["value"] == pytest.approx(4.724199479e-11, rel=1e-10)
+    assert stages["phase"]["u"] is None
+    assert stages["power"] is stages["counts"] is None
+    assert "power is unknown: give --power" in document["cautions"]
+
+
+def test_half_a_metre(capsys):
+    document = expect(capsys, "--strain", "1e-21", "--arm", "0.5m", "--wavelength", "632.8nm")
+    assert document["stages"]["phase"]["value"] == pytest.approx(9.929180321e-15, rel=1e-10)
+
+
+def test_a_nanometre(capsys):
+    document = expect(capsys, "--displacement", "1nm", "--wavelength", "632.8nm")
+    assert document["stages"]["phase"]["value"] == pytest.approx(0.0198583606422, rel=1e-11)
+    assert document["stages"]["fringes"]["value"] == pytest.approx(0.0031605562579, rel=1e-11)
+
+
+def test_shot_noise(capsys):
+    document = expect(
+        capsys, "--displacement", "1pm", "--wavelength", "632.8nm", "--power", "80uW",
+        "--quantum-efficiency", "1", "--contrast", "1",
+    )  # fmt: skip
+    shot = document["noise"]["shot"]
+    assert (shot["value"], shot["unit"]) == (pytest.approx(4.460995e-15, rel=1e-7), "m/Hz**0.5")
+    assert document["noise"]["total"]["value"] == shot["value"]
+    assert document["noise"]["johnson"] is None
+    snr = document["snr"]
+    assert snr["value"]["value"] == pytest.approx(1e-12 / 4.460995e-15, rel=1e-6)
+    assert (snr["duration"]["value"], snr["noise"]["value"]) == (1.0, shot["value"])
+
+
+def test_every_stage_from_every_stage(capsys):
+    bench = ["--arm", "0.42m", "--wavelength", "632.9908nm", "--power", "80uW", "--responsivity", "0.4A/W",
+             "--transimpedance", "62kohm", "--adc-bits", "16", "--adc-range", "10V"]  # fmt: skip
+    first = expect(capsys, "--displacement", "1nm", *bench)["stages"]
+    for stage in ("strain", "phase", "fringes", "voltage", "counts"):
+        unit = {"phase": "rad", "voltage": "V"}.get(stage, "")
+        again = expect(capsys, f"--{stage}", f"{first[stage]['value']!r}{unit}", *bench)["stages"]
+        for name in STAGES:
+            assert again[name]["value"] == pytest.approx(first[name]["value"], rel=1e-12)
+
+
+def test_working_point_and_slopes(capsys):
+    bench = ["--displacement", "1nm", "--wavelength", "633nm", "--low", "0.5V", "--high", "10V"]
+    rising = expect(capsys, *bench)
+    assert rising["working_point"]["phase"]["value"] == pytest.approx(-1.5707963267948966)
+    assert rising["working_point"]["slope"] == {
+        "value": pytest.approx(4.75),
+        "unit": "V/rad",
+        "u": None,
+    }
+    assert rising["working_point"]["voltage"]["value"] == 5.25
+    falling = expect(capsys, *bench, "--slope", "falling")
+    assert falling["stages"]["voltage"]["value"] == pytest.approx(
+        -rising["stages"]["voltage"]["value"]
+    )
+    top = expect(capsys, *bench, "--working-phase", "0rad")
+    assert top["stages"]["voltage"]["value"] == 0.0
+
+
+def test_corrections(capsys):
+    document = expect(
+        capsys, "--strain", "0.1", "--arm", "0.5m", "--frequency", "100MHz", "--theta", "60deg", "--phi", "30deg"
+    )  # fmt: skip
+    corrections = document["corrections"]
+    assert corrections["proper_length"]["differential"]["value"] == pytest.approx(
+        1.2555012e-3, abs=1e-10
+    )
+    assert corrections["arm_travel_time"]["magnitude"]["value"] == pytest.approx(0.826767, abs=5e-7)
+    assert corrections["direction"]["plus"]["value"] == pytest.approx(0.3125)
+    assert corrections["direction"]["cross"]["value"] == pytest.approx(0.43301270189222)
+    assert "plus_at_frequency" in corrections["direction"]
+
+
+def test_compression_of_six_lines(capsys):
+    document = expect(capsys, "--phase", "0.2rad", "--lines", "6")
+    assert document["corrections"]["compression"]["loss"]["value"] == pytest.approx(0.054, abs=5e-4)
+    small = expect(capsys, "--phase", "1e-9rad")["corrections"]["compression"]
+    assert small["loss"]["value"] == pytest.approx(1e-18 / 8)
+
+
+def test_readout_correction(capsys, tmp_path):
+    bench = tmp_path / "bench.toml"
+    bench.write_text('[photodiode]\nbandwidth = "5 kHz"\n[adc]\nantialias = "1.5 kHz"\n')
+    document = expect(capsys, "--phase", "1mrad", "--bench", str(bench), "--frequency", "1kHz")
+    expected = abs(1 / (1 + 0.2j) / (1 + 1j / 1.5))
+    assert document["corrections"]["readout"]["magnitude"]["value"] == pytest.approx(expected)
+
+
+def test_cautions(capsys):
+    cautions = expect(capsys, "--displacement", "1nm", "--wavelength", "632.8nm")["cautions"]
+    assert "632.9908 nm" in cautions[0]
+    assert cautions[1].startswith("no air entry: the arms are taken to be in vacuum")
+    air = ["--temperature", "20degC", "--pressure", "101325Pa", "--humidity", "50%"]
+    document = expect(capsys, "--displacement", "1nm", "--wavelength", "632.9908nm", *air)
+    assert not any("632.8" in c or "vacuum" in c for c in document["cautions"])
+    assert "1.000271373" in document["conventions"]["phase"]
+    assert "Ciddor" in document["conventions"]["phase"]
+    assert document["stages"]["phase"]["u"] > 0
+    big = expect(capsys, "--displacement", "100nm", "--wavelength", "633nm")["cautions"]
+    assert any("beyond the linear range" in c for c in big)
+
+
+def test_page_for_people(capsys, tmp_path):
+    bench = tmp_path / "bench.toml"
+    bench.write_text(
+        '[laser]\nwavelength = { value = "632.99 nm", u = "1 pm" }\n[air]\nmedium = "vacuum"\n'
+    )
+    assert run(["expect", "--displacement", "1nm", "--bench", str(bench)]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    assert lines[:4] == [
+        "stage         change",
+        "strain        unknown",
+        "displacement  1 nm",
+        "phase         19.852400 mrad, U = 0.000061 mrad (95 %)",
+    ]
+    assert f"laser.wavelength  632.99 nm, u = 1 pm  {bench}, [laser] wavelength" in lines
+
+
+def test_out_file(capsys, tmp_path):
+    path = tmp_path / "expectation.json"
+    assert run(["expect", "--phase", "1mrad", "--out", str(path)]) == 0
+    assert json.loads(path.read_text())["stages"]["phase"]["value"] == 1e-3
+    capsys.readouterr()
+    assert run(["expect", "--phase", "1mrad", "--out", str(path)]) == 2
+    assert capsys.readouterr().err == f"midfringe: {path} exists; give --overwrite to replace it\n"
+
+
+@pytest.mark.parametrize(
+    ("arguments", "message"),
+    [
+        (["--arm", "0.5"], "--arm must have a unit of length (such as '0.5 m'), got '0.5'"),
+        (["--arm", "3kg"], "--arm must have a unit of length (such as '0.5 m'), got '3kg'"),
+        (["--arm", "-1m"], "--arm must be > 0.0 m, got '-1m'"),
+        (["--wavelength", "nan"], "--wavelength must be a finite number, got 'nan'"),
+        (
+            ["--wavelength", "1,5um"],
+            "--wavelength must be written with a decimal point, not a comma, got '1,5um'",
+        ),
+        (["--phase", "1rad"], "exactly one of --strain, --displacement, --phase, --fringes, --voltage, --counts must be given, got --strain and --phase"),
+        (["--frequency", "0Hz"], "--frequency must be > 0.0 Hz, got '0Hz'"),
+        (["--temperature", "20degC"], 'the bench must give air.pressure: write pressure = "101325 Pa" under [air] or give --pressure'),
+    ],
+)  # fmt: skip
+def test_wrong_input_is_one_line(capsys, arguments, message):
+    assert run(["expect", "--strain", "1e-21", "--wavelength", "633nm", *arguments]) == 2
+    captured = capsys.readouterr()
+    assert (captured.out, captured.err) == ("", f"midfringe: {message}\n")
+
+
+def test_nothing_given(capsys):
+    assert run(["expect"]) == 2
+    assert capsys.readouterr().err == (
+        "midfringe: exactly one of --strain, --displacement, --phase, --fringes, --voltage, --counts"
+        " must be given, got none\n"
+    )
+
+
+def loaded_by(code):
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    return set(done.stdout.split())
+
+
+def test_expect_loads_no_fitting_code():
+    arguments = ["expect", "--strain", "1e-21", "--arm", "4km", "--wavelength", "1064nm"]
+    code = f"import sys\nfrom metro.commandline import run\nrun({arguments!r})\nprint(*sys.modules)"
+    modules = loaded_by(code)
+    assert "metro.expectation" in modules
+    for heavy in (
+        "scipy",
+        "matplotlib",
+        "h5py",
+        "serial",
+        "calibration",
+        "firmware_bridge",
+    ):
+        assert heavy not in modules
+
+
+def test_the_kernel_loads_neither_numpy_nor_pint():
+    names = "air antenna arms bessel constants fringe humidity noise photodiode strain student"
+    code = "import sys\nimport metro.kernel\n"
+    code += "".join(f"import metro.kernel.{name}\n" for name in names.split())
+    modules = loaded_by(code + "print(*sys.modules)")
+    for heavy in ("numpy", "pint", "click", "dataclasses", "typing_extensions"):
+        assert heavy not in modules
+
+
+@pytest.mark.slow
+def test_start_up_time():
+    """A whole `expect` against importing numpy and pint and building pint's own registry."""
+    base = [sys.executable, "-c", "import numpy, pint; pint.UnitRegistry()"]
+    ours = [sys.executable, "-m", "metro", "expect", "--strain", "1e-21", "--arm", "4km"]
+
+    def best(command):
+        times = []
+        for _ in range(7):
+            start = time.perf_counter()
+            subprocess.run(command, capture_output=True, check=True)
+            times.append(time.perf_counter() - start)
+        return min(times)
+
+    assert best(ours) < 1.25 * best(base)

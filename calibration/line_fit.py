@@ -1,0 +1,188 @@
+"""What a line fit found: each line, the clock, and how much of the recording was used."""
+
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.phasor_estimate import PhasorEstimate
+
+if TYPE_CHECKING:
+    from metro.measured import Measured
+    from metro.units import Quantity
+
+__all__ = ["Line", "LineFit"]
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """One line, A·cos(2πft + φ) with t = 0 at the recording's first sample.
+
+    Parameters
+    ----------
+    frequency_hz, frequency_u_hz : float
+        Frequency as fitted or given, and its standard uncertainty (0 where given).
+    response : PhasorEstimate
+        The line in the samples.
+    density_value : float
+        Amplitude spectral density of the noise beside the line, unit of the samples/√Hz.
+    used_s : float
+        Time really used [s].
+    drive : PhasorEstimate, optional
+        The line in the drive channel.
+    ratio : PhasorEstimate, optional
+        Response over drive.
+    distrust_reasons : tuple of str
+        Why not to believe it; empty where no reason was found.
+    """
+
+    frequency_hz: float
+    frequency_u_hz: float
+    response: PhasorEstimate
+    density_value: float
+    used_s: float
+    drive: PhasorEstimate | None = None
+    ratio: PhasorEstimate | None = None
+    distrust_reasons: tuple[str, ...] = ()
+
+    @property
+    def is_trustworthy(self) -> bool:
+        """True where no reason for distrust was found."""
+        return not self.distrust_reasons
+
+    @property
+    def frequency(self) -> "Measured":
+        """Frequency, in the time of the recording's own clock."""
+        from metro.measured import Measured
+
+        return Measured.of(self.frequency_hz, "Hz", self.frequency_u_hz, self.dof)
+
+    @property
+    def amplitude(self) -> "Measured":
+        """Amplitude, zero to peak."""
+        return self.response.amplitude
+
+    @property
+    def phase(self) -> "Measured":
+        """Phase [rad] at t = 0."""
+        return self.response.phase
+
+    @property
+    def noise_density(self) -> "Measured":
+        """One-sided amplitude spectral density of the noise beside the line."""
+        from metro.measured import Measured
+
+        # A power known to a relative √(2/dof) is an amplitude known to half of that.
+        u = self.density_value / np.sqrt(2 * self.dof)
+        return Measured.of(self.density_value, density_unit(self.response.unit), float(u), self.dof)
+
+    @property
+    def snr(self) -> float:
+        """A/√(S/T); infinite where no noise was found."""
+        floor = self.density_value / np.sqrt(self.used_s)
+        return float(abs(self.phasor) / floor) if floor > 0 else float("inf")
+
+    @property
+    def phasor(self) -> complex:
+        """A·e^(iφ), in the unit of the samples."""
+        return self.response.phasor
+
+    @property
+    def phasor_covariance(self) -> NDArray[np.float64]:
+        """Covariance of real and imaginary part, shape (2, 2)."""
+        return self.response.covariance
+
+    @property
+    def dof(self) -> float:
+        """Degrees of freedom of the covariance."""
+        return self.response.dof
+
+    @property
+    def ratio_phasor(self) -> complex | None:
+        """Response over drive, None without a drive."""
+        return None if self.ratio is None else self.ratio.phasor
+
+    @property
+    def ratio_covariance(self) -> NDArray[np.float64] | None:
+        """Covariance of the ratio's real and imaginary part, shape (2, 2)."""
+        return None if self.ratio is None else self.ratio.covariance
+
+    @property
+    def drive_phasor(self) -> complex | None:
+        """A·e^(iφ) of the drive, None without a drive."""
+        return None if self.drive is None else self.drive.phasor
+
+
+@dataclass(frozen=True, slots=True)
+class LineFit:
+    """All lines of one fit.
+
+    Parameters
+    ----------
+    lines : tuple of Line
+        In the order the frequencies were given.
+    clock_value, clock_u, clock_dof : float
+        Common relative error of all line frequencies, averaged over the recording: the lines stand
+        at f·(1 + offset) of the recording's clock. NaN where it cannot be known.
+    clock_applied : bool
+        True where the lines were followed at the offset found; False where it is too small to tell
+        from zero and the frequencies were taken as given.
+    used_fraction : float
+        Share of the recording's samples that were used.
+    duration_s : float
+        Length of the recording [s], gaps included.
+    remarks : tuple of str
+        What was done that a reader should know.
+    """
+
+    lines: tuple[Line, ...]
+    clock_value: float
+    clock_u: float
+    clock_dof: float
+    clock_applied: bool
+    used_fraction: float
+    duration_s: float
+    remarks: tuple[str, ...] = field(default=())
+
+    @property
+    def clock_offset(self) -> "Measured | None":
+        """Relative frequency error of all lines, None where it cannot be known."""
+        from metro.measured import Measured
+
+        if not np.isfinite(self.clock_value):
+            return None
+        return Measured.of(self.clock_value, "1", self.clock_u, self.clock_dof)
+
+    @property
+    def duration(self) -> "Quantity":
+        """Length of the recording, gaps included."""
+        from metro.units import quantity
+
+        return quantity(self.duration_s, "s")
+
+    @property
+    def is_trustworthy(self) -> bool:
+        """True where no line has a reason for distrust."""
+        return all(line.is_trustworthy for line in self.lines)
+
+    @property
+    def distrust_reasons(self) -> tuple[str, ...]:
+        """All reasons, each once."""
+        return tuple(dict.fromkeys(r for line in self.lines for r in line.distrust_reasons))
+
+
+def density_unit(unit: str) -> str:
+    """Return the unit of an amplitude spectral density.
+
+    Parameters
+    ----------
+    unit : str
+        Unit of the samples, "1" for none.
+
+    Returns
+    -------
+    str
+        ``V/Hz**0.5`` for ``V``, ``1/Hz**0.5`` for ``1``.
+    """
+    return f"{unit}/Hz**0.5"

@@ -1,0 +1,136 @@
+"""Line noise: the spectral density beside each line, from what the fit leaves over.
+
+The residual block phasors are looked at in frequency bins of 1/T on both sides of each line. Bins that
+another line or an unnamed tone sits in are left out.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.phasors import BlockPhasors
+
+__all__ = ["LineNoise", "measure_noise", "noise_bins"]
+
+_MOST_BINS = 32
+# One exponential deviate in 64 exceeds 13 times the mean with probability 64·e^−13 = 1.4e-4.
+_TONE = 13.0
+
+
+@dataclass(frozen=True, slots=True)
+class LineNoise:
+    """The noise beside one line.
+
+    Parameters
+    ----------
+    variance : float
+        Variance of a sample if the whole spectrum were as beside the line, S·rate/2.
+    dof : float
+        Degrees of freedom of ``variance``.
+    near : float
+        Mean power of the two bins on each side, over ``variance``.
+    offsets : ndarray of int, shape (n_bins,)
+        Bins looked at, in units of 1/T from the line.
+    used : ndarray of bool, shape (n_bins,)
+        Those that count.
+    bins : ndarray of complex, shape (n_bins,)
+        Residual in each bin, scaled so that its mean square is the variance of a sample.
+    """
+
+    variance: float
+    dof: float
+    near: float
+    offsets: NDArray[np.int64]
+    used: NDArray[np.bool_]
+    bins: NDArray[np.complex128]
+
+
+def noise_bins(
+    phasors: BlockPhasors,
+    residual: NDArray[np.complex128],
+    lines: int,
+) -> tuple[NDArray[np.int64], NDArray[np.complex128]]:
+    """Return the residual in bins beside each line.
+
+    Parameters
+    ----------
+    phasors : BlockPhasors
+        The recording.
+    residual : ndarray of complex, shape (n_blocks, n_carriers)
+        Residual block phasors, the line's own phase course taken out.
+    lines : int
+        How many of the carriers, from the first, are lines.
+
+    Returns
+    -------
+    offsets : ndarray of int, shape (n_bins,)
+        In units of 1/T, T the span of the recording.
+    bins : ndarray of complex, shape (n_bins, lines)
+        Scaled so that white noise of variance σ² has mean square σ².
+    """
+    middles = phasors.middles
+    span = middles[-1] - middles[0] + phasors.block
+    most = int(min(_MOST_BINS, max(1, 0.45 * span / phasors.block - 1)))
+    offsets = np.concatenate([np.arange(-most, 0), np.arange(1, most + 1)])
+    turns = np.exp(-2j * np.pi * np.outer(offsets, (middles - middles[0]) / span))
+    return offsets, turns @ residual[:, :lines] / np.sqrt(phasors.used)
+
+
+def measure_noise(
+    offsets: NDArray[np.int64],
+    bins: NDArray[np.complex128],
+    line: float,
+    taken: NDArray[np.float64],
+    share: NDArray[np.float64],
+    highest: float,
+) -> LineNoise:
+    """Return the noise beside one line.
+
+    Parameters
+    ----------
+    offsets : ndarray of int, shape (n_bins,)
+        From :func:`noise_bins`.
+    bins : ndarray of complex, shape (n_bins,)
+        The line's column.
+    line : float
+        The line in bins, f·T.
+    taken : ndarray
+        Everything else that was fitted, in bins: other lines, tones, drift at 0.
+    share : ndarray, shape (n_bins,)
+        Share of each bin that other parameters have taken.
+    highest : float
+        The Nyquist frequency in bins.
+
+    Returns
+    -------
+    LineNoise
+        With the share of each bin that the fit has taken restored.
+    """
+    # A carrier at distance d bins takes sinc²(d) of a bin's power; what is left is compared.
+    place = line + offsets
+    left = 1.0 - share - (np.sinc(place[:, None] - taken[None, :]) ** 2).sum(axis=1)
+    reach = 0.7 * min(line, highest - line)
+    sound = (left > 0.5) & (np.abs(offsets) <= max(3.0, reach)) & (place > 0.5) & (place < highest)
+    power = np.abs(bins) ** 2 / np.where(left > 0.5, left, 1.0)
+    used = _without_tones(power, sound)
+    counted = float(left[used].sum())
+    variance = float((np.abs(bins[used]) ** 2).sum()) / counted if counted > 0 else 0.0
+    dof = max(2.0, 2.0 * counted)
+    close = used & (np.abs(offsets) <= 2)
+    near = float(power[close].mean() / variance) if close.any() and variance > 0 else 1.0
+    return LineNoise(variance, dof, near, offsets, used, bins)
+
+
+def _without_tones(power: NDArray[np.float64], sound: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    used = sound.copy()
+    for _ in range(8):
+        if used.sum() < 8:
+            return used
+        # The median of exponential deviates is ln 2 of their mean and does not see the tones.
+        level = float(np.median(power[used])) / np.log(2.0)
+        kept = sound & (power <= _TONE * level)
+        if (kept == used).all() or kept.sum() < 0.5 * sound.sum():
+            return used
+        used = kept
+    return used

@@ -37,18 +37,16 @@ class SimulatedBench:
             else bench.magnitude("mains.frequency"),
         )
         self._seed = seed
-        self._recordings = 0
 
-    def start(self, setup: Setup) -> SampleStream:
-        """Return the stream of the next recording; each recording has noise of its own."""
-        self._recordings += 1
+    def start(self, setup: Setup, number: int = 1) -> SampleStream:
+        """Return the stream of one recording; each ``number`` has noise of its own."""
         return SampleStream(
             setup,
             self.truth,
             self.converter,
             self._electronics,
             self.rate_hz,
-            [self._seed, self._recordings],
+            [self._seed, number],
         )
 
 

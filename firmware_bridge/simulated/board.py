@@ -65,17 +65,21 @@ def _slots(rate_hz: float) -> int:
     return max(1, min(500, round(rate_hz * FRAME_S)))
 
 
-def wire_bytes(bench: SimulatedBench, setup: Setup, stream: int) -> Iterator[bytes]:
+def wire_bytes(
+    bench: SimulatedBench, setup: Setup, stream: int, number: int = 1
+) -> Iterator[bytes]:
     """Yield the bytes of one recording, endlessly: the announcement, then frames.
 
     Parameters
     ----------
     bench : SimulatedBench
-        The bench; this starts its next recording.
+        The bench.
     setup : Setup
         Its state.
     stream : int
         Stream id.
+    number : int
+        Which recording of the session this is: each has noise of its own.
 
     Yields
     ------
@@ -84,7 +88,7 @@ def wire_bytes(bench: SimulatedBench, setup: Setup, stream: int) -> Iterator[byt
     """
     announcement = announcement_of(bench, stream)
     yield encode_announcement(announcement)
-    samples = bench.start(setup)
+    samples = bench.start(setup, number)
     low, high = announcement.channels[0].low, announcement.channels[0].high
     slots, sent, sequence = announcement.slots, 0, 0
     while True:
@@ -122,6 +126,7 @@ class SimulatedBoard:
     def __init__(self, bench: SimulatedBench, setup: Setup) -> None:
         self._bench, self._setup = bench, setup
         self._stream = 0
+        self._number = 1
         self._source: Iterator[bytes] | None = None
         self._outbox = b""
         self._lock = threading.Lock()
@@ -152,6 +157,7 @@ class SimulatedBoard:
         """Stop sending and put the bench into another state, for the next ``start``."""
         with self._lock:
             self._setup = setup
+            self._number += 1
             self._halt()
 
     def _halt(self) -> None:
@@ -187,7 +193,7 @@ class SimulatedBoard:
             self._halt()
             self._stream += 1
             self._outbox = encode_reply(Reply(command.code, command.request))
-            self._source = wire_bytes(self._bench, self._setup, self._stream)
+            self._source = wire_bytes(self._bench, self._setup, self._stream, self._number)
         elif command.code == CommandCode.STOP:
             self._halt()
             self._outbox = encode_reply(Reply(command.code, command.request))

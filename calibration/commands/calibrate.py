@@ -1,0 +1,73 @@
+"""``midfringe calibrate``: a session's recordings and the bench file to a calibration."""
+
+from typing import Any
+
+import click
+
+from metro.bench import Bench
+from metro.options import bench_options, command, distrust, is_quiet, output_options
+from metro.output import check_writable, to_json, write_whole
+
+__all__ = ["calibrate"]
+
+_ROLES = {
+    "dark": "Beam blocked, drive off.",
+    "pickup": "Beam blocked, drive on.",
+    "blocked-x": "X arm blocked, y arm alone, drive on.",
+    "blocked-y": "Y arm blocked, x arm alone, drive on.",
+    "scan": "Over whole fringes, both directions.",
+    "lines-rising": "Lines driven, on the rising slope.",
+    "lines-falling": "Lines driven, on the falling slope.",
+}
+
+
+def _role_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
+    for role, text in reversed(_ROLES.items()):
+        function = click.option(
+            f"--{role}", multiple=True, metavar="FILE", help=f"{text} Repeatable."
+        )(function)
+    return function
+
+
+@command(
+    example="midfringe calibrate --bench bench.toml --scan 05-scan.mfr "
+    "--lines-rising 06-lines-rising.mfr --lines-falling 07-lines-falling.mfr --out cal.json"
+)
+@_role_options
+@bench_options
+@output_options("out", "plot", "json", "overwrite")
+def calibrate(
+    bench: Bench,
+    out: str | None,
+    plot: str | None,
+    as_json: bool,
+    overwrite: bool,
+    **roles: tuple[str, ...],
+) -> None:
+    """Turn a session's recordings and the bench file into a calibration with its budget.
+
+    --scan and one of --lines-rising and --lines-falling are the least; what is missing becomes a
+    caution and an entry of the budget.
+    """
+    from calibration.calibrate import calibrate as run
+    from calibration.summary import calibration_text
+
+    for path in (out, plot):
+        if path is not None:
+            check_writable(path, overwrite)
+    files = {role: roles[role.replace("-", "_")] for role in _ROLES}
+    result = run(bench, {role: paths for role, paths in files.items() if paths})
+    document = to_json(result.to_dict())
+    if plot is not None:
+        from calibration.session_plot import Shown, save_session_page
+
+        shown = Shown.of_files(result, roles)
+        save_session_page(result, shown, [], "Calibration", plot, overwrite=overwrite)
+    if out is not None:
+        write_whole(out, document + "\n", overwrite=overwrite)
+    click.echo(document if as_json else calibration_text(result))
+    if not is_quiet():
+        for caution in result.cautions:
+            click.echo(f"caution: {caution}", err=True)
+    if not result.is_trustworthy:
+        distrust(result.all_reasons)

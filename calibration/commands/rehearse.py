@@ -1,0 +1,114 @@
+"""``midfringe rehearse``: a whole session on a simulated bench, compared with the truth."""
+
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Self
+
+import click
+
+from metro.bench import Bench
+from metro.options import bench_options, command, is_quiet, output_options
+from metro.output import table, to_json
+
+if TYPE_CHECKING:
+    from calibration.rehearsal import Rehearsal
+
+__all__ = ["rehearse"]
+
+
+@command(example="midfringe rehearse --seed 7 --out rehearsal")
+@click.option(
+    "--seed",
+    type=click.IntRange(min=0),
+    default=1,
+    show_default=True,
+    help="Seed of the truth and of all noise.",
+)
+@click.option(
+    "--trials",
+    type=click.IntRange(min=1),
+    help="Play this many sessions in memory, seeds counted up from --seed, and print the coverage.",
+)
+@bench_options
+@output_options("json", "overwrite")
+@click.option("--out", metavar="FOLDER", help="Where the files stay.  [default: rehearsal]")
+def rehearse(
+    bench: Bench, seed: int, trials: int | None, out: str | None, as_json: bool, overwrite: bool
+) -> None:
+    """Play a whole session on a simulated bench, through a real serial port.
+
+    Records dark, pick-up, single arms, scans and lines on both slopes, calibrates, converts, and
+    compares with the truth, which the analysis never sees. Without --bench a built-in bench is
+    played; the folder keeps every file, with a commented bench.toml to start from.
+    """
+    from calibration.rehearsal import rehearse as play
+    from calibration.rehearsal_folder import comparison_document, leave, prepare, rehearsal_bench
+    from calibration.rehearsal_script import session_steps
+
+    played, text = rehearsal_bench(bench)
+    if trials is not None:
+        _run_trials(played, seed, trials, as_json=as_json)
+        return
+    folder = Path(out or "rehearsal")
+    prepare(folder, overwrite=overwrite)
+    with _progress(len(session_steps(played)) + 2) as step:
+        result = play(played, seed, folder, progress=step)
+    document = comparison_document(result) | {"files": leave(result, folder, text)}
+    click.echo(to_json(document) if as_json else _text(result, folder))
+
+
+def _run_trials(bench: Bench, seed: int, trials: int, *, as_json: bool) -> None:
+    from calibration.trials import coverage_of, coverage_table, play_trials
+
+    with _progress(trials) as step:
+        rows = coverage_of(list(play_trials(bench, range(seed, seed + trials), progress=step)))
+    document = {"seed": seed, "trials": trials, "coverage": [row.to_dict() for row in rows]}
+    click.echo(to_json(document) if as_json else coverage_table(rows))
+
+
+class _progress:  # noqa: N801  # used as a function: with _progress(12) as step
+    """A progress bar on a terminal, nothing elsewhere; ``step(text)`` moves it on."""
+
+    def __init__(self, length: int) -> None:
+        hidden = is_quiet() or not sys.stderr.isatty()
+        self._bar = click.progressbar(
+            length=length, label="session", file=sys.stderr, hidden=hidden, item_show_func=str
+        )
+
+    def __enter__(self) -> Self:
+        self._bar.__enter__()
+        return self
+
+    def __exit__(self, *error: object) -> None:
+        self._bar.__exit__(None, None, None)
+
+    def __call__(self, text: str) -> None:
+        self._bar.update(1, text)
+
+
+def _text(result: "Rehearsal", folder: Path) -> str:
+    from metro.display import show
+
+    rows = [
+        [
+            c.name,
+            show(c.truth, c.measured.unit, 6),
+            show(float(c.measured.magnitude), c.measured.unit, 6),
+            show(float(c.measured.expanded().magnitude), c.measured.unit, 2),
+            "yes" if c.inside_95 else "no",
+        ]
+        for c in result.comparisons
+    ]
+    header = ["quantity", "truth", "measured", "U (95 %)", "truth inside"]
+    inside = sum(c.inside_95 for c in result.comparisons)
+    return "\n".join(
+        [
+            table(rows, header=header),
+            "",
+            (
+                f"{inside} of {len(rows)} true values lie inside their 95 % interval "
+                "(one in twenty is expected outside)"
+            ),
+            f"all files of the session, with a page (session.png) and a bench.toml: {folder}",
+        ]
+    )

@@ -1,0 +1,123 @@
+"""The folder a rehearsal leaves: bench file, recordings, calibration, displacement, page, truth."""
+
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+from calibration.comparison import Comparison
+from calibration.errors import CalibrationError
+from calibration.rehearsal import Rehearsal
+from calibration.session_plot import Shown, save_session_page
+from firmware_bridge.export import export_recording
+from metro.bench import Bench, load_bench
+from metro.bench_keys import OPTIONS
+from metro.measured import Measured
+from metro.output import to_json, write_whole
+
+__all__ = ["FolderError", "comparison_document", "leave", "prepare", "rehearsal_bench"]
+
+_BUILT_IN = files("firmware_bridge.simulated").joinpath("bench.toml")
+
+
+class FolderError(CalibrationError):
+    """A folder that cannot take a session's files."""
+
+
+def rehearsal_bench(given: Bench) -> tuple[Bench, str]:
+    """Return the bench to play and the text of its file.
+
+    Parameters
+    ----------
+    given : Bench
+        From the command line: a file's, or only overrides, or nothing.
+
+    Returns
+    -------
+    tuple of (Bench, str)
+        The bench; without a file the built-in one with the overrides.
+    """
+    if given.path:
+        return given, Path(given.path).read_text(encoding="utf-8")
+    text = _BUILT_IN.read_text(encoding="utf-8")
+    bench = load_bench(Path(str(_BUILT_IN)))
+    overrides = {key: given.get(key) for key in OPTIONS.values()}
+    known = {key: value for key, value in overrides.items() if value is not None}
+    lines = [f"# played with {key} = {value}\n" for key, value in known.items()]
+    return bench.replace(known), "".join(lines) + text
+
+
+def prepare(folder: Path, *, overwrite: bool) -> None:
+    """Make the folder; refuse one that holds something unless ``overwrite``.
+
+    Parameters
+    ----------
+    folder : Path
+        Where the session's files go.
+    overwrite : bool
+        Whether files in it may be replaced.
+
+    Raises
+    ------
+    FolderError
+        If it is no folder, holds something, or cannot be made.
+    """
+    if folder.exists() and not folder.is_dir():
+        raise FolderError(f"--out must be a folder, got the file {folder}")
+    if folder.is_dir() and any(folder.iterdir()) and not overwrite:
+        raise FolderError(f"the folder {folder} is not empty; --overwrite replaces its files")
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise FolderError(f"cannot make the folder {folder}: {error.strerror}") from None
+
+
+def comparison_document(rehearsal: Rehearsal) -> dict[str, Any]:
+    """Return truth and measured values by name, in JSON form."""
+    found = rehearsal.comparisons
+    return {
+        "seed": rehearsal.seed,
+        "truth": {c.name: _truth(c) for c in found},
+        "measured": {c.name: c.measured.to_dict(with_dof=True) for c in found},
+        "inside_95": {c.name: c.inside_95 for c in found},
+    }
+
+
+def leave(rehearsal: Rehearsal, folder: Path, bench_text: str) -> list[str]:
+    """Write all that the session gave into its folder and return the files' paths.
+
+    Parameters
+    ----------
+    rehearsal : Rehearsal
+        The session; its recordings are in the folder already.
+    folder : Path
+        From `prepare`.
+    bench_text : str
+        The bench file to leave.
+
+    Returns
+    -------
+    list of str
+        Every file, recordings included.
+    """
+    written = {
+        "bench.toml": bench_text,
+        "calibration.json": to_json(rehearsal.calibration.to_dict()) + "\n",
+        "comparison.json": to_json(comparison_document(rehearsal)) + "\n",
+    }
+    for name, text in written.items():
+        write_whole(folder / name, text, overwrite=True)
+    export_recording(rehearsal.conversion, folder / "displacement.npz", overwrite=True)
+    save_session_page(
+        rehearsal.calibration,
+        Shown.of_files(rehearsal.calibration, rehearsal.roles),
+        rehearsal.comparisons,
+        f"Rehearsal on a simulated bench, seed {rehearsal.seed}",
+        folder / "session.png",
+        overwrite=True,
+    )
+    names = [*written, "displacement.npz", "session.png"]
+    return [str(path) for path in rehearsal.files.values()] + [str(folder / n) for n in names]
+
+
+def _truth(comparison: Comparison) -> dict[str, Any]:
+    return Measured.of(comparison.truth, comparison.measured.unit).to_dict()

@@ -1,0 +1,123 @@
+"""The recordings of one session by role, opened and read channel by channel."""
+
+import hashlib
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+
+from calibration.errors import CalibrationError
+from firmware_bridge.opening import open_recording
+from firmware_bridge.trace import Recording, Trace
+from metro.bench import Bench
+
+__all__ = ["ROLES", "RoleRecord", "Session", "photodiode_name"]
+
+ROLES = (
+    "dark",
+    "pickup",
+    "blocked-x",
+    "blocked-y",
+    "scan",
+    "lines-rising",
+    "lines-falling",
+)
+
+
+@dataclass(frozen=True, eq=False)
+class RoleRecord:
+    """One recording in its role: photodiode trace, drive trace if there is one, and its origin."""
+
+    role: str
+    path: str
+    photodiode: Trace
+    drive: Trace | None
+    length: int
+    remarks: tuple[str, ...] = field(default=())
+
+    @property
+    def used_fraction(self) -> float:
+        """Part of the samples that is neither missing nor over-range."""
+        return float(np.count_nonzero(np.isfinite(self.photodiode.values))) / self.length
+
+    def to_dict(self) -> dict[str, object]:
+        """Return what a calibration keeps of its recording: role, file, SHA-256, counts."""
+        return {
+            "role": self.role,
+            "file": Path(self.path).name,
+            "sha256": _sha256(self.path),
+            "samples": self.length,
+            "rate_hz": self.photodiode.rate_hz,
+            "missing": self.photodiode.missing,
+            "over_range": self.photodiode.over_range,
+        }
+
+
+class Session:
+    """All recordings of a session.
+
+    Parameters
+    ----------
+    files : mapping of str to sequence of str
+        Paths by role (see ``ROLES``).
+    bench : Bench
+        Names the drive's channel (``drive.channel``).
+
+    Raises
+    ------
+    CalibrationError
+        If a role is unknown, or there is no scan and no given extremes, or no lines recording.
+    """
+
+    def __init__(self, files: Mapping[str, Sequence[str]], bench: Bench) -> None:
+        unknown = [role for role in files if role not in ROLES]
+        if unknown:
+            raise CalibrationError(f"role must be one of {', '.join(ROLES)}, got {unknown[0]!r}")
+        self._records = [_open(role, path, bench) for role in ROLES for path in files.get(role, ())]
+        if not (self.of("lines-rising") or self.of("lines-falling")):
+            raise CalibrationError(
+                "a calibration needs at least one recording of lines on a slope, got none "
+                "(--lines-rising FILE or --lines-falling FILE)"
+            )
+
+    def of(self, role: str) -> list[RoleRecord]:
+        """Return the records of one role, in the order given."""
+        return [record for record in self._records if record.role == role]
+
+    def __iter__(self) -> Iterator[RoleRecord]:
+        return iter(self._records)
+
+
+def _open(role: str, path: str, bench: Bench) -> RoleRecord:
+    recording = open_recording(path)
+    return RoleRecord(
+        role=role,
+        path=path,
+        photodiode=recording.trace(photodiode_name(recording)),
+        drive=_drive(recording, bench),
+        length=recording.length,
+        remarks=tuple(recording.remarks),
+    )
+
+
+def photodiode_name(recording: Recording) -> str:
+    """Return the photodiode's channel of a session's recording: by name, else the first one."""
+    names = [channel.name for channel in recording.channels]
+    return f"name:{'photodiode' if 'photodiode' in names else names[0]}"
+
+
+def _drive(recording: Recording, bench: Bench) -> Trace | None:
+    wanted = bench.text("drive.channel")
+    names = [channel.name for channel in recording.channels]
+    if wanted is not None:
+        return recording.trace(wanted)
+    return recording.trace("name:drive") if "drive" in names else None
+
+
+def _sha256(path: str) -> str:
+    digest = hashlib.sha256()
+    with Path(path).open("rb") as file:
+        while chunk := file.read(1 << 20):
+            digest.update(chunk)
+    return digest.hexdigest()

@@ -1,0 +1,66 @@
+"""A calibration in words and a table, for a person."""
+
+from calibration.record import Calibration
+from metro.display import show_any
+from metro.measured import Measured
+from metro.output import table
+
+__all__ = ["CONVENTIONS", "calibration_text"]
+
+CONVENTIONS = (
+    "displacement is the differential arm length, positive when the x arm grows",
+    "amplitudes are zero to peak; phases refer to the drive at the actuator's terminals",
+    "u is the standard uncertainty, U = k·u the expanded one at 95 %",
+    "the readout slope holds at mid-fringe, in volts at the converter's input",
+)
+
+
+def calibration_text(calibration: Calibration) -> str:
+    """Return the result of a calibration as lines for a terminal."""
+    rows = [
+        [
+            show_any(entry.frequency),
+            _value(entry.magnitude),
+            _expanded(entry.magnitude),
+            "unknown" if entry.phase is None else _value(entry.phase),
+            "" if entry.phase is None else _expanded(entry.phase),
+            "; ".join(entry.reasons) or "no reason for distrust found",
+        ]
+        for entry in calibration.actuator
+    ]
+    header = ["line", "actuator", "U (95 %)", "phase", "U (95 %)", "trust"]
+    parts = [table(rows, header=header), "", table(_readout_rows(calibration)), ""]
+    first = calibration.actuator[0]
+    parts += [f"budget of the actuator at {show_any(first.frequency)}:", first.budget.table(), ""]
+    parts += ["budget of the readout slope:", calibration.readout_budget.table(), ""]
+    parts += [f"check: {_check(check)}" for check in calibration.checks]
+    parts += [f"assumed: {text}" for text in calibration.assumptions]
+    parts += [f"convention: {text}" for text in CONVENTIONS]
+    return "\n".join(parts)
+
+
+def _readout_rows(calibration: Calibration) -> list[list[str]]:
+    values = {
+        "readout slope": calibration.readout_slope,
+        "contrast": calibration.contrast,
+        "dark level": calibration.dark,
+        "clock offset": calibration.clock_offset,
+    }
+    known = {name: value for name, value in values.items() if value is not None}
+    return [
+        [name, _value(value), f"U = {_expanded(value)} (95 %)"] for name, value in known.items()
+    ]
+
+
+def _value(measured: Measured) -> str:
+    return str(measured).partition(",")[0]
+
+
+def _expanded(measured: Measured) -> str:
+    _, _, rest = str(measured).partition("U = ")
+    return rest.partition(" (")[0]
+
+
+def _check(check: dict[str, object]) -> str:
+    verdict = "consistent" if check["agree"] else "not consistent"
+    return f"{check['name']}: {verdict}, normalised error {check['normalised_error']:.2f}"

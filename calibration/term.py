@@ -1,0 +1,87 @@
+"""One entry of a coefficient's budget: what is uncertain and how it moves magnitude and phase."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+from math import inf
+
+from metro.budget import Budget, Contribution
+
+__all__ = ["Term", "budget_of"]
+
+
+@dataclass(frozen=True)
+class Term:
+    """One input of a measurement and its effect on one coefficient.
+
+    Parameters
+    ----------
+    name : str
+        What it is, in the words of the budget table.
+    value : float or None
+        Its estimate, in ``unit``; None for a term that has none of its own (a fit).
+    unit : str
+        SI unit of ``value`` and ``u``.
+    u : float
+        Standard uncertainty, in ``unit``.
+    relative : float
+        Relative change of the coefficient's magnitude per unit.
+    turn : float
+        Change of its phase per unit [rad].
+    kind : str
+        ``"A"`` (from statistics) or ``"B"`` (from other knowledge).
+    distribution : str
+        ``"normal"`` or ``"rectangular"``.
+    dof : float
+        Degrees of freedom of ``u``.
+    """
+
+    name: str
+    value: float | None
+    unit: str
+    u: float
+    relative: float = 0.0
+    turn: float = 0.0
+    kind: str = "B"
+    distribution: str = "normal"
+    dof: float = inf
+
+    def contribution(self, sensitivity: float) -> Contribution:
+        """Return the term as a row of a budget with one sensitivity."""
+        return Contribution(
+            name=self.name,
+            value=0.0 if self.value is None else self.value,
+            unit=self.unit,
+            u=self.u,
+            sensitivity=sensitivity,
+            kind=self.kind,
+            distribution=self.distribution,
+            dof=self.dof,
+        )
+
+    def with_relative(self, relative: float) -> "Term":
+        """Return the term with another relative sensitivity."""
+        return replace(self, relative=relative)
+
+
+def budget_of(terms: Iterable[Term], magnitude: float, unit: str) -> tuple[Budget, Budget]:
+    """Return the budgets of a coefficient's magnitude and of its phase.
+
+    Parameters
+    ----------
+    terms : iterable of Term
+        Inputs, independent of each other.
+    magnitude : float
+        The coefficient's magnitude.
+    unit : str
+        Its SI unit.
+
+    Returns
+    -------
+    tuple of Budget
+        Of the magnitude (in ``unit``) and of the phase [rad].
+    """
+    terms = list(terms)
+    sizes = [term.contribution(term.relative * magnitude) for term in terms if term.relative]
+    turns = [term.contribution(term.turn) for term in terms if term.turn]
+    size, turn = Budget(sizes, unit=unit), Budget(turns, unit="rad")
+    return size, turn

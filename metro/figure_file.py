@@ -1,0 +1,48 @@
+"""A matplotlib figure into a file, whole or not at all."""
+
+from io import BytesIO
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from metro.errors import MetroError
+from metro.whole_file import check_writable, write_whole
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+__all__ = ["FigureError", "save_figure"]
+
+_FORMATS = ("png", "pdf", "svg")
+_DPI = 110  # an A4 page becomes 910 × 1286 pixels: sharp on a screen, small on a disk
+
+
+class FigureError(MetroError):
+    """A picture's file type that is not drawn."""
+
+
+def save_figure(figure: "Figure", path: str | Path, *, overwrite: bool = False) -> None:
+    """Write a figure as PNG, PDF or SVG, by the file's suffix.
+
+    Parameters
+    ----------
+    figure : Figure
+        From matplotlib.
+    path : str or Path
+        The file to be.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Raises
+    ------
+    FigureError
+        If the suffix is none of these.
+    OutputError
+        If the file exists or cannot be written.
+    """
+    suffix = Path(path).suffix.lower().removeprefix(".")
+    if suffix not in _FORMATS:
+        raise FigureError(f"--plot must end in .png, .pdf or .svg, got {str(path)!r}")
+    check_writable(path, overwrite)
+    picture = BytesIO()
+    figure.savefig(picture, format=suffix, dpi=_DPI)
+    write_whole(path, picture.getvalue(), overwrite=overwrite)

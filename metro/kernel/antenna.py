@@ -12,7 +12,7 @@ the cross response depends on the handedness chosen for the polarisation axes.
 
 from math import cos, pi, sin
 
-from metro.kernel.arms import arm_response
+from .arms import arm_response
 
 __all__ = ["antenna_response", "arm_direction_cosines", "detector_response"]
 

@@ -12,7 +12,7 @@ Class. Quantum Grav. 25 (2008) 184017; the form below is integrated from the nul
 
 from math import cos, pi, sin
 
-from metro.kernel.constants import SPEED_OF_LIGHT_M_S
+from .constants import SPEED_OF_LIGHT_M_S
 
 __all__ = ["arm_response", "null_frequency_hz", "sinc"]
 

@@ -6,7 +6,7 @@ need a cosine or a square root have their array twins in ``metro.fringe``.
 
 from math import atan2, cos, exp, pi, sin, sqrt
 
-from metro.kernel.bessel import bessel, jinc
+from .bessel import bessel, jinc
 
 __all__ = [
     "contrast",

@@ -8,7 +8,7 @@ W. Schottky, Ann. Phys. 362 (1918) 541 (shot noise); J. B. Johnson and H. Nyquis
 
 from math import sqrt
 
-from metro.kernel.constants import BOLTZMANN_J_K, ELEMENTARY_CHARGE_C
+from .constants import BOLTZMANN_J_K, ELEMENTARY_CHARGE_C
 
 __all__ = [
     "averaging_time_s",

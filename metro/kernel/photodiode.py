@@ -5,8 +5,8 @@ The products take arrays as well as floats.
 
 from math import atan, cos, pi, sin, sqrt
 
-from metro.kernel.arms import sinc
-from metro.kernel.constants import ELEMENTARY_CHARGE_C, PLANCK_J_S, SPEED_OF_LIGHT_M_S
+from .arms import sinc
+from .constants import ELEMENTARY_CHARGE_C, PLANCK_J_S, SPEED_OF_LIGHT_M_S
 
 __all__ = [
     "aperture_response",

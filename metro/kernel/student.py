@@ -37,12 +37,21 @@ def incomplete_beta(x: float, a: float, b: float) -> float:
     if x >= 1.0:
         return 1.0
     log_front = (
-        math.lgamma(a + b) - math.lgamma(a) - math.lgamma(b) + a * math.log(x) + b * math.log1p(-x)
+        math.lgamma(a + b) - math.lgamma(a) - math.lgamma(b) + a * math.log(x) + b * _log_of_rest(x)
     )
     # The fraction converges fast only below the mean; above it the mirror image is used.
     if x < (a + 1.0) / (a + b + 2.0):
         return math.exp(log_front) * _beta_fraction(x, a, b) / a
     return 1.0 - math.exp(log_front) * _beta_fraction(1.0 - x, b, a) / b
+
+
+def _log_of_rest(x: float) -> float:
+    """Return ln(1 − x) without losing the digits of a small x; MicroPython has no ``log1p``.
+
+    The error of the rounded 1 − x is divided out again (W. Kahan's device, from memory).
+    """
+    rest = 1.0 - x
+    return -x if rest == 1.0 else math.log(rest) * (x / (1.0 - rest))
 
 
 def _beta_fraction(x: float, a: float, b: float) -> float:

@@ -3,7 +3,7 @@
 References
 ----------
 JCGM 100:2008 (GUM): 5.1.2 eq. (10) and 5.2.2 eq. (13) (combined variance, independent and
-correlated), annex G.4.1 eq. (G.2b) (Welch-Satterthwaite).
+correlated), annex G.4.1 eq. (G.2b) (Welch-Satterthwaite, which holds for independent groups only).
 """
 
 import math
@@ -14,7 +14,10 @@ from typing import Any
 from metro.errors import MetroError
 from metro.measured import Measured
 
-__all__ = ["Budget", "BudgetError", "Contribution"]
+__all__ = ["Budget", "BudgetError", "Contribution", "correlation_matrix"]
+
+Correlation = float | Sequence[Sequence[float]]
+"""Between any two members of a group, or the matrix of all of them."""
 
 _DISTRIBUTIONS = ("normal", "rectangular", "triangular", "arcsine", "t")
 
@@ -94,14 +97,15 @@ class Budget:
     ----------
     contributions : sequence of Contribution
         In the order they are shown.
-    correlations : mapping of str to float
-        Correlation coefficient between any two members of a group; 1 where not given.
+    correlations : mapping of str to float or matrix
+        By group: the correlation coefficient between any two members, or the matrix of all in their
+        order; 1 where not given.
     unit : str
         SI unit of the result.
     """
 
     contributions: Sequence[Contribution]
-    correlations: Mapping[str, float] | None = None
+    correlations: Mapping[str, Correlation] | None = None
     unit: str = "1"
 
     def combined(self) -> tuple[float, float]:
@@ -134,14 +138,16 @@ class Budget:
     def _group_variance(self, label: str, members: list[Contribution]) -> tuple[float, float]:
         """Return a group's variance, and the least of its members' degrees of freedom."""
         r = (self.correlations or {}).get(label, 1.0)
-        n = len(members)
-        if n > 1 and not -1.0 / (n - 1) <= r <= 1.0:
-            raise BudgetError(
-                f"correlation of {label} must be ≥ {-1.0 / (n - 1):.3g} and ≤ 1 for {n} members, got {r!r}"
+        effects = [m.effect for m in members]
+        if isinstance(r, (int, float)):
+            variance = _alike_variance(label, effects, float(r))
+        else:
+            matrix = correlation_matrix(label, len(members), r)
+            variance = math.fsum(
+                r * a * b
+                for row, a in zip(matrix, effects, strict=True)
+                for r, b in zip(row, effects, strict=True)
             )
-        linear = math.fsum(m.effect for m in members)
-        square = math.fsum(m.effect**2 for m in members)
-        variance = r * linear**2 + (1.0 - r) * square
         dof = min((m.dof for m in members if m.effect), default=math.inf)
         return max(variance, 0.0), dof
 
@@ -254,7 +260,9 @@ class Budget:
         u, dof = self.combined()
         return {
             "contributions": [_contribution_dict(c) for c in self.contributions],
-            "correlations": dict(self.correlations or {}),
+            "correlations": {
+                g: _plain_correlation(r) for g, r in (self.correlations or {}).items()
+            },
             "u": u,
             "dof": _finite(dof),
             "unit": self.unit,
@@ -286,6 +294,58 @@ class Budget:
             raise BudgetError(f"not a budget: {type(error).__name__} {error}") from None
 
 
+def _alike_variance(label: str, effects: Sequence[float], r: float) -> float:
+    """Return the variance of a sum whose terms have one correlation with each other."""
+    n = len(effects)
+    if n > 1 and not -1.0 / (n - 1) <= r <= 1.0:
+        raise BudgetError(
+            f"correlation of {label} must be ≥ {-1.0 / (n - 1):.3g} and ≤ 1 for {n} members, got {r!r}"
+        )
+    square = math.fsum(e**2 for e in effects)
+    return r * math.fsum(effects) ** 2 + (1.0 - r) * square
+
+
+def correlation_matrix(label: str, n: int, correlation: Correlation) -> list[list[float]]:
+    """Return the checked correlation matrix of a group.
+
+    Parameters
+    ----------
+    label : str
+        The group, for messages.
+    n : int
+        Its members.
+    correlation : float or sequence of sequences, shape (n, n)
+        One coefficient for every two members, or the matrix.
+
+    Returns
+    -------
+    list of list of float, shape (n, n)
+        Symmetric, ones on the diagonal, no negative eigenvalue.
+
+    Raises
+    ------
+    BudgetError
+        If no quantities can be correlated so.
+    """
+    import numpy as np
+
+    if isinstance(correlation, (int, float)):
+        rows = [[1.0 if i == j else float(correlation) for j in range(n)] for i in range(n)]
+    else:
+        rows = [[float(r) for r in row] for row in correlation]
+    if len(rows) != n or any(len(row) != n for row in rows):
+        raise BudgetError(f"correlation of {label} must be a matrix of {n}×{n} for {n} members")
+    matrix = np.array(rows)
+    if not (np.allclose(matrix, matrix.T, atol=1e-9) and np.allclose(np.diag(matrix), 1.0)):
+        raise BudgetError(f"correlation of {label} must be symmetric with ones on the diagonal")
+    least = float(np.linalg.eigvalsh(matrix)[0])
+    if least < -1e-9 * n:  # rounding leaves a fully correlated group at −1e-16
+        raise BudgetError(
+            f"correlation of {label} must have no negative eigenvalue, got one of {least:.3g}"
+        )
+    return rows
+
+
 def _contribution_dict(item: Contribution) -> dict[str, Any]:
     return {
         "name": item.name,
@@ -306,6 +366,12 @@ def _contribution_of(item: Mapping[str, Any]) -> Contribution:
     known["dof"] = math.inf if known["dof"] is None else known["dof"]
     known["value"] = math.nan if known["value"] is None else known["value"]
     return Contribution(**known)
+
+
+def _plain_correlation(correlation: Correlation) -> float | list[list[float]]:
+    if isinstance(correlation, (int, float)):
+        return float(correlation)
+    return [[float(r) for r in row] for row in correlation]
 
 
 def _finite(number: float) -> float | None:

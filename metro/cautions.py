@@ -47,4 +47,18 @@ def bench_cautions(bench: Bench) -> list[str]:
         not bench.in_vacuum and bench.get("air.index") is None and bench.get("air.humidity") is None
     ):
         cautions.append("no humidity given: the air is taken to be dry; 50 % at 20 °C is 4e-7 less")
-    return cautions
+    return cautions + _converter_cautions(bench)
+
+
+def _converter_cautions(bench: Bench) -> list[str]:
+    low, high, full = (bench.get(key) for key in ("fringe.low", "fringe.high", "adc.range"))
+    if low is None or high is None or full is None:
+        return []
+    swing_v, full_v = high.magnitude - low.magnitude, full.magnitude
+    if swing_v <= full_v:
+        return []
+    caution = (
+        f"the fringe, {swing_v:.4g} V from end to end, does not fit the converter's {full_v:.4g} V: its"
+        " ends will read over-range"
+    )
+    return [caution]

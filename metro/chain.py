@@ -13,10 +13,11 @@ from typing import TYPE_CHECKING, Any
 from metro.elementwise import elementwise
 from metro.errors import MetroError
 from metro.kernel.arms import arm_response
+from metro.kernel.cavity import cavity_response, folded_response
 from metro.kernel.strain import strain_exact
 from metro.measured import Measured
 from metro.readout import Readout
-from metro.stages import STAGES, UNITS, Link, Links, bench_links, stage_si
+from metro.stages import STAGES, UNITS, Link, Links, bench_links, cavity_mirrors, stage_si
 from metro.working_point import WorkingPoint, rest
 
 if TYPE_CHECKING:
@@ -309,8 +310,8 @@ class Chain:
         Returns
         -------
         complex
-            Arm (normal incidence) from strain to displacement, amplifier up to the voltage, filter and
-            aperture up to the counts.
+            Arm (normal incidence) from strain to displacement, folded or Fabry–Perot arms up to the
+            phase, amplifier up to the voltage, filter and aperture up to the counts.
         """
         first, last = STAGES.index(start), STAGES.index(to)
         if first > last:
@@ -321,13 +322,23 @@ class Chain:
         return total
 
     def _stage_response(self, frequency_hz: float, stage: str) -> complex:
-        if stage == "displacement" and self.bench.get("arms.length") is not None:
-            return arm_response(frequency_hz, self.bench.magnitude("arms.length"))
         if stage == "voltage":
             return self.readout.voltage_response(frequency_hz)
         if stage == "counts":
             return self.readout.counts_response(frequency_hz)
+        if stage in {"displacement", "phase"} and self.bench.get("arms.length") is not None:
+            length_m = self.bench.magnitude("arms.length")
+            if stage == "displacement":
+                return arm_response(frequency_hz, length_m)
+            return self._storage_response(frequency_hz, length_m)
         return 1.0 + 0.0j
+
+    def _storage_response(self, frequency_hz: float, length_m: float) -> complex:
+        """Return what the later trips of folded or Fabry–Perot arms leave."""
+        if self.bench.get("arms.input_reflectance") is not None:
+            return cavity_response(frequency_hz, length_m, *cavity_mirrors(self.bench))
+        trips = int(self.bench.magnitude("arms.round_trips", 1.0))
+        return folded_response(frequency_hz, length_m, trips)
 
     def working_point(self) -> WorkingPoint:
         """Return phase, power, current, voltage and slope where the interferometer rests.

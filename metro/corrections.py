@@ -6,8 +6,9 @@ import cmath
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from metro.kernel import antenna, fringe, strain
+from metro.kernel import antenna, beam, cavity, fringe, strain
 from metro.measured import Measured
+from metro.stages import cavity_mirrors, coherence, phase_trips
 
 if TYPE_CHECKING:
     from metro.chain import Chain
@@ -87,12 +88,15 @@ def corrections(
     Returns
     -------
     dict of str to Correction
-        By name: ``proper_length``, ``arm_travel_time``, ``direction``, ``compression``, ``readout``.
+        By name: ``proper_length``, ``arm_travel_time``, ``arm_storage``, ``direction``, ``coherence``,
+        ``compression``, ``readout``.
     """
     found: dict[str, Correction | None] = {
         "proper_length": _proper_length(stages["strain"]),
         "arm_travel_time": _arm_travel_time(chain, frequency_hz),
+        "arm_storage": _arm_storage(chain, frequency_hz),
         "direction": _direction(chain, direction, frequency_hz),
+        "coherence": _coherence(chain),
         "compression": _compression(chain, stages["phase"], lines, background_rad),
         "readout": _readout(chain, frequency_hz),
     }
@@ -127,6 +131,36 @@ def _arm_travel_time(chain: Chain, frequency_hz: float | None) -> Correction | N
         {"magnitude": _number(size), "phase": Measured.of(angle, "rad")},
         f"light takes time to cross the arm: at {frequency_hz:.6g} Hz and normal incidence the response"
         f" is {size:.6g} of strain times length, {angle:.4g} rad in phase",
+    )
+
+
+def _arm_storage(chain: Chain, frequency_hz: float | None) -> Correction | None:
+    """Return what folded or Fabry–Perot arms lose because light stays in them."""
+    if frequency_hz is None or chain.bench.get("arms.length") is None:
+        return None
+    if phase_trips(chain.bench) == 1.0:
+        return None
+    response = chain.response(frequency_hz, "displacement", "phase")
+    size, angle = abs(response), cmath.phase(response)
+    values = {"magnitude": _number(size), "phase": Measured.of(angle, "rad")}
+    text = f"light stays in the arms: at {frequency_hz:.6g} Hz {size:.6g} of the phase is left"
+    if chain.bench.get("arms.input_reflectance") is not None:
+        length_m = chain.bench.magnitude("arms.length")
+        pole_hz = cavity.cavity_pole_hz(length_m, *cavity_mirrors(chain.bench))
+        values["pole"] = Measured.of(pole_hz, "Hz")
+        text += f", the cavity's pole is at {pole_hz:.6g} Hz"
+    return Correction(values, f"{text}, {angle:.4g} rad in phase")
+
+
+def _coherence(chain: Chain) -> Correction | None:
+    left = coherence(chain.bench)
+    if left is None:
+        return None
+    length_m = beam.coherence_length_m(chain.bench.magnitude("laser.linewidth"))
+    return Correction(
+        {"contrast": _number(left), "length": Measured.of(length_m, "m")},
+        f"the laser's linewidth leaves {left:.6g} of the contrast at this mismatch (coherence length"
+        f" {length_m:.4g} m)",
     )
 
 

@@ -10,8 +10,8 @@ from metro.cautions import bench_cautions
 from metro.corrections import Correction, Direction, corrections
 from metro.kernel.noise import averaging_time_s, signal_to_noise
 from metro.measured import Measured
-from metro.sensitivity import Sensitivity, displacement_noise, strain_density
-from metro.stages import STAGES, UNITS
+from metro.sensitivity import Sensitivity, displacement_noise, strain_scale
+from metro.stages import STAGES, UNITS, phase_trips
 
 if TYPE_CHECKING:
     from metro.chain import Chain
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 __all__ = ["Expectation", "expect"]
 
 DENSITY = "m/Hz**0.5"
+STRAIN_DENSITY = "1/Hz**0.5"
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,9 +34,12 @@ class Expectation:
         ``phase``, ``power``, ``current``, ``voltage``, ``slope`` [V/rad] and ``slope_per_metre`` [V/m].
     noise : dict of str to Measured or None
         Displacement density of each source, and ``total`` of those known.
+    noise_strain : dict of str to Measured or None
+        The same as strain density at normal incidence; None without an arm length.
     snr : dict of str to Measured or None
-        ``value``, ``duration``, ``noise``, ``frequency``, and the amplitudes that reach 1:
-        ``detectable_displacement``, ``detectable_strain``; ``time_to_one`` for the motion asked for.
+        ``value``, ``duration``, ``noise``, ``frequency``; ``wanted`` ratio, the amplitudes that reach it in
+        that duration (``detectable_displacement``, ``detectable_strain``), and the ``time_wanted`` for
+        the motion asked for to reach it.
     conventions : dict of str to str
         What the numbers mean.
     corrections : dict of str to Correction
@@ -49,6 +53,7 @@ class Expectation:
     stages: dict[str, Measured | None]
     working_point: dict[str, Measured | None]
     noise: dict[str, Measured | None]
+    noise_strain: dict[str, Measured | None]
     snr: dict[str, Measured | None]
     conventions: dict[str, str]
     corrections: dict[str, Correction]
@@ -73,6 +78,7 @@ def expect(
     *,
     frequency_hz: float | None = None,
     duration_s: float = 1.0,
+    wanted_snr: float = 1.0,
     direction: Direction | None = None,
     lines: int = 1,
     background_rad: float = 0.0,
@@ -91,6 +97,8 @@ def expect(
         Frequency at which noise and corrections are evaluated [Hz]; without it at low frequency.
     duration_s : float, default 1
         Averaging time for the signal-to-noise ratio [s].
+    wanted_snr : float, default 1
+        Ratio for which amplitude and time are told.
     direction : Direction, optional
         Direction and polarisation of the wave.
     lines : int, default 1
@@ -122,8 +130,9 @@ def expect(
     return Expectation(
         stages=stages,
         working_point=_working_point(chain),
-        noise=_noise(noise),
-        snr=_snr(chain, plain["displacement"], noise, duration_s),
+        noise=_noise(noise, 1.0, DENSITY),
+        noise_strain=_noise(noise, strain_scale(chain, noise.frequency_hz), STRAIN_DENSITY),
+        snr=_snr(chain, plain["displacement"], noise, duration_s, wanted_snr),
         conventions=_conventions(chain),
         corrections=found,
         cautions=_cautions(chain, stage, plain, noise),
@@ -157,38 +166,46 @@ def _working_point(chain: Chain) -> dict[str, Measured | None]:
     }
 
 
-def _noise(noise: Sensitivity) -> dict[str, Measured | None]:
-    made = {name: _maybe(density, DENSITY) for name, density in noise.densities.items()}
-    return {**made, "total": _maybe(noise.total, DENSITY)}
+def _noise(noise: Sensitivity, scale: float | None, unit: str) -> dict[str, Measured | None]:
+    everything = {**noise.densities, "total": noise.total}
+    return {
+        name: None if density is None or scale is None else Measured.of(scale * density, unit)
+        for name, density in everything.items()
+    }
 
 
 def _snr(
-    chain: Chain, amplitude_m: float | None, noise: Sensitivity, duration_s: float
+    chain: Chain,
+    amplitude_m: float | None,
+    noise: Sensitivity,
+    duration_s: float,
+    wanted: float,
 ) -> dict[str, Measured | None]:
-    density = noise.total
-    known = density is not None and density > 0.0
-    floor_m = density / duration_s**0.5 if known and density is not None else None
-    ratio = time_s = floor_strain = None
-    if known and density is not None:
-        strain = strain_density(chain, density, noise.frequency_hz)
-        floor_strain = None if strain is None else strain / duration_s**0.5
-        if amplitude_m is not None:
-            ratio = signal_to_noise(amplitude_m, density, duration_s)
-            time_s = averaging_time_s(amplitude_m, density, 1.0) if amplitude_m else None
+    density, scale = noise.total, strain_scale(chain, noise.frequency_hz)
+    floor_m = None if density is None else wanted * density / duration_s**0.5
+    ratio = time_s = None
+    if density is not None and amplitude_m is not None:
+        ratio = signal_to_noise(amplitude_m, density, duration_s)
+        time_s = averaging_time_s(amplitude_m, density, wanted) if amplitude_m else None
     return {
         "value": _maybe(ratio, "1"),
         "duration": Measured.of(duration_s, "s"),
         "noise": _maybe(density, DENSITY),
         "frequency": Measured.of(noise.frequency_hz, "Hz"),
+        "wanted": Measured.of(wanted, "1"),
         "detectable_displacement": _maybe(floor_m, "m"),
-        "detectable_strain": _maybe(floor_strain, "1"),
-        "time_to_one": _maybe(time_s, "s"),
+        "detectable_strain": _maybe(
+            None if scale is None or floor_m is None else scale * floor_m, "1"
+        ),
+        "time_wanted": _maybe(time_s, "s"),
     }
 
 
 def _conventions(chain: Chain) -> dict[str, str]:
     bench = chain.bench
-    trips = bench.magnitude("arms.round_trips", 1.0)
+    trips = f"N = {phase_trips(bench):.6g} round trips"
+    if bench.get("arms.input_reflectance") is not None:
+        trips += " (phase gain of the Fabry–Perot arms)"
     index = "n = 1 (arms in vacuum)"
     if not bench.in_vacuum or bench.get("air.index") is not None:
         index = f"n = {float(bench.index().magnitude):.9f} ({_equation(chain)})"
@@ -197,7 +214,7 @@ def _conventions(chain: Chain) -> dict[str, str]:
         "stages": "changes about the working point, signed, linear, zero to peak",
         "strain": "gravitational-wave amplitude h: the arms change by +hL/2 and −hL/2, together hL",
         "displacement": "differential arm length, positive when the x arm grows",
-        "phase": f"4π·N·n·x/λ, unwrapped, with N = {trips:g} round trips, {index} and λ in vacuum",
+        "phase": f"4π·N·n·x/λ, unwrapped, with {trips}, {index} and λ in vacuum",
         "fringes": "phase over 2π",
         "power": "on this photodiode; the mean at mid-fringe is what --power gives",
         "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope} slope",

@@ -10,7 +10,7 @@ from metro.whole_file import check_writable, write_whole
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-__all__ = ["FigureError", "save_figure"]
+__all__ = ["FigureError", "check_figure", "save_figure"]
 
 _FORMATS = ("png", "pdf", "svg")
 _DPI = 110  # an A4 page becomes 910 × 1286 pixels: sharp on a screen, small on a disk
@@ -39,10 +39,33 @@ def save_figure(figure: "Figure", path: str | Path, *, overwrite: bool = False) 
     OutputError
         If the file exists or cannot be written.
     """
-    suffix = Path(path).suffix.lower().removeprefix(".")
-    if suffix not in _FORMATS:
+    check_figure(path, overwrite)
+    picture = BytesIO()
+    figure.savefig(picture, format=_suffix(path), dpi=_DPI)
+    write_whole(path, picture.getvalue(), overwrite=overwrite)
+
+
+def check_figure(path: str | Path, overwrite: bool = False) -> None:  # as the option
+    """Refuse a picture that could not be written, before it is drawn.
+
+    Parameters
+    ----------
+    path : str or Path
+        The file to be.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Raises
+    ------
+    FigureError
+        If the suffix is none of PNG, PDF and SVG.
+    OutputError
+        If the file exists or cannot be written.
+    """
+    if _suffix(path) not in _FORMATS:
         raise FigureError(f"--plot must end in .png, .pdf or .svg, got {str(path)!r}")
     check_writable(path, overwrite)
-    picture = BytesIO()
-    figure.savefig(picture, format=suffix, dpi=_DPI)
-    write_whole(path, picture.getvalue(), overwrite=overwrite)
+
+
+def _suffix(path: str | Path) -> str:
+    return Path(path).suffix.lower().removeprefix(".")

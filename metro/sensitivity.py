@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
     from metro.chain import Chain
 
-__all__ = ["SOURCES", "Sensitivity", "displacement_noise"]
+__all__ = ["SOURCES", "Sensitivity", "displacement_noise", "strain_scale"]
 
 ROOM_K = 293.15
 
@@ -68,7 +68,7 @@ def displacement_noise(chain: Chain, frequency_hz: float = 0.0) -> Sensitivity:
     -------
     Sensitivity
         Shot, Johnson, amplifier voltage and current, converter, relative intensity, laser
-        frequency through the arm mismatch, and air.
+        frequency through the arm mismatch, air, and tilt through the beam offset.
     """
     densities: dict[str, float | None] = {}
     missing: dict[str, str] = {}
@@ -89,11 +89,12 @@ def _given(chain: Chain, *keys: str) -> list[float]:
     return [chain.bench.magnitude(key) for key in keys]
 
 
-def _per_metre(chain: Chain, stage: str) -> float:
-    """Return the size of the change at a stage per displacement."""
+def _per_metre(chain: Chain, stage: str, frequency_hz: float) -> float:
+    """Return the size of the change at a stage per displacement, at a frequency."""
     if chain.maybe_way("displacement", stage) is None:
         raise _Unknown(chain.what_is_missing("displacement", stage))
     gain = abs(float(chain.convert(1.0, "displacement", stage)))
+    gain *= abs(chain.response(frequency_hz, "displacement", stage))
     if gain == 0.0:
         raise _Unknown(chain.what_is_missing("displacement", stage))
     return gain
@@ -106,15 +107,15 @@ def _rest_current(chain: Chain) -> float:
     return max(current, 0.0)
 
 
-def _shot(chain: Chain, _f: float) -> float:
-    per_metre = _per_metre(chain, "current")
+def _shot(chain: Chain, frequency_hz: float) -> float:
+    per_metre = _per_metre(chain, "current", frequency_hz)
     return kernel.shot_current(_rest_current(chain)) / per_metre
 
 
-def _johnson(chain: Chain, _f: float) -> float:
+def _johnson(chain: Chain, frequency_hz: float) -> float:
     (ohms,) = _given(chain, "photodiode.transimpedance")
     temperature_k = chain.bench.magnitude("air.temperature", ROOM_K)
-    return kernel.johnson_current(ohms, temperature_k) / _per_metre(chain, "current")
+    return kernel.johnson_current(ohms, temperature_k) / _per_metre(chain, "current", frequency_hz)
 
 
 def _amplifier_voltage(chain: Chain, frequency_hz: float) -> float:
@@ -123,20 +124,29 @@ def _amplifier_voltage(chain: Chain, frequency_hz: float) -> float:
     susceptance = (
         2.0 * math.pi * frequency_hz * chain.bench.magnitude("photodiode.capacitance", 0.0)
     )
-    return density * math.hypot(1.0 / ohms, susceptance) / _per_metre(chain, "current")
+    return (
+        density * math.hypot(1.0 / ohms, susceptance) / _per_metre(chain, "current", frequency_hz)
+    )
 
 
-def _amplifier_current(chain: Chain, _f: float) -> float:
+def _amplifier_current(chain: Chain, frequency_hz: float) -> float:
     (density,) = _given(chain, "photodiode.amplifier_current_noise")
-    return density / _per_metre(chain, "current")
+    return density / _per_metre(chain, "current", frequency_hz)
 
 
 def _adc(chain: Chain, frequency_hz: float) -> float:
     """Return the converter's noise, referred back through what amplifier and filter take away."""
-    per_metre = _per_metre(chain, "voltage")
+    per_metre = _converter_per_metre(chain, frequency_hz)
     (rate_hz,) = _given(chain, "adc.rate")
     density = kernel.quantisation_density(_adc_noise_v(chain), rate_hz)
-    return density / (per_metre * abs(chain.response(frequency_hz, "displacement", "counts")))
+    return density / per_metre
+
+
+def _converter_per_metre(chain: Chain, frequency_hz: float) -> float:
+    """Return the voltage that the converter sees per displacement, filter and aperture included."""
+    return _per_metre(chain, "voltage", frequency_hz) * abs(
+        chain.readout.counts_response(frequency_hz)
+    )
 
 
 def _adc_noise_v(chain: Chain) -> float:
@@ -150,15 +160,15 @@ def _adc_noise_v(chain: Chain) -> float:
     return kernel.quantisation_v(step_v(full, bits))
 
 
-def _relative_intensity(chain: Chain, _f: float) -> float:
+def _relative_intensity(chain: Chain, frequency_hz: float) -> float:
     (density,) = _given(chain, "laser.relative_intensity_noise")
     here = chain.working_point()
     if here.power_w is not None and chain.maybe_way("displacement", "power") is not None:
-        return density * here.power_w / _per_metre(chain, "power")
+        return density * here.power_w / _per_metre(chain, "power", frequency_hz)
     if here.voltage_v is None:
         raise _Unknown(chain.what_is_missing("phase", "voltage"))
     dark = chain.bench.magnitude("photodiode.dark", 0.0)
-    return density * abs(here.voltage_v - dark) / _per_metre(chain, "voltage")
+    return density * abs(here.voltage_v - dark) / _per_metre(chain, "voltage", frequency_hz)
 
 
 def _laser_frequency(chain: Chain, _f: float) -> float:
@@ -187,6 +197,12 @@ def _air(chain: Chain, _f: float) -> float:
     return math.hypot(common, between) / float(chain.bench.index().magnitude)
 
 
+def _tilt(chain: Chain, _f: float) -> float:
+    """Return the mirrors' tilt noise, seen through a beam off the pivot."""
+    tilt, offset_m = _given(chain, "arms.tilt_noise", "arms.beam_offset")
+    return tilt * abs(offset_m)
+
+
 SOURCES: dict[str, Callable[[Chain, float], float]] = {
     "shot": _shot,
     "johnson": _johnson,
@@ -196,6 +212,7 @@ SOURCES: dict[str, Callable[[Chain, float], float]] = {
     "relative_intensity": _relative_intensity,
     "laser_frequency": _laser_frequency,
     "air": _air,
+    "tilt": _tilt,
 }
 """Each source by its name, in the order the light and the signal pass them."""
 
@@ -208,9 +225,7 @@ def _quantisation_remark(
     if densities["adc"] is None or bench.get("adc.noise") or bench.get("adc.effective_bits"):
         return None
     others = kernel.root_sum([d for name, d in densities.items() if d and name != "adc"])
-    per_metre = _per_metre(chain, "voltage") * abs(
-        chain.response(frequency_hz, "displacement", "counts")
-    )
+    per_metre = _converter_per_metre(chain, frequency_hz)
     step = step_v(bench.magnitude("adc.range"), bench.magnitude("adc.bits"))
     seen_v = others * per_metre * math.sqrt(0.5 * bench.magnitude("adc.rate"))
     if seen_v >= 0.5 * step:
@@ -221,25 +236,24 @@ def _quantisation_remark(
     )
 
 
-def strain_density(chain: Chain, displacement_density: float, frequency_hz: float) -> float | None:
-    """Return a displacement density as strain, the light's travel time included.
+def strain_scale(chain: Chain, frequency_hz: float) -> float | None:
+    """Return the strain that a displacement is worth, the light's travel time included.
 
     Parameters
     ----------
     chain : Chain
         For the arm length.
-    displacement_density : float
-        Amplitude density [m/√Hz].
     frequency_hz : float
         Frequency [Hz].
 
     Returns
     -------
     float or None
-        Amplitude density of strain [1/√Hz] at normal incidence; None without an arm length.
+        Strain per displacement [1/m] at normal incidence; None without an arm length, or where the
+        arms are blind.
     """
     if chain.bench.get("arms.length") is None:
         return None
     length_m = chain.bench.magnitude("arms.length")
     size = abs(arm_response(frequency_hz, length_m))
-    return displacement_density / (length_m * size) if size else None
+    return 1.0 / (length_m * size) if size else None

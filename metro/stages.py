@@ -7,7 +7,8 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from metro.bench_keys import OPTIONS
-from metro.kernel import fringe, photodiode
+from metro.errors import MetroError
+from metro.kernel import beam, cavity, fringe, photodiode
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -217,11 +218,96 @@ def _phase_link(bench: Bench, _phase: float) -> Link | str:
         return ways_to_give("laser.wavelength")
     wavelength, index = bench.magnitude("laser.wavelength"), bench.index()
     n = float(index.magnitude)
-    gain = fringe.phase_per_metre(wavelength, n, bench.magnitude("arms.round_trips", 1.0))
+    gain = fringe.phase_per_metre(wavelength, n, phase_trips(bench))
     effects = _effects(bench, laser__wavelength=-1.0)
     if index.u_magnitude:
         effects["air.index"] = float(index.u_magnitude) / n
     return Link("displacement", "phase", gain, effects)
+
+
+def phase_trips(bench: Bench) -> float:
+    """Return how many round trips the phase of a slow displacement is worth.
+
+    Parameters
+    ----------
+    bench : Bench
+        What is known of the arms.
+
+    Returns
+    -------
+    float
+        Round trips of simple or folded arms, the phase gain of Fabry–Perot arms.
+
+    Raises
+    ------
+    MetroError
+        If the arms are said to be folded and Fabry–Perot at once, or the mirrors are in the wrong
+        order.
+    """
+    trips = bench.magnitude("arms.round_trips", 1.0)
+    if bench.get("arms.input_reflectance") is None:
+        return trips
+    if trips != 1.0:
+        raise MetroError(
+            f"arms.round_trips must be 1 where arms.input_reflectance makes a cavity, got {trips:g}"
+        )
+    try:
+        return cavity.phase_gain(*cavity_mirrors(bench))
+    except ValueError as error:
+        raise MetroError(f"[arms] {error}") from None
+
+
+def cavity_mirrors(bench: Bench) -> tuple[float, float]:
+    """Return the power reflectances of Fabry–Perot arms.
+
+    Parameters
+    ----------
+    bench : Bench
+        With ``arms.input_reflectance``.
+
+    Returns
+    -------
+    tuple of float
+        Input and end mirror; a perfect end mirror where none is given.
+    """
+    return bench.magnitude("arms.input_reflectance"), bench.magnitude("arms.end_reflectance", 1.0)
+
+
+def contrast(bench: Bench) -> float:
+    """Return the contrast of a bench: given, or what the laser's coherence leaves.
+
+    Parameters
+    ----------
+    bench : Bench
+        What is known.
+
+    Returns
+    -------
+    float
+        Contrast; 1 where neither contrast nor linewidth and mismatch are given.
+    """
+    if bench.get("arms.contrast") is not None:
+        return bench.magnitude("arms.contrast")
+    return coherence(bench) or 1.0
+
+
+def coherence(bench: Bench) -> float | None:
+    """Return the contrast that the laser's linewidth leaves at the arms' mismatch.
+
+    Parameters
+    ----------
+    bench : Bench
+        What is known.
+
+    Returns
+    -------
+    float or None
+        0 … 1; None where linewidth or mismatch is not given.
+    """
+    if bench.get("laser.linewidth") is None or bench.get("arms.mismatch") is None:
+        return None
+    path_m = 2.0 * phase_trips(bench) * bench.magnitude("arms.mismatch")
+    return beam.coherence(path_m, bench.magnitude("laser.linewidth"))
 
 
 def _fringes_link(_bench: Bench, _phase: float) -> Link | str:
@@ -231,7 +317,7 @@ def _fringes_link(_bench: Bench, _phase: float) -> Link | str:
 def _power_link(bench: Bench, phase: float) -> Link | str:
     if bench.get("laser.power") is None:
         return ways_to_give("laser.power")
-    half = bench.magnitude("laser.power") * bench.magnitude("arms.contrast", 1.0)
+    half = bench.magnitude("laser.power") * contrast(bench)
     effects = _effects(bench, laser__power=1.0, arms__contrast=1.0)
     return _fringe_link("power", half, effects, phase)
 

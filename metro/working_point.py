@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from metro.kernel import fringe as kernel
-from metro.stages import responsivity
+from metro.stages import contrast, responsivity
 
 if TYPE_CHECKING:
     from metro.bench import Bench
@@ -70,8 +70,7 @@ def rest(chain: Chain) -> WorkingPoint:
 def _power(bench: Bench, phase_rad: float) -> float | None:
     if bench.get("laser.power") is None:
         return None
-    contrast = bench.magnitude("arms.contrast", 1.0)
-    return kernel.power_w(phase_rad, bench.magnitude("laser.power"), contrast)
+    return kernel.power_w(phase_rad, bench.magnitude("laser.power"), contrast(bench))
 
 
 def _measured_voltage(bench: Bench, phase_rad: float) -> float | None:

@@ -11,6 +11,7 @@ from metro.options import ValueType, bench_options, command, output_options
 
 if TYPE_CHECKING:
     from metro.bench import Bench
+    from metro.chain import Chain
     from metro.expectation import Expectation
     from metro.measured import Measured
 
@@ -40,6 +41,12 @@ _GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
     help="Averaging time; 1 s if not given.",
 )
 @click.option(
+    "--snr",
+    type=ValueType("1", above=0.0),
+    default=1.0,
+    help="Signal-to-noise ratio for which amplitude and time are told; 1 if not given.",
+)
+@click.option(
     "--slope",
     type=click.Choice(["rising", "falling"]),
     default="rising",
@@ -64,7 +71,7 @@ _GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
     help="RMS phase of other motion.",
 )
 @bench_options
-@output_options("out", "json", "overwrite")
+@output_options("out", "plot", "json", "overwrite")
 def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option each
     """Tell what a strain, a displacement or a signal is at every stage, with the noise.
 
@@ -73,30 +80,52 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     from metro.chain import Chain
     from metro.expectation import expect as expect_of
     from metro.fringe import slope_phase_rad
-    from metro.output import check_writable, to_json, write_whole
+    from metro.output import to_json
     from metro.stages import stage_si
 
     stage, text = _one_stage(options)
     value = stage_si(stage, text, f"--{stage}")
-    if options["out"]:
-        check_writable(options["out"], options["overwrite"])
+    _check_files(options)
     working_phase = options["working_phase"]
     if working_phase is None:
         working_phase = slope_phase_rad(options["slope"])
+    chain = Chain(bench, working_phase)
     expectation = expect_of(
-        Chain(bench, working_phase),
+        chain,
         stage,
         value,
         frequency_hz=options["frequency"],
         duration_s=options["duration"],
+        wanted_snr=options["snr"],
         direction=_direction(options),
         lines=options["lines"],
         background_rad=options["background"],
     )
     document = to_json(expectation.to_dict())
+    _write_files(chain, document, options)
+    click.echo(document if options["as_json"] else _page(expectation))
+
+
+def _check_files(options: dict[str, Any]) -> None:
+    from metro.figure_file import check_figure
+    from metro.whole_file import check_writable
+
+    if options["out"]:
+        check_writable(options["out"], options["overwrite"])
+    if options["plot"]:
+        check_figure(options["plot"], options["overwrite"])
+
+
+def _write_files(chain: Chain, document: str, options: dict[str, Any]) -> None:
+    from metro.whole_file import write_whole
+
+    if options["plot"]:
+        from metro.figure_file import save_figure
+        from metro.noise_plot import noise_figure
+
+        save_figure(noise_figure(chain), options["plot"], overwrite=options["overwrite"])
     if options["out"]:
         write_whole(options["out"], document + "\n", overwrite=options["overwrite"])
-    click.echo(document if options["as_json"] else _page(expectation))
 
 
 def _one_stage(options: dict[str, Any]) -> tuple[str, str]:
@@ -122,7 +151,7 @@ def _page(expectation: Expectation) -> str:
     parts = [
         table(_rows(expectation.stages), ("stage", "change")),
         table(_rows(expectation.working_point), ("working point", "")),
-        table(_rows(expectation.noise), ("noise", "displacement density")),
+        table(_noise_rows(expectation), ("noise", "displacement density", "strain density")),
         table(_rows(expectation.snr), ("signal to noise", "")),
         _texts("corrections", [c.text for c in expectation.corrections.values()]),
         _texts(
@@ -152,6 +181,13 @@ def _rows(values: dict[str, Measured | None]) -> list[tuple[str, str]]:
             else show_measured(value),
         )
         for name, value in values.items()
+    ]
+
+
+def _noise_rows(expectation: Expectation) -> list[tuple[str, str, str]]:
+    displacement, strain = _rows(expectation.noise), _rows(expectation.noise_strain)
+    return [
+        (name, here, there) for (name, here), (_, there) in zip(displacement, strain, strict=True)
     ]
 
 

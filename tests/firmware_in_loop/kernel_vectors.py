@@ -7,7 +7,21 @@ importable as ``kernel``. Decimal text would not do, the interpreters print it d
 import struct
 import sys
 
-from kernel import air, antenna, arms, bessel, fringe, humidity, noise, photodiode, strain, student
+from kernel import (
+    air,
+    antenna,
+    arms,
+    beam,
+    bessel,
+    cavity,
+    fringe,
+    humidity,
+    noise,
+    photodiode,
+    ports,
+    strain,
+    student,
+)
 
 _state = [12345]
 
@@ -80,6 +94,14 @@ CASES = (
     ("ciddor", air.ciddor, (kelvins, pascals, lambda: uniform(0, 0.02), micrometres)),
     ("edlen", air.edlen, (kelvins, pascals, lambda: uniform(0, 2e3), micrometres)),
     ("ciddor_u", air.ciddor_u, (kelvins, pascals, lambda: uniform(0, 2e3), micrometres)),
+    ("folded", lambda f, n: cavity.folded_response(f, 3e3, int(n)), (lambda: spread(0, 5), lambda: uniform(1, 30))),
+    ("cavity", cavity.cavity_response, (lambda: spread(0, 5), lambda: uniform(1, 4e3), lambda: uniform(0.3, 0.999))),
+    ("phase_gain", cavity.phase_gain, (lambda: uniform(0.1, 0.99), lambda: uniform(0.995, 1.0))),
+    ("finesse", cavity.finesse, (lambda: uniform(0.3, 0.999), lambda: uniform(0.3, 1.0))),
+    ("coherence", beam.coherence, (lambda: uniform(-2, 2), lambda: spread(3, 9))),
+    ("tilt_contrast", beam.tilt_contrast, (lambda: spread(-7, -4), lambda: spread(-4, -3), micrometres)),
+    ("real_fringe", lambda p, c, s: beam.real_fringe(p, 0.5, 9.0, [(c, s)]), (angle, lambda: uniform(-0.1, 0.1), lambda: uniform(-0.1, 0.1))),
+    ("quadrature", ports.quadrature_phase, (lambda: uniform(-2, 2), lambda: uniform(-2, 2), lambda: uniform(0.8, 1.2), lambda: uniform(-0.2, 0.2))),
     ("t_quantile", lambda dof: student.t_quantile(0.95, dof), (lambda: uniform(1, 60),)),
 )  # fmt: skip
 

@@ -72,10 +72,12 @@ def test_inverse_undoes_forward_over_all_stages(exact, start, end, working, size
 @given(values.displacement_m, st.floats(-3.0, 3.0))
 def test_linear_stages_superpose_and_scale(x, factor):
     chain = full()
+    once = chain.convert(x, "displacement", "counts")
     both = chain.convert(x + factor * x, "displacement", "counts")
     assert both == pytest.approx(
-        chain.convert(x, "displacement", "counts") * (1 + factor), rel=1e-12, abs=1e-30
+        once + chain.convert(factor * x, "displacement", "counts"), abs=1e-12 * abs(once)
     )
+    assert both == pytest.approx(once * (1 + factor), abs=1e-12 * abs(once))
 
 
 @pytest.mark.parametrize(
@@ -266,3 +268,41 @@ def test_folded_arms_multiply_the_phase_of_a_displacement():
     assert full(round_trips=5).convert(1e-9, "displacement", "fringes") == pytest.approx(
         metro.fringes("1 nm", "1064 nm", round_trips=5).magnitude
     )
+
+
+def test_fabry_perot_arms_multiply_phase_and_have_a_pole():
+    bench = metro.Bench.of(arm="4 km", wavelength="1064 nm", arms__input_reflectance=0.97)
+    chain = bench.chain()
+    gain = (1 + math.sqrt(0.97)) / (1 - math.sqrt(0.97))
+    once = metro.phase("1 fm", "1064 nm").magnitude
+    assert chain.forward(displacement="1 fm", to="phase").magnitude == pytest.approx(gain * once)
+    # the pole of arms of finesse 206.2: c/(4LF) = 90.9 Hz
+    assert abs(chain.response(90.87, "displacement", "phase")) == pytest.approx(
+        math.sqrt(0.5), rel=1e-3
+    )
+    with pytest.raises(metro.MetroError, match=r"arms.round_trips must be 1 .* got 3"):
+        metro.Bench.of(
+            wavelength="1 um", round_trips=3, arms__input_reflectance=0.9
+        ).chain().forward(displacement="1 fm", to="phase")
+    with pytest.raises(metro.MetroError, match=r"\[arms\] input_reflectance must be below"):
+        metro.Bench.of(
+            wavelength="1 um", arms__input_reflectance=0.9, arms__end_reflectance=0.8
+        ).chain().forward(displacement="1 fm", to="phase")
+
+
+def test_folded_arms_answer_late():
+    chain = metro.Bench.of(arm="1 m", wavelength="1064 nm", round_trips=20).chain()
+    f = 1e6
+    step = 4 * math.pi * f / 299792458
+    expected = sum(cmath.exp(-1j * step * k) for k in range(20)) / 20
+    assert chain.response(f, "displacement", "phase") == pytest.approx(expected)
+
+
+def test_coherence_limits_the_contrast_that_is_not_given():
+    wide = {"laser__linewidth": "1 GHz", "arms__mismatch": "2 cm"}
+    given_power = {"wavelength": "633 nm", "power": "80 uW"}
+    chain = metro.Bench.of(**given_power, **wide).chain()
+    left = math.exp(-math.pi * 1e9 * 0.04 / 299792458)
+    assert chain.forward(phase="1 mrad", to="power").magnitude == pytest.approx(80e-9 * left)
+    measured = metro.Bench.of(**given_power, **wide, contrast=0.9).chain()
+    assert measured.forward(phase="1 mrad", to="power").magnitude == pytest.approx(72e-9)

@@ -6,8 +6,9 @@ import pytest
 from published import records
 
 import metro
+from metro.kernel.cavity import cavity_pole_hz
 from metro.kernel.constants import BOLTZMANN_J_K, ELEMENTARY_CHARGE_C, SPEED_OF_LIGHT_M_S
-from metro.sensitivity import displacement_noise, strain_density
+from metro.sensitivity import displacement_noise, strain_scale
 
 PER_METRE = 4 * math.pi / 632.8e-9
 BENCH = {
@@ -73,8 +74,10 @@ def test_sources_by_hand():
         "laser_frequency": 2e-3 * 1e3 * 632.8e-9 / SPEED_OF_LIGHT_M_S,
         "air": math.hypot(1e-9 * 2e-3, 1e-11 * 0.5),
     }
+    assert found.pop("tilt") is None
     assert found == pytest.approx(expected, rel=1e-9)
     noise = displacement_noise(metro.Bench.of(**BENCH).chain())
+    assert noise.densities["tilt"] is None
     assert noise.total == pytest.approx(
         math.sqrt(expected["shot"] ** 2 + expected["johnson"] ** 2 + expected["adc"] ** 2)
     )
@@ -119,8 +122,26 @@ def test_what_is_not_known_is_named():
     )
 
 
-def test_strain_density():
+def test_strain_scale():
     chain = metro.Bench.of(arm="4 km").chain()
-    assert strain_density(chain, 4e-18, 0.0) == pytest.approx(1e-21)
-    assert strain_density(chain, 4e-18, 37474.05725 / 2) == pytest.approx(1e-21 * math.pi / 2)
-    assert strain_density(metro.Bench().chain(), 4e-18, 0.0) is None
+    assert strain_scale(chain, 0.0) == 1 / 4000
+    # at half the null frequency the arms see 2/π
+    assert strain_scale(chain, 37474.05725 / 2) == pytest.approx(math.pi / 2 / 4000)
+    assert strain_scale(metro.Bench().chain(), 0.0) is None
+
+
+def test_tilt_is_seen_through_the_beam_offset():
+    assert densities(arms__tilt_noise="1 nrad/√Hz", arms__beam_offset="-0.3 mm")[
+        "tilt"
+    ] == pytest.approx(3e-13)
+
+
+def test_light_stored_in_the_arms_takes_noise_and_signal_apart():
+    """Shot noise does not know of the cavity; the signal has lost 3 dB at its pole."""
+    bench = BENCH | {"arms__length": "4 km", "arms__input_reflectance": 0.97}
+    pole = cavity_pole_hz(4000.0, 0.97)
+    low, high = (displacement_noise(metro.Bench.of(**bench).chain(), f) for f in (0.0, pole))
+    # a pole and the sum over trips part by (1−ρ)²/24 at this frequency
+    assert high.densities["shot"] / low.densities["shot"] == pytest.approx(math.sqrt(2), rel=1e-4)
+    gain = (1 + math.sqrt(0.97)) / (1 - math.sqrt(0.97))
+    assert low.densities["shot"] == pytest.approx(densities()["shot"] / gain)

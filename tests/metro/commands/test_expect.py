@@ -233,3 +233,62 @@ def test_start_up_time():
         return min(times)
 
     assert best(ours) < 1.25 * best(base)
+
+
+def test_wanted_ratio(capsys):
+    bench = [
+        "--displacement",
+        "1pm",
+        "--wavelength",
+        "632.8nm",
+        "--power",
+        "80uW",
+        "--quantum-efficiency",
+        "1",
+    ]
+    once = expect(capsys, *bench)["snr"]
+    more = expect(capsys, *bench, "--snr", "100", "--duration", "4s", "--arm", "0.5m")
+    snr = more["snr"]
+    assert snr["detectable_displacement"]["value"] == pytest.approx(
+        100 * 4.460995e-15 / 2, rel=1e-6
+    )
+    assert snr["detectable_strain"]["value"] == pytest.approx(100 * 4.460995e-15, rel=1e-6)
+    assert snr["time_wanted"]["value"] == pytest.approx(1e4 * once["time_wanted"]["value"])
+    assert more["noise_strain"]["shot"]["value"] == pytest.approx(4.460995e-15 / 0.5, rel=1e-6)
+
+
+def test_plot(capsys, tmp_path):
+    pytest.importorskip("matplotlib")
+    path = tmp_path / "noise.svg"
+    arguments = ["expect", "--displacement", "1pm", "--wavelength", "632.8nm", "--power", "80uW",
+                 "--responsivity", "0.4A/W", "--arm", "0.5m", "--plot", str(path)]  # fmt: skip
+    assert run(arguments) == 0
+    assert path.read_text().startswith("<?xml")
+    capsys.readouterr()
+    assert run([*arguments[:-1], str(tmp_path / "noise.gif")]) == 2
+    captured = capsys.readouterr()
+    assert captured.out == ""
+    assert captured.err.startswith("midfringe: --plot must end in .png, .pdf or .svg, got ")
+
+
+def test_storage_and_coherence_among_the_corrections(capsys, tmp_path):
+    bench = tmp_path / "bench.toml"
+    bench.write_text(
+        '[laser]\nwavelength = "1064 nm"\nlinewidth = "1 MHz"\n'
+        '[arms]\nlength = "4 km"\nmismatch = "1 m"\ninput_reflectance = 0.97\n'
+    )
+    corrections = expect(
+        capsys, "--strain", "1e-21", "--bench", str(bench), "--frequency", "90.87Hz"
+    )["corrections"]
+    assert corrections["arm_storage"]["magnitude"]["value"] == pytest.approx(0.7071, abs=1e-3)
+    assert corrections["arm_storage"]["pole"]["value"] == pytest.approx(90.87, abs=0.05)
+    assert 0 < corrections["coherence"]["contrast"]["value"] < 1
+
+
+def test_a_fringe_too_large_for_the_converter(capsys):
+    bench = ["--low", "0V", "--high", "4V", "--adc-range", "3.3V"]
+    cautions = expect(capsys, "--phase", "1mrad", *bench)["cautions"]
+    assert any(
+        c.startswith("the fringe, 4 V from end to end, does not fit the converter's 3.3 V")
+        for c in cautions
+    )

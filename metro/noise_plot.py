@@ -63,7 +63,7 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
     axes = figure.add_subplot()
     for name in noises[0].densities:
         _draw(axes, frequencies, [n.densities[name] for n in noises], name.replace("_", " "), 1.2)
-    _draw(axes, frequencies, [n.total for n in noises], "total", 2.4, color="black")
+    _draw(axes, frequencies, [n.total for n in noises], "total", 3.0, color="black", zorder=1)
     axes.set(
         xlabel="frequency [Hz]",
         ylabel="displacement density [m/√Hz]",

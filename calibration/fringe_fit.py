@@ -1,0 +1,73 @@
+"""The fringe fit: what a driven fringe gave, with uncertainties and reasons for distrust."""
+
+from dataclasses import dataclass, field
+
+from metro.measured import Measured
+
+__all__ = ["FringeFit"]
+
+
+@dataclass(frozen=True)
+class FringeFit:
+    """Extremes, working point and depth of each line.
+
+    One photodiode cannot tell (φ, x) from (−φ, −x): the sign is chosen so that the working phase lies
+    between 0 and π (falling slope). Seen from the rising slope all phases change sign.
+
+    Attributes
+    ----------
+    low, high : Measured
+        Extremes of the fringe, in the record's unit.
+    contrast : Measured or None
+        (high − low)/(high + low − 2·dark); None without a dark level.
+    slope : Measured
+        dV/dφ at the first sample used, record's unit per radian.
+    slope_per_metre : Measured or None
+        dV/dx there, record's unit per metre; None without a wavelength.
+    working_phase : Measured
+        φ at the first sample used [rad], 0 at the detector's maximum, between 0 and π.
+    working_range_rad : tuple of float
+        Least and greatest φ over the record [rad].
+    phase_amplitude : list of Measured
+        Depth of each line, zero to peak [rad], in the order given.
+    phase : list of Measured
+        Phase of each line at t = 0, the recording's first sample [rad].
+    displacement_amplitude : list of Measured or None
+        Depth of each line in metres; None without a wavelength.
+    clock_offset : Measured or None
+        Relative error of the record's clock against the lines', where the record shows one.
+    residual_rms : float
+        Root mean square of the residuals, in the record's unit.
+    used_samples : int
+        Samples fitted.
+    value_unit : str
+        The record's unit.
+    reasons : list of str
+        Why the fit must not be trusted; empty where nothing was found.
+    """
+
+    low: Measured
+    high: Measured
+    contrast: Measured | None
+    slope: Measured
+    slope_per_metre: Measured | None
+    working_phase: Measured
+    working_range_rad: tuple[float, float]
+    phase_amplitude: list[Measured]
+    phase: list[Measured]
+    displacement_amplitude: list[Measured] | None
+    clock_offset: Measured | None
+    residual_rms: float
+    used_samples: int
+    value_unit: str
+    reasons: list[str] = field(default_factory=list)
+
+    @property
+    def is_trustworthy(self) -> bool:
+        """Whether no reason for distrust was found."""
+        return not self.reasons
+
+    @property
+    def distrust_reasons(self) -> list[str]:
+        """The reasons, as line fits name them."""
+        return self.reasons

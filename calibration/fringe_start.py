@@ -1,0 +1,304 @@
+"""Start values of a driven fringe: depths, line phases, working point and extremes.
+
+Each line's harmonics say where the mirror turns (the record is symmetric in time about that moment,
+whatever the working point), then how deep it goes (the harmonics follow J_k), and block by block what
+the working point was. Shallow lines have no harmonics to speak of: there the extremes, given or
+guessed, tie the first harmonic to the mean.
+"""
+
+import itertools
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.bessel_table import bessel_rows, bessel_table
+from calibration.harmonic_blocks import HarmonicBlocks, lay_blocks
+
+__all__ = ["FringeStart", "find_starts"]
+
+_SHALLOW = np.geomspace(0.008, 6.0, 72)
+_TURN = np.linspace(-np.pi, np.pi, 96, endpoint=False)
+_HIGHEST = 420
+
+
+@dataclass(frozen=True)
+class FringeStart:
+    """One set of start values.
+
+    Attributes
+    ----------
+    offset, half_span : float
+        Middle and half span of the fringe, in the record's unit.
+    phasors : ndarray, shape (n_lines,)
+        Complex phase amplitudes about the record's middle [rad].
+    middle : ndarray, shape (n_blocks,)
+        Sample index of each block's middle.
+    working : ndarray, shape (n_blocks,)
+        Working phase in each block, unwrapped [rad].
+    """
+
+    offset: float
+    half_span: float
+    phasors: NDArray[np.complex128]
+    middle: NDArray[np.float64]
+    working: NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class _Line:
+    """A line's harmonics turned to real numbers: even ones a·cos φ·J_k, odd ones a·sin φ·J_k."""
+
+    phase: float
+    even: NDArray[np.float64]
+    odd: NDArray[np.float64]
+
+
+def _turning_phases(harmonics: NDArray[np.complex128]) -> list[float]:
+    """Return the line phases, modulo π, about which the record is most nearly symmetric in time."""
+    highest = harmonics.shape[1]
+    size = 1 << math.ceil(math.log2(32 * highest + 64))
+    weights = np.zeros(size, dtype=np.complex128)
+    weights[1 : highest + 1] = np.sum(harmonics**2, axis=0)
+    course = np.fft.fft(weights).real  # at ψ = π·i/size
+    peak = (course >= np.roll(course, 1)) & (course > np.roll(course, -1))
+    peak &= course > 0.3 * course.max()
+    places = np.flatnonzero(peak)
+    best = places[np.argsort(-course[places])][:3]
+    return [float(np.pi * place / size) for place in best]
+
+
+def _lined_up(harmonics: NDArray[np.complex128], phase: float) -> _Line:
+    """Return the harmonics as real numbers for one line phase."""
+    order = np.arange(1, harmonics.shape[1] + 1)
+    real = (harmonics * np.exp(-1j * order * phase)).real / 2.0
+    sign = np.array([1.0, -1.0, -1.0, 1.0])[order % 4]
+    real = real * sign
+    return _Line(phase, real[:, 1::2], real[:, 0::2])
+
+
+def _depths_by_shape(line: _Line, deepest: float) -> list[tuple[float, float]]:
+    """Return (cost, depth) of the depths whose Bessel functions the harmonics follow best."""
+    highest = line.even.shape[1] + line.odd.shape[1]
+    depths, table = bessel_table(330, _HIGHEST)
+    count = int(np.searchsorted(depths, deepest))
+    table = table[: max(count, 1), 1 : highest + 1]
+    cost = np.zeros(len(table))
+    for part, rows in ((line.even, table[:, 1::2]), (line.odd, table[:, 0::2])):
+        if not part.size:
+            continue
+        share = np.einsum("bk,bl->kl", part, part)
+        along = np.einsum("mk,mk->m", rows @ share, rows)
+        cost += np.trace(share) - along / np.maximum(np.sum(rows**2, axis=1), 1e-30)
+    inner = np.concatenate([[np.inf], cost, [np.inf]])
+    places = np.flatnonzero((cost <= inner[:-2]) & (cost < inner[2:]))
+    places = places[np.argsort(cost[places])][:4]
+    return [(float(cost[i]), float(depths[i])) for i in places]
+
+
+def _phase_cost(
+    blocks: HarmonicBlocks, line: _Line, offset: float, reach: float, rows: NDArray[np.float64]
+) -> NDArray[np.float64]:
+    """Return the squared misfit for each (depth, working phase, block)."""
+    evens, odds = min(line.even.shape[1], 2), min(line.odd.shape[1], 2)
+    cosine, sine = np.cos(_TURN), np.sin(_TURN)
+    model = [rows[:, :1] * cosine]
+    data = [blocks.window_mean - offset]
+    weight = [1.0]
+    for k in range(evens):
+        model.append(rows[:, 2 * k + 2 : 2 * k + 3] * cosine)
+        data.append(line.even[:, k])
+        weight.append(2.0)
+    for k in range(odds):
+        model.append(rows[:, 2 * k + 1 : 2 * k + 2] * sine)
+        data.append(line.odd[:, k])
+        weight.append(2.0)
+    wide = np.stack(model, axis=-1) * reach  # (depth, phase, quantity)
+    seen = np.stack(data, axis=-1)  # (block, quantity)
+    heavy = np.array(weight)
+    square = np.sum(heavy * wide**2, axis=-1)[:, :, None]
+    cross = np.einsum("mpq,bq->mpb", wide * heavy, seen)
+    return np.asarray(square - 2.0 * cross + np.sum(heavy * seen**2, axis=-1))
+
+
+def _depths_by_extremes(
+    blocks: HarmonicBlocks, line: _Line, offset: float, half_span: float
+) -> list[tuple[float, float]]:
+    """Return (cost, depth) of the depths that agree with mean, harmonics and known extremes."""
+    thin = slice(None, None, max(len(blocks.middle) // 48, 1))
+    few = HarmonicBlocks(blocks.values[thin], blocks.window_mean[thin], blocks.middle[thin])
+    part = _Line(line.phase, line.even[thin], line.odd[thin])
+    rows = bessel_rows(_SHALLOW, 4)
+    cost = _phase_cost(few, part, offset, half_span, rows).min(axis=1).sum(axis=1)
+    inner = np.concatenate([[np.inf], cost, [np.inf]])
+    places = np.flatnonzero((cost <= inner[:-2]) & (cost < inner[2:]))
+    places = places[np.argsort(cost[places])][:3]
+    return [(float(cost[i]), float(_SHALLOW[i])) for i in places]
+
+
+def _working(
+    blocks: HarmonicBlocks,
+    lines: list[_Line],
+    depths: list[float],
+    offset: float | None,
+    half_span: float | None,
+) -> tuple[float, float, NDArray[np.float64]] | None:
+    """Return offset, half span and the working phase of each block for given depths."""
+    nulls = [float(row[0]) for row in bessel_rows(np.array(depths), 0)]
+    top = np.zeros((len(blocks.middle), 2))  # Σ data·model for cos and sin
+    norm = np.zeros(2)
+    for place, (line, depth) in enumerate(zip(lines, depths, strict=True)):
+        others = math.prod(nulls[:place] + nulls[place + 1 :])
+        highest = line.even.shape[1] + line.odd.shape[1]
+        row = bessel_rows(np.array([depth]), highest)[0] * others
+        even, odd = row[2 : highest + 1 : 2], row[1 : highest + 1 : 2]
+        top[:, 0] += 2.0 * line.even @ even
+        top[:, 1] += 2.0 * line.odd @ odd
+        norm += 2.0 * np.array([even @ even, odd @ odd])
+    base = math.prod(nulls)
+    if offset is not None:
+        top[:, 0] += (blocks.window_mean - offset) * base
+        norm[0] += base**2
+    if norm.min() <= 0.0:
+        return None
+    cosine, sine = (top / norm).T
+    if half_span is None or offset is None:
+        size = np.hypot(cosine, sine)
+        half_span = float(np.median(size))
+        offset = float(np.median(blocks.window_mean - cosine * base))
+    elif norm[1] < 0.02:  # a shallow line's sine is noisy: its size follows from the cosine
+        cosine = np.clip(cosine, -half_span, half_span)
+        sine = np.sign(_steady(sine)) * np.sqrt(half_span**2 - cosine**2)
+    if not half_span > 0.0:
+        return None
+    return offset, half_span, np.unwrap(np.arctan2(sine, cosine))
+
+
+def _steady(sine: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the sine averaged over neighbouring blocks, whose sign then is that of the slope."""
+    if len(sine) < 5:
+        return np.where(sine == 0.0, 1.0, sine)
+    padded = np.pad(sine, 1, mode="edge")
+    mean = padded[:-2] + padded[1:-1] + padded[2:]
+    return np.where(mean == 0.0, 1.0, mean)
+
+
+def _signed(lines: list[_Line], depths: list[float]) -> list[complex]:
+    """Return the phasors, each line's sign against the first by their common sin φ."""
+    sines = []
+    for line, depth in zip(lines, depths, strict=True):
+        highest = line.even.shape[1] + line.odd.shape[1]
+        row = bessel_rows(np.array([depth]), highest)[0][1 : highest + 1 : 2]
+        sines.append(line.odd @ row)
+    lead = max(sines, key=lambda sine: float(sine @ sine))
+    return [
+        depth
+        * complex(math.cos(line.phase), math.sin(line.phase))
+        * (-1.0 if float(lead @ sine) < 0.0 else 1.0)
+        for line, depth, sine in zip(lines, depths, sines, strict=True)
+    ]
+
+
+def _options(
+    blocks: HarmonicBlocks,
+    harmonics: NDArray[np.complex128],
+    deepest: float,
+    extremes: tuple[float, float],
+) -> list[tuple[_Line, float]]:
+    """Return the likely (phase, depth) of one line, most likely first."""
+    found: list[tuple[float, _Line, float]] = []
+    tied: list[tuple[float, _Line, float]] = []
+    for phase in _turning_phases(harmonics):
+        line = _lined_up(harmonics, phase)
+        found += [(cost, line, depth) for cost, depth in _depths_by_shape(line, deepest)]
+        tied += [
+            (cost, line, depth)
+            for cost, depth in _depths_by_extremes(blocks, line, extremes[0], extremes[1])
+        ]
+    found.sort(key=lambda item: item[0])
+    tied.sort(key=lambda item: item[0])
+    return [(line, depth) for _, line, depth in found[:3] + tied[:2]]
+
+
+def _guessed_extremes(values: NDArray[np.float64]) -> tuple[float, float]:
+    """Return a rough middle and half span of a record that sees whole fringes."""
+    good = values[np.isfinite(values)]
+    low, high = np.quantile(good, [0.01, 0.99])
+    return float(high + low) / 2.0, max(float(high - low) / 2.0, 1e-300)
+
+
+def find_starts(
+    values: NDArray[np.float64],
+    turns: NDArray[np.float64],
+    low: float | None,
+    high: float | None,
+) -> list[FringeStart]:
+    """Find start values for a driven fringe.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Record; NaN where samples are missing.
+    turns : ndarray, shape (n_lines,)
+        Phase of each line per sample [rad], between 0 and π.
+    low, high : float or None
+        Extremes of the fringe where known, in the record's unit.
+
+    Returns
+    -------
+    list of FringeStart
+        Most likely first, at most 48.
+    """
+    period = 2.0 * np.pi / float(turns.min())
+    apart = min([abs(a - b) for a, b in itertools.combinations(turns.tolist(), 2)], default=np.inf)
+    blocks = lay_blocks(values, max(3.0 * period, 3.0 * 2.0 * np.pi / apart), period)
+    centre = (len(values) - 1) / 2.0
+    known = None
+    if low is not None and high is not None:
+        known = ((high + low) / 2.0, (high - low) / 2.0)
+    extremes = known or _guessed_extremes(values)
+    options = []
+    for turn in turns.tolist():
+        highest = min(max(int(np.pi / turn * 0.96), 1), _HIGHEST)
+        harmonics = blocks.harmonics(turn, centre, highest)
+        options.append(_options(blocks, harmonics, min(0.95 * np.pi / turn, 330.0), extremes))
+    starts: list[FringeStart] = []
+    for choice in _choices(options):
+        starts += _from_choice(blocks, choice, known, extremes)
+    return starts[:48]
+
+
+def _choices(options: list[list[tuple[_Line, float]]]) -> list[list[tuple[_Line, float]]]:
+    """Return what to try: all lines together, and each line alone with the others still at rest.
+
+    From rest the search finds shallow lines by itself, once a deep one is described.
+    """
+    keep = {1: 8, 2: 4, 3: 3}.get(len(options), 2 if len(options) < 5 else 1)
+    together = [o[:keep] for o in options]
+    choices = [list(c) for c in itertools.islice(itertools.product(*together), 27)]
+    if len(options) > 1:
+        for place, own in enumerate(options):
+            rest = [(o[0][0], 0.0) for o in options]
+            choices += [[*rest[:place], option, *rest[place + 1 :]] for option in own[:4]]
+    return choices
+
+
+def _from_choice(
+    blocks: HarmonicBlocks,
+    choice: list[tuple[_Line, float]],
+    known: tuple[float, float] | None,
+    extremes: tuple[float, float],
+) -> list[FringeStart]:
+    """Return the starts that one choice of phases and depths allows."""
+    lines, depths = [line for line, _ in choice], [depth for _, depth in choice]
+    phasors = np.array(_signed(lines, depths))
+    tries: list[tuple[float | None, float | None]] = [extremes]
+    if known is None and max(depths) > 0.7:
+        tries.insert(0, (None, None))
+    out = []
+    for offset, half_span in tries:
+        got = _working(blocks, lines, depths, offset, half_span)
+        if got is not None:
+            out.append(FringeStart(got[0], got[1], phasors, blocks.middle, got[2]))
+    return out

@@ -137,6 +137,16 @@ def pack_announcement(announcement: Announcement) -> bytes:
 def encode_announcement(announcement: Announcement) -> bytes:
     """Return the announcement as it goes over the wire.
 
+    Parameters
+    ----------
+    announcement : Announcement
+        What the board says of itself.
+
+    Returns
+    -------
+    bytes
+        The message, delimiters included.
+
     Raises
     ------
     MessageError

@@ -73,7 +73,13 @@ class CommandCode(IntEnum):
 
 @dataclass(frozen=True, slots=True)
 class Note:
-    """Text from the board, for people."""
+    """Text from the board, for people.
+
+    Parameters
+    ----------
+    text : str
+        One line.
+    """
 
     text: str
 

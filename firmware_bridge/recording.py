@@ -161,11 +161,11 @@ class MfrRecording(Recording):
 
     def _read_run(
         self,
-        run: Any,
+        run: Any,  # noqa: ANN401  # a row of RUN
         wanted: list[int],
         start: int,
         stop: int,
-        values: NDArray[np.float64],  # noqa: ANN401  # a row of RUN
+        values: NDArray[np.float64],
     ) -> int:
         slots, origin = self.file.slots, int(run["index"])
         length = (int(run["records"]) - 1) * slots + int(run["last"])

@@ -201,15 +201,16 @@ def check_vapour(state: AirState) -> None:
         If the vapour is over-saturated or exceeds the total pressure.
     """
     # a per mille is left for instruments that read saturation a little differently
+    name = "humidity" if state.kind == "relative" else state.kind
     saturated = 1.001 * saturation_pressure_pa(state.temperature_k)
     if state.vapour_pa > saturated:
         raise MetroError(
-            f"humidity must leave the air below saturation, {saturated:.6g} Pa of vapour at"
+            f"{name} must leave the air below saturation, {saturated:.6g} Pa of vapour at"
             f" {state.temperature_k:.6g} K, got {state.vapour_pa:.6g} Pa"
         )
     if state.vapour_pa > 1.001 * state.pressure_pa:
         raise MetroError(
-            f"humidity must leave the vapour below the total pressure, {state.pressure_pa:.6g} Pa,"
+            f"{name} must leave the vapour below the total pressure, {state.pressure_pa:.6g} Pa,"
             f" got {state.vapour_pa:.6g} Pa of vapour"
         )
 

@@ -5,12 +5,15 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
-    from metro.bench import Bench
+    from collections.abc import Mapping
 
-__all__ = ["bench_cautions"]
+    from metro.bench import Bench
+    from metro.corrections import Correction
+
+__all__ = ["bench_cautions", "wave_cautions"]
 
 HENE_AIR_M = 632.8e-9
-HENE_VACUUM_M = 632.9908e-9
+_PART = 1e-3
 
 
 def bench_cautions(bench: Bench) -> list[str]:
@@ -62,3 +65,37 @@ def _converter_cautions(bench: Bench) -> list[str]:
         " ends will read over-range"
     )
     return [caution]
+
+
+def wave_cautions(found: Mapping[str, Correction]) -> list[str]:
+    """Return where strain times length is not enough for a wave.
+
+    Parameters
+    ----------
+    found : mapping of str to Correction
+        As :func:`metro.corrections.corrections` returns them.
+
+    Returns
+    -------
+    list of str
+        One sentence for each correction above a part in a thousand.
+    """
+    cautions = []
+    travel, direction, exact = (
+        found.get(name) for name in ("arm_travel_time", "direction", "proper_length")
+    )
+    if travel is not None and travel.number("magnitude") < 1.0 - _PART:
+        size = travel.number("magnitude")
+        cautions.append(f"strain times length is not enough: the arms' response is {size:.6g}")
+    if direction is not None and direction.number("plus") < 1.0 - _PART:
+        plus, cross = direction.number("plus"), direction.number("cross")
+        cautions.append(
+            f"the stages hold for a wave from above; from this direction the response is {plus:.6g} (plus),"
+            f" {cross:.6g} (cross)"
+        )
+    if exact is not None and abs(exact.number("x_arm")) > _PART:
+        cautions.append(
+            f"first order leaves out {exact.number('x_arm'):.3g} of the x arm's change"
+            f" and {exact.number('differential'):.3g} of the differential"
+        )
+    return cautions

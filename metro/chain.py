@@ -152,11 +152,15 @@ class Chain:
         ChainError
             If the bench does not determine the way.
         """
-        for link, with_it in self.way(start, to):
-            value = (
-                self._pass_exactly(value, link, with_it) if exact else _pass(value, link, with_it)
-            )
-        return value
+        way = self.way(start, to)
+        if exact:
+            for link, with_it in way:
+                value = self._pass_exactly(value, link, with_it)
+            return value
+        factor = 1.0  # one product over an array instead of one a link
+        for link, with_it in way:
+            factor = factor * link.gain if with_it else factor / link.gain
+        return value * factor
 
     def way(self, start: str, to: str) -> list[tuple[Link, bool]]:
         """Return the links from one stage to another, each with whether it is passed forwards.

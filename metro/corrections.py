@@ -48,6 +48,21 @@ class Correction:
     values: dict[str, Measured]
     text: str
 
+    def number(self, name: str) -> float:
+        """Return one of the numbers.
+
+        Parameters
+        ----------
+        name : str
+            As in ``values``.
+
+        Returns
+        -------
+        float
+            In its SI unit.
+        """
+        return float(self.values[name].magnitude)
+
     def to_dict(self) -> dict[str, Any]:
         """Return the JSON form.
 

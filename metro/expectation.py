@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from metro.cautions import bench_cautions
+from metro.cautions import bench_cautions, wave_cautions
 from metro.corrections import Correction, Direction, corrections
 from metro.kernel.noise import averaging_time_s, signal_to_noise
 from metro.measured import Measured
@@ -135,7 +135,7 @@ def expect(
         snr=_snr(chain, plain["displacement"], noise, duration_s, wanted_snr),
         conventions=_conventions(chain),
         corrections=found,
-        cautions=_cautions(chain, stage, plain, noise),
+        cautions=[*_cautions(chain, stage, plain, noise), *wave_cautions(found)],
         sources={
             key: {"value": text, "source": source} for key, text, source in chain.bench.provenance()
         },

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
+from metro.elementwise import is_array
+from metro.errors import MetroError
 from metro.kernel import photodiode as kernel
 from metro.units import quantity, si
 
@@ -11,6 +13,7 @@ if TYPE_CHECKING:
     from metro.units import Quantity
 
 __all__ = [
+    "adc_codes",
     "adc_counts",
     "adc_step",
     "photocurrent",
@@ -180,3 +183,57 @@ def adc_counts(
     full = si(adc_range, "adc_range", "V", above=0.0)
     resolution = si(bits, "bits", "bit", minimum=1.0, maximum=32.0)
     return quantity(kernel.counts(volts, full, resolution, si(offset, "offset", "V")), "1")
+
+
+def adc_codes(
+    voltage: Quantity | str,
+    adc_range: Quantity | str,
+    bits: Quantity | float | str,
+    offset: Quantity | str = "0 V",
+    signed: bool = True,
+) -> tuple[Any, Any]:
+    """Return the codes of an ideal converter, and which of them are out of range.
+
+    Parameters
+    ----------
+    voltage : Quantity or str
+        Voltage at the converter; scalar or array.
+    adc_range : Quantity or str
+        Full scale; > 0.
+    bits : Quantity, float or str
+        Resolution, a whole number from 1 to 32.
+    offset : Quantity or str, default "0 V"
+        Voltage that reads 0.
+    signed : bool, default True
+        Codes on both sides of 0; otherwise from 0 upwards.
+
+    Returns
+    -------
+    tuple of (ndarray of int64, ndarray of bool)
+        Codes and over-range marks, shaped as ``voltage``; plain int and bool for a scalar.
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+    """
+    volts = si(voltage, "voltage", "V")
+    full = float(si(adc_range, "adc_range", "V", above=0.0))
+    resolution = _whole_bits(bits)
+    zero = float(si(offset, "offset", "V"))
+    if not is_array(volts):
+        return kernel.adc_code(volts, full, resolution, zero, signed)
+    import numpy as np
+
+    lowest = -(2 ** (resolution - 1)) if signed else 0
+    highest = lowest + 2**resolution - 1
+    codes = np.floor(kernel.counts(volts, full, resolution, zero) + 0.5)
+    codes = np.clip(codes, lowest, highest).astype(np.int64)
+    return codes, (codes == lowest) | (codes == highest)
+
+
+def _whole_bits(bits: Quantity | float | str) -> int:
+    resolution = float(si(bits, "bits", "bit", minimum=1.0, maximum=32.0))
+    if resolution != int(resolution):
+        raise MetroError(f"bits must be a whole number, got {bits!r}")
+    return int(resolution)

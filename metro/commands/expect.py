@@ -24,6 +24,11 @@ _GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
     'midfringe expect --displacement 1pm --wavelength "632.9908 nm" --power 80uW --responsivity 0.4A/W'
 )
 @click.option("--strain", metavar="VALUE", help="Strain amplitude h, such as 1e-21.")
+@click.option(
+    "--length-strain",
+    metavar="VALUE",
+    help="Length strain ΔL/L of the x arm alone, such as 10ppm; another quantity than --strain.",
+)
 @click.option("--displacement", metavar="VALUE", help="Differential displacement, such as 1pm.")
 @click.option("--phase", metavar="VALUE", help="Phase, such as 0.02rad.")
 @click.option("--fringes", metavar="VALUE", help="Fringes, such as 0.25.")
@@ -84,7 +89,10 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     from metro.stages import stage_si
 
     stage, text = _one_stage(options)
-    value = stage_si(stage, text, f"--{stage}")
+    if stage == "length_strain":
+        stage, value = "displacement", _one_arm_m(bench, text)
+    else:
+        value = stage_si(stage, text, f"--{stage}")
     _check_files(options)
     working_phase = options["working_phase"]
     if working_phase is None:
@@ -129,12 +137,20 @@ def _write_files(chain: Chain, document: str, options: dict[str, Any]) -> None:
 
 
 def _one_stage(options: dict[str, Any]) -> tuple[str, str]:
-    given = [name for name in _GIVEN if options[name] is not None]
+    given = [name for name in (*_GIVEN, "length_strain") if options[name] is not None]
     if len(given) != 1:
         names = ", ".join(f"--{name}" for name in _GIVEN)
-        got = " and ".join(f"--{name}" for name in given) or "none"
+        got = " and ".join(f"--{name.replace('_', '-')}" for name in given) or "none"
         raise MetroError(f"exactly one of {names} must be given, got {got}")
     return given[0], options[given[0]]
+
+
+def _one_arm_m(bench: Bench, text: str) -> float:
+    """Return the displacement that a length strain of the x arm alone makes."""
+    from metro.kernel.strain import length_change_m
+    from metro.units import si
+
+    return length_change_m(si(text, "--length-strain", "1"), bench.magnitude("arms.length"))
 
 
 def _direction(options: dict[str, Any]) -> Any:  # noqa: ANN401  # a Direction or None

@@ -3,12 +3,13 @@
 The products take arrays as well as floats.
 """
 
-from math import atan, cos, pi, sin, sqrt
+from math import atan, cos, floor, pi, sin, sqrt
 
 from .arms import sinc
 from .constants import ELEMENTARY_CHARGE_C, PLANCK_J_S, SPEED_OF_LIGHT_M_S
 
 __all__ = [
+    "adc_code",
     "aperture_response",
     "counts",
     "current_a",
@@ -135,6 +136,37 @@ def counts(voltage_v: float, range_v: float, bits: float, offset_v: float = 0.0)
         Counts.
     """
     return (voltage_v - offset_v) / step_v(range_v, bits)
+
+
+def adc_code(
+    voltage_v: float, range_v: float, bits: int, offset_v: float = 0.0, signed: bool = True
+) -> tuple[int, bool]:
+    """Return the code of an ideal converter, and whether the voltage is out of its range.
+
+    Parameters
+    ----------
+    voltage_v : float
+        Voltage [V].
+    range_v : float
+        Full scale [V].
+    bits : int
+        Resolution [bit].
+    offset_v : float, default 0
+        Voltage that reads 0 [V].
+    signed : bool, default True
+        Codes from −2^(bits−1) to 2^(bits−1) − 1; otherwise from 0 to 2^bits − 1.
+
+    Returns
+    -------
+    tuple of (int, bool)
+        Code, rounded to the nearest and kept to the extremes; whether an extreme code was reached,
+        at which a voltage is no longer known.
+    """
+    lowest = -(2 ** (bits - 1)) if signed else 0
+    highest = lowest + 2**bits - 1
+    code = floor(counts(voltage_v, range_v, bits, offset_v) + 0.5)
+    code = min(max(code, lowest), highest)
+    return code, code in (lowest, highest)
 
 
 def full_scale_snr_db(bits: float) -> float:

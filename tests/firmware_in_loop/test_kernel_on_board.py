@@ -87,6 +87,7 @@ def single_math():
     for name in ("sin", "cos", "atan", "sqrt", "exp", "log"):
         setattr(module, name, narrowed(getattr(np, {"atan": "arctan"}.get(name, name))))
     module.atan2 = lambda y, x: np.arctan2(np.float32(y), np.float32(x))
+    module.floor = math.floor
     module.pi = np.float32(math.pi)
     return module
 
@@ -132,6 +133,11 @@ SINGLE = [
     ("photodiode", "counts", (1.3, 3.3, 12)),
     ("photodiode", "one_pole_response", (87.1, 5e3)),
     ("photodiode", "aperture_response", (87.1, 1e-4)),
+    ("cavity", "phase_gain", (0.97,)),
+    ("cavity", "folded_response", (1e3, 0.5, 4)),
+    ("beam", "coherence", (0.04, 1e6)),
+    ("beam", "tilt_contrast", (4e-5, 1e-3, 632.99e-9)),
+    ("ports", "quadrature_phase", (0.3, -0.8, 1.05, 0.03)),
     ("noise", "shot_current", (50e-6,)),
     ("noise", "johnson_current", (62e3, 293.15)),
     ("noise", "quantisation_v", (0.8e-3,)),

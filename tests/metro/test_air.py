@@ -177,12 +177,12 @@ def test_wrong_arguments(changes, message):
         (
             M(3000.0, "Pa"),
             "vapour pressure",
-            "humidity must leave the air below saturation, 2341.55 Pa of vapour at 293.15 K, got 3000 Pa",
+            "vapour pressure must leave the air below saturation, 2341.55 Pa of vapour at 293.15 K, got 3000 Pa",
         ),
         (
             M(0.5, "1"),
             "mole fraction",
-            "humidity must leave the air below saturation, 2341.55 Pa of vapour at 293.15 K, got 50459.4 Pa",
+            "mole fraction must leave the air below saturation, 2341.55 Pa of vapour at 293.15 K, got 50459.4 Pa",
         ),
         (M(-1.0, "Pa"), "vapour pressure", "vapour pressure must be 0 … 101325 Pa, got -1 Pa"),
         (

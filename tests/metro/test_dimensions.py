@@ -105,6 +105,12 @@ FUNCTIONS = {
         "bits": ("12", "number"),
         "offset": ("0 V", "voltage"),
     },
+    photodiode.adc_codes: {
+        "voltage": ("1 V", "voltage"),
+        "adc_range": ("5 V", "voltage"),
+        "bits": ("12", "number"),
+        "offset": ("0 V", "voltage"),
+    },
     noise.shot_current: {"current": ("1 mA", "current")},
     noise.johnson_voltage: {
         "resistance": ("1 kohm", "resistance"),
@@ -154,7 +160,7 @@ def test_right_dimensions_are_taken(function):
     assert list(table) == [
         name
         for name in inspect.signature(function).parameters
-        if name not in {"exact", "slope", "equation"}
+        if name not in {"exact", "slope", "equation", "signed"}
     ]
     as_text = function(**{name: value for name, (value, _) in table.items()})
     as_quantity = function(

@@ -27,6 +27,21 @@ def test_power_to_counts():
     assert counts.magnitude == pytest.approx((volts.magnitude + 5) * 6553.6)
 
 
+@pytest.mark.parametrize(("signed", "lowest", "highest"), [(True, -2048, 2047), (False, 0, 4095)])
+def test_codes_and_over_range(signed, lowest, highest):
+    volts = np.array([-9.0, -1e-4, 0.0, 0.6e-3, 0.7e-3, 1.0, 9.0])
+    codes, over = photodiode.adc_codes(
+        metro.Quantity(volts, "V"), "5 V", 12, "0.0 V", signed=signed
+    )
+    one = [photodiode.adc_codes(metro.Quantity(v, "V"), "5 V", 12, signed=signed) for v in volts]
+    assert list(zip(codes.tolist(), over.tolist(), strict=True)) == one
+    assert (codes[0], codes[-1]) == (lowest, highest)
+    assert codes[3:6].tolist() == [0, 1, 819]  # 1.2207 mV a count
+    assert over.tolist() == [c in (lowest, highest) for c in codes]
+    with pytest.raises(metro.MetroError, match=r"bits must be a whole number, got 12\.5"):
+        photodiode.adc_codes("1 V", "5 V", 12.5)
+
+
 def test_noise():
     # published: 1.790070744e-11 A/√Hz and 4.07035478e-9 V/√Hz
     assert noise.shot_current("1 mA").magnitude == pytest.approx(1.790070744e-11, rel=1e-9)

@@ -292,3 +292,24 @@ def test_a_fringe_too_large_for_the_converter(capsys):
         c.startswith("the fringe, 4 V from end to end, does not fit the converter's 3.3 V")
         for c in cautions
     )
+
+
+def test_length_strain_of_one_arm_is_another_quantity(capsys):
+    stages = expect(capsys, "--length-strain", "10ppm", "--arm", "0.5m", "--wavelength", "633nm")[
+        "stages"
+    ]
+    assert stages["displacement"]["value"] == pytest.approx(5e-6)
+    assert run(["expect", "--length-strain", "1", "--strain", "1", "--arm", "1m"]) == 2
+    assert capsys.readouterr().err.endswith("got --strain and --length-strain\n")
+
+
+def test_where_strain_times_length_is_not_enough(capsys):
+    arguments = ["--strain", "0.1", "--arm", "0.5m", "--frequency", "100MHz", "--theta", "90deg"]
+    cautions = expect(capsys, *arguments)["cautions"]
+    assert cautions[-3:] == [
+        "strain times length is not enough: the arms' response is 0.826767",
+        "the stages hold for a wave from above; from this direction the response is 0.5 (plus), 0 (cross)",
+        "first order leaves out -0.0238 of the x arm's change and 0.00126 of the differential",
+    ]
+    quiet = expect(capsys, "--strain", "1e-21", "--arm", "0.5m", "--frequency", "100Hz")["cautions"]
+    assert not any("enough" in c or "first order" in c for c in quiet)

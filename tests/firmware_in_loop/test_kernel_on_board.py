@@ -84,8 +84,12 @@ def narrowed(function):
 
 def single_math():
     module = types.ModuleType("math")
-    for name in ("sin", "cos", "atan", "sqrt", "exp", "log"):
-        setattr(module, name, narrowed(getattr(np, {"atan": "arctan"}.get(name, name))))
+    for name in ("sin", "cos", "asin", "atan", "sqrt", "exp", "log"):
+        setattr(
+            module,
+            name,
+            narrowed(getattr(np, {"atan": "arctan", "asin": "arcsin"}.get(name, name))),
+        )
     module.atan2 = lambda y, x: np.arctan2(np.float32(y), np.float32(x))
     module.floor = math.floor
     module.pi = np.float32(math.pi)

@@ -7,13 +7,23 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from calibration.analysis import calibrate as calibrate
+    from calibration.driven_fringe import fit_driven_fringe as fit_driven_fringe
     from calibration.errors import CalibrationError as CalibrationError
+    from calibration.fringe_fit import FringeFit as FringeFit
+    from calibration.record import Calibration as Calibration
+    from calibration.record import load as load
 
 _HOMES = {
+    "load": "calibration.record",
+    "calibrate": "calibration.analysis",
+    "Calibration": "calibration.record",
     "CalibrationError": "calibration.errors",
+    "FringeFit": "calibration.fringe_fit",
+    "fit_driven_fringe": "calibration.driven_fringe",
 }
 
-__all__ = ["CalibrationError"]
+__all__ = ["Calibration", "CalibrationError", "FringeFit", "calibrate", "fit_driven_fringe", "load"]
 
 
 def __getattr__(name: str) -> Any:  # noqa: ANN401  # PEP 562: any public name of the package

@@ -193,10 +193,11 @@ def _relative_u(calibration: Calibration, quantity: str) -> float:
 
 def _cautions(calibration: Calibration, slope: str) -> list[str]:
     cautions = [f"the recording is taken to lie on the {slope} slope"]
-    corner = calibration.chain.get("amplifier_corner")
-    if corner is not None:
+    for name in ("amplifier corner", "antialias corner"):
+        corner = calibration.chain.get(name.replace(" ", "_"))
+        if corner is None:
+            continue
         cautions.append(
-            f"the amplifier's corner at {float(corner.magnitude):g} Hz is not undone: fast motion "
-            "reads small"
+            f"the {name} at {float(corner.magnitude):g} Hz is not undone: fast motion reads small"
         )
     return [*cautions, *calibration.cautions]

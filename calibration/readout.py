@@ -46,6 +46,23 @@ class Readout:
         delay_s = self.bench.magnitude("adc.channel_delay", 0.0)
         return 1.0 / (gain * delay_response(frequency_hz, delay_s))
 
+    def photodiode_response(self, frequency_hz: float) -> complex:
+        """Return the photodiode channel's response: amplifier and anti-alias filter.
+
+        A recording alone has both in it; in the ratio to a drive that passes the same anti-alias
+        filter only the amplifier stays (`correction`).
+        """
+        response = 1.0 + 0.0j
+        for key in _POLES:
+            if self.bench.get(key) is not None:
+                response *= one_pole_response(frequency_hz, self.bench.magnitude(key))
+        return response
+
+    def photodiode_terms(self, frequency_hz: float) -> list[Term]:
+        """Return the corners of the photodiode channel at one frequency."""
+        stated = [key for key in _POLES if self.bench.get(key) is not None]
+        return [self._pole_term(key, frequency_hz) for key in stated]
+
     def ruler_terms(self, sign: float) -> list[Term]:
         """Return wavelength and index; ``sign`` +1 for metres per volt, −1 for volts per metre."""
         wavelength_m = self.bench.magnitude("laser.wavelength")
@@ -67,17 +84,7 @@ class Readout:
         """Return the amplifier's corner and the channel delay at one frequency."""
         terms = []
         if self.bench.get("photodiode.bandwidth") is not None:
-            corner_hz = self.bench.magnitude("photodiode.bandwidth")
-            ratio = frequency_hz / corner_hz
-            terms.append(
-                self._stated(
-                    "readout response",
-                    "photodiode.bandwidth",
-                    "Hz",
-                    relative=-(ratio**2) / (1 + ratio**2) / corner_hz,
-                    turn=-ratio / (1 + ratio**2) / corner_hz,
-                )
-            )
+            terms.append(self._pole_term("photodiode.bandwidth", frequency_hz))
         if self.bench.get("adc.channel_delay") is not None:
             terms.append(
                 self._stated("channel delay", "adc.channel_delay", "s", turn=2 * pi * frequency_hz)
@@ -145,6 +152,18 @@ class Readout:
                 terms.append(self._stated(_NAMES[key], key, "1", relative=relative))
         return terms
 
+    def _pole_term(self, key: str, frequency_hz: float) -> Term:
+        """Return what the uncertainty of a pole's corner does to a line corrected for it."""
+        corner_hz = self.bench.magnitude(key)
+        ratio = frequency_hz / corner_hz
+        return self._stated(
+            _POLES[key],
+            key,
+            "Hz",
+            relative=-(ratio**2) / (1 + ratio**2) / corner_hz,
+            turn=-ratio / (1 + ratio**2) / corner_hz,
+        )
+
     @property
     def _half_range_v(self) -> float:
         return self.bench.magnitude("adc.range") / 2
@@ -163,6 +182,7 @@ class Readout:
         )
 
 
+_POLES = {"photodiode.bandwidth": "readout response", "adc.antialias": "anti-alias response"}
 # Curvature of the converter as a fraction of its range, at x = V/(range/2): zero at both ends.
 _SHAPES = {
     "adc.quadratic": np.poly1d([-1.0, 0.0, 1.0]),

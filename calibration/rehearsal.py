@@ -7,7 +7,7 @@ from pathlib import Path
 
 import numpy as np
 
-from calibration.calibrate import calibrate
+from calibration.analysis import calibrate
 from calibration.comparison import Comparison, compare
 from calibration.convert import ConvertedRecording
 from calibration.line_fit import Line
@@ -96,7 +96,7 @@ def rehearse(
         files[step.name] = path
         say(f"recorded {step.name}")
     roles = _by_role(steps, files)
-    calibration = calibrate(bench, roles)
+    calibration = calibrate(bench, **roles)
     say("calibrated")
     conversions = _conversions(calibration, steps, files)
     displacements = _displacements(bench, calibration, steps, conversions)
@@ -114,7 +114,7 @@ def rehearse(
 def _by_role(steps: list[Step], files: Mapping[str, Path]) -> dict[str, list[str]]:
     by_role: dict[str, list[str]] = {}
     for step in steps:
-        by_role.setdefault(step.role, []).append(str(files[step.name]))
+        by_role.setdefault(step.role.replace("-", "_"), []).append(str(files[step.name]))
     return by_role
 
 
@@ -146,7 +146,7 @@ def _displacements(
     """
     tone = next(step.setup.tones[0] for step in steps if step.role == "lines-rising")
     fitted = [_fit(conversions[slope], bench, calibration) for slope in ("rising", "falling")]
-    correction = abs(Readout(bench).correction(tone.frequency_hz))
+    correction = 1.0 / abs(Readout(bench).photodiode_response(tone.frequency_hz))
     amplitude_m = correction * float(np.mean([abs(line.phasor) for line in fitted]))
     budget = Budget(
         [
@@ -191,5 +191,5 @@ def _fit(conversion: ConvertedRecording, bench: Bench, calibration: Calibration)
 
 
 def _response_u(bench: Bench, frequency_hz: float) -> float:
-    terms = Readout(bench).response_terms(frequency_hz)
+    terms = Readout(bench).photodiode_terms(frequency_hz)
     return sqrt(sum((term.relative * term.u) ** 2 for term in terms))

@@ -3,6 +3,7 @@
 import hashlib
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
+from os import PathLike
 from pathlib import Path
 
 import numpy as np
@@ -59,7 +60,7 @@ class Session:
 
     Parameters
     ----------
-    files : mapping of str to sequence of str
+    files : mapping of str to sequence of path
         Paths by role (see ``ROLES``).
     bench : Bench
         Names the drive's channel (``drive.channel``).
@@ -70,11 +71,13 @@ class Session:
         If a role is unknown, or there is no scan and no given extremes, or no lines recording.
     """
 
-    def __init__(self, files: Mapping[str, Sequence[str]], bench: Bench) -> None:
+    def __init__(self, files: Mapping[str, Sequence[str | PathLike[str]]], bench: Bench) -> None:
         unknown = [role for role in files if role not in ROLES]
         if unknown:
             raise CalibrationError(f"role must be one of {', '.join(ROLES)}, got {unknown[0]!r}")
-        self._records = [_open(role, path, bench) for role in ROLES for path in files.get(role, ())]
+        self._records = [
+            _open(role, str(path), bench) for role in ROLES for path in files.get(role, ())
+        ]
         if not (self.of("lines-rising") or self.of("lines-falling")):
             raise CalibrationError(
                 "a calibration needs at least one recording of lines on a slope, got none "

@@ -1,7 +1,7 @@
 """A calibration in words and a table, for a person."""
 
 from calibration.record import Calibration
-from metro.display import show_any
+from metro.display import show
 from metro.measured import Measured
 from metro.output import table
 
@@ -19,7 +19,7 @@ def calibration_text(calibration: Calibration) -> str:
     """Return the result of a calibration as lines for a terminal."""
     rows = [
         [
-            show_any(entry.frequency),
+            show(float(entry.frequency.magnitude), "Hz"),
             _value(entry.magnitude),
             _expanded(entry.magnitude),
             "unknown" if entry.phase is None else _value(entry.phase),
@@ -31,7 +31,11 @@ def calibration_text(calibration: Calibration) -> str:
     header = ["line", "actuator", "U (95 %)", "phase", "U (95 %)", "trust"]
     parts = [table(rows, header=header), "", table(_readout_rows(calibration)), ""]
     first = calibration.actuator[0]
-    parts += [f"budget of the actuator at {show_any(first.frequency)}:", first.budget.table(), ""]
+    parts += [
+        f"budget of the actuator at {show(float(first.frequency.magnitude), 'Hz')}:",
+        first.budget.table(),
+        "",
+    ]
     parts += ["budget of the readout slope:", calibration.readout_budget.table(), ""]
     parts += [f"check: {_check(check)}" for check in calibration.checks]
     parts += [f"assumed: {text}" for text in calibration.assumptions]

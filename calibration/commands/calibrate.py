@@ -49,14 +49,13 @@ def calibrate(
     --scan and one of --lines-rising and --lines-falling are the least; what is missing becomes a
     caution and an entry of the budget.
     """
-    from calibration.calibrate import calibrate as run
+    from calibration.analysis import calibrate as run
     from calibration.summary import calibration_text
 
     for path in (out, plot):
         if path is not None:
             check_writable(path, overwrite)
-    files = {role: roles[role.replace("-", "_")] for role in _ROLES}
-    result = run(bench, {role: paths for role, paths in files.items() if paths})
+    result = run(bench, **roles)
     document = to_json(result.to_dict())
     if plot is not None:
         from calibration.session_plot import Shown, save_session_page

@@ -1,0 +1,69 @@
+"""Sessions on the simulated bench for tests."""
+
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+
+import firmware_bridge.simulated as simulated
+from calibration.analysis import calibrate
+from calibration.record import Calibration
+from calibration.rehearsal_script import Step, session_steps
+from firmware_bridge.simulated.bench import SimulatedBench
+from firmware_bridge.simulated.playing import record_in_memory
+from metro.bench import Bench, load_bench
+from metro.measured import Measured
+
+__all__ = ["built_in_bench", "calibrated", "play", "spread", "stated"]
+
+BENCH_FILE = Path(simulated.__file__).with_name("bench.toml")
+
+
+def built_in_bench() -> Bench:
+    """Return the bench that ``midfringe rehearse`` plays."""
+    return load_bench(BENCH_FILE)
+
+
+def stated(bench: Bench, **u: float) -> Bench:
+    """Return the bench with other standard uncertainties; ``laser__wavelength=…`` names a key."""
+    changed = {}
+    for name, value in u.items():
+        key = name.replace("__", ".")
+        entry = bench.get(key)
+        changed[key] = Measured.of(0.0 if entry is None else entry.magnitude, _unit(entry), value)
+    return bench.replace(changed)
+
+
+def _unit(entry) -> str:
+    return "1" if entry is None else entry.unit
+
+
+def play(
+    bench: Bench,
+    seed: int,
+    folder: Path,
+    *,
+    lines_s: float = 8.0,
+    keep: Callable[[Step], bool] = lambda _step: True,
+) -> tuple[SimulatedBench, dict[str, list[str]]]:
+    """Play a session in memory and return the bench with its truth, and the files by role."""
+    simulated_bench = SimulatedBench(bench, seed)
+    steps = [step for step in session_steps(bench, lines_s) if keep(step)]
+    recordings = [(step.setup, folder / step.file) for step in steps]
+    files: dict[str, list[str]] = {}
+    for step, path in zip(steps, record_in_memory(simulated_bench, recordings), strict=True):
+        files.setdefault(step.role.replace("-", "_"), []).append(str(path))
+    return simulated_bench, files
+
+
+def calibrated(
+    bench: Bench, seed: int, folder: Path, **options
+) -> tuple[SimulatedBench, Calibration]:
+    """Play a session and calibrate it."""
+    simulated_bench, files = play(bench, seed, folder, **options)
+    return simulated_bench, calibrate(bench, **files)
+
+
+def spread(values) -> float:
+    """Return the root mean square of normalised errors."""
+    return float(np.sqrt(np.mean(np.square(values))))

@@ -20,6 +20,8 @@ from calibration.phasors import BlockPhasors
 __all__ = ["ChannelFit", "fit_channel"]
 
 _HIGHEST_DRIFT = 4
+_FAR = 8.0  # bins of 1/T
+_ENOUGH_BLOCKS = 32
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,7 +63,6 @@ def fit_channel(
     course: PhaseCourse,
     *,
     refine: bool = True,
-    tones: NDArray[np.int64] | None = None,
     drift: int | None = None,
 ) -> ChannelFit:
     """Fit all lines of a channel.
@@ -76,8 +77,6 @@ def fit_channel(
         Where the phases run.
     refine : bool
         Fit the parameters of the phase course too, linearised; otherwise it is kept as it is.
-    tones : ndarray of int, optional
-        How far the amplitude of each tone may wander: degree of a polynomial in time.
     drift : int, optional
         Degree of the drift, 0 for an offset alone; by the slowest line where not given.
 
@@ -87,7 +86,7 @@ def fit_channel(
         Covariance from the noise beside each line, the fit's own sensitivity kept.
     """
     order = _drift_order(phasors, lines) if drift is None else drift
-    narrow = _regressors(phasors, lines, course, tones, order)
+    narrow = _regressors(phasors, lines, course, order)
     regressors, table, fit = _solve(phasors, narrow, course if refine else None)
     residual = residual_phasors(phasors, regressors, fit)
     if len(course.theta):
@@ -111,14 +110,13 @@ def _regressors(
     phasors: BlockPhasors,
     lines: int,
     course: PhaseCourse,
-    tones: NDArray[np.int64] | None,
     order: int,
 ) -> Regressors:
     regressors = Regressors.steady(phasors, drift_functions(phasors, order))
     if len(course.theta):
         regressors.weights[:, :lines] = np.exp(1j * course.phase(phasors.middles))
-    if tones is not None and tones.any():
-        regressors = _with_wander(phasors, regressors, lines, tones)
+    if len(phasors.cycles) > lines:
+        return _with_wander(phasors, regressors, lines)
     return regressors
 
 
@@ -129,16 +127,17 @@ def _drift_order(phasors: BlockPhasors, lines: int) -> int:
     return int(min(_HIGHEST_DRIFT, slowest / 4, phasors.used / 20))
 
 
-def _with_wander(
-    phasors: BlockPhasors, regressors: Regressors, lines: int, tones: NDArray[np.int64]
-) -> Regressors:
-    shape = drift_functions(phasors, int(tones.max()))[:, :, 0]
-    carriers, weights = [], []
-    for tone, degree in enumerate(tones):
-        for power in range(1, int(degree) + 1):
-            carriers.append(lines + tone)
-            weights.append(shape[:, power])
-    return regressors.with_lines(np.array(carriers), np.stack(weights, axis=1).astype(complex))
+def _with_wander(phasors: BlockPhasors, regressors: Regressors, lines: int) -> Regressors:
+    """Let unnamed tones far from everything else wander: mains is never steady."""
+    span = float(phasors.middles[-1] - phasors.middles[0] + phasors.block)
+    places = phasors.cycles * span
+    apart = np.abs(places[:, None] - places) + np.where(np.eye(len(places)) > 0, np.inf, 0.0)
+    far = lines + np.flatnonzero(apart.min(axis=1)[lines:] > _FAR)
+    if not len(far) or len(phasors.numbers) < _ENOUGH_BLOCKS:
+        return regressors
+    shape = drift_functions(phasors, 2)[:, 1:, 0]
+    carriers = np.repeat(far, shape.shape[1])
+    return regressors.with_lines(carriers, np.tile(shape, len(far)).astype(np.complex128))
 
 
 def _solve(

@@ -20,7 +20,10 @@ __all__ = ["Followed", "combine_steps", "follow_phases"]
 # Between 2 and 4 the frequencies are taken as given and the phase it might be is added to its u.
 _FOLLOWED = 4.0
 _DOUBTFUL = 2.0
-_ROUNDS = 8
+_ROUNDS = 12
+_GROUPS = 32
+_IN_PHASE = 0.9
+_FEWEST_BLOCKS = 4
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,7 +110,9 @@ def _inverse(matrix: NDArray[np.float64]) -> NDArray[np.float64]:
     return np.asarray(inverse / np.outer(scale, scale))
 
 
-def follow_phases(channels: Sequence[BlockPhasors], lines: int, course: PhaseCourse) -> Followed:
+def follow_phases(
+    channels: Sequence[BlockPhasors], lines: int, course: PhaseCourse, stretch: float = np.inf
+) -> Followed:
     """Refine the phase course until it stands still.
 
     Parameters
@@ -118,6 +123,9 @@ def follow_phases(channels: Sequence[BlockPhasors], lines: int, course: PhaseCou
         Number of lines.
     course : PhaseCourse
         Where to begin.
+    stretch : float
+        Samples over which the frequencies are known to a fraction of a cycle. Where the lines do not
+        add up over the whole recording, the phase is followed from such a stretch outwards.
 
     Returns
     -------
@@ -126,6 +134,8 @@ def follow_phases(channels: Sequence[BlockPhasors], lines: int, course: PhaseCou
     """
     if not len(course.theta):
         return Followed(course, np.zeros((0, 0)), np.inf, np.zeros(0, dtype=bool))
+    if 2 * course.half > 2 * stretch and not _adds_up(channels, lines, course):
+        course = _outwards(channels, lines, course, stretch)
     for _ in range(_ROUNDS):
         fits = [fit_channel(phasors, lines, course) for phasors in channels]
         step, covariance = combine_steps(fits)
@@ -135,3 +145,39 @@ def follow_phases(channels: Sequence[BlockPhasors], lines: int, course: PhaseCou
             break
     dof = float(max(noise.dof for fit in fits for noise in fit.noise))
     return Followed(course, covariance, dof, np.abs(course.theta) > _FOLLOWED * u)
+
+
+def _adds_up(channels: Sequence[BlockPhasors], lines: int, course: PhaseCourse) -> bool:
+    """Return whether the strongest line keeps its phase over the whole recording."""
+    best = 0.0
+    for phasors in channels:
+        turned = phasors.sums[:, :lines] * np.exp(-1j * course.phase(phasors.middles))
+        edges = np.linspace(0, len(turned), _GROUPS, endpoint=False).astype(np.int64)
+        groups = np.add.reduceat(turned, edges)
+        ratio = np.abs(groups.sum(axis=0)) / np.maximum(np.abs(groups).sum(axis=0), 1e-300)
+        best = max(best, float(ratio.max()))
+    return best > _IN_PHASE
+
+
+def _outwards(
+    channels: Sequence[BlockPhasors], lines: int, course: PhaseCourse, stretch: float
+) -> PhaseCourse:
+    """Follow the offset over stretches about the middle, each twice as long as the one before."""
+    offset_only = np.array([degree == 1 for degree in course.degrees])
+    while stretch < 2 * course.half:
+        ends = course.middle - 0.5 * stretch, course.middle + 0.5 * stretch
+        parts = [phasors.part(*ends) for phasors in channels]
+        parts = [part for part in parts if len(part.numbers) >= _FEWEST_BLOCKS]
+        simple = course.only(offset_only)
+        for _ in range(_ROUNDS if parts else 0):
+            step, _ = combine_steps([fit_channel(part, lines, simple) for part in parts])
+            # A quarter of a cycle over the stretch: beyond, the linearisation means nothing.
+            most = 0.25 / (
+                float(np.abs(course.scales).max()) / (2 * np.pi) * stretch / course.half / 2
+            )
+            simple = simple.moved(simple.theta + np.clip(step, -most, most))
+            if (np.abs(step) < 0.01 * most).all():
+                break
+        course = course.moved(np.where(offset_only, simple.theta.sum(), course.theta))
+        stretch *= 2
+    return course

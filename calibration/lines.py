@@ -5,7 +5,7 @@ short filter; their u comes from the noise beside each, with its Student factor.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -18,6 +18,7 @@ from calibration.line_fit import Line, LineFit
 from calibration.line_result import FittedChannel, ratio_estimate
 from calibration.phase_course import PhaseCourse, clock_course, free_course
 from calibration.phasors import BlockPhasors, block_phasors
+from calibration.survey import SURVEYED, Survey, coarse_offset, look, nearest_peaks, strong_tones
 from calibration.whitening import choose_taps
 
 __all__ = ["fit_lines_si"]
@@ -35,7 +36,7 @@ def fit_lines_si(
     *,
     free: bool = False,
     start_index: int = 0,
-    mains_hz: float = 50.0,  # noqa: ARG001
+    mains_hz: float = 50.0,
     value_unit: str = "1",
     drive_unit: str = "1",
     search_clock: bool = True,
@@ -78,15 +79,17 @@ def fit_lines_si(
     record = _Record(channels, rate_hz, start_index)
     cycles = frequencies / rate_hz
     found = (
-        record.free_lines(cycles) if free else record.given_lines(cycles, 2 if search_clock else 0)
+        record.free_lines(cycles)
+        if free
+        else record.given_lines(cycles, 2 if search_clock else 0, mains_hz / rate_hz)
     )
     followed, blocks = found.followed, found.blocks
     fitted = [
         _fitted(phasors, followed, len(cycles), unit)
         for phasors, unit in zip(blocks, (value_unit, drive_unit), strict=False)
     ]
-    lines = tuple(_line(fitted, followed, k, rate_hz, free=free) for k in range(len(cycles)))
-    clock, clock_u = (np.nan, np.nan) if free else _clock(followed)
+    lines = tuple(_line(fitted, found, k, rate_hz, free=free) for k in range(len(cycles)))
+    clock, clock_u = (np.nan, np.nan) if free else _clock(found)
     return LineFit(
         lines,
         clock,
@@ -145,43 +148,81 @@ class _Record:
         return len(self.channels[0])
 
     def blocks(
-        self, cycles: NDArray[np.float64], taps: list[tuple[float, ...]], *, slopes: bool
+        self,
+        cycles: NDArray[np.float64],
+        taps: list[tuple[float, ...]],
+        tones: list[NDArray[np.float64]],
+        *,
+        slopes: bool,
     ) -> list[BlockPhasors]:
         return [
-            block_phasors(channel, cycles, start_index=self.start, taps=own, slopes=slopes)
-            for channel, own in zip(self.channels, taps, strict=True)
+            block_phasors(
+                channel,
+                np.concatenate([cycles, extra]),
+                start_index=self.start,
+                taps=own,
+                slopes=slopes,
+            )
+            for channel, own, extra in zip(self.channels, taps, tones, strict=True)
         ]
 
-    def given_lines(self, cycles: NDArray[np.float64], order: int) -> "_Found":
-        """Fit lines at given frequencies, their common clock followed."""
-        blocks = self.blocks(cycles, [(1.0,)] * len(self.channels), slopes=False)
-        course = clock_course(cycles, self.start, self.length, order)
-        followed = follow_phases(blocks, len(cycles), course)
-        taps = self.taps(cycles, followed.applied)
-        if any(len(own) > 1 for own in taps):
-            blocks = self.blocks(cycles, taps, slopes=False)
-            followed = follow_phases(blocks, len(cycles), followed.course)
-        return _Found(followed, blocks)
+    def surveys(self) -> list[Survey | None]:
+        """Return a first look at each channel."""
+        return [look(channel) for channel in self.channels]
 
-    def taps(self, cycles: NDArray[np.float64], course: PhaseCourse) -> list[tuple[float, ...]]:
-        """Return the whitening filter of each channel, lines taken out first."""
-        return [choose_taps(channel, cycles, course) for channel in self.channels]
+    def given_lines(self, cycles: NDArray[np.float64], order: int, mains: float) -> "_Found":
+        """Fit lines at given frequencies, their common clock followed."""
+        surveys = self.surveys()
+        offset = coarse_offset([s for s in surveys if s], cycles, mains) if order else 0.0
+        cycles = cycles * (1 + offset)
+        tones = [strong_tones(survey, cycles, self.length) for survey in surveys]
+        course = clock_course(cycles, self.start, self.length, order)
+        taps: list[tuple[float, ...]] = [(1.0,)] * len(self.channels)
+        stretch = float(min(self.length, SURVEYED))
+        blocks = self.blocks(cycles, taps, tones, slopes=False)
+        followed = follow_phases(blocks, len(cycles), course, stretch)
+        taps = self.taps(cycles, tones, followed.applied)
+        if any(len(own) > 1 for own in taps):
+            blocks = self.blocks(cycles, taps, tones, slopes=False)
+            followed = follow_phases(blocks, len(cycles), followed.course)
+        # An offset seen in the first look is followed, however small what is left of it.
+        seen = np.array([degree == 1 for degree in course.degrees], dtype=bool) & (offset != 0)
+        return _Found(replace(followed, kept=followed.kept | seen), blocks, offset)
+
+    def taps(
+        self,
+        cycles: NDArray[np.float64],
+        tones: list[NDArray[np.float64]],
+        course: PhaseCourse,
+    ) -> list[tuple[float, ...]]:
+        """Return the whitening filter of each channel, lines and tones taken out first."""
+        return [
+            choose_taps(channel, cycles, course, own)
+            for channel, own in zip(self.channels, tones, strict=True)
+        ]
 
     def free_lines(self, cycles: NDArray[np.float64]) -> "_Found":
         """Fit lines with frequencies of their own, at first in the noise as it is."""
-        found, cycles = self._free_rounds(cycles, [(1.0,)] * len(self.channels))
-        taps = self.taps(cycles, found.followed.course)
+        surveys = self.surveys()
+        cycles = nearest_peaks([s for s in surveys if s], cycles)
+        tones = [strong_tones(survey, cycles, self.length) for survey in surveys]
+        taps: list[tuple[float, ...]] = [(1.0,)] * len(self.channels)
+        found, cycles = self._free_rounds(cycles, taps, tones)
+        taps = self.taps(cycles, tones, found.followed.course)
         if any(len(own) > 1 for own in taps):
-            found, cycles = self._free_rounds(cycles, taps)
+            found, cycles = self._free_rounds(cycles, taps, tones)
         return found
 
     def _free_rounds(
-        self, cycles: NDArray[np.float64], taps: list[tuple[float, ...]]
+        self,
+        cycles: NDArray[np.float64],
+        taps: list[tuple[float, ...]],
+        tones: list[NDArray[np.float64]],
     ) -> tuple["_Found", NDArray[np.float64]]:
         """Gauss–Newton in the frequencies, the carriers renewed in each round."""
         course = free_course(len(cycles), self.start, self.length, self.rate_hz)
         for _ in range(_FREE_ROUNDS):
-            blocks = self.blocks(cycles, taps, slopes=True)
+            blocks = self.blocks(cycles, taps, tones, slopes=True)
             fits = [fit_channel(phasors, len(cycles), course) for phasors in blocks]
             step, covariance = combine_steps(fits)
             # Steps of 1e-11 cycles over the record turn no phase by more than 1e-10 rad.
@@ -197,6 +238,7 @@ class _Record:
 class _Found:
     followed: Followed
     blocks: list[BlockPhasors]
+    offset: float = 0.0  # found by the first look, in the carriers already
 
 
 def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) -> FittedChannel:
@@ -207,12 +249,12 @@ def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) ->
 
 
 def _line(
-    fitted: list[FittedChannel], found: Followed, k: int, rate_hz: float, *, free: bool
+    fitted: list[FittedChannel], found: _Found, k: int, rate_hz: float, *, free: bool
 ) -> Line:
     response = fitted[0]
-    frequency_u = float(np.sqrt(found.covariance[k, k])) if free else 0.0
+    frequency_u = float(np.sqrt(found.followed.covariance[k, k])) if free else 0.0
     return Line(
-        float(response.cycles[k] * rate_hz),
+        float(response.cycles[k] / (1 + found.offset) * rate_hz),
         frequency_u,
         response.estimate(k),
         response.density(k, rate_hz),
@@ -222,10 +264,13 @@ def _line(
     )
 
 
-def _clock(followed: Followed) -> tuple[float, float]:
+def _clock(found: _Found) -> tuple[float, float]:
     """Return the mean relative frequency offset and its u."""
+    followed = found.followed
     # P_d(1) − P_d(−1) is 2 for odd degrees and 0 for even ones.
     odd = np.array([degree % 2 for degree in followed.course.degrees], dtype=np.float64)
     if not len(odd):
         return float("nan"), float("nan")
-    return float(odd @ followed.course.theta), float(np.sqrt(odd @ followed.covariance @ odd))
+    left = float(odd @ followed.course.theta)
+    u = float(np.sqrt(odd @ followed.covariance @ odd))
+    return (1 + found.offset) * (1 + left) - 1, (1 + found.offset) * u

@@ -6,7 +6,7 @@ the phasors of two parts of a recording add up to those of the whole.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -76,6 +76,22 @@ class BlockPhasors:
     def middles(self) -> NDArray[np.float64]:
         """Middle of each block [samples from the recording's first], shape (n_blocks,)."""
         return self.numbers.astype(np.float64) * self.block + 0.5 * (self.block - 1)
+
+    def part(self, first: float, last: float) -> "BlockPhasors":
+        """Return the blocks whose middles lie between two samples, both counted."""
+        rows = (self.middles >= first) & (self.middles <= last)
+        kept = np.isin(self.touched, self.numbers[rows])
+        return replace(
+            self,
+            numbers=self.numbers[rows],
+            counts=self.counts[rows],
+            present=self.present[rows],
+            sums=self.sums[rows],
+            slopes=None if self.slopes is None else self.slopes[rows],
+            drift=self.drift[rows],
+            touched=self.touched[kept],
+            masks=self.masks[kept],
+        )
 
     def __add__(self, other: "BlockPhasors") -> "BlockPhasors":
         return merge_phasors([self, other])

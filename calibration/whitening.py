@@ -47,7 +47,10 @@ def tap_response(taps: tuple[float, ...], cycles: NDArray[np.float64]) -> NDArra
 
 
 def choose_taps(
-    values: NDArray[Any], cycles: NDArray[np.float64], course: PhaseCourse
+    values: NDArray[Any],
+    cycles: NDArray[np.float64],
+    course: PhaseCourse,
+    tones: NDArray[np.float64] | None = None,
 ) -> tuple[float, ...]:
     """Return the whitening filter that the data ask for.
 
@@ -59,6 +62,8 @@ def choose_taps(
         Lines present, in cycles a sample; they do not count as noise.
     course : PhaseCourse
         How their phases run away from that.
+    tones : ndarray, optional
+        Unnamed tones, in cycles a sample, that do not count as noise either.
 
     Returns
     -------
@@ -80,7 +85,12 @@ def choose_taps(
     orders = [p for p in _ORDERS if 20 * p * lag <= len(values)]
     if not orders:
         return (1.0,)
-    products, rows = _lag_products(values, _Waves(cycles, course), lag, orders[-1])
+    products, rows = _lag_products(
+        values,
+        _Waves(cycles if tones is None else np.concatenate([cycles, tones]), course),
+        lag,
+        orders[-1],
+    )
     if rows < 2 * _ORDERS[-1]:
         return (1.0,)
     best, order = _information(products[0, 0], rows, 0), 0

@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from metro.fringe import displacement as displacement
     from metro.fringe import fringes as fringes
     from metro.fringe import phase as phase
+    from metro.fringe import vacuum_wavelength as vacuum_wavelength
     from metro.measured import Measured as Measured
     from metro.strain import antenna_response as antenna_response
     from metro.strain import arm_displacement as arm_displacement
@@ -32,6 +33,7 @@ _HOMES = {
     "displacement": "metro.fringe",
     "fringes": "metro.fringe",
     "phase": "metro.fringe",
+    "vacuum_wavelength": "metro.fringe",
     "Measured": "metro.measured",
     "antenna_response": "metro.strain",
     "arm_displacement": "metro.strain",
@@ -57,6 +59,7 @@ __all__ = [
     "one_arm_displacement",
     "phase",
     "refractive_index",
+    "vacuum_wavelength",
 ]
 
 

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 from metro.elementwise import is_array
 from metro.errors import MetroError
 from metro.kernel import fringe as kernel
+from metro.kernel.light import vacuum_wavelength_m
 from metro.units import quantity, si
 
 if TYPE_CHECKING:
@@ -26,6 +27,7 @@ __all__ = [
     "phases_on_slope_rad",
     "signal_changes",
     "slope_phase_rad",
+    "vacuum_wavelength",
     "voltage_slopes",
     "voltages",
 ]
@@ -134,6 +136,28 @@ def displacement(
     """
     angle = si(phase, "phase", "rad")
     return quantity(kernel.displacement_m(angle, *_light(wavelength, index, round_trips)), "m")
+
+
+def vacuum_wavelength(frequency: Quantity | str) -> Quantity:
+    """Return the vacuum wavelength of light of a frequency, c/f.
+
+    Parameters
+    ----------
+    frequency : Quantity or str
+        Optical frequency, such as ``"473.612353604 THz"``; > 0.
+
+    Returns
+    -------
+    Quantity
+        Wavelength [m].
+
+    Raises
+    ------
+    MetroError
+        If the argument has the wrong dimension or is not positive.
+    """
+    hertz = si(frequency, "frequency", "Hz", above=0.0)
+    return quantity(vacuum_wavelength_m(hertz), "m")
 
 
 def _light(wavelength: Any, index: Any, round_trips: Any) -> tuple[Any, Any, Any]:  # noqa: ANN401  # as the public functions take them

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from metro.kernel import noise as kernel
 from metro.kernel.arms import arm_response
-from metro.kernel.constants import SPEED_OF_LIGHT_M_S
+from metro.kernel.light import optical_frequency_hz
 from metro.kernel.photodiode import step_v
 from metro.stages import ways_to_give
 
@@ -175,7 +175,7 @@ def _laser_frequency(chain: Chain, _f: float) -> float:
     density, mismatch_m, wavelength_m = _given(
         chain, "laser.frequency_noise", "arms.mismatch", "laser.wavelength"
     )
-    return abs(mismatch_m) * density * wavelength_m / SPEED_OF_LIGHT_M_S
+    return abs(mismatch_m) * density / optical_frequency_hz(wavelength_m)
 
 
 def _air(chain: Chain, _f: float) -> float:

@@ -46,6 +46,16 @@ def test_published_sensitivities():
     assert slopes["humidity"].unit == "1/Pa"
 
 
+def test_rules_of_thumb():
+    """Two per cent of the trade's round figures, which hold at constant vapour pressure."""
+    vapour = POINT | {"humidity": M(1169.607, "Pa", 10.0)}
+    slopes = solve_air(vapour, "ciddor", "vapour pressure").sensitivities
+    humidity = solve_air(POINT, "ciddor").sensitivities["humidity"].magnitude / 100
+    found = [slopes["temperature"].magnitude, slopes["pressure"].magnitude, humidity]
+    assert found == pytest.approx(records("air")["air.rule"]["value"], rel=0.02)
+    assert solve_air(POINT, "ciddor").index.magnitude - 1 == close(records("air")["air.vac"])
+
+
 def test_uncertainty_is_the_root_sum_of_its_contributions():
     result = solve_air(POINT, "ciddor")
     slopes = result.sensitivities

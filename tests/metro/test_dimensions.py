@@ -62,6 +62,7 @@ FUNCTIONS = {
         "index": ("1.0003", "number"),
         "round_trips": ("2", "number"),
     },
+    fringe.vacuum_wavelength: {"frequency": ("473.6 THz", "frequency")},
     fringe.fringe_voltage: {
         "phase": ("1 rad", "angle"),
         "low": ("0.1 V", "voltage"),

@@ -7,6 +7,7 @@ import pytest
 import strategies as values
 from hypothesis import given
 from hypothesis import strategies as st
+from published import close, records
 
 import metro
 from metro import fringe
@@ -130,3 +131,34 @@ def test_wrong_arguments(call, message):
     with pytest.raises(metro.MetroError) as caught:
         call()
     assert str(caught.value) == message
+
+
+LINES = [r for r in records("wavelengths").values() if "inputs" in r]
+
+
+@pytest.mark.parametrize("record", LINES, ids=lambda r: r["id"])
+def test_recommended_wavelengths(record):
+    """BIPM recommended values: c over the frequency is the printed wavelength."""
+    found = metro.vacuum_wavelength(metro.Quantity(record["inputs"]["f_Hz"], "Hz"))
+    assert found.to("nm").magnitude == close(record)
+
+
+def test_helium_neon_line_in_laboratory_air():
+    record = records("wavelengths")["lam.hene.air633"]
+    n = metro.refractive_index("20 degC", "101325 Pa", 0.5, "632.9908 nm").magnitude
+    assert 632.9908 / n == close(record)
+
+
+def test_fringe_counting_of_iso_16063():
+    """Method 1: an amplitude s passes R_f = 4s/(λ/2) fringes a period."""
+    table = records("bessel")
+    once = metro.Quantity(table["iso.m1"]["value"], "m")
+    assert 4 * metro.fringes(once, "632.81 nm").magnitude == pytest.approx(1.0, rel=1e-12)
+    nanometres, count = table["iso.m1.ex"]["value"]
+    amplitude = 10 / (2 * math.pi * 160) ** 2
+    assert amplitude * 1e9 == close(table["iso.m1.ex"])[0]
+    assert (
+        4 * metro.fringes(metro.Quantity(nanometres, "nm"), "632.81 nm").magnitude
+        == close(table["iso.m1.ex"])[1]
+    )
+    assert count > 0

@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+from published import close, records
 
 import metro
 from metro.kernel import antenna, arms
@@ -95,3 +96,12 @@ def test_wrong_arguments(call, message):
     with pytest.raises(metro.MetroError) as caught:
         call()
     assert str(caught.value) == message
+
+
+def test_published_strains():
+    table = records("strain")
+    kilometres = metro.arm_displacement(1e-21, "4 km")
+    assert [kilometres.magnitude, kernel.arm_change_m(1e-21, 4000.0)] == close(table["gw.4km"])
+    assert metro.phase(kilometres, "1064 nm").magnitude == close(table["gw.phase.4km"])
+    half = metro.arm_displacement(1e-21, "0.5 m")
+    assert [half.magnitude, metro.phase(half, "632.8 nm").magnitude] == close(table["gw.table"])

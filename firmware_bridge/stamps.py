@@ -10,6 +10,7 @@ from firmware_bridge.errors import BridgeError
 from firmware_bridge.steady_rate import (
     fit_step,
     is_steady,
+    maybe_exact_step_s,
     maybe_single_step_s,
     pleasing_rate_hz,
 )
@@ -136,9 +137,12 @@ def _places(
     """Return the place of each stamp on the grid, and which rows are kept."""
     rows = np.arange(stamps.size)
     everything = np.ones(stamps.size, dtype=bool)
+    steps = np.diff(stamps)
+    exact_s = maybe_exact_step_s(steps, resolution_s)
+    if exact_s is not None:
+        return _cumulated(np.rint(steps / exact_s), name), everything
     if is_steady(stamps, rows, resolution_s):
         return rows, everything
-    steps = np.diff(stamps)
     step_s = maybe_single_step_s(steps, resolution_s)
     if step_s is None:
         return _places_by_breaks(stamps, steps, resolution_s, name, remarks), everything

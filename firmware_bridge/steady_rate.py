@@ -11,6 +11,7 @@ __all__ = [
     "StepFit",
     "fit_step",
     "is_steady",
+    "maybe_exact_step_s",
     "maybe_single_step_s",
     "pleasing_rate_hz",
 ]
@@ -19,7 +20,8 @@ _BLOCKS = 32
 _SMALLEST_BLOCK = 8  # rows
 _WHOLE = 0.2  # steps: how far a multiple of the step may be from a whole number
 _LONG = 20  # steps: longer ones are gaps and tell nothing about the step
-_SLACK = 1.05  # of the last printed digit: rounding is at most half a digit on each side
+_SLACK = 0.6  # of the last printed digit: rounding is half a digit on each side, and a little more
+_EVEN = 0.25  # spread of the distances between double steps, below which they come of rounding
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +127,38 @@ def is_steady(stamps: NDArray[np.float64], index: NDArray[np.int64], resolution_
     """
     fit = fit_step(stamps, index, resolution_s)
     return fit.step_s > 0 and fit.worst_s <= max(_SLACK * resolution_s, 0.25 * fit.step_s)
+
+
+def maybe_exact_step_s(steps: NDArray[np.float64], resolution_s: float) -> float | None:
+    """Return the step of stamps that rounding leaves whole, so that any longer step is a gap.
+
+    Parameters
+    ----------
+    steps : ndarray, shape (n - 1,)
+        Differences of the stamps [s].
+    resolution_s : float
+        The last printed digit [s].
+
+    Returns
+    -------
+    float or None
+        The step where every step is a multiple of it, such as milliseconds counted at 1 kHz; None
+        elsewhere, also where double steps come so evenly that a slightly longer step is rounded.
+    """
+    step = float(np.median(steps))
+    if not step > 0.5 * resolution_s:
+        return None
+    multiples = np.rint(steps / step)
+    if multiples.min() < 1 or np.abs(steps - multiples * step).max() > 0.01 * step:
+        return None
+    longer = np.flatnonzero(multiples > 1)
+    if longer.size > 0.5 * steps.size:
+        return None
+    if round(step / resolution_s) == 1 and longer.size > 3 and multiples.max() == 2:
+        distances = np.diff(longer)
+        if distances.std() < _EVEN * distances.mean():
+            return None
+    return step
 
 
 def maybe_single_step_s(steps: NDArray[np.float64], resolution_s: float) -> float | None:

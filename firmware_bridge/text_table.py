@@ -9,6 +9,7 @@ from itertools import groupby
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.calendar_stamps import stamps_to_seconds
 from firmware_bridge.column_name import split_header
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.preamble import maybe_stated_rate_hz
@@ -76,6 +77,7 @@ def read_text_table(data: bytes, name: str) -> Table:
     data = plain_text(data)
     if not is_text(data):
         raise TextError(f"{name} is neither a text nor a known kind of recording")
+    data = stamps_to_seconds(data)
     section = _maybe_read_section(data, 0, 0)
     if section is None:
         raise TextError(
@@ -217,6 +219,8 @@ def _to_table(section: _Section, remarks: list[str]) -> Table:
 def _columns_kept(values: NDArray[np.float64], header: Sequence[str]) -> range:
     """Return the columns without the empty ones that a delimiter at a line's edge makes."""
     used = [bool(text) or not np.isnan(values[:, k]).all() for k, text in enumerate(header)]
+    if True not in used:
+        return range(len(used))
     return range(used.index(True), len(used) - used[::-1].index(True))
 
 

@@ -49,6 +49,22 @@ def test_missing_rows_become_gaps_at_their_place():
     assert grid.gaps[0].length_u < 0.1
 
 
+@pytest.mark.parametrize("digits", [1, 2, 16])
+@pytest.mark.parametrize("lost", [[50], [400, 401, 1300], [*range(3, 1900, 7), 100, 555]])
+def test_gaps_are_seen_where_the_last_digit_is_as_long_as_a_sample(digits, lost):
+    rows = np.delete(K, lost)
+    grid = fit_grid(rows * digits * 1e-3, 1e-3, "x")
+    assert np.array_equal(grid.index, rows)
+    assert grid.rate_hz == pytest.approx(1000 / digits, rel=1e-12)
+
+
+@pytest.mark.parametrize("step", [1.004, 1.37, 2.02, 16.0123])
+def test_rounding_to_the_length_of_a_sample_makes_no_gaps(step):
+    grid = fit_grid(np.floor(K * step) * 1e-3, 1e-3, "x")
+    assert grid.gaps == []
+    assert abs(grid.rate_hz - 1000 / step) < 3 * grid.rate_u_hz
+
+
 def test_jittered_stamps_with_a_quarter_of_the_samples_missing():
     rng = np.random.default_rng(7)
     rows = np.sort(rng.choice(20000, 15000, replace=False))

@@ -175,3 +175,34 @@ def test_seconds_and_microseconds_make_one_time(opened):
         recording = opened(lines(rows), **options)
         assert (recording.rate_hz, recording.columns) == (62.5, (1, 4))
         assert recording.start_s == pytest.approx(1_673_605_353.5, abs=1e-6)
+
+
+@pytest.mark.parametrize(
+    ("pattern", "delimiter"),
+    [
+        ("2024-02-29T23:59:{:06.3f}Z", ","),
+        ("2024-02-29 23:59:{:06.3f}", ";"),
+        ("2024-03-01 01:59:{:06.3f}+02:00", "\t"),
+        ('"2024-02-29 23:59:{:06.3f}"', " "),
+    ],
+)
+@pytest.mark.parametrize("header", ["timestamp{0}pd\n", ""])
+def test_calendar_stamps_are_times(opened, pattern, delimiter, header):
+    rows = (pattern.format(k / 8) + f"{delimiter}{k * 0.1}\n" for k in np.delete(K, 30))
+    recording = opened(header.format(delimiter) + "".join(rows))
+    assert (recording.rate_hz, recording.columns) == (8.0, (2,))
+    assert [(gap.index, gap.length) for gap in recording.gaps] == [(30, 1)]
+    # 2024-02-29 23:59:00 UTC, by GNU date.
+    assert recording.start_s == 1709251140.0
+    np.testing.assert_allclose(recording.trace("2", 0.0, 1.0).values, K[:8] * 0.1)
+
+
+def test_a_date_that_is_none_is_a_damaged_line(opened):
+    rows = [f"2024-02-29 23:59:{k:02d},{k}\n" for k in range(50)]
+    rows[20] = "2024-02-31 23:59:20,20\n"
+    recording = opened("time,pd\n" + "".join(rows))
+    assert recording.gaps == [Gap(20, 1, exact=False, length_u=recording.gaps[0].length_u)]
+    assert recording.remarks[1:] == [
+        "1 line could not be read and is taken as missing (first: line 22, '2024-02-31 23:59:20,20')",
+        "1 of 50 rows have no readable time stamp and are left out",
+    ]

@@ -158,6 +158,7 @@ def test_the_last_printed_digit_of_a_column(tokens, digit):
 def test_texts_without_numbers_are_refused():
     with pytest.raises(TextError, match=r"^x has no line of numbers; a recording has"):
         read_text_table(b"only words\nand more\n", "x")
+    assert read_text_table(b"nan nan\nnan nan\nnan nan\n", "x").rows == 3
     with pytest.raises(TextError, match=r"^x is neither a text nor a known kind of recording$"):
         read_text_table(bytes(range(32)) * 10, "x")
 

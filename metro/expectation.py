@@ -206,15 +206,12 @@ def _conventions(chain: Chain) -> dict[str, str]:
     trips = f"N = {phase_trips(bench):.6g} round trips"
     if bench.get("arms.input_reflectance") is not None:
         trips += " (phase gain of the Fabry–Perot arms)"
-    index = "n = 1 (arms in vacuum)"
-    if not bench.in_vacuum or bench.get("air.index") is not None:
-        index = f"n = {float(bench.index().magnitude):.9f} ({_equation(chain)})"
     slope = "rising" if math.sin(chain.working_phase_rad) < 0.0 else "falling"
     return {
         "stages": "changes about the working point, signed, linear, zero to peak",
         "strain": "gravitational-wave amplitude h: the arms change by +hL/2 and −hL/2, together hL",
         "displacement": "differential arm length, positive when the x arm grows",
-        "phase": f"4π·N·n·x/λ, unwrapped, with {trips}, {index} and λ in vacuum",
+        "phase": f"4π·N·n·x/λ, unwrapped, with {trips}, {_index(chain)} and λ in vacuum",
         "fringes": "phase over 2π",
         "power": "on this photodiode; the mean at mid-fringe is what --power gives",
         "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope} slope",
@@ -224,12 +221,19 @@ def _conventions(chain: Chain) -> dict[str, str]:
     }
 
 
-def _equation(chain: Chain) -> str:
-    if chain.bench.get("air.index") is not None:
-        return "index as given"
+def _index(chain: Chain) -> str:
+    bench = chain.bench
+    given = bench.get("air.index")
+    if given is not None:
+        return f"n = {float(given.magnitude):.9f} (as given)"
+    if bench.in_vacuum:
+        return "n = 1 (arms in vacuum)"
     from metro.air_state import EQUATIONS
 
-    return EQUATIONS[chain.bench.text("air.equation") or "ciddor"]
+    equation = EQUATIONS[bench.text("air.equation") or "ciddor"]
+    if bench.get("laser.wavelength") is None:
+        return f"n of air ({equation}), which needs a wavelength,"
+    return f"n = {float(bench.index().magnitude):.9f} ({equation})"
 
 
 def _cautions(

@@ -313,3 +313,11 @@ def test_where_strain_times_length_is_not_enough(capsys):
     ]
     quiet = expect(capsys, "--strain", "1e-21", "--arm", "0.5m", "--frequency", "100Hz")["cautions"]
     assert not any("enough" in c or "first order" in c for c in quiet)
+
+
+def test_air_without_a_wavelength(capsys):
+    air = ["--temperature", "20degC", "--pressure", "101325Pa"]
+    document = expect(capsys, "--strain", "1e-21", "--arm", "4km", *air)
+    assert document["stages"]["displacement"]["value"] == pytest.approx(4e-18)
+    assert "which needs a wavelength" in document["conventions"]["phase"]
+    assert any(c.startswith("no humidity given") for c in document["cautions"])

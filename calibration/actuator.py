@@ -51,7 +51,7 @@ def actuator_line(
         Magnitude and phase with their budgets.
     """
     bench = readout.bench
-    ratio = line.ratio * readout.correction(frequency_hz)
+    ratio = line.ratio * readout.correction(frequency_hz, recorded=drive_read)
     volts = terminal_factor(bench, recorded=drive_read)
     response = ratio / readout.phase_per_metre / volts
     terms = [
@@ -62,7 +62,7 @@ def actuator_line(
         *readout.drive_terms(recorded=drive_read),
         *(readout.reference_term(+1.0) if drive_read else []),
         *readout.line_nonlinearity_terms(extremes, line.means.cos, drive_read=drive_read),
-        *readout.response_terms(frequency_hz),
+        *readout.response_terms(frequency_hz, recorded=drive_read),
         *_additive_terms(line, extremes, bench, frequency_hz, volts),
         *_tilt_terms(line, extremes, bench, volts),
     ]

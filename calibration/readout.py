@@ -33,16 +33,18 @@ class Readout:
             self.bench.magnitude("arms.round_trips", 1.0),
         )
 
-    def correction(self, frequency_hz: float) -> complex:
+    def correction(self, frequency_hz: float, *, recorded: bool) -> complex:
         """Return the true over the measured ratio of photodiode to drive at one frequency.
 
-        The amplifier's pole makes the photodiode late and small; the drive is sampled
-        ``channel_delay`` after the photodiode; the anti-alias filters are alike and cancel.
+        The amplifier's pole makes the photodiode late and small. A recorded drive passes an
+        anti-alias filter like the photodiode's, which cancels, and is sampled ``channel_delay``
+        after it; against a drive that is only stated the filter stays.
         """
+        if not recorded:
+            return 1.0 / self.photodiode_response(frequency_hz)
         gain = 1.0 + 0.0j
         if self.bench.get("photodiode.bandwidth") is not None:
             gain = one_pole_response(frequency_hz, self.bench.magnitude("photodiode.bandwidth"))
-        # the drive's later sampling is an advance of its phase, undone here
         delay_s = self.bench.magnitude("adc.channel_delay", 0.0)
         return 1.0 / (gain * delay_response(frequency_hz, delay_s))
 
@@ -80,8 +82,10 @@ class Readout:
             Term("refractive index", n, "1", u_n, relative=-sign / n),
         ]
 
-    def response_terms(self, frequency_hz: float) -> list[Term]:
-        """Return the amplifier's corner and the channel delay at one frequency."""
+    def response_terms(self, frequency_hz: float, *, recorded: bool) -> list[Term]:
+        """Return the readout's corners and, with a recorded drive, the channel delay."""
+        if not recorded:
+            return self.photodiode_terms(frequency_hz)
         terms = []
         if self.bench.get("photodiode.bandwidth") is not None:
             terms.append(self._pole_term("photodiode.bandwidth", frequency_hz))

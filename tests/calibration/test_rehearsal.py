@@ -1,0 +1,114 @@
+"""Rehearsals: the truth lies inside the intervals as often as they say, and the port changes nothing."""
+
+import json
+
+import numpy as np
+import pytest
+from sessions import built_in_bench
+
+from calibration.rehearsal import rehearse
+from calibration.trials import coverage_of, coverage_table, play_trials
+from metro.commandline import run
+
+COEFFICIENTS = ("actuator@", "readout_slope")
+
+
+@pytest.fixture(scope="module")
+def quick_rows():
+    return coverage_of(list(play_trials(built_in_bench(), range(1, 13), lines_s=8.0)))
+
+
+def test_short_sessions_cover(quick_rows):
+    """12 sessions of 12 quantities, partly common: loose bounds, for gross errors only.
+
+    A quantity's mean error over 12 sessions has a standard deviation of 1/sqrt(12) = 0.29, its
+    spread one of 1/sqrt(22) = 0.21: the bounds are 5 and 4 of them.
+    """
+    for row in quick_rows[:-1]:
+        assert abs(row.mean) < 1.45, row
+        assert 0.15 < row.spread < 1.85, row
+    assert quick_rows[-1].inside_95 > 0.85
+
+
+def test_coverage_table_has_a_line_a_quantity(quick_rows):
+    lines = coverage_table(quick_rows).splitlines()
+    assert len(lines) == len(quick_rows) + 1
+    assert lines[-1].startswith("all")
+
+
+@pytest.mark.slow
+def test_the_truth_lies_inside_as_often_as_it_should():
+    """400 sessions. The bounds on spread are 0.1 = 2.8 standard deviations (1/sqrt(798) = 3.5 %),
+    on the mean 0.15 = 3 (1/sqrt(400) = 5 %), on the coverage of all comparisons 2 points: about
+    1.8 of the 1.1 points that 400 fully common comparisons would have, more for those apart.
+    """
+    rows = coverage_of(list(play_trials(built_in_bench(), range(1, 401))))
+    table = coverage_table(rows)
+    print(table)
+    for row in rows[:-1]:
+        assert abs(row.mean) < 0.15, table
+        assert 0.9 < row.spread < 1.1, table
+        if row.name.startswith(COEFFICIENTS):
+            assert row.relative_u < 0.005, table
+    assert 0.93 < rows[-1].inside_95 < 0.97, table
+
+
+def same_through_the_port(seed, tmp_path, lines_s):
+    (tmp_path / "port").mkdir()
+    (tmp_path / "memory").mkdir()
+    bench = built_in_bench()
+    port = rehearse(bench, seed, tmp_path / "port", lines_s=lines_s)
+    memory = rehearse(bench, seed, tmp_path / "memory", through_port=False, lines_s=lines_s)
+    for a, b in zip(port.comparisons, memory.comparisons, strict=True):
+        assert a.name == b.name
+        # the recordings hold the same samples: the results are the same numbers
+        assert a.measured == b.measured, a.name
+        assert a.truth == b.truth
+
+
+def test_the_serial_port_changes_nothing(tmp_path):
+    same_through_the_port(5, tmp_path, lines_s=4.0)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("seed", range(1, 21))
+def test_the_serial_port_changes_nothing_for_any_seed(seed, tmp_path):
+    same_through_the_port(seed, tmp_path, lines_s=20.0)
+
+
+def test_command_leaves_every_file_and_prints_the_contract(tmp_path, capsys):
+    folder = tmp_path / "session"
+    assert run(["rehearse", "--seed", "2", "--out", str(folder), "--json"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    assert set(document) >= {"truth", "measured", "inside_95", "files"}
+    names = set(document["truth"])
+    assert names == set(document["measured"]) == set(document["inside_95"])
+    assert {"actuator@87.1Hz", "readout_slope"} <= names
+    assert len(names) >= 4
+    for name in names:
+        measured, truth = document["measured"][name], document["truth"][name]
+        assert set(truth) == {"value", "unit", "u"}
+        assert truth["unit"] == measured["unit"]
+        assert isinstance(document["inside_95"][name], bool)
+        assert np.isfinite([measured["value"], measured["u"], truth["value"]]).all()
+    for file in ("bench.toml", "calibration.json", "displacement.npz", "session.png"):
+        assert str(folder / file) in document["files"]
+        assert (folder / file).stat().st_size > 0
+    assert sum(f.endswith(".mfr") for f in document["files"]) == 10
+
+
+def test_command_refuses_a_folder_that_holds_something(tmp_path, capsys):
+    (tmp_path / "mine.txt").write_text("keep me")
+    assert run(["rehearse", "--out", str(tmp_path)]) == 2
+    said = capsys.readouterr()
+    assert said.out == ""
+    assert said.err == (
+        f"midfringe: the folder {tmp_path} is not empty; --overwrite replaces its files\n"
+    )
+    assert [path.name for path in tmp_path.iterdir()] == ["mine.txt"]
+
+
+def test_trials_print_coverage(capsys):
+    assert run(["rehearse", "--trials", "1", "--seed", "3", "--json"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    assert document["coverage"][-1]["name"] == "all"

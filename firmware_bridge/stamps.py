@@ -7,18 +7,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.pleasing_rate import pleasing_rate_hz
+from firmware_bridge.stamp_order import usable_rows, without_lags
 from firmware_bridge.steady_rate import (
     fit_step,
     is_steady,
     maybe_exact_step_s,
     maybe_single_step_s,
-    pleasing_rate_hz,
 )
 from firmware_bridge.trace import Gap
 
 __all__ = ["Grid", "StampsError", "fit_grid"]
 
-_LAG_ROWS = 64  # rows within which a late stamp must have caught up
 _SHORT_GAP = 3  # steps: over longer gaps the grid is not taken to hold
 _LONGEST = 2_000_000_000  # samples: a grid longer than that comes of a wrong stamp
 
@@ -80,7 +80,7 @@ def fit_grid(stamps_s: NDArray[np.float64], resolution_s: float, name: str) -> G
         If fewer than two stamps increase, or they span no plausible grid.
     """
     remarks: list[str] = []
-    rows = _usable_rows(stamps_s, remarks)
+    rows = usable_rows(stamps_s, remarks)
     stamps = stamps_s[rows]
     if rows.size < 2 or stamps[-1] <= stamps[0]:
         raise StampsError(f"{name}: the time column must increase over at least two samples")
@@ -91,44 +91,6 @@ def fit_grid(stamps_s: NDArray[np.float64], resolution_s: float, name: str) -> G
     index, kept = _places(stamps, resolution_s, name, remarks)
     rows, stamps, index = rows[kept], stamps[kept], index[kept]
     return _grid(rows, stamps, index, resolution_s, remarks)
-
-
-def _usable_rows(stamps_s: NDArray[np.float64], remarks: list[str]) -> NDArray[np.int64]:
-    """Return the rows with a stamp, without stray stamps, up to where the clock starts anew."""
-    rows = np.flatnonzero(np.isfinite(stamps_s))
-    if rows.size < stamps_s.size:
-        count = stamps_s.size - rows.size
-        remarks.append(
-            f"{count} of {stamps_s.size} rows have no readable time stamp and are left out"
-        )
-    stamps = stamps_s[rows]
-    stray = _strays(stamps)
-    if stray.any():
-        first = rows[np.argmax(stray)] + 1
-        remarks.append(
-            f"{np.count_nonzero(stray)} rows with a stray time stamp are left out (first: row {first})"
-        )
-        rows, stamps = rows[~stray], stamps[~stray]
-    backwards = np.flatnonzero(np.diff(stamps) < 0)
-    if backwards.size:
-        row = int(backwards[0]) + 1
-        remarks.append(
-            f"the time stamps go back at row {rows[row] + 1}: the {row} rows before it are read, "
-            f"the {rows.size - row} from there on are not"
-        )
-        rows = rows[:row]
-    return rows
-
-
-def _strays(stamps: NDArray[np.float64]) -> NDArray[np.bool_]:
-    """Return which stamps alone break the order of their neighbours."""
-    before = np.concatenate(([-np.inf], stamps[:-1]))
-    after = np.concatenate((stamps[1:], [np.inf]))
-    ordered = before <= after
-    stray = ordered & ((stamps > after) | (stamps < before))
-    # Of two neighbours that break the order between them, the earlier one is the stray.
-    stray[1:] &= ~stray[:-1]
-    return np.asarray(stray)
 
 
 def _places(
@@ -148,7 +110,7 @@ def _places(
         return _places_by_breaks(stamps, steps, resolution_s, name, remarks), everything
     counts = np.rint(steps / step_s)
     step_s = fit_step(stamps, _cumulated(counts, name), 0.0, counts > _SHORT_GAP).step_s
-    return _without_lags(_cumulated(np.rint(steps / step_s), name), step_s, remarks)
+    return without_lags(_cumulated(np.rint(steps / step_s), name), step_s, remarks)
 
 
 def _cumulated(counts: NDArray[np.float64], name: str) -> NDArray[np.int64]:
@@ -159,44 +121,6 @@ def _cumulated(counts: NDArray[np.float64], name: str) -> NDArray[np.int64]:
             f"recording may span at most {_LONGEST:.0e} samples"
         )
     return np.concatenate(([0], np.cumsum(counts))).astype(np.int64)
-
-
-def _without_lags(
-    index: NDArray[np.int64], step_s: float, remarks: list[str]
-) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
-    """Leave out samples sent twice, and move late stamps back to where their samples were taken.
-
-    A stamp may be late but never early: what is missing so far is the least of what the stamps
-    soon after say. After a duplicate that is for good less than it was before.
-    """
-    kept = np.ones(index.size, dtype=bool)
-    still = np.diff(index) <= 0
-    if not still.any():
-        return index, kept
-    missing = index - np.arange(index.size)
-    before = _least_ahead(missing[::-1])[::-1]
-    kept[1:] = ~(still & (_least_ahead(missing)[1:] < before[:-1]))
-    if not kept.all():
-        remarks.append(f"{np.count_nonzero(~kept)} rows repeat a time stamp and are left out")
-    index = index[kept]
-    rows = np.arange(index.size)
-    placed = np.maximum.accumulate(_least_ahead(index - rows)) + rows
-    late = int(np.count_nonzero(placed != index))
-    if late:
-        worst = float(np.abs(index - placed).max()) * step_s
-        remarks.append(
-            f"{late} time stamps are late, by up to {worst:.3g} s; the samples are put back"
-        )
-    whole = np.zeros(kept.size, dtype=np.int64)
-    whole[kept] = placed
-    return whole, kept
-
-
-def _least_ahead(values: NDArray[np.int64]) -> NDArray[np.int64]:
-    """Return the least of each value and those that follow soon."""
-    padded = np.concatenate((values, np.repeat(values[-1], _LAG_ROWS)))
-    windows = np.lib.stride_tricks.sliding_window_view(padded, _LAG_ROWS + 1)
-    return np.asarray(windows.min(axis=1))
 
 
 def _places_by_breaks(

@@ -1,4 +1,4 @@
-"""The steady rate behind time stamps: step, its uncertainty, and a rate people would write."""
+"""The steady step behind time stamps, and its uncertainty."""
 
 import math
 from dataclasses import dataclass
@@ -13,7 +13,6 @@ __all__ = [
     "is_steady",
     "maybe_exact_step_s",
     "maybe_single_step_s",
-    "pleasing_rate_hz",
 ]
 
 _BLOCKS = 32
@@ -190,51 +189,4 @@ def maybe_single_step_s(steps: NDArray[np.float64], resolution_s: float) -> floa
         # Late stamps give steps that are no multiples; they must stay the exception.
         if np.mean(whole) > 0.9 and np.mean(multiples < 0.5) < 0.1:
             return step
-    return None
-
-
-def pleasing_rate_hz(fit: StepFit, stamps: NDArray[np.float64], index: NDArray[np.int64]) -> float:
-    """Return the rate, as the number of fewest digits that the stamps do not tell from the fit.
-
-    Parameters
-    ----------
-    fit : StepFit
-        The fit of the stamps.
-    stamps : ndarray, shape (n,)
-        Time stamps [s].
-    index : ndarray, shape (n,)
-        Their places.
-
-    Returns
-    -------
-    float
-        The rate [Hz]; exactly the rate that made the stamps where they are ``index / rate``
-        unrounded.
-    """
-    rate = 1.0 / fit.step_s
-    u = fit.step_u_s * rate**2
-    tolerance = max(1e-13 * rate, u if fit.is_rounding else 0.05 * u)
-    digits = range(1, 18)
-    nice = (value for d in digits for value in (_rounded(rate, d), 1 / _rounded(fit.step_s, d)))
-    best = next((value for value in nice if abs(value - rate) <= tolerance), rate)
-    return _maybe_exact(best, stamps, index) or best
-
-
-def _rounded(value: float, digits: int) -> float:
-    return float(f"{value:.{digits - 1}e}")
-
-
-def _maybe_exact(
-    rate: float, stamps: NDArray[np.float64], index: NDArray[np.int64]
-) -> float | None:
-    """Return the rate with ``stamps == places / rate`` in every bit, if there is one."""
-    start = round(float(stamps[0]) * rate)
-    places = index - index[0] + start
-    if places[-1] <= 0 or abs(float(places[-1]) / rate - float(stamps[-1])) > 0.5 / rate:
-        return None
-    near = float(places[-1]) / float(stamps[-1])
-    ulp = math.ulp(near)
-    for candidate in (rate, *(near + k * ulp for k in (0, 1, -1, 2, -2))):
-        if np.array_equal(places / candidate, stamps):
-            return candidate
     return None

@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 
 from firmware_bridge.column_name import si_unit
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.missing_rows import with_missing
 from firmware_bridge.stamps import Grid, fit_grid
 from firmware_bridge.table import Table
 from firmware_bridge.time_column import TimeColumn, maybe_find_time, named_time
@@ -155,7 +156,7 @@ def to_recording(
     positions = [k for k in range(len(table.names)) if k not in taken]
     if not positions:
         raise RateError(f"{path} has a time column and no channel beside it")
-    table = _with_missing(table, positions, grid)
+    table = with_missing(table, positions, grid)
     remarks += _unit_remarks(table, positions)
     return TableRecording(path, table, positions, grid, remarks, own_time)
 
@@ -203,42 +204,6 @@ def _with_rate(table: Table, grid: Grid, rate_hz: float | None, remarks: list[st
         )
     u = 0.0 if rate_hz is not None else table.rate_u_hz or 0.0
     return replace(grid, rate_hz=stated, rate_u_hz=u)
-
-
-def _with_missing(table: Table, positions: Sequence[int], grid: Grid) -> Table:
-    """Complete the gaps of the grid, and mark over-range values where the file counts them."""
-    columns = [table.columns[k] for k in positions]
-    if table.gaps is None:
-        grid.gaps = _gaps_with_empty_rows(columns, grid)
-        return table
-    grid.gaps = [Gap(start, length, u == 0, u) for start, length, u in table.gaps]
-    inside = np.zeros(table.rows, dtype=bool)
-    for gap in grid.gaps:
-        inside[gap.index : gap.index + gap.length] = True
-    beyond = [np.isnan(column) & ~inside for column in columns]
-    # The file gives the number only: they are told from missing values where the numbers agree.
-    if not table.over_range or sum(map(np.count_nonzero, beyond)) != table.over_range:
-        return table
-    marked = list(table.columns)
-    for k, where in zip(positions, beyond, strict=True):
-        marked[k] = np.where(where, np.inf, marked[k])
-    return replace(table, columns=marked)
-
-
-def _gaps_with_empty_rows(columns: Sequence[NDArray[np.float64]], grid: Grid) -> list[Gap]:
-    """Return the gaps of the grid and the rows without any value, in order."""
-    empty = np.ones(columns[0].size, dtype=bool)
-    for column in columns:
-        empty &= np.isnan(column)
-    kept = ~empty[grid.rows]
-    if kept.all() or not kept.any():
-        return grid.gaps
-    known = {(gap.index, gap.length): gap for gap in grid.gaps}
-    full = np.concatenate(([-1], grid.index[kept], [grid.index[-1] + 1]))
-    before = np.flatnonzero(np.diff(full) > 1)
-    starts, lengths = full[before] + 1, np.diff(full)[before] - 1
-    spans = list(zip(starts.tolist(), lengths.tolist(), strict=True))
-    return [known.get(span) or Gap(*span) for span in spans]
 
 
 def _channel(table: Table, position: int) -> Channel:

@@ -1,18 +1,13 @@
 """How a text of numbers is laid out: delimiter, decimal mark, columns, header and units lines."""
 
-import csv
-import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from firmware_bridge.column_name import is_unit_word
+from firmware_bridge.header_line import find_header
+from firmware_bridge.text_fields import maybe_number, split_fields
 
-__all__ = ["TextLayout", "maybe_find_layout", "maybe_number", "split_fields"]
+__all__ = ["TextLayout", "maybe_find_layout"]
 
-_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
-_COMMA_NUMBER = re.compile(r"[+-]?\d*(,\d+)?([eE][+-]?\d+)?")
-_NOT_FINITE = {"nan", "inf", "infinity"}
-_COMMENT_MARKS = "#%;!/* \t"
 _MINIMUM_RUN = 3  # lines alike in a row that count as data and not as numbers in a preamble
 
 # In the order of preference where several fit equally well.
@@ -54,55 +49,6 @@ class TextLayout:
     header: tuple[str, ...]
     units: tuple[str, ...]
     preamble: tuple[str, ...]
-
-
-def split_fields(line: str, delimiter: str | None) -> list[str]:
-    """Return the fields of a line, without the blanks and quotation marks around them.
-
-    Parameters
-    ----------
-    line : str
-        One line of text.
-    delimiter : str or None
-        What separates fields; None for any run of blanks.
-
-    Returns
-    -------
-    list of str
-        The fields; empty ones are kept where there is a delimiter.
-    """
-    if delimiter is None:
-        return line.replace('"', "").split()
-    if '"' in line and delimiter in line:
-        # strict=False of the csv module never refuses a line; only a NUL or a stray line end could.
-        line = line.replace("\0", "").replace("\r", " ").replace("\n", " ")
-        fields = next(csv.reader([line], delimiter=delimiter, skipinitialspace=True), [])
-        return [field.strip() for field in fields]
-    return [field.strip().strip('"') for field in line.split(delimiter)]
-
-
-def maybe_number(field: str, decimal: str = ".") -> float | None:
-    """Return the number that a field holds, or None.
-
-    Parameters
-    ----------
-    field : str
-        One field, without blanks around it.
-    decimal : str
-        The decimal mark.
-
-    Returns
-    -------
-    float or None
-        The number; NaN and infinity are numbers here.
-    """
-    if field.lstrip("+-").lower() in _NOT_FINITE:
-        return float(field)
-    if decimal == ",":
-        if "." in field or not _COMMA_NUMBER.fullmatch(field):
-            return None
-        field = field.replace(",", ".")
-    return float(field) if _NUMBER.fullmatch(field) else None
 
 
 def maybe_find_layout(lines: Sequence[str]) -> TextLayout | None:
@@ -183,7 +129,7 @@ def _describe(
     filled = tuple(i for i, field in enumerate(first) if field)
     start = _extend_upwards(lines, delimiter, decimal, start, columns, filled)
     preamble = tuple(lines[:start])
-    header, units = _find_header(preamble, delimiter, columns)
+    header, units = find_header(preamble, delimiter, columns)
     return TextLayout(delimiter, decimal, columns, filled, start, header, units, preamble)
 
 
@@ -205,39 +151,3 @@ def _extend_upwards(
             break
         start -= 1
     return start
-
-
-def _find_header(
-    preamble: Sequence[str], delimiter: str | None, columns: int
-) -> tuple[tuple[str, ...], tuple[str, ...]]:
-    """Return the names and the words of units from the last lines before the data."""
-    rows = [line for line in preamble if line.strip(_COMMENT_MARKS + "-=_,|")][-2:]
-    fields = [_header_fields(line, delimiter, columns) for line in rows]
-    if not fields or not fields[-1]:
-        return (), ()
-    share = _share_of_units(fields[-1])
-    if len(fields) == 2 and fields[0] and share >= 0.5 > _share_of_units(fields[0]):
-        return tuple(fields[0]), tuple(fields[-1])
-    return tuple(fields[-1]), tuple(fields[-1]) if share == 1 else ()
-
-
-def _header_fields(line: str, delimiter: str | None, columns: int) -> list[str]:
-    """Return the fields of a header line if there is one for each column, else an empty list."""
-    bare = line.lstrip("#%!/*")
-    attempts = [split_fields(text, delimiter) for text in (bare, bare.strip(), line)]
-    if delimiter is None:
-        attempts = [split_fields(bare, mark) for mark in ",;\t|"] + attempts
-        attempts += [
-            re.split(r"\s{2,}|\t+", bare.strip()),
-            re.split(r"\s+(?![(\[/])", bare.strip()),
-        ]
-    for fields in attempts:
-        if len(fields) == columns and any(re.search(r"[^\W\d_]", field) for field in fields):
-            return fields
-    return []
-
-
-def _share_of_units(fields: Sequence[str]) -> float:
-    """Return how many of the words that are there are units, from 0 to 1."""
-    words = [field.strip("()[]") for field in fields if field.strip("()[]")]
-    return sum(map(is_unit_word, words)) / len(words) if words else 0.0

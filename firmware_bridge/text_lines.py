@@ -6,7 +6,8 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.text_layout import TextLayout, maybe_number, split_fields
+from firmware_bridge.text_fields import maybe_number, split_fields
+from firmware_bridge.text_layout import TextLayout
 
 __all__ = ["Fault", "LineReader"]
 

@@ -21,6 +21,7 @@ __all__ = [
     "fringe_slope",
     "fringe_voltage",
     "fringes",
+    "line_responses",
     "phase",
     "phase_changes",
     "phase_on_slope",
@@ -271,6 +272,46 @@ def contrast(low: Quantity | str, high: Quantity | str, dark: Quantity | str = "
     low_v, high_v = _extremes(low, high)
     dark_v = si(dark, "dark", "V", below=0.5 * (low_v + high_v))
     return quantity(kernel.contrast(low_v, high_v, dark_v), "1")
+
+
+def line_responses(
+    depths: Quantity | str,
+    working_phase: Quantity | str = "90 deg",
+    background: Quantity | str = "0 rad",
+) -> Quantity:
+    """Return what is left of each line's small-signal response when all move at once.
+
+    Parameters
+    ----------
+    depths : Quantity or str
+        Phase amplitude of each line, shape (n_lines,); a scalar is one line.
+    working_phase : Quantity or str, default "90 deg"
+        Mean phase, 0 at this detector's maximum; mid-fringe if not given.
+    background : Quantity or str, default "0 rad"
+        Root-mean-square of all other phase motion, taken as Gaussian; ≥ 0.
+
+    Returns
+    -------
+    Quantity
+        S_i = sin φ0 · 2J1(m_i)/m_i · Π_{j≠i} J0(m_j) · exp(−σφ²/2), dimensionless, shape (n_lines,).
+
+    Raises
+    ------
+    MetroError
+        If an argument has the wrong dimension or is out of range.
+
+    Notes
+    -----
+    The frequencies must not be harmonics or sums of each other.
+    """
+    given = si(depths, "depths", "rad")
+    phase = _scalar(si(working_phase, "working_phase", "rad"), "working_phase")
+    rms = _scalar(si(background, "background", "rad", minimum=0.0), "background")
+    if not is_array(given):
+        return quantity(kernel.line_responses([given], phase, rms)[0], "1")
+    import numpy as np
+
+    return quantity(np.array(kernel.line_responses(given.tolist(), phase, rms)), "1")
 
 
 def _extremes(low: Any, high: Any) -> tuple[float, float]:  # noqa: ANN401  # as the public functions take them

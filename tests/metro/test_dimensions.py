@@ -7,7 +7,7 @@ import pytest
 
 import metro
 import metro.units
-from metro import air, fringe, noise, photodiode, strain
+from metro import air, beam, cavity, fringe, noise, photodiode, ports, strain
 
 # a value of each dimension that a bench knows
 SAMPLES = {
@@ -83,6 +83,55 @@ FUNCTIONS = {
         "high": ("2 V", "voltage"),
         "dark": ("10 mV", "voltage"),
     },
+    fringe.line_responses: {
+        "depths": ("0.2 rad", "angle"),
+        "working_phase": ("80 deg", "angle"),
+        "background": ("0.1 rad", "angle"),
+    },
+    cavity.phase_gain: {
+        "input_reflectance": ("0.97", "number"),
+        "end_reflectance": ("0.999", "number"),
+    },
+    cavity.finesse: {
+        "input_reflectance": ("0.97", "number"),
+        "end_reflectance": ("0.999", "number"),
+    },
+    cavity.cavity_pole: {
+        "arm_length": ("4 km", "length"),
+        "input_reflectance": ("0.97", "number"),
+        "end_reflectance": ("0.999", "number"),
+    },
+    cavity.cavity_response: {
+        "frequency": ("90 Hz", "frequency"),
+        "arm_length": ("4 km", "length"),
+        "input_reflectance": ("0.97", "number"),
+        "end_reflectance": ("0.999", "number"),
+    },
+    ports.antiphase_powers: {
+        "phase": ("1 rad", "angle"),
+        "mean_power": ("80 uW", "power"),
+        "contrast": ("0.9", "number"),
+    },
+    ports.quadrature_voltages: {
+        "phase": ("1 rad", "angle"),
+        "amplitude": ("2 V", "voltage"),
+        "gain_ratio": ("1.1", "number"),
+        "lag": ("2 deg", "angle"),
+    },
+    ports.quadrature_phase: {
+        "first": ("1 V", "voltage"),
+        "second": ("-0.3 V", "voltage"),
+        "gain_ratio": ("1.1", "number"),
+        "lag": ("2 deg", "angle"),
+    },
+    beam.coherence: {"path_difference": ("4 cm", "length"), "linewidth": ("1 MHz", "frequency")},
+    beam.coherence_length: {"linewidth": ("1 MHz", "frequency")},
+    beam.tilt_displacement: {"tilt": ("1 urad", "angle"), "beam_offset": ("0.3 mm", "length")},
+    beam.tilt_contrast: {
+        "tilt": ("40 urad", "angle"),
+        "beam_radius": ("1 mm", "length"),
+        "wavelength": ("633 nm", "length"),
+    },
     photodiode.responsivity: {
         "quantum_efficiency": ("0.8", "number"),
         "wavelength": ("633 nm", "length"),
@@ -146,7 +195,7 @@ PLAIN = {
 
 def test_the_table_holds_every_public_function():
     public = set()
-    for module in (strain, fringe, photodiode, noise, air):
+    for module in (strain, cavity, fringe, ports, beam, photodiode, noise, air):
         members = [getattr(module, name) for name in module.__all__]
         public |= {m for m in members if inspect.isfunction(m)}
     top = {getattr(metro, name) for name in metro.__all__}

@@ -3,6 +3,7 @@
 import zlib
 from io import BytesIO
 from pathlib import Path
+from tokenize import TokenError
 from typing import Any
 from zipfile import BadZipFile
 
@@ -14,7 +15,11 @@ from metro.extras import require
 
 __all__ = ["read_hdf5", "read_npy", "read_npz"]
 
-_DAMAGE = (OSError, ValueError, EOFError, KeyError, BadZipFile, zlib.error, NotImplementedError)
+# What the readers raise on damaged files; numpy reads a header as Python source.
+_DAMAGE = (
+    *(OSError, ValueError, EOFError, KeyError, NotImplementedError, MemoryError, OverflowError),
+    *(BadZipFile, zlib.error, SyntaxError, TokenError),
+)
 
 
 def read_npy(source: Path | BytesIO, name: str) -> Table:

@@ -35,7 +35,10 @@ _USUAL = ("photodiode", "pd", "signal")  # what --channel means where it is not 
 _OPTIONS: dict[str, tuple[tuple[str, ...], dict[str, Any]]] = {
     "time": (
         ("--time", "time"),
-        {"metavar": "COLUMN", "help": "The time column, by header or number from 1."},
+        {
+            "metavar": "COLUMN",
+            "help": "The time column, by header or number from 1; 3+4 for seconds and microseconds.",
+        },
     ),
     "channel": (
         ("--channel", "channel"),

@@ -1,10 +1,12 @@
 import json
+import random
 
 import numpy as np
 import pytest
 
 from firmware_bridge import open_recording
 from firmware_bridge.errors import BridgeError
+from metro.errors import MidfringeError
 
 RNG = np.random.default_rng(5)
 A, B = RNG.normal(size=(2, 500))
@@ -106,6 +108,28 @@ def test_damaged_files_are_refused(tmp_path):
             with pytest.raises(BridgeError) as error:
                 open_recording(path, rate="1 Hz")
             assert "\n" not in str(error.value)
+
+
+def test_flipped_bits_raise_nothing_but_our_own_errors(tmp_path):
+    h5py = pytest.importorskip("h5py")
+    with h5py.File(tmp_path / "x.h5", "w") as file:
+        file["t"], file["pd"] = T, A
+    save(tmp_path / "x.npy", np.c_[T, A])
+    save(tmp_path / "x.npz", t=T, pd=A)
+    rng = random.Random(4)  # noqa: S311  # a seeded test
+    for suffix in ("npy", "npz", "h5") * 60:
+        data = bytearray((tmp_path / f"x.{suffix}").read_bytes())
+        for _ in range(rng.randrange(1, 6)):
+            data[rng.randrange(min(len(data), rng.choice([130, 3000, 10**6])))] ^= (
+                1 << rng.randrange(8)
+            )
+        path = tmp_path / f"damaged.{suffix}"
+        path.write_bytes(data)
+        try:
+            recording = open_recording(path)
+        except MidfringeError:
+            continue
+        assert next(recording.blocks(100)).values.shape[1] == len(recording.channels)
 
 
 def test_a_newer_format_is_refused_by_name(tmp_path):

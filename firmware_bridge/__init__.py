@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     from firmware_bridge.frame import encode_stream as encode_stream
     from firmware_bridge.message import Note as Note
     from firmware_bridge.opening import open_recording as open_recording
+    from firmware_bridge.recorder import RecordSummary as RecordSummary
+    from firmware_bridge.recorder import record as record
     from firmware_bridge.trace import Gap as Gap
     from firmware_bridge.trace import Recording as Recording
     from firmware_bridge.trace import Trace as Trace
@@ -32,12 +34,14 @@ _HOMES = {
     "Discarded": "firmware_bridge.envelope",
     "Gap": "firmware_bridge.trace",
     "Note": "firmware_bridge.message",
+    "RecordSummary": "firmware_bridge.recorder",
     "Recording": "firmware_bridge.trace",
     "Samples": "firmware_bridge.decoder",
     "Trace": "firmware_bridge.trace",
     "encode_announcement": "firmware_bridge.announcement",
     "encode_frame": "firmware_bridge.frame",
     "encode_stream": "firmware_bridge.frame",
+    "record": "firmware_bridge.recorder",
     "open_recording": "firmware_bridge.opening",
 }
 
@@ -50,6 +54,7 @@ __all__ = [
     "Discarded",
     "Gap",
     "Note",
+    "RecordSummary",
     "Recording",
     "Samples",
     "Trace",
@@ -57,6 +62,7 @@ __all__ = [
     "encode_frame",
     "encode_stream",
     "open_recording",
+    "record",
 ]
 
 

@@ -37,6 +37,7 @@ __all__ = [
     "Note",
     "Reply",
     "Samples",
+    "parse_samples",
 ]
 
 _HEADER = struct.Struct("<BBHIIBBHQQHH")
@@ -116,10 +117,11 @@ class Decoder:
 
     def close(self) -> list[Event]:
         """Return what was still held, and count the bytes of an unfinished frame as discarded."""
-        events = self._opened(self._unwrapper.close())
-        for order in self._orders.values():
-            events += order.flush()
-        return events
+        return self._opened(self._unwrapper.close()) + self.flush()
+
+    def flush(self) -> list[Event]:
+        """Return what was still held, with the gaps before it: nothing missing will come any more."""
+        return [event for order in self._orders.values() for event in order.flush()]
 
     def _opened(self, pieces: list[bytes | Discarded]) -> list[Event]:
         events: list[Event] = []
@@ -148,7 +150,7 @@ class Decoder:
             return [_refused(message, f"wire version {version}; this program knows {WIRE_VERSION}")]
         try:
             if kind == MessageType.SAMPLES:
-                return self._samples(message)
+                return self.place(parse_samples(message), message)
             if kind == MessageType.ANNOUNCEMENT:
                 announcement = parse_announcement(message)
                 self._rates[announcement.stream] = announcement.rate_hz
@@ -159,8 +161,21 @@ class Decoder:
             return [_refused(message, str(error))]
         return [_refused(message, f"unknown message type {kind:#04x}")]
 
-    def _samples(self, message: bytes) -> list[Event]:
-        frame = parse_samples(message)
+    def place(self, frame: Samples, message: bytes) -> list[Event]:
+        """Return what comes out when one parsed frame is put into its place.
+
+        Parameters
+        ----------
+        frame : Samples
+            The message, parsed.
+        message : bytes
+            Content and CRC.
+
+        Returns
+        -------
+        list of Samples, Gap or Discarded
+            In order.
+        """
         events: list[Event] = []
         order = self._orders.get(frame.stream)
         if order is None:

@@ -1,0 +1,142 @@
+"""``midfringe record``: serial port to recording."""
+
+import signal
+import sys
+from typing import Any
+
+import click
+
+from metro.options import ValueType, command, is_quiet, output_options
+
+__all__ = ["record"]
+
+
+def _list_ports(ctx: click.Context, param: click.Parameter, value: bool) -> None:  # noqa: ARG001  # click's signature
+    if not value:
+        return
+    from firmware_bridge.port import list_ports
+    from metro.output import table
+
+    found = list_ports()
+    if found:
+        click.echo(table([[info.name, info.description] for info in found], ["port", "what"]))
+    else:
+        click.echo("no serial port found on this computer", err=True)
+    ctx.exit(0)
+
+
+@command(example="midfringe record --port /dev/ttyACM0 --out run.mfr --duration 60s")
+@click.option("--port", required=True, metavar="P", help="Port or pyserial URL.")
+@click.option("--out", required=True, metavar="FILE", help="The recording to make, NAME.mfr.")
+@click.option(
+    "--duration",
+    type=ValueType("s", above=0.0),
+    metavar="T",
+    help="By the board's own counting; without it until Ctrl-C.",
+)
+@click.option("--baud", type=click.IntRange(min=1), default=115200, metavar="N", help="115200.")
+@click.option("--reconnect", is_flag=True, help="Wait for a port that is gone and go on.")
+@click.option("--text", is_flag=True, help="The board prints lines of numbers.")
+@click.option(
+    "--rate", type=ValueType("Hz", above=0.0), metavar="F", help="With --text: lines per second."
+)
+@click.option(
+    "--list",
+    is_flag=True,
+    is_eager=True,
+    expose_value=False,
+    callback=_list_ports,
+    help="Show the ports and end.",
+)
+@output_options("json", "overwrite")
+def record(
+    port: str,
+    out: str,
+    duration: float | None,
+    baud: int,
+    reconnect: bool,
+    text: bool,
+    rate: float | None,
+    as_json: bool,
+    overwrite: bool,
+) -> None:
+    """Record a serial port without losing a sample unnoticed.
+
+    Ends after --duration or with Ctrl-C. A recording that changes its channels or rate goes on in
+    NAME-2.mfr.
+    """
+    from firmware_bridge.recorder import record as record_port
+    from metro.errors import MetroError
+    from metro.output import check_writable, to_json
+
+    if rate is not None and not text:
+        raise MetroError("--rate goes with --text; a board that sends frames announces its rate")
+    check_writable(out, overwrite)
+    # A service manager's polite end is treated like Ctrl-C.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
+    show = not is_quiet() and sys.stderr.isatty()
+    summary = record_port(
+        port,
+        out,
+        duration_s=duration,
+        baud=baud,
+        text=text,
+        rate_hz=rate,
+        reconnect=reconnect,
+        overwrite=overwrite,
+        progress=_show if show else None,
+    )
+    if show:
+        click.echo("", err=True)
+    click.echo(to_json(_document(summary)) if as_json else _for_people(summary))
+
+
+def _show(progress: Any) -> None:  # noqa: ANN401  # a Progress, whose module loads only when recording
+    time_s = progress.samples / progress.rate_hz if progress.rate_hz else 0.0
+    part = f" of {progress.wanted}" if progress.wanted else ""
+    state = "waiting for the port" if progress.is_lost else f"queue {progress.fill:.0%}"
+    click.echo(
+        f"\r{time_s:9.1f} s  {progress.samples}{part} samples  {progress.gaps} gaps  "
+        f"{progress.over_range_frames} frames over range  {progress.bytes_discarded} B discarded  "
+        f"{state} ",
+        err=True,
+        nl=False,
+    )
+
+
+def _gaps(summary: Any) -> list[dict[str, Any]]:  # noqa: ANN401
+    return [
+        {"index": gap.index, "length": gap.length, "exact": gap.exact, "length_u": gap.length_u}
+        for gap in summary.gaps
+    ]
+
+
+def _document(summary: Any) -> dict[str, Any]:  # noqa: ANN401
+    return {
+        "file": None if summary.file is None else str(summary.file),
+        "files": [str(path) for path in summary.files],
+        "samples": summary.samples,
+        "gaps": _gaps(summary),
+        "over_range": summary.over_range,
+        "bytes_discarded": summary.bytes_discarded,
+        "duration": {"value": summary.duration_s, "unit": "s", "u": None},
+        "rate": {"value": summary.rate_hz, "unit": "Hz", "u": None},
+    }
+
+
+def _for_people(summary: Any) -> str:  # noqa: ANN401
+    from metro.output import table
+
+    if summary.file is None:
+        return "nothing came; nothing was written"
+    missing = sum(gap.length for gap in summary.gaps)
+    return table(
+        [
+            ["file", ", ".join(str(path) for path in summary.files)],
+            ["samples", str(summary.samples)],
+            ["duration", f"{summary.duration_s:.6g} s at {summary.rate_hz:.6g} Hz"],
+            ["gaps", f"{len(summary.gaps)} ({missing} samples missing)"],
+            ["over range", f"{summary.over_range} values"],
+            ["discarded", f"{summary.bytes_discarded} bytes"],
+        ]
+    )

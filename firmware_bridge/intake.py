@@ -1,0 +1,326 @@
+"""From messages to files: what a recording does with each message, without ports or threads."""
+
+import os
+from collections import Counter
+from pathlib import Path
+
+from firmware_bridge.announcement import Announcement, parse_announcement
+from firmware_bridge.cobs import encode
+from firmware_bridge.decoder import Decoder, Samples, parse_samples
+from firmware_bridge.envelope import Discarded, seal
+from firmware_bridge.frame import HEADER
+from firmware_bridge.host_note import End, Join, Remark, Stamp
+from firmware_bridge.message import WIRE_VERSION, MessageError, MessageType
+from firmware_bridge.recording_header import Header
+from firmware_bridge.trace import Gap
+from firmware_bridge.writer import Writer
+
+__all__ = ["Intake"]
+
+_STAMP_NS = 2_000_000_000
+_PENDING_BYTES = 4 << 20
+_ARRIVAL_U_S = 0.05 / 3**0.5
+"""Standard uncertainty of a frame's arrival: half a system tick and a driver's buffering, ±50 ms at
+most, rectangular. Our estimate."""
+
+_FILLED = HEADER.fields["filled"][1] if HEADER.fields else 0
+
+
+class Intake:
+    """Write what a board sends into a recording, and count.
+
+    The file is made when the board has announced itself. Messages go into it as they came; the
+    decoder only counts. When the board comes back under a new stream id the same recording goes
+    on, its place found by the host's clock; another rate or channel set goes on in another file.
+
+    Parameters
+    ----------
+    path : path-like
+        The first file.
+    info : dict of str to str
+        For the header.
+    duration_s : float, optional
+        End after round(duration · rate) samples of the board.
+    overwrite : bool
+        Replace an existing file.
+    """
+
+    def __init__(
+        self,
+        path: str | os.PathLike[str],
+        *,
+        info: dict[str, str] | None = None,
+        duration_s: float | None = None,
+        overwrite: bool = False,
+    ) -> None:
+        self._path = Path(path)
+        self._info = info or {}
+        self._duration_s = duration_s
+        self._overwrite = overwrite
+        self._writer: Writer | None = None
+        self._announced: dict[int, Announcement] = {}
+        self._current: Announcement | None = None
+        self._grid: dict[int, int] = {}  # stream: grid index of the board's index 0
+        self._closed_streams: set[int] = set()  # those of earlier files
+        self._earlier_s = 0.0
+        self._pending: list[bytes] = []
+        self._decoder = Decoder()
+        self._now_ns = (0, 0)
+        self._last_ns = (0, 0)  # monotonic time and UTC of the last samples frame
+        self._stamped_ns = 0
+        self._reached = 0  # grid index after the last sample
+        self._last: Samples | None = None
+        self._unsaid: Counter[str] = Counter()
+        self._was_away = False
+        self.files: list[Path] = []
+        """The files written, in order."""
+        self.samples = 0
+        """Samples received, all files together."""
+        self.earlier = 0
+        """Grid samples in the files before the present one."""
+        self.gaps = 0
+        self.flagged = 0
+        """Frames flagged as over-range."""
+        self.bytes_discarded = 0
+        self.is_complete = False
+        """True once the duration is reached."""
+
+    @property
+    def is_announced(self) -> bool:
+        """Whether the board's announcement for what it sends now is known."""
+        return self._writer is not None and not self._pending
+
+    @property
+    def wanted(self) -> int | None:
+        """Grid samples the present file shall have, None without duration or announcement."""
+        if self._duration_s is None or self._current is None:
+            return None
+        return round((self._duration_s - self._earlier_s) * self._current.rate_hz)
+
+    @property
+    def reached(self) -> int:
+        """Grid samples so far, all files together."""
+        return self.earlier + self._reached
+
+    @property
+    def rate_hz(self) -> float | None:
+        """Announced rate, None before the announcement."""
+        return None if self._current is None else self._current.rate_hz
+
+    def take(self, piece: bytes | Discarded, monotonic_ns: int, unix_ns: int) -> None:
+        """Take one unwrapped message, or what the unwrapper discarded, with its time of arrival.
+
+        Raises
+        ------
+        BridgeError
+            If the file cannot be made (exit code 2) or written any further (3).
+        """
+        self._now_ns = (monotonic_ns, unix_ns)
+        if self.is_complete:
+            return
+        if isinstance(piece, Discarded):
+            self._discard(piece)
+        elif piece[1] != WIRE_VERSION or piece[0] >= MessageType.PIECE:
+            self._discard_message(piece, f"message type {piece[0]:#04x}, wire version {piece[1]}")
+        elif piece[0] == MessageType.ANNOUNCEMENT:
+            self._announcement(piece)
+        elif piece[0] == MessageType.SAMPLES:
+            self._frame(piece)
+        elif self._writer is not None and piece[0] != MessageType.COMMAND:
+            # Commands are our own, come back on a port that loops or echoes.
+            self._writer.append(piece)
+
+    def tick(self, monotonic_ns: int, unix_ns: int) -> None:
+        """Do what is due by time: host stamps, remarks, and having the records on the disk."""
+        self._now_ns = (monotonic_ns, unix_ns)
+        if self._writer is None:
+            return
+        if monotonic_ns - self._stamped_ns >= _STAMP_NS:
+            self._stamp()
+            self._say_discarded()
+        self._writer.sync(if_due=True)
+
+    def remark(self, text: str) -> None:
+        """Write a remark into the recording, if there is one yet."""
+        if self._writer is not None:
+            self._writer.note(Remark(text))
+
+    def away(self) -> None:
+        """Take note that the port was away: nothing from before will come any more."""
+        self._was_away = True
+
+    def close(self) -> None:
+        """Close the recording: the last stamp, what was discarded, everything on the disk."""
+        for event in self._decoder.close():
+            if isinstance(event, Gap):
+                self.gaps += bool(event.length)
+        self._close_file()
+
+    def _close_file(self) -> None:
+        if self._writer is None:
+            return
+        self._stamp()
+        self._say_discarded()
+        self._writer.close()
+        self._writer = None
+
+    def _announcement(self, message: bytes) -> None:
+        try:
+            announcement = parse_announcement(message)
+        except MessageError as error:
+            self._discard_message(message, str(error))
+            return
+        self._announced[announcement.stream] = announcement
+        self._decoder.accept(message)
+        waiting, self._pending = self._pending, []
+        for frame in waiting:
+            self._frame(frame)
+
+    def _frame(self, message: bytes) -> None:
+        try:
+            frame = parse_samples(message)
+        except MessageError as error:
+            self._discard_message(message, str(error))
+            return
+        announcement = self._announced.get(frame.stream)
+        if announcement is None:
+            self._pending.append(message)
+            while sum(map(len, self._pending)) > _PENDING_BYTES:
+                self._discard_message(self._pending.pop(0), "frames without an announcement")
+            return
+        if frame.stream in self._closed_streams or not _fits(message, announcement):
+            self._discard_message(message, "a frame unlike the announcement of this recording")
+            return
+        if frame.stream not in self._grid:
+            self._begin(announcement, frame)
+        self._keep(message, frame)
+
+    def _begin(self, announcement: Announcement, frame: Samples) -> None:
+        """Begin a stream: in a new file where its layout differs, else where the clock says."""
+        if self._current is not None and not _alike(self._current, announcement):
+            self._close_file()
+            self.earlier += self._reached
+            self._earlier_s += self._reached / self._current.rate_hz
+            self._reached = 0
+            self._closed_streams |= self._grid.keys()
+            self._grid.clear()
+        is_first = self._writer is None
+        self._current = announcement
+        grid, grid_u = 0, 0.0
+        if is_first:
+            self._writer = Writer(
+                self._next_path(),
+                Header(announcement, self._now_ns[1], self._info),
+                overwrite=self._overwrite and not self.files,
+            )
+            self.files.append(self._writer.path)
+        else:
+            rate = announcement.rate_hz * announcement.speed
+            elapsed = round((self._now_ns[0] - self._last_ns[0]) * 1e-9 * rate)
+            grid = max(self._reached, self._reached + elapsed - len(frame.data))
+            grid_u = _ARRIVAL_U_S * 2**0.5 * rate
+        self._grid[frame.stream] = grid - frame.index
+        assert self._writer is not None  # noqa: S101  # made above where there was none
+        self._writer.note(Join(frame.stream, frame.index, grid, grid_u))
+
+    def _next_path(self) -> Path:
+        number = len(self.files) + 1
+        while number > 1:
+            path = self._path.with_stem(f"{self._path.stem}-{number}")
+            if not path.exists():
+                return path
+            number += 1
+        return self._path
+
+    def _keep(self, message: bytes, frame: Samples) -> None:
+        assert self._writer is not None  # noqa: S101  # _begin made it
+        start = frame.index + self._grid[frame.stream]
+        room = None if self.wanted is None else self.wanted - start
+        if room is None or room > 0:
+            if room is not None and len(frame.data) > room:
+                message = _shortened(message, room, frame)
+            self._writer.append(message)
+        self._last_ns = self._now_ns
+        events = self._decoder.place(frame, message)
+        if self._was_away:
+            events += self._decoder.flush()
+            self._was_away = False
+        for event in events:
+            if isinstance(event, Discarded):
+                self._discard(event)
+            elif isinstance(event, Gap):
+                self.gaps += 1
+            elif isinstance(event, Samples):
+                self._count(event)
+        if not self._stamped_ns:
+            self._stamp()
+
+    def _count(self, frame: Samples) -> None:
+        if self.is_complete:
+            return
+        start = frame.index + self._grid[frame.stream]
+        end = start + len(frame.data)
+        if self.wanted is not None and end >= self.wanted:
+            self._complete(frame, start)
+            end = self.wanted
+        if start < end:
+            self.samples += end - start
+            self.flagged += frame.over_range
+            self._last = frame
+        self._reached = max(self._reached, end)
+
+    def _complete(self, frame: Samples, start: int) -> None:
+        """Say where the recording ends, in the stream that covers its end."""
+        assert self.wanted is not None  # noqa: S101  # else there is no end
+        self.is_complete = True
+        covering = frame if start < self.wanted or self._last is None else self._last
+        if self._writer is not None:
+            end = self.wanted - self._grid[covering.stream]
+            self._writer.note(End(covering.stream, end))
+
+    def _discard_message(self, message: bytes, reason: str) -> None:
+        self._discard(Discarded(len(encode(message)), reason))
+
+    def _discard(self, piece: Discarded) -> None:
+        self.bytes_discarded += piece.count
+        self._unsaid[piece.reason.split(" index ")[0]] += piece.count
+
+    def _say_discarded(self) -> None:
+        for reason, count in self._unsaid.items():
+            self.remark(f"{count} bytes discarded: {reason}")
+        self._unsaid.clear()
+
+    def _stamp(self) -> None:
+        if self._writer is None or self._last is None:
+            return
+        frame, (monotonic_ns, unix_ns) = self._last, self._last_ns
+        self._stamped_ns = self._now_ns[0]
+        end = frame.index + len(frame.data)
+        self._writer.note(Stamp(unix_ns, monotonic_ns, frame.stream, end, frame.clock))
+
+
+def _alike(a: Announcement, b: Announcement) -> bool:
+    return (a.rate_hz, a.format, a.slots, a.channels) == (b.rate_hz, b.format, b.slots, b.channels)
+
+
+def _fits(message: bytes, announcement: Announcement) -> bool:
+    # A frame may have fewer slots than announced: it is kept in a record of the full length.
+    width, channels = message[13], message[12]
+    slots = int.from_bytes(message[14:16], "little")
+    announced = announcement.code_limits[1].bit_length() // 8 + 1
+    return (
+        channels == len(announcement.channels)
+        and width == announced
+        and slots <= announcement.slots
+    )
+
+
+def _shortened(message: bytes, filled: int, frame: Samples) -> bytes:
+    """Return the frame with only its first ``filled`` samples, sealed anew."""
+    width, channels = message[13], message[12]
+    content = bytearray(message[:-4])
+    content[_FILLED : _FILLED + 2] = filled.to_bytes(2, "little")
+    start = HEADER.itemsize + filled * channels * width
+    stop = HEADER.itemsize + len(frame.data) * channels * width
+    content[start:stop] = bytes(stop - start)
+    return seal(bytes(content))

@@ -1,0 +1,279 @@
+import contextlib
+import os
+import threading
+import time
+
+import numpy as np
+import pytest
+import serial
+from wire_board import RATE_HZ, SLOTS, PtyLink, SocketLink, WireBoard, ramp
+
+from firmware_bridge.decoder import Command, Decoder
+from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.message import CommandCode
+from firmware_bridge.port import Port, PortError
+from firmware_bridge.recorder import record
+from firmware_bridge.recording import open_mfr
+from firmware_bridge.trace import Gap
+
+
+@pytest.fixture
+def background():
+    """Run something beside the recorder; an error when the recorder hangs up is none."""
+    threads = []
+
+    def begin(send):
+        def run():
+            with contextlib.suppress(OSError):
+                send()
+
+        threads.append(threading.Thread(target=run, daemon=True))
+        threads[-1].start()
+
+    yield begin
+    for thread in threads:
+        thread.join(5)
+
+
+@pytest.fixture
+def pty(background):  # closed first, so that nobody waits for room in it
+    with contextlib.closing(PtyLink()) as link:
+        yield link
+
+
+@pytest.fixture
+def in_background(background):
+    """Run ``send`` once the recorder has opened the terminal and asked."""
+
+    def begin(link, send):
+        def run():
+            until = time.monotonic() + 5
+            while not link.received() and time.monotonic() < until:
+                time.sleep(0.005)
+            send()
+
+        background(run)
+
+    return begin
+
+
+def check_ramp(path, length, gaps=()):
+    recording = open_mfr(path)
+    assert recording.length == length
+    assert recording.gaps == list(gaps)
+    there = np.ones(length, bool)
+    for gap in gaps:
+        there[gap.index : gap.index + gap.length] = False
+    expected = ramp(0, length)
+    np.testing.assert_array_equal(recording.trace("pd").values[there], expected[there, 0] * 0.5)
+    assert np.isnan(recording.trace("pd").values[~there]).all()
+
+
+@pytest.mark.parametrize("duration_s", [1.0, 0.3337, 0.0251])
+def test_the_duration_counts_the_boards_samples_exactly(pty, tmp_path, duration_s, in_background):
+    board = WireBoard(pty)
+    in_background(pty, lambda: board.run(60))
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=duration_s)
+    assert summary.samples == round(duration_s * RATE_HZ)
+    assert summary.duration_s == summary.samples / RATE_HZ
+    check_ramp(tmp_path / "a.mfr", summary.samples)
+
+
+def test_damaged_frames_become_exact_gaps_of_the_recording(pty, tmp_path, in_background):
+    def damage(number, frame):
+        if number in (3, 4):
+            return b""
+        if number == 8:
+            return frame[:20] + bytes([frame[20] ^ 1]) + frame[21:]
+        return frame + frame if number == 6 else frame
+
+    board = WireBoard(pty, damage=damage)
+    in_background(pty, lambda: board.run(200))
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=0.5)
+    gaps = [Gap(3 * SLOTS, 2 * SLOTS), Gap(8 * SLOTS, SLOTS)]
+    assert summary.gaps == gaps
+    assert summary.bytes_discarded > 2 * 4 * SLOTS
+    check_ramp(tmp_path / "a.mfr", 1000, gaps)
+
+
+def test_a_gap_at_the_very_end_keeps_the_length_exact(pty, tmp_path, in_background):
+    board = WireBoard(pty, damage=lambda number, frame: b"" if number == 19 else frame)
+    in_background(pty, lambda: board.run(200))
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=0.5)
+    assert summary.samples == 1000
+    check_ramp(tmp_path / "a.mfr", 1000, [Gap(950, 50)])
+
+
+def test_the_board_is_asked_and_told_to_start_and_stop(pty, tmp_path):
+    seen = []
+    decoder = Decoder()
+
+    def board_side():
+        board = WireBoard(pty)
+        until = time.monotonic() + 5
+        while time.monotonic() < until:
+            seen.extend(decoder.feed(pty.received()))
+            codes = [event.code for event in seen if isinstance(event, Command)]
+            if codes[-1:] == [CommandCode.STOP]:
+                return
+            if CommandCode.START in codes and not board.next:
+                board.announce()
+                board.send(10)
+            time.sleep(0.005)
+
+    thread = threading.Thread(target=board_side, daemon=True)
+    thread.start()
+    record(pty.port, tmp_path / "a.mfr", duration_s=0.2)
+    thread.join()
+    codes = [event.code for event in seen if isinstance(event, Command)]
+    assert codes == [CommandCode.IDENTIFY, CommandCode.START, CommandCode.STOP]
+
+
+def test_a_restarted_board_goes_on_in_the_same_recording_by_the_hosts_clock(
+    pty, tmp_path, in_background
+):
+    def send():
+        first, second = WireBoard(pty, stream=1), WireBoard(pty, stream=2)
+        first.announce()
+        first.send(4, paced=True)
+        time.sleep(0.3)
+        second.announce()
+        second.send(60, paced=True)
+
+    in_background(pty, send)
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=0.8)
+    assert summary.samples == 1600
+    (gap,) = summary.gaps
+    assert (gap.index, gap.exact) == (200, False)
+    # 0.3 s of silence; a loaded test machine adds to it.
+    assert 0.28 * RATE_HZ < gap.length < 0.5 * RATE_HZ
+    assert 0 < gap.length_u < 0.1 * RATE_HZ
+
+
+def test_another_rate_goes_on_in_another_file(pty, tmp_path, in_background):
+    def send():
+        for stream, rate_hz in ((1, RATE_HZ), (2, 500.0)):
+            board = WireBoard(pty, stream=stream, rate_hz=rate_hz)
+            board.announce()
+            board.send(10)
+
+    in_background(pty, send)
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
+    assert [path.name for path in summary.files] == ["a.mfr", "a-2.mfr"]
+    first, second = map(open_mfr, summary.files)
+    assert (first.rate_hz, first.length) == (RATE_HZ, 500)
+    assert (second.rate_hz, second.length) == (500.0, 375)
+    assert summary.duration_s == pytest.approx(1.0, abs=1e-12)
+
+
+def test_a_port_gone_midway_says_what_was_kept(tmp_path, background):
+    with contextlib.closing(SocketLink()) as link:
+
+        def send():
+            board = WireBoard(link)
+            board.announce()
+            board.send(10)
+            link.hang_up()
+
+        background(send)
+        with pytest.raises(DeviceFailedError) as error:
+            record(link.port, tmp_path / "a.mfr", duration_s=60.0)
+        assert str(error.value) == (
+            f"{link.port} failed: the other side closed the connection; "
+            f"kept 500 samples (0.25 s) in {tmp_path / 'a.mfr'}"
+        )
+        assert error.value.exit_code == 3
+        check_ramp(tmp_path / "a.mfr", 500)
+
+
+def test_reconnecting_goes_on_with_the_known_gap(tmp_path, background):
+    with contextlib.closing(SocketLink()) as link:
+
+        def send():
+            board = WireBoard(link)
+            board.announce()
+            board.send(10)
+            link.hang_up()
+            board.next += 300  # the board went on counting
+            board.send(40)
+
+        background(send)
+        summary = record(link.port, tmp_path / "a.mfr", duration_s=1.0, reconnect=True)
+        assert summary.gaps == [Gap(500, 300)]
+        check_ramp(tmp_path / "a.mfr", 2000, [Gap(500, 300)])
+        texts = [note.text for note in open_mfr(tmp_path / "a.mfr").notes]
+        assert f"{link.port} is back" in texts
+
+
+def test_a_loop_is_a_port_too(tmp_path):
+    class LoopLink:
+        def __init__(self):
+            self.serial = serial.serial_for_url("loop://", timeout=0.05)
+            self.send = self.serial.write
+
+    link = LoopLink()
+    board = WireBoard(link)
+    board.start(12)
+    record(Port("loop://", link.serial), tmp_path / "a.mfr", duration_s=0.25)
+    board.stop()
+    check_ramp(tmp_path / "a.mfr", 500)
+
+
+def test_a_stop_event_ends_it_with_everything_kept(pty, tmp_path, in_background):
+    stop = threading.Event()
+
+    def send():
+        board = WireBoard(pty)
+        board.announce()
+        board.send(8)
+        time.sleep(0.2)
+        stop.set()
+
+    in_background(pty, send)
+    summary = record(pty.port, tmp_path / "a.mfr", stop=stop)
+    assert summary.samples == 400
+
+
+def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch):
+    monkeypatch.setattr("firmware_bridge.recorder._SILENCE_S", 0.3)
+    with pytest.raises(DeviceFailedError) as error:
+        record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
+    assert str(error.value) == (f"{pty.port}: the board is silent for 0.3 s; nothing was recorded")
+    assert not (tmp_path / "a.mfr").exists()
+
+
+def test_noise_of_a_wrong_speed_is_named(pty, tmp_path, monkeypatch, in_background):
+    monkeypatch.setattr("firmware_bridge.recorder._SILENCE_S", 0.3)
+    in_background(pty, lambda: pty.send(os.urandom(500)))
+    with pytest.raises(DeviceFailedError, match="500 bytes came and no valid frame is in them"):
+        record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
+
+
+def test_two_programs_on_one_port_are_refused(pty, tmp_path):
+    with serial.Serial(pty.port, exclusive=True), pytest.raises(PortError) as error:
+        record(pty.port, tmp_path / "a.mfr")
+    assert str(error.value) == (
+        f"{pty.port} cannot be opened: it is busy: another program has it open"
+    )
+
+
+def test_an_existing_recording_is_kept(pty, tmp_path):
+    (tmp_path / "a.mfr").write_bytes(b"precious")
+    with pytest.raises(BridgeError):
+        record(pty.port, tmp_path / "a.mfr")
+    assert (tmp_path / "a.mfr").read_bytes() == b"precious"
+
+
+def test_lines_of_numbers_become_a_recording(pty, tmp_path, background):
+    def send():
+        time.sleep(0.1)
+        pty.send(b"17, 2.5\r\nboard v1\r\n")
+        for k in range(60):
+            pty.send(b"%d, %.2f\r\n" % (k, k / 4))
+
+    background(send)
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=0.5, text=True, rate_hz=100.0)
+    assert summary.samples == 50
+    recording = open_mfr(tmp_path / "a.mfr")
+    np.testing.assert_array_equal(recording.trace("1").values, np.arange(50))
+    np.testing.assert_allclose(recording.trace("2").values, np.arange(50) / 4, atol=1e-12)

@@ -1,0 +1,144 @@
+"""A board for the recorder's tests: it speaks the wire through a pseudo-terminal or a socket."""
+
+import contextlib
+import os
+import select
+import socket
+import threading
+import time
+import tty
+
+import numpy as np
+
+from firmware_bridge.announcement import Announcement, ChannelInfo, encode_announcement
+from firmware_bridge.frame import encode_frame
+
+__all__ = ["RATE_HZ", "SLOTS", "PtyLink", "SocketLink", "WireBoard", "announced", "ramp"]
+
+RATE_HZ, SLOTS = 2000.0, 50
+
+
+def announced(stream, *, rate_hz=RATE_HZ, speed=1.0):
+    channels = [ChannelInfo("pd", "V", 0.5), ChannelInfo("drive", "V", 1.0)]
+    return Announcement(
+        stream, rate_hz, "int16", SLOTS, channels, board="test", clock_hz=1_000_000, speed=speed
+    )
+
+
+def ramp(index, n):
+    """Samples that say their own index: low and high halves."""
+    count = np.arange(index, index + n)
+    return np.stack([count % 2**15, count // 2**15], axis=1).astype(np.int16)
+
+
+class PtyLink:
+    """A pseudo-terminal; ``port`` is what a recorder opens."""
+
+    def __init__(self):
+        self._master, self._slave = os.openpty()
+        tty.setraw(self._slave)
+        os.set_blocking(self._master, False)
+        self.port = os.ttyname(self._slave)
+        self._is_closed = threading.Event()
+
+    def send(self, data):
+        view = memoryview(data)
+        while view:
+            if self._is_closed.is_set():
+                raise BrokenPipeError
+            try:
+                view = view[os.write(self._master, view) :]
+            except BlockingIOError:
+                select.select([], [self._master], [], 0.1)
+
+    def received(self):
+        try:
+            return os.read(self._master, 65536)
+        except BlockingIOError:
+            return b""
+
+    def close(self):
+        self._is_closed.set()
+        time.sleep(0.12)  # a sender that waits for room has seen it
+        for handle in (self._master, self._slave):
+            os.close(handle)
+
+
+class SocketLink:
+    """A listening socket; sending waits for the recorder to connect."""
+
+    def __init__(self):
+        self._server = socket.create_server(("127.0.0.1", 0))
+        self.port = f"socket://127.0.0.1:{self._server.getsockname()[1]}"
+        self._peer = None
+
+    def accept(self):
+        self._peer, _ = self._server.accept()
+        self._peer.recv(4096)  # pyserial throws away what comes before it is ready to ask
+
+    def send(self, data):
+        if self._peer is None:
+            self.accept()
+        self._peer.sendall(data)
+
+    def hang_up(self):
+        # With unread commands in it, closing at once would reset the connection and what it holds.
+        self._peer.shutdown(socket.SHUT_WR)
+        with contextlib.suppress(ConnectionResetError):
+            while self._peer.recv(4096):
+                pass
+        self._peer.close()
+        self._peer = None
+
+    def close(self):
+        if self._peer is not None:
+            self._peer.close()
+        self._server.close()
+
+
+class WireBoard:
+    """Send a ramp over a link, in real time or as fast as it is taken."""
+
+    def __init__(self, link, *, stream=1, start=0, rate_hz=RATE_HZ, damage=None):
+        self.link, self.stream, self.next, self.rate_hz = link, stream, start, rate_hz
+        self._damage = damage or (lambda number, frame: frame)
+        self._number = 0
+        self._stop = threading.Event()
+
+    def announce(self):
+        self.link.send(encode_announcement(announced(self.stream, rate_hz=self.rate_hz)))
+
+    def frame(self):
+        data = encode_frame(
+            ramp(self.next, SLOTS), index=self.next, sequence=self._number, stream=self.stream
+        )
+        self.next += SLOTS
+        self._number += 1
+        return self._damage(self._number - 1, data)
+
+    def send(self, frames, *, paced=False):
+        start_s = time.monotonic()
+        for k in range(frames):
+            if self._stop.is_set():
+                return
+            self.link.send(self.frame())
+            if paced:
+                wait_s = start_s + (k + 1) * SLOTS / self.rate_hz - time.monotonic()
+                self._stop.wait(max(0.0, wait_s))
+
+    def run(self, frames, *, paced=False):
+        """Announce and send; the recorder hanging up ends it."""
+        with contextlib.suppress(OSError):
+            self.announce()
+            self.send(frames, paced=paced)
+
+    def start(self, frames, *, paced=False):
+        """The same in a thread of its own."""
+        self._thread = threading.Thread(
+            target=self.run, args=(frames,), kwargs={"paced": paced}, daemon=True
+        )
+        self._thread.start()
+
+    def stop(self):
+        self._stop.set()
+        self._thread.join()

@@ -183,8 +183,10 @@ def parse_announcement(message: bytes) -> Announcement:
             clock_hz=clock_hz,
             speed=speed,
         )
-    except (struct.error, IndexError, ZeroDivisionError) as error:
-        raise MessageError(f"announcement: {error}") from None
+    except (struct.error, IndexError):
+        raise MessageError("announcement: the body ends too early") from None
+    except ZeroDivisionError:
+        raise MessageError("announcement: the rate has denominator 0") from None
 
 
 def _rate_ratio(rate_hz: float) -> tuple[int, int]:

@@ -122,8 +122,8 @@ def parse_host_note(message: bytes) -> HostNote:
                 return End(stream, index)
             case MessageType.REMARK:
                 return Remark(body.decode(errors="replace"))
-    except struct.error as error:
-        raise MessageError(f"host note {message[0]:#04x}: {error}") from None
+    except struct.error:
+        raise MessageError(f"host note {message[0]:#04x}: the body ends too early") from None
     raise MessageError(f"message type {message[0]:#04x} is no host note")
 
 

@@ -218,8 +218,8 @@ def parse_message(message: bytes) -> Note | Command | Reply | LockIn:
                 return Reply(code, request, status, body[_COMMAND.size :].decode(errors="replace"))
             case MessageType.LOCK_IN:
                 return _lock_in(body)
-    except struct.error as error:
-        raise MessageError(f"message type {message[0]:#04x}: {error}") from None
+    except struct.error:
+        raise MessageError(f"message type {message[0]:#04x}: the body ends too early") from None
     raise MessageError(f"message type {message[0]:#04x} is unknown")
 
 

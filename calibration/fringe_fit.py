@@ -28,6 +28,8 @@ class FringeFit:
         φ at the first sample used [rad], 0 at the detector's maximum, between 0 and π.
     working_range_rad : tuple of float
         Least and greatest φ over the record [rad].
+    working_spread_rad : float
+        Standard deviation of φ over the record [rad].
     phase_amplitude : list of Measured
         Depth of each line, zero to peak [rad], in the order given.
     phase : list of Measured
@@ -53,6 +55,7 @@ class FringeFit:
     slope_per_metre: Measured | None
     working_phase: Measured
     working_range_rad: tuple[float, float]
+    working_spread_rad: float
     phase_amplitude: list[Measured]
     phase: list[Measured]
     displacement_amplitude: list[Measured] | None

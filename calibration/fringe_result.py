@@ -168,6 +168,7 @@ def fringe_result(
         slope_per_metre=_per_metre(slope, ruler, value_unit),
         working_phase=working,
         working_range_rad=(float(course.min()), float(course.max())),
+        working_spread_rad=float(course.std()),
         phase_amplitude=depths,
         phase=[_line_phase(found, line, start_index, flip) for line in range(model.n_lines)],
         displacement_amplitude=None

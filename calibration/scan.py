@@ -85,7 +85,7 @@ def _variance(edge: Edge, together: float) -> tuple[float, float]:
     """
     used = edge.weight > 1e-3
     n_used = int(used.sum())
-    floor = edge.model_u**2 * together + (0.05 * edge.noise) ** 2
+    floor = 0.8 * edge.model_u**2 * together + (0.05 * edge.noise) ** 2
     if n_used < 3:
         return 4.0 * floor, float(max(n_used, 1))
     single = edge.pull[used] / np.sqrt(edge.weight[used])
@@ -137,6 +137,7 @@ def _edges(
         upper = fit_edge(values, passes, half_span, noise, step)
         lower = fit_edge(-values, passes, half_span, noise, step)
         half_span = max((upper.value + lower.value) / 2.0, 0.5 * half_span)
+        noise = min(noise, 1.5 * min(upper.noise, lower.noise))  # the sharper edge knows the noise
     return lower, upper, passes
 
 

@@ -16,7 +16,7 @@ from calibration.extremes import Extremes
 from calibration.record import Calibration
 from calibration.working_point import edge_reasons, invert_fringe
 from firmware_bridge.trace import Channel, Recording, Span
-from metro.kernel.fringe import phase_per_metre
+from metro.kernel.phase import phase_per_metre
 
 __all__ = ["QUANTITIES", "Conversion", "ConvertedRecording"]
 

@@ -12,7 +12,7 @@ import numpy as np
 from calibration.extremes import Extremes
 from calibration.term import Term
 from metro.bench import Bench
-from metro.kernel.fringe import phase_per_metre
+from metro.kernel.phase import phase_per_metre
 from metro.kernel.photodiode import delay_response, one_pole_response
 
 __all__ = ["Readout"]

@@ -12,12 +12,12 @@ from typing import TYPE_CHECKING, Any
 
 from metro.elementwise import elementwise
 from metro.errors import MetroError
-from metro.kernel.arms import arm_response
-from metro.kernel.cavity import cavity_response, folded_response
 from metro.kernel.strain import strain_exact
+from metro.links import Link, Links, bench_links
 from metro.measured import Measured
 from metro.readout import Readout
-from metro.stages import STAGES, UNITS, Link, Links, bench_links, cavity_mirrors, stage_si
+from metro.stage_response import stage_response
+from metro.stages import STAGES, UNITS, stage_si
 from metro.working_point import WorkingPoint, rest
 
 if TYPE_CHECKING:
@@ -322,27 +322,8 @@ class Chain:
             return 1.0 / self.response(frequency_hz, to, start)
         total = 1.0 + 0.0j
         for stage in STAGES[first + 1 : last + 1]:
-            total *= self._stage_response(frequency_hz, stage)
+            total *= stage_response(self, frequency_hz, stage)
         return total
-
-    def _stage_response(self, frequency_hz: float, stage: str) -> complex:
-        if stage == "voltage":
-            return self.readout.voltage_response(frequency_hz)
-        if stage == "counts":
-            return self.readout.counts_response(frequency_hz)
-        if stage in {"displacement", "phase"} and self.bench.get("arms.length") is not None:
-            length_m = self.bench.magnitude("arms.length")
-            if stage == "displacement":
-                return arm_response(frequency_hz, length_m)
-            return self._storage_response(frequency_hz, length_m)
-        return 1.0 + 0.0j
-
-    def _storage_response(self, frequency_hz: float, length_m: float) -> complex:
-        """Return what the later trips of folded or Fabry–Perot arms leave."""
-        if self.bench.get("arms.input_reflectance") is not None:
-            return cavity_response(frequency_hz, length_m, *cavity_mirrors(self.bench))
-        trips = int(self.bench.magnitude("arms.round_trips", 1.0))
-        return folded_response(frequency_hz, length_m, trips)
 
     def working_point(self) -> WorkingPoint:
         """Return phase, power, current, voltage and slope where the interferometer rests.
@@ -375,7 +356,7 @@ def _proper_length(value: Any, length_m: float, with_it: bool) -> Any:  # noqa: 
 
 
 def _fringe_change(value: Any, half_height: float, phase_rad: float, with_it: bool) -> Any:  # noqa: ANN401  # floats and arrays alike
-    from metro.fringe import phase_changes, signal_changes
+    from metro.fringe_arrays import phase_changes, signal_changes
 
     if with_it:
         return half_height * signal_changes(value, phase_rad)

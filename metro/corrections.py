@@ -6,9 +6,10 @@ import cmath
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from metro.kernel import antenna, beam, cavity, fringe, strain
+from metro.bench_optics import cavity_mirrors, coherence, phase_trips
+from metro.kernel import antenna, beam, cavity, strain
+from metro.kernel import lines as line_kernel
 from metro.measured import Measured
-from metro.stages import cavity_mirrors, coherence, phase_trips
 
 if TYPE_CHECKING:
     from metro.chain import Chain
@@ -205,10 +206,10 @@ def _compression(
     if depth_rad is None:
         return None
     # relative to the slope at this working point, so sin φ0 drops out: take it at 1
-    left = fringe.line_responses([abs(depth_rad)] * lines, 0.5 * cmath.pi, background_rad)[0]
-    third = abs(fringe.harmonic_amplitude(3, abs(depth_rad), chain.working_phase_rad))
-    second = abs(fringe.harmonic_amplitude(2, abs(depth_rad), chain.working_phase_rad))
-    first = abs(fringe.harmonic_amplitude(1, abs(depth_rad), chain.working_phase_rad))
+    left = line_kernel.line_responses([abs(depth_rad)] * lines, 0.5 * cmath.pi, background_rad)[0]
+    third = abs(line_kernel.harmonic_amplitude(3, abs(depth_rad), chain.working_phase_rad))
+    second = abs(line_kernel.harmonic_amplitude(2, abs(depth_rad), chain.working_phase_rad))
+    first = abs(line_kernel.harmonic_amplitude(1, abs(depth_rad), chain.working_phase_rad))
     values = {
         "remaining": _number(left),
         "loss": _number(_loss(left, depth_rad, lines, background_rad)),

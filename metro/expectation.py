@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from metro.cautions import bench_cautions, wave_cautions
+from metro.conventions import conventions
 from metro.corrections import Correction, Direction, corrections
 from metro.kernel.noise import averaging_time_s, signal_to_noise
 from metro.measured import Measured
 from metro.sensitivity import Sensitivity, displacement_noise, strain_scale
-from metro.stages import STAGES, UNITS, phase_trips
+from metro.stages import STAGES, UNITS
 
 if TYPE_CHECKING:
     from metro.chain import Chain
@@ -133,7 +133,7 @@ def expect(
         noise=_noise(noise, 1.0, DENSITY),
         noise_strain=_noise(noise, strain_scale(chain, noise.frequency_hz), STRAIN_DENSITY),
         snr=_snr(chain, plain["displacement"], noise, duration_s, wanted_snr),
-        conventions=_conventions(chain),
+        conventions=conventions(chain),
         corrections=found,
         cautions=[*_cautions(chain, stage, plain, noise), *wave_cautions(found)],
         sources={
@@ -199,41 +199,6 @@ def _snr(
         ),
         "time_wanted": _maybe(time_s, "s"),
     }
-
-
-def _conventions(chain: Chain) -> dict[str, str]:
-    bench = chain.bench
-    trips = f"N = {phase_trips(bench):.6g} round trips"
-    if bench.get("arms.input_reflectance") is not None:
-        trips += " (phase gain of the Fabry–Perot arms)"
-    slope = "rising" if math.sin(chain.working_phase_rad) < 0.0 else "falling"
-    return {
-        "stages": "changes about the working point, signed, linear, zero to peak",
-        "strain": "gravitational-wave amplitude h: the arms change by +hL/2 and −hL/2, together hL",
-        "displacement": "differential arm length, positive when the x arm grows",
-        "phase": f"4π·N·n·x/λ, unwrapped, with {trips}, {_index(chain)} and λ in vacuum",
-        "fringes": "phase over 2π",
-        "power": "on this photodiode; the mean at mid-fringe is what --power gives",
-        "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope} slope",
-        "noise": "one-sided amplitude density of differential displacement",
-        "snr": "A/√(S/T), S one-sided, over the averaging time",
-        "uncertainty": "u is the standard uncertainty from the u of the bench's values; null where none",
-    }
-
-
-def _index(chain: Chain) -> str:
-    bench = chain.bench
-    given = bench.get("air.index")
-    if given is not None:
-        return f"n = {float(given.magnitude):.9f} (as given)"
-    if bench.in_vacuum:
-        return "n = 1 (arms in vacuum)"
-    from metro.air_state import EQUATIONS
-
-    equation = EQUATIONS[bench.text("air.equation") or "ciddor"]
-    if bench.get("laser.wavelength") is None:
-        return f"n of air ({equation}), which needs a wavelength,"
-    return f"n = {float(bench.index().magnitude):.9f} ({equation})"
 
 
 def _cautions(

@@ -5,8 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from metro.kernel import fringe as kernel
-from metro.stages import contrast, responsivity
+from metro.bench_optics import contrast, responsivity
+from metro.kernel.contrast import power_w
+from metro.kernel.fringe import voltage as voltage_at
 
 if TYPE_CHECKING:
     from metro.bench import Bench
@@ -70,12 +71,12 @@ def rest(chain: Chain) -> WorkingPoint:
 def _power(bench: Bench, phase_rad: float) -> float | None:
     if bench.get("laser.power") is None:
         return None
-    return kernel.power_w(phase_rad, bench.magnitude("laser.power"), contrast(bench))
+    return power_w(phase_rad, bench.magnitude("laser.power"), contrast(bench))
 
 
 def _measured_voltage(bench: Bench, phase_rad: float) -> float | None:
     low, high = _maybe(bench, "fringe.low"), _maybe(bench, "fringe.high")
-    return None if low is None or high is None else kernel.voltage(phase_rad, low, high)
+    return None if low is None or high is None else voltage_at(phase_rad, low, high)
 
 
 def _maybe(bench: Bench, key: str) -> float | None:

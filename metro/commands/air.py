@@ -10,7 +10,7 @@ from metro.errors import MetroError
 from metro.options import ValueType, bench_options, command, output_options
 
 if TYPE_CHECKING:
-    from metro.air import AirResult
+    from metro.air_index import AirResult
     from metro.bench import Bench
     from metro.measured import Measured
 
@@ -57,7 +57,7 @@ def air(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option eac
     Humidity is given in exactly one way; without any the air is dry. Standard uncertainties of the
     inputs come from the bench file.
     """
-    from metro.air import solve_air
+    from metro.air_index import solve_air
     from metro.output import check_writable, to_json, write_whole
 
     if options["co2"] is not None:

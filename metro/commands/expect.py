@@ -84,7 +84,7 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     """
     from metro.chain import Chain
     from metro.expectation import expect as expect_of
-    from metro.fringe import slope_phase_rad
+    from metro.fringe_law import slope_phase_rad
     from metro.output import to_json
     from metro.stages import stage_si
 

@@ -9,7 +9,8 @@ from hypothesis import strategies as st
 from published import close, records
 
 import metro
-from metro.air import index_measured, solve_air
+from metro.air import index_measured
+from metro.air_index import solve_air
 from metro.air_state import AirState
 
 M = metro.Measured.of

@@ -10,8 +10,10 @@ from hypothesis import strategies as st
 from published import close, records
 
 import metro
-from metro import fringe
+from metro import fringe_arrays as fringe
+from metro import fringe_law as law
 from metro.kernel import fringe as kernel
+from metro.kernel import phase as phase_kernel
 
 
 def test_phase_and_fringes_of_a_nanometre():
@@ -42,7 +44,9 @@ def test_half_a_wavelength_is_one_fringe(wavelength, n, trips):
 def test_arrays():
     x = np.array([-3e-9, 0.0, 1e-21, 2e-6])
     phases = metro.phase(metro.Quantity(x, "m"), "633 nm", 1.00027)
-    assert phases.magnitude.tolist() == [kernel.phase_rad(v, 633e-9, 1.00027) for v in x.tolist()]
+    assert phases.magnitude.tolist() == [
+        phase_kernel.phase_rad(v, 633e-9, 1.00027) for v in x.tolist()
+    ]
     back = metro.displacement(phases, "633 nm", 1.00027)
     assert back.magnitude == pytest.approx(x, rel=1e-15)
 
@@ -86,15 +90,15 @@ def test_array_twins_of_changes(working_phase):
 
 
 def test_voltage_and_slope_on_the_fringe():
-    assert fringe.fringe_voltage("0 rad", "0.5 V", "10 V").magnitude == 10.0
-    assert fringe.fringe_voltage("0.5 fringe", "0.5 V", "10 V").magnitude == pytest.approx(0.5)
-    assert fringe.fringe_slope("-90 deg", "0.5 V", "10 V").magnitude == pytest.approx(4.75)
-    assert fringe.phase_on_slope("5.25 V", "0.5 V", "10 V").magnitude == pytest.approx(-math.pi / 2)
-    assert fringe.phase_on_slope("5.25 V", "0.5 V", "10 V", "falling").magnitude == pytest.approx(
+    assert law.fringe_voltage("0 rad", "0.5 V", "10 V").magnitude == 10.0
+    assert law.fringe_voltage("0.5 fringe", "0.5 V", "10 V").magnitude == pytest.approx(0.5)
+    assert law.fringe_slope("-90 deg", "0.5 V", "10 V").magnitude == pytest.approx(4.75)
+    assert law.phase_on_slope("5.25 V", "0.5 V", "10 V").magnitude == pytest.approx(-math.pi / 2)
+    assert law.phase_on_slope("5.25 V", "0.5 V", "10 V", "falling").magnitude == pytest.approx(
         math.pi / 2
     )
-    assert fringe.contrast("1 V", "3 V", "0.5 V").magnitude == pytest.approx(2 / 3)
-    assert fringe.slope_phase_rad("rising") == -math.pi / 2
+    assert law.contrast("1 V", "3 V", "0.5 V").magnitude == pytest.approx(2 / 3)
+    assert law.slope_phase_rad("rising") == -math.pi / 2
 
 
 @pytest.mark.parametrize(
@@ -112,19 +116,19 @@ def test_voltage_and_slope_on_the_fringe():
             "phase must have a unit of angle (such as '0.02 rad'), got '1 m'",
         ),
         (
-            lambda: fringe.phase_on_slope("11 V", "0 V", "10 V"),
+            lambda: law.phase_on_slope("11 V", "0 V", "10 V"),
             "voltage must be ≤ 10.0 V, got '11 V'",
         ),
         (
-            lambda: fringe.phase_on_slope("1 V", "0 V", "10 V", "up"),
+            lambda: law.phase_on_slope("1 V", "0 V", "10 V", "up"),
             "slope must be 'rising' or 'falling', got 'up'",
         ),
-        (lambda: fringe.fringe_voltage("1 rad", "3 V", "3 V"), "high must be > 3.0 V, got '3 V'"),
+        (lambda: law.fringe_voltage("1 rad", "3 V", "3 V"), "high must be > 3.0 V, got '3 V'"),
         (
-            lambda: fringe.fringe_voltage("1 rad", metro.Quantity([1.0, 2.0], "V"), "3 V"),
+            lambda: law.fringe_voltage("1 rad", metro.Quantity([1.0, 2.0], "V"), "3 V"),
             "low must be one value, got 2",
         ),
-        (lambda: fringe.contrast("1 V", "3 V", "2 V"), "dark must be < 2.0 V, got '2 V'"),
+        (lambda: law.contrast("1 V", "3 V", "2 V"), "dark must be < 2.0 V, got '2 V'"),
     ],
 )
 def test_wrong_arguments(call, message):

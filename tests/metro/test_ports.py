@@ -6,10 +6,10 @@ import numpy as np
 import pytest
 
 import metro
-from metro import beam, cavity, fringe, ports
+from metro import beam, cavity, fringe_law, ports
 from metro.kernel import beam as beam_kernel
 from metro.kernel import cavity as cavity_kernel
-from metro.kernel import fringe as fringe_kernel
+from metro.kernel import lines as line_kernel
 from metro.kernel import ports as kernel
 
 PHASES = np.array([-3.0, -1.2, 0.0, 0.4, 1.9, 3.1])
@@ -66,8 +66,8 @@ def test_beam():
 
 
 def test_line_responses():
-    six = fringe.line_responses(metro.Quantity(np.full(6, 0.2), "rad"))
-    assert six.magnitude.tolist() == fringe_kernel.line_responses([0.2] * 6, math.pi / 2)
+    six = fringe_law.line_responses(metro.Quantity(np.full(6, 0.2), "rad"))
+    assert six.magnitude.tolist() == line_kernel.line_responses([0.2] * 6, math.pi / 2)
     assert 1 - six.magnitude[0] == pytest.approx(0.0536, abs=5e-5)
-    one = fringe.line_responses("0.2 rad", "30 deg", "0.5 rad").magnitude
-    assert one == fringe_kernel.line_responses([0.2], math.radians(30), 0.5)[0]
+    one = fringe_law.line_responses("0.2 rad", "30 deg", "0.5 rad").magnitude
+    assert one == line_kernel.line_responses([0.2], math.radians(30), 0.5)[0]

@@ -210,7 +210,7 @@ def test_expect_loads_no_fitting_code():
 
 
 def test_the_kernel_loads_neither_numpy_nor_pint():
-    names = "air antenna arms bessel constants fringe humidity noise photodiode strain student"
+    names = "air antenna arms beam bessel cavity constants contrast fringe humidity light lines noise phase photodiode ports strain student"
     code = "import sys\nimport metro.kernel\n"
     code += "".join(f"import metro.kernel.{name}\n" for name in names.split())
     modules = loaded_by(code + "print(*sys.modules)")

@@ -9,6 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from metro.kernel import beam, fringe, ports
+from metro.kernel import contrast as contrast_kernel
 from metro.kernel.constants import SPEED_OF_LIGHT_M_S
 
 phases = st.floats(-10.0, 10.0)
@@ -53,7 +54,9 @@ def test_real_fringe_and_its_slope(phase, extremes, harmonics):
 def test_two_ports_share_the_power_and_cancel_its_noise(phase, power, contrast):
     first, second = ports.antiphase_powers(phase, power, contrast)
     assert first + second == pytest.approx(2 * power, rel=1e-15)
-    assert first == pytest.approx(fringe.power_w(phase, power, contrast), abs=1e-15 * power)
+    assert first == pytest.approx(
+        contrast_kernel.power_w(phase, power, contrast), abs=1e-15 * power
+    )
     for gain in (1.0, 0.3):
         found = ports.cosine_of_ports(gain * first, gain * second, contrast)
         assert found == pytest.approx(math.cos(phase), abs=1e-13 / contrast)

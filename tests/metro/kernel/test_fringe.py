@@ -9,44 +9,49 @@ from hypothesis import given
 from hypothesis import strategies as st
 from published import close, published, records
 
+from metro.kernel import contrast as contrast_kernel
 from metro.kernel import fringe
+from metro.kernel import lines as lines_kernel
+from metro.kernel import phase as phase_kernel
 
 
 @published("fringe", "conv.")
 def test_published_conversions(record):
     x, wavelength = record["inputs"]["x_m"], record["inputs"]["lambda_nm"] * 1e-9
-    assert [fringe.phase_rad(x, wavelength), fringe.fringes(x, wavelength)] == close(record)
+    assert [phase_kernel.phase_rad(x, wavelength), phase_kernel.fringes(x, wavelength)] == close(
+        record
+    )
 
 
 def test_published_contrast():
     record = records("fringe")["mep.contrast.001"]
-    assert fringe.contrast_of_powers(1.0, 0.001) == close(record)
+    assert contrast_kernel.contrast_of_powers(1.0, 0.001) == close(record)
 
 
 def test_contrast_of_extremes():
-    assert fringe.contrast(1.0, 3.0) == 0.5
-    assert fringe.contrast(1.5, 3.5, 0.5) == 0.5
+    assert contrast_kernel.contrast(1.0, 3.0) == 0.5
+    assert contrast_kernel.contrast(1.5, 3.5, 0.5) == 0.5
 
 
 @given(values.displacement_m, values.wavelength_m, values.index, values.round_trips)
 def test_displacement_is_the_inverse_of_phase(x, wavelength, n, trips):
-    phase = fringe.phase_rad(x, wavelength, n, trips)
-    assert fringe.displacement_m(phase, wavelength, n, trips) == pytest.approx(x, rel=1e-15)
-    assert fringe.fringes(x, wavelength, n, trips) == pytest.approx(
+    phase = phase_kernel.phase_rad(x, wavelength, n, trips)
+    assert phase_kernel.displacement_m(phase, wavelength, n, trips) == pytest.approx(x, rel=1e-15)
+    assert phase_kernel.fringes(x, wavelength, n, trips) == pytest.approx(
         phase / (2 * math.pi), rel=1e-15
     )
 
 
 @given(values.wavelength_m, values.index, values.round_trips)
 def test_half_a_wavelength_is_one_fringe(wavelength, n, trips):
-    assert fringe.fringes(wavelength / (2 * n * trips), wavelength, n, trips) == pytest.approx(
-        1.0, rel=1e-15
-    )
+    assert phase_kernel.fringes(
+        wavelength / (2 * n * trips), wavelength, n, trips
+    ) == pytest.approx(1.0, rel=1e-15)
 
 
 @given(values.displacement_m, values.wavelength_m)
 def test_reversing_the_motion_reverses_the_phase(x, wavelength):
-    assert fringe.phase_rad(-x, wavelength) == -fringe.phase_rad(x, wavelength)
+    assert phase_kernel.phase_rad(-x, wavelength) == -phase_kernel.phase_rad(x, wavelength)
 
 
 @given(st.floats(-20.0, 20.0), values.extremes_v)
@@ -103,7 +108,7 @@ def test_change_at_an_extreme_is_of_second_order():
 
 @given(values.contrast, st.floats(-10, 10))
 def test_power_is_conserved_over_the_two_ports(contrast, phase):
-    here, there = (fringe.power_w(p, 1e-4, contrast) for p in (phase, phase + math.pi))
+    here, there = (contrast_kernel.power_w(p, 1e-4, contrast) for p in (phase, phase + math.pi))
     assert here + there == pytest.approx(2e-4, rel=1e-14)
 
 
@@ -111,16 +116,16 @@ def test_six_lines_at_a_fifth_of_a_radian_lose_5_4_percent():
     """S = 2J1(m)/m·J0(m)⁵ at mid-fringe; DESIGN's figure, recomputed with scipy."""
     special = pytest.importorskip("scipy.special")
     expected = 2 * special.j1(0.2) / 0.2 * special.j0(0.2) ** 5
-    found = fringe.line_responses([0.2] * 6, math.pi / 2)
+    found = lines_kernel.line_responses([0.2] * 6, math.pi / 2)
     assert found == pytest.approx([expected] * 6, rel=1e-14)
     assert 1 - found[0] == pytest.approx(0.054, abs=5e-4)
 
 
 @given(st.lists(values.depth_rad, min_size=1, max_size=4), st.floats(-3, 3), st.floats(0, 1))
 def test_line_responses_scale_with_working_point_and_background(depths, phase, background):
-    bare = fringe.line_responses(depths, math.pi / 2)
+    bare = lines_kernel.line_responses(depths, math.pi / 2)
     common = math.sin(phase) * math.exp(-background * background / 2)
-    found = fringe.line_responses(depths, phase, background)
+    found = lines_kernel.line_responses(depths, phase, background)
     assert found == pytest.approx([common * b for b in bare], rel=1e-12, abs=1e-15)
 
 
@@ -133,7 +138,7 @@ def test_lines_and_harmonics_of_a_synthetic_record(working_phase):
         m * np.cos(2 * np.pi * c * t) for m, c in zip(depths, cycles, strict=True)
     )
     signal = np.cos(phase)
-    responses = fringe.line_responses(depths, working_phase)
+    responses = lines_kernel.line_responses(depths, working_phase)
     for m, c, response in zip(depths, cycles, responses, strict=True):
         seen = 2 * np.mean(signal * np.cos(2 * np.pi * c * t))
         assert seen == pytest.approx(-response * m, abs=1e-12)
@@ -141,5 +146,5 @@ def test_lines_and_harmonics_of_a_synthetic_record(working_phase):
     for order in (1, 2, 3, 4, 5):
         seen = 2 * np.mean(alone * np.cos(2 * np.pi * 37 * order * t))
         assert seen == pytest.approx(
-            fringe.harmonic_amplitude(order, 0.8, working_phase), abs=1e-12
+            lines_kernel.harmonic_amplitude(order, 0.8, working_phase), abs=1e-12
         )

@@ -11,10 +11,14 @@ if TYPE_CHECKING:
     from calibration.driven_fringe import fit_driven_fringe as fit_driven_fringe
     from calibration.errors import CalibrationError as CalibrationError
     from calibration.fringe_fit import FringeFit as FringeFit
+    from calibration.line_fit import LineFit as LineFit
+    from calibration.lines import fit_lines as fit_lines
     from calibration.record import Calibration as Calibration
     from calibration.record import load as load
 
 _HOMES = {
+    "LineFit": "calibration.line_fit",
+    "fit_lines": "calibration.lines",
     "load": "calibration.record",
     "calibrate": "calibration.analysis",
     "Calibration": "calibration.record",
@@ -23,7 +27,16 @@ _HOMES = {
     "fit_driven_fringe": "calibration.driven_fringe",
 }
 
-__all__ = ["Calibration", "CalibrationError", "FringeFit", "calibrate", "fit_driven_fringe", "load"]
+__all__ = [
+    "Calibration",
+    "CalibrationError",
+    "FringeFit",
+    "LineFit",
+    "calibrate",
+    "fit_driven_fringe",
+    "fit_lines",
+    "load",
+]
 
 
 def __getattr__(name: str) -> Any:  # noqa: ANN401  # PEP 562: any public name of the package

@@ -1,7 +1,7 @@
 """What a line fit found: each line, the clock, and how much of the recording was used."""
 
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -78,10 +78,35 @@ class Line:
         return Measured.of(self.density_value, density_unit(self.response.unit), float(u), self.dof)
 
     @property
-    def snr(self) -> float:
-        """A/√(S/T); infinite where no noise was found."""
+    def snr(self) -> "Measured":
+        """A/√(S/T)."""
+        from metro.measured import Measured
+
+        # The noise is known to 1/√(2·dof) of itself, the amplitude to 1/snr.
+        value = self.snr_value
+        u = float(np.hypot(value / np.sqrt(2 * self.dof), 1.0))
+        return Measured.of(value, "1", u, self.dof)
+
+    @property
+    def snr_value(self) -> float:
+        """A/√(S/T) as a plain number; infinite where no noise was found."""
         floor = self.density_value / np.sqrt(self.used_s)
         return float(abs(self.phasor) / floor) if floor > 0 else float("inf")
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the line as the JSON output has it, quantities as Measured."""
+        drive, ratio = self.drive, self.ratio
+        return {
+            "frequency": self.frequency,
+            "amplitude": self.amplitude,
+            "phase": self.phase,
+            "noise_density": self.noise_density,
+            "snr": self.snr,
+            "drive": drive and {"amplitude": drive.amplitude, "phase": drive.phase},
+            "ratio": ratio and {"magnitude": ratio.magnitude, "phase": ratio.phase},
+            "trustworthy": self.is_trustworthy,
+            "reasons": list(self.distrust_reasons),
+        }
 
     @property
     def phasor(self) -> complex:
@@ -170,6 +195,24 @@ class LineFit:
     def distrust_reasons(self) -> tuple[str, ...]:
         """All reasons, each once."""
         return tuple(dict.fromkeys(r for line in self.lines for r in line.distrust_reasons))
+
+    def reasons_by_line(self) -> list[str]:
+        """Return all reasons, each with the lines it is about."""
+        about: dict[str, list[str]] = {}
+        for line in self.lines:
+            for reason in line.distrust_reasons:
+                about.setdefault(reason, []).append(f"{line.frequency_hz:.9g} Hz")
+        return [f"{', '.join(lines)}: {reason}" for reason, lines in about.items()]
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the fit as the JSON output has it."""
+        return {
+            "lines": [line.to_dict() for line in self.lines],
+            "clock_offset": self.clock_offset,
+            "used_fraction": self.used_fraction,
+            "duration": self.duration,
+            "remarks": list(self.remarks),
+        }
 
 
 def density_unit(unit: str) -> str:

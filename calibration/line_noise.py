@@ -16,6 +16,7 @@ __all__ = ["LineNoise", "measure_noise", "noise_bins"]
 _MOST_BINS = 32
 # One exponential deviate in 64 exceeds 13 times the mean with probability 64·e^−13 = 1.4e-4.
 _TONE = 13.0
+_UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 
 
 @dataclass(frozen=True, slots=True)
@@ -29,7 +30,9 @@ class LineNoise:
     dof : float
         Degrees of freedom of ``variance``.
     near : float
-        Mean power of the two bins on each side, over ``variance``.
+        Mean power of the two bins on each side, over that of the others.
+    in_reach : ndarray of bool, shape (n_bins,)
+        Bins that were compared.
     offsets : ndarray of int, shape (n_bins,)
         Bins looked at, in units of 1/T from the line.
     used : ndarray of bool, shape (n_bins,)
@@ -41,6 +44,7 @@ class LineNoise:
     variance: float
     dof: float
     near: float
+    in_reach: NDArray[np.bool_]
     offsets: NDArray[np.int64]
     used: NDArray[np.bool_]
     bins: NDArray[np.complex128]
@@ -117,9 +121,12 @@ def measure_noise(
     counted = float(left[used].sum())
     variance = float((np.abs(bins[used]) ** 2).sum()) / counted if counted > 0 else 0.0
     dof = max(2.0, 2.0 * counted)
-    close = used & (np.abs(offsets) <= 2)
+    close = sound & (np.abs(offsets) <= 2)
     near = float(power[close].mean() / variance) if close.any() and variance > 0 else 1.0
-    return LineNoise(variance, dof, near, offsets, used, bins)
+    if near > _UNSTEADY:
+        # A line that is not steady is as uncertain as its own skirt, whatever lies further out.
+        variance, dof = near * variance, 2.0 * float(close.sum())
+    return LineNoise(variance, dof, near, sound, offsets, used, bins)
 
 
 def _without_tones(power: NDArray[np.float64], sound: NDArray[np.bool_]) -> NDArray[np.bool_]:

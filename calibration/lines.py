@@ -5,27 +5,96 @@ short filter; their u comes from the noise beside each, with its Student factor.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from calibration.channel_fit import fit_channel
-from calibration.clock import Followed, combine_steps, follow_phases
+from calibration.clock import Followed
+from calibration.distrust import Doubts, is_clipped
 from calibration.errors import CalibrationError
 from calibration.line_fit import Line, LineFit
+from calibration.line_record import Found, LineRecord
 from calibration.line_result import FittedChannel, ratio_estimate
-from calibration.phase_course import PhaseCourse, clock_course, free_course
-from calibration.phasors import BlockPhasors, block_phasors
-from calibration.survey import SURVEYED, Survey, coarse_offset, look, nearest_peaks, strong_tones
-from calibration.whitening import choose_taps
+from calibration.phasors import BlockPhasors
 
-__all__ = ["fit_lines_si"]
+if TYPE_CHECKING:
+    from metro.units import Quantity
+
+__all__ = ["fit_lines", "fit_lines_si"]
 
 _FEWEST_SAMPLES = 16
-_FREE_ROUNDS = 20
-_FREE_STEP = 1e-11
+_LARGE_OFFSET = 1e-3  # a crystal is a hundred times better
+
+
+def fit_lines(
+    samples: "Quantity | NDArray[Any]",
+    rate: "Quantity | str",
+    frequencies: "Sequence[Quantity | str]",
+    drive: "Quantity | NDArray[Any] | None" = None,
+    *,
+    free: bool = False,
+) -> LineFit:
+    """Fit lines: amplitude, phase, noise beside each, ratio to the drive.
+
+    Parameters
+    ----------
+    samples : Quantity or ndarray, shape (n,)
+        Evenly spaced samples, NaN where missing; bare numbers have the unit "1".
+    rate : Quantity or str
+        Sampling rate, such as ``"4 kHz"``.
+    frequencies : sequence of Quantity or str
+        The lines, such as ``["31.7 Hz", "87.1 Hz"]``; above 0 and below half the rate.
+    drive : Quantity or ndarray, shape (n,), optional
+        The drive, sampled together with ``samples``.
+    free : bool
+        Fit the frequency of each line too.
+
+    Returns
+    -------
+    LineFit
+        Lines in the order given. A line is A·cos(2πft + φ), t = 0 at the first sample; u is standard
+        uncertainty, with its degrees of freedom.
+
+    Raises
+    ------
+    MetroError
+        If a value lacks its unit.
+    CalibrationError
+        If a line lies at or above half the rate, or too few samples are given.
+
+    Notes
+    -----
+    Least squares of all lines and a slow drift at once, in noise whitened by a short linear
+    prediction. Without a fitted frequency the common error of all lines, the clock's, is followed
+    where it is larger than four times its u.
+    """
+    from metro.units import si
+
+    values, unit = _plain(samples)
+    driven, drive_unit = (None, "1") if drive is None else _plain(drive)
+    listed = [frequencies] if isinstance(frequencies, str) else list(frequencies)
+    return fit_lines_si(
+        values,
+        si(rate, "rate", "Hz", above=0.0),
+        [si(f, "frequencies", "Hz", above=0.0) for f in listed],
+        driven,
+        free=free,
+        value_unit=unit,
+        drive_unit=drive_unit,
+    )
+
+
+def _plain(samples: "Quantity | NDArray[Any]") -> tuple[NDArray[Any], str]:
+    """Return samples in SI and their unit."""
+    from metro.si_form import si_form
+
+    if not hasattr(samples, "magnitude"):
+        return np.asarray(samples), "1"
+    unit, factor, offset = si_form(samples.units)  # type: ignore[union-attr]  # has a magnitude
+    magnitude = np.asarray(samples.magnitude)
+    return (magnitude if factor == 1 and offset == 0 else magnitude * factor + offset), unit
 
 
 def fit_lines_si(
@@ -76,28 +145,36 @@ def fit_lines_si(
     """
     frequencies = _checked_frequencies(frequencies_hz, rate_hz)
     channels = _checked_channels(values, drive)
-    record = _Record(channels, rate_hz, start_index)
+    record = LineRecord(channels, rate_hz, start_index)
     cycles = frequencies / rate_hz
     found = (
         record.free_lines(cycles)
         if free
         else record.given_lines(cycles, 2 if search_clock else 0, mains_hz / rate_hz)
     )
-    followed, blocks = found.followed, found.blocks
     fitted = [
-        _fitted(phasors, followed, len(cycles), unit)
-        for phasors, unit in zip(blocks, (value_unit, drive_unit), strict=False)
+        _fitted(phasors, found.followed, len(cycles), unit)
+        for phasors, unit in zip(found.blocks, (value_unit, drive_unit), strict=False)
     ]
-    lines = tuple(_line(fitted, found, k, rate_hz, free=free) for k in range(len(cycles)))
+    doubts = Doubts(
+        fitted[0].cycles * rate_hz,
+        rate_hz,
+        record.length / rate_hz,
+        mains_hz,
+        found.surveys,
+        [is_clipped(channel) for channel in channels],
+    )
+    lines = [_line(fitted, found, doubts, k, free=free) for k in range(len(cycles))]
     clock, clock_u = (np.nan, np.nan) if free else _clock(found)
     return LineFit(
-        lines,
+        tuple(lines),
         clock,
         clock_u,
-        followed.dof,
-        bool(followed.kept.any()) and not free,
-        float(blocks[0].present.sum()) / len(channels[0]),
-        len(channels[0]) / rate_hz,
+        found.followed.dof,
+        bool(found.followed.kept.any()) and not free,
+        float(found.blocks[0].present.sum()) / record.length,
+        record.length / rate_hz,
+        tuple(_remarks(found, len(cycles) * len(channels))),
     )
 
 
@@ -135,112 +212,6 @@ def _checked_channels(values: NDArray[Any], drive: NDArray[Any] | None) -> list[
     return channels
 
 
-@dataclass(frozen=True, slots=True)
-class _Record:
-    """The channels of a recording and their place in time."""
-
-    channels: list[NDArray[Any]]
-    rate_hz: float
-    start: int
-
-    @property
-    def length(self) -> int:
-        return len(self.channels[0])
-
-    def blocks(
-        self,
-        cycles: NDArray[np.float64],
-        taps: list[tuple[float, ...]],
-        tones: list[NDArray[np.float64]],
-        *,
-        slopes: bool,
-    ) -> list[BlockPhasors]:
-        return [
-            block_phasors(
-                channel,
-                np.concatenate([cycles, extra]),
-                start_index=self.start,
-                taps=own,
-                slopes=slopes,
-            )
-            for channel, own, extra in zip(self.channels, taps, tones, strict=True)
-        ]
-
-    def surveys(self) -> list[Survey | None]:
-        """Return a first look at each channel."""
-        return [look(channel) for channel in self.channels]
-
-    def given_lines(self, cycles: NDArray[np.float64], order: int, mains: float) -> "_Found":
-        """Fit lines at given frequencies, their common clock followed."""
-        surveys = self.surveys()
-        offset = coarse_offset([s for s in surveys if s], cycles, mains) if order else 0.0
-        cycles = cycles * (1 + offset)
-        tones = [strong_tones(survey, cycles, self.length) for survey in surveys]
-        course = clock_course(cycles, self.start, self.length, order)
-        taps: list[tuple[float, ...]] = [(1.0,)] * len(self.channels)
-        stretch = float(min(self.length, SURVEYED))
-        blocks = self.blocks(cycles, taps, tones, slopes=False)
-        followed = follow_phases(blocks, len(cycles), course, stretch)
-        taps = self.taps(cycles, tones, followed.applied)
-        if any(len(own) > 1 for own in taps):
-            blocks = self.blocks(cycles, taps, tones, slopes=False)
-            followed = follow_phases(blocks, len(cycles), followed.course)
-        # An offset seen in the first look is followed, however small what is left of it.
-        seen = np.array([degree == 1 for degree in course.degrees], dtype=bool) & (offset != 0)
-        return _Found(replace(followed, kept=followed.kept | seen), blocks, offset)
-
-    def taps(
-        self,
-        cycles: NDArray[np.float64],
-        tones: list[NDArray[np.float64]],
-        course: PhaseCourse,
-    ) -> list[tuple[float, ...]]:
-        """Return the whitening filter of each channel, lines and tones taken out first."""
-        return [
-            choose_taps(channel, cycles, course, own)
-            for channel, own in zip(self.channels, tones, strict=True)
-        ]
-
-    def free_lines(self, cycles: NDArray[np.float64]) -> "_Found":
-        """Fit lines with frequencies of their own, at first in the noise as it is."""
-        surveys = self.surveys()
-        cycles = nearest_peaks([s for s in surveys if s], cycles)
-        tones = [strong_tones(survey, cycles, self.length) for survey in surveys]
-        taps: list[tuple[float, ...]] = [(1.0,)] * len(self.channels)
-        found, cycles = self._free_rounds(cycles, taps, tones)
-        taps = self.taps(cycles, tones, found.followed.course)
-        if any(len(own) > 1 for own in taps):
-            found, cycles = self._free_rounds(cycles, taps, tones)
-        return found
-
-    def _free_rounds(
-        self,
-        cycles: NDArray[np.float64],
-        taps: list[tuple[float, ...]],
-        tones: list[NDArray[np.float64]],
-    ) -> tuple["_Found", NDArray[np.float64]]:
-        """Gauss–Newton in the frequencies, the carriers renewed in each round."""
-        course = free_course(len(cycles), self.start, self.length, self.rate_hz)
-        for _ in range(_FREE_ROUNDS):
-            blocks = self.blocks(cycles, taps, tones, slopes=True)
-            fits = [fit_channel(phasors, len(cycles), course) for phasors in blocks]
-            step, covariance = combine_steps(fits)
-            # Steps of 1e-11 cycles over the record turn no phase by more than 1e-10 rad.
-            if (np.abs(step) * self.length / self.rate_hz < _FREE_STEP).all():
-                break
-            cycles = np.clip(cycles + step / self.rate_hz, 1e-9, 0.5 - 1e-9)
-        dof = float(max(noise.dof for fit in fits for noise in fit.noise))
-        kept = np.ones(len(step), dtype=bool)
-        return _Found(Followed(course, covariance, dof, kept), blocks), cycles
-
-
-@dataclass(frozen=True, slots=True)
-class _Found:
-    followed: Followed
-    blocks: list[BlockPhasors]
-    offset: float = 0.0  # found by the first look, in the carriers already
-
-
 def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) -> FittedChannel:
     fit = fit_channel(phasors, lines, followed.applied, refine=False)
     functions = followed.course.at(phasors.middles)
@@ -248,10 +219,8 @@ def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) ->
     return FittedChannel(fit, followed, phasors.cycles[:lines], phasors.taps, unit, mean)
 
 
-def _line(
-    fitted: list[FittedChannel], found: _Found, k: int, rate_hz: float, *, free: bool
-) -> Line:
-    response = fitted[0]
+def _line(fitted: list[FittedChannel], found: Found, doubts: Doubts, k: int, *, free: bool) -> Line:
+    response, rate_hz = fitted[0], doubts.rate_hz
     frequency_u = float(np.sqrt(found.followed.covariance[k, k])) if free else 0.0
     return Line(
         float(response.cycles[k] / (1 + found.offset) * rate_hz),
@@ -261,10 +230,24 @@ def _line(
         response.fit.used / rate_hz,
         fitted[1].estimate(k) if len(fitted) > 1 else None,
         ratio_estimate(response, fitted[1], k) if len(fitted) > 1 else None,
+        doubts.reasons(fitted, k),
     )
 
 
-def _clock(found: _Found) -> tuple[float, float]:
+def _remarks(found: Found, seen: int) -> list[str]:
+    remarks = []
+    if abs(found.offset) > _LARGE_OFFSET:
+        remarks.append(
+            f"the lines were followed {100 * found.offset:+.2g} % from where they were named"
+        )
+        if seen == 1:
+            remarks.append("one line alone cannot tell a clock that is off from another tone")
+    if any(len(phasors.taps) > 1 for phasors in found.blocks):
+        remarks.append("the noise is not white: samples and lines went through one short filter")
+    return remarks
+
+
+def _clock(found: Found) -> tuple[float, float]:
     """Return the mean relative frequency offset and its u."""
     followed = found.followed
     # P_d(1) − P_d(−1) is 2 for odd degrees and 0 for even ones.

@@ -228,7 +228,7 @@ class Chain:
             Options or places in the bench file.
         """
         if any(link.gain == 0.0 for link in self.links.known):
-            return "a working point off the fringe's extremes, where the slope is zero"
+            return "a working phase off the fringe's extremes, where the slope is zero"
         first, last = STAGES.index(start), STAGES.index(to)
         stages = STAGES[first : last + 1] if first <= last else STAGES[last : first + 1][::-1]
         reached = max(i for i, s in enumerate(stages) if self.maybe_way(start, s) is not None)

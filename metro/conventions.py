@@ -6,6 +6,7 @@ import math
 from typing import TYPE_CHECKING
 
 from metro.bench_optics import phase_trips
+from metro.links import EXTREME_SINE
 
 if TYPE_CHECKING:
     from metro.chain import Chain
@@ -30,7 +31,14 @@ def conventions(chain: Chain) -> dict[str, str]:
     trips = f"N = {phase_trips(bench):.6g} round trips"
     if bench.get("arms.input_reflectance") is not None:
         trips += " (phase gain of the Fabry–Perot arms)"
-    slope = "rising" if math.sin(chain.working_phase_rad) < 0.0 else "falling"
+    sine = math.sin(chain.working_phase_rad)
+    slope = (
+        "an extreme"
+        if abs(sine) < EXTREME_SINE
+        else "rising slope"
+        if sine < 0.0
+        else "falling slope"
+    )
     return {
         "stages": "changes about the working point, signed, linear, zero to peak",
         "strain": "gravitational-wave amplitude h: the arms change by +hL/2 and −hL/2, together hL",
@@ -38,7 +46,7 @@ def conventions(chain: Chain) -> dict[str, str]:
         "phase": f"4π·N·n·x/λ, unwrapped, with {trips}, {_index(chain)} and λ in vacuum",
         "fringes": "phase over 2π",
         "power": "on this photodiode; the mean at mid-fringe is what --power gives",
-        "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope} slope",
+        "working_point": f"φ = {chain.working_phase_rad:.6g} rad from this detector's maximum, {slope}",
         "noise": "one-sided amplitude density of differential displacement",
         "snr": "A/√(S/T), S one-sided, over the averaging time",
         "uncertainty": "u is the standard uncertainty from the u of the bench's values; null where none",

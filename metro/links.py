@@ -16,7 +16,11 @@ if TYPE_CHECKING:
 
     from metro.bench import Bench
 
-__all__ = ["Link", "Links", "bench_links"]
+__all__ = ["EXTREME_SINE", "Link", "Links", "bench_links"]
+
+
+EXTREME_SINE = 1e-9
+"""Below this sine of its phase a working point counts as an extreme of the fringe."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -206,6 +210,7 @@ def _measured_fringe_link(bench: Bench, phase: float) -> Link | None:
 
 def _fringe_link(end: str, half_height: float, effects: dict[str, float], phase: float) -> Link:
     sine = math.sin(phase)
-    if abs(sine) < 1e-9:
+    if abs(sine) < EXTREME_SINE:
         sine = 0.0  # an extreme, but for the rounding of π
-    return Link("phase", end, -half_height * sine, effects, "fringe", half_height)
+    gain = -half_height * sine if sine else 0.0  # not −0
+    return Link("phase", end, gain, effects, "fringe", half_height)

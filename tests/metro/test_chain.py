@@ -247,7 +247,7 @@ def test_no_inverse_at_an_extreme_of_the_fringe():
     assert chain.forward(phase="0.1 rad", to="power", exact=True).magnitude == pytest.approx(
         80e-6 * (1 - math.cos(0.1))
     )
-    with pytest.raises(ChainError, match="give a working point off the fringe's extremes"):
+    with pytest.raises(ChainError, match="give a working phase off the fringe's extremes"):
         chain.inverse(voltage="1 mV", to="phase")
 
 

@@ -88,6 +88,8 @@ def test_working_point_and_slopes(capsys):
     )
     top = expect(capsys, *bench, "--working-phase", "0rad")
     assert top["stages"]["voltage"]["value"] == 0.0
+    assert top["conventions"]["working_point"].endswith("from this detector's maximum, an extreme")
+    assert json.dumps(top["working_point"]["slope"]["value"]) == "0.0"
 
 
 def test_corrections(capsys):

@@ -1,0 +1,134 @@
+"""``midfringe inspect``: whether a recording is sound."""
+
+import math
+from typing import Any
+
+import click
+
+from metro.options import ValueType, command, distrust, output_options
+
+__all__ = ["inspect"]
+
+
+@command(example="midfringe inspect run.mfr")
+@click.argument("file", metavar="FILE")
+@click.option("--time", metavar="NAME", help="The time column of a table.")
+@click.option("--rate", type=ValueType("Hz", above=0.0), metavar="F", help="Where there is none.")
+@output_options("json")
+def inspect(file: str, time: str | None, rate: float | None, as_json: bool) -> None:
+    """Look through a recording: gaps, over-range, channels, the board's clock, and a verdict.
+
+    Ends with 1 if something speaks against the recording.
+    """
+    from firmware_bridge.inspection import inspect_recording
+    from firmware_bridge.opening import open_recording
+    from metro.output import to_json
+    from metro.units import quantity
+
+    recording = open_recording(file, time=time, rate=None if rate is None else quantity(rate, "Hz"))
+    found = inspect_recording(recording)
+    if as_json:
+        click.echo(to_json(_document(recording, found)))
+    else:
+        click.echo(_for_people(recording, found))
+    if not found.is_sound:
+        distrust(found.reasons)
+
+
+def _value(value: float, unit: str, u: float | None = None) -> dict[str, Any]:
+    return {"value": None if math.isnan(value) else value, "unit": unit, "u": u}
+
+
+def _document(recording: Any, found: Any) -> dict[str, Any]:  # noqa: ANN401  # modules load when called
+    return {
+        "samples": recording.length,
+        "rate": _value(recording.rate_hz, "Hz", recording.rate_u_hz),
+        "duration": _value(recording.duration_s, "s"),
+        "channels": [
+            {
+                "name": state.name,
+                "minimum": _value(state.minimum, state.unit),
+                "maximum": _value(state.maximum, state.unit),
+                "mean": _value(state.mean, state.unit),
+                "standard_deviation": _value(state.standard_deviation, state.unit),
+                "missing": state.missing,
+                "over_range": state.over_range,
+            }
+            for state in found.channels
+        ],
+        "gaps": [
+            {"index": g.index, "length": g.length, "exact": g.exact, "length_u": g.length_u}
+            for g in recording.gaps
+        ],
+        "over_range": recording.over_range,
+        "clock": None
+        if found.clock is None
+        else {
+            "offset": _value(found.clock.offset, "1", found.clock.offset_u),
+            "span": _value(found.clock.span_s, "s"),
+        },
+        "remarks": recording.remarks,
+        "sound": found.is_sound,
+        "reasons": found.reasons,
+    }
+
+
+def _for_people(recording: Any, found: Any) -> str:  # noqa: ANN401
+    from metro.output import table
+
+    lines = [
+        ["recording", f"{recording.path} ({recording.format})"],
+        ["samples", f"{recording.length} at {recording.rate_hz:.9g} Hz"],
+        ["duration", f"{recording.duration_s:.6g} s"],
+        ["gaps", f"{len(recording.gaps)} ({sum(g.length for g in recording.gaps)} samples)"],
+        ["over range", f"{recording.over_range} values"],
+        ["clock", _clock(found.clock)],
+    ]
+    channels = [
+        [
+            s.name,
+            s.unit,
+            s.minimum,
+            s.maximum,
+            s.mean,
+            s.standard_deviation,
+            s.missing,
+            s.over_range,
+        ]
+        for s in found.channels
+    ]
+    names = ["channel", "unit", "minimum", "maximum", "mean", "std dev", "missing", "over range"]
+    parts = [table(lines), table(channels, names)]
+    if recording.gaps:
+        parts.append(_gap_table(recording))
+    parts += [f"remark: {remark}" for remark in recording.remarks]
+    parts.append("no reason for distrust found" if found.is_sound else "not sound")
+    return "\n\n".join(parts)
+
+
+def _gap_table(recording: Any) -> str:  # noqa: ANN401
+    from metro.output import table
+
+    shown = 10
+    longest = sorted(recording.gaps, key=lambda gap: -gap.length)[:shown]
+    rows = [
+        [
+            f"{gap.index / recording.rate_hz:.6g} s",
+            gap.index,
+            gap.length,
+            "exact" if gap.exact else f"estimated, u = {gap.length_u:.3g}",
+        ]
+        for gap in longest
+    ]
+    text = table(rows, ["gap at", "sample", "length", "length is"])
+    more = len(recording.gaps) - shown
+    return f"{text}\n… and {more} shorter ones" if more > 0 else text
+
+
+def _clock(clock: Any) -> str:  # noqa: ANN401
+    if clock is None:
+        return "not compared with the host's"
+    return (
+        f"{clock.offset * 1e6:+.1f} ppm against the host's, u = {clock.offset_u * 1e6:.1f} ppm "
+        f"(over {clock.span_s:.0f} s)"
+    )

@@ -1,0 +1,177 @@
+"""Is a recording sound? What each channel holds, what is missing, and how the clocks agree."""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from firmware_bridge.recording import MfrRecording
+from firmware_bridge.trace import Recording
+
+__all__ = ["ChannelState", "ClockState", "Inspection", "inspect_recording"]
+
+_CLOCK_LIMIT = 1e-3  # a crystal is within 1e-4; what is worse costs amplitude in every line fit
+_CLOCK_SPAN_S = 10.0  # below it the stamps' jitter drowns any offset
+_STAMP_U_S = 0.05 / 3**0.5  # a frame's arrival, ±50 ms at most, rectangular: our estimate
+
+
+@dataclass(frozen=True, slots=True)
+class ChannelState:
+    """What one channel holds; values in its unit, NaN where it has no value at all.
+
+    Parameters
+    ----------
+    name, unit : str
+        Of the channel.
+    minimum, maximum, mean, standard_deviation : float
+        Of the values that are there.
+    missing, over_range : int
+        Values that are not.
+    """
+
+    name: str
+    unit: str
+    minimum: float
+    maximum: float
+    mean: float
+    standard_deviation: float
+    missing: int
+    over_range: int
+
+    @property
+    def is_constant(self) -> bool:
+        """True if it holds one value only: dead, stuck, or not connected."""
+        return self.minimum == self.maximum
+
+
+@dataclass(frozen=True, slots=True)
+class ClockState:
+    """The board's clock beside the host's.
+
+    Parameters
+    ----------
+    offset : float
+        Relative: positive where the board samples faster than announced.
+    offset_u : float
+        Its standard uncertainty, from the scatter of the stamps; the host's own clock not included.
+    span_s : float
+        Time over which they were compared.
+    """
+
+    offset: float
+    offset_u: float
+    span_s: float
+
+
+@dataclass(frozen=True, slots=True)
+class Inspection:
+    """The verdict; ``reasons`` says what speaks against the recording, empty where it is sound."""
+
+    channels: list[ChannelState]
+    clock: ClockState | None
+    reasons: list[str]
+
+    @property
+    def is_sound(self) -> bool:
+        """True if nothing speaks against the recording."""
+        return not self.reasons
+
+
+def inspect_recording(recording: Recording) -> Inspection:
+    """Look through a whole recording, in bounded memory.
+
+    Parameters
+    ----------
+    recording : Recording
+        Any.
+
+    Returns
+    -------
+    Inspection
+        What was found.
+    """
+    channels = [_channel_state(recording, k) for k in range(len(recording.channels))]
+    clock = _clock_state(recording) if isinstance(recording, MfrRecording) else None
+    return Inspection(channels, clock, _reasons(recording, channels, clock))
+
+
+def _channel_state(recording: Recording, position: int) -> ChannelState:
+    count, mean, squares = 0, 0.0, 0.0
+    low, high, over_range = math.inf, -math.inf, 0
+    for block in recording.blocks(channels=[position]):
+        over_range += block.over_range
+        values = block.values[:, 0]
+        values = values[~np.isnan(values)]
+        if not values.size:
+            continue
+        low, high = min(low, float(values.min())), max(high, float(values.max()))
+        block_mean = float(values.mean())
+        total = count + values.size
+        # Pairwise merging of sums of squares, as in Chan, Golub & LeVeque, Am. Stat. 37 (1983) 242.
+        squares += float(np.sum((values - block_mean) ** 2))
+        squares += (block_mean - mean) ** 2 * count * values.size / total
+        mean += (block_mean - mean) * values.size / total
+        count = total
+    channel = recording.channels[position]
+    missing = recording.length - count - over_range
+    if not count:
+        nothing = math.nan
+        return ChannelState(
+            channel.name, channel.unit, nothing, nothing, nothing, nothing, missing, over_range
+        )
+    deviation = math.sqrt(squares / (count - 1)) if count > 1 else math.nan
+    return ChannelState(channel.name, channel.unit, low, high, mean, deviation, missing, over_range)
+
+
+def _clock_state(recording: MfrRecording) -> ClockState | None:
+    announced = recording.header.announcement
+    if announced.simulated and announced.speed != 1.0:
+        return None  # such a board runs as fast as it is read
+    stamps = [s for s in recording.stamps if s.stream == recording.stamps[0].stream]
+    if len(stamps) < 3:
+        return None
+    host_s = np.array([(s.monotonic_ns - stamps[0].monotonic_ns) * 1e-9 for s in stamps])
+    board_s = np.array([s.index - stamps[0].index for s in stamps]) / announced.rate_hz
+    span_s = float(host_s[-1])
+    if span_s < _CLOCK_SPAN_S:
+        return None
+    slope, slope_u = _slope(host_s, board_s)
+    return ClockState(slope - 1.0, slope_u, span_s)
+
+
+def _slope(x: NDArray[np.float64], y: NDArray[np.float64]) -> tuple[float, float]:
+    """Return the least-squares slope and its standard uncertainty."""
+    x, y = x - x.mean(), y - y.mean()
+    weight = float(x @ x)
+    slope = float(x @ y) / weight
+    scatter = float(np.sum((y - slope * x) ** 2)) / (x.size - 2)
+    # Few stamps may agree by chance: the scatter is taken no smaller than what a stamp is good for.
+    return slope, math.sqrt(max(scatter, _STAMP_U_S**2 / x.size) / weight)
+
+
+def _reasons(
+    recording: Recording, channels: list[ChannelState], clock: ClockState | None
+) -> list[str]:
+    reasons = []
+    if recording.gaps:
+        lost = sum(gap.length for gap in recording.gaps)
+        reasons.append(
+            f"{len(recording.gaps)} gaps, {lost} of {recording.length} samples missing "
+            f"({lost / recording.length:.3%})"
+        )
+    estimated = sum(not gap.exact for gap in recording.gaps)
+    if estimated:
+        reasons.append(f"{estimated} gaps have an estimated length")
+    if recording.over_range:
+        reasons.append(f"{recording.over_range} values are over-range")
+    if isinstance(recording, MfrRecording) and recording.damaged:
+        reasons.append(f"{recording.damaged} records are damaged")
+    for state in channels:
+        if math.isnan(state.mean):
+            reasons.append(f"channel {state.name!r} has no value at all")
+        elif state.is_constant:
+            reasons.append(f"channel {state.name!r} is constant: dead, stuck or not connected")
+    if clock is not None and abs(clock.offset) > max(_CLOCK_LIMIT, 3 * clock.offset_u):
+        reasons.append(f"the board's clock is off by {clock.offset:+.2%} against the host's")
+    return reasons

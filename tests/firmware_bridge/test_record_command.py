@@ -1,0 +1,142 @@
+import contextlib
+import json
+import signal
+import subprocess
+import sys
+import threading
+import time
+
+import pytest
+from wire_board import RATE_HZ, PtyLink, SocketLink, WireBoard
+
+from firmware_bridge.recording import open_mfr
+
+PROGRAM = [sys.executable, "-m", "metro", "record"]
+
+
+def start(*arguments):
+    return subprocess.Popen(
+        [*PROGRAM, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+    )
+
+
+def run_to_end(*arguments):
+    with start(*arguments) as process:
+        out, err = process.communicate(timeout=30)
+    return process.returncode, out, err
+
+
+@contextlib.contextmanager
+def board_on(link, frames, *, paced=False):
+    """A board that starts when it is asked for the first time."""
+    board = WireBoard(link)
+
+    def run():
+        while not link.received():
+            time.sleep(0.005)
+        board.run(frames, paced=paced)
+
+    thread = threading.Thread(target=run, daemon=True)
+    thread.start()
+    yield board
+    board._stop.set()
+    link.close()
+    thread.join()
+
+
+def wait_for(path, size, limit_s=15.0):
+    until = time.monotonic() + limit_s
+    while not (path.exists() and path.stat().st_size > size):
+        assert time.monotonic() < until, "the recording does not grow"
+        time.sleep(0.02)
+
+
+def test_json_has_the_agreed_keys_and_nothing_else_is_on_stdout(tmp_path):
+    path = tmp_path / "a.mfr"
+    with board_on(PtyLink(), 100) as board:
+        code, out, err = run_to_end(
+            "--port", board.link.port, "--out", str(path), "--duration", "1.5 s", "--json"
+        )
+    document = json.loads(out)
+    assert (code, err) == (0, "")
+    assert document["file"] == str(path)
+    assert (document["samples"], document["gaps"], document["over_range"]) == (3000, [], 0)
+    assert document["bytes_discarded"] == 0
+    assert document["duration"] == {"value": 1.5, "unit": "s", "u": None}
+    assert open_mfr(path).length == 3000
+
+
+@pytest.mark.parametrize("how", [signal.SIGINT, signal.SIGTERM])
+def test_ctrl_c_ends_a_recording_cleanly(tmp_path, how):
+    path = tmp_path / "a.mfr"
+    with board_on(PtyLink(), 10_000, paced=True) as board:
+        process = start("--port", board.link.port, "--out", str(path), "--json")
+        wait_for(path, 3000)
+        process.send_signal(how)
+        out, err = process.communicate(timeout=20)
+    assert (process.returncode, err) == (0, "")
+    recording = open_mfr(path)
+    assert recording.length == json.loads(out)["samples"]
+    assert (recording.gaps, recording.remarks) == ([], [])
+
+
+def test_sigkill_costs_at_most_the_last_second(tmp_path):
+    path = tmp_path / "a.mfr"
+    with board_on(PtyLink(), 10_000, paced=True) as board:
+        process = start("--port", board.link.port, "--out", str(path))
+        wait_for(path, 3000)
+        time.sleep(1.3)  # somewhere between two syncs
+        sent = board.next
+        process.kill()
+        process.communicate(timeout=20)
+    assert process.returncode == -signal.SIGKILL
+    recording = open_mfr(path)
+    assert recording.gaps == []
+    assert recording.length > RATE_HZ
+    assert sent - recording.length <= RATE_HZ, "more than a second is missing"
+
+
+@pytest.mark.parametrize(
+    ("arguments", "line"),
+    [
+        (["--port", "/dev/nowhere"], "midfringe: /dev/nowhere cannot be opened: there is no such port (midfringe record --list shows the ports)"),
+        (["--port", "socket://127.0.0.1:1"], "midfringe: socket://127.0.0.1:1 cannot be opened: connection refused"),
+        (["--port", "loop://", "--duration", "5"], "midfringe: --duration must have a unit of time"),
+        (["--port", "loop://", "--duration", "-5s"], "midfringe: --duration must be > 0"),
+        (["--port", "loop://", "--rate", "5Hz"], "midfringe: --rate goes with --text; a board that sends frames announces its rate"),
+    ],
+)  # fmt: skip
+def test_what_is_wrong_is_one_line_and_nothing_is_written(tmp_path, arguments, line):
+    code, out, err = run_to_end(*arguments, "--out", str(tmp_path / "a.mfr"))
+    assert (code, out, err.count("\n")) == (2, "", 1)
+    assert err.startswith(line)
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_an_existing_file_is_kept(tmp_path):
+    path = tmp_path / "a.mfr"
+    path.write_bytes(b"precious")
+    code, out, err = run_to_end("--port", "loop://", "--out", str(path))
+    assert (code, out, err.count("\n")) == (2, "", 1)
+    assert path.read_bytes() == b"precious"
+
+
+def test_a_port_that_goes_midway_ends_with_three_and_what_was_kept(tmp_path):
+    link = SocketLink()
+
+    def send():
+        board = WireBoard(link)
+        board.announce()
+        board.send(10)
+        link.hang_up()
+
+    thread = threading.Thread(target=send, daemon=True)
+    thread.start()
+    code, out, err = run_to_end("--port", link.port, "--out", str(tmp_path / "a.mfr"))
+    thread.join()
+    link.close()
+    assert (code, out) == (3, "")
+    assert err == (
+        f"midfringe: {link.port} failed: the other side closed the connection; "
+        f"kept 500 samples (0.25 s) in {tmp_path / 'a.mfr'}\n"
+    )

@@ -55,6 +55,7 @@ class Chain:
     def __init__(self, bench: Bench, working_phase_rad: float = MID_FRINGE_RISING_RAD) -> None:
         self.bench = bench
         self.working_phase_rad = working_phase_rad
+        self._ways: dict[str, dict[str, list[tuple[Link, bool]]]] = {}
 
     @cached_property
     def links(self) -> Links:
@@ -200,6 +201,11 @@ class Chain:
         list of (Link, bool) or None
             As :meth:`way`.
         """
+        if start not in self._ways:  # the bench does not change, and noise asks again and again
+            self._ways[start] = self._ways_from(start)
+        return self._ways[start].get(to)
+
+    def _ways_from(self, start: str) -> dict[str, list[tuple[Link, bool]]]:
         ways: dict[str, list[tuple[Link, bool]]] = {start: []}
         open_ends = [start]
         while open_ends:
@@ -212,7 +218,7 @@ class Chain:
                     if near == here and far not in ways and (with_it or link.gain != 0.0):
                         ways[far] = [*ways[here], (link, with_it)]
                         open_ends.append(far)
-        return ways.get(to)
+        return ways
 
     def what_is_missing(self, start: str, to: str) -> str:
         """Return what would have to be given to get from one stage to another.

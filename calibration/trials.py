@@ -1,7 +1,11 @@
 """Many rehearsals: whether the uncertainties cover, quantity by quantity."""
 
 from collections.abc import Callable, Iterable, Iterator, Sequence
+from concurrent.futures import ProcessPoolExecutor
+from contextlib import ExitStack
 from dataclasses import dataclass
+from functools import partial
+from multiprocessing import get_context
 from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import Any
@@ -59,6 +63,7 @@ def play_trials(
     *,
     through_port: bool = False,
     lines_s: float = 20.0,
+    processes: int = 1,
     progress: Callable[[str], None] | None = None,
 ) -> Iterator[list[Comparison]]:
     """Play one session a seed and yield each comparison with its truth.
@@ -73,6 +78,8 @@ def play_trials(
         Record through a pseudo-terminal; else decode the same bytes in memory.
     lines_s : float
         Duration of a lines recording [s].
+    processes : int
+        Sessions played at a time, each in a process of its own; 1 plays in this one.
     progress : callable, optional
         Told of each session that is done.
 
@@ -81,12 +88,26 @@ def play_trials(
     list of Comparison
         In the order of the seeds.
     """
-    for seed in seeds:
-        with TemporaryDirectory(prefix="midfringe-") as folder:
-            played = rehearse(bench, seed, Path(folder), through_port=through_port, lines_s=lines_s)
-        if progress is not None:
-            progress(f"seed {seed}")
-        yield played.comparisons
+    play = partial(_played, bench, through_port, lines_s)
+    with ExitStack() as stack:
+        if processes > 1:
+            spawn = get_context("spawn")  # a fork would copy the threads' locks of numpy's BLAS
+            pool = stack.enter_context(ProcessPoolExecutor(processes, mp_context=spawn))
+            played = pool.map(play, seeds)
+        else:
+            played = map(play, seeds)
+        for seed, comparisons in played:
+            if progress is not None:
+                progress(f"seed {seed}")
+            yield comparisons
+
+
+def _played(
+    bench: Bench, through_port: bool, lines_s: float, seed: int
+) -> tuple[int, list[Comparison]]:
+    with TemporaryDirectory(prefix="midfringe-") as folder:
+        played = rehearse(bench, seed, Path(folder), through_port=through_port, lines_s=lines_s)
+    return seed, played.comparisons
 
 
 def coverage_of(sessions: Sequence[Sequence[Comparison]]) -> list[Coverage]:

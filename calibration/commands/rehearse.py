@@ -1,5 +1,6 @@
 """``midfringe rehearse``: a whole session on a simulated bench, compared with the truth."""
 
+import os
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Self
@@ -61,7 +62,9 @@ def _run_trials(bench: Bench, seed: int, trials: int, *, as_json: bool) -> None:
     from calibration.trials import coverage_of, coverage_table, play_trials
 
     with _progress(trials) as step:
-        rows = coverage_of(list(play_trials(bench, range(seed, seed + trials), progress=step)))
+        seeds, processes = range(seed, seed + trials), min(trials, os.cpu_count() or 1)
+        played = play_trials(bench, seeds, processes=processes, progress=step)
+        rows = coverage_of(list(played))
     document = {"seed": seed, "trials": trials, "coverage": [row.to_dict() for row in rows]}
     click.echo(to_json(document) if as_json else coverage_table(rows))
 

@@ -42,7 +42,7 @@ def test_the_truth_lies_inside_as_often_as_it_should():
     on the mean 0.15 = 3 (1/sqrt(400) = 5 %), on the coverage of all comparisons 2 points: about
     1.8 of the 1.1 points that 400 fully common comparisons would have, more for those apart.
     """
-    rows = coverage_of(list(play_trials(built_in_bench(), range(1, 401))))
+    rows = coverage_of(list(play_trials(built_in_bench(), range(1, 401), processes=2)))
     table = coverage_table(rows)
     print(table)
     for row in rows[:-1]:

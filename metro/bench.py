@@ -7,14 +7,14 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from metro.bench_entry import NORMAL, BenchError, BenchLine, Entry, nearest
+from metro.bench_entry import NORMAL, BenchError, BenchLine, Entry, MotionPoint, nearest
 from metro.bench_keys import KEYS, OPTIONS
 from metro.measured import Measured
 
 if TYPE_CHECKING:
     from metro.chain import Chain
 
-__all__ = ["Bench", "BenchError", "BenchLine", "load_bench"]
+__all__ = ["Bench", "BenchError", "BenchLine", "MotionPoint", "load_bench"]
 
 
 @dataclass(frozen=True)
@@ -29,11 +29,14 @@ class Bench:
         The drive lines, in the order of the file.
     path : str
         The bench file; empty where there is none.
+    motion : tuple of MotionPoint
+        How much the arms move of themselves, frequencies ascending; empty where nothing is said.
     """
 
     entries: Mapping[str, Entry] = field(default_factory=dict)
     lines: tuple[BenchLine, ...] = ()
     path: str = ""
+    motion: tuple[MotionPoint, ...] = ()
 
     @classmethod
     def of(cls, **overrides: Any) -> "Bench":  # noqa: ANN401  # quantities, strings, numbers
@@ -369,5 +372,5 @@ def load_bench(path: str | os.PathLike[str]) -> Bench:
     except tomllib.TOMLDecodeError as error:
         reason = " ".join(str(error).split())
         raise BenchError(f"{path} is not valid TOML: {reason}") from None
-    entries, lines = read_sections(document, str(path))
-    return _checked(Bench(entries, lines, str(path)))
+    entries, lines, motion = read_sections(document, str(path))
+    return _checked(Bench(entries, lines, str(path), motion))

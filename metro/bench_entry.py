@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from metro.errors import MetroError
 from metro.measured import Measured
 
-__all__ = ["NORMAL", "RECTANGULAR", "BenchError", "BenchLine", "Entry", "nearest"]
+__all__ = ["NORMAL", "RECTANGULAR", "BenchError", "BenchLine", "Entry", "MotionPoint", "nearest"]
 
 NORMAL = "normal"
 RECTANGULAR = "rectangular"
@@ -34,6 +34,22 @@ class BenchLine:
     frequency_hz: float
     drive_v: float | None = None
     drive_u_v: float = 0.0
+
+
+@dataclass(frozen=True, slots=True)
+class MotionPoint:
+    """How much the arms move of themselves at one frequency.
+
+    Parameters
+    ----------
+    frequency_hz : float
+        Frequency [Hz].
+    density_m : float
+        One-sided amplitude density of differential displacement [m/√Hz].
+    """
+
+    frequency_hz: float
+    density_m: float
 
 
 @dataclass(frozen=True, slots=True)

@@ -2,7 +2,7 @@
 
 from typing import NamedTuple
 
-__all__ = ["KEYS", "OPTIONS", "Key"]
+__all__ = ["KEYS", "LINE_KEYS", "MOTION_KEYS", "OPTIONS", "Key"]
 
 
 class Key(NamedTuple):
@@ -95,6 +95,7 @@ KEYS: dict[str, Key] = {
     "actuator.polarity": Key("1", "1", minimum=-1.0, maximum=1.0, whole=True),
     "actuator.drive_limit": _positive("V", "5 V"),
     "actuator.tilt": Key("1/V", '{ value = "0 1/V", u = "2e-4 1/V" }'),
+    "actuator.gain": Key("m/V", "35 nm/V"),
     "actuator.resonance": _positive("Hz", "2 kHz"),
     "actuator.q": _positive("1", "30"),
     "drive.point": Key(
@@ -115,13 +116,19 @@ KEYS: dict[str, Key] = {
     "simulated.gain": Key("m/V", "35 nm/V"),
     "mains.frequency": Key("Hz", "50 Hz", minimum=40.0, maximum=70.0),
 }
-"""Every key but those of ``[[line]]``, as ``section.key``."""
+"""Every key but those of ``[[line]]`` and ``[[motion]]``, as ``section.key``."""
 
 LINE_KEYS: dict[str, Key] = {
     "frequency": _positive("Hz", "87.1 Hz"),
     "drive": _positive("V", "0.5 V"),
 }
 """The keys of one ``[[line]]``."""
+
+MOTION_KEYS: dict[str, Key] = {
+    "frequency": _positive("Hz", "31.7 Hz"),
+    "density": _not_negative("m/Hz**0.5", "40 pm/√Hz"),
+}
+"""The keys of one ``[[motion]]``."""
 
 OPTIONS: dict[str, str] = {
     "arm": "arms.length",

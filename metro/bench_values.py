@@ -2,10 +2,19 @@
 
 import re
 from collections.abc import Mapping
+from itertools import pairwise
 from typing import Any
 
-from metro.bench_entry import NORMAL, RECTANGULAR, BenchError, BenchLine, Entry, nearest
-from metro.bench_keys import KEYS, LINE_KEYS, Key
+from metro.bench_entry import (
+    NORMAL,
+    RECTANGULAR,
+    BenchError,
+    BenchLine,
+    Entry,
+    MotionPoint,
+    nearest,
+)
+from metro.bench_keys import KEYS, LINE_KEYS, MOTION_KEYS, Key
 from metro.errors import MetroError
 from metro.measured import Measured
 from metro.units import si
@@ -18,8 +27,8 @@ _DISTRIBUTIONS = (NORMAL, RECTANGULAR)
 
 def read_sections(
     document: Mapping[str, Any], path: str
-) -> tuple[dict[str, Entry], tuple[BenchLine, ...]]:
-    """Return the entries and lines of a bench file's document.
+) -> tuple[dict[str, Entry], tuple[BenchLine, ...], tuple[MotionPoint, ...]]:
+    """Return the entries, lines and motion of a bench file's document.
 
     Parameters
     ----------
@@ -30,8 +39,8 @@ def read_sections(
 
     Returns
     -------
-    tuple of (dict of str to Entry, tuple of BenchLine)
-        The values by ``section.key``, and the drive lines.
+    tuple of (dict of str to Entry, tuple of BenchLine, tuple of MotionPoint)
+        The values by ``section.key``, the drive lines, and the arms' own motion by frequency.
 
     Raises
     ------
@@ -40,14 +49,17 @@ def read_sections(
     """
     entries: dict[str, Entry] = {}
     lines: tuple[BenchLine, ...] = ()
+    motion: tuple[MotionPoint, ...] = ()
     for section, content in document.items():
         if section == "line":
             lines = _read_lines(content, path)
+        elif section == "motion":
+            motion = _read_motion(content, path)
         elif section == "format":
             _check_format(content, path)
         else:
             entries.update(_read_section(section, content, path))
-    return entries, lines
+    return entries, lines, motion
 
 
 def _check_format(version: object, path: str) -> None:
@@ -58,7 +70,7 @@ def _check_format(version: object, path: str) -> None:
 
 
 def _read_section(section: str, content: object, path: str) -> dict[str, Entry]:
-    sections = dict.fromkeys([key.partition(".")[0] for key in KEYS] + ["line"])
+    sections = dict.fromkeys([key.partition(".")[0] for key in KEYS] + ["line", "motion"])
     if section not in sections:
         raise BenchError(f"{path}: unknown section [{section}]{nearest(section, sections)}")
     if not isinstance(content, dict):
@@ -89,6 +101,27 @@ def _read_line(item: Mapping[str, Any], where: str) -> BenchLine:
     if "drive" not in item:
         return BenchLine(frequency)
     return BenchLine(frequency, *_line_value(item, "drive", where))
+
+
+def _read_motion(content: object, path: str) -> tuple[MotionPoint, ...]:
+    if not isinstance(content, list) or not all(isinstance(item, dict) for item in content):
+        raise BenchError(f"{path}: the arms' motion must be written as [[motion]], got {content!r}")
+    points = [_read_point(item, f"{path}, [[motion]] {n}") for n, item in enumerate(content, 1)]
+    points.sort(key=lambda point: point.frequency_hz)
+    for one, two in pairwise(points):
+        if one.frequency_hz == two.frequency_hz:
+            raise BenchError(f"{path}: [[motion]] is given twice at {one.frequency_hz:g} Hz")
+    return tuple(points)
+
+
+def _read_point(item: Mapping[str, Any], where: str) -> MotionPoint:
+    for name in item:
+        if name not in MOTION_KEYS:
+            raise BenchError(f"{where}: unknown key {name!r}{nearest(name, MOTION_KEYS)}")
+    for name, rule in MOTION_KEYS.items():
+        if name not in item:
+            raise BenchError(f'{where}: must give a {name}, such as {name} = "{rule.example}"')
+    return MotionPoint(*(_number(rule, item[n], f"{where} {n}") for n, rule in MOTION_KEYS.items()))
 
 
 def _line_value(item: Mapping[str, Any], name: str, where: str) -> tuple[float, float]:

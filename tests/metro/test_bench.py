@@ -164,7 +164,7 @@ def test_every_key_accepts_its_own_example():
         bare = bare and " umol" not in rule.example
         value = rule.example if bare else f'"{rule.example}"'
         document = tomllib.loads(f"[{section}]\n{name} = {value}\n")
-        entries, _ = read_sections(document, "x.toml")
+        entries, *_ = read_sections(document, "x.toml")
         assert list(entries) == [key]
     assert set(OPTIONS.values()) <= set(KEYS)
     assert set(LINE_KEYS) == {"frequency", "drive"}
@@ -281,3 +281,44 @@ def test_files_that_cannot_be_read(tmp_path):
     path.write_bytes('[laser]\nsource = "Börse"'.encode("latin-1"))
     with pytest.raises(BenchError, match="is not UTF-8 text"):
         load_bench(path)
+
+
+def test_the_arms_own_motion(tmp_path):
+    path = tmp_path / "bench.toml"
+    path.write_text(
+        '[[motion]]\nfrequency = "87.1 Hz"\ndensity = "17 pm/√Hz"\n'
+        '[[motion]]\nfrequency = "31.7 Hz"\ndensity = "40 pm/√Hz"\n',
+        encoding="utf-8",
+    )
+    points = load_bench(path).motion
+    assert [(p.frequency_hz, p.density_m) for p in points] == [(31.7, 40e-12), (87.1, 17e-12)]
+
+
+@pytest.mark.parametrize(
+    ("text", "message"),
+    [
+        ("[motion]", "the arms' motion must be written as [[motion]], got {}"),
+        (
+            '[[motion]]\nfrequency = "1 Hz"',
+            '[[motion]] 1: must give a density, such as density = "40 pm/√Hz"',
+        ),
+        (
+            '[[motion]]\nfrequncy = "1 Hz"',
+            "[[motion]] 1: unknown key 'frequncy'; the nearest known is 'frequency'",
+        ),
+        (
+            '[[motion]]\nfrequency = "1 Hz"\ndensity = "4 pm"',
+            "[[motion]] 1 density must have a unit of length per square root of frequency",
+        ),
+        (
+            '[[motion]]\nfrequency = "1 Hz"\ndensity = "4 pm/√Hz"\n' * 2,
+            "[[motion]] is given twice at 1 Hz",
+        ),
+    ],
+)
+def test_motion_refused(tmp_path, text, message):
+    path = tmp_path / "bench.toml"
+    path.write_text(text, encoding="utf-8")
+    with pytest.raises(BenchError) as caught:
+        load_bench(path)
+    assert message in str(caught.value)

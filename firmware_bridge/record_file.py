@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from firmware_bridge.announcement import FORMATS
 from firmware_bridge.envelope import SEALED
-from firmware_bridge.frame import HEADER, unpack_samples
+from firmware_bridge.frame import HEADER
 from firmware_bridge.message import WIRE_VERSION, MessageType
 from firmware_bridge.recording_header import RecordingError, parse_header
 
@@ -176,6 +176,18 @@ class RecordFile:
         room = self.slots * self.channels * self.width
         payload = records[:, HEADER.itemsize : HEADER.itemsize + room]
         if self.width == 3:
-            return unpack_samples(payload.reshape(-1), self.channels, 3)
+            return self._counts_24(records)
         typed = payload.view(f"<i{self.width}")
         return typed.reshape(-1, self.channels)
+
+    def _counts_24(self, records: NDArray[np.uint8]) -> NDArray[np.int32]:
+        # Each sample is read as the top three of four bytes, the first of which belongs to its
+        # neighbour (or to the header): shifted down, that byte goes and the sign comes along.
+        wide = np.ndarray(
+            (len(records), self.slots * self.channels),
+            "<i4",
+            records.data,
+            HEADER.itemsize - 1,
+            (self.record_bytes, 3),
+        )
+        return (wide >> 8).reshape(-1, self.channels)

@@ -5,6 +5,7 @@ from math import hypot, inf, sqrt
 
 import numpy as np
 
+from calibration import curvature
 from calibration.drive import terminal_factor
 from calibration.extremes import Extremes
 from calibration.readout import Readout
@@ -20,7 +21,7 @@ ASSUMED_ADDITIVE = 0.01  # of the line, rectangular half-width, where nothing at
 
 
 def actuator_line(
-    frequency_hz: float,
+    number: int,
     line: CombinedLine,
     extremes: Extremes,
     readout: Readout,
@@ -32,8 +33,8 @@ def actuator_line(
 
     Parameters
     ----------
-    frequency_hz : float
-        Nominal frequency [Hz].
+    number : int
+        Place of the line in the bench, from 0.
     line : CombinedLine
         Optical phase per volt of the drive's reading.
     extremes : Extremes
@@ -51,6 +52,7 @@ def actuator_line(
         Magnitude and phase with their budgets.
     """
     bench = readout.bench
+    frequency_hz = bench.lines[number].frequency_hz
     ratio = line.ratio * readout.correction(frequency_hz, recorded=drive_read)
     volts = terminal_factor(bench, recorded=drive_read)
     response = ratio / readout.phase_per_metre / volts
@@ -60,8 +62,8 @@ def actuator_line(
         _drift_term(line, extremes, drift),
         *_fit_terms(line),
         *readout.drive_terms(recorded=drive_read),
-        *(readout.reference_term(+1.0) if drive_read else []),
-        *readout.line_nonlinearity_terms(extremes, line.means.cos, drive_read=drive_read),
+        *(readout.reference_term(+1.0) if drive_read else readout.drive_setting_term(number)),
+        *curvature.line_terms(bench, extremes, line.means.cos, drive_read=drive_read),
         *readout.response_terms(frequency_hz, recorded=drive_read),
         *_additive_terms(line, extremes, bench, frequency_hz, volts),
         *_tilt_terms(line, extremes, bench, volts),

@@ -14,6 +14,7 @@ from os import PathLike
 
 import numpy as np
 
+from calibration import curvature
 from calibration.actuator import actuator_line
 from calibration.dark import dark_level
 from calibration.drive import is_driven, peak_factor
@@ -229,14 +230,14 @@ class _Analysis:
         drive_read = any(slope.record.drive is not None for slope in self.slopes)
         return [
             actuator_line(
-                frequency_hz,
+                number,
                 self.combined(number),
                 self.extremes,
                 self.readout,
                 self.drift,
                 drive_read=drive_read,
             )
-            for number, frequency_hz in enumerate(self.frequencies_hz)
+            for number in range(len(self.frequencies_hz))
         ]
 
     def readout_terms(self) -> list[Term]:
@@ -249,7 +250,7 @@ class _Analysis:
             Term("fringe extremes", None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
             drift.with_relative(share),
             *self.readout.reference_term(-1.0),
-            *self.readout.swing_nonlinearity_terms(extremes),
+            *curvature.swing_terms(self.bench, extremes),
         ]
 
     def contrast(self) -> Measured | None:
@@ -271,7 +272,7 @@ class _Analysis:
                 kind="A",
                 dof=self.dark.dof,
             ),
-            *self.readout.contrast_nonlinearity_terms(extremes, dark_v),
+            *curvature.contrast_terms(self.bench, extremes, dark_v),
         ]
         return budget_of(terms, value, "1")[0].measured(value)
 

@@ -146,7 +146,7 @@ def _displacements(
     """
     tone = next(step.setup.tones[0] for step in steps if step.role == "lines-rising")
     fitted = [_fit(conversions[slope], bench, calibration) for slope in ("rising", "falling")]
-    correction = 1.0 / abs(Readout(bench).photodiode_response(tone.frequency_hz))
+    correction = 1.0 / abs(Readout(bench).electronics.response(tone.frequency_hz))
     amplitude_m = correction * float(np.mean([abs(line.phasor) for line in fitted]))
     budget = Budget(
         [

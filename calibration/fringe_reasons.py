@@ -52,11 +52,12 @@ def _undetermined(
 ) -> list[str]:
     """Return why a depth is not determined."""
     deepest = max(depth + 3.0 * u for depth, u in depths)
+    worst = 0.1 if prior is None else 0.3  # with known extremes a small line is a weak one, no more
     if prior is None and deepest < 1.0 and drift_rad < 2.5:
         return [_NOT_DETERMINED.format(moved=drift_rad)]
     out = []
     for number, (depth, u) in enumerate(depths, start=1):
-        if not u < 0.1 * depth:
+        if not u < worst * depth:
             out.append(
                 f"depth not determined by this record: line {number} is {depth:.3g} rad with a "
                 f"standard uncertainty of {u:.2g} rad"

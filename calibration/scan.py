@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from calibration.edge import Edge, fit_edge
 from calibration.errors import CalibrationError
+from calibration.fringe_law import law_harmonics
 from calibration.passes import number_passes
 from calibration.smoother import noise_gain, noise_std, smooth, smoothing_length
 
@@ -33,8 +34,10 @@ class ScanFit:
         Covariance of (low, high), unit squared.
     dof : float
         Effective degrees of freedom of half the span.
-    harmonics : ndarray, shape (n,)
-        Harmonics 2, 3, … of the fringe law relative to the first; empty where unknown.
+    harmonics : ndarray, shape (2,) or (0,)
+        cos 2φ and cos 3φ of the fringe law relative to cos φ; empty where too few fringes show them.
+    harmonics_u : ndarray, shape (2,) or (0,)
+        Their standard uncertainties.
     passes : tuple of int
         Passes over the low and over the high extreme.
     drift : tuple of float
@@ -48,6 +51,7 @@ class ScanFit:
     covariance: NDArray[np.float64]
     dof: float
     harmonics: NDArray[np.float64]
+    harmonics_u: NDArray[np.float64]
     passes: tuple[int, int]
     drift: tuple[float, float]
     reasons: list[str] = field(default_factory=list)
@@ -160,6 +164,17 @@ def _reasons(lower: Edge, upper: Edge, low: float, high: float, noise: float) ->
     return reasons
 
 
+def _law_reasons(shape: NDArray[np.float64], shape_u: NDArray[np.float64]) -> list[str]:
+    """Return which harmonics of the fringe law are clearly above 1 %."""
+    causes = {2: "a ghost beam, saturation or clipping", 3: "saturation, clipping or a ghost beam"}
+    return [
+        f"the fringe is no cosine: harmonic {order} of its law is {abs(share):.1%} "
+        f"(u = {u:.1%}); likely causes: {causes[order]}"
+        for order, share, u in zip((2, 3), shape.tolist(), shape_u.tolist(), strict=False)
+        if abs(share) - 3.0 * u > 0.01
+    ]
+
+
 def fit_scan(values: NDArray[np.float64], rate_hz: float) -> ScanFit:
     """Fit the extremes of the fringe from a scan over whole fringes.
 
@@ -207,7 +222,7 @@ def _fit(
 ) -> ScanFit:
     """Fit the extremes, and once more with a slow change of the power taken out."""
     noise = max(noise, 1e-6 * float(np.ptp(values)))
-    drift = np.zeros(2)
+    drift, level = np.zeros(2), values
     lower, upper, passes = _edges(values, noise, step)
     for _ in range(2):
         middles = np.bincount(passes, weights=when) / np.maximum(np.bincount(passes), 1)
@@ -221,6 +236,7 @@ def _fit(
         level = low + (high - low) * (values - low - drift[0] * when) / span
         lower, upper, passes = _edges(level, noise, 0.0)
     low, high = -lower.value, upper.value
+    shape, shape_u = law_harmonics(level, passes, low, high)
     var_low, dof_low = _variance(lower, together)
     var_high, dof_high = _variance(upper, together)
     total = var_low + var_high
@@ -230,8 +246,9 @@ def _fit(
         high,
         np.diag([var_low, var_high]),
         dof,
-        np.zeros(0),
+        shape,
+        shape_u,
         (int(np.sum(lower.weight > 1e-3)), int(np.sum(upper.weight > 1e-3))),
         (float(drift[0]), float(drift[1])),
-        _reasons(lower, upper, low, high, noise),
+        _reasons(lower, upper, low, high, noise) + _law_reasons(shape, shape_u),
     )

@@ -119,3 +119,24 @@ def test_result_type():
     assert isinstance(fit, ScanFit)
     assert fit.covariance.shape == (2, 2)
     assert min(fit.passes) >= 4
+
+
+@pytest.mark.parametrize(("second", "third"), [(0.04, 0.0), (0.0, 0.05)])
+def test_a_fringe_that_is_no_cosine_is_named(second, third):
+    for seed in range(3):
+        volts, low, high = scan(seed, power_noise=0.001)
+        half = (high - low) / 2
+        x = np.clip((volts - low) / half - 1, -1, 1)
+        # Chebyshev: cos 2φ = 2x² − 1, cos 3φ = 4x³ − 3x
+        volts = volts + half * (second * (2 * x**2 - 1) + third * (4 * x**3 - 3 * x))
+        fit = fit_scan(volts, RATE_HZ)
+        assert fit.harmonics == pytest.approx([second, third], abs=0.016)
+        assert any("no cosine" in reason for reason in fit.reasons)
+
+
+def test_the_law_of_an_ideal_fringe_has_no_harmonics():
+    for seed in range(4):
+        volts, _, _ = scan(seed)
+        fit = fit_scan(volts, RATE_HZ)
+        assert fit.harmonics == pytest.approx([0.0, 0.0], abs=0.016)
+        assert np.all(fit.harmonics_u < 0.02)

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.cobs import encode
 from firmware_bridge.envelope import Discarded, Unwrapper
-from firmware_bridge.frame import HEADER, OVER_RANGE, unpack_samples
+from firmware_bridge.frame import HEADER, OVER_RANGE
 from firmware_bridge.message import (
     WIRE_VERSION,
     Command,
@@ -24,6 +24,7 @@ from firmware_bridge.message import (
     parse_message,
 )
 from firmware_bridge.order import StreamOrder
+from firmware_bridge.sample_packing import unpack_samples
 from firmware_bridge.trace import Gap
 
 __all__ = [

@@ -235,7 +235,7 @@ def test_a_stop_event_ends_it_with_everything_kept(pty, tmp_path, in_background)
 
 
 def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch):
-    monkeypatch.setattr("firmware_bridge.recorder._SILENCE_S", 0.3)
+    monkeypatch.setattr("firmware_bridge.recording_session._SILENCE_S", 0.3)
     with pytest.raises(DeviceFailedError) as error:
         record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
     assert str(error.value) == (f"{pty.port}: the board is silent for 0.3 s; nothing was recorded")
@@ -243,7 +243,7 @@ def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch)
 
 
 def test_noise_of_a_wrong_speed_is_named(pty, tmp_path, monkeypatch, in_background):
-    monkeypatch.setattr("firmware_bridge.recorder._SILENCE_S", 0.3)
+    monkeypatch.setattr("firmware_bridge.recording_session._SILENCE_S", 0.3)
     in_background(pty, lambda: pty.send(os.urandom(500)))
     with pytest.raises(DeviceFailedError, match="500 bytes came and no valid frame is in them"):
         record(pty.port, tmp_path / "a.mfr", duration_s=1.0)

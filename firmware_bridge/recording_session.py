@@ -1,0 +1,297 @@
+"""The two threads of a recording: one only reads and queues, the other places and writes."""
+
+import contextlib
+import logging
+import threading
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from firmware_bridge.byte_queue import Arrival, ByteQueue
+from firmware_bridge.envelope import Unwrapper
+from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.intake import Intake
+from firmware_bridge.message import CommandCode, MessageType, encode_command
+from firmware_bridge.port import ByteSource, PortError, PortLostError, open_port
+from firmware_bridge.text_frames import TextFramer
+
+__all__ = ["Progress", "RecordingSession"]
+
+_log = logging.getLogger(__name__)
+
+_ASK_S = 0.5  # how often an unannounced board is asked again
+_SILENCE_S = 5.0  # without one valid message at the start
+_STALL_S = 10.0  # without one midway
+_TEXT_SILENCE_S = 30.0
+_REOPEN_S = 0.25
+
+
+@dataclass(frozen=True, slots=True)
+class Progress:
+    """Where a recording stands.
+
+    Parameters
+    ----------
+    samples : int
+        Samples on the grid so far.
+    wanted : int or None
+        How many there shall be.
+    rate_hz : float or None
+        Announced rate.
+    gaps, over_range_frames, bytes_discarded : int
+        So far.
+    fill : float
+        Of the queue, 0 to 1.
+    is_lost : bool
+        Whether the port is gone and waited for.
+    """
+
+    samples: int
+    wanted: int | None
+    rate_hz: float | None
+    gaps: int
+    over_range_frames: int
+    bytes_discarded: int
+    fill: float
+    is_lost: bool
+
+
+class RecordingSession:
+    """The two threads of one recording and what they share.
+
+    Parameters
+    ----------
+    source : ByteSource
+        The open port.
+    baud : int
+        Symbols per second, for opening it again.
+    intake : Intake
+        Where messages go.
+    framer : TextFramer, optional
+        Where the board prints text.
+    reconnect : bool
+        Wait for a port that is gone.
+    stop : threading.Event
+        Ends the recording when set.
+    """
+
+    def __init__(
+        self,
+        source: ByteSource,
+        baud: int,
+        intake: Intake,
+        framer: TextFramer | None,
+        reconnect: bool,
+        stop: threading.Event,
+    ) -> None:
+        self._source, self._name, self._baud = source, source.name, baud
+        self._intake, self._framer, self._reconnect = intake, framer, reconnect
+        self._unwrapper = Unwrapper()
+        self._stop = stop
+        self._ended = threading.Event()  # the reader will put nothing more
+        self._written = threading.Event()
+        self._queue = ByteQueue()
+        self._failure: BaseException | None = None
+        self._is_lost = False
+        self._bytes = 0
+        self._request = 0
+
+    def run(self, progress: Callable[[Progress], None] | None) -> None:
+        """Record until the end, and raise what went wrong.
+
+        Parameters
+        ----------
+        progress : callable, optional
+            Called a few times a second.
+
+        Raises
+        ------
+        BridgeError
+            If the file cannot be made.
+        DeviceFailedError
+            If the port or the file failed midway.
+        """
+        reader = threading.Thread(target=self._read, name="port reader", daemon=True)
+        writer = threading.Thread(target=self._write, name="recording writer", daemon=True)
+        reader.start()
+        writer.start()
+        with contextlib.suppress(KeyboardInterrupt):  # Ctrl-C is how a recording is ended
+            while not self._written.wait(0.1):
+                if progress is not None:
+                    progress(self._progress())
+        self._stop.set()
+        self._queue.close()
+        reader.join()
+        writer.join()
+        if progress is not None:
+            progress(self._progress())
+        if self._failure is not None:
+            raise self._failure
+
+    def _progress(self) -> Progress:
+        intake = self._intake
+        return Progress(
+            intake.reached,
+            intake.wanted,
+            intake.rate_hz,
+            intake.gaps,
+            intake.flagged,
+            intake.bytes_discarded,
+            self._queue.fill,
+            self._is_lost,
+        )
+
+    # The reader's thread.
+
+    def _read(self) -> None:
+        asked_s: float | None = None  # None: the port has just been opened
+        try:
+            while not self._stop.is_set():
+                now_s = time.monotonic()
+                if asked_s is None or (not self._intake.is_announced and now_s - asked_s >= _ASK_S):
+                    self._ask(is_first=asked_s is None)
+                    asked_s = now_s
+                try:
+                    data = self._source.read()
+                except PortLostError as error:
+                    self._queue.put(_arrival(lost=str(error)))
+                    if not self._reconnect or not self._reopen():
+                        return
+                    asked_s = None
+                    continue
+                if data:
+                    self._queue.put(_arrival(data))
+            if self._framer is None:
+                self._source.write(encode_command(CommandCode.STOP, self._next_request()))
+        except Exception as error:  # noqa: BLE001  # a thread's failure is the recording's
+            self._failure = error
+            self._stop.set()
+        finally:
+            self._ended.set()
+            self._source.close()
+
+    def _ask(self, *, is_first: bool) -> None:
+        if self._framer is not None:
+            return
+        self._source.write(encode_command(CommandCode.IDENTIFY, self._next_request()))
+        if is_first:
+            self._source.write(encode_command(CommandCode.START, self._next_request()))
+
+    def _next_request(self) -> int:
+        self._request = (self._request + 1) % 65536
+        return self._request
+
+    def _reopen(self) -> bool:
+        self._source.close()
+        while not self._stop.wait(_REOPEN_S):
+            try:
+                self._source = open_port(self._name, self._baud)
+            except PortError as error:
+                _log.debug("%s", error)
+            else:
+                self._queue.put(_arrival(is_back=True))
+                return True
+        return False
+
+    # The writer's thread.
+
+    def _write(self) -> None:
+        try:
+            self._write_until_done()
+        except BaseException as error:  # noqa: BLE001  # a thread's failure is the recording's
+            self._failure = self._failure or error
+        finally:
+            self._stop.set()
+            self._queue.close()
+            try:
+                self._intake.close()
+            except BridgeError as error:
+                self._failure = self._failure or error
+            self._written.set()
+
+    def _write_until_done(self) -> None:
+        heard_s = time.monotonic()
+        while not self._intake.is_complete:
+            ended = self._ended.is_set()
+            arrivals = self._queue.take(0.05)
+            if ended and not arrivals:
+                return
+            for arrival in arrivals:
+                if self._take(arrival):
+                    heard_s = time.monotonic()
+            now_ns, unix_ns = time.monotonic_ns(), time.time_ns()
+            if self._framer is not None:
+                for message in self._framer.tick(now_ns * 1e-9):
+                    self._intake.take(message, now_ns, unix_ns)
+            self._intake.tick(now_ns, unix_ns)
+            self._check_silence(time.monotonic() - heard_s)
+
+    def _take(self, arrival: Arrival) -> bool:
+        """Hand one arrival on; return whether anything valid was in it."""
+        if arrival.lost:
+            self._lost(arrival.lost)
+            return True
+        if arrival.is_back:
+            self._is_lost = False
+            if self._framer is not None:
+                self._framer.restart()
+            self._intake.away()
+            self._intake.remark(f"{self._name} is back")
+        self._bytes += len(arrival.data)
+        if self._framer is None:
+            pieces = self._unwrapper.feed(arrival.data)
+        else:
+            pieces = self._framer.feed(arrival.data, arrival.monotonic_ns * 1e-9)
+        for piece in pieces:
+            self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
+        # Our own commands come back from a port that loops or echoes: they are no sign of a board.
+        return any(isinstance(piece, bytes) and piece[0] != MessageType.COMMAND for piece in pieces)
+
+    def _lost(self, reason: str) -> None:
+        for piece in self._unwrapper.close():
+            self._intake.take(piece, time.monotonic_ns(), time.time_ns())
+        self._intake.remark(f"{self._name} is gone: {reason}")
+        if not self._reconnect:
+            raise DeviceFailedError(f"{self._name} failed: {reason}; {self._kept()}")
+        _log.warning("%s is gone (%s); waiting for it", self._name, reason)
+        self._is_lost = True
+
+    def _check_silence(self, silent_s: float) -> None:
+        if self._is_lost:
+            return
+        if self._framer is not None:
+            if silent_s > _TEXT_SILENCE_S:
+                raise DeviceFailedError(
+                    f"{self._name} sent no lines of numbers for {_TEXT_SILENCE_S:g} s "
+                    f"({self._bytes} bytes came in all); {self._kept()}"
+                )
+        elif not self._intake.files and silent_s > _SILENCE_S:
+            raise DeviceFailedError(self._why_nothing())
+        elif silent_s > _STALL_S and not self._reconnect:
+            raise DeviceFailedError(
+                f"{self._name} sent no valid frame for {_STALL_S:g} s; {self._kept()}"
+            )
+
+    def _why_nothing(self) -> str:
+        if not self._bytes:
+            what = "the board is silent"
+        elif self._intake.is_announced:
+            what = "the board announced itself but sends no samples"
+        else:
+            what = (
+                f"{self._bytes} bytes came and no valid frame is in them; "
+                f"is {self._baud} baud right, or is it text (--text)?"
+            )
+        return f"{self._name}: {what} for {_SILENCE_S:g} s; nothing was recorded"
+
+    def _kept(self) -> str:
+        if not self._intake.files:
+            return "nothing was recorded"
+        rate_hz = self._intake.rate_hz or 1.0
+        reached = self._intake.reached
+        names = ", ".join(str(path) for path in self._intake.files)
+        return f"kept {reached} samples ({reached / rate_hz:.4g} s) in {names}"
+
+
+def _arrival(data: bytes = b"", *, lost: str = "", is_back: bool = False) -> Arrival:
+    return Arrival(data, time.monotonic_ns(), time.time_ns(), lost, is_back)

@@ -104,7 +104,18 @@ class Announcement:
 
 
 def pack_announcement(announcement: Announcement) -> bytes:
-    """Return the announcement message without its envelope."""
+    """Return the announcement message without its envelope.
+
+    Parameters
+    ----------
+    announcement : Announcement
+        What to say.
+
+    Returns
+    -------
+    bytes
+        Content, without CRC.
+    """
     numerator, denominator = _rate_ratio(announcement.rate_hz)
     fixed = _FIXED.pack(
         announcement.stream,
@@ -157,6 +168,16 @@ def encode_announcement(announcement: Announcement) -> bytes:
 
 def parse_announcement(message: bytes) -> Announcement:
     """Return what a sealed announcement message says.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC.
+
+    Returns
+    -------
+    Announcement
+        What it says.
 
     Raises
     ------

@@ -61,7 +61,13 @@ class ByteQueue:
         return self.held_bytes / self._limit
 
     def put(self, arrival: Arrival) -> None:
-        """Append, waiting while the queue is full and not closed."""
+        """Append, waiting while the queue is full and not closed.
+
+        Parameters
+        ----------
+        arrival : Arrival
+            What to append.
+        """
         with self._changed:
             if self.held_bytes >= self._limit:
                 self.full_count += 1
@@ -72,7 +78,18 @@ class ByteQueue:
             self._changed.notify_all()
 
     def take(self, timeout_s: float) -> list[Arrival]:
-        """Return all that is waiting, or an empty list after ``timeout_s`` without any."""
+        """Return all that is waiting, or an empty list after ``timeout_s`` without any.
+
+        Parameters
+        ----------
+        timeout_s : float
+            How long to wait for the first one [s].
+
+        Returns
+        -------
+        list of Arrival
+            In order.
+        """
         with self._changed:
             if not self._items:
                 self._changed.wait(timeout_s)

@@ -43,6 +43,7 @@ __all__ = [
 
 _HEADER = struct.Struct("<BBHIIBBHQQHH")
 _STREAMS_KEPT = 4
+_RATES_KEPT = 64
 _BESIDE = (MessageType.NOTE, MessageType.COMMAND, MessageType.REPLY, MessageType.LOCK_IN)
 
 
@@ -117,11 +118,23 @@ class Decoder:
         return self._opened(self._unwrapper.feed(data))
 
     def close(self) -> list[Event]:
-        """Return what was still held, and count the bytes of an unfinished frame as discarded."""
+        """Return what was still held, and count the bytes of an unfinished frame as discarded.
+
+        Returns
+        -------
+        list of events
+            As from `feed`.
+        """
         return self._opened(self._unwrapper.close()) + self.flush()
 
     def flush(self) -> list[Event]:
-        """Return what was still held, with the gaps before it: nothing missing will come any more."""
+        """Return what was still held, with the gaps before it: nothing missing will come any more.
+
+        Returns
+        -------
+        list of Samples or Gap
+            In order.
+        """
         return [event for order in self._orders.values() for event in order.flush()]
 
     def _opened(self, pieces: list[bytes | Discarded]) -> list[Event]:
@@ -155,6 +168,8 @@ class Decoder:
             if kind == MessageType.ANNOUNCEMENT:
                 announcement = parse_announcement(message)
                 self._rates[announcement.stream] = announcement.rate_hz
+                if len(self._rates) > _RATES_KEPT:
+                    del self._rates[next(iter(self._rates))]
                 return [announcement]
             if kind in _BESIDE:
                 return [parse_message(message)]
@@ -202,6 +217,16 @@ class Decoder:
 
 def parse_samples(message: bytes) -> Samples:
     """Return the samples of one unwrapped frame.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC.
+
+    Returns
+    -------
+    Samples
+        What is in it.
 
     Raises
     ------

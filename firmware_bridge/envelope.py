@@ -46,12 +46,34 @@ class Discarded:
 
 
 def seal(content: bytes) -> bytes:
-    """Return ``content`` with its CRC-32 behind it."""
+    """Return ``content`` with its CRC-32 behind it.
+
+    Parameters
+    ----------
+    content : bytes
+        Content of a message.
+
+    Returns
+    -------
+    bytes
+        Four bytes longer.
+    """
     return content + crc32(content).to_bytes(4, "little")
 
 
 def wrap(content: bytes) -> bytes:
-    """Return ``content`` as it goes over the wire: sealed, stuffed, between two zero bytes."""
+    """Return ``content`` as it goes over the wire: sealed, stuffed, between two zero bytes.
+
+    Parameters
+    ----------
+    content : bytes
+        Content of a message.
+
+    Returns
+    -------
+    bytes
+        ``00`` stuffed message ``00``.
+    """
     return b"\0" + encode(seal(content)) + b"\0"
 
 
@@ -136,7 +158,13 @@ class Unwrapper:
         return out
 
     def close(self) -> list[bytes | Discarded]:
-        """Return what is left: bytes with no delimiter behind them, which count as discarded."""
+        """Return what is left: bytes with no delimiter behind them, which count as discarded.
+
+        Returns
+        -------
+        list of Discarded
+            At most one.
+        """
         if self._skipped:
             return [self._too_long()]
         left = len(self._rest)

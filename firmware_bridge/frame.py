@@ -208,6 +208,19 @@ def pack_frames(
 ) -> NDArray[np.uint8]:
     """Return samples frames without their envelopes, one a row; parameters as `encode_stream`.
 
+    Parameters
+    ----------
+    counts : ndarray of int, shape (n, channels)
+        Counts.
+    slots : int
+        Samples per channel in each frame.
+    first_index, first_sequence, stream : int
+        Of the first frame.
+    clock, flags : int or ndarray of int, shape (frames,)
+        The same for all frames, or of each.
+    format : str, optional
+        As for `encode_frame`.
+
     Returns
     -------
     ndarray of uint8, shape (frames, 36 + slots · channels · width)

@@ -84,7 +84,18 @@ HostNote = Stamp | Join | Remark | End
 
 
 def seal_host_note(note: HostNote) -> bytes:
-    """Return the sealed message of a host note."""
+    """Return the sealed message of a host note.
+
+    Parameters
+    ----------
+    note : Stamp, Join, Remark or End
+        What to write.
+
+    Returns
+    -------
+    bytes
+        Content and CRC, not padded.
+    """
     match note:
         case Stamp():
             body = _STAMP.pack(
@@ -102,6 +113,16 @@ def seal_host_note(note: HostNote) -> bytes:
 
 def parse_host_note(message: bytes) -> HostNote:
     """Return what a sealed host note says.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC; padding behind it is ignored.
+
+    Returns
+    -------
+    Stamp, Join, Remark or End
+        What it says.
 
     Raises
     ------
@@ -159,7 +180,18 @@ class Pieces:
         self._parts: list[bytes] = []
 
     def put(self, message: bytes) -> bytes | None:
-        """Take one sealed piece; return the whole message when it was the last one."""
+        """Take one sealed piece; return the whole message when it was the last one.
+
+        Parameters
+        ----------
+        message : bytes
+            Content and CRC; padding behind it is ignored.
+
+        Returns
+        -------
+        bytes or None
+            The whole sealed message, None until its last piece.
+        """
         body = body_of(message)
         if len(body) < _PIECE.size:
             return None

@@ -110,6 +110,13 @@ class Intake:
     def take(self, piece: bytes | Discarded, monotonic_ns: int, unix_ns: int) -> None:
         """Take one unwrapped message, or what the unwrapper discarded, with its time of arrival.
 
+        Parameters
+        ----------
+        piece : bytes or Discarded
+            Content and CRC, or what was thrown away.
+        monotonic_ns, unix_ns : int
+            The host's clocks at its arrival.
+
         Raises
         ------
         BridgeError
@@ -131,7 +138,13 @@ class Intake:
             self._writer.append(piece)
 
     def tick(self, monotonic_ns: int, unix_ns: int) -> None:
-        """Do what is due by time: host stamps, remarks, and having the records on the disk."""
+        """Do what is due by time: host stamps, remarks, and having the records on the disk.
+
+        Parameters
+        ----------
+        monotonic_ns, unix_ns : int
+            The host's clocks now.
+        """
         self._now_ns = (monotonic_ns, unix_ns)
         if self._writer is None:
             return
@@ -141,7 +154,13 @@ class Intake:
         self._writer.sync(if_due=True)
 
     def remark(self, text: str) -> None:
-        """Write a remark into the recording, if there is one yet."""
+        """Write a remark into the recording, if there is one yet.
+
+        Parameters
+        ----------
+        text : str
+            For people.
+        """
         if self._writer is not None:
             self._writer.note(Remark(text))
 

@@ -133,6 +133,18 @@ class LockIn:
 def pack(kind: int, body: bytes) -> bytes:
     """Return a message of type ``kind`` without its envelope.
 
+    Parameters
+    ----------
+    kind : int
+        Of `MessageType`.
+    body : bytes
+        As its type asks.
+
+    Returns
+    -------
+    bytes
+        Content, without CRC.
+
     Raises
     ------
     MessageError
@@ -146,6 +158,16 @@ def pack(kind: int, body: bytes) -> bytes:
 def body_of(message: bytes) -> bytes:
     """Return the body of a sealed message, or of one padded with zeros in a recording.
 
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC, perhaps padded.
+
+    Returns
+    -------
+    bytes
+        The body.
+
     Raises
     ------
     MessageError
@@ -158,7 +180,18 @@ def body_of(message: bytes) -> bytes:
 
 
 def encode_note(text: str) -> bytes:
-    """Return a note of the board as it goes over the wire."""
+    """Return a note of the board as it goes over the wire.
+
+    Parameters
+    ----------
+    text : str
+        For people.
+
+    Returns
+    -------
+    bytes
+        Envelope included.
+    """
     return wrap(pack(MessageType.NOTE, text.encode()))
 
 
@@ -183,13 +216,35 @@ def encode_command(code: int, request: int = 0, arguments: bytes = b"") -> bytes
 
 
 def encode_reply(reply: Reply) -> bytes:
-    """Return a reply as it goes over the wire."""
+    """Return a reply as it goes over the wire.
+
+    Parameters
+    ----------
+    reply : Reply
+        What to answer.
+
+    Returns
+    -------
+    bytes
+        Envelope included.
+    """
     head = _COMMAND.pack(reply.request, reply.code, reply.status)
     return wrap(pack(MessageType.REPLY, head + reply.text.encode()))
 
 
 def encode_lock_in(result: LockIn) -> bytes:
-    """Return lock-in results as they go over the wire."""
+    """Return lock-in results as they go over the wire.
+
+    Parameters
+    ----------
+    result : LockIn
+        The sums.
+
+    Returns
+    -------
+    bytes
+        Envelope included.
+    """
     head = _LOCK_IN.pack(
         result.stream, result.index, result.length, result.channel, result.shift, len(result.lines)
     )
@@ -199,6 +254,16 @@ def encode_lock_in(result: LockIn) -> bytes:
 
 def parse_message(message: bytes) -> Note | Command | Reply | LockIn:
     """Return what a sealed message of one of these four types says.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC.
+
+    Returns
+    -------
+    Note, Command, Reply or LockIn
+        What it says.
 
     Raises
     ------

@@ -72,7 +72,13 @@ class StreamOrder(Generic[T]):
         return self._late(index, length, frame, message)
 
     def flush(self) -> list[T | Gap | Discarded]:
-        """Give out everything held, with the gaps between."""
+        """Give out everything held, with the gaps between.
+
+        Returns
+        -------
+        list of T or Gap
+            In order.
+        """
         out: list[T | Gap | Discarded] = []
         while self._held:
             out += self._release()

@@ -37,10 +37,27 @@ class ByteSource(Protocol):
     name: str
 
     def read(self) -> bytes:
-        """Return what has arrived, waiting a moment for the first byte."""
+        """Return what has arrived, waiting a moment for the first byte.
+
+        Returns
+        -------
+        bytes
+            Empty where nothing came.
+        """
 
     def write(self, data: bytes) -> bool:
-        """Send bytes; False where the port cannot be written."""
+        """Send bytes; False where the port cannot be written.
+
+        Parameters
+        ----------
+        data : bytes
+            To send.
+
+        Returns
+        -------
+        bool
+            True if they are on their way.
+        """
 
     def close(self) -> None:
         """Close it."""
@@ -55,7 +72,13 @@ class PortInfo:
 
 
 def list_ports() -> list[PortInfo]:
-    """Return the serial ports of this computer, sorted by name."""
+    """Return the serial ports of this computer, sorted by name.
+
+    Returns
+    -------
+    list of PortInfo
+        Empty where there are none.
+    """
     from serial.tools.list_ports import comports
 
     return sorted(
@@ -83,6 +106,11 @@ class Port:
     def read(self) -> bytes:
         """Return what has arrived, waiting a moment for the first byte.
 
+        Returns
+        -------
+        bytes
+            Empty where nothing came.
+
         Raises
         ------
         PortLostError
@@ -101,7 +129,18 @@ class Port:
         return int(self._serial.in_waiting)
 
     def write(self, data: bytes) -> bool:
-        """Send bytes; return False where the port cannot be written."""
+        """Send bytes; return False where the port cannot be written.
+
+        Parameters
+        ----------
+        data : bytes
+            To send.
+
+        Returns
+        -------
+        bool
+            True if they are on their way.
+        """
         try:
             self._serial.write(data)
         except _failures():

@@ -172,7 +172,18 @@ class RecordFile:
         return record[:length]
 
     def counts(self, records: NDArray[np.uint8]) -> NDArray[Any]:
-        """Return the counts of full records, shape (records · slots, channels), int16 or int32."""
+        """Return the counts of full records, shape (records · slots, channels), int16 or int32.
+
+        Parameters
+        ----------
+        records : ndarray of uint8, shape (n, record_bytes)
+            Samples records.
+
+        Returns
+        -------
+        ndarray, shape (n · slots, channels)
+            int16 or int32; unfilled slots included.
+        """
         room = self.slots * self.channels * self.width
         payload = records[:, HEADER.itemsize : HEADER.itemsize + room]
         if self.width == 3:

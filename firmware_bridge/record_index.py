@@ -54,7 +54,13 @@ class RecordIndex:
         self._flagged: list[NDArray[np.int64]] = []
 
     def add(self, chunk: Chunk) -> None:
-        """Take the samples records of one chunk."""
+        """Take the samples records of one chunk.
+
+        Parameters
+        ----------
+        chunk : Chunk
+            The next one.
+        """
         rows = chunk.samples
         if not rows.size:
             return
@@ -100,7 +106,13 @@ class RecordIndex:
         return np.concatenate([*self._flagged, np.zeros(0, np.int64)])
 
     def streams(self) -> list[int]:
-        """Return the stream ids in the order of their first records."""
+        """Return the stream ids in the order of their first records.
+
+        Returns
+        -------
+        list of int
+            Stream ids.
+        """
         runs = self._all()
         ids, first = np.unique(runs["stream"], return_index=True)
         return [int(ids[k]) for k in np.argsort(first)]
@@ -111,7 +123,18 @@ class RecordIndex:
         return self._runs[0] if self._runs else np.zeros(0, RUN)
 
     def placed(self, stream: int) -> Placed:
-        """Return the runs of one stream in order, each sample once."""
+        """Return the runs of one stream in order, each sample once.
+
+        Parameters
+        ----------
+        stream : int
+            Stream id.
+
+        Returns
+        -------
+        Placed
+            Its runs.
+        """
         runs = self._all()
         runs = runs[runs["stream"] == stream]
         ends = runs["index"] + lengths(runs, self._slots).astype(np.uint64)
@@ -140,6 +163,19 @@ class RecordIndex:
 
 
 def lengths(runs: NDArray[Any], slots: int) -> NDArray[np.int64]:
-    """Return the number of samples in each run."""
+    """Return the number of samples in each run.
+
+    Parameters
+    ----------
+    runs : ndarray of RUN
+        Runs.
+    slots : int
+        Samples in a full record.
+
+    Returns
+    -------
+    ndarray of int
+        Samples.
+    """
     samples: NDArray[np.int64] = (runs["records"] - 1) * slots + runs["last"]
     return samples

@@ -17,6 +17,7 @@ from firmware_bridge.trace import Channel, Gap, Recording, Span
 __all__ = ["MfrRecording", "open_mfr"]
 
 _NEAR = 16384  # samples
+_LENGTH_MAX = 1 << 53  # indices and lengths stay exact as int64 and as float64
 
 
 class MfrRecording(Recording):
@@ -121,6 +122,10 @@ class MfrRecording(Recording):
                 if end > reached:
                     gaps.append(Gap(reached, end - reached))
                     reached = end
+            if reached > _LENGTH_MAX:
+                raise RecordingError(
+                    f"{self.file.path} spans {reached} samples, more than can be true"
+                )
             placed.append(runs)
         if not placed:
             raise RecordingError(f"{self.file.path} holds no sample")
@@ -149,7 +154,20 @@ class MfrRecording(Recording):
         return [text for is_so, text in said if is_so]
 
     def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
-        """Return samples ``start`` to ``stop`` (not included) of some channels; see `Recording`."""
+        """Return samples ``start`` to ``stop`` (not included) of some channels; see `Recording`.
+
+        Parameters
+        ----------
+        channels : sequence of int
+            Positions in ``self.channels``.
+        start, stop : int
+            Grid indices.
+
+        Returns
+        -------
+        Span
+            Values and how many are over-range.
+        """
         wanted = list(channels)
         values = np.full((stop - start, len(wanted)), np.nan)
         over_range = 0

@@ -66,6 +66,16 @@ class Header:
 def encode_header(header: Header) -> bytes:
     """Return the bytes that a recording begins with.
 
+    Parameters
+    ----------
+    header : Header
+        What to say.
+
+    Returns
+    -------
+    bytes
+        A multiple of 64 long, CRC included.
+
     Raises
     ------
     MessageError

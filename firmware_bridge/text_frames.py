@@ -61,7 +61,20 @@ class TextFramer:
         self._rest, self._is_first = b"", True
 
     def feed(self, data: bytes, now_s: float) -> list[bytes | Discarded]:
-        """Return the messages that ``data``, received at ``now_s``, completes."""
+        """Return the messages that ``data``, received at ``now_s``, completes.
+
+        Parameters
+        ----------
+        data : bytes
+            Cut anywhere.
+        now_s : float
+            The host's clock at its arrival [s].
+
+        Returns
+        -------
+        list of bytes or Discarded
+            Sealed messages, and what was thrown away.
+        """
         *lines, self._rest = _ENDS.split(self._rest + data)
         out: list[bytes | Discarded] = []
         if len(self._rest) > _LINE_MAX:
@@ -77,13 +90,30 @@ class TextFramer:
         return out + self.tick(now_s)
 
     def tick(self, now_s: float) -> list[bytes | Discarded]:
-        """Return the frame that is due by time, so that one leaves twice a second and more."""
+        """Return the frame that is due by time, so that one leaves twice a second and more.
+
+        Parameters
+        ----------
+        now_s : float
+            The host's clock [s].
+
+        Returns
+        -------
+        list of bytes or Discarded
+            As from `feed`.
+        """
         if self._rows and now_s - self._begun_s >= _FRAME_S:
             return self.flush()
         return []
 
     def flush(self) -> list[bytes | Discarded]:
-        """Return what is waiting, framed."""
+        """Return what is waiting, framed.
+
+        Returns
+        -------
+        list of bytes or Discarded
+            As from `feed`.
+        """
         if self._announcement is None or not self._rows:
             return []
         scaled = np.rint(np.array(self._rows) * self._factor)

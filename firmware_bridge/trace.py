@@ -115,7 +115,13 @@ class Trace:
     over_range: int = 0
 
     def times_s(self) -> NDArray[np.float64]:
-        """Return the times of the values [s], 0 at the recording's first sample."""
+        """Return the times of the values [s], 0 at the recording's first sample.
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            Times [s].
+        """
         return (self.start_index + np.arange(self.values.size)) / self.rate_hz
 
 
@@ -310,7 +316,18 @@ class Recording(ABC):
             yield Block(first, span.values, span.over_range)
 
     def span(self, from_s: float | None = None, to_s: float | None = None) -> tuple[int, int]:
-        """Return the grid indices (start, stop) of the samples with ``from_s`` ≤ t < ``to_s``."""
+        """Return the grid indices (start, stop) of the samples with ``from_s`` ≤ t < ``to_s``.
+
+        Parameters
+        ----------
+        from_s, to_s : float, optional
+            Times [s]; by default the whole recording.
+
+        Returns
+        -------
+        tuple of (int, int)
+            start and stop, start < stop.
+        """
         start = 0 if from_s is None else max(0, self._ceil(from_s))
         stop = self.length if to_s is None else min(self.length, self._ceil(to_s))
         if start >= stop:

@@ -58,6 +58,11 @@ class Writer:
     def append(self, message: bytes) -> None:
         """Append one sealed message, in one record or, where it is longer, in several.
 
+        Parameters
+        ----------
+        message : bytes
+            Content and CRC.
+
         Raises
         ------
         DeviceFailedError
@@ -74,7 +79,13 @@ class Writer:
             self.flush()
 
     def note(self, note: HostNote) -> None:
-        """Append a note of the host."""
+        """Append a note of the host.
+
+        Parameters
+        ----------
+        note : Stamp, Join, Remark or End
+            What to write.
+        """
         self.append(seal_host_note(note))
 
     def flush(self) -> None:

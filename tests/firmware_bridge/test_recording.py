@@ -157,6 +157,13 @@ def test_every_cut_of_the_tail_still_opens(written):
         assert recording.length == 40 - 10 * -(-cut // record)
 
 
+def test_indices_that_cannot_be_true_are_refused(written):
+    path = written([frame(counts(10), 0), frame(counts(10), 2**63)])
+    with pytest.raises(RecordingError) as error:
+        open_mfr(path)
+    assert str(error.value) == f"{path} spans {2**63 + 10} samples, more than can be true"
+
+
 def test_a_newer_format_is_refused_by_name(tmp_path):
     data = bytearray(encode_header(Header(announced())))
     struct.pack_into("<H", data, 8, 2)

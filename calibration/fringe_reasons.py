@@ -52,7 +52,8 @@ def _undetermined(
 ) -> list[str]:
     """Return why a depth is not determined."""
     deepest = max(depth + 3.0 * u for depth, u in depths)
-    worst = 0.1 if prior is None else 0.3  # with known extremes a small line is a weak one, no more
+    # with extremes known, or swept over, a small line is a weak one and no more
+    worst = 0.1 if prior is None and drift_rad < 2.5 else 0.3
     if prior is None and deepest < 1.0 and drift_rad < 2.5:
         return [_NOT_DETERMINED.format(moved=drift_rad)]
     out = []

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from calibration.bessel_table import bessel_rows, bessel_table
 from calibration.harmonic_blocks import HarmonicBlocks, lay_blocks
+from calibration.tone_chain import chain_tones, working_by_regression
 
 __all__ = ["FringeStart", "find_starts"]
 
@@ -263,10 +264,32 @@ def find_starts(
         highest = min(max(int(np.pi / turn * 0.96), 1), _HIGHEST)
         harmonics = blocks.harmonics(turn, centre, highest)
         options.append(_options(blocks, harmonics, min(0.95 * np.pi / turn, 330.0), extremes))
-    starts: list[FringeStart] = []
+    starts = _from_chains(blocks, turns, centre, options, known) if len(turns) > 1 else []
     for choice in _choices(options):
         starts += _from_choice(blocks, choice, known, extremes)
     return starts[:48]
+
+
+def _from_chains(
+    blocks: HarmonicBlocks,
+    turns: NDArray[np.float64],
+    centre: float,
+    options: list[list[tuple[_Line, float]]],
+    known: tuple[float, float] | None,
+) -> list[FringeStart]:
+    """Return starts for several deep lines, found one after another."""
+    first = [
+        (place, complex(depth * np.exp(1j * line.phase)))
+        for place, own in enumerate(options)
+        for line, depth in own[:3]
+        if depth > 0.7
+    ]
+    out = []
+    for chain in chain_tones(blocks, turns, centre, first) if first else []:
+        offset, half_span, working = working_by_regression(blocks, turns, centre, chain.phasors)
+        offset, half_span = known or (offset, half_span)
+        out.append(FringeStart(offset, half_span, chain.phasors, blocks.middle, working))
+    return out
 
 
 def _choices(options: list[list[tuple[_Line, float]]]) -> list[list[tuple[_Line, float]]]:
@@ -276,12 +299,12 @@ def _choices(options: list[list[tuple[_Line, float]]]) -> list[list[tuple[_Line,
     """
     keep = {1: 8, 2: 4, 3: 3}.get(len(options), 2 if len(options) < 5 else 1)
     together = [o[:keep] for o in options]
-    choices = [list(c) for c in itertools.islice(itertools.product(*together), 27)]
+    choices = []
     if len(options) > 1:
         for place, own in enumerate(options):
             rest = [(o[0][0], 0.0) for o in options]
             choices += [[*rest[:place], option, *rest[place + 1 :]] for option in own[:4]]
-    return choices
+    return choices + [list(c) for c in itertools.islice(itertools.product(*together), 27)]
 
 
 def _from_choice(

@@ -91,8 +91,10 @@ def test_several_lines_at_once():
             assert abs(np.angle(np.exp(1j * (phase.magnitude - p)))) < 5 * phase.u_magnitude
 
 
-@pytest.mark.parametrize("depths", [(4.0, 1.5), (0.3, 6.0), (2.5, 2.0)])
-def test_two_deep_tones_from_the_record_alone(depths):
+@pytest.mark.parametrize(
+    "depths", [(4.0, 1.5), (0.3, 6.0), (2.5, 2.0), (12.0, 11.0), (5.5, 11.5, 0.2)]
+)
+def test_deep_tones_from_the_record_alone(depths):
     for seed in range(2):
         volts, f, _, _ = record(seed, depths, n=10_000)
         fit = fit_driven_fringe_si(volts, RATE_HZ, f)

@@ -234,3 +234,24 @@ def test_refused():
         symmetric(np.arange(10.0), 0.99)
     with pytest.raises(MetroError, match="p must be > 0 and < 1, got 2"):
         shortest(np.arange(10.0), 2)
+
+
+def test_gum_h1_with_its_second_order_terms():
+    """JCGM 100:2008, H.1.7: 11.7 nm and 1.7 nm raise 32 nm to 34 nm (from memory; 33.8 computed)."""
+    inputs = [
+        Input("length of the standard", 50.000623e-3, 25e-9),
+        Input("comparison", 215e-9, 9.7e-9),
+        Input("δα", 0.0, 1e-6 / math.sqrt(3), "rectangular"),
+        Input("θ", -0.1, 0.41),
+        Input("α_S", 11.5e-6, 1.2e-6),
+        Input("δθ", 0.0, 0.05 / math.sqrt(3), "rectangular"),
+    ]
+
+    def length(standard, difference, delta_alpha, theta, alpha, delta_theta):
+        return standard + difference - standard * (delta_alpha * theta + alpha * delta_theta)
+
+    check = linear_result_holds(length, inputs, unit="m", seed=10)
+    assert check.linear.u_magnitude == pytest.approx(31.7e-9, abs=0.1e-9)
+    assert check.simulation.u == pytest.approx(33.8e-9, abs=0.15e-9)
+    assert not check.holds
+    assert "nm (low) and" in check.reason

@@ -131,14 +131,3 @@ class WireBoard:
         with contextlib.suppress(OSError):
             self.announce()
             self.send(frames, paced=paced)
-
-    def start(self, frames, *, paced=False):
-        """The same in a thread of its own."""
-        self._thread = threading.Thread(
-            target=self.run, args=(frames,), kwargs={"paced": paced}, daemon=True
-        )
-        self._thread.start()
-
-    def stop(self):
-        self._stop.set()
-        self._thread.join()

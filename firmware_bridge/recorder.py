@@ -108,6 +108,8 @@ def record(
         raise BridgeError(f"{path} exists; --overwrite replaces it")
     source = open_port(port, baud) if isinstance(port, str) else port
     info = {"port": source.name, "source": "text" if text else "frames"}
+    if text and rate_hz is None:
+        info["rate"] = "by the host's clock"
     intake = Intake(path, info=info, duration_s=duration_s, overwrite=overwrite)
     framer = TextFramer(secrets.randbits(32), rate_hz) if text else None
     stop = stop or threading.Event()

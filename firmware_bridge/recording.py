@@ -149,6 +149,7 @@ class MfrRecording(Recording):
             (self.duplicates, f"{self.duplicates} records were there twice"),
             (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
             (len(self._joins) > 1, "the board was restarted or reconnected"),
+            ("rate" in self.header.info, f"the rate is {self.header.info.get('rate')}"),
             (self.header.announcement.simulated, "recorded from a simulated board"),
         ]
         return [text for is_so, text in said if is_so]

@@ -275,3 +275,17 @@ def test_lines_of_numbers_become_a_recording(pty, tmp_path, background):
     recording = open_mfr(tmp_path / "a.mfr")
     np.testing.assert_array_equal(recording.trace("1").values, np.arange(50))
     np.testing.assert_allclose(recording.trace("2").values, np.arange(50) / 4, atol=1e-12)
+
+
+def test_a_rate_by_the_hosts_clock_is_remarked(pty, tmp_path, background):
+    def send():
+        for k in range(2000):
+            pty.send(b"%d\n" % k)
+            time.sleep(0.01)
+
+    background(send)
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=1.5, text=True)
+    recording = open_mfr(tmp_path / "a.mfr")
+    assert recording.remarks == ["the rate is by the host's clock"]
+    assert 30 < recording.rate_hz < 100  # sleeps of 10 ms on a loaded machine
+    assert summary.samples == round(1.5 * recording.rate_hz)

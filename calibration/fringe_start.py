@@ -264,7 +264,13 @@ def find_starts(
         highest = min(max(int(np.pi / turn * 0.96), 1), _HIGHEST)
         harmonics = blocks.harmonics(turn, centre, highest)
         options.append(_options(blocks, harmonics, min(0.95 * np.pi / turn, 330.0), extremes))
-    starts = _from_chains(blocks, turns, centre, options, known) if len(turns) > 1 else []
+    starts: list[FringeStart] = []
+    if len(turns) > 1:
+        long = lay_blocks(
+            values, max(blocks.values.shape[1], min(len(values) / 4.0, 16384.0)), period
+        )
+        for laid in (long, blocks):  # long ones tell mixed tones apart, short ones follow a drift
+            starts += _from_chains(laid, turns, centre, options, known)
     for choice in _choices(options):
         starts += _from_choice(blocks, choice, known, extremes)
     return starts[:48]
@@ -281,7 +287,7 @@ def _from_chains(
     first = [
         (place, complex(depth * np.exp(1j * line.phase)))
         for place, own in enumerate(options)
-        for line, depth in own[:3]
+        for line, depth in own[:4]
         if depth > 0.7
     ]
     out = []

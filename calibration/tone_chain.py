@@ -17,7 +17,8 @@ from calibration.harmonic_blocks import HarmonicBlocks
 __all__ = ["Chain", "chain_tones", "working_by_regression"]
 
 _HIGHEST = 200
-_BEAM = 4
+_BEAM = 6
+_ROUNDS = 3
 _MOST_CELLS = 4_000_000
 
 
@@ -141,7 +142,7 @@ def chain_tones(
     Returns
     -------
     list of Chain
-        At most four, the best first.
+        At most six, the best first.
     """
     step = max(math.ceil(blocks.values.size / _MOST_CELLS), len(blocks.middle) // 24, 1)
     thin = slice(None, None, step)
@@ -155,7 +156,26 @@ def chain_tones(
         longer = [chain for known in beam for chain in _next(few, turns, centre, known)]
         longer.sort(key=lambda chain: -chain.score)
         beam = _different(longer)[:_BEAM]
-    return beam
+    again = [_again(few, turns, centre, chain) for chain in beam]
+    again.sort(key=lambda chain: -chain.score)
+    return _different(again)
+
+
+def _again(
+    blocks: HarmonicBlocks, turns: NDArray[np.float64], centre: float, chain: Chain
+) -> Chain:
+    """Return the chain with every line found again in what all the others leave."""
+    for _ in range(_ROUNDS):
+        before = chain.score
+        for line in chain.found:
+            phasors = chain.phasors.copy()
+            phasors[line] = 0.0
+            others = tuple(other for other in chain.found if other != line)
+            best = _next(blocks, turns, centre, Chain(phasors, others, 0.0))
+            chain = max([chain, *best], key=lambda one: one.score)
+        if chain.score < 1.001 * before:
+            break
+    return chain
 
 
 def _different(chains: list[Chain]) -> list[Chain]:

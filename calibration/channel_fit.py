@@ -42,6 +42,8 @@ class ChannelFit:
         Variance of each line over that of a lone line in the same number of samples.
     used : int
         Samples used.
+    drift : ndarray, shape (n_drift,)
+        Coefficients of the drift, offset first.
     """
 
     coefficients: NDArray[np.complex128]
@@ -50,6 +52,7 @@ class ChannelFit:
     noise: tuple[LineNoise, ...]
     inflation: NDArray[np.float64]
     used: int
+    drift: NDArray[np.float64]
 
     def line_covariance(self, line: int) -> NDArray[np.float64]:
         """Return the covariance of a line's real and imaginary part, shape (2, 2)."""
@@ -103,6 +106,7 @@ def fit_channel(
         noise,
         0.25 * phasors.used * (diagonal[:lines] + diagonal[r : r + lines]),
         phasors.used,
+        fit.drift,
     )
 
 

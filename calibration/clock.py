@@ -21,6 +21,7 @@ __all__ = ["Followed", "combine_steps", "follow_phases"]
 _FOLLOWED = 4.0
 _DOUBTFUL = 2.0
 _ROUNDS = 12
+_SMALL_TURN = 1e-3
 _GROUPS = 32
 _IN_PHASE = 0.9
 _FEWEST_BLOCKS = 4
@@ -141,7 +142,9 @@ def follow_phases(
         step, covariance = combine_steps(fits)
         course = course.moved(course.theta + step)
         u = np.sqrt(np.diag(covariance))
-        if (np.abs(step) <= np.maximum(1e-3 * u, 1e-13)).all():
+        # A step that turns no phase by a thousandth of a radian leaves a millionth behind.
+        turned = np.abs(step) * np.abs(course.scales).max(axis=1)
+        if (np.abs(step) <= 1e-3 * u).all() or (turned < _SMALL_TURN).all():
             break
     dof = float(max(noise.dof for fit in fits for noise in fit.noise))
     return Followed(course, covariance, dof, np.abs(course.theta) > _FOLLOWED * u)

@@ -11,21 +11,20 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.line_result import FittedChannel
-from calibration.survey import Survey
+from calibration.survey import MAINS_ORDERS, Survey
 
-__all__ = ["Doubts", "is_clipped"]
+__all__ = ["LEAST_SNR", "Doubts", "is_clipped"]
 
-_LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
+LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
 _LEAST_CYCLES = 4.0
 _CROWDED = 1.5  # bins of 1/T: nearer, two lines share their amplitude as they please
 _MAINS_WANDER = 1e-3  # of the mains frequency; grids stay within 0.05 Hz in 50 Hz nearly always
-_MAINS_ORDERS = 10  # pick-up of higher harmonics is rare and weak
 _MAINS_SHARE = 1e-3  # of the line: a smaller pick-up does not matter beside drive and ADC
 _SEEN = 20.0  # power over floor from which a peak is there: e^−20 in noise
 _ALIASED = 1.5  # variance over that of a lone line in as many samples without gaps
 _UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 _MODULATED = 0.03  # rms change of the amplitude or phase, relative or rad
-_BY_CHANCE = 1e-6
+_BY_CHANCE = 1e-5
 _CODES_LOOKED_AT = 1 << 16
 
 
@@ -93,7 +92,7 @@ class Doubts:
         own = float(self.frequencies_hz[line])
         order = max(1, round(own / self.mains_hz))
         near = max(_CROWDED / self.span_s, _MAINS_WANDER * own)
-        if order > _MAINS_ORDERS or abs(own - order * self.mains_hz) >= near:
+        if order > MAINS_ORDERS or abs(own - order * self.mains_hz) >= near:
             return None
         if order == 1:
             return f"on the mains ({self.mains_hz:g} Hz): pick-up cannot be told from the line"
@@ -113,7 +112,7 @@ class Doubts:
             return None
         bin_hz = self.rate_hz / survey.length
         levels = []
-        for other in range(1, _MAINS_ORDERS + 1):
+        for other in range(1, MAINS_ORDERS + 1):
             place = other * self.mains_hz / bin_hz
             apart = np.abs(self.frequencies_hz / bin_hz - place).min()
             if other == order or apart < 9 or not 9 <= place < len(survey.power) - 5:
@@ -159,9 +158,9 @@ class Doubts:
         phasor = channel.steady(line)[0]
         floor = channel.density(line, self.rate_hz) / np.sqrt(channel.fit.used / self.rate_hz)
         # Rounding alone leaves a floor of 1e-16 of the line, never a line of 5 times the floor.
-        if abs(phasor) > _LEAST_SNR * floor:
+        if abs(phasor) > LEAST_SNR * floor:
             return None
-        return f"too weak: signal to noise {abs(phasor) / floor if floor else 0:.2g}, {_LEAST_SNR:g} is needed"
+        return f"too weak: signal to noise {abs(phasor) / floor if floor else 0:.2g}, {LEAST_SNR:g} is needed"
 
     def _unsteady(self, channel: FittedChannel, line: int) -> str | None:
         noise = channel.fit.noise[line]

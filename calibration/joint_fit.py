@@ -7,6 +7,7 @@ products over blocks; a sample that is missing takes its own row out of them.
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -229,6 +230,38 @@ def _normal_equations(
     return gram, np.concatenate([values.real, values.imag, drift])
 
 
+def _block_turns(phasors: BlockPhasors) -> NDArray[np.complex128]:
+    """Return the carriers at the start of each block, shape (n_blocks, n_carriers)."""
+    return _turns(phasors.cycles.tobytes(), phasors.block, phasors.numbers.tobytes())
+
+
+# A fit asks for the same tables several times over; they are small beside the recording.
+@lru_cache(maxsize=8)
+def _turns(cycles: bytes, block: int, numbers: bytes) -> NDArray[np.complex128]:
+    starts = np.frombuffer(numbers, dtype=np.int64) * block
+    return np.asarray(np.exp(1j * start_phases(np.frombuffer(cycles), starts)))
+
+
+def _carrier_moments(
+    phasors: BlockPhasors,
+) -> tuple[NDArray[np.complex128], NDArray[np.complex128], NDArray[np.float64]]:
+    """Return over one block, for p = 0, 1, 2: Σ u^p·e_k·e_l and Σ u^p·conj(e_k)·e_l, Σ u^p·e_k, Σ u^p."""
+    return _moments(phasors.cycles.tobytes(), phasors.block)
+
+
+@lru_cache(maxsize=8)
+def _moments(
+    cycles: bytes, block: int
+) -> tuple[NDArray[np.complex128], NDArray[np.complex128], NDArray[np.float64]]:
+    n = np.arange(block)
+    u = (n - 0.5 * (block - 1)) / block
+    waves = np.exp(1j * start_phases(np.frombuffer(cycles), n))
+    powers = np.stack([np.ones_like(u), u, u * u])
+    weighted = powers[:, :, None] * waves
+    sums = np.stack([waves.T @ weighted, np.conj(waves.T) @ weighted])
+    return sums, powers @ waves, powers.sum(axis=1)
+
+
 @dataclass(frozen=True, slots=True)
 class _Blocks:
     """Regressors in block terms: in each, carriers from its start times value plus change·u."""
@@ -242,19 +275,11 @@ class _Blocks:
 
     @classmethod
     def of(cls, phasors: BlockPhasors, regressors: Regressors) -> "_Blocks":
-        starts = phasors.numbers * phasors.block
-        turns = np.exp(1j * start_phases(phasors.cycles, starts))[:, regressors.carrier]
+        turns = _block_turns(phasors)[:, regressors.carrier]
         factors = [turns * regressors.weights]
         if regressors.slopes is not None:
             factors.append(turns * regressors.slopes)
-        n = np.arange(phasors.block)
-        u = (n - 0.5 * (phasors.block - 1)) / phasors.block
-        waves = np.exp(1j * start_phases(phasors.cycles, n))
-        powers = np.stack([np.ones_like(u), u, u * u])
-        # Σ_j u^p e_k(j) e_l(j) and Σ_j u^p conj(e_k(j)) e_l(j), p = 0, 1, 2
-        both = np.stack([waves, np.conj(waves)])
-        sums = np.einsum("pn,snk,nl->spkl", powers, both, waves, optimize=True)
-        return cls(phasors, regressors, tuple(factors), sums, powers @ waves, powers.sum(axis=1))
+        return cls(phasors, regressors, tuple(factors), *_carrier_moments(phasors))
 
     def whole_gram(self) -> NDArray[np.float64]:
         """Return the normal matrix as if no sample were missing."""
@@ -314,8 +339,7 @@ class _Blocks:
             total += 0.5 * np.conj(amplitude) @ np.conj(self.sums[0, p])
         for q in range(2):
             total += drift[:, q, None] * np.conj(self.wave_moments[q])
-        starts = self.phasors.numbers * self.phasors.block
-        return np.asarray(total * np.exp(-1j * start_phases(self.phasors.cycles, starts)))
+        return np.asarray(total * np.conj(_block_turns(self.phasors)))
 
     def missing(self) -> Iterator[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]]:
         """Yield block rows, sample numbers and real regressors of the samples left out."""

@@ -5,6 +5,7 @@ another line or an unnamed tone sits in are left out.
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -73,12 +74,32 @@ def noise_bins(
     bins : ndarray of complex, shape (n_bins, lines)
         Scaled so that white noise of variance σ² has mean square σ².
     """
-    middles = phasors.middles
-    span = middles[-1] - middles[0] + phasors.block
+    span = float(phasors.middles[-1] - phasors.middles[0] + phasors.block)
+    middles, sums = _grouped(phasors.middles, residual[:, :lines])
     most = int(min(_MOST_BINS, max(1, 0.45 * span / phasors.block - 1)))
     offsets = np.concatenate([np.arange(-most, 0), np.arange(1, most + 1)])
-    turns = np.exp(-2j * np.pi * np.outer(offsets, (middles - middles[0]) / span))
-    return offsets, turns @ residual[:, :lines] / np.sqrt(phasors.used)
+    turns = _turns(most, ((middles - middles[0]) / span).tobytes())
+    return offsets, turns @ sums / np.sqrt(phasors.used)
+
+
+@lru_cache(maxsize=4)
+def _turns(most: int, places: bytes) -> NDArray[np.complex128]:
+    """Return e^(−2πi·j·x) for j = −most..−1, 1..most, shape (2·most, n_places)."""
+    first = np.exp(-2j * np.pi * np.frombuffer(places))
+    powers = np.cumprod(np.tile(first, (most, 1)), axis=0)
+    return np.concatenate([np.conj(powers[::-1]), powers])
+
+
+def _grouped(
+    middles: NDArray[np.float64], residual: NDArray[np.complex128]
+) -> tuple[NDArray[np.float64], NDArray[np.complex128]]:
+    """Add up neighbouring blocks: a 16th of a turn in the outermost bin costs 1 % of its power."""
+    size = len(middles) // (16 * _MOST_BINS)
+    if size < 2:
+        return middles, residual
+    edges = np.arange(0, len(middles), size)
+    counts = np.diff(np.append(edges, len(middles)))
+    return np.add.reduceat(middles, edges) / counts, np.add.reduceat(residual, edges)
 
 
 def measure_noise(

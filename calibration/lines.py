@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from calibration.channel_fit import fit_channel
 from calibration.clock import Followed
-from calibration.distrust import Doubts, is_clipped
+from calibration.distrust import LEAST_SNR, Doubts, is_clipped
 from calibration.errors import CalibrationError
 from calibration.line_fit import Line, LineFit
 from calibration.line_record import Found, LineRecord
@@ -165,7 +165,9 @@ def fit_lines_si(
         [is_clipped(channel) for channel in channels],
     )
     lines = [_line(fitted, found, doubts, k, free=free) for k in range(len(cycles))]
-    clock, clock_u = (np.nan, np.nan) if free else _clock(found)
+    # Lines that are lost in noise say nothing about the clock.
+    lost = all(line.snr_value < LEAST_SNR for line in lines)
+    clock, clock_u = (np.nan, np.nan) if free or lost else _clock(found)
     return LineFit(
         tuple(lines),
         clock,
@@ -209,6 +211,8 @@ def _checked_channels(values: NDArray[Any], drive: NDArray[Any] | None) -> list[
             raise CalibrationError(
                 f"{name} must have at least {_FEWEST_SAMPLES} values, got {len(channel)}"
             )
+        if not np.isfinite(channel[-_FEWEST_SAMPLES:]).all() and not np.isfinite(channel).any():
+            raise CalibrationError(f"{name}: no value is there, all are NaN")
     return channels
 
 

@@ -7,23 +7,33 @@ line. It costs one Fourier transform of at most 131 072 samples, whatever the le
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["SURVEYED", "Survey", "coarse_offset", "look", "nearest_peaks", "strong_tones"]
+__all__ = [
+    "MAINS_ORDERS",
+    "SURVEYED",
+    "Survey",
+    "coarse_offset",
+    "look",
+    "nearest_peaks",
+    "strong_tones",
+]
 
 SURVEYED = 1 << 17
 _LOBE = 4  # half width of the window's main lobe in bins
 _RANGE = 0.02  # boards on an RC oscillator are 1 % off
-# log(1 + power/floor) summed over the lines must grow by this much: at 10 000 places looked at, noise
-# alone does it with probability 1e4·e^−18, below 1e-3.
-_EVIDENCE = 18.0
-_CLEAR = 1000.0  # power over floor from which a peak's place is known to a few hundredths of a bin
+# log(1 + power/floor), summed over n lines, must be higher elsewhere by 1.5 + 1.8·√n: its standard
+# deviation in noise is 0.6·√n, and about 10 000 places are looked at.
+_EVIDENCE, _EVIDENCE_EACH = 1.5, 1.8
+_CLEAR = 60.0  # power over floor from which a peak's place is known to a tenth of a bin
 _TONE = 40.0  # power over floor from which a peak is a tone: e^−40 in noise
 _LEAK = 0.1  # a tone counts if it leaks more than this part of a line's u into it
 _MOST_TONES = 8
+MAINS_ORDERS = 10  # pick-up of higher mains harmonics is rare and weak
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,19 +104,20 @@ def look(values: NDArray[Any]) -> Survey | None:
     good = np.isfinite(stretch)
     if good.sum() < max(16, 0.2 * length):
         return None
-    n = np.arange(length)
     if not good.all():
+        n = np.arange(length)
         stretch = np.interp(n, n[good], stretch[good])
-    stretch = stretch - np.polyval(np.polyfit(n / length, stretch, 1), n / length)
-    turns = 2 * np.pi * (n + 0.5) / length
-    window = (
-        0.35875
-        - 0.48829 * np.cos(turns)
-        + 0.14128 * np.cos(2 * turns)
-        - 0.01168 * np.cos(3 * turns)
-    )
+    window = _window(length)
+    stretch = stretch - float(window @ stretch) / float(window.sum())
     power = np.abs(np.fft.rfft(window * stretch)) ** 2
     return Survey(power, _floor(power), length, float(window.sum()), float((window**2).sum()))
+
+
+@lru_cache(maxsize=2)
+def _window(length: int) -> NDArray[np.float64]:
+    turns = 2 * np.pi * (np.arange(length) + 0.5) / length
+    terms = zip(range(4), (0.35875, -0.48829, 0.14128, -0.01168), strict=True)
+    return np.asarray(sum(weight * np.cos(k * turns) for k, weight in terms))
 
 
 def _floor(power: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -143,32 +154,44 @@ def coarse_offset(surveys: Sequence[Survey], cycles: NDArray[np.float64], mains:
     highest = float(cycles.max()) * length
     reach = min(_RANGE * highest, 0.98 * (0.5 * length - highest))
     steps = np.arange(-np.floor(2 * reach), np.floor(2 * reach) + 1) / 2 / highest
-    evidence = np.zeros(len(steps))
-    for survey in surveys:
-        for line in cycles * length:
-            places = line * (1 + steps)
-            gain = np.log1p(survey.excess(places))
-            own = np.abs(places - line) <= _LOBE
-            evidence += np.where(_on_mains(places, mains * length) & ~own, 0.0, gain)
-    near = np.abs(steps) * highest <= _LOBE
+    gains = np.array([_gains(s, line, steps, mains) for s in surveys for line in cycles * length])
+    evidence = gains.sum(axis=0)
+    near = np.flatnonzero(np.abs(steps) * highest <= _LOBE)
+    at_home = int(near[evidence[near].argmax()])
     best = int(evidence.argmax())
-    if evidence[best] < evidence[near].max() + _EVIDENCE:
-        best = int(np.flatnonzero(near)[evidence[near].argmax()])
-    return _refined(surveys, cycles, float(steps[best]))
+    seen = np.log1p(_TONE)
+    more = (gains[:, best] > seen).sum() > (gains[:, near].max(axis=1) > seen).sum()
+    needed = _EVIDENCE + _EVIDENCE_EACH * np.sqrt(len(gains))
+    if not more or evidence[best] < evidence[at_home] + needed:
+        best = at_home
+    return _refined(surveys, cycles, float(steps[best]), mains)
+
+
+def _gains(
+    survey: Survey, line: float, steps: NDArray[np.float64], mains: float
+) -> NDArray[np.float64]:
+    """Return log(1 + power/floor) of a line at each offset; the mains is no evidence."""
+    places = line * (1 + steps)
+    gain = np.log1p(survey.excess(places))
+    own = np.abs(places - line) <= _LOBE
+    return np.where(_on_mains(places, mains * survey.length) & ~own, 0.0, gain)
 
 
 def _on_mains(places: NDArray[np.float64], mains: float) -> NDArray[np.bool_]:
     order = np.maximum(1.0, np.rint(places / mains))
-    return np.abs(places - order * mains) <= _LOBE + 1e-3 * places
+    return (np.abs(places - order * mains) <= _LOBE + 1e-3 * places) & (order <= MAINS_ORDERS)
 
 
-def _refined(surveys: Sequence[Survey], cycles: NDArray[np.float64], offset: float) -> float:
+def _refined(
+    surveys: Sequence[Survey], cycles: NDArray[np.float64], offset: float, mains: float
+) -> float:
     """Return the offset from the clearest peak; 0 where it is not clear or within 0.3 bins."""
     best, found = 0.0, 0.0
     for survey in surveys:
         for line in cycles * survey.length:
             crowd = np.abs(cycles * survey.length - line)
-            if (crowd[crowd > 0] < 2 * _LOBE).any():
+            on_mains = _on_mains(np.array([line]), mains * survey.length)[0]
+            if on_mains or (crowd[crowd > 0] < 2 * _LOBE).any():
                 continue
             place, excess = survey.peak(line * (1 + offset) - 2, line * (1 + offset) + 2)
             weight = line * np.sqrt(excess)  # what the peak knows about the offset

@@ -21,7 +21,7 @@ __all__ = ["choose_taps", "tap_response"]
 _ORDERS = (1, 2, 3, 4, 6, 8, 12, 16)
 _SEGMENTS = 8
 _SEGMENT_SAMPLES = 1 << 14
-_SEGMENT_ROWS = 2048
+_SEGMENT_ROWS = 1024
 # A filter of reach r loses r samples after each gap. In 1/f² noise no filter costs half the
 # information, so above this share lost a shorter filter is taken.
 _MOST_LOST = 0.4
@@ -161,8 +161,10 @@ def _lag_products(
             continue
         # Centred first: an offset far above the noise must not eat the digits of the products.
         lagged = lagged - lagged.mean()
-        basis, _ = np.linalg.qr(known)
-        lagged = lagged - basis @ (basis.T @ lagged)
+        # Twice, so that what rounding leaves of the lines is small against the noise too.
+        inverse = np.linalg.pinv(known.T @ known, rcond=1e-12, hermitian=True)
+        lagged = lagged - known @ (inverse @ (known.T @ lagged))
+        lagged = lagged - known @ (inverse @ (known.T @ lagged))
         total += lagged.T @ lagged
         rows += len(n) - known.shape[1]
     return total, rows

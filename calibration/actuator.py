@@ -6,13 +6,13 @@ from math import hypot, inf, sqrt
 import numpy as np
 
 from calibration import curvature
-from calibration.drive import terminal_factor
 from calibration.extremes import Extremes
 from calibration.readout import Readout
 from calibration.record import ActuatorEntry
 from calibration.slope_line import CombinedLine
 from calibration.term import Term, budget_of
 from metro.bench import Bench
+from metro.drive import terminal_factor
 from metro.measured import Measured
 
 __all__ = ["actuator_line"]

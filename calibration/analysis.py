@@ -17,7 +17,6 @@ import numpy as np
 from calibration import curvature
 from calibration.actuator import actuator_line
 from calibration.dark import dark_level
-from calibration.drive import is_driven, peak_factor
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
@@ -28,10 +27,11 @@ from calibration.record import ActuatorEntry, Calibration
 from calibration.scan import ScanFit, fit_scan
 from calibration.session import RoleRecord, Session
 from calibration.session_checks import cautions_of, checks_of, reasons_of, sign_reasons
-from calibration.slope_line import CombinedLine, SlopeLine, combine
+from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
 from calibration.term import Term, budget_of
 from calibration.working_point import PhaseRecord, invert_fringe
 from metro.bench import Bench
+from metro.drive import peak_factor
 from metro.measured import Measured
 
 __all__ = ["calibrate"]

@@ -14,7 +14,7 @@ from calibration.line_fit import Line
 from calibration.lines import fit_lines_si
 from calibration.readout import Readout
 from calibration.record import Calibration
-from calibration.rehearsal_script import Step, session_steps
+from calibration.rehearsal_script import LINES_S, Step, session_steps
 from firmware_bridge.opening import open_recording
 from firmware_bridge.simulated.bench import SimulatedBench
 from firmware_bridge.simulated.playing import record_in_memory, record_through_port
@@ -61,7 +61,7 @@ def rehearse(
     folder: Path,
     *,
     through_port: bool = True,
-    lines_s: float = 20.0,
+    lines_s: float = LINES_S,
     progress: Progress | None = None,
 ) -> Rehearsal:
     """Play one session and return its result beside the truth.

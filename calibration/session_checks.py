@@ -8,11 +8,11 @@ from typing import Any
 
 import numpy as np
 
-from calibration.drive import is_driven
 from calibration.line_fit import LineFit
 from calibration.record import ActuatorEntry
 from calibration.scan import ScanFit
 from calibration.session import Session
+from calibration.slope_line import is_driven
 from calibration.term import Term
 from calibration.working_point import PhaseRecord
 from metro.bench import Bench

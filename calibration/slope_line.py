@@ -7,6 +7,7 @@ photodiode without motion (volts per volt). The two together give both.
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from math import sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +17,9 @@ from calibration.line_fit import Line
 from calibration.pickup import Additive
 from calibration.working_point import SLOPE_SIGN, SlopeMeans
 
-__all__ = ["CombinedLine", "SlopeLine", "combine"]
+__all__ = ["CombinedLine", "SlopeLine", "combine", "is_driven"]
+
+DRIVEN_MIN = 10.0  # amplitude over u below which the drive does not hold the line at all
 
 FloatArray = NDArray[np.float64]
 
@@ -119,6 +122,14 @@ def combine(
     if rising and falling:
         return _both(rising, falling, swing_v)
     return _single(rising or falling, swing_v, additive)
+
+
+def is_driven(line: Line) -> bool:
+    """Return whether the line is in the recorded drive; true where no drive was recorded."""
+    if line.drive is None:
+        return True
+    u = sqrt(float(np.trace(line.drive.covariance)) / 2)
+    return bool(abs(line.drive.phasor) > DRIVEN_MIN * u)
 
 
 def _both(

@@ -14,6 +14,7 @@ import numpy as np
 
 from calibration.comparison import Comparison
 from calibration.rehearsal import rehearse
+from calibration.rehearsal_script import LINES_S
 from metro.bench import Bench
 from metro.output import table
 
@@ -62,7 +63,7 @@ def play_trials(
     seeds: Iterable[int],
     *,
     through_port: bool = False,
-    lines_s: float = 20.0,
+    lines_s: float = LINES_S,
     processes: int = 1,
     progress: Callable[[str], None] | None = None,
 ) -> Iterator[list[Comparison]]:

@@ -5,13 +5,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from metro.drive import peak_factor, point_factor
+
 if TYPE_CHECKING:
     from metro.bench import Bench
 
 __all__ = ["ASSUMED_Q", "Actuator"]
 
 ASSUMED_Q = 20.0  # of a mounted mirror on a piezo, where nothing is stated: common practice
-_READING = {"peak": 1.0, "peak-to-peak": 2.0, "rms": 0.5**0.5}
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,8 +67,8 @@ class Actuator:
             None if resonance is None else float(resonance.magnitude),
             bench.magnitude("actuator.q", ASSUMED_Q),
             None if limit is None else float(limit.magnitude),
-            _terminal_factor(bench),
-            _READING[bench.text("drive.reading") or "peak"],
+            abs(point_factor(bench)) or 1.0,
+            1.0 / peak_factor(bench),
         )
 
     def response(self, frequency_hz: float) -> float:
@@ -119,15 +120,3 @@ class Actuator:
             At ``[drive] point``, as ``[drive] reading`` says [V].
         """
         return terminals_v / self.terminal_factor * self.reading_factor
-
-
-def _terminal_factor(bench: Bench) -> float:
-    point = bench.text("drive.point") or "actuator terminals"
-    if point == "actuator terminals":
-        return 1.0
-    factor = abs(bench.magnitude("drive.amplifier_gain", 1.0))
-    if point == "generator setting" and bench.get("drive.assumed_load") is not None:
-        source_ohm = bench.magnitude("drive.assumed_load")  # also the generator's own impedance
-        load = bench.get("drive.load")
-        factor *= 2.0 if load is None else 2.0 * load.magnitude / (source_ohm + load.magnitude)
-    return factor or 1.0

@@ -113,7 +113,6 @@ KEYS: dict[str, Key] = {
     "fringe.low": Key("V", "0.44 V"),
     "fringe.high": Key("V", "9.69 V"),
     "fringe.drift": Key("1", '{ value = 0, u = "0.03%" }'),
-    "simulated.gain": Key("m/V", "35 nm/V"),
     "mains.frequency": Key("Hz", "50 Hz", minimum=40.0, maximum=70.0),
 }
 """Every key but those of ``[[line]]`` and ``[[motion]]``, as ``section.key``."""

@@ -30,11 +30,20 @@ __all__ = ["rehearse"]
     type=click.IntRange(min=1),
     help="Play this many sessions in memory, seeds counted up from --seed, and print the coverage.",
 )
+@click.option(
+    "--plan", "plan_file", metavar="FILE", help="Drives and duration from `midfringe plan`."
+)
 @bench_options
 @output_options("json", "overwrite")
 @click.option("--out", metavar="FOLDER", help="Where the files stay.  [default: rehearsal]")
 def rehearse(
-    bench: Bench, seed: int, trials: int | None, out: str | None, as_json: bool, overwrite: bool
+    bench: Bench,
+    seed: int,
+    trials: int | None,
+    plan_file: str | None,
+    out: str | None,
+    as_json: bool,
+    overwrite: bool,
 ) -> None:
     """Play a whole session on a simulated bench, through a real serial port.
 
@@ -44,26 +53,29 @@ def rehearse(
     """
     from calibration.rehearsal import rehearse as play
     from calibration.rehearsal_folder import comparison_document, leave, prepare, rehearsal_bench
-    from calibration.rehearsal_script import session_steps
+    from calibration.rehearsal_script import LINES_S, planned, session_steps
 
     played, text = rehearsal_bench(bench)
+    lines_s = LINES_S
+    if plan_file is not None:
+        played, lines_s = planned(played, plan_file)
     if trials is not None:
-        _run_trials(played, seed, trials, as_json=as_json)
+        _run_trials(played, lines_s, seed, trials, as_json=as_json)
         return
     folder = Path(out or "rehearsal")
     prepare(folder, overwrite=overwrite)
     with _progress(len(session_steps(played)) + 2) as step:
-        result = play(played, seed, folder, progress=step)
+        result = play(played, seed, folder, lines_s=lines_s, progress=step)
     document = comparison_document(result) | {"files": leave(result, folder, text)}
     click.echo(to_json(document) if as_json else _text(result, folder))
 
 
-def _run_trials(bench: Bench, seed: int, trials: int, *, as_json: bool) -> None:
+def _run_trials(bench: Bench, lines_s: float, seed: int, trials: int, *, as_json: bool) -> None:
     from calibration.trials import coverage_of, coverage_table, play_trials
 
     with _progress(trials) as step:
         seeds, processes = range(seed, seed + trials), min(trials, os.cpu_count() or 1)
-        played = play_trials(bench, seeds, processes=processes, progress=step)
+        played = play_trials(bench, seeds, lines_s=lines_s, processes=processes, progress=step)
         rows = coverage_of(list(played))
     document = {"seed": seed, "trials": trials, "coverage": [row.to_dict() for row in rows]}
     click.echo(to_json(document) if as_json else coverage_table(rows))

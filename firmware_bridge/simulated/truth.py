@@ -138,10 +138,7 @@ def _draw_actuator(bench: Bench, rng: np.random.Generator) -> dict[str, Any]:
     polarity = bench.magnitude("actuator.polarity", 1.0)
     pickup = complex(_draw(bench, "drive.pickup", rng, 0.0), _draw(bench, "drive.pickup", rng, 0.0))
     return {
-        "gain_m_per_v": arm_sign
-        * polarity
-        * bench.magnitude("simulated.gain", 35e-9)
-        * (1.0 + float(rng.uniform(-0.15, 0.15))),
+        "gain_m_per_v": arm_sign * polarity * abs(_draw(bench, "actuator.gain", rng)),
         "resonance_hz": bench.magnitude("actuator.resonance", 1800.0)
         * (1.0 + float(rng.uniform(-0.1, 0.1))),
         "quality": bench.magnitude("actuator.q", 20.0) * (1.0 + float(rng.uniform(-0.2, 0.2))),

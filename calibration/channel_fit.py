@@ -118,7 +118,10 @@ def _regressors(
 ) -> Regressors:
     regressors = Regressors.steady(phasors, drift_functions(phasors, order))
     if len(course.theta):
-        regressors.weights[:, :lines] = np.exp(1j * course.phase(phasors.middles))
+        # Within a block the carrier stands still while the line turns on: the block sees sinc of it.
+        turned = np.tensordot(course.theta, course.change(phasors.middles), axes=1) * phasors.block
+        seen = np.sinc(turned / (2 * np.pi))
+        regressors.weights[:, :lines] = seen * np.exp(1j * course.phase(phasors.middles))
     if len(phasors.cycles) > lines:
         return _with_wander(phasors, regressors, lines)
     return regressors

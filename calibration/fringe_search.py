@@ -19,7 +19,7 @@ __all__ = ["Found", "Prior", "descend", "search"]
 
 _THINNED = 24_000
 _RACE = 5_000
-_MOST_PIECES = 256
+_MOST_PIECES = 1024
 
 
 @dataclass(frozen=True)
@@ -256,7 +256,7 @@ def _refine(found: Found, prior: Prior | None) -> Found:
     """Return the fit with as many pieces of drift as the residuals ask for."""
     count = len(found.model.index)
     periods = float(found.model.turns.min()) * found.model.length / (2.0 * np.pi)
-    most = min(_MOST_PIECES, int(periods / 4.0), count // 40)
+    most = min(_MOST_PIECES, int(periods / 4.0), count // 20)
     pieces, misses = found.model.pieces, 0
     best = found
     while misses < 2:

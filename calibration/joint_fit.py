@@ -13,7 +13,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from calibration.phasors import BlockPhasors, start_phases
+from calibration.phasors import BlockPhasors, block_waves, start_phases
 
 __all__ = [
     "JointFit",
@@ -206,10 +206,9 @@ def residual_phasors(
     """
     blocks = _Blocks.of(phasors, regressors)
     model = blocks.model_phasors(fit)
-    for rows, n, table in blocks.missing():
+    for rows, waves, table in blocks.missing():
         lost = table @ np.concatenate([fit.coefficients.real, fit.coefficients.imag, fit.drift])
-        waves = np.exp(-1j * start_phases(phasors.cycles, n))
-        np.add.at(model, rows, -lost[:, None] * waves)
+        np.add.at(model, rows, -lost[:, None] * np.conj(waves))
     return np.asarray(phasors.sums - model)
 
 
@@ -255,11 +254,24 @@ def _moments(
 ) -> tuple[NDArray[np.complex128], NDArray[np.complex128], NDArray[np.float64]]:
     n = np.arange(block)
     u = (n - 0.5 * (block - 1)) / block
-    waves = np.exp(1j * start_phases(np.frombuffer(cycles), n))
+    waves = np.conj(block_waves(np.frombuffer(cycles), block))
     powers = np.stack([np.ones_like(u), u, u * u])
     weighted = powers[:, :, None] * waves
     sums = np.stack([waves.T @ weighted, np.conj(waves.T) @ weighted])
     return sums, powers @ waves, powers.sum(axis=1)
+
+
+@lru_cache(maxsize=4)
+def _missing(
+    cycles: bytes, block: int, touched: bytes, bits: bytes
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.complex128]]:
+    """Return block numbers, places in the block and carriers of the samples left out."""
+    numbers = np.frombuffer(touched, dtype=np.int64)
+    packed = np.frombuffer(bits, dtype=np.uint8).reshape(len(numbers), -1)
+    place, offset = np.nonzero(np.unpackbits(packed, axis=1, count=block) == 0)
+    lost = numbers[place]
+    waves = np.exp(1j * start_phases(np.frombuffer(cycles), lost * block + offset))
+    return lost, offset, waves
 
 
 @dataclass(frozen=True, slots=True)
@@ -341,26 +353,28 @@ class _Blocks:
             total += drift[:, q, None] * np.conj(self.wave_moments[q])
         return np.asarray(total * np.conj(_block_turns(self.phasors)))
 
-    def missing(self) -> Iterator[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]]:
-        """Yield block rows, sample numbers and real regressors of the samples left out."""
-        block = self.phasors.block
-        u = (np.arange(block) - 0.5 * (block - 1)) / block
-        rows = np.searchsorted(self.phasors.numbers, self.phasors.touched)
+    def missing(
+        self,
+    ) -> Iterator[tuple[NDArray[np.int64], NDArray[np.complex128], NDArray[np.float64]]]:
+        """Yield block rows, carriers and real regressors of the samples left out."""
+        phasors, block = self.phasors, self.phasors.block
         step = max(1, _MISSING_CHUNK // block)
-        for at in range(0, len(rows), step):
-            bits = np.unpackbits(self.phasors.masks[at : at + step], axis=1, count=block)
-            place, offset = np.nonzero(bits == 0)
-            row = rows[at : at + step][place]
-            n = self.phasors.numbers[row] * block + offset
-            yield row, n, self._table(row, n, u[offset])
+        for at in range(0, len(phasors.touched), step):
+            touched, bits = phasors.touched[at : at + step], phasors.masks[at : at + step]
+            lost, offset, waves = _missing(
+                phasors.cycles.tobytes(), block, touched.tobytes(), bits.tobytes()
+            )
+            row = np.searchsorted(phasors.numbers, lost)
+            yield row, waves, self._table(row, offset, waves)
 
     def _table(
-        self, row: NDArray[np.int64], n: NDArray[np.int64], u: NDArray[np.float64]
+        self, row: NDArray[np.int64], offset: NDArray[np.int64], waves: NDArray[np.complex128]
     ) -> NDArray[np.float64]:
         r = self.regressors
+        u = ((offset - 0.5 * (self.phasors.block - 1)) / self.phasors.block)[:, None]
         factor = r.weights[row]
         if r.slopes is not None:
-            factor = factor + r.slopes[row] * u[:, None]
-        g = np.exp(1j * start_phases(self.phasors.cycles, n))[:, r.carrier] * factor
-        drift = r.drift[row, :, 0] + r.drift[row, :, 1] * u[:, None]
+            factor = factor + r.slopes[row] * u
+        g = waves[:, r.carrier] * factor
+        drift = r.drift[row, :, 0] + r.drift[row, :, 1] * u
         return np.hstack([g.real, -g.imag, drift])

@@ -236,7 +236,10 @@ def _fit(
         level = low + (high - low) * (values - low - drift[0] * when) / span
         lower, upper, passes = _edges(level, noise, 0.0)
     low, high = -lower.value, upper.value
-    shape, shape_u = law_harmonics(level, passes, low, high)
+    reasons = _reasons(lower, upper, low, high, noise)
+    shape, shape_u = (
+        (np.zeros(0), np.zeros(0)) if reasons else law_harmonics(level, passes, low, high)
+    )
     var_low, dof_low = _variance(lower, together)
     var_high, dof_high = _variance(upper, together)
     total = var_low + var_high
@@ -250,5 +253,5 @@ def _fit(
         shape_u,
         (int(np.sum(lower.weight > 1e-3)), int(np.sum(upper.weight > 1e-3))),
         (float(drift[0]), float(drift[1])),
-        _reasons(lower, upper, low, high, noise) + _law_reasons(shape, shape_u),
+        reasons + _law_reasons(shape, shape_u),
     )

@@ -272,7 +272,7 @@ def _clocked(offset, seconds, frequencies, noise, drift=0.2e-6, seed=1):
     return values + noise * np.random.default_rng(seed).standard_normal(len(t))
 
 
-@pytest.mark.parametrize("offset", [1e-2, -1.7e-2, 1e-4])
+@pytest.mark.parametrize("offset", [1e-2, -1.7e-2, 1e-4, 1e-5, 2e-6])
 @pytest.mark.parametrize("frequencies", [[1000.0], [31.7, 87.1, 1000.0]])
 def test_a_clock_that_is_off_and_drifts_costs_no_amplitude(offset, frequencies):
     fit = fit_lines_si(_clocked(offset, 600, frequencies, 0.01), RATE, frequencies)

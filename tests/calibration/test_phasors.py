@@ -135,4 +135,4 @@ def test_phases_far_into_a_recording_are_exact():
 
 def test_block_length_is_a_power_of_two_that_fits_the_cache():
     lengths = [block_length(n) for n in (10, 300, 1000, 40_000, 10**6, 10**9)]
-    assert lengths == [1, 1, 2, 128, 2048, 4096]
+    assert lengths == [1, 1, 2, 128, 512, 16384]

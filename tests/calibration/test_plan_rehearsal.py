@@ -1,5 +1,7 @@
 """A plan keeps its word: rehearsals with it report the u that it promised."""
 
+from statistics import median
+
 import pytest
 from sessions import BENCH_FILE, built_in_bench
 

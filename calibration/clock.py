@@ -151,15 +151,18 @@ def follow_phases(
 
 
 def _adds_up(channels: Sequence[BlockPhasors], lines: int, course: PhaseCourse) -> bool:
-    """Return whether the strongest line keeps its phase over the whole recording."""
-    best = 0.0
+    """Return whether the line that says most about the clock keeps its phase over the recording."""
+    best, ratio = 0.0, 1.0
     for phasors in channels:
         turned = phasors.sums[:, :lines] * np.exp(-1j * course.phase(phasors.middles))
         edges = np.linspace(0, len(turned), _GROUPS, endpoint=False).astype(np.int64)
         groups = np.add.reduceat(turned, edges)
-        ratio = np.abs(groups.sum(axis=0)) / np.maximum(np.abs(groups).sum(axis=0), 1e-300)
-        best = max(best, float(ratio.max()))
-    return best > _IN_PHASE
+        whole = np.maximum(np.abs(groups).sum(axis=0), np.finfo(float).tiny)
+        says = whole / np.sqrt(phasors.used) * phasors.cycles[:lines]
+        line = int(says.argmax())
+        if says[line] > best:
+            best, ratio = float(says[line]), float(np.abs(groups[:, line].sum()) / whole[line])
+    return ratio > _IN_PHASE
 
 
 def _outwards(

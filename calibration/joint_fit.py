@@ -254,11 +254,11 @@ def _moments(
 ) -> tuple[NDArray[np.complex128], NDArray[np.complex128], NDArray[np.float64]]:
     n = np.arange(block)
     u = (n - 0.5 * (block - 1)) / block
-    waves = np.conj(block_waves(np.frombuffer(cycles), block))
+    waves: NDArray[np.complex128] = np.conj(block_waves(np.frombuffer(cycles), block))
     powers = np.stack([np.ones_like(u), u, u * u])
     weighted = powers[:, :, None] * waves
     sums = np.stack([waves.T @ weighted, np.conj(waves.T) @ weighted])
-    return sums, powers @ waves, powers.sum(axis=1)
+    return sums, np.asarray(powers @ waves), np.asarray(powers.sum(axis=1))
 
 
 @lru_cache(maxsize=4)

@@ -1,0 +1,197 @@
+#include "device.h"
+
+#include "text.h"
+#include "wire.h"
+
+enum {
+    FRAMES_PER_S = 4 /* or more: no sample waits longer than this for its frame */
+};
+
+static void take_rate(struct pd_device *device, const struct pd_rate *rate)
+{
+    const uint32_t even = rate->numerator / rate->denominator / FRAMES_PER_S;
+    const uint32_t most = device->board->slots_max;
+
+    device->rate.numerator = rate->numerator;
+    device->rate.denominator = rate->denominator;
+    device->slots = (uint16_t)(even < 1 ? 1 : even > most ? most : even);
+    pd_drive_rate(&device->drive, rate);
+}
+
+void pd_device_init(struct pd_device *device, const struct pd_board *board,
+                    const struct pd_rate *rate, uint32_t seed)
+{
+    device->board = board;
+    device->index = 0;
+    device->stream = seed;
+    device->sends = 0;
+    pd_drive_init(&device->drive, &board->drive);
+    take_rate(device, rate);
+    pd_lock_in_begin(&device->lock_in, 0, 0);
+}
+
+/* The commands: each returns NULL or why it is refused. */
+
+/* Sums of the largest samples must fit 64 bits: format, carrier and length have 63 together. */
+static bool can_lock_in(const struct pd_device *device, uint8_t channel, uint32_t length)
+{
+    const uint32_t bits = 50u - 8u * device->board->identity.format;
+
+    return length > 0 && channel < device->board->identity.channel_count &&
+           (bits >= 32u || length >> bits == 0);
+}
+
+static const char *start(struct pd_device *device, const struct pd_command *command)
+{
+    const bool is_plain = command->length == 0;
+    const uint8_t sends =
+        is_plain ? PD_SEND_SAMPLES : (uint8_t)(command->arguments[0] & 0xFFu);
+    const uint8_t channel = (uint8_t)(command->arguments[0] >> 8 & 0xFFu);
+    const uint32_t length = (sends & PD_SEND_LOCK_IN) != 0 ? command->arguments[1] : 0;
+
+    if (device->sends != 0) {
+        return is_plain ? NULL : "stop first";
+    }
+    if (sends == 0 || sends > (PD_SEND_SAMPLES | PD_SEND_LOCK_IN) ||
+        ((sends & PD_SEND_LOCK_IN) != 0 && !can_lock_in(device, channel, length))) {
+        return "no such start";
+    }
+    device->index = 0;
+    device->stream++;
+    device->sends = sends;
+    pd_drive_restart(&device->drive);
+    pd_lock_in_begin(&device->lock_in, channel, length);
+    pd_ring_begin(&device->ring, device->stream, device->slots);
+    return NULL;
+}
+
+static const char *stop(struct pd_device *device)
+{
+    device->sends = 0;
+    device->lock_in.is_on = false;
+    pd_ring_publish(&device->ring);
+    return NULL;
+}
+
+static const char *set_rate(struct pd_device *device, const uint32_t *arguments)
+{
+    struct pd_rate rate = {arguments[0], arguments[1]};
+
+    if (device->sends != 0) {
+        return "stop first";
+    }
+    if (rate.numerator == 0 || rate.denominator == 0 || !device->board->set_rate(&rate)) {
+        return "no such rate";
+    }
+    take_rate(device, &rate);
+    return NULL;
+}
+
+static const char *change_lines(struct pd_device *device, const struct pd_command *command)
+{
+    const uint32_t *arguments = command->arguments;
+    const uint8_t line = (uint8_t)(arguments[0] & 0xFFu);
+    struct pd_line wanted;
+    const char *refusal;
+
+    if (command->code == PD_CLEAR_LINE) {
+        refusal = pd_drive_clear_line(&device->drive, line);
+    } else {
+        wanted.amplitude = (uint16_t)(arguments[0] >> 16);
+        wanted.step = arguments[1];
+        wanted.phase = arguments[2];
+        wanted.turn = wanted.step * (uint32_t)(device->index & 0xFFFFFFFFu);
+        refusal = pd_drive_set_line(&device->drive, line, &wanted);
+    }
+    if (refusal == NULL) {
+        pd_lock_in_restart(&device->lock_in, device->index);
+    }
+    return refusal;
+}
+
+static bool has_its_length(const struct pd_command *command)
+{
+    static const uint8_t lengths[PD_KEEP_ALIVE] = {0, 8, 0, 8, 12, 4, 8, 0};
+
+    return command->length == lengths[command->code - 1] ||
+           (command->code == PD_START && command->length == 0);
+}
+
+static const char *act(struct pd_device *device, const struct pd_command *command)
+{
+    if (!has_its_length(command)) {
+        return "wrong length";
+    }
+    switch (command->code) {
+    case PD_START:
+        return start(device, command);
+    case PD_STOP:
+        return stop(device);
+    case PD_RATE:
+        return set_rate(device, command->arguments);
+    case PD_SET_LINE:
+    case PD_CLEAR_LINE:
+        return change_lines(device, command);
+    case PD_RAMP:
+        return pd_drive_ramp(&device->drive, (int16_t)(command->arguments[0] & 0xFFFFu),
+                             command->arguments[1]);
+    default:
+        return NULL;
+    }
+}
+
+static bool is_announced_after(uint8_t code)
+{
+    return code == PD_IDENTIFY || code == PD_START || code == PD_RATE;
+}
+
+size_t pd_device_obey(struct pd_device *device, const struct pd_command *command, uint8_t *out,
+                      size_t size)
+{
+    const uint8_t code = command->code;
+    uint8_t status = PD_UNKNOWN;
+    const char *text = "unknown command";
+    size_t length = 0;
+
+    pd_drive_heard(&device->drive);
+    if (code >= PD_IDENTIFY && code <= PD_KEEP_ALIVE) {
+        text = act(device, command);
+        status = text == NULL ? PD_DONE : PD_REFUSED;
+    }
+    if (status == PD_DONE) {
+        text = "";
+        if (is_announced_after(code)) {
+            length = pd_announcement_encode(&device->board->identity, device->stream,
+                                            &device->rate, device->slots, out, size);
+        }
+        if (code == PD_IDENTIFY || code == PD_KEEP_ALIVE) {
+            return length; /* these have no reply of their own */
+        }
+    }
+    return length +
+           pd_reply_encode(command->request, code, status, text, out + length, size - length);
+}
+
+uint16_t pd_device_code(struct pd_device *device)
+{
+    return pd_drive_code(&device->drive);
+}
+
+void pd_device_sample(struct pd_device *device, const int32_t *scan, uint64_t clock,
+                      uint16_t flags)
+{
+    if ((device->sends & PD_SEND_SAMPLES) != 0) {
+        pd_ring_push(&device->ring, scan, device->index, clock, flags);
+    }
+    pd_lock_in_push(&device->lock_in, device->drive.lines, scan[device->lock_in.channel]);
+    pd_drive_advance(&device->drive);
+    device->index++;
+}
+
+size_t pd_device_next(struct pd_device *device, uint8_t *out, size_t size)
+{
+    const size_t length =
+        pd_lock_in_encode(&device->lock_in, device->drive.lines, device->stream, out, size);
+
+    return length > 0 ? length : pd_ring_encode(&device->ring, out, size);
+}

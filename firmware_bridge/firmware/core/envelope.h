@@ -1,0 +1,37 @@
+/* The envelope of a message: CRC-32 behind it, COBS around it, a zero byte on both sides.
+ * Bytes are stuffed as they are put; nothing is buffered but the caller's output. */
+#ifndef PD_ENVELOPE_H
+#define PD_ENVELOPE_H
+
+#include <stddef.h>
+#include <stdint.h>
+
+/* Room that a message of n bytes (its CRC not counted) needs on the wire, at most. */
+#define PD_WRAPPED_MAX(n) ((n) + 4u + ((n) + 4u) / 254u + 1u + 2u)
+
+struct pd_envelope {
+    uint8_t *out;
+    size_t size;
+    size_t at;      /* bytes so far, counted on where there is no room */
+    size_t code_at; /* where the code byte of the present run goes */
+    size_t count; /* bytes of the content so far */
+    uint32_t crc;
+    uint8_t run; /* bytes of the present run */
+};
+
+void pd_envelope_open(struct pd_envelope *envelope, uint8_t *out, size_t size);
+
+/* Put the head of every message but samples: type, version, length of the body. */
+void pd_envelope_head(struct pd_envelope *envelope, uint8_t type, uint16_t body);
+
+void pd_put_byte(struct pd_envelope *envelope, uint8_t byte);
+
+/* Little-endian words of 32 bits, into which every fixed part of the wire divides. */
+void pd_put_words(struct pd_envelope *envelope, const uint32_t *words, size_t count);
+
+void pd_put_bytes(struct pd_envelope *envelope, const uint8_t *data, size_t count);
+
+/* Return the number of bytes written, 0 if the output was too small for them. */
+size_t pd_envelope_close(struct pd_envelope *envelope);
+
+#endif

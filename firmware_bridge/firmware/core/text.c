@@ -1,0 +1,47 @@
+#include "text.h"
+
+#include "wire.h"
+
+size_t pd_text_length(const char *text, size_t maximum)
+{
+    size_t length = 0;
+
+    while (length < maximum && text[length] != '\0') {
+        length++;
+    }
+    return length;
+}
+
+void pd_text_put(struct pd_envelope *envelope, const char *text, size_t length)
+{
+    for (size_t k = 0; k < length; k++) {
+        pd_put_byte(envelope, (uint8_t)text[k]);
+    }
+}
+
+/* A message of some words and a text. */
+static size_t encode(uint8_t type, const uint32_t *words, size_t count, const char *text,
+                     uint8_t *out, size_t size)
+{
+    const size_t length = pd_text_length(text, PD_TEXT_MAX);
+    struct pd_envelope envelope;
+
+    pd_envelope_open(&envelope, out, size);
+    pd_envelope_head(&envelope, type, (uint16_t)(4 * count + length));
+    pd_put_words(&envelope, words, count);
+    pd_text_put(&envelope, text, length);
+    return pd_envelope_close(&envelope);
+}
+
+size_t pd_reply_encode(uint16_t request, uint8_t code, uint8_t status, const char *text,
+                       uint8_t *out, size_t size)
+{
+    const uint32_t head = request | (uint32_t)code << 16 | (uint32_t)status << 24;
+
+    return encode(PD_REPLY, &head, 1, text, out, size);
+}
+
+size_t pd_note_encode(const char *text, uint8_t *out, size_t size)
+{
+    return encode(PD_NOTE, NULL, 0, text, out, size);
+}

@@ -1,0 +1,319 @@
+"""The firmware's core, compiled for this computer, as Python objects."""
+
+import ctypes as c
+import struct
+
+from firmware_bridge.announcement import FORMATS
+
+__all__ = ["Board", "Core", "Device", "Limits"]
+
+LINES, ROOM = 6, 4096
+
+
+class Frame(c.Structure):
+    _fields_ = [
+        ("channels", c.c_uint8),
+        ("format", c.c_uint8),
+        ("flags", c.c_uint16),
+        ("slots", c.c_uint16),
+        ("filled", c.c_uint16),
+        ("stream", c.c_uint32),
+        ("sequence", c.c_uint32),
+        ("index", c.c_uint64),
+        ("clock", c.c_uint64),
+    ]
+
+
+class Rate(c.Structure):
+    _fields_ = [("numerator", c.c_uint32), ("denominator", c.c_uint32)]
+
+
+class Channel(c.Structure):
+    _fields_ = [
+        ("name", c.c_char_p),
+        ("unit", c.c_char_p),
+        ("scale_f64", c.c_uint64),
+        ("offset_f64", c.c_uint64),
+        ("low", c.c_int32),
+        ("high", c.c_int32),
+    ]
+
+
+class Identity(c.Structure):
+    _fields_ = [
+        ("board", c.c_char_p),
+        ("firmware", c.c_char_p),
+        ("channels", c.POINTER(Channel)),
+        ("channel_count", c.c_uint8),
+        ("format", c.c_uint8),
+        ("is_simulated", c.c_bool),
+        ("clock_hz", c.c_uint32),
+    ]
+
+
+class Limits(c.Structure):
+    _fields_ = [(name, c.c_uint16) for name in ("rest", "span", "low", "high", "slew")]
+
+
+SetRate = c.CFUNCTYPE(c.c_bool, c.POINTER(Rate))
+
+
+class Board(c.Structure):
+    _fields_ = [
+        ("identity", Identity),
+        ("drive", Limits),
+        ("slots_max", c.c_uint16),
+        ("set_rate", SetRate),
+    ]
+
+
+class Parser(c.Structure):
+    _fields_ = [
+        ("buffer", c.POINTER(c.c_uint8)),
+        ("size", c.c_size_t),
+        ("at", c.c_size_t),
+        ("crc", c.c_uint32),
+        ("damaged", c.c_uint32),
+        ("code", c.c_uint8),
+        ("left", c.c_uint8),
+    ]
+
+
+class Command(c.Structure):
+    _fields_ = [
+        ("arguments", c.c_uint32 * 3),
+        ("length", c.c_uint16),
+        ("request", c.c_uint16),
+        ("code", c.c_uint8),
+    ]
+
+
+class Ring(c.Structure):
+    _fields_ = [
+        *[(name, c.c_uint8) for name in ("count", "channels", "format", "in_", "out")],
+        ("is_overrun", c.c_bool),
+        ("published", c.c_uint8),
+        ("taken", c.c_uint8),
+        ("block_bytes", c.c_uint16),
+        ("slots", c.c_uint16),
+        ("blocks", c.POINTER(Frame)),
+        ("payload", c.POINTER(c.c_uint8)),
+        ("dropped", c.c_uint32),
+        ("stream", c.c_uint32),
+        ("sequence", c.c_uint32),
+    ]
+
+
+class Line(c.Structure):
+    _fields_ = [
+        ("step", c.c_uint32),
+        ("turn", c.c_uint32),
+        ("phase", c.c_uint32),
+        ("amplitude", c.c_uint16),
+    ]
+
+
+class Ramp(c.Structure):
+    _fields_ = [
+        ("target", c.c_int32),
+        *[(name, c.c_uint32) for name in ("length", "left", "step", "rest", "carry")],
+    ]
+
+
+class Drive(c.Structure):
+    _fields_ = [
+        ("gain", c.c_uint16),
+        ("fall", c.c_uint16),
+        ("code", c.c_uint16),
+        ("limits", c.POINTER(Limits)),
+        ("silent", c.c_uint32),
+        ("silence", c.c_uint32),
+        ("offset", c.c_int32),
+        ("ramp", Ramp),
+        ("lines", Line * LINES),
+    ]
+
+
+class LockIn(c.Structure):
+    _fields_ = [
+        ("channel", c.c_uint8),
+        ("active", c.c_uint8),
+        ("is_on", c.c_bool),
+        ("is_done", c.c_bool),
+        ("length", c.c_uint32),
+        ("count", c.c_uint32),
+        ("index", c.c_uint64),
+        ("done_index", c.c_uint64),
+        ("sums", c.c_int64 * (2 * LINES * 2)),
+    ]
+
+
+class DeviceState(c.Structure):
+    _fields_ = [
+        ("sends", c.c_uint8),
+        ("slots", c.c_uint16),
+        ("stream", c.c_uint32),
+        ("index", c.c_uint64),
+        ("board", c.POINTER(Board)),
+        ("rate", Rate),
+        ("ring", Ring),
+        ("drive", Drive),
+        ("lock_in", LockIn),
+    ]
+
+
+def bits(value):
+    """Return the bits of a double, as the core takes them."""
+    return struct.unpack("<Q", struct.pack("<d", value))[0]
+
+
+def channels_of(infos, width):
+    half = 1 << (8 * width - 1)
+    return (Channel * len(infos))(
+        *[
+            Channel(
+                info.name.encode(),
+                info.unit.encode(),
+                bits(info.scale),
+                bits(info.offset),
+                -half if info.low is None else info.low,
+                half - 1 if info.high is None else info.high,
+            )
+            for info in infos
+        ]
+    )
+
+
+def identity_of(announcement):
+    """Return the core's identity for a Python announcement."""
+    width = FORMATS[announcement.format]
+    return Identity(
+        announcement.board.encode(),
+        announcement.firmware.encode(),
+        channels_of(announcement.channels, width),
+        len(announcement.channels),
+        width,
+        announcement.simulated,
+        announcement.clock_hz,
+    )
+
+
+class Core:
+    """The functions of the core; each ``encode_…`` returns bytes, empty if the room is too small."""
+
+    def __init__(self, library):
+        self.library = c.CDLL(str(library))
+        for name in ("frame", "announcement", "reply", "note", "lock_in"):
+            getattr(self.library, f"pd_{name}_encode").restype = c.c_size_t
+        for name in ("pd_device_obey", "pd_device_next", "pd_ring_encode"):
+            getattr(self.library, name).restype = c.c_size_t
+        self.library.pd_sin.argtypes = [c.c_uint32]
+        self.library.pd_parser_push.restype = c.c_bool
+
+    def _written(self, function, *arguments, room=ROOM):
+        out = (c.c_uint8 * max(room, 1))()
+        length = function(*arguments, out, c.c_size_t(room))
+        return bytes(out[:length])
+
+    def encode_frame(self, payload, room=ROOM, **fields):
+        frame = Frame(**fields)
+        return self._written(self.library.pd_frame_encode, c.byref(frame), payload, room=room)
+
+    def encode_announcement(self, announcement, ratio, room=ROOM):
+        identity, rate = identity_of(announcement), Rate(*ratio)
+        return self._written(
+            self.library.pd_announcement_encode,
+            c.byref(identity),
+            c.c_uint32(announcement.stream),
+            c.byref(rate),
+            c.c_uint16(announcement.slots),
+            room=room,
+        )
+
+    def encode_reply(self, reply, room=ROOM):
+        return self._written(
+            self.library.pd_reply_encode,
+            c.c_uint16(reply.request),
+            c.c_uint8(reply.code),
+            c.c_uint8(reply.status),
+            reply.text.encode(),
+            room=room,
+        )
+
+    def encode_note(self, text, room=ROOM):
+        return self._written(self.library.pd_note_encode, text.encode(), room=room)
+
+    def commands(self, data, size=64):
+        """Return what the parser makes of bytes: commands, and the number of damaged pieces."""
+        buffer, parser, found = (c.c_uint8 * size)(), Parser(), []
+        self.library.pd_parser_init(c.byref(parser), buffer, c.c_size_t(size))
+        for byte in data:
+            command = Command()
+            if self.library.pd_parser_push(c.byref(parser), c.c_uint8(byte), c.byref(command)):
+                found.append(command)
+        return found, parser.damaged
+
+
+class Device:
+    """A board made of the core, in memory; ``announcement`` says what it is."""
+
+    def __init__(self, core, announcement, limits, *, blocks=4, seed=0, ratio=None):
+        self.core, self.library = core, core.library
+        self.board = Board(
+            identity_of(announcement), limits, announcement.slots, SetRate(self.rate)
+        )
+        self.rate_wanted = None
+        width, channels = FORMATS[announcement.format], len(announcement.channels)
+        self.state = DeviceState()
+        self._frames = (Frame * blocks)()
+        self._payload = (c.c_uint8 * (blocks * announcement.slots * width * channels))()
+        self.library.pd_ring_init(
+            c.byref(self.state.ring),
+            self._frames,
+            self._payload,
+            c.c_uint8(blocks),
+            c.c_uint16(announcement.slots),
+            c.c_uint8(channels),
+            c.c_uint8(width),
+        )
+        rate = Rate(*(ratio or (int(announcement.rate_hz), 1)))
+        self.library.pd_device_init(
+            c.byref(self.state), c.byref(self.board), c.byref(rate), c.c_uint32(seed)
+        )
+
+    def rate(self, wanted):
+        """Take any rate up to 10 kHz as it is."""
+        self.rate_wanted = (wanted.contents.numerator, wanted.contents.denominator)
+        return self.rate_wanted[0] <= 10_000 * self.rate_wanted[1]
+
+    def obey(self, wire):
+        """Return what the board answers to commands."""
+        answer = b""
+        for command in self.core.commands(wire)[0]:
+            out = (c.c_uint8 * ROOM)()
+            length = self.library.pd_device_obey(
+                c.byref(self.state), c.byref(command), out, c.c_size_t(ROOM)
+            )
+            answer += bytes(out[:length])
+        return answer
+
+    def step(self, scan=(0, 0), clock=0, flags=0):
+        """Go through one sample; return the DAC code."""
+        code = self.library.pd_device_code(c.byref(self.state))
+        self.library.pd_device_sample(
+            c.byref(self.state),
+            (c.c_int32 * len(scan))(*scan),
+            c.c_uint64(clock),
+            c.c_uint16(flags),
+        )
+        return code
+
+    def next(self):
+        """Return the next message that is due, empty if there is none."""
+        out = (c.c_uint8 * ROOM)()
+        length = self.library.pd_device_next(c.byref(self.state), out, c.c_size_t(ROOM))
+        return bytes(out[:length])
+
+    def drain(self):
+        """Return all messages that are due."""
+        return b"".join(iter(self.next, b""))

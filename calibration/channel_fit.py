@@ -230,4 +230,7 @@ def _sandwich(
     scores = fit.gram * np.outer(deviation, deviation)
     if table is not None:
         scores = table.T @ scores @ table
-    return np.asarray(fit.inverse @ scores @ fit.inverse)
+    covariance = np.asarray(fit.inverse @ scores @ fit.inverse)
+    # Rounding may leave a variance of −1e-30 where nothing is left over.
+    np.fill_diagonal(covariance, np.maximum(np.diag(covariance), 0.0))
+    return covariance

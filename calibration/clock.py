@@ -92,16 +92,21 @@ def combine_steps(fits: Sequence[ChannelFit]) -> tuple[NDArray[np.float64], NDAr
 
 def _coherence(one: ChannelFit, other: ChannelFit) -> float:
     """Return how much the phase noise of two channels has in common, −0.95 to 0.95."""
-    cross, powers = 0.0, np.zeros(2)
+    shared, weights = [0.0], [0.0]
     for line, (a, b) in enumerate(zip(one.noise, other.noise, strict=True)):
         used = a.used & b.used
-        first = a.bins[used] / (one.coefficients[line] or 1.0)
-        second = b.bins[used] / (other.coefficients[line] or 1.0)
-        weight = 1.0 / max(float((np.abs(first) ** 2).sum()), np.finfo(float).tiny)
-        cross += weight * float((first * np.conj(second)).real.sum())
-        powers += weight * np.array([(np.abs(first) ** 2).sum(), (np.abs(second) ** 2).sum()])
-    size = float(np.sqrt(powers.prod()))
-    return float(np.clip(cross / size, -0.95, 0.95)) if size > 0 else 0.0
+        first = a.bins[used] * np.conj(one.coefficients[line])
+        second = b.bins[used] * np.conj(other.coefficients[line])
+        size = float(np.linalg.norm(first) * np.linalg.norm(second))
+        if size > 0:
+            shared.append(float((first * np.conj(second)).real.sum()) / size)
+            # A line counts by the squares of both amplitudes over their noise.
+            weights.append(
+                float(abs(one.coefficients[line] * other.coefficients[line])) ** 2 / size
+            )
+    top = max(weights)
+    mean = np.average(shared, weights=np.array(weights) / top) if top > 0 else 0.0
+    return float(np.clip(mean, -0.95, 0.95))
 
 
 def _inverse(matrix: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -141,7 +146,7 @@ def follow_phases(
         fits = [fit_channel(phasors, lines, course) for phasors in channels]
         step, covariance = combine_steps(fits)
         course = course.moved(course.theta + step)
-        u = np.sqrt(np.diag(covariance))
+        u = np.sqrt(np.maximum(np.diag(covariance), 0.0))
         # A step that turns no phase by a thousandth of a radian leaves a millionth behind.
         turned = np.abs(step) * np.abs(course.scales).max(axis=1)
         if (np.abs(step) <= 1e-3 * u).all() or (turned < _SMALL_TURN).all():

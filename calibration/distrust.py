@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from calibration.line_result import FittedChannel
 from calibration.survey import MAINS_ORDERS, Survey
 
-__all__ = ["LEAST_SNR", "Doubts", "is_clipped"]
+__all__ = ["LEAST_SNR", "TOO_WEAK", "Doubts", "is_clipped"]
 
 LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
 _LEAST_CYCLES = 4.0
@@ -22,6 +22,9 @@ _MAINS_WANDER = 1e-3  # of the mains frequency; grids stay within 0.05 Hz in 50 
 _MAINS_SHARE = 1e-3  # of the line: a smaller pick-up does not matter beside drive and ADC
 _SEEN = 20.0  # power over floor from which a peak is there: e^−20 in noise
 _ALIASED = 1.5  # variance over that of a lone line in as many samples without gaps
+_ROUNDING = 1e-15  # float64: what is left of a constant is no line
+TOO_WEAK = "too weak"
+_UNSTEADY_SHARE = 3e-3  # of the line: less is in its u already, and small
 _UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 _MODULATED = 0.03  # rms change of the amplitude or phase, relative or rad
 _BY_CHANCE = 1e-5
@@ -42,6 +45,8 @@ class Doubts:
         First look at response and drive.
     clipped : list of bool
         Whether response and drive are.
+    largest : list of float
+        Largest absolute value of response and drive.
     """
 
     frequencies_hz: NDArray[np.float64]
@@ -50,6 +55,7 @@ class Doubts:
     mains_hz: float
     surveys: list[Survey | None]
     clipped: list[bool]
+    largest: list[float]
 
     def reasons(self, channels: list[FittedChannel], line: int) -> tuple[str, ...]:
         """Return why a line must not be trusted, empty where no reason was found."""
@@ -60,11 +66,12 @@ class Doubts:
             self._second_harmonic(line),
             self._gaps(channels[0], line),
         ]
-        for name, channel, clipped in zip(("", "drive: "), channels, self.clipped, strict=False):
+        for which, channel in enumerate(channels):
+            name, clipped = ("", "drive: ")[which], self.clipped[which]
             found += [
                 name + reason
                 for reason in (
-                    self._weak(channel, line),
+                    self._weak(channel, line, self.largest[which]),
                     self._unsteady(channel, line),
                     self._modulated(channel, line),
                     "clipped: the samples pile up at the extreme value" if clipped else None,
@@ -154,16 +161,20 @@ class Doubts:
             f" {channel.fit.inflation[line]:.2g} times that of as many samples without gaps"
         )
 
-    def _weak(self, channel: FittedChannel, line: int) -> str | None:
-        phasor = channel.steady(line)[0]
+    def _weak(self, channel: FittedChannel, line: int, largest: float) -> str | None:
+        size = abs(channel.steady(line)[0])
         floor = channel.density(line, self.rate_hz) / np.sqrt(channel.fit.used / self.rate_hz)
-        # Rounding alone leaves a floor of 1e-16 of the line, never a line of 5 times the floor.
-        if abs(phasor) > LEAST_SNR * floor:
+        floor = max(floor, _ROUNDING * largest)
+        if size > LEAST_SNR * floor:
             return None
-        return f"too weak: signal to noise {abs(phasor) / floor if floor else 0:.2g}, {LEAST_SNR:g} is needed"
+        snr = size / floor if floor else 0.0
+        return f"{TOO_WEAK}: signal to noise {snr:.2g}, {LEAST_SNR:g} is needed"
 
     def _unsteady(self, channel: FittedChannel, line: int) -> str | None:
         noise = channel.fit.noise[line]
+        u = np.sqrt(2 * noise.variance / channel.fit.used)
+        if u <= _UNSTEADY_SHARE * abs(channel.fit.coefficients[line]):
+            return None
         if noise.near > _UNSTEADY:
             return (
                 f"not steady: what is left over is {noise.near:.2g} times stronger within 2/T of the line than"

@@ -95,7 +95,7 @@ def ratio_estimate(response: FittedChannel, drive: FittedChannel, line: int) -> 
     Returns
     -------
     PhasorEstimate
-        What the two channels' noise has in common, and the clock, cancel in it.
+        NaN where the drive is exactly zero. What the two channels' noise has in common, and the clock, cancel in it.
 
     Notes
     -----
@@ -104,6 +104,9 @@ def ratio_estimate(response: FittedChannel, drive: FittedChannel, line: int) -> 
     """
     top, covariance = response.steady(line)
     bottom, _ = drive.steady(line)
+    unit = _ratio_unit(response.unit, drive.unit)
+    if bottom == 0:
+        return PhasorEstimate(complex(np.nan, np.nan), np.full((2, 2), np.nan), 1.0, unit)
     ratio = top / bottom
     own, other = response.fit.noise[line], drive.fit.noise[line]
     used = own.used & other.used if (own.used & other.used).any() else own.used
@@ -116,7 +119,6 @@ def ratio_estimate(response: FittedChannel, drive: FittedChannel, line: int) -> 
     scale = left / power if power > 0 else 1.0
     rotation = _rotation(1 / bottom)
     dof = own.dof * float(used.sum()) / max(1.0, float(own.used.sum()))
-    unit = _ratio_unit(response.unit, drive.unit)
     return PhasorEstimate(ratio, scale * rotation @ covariance @ rotation.T, dof, unit)
 
 

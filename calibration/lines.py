@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from calibration.channel_fit import fit_channel
 from calibration.clock import Followed
-from calibration.distrust import LEAST_SNR, Doubts, is_clipped
+from calibration.distrust import TOO_WEAK, Doubts, is_clipped
 from calibration.errors import CalibrationError
 from calibration.line_fit import Line, LineFit
 from calibration.line_record import Found, LineRecord
@@ -163,10 +163,11 @@ def fit_lines_si(
         mains_hz,
         found.surveys,
         [is_clipped(channel) for channel in channels],
+        [_largest(channel) for channel in channels],
     )
     lines = [_line(fitted, found, doubts, k, free=free) for k in range(len(cycles))]
     # Lines that are lost in noise say nothing about the clock.
-    lost = all(line.snr_value < LEAST_SNR for line in lines)
+    lost = all(any(r.startswith(TOO_WEAK) for r in line.distrust_reasons) for line in lines)
     clock, clock_u = (np.nan, np.nan) if free or lost else _clock(found)
     return LineFit(
         tuple(lines),
@@ -216,6 +217,12 @@ def _checked_channels(values: NDArray[Any], drive: NDArray[Any] | None) -> list[
     return channels
 
 
+def _largest(channel: NDArray[Any]) -> float:
+    """Return the largest absolute value of some thousand samples."""
+    looked = np.abs(channel[:: max(1, len(channel) // 4096)].astype(np.float64))
+    return float(looked.max(initial=0.0, where=np.isfinite(looked)))
+
+
 def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) -> FittedChannel:
     fit = fit_channel(phasors, lines, followed.applied, refine=False)
     functions = followed.course.at(phasors.middles)
@@ -225,7 +232,7 @@ def _fitted(phasors: BlockPhasors, followed: Followed, lines: int, unit: str) ->
 
 def _line(fitted: list[FittedChannel], found: Found, doubts: Doubts, k: int, *, free: bool) -> Line:
     response, rate_hz = fitted[0], doubts.rate_hz
-    frequency_u = float(np.sqrt(found.followed.covariance[k, k])) if free else 0.0
+    frequency_u = float(np.sqrt(max(0.0, found.followed.covariance[k, k]))) if free else 0.0
     return Line(
         float(response.cycles[k] / (1 + found.offset) * rate_hz),
         frequency_u,

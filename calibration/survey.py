@@ -121,7 +121,7 @@ def _window(length: int) -> NDArray[np.float64]:
 
 
 def _floor(power: NDArray[np.float64]) -> NDArray[np.float64]:
-    width = int(np.clip(len(power) // 24, 12, 128))
+    width = min(len(power), int(np.clip(len(power) // 24, 12, 128)))
     pieces = max(1, len(power) // width)
     levels = np.median(power[: pieces * width].reshape(pieces, width), axis=1) / np.log(2.0)
     centres = (np.arange(pieces) + 0.5) * width

@@ -468,3 +468,20 @@ def test_a_working_point_at_a_fringe_top_is_not_trusted():
     locked = fit_lines_si(data[520:, 1], 200.0, [30.0], start_index=520)
     assert locked.is_trustworthy
     assert abs(locked.lines[0].phasor) == pytest.approx(2.53, rel=5e-3)
+
+
+@pytest.mark.parametrize("drive", [None, np.zeros(4000), np.ones(4000)])
+@pytest.mark.parametrize("values", [np.zeros(4000), np.full(4000, 3.3), _sine(4000)])
+def test_a_dead_channel_is_distrusted_and_no_crash(values, drive):
+    fit = fit_lines_si(values, RATE, [87.13], drive)
+    dead = drive is not None or np.ptp(values) == 0
+    assert fit.is_trustworthy is not dead
+    if dead:
+        assert "too weak" in " | ".join(fit.distrust_reasons)
+
+
+@pytest.mark.parametrize("free", [False, True])
+def test_the_shortest_records_do_not_crash(free):
+    for n in range(16, 64):
+        fit = fit_lines_si(_sine(n), RATE, [700.0], free=free)
+        assert np.isfinite(abs(fit.lines[0].phasor))

@@ -16,7 +16,7 @@ from calibration.fringe_fit import FringeFit
 from calibration.fringe_input import checked_prior, checked_turns, checked_values
 from calibration.fringe_reasons import fringe_reasons
 from calibration.fringe_result import depths_of, fringe_result
-from calibration.fringe_search import Found, search
+from calibration.fringe_search import search
 from calibration.fringe_start import find_starts
 from calibration.ruler import Ruler, ruler_of
 
@@ -93,9 +93,6 @@ def fit_driven_fringe_si(
     best, rival = search(values, turns, starts, prior)
     found = finish(values, best, prior)
 
-    def reasons(fit: Found) -> list[str]:
-        return fringe_reasons(fit, prior, depths_of(fit), rival, values)
-
     return fringe_result(
         found,
         start_index=start_index,
@@ -103,7 +100,7 @@ def fit_driven_fringe_si(
         ruler=ruler,
         dark=dark,
         dark_u=dark_u,
-        reasons=reasons,
+        reasons=lambda fit: fringe_reasons(fit, prior, depths_of(fit), rival, values),
     )
 
 

@@ -79,7 +79,18 @@ def dark_of_trace(trace: Trace) -> Level:
 
 
 def is_file(text: str) -> bool:
-    """Return whether a text names a file that is there."""
+    """Return whether a text names a file that is there.
+
+    Parameters
+    ----------
+    text : str
+        As given on the command line.
+
+    Returns
+    -------
+    bool
+        True for a file or any other path that exists.
+    """
     return Path(text).exists()
 
 

@@ -3,8 +3,9 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.descent import Prior, descend
 from calibration.fringe_model import FringeModel, Sums
-from calibration.fringe_search import Found, Prior, descend
+from calibration.fringe_search import Found
 from calibration.residual_noise import whitening_filter
 
 __all__ = ["finish"]

@@ -67,10 +67,22 @@ class FringeFit:
 
     @property
     def is_trustworthy(self) -> bool:
-        """Whether no reason for distrust was found."""
+        """Whether no reason for distrust was found.
+
+        Returns
+        -------
+        bool
+            False where there are reasons.
+        """
         return not self.reasons
 
     @property
     def distrust_reasons(self) -> list[str]:
-        """The reasons, as line fits name them."""
+        """The reasons, as line fits name them.
+
+        Returns
+        -------
+        list of str
+            Same as ``reasons``.
+        """
         return self.reasons

@@ -6,8 +6,8 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.descent import Prior
 from calibration.errors import CalibrationError
-from calibration.fringe_search import Prior
 
 __all__ = ["checked_prior", "checked_turns", "checked_values"]
 

@@ -78,10 +78,21 @@ class FringeModel:
         self.fixed = 2 + 2 * self.n_lines + int(clock)
         self.size = self.fixed + spline_size(pieces)
         self._cache: dict[int, NDArray[np.float64]] = {}
-        self._stretch = 0.0
+        self._kept: dict[tuple[int, int], tuple[NDArray[np.float64], tuple[int, int]]] = {}
 
     def chunks(self, lead: int = 0) -> list[tuple[int, int]]:
-        """Return (start, stop) of chunks, each beginning ``lead`` samples early."""
+        """Return chunks of the record.
+
+        Parameters
+        ----------
+        lead : int, optional
+            Samples by which each begins early.
+
+        Returns
+        -------
+        list of tuple
+            (start, stop) of each.
+        """
         n = len(self.values)
         size = _CHUNK
         if self.pieces > 8:  # few pieces a chunk keep the matrices small
@@ -102,33 +113,80 @@ class FringeModel:
             self._cache[key] = columns
         return columns
 
+    def _weights(self, start: int, stop: int) -> tuple[NDArray[np.float64], tuple[int, int]]:
+        """Return the spline's weights and their columns, kept where the record is not long."""
+        kept = self._kept.get((start, stop))
+        if kept is not None:
+            return kept
+        position = self.index[start:stop] / max(self.length - 1, 1)
+        span = spline_span(float(position[0]), float(position[-1]), self.pieces)
+        weights = spline_weights(position, self.pieces, span)
+        if 8 * len(self.values) <= _CACHE_CELLS:
+            self._kept[start, stop] = weights, span
+        return weights, span
+
     def _angles(
         self, theta: NDArray[np.float64], start: int, stop: int
     ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64], tuple[int, int]]:
         """Return the phase Φ, the carriers, the spline's weights and its columns."""
         stretch = float(theta[self.fixed - 1]) if self.clock else 0.0
         carriers = self._carriers(start, stop, stretch)
-        position = self.index[start:stop] / max(self.length - 1, 1)
-        span = spline_span(float(position[0]), float(position[-1]), self.pieces)
-        weights = spline_weights(position, self.pieces, span)
+        weights, span = self._weights(start, stop)
         drift = theta[self.fixed + span[0] : self.fixed + span[1]]
         phase = carriers @ theta[2 : 2 + 2 * self.n_lines] + weights @ drift
         return phase, carriers, weights, span
 
     def residual(self, theta: NDArray[np.float64], start: int, stop: int) -> NDArray[np.float64]:
-        """Return data minus model; NaN where samples are missing."""
+        """Return data minus model.
+
+        Parameters
+        ----------
+        theta : ndarray, shape (n_parameters,)
+            Parameters.
+        start, stop : int
+            First sample and one past the last.
+
+        Returns
+        -------
+        ndarray, shape (stop - start,)
+            Residuals in the record's unit, NaN where samples are missing.
+        """
         phase = self._angles(theta, start, stop)[0]
         return np.asarray(self.values[start:stop] - theta[0] - theta[1] * np.cos(phase))
 
     def drift(
         self, theta: NDArray[np.float64], position: NDArray[np.float64]
     ) -> NDArray[np.float64]:
-        """Return the slow phase φ [rad] at positions from 0 (first sample) to 1 (last)."""
+        """Return the slow phase.
+
+        Parameters
+        ----------
+        theta : ndarray, shape (n_parameters,)
+            Parameters.
+        position : ndarray, shape (n,)
+            From 0 at the first sample to 1 at the last.
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            φ [rad].
+        """
         columns = (0, spline_size(self.pieces))
         return np.asarray(spline_weights(position, self.pieces, columns) @ theta[self.fixed :])
 
     def squares(self, theta: NDArray[np.float64]) -> float:
-        """Return Σ r² over the samples there are."""
+        """Return the sum of squared residuals.
+
+        Parameters
+        ----------
+        theta : ndarray, shape (n_parameters,)
+            Parameters.
+
+        Returns
+        -------
+        float
+            Σ r² over the samples there are.
+        """
         total = 0.0
         for start, stop in self.chunks():
             rest = self.residual(theta, start, stop)
@@ -138,7 +196,20 @@ class FringeModel:
     def rows(
         self, theta: NDArray[np.float64], start: int, stop: int
     ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.int64]]:
-        """Return residuals, derivatives and the parameters that the derivatives belong to."""
+        """Return residuals and their derivatives.
+
+        Parameters
+        ----------
+        theta : ndarray, shape (n_parameters,)
+            Parameters.
+        start, stop : int
+            First sample and one past the last.
+
+        Returns
+        -------
+        tuple of ndarray
+            Residuals (n,), derivatives (n, k), and the k parameters they belong to.
+        """
         phase, carriers, weights, span = self._angles(theta, start, stop)
         cosine, sine = np.cos(phase), np.sin(phase)
         rest = self.values[start:stop] - theta[0] - theta[1] * cosine

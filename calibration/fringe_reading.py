@@ -50,7 +50,13 @@ class FringeReading:
     reasons: list[str] = field(default_factory=list)
 
     def to_dict(self) -> dict[str, Any]:
-        """Return the JSON document."""
+        """Return the JSON document.
+
+        Returns
+        -------
+        dict
+            With the keys that programs rely on.
+        """
         fit = self.fit
         return {
             "low": fit.low,

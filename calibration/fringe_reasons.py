@@ -5,7 +5,8 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.fringe_search import Found, Prior
+from calibration.descent import Prior
+from calibration.fringe_search import Found
 
 __all__ = ["fringe_reasons"]
 

@@ -22,7 +22,18 @@ def _measured(found: Found, value: float, gradient: dict[int, float], unit: str)
 
 
 def depths_of(found: Found) -> list[tuple[float, float]]:
-    """Return (depth, standard uncertainty) of each line [rad]."""
+    """Return the depth of each line.
+
+    Parameters
+    ----------
+    found : Found
+        Finished fit.
+
+    Returns
+    -------
+    list of tuple
+        (depth, standard uncertainty) [rad].
+    """
     out = []
     for line in range(found.model.n_lines):
         got = _depth(found, line)
@@ -31,10 +42,17 @@ def depths_of(found: Found) -> list[tuple[float, float]]:
 
 
 def _depth(found: Found, line: int) -> Measured:
-    re, im = (float(x) for x in found.theta[2 + 2 * line : 4 + 2 * line])
+    """Return the depth; noise across a phasor lengthens it by u²/2m, which is taken off."""
+    place = 2 + 2 * line
+    re, im = (float(x) for x in found.theta[place : place + 2])
     depth = math.hypot(re, im)
     safe = max(depth, 1e-300)
-    return _measured(found, depth, {2 + 2 * line: re / safe, 3 + 2 * line: im / safe}, "rad")
+    got = _measured(found, depth, {place: re / safe, place + 1: im / safe}, "rad")
+    across = np.array([-im, re]) / safe
+    sideways = float(across @ found.covariance[place : place + 2, place : place + 2] @ across)
+    if depth**2 < 9.0 * sideways:
+        return got
+    return Measured.of(math.sqrt(depth**2 - sideways), "rad", got.u_magnitude, got.dof)
 
 
 def _line_phase(found: Found, line: int, start_index: int, flip: bool) -> Measured:  # private

@@ -34,7 +34,13 @@ class Route:
     reasons: list[str] = field(default_factory=list)
 
     def to_dict(self) -> dict[str, object]:
-        """Return the JSON form."""
+        """Return the JSON form.
+
+        Returns
+        -------
+        dict
+            Plain values and Measured.
+        """
         return {
             "route": self.route,
             "displacement_amplitude": self.displacement_amplitude,
@@ -63,7 +69,13 @@ class Agreement:
     compared: tuple[str, ...]
 
     def to_dict(self) -> dict[str, object]:
-        """Return the JSON form."""
+        """Return the JSON form.
+
+        Returns
+        -------
+        dict
+            Plain values and Measured.
+        """
         return {
             "normalised_error": self.normalised_error,
             "agree": self.agree,

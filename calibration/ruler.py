@@ -51,17 +51,18 @@ def ruler_of(
     Ruler
         Metres of displacement per radian of phase.
     """
-    from metro.measured import Measured
-    from metro.units import si
-
-    def measured(value: Any, name: str, unit: str) -> Measured:  # noqa: ANN401  # as above
-        if isinstance(value, Measured):
-            return value
-        return Measured.of(float(si(value, name, unit, above=0.0)), unit, 0.0)
-
-    wave, medium = measured(wavelength, "wavelength", "m"), measured(index, "index", "1")
+    wave, medium = _measured(wavelength, "wavelength", "m"), _measured(index, "index", "1")
     relative = math.hypot(
         *[float(part.u_magnitude or 0.0) / float(part.magnitude) for part in (wave, medium)]
     )
     scale = float(wave.magnitude) / (4.0 * math.pi * float(medium.magnitude) * round_trips)
     return Ruler(scale, relative, min(wave.dof, medium.dof))
+
+
+def _measured(value: Any, name: str, unit: str) -> "Measured":  # noqa: ANN401  # what ruler_of takes
+    from metro.measured import Measured
+    from metro.units import si
+
+    if isinstance(value, Measured):
+        return value
+    return Measured.of(float(si(value, name, unit, above=0.0)), unit, 0.0)

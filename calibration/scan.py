@@ -58,17 +58,35 @@ class ScanFit:
 
     @property
     def low_u(self) -> float:
-        """Standard uncertainty of ``low``."""
+        """Standard uncertainty of ``low``.
+
+        Returns
+        -------
+        float
+            In the record's unit.
+        """
         return math.sqrt(self.covariance[0, 0])
 
     @property
     def high_u(self) -> float:
-        """Standard uncertainty of ``high``."""
+        """Standard uncertainty of ``high``.
+
+        Returns
+        -------
+        float
+            In the record's unit.
+        """
         return math.sqrt(self.covariance[1, 1])
 
     @property
     def is_trustworthy(self) -> bool:
-        """Whether no reason for distrust was found."""
+        """Whether no reason for distrust was found.
+
+        Returns
+        -------
+        bool
+            False where there are reasons.
+        """
         return not self.reasons
 
 

@@ -7,7 +7,18 @@ __all__ = ["fit_spline", "spline_size", "spline_span", "spline_weights"]
 
 
 def spline_size(pieces: int) -> int:
-    """Return the number of coefficients of a spline of so many pieces; 0 pieces is a constant."""
+    """Return the number of coefficients of a spline.
+
+    Parameters
+    ----------
+    pieces : int
+        Pieces of the spline; 0 for a constant.
+
+    Returns
+    -------
+    int
+        1 for a constant, else pieces + 3.
+    """
     return pieces + 3 if pieces else 1
 
 

@@ -205,7 +205,8 @@ def encode_command(code: int, request: int = 0, arguments: bytes = b"") -> bytes
     request : int
         0..65535; the reply carries it.
     arguments : bytes
-        As the command asks; empty for identify, start, stop and keep-alive.
+        From `firmware_bridge.arguments`; empty for identify, stop and keep-alive, and for start
+        unless it asks for more than samples.
 
     Returns
     -------

@@ -9,6 +9,13 @@ import pytest
 
 import firmware_bridge
 from firmware_bridge.announcement import Announcement, ChannelInfo, encode_announcement
+from firmware_bridge.arguments import (
+    clear_arguments,
+    line_arguments,
+    ramp_arguments,
+    rate_arguments,
+    start_arguments,
+)
 from firmware_bridge.cobs import decode
 from firmware_bridge.decoder import Decoder
 from firmware_bridge.envelope import SEALED
@@ -25,6 +32,7 @@ from firmware_bridge.host_note import (
 )
 from firmware_bridge.message import (
     Command,
+    CommandCode,
     LockIn,
     MessageType,
     Note,
@@ -53,11 +61,20 @@ ANNOUNCED = Announcement(
     clock_hz=1_000_000,
 )
 LOCKED_IN = LockIn(STREAM, 0, 2000, 0, 14, ((85899346, -1000000, 2000000),))
+ASKED = {
+    "identify": (1, 1, b""),
+    "start": (2, 2, b""),
+    "stop": (3, 3, b""),
+    "start-lock-in": (2, 4, start_arguments(lock_in_channel=0, lock_in_length=2000)),
+    "rate": (4, 5, rate_arguments(62.5)),
+    "set-line": (5, 6, line_arguments(1, 85899346, 0.25, -np.pi / 2)),
+    "clear-line": (6, 7, clear_arguments(1)),
+    "ramp": (7, 8, ramp_arguments(0.5, 4000)),
+    "keep-alive": (8, 10, b""),
+}
 WIRE = {
+    **{name: (encode_command(*asked), Command(*asked)) for name, asked in ASKED.items()},
     "announcement": (encode_announcement(ANNOUNCED), ANNOUNCED),
-    "identify": (encode_command(1, 1), Command(1, 1)),
-    "start": (encode_command(2, 2), Command(2, 2)),
-    "stop": (encode_command(3, 3), Command(3, 3)),
     "reply-done": (encode_reply(Reply(2, 2)), Reply(2, 2, 0, "")),
     "reply-refused": (
         encode_reply(Reply(4, 9, 2, "rate too high")),
@@ -150,6 +167,28 @@ def test_the_table_of_the_frame_is_the_header_of_the_code():
     ]
     assert [(int(offset), int(size), name) for offset, size, name in rows] == fields
     assert HEADER.itemsize == 36
+
+
+def test_arguments_are_those_of_the_page_by_plain_arithmetic():
+    # Summed by hand from the bytes of the page, behind type, version, length, request, code, zero.
+    of = {name: decode(EXAMPLES[name][1:-1])[8:-4] for name in ASKED}
+    at = lambda name, start, size: sum(of[name][start + k] << 8 * k for k in range(size))  # noqa: E731
+    assert (of["start-lock-in"][0], of["start-lock-in"][1], at("start-lock-in", 4, 4)) == (
+        3,
+        0,
+        2000,
+    )
+    assert at("rate", 0, 4) / at("rate", 4, 4) == 62.5
+    assert (of["set-line"][0], at("set-line", 2, 2) / 2**16) == (1, 0.25)
+    assert (at("set-line", 4, 4), at("set-line", 8, 4) / 2**32) == (85899346, 0.75)
+    assert of["clear-line"] == bytes([1, 0, 0, 0])
+    assert (at("ramp", 0, 2) / 2**15, at("ramp", 4, 4)) == (0.5, 4000)
+
+
+def test_the_table_of_commands_is_that_of_the_code():
+    rows = re.findall(r"^\| (\d) \| ([a-z -]+) \| (?:none|\d+ bytes)", PAGE, re.MULTILINE)
+    named = {int(code): name.replace("-", "_").replace(" ", "_").upper() for code, name in rows}
+    assert named == {code.value: code.name for code in CommandCode}
 
 
 def test_the_table_of_types_is_that_of_the_code():

@@ -14,8 +14,8 @@ from os import PathLike
 
 import numpy as np
 
-from calibration import curvature
 from calibration.actuator import actuator_line
+from calibration.contrast import contrast
 from calibration.dark import dark_level
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
@@ -23,12 +23,13 @@ from calibration.line_fit import LineFit
 from calibration.lines import fit_lines_si
 from calibration.pickup import additive_of
 from calibration.readout import Readout
+from calibration.readout_slope import readout_slope
 from calibration.record import ActuatorEntry, Calibration
 from calibration.scan import ScanFit, fit_scan
 from calibration.session import RoleRecord, Session
 from calibration.session_checks import cautions_of, checks_of, reasons_of, sign_reasons
 from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
-from calibration.term import Term, budget_of
+from calibration.term import Term
 from calibration.working_point import PhaseRecord, invert_fringe
 from metro.bench import Bench
 from metro.drive import peak_factor
@@ -240,42 +241,6 @@ class _Analysis:
             for number in range(len(self.frequencies_hz))
         ]
 
-    def readout_terms(self) -> list[Term]:
-        """Return the inputs of volts per metre at mid-fringe."""
-        extremes, drift = self.extremes, self.drift
-        share = 1.0 / sqrt(extremes.scans) if extremes.scans else 0.0
-        u = extremes.u_of(1.0, 0.0) / extremes.swing_v
-        return [
-            *self.readout.ruler_terms(-1.0),
-            Term("fringe extremes", None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
-            drift.with_relative(share),
-            *self.readout.reference_term(-1.0),
-            *curvature.swing_terms(self.bench, extremes),
-        ]
-
-    def contrast(self) -> Measured | None:
-        """Return (high − low)/(high + low − 2·dark), None without a dark level."""
-        if self.dark is None:
-            return None
-        dark_v, extremes = float(self.dark.magnitude), self.extremes
-        level_v = extremes.mid_v - dark_v
-        value = extremes.swing_v / level_v
-        u = extremes.u_of(1.0 / extremes.swing_v, -1.0 / level_v)
-        terms = [
-            Term("fringe extremes", None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
-            Term(
-                "dark level",
-                dark_v,
-                "V",
-                float(self.dark.u_magnitude or 0.0),
-                relative=1.0 / level_v,
-                kind="A",
-                dof=self.dark.dof,
-            ),
-            *curvature.contrast_terms(self.bench, extremes, dark_v),
-        ]
-        return budget_of(terms, value, "1")[0].measured(value)
-
     def clock_offset(self) -> Measured | None:
         """Return the mean relative clock offset of the lines recordings, None if unknown."""
         found = [slope.fit.clock_offset for slope in self.slopes]
@@ -292,17 +257,16 @@ class _Analysis:
         from metro import __version__
 
         actuator = self.actuator()
-        slope = self.extremes.swing_v * self.readout.phase_per_metre
-        budget, _ = budget_of(self.readout_terms(), slope, "V/m")
+        slope, budget = readout_slope(self.readout, self.extremes, self.drift)
         fits = [(s.record.path, s.phase, s.fit) for s in self.slopes]
         return Calibration(
             created=datetime.now(UTC).isoformat(timespec="seconds"),
             software=__version__,
             actuator=sign_reasons(self.bench, actuator),
-            readout_slope=budget.measured(slope),
+            readout_slope=slope,
             readout_budget=budget,
             extremes=self.extremes,
-            contrast=self.contrast(),
+            contrast=None if self.dark is None else contrast(self.bench, self.extremes, self.dark),
             dark=self.dark,
             clock_offset=self.clock_offset(),
             chain=_chain(self.bench),

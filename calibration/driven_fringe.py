@@ -5,6 +5,7 @@ lines, the slow drift of the working point and, where the record allows, the fri
 fitted at once to V = (high+low)/2 + (high−low)/2·cos(φ(t) + Σ m_i cos(2πf_i t + ψ_i)).
 """
 
+import math
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any, cast
 
@@ -16,7 +17,7 @@ from calibration.fringe_fit import FringeFit
 from calibration.fringe_input import checked_prior, checked_turns, checked_values
 from calibration.fringe_reasons import fringe_reasons
 from calibration.fringe_result import depths_of, fringe_result
-from calibration.fringe_search import search
+from calibration.fringe_search import Found, search
 from calibration.fringe_start import find_starts
 from calibration.ruler import Ruler, ruler_of
 
@@ -89,8 +90,12 @@ def fit_driven_fringe_si(
     turns = checked_turns(rate_hz, frequencies_hz)
     values = checked_values(values, len(turns))
     prior = checked_prior(low, high, low_u, high_u)
-    starts = find_starts(values, turns, low, high)
-    best, rival = search(values, turns, starts, prior)
+    best, rival = search(values, turns, find_starts(values, turns, low, high), prior)
+    if _is_poor(best):  # the working point may run too fast for long blocks
+        starts = find_starts(values, turns, low, high, periods=6.0)
+        other = search(values, turns, starts, prior)
+        if other[0].squares < best.squares:
+            best, rival = other
     found = finish(values, best, prior)
 
     return fringe_result(
@@ -102,6 +107,12 @@ def fit_driven_fringe_si(
         dark_u=dark_u,
         reasons=lambda fit: fringe_reasons(fit, prior, depths_of(fit), rival, values),
     )
+
+
+def _is_poor(found: Found) -> bool:
+    """Return whether the residuals are beyond what a usable record has (about 13 dB)."""
+    rms = math.sqrt(found.squares / len(found.model.index))
+    return rms > 0.16 * abs(float(found.theta[1]))
 
 
 def fit_driven_fringe(

@@ -39,7 +39,7 @@ def _pieces_of(start: FringeStart, length: int) -> int:
     """Return the pieces that the working phases of the blocks ask for at first."""
     position = start.middle / max(length - 1, 1)
     pieces = 0
-    for pieces in (0, 1, 2, 4, 8, 16, 32, 64):
+    for pieces in (0, 1, 2, 4, 8, 16, 32, 64, 128, 256):
         if spline_size(pieces) > max(len(position) // 2, 1):
             break
         course = _course(fit_spline(position, start.working, pieces), pieces, position)

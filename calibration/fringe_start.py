@@ -121,6 +121,7 @@ def find_starts(
     turns: NDArray[np.float64],
     low: float | None,
     high: float | None,
+    periods: float = 40.0,
 ) -> list[FringeStart]:
     """Find start values for a driven fringe.
 
@@ -132,6 +133,8 @@ def find_starts(
         Phase of each line per sample [rad], between 0 and π.
     low, high : float or None
         Extremes of the fringe where known, in the record's unit.
+    periods : float, optional
+        Most periods of the lowest line over which the working point is taken to stay.
 
     Returns
     -------
@@ -140,7 +143,7 @@ def find_starts(
     """
     period = 2.0 * np.pi / float(turns.min())
     apart = min([abs(a - b) for a, b in itertools.combinations(turns.tolist(), 2)], default=np.inf)
-    blocks = lay_blocks(values, max(3.0 * period, 3.0 * 2.0 * np.pi / apart), period)
+    blocks = lay_blocks(values, max(3.0 * period, 3.0 * 2.0 * np.pi / apart), period, periods)
     centre = (len(values) - 1) / 2.0
     known = None
     if low is not None and high is not None:

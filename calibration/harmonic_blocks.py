@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 __all__ = ["HarmonicBlocks", "lay_blocks"]
 
-_MOST_BLOCKS = 192
+_MOST_BLOCKS = 192  # of 40 periods; shorter ones may be more
 _LONGEST = 16384
 
 
@@ -60,7 +60,9 @@ def _window(length: int) -> NDArray[np.float64]:
     return np.asarray(1.0 - np.cos(2.0 * np.pi * np.arange(length) / length))
 
 
-def lay_blocks(values: NDArray[np.float64], shortest: float, period: float) -> HarmonicBlocks:
+def lay_blocks(
+    values: NDArray[np.float64], shortest: float, period: float, periods: float = 40.0
+) -> HarmonicBlocks:
     """Cut a record into overlapping blocks.
 
     Parameters
@@ -71,6 +73,8 @@ def lay_blocks(values: NDArray[np.float64], shortest: float, period: float) -> H
         Least length of a block [samples], enough to tell the lines apart.
     period : float
         Period of the lowest line [samples]; a block holds a whole number of them, nearly.
+    periods : float, optional
+        Most periods in a block, where ``shortest`` allows.
 
     Returns
     -------
@@ -78,10 +82,10 @@ def lay_blocks(values: NDArray[np.float64], shortest: float, period: float) -> H
         Blocks that lack less than a tenth of their samples; missing ones count as the block's mean.
     """
     n = len(values)
-    length = max(shortest, min(n / 12.0, 40.0 * period, float(_LONGEST)))
+    length = max(shortest, min(n / 12.0, periods * period, float(_LONGEST)))
     length = min(max(round(length / period), 1) * period, float(n))
     size = max(math.floor(length + 0.5), 1)
-    count = min(max(2 * (n // size) - 1, 1), _MOST_BLOCKS)
+    count = min(max(2 * (n // size) - 1, 1), round(_MOST_BLOCKS * max(40.0 / periods, 1.0)))
     starts = np.unique(np.round(np.linspace(0, n - size, count)).astype(np.int64))
     pieces = np.stack([values[s : s + size] for s in starts.tolist()])
     good = np.isfinite(pieces)

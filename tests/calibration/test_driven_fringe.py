@@ -241,3 +241,21 @@ def test_fibre_modulator_at_a_fringe_top_is_refused():
     for given in ({"low": 0.44, "high": 9.69}, {"low": 0.5, "high": 10.2}):
         fit = fit_driven_fringe_si(volts, 200.0, [30.0], **given)
         assert any("fringe top" in reason for reason in fit.reasons)
+
+
+@pytest.mark.parametrize("sweeps", [4, 15])
+def test_a_free_running_bench(sweeps):
+    # 10 s of a bench whose arms run over many fringes, back and forth, under a shallow line
+    rate_hz, n = 2000.0, 20_000
+    rng = np.random.default_rng(sweeps)
+    t = np.arange(n) / rate_hz
+    phase = 0.4 + np.cumsum(rng.normal(size=n)) * 0.2 / np.sqrt(rate_hz)
+    phase += 2 * np.pi * sweeps * np.abs(((t / 7 + 0.3) % 1) * 2 - 1)
+    volts = 1.2 + np.cos(phase + 0.3 * np.cos(2 * np.pi * 87.1 * t)) + 0.01 * rng.normal(size=n)
+    fit = fit_driven_fringe_si(volts, rate_hz, [87.1])
+    assert fit.is_trustworthy, fit.reasons
+    assert float(fit.phase_amplitude[0].magnitude) == pytest.approx(0.3, abs=3e-3)
+    assert float(fit.low.magnitude) == pytest.approx(0.2, abs=8e-3)
+    assert float(fit.high.magnitude) == pytest.approx(2.2, abs=8e-3)
+    moved = fit.working_range_rad[1] - fit.working_range_rad[0]
+    assert moved == pytest.approx(np.ptp(phase), rel=0.05)

@@ -196,4 +196,4 @@ def fit_edge(
     weight = table.sum(axis=1) / max(bins.counts.sum(), 1.0)
     score = table @ (slope / expected[:, None]) - np.outer(weight, slope.sum(axis=0))
     spread = np.linalg.inv(_information(slope, expected, noise, dwell))
-    return Edge(value, noise, (score @ spread)[:, 0], weight, math.sqrt(max(spread[0, 0], 0.0)))
+    return Edge(float(value), noise, (score @ spread)[:, 0], weight, math.sqrt(max(spread[0, 0], 0.0)))

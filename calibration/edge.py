@@ -79,7 +79,7 @@ def _count(
     values: NDArray[np.float64], value: float, half_span: float, noise: float, step: float
 ) -> tuple[_Bins, NDArray[np.int64], NDArray[np.bool_]]:
     """Count the samples near the edge in bins that hold whole steps of the converter."""
-    reach = min(_REACH * noise, 0.6 * half_span)
+    reach = min(max(_REACH * noise, 10.0 * step), 0.6 * half_span)
     end = max(float(values.max()) + step, value + 6.0 * noise)
     width = max(noise / 3.0, (end - value + reach) / _MOST_BINS)
     start = value - reach
@@ -109,7 +109,8 @@ def _information(
     dwell: NDArray[np.float64],
 ) -> NDArray[np.float64]:
     """Return the Fisher information, with that of one more sample so that it is never singular."""
-    one = np.array([1.0 / noise**2, 1.0, 1.0 / dwell[0] ** 2, 1.0 / dwell[0] ** 2])
+    scale = max(float(dwell[0]), _TINY)
+    one = np.array([1.0 / noise**2, 1.0, 1.0 / scale**2, 1.0 / scale**2])
     return np.asarray(slope.T @ (slope / expected[:, None]) + np.diag(one))
 
 
@@ -178,7 +179,10 @@ def fit_edge(
     """
     value = float(np.quantile(values, 0.995)) - noise
     # power noise makes one edge far sharper than the other; below 0.03 % of the span nothing is gained
-    least, most = max(0.03 * noise, 3e-4 * half_span), max(12.0 * noise, 0.02 * half_span)
+    least, most = (
+        max(0.03 * noise, 3e-4 * half_span, 0.1 * step),
+        max(12.0 * noise, 0.02 * half_span),
+    )
     noise = max(
         noise, 0.01 * half_span
     )  # a coarse look first, so that the edge lies in the stretch
@@ -196,4 +200,6 @@ def fit_edge(
     weight = table.sum(axis=1) / max(bins.counts.sum(), 1.0)
     score = table @ (slope / expected[:, None]) - np.outer(weight, slope.sum(axis=0))
     spread = np.linalg.inv(_information(slope, expected, noise, dwell))
-    return Edge(float(value), noise, (score @ spread)[:, 0], weight, math.sqrt(max(spread[0, 0], 0.0)))
+    return Edge(
+        float(value), noise, (score @ spread)[:, 0], weight, math.sqrt(max(spread[0, 0], 0.0))
+    )

@@ -6,7 +6,7 @@ exaggerate), and their uncertainty is the scatter from pass to pass.
 """
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -97,6 +97,25 @@ def _converter_step(values: NDArray[np.float64]) -> float:
         return 0.0
     gaps = np.diff(levels)
     return float(np.median(gaps[gaps < 1.5 * np.quantile(gaps, 0.1)]))
+
+
+def _clipped(values: NDArray[np.float64], step: float) -> list[str]:
+    """Return at which end samples pile up as no fringe does.
+
+    The last step of an unclipped fringe holds at most 1/(√2 − 1) = 2.4 times what the one before
+    holds, as the distribution rises as 1/√distance.
+    """
+    width = step or 1e-6 * float(np.ptp(values))
+    out = []
+    for name, level in (("bottom", -values), ("top", values)):
+        end = float(level.max())
+        last = int(np.count_nonzero(level > end - 0.5 * width))
+        before = int(np.count_nonzero(level > end - 1.5 * width)) - last
+        if last > max(20, 6 * before, 0.003 * len(values)):
+            out.append(
+                f"the {name} is clipped: {last} samples of {len(values)} lie on the last value"
+            )
+    return out
 
 
 def _variance(edge: Edge, together: float) -> tuple[float, float]:
@@ -222,13 +241,16 @@ def fit_scan(values: NDArray[np.float64], rate_hz: float) -> ScanFit:
     if np.ptp(values[good]) <= 0.0:
         raise CalibrationError(f"the scan does not change: every sample is {values[good][0]}")
     step = _converter_step(values[good])
-    length = smoothing_length(values)
+    raw_noise = noise_std(values)
+    # steps wider than the noise do not average out: then the edges are fitted step by step
+    length = smoothing_length(values) if step < 1.5 * raw_noise else 1
     smoothed = smooth(values, length)
     used = np.flatnonzero(np.isfinite(smoothed))
-    noise = max(noise_std(values), 0.3 * step) * math.sqrt(noise_gain(length))
+    noise = max(raw_noise, 0.3 * step) * math.sqrt(noise_gain(length))
     if length > 1:
         step = 0.0  # averages fall between the converter's steps
-    return _fit(smoothed[used], used / len(values) - 0.5, noise, step, 1.0 / noise_gain(length))
+    fit = _fit(smoothed[used], used / len(values) - 0.5, noise, step, 1.0 / noise_gain(length))
+    return replace(fit, reasons=_clipped(values[good], step) + fit.reasons)
 
 
 def _fit(

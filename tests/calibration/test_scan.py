@@ -140,3 +140,20 @@ def test_the_law_of_an_ideal_fringe_has_no_harmonics():
         fit = fit_scan(volts, RATE_HZ)
         assert fit.harmonics == pytest.approx([0.0, 0.0], abs=0.016)
         assert np.all(fit.harmonics_u < 0.02)
+
+
+def test_clipping_is_named():
+    for share in (0.03, 0.1):
+        volts, low, high = scan(2)
+        fit = fit_scan(np.minimum(volts, high - share * (high - low)), RATE_HZ)
+        assert any("top is clipped" in reason for reason in fit.reasons)
+
+
+@pytest.mark.parametrize("levels", [40, 150])
+def test_coarse_steps_without_noise(levels):
+    for seed in range(3):
+        volts, low, high = scan(seed, power_noise=0.0, noise=0.0, step=2.9 / levels)
+        fit = fit_scan(volts, RATE_HZ)
+        assert fit.is_trustworthy, fit.reasons
+        assert fit.high == pytest.approx(high, abs=0.15 * 2.9 / levels)
+        assert fit.low == pytest.approx(low, abs=0.15 * 2.9 / levels)

@@ -27,7 +27,7 @@ TOO_WEAK = "too weak"
 _UNSTEADY_SHARE = 3e-3  # of the line: less is in its u already, and small
 _UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 _MODULATED = 0.03  # rms change of the amplitude or phase, relative or rad
-_BY_CHANCE = 1e-5
+_BY_CHANCE = 1e-4
 _CODES_LOOKED_AT = 1 << 16
 
 

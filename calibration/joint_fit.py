@@ -14,6 +14,7 @@ from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
 from calibration.phasors import BlockPhasors, block_waves, start_phases
+from calibration.tall_product import tall_product
 
 __all__ = [
     "JointFit",
@@ -206,9 +207,11 @@ def residual_phasors(
     """
     blocks = _Blocks.of(phasors, regressors)
     model = blocks.model_phasors(fit)
-    for rows, waves, table in blocks.missing():
-        lost = table @ np.concatenate([fit.coefficients.real, fit.coefficients.imag, fit.drift])
-        np.add.at(model, rows, -lost[:, None] * np.conj(waves))
+    parameters = np.concatenate([fit.coefficients.real, fit.coefficients.imag, fit.drift])
+    for rows, sign, waves, table in blocks.exceptions():
+        of_samples = (sign * (table @ parameters))[:, None] * np.conj(waves)
+        first = np.flatnonzero(np.diff(rows, prepend=-1))
+        model[rows[first]] += np.add.reduceat(of_samples, first)
     return np.asarray(phasors.sums - model)
 
 
@@ -217,8 +220,8 @@ def _normal_equations(
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     blocks = _Blocks.of(phasors, regressors)
     gram = blocks.whole_gram()
-    for _, _, table in blocks.missing():
-        gram -= table.T @ table
+    for _, sign, _, table in blocks.exceptions():
+        gram += tall_product(sign[:, None] * table, table)
     values = (np.conj(regressors.weights) * phasors.sums[:, regressors.carrier]).sum(axis=0)
     if regressors.slopes is not None:
         if phasors.slopes is None:
@@ -257,21 +260,23 @@ def _moments(
     waves: NDArray[np.complex128] = np.conj(block_waves(np.frombuffer(cycles), block))
     powers = np.stack([np.ones_like(u), u, u * u])
     weighted = powers[:, :, None] * waves
-    sums = np.stack([waves.T @ weighted, np.conj(waves.T) @ weighted])
-    return sums, np.asarray(powers @ waves), np.asarray(powers.sum(axis=1))
+    both = (waves, np.conj(waves))
+    sums = np.stack([[tall_product(left, right) for right in weighted] for left in both])
+    return sums, np.asarray(weighted.sum(axis=1)), np.asarray(powers.sum(axis=1))
 
 
 @lru_cache(maxsize=4)
-def _missing(
+def _exceptions(
     cycles: bytes, block: int, touched: bytes, bits: bytes
-) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.complex128]]:
-    """Return block numbers, places in the block and carriers of the samples left out."""
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64], NDArray[np.complex128]]:
+    """Return block numbers, places in the block, signs and carriers of the samples to put right."""
     numbers = np.frombuffer(touched, dtype=np.int64)
     packed = np.frombuffer(bits, dtype=np.uint8).reshape(len(numbers), -1)
-    place, offset = np.nonzero(np.unpackbits(packed, axis=1, count=block) == 0)
-    lost = numbers[place]
-    waves = np.exp(1j * start_phases(np.frombuffer(cycles), lost * block + offset))
-    return lost, offset, waves
+    used = np.unpackbits(packed, axis=1, count=block) != 0
+    thin = 2 * used.sum(axis=1) < block
+    place, offset = np.nonzero(used == thin[:, None])
+    waves = np.exp(1j * start_phases(np.frombuffer(cycles), numbers[place] * block + offset))
+    return numbers[place], offset, np.where(thin[place], 1.0, -1.0), waves
 
 
 @dataclass(frozen=True, slots=True)
@@ -280,6 +285,7 @@ class _Blocks:
 
     phasors: BlockPhasors
     regressors: Regressors
+    drift: NDArray[np.float64]
     factors: tuple[NDArray[np.complex128], ...]
     sums: NDArray[np.complex128]
     wave_moments: NDArray[np.complex128]
@@ -287,21 +293,24 @@ class _Blocks:
 
     @classmethod
     def of(cls, phasors: BlockPhasors, regressors: Regressors) -> "_Blocks":
-        turns = _block_turns(phasors)[:, regressors.carrier]
+        # Blocks that are mostly missing count sample by sample instead; see exceptions().
+        kept = (2 * phasors.counts >= phasors.block)[:, None]
+        turns = np.where(kept, _block_turns(phasors)[:, regressors.carrier], 0.0)
         factors = [turns * regressors.weights]
         if regressors.slopes is not None:
             factors.append(turns * regressors.slopes)
-        return cls(phasors, regressors, tuple(factors), *_carrier_moments(phasors))
+        drift = np.where(kept[:, :, None], regressors.drift, 0.0)
+        return cls(phasors, regressors, drift, tuple(factors), *_carrier_moments(phasors))
 
     def whole_gram(self) -> NDArray[np.float64]:
-        """Return the normal matrix as if no sample were missing."""
+        """Return the normal matrix of the blocks that are mostly there, as if they were full."""
         c = self.regressors.carrier
         alike = np.zeros((len(c), len(c)), dtype=np.complex128)
         mixed = np.zeros_like(alike)
         for p, left in enumerate(self.factors):
             for q, right in enumerate(self.factors):
-                alike += (left.T @ right) * self.sums[0, p + q][np.ix_(c, c)]
-                mixed += (np.conj(left).T @ right) * self.sums[1, p + q][np.ix_(c, c)]
+                alike += tall_product(left, right) * self.sums[0, p + q][np.ix_(c, c)]
+                mixed += tall_product(np.conj(left), right) * self.sums[1, p + q][np.ix_(c, c)]
         return self._real_gram(alike, mixed, self._drift_gram(), self._cross_gram())
 
     def _real_gram(
@@ -324,14 +333,16 @@ class _Blocks:
         )
 
     def _drift_gram(self) -> NDArray[np.float64]:
-        d = self.regressors.drift
+        d = self.drift
         value, change = d[:, :, 0], d[:, :, 1]
         n0, n1, n2 = self.drift_moments
-        mixed = value.T @ change
-        return np.asarray(n0 * value.T @ value + n1 * (mixed + mixed.T) + n2 * change.T @ change)
+        mixed = tall_product(value, change)
+        return np.asarray(
+            n0 * (value.T @ value) + n1 * (mixed + mixed.T) + n2 * (change.T @ change)
+        )
 
     def _cross_gram(self) -> NDArray[np.complex128]:
-        d, c = self.regressors.drift, self.regressors.carrier
+        d, c = self.drift, self.regressors.carrier
         total = np.zeros((len(c), d.shape[1]), dtype=np.complex128)
         for p, factor in enumerate(self.factors):
             for q in range(2):
@@ -339,12 +350,12 @@ class _Blocks:
         return total
 
     def model_phasors(self, fit: JointFit) -> NDArray[np.complex128]:
-        """Return the phasors of the fitted model as if no sample were missing."""
+        """Return the phasors of the fitted model in the same blocks, as if they were full."""
         k = len(self.phasors.cycles)
         onto = np.zeros((len(self.regressors.carrier), k))
         onto[np.arange(len(onto)), self.regressors.carrier] = 1.0
         total = np.zeros((len(self.phasors.numbers), k), dtype=np.complex128)
-        drift = np.einsum("bjm,j->bm", self.regressors.drift, fit.drift)
+        drift = np.einsum("bjm,j->bm", self.drift, fit.drift)
         for p, factor in enumerate(self.factors):
             amplitude = (factor * fit.coefficients) @ onto
             total += 0.5 * amplitude @ np.conj(self.sums[1, p])
@@ -353,19 +364,26 @@ class _Blocks:
             total += drift[:, q, None] * np.conj(self.wave_moments[q])
         return np.asarray(total * np.conj(_block_turns(self.phasors)))
 
-    def missing(
+    def exceptions(
         self,
-    ) -> Iterator[tuple[NDArray[np.int64], NDArray[np.complex128], NDArray[np.float64]]]:
-        """Yield block rows, carriers and real regressors of the samples left out."""
+    ) -> Iterator[
+        tuple[NDArray[np.int64], NDArray[np.float64], NDArray[np.complex128], NDArray[np.float64]]
+    ]:
+        """Yield block rows, signs, carriers and real regressors of samples to put right.
+
+        In a block that is mostly there the missing samples are taken out again, sign −1; one that is
+        mostly missing was left out as a whole, and its few samples are put in, sign 1.
+        """
         phasors, block = self.phasors, self.phasors.block
         step = max(1, _MISSING_CHUNK // block)
         for at in range(0, len(phasors.touched), step):
             touched, bits = phasors.touched[at : at + step], phasors.masks[at : at + step]
-            lost, offset, waves = _missing(
+            numbers, offset, sign, waves = _exceptions(
                 phasors.cycles.tobytes(), block, touched.tobytes(), bits.tobytes()
             )
-            row = np.searchsorted(phasors.numbers, lost)
-            yield row, waves, self._table(row, offset, waves)
+            row = np.searchsorted(phasors.numbers, numbers)
+            if len(row):
+                yield row, sign, waves, self._table(row, offset, waves)
 
     def _table(
         self, row: NDArray[np.int64], offset: NDArray[np.int64], waves: NDArray[np.complex128]

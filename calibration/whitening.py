@@ -15,13 +15,14 @@ from numpy.typing import NDArray
 
 from calibration.phase_course import PhaseCourse
 from calibration.phasors import start_phases
+from calibration.tall_product import tall_product
 
 __all__ = ["choose_taps", "tap_response"]
 
 _ORDERS = (1, 2, 3, 4, 6, 8, 12, 16)
 _SEGMENTS = 8
 _SEGMENT_SAMPLES = 1 << 14
-_SEGMENT_ROWS = 1024
+_SEGMENT_ROWS = 768
 # A filter of reach r loses r samples after each gap. In 1/f² noise no filter costs half the
 # information, so above this share lost a shorter filter is taken.
 _MOST_LOST = 0.4
@@ -162,10 +163,10 @@ def _lag_products(
         # Centred first: an offset far above the noise must not eat the digits of the products.
         lagged = lagged - lagged.mean()
         # Twice, so that what rounding leaves of the lines is small against the noise too.
-        inverse = np.linalg.pinv(known.T @ known, rcond=1e-12, hermitian=True)
-        lagged = lagged - known @ (inverse @ (known.T @ lagged))
-        lagged = lagged - known @ (inverse @ (known.T @ lagged))
-        total += lagged.T @ lagged
+        inverse = np.linalg.pinv(tall_product(known, known), rcond=1e-12, hermitian=True)
+        lagged = lagged - known @ (inverse @ tall_product(known, lagged))
+        lagged = lagged - known @ (inverse @ tall_product(known, lagged))
+        total += tall_product(lagged, lagged)
         rows += len(n) - known.shape[1]
     return total, rows
 

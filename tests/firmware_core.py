@@ -308,6 +308,13 @@ class Device:
         )
         return code
 
+    def sample(self, value, clock=0):
+        """Go through one sample with the drive, beside rest, as channel 1; return all it says."""
+        code = self.library.pd_device_code(c.byref(self.state))
+        scan = (c.c_int32 * 2)(value, code - self.board.drive.rest)
+        self.library.pd_device_sample(c.byref(self.state), scan, c.c_uint64(clock), c.c_uint16(0))
+        return self.drain()
+
     def next(self):
         """Return the next message that is due, empty if there is none."""
         out = (c.c_uint8 * ROOM)()

@@ -19,7 +19,7 @@ __all__ = ["Progress", "RecordingSession"]
 
 _log = logging.getLogger(__name__)
 
-_ASK_S = 0.5  # how often an unannounced board is asked again
+_ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
 _SILENCE_S = 5.0  # without one valid message at the start
 _STALL_S = 10.0  # without one midway
 _TEXT_SILENCE_S = 30.0
@@ -148,7 +148,7 @@ class RecordingSession:
         try:
             while not self._stop.is_set():
                 now_s = time.monotonic()
-                if asked_s is None or (not self._intake.is_announced and now_s - asked_s >= _ASK_S):
+                if asked_s is None or now_s - asked_s >= _ASK_S:
                     self._ask(is_first=asked_s is None)
                     asked_s = now_s
                 try:
@@ -162,7 +162,7 @@ class RecordingSession:
                 if data:
                     self._queue.put(_arrival(data))
             if self._framer is None:
-                self._source.write(encode_command(CommandCode.STOP, self._next_request()))
+                self._say(CommandCode.STOP)
         except Exception as error:  # noqa: BLE001  # a thread's failure is the recording's
             self._failure = error
             self._stop.set()
@@ -173,9 +173,15 @@ class RecordingSession:
     def _ask(self, *, is_first: bool) -> None:
         if self._framer is not None:
             return
-        self._source.write(encode_command(CommandCode.IDENTIFY, self._next_request()))
+        if is_first or not self._intake.is_announced:
+            self._say(CommandCode.IDENTIFY)
+        else:
+            self._say(CommandCode.KEEP_ALIVE)  # else a board's drive goes to rest after 2 s
         if is_first:
-            self._source.write(encode_command(CommandCode.START, self._next_request()))
+            self._say(CommandCode.START)
+
+    def _say(self, code: CommandCode) -> None:
+        self._source.write(encode_command(code, self._next_request()))
 
     def _next_request(self) -> int:
         self._request = (self._request + 1) % 65536

@@ -15,13 +15,15 @@ _PROBE_BYTES = 65536
 _FEW = 2  # stamps in a file's first lines: fewer are a date in a preamble
 
 
-def stamps_to_seconds(data: bytes) -> bytes:
+def stamps_to_seconds(data: bytes, fewest: int = _FEW) -> bytes:
     """Return a text with the calendar stamps at the beginning of its lines as seconds since 1970.
 
     Parameters
     ----------
     data : bytes
         As :func:`firmware_bridge.text_encoding.plain_text` returns it.
+    fewest : int
+        How many of its lines must begin so.
 
     Returns
     -------
@@ -33,7 +35,7 @@ def stamps_to_seconds(data: bytes) -> bytes:
     ----------
     ISO 8601-1:2019, 5.4 (date and time of day).
     """
-    if len(_STAMP.findall(data, 0, _PROBE_BYTES)) < _FEW:
+    if len(_STAMP.findall(data, 0, _PROBE_BYTES)) < fewest:
         return data
     return _STAMP.sub(_seconds, data)
 

@@ -6,10 +6,11 @@ from pathlib import Path
 
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.cobs import encode
-from firmware_bridge.decoder import Decoder, Samples, parse_samples
+from firmware_bridge.decoder import Decoder, Event, Samples, parse_samples
 from firmware_bridge.envelope import Discarded, seal
 from firmware_bridge.frame import HEADER
 from firmware_bridge.host_note import End, Join, Remark, Stamp
+from firmware_bridge.line_frames import Pause
 from firmware_bridge.message import WIRE_VERSION, MessageError, MessageType
 from firmware_bridge.recording_header import Header
 from firmware_bridge.trace import Gap
@@ -60,6 +61,7 @@ class Intake:
         self._writer: Writer | None = None
         self._announced: dict[int, Announcement] = {}
         self._current: Announcement | None = None
+        self._pauses: dict[int, Pause] = {}
         self._grid: dict[int, int] = {}  # stream: grid index of the board's index 0
         self._closed_streams: set[int] = set()  # those of earlier files
         self._earlier_s = 0.0
@@ -107,13 +109,16 @@ class Intake:
         """Announced rate, None before the announcement."""
         return None if self._current is None else self._current.rate_hz
 
-    def take(self, piece: bytes | Discarded, monotonic_ns: int, unix_ns: int) -> None:
+    def take(
+        self, piece: bytes | Discarded | Pause | Remark, monotonic_ns: int, unix_ns: int
+    ) -> None:
         """Take one unwrapped message, or what the unwrapper discarded, with its time of arrival.
 
         Parameters
         ----------
-        piece : bytes or Discarded
-            Content and CRC, or what was thrown away.
+        piece : bytes, Discarded, Pause or Remark
+            Content and CRC, or what was thrown away; from lines of text also a pause that is
+            known better than by the arrival of frames, and remarks.
         monotonic_ns, unix_ns : int
             The host's clocks at its arrival.
 
@@ -127,6 +132,10 @@ class Intake:
             return
         if isinstance(piece, Discarded):
             self._discard(piece)
+        elif isinstance(piece, Pause):
+            self._pauses[piece.stream] = piece
+        elif isinstance(piece, Remark):
+            self.remark(piece.text)
         elif piece[1] != WIRE_VERSION or piece[0] >= MessageType.PIECE:
             self._discard_message(piece, f"message type {piece[0]:#04x}, wire version {piece[1]}")
         elif piece[0] == MessageType.ANNOUNCEMENT:
@@ -223,6 +232,8 @@ class Intake:
             self._reached = 0
             self._closed_streams |= self._grid.keys()
             self._grid.clear()
+        else:
+            self._follow(self._decoder.flush())  # what is held would make the place too early
         is_first = self._writer is None
         self._current = announcement
         grid, grid_u = 0, 0.0
@@ -233,6 +244,9 @@ class Intake:
                 overwrite=self._overwrite and not self.files,
             )
             self.files.append(self._writer.path)
+        elif frame.stream in self._pauses:
+            pause = self._pauses.pop(frame.stream)
+            grid, grid_u = self._reached + pause.length, pause.length_u
         else:
             rate = announcement.rate_hz * announcement.speed
             elapsed = round((self._now_ns[0] - self._last_ns[0]) * 1e-9 * rate)
@@ -264,6 +278,11 @@ class Intake:
         if self._was_away:
             events += self._decoder.flush()
             self._was_away = False
+        self._follow(events)
+        if not self._stamped_ns:
+            self._stamp()
+
+    def _follow(self, events: list[Event]) -> None:
         for event in events:
             if isinstance(event, Discarded):
                 self._discard(event)
@@ -271,8 +290,6 @@ class Intake:
                 self.gaps += 1
             elif isinstance(event, Samples):
                 self._count(event)
-        if not self._stamped_ns:
-            self._stamp()
 
     def _count(self, frame: Samples) -> None:
         if self.is_complete:

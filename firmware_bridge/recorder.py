@@ -107,11 +107,11 @@ def record(
     if Path(path).exists() and not overwrite:
         raise BridgeError(f"{path} exists; --overwrite replaces it")
     source = open_port(port, baud) if isinstance(port, str) else port
-    info = {"port": source.name, "source": "text" if text else "frames"}
-    if text and rate_hz is None:
-        info["rate"] = "by the host's clock"
-    intake = Intake(path, info=info, duration_s=duration_s, overwrite=overwrite)
     framer = TextFramer(secrets.randbits(32), rate_hz) if text else None
+    # A framer of text completes it once the first lines have told what it reads.
+    info = {"source": "frames"} if framer is None else framer.origin
+    info["port"] = source.name
+    intake = Intake(path, info=info, duration_s=duration_s, overwrite=overwrite)
     stop = stop or threading.Event()
     RecordingSession(source, baud, intake, framer, reconnect, stop).run(progress)
     return _summary(intake)

@@ -8,11 +8,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.host_note import End, Join, Pieces, Remark, Stamp, parse_host_note
+from firmware_bridge.line_clock import FrameClocks, LineClock
 from firmware_bridge.message import MessageError, MessageType, Note, parse_message
 from firmware_bridge.record_file import RecordFile
 from firmware_bridge.record_index import RecordIndex, lengths
 from firmware_bridge.recording_header import RecordingError
-from firmware_bridge.trace import Channel, Gap, Recording, Span
+from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
 
 __all__ = ["MfrRecording", "open_mfr"]
 
@@ -46,14 +47,20 @@ class MfrRecording(Recording):
         """Samples records that were there twice."""
         self._joins: dict[int, Join] = {}
         self._end: End | None = None
+        self._clocks = self._maybe_clocks()
         index = self._scan()
         self._flagged = index.flagged
         self._runs, length, gaps = self._place(index)
         announced = self.header.announcement
+        clock = LineClock(announced.rate_hz, None, Timing())
+        if self._clocks is not None:
+            clock = self._clocks.fit()
         super().__init__(
             path=str(path),
             format="mfr",
-            rate_hz=announced.rate_hz,
+            rate_hz=clock.rate_hz,
+            rate_u_hz=clock.rate_u_hz,
+            timing=clock.timing,
             channels=[Channel(c.name, c.unit, c.scale, c.offset) for c in announced.channels],
             length=length,
             gaps=gaps,
@@ -67,9 +74,19 @@ class MfrRecording(Recording):
         for chunk in self.file.chunks():
             self.damaged += chunk.damaged
             index.add(chunk)
+            if self._clocks is not None:
+                heads = chunk.heads[chunk.samples]
+                self._clocks.add(heads["stream"], heads["index"], heads["clock"])
             for _, message in chunk.messages:
                 self._take(message, pieces)
         return index
+
+    def _maybe_clocks(self) -> FrameClocks | None:
+        """Return what finds the rate of lines of text; boards that send frames announce theirs."""
+        announced, origin = self.header.announcement, self.header.info
+        if origin.get("source") != "text":
+            return None
+        return FrameClocks(origin, announced.rate_hz, announced.clock_hz)
 
     def _take(self, message: bytes, pieces: Pieces) -> None:
         try:
@@ -150,6 +167,7 @@ class MfrRecording(Recording):
             (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
             (len(self._joins) > 1, "the board was restarted or reconnected"),
             ("rate" in self.header.info, f"the rate is {self.header.info.get('rate')}"),
+            ("time" in self.header.info, str(self.header.info.get("time"))),
             (self.header.announcement.simulated, "recorded from a simulated board"),
         ]
         return [text for is_so, text in said if is_so]

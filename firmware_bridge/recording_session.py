@@ -221,16 +221,22 @@ class RecordingSession:
             ended = self._ended.is_set()
             arrivals = self._queue.take(0.05)
             if ended and not arrivals:
+                self._finish_text()
                 return
             for arrival in arrivals:
                 if self._take(arrival):
                     heard_s = time.monotonic()
             now_ns, unix_ns = time.monotonic_ns(), time.time_ns()
             if self._framer is not None:
-                for message in self._framer.tick(now_ns * 1e-9):
-                    self._intake.take(message, now_ns, unix_ns)
+                for piece in self._framer.tick(now_ns * 1e-9):
+                    self._intake.take(piece, now_ns, unix_ns)
             self._intake.tick(now_ns, unix_ns)
             self._check_silence(time.monotonic() - heard_s)
+
+    def _finish_text(self) -> None:
+        if self._framer is not None:
+            for piece in self._framer.finish():
+                self._intake.take(piece, time.monotonic_ns(), time.time_ns())
 
     def _take(self, arrival: Arrival) -> bool:
         """Hand one arrival on; return whether anything valid was in it."""
@@ -244,18 +250,25 @@ class RecordingSession:
             self._intake.away()
             self._intake.remark(f"{self._name} is back")
         self._bytes += len(arrival.data)
-        if self._framer is None:
-            pieces = self._unwrapper.feed(arrival.data)
-        else:
-            pieces = self._framer.feed(arrival.data, arrival.monotonic_ns * 1e-9)
+        if self._framer is not None:
+            return self._take_text(self._framer, arrival)
+        pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
             self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
         return any(isinstance(piece, bytes) and piece[0] != MessageType.COMMAND for piece in pieces)
 
+    def _take_text(self, framer: TextFramer, arrival: Arrival) -> bool:
+        before = framer.heard
+        for piece in framer.feed(arrival.data, arrival.monotonic_ns * 1e-9):
+            self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
+        return framer.heard > before
+
     def _lost(self, reason: str) -> None:
         for piece in self._unwrapper.close():
             self._intake.take(piece, time.monotonic_ns(), time.time_ns())
+        if not self._reconnect:
+            self._finish_text()
         self._intake.remark(f"{self._name} is gone: {reason}")
         if not self._reconnect:
             raise DeviceFailedError(f"{self._name} failed: {reason}; {self._kept()}")

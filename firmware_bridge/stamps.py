@@ -42,6 +42,8 @@ class Grid:
         The place of each on the grid, from 0, strictly increasing.
     start_s : float
         The stamp of the first sample.
+    scatter_s, jitter_s : float
+        Rms distance of the stamps from the grid [s], and what is left of it without their rounding.
     gaps : list of Gap
         Samples that the stamps tell of and the table does not hold.
     remarks : list of str
@@ -53,6 +55,8 @@ class Grid:
     rows: NDArray[np.int64]
     index: NDArray[np.int64]
     start_s: float
+    scatter_s: float = 0.0
+    jitter_s: float = 0.0
     gaps: list[Gap] = field(default_factory=list)
     remarks: list[str] = field(default_factory=list)
 
@@ -175,7 +179,10 @@ def _grid(
     scatter = np.maximum(excess, max(fit.scatter_s, resolution_s / math.sqrt(12)) / fit.step_s)
     gaps = _gaps(index, scatter, fit.step_u_s / fit.step_s)
     rate_u_hz = fit.step_u_s * rate_hz**2
-    return Grid(rate_hz, rate_u_hz, rows, index - index[0], float(stamps[0]), gaps, remarks)
+    rounding_s = resolution_s / math.sqrt(12)
+    jitter_s = 0.0 if fit.is_rounding else math.sqrt(max(0.0, fit.scatter_s**2 - rounding_s**2))
+    places, start_s = index - index[0], float(stamps[0])
+    return Grid(rate_hz, rate_u_hz, rows, places, start_s, fit.scatter_s, jitter_s, gaps, remarks)
 
 
 def _gaps(index: NDArray[np.int64], scatter: NDArray[np.float64], step_u: float) -> list[Gap]:

@@ -12,7 +12,7 @@ from firmware_bridge.missing_rows import with_missing
 from firmware_bridge.stamps import Grid, fit_grid
 from firmware_bridge.table import Table
 from firmware_bridge.time_column import TimeColumn, maybe_find_time, named_time
-from firmware_bridge.trace import Channel, Gap, Recording, Span
+from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
 
 __all__ = ["RateError", "TableRecording", "to_recording"]
 
@@ -53,6 +53,7 @@ class TableRecording(Recording):
         self._grid = grid
         self._is_whole = grid.rows.size == table.rows and not grid.gaps
         self.start_s = grid.start_s
+        rows = max(1, grid.rows.size)
         self._offset_s = grid.start_s if own_time else 0.0
         super().__init__(
             path=path,
@@ -65,6 +66,7 @@ class TableRecording(Recording):
             over_range=sum(int(np.isinf(column[grid.rows]).sum()) for column in self._columns),
             remarks=remarks,
             columns=[k + 1 for k in positions],
+            timing=Timing(jitter_s=grid.jitter_s, jitter_u_s=grid.jitter_s / (2 * rows) ** 0.5),
         )
 
     def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
@@ -182,7 +184,7 @@ def _grid(
         remarks += grid.remarks
         gaps = [Gap(gap.index, gap.length) for gap in grid.gaps]
         start_s = grid.start_s / rate_hz
-        return Grid(rate_hz, table.rate_u_hz or 0.0, grid.rows, grid.index, start_s, gaps)
+        return Grid(rate_hz, table.rate_u_hz or 0.0, grid.rows, grid.index, start_s, gaps=gaps)
     rows = np.arange(table.rows)
     return Grid(rate_hz, table.rate_u_hz or 0.0, rows, rows, 0.0)
 

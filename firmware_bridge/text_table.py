@@ -1,7 +1,5 @@
 """CSV and text files to a table: the first section is read, the rest reported."""
 
-import math
-import re
 from collections.abc import Sequence
 
 import numpy as np
@@ -11,16 +9,14 @@ from firmware_bridge.calendar_stamps import stamps_to_seconds
 from firmware_bridge.column_name import split_header
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.preamble import maybe_stated_rate_hz
+from firmware_bridge.printed_digits import finest_digits
 from firmware_bridge.table import Table
 from firmware_bridge.text_encoding import decode_line, is_text, plain_text
-from firmware_bridge.text_fields import split_fields
-from firmware_bridge.text_layout import TextLayout
 from firmware_bridge.text_section import TextSection, maybe_read_section
 
-__all__ = ["TextError", "read_text_table"]
+__all__ = ["TextError", "columns_kept", "read_text_table"]
 
 _LISTED = 10  # sections
-_PRINTED = re.compile(r"[+-]?\d*[.,]?(?P<decimals>\d*)(?:[eE](?P<exponent>[+-]?\d{1,3}))?")
 
 
 class TextError(BridgeError):
@@ -96,7 +92,7 @@ def _rest_remarks(data: bytes, section: TextSection) -> list[str]:
 def _to_table(section: TextSection, remarks: list[str]) -> Table:
     layout, values = section.layout, section.values()
     header = layout.header or ("",) * layout.columns
-    kept = _columns_kept(values, header)
+    kept = columns_kept(values, header)
     parts = [split_header(text) for text in header]
     units = layout.units or tuple(unit for _, unit in parts)
     resolutions = _resolutions(section)
@@ -111,8 +107,21 @@ def _to_table(section: TextSection, remarks: list[str]) -> Table:
     )
 
 
-def _columns_kept(values: NDArray[np.float64], header: Sequence[str]) -> range:
-    """Return the columns without the empty ones that a delimiter at a line's edge makes."""
+def columns_kept(values: NDArray[np.float64], header: Sequence[str]) -> range:
+    """Return the columns without the empty ones that a delimiter at a line's edge makes.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n, columns)
+        Rows of numbers.
+    header : sequence of str
+        Names of all columns, empty where there is none.
+
+    Returns
+    -------
+    range
+        Positions from the first to the last column that holds something.
+    """
     used = [bool(text) or not np.isnan(values[:, k]).all() for k, text in enumerate(header)]
     if True not in used:
         return range(len(used))
@@ -126,20 +135,5 @@ def _resolutions(section: TextSection) -> list[float]:
     the coarser of the two, since numbers of a fixed length lose decimals as they grow.
     """
     parts = (section.last_text.split("\n", 20)[:20], section.last_text.rsplit("\n", 20)[-20:])
-    finest = [_finest_digits(lines, section.layout) for lines in parts]
+    finest = [finest_digits(lines, section.layout) for lines in parts]
     return [max(pair) for pair in zip(*finest, strict=True)]
-
-
-def _finest_digits(lines: Sequence[str], layout: TextLayout) -> list[float]:
-    rows = [split_fields(line, layout.delimiter) for line in lines]
-    digits = [[_last_digit(field) for field in row] for row in rows if len(row) == layout.columns]
-    columns = [[row[k] for row in digits if row[k]] for k in range(layout.columns)]
-    return [min(column, default=0.0) for column in columns]
-
-
-def _last_digit(text: str) -> float:
-    match = _PRINTED.fullmatch(text)
-    if match is None or not text:
-        return 0.0
-    digit = float(f"1e{int(match['exponent'] or 0) - len(match['decimals'])}")
-    return digit if math.isfinite(digit) else 0.0

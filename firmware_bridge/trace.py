@@ -10,7 +10,17 @@ from numpy.typing import NDArray
 
 from firmware_bridge.errors import BridgeError
 
-__all__ = ["Block", "Channel", "ChannelError", "Gap", "Recording", "Span", "SpanError", "Trace"]
+__all__ = [
+    "Block",
+    "Channel",
+    "ChannelError",
+    "Gap",
+    "Recording",
+    "Span",
+    "SpanError",
+    "Timing",
+    "Trace",
+]
 
 
 class ChannelError(BridgeError):
@@ -63,6 +73,25 @@ class Gap:
     length_u: float = 0.0
 
 
+@dataclass(frozen=True, slots=True)
+class Timing:
+    """What the times of a recording's samples rest on.
+
+    Parameters
+    ----------
+    is_by_host : bool
+        True where nothing but the arrival of the samples at the host tells their times: a sample
+        lost on the way moves all that follow, and phases mean nothing.
+    jitter_s, jitter_u_s : float
+        Rms distance of the moments of sampling from the regular grid [s], and its standard
+        uncertainty. A line of frequency f loses the factor exp(−(2πf·jitter)²/2) to it.
+    """
+
+    is_by_host: bool = False
+    jitter_s: float = 0.0
+    jitter_u_s: float = 0.0
+
+
 @dataclass(frozen=True, eq=False, slots=True)
 class Span:
     """Values of some channels over some samples, as a recording reads them.
@@ -104,6 +133,8 @@ class Trace:
         Grid index of ``values[0]``, counted from the recording's first sample.
     missing, over_range : int
         How many values are NaN for either reason.
+    timing : Timing
+        What the times rest on.
     """
 
     name: str
@@ -113,6 +144,7 @@ class Trace:
     start_index: int = 0
     missing: int = 0
     over_range: int = 0
+    timing: Timing = Timing()
 
     def times_s(self) -> NDArray[np.float64]:
         """Return the times of the values [s], 0 at the recording's first sample.
@@ -155,6 +187,8 @@ class Recording(ABC):
         1, 2, 3 …
     start_unix_s : float, optional
         UTC of the first sample, seconds since 1970, where known.
+    timing : Timing
+        What the times of the samples rest on.
     """
 
     def __init__(
@@ -171,6 +205,7 @@ class Recording(ABC):
         remarks: Sequence[str] = (),
         columns: Sequence[int] | None = None,
         start_unix_s: float | None = None,
+        timing: Timing = Timing(),
     ) -> None:
         self.path = path
         self.format = format
@@ -183,6 +218,7 @@ class Recording(ABC):
         self.remarks = list(remarks)
         self.columns = tuple(columns or range(1, len(self.channels) + 1))
         self.start_unix_s = start_unix_s
+        self.timing = timing
 
     @property
     def duration_s(self) -> float:
@@ -284,6 +320,7 @@ class Recording(ABC):
             start_index=start,
             missing=empty - span.over_range,
             over_range=span.over_range,
+            timing=self.timing,
         )
 
     def blocks(

@@ -267,25 +267,42 @@ def test_lines_of_numbers_become_a_recording(pty, tmp_path, background):
         time.sleep(0.1)
         pty.send(b"17, 2.5\r\nboard v1\r\n")
         for k in range(60):
-            pty.send(b"%d, %.2f\r\n" % (k, k / 4))
+            pty.send(b"%d, %.2f\r\n" % (k * k, k / 4))
 
     background(send)
     summary = record(pty.port, tmp_path / "a.mfr", duration_s=0.5, text=True, rate_hz=100.0)
     assert summary.samples == 50
     recording = open_mfr(tmp_path / "a.mfr")
-    np.testing.assert_array_equal(recording.trace("1").values, np.arange(50))
+    np.testing.assert_array_equal(recording.trace("1").values, np.arange(50) ** 2)
     np.testing.assert_allclose(recording.trace("2").values, np.arange(50) / 4, atol=1e-12)
 
 
-def test_a_rate_by_the_hosts_clock_is_remarked(pty, tmp_path, background):
+def test_a_rate_by_the_hosts_clock_is_remarked_and_fitted_over_all(pty, tmp_path, background):
     def send():
         for k in range(2000):
-            pty.send(b"%d\n" % k)
+            pty.send(b"%d\n" % (k % 7))
             time.sleep(0.01)
 
     background(send)
-    summary = record(pty.port, tmp_path / "a.mfr", duration_s=1.5, text=True)
+    summary = record(pty.port, tmp_path / "a.mfr", duration_s=3.0, text=True)
     recording = open_mfr(tmp_path / "a.mfr")
     assert recording.remarks == ["the rate is by the host's clock"]
+    assert recording.timing.is_by_host
     assert 30 < recording.rate_hz < 100  # sleeps of 10 ms on a loaded machine
-    assert summary.samples == round(1.5 * recording.rate_hz)
+    # The duration counts lines at the rate of the first seconds.
+    assert summary.samples == pytest.approx(3.0 * recording.rate_hz, rel=0.3)
+
+
+def test_the_last_lines_before_the_end_are_kept(pty, tmp_path, background):
+    stop = threading.Event()
+
+    def send():
+        time.sleep(0.1)
+        pty.send(b"x\n" + b"".join(b"%d\n" % (k * k) for k in range(37)))
+        time.sleep(0.1)
+        stop.set()
+
+    background(send)
+    record(pty.port, tmp_path / "a.mfr", text=True, rate_hz=10.0, stop=stop)
+    values = open_mfr(tmp_path / "a.mfr").trace("1").values
+    np.testing.assert_array_equal(values, np.arange(37) ** 2)

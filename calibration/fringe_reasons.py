@@ -137,7 +137,8 @@ def fringe_reasons(
     drift_rad = float(np.ptp(phase))
     deepest = max(depth for depth, _ in depths)
     reasons = _undetermined(prior, depths, drift_rad) + _place(found, deepest, phase, values)
-    if rival_rad is not None and not reasons:
+    apart = rival_rad is not None and abs(rival_rad - depths[0][0]) > 5.0 * depths[0][1]
+    if apart and not reasons:
         reasons.append(f"two depths fit alike: {depths[0][0]:.4g} rad and {rival_rad:.4g} rad")
     periods = float(model.turns.min()) * np.count_nonzero(np.isfinite(values)) / (2.0 * math.pi)
     if periods < 3.0:

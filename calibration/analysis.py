@@ -292,6 +292,9 @@ def _chain(bench: Bench) -> dict[str, Measured]:
         "amplifier_corner": "photodiode.bandwidth",
         "antialias_corner": "adc.antialias",
         "channel_delay": "adc.channel_delay",
+        "adc_bits": "adc.bits",
+        "adc_range": "adc.range",
+        "adc_offset": "adc.offset",
     }
     known = {name: bench.get(key) for name, key in keys.items()}
     chain = {name: value for name, value in known.items() if value is not None}

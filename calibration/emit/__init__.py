@@ -1,0 +1,1 @@
+"""Converters for the board: counts to displacement in integers, with a proved worst-case error."""

@@ -35,6 +35,8 @@ class Line:
         Response over drive.
     distrust_reasons : tuple of str
         Why not to believe it; empty where no reason was found.
+    is_phase_refused : bool
+        True where the samples have no time of their own, so that only the ratio has a phase.
     """
 
     frequency_hz: float
@@ -45,6 +47,7 @@ class Line:
     drive: PhasorEstimate | None = None
     ratio: PhasorEstimate | None = None
     distrust_reasons: tuple[str, ...] = ()
+    is_phase_refused: bool = False
 
     @property
     def is_trustworthy(self) -> bool:
@@ -96,13 +99,15 @@ class Line:
     def to_dict(self) -> dict[str, Any]:
         """Return the line as the JSON output has it, quantities as Measured."""
         drive, ratio = self.drive, self.ratio
+        is_known = not self.is_phase_refused
         return {
             "frequency": self.frequency,
             "amplitude": self.amplitude,
-            "phase": self.phase,
+            "phase": self.phase if is_known else None,
             "noise_density": self.noise_density,
             "snr": self.snr,
-            "drive": drive and {"amplitude": drive.amplitude, "phase": drive.phase},
+            "drive": drive
+            and {"amplitude": drive.amplitude, "phase": drive.phase if is_known else None},
             "ratio": ratio and {"magnitude": ratio.magnitude, "phase": ratio.phase},
             "trustworthy": self.is_trustworthy,
             "reasons": list(self.distrust_reasons),

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 from calibration.errors import CalibrationError
 from calibration.line_fit import LineFit
 from calibration.lines import fit_lines_si
+from calibration.sampling_times import with_timing
 
 if TYPE_CHECKING:
     from firmware_bridge.trace import Trace
@@ -42,7 +43,8 @@ def read_lines(
     Returns
     -------
     LineFit
-        Distrusted where too many samples were over range.
+        Distrusted where too many samples were over range; what the jitter of the board's stamps took
+        is put back, and phases are refused where the host's clock alone tells the times.
 
     Raises
     ------
@@ -62,6 +64,7 @@ def read_lines(
         value_unit=response.unit,
         drive_unit="1" if drive is None else drive.unit,
     )
+    fit = with_timing(fit, response.timing)
     reasons = [
         f"clipped: {trace.over_range} samples of {trace.name!r} were over range"
         for trace in (response, drive)

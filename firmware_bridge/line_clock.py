@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -54,25 +55,33 @@ class FrameClocks:
         self._announced = LineClock(rate_hz, None, Timing(is_by_host))
         self._tick_s = 1 / clock_hz if clock_hz else 0.0
         self._resolution_s = float(origin.get("resolution", "0")) if self._is_board else 0.0
-        self._parts: list[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.int64]]] = []
+        self._parts: list[tuple[NDArray[np.int64], ...]] = []
 
     @property
     def _is_board(self) -> bool:
         return self._clock == "stamps"
 
-    def add(
-        self, streams: NDArray[np.uint32], index: NDArray[np.uint64], ticks: NDArray[np.uint64]
-    ) -> None:
+    def add(self, heads: NDArray[Any]) -> None:
         """Take the headers of some frames.
 
         Parameters
         ----------
-        streams, index, ticks : ndarray, shape (n,)
-            Stream id, index and clock of the first sample of each.
+        heads : ndarray of `HEADER`, shape (n,)
+            The next ones.
         """
-        self._parts.append(
-            (streams.astype(np.int64), index.astype(np.int64), ticks.astype(np.int64))
+        fields = ("stream", "index", "clock", "filled", "slots")
+        self._parts.append(tuple(heads[name].astype(np.int64) for name in fields))
+
+    def _joined(self) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.int64]]:
+        streams, index, ticks, filled, slots = (
+            np.concatenate(part) for part in zip(*self._parts, strict=True)
         )
+        # A frame that ends early does so before a line that came late: such lines, at the
+        # beginning of the next frame, are no fair sample of the stamps.
+        fair = np.concatenate(([True], filled[:-1] == slots[:-1]))
+        if np.count_nonzero(fair) >= max(_FEWEST, 0.2 * fair.size):
+            streams, index, ticks = streams[fair], index[fair], ticks[fair]
+        return streams, index, ticks
 
     def fit(self) -> LineClock:
         """Return the rate of the whole recording, and the jitter of the lines.
@@ -84,7 +93,7 @@ class FrameClocks:
         """
         if self._clock not in ("stamps", "host") or not self._parts or not self._tick_s:
             return self._announced
-        streams, index, ticks = (np.concatenate(part) for part in zip(*self._parts, strict=True))
+        streams, index, ticks = self._joined()
         if index.size < _FEWEST:
             return self._announced
         broken = np.diff(streams) != 0

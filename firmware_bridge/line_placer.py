@@ -250,9 +250,7 @@ class LinePlacer:
         missing = max(0, round(least + self._margin))
         if missing < self._least and kind == "gap":
             # What is late now has caught up soon after: the line waited in a buffer.
-            self.late_lines += not self._by_host
-            late_s = float(ahead[0]) * self._step_s
-            self.worst_late_s = max(self.worst_late_s, 0.0 if self._by_host else late_s)
+            self._note_late(float(ahead[0]))
             return self._one(held, ahead, 0, 0.0)
         gap_s = missing * self._step_s
         elapsed_s = float(held.arrivals_s[0]) - self._arrived_s
@@ -269,6 +267,11 @@ class LinePlacer:
         placed = self._one(held, ahead, missing, u)
         self._at_s, self._since = float(placed.stamps_s[0]), (float(placed.stamps_s[0]), 0)
         return placed
+
+    def _note_late(self, ahead: float) -> None:
+        if ahead >= 1 and not self._by_host:  # else it is mere jitter
+            self.late_lines += 1
+            self.worst_late_s = max(self.worst_late_s, ahead * self._step_s)
 
     def _one(
         self, held: PlacedLines, ahead: NDArray[np.float64], missing: int, u: float

@@ -75,8 +75,7 @@ class MfrRecording(Recording):
             self.damaged += chunk.damaged
             index.add(chunk)
             if self._clocks is not None:
-                heads = chunk.heads[chunk.samples]
-                self._clocks.add(heads["stream"], heads["index"], heads["clock"])
+                self._clocks.add(chunk.heads[chunk.samples])
             for _, message in chunk.messages:
                 self._take(message, pieces)
         return index
@@ -132,21 +131,23 @@ class MfrRecording(Recording):
             if placed:
                 gaps.append(Gap(reached, start - reached, exact=False, length_u=length_u))
             runs["index"] = runs["index"] - np.uint64(first) + np.uint64(start)
-            gaps += _gaps_inside(runs, self.file.slots)
             reached = int(runs["index"][-1]) + int(lengths(runs[-1:], self.file.slots)[0])
+            self._check_span(max(reached, int(runs["index"].max())))
+            gaps += _gaps_inside(runs, self.file.slots)
             if self._end is not None and self._end.stream == stream:
                 end = self._end.index - first + start
                 if end > reached:
                     gaps.append(Gap(reached, end - reached))
                     reached = end
-            if reached > _LENGTH_MAX:
-                raise RecordingError(
-                    f"{self.file.path} spans {reached} samples, more than can be true"
-                )
+            self._check_span(reached)
             placed.append(runs)
         if not placed:
             raise RecordingError(f"{self.file.path} holds no sample")
         return np.concatenate(placed), reached, gaps
+
+    def _check_span(self, reached: int) -> None:
+        if reached > _LENGTH_MAX:
+            raise RecordingError(f"{self.file.path} spans {reached} samples, more than can be true")
 
     def _started(self) -> float | None:
         for stamp in self.stamps[:1]:

@@ -8,6 +8,7 @@ from firmware_bridge.live_stamps import LiveStamps
 __all__ = ["StampReader"]
 
 _LATE_S = 0.5  # by how much lines may arrive later than others
+_SHORTEST_S = 20.0
 _MODULI = (1 << 16, 1 << 30, 1 << 31, 1 << 32)
 """Where boards' counters begin anew: 16 and 32 bits; 2^30 is MicroPython's ``ticks_ms`` (from its
 documentation of ``time.ticks_ms``, from memory), 2^31 a signed counter that stays positive."""
@@ -59,8 +60,10 @@ class StampReader:
             back_s = float(before[k] - stamps[k])
             for modulus in _MODULI:
                 ahead_s = modulus * unit_s - back_s
-                # After a reset of the board the stamps fit no modulus.
-                if 0 <= ahead_s < arrived_s - last_arrived_s + _LATE_S:
+                # After a reset of the board the stamps fit no modulus; a stamp that is a little
+                # early fits only those that are too short to be told from it.
+                is_long = modulus * unit_s > _SHORTEST_S
+                if is_long and 0 <= ahead_s < arrived_s - last_arrived_s + _LATE_S:
                     stamps[k:] += modulus * unit_s
                     self._wrapped_s += modulus * unit_s
                     break

@@ -106,14 +106,17 @@ def _for_people(fit: "LineFit", *, free: bool) -> str:
         rows += [
             ["line", str(line.frequency) if free else show(line.frequency_hz, "Hz", 9)],
             ["  amplitude, zero to peak", str(line.amplitude)],
-            ["  phase at t = 0", str(line.phase)],
+            ["  phase at t = 0", "refused" if line.is_phase_refused else str(line.phase)],
             ["  noise beside it", show(line.density_value, line.noise_density.unit, 3)],
             ["  signal to noise A/√(S/T)", f"{line.snr_value:.4g}"],
         ]
         if line.drive is not None and line.ratio is not None:
             rows += [
                 ["  drive, zero to peak", str(line.drive.amplitude)],
-                ["  drive phase at t = 0", str(line.drive.phase)],
+                [
+                    "  drive phase at t = 0",
+                    "refused" if line.is_phase_refused else str(line.drive.phase),
+                ],
                 ["  response/drive", str(line.ratio.magnitude)],
                 ["  phase of response/drive", str(line.ratio.phase)],
             ]

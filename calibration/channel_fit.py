@@ -184,13 +184,15 @@ def _noise(
 ) -> tuple[LineNoise, ...]:
     offsets, bins = noise_bins(phasors, residual, lines)
     span = float(phasors.middles[-1] - phasors.middles[0] + phasors.block)
-    places = phasors.cycles * span
+    places, blocks = phasors.cycles * span, span / phasors.block
     result = []
     for line in range(lines):
         taken = np.append(np.delete(places, line), 0.0)
         share = _course_share(offsets, course, line)
         result.append(
-            measure_noise(offsets, bins[:, line], float(places[line]), taken, share, 0.5 * span)
+            measure_noise(
+                offsets, bins[:, line], float(places[line]), taken, share, 0.5 * span, blocks
+            )
         )
     return tuple(result)
 

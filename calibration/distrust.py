@@ -180,9 +180,9 @@ class Doubts:
                 f"not steady: what is left over is {noise.near:.2g} times stronger within 2/T of the line than"
                 " beside it"
             )
-        compared, used = int(noise.in_reach.sum()), int(noise.used.sum())
-        if compared > 8 and used < 0.75 * compared:
-            return f"what is left over is not noise: tones in {compared - used} of {compared} bins"
+        compared = int(noise.in_reach.sum())
+        if compared > 8 and noise.tones > 0.25 * compared:
+            return f"what is left over is not noise: tones in {noise.tones} of {compared} bins"
         return None
 
     def _modulated(self, channel: FittedChannel, line: int) -> str | None:

@@ -6,6 +6,7 @@ another line or an unnamed tone sits in are left out.
 
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,8 +16,14 @@ from calibration.phasors import BlockPhasors
 __all__ = ["LineNoise", "measure_noise", "noise_bins"]
 
 _MOST_BINS = 32
+_LEAST_BINS = 6
+# What lies a block rate away comes back at a bin with the square of the bin's distance from the line
+# in block rates: at most 0.25 % of its power.
+_REACH = 0.05
 # One exponential deviate in 64 exceeds 13 times the mean with probability 64·e^−13 = 1.4e-4.
 _TONE = 13.0
+_RINGS = (8, 12, 16, 20, 24, 28, 32)
+_LEVEL = 3.0  # standard deviations: by chance twice in a thousand rings
 _UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 
 
@@ -38,6 +45,8 @@ class LineNoise:
         Bins looked at, in units of 1/T from the line.
     used : ndarray of bool, shape (n_bins,)
         Those that count.
+    tones : int
+        How many were left out for a tone in them.
     bins : ndarray of complex, shape (n_bins,)
         Residual in each bin, scaled so that its mean square is the variance of a sample.
     """
@@ -48,6 +57,7 @@ class LineNoise:
     in_reach: NDArray[np.bool_]
     offsets: NDArray[np.int64]
     used: NDArray[np.bool_]
+    tones: int
     bins: NDArray[np.complex128]
 
 
@@ -109,6 +119,7 @@ def measure_noise(
     taken: NDArray[np.float64],
     share: NDArray[np.float64],
     highest: float,
+    block_rate: float,
 ) -> LineNoise:
     """Return the noise beside one line.
 
@@ -126,6 +137,8 @@ def measure_noise(
         Share of each bin that other parameters have taken.
     highest : float
         The Nyquist frequency in bins.
+    block_rate : float
+        The rate of the blocks in bins, their number in the recording.
 
     Returns
     -------
@@ -138,16 +151,18 @@ def measure_noise(
     reach = 0.7 * min(line, highest - line)
     sound = (left > 0.5) & (np.abs(offsets) <= max(3.0, reach)) & (place > 0.5) & (place < highest)
     power = np.abs(bins) ** 2 / np.where(left > 0.5, left, 1.0)
-    used = _without_tones(power, sound)
+    toneless = _without_tones(power, sound)
+    near_enough = np.abs(offsets) <= max(_LEAST_BINS, _REACH * block_rate)
+    used = _level_with_the_line(power, toneless & near_enough, offsets)
     counted = float(left[used].sum())
     variance = float((np.abs(bins[used]) ** 2).sum()) / counted if counted > 0 else 0.0
-    dof = max(2.0, 2.0 * counted)
+    dof, tones = max(2.0, 2.0 * counted), int(sound.sum() - toneless.sum())
     close = sound & (np.abs(offsets) <= 2)
     near = float(power[close].mean() / variance) if close.any() and variance > 0 else 1.0
     if near > _UNSTEADY:
         # A line that is not steady is as uncertain as its own skirt, whatever lies further out.
         variance, dof = near * variance, 2.0 * float(close.sum())
-    return LineNoise(variance, dof, near, sound, offsets, used, bins)
+    return LineNoise(variance, dof, near, sound, offsets, used, tones, bins)
 
 
 def _without_tones(power: NDArray[np.float64], sound: NDArray[np.bool_]) -> NDArray[np.bool_]:
@@ -162,3 +177,29 @@ def _without_tones(power: NDArray[np.float64], sound: NDArray[np.bool_]) -> NDAr
             return used
         used = kept
     return used
+
+
+def _level_with_the_line(
+    power: NDArray[np.float64], used: NDArray[np.bool_], offsets: NDArray[np.int64]
+) -> NDArray[np.bool_]:
+    """Leave out far bins that are not level with the near ones, on each side by itself.
+
+    A resonance one block rate away comes back into the outer bins more than into the inner ones; a
+    steep spectrum tells there as well.
+    """
+    kept = used & (np.abs(offsets) <= _RINGS[0])
+    for side in (-1, 1):
+        for inner, outer in pairwise(_RINGS):
+            distance = side * offsets
+            ring = used & (distance > inner) & (distance <= outer)
+            if not ring.any() or not kept.any():
+                continue
+            level = float(power[kept].mean())
+            ratio = float(power[ring].mean()) / level if level > 0 else 0.0
+            scatter = np.sqrt(
+                1.0 / ring.sum() + 1.0 / kept.sum()
+            )  # of the logarithm, one deviation
+            if ratio <= 0 or abs(np.log(ratio)) > _LEVEL * scatter:
+                break
+            kept |= ring
+    return kept

@@ -64,7 +64,10 @@ class Pico:
         """Return what has come from the host."""
         out = bytearray()
         while len(out) < 64 and self._poll.poll(0):
-            out.extend(sys.stdin.buffer.read(1))
+            byte = sys.stdin.buffer.read(1)
+            if not byte:
+                break
+            out.extend(byte)
         return bytes(out)
 
     def say(self, data: bytes) -> None:

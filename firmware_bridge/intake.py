@@ -20,6 +20,7 @@ __all__ = ["Intake"]
 
 _STAMP_NS = 2_000_000_000
 _PENDING_BYTES = 4 << 20
+_LAST_NOTES = 4
 _ARRIVAL_U_S = 0.05 / 3**0.5
 """Standard uncertainty of a frame's arrival: half a system tick and a driver's buffering, ±50 ms at
 most, rectangular. Our estimate."""
@@ -42,6 +43,8 @@ class Intake:
         For the header.
     duration_s : float, optional
         End after round(duration · rate) samples of the board.
+    size_bytes : int, optional
+        End before all files together become larger.
     overwrite : bool
         Replace an existing file.
     """
@@ -52,11 +55,14 @@ class Intake:
         *,
         info: dict[str, str] | None = None,
         duration_s: float | None = None,
+        size_bytes: int | None = None,
         overwrite: bool = False,
     ) -> None:
         self._path = Path(path)
         self._info = info or {}
         self._duration_s = duration_s
+        self._size_bytes = size_bytes
+        self._earlier_bytes = 0
         self._overwrite = overwrite
         self._writer: Writer | None = None
         self._announced: dict[int, Announcement] = {}
@@ -85,12 +91,17 @@ class Intake:
         """Frames flagged as over-range."""
         self.bytes_discarded = 0
         self.is_complete = False
-        """True once the duration is reached."""
+        """True once the duration or the size is reached."""
 
     @property
     def is_announced(self) -> bool:
         """Whether the board's announcement for what it sends now is known."""
         return self._writer is not None and not self._pending
+
+    @property
+    def is_known(self) -> bool:
+        """Whether any board has announced itself."""
+        return bool(self._announced)
 
     @property
     def wanted(self) -> int | None:
@@ -189,6 +200,7 @@ class Intake:
             return
         self._stamp()
         self._say_discarded()
+        self._earlier_bytes += self._writer.bytes
         self._writer.close()
         self._writer = None
 
@@ -267,6 +279,9 @@ class Intake:
 
     def _keep(self, message: bytes, frame: Samples) -> None:
         assert self._writer is not None  # noqa: S101  # _begin made it
+        if not self._has_room(self._writer, len(message)):
+            self.is_complete = True
+            return
         start = frame.index + self._grid[frame.stream]
         room = None if self.wanted is None else self.wanted - start
         if room is None or room > 0:
@@ -290,6 +305,12 @@ class Intake:
                 self.gaps += 1
             elif isinstance(event, Samples):
                 self._count(event)
+
+    def _has_room(self, writer: Writer, length: int) -> bool:
+        if self._size_bytes is None:
+            return True
+        # The last stamp and what was discarded are still to be said.
+        return self._earlier_bytes + writer.bytes + (1 + _LAST_NOTES) * length <= self._size_bytes
 
     def _count(self, frame: Samples) -> None:
         if self.is_complete:

@@ -3,6 +3,7 @@
 import contextlib
 import errno
 import sys
+import warnings
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -181,10 +182,19 @@ def open_port(name: str, baud: int = 115200) -> Port:
     if baud <= 0:
         raise PortError(f"baud must be > 0, got {baud}")
     failures: tuple[type[BaseException], ...] = (*_failures(), ValueError)
+    # pyserial 3.5 has no write timeout for rfc2217.
+    write_timeout_s = None if name.startswith("rfc2217:") else 1.0
     try:
-        opened = serial.serial_for_url(
-            name, baudrate=baud, timeout=_WAIT_S, write_timeout=1.0, exclusive=True
-        )
+        with warnings.catch_warnings():
+            # pyserial 3.5 starts the thread of an rfc2217 port by a deprecated name.
+            warnings.simplefilter("ignore", DeprecationWarning)
+            opened = serial.serial_for_url(
+                name,
+                baudrate=baud,
+                timeout=_WAIT_S,
+                write_timeout=write_timeout_s,
+                exclusive=True,
+            )
     except failures as error:
         raise PortError(f"{name} cannot be opened: {_reason(error)}") from None
     return Port(name, opened)
@@ -235,6 +245,11 @@ def _reason(error: BaseException) -> str:
         ("no data", "the device is gone"),
         ("socket disconnected", "the other side closed the connection"),
         ("refused", "connection refused"),
+        ("reader thread died", "the other side closed the connection"),
+        ("does not seem to support RFC2217", "the other side does not speak RFC 2217"),
+        ("timed out", "no answer"),
+        ("Name or service not known", "there is no such host"),
+        ("Temporary failure in name resolution", "there is no such host"),
         ("reset by peer", "the other side closed the connection"),
         ("not connected", "the other side closed the connection"),
     ):

@@ -7,13 +7,14 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from firmware_bridge.errors import BridgeError
+from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.intake import Intake
 from firmware_bridge.port import ByteSource, open_port
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.recording_session import Progress, RecordingSession
 from firmware_bridge.text_frames import TextFramer
 from firmware_bridge.trace import Gap
+from firmware_bridge.writer import DiskError
 
 __all__ = ["Progress", "RecordSummary", "record"]
 
@@ -38,8 +39,10 @@ class RecordSummary:
         Length of the grid [s].
     files : list of Path
         All files; more than one where the board changed its channels or rate.
-    rate_hz : float or None
-        Announced rate of the last file.
+    rate_hz, rate_u_hz : float or None
+        Rate of the last file, and its standard uncertainty where a clock tells it.
+    remarks : list of str
+        What is odd about the recordings.
     """
 
     file: Path | None
@@ -50,6 +53,8 @@ class RecordSummary:
     duration_s: float
     files: list[Path] = field(default_factory=list)
     rate_hz: float | None = None
+    rate_u_hz: float | None = None
+    remarks: list[str] = field(default_factory=list)
 
 
 def record(
@@ -60,12 +65,13 @@ def record(
     baud: int = 115200,
     text: bool = False,
     rate_hz: float | None = None,
+    size_bytes: int | None = None,
     reconnect: bool = False,
     overwrite: bool = False,
     progress: Callable[[Progress], None] | None = None,
     stop: threading.Event | None = None,
 ) -> RecordSummary:
-    """Record what a board sends until the duration is reached, Ctrl-C, or ``stop``.
+    """Record what a board sends until the duration or size is reached, Ctrl-C, or ``stop``.
 
     Parameters
     ----------
@@ -81,6 +87,8 @@ def record(
         The board prints lines of numbers.
     rate_hz : float, optional
         With ``text``, the lines per second; without it the host's clock tells.
+    size_bytes : int, optional
+        End before the files, all together, become larger than this.
     reconnect : bool
         Wait for a port that is gone and go on in the same recording.
     overwrite : bool
@@ -111,10 +119,25 @@ def record(
     # A framer of text completes it once the first lines have told what it reads.
     info = {"source": "frames"} if framer is None else framer.origin
     info["port"] = source.name
-    intake = Intake(path, info=info, duration_s=duration_s, overwrite=overwrite)
+    intake = Intake(
+        path, info=info, duration_s=duration_s, size_bytes=size_bytes, overwrite=overwrite
+    )
     stop = stop or threading.Event()
-    RecordingSession(source, baud, intake, framer, reconnect, stop).run(progress)
+    try:
+        RecordingSession(source, baud, intake, framer, reconnect, stop).run(progress)
+    except DiskError as error:
+        raise DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}") from error
     return _summary(intake)
+
+
+def _kept_on_disk(files: list[Path]) -> str:
+    try:
+        recordings = [open_mfr(path) for path in files]
+    except BridgeError:
+        return "nothing was recorded"
+    samples = sum(recording.length for recording in recordings)
+    time_s = sum(recording.duration_s for recording in recordings)
+    return f"kept {samples} samples ({time_s:.4g} s) in {', '.join(map(str, files))}"
 
 
 def _summary(intake: Intake) -> RecordSummary:
@@ -132,4 +155,6 @@ def _summary(intake: Intake) -> RecordSummary:
         sum(recording.duration_s for recording in recordings),
         files,
         recordings[-1].rate_hz,
+        recordings[-1].rate_u_hz,
+        list(dict.fromkeys(remark for recording in recordings for remark in recording.remarks)),
     )

@@ -65,6 +65,7 @@ class MfrRecording(Recording):
             length=length,
             gaps=gaps,
             remarks=self._say(),
+            columns=self._columns_printed(),
             start_unix_s=self._started(),
         )
         self.over_range = self._count_over_range()
@@ -86,6 +87,13 @@ class MfrRecording(Recording):
         if origin.get("source") != "text":
             return None
         return FrameClocks(origin, announced.rate_hz, announced.clock_hz)
+
+    def _columns_printed(self) -> list[int] | None:
+        """Return which columns of the lines of text the channels are, the time column counted."""
+        numbers = self.header.info.get("columns", "").split()
+        if len(numbers) != len(self.header.announcement.channels):
+            return None
+        return [int(number) for number in numbers] if all(map(str.isdecimal, numbers)) else None
 
     def _take(self, message: bytes, pieces: Pieces) -> None:
         try:

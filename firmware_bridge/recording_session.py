@@ -13,6 +13,7 @@ from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.intake import Intake
 from firmware_bridge.message import CommandCode, MessageType, encode_command
 from firmware_bridge.port import ByteSource, PortError, PortLostError, open_port
+from firmware_bridge.silence import Silence
 from firmware_bridge.text_frames import TextFramer
 
 __all__ = ["Progress", "RecordingSession"]
@@ -20,9 +21,6 @@ __all__ = ["Progress", "RecordingSession"]
 _log = logging.getLogger(__name__)
 
 _ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
-_SILENCE_S = 5.0  # without one valid message at the start
-_STALL_S = 10.0  # without one midway
-_TEXT_SILENCE_S = 30.0
 _REOPEN_S = 0.25
 
 
@@ -93,7 +91,7 @@ class RecordingSession:
         self._queue = ByteQueue()
         self._failure: BaseException | None = None
         self._is_lost = False
-        self._bytes = 0
+        self._silence = Silence(self._name, baud, framer is not None)
         self._request = 0
 
     def run(self, progress: Callable[[Progress], None] | None) -> None:
@@ -121,8 +119,10 @@ class RecordingSession:
                     progress(self._progress())
         self._stop.set()
         self._queue.close()
-        reader.join()
-        writer.join()
+        for thread in (reader, writer):
+            while thread.is_alive():
+                with contextlib.suppress(KeyboardInterrupt):  # what came is still being written
+                    thread.join()
         if progress is not None:
             progress(self._progress())
         if self._failure is not None:
@@ -216,7 +216,6 @@ class RecordingSession:
             self._written.set()
 
     def _write_until_done(self) -> None:
-        heard_s = time.monotonic()
         while not self._intake.is_complete:
             ended = self._ended.is_set()
             arrivals = self._queue.take(0.05)
@@ -224,45 +223,50 @@ class RecordingSession:
                 self._finish_text()
                 return
             for arrival in arrivals:
-                if self._take(arrival):
-                    heard_s = time.monotonic()
+                self._take(arrival)
             now_ns, unix_ns = time.monotonic_ns(), time.time_ns()
             if self._framer is not None:
                 for piece in self._framer.tick(now_ns * 1e-9):
                     self._intake.take(piece, now_ns, unix_ns)
             self._intake.tick(now_ns, unix_ns)
-            self._check_silence(time.monotonic() - heard_s)
+            self._check_silence()
 
     def _finish_text(self) -> None:
         if self._framer is not None:
             for piece in self._framer.finish():
                 self._intake.take(piece, time.monotonic_ns(), time.time_ns())
 
-    def _take(self, arrival: Arrival) -> bool:
-        """Hand one arrival on; return whether anything valid was in it."""
+    def _take(self, arrival: Arrival) -> None:
+        """Hand one arrival on."""
         if arrival.lost:
             self._lost(arrival.lost)
-            return True
-        if arrival.is_back:
-            self._is_lost = False
-            if self._framer is not None:
-                self._framer.restart()
-            self._intake.away()
-            self._intake.remark(f"{self._name} is back")
-        self._bytes += len(arrival.data)
-        if self._framer is not None:
-            return self._take_text(self._framer, arrival)
+        elif arrival.is_back:
+            self._back()
+        else:
+            self._silence.note(arrival.data, self._take_bytes(arrival))
+
+    def _take_bytes(self, arrival: Arrival) -> bool:
+        """Return whether anything valid was in it."""
+        framer = self._framer
+        if framer is not None:
+            before = framer.heard
+            for line in framer.feed(arrival.data, arrival.monotonic_ns * 1e-9):
+                self._intake.take(line, arrival.monotonic_ns, arrival.unix_ns)
+            return framer.heard > before
         pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
             self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
         return any(isinstance(piece, bytes) and piece[0] != MessageType.COMMAND for piece in pieces)
 
-    def _take_text(self, framer: TextFramer, arrival: Arrival) -> bool:
-        before = framer.heard
-        for piece in framer.feed(arrival.data, arrival.monotonic_ns * 1e-9):
-            self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
-        return framer.heard > before
+    def _back(self) -> None:
+        self._is_lost = False
+        if self._framer is not None:
+            self._framer.restart()
+        self._silence.reset()
+        self._intake.away()
+        self._intake.remark(f"{self._name} is back")
+        _log.warning("%s is back", self._name)
 
     def _lost(self, reason: str) -> None:
         for piece in self._unwrapper.close():
@@ -275,33 +279,16 @@ class RecordingSession:
         _log.warning("%s is gone (%s); waiting for it", self._name, reason)
         self._is_lost = True
 
-    def _check_silence(self, silent_s: float) -> None:
+    def _check_silence(self) -> None:
         if self._is_lost:
             return
-        if self._framer is not None:
-            if silent_s > _TEXT_SILENCE_S:
-                raise DeviceFailedError(
-                    f"{self._name} sent no lines of numbers for {_TEXT_SILENCE_S:g} s "
-                    f"({self._bytes} bytes came in all); {self._kept()}"
-                )
-        elif not self._intake.files and silent_s > _SILENCE_S:
-            raise DeviceFailedError(self._why_nothing())
-        elif silent_s > _STALL_S and not self._reconnect:
-            raise DeviceFailedError(
-                f"{self._name} sent no valid frame for {_STALL_S:g} s; {self._kept()}"
-            )
-
-    def _why_nothing(self) -> str:
-        if not self._bytes:
-            what = "the board is silent"
-        elif self._intake.is_announced:
-            what = "the board announced itself but sends no samples"
-        else:
-            what = (
-                f"{self._bytes} bytes came and no valid frame is in them; "
-                f"is {self._baud} baud right, or is it text (--text)?"
-            )
-        return f"{self._name}: {what} for {_SILENCE_S:g} s; nothing was recorded"
+        intake = self._intake
+        complaint = self._silence.maybe_complaint(
+            intake.is_known, bool(intake.files), self._reconnect
+        )
+        if complaint:
+            self._finish_text()
+            raise DeviceFailedError(f"{complaint}; {self._kept()}")
 
     def _kept(self) -> str:
         if not self._intake.files:

@@ -273,7 +273,8 @@ class _Reading:
 
 
 def _origin(opening: TextOpening) -> dict[str, str]:
-    origin = {"clock": opening.clock}
+    columns = " ".join(str(position + 1) for position in opening.positions)
+    origin = {"clock": opening.clock, "columns": columns}
     if opening.clock == "host":
         origin["rate"] = "by the host's clock"
     if opening.stamps is not None:

@@ -1,6 +1,8 @@
 """Write a recording: append only, in whole records, on the disk twice a second."""
 
+import errno
 import os
+import stat
 import time
 from contextlib import suppress
 from pathlib import Path
@@ -9,12 +11,26 @@ from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.host_note import HostNote, cut, seal_host_note
 from firmware_bridge.recording_header import Header, encode_header
 
-__all__ = ["SYNC_S", "Writer"]
+__all__ = ["SYNC_S", "DiskError", "Writer"]
 
 SYNC_S = 0.5
 """Longest time [s] that records wait before they are on the disk."""
 
 _BUFFER_BYTES = 1 << 18
+_MEANINGS = {
+    errno.ENOSPC: "the disk is full",
+    errno.EDQUOT: "the disk quota is used up",
+    errno.EFBIG: "a file may not be larger here",
+    errno.EIO: "input/output error of the disk",
+}
+
+
+class DiskError(DeviceFailedError):
+    """A file that could be made and cannot be written any further; ``reason`` says why."""
+
+    def __init__(self, path: Path, reason: str) -> None:
+        super().__init__(f"{path} cannot be written any further: {reason}")
+        self.reason = reason
 
 
 class Writer:
@@ -51,9 +67,22 @@ class Writer:
         except FileExistsError:
             raise BridgeError(f"{path} exists; --overwrite replaces it") from None
         except OSError as error:
-            raise BridgeError(f"{path} cannot be written: {error.strerror}") from None
-        self._write(encode_header(header))
-        self.sync()
+            reason = (error.strerror or str(error)).lower()
+            raise BridgeError(f"{path} cannot be written: {reason}") from None
+        begin = encode_header(header)
+        self.bytes = len(begin)
+        """Length of the file with what still waits to be written."""
+        self._header_bytes = len(begin)
+        self._written = 0
+        self._is_failed = False
+        try:
+            self._write(begin)
+            self.sync()
+        except DiskError as error:
+            os.close(self._file)
+            if stat.S_ISREG(self.path.stat().st_mode):
+                self.path.unlink()  # without its header it is no recording
+            raise BridgeError(f"{path} cannot be written: {error.reason}") from None
 
     def append(self, message: bytes) -> None:
         """Append one sealed message, in one record or, where it is longer, in several.
@@ -65,8 +94,8 @@ class Writer:
 
         Raises
         ------
-        DeviceFailedError
-            If the disk is full or gone; the message says what was kept.
+        DiskError
+            If the disk is full or gone.
         """
         if len(message) > self._record_bytes:
             for piece in cut(message, self._number, self._record_bytes):
@@ -75,6 +104,7 @@ class Writer:
             return
         self._buffer += message.ljust(self._record_bytes, b"\0")
         self.records += 1
+        self.bytes += self._record_bytes
         if len(self._buffer) >= _BUFFER_BYTES:
             self.flush()
 
@@ -105,8 +135,12 @@ class Writer:
         if if_due and now_s - self._synced_s < SYNC_S:
             return
         self.flush()
-        with suppress(OSError):  # a pipe or a file system without fsync keeps what it can
+        try:
             os.fsync(self._file)
+        except OSError as error:
+            # A pipe or a file system without fsync keeps what it can; a full one lets it fail.
+            if error.errno in _MEANINGS:
+                raise self._failed(error) from error
         self._synced_s = now_s
 
     def close(self) -> None:
@@ -119,10 +153,18 @@ class Writer:
     def _write(self, data: bytes | bytearray) -> None:
         view = memoryview(data)
         try:
-            while view:
-                view = view[os.write(self._file, view) :]
+            while view and not self._is_failed:
+                count = os.write(self._file, view)
+                view = view[count:]
+                self._written += count
         except OSError as error:
-            raise DeviceFailedError(
-                f"{self.path} cannot be written any further: {error.strerror}; what was written "
-                "before is kept"
-            ) from error
+            raise self._failed(error) from error
+
+    def _failed(self, error: OSError) -> DiskError:
+        """Write nothing any more, and leave whole records only."""
+        self._is_failed = True
+        beyond = max(0, self._written - self._header_bytes) % self._record_bytes
+        with suppress(OSError):
+            os.ftruncate(self._file, self._written - beyond)
+        reason = _MEANINGS.get(error.errno or 0, (error.strerror or str(error)).lower())
+        return DiskError(self.path, reason)

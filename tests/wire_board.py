@@ -9,11 +9,22 @@ import time
 import tty
 
 import numpy as np
+import serial
+import serial.rfc2217
 
 from firmware_bridge.announcement import Announcement, ChannelInfo, encode_announcement
 from firmware_bridge.frame import encode_frame
 
-__all__ = ["RATE_HZ", "SLOTS", "PtyLink", "SocketLink", "WireBoard", "announced", "ramp"]
+__all__ = [
+    "RATE_HZ",
+    "SLOTS",
+    "PtyLink",
+    "Rfc2217Link",
+    "SocketLink",
+    "WireBoard",
+    "announced",
+    "ramp",
+]
 
 RATE_HZ, SLOTS = 2000.0, 50
 
@@ -76,10 +87,19 @@ class SocketLink:
         self._peer, _ = self._server.accept()
         self._peer.recv(4096)  # pyserial throws away what comes before it is ready to ask
 
+    def accept_quietly(self):
+        """Accept a recorder that says nothing, once it has thrown away what came before."""
+        self._peer, _ = self._server.accept()
+        time.sleep(0.3)
+
     def send(self, data):
         if self._peer is None:
             self.accept()
         self._peer.sendall(data)
+
+    def hang_up_for_good(self):
+        self._server.close()
+        self._peer.shutdown(socket.SHUT_WR)
 
     def hang_up(self):
         # With unread commands in it, closing at once would reset the connection and what it holds.
@@ -93,6 +113,40 @@ class SocketLink:
     def close(self):
         if self._peer is not None:
             self._peer.close()
+        self._server.close()
+
+
+class Rfc2217Link:
+    """A port server after RFC 2217, with nothing but the test behind it."""
+
+    def __init__(self):
+        self._server = socket.create_server(("127.0.0.1", 0))
+        self.port = f"rfc2217://127.0.0.1:{self._server.getsockname()[1]}"
+        self._serial = serial.serial_for_url("loop://", timeout=0)
+        self._lock = threading.Lock()
+        self._asked = threading.Event()
+
+    def accept(self):
+        self._peer, _ = self._server.accept()
+        self._manager = serial.rfc2217.PortManager(self._serial, self)
+        threading.Thread(target=self._serve, daemon=True).start()
+        self._asked.wait(5)
+
+    def write(self, data):  # what the port manager answers
+        with self._lock:
+            self._peer.sendall(data)
+
+    def _serve(self):
+        with contextlib.suppress(OSError):
+            while data := self._peer.recv(4096):
+                if b"".join(self._manager.filter(data)):
+                    self._asked.set()  # the recorder's first command: the port is open
+
+    def send(self, data):
+        self.write(b"".join(self._manager.escape(data)))
+
+    def close(self):
+        self._peer.close()
         self._server.close()
 
 

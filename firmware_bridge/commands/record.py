@@ -34,6 +34,7 @@ def _list_ports(ctx: click.Context, param: click.Parameter, value: bool) -> None
     metavar="T",
     help="By the board's own counting; without it until Ctrl-C.",
 )
+@click.option("--size", metavar="S", help="End before the file is larger, such as 500MB or 2GiB.")
 @click.option("--baud", type=click.IntRange(min=1), default=115200, metavar="N", help="115200.")
 @click.option("--reconnect", is_flag=True, help="Wait for a port that is gone and go on.")
 @click.option("--text", is_flag=True, help="The board prints lines of numbers.")
@@ -53,6 +54,7 @@ def record(
     port: str,
     out: str,
     duration: float | None,
+    size: str | None,
     baud: int,
     reconnect: bool,
     text: bool,
@@ -62,9 +64,11 @@ def record(
 ) -> None:
     """Record a serial port without losing a sample unnoticed.
 
-    Ends after --duration or with Ctrl-C. A recording that changes its channels or rate goes on in
+    Ends after --duration, before --size is exceeded, or with Ctrl-C. A recording that changes its channels or rate goes on in
     NAME-2.mfr.
     """
+    from firmware_bridge.byte_size import parse_byte_size
+    from firmware_bridge.live_line import LiveLine
     from firmware_bridge.recorder import record as record_port
     from metro.errors import MetroError
     from metro.output import check_writable, to_json
@@ -73,35 +77,30 @@ def record(
         raise MetroError("--rate goes with --text; a board that sends frames announces its rate")
     check_writable(out, overwrite)
     # A service manager's polite end is treated like Ctrl-C.
-    signal.signal(signal.SIGTERM, signal.default_int_handler)
+    for name in ("SIGTERM", "SIGHUP"):  # and a terminal that is closed
+        if hasattr(signal, name):
+            signal.signal(getattr(signal, name), signal.default_int_handler)
     show = not is_quiet() and sys.stderr.isatty()
-    summary = record_port(
-        port,
-        out,
-        duration_s=duration,
-        baud=baud,
-        text=text,
-        rate_hz=rate,
-        reconnect=reconnect,
-        overwrite=overwrite,
-        progress=_show if show else None,
-    )
-    if show:
-        click.echo("", err=True)
+    line = LiveLine(lambda part: click.echo(part, err=True, nl=False))
+    try:
+        summary = record_port(
+            port,
+            out,
+            duration_s=duration,
+            size_bytes=None if size is None else parse_byte_size(size, "--size"),
+            baud=baud,
+            text=text,
+            rate_hz=rate,
+            reconnect=reconnect,
+            overwrite=overwrite,
+            progress=line.show if show else None,
+        )
+    finally:
+        line.end()
     click.echo(to_json(_document(summary)) if as_json else _for_people(summary))
-
-
-def _show(progress: Any) -> None:  # noqa: ANN401  # a Progress, whose module loads only when recording
-    time_s = progress.samples / progress.rate_hz if progress.rate_hz else 0.0
-    part = f" of {progress.wanted}" if progress.wanted else ""
-    state = "waiting for the port" if progress.is_lost else f"queue {progress.fill:.0%}"
-    click.echo(
-        f"\r{time_s:9.1f} s  {progress.samples}{part} samples  {progress.gaps} gaps  "
-        f"{progress.over_range_frames} frames over range  {progress.bytes_discarded} B discarded  "
-        f"{state} ",
-        err=True,
-        nl=False,
-    )
+    if not is_quiet():
+        for remark in summary.remarks:
+            click.echo(remark, err=True)
 
 
 def _gaps(summary: Any) -> list[dict[str, Any]]:  # noqa: ANN401
@@ -120,7 +119,8 @@ def _document(summary: Any) -> dict[str, Any]:  # noqa: ANN401
         "over_range": summary.over_range,
         "bytes_discarded": summary.bytes_discarded,
         "duration": {"value": summary.duration_s, "unit": "s", "u": None},
-        "rate": {"value": summary.rate_hz, "unit": "Hz", "u": None},
+        "rate": {"value": summary.rate_hz, "unit": "Hz", "u": summary.rate_u_hz},
+        "remarks": summary.remarks,
     }
 
 
@@ -130,11 +130,12 @@ def _for_people(summary: Any) -> str:  # noqa: ANN401
     if summary.file is None:
         return "nothing came; nothing was written"
     missing = sum(gap.length for gap in summary.gaps)
+    u = "" if summary.rate_u_hz is None else f", u = {summary.rate_u_hz:.2g} Hz"
     return table(
         [
             ["file", ", ".join(str(path) for path in summary.files)],
             ["samples", str(summary.samples)],
-            ["duration", f"{summary.duration_s:.6g} s at {summary.rate_hz:.6g} Hz"],
+            ["duration", f"{summary.duration_s:.6g} s at {summary.rate_hz:.9g} Hz{u}"],
             ["gaps", f"{len(summary.gaps)} ({missing} samples missing)"],
             ["over range", f"{summary.over_range} values"],
             ["discarded", f"{summary.bytes_discarded} bytes"],

@@ -1,12 +1,13 @@
 import contextlib
 import os
+import resource
 import threading
 import time
 
 import numpy as np
 import pytest
 import serial
-from wire_board import RATE_HZ, SLOTS, PtyLink, SocketLink, WireBoard, ramp
+from wire_board import RATE_HZ, SLOTS, PtyLink, Rfc2217Link, SocketLink, WireBoard, ramp
 
 from firmware_bridge.decoder import Command, Decoder
 from firmware_bridge.errors import BridgeError, DeviceFailedError
@@ -233,7 +234,7 @@ def test_a_stop_event_ends_it_with_everything_kept(pty, tmp_path, in_background)
 
 
 def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch):
-    monkeypatch.setattr("firmware_bridge.recording_session._SILENCE_S", 0.3)
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
     with pytest.raises(DeviceFailedError) as error:
         record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
     assert str(error.value) == (f"{pty.port}: the board is silent for 0.3 s; nothing was recorded")
@@ -241,9 +242,12 @@ def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch)
 
 
 def test_noise_of_a_wrong_speed_is_named(pty, tmp_path, monkeypatch, in_background):
-    monkeypatch.setattr("firmware_bridge.recording_session._SILENCE_S", 0.3)
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
     in_background(pty, lambda: pty.send(os.urandom(500)))
-    with pytest.raises(DeviceFailedError, match="500 bytes came and no valid frame is in them"):
+    with pytest.raises(
+        DeviceFailedError,
+        match=r"500 bytes came in 0\.3 s and no valid frame is in them; is 115200 baud right\?",
+    ):
         record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
 
 
@@ -306,3 +310,88 @@ def test_the_last_lines_before_the_end_are_kept(pty, tmp_path, background):
     record(pty.port, tmp_path / "a.mfr", text=True, rate_hz=10.0, stop=stop)
     values = open_mfr(tmp_path / "a.mfr").trace("1").values
     np.testing.assert_array_equal(values, np.arange(37) ** 2)
+
+
+@pytest.mark.parametrize("size_bytes", [5000, 20_000])
+def test_a_size_ends_a_recording_before_it_is_exceeded(pty, tmp_path, in_background, size_bytes):
+    in_background(pty, lambda: WireBoard(pty).run(500))
+    summary = record(pty.port, tmp_path / "a.mfr", size_bytes=size_bytes)
+    assert size_bytes - 2000 < (tmp_path / "a.mfr").stat().st_size <= size_bytes
+    check_ramp(tmp_path / "a.mfr", summary.samples)
+
+
+def test_a_disk_that_fills_up_says_what_was_kept(pty, tmp_path, in_background):
+    in_background(pty, lambda: WireBoard(pty).run(500))
+    before = resource.getrlimit(resource.RLIMIT_FSIZE)
+    resource.setrlimit(resource.RLIMIT_FSIZE, (20_000, before[1]))
+    try:
+        with pytest.raises(DeviceFailedError) as error:
+            record(pty.port, tmp_path / "a.mfr")
+    finally:
+        resource.setrlimit(resource.RLIMIT_FSIZE, before)
+    kept = open_mfr(tmp_path / "a.mfr")
+    assert kept.length > 3000
+    assert str(error.value) == (
+        f"{tmp_path / 'a.mfr'} cannot be written any further: a file may not be larger here; "
+        f"kept {kept.length} samples ({kept.duration_s:.4g} s) in {tmp_path / 'a.mfr'}"
+    )
+    check_ramp(tmp_path / "a.mfr", kept.length)
+    assert kept.remarks == []
+
+
+def test_text_where_frames_are_expected_is_named(pty, tmp_path, monkeypatch, in_background):
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
+    in_background(pty, lambda: pty.send(b"1 2 3\r\n" * 40))
+    with pytest.raises(DeviceFailedError, match="text and no frames"):
+        record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
+
+
+@pytest.mark.parametrize("sent", [b"\x80\xfe\xf8\x00" * 100, b"\x80\xfe\xf8\x0a" * 100])
+def test_noise_where_lines_are_expected_is_named(pty, tmp_path, monkeypatch, background, sent):
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
+
+    def send():
+        time.sleep(0.1)
+        pty.send(sent)
+
+    background(send)
+    with pytest.raises(DeviceFailedError) as error:
+        record(pty.port, tmp_path / "a.mfr", text=True)
+    frames = ", or does it send frames (leave out --text)" if 0 in sent else ""
+    assert str(error.value) == (
+        f"{pty.port}: 400 bytes came in 0.3 s and no line of numbers is in them; "
+        f"is 115200 baud right{frames}?; nothing was recorded"
+    )
+
+
+def test_lines_stay_in_one_recording_across_a_reconnection(tmp_path, background):
+    with contextlib.closing(SocketLink()) as link:
+
+        def send():
+            link.accept_quietly()
+            link.send(b"x\n" + b"".join(b"%d %d\n" % (20 * k, k % 9) for k in range(150)))
+            link.hang_up()
+            link.accept_quietly()
+            link.send(b"0 5\n" + b"".join(b"%d %d\n" % (20 * k, k % 9) for k in range(190, 400)))
+            link.hang_up_for_good()
+
+        background(send)
+        record(
+            link.port, tmp_path / "a.mfr", text=True, rate_hz=50.0, reconnect=True, duration_s=7.0
+        )
+    recording = open_mfr(tmp_path / "a.mfr")
+    assert [(gap.index, gap.length) for gap in recording.gaps] == [(150, 40)]
+    values = recording.trace("2").values
+    np.testing.assert_array_equal(values[190:350], np.arange(190, 350) % 9)
+
+
+def test_a_port_over_rfc2217_is_a_port_too(tmp_path, background):
+    with contextlib.closing(Rfc2217Link()) as link:
+
+        def send():
+            link.accept()
+            WireBoard(link).run(40)
+
+        background(send)
+        record(link.port, tmp_path / "a.mfr", duration_s=1.0)
+    check_ramp(tmp_path / "a.mfr", 2000)

@@ -151,7 +151,7 @@ def test_the_boards_stamps_tell_rate_and_missing_lines(tmp_path, unit):
     assert len(recording.channels) == 1
     expected = values.astype(float)
     expected[gone] = np.nan
-    np.testing.assert_array_equal(recording.trace("1").values, expected)
+    np.testing.assert_array_equal(recording.trace("2").values, expected)
     assert not recording.timing.is_by_host
 
 
@@ -181,7 +181,7 @@ def test_stamps_that_lag_and_catch_up_are_no_gap(tmp_path):
     chunks = lines_of(np.floor(late_s * 1e3 + 1e-6), values, np.maximum(arrivals, late_s + 70.0))
     recording, _ = record_chunks(tmp_path / "a.mfr", chunks)
     assert (recording.gaps, recording.length) == ([], 1000)
-    np.testing.assert_array_equal(recording.trace("1").values, values)
+    np.testing.assert_array_equal(recording.trace("2").values, values)
     texts = [note.text for note in recording.notes]
     assert any("time stamps were late, by up to 0.78 s, and caught up" in t for t in texts)
 
@@ -228,7 +228,7 @@ def test_a_reset_of_the_board_is_a_gap_by_the_hosts_clock_and_its_banner_a_note(
     assert abs(gap.length - 40) < 3 * gap.length_u < 10
     assert [n.text for n in recording.notes if isinstance(n, Note)] == ["interferometer v1.2 ready"]
     assert framer.texts == 1
-    np.testing.assert_array_equal(recording.trace("1").values[-500:], values[700:])
+    np.testing.assert_array_equal(recording.trace("2").values[-500:], values[700:])
 
 
 def test_a_stray_stamp_is_neither_a_gap_nor_a_reset(tmp_path):
@@ -237,7 +237,7 @@ def test_a_stray_stamp_is_neither_a_gap_nor_a_reset(tmp_path):
     ticks[300], ticks[600] = ticks[300] + 80_000, ticks[600] - 7_000
     recording, _ = record_chunks(tmp_path / "a.mfr", lines_of(ticks, values, arrivals))
     assert (recording.gaps, recording.length) == ([], 900)
-    np.testing.assert_array_equal(recording.trace("1").values, values)
+    np.testing.assert_array_equal(recording.trace("2").values, values)
 
 
 def test_garbage_between_lines_costs_what_it_hit(tmp_path):
@@ -299,7 +299,7 @@ def test_calendar_stamps_are_a_time_too(tmp_path):
     ]
     recording, _ = record_chunks(tmp_path / "a.mfr", chunks[:301] + chunks[304:])
     assert recording.gaps == [Gap(300, 3)]
-    np.testing.assert_array_equal(recording.trace("1").values[303:], values[303:])
+    np.testing.assert_array_equal(recording.trace("2").values[303:], values[303:])
 
 
 @pytest.mark.parametrize("name", ["Task_8_6", "Task_6a_2", "Task_9_blue"])

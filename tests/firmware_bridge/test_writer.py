@@ -1,31 +1,64 @@
+import resource
 from pathlib import Path
 
 import pytest
 
 from firmware_bridge.announcement import Announcement, ChannelInfo
-from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.errors import BridgeError
 from firmware_bridge.recording_header import Header
-from firmware_bridge.writer import Writer
+from firmware_bridge.writer import DiskError, Writer
 
 HEADER = Header(Announcement(1, 10.0, "int16", 5, [ChannelInfo("pd")]))
 
 
-def test_a_full_disk_is_one_line_and_ends_with_three():
+def test_a_disk_that_is_full_at_the_start_is_one_line():
     if not Path("/dev/full").exists():
         pytest.skip("no /dev/full here")
-    with pytest.raises(DeviceFailedError) as error:
+    with pytest.raises(BridgeError) as error:
         Writer("/dev/full", HEADER, overwrite=True)
+    assert str(error.value) == "/dev/full cannot be written: the disk is full"
+    assert error.value.exit_code == 2
+    assert Path("/dev/full").exists()
+
+
+@pytest.fixture
+def small_files():
+    """No file may grow beyond 1000 bytes."""
+    before = resource.getrlimit(resource.RLIMIT_FSIZE)
+    resource.setrlimit(resource.RLIMIT_FSIZE, (1000, before[1]))
+    yield
+    resource.setrlimit(resource.RLIMIT_FSIZE, before)
+
+
+def test_a_disk_that_fills_up_leaves_whole_records(tmp_path, small_files):
+    writer = Writer(tmp_path / "run.mfr", HEADER)
+    begin = writer.bytes
+    for _ in range(20):
+        writer.append(bytes(50))
+    with pytest.raises(DiskError) as error:
+        writer.flush()
+    writer.append(bytes(50))
+    writer.close()
+    path = tmp_path / "run.mfr"
     assert str(error.value) == (
-        "/dev/full cannot be written any further: No space left on device; "
-        "what was written before is kept"
+        f"{path} cannot be written any further: a file may not be larger here"
     )
     assert error.value.exit_code == 3
+    assert (path.stat().st_size - begin) % 64 == 0
+    assert 1000 - 64 < path.stat().st_size <= 1000
+
+
+def test_a_file_without_room_for_its_header_is_not_left_behind(tmp_path, small_files):
+    resource.setrlimit(resource.RLIMIT_FSIZE, (50, resource.getrlimit(resource.RLIMIT_FSIZE)[1]))
+    with pytest.raises(BridgeError, match="a file may not be larger here"):
+        Writer(tmp_path / "run.mfr", HEADER)
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_a_folder_that_is_not_there_is_refused(tmp_path):
     with pytest.raises(BridgeError) as error:
         Writer(tmp_path / "no" / "run.mfr", HEADER)
-    assert str(error.value) == f"{tmp_path}/no/run.mfr cannot be written: No such file or directory"
+    assert str(error.value) == f"{tmp_path}/no/run.mfr cannot be written: no such file or directory"
 
 
 def test_records_are_in_the_file_after_a_sync_whatever_happens_next(tmp_path):

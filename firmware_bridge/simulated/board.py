@@ -199,7 +199,7 @@ class SimulatedBoard:
             self._outbox = encode_reply(Reply(command.code, command.request))
         elif command.code == CommandCode.IDENTIFY:
             self._outbox += encode_announcement(announcement_of(self._bench, self._stream))
-        else:
+        elif command.code != CommandCode.KEEP_ALIVE:
             self._outbox += encode_reply(Reply(command.code, command.request, status=1))
 
     def _send(self) -> None:

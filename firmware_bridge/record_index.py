@@ -140,26 +140,19 @@ class RecordIndex:
         ends = runs["index"] + lengths(runs, self._slots).astype(np.uint64)
         if (runs["index"][1:] >= ends[:-1]).all():
             return Placed(runs, 0)
-        single = self._single_records(runs)
-        single = single[np.lexsort((single["record"], single["index"]))]
-        ends = single["index"] + single["last"].astype(np.uint64)
-        reached = np.zeros(single.size, np.uint64)
+        runs = runs[np.lexsort((runs["record"], runs["index"]))]
+        ends = runs["index"] + lengths(runs, self._slots).astype(np.uint64)
+        reached = np.zeros(runs.size, np.uint64)
         reached[1:] = np.maximum.accumulate(ends)[:-1]
-        kept = single[single["index"] >= reached]
-        return Placed(kept, single.size - kept.size)
-
-    def _single_records(self, runs: NDArray[Any]) -> NDArray[Any]:
-        total = int(runs["records"].sum())
-        nth = np.arange(total) - np.repeat(
-            np.cumsum(runs["records"]) - runs["records"], runs["records"]
-        )
-        single = np.repeat(runs, runs["records"])
-        is_last = nth == single["records"] - 1
-        single["last"] = np.where(is_last, single["last"], self._slots)
-        single["index"] += (nth * self._slots).astype(np.uint64)
-        single["record"] += nth
-        single["records"] = 1
-        return single
+        # Of each run the records that begin before what is reached already are left out.
+        slots = np.uint64(self._slots)
+        behind = np.where(reached > runs["index"], reached - runs["index"], np.uint64(0))
+        skip = np.minimum(-(-behind.astype(np.float64) // self._slots), runs["records"])
+        skip = skip.astype(np.int64)
+        runs["index"] += skip.astype(np.uint64) * slots
+        runs["record"] += skip
+        runs["records"] -= skip
+        return Placed(runs[runs["records"] > 0], int(skip.sum()))
 
 
 def lengths(runs: NDArray[Any], slots: int) -> NDArray[np.int64]:

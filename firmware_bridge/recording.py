@@ -136,6 +136,7 @@ class MfrRecording(Recording):
             join = self._joins.get(stream)
             if join is not None and placed:
                 start, length_u = max(reached, join.grid + first - join.index), join.grid_u
+            self._check_span(start)
             if placed:
                 gaps.append(Gap(reached, start - reached, exact=False, length_u=length_u))
             runs["index"] = runs["index"] - np.uint64(first) + np.uint64(start)

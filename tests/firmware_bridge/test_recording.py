@@ -11,6 +11,7 @@ from firmware_bridge.errors import BridgeError
 from firmware_bridge.frame import encode_frame
 from firmware_bridge.host_note import End, Join, Remark, Stamp
 from firmware_bridge.message import encode_note
+from firmware_bridge.record_index import RUN, RecordIndex
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.recording_header import Header, RecordingError, encode_header
 from firmware_bridge.trace import Gap
@@ -210,3 +211,24 @@ def test_the_header_describes_itself(written):
     info = json.loads(data[data.index(b"{") : data.index(b"}") + 1])
     assert info == {"port": "loop://"}
     assert decode(encode_announcement(announced())[1:-1]) in data
+
+
+def test_repeats_within_long_runs_and_across_their_ends_count_once(written):
+    samples = counts(200)
+    order = [*range(10), *range(12, 20), 9, 10, 11, 12, 9, 10, 11, 12, 3]
+    path = written([frame(samples[10 * k : 10 * k + 10], 10 * k) for k in order])
+    recording = open_mfr(path)
+    assert (recording.length, recording.gaps, recording.duplicates) == (200, [], 7)
+    np.testing.assert_array_equal(recording.trace("pd").values, samples[:, 0] * 0.5 + 1.0)
+
+
+def test_a_long_recording_with_one_repeat_takes_no_memory_for_each_record():
+    index = RecordIndex(SLOTS)
+    index._runs = [np.zeros(2, RUN)]
+    index._runs[0]["records"] = (10**9, 1)
+    index._runs[0]["last"] = SLOTS
+    index._runs[0]["index"][1] = 500 * SLOTS
+    index._runs[0]["record"][1] = 10**9
+    found = index.placed(0)
+    assert found.duplicates == 1
+    assert found.runs["records"].tolist() == [10**9]

@@ -1,5 +1,6 @@
 """What a board says about itself: identity, rate, format, and each channel's name, unit and scale."""
 
+import math
 import struct
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -95,6 +96,14 @@ class Announcement:
             raise MessageError(f"a board must have 1 to 255 channels, got {len(self.channels)}")
         if not 1 <= self.slots <= 0xFFFF:
             raise MessageError(f"slots must be 1 to 65535, got {self.slots}")
+        if not 0 < self.speed < math.inf:
+            raise MessageError(f"speed must be > 0 and finite, got {self.speed!r}")
+        for channel in self.channels:
+            if not math.isfinite(abs(channel.scale) * 2.0**31 + abs(channel.offset)):
+                raise MessageError(
+                    f"scale and offset of {channel.name!r} must be finite for every code, "
+                    f"got {channel.scale!r} and {channel.offset!r}"
+                )
 
     @property
     def code_limits(self) -> tuple[int, int]:
@@ -190,12 +199,13 @@ def parse_announcement(message: bytes) -> Announcement:
             _FIXED.unpack_from(body)
         )
         texts = _Texts(body, _FIXED.size)
+        name = _format_of(code)
         board, firmware = texts.take(), texts.take()
         channels = [texts.channel(code) for _ in range(count)]
         return Announcement(
             stream=stream,
             rate_hz=numerator / denominator,
-            format=_format_of(code),
+            format=name,
             slots=slots,
             channels=channels,
             board=board,

@@ -173,6 +173,8 @@ def body_of(message: bytes) -> bytes:
     MessageError
         If its length field reaches beyond the message.
     """
+    if len(message) < _HEAD.size + 4:
+        raise MessageError(f"a message of {len(message)} bytes is too short")
     length = _HEAD.unpack_from(message)[2]
     if _HEAD.size + length + 4 > len(message):
         raise MessageError(f"a body of {length} bytes does not fit a message of {len(message)}")

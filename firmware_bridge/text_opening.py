@@ -23,6 +23,8 @@ __all__ = ["TextOpening", "maybe_open_text"]
 
 _HEAD_LINES = 1000
 _INT32_MAX = 2**31 - 1
+_DECIMALS_MAX = 300  # the power of ten stays a float
+_NAME_BYTES = 255  # what an announcement has room for
 _HEADROOM = 8  # by how much a signal may grow beyond the first lines
 _PAUSE_S = 1.0  # by the host's clock alone: shorter pauses are taken for its buffers
 
@@ -207,13 +209,16 @@ def _decimals(table: Table, position: int) -> int:
     largest = float(finite.max(initial=0.0)) or 1.0
     digit = table.resolutions[position] or 1.0
     printed = max(0, round(-math.log10(digit)))
-    room = math.floor(math.log10(_INT32_MAX / largest))
-    spare = math.floor(math.log10(_INT32_MAX / (_HEADROOM * largest)))
+    # Logarithms are subtracted, since the numbers may lie at either end of what a float holds.
+    digits = math.log10(largest)
+    room = math.floor(math.log10(_INT32_MAX) - digits)
+    spare = math.floor(math.log10(_INT32_MAX / _HEADROOM) - digits)
     # Decimals are not given up for headroom where the numbers as printed just fit.
-    return max(0, min(printed, room if printed <= room else spare))
+    return max(0, min(printed, room if printed <= room else spare, _DECIMALS_MAX))
 
 
 def _channel(table: Table, position: int, decimals: int) -> ChannelInfo:
     unit, factor, offset = si_unit(table.units[position]) or ("1", 1.0, 0.0)
     name = table.names[position] or f"column {position + 1}"
+    name = name.encode()[:_NAME_BYTES].decode(errors="ignore")
     return ChannelInfo(name, unit, factor / 10**decimals, offset)

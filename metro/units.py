@@ -137,7 +137,10 @@ def _own_unit(value: Any, name: str) -> Any:  # noqa: ANN401  # any registry's q
 
 def _real(magnitude: Any, name: str) -> "float | np.ndarray[Any, Any]":  # noqa: ANN401  # any number
     if isinstance(magnitude, (int, float)):
-        return float(magnitude)
+        try:
+            return float(magnitude)
+        except OverflowError:  # a whole number of more than 308 digits
+            raise MetroError(f"{name} must be finite, got a number too large to hold") from None
     import numpy as np
 
     array = np.asarray(magnitude)

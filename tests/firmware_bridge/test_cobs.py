@@ -53,3 +53,35 @@ def test_many_rows_at_once_are_the_same_bytes(length, zeros):
 @pytest.mark.parametrize("stuffed", ["02", "05 11 22 33", "01 05", "ff 01", "03 11 22 09 33"])
 def test_a_code_beyond_the_end_is_no_message(stuffed):
     assert decode(bytes.fromhex(stuffed)) is None
+
+
+def decoded_byte_by_byte(stuffed):
+    """As the paper has it, one code after the other."""
+    out, place = b"", 0
+    while place < len(stuffed):
+        code = stuffed[place]
+        run = stuffed[place + 1 : place + code]
+        if len(run) < code - 1:
+            return None
+        out, place = out + run, place + code
+        if code < 255 and place < len(stuffed):
+            out += b"\0"
+    return out
+
+
+@given(
+    st.lists(
+        st.one_of(
+            st.just(b"\x01"),
+            st.just(b"\x01" * 40),
+            st.just(b"\xff" + b"\x07" * 254),
+            st.just(b"\xff" * 255),
+            st.binary(min_size=1, max_size=5).filter(lambda part: 0 not in part),
+        ),
+        min_size=1,
+        max_size=25,
+    ).map(b"".join)
+)
+def test_whatever_comes_is_decoded_as_byte_by_byte(stuffed):
+    assert decode(stuffed) == decoded_byte_by_byte(stuffed)
+    assert decode(encode(stuffed)) == stuffed

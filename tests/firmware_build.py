@@ -32,9 +32,10 @@ PACKAGES = {
 }
 
 
-def flags():
-    """Return the flags that every file of the firmware is compiled with."""
-    return (FIRMWARE / "flags").read_text(encoding="utf-8").split()
+def flags(*names):
+    """Return the flags of these files, by default those that everything is compiled with."""
+    texts = [(FIRMWARE / name).read_text(encoding="utf-8") for name in names or ("flags",)]
+    return " ".join(texts).split()
 
 
 def run(command, **more):

@@ -205,8 +205,9 @@ class Core:
         self.library = c.CDLL(str(library))
         for name in ("frame", "announcement", "reply", "note", "lock_in"):
             getattr(self.library, f"pd_{name}_encode").restype = c.c_size_t
-        for name in ("pd_device_obey", "pd_device_next", "pd_ring_encode"):
+        for name in ("pd_device_answer", "pd_device_next"):
             getattr(self.library, name).restype = c.c_size_t
+        self.library.pd_device_obey.restype = c.c_void_p
         self.library.pd_sin.argtypes = [c.c_uint32]
         self.library.pd_parser_push.restype = c.c_bool
 
@@ -291,9 +292,9 @@ class Device:
         answer = b""
         for command in self.core.commands(wire)[0]:
             out = (c.c_uint8 * ROOM)()
-            length = self.library.pd_device_obey(
-                c.byref(self.state), c.byref(command), out, c.c_size_t(ROOM)
-            )
+            state, asked = c.byref(self.state), c.byref(command)
+            refusal = c.c_void_p(self.library.pd_device_obey(state, asked))
+            length = self.library.pd_device_answer(state, asked, refusal, out, c.c_size_t(ROOM))
             answer += bytes(out[:length])
         return answer
 
@@ -307,6 +308,10 @@ class Device:
             c.c_uint16(flags),
         )
         return code
+
+    def miss(self):
+        """Go through one sample that was not taken in time."""
+        self.library.pd_device_miss(c.byref(self.state))
 
     def sample(self, value, clock=0):
         """Go through one sample with the drive, beside rest, as channel 1; return all it says."""

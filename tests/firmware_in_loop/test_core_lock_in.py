@@ -115,6 +115,15 @@ def test_when_the_lines_change_accumulation_begins_anew(core):
     assert (event.index, event.length, len(event.lines)) == (60, 100, 4)
 
 
+def test_a_result_never_spans_a_missing_sample(core):
+    device = board(core, "int16")
+    start(device, 100)
+    results(device, [5] * 60)
+    device.miss()
+    (event,) = Decoder().feed(results(device, [5] * 100))
+    assert (event.index, event.length) == (61, 100)
+
+
 def test_sums_that_could_overflow_are_refused(core):
     for name, most in (("int16", 2**32 - 1), ("int24", 2**26 - 1), ("int32", 2**18 - 1)):
         for length, status in ((most, 0), (most + 1, 2), (0, 2)):

@@ -97,3 +97,26 @@ def test_a_new_stream_begins_at_index_zero_and_the_old_one_is_still_sent(core):
         (2, 0, 8),
     ]
     assert [event for event in found if isinstance(event, Gap)] == [Gap(12, 0, exact=False)]
+
+
+def test_a_sample_that_was_not_taken_in_time_is_missing_at_its_index(core):
+    device, decoder = board(core, blocks=8), Decoder(window=0)
+    device.obey(START)
+    for k in range(40):
+        if k in (13, 14, 30):
+            device.miss()
+        else:
+            device.step(scan(k))
+    device.obey(STOP)
+    found = decoder.feed(device.drain())
+    assert [event for event in found if isinstance(event, Gap)] == [Gap(13, 2), Gap(30, 1)]
+    frames = [event for event in found if isinstance(event, Samples)]
+    assert [(f.index, len(f.data), f.flags) for f in frames] == [
+        (0, 8, 0),
+        (8, 5, 0),
+        (15, 8, OVERRUN),
+        (23, 7, 0),
+        (31, 8, OVERRUN),
+        (39, 1, 0),
+    ]
+    assert device.state.ring.dropped == 3

@@ -19,7 +19,7 @@ def objects(request, tmp_path_factory):
     """Return the processor and its folder of object files."""
     gcc = tool("arm-none-eabi-gcc")
     folder = tmp_path_factory.mktemp(request.param)
-    command = [gcc, *flags(), "-Os", f"-mcpu={request.param}", "-mthumb", "-fstack-usage", "-c"]
+    command = [gcc, *flags("flags", "target-flags"), f"-mcpu={request.param}", "-c"]
     run([*command, *SOURCES], cwd=folder)
     return request.param, folder
 

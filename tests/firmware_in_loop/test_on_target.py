@@ -51,7 +51,7 @@ def image(folder, processor, script):
     elf = folder / "program.elf"
     sources = [*sorted(CORE.glob("*.c")), COMMON / "reset.c", *sorted(TARGET.glob("*.c"))]
     includes = [f"-I{place}" for place in (CORE, COMMON, TARGET, folder)]
-    run([tool("arm-none-eabi-gcc"), *flags(), "-Os", f"-mcpu={processor}", "-mthumb", *includes,
+    run([tool("arm-none-eabi-gcc"), *flags("flags", "target-flags"), f"-mcpu={processor}", *includes,
          "-nostdlib", "-nostartfiles", f"-L{COMMON}", f"-T{script}", "-o", elf, *sources,
          "-lgcc"])  # fmt: skip
     return elf

@@ -14,7 +14,7 @@ static void put_text(struct pd_envelope *envelope, const char *text)
     const size_t length = pd_text_length(text, 255);
 
     pd_put_byte(envelope, (uint8_t)length);
-    pd_text_put(envelope, text, length);
+    pd_put_bytes(envelope, (const uint8_t *)text, length);
 }
 
 static void put_channel(struct pd_envelope *envelope, const struct pd_channel *channel)

@@ -104,6 +104,7 @@ static const char *change_lines(struct pd_device *device, const struct pd_comman
         refusal = pd_drive_set_line(&device->drive, line, &wanted);
     }
     if (refusal == NULL) {
+        device->lock_in.is_done = false; /* the result that waits is one of other lines */
         pd_lock_in_restart(&device->lock_in, device->index);
     }
     return refusal;
@@ -117,8 +118,17 @@ static bool has_its_length(const struct pd_command *command)
            (command->code == PD_START && command->length == 0);
 }
 
-static const char *act(struct pd_device *device, const struct pd_command *command)
+static bool is_known(const struct pd_command *command)
 {
+    return command->code >= PD_IDENTIFY && command->code <= PD_KEEP_ALIVE;
+}
+
+const char *pd_device_obey(struct pd_device *device, const struct pd_command *command)
+{
+    pd_drive_heard(&device->drive);
+    if (!is_known(command)) {
+        return "unknown command";
+    }
     if (!has_its_length(command)) {
         return "wrong length";
     }
@@ -145,21 +155,16 @@ static bool is_announced_after(uint8_t code)
     return code == PD_IDENTIFY || code == PD_START || code == PD_RATE;
 }
 
-size_t pd_device_obey(struct pd_device *device, const struct pd_command *command, uint8_t *out,
-                      size_t size)
+size_t pd_device_answer(const struct pd_device *device, const struct pd_command *command,
+                        const char *refusal, uint8_t *out, size_t size)
 {
     const uint8_t code = command->code;
-    uint8_t status = PD_UNKNOWN;
-    const char *text = "unknown command";
+    uint8_t status = is_known(command) ? PD_REFUSED : PD_UNKNOWN;
     size_t length = 0;
 
-    pd_drive_heard(&device->drive);
-    if (code >= PD_IDENTIFY && code <= PD_KEEP_ALIVE) {
-        text = act(device, command);
-        status = text == NULL ? PD_DONE : PD_REFUSED;
-    }
-    if (status == PD_DONE) {
-        text = "";
+    if (refusal == NULL) {
+        refusal = "";
+        status = PD_DONE;
         if (is_announced_after(code)) {
             length = pd_announcement_encode(&device->board->identity, device->stream,
                                             &device->rate, device->slots, out, size);
@@ -169,12 +174,18 @@ size_t pd_device_obey(struct pd_device *device, const struct pd_command *command
         }
     }
     return length +
-           pd_reply_encode(command->request, code, status, text, out + length, size - length);
+           pd_reply_encode(command->request, code, status, refusal, out + length, size - length);
 }
 
 uint16_t pd_device_code(struct pd_device *device)
 {
     return pd_drive_code(&device->drive);
+}
+
+static void go_on(struct pd_device *device)
+{
+    pd_drive_advance(&device->drive);
+    device->index++;
 }
 
 void pd_device_sample(struct pd_device *device, const int32_t *scan, uint64_t clock,
@@ -184,8 +195,16 @@ void pd_device_sample(struct pd_device *device, const int32_t *scan, uint64_t cl
         pd_ring_push(&device->ring, scan, device->index, clock, flags);
     }
     pd_lock_in_push(&device->lock_in, device->drive.lines, scan[device->lock_in.channel]);
-    pd_drive_advance(&device->drive);
-    device->index++;
+    go_on(device);
+}
+
+void pd_device_miss(struct pd_device *device)
+{
+    if ((device->sends & PD_SEND_SAMPLES) != 0) {
+        pd_ring_miss(&device->ring);
+    }
+    go_on(device);
+    pd_lock_in_restart(&device->lock_in, device->index);
 }
 
 size_t pd_device_next(struct pd_device *device, uint8_t *out, size_t size)

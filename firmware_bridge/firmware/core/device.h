@@ -1,7 +1,8 @@
 /* A board as the host sees it: commands in, messages out, one call a sample between them.
  *
- * In the sampling interrupt: pd_device_code() for the DAC, then pd_device_sample(). Elsewhere, with
- * that interrupt held off: pd_device_obey(). Elsewhere, without: pd_device_next(). */
+ * In the sampling interrupt: pd_device_code() for the DAC, then pd_device_sample(); or
+ * pd_device_miss(). Elsewhere, with that interrupt held off: pd_device_obey(), which is quick.
+ * Elsewhere, without: pd_device_answer() and pd_device_next(), which are not. */
 #ifndef PD_DEVICE_H
 #define PD_DEVICE_H
 
@@ -41,9 +42,12 @@ struct pd_device {
 void pd_device_init(struct pd_device *device, const struct pd_board *board,
                     const struct pd_rate *rate, uint32_t seed);
 
-/* Do what a command asks; return the length of the answer in out, 0 if there is none. */
-size_t pd_device_obey(struct pd_device *device, const struct pd_command *command, uint8_t *out,
-                      size_t size);
+/* Do what a command asks; return NULL, or why not. */
+const char *pd_device_obey(struct pd_device *device, const struct pd_command *command);
+
+/* Write the answer to a command that was obeyed or refused; return its length, 0 if there is none. */
+size_t pd_device_answer(const struct pd_device *device, const struct pd_command *command,
+                        const char *refusal, uint8_t *out, size_t size);
 
 /* Return the DAC code for the present sample. */
 uint16_t pd_device_code(struct pd_device *device);
@@ -51,6 +55,9 @@ uint16_t pd_device_code(struct pd_device *device);
 /* Take the present sample of every channel and go on to the next. */
 void pd_device_sample(struct pd_device *device, const int32_t *scan, uint64_t clock,
                       uint16_t flags);
+
+/* The present sample was not taken in time: count it as missing and go on to the next. */
+void pd_device_miss(struct pd_device *device);
 
 /* Write the next message that is due; return its length, 0 if there is none. */
 size_t pd_device_next(struct pd_device *device, uint8_t *out, size_t size);

@@ -87,12 +87,9 @@ void pd_put_bytes(struct pd_envelope *envelope, const uint8_t *data, size_t coun
 
 size_t pd_envelope_close(struct pd_envelope *envelope)
 {
-    uint32_t crc = envelope->crc ^ 0xFFFFFFFFu;
+    const uint32_t crc = envelope->crc ^ 0xFFFFFFFFu;
 
-    for (int k = 0; k < 4; k++) {
-        stuff(envelope, (uint8_t)(crc & 0xFFu));
-        crc >>= 8;
-    }
+    pd_put_words(envelope, &crc, 1);
     close_run(envelope);
     emit(envelope, 0);
     return envelope->at <= envelope->size ? envelope->at : 0;

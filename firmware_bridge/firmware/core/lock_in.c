@@ -26,13 +26,13 @@ void pd_lock_in_begin(struct pd_lock_in *lock_in, uint8_t channel, uint32_t leng
     lock_in->channel = channel;
     lock_in->length = length;
     lock_in->is_on = length > 0;
+    lock_in->is_done = false;
     pd_lock_in_restart(lock_in, 0);
 }
 
 void pd_lock_in_restart(struct pd_lock_in *lock_in, uint64_t index)
 {
     lock_in->index = index;
-    lock_in->is_done = false;
     clear(lock_in);
 }
 
@@ -76,16 +76,6 @@ void pd_lock_in_push(struct pd_lock_in *lock_in, const struct pd_line *lines, in
     }
 }
 
-static uint32_t lines_set(const struct pd_line *lines)
-{
-    uint32_t count = 0;
-
-    for (uint32_t k = 0; k < PD_LINES; k++) {
-        count += lines[k].step != 0;
-    }
-    return count;
-}
-
 static void put_line(struct pd_envelope *envelope, uint32_t step, const int64_t *sums)
 {
     uint32_t words[LINE_WORDS];
@@ -101,22 +91,28 @@ static void put_line(struct pd_envelope *envelope, uint32_t step, const int64_t 
 size_t pd_lock_in_encode(struct pd_lock_in *lock_in, const struct pd_line *lines, uint32_t stream,
                          uint8_t *out, size_t size)
 {
-    const uint32_t count = lines_set(lines);
-    const uint32_t words[FIXED_WORDS] = {
-        stream, (uint32_t)(lock_in->done_index & 0xFFFFFFFFu),
-        (uint32_t)(lock_in->done_index >> 32), lock_in->length,
-        lock_in->channel | (uint32_t)PD_CARRIER_SHIFT << 8 | count << 16};
+    uint32_t words[FIXED_WORDS] = {stream, (uint32_t)(lock_in->done_index & 0xFFFFFFFFu),
+                                   (uint32_t)(lock_in->done_index >> 32), lock_in->length,
+                                   lock_in->channel | (uint32_t)PD_CARRIER_SHIFT << 8};
     struct pd_envelope envelope;
+    uint32_t steps[PD_LINES];
+    uint32_t count = 0;
 
     if (!lock_in->is_done) {
         return 0;
     }
+    /* Read once: the drive may go to rest in the interrupt, and clear its lines, at any time. */
+    for (uint32_t k = 0; k < PD_LINES; k++) {
+        steps[k] = lines[k].step;
+        count += steps[k] != 0;
+    }
+    words[FIXED_WORDS - 1] |= count << 16;
     pd_envelope_open(&envelope, out, size);
     pd_envelope_head(&envelope, PD_LOCK_IN, (uint16_t)(4 * (FIXED_WORDS + LINE_WORDS * count)));
     pd_put_words(&envelope, words, FIXED_WORDS);
     for (uint32_t k = 0; k < PD_LINES; k++) {
-        if (lines[k].step != 0) {
-            put_line(&envelope, lines[k].step, lock_in->sums[lock_in->active ^ 1u][k]);
+        if (steps[k] != 0) {
+            put_line(&envelope, steps[k], lock_in->sums[lock_in->active ^ 1u][k]);
         }
     }
     lock_in->is_done = false;

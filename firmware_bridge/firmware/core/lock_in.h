@@ -29,7 +29,7 @@ struct pd_lock_in {
 /* Accumulate over length samples of one channel, again and again, from index 0; length 0: do not. */
 void pd_lock_in_begin(struct pd_lock_in *lock_in, uint8_t channel, uint32_t length);
 
-/* Begin anew at this sample: the lines have changed. */
+/* Begin anew at this sample; a result that waits is still sent. */
 void pd_lock_in_restart(struct pd_lock_in *lock_in, uint64_t index);
 
 /* Take the present sample; a result that waits longer than the next one takes is kept, the

@@ -65,8 +65,7 @@ void pd_ring_push(struct pd_ring *ring, const int32_t *scan, uint64_t index, uin
     uint8_t *place = ring->payload + (size_t)ring->in * ring->block_bytes;
 
     if (is_full(ring)) {
-        ring->dropped++;
-        ring->is_overrun = true;
+        pd_ring_miss(ring);
         return;
     }
     if (block->filled == 0) {
@@ -82,6 +81,13 @@ void pd_ring_push(struct pd_ring *ring, const int32_t *scan, uint64_t index, uin
     if (block->filled == block->slots) {
         pd_ring_publish(ring);
     }
+}
+
+void pd_ring_miss(struct pd_ring *ring)
+{
+    pd_ring_publish(ring);
+    ring->dropped++;
+    ring->is_overrun = true;
 }
 
 void pd_ring_publish(struct pd_ring *ring)

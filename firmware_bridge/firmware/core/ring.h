@@ -39,6 +39,9 @@ void pd_ring_begin(struct pd_ring *ring, uint32_t stream, uint16_t slots);
 void pd_ring_push(struct pd_ring *ring, const int32_t *scan, uint64_t index, uint64_t clock,
                   uint16_t flags);
 
+/* Count a sample that was not there; the block being filled ends before it. */
+void pd_ring_miss(struct pd_ring *ring);
+
 /* Let the block that is being filled go as it is. */
 void pd_ring_publish(struct pd_ring *ring);
 

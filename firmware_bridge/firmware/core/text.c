@@ -1,5 +1,6 @@
 #include "text.h"
 
+#include "envelope.h"
 #include "wire.h"
 
 size_t pd_text_length(const char *text, size_t maximum)
@@ -12,13 +13,6 @@ size_t pd_text_length(const char *text, size_t maximum)
     return length;
 }
 
-void pd_text_put(struct pd_envelope *envelope, const char *text, size_t length)
-{
-    for (size_t k = 0; k < length; k++) {
-        pd_put_byte(envelope, (uint8_t)text[k]);
-    }
-}
-
 /* A message of some words and a text. */
 static size_t encode(uint8_t type, const uint32_t *words, size_t count, const char *text,
                      uint8_t *out, size_t size)
@@ -29,7 +23,7 @@ static size_t encode(uint8_t type, const uint32_t *words, size_t count, const ch
     pd_envelope_open(&envelope, out, size);
     pd_envelope_head(&envelope, type, (uint16_t)(4 * count + length));
     pd_put_words(&envelope, words, count);
-    pd_text_put(&envelope, text, length);
+    pd_put_bytes(&envelope, (const uint8_t *)text, length);
     return pd_envelope_close(&envelope);
 }
 

@@ -5,16 +5,12 @@
 #include <stddef.h>
 #include <stdint.h>
 
-#include "envelope.h"
-
 enum {
     PD_TEXT_MAX = 1024
 };
 
 /* Bytes before the closing zero, at most maximum of them. */
 size_t pd_text_length(const char *text, size_t maximum);
-
-void pd_text_put(struct pd_envelope *envelope, const char *text, size_t length);
 
 /* Write the answer to a command; return its length on the wire, 0 if size is too small. */
 size_t pd_reply_encode(uint16_t request, uint8_t code, uint8_t status, const char *text,

@@ -66,7 +66,9 @@ static void play_script(void)
     pd_parser_init(&parser, buffer, sizeof buffer);
     for (size_t k = 0; k < sizeof commands; k++) {
         if (pd_parser_push(&parser, commands[k], &command)) {
-            say_message(pd_device_obey(&device, &command, out, sizeof out));
+            const char *refusal = pd_device_obey(&device, &command);
+
+            say_message(pd_device_answer(&device, &command, refusal, out, sizeof out));
         }
     }
 }

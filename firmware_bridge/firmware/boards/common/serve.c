@@ -7,10 +7,10 @@ static void obey(struct pd_device *device, const struct pd_command *command, uin
                  size_t size)
 {
     const uint32_t before = interrupts_hold();
-    const size_t length = pd_device_obey(device, command, out, size);
+    const char *refusal = pd_device_obey(device, command);
 
     interrupts_release(before);
-    board_write(out, length);
+    board_write(out, pd_device_answer(device, command, refusal, out, size));
 }
 
 /* One message at a time: a busy link must not keep the host from being heard. */

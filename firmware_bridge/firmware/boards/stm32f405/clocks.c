@@ -49,6 +49,6 @@ void clocks_init(void)
     RCC_CFGR = PRESCALERS | SWITCH_TO_PLL;
     wait_for(&RCC_CFGR, 3u << 2, SWITCHED_TO_PLL);
     RCC_AHB1ENR |= 1u << 0;                                   /* GPIO A */
-    RCC_APB1ENR |= 1u << 0 | 1u << 17 | 1u << 28 | 1u << 29;  /* TIM2, USART2, PWR, DAC */
+    RCC_APB1ENR |= 1u << 0 | 1u << 3 | 1u << 17 | 1u << 28 | 1u << 29; /* TIM2, 5, USART2, PWR, DAC */
     RCC_APB2ENR |= 1u << 8 | 1u << 9;                         /* ADC1, ADC2 */
 }

@@ -2,12 +2,15 @@
 
 #include "cortex_m.h"
 
-/* RM0090, 8.4 (GPIO), 13.13 (ADC), 14.5 (DAC), 18.4 (TIM2). */
+/* RM0090, 8.4 (GPIO), 13.13 (ADC), 14.5 (DAC), 18.4 (TIM2, TIM5). */
 #define GPIOA_MODER REGISTER(0x40020000u)
 #define TIM2_CR1 REGISTER(0x40000000u)
 #define TIM2_CR2 REGISTER(0x40000004u)
 #define TIM2_EGR REGISTER(0x40000014u)
 #define TIM2_ARR REGISTER(0x4000002Cu)
+#define TIM5_CR1 REGISTER(0x40000C00u)
+#define TIM5_SMCR REGISTER(0x40000C08u)
+#define TIM5_CNT REGISTER(0x40000C24u)
 #define DAC_CR REGISTER(0x40007400u)
 #define DAC_DHR12R1 REGISTER(0x40007408u)
 #define ADC1_SR REGISTER(0x40012000u)
@@ -31,6 +34,7 @@ enum {
     DAC_ON = 1 | 1 << 1, /* without its buffer, which does not reach 0 V: 15 kilohm */
     UPDATE_IS_TRIGGER = 2 << 4,
     COUNT = 1,
+    BY_TRIGGER = 7, /* number 0, which for TIM5 is the trigger output of TIM2 */
     INTERRUPT = 18
 };
 
@@ -50,6 +54,8 @@ void converters_init(uint16_t dac_code)
     ADC2_CR2 = ADC_ON;
     ADC1_CR2 = ADC_ON | ON_TIMER_2;
     TIM2_CR2 = UPDATE_IS_TRIGGER;
+    TIM5_SMCR = BY_TRIGGER;
+    TIM5_CR1 = COUNT;
     interrupt_enable(INTERRUPT);
 }
 
@@ -72,4 +78,9 @@ uint32_t converters_read(void)
     ADC1_SR = 0;
     ADC2_SR = 0;
     return codes;
+}
+
+uint32_t converters_count(void)
+{
+    return TIM5_CNT;
 }

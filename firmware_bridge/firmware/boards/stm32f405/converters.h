@@ -16,4 +16,7 @@ void dac_write(uint16_t code);
 /* In the interrupt: both codes, PA0 in the lower half. */
 uint32_t converters_read(void);
 
+/* Conversions begun so far, counted by the hardware: none is overlooked, however late we are. */
+uint32_t converters_count(void);
+
 #endif

@@ -42,6 +42,7 @@ static struct pd_frame blocks[BLOCKS];
 static uint8_t payload[BLOCKS * SLOTS * CHANNELS * FORMAT];
 static uint8_t out[1024];
 static uint64_t clock;
+static uint32_t taken; /* conversions */
 static uint32_t ticks = TIMER_HZ / RATE_HZ;
 
 static bool set_rate(struct pd_rate *rate)
@@ -64,6 +65,19 @@ static bool is_at_end(uint32_t code)
     return code == 0 || code == CODE_MAX;
 }
 
+/* Samples that were overwritten before we came count as missing. */
+static void catch_up(void)
+{
+    const uint32_t begun = converters_count();
+
+    while (begun - taken > 1u) {
+        pd_device_miss(&device);
+        clock += ticks;
+        taken++;
+    }
+    taken = begun;
+}
+
 /* The converters are done: the drive for this sample goes out as the sample comes in. */
 static void sample(void)
 {
@@ -73,6 +87,7 @@ static void sample(void)
     const int32_t scan[CHANNELS] = {(int32_t)photodiode - MIDDLE, (int32_t)drive - MIDDLE};
     const uint16_t flags = is_at_end(photodiode) ? PD_OVER_RANGE : 0;
 
+    catch_up();
     dac_write(pd_device_code(&device));
     pd_device_sample(&device, scan, clock, flags);
     clock += ticks;

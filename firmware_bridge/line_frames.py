@@ -151,7 +151,8 @@ class LineFrames:
         assert self._opening is not None  # noqa: S101  # lines come after it
         if not self._counts:
             self.begun_s = float(lines.arrivals_s[part[0]])
-        scaled = lines.rows[part] * self._opening.factors
+        with np.errstate(over="ignore"):  # what becomes infinite is over-range
+            scaled = lines.rows[part] * self._opening.factors
         over = ~(np.abs(scaled) <= _INT32_MAX)
         counts = np.where(np.isnan(scaled), LOST, np.rint(scaled))
         self._counts.append(np.clip(counts, -_INT32_MAX - 1, _INT32_MAX).astype(np.int32))

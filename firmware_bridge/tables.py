@@ -154,6 +154,8 @@ def to_recording(
     found = named_time(table, time, path) if time else maybe_find_time(table, has_rate)
     remarks = [*(found.remarks if found else []), *table.remarks]
     grid = _grid(table, found, rate_hz, path, remarks)
+    if not grid.index.size:
+        raise RateError(f"{path} has no row of numbers")
     taken = found.positions if found else ()
     positions = [k for k in range(len(table.names)) if k not in taken]
     if not positions:

@@ -7,7 +7,7 @@ __all__ = ["maybe_number", "split_fields"]
 
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
 _COMMA_NUMBER = re.compile(r"[+-]?\d*(,\d+)?([eE][+-]?\d+)?")
-_NOT_FINITE = {"nan", "inf", "infinity"}
+_NOT_FINITE = re.compile(r"[+-]?(nan|inf|infinity)", re.IGNORECASE | re.ASCII)
 
 
 def split_fields(line: str, delimiter: str | None) -> list[str]:
@@ -50,7 +50,7 @@ def maybe_number(field: str, decimal: str = ".") -> float | None:
     float or None
         The number; NaN and infinity are numbers here.
     """
-    if field.lstrip("+-").lower() in _NOT_FINITE:
+    if _NOT_FINITE.fullmatch(field):
         return float(field)
     if decimal == ",":
         if "." in field or not _COMMA_NUMBER.fullmatch(field):

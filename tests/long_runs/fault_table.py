@@ -9,13 +9,12 @@ the recorder's memory grew beyond its limit.
 
 import argparse
 import json
-import os
-import subprocess
 import sys
 import tempfile
 from pathlib import Path
 
 import numpy as np
+from long_runs.processes import record_from
 from long_runs.recording_check import check_recording
 
 __all__ = ["MEMORY_MB", "ROWS", "fault_rows", "run_row"]
@@ -37,7 +36,7 @@ ROWS = [
 ]
 _SHARES = [4 if row[0] == "all kinds" else 1 for row in ROWS]
 _COLUMNS = ("fault", "per byte", "link", "MB", "faults", "frames", "undamaged", "kept", "lost")
-_COLUMNS += ("wrong", "gaps", "inexact", "peak MB", "MB/s")
+_COLUMNS += ("wrong", "gaps", "inexact", "peak MB", "read back", "MB/s")
 
 
 def fault_rows(total_bytes):
@@ -51,46 +50,22 @@ def fault_rows(total_bytes):
 def run_row(kind, rate, link, size, seed, folder):
     """Run one row in a folder and return what was found as a dict."""
     order = {"kind": kind, "rate": rate, "link": link, "bytes": size, "seed": seed}
-    order |= {"folder": str(folder), "truth": f"{folder}/truth.npz", "said": f"{folder}/board.txt"}
-    with _start("faulty_board", order) as board:
-        port = board.stdout.readline().strip()
-        record = {"port": port, "file": f"{folder}/a.mfr", "said": f"{folder}/recorder.txt"}
-        with _start("recorder_process", record) as recorder:
-            sent = json.loads(board.stdout.readline() or "null")
-            recorder.stdin.write("\n")
-            recorder.stdin.flush()
-            recorded = json.loads(recorder.stdout.readline() or "null")
-        board.stdin.close()
-    if sent is None or recorded is None:
-        said = [Path(folder, name).read_text() for name in ("board.txt", "recorder.txt")]
-        raise RuntimeError(f"{kind} at {rate:g}, seed {seed}: a process failed\n{''.join(said)}")
+    order |= {"truth": f"{folder}/truth.npz"}
+    sent, recorded = record_from("faulty_board", order, folder)
     (file,) = recorded["files"]
     with np.load(order["truth"]) as truth:
         verdict = check_recording(file, truth["frames"])
     row = {"kind": kind, "rate": rate, "link": link, "size": size, "seed": seed}
     row |= sent | recorded | vars(verdict)
-    row["sound"] = verdict.is_sound and recorded["peak_mb"] <= MEMORY_MB
+    row["sound"] = verdict.is_sound and recorded["read_back_mb"] <= MEMORY_MB
     return row
-
-
-def _start(module, order):
-    environment = os.environ | {"PYTHONPATH": str(Path(__file__).resolve().parents[1])}
-    with Path(order["said"]).open("w", encoding="utf-8") as said:
-        return subprocess.Popen(
-            [sys.executable, "-m", f"long_runs.{module}", json.dumps(order)],
-            stdin=subprocess.PIPE,
-            stdout=subprocess.PIPE,
-            stderr=said,
-            text=True,
-            env=environment,
-        )
 
 
 def _line(row):
     return (
         f"{row['kind']:18}{row['rate']:9.0e}{row['link']:>7}{row['bytes'] / 1e6:8.1f}"
         f"{row['faults']:8}{row['frames']:9}{row['undamaged']:10}{row['kept']:9}{row['lost']:5}"
-        f"{row['wrong']:6}{row['gaps']:7}{row['gaps_wrong']:8}{row['peak_mb']:8.0f}"
+        f"{row['wrong']:6}{row['gaps']:7}{row['gaps_wrong']:8}{row['peak_mb']:8.0f}{row['read_back_mb']:10.0f}"
         f"{row['bytes'] / 1e6 / row['wall_s']:6.1f}"
     )
 
@@ -116,7 +91,7 @@ def main():
     parser.add_argument("--only", help="only this kind of fault")
     options = parser.parse_args()
     known, rows = _known(options.log), []
-    widths = (18, 9, 7, 8, 8, 9, 10, 9, 5, 6, 7, 8, 8, 6)
+    widths = (18, 9, 7, 8, 8, 9, 10, 9, 5, 6, 7, 8, 8, 10, 6)
     titles = zip(_COLUMNS, widths, strict=True)
     print("".join(f"{t:{'<' if t == 'fault' else '>'}{w}}" for t, w in titles))
     for kind, rate, link, size in fault_rows(options.bytes):

@@ -37,8 +37,9 @@ class Batch:
 class KnownStream:
     """One start of a board: its announcement and its frames."""
 
-    def __init__(self, stream, rng):
+    def __init__(self, stream, rng, rate_hz=RATE_HZ):
         self.stream = stream
+        self.rate_hz = rate_hz
         self.next = 0
         self._sequence = 0
         self._rng = rng
@@ -46,7 +47,7 @@ class KnownStream:
     def announcement(self):
         channels = [ChannelInfo("noise", "1"), ChannelInfo("small", "1")]
         return encode_announcement(
-            Announcement(self.stream, RATE_HZ, "int16", SLOTS, channels, board="known")
+            Announcement(self.stream, self.rate_hz, "int16", SLOTS, channels, board="known")
         )
 
     def batch(self, frames):

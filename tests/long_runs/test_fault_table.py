@@ -11,7 +11,7 @@ def _check(row):
     assert (row["wrong"], row["lost"], row["gaps_wrong"]) == (0, 0, 0), row
     assert row["kept"] >= row["undamaged"] > 0
     assert row["faults"] > 0 or row["rate"] * row["bytes"] < 10
-    assert row["peak_mb"] <= MEMORY_MB
+    assert row["peak_mb"] <= row["read_back_mb"] <= MEMORY_MB
 
 
 @pytest.mark.parametrize(("kind", "rate", "link"), _TASTE)

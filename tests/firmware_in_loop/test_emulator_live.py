@@ -91,13 +91,13 @@ def test_a_recording_goes_through_inspect_and_lines(elf, tmp_path):
     with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:
         set_up(board.port)
         done, recorded = midfringe(
-            "record", "--port", board.port, "--out", path, "--duration", "5s", "--json"
+            "record", "--port", board.port, "--out", path, "--duration", "4s", "--json"
         )
     assert done.returncode == 0, done.stderr
-    assert (recorded["samples"], recorded["gaps"], recorded["over_range"]) == (10_000, [], 0)
+    assert (recorded["samples"], recorded["gaps"], recorded["over_range"]) == (8_000, [], 0)
     done, seen = midfringe("inspect", path, "--json")
     assert done.returncode == 0, done.stdout + done.stderr
-    assert (seen["samples"], seen["sound"], seen["reasons"]) == (10_000, True, [])
+    assert (seen["samples"], seen["sound"], seen["reasons"]) == (8_000, True, [])
     wanted = [word for frequency_hz in LINES for word in ("--line", f"{frequency_hz}Hz")]
     done, fitted = midfringe(
         "lines", path, "--channel", "photodiode", "--drive", "drive", *wanted, "--json"
@@ -124,9 +124,11 @@ def test_the_drive_rests_when_the_host_is_silent(elf):
         step = phase_step(31.7, 1000.0)
         host.say(CommandCode.SET_LINE, line_arguments(0, step, 0.4))
         host.say(CommandCode.START)
-        for _ in range(4):
-            time.sleep(0.8)
+        reached = 0
+        while reached < 2_600:  # on a busy machine the emulated board's clock lags
             host.say(CommandCode.KEEP_ALIVE)
+            reached += 200
+            host.listen(lambda events, wanted=reached: end_of(events) >= wanted)
         host.say(CommandCode.CLEAR_LINE, clear_arguments(5), request=99)
         host.replies(3)
         silent_s = time.monotonic()
@@ -134,13 +136,18 @@ def test_the_drive_rests_when_the_host_is_silent(elf):
         took_s = time.monotonic() - silent_s
         host.close()
     last = next(k for k, e in enumerate(host.events) if isinstance(e, Reply) and e.request == 99)
-    frames = [event for event in host.events[:last] if isinstance(event, Samples)]
-    heard = frames[-1].index + len(frames[-1].data)  # or up to one frame later
+    heard = end_of(host.events[:last])  # or up to one frame later
     drive = np.concatenate([e.data[:, 1] for e in host.events if isinstance(e, Samples)])
     moving = np.flatnonzero(drive)
-    assert heard > 2_500  # keep-alive kept it going
+    assert heard >= 2_600  # keep-alive kept it going
     assert 2_000 <= moving[-1] - heard < 2_100 + 50
-    assert 1.5 < took_s < 4.0  # by the clock on the wall, of a machine that may be busy
+    assert took_s > 1.5  # by the clock on the wall, which may have gone faster
+
+
+def end_of(events):
+    """Return the index behind the last sample received."""
+    last = [event for event in events if isinstance(event, Samples)][-1:]
+    return last[0].index + len(last[0].data) if last else 0
 
 
 def at_rest(events):

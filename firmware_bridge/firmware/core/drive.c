@@ -109,25 +109,6 @@ uint16_t pd_drive_code(struct pd_drive *drive)
     return drive->code;
 }
 
-static void advance_ramp(struct pd_drive *drive)
-{
-    struct pd_ramp *ramp = &drive->ramp;
-    uint32_t step = ramp->step;
-
-    if (ramp->left == 0) {
-        return;
-    }
-    ramp->left--;
-    /* The rest is spread evenly; this way carry + rest cannot overflow. */
-    if (ramp->carry >= ramp->length - ramp->rest) {
-        ramp->carry -= ramp->length - ramp->rest;
-        step++;
-    } else {
-        ramp->carry += ramp->rest;
-    }
-    drive->offset += ramp->target > drive->offset ? (int32_t)step : -(int32_t)step;
-}
-
 static void advance_silence(struct pd_drive *drive)
 {
     bool is_falling = drive->gain < PD_GAIN_ONE;
@@ -152,7 +133,7 @@ void pd_drive_advance(struct pd_drive *drive)
     for (uint32_t k = 0; k < PD_LINES; k++) {
         drive->lines[k].turn += drive->lines[k].step;
     }
-    advance_ramp(drive);
+    drive->offset = pd_ramp_after(&drive->ramp, drive->offset);
     advance_silence(drive);
 }
 
@@ -191,20 +172,6 @@ const char *pd_drive_clear_line(struct pd_drive *drive, uint8_t line)
     return NULL;
 }
 
-static void aim(struct pd_drive *drive, int32_t target, uint32_t samples)
-{
-    struct pd_ramp *ramp = &drive->ramp;
-    const uint32_t distance = target > drive->offset ? (uint32_t)(target - drive->offset)
-                                                     : (uint32_t)(drive->offset - target);
-
-    ramp->target = target;
-    ramp->length = samples;
-    ramp->left = samples;
-    ramp->step = distance / samples;
-    ramp->rest = distance % samples;
-    ramp->carry = 0;
-}
-
 const char *pd_drive_ramp(struct pd_drive *drive, int16_t target, uint32_t samples)
 {
     const char *refusal;
@@ -212,10 +179,10 @@ const char *pd_drive_ramp(struct pd_drive *drive, int16_t target, uint32_t sampl
     if (samples == 0 || target == INT16_MIN) {
         return "no such ramp";
     }
-    aim(drive, target * PD_GAIN_ONE, samples);
+    pd_ramp_aim(&drive->ramp, drive->offset, target * PD_GAIN_ONE, samples);
     refusal = pd_drive_check(drive);
     if (refusal != NULL) {
-        aim(drive, drive->offset, 1); /* the offset stays where it is */
+        pd_ramp_aim(&drive->ramp, drive->offset, drive->offset, 1); /* it stays where it is */
     }
     return refusal;
 }

@@ -10,6 +10,7 @@
 #include <stdint.h>
 
 #include "announcement.h"
+#include "ramp.h"
 
 enum {
     PD_LINES = 6,
@@ -30,16 +31,6 @@ struct pd_line {
     uint32_t turn; /* step times the sample index */
     uint32_t phase;
     uint16_t amplitude; /* in 2^-16 of full scale */
-};
-
-/* The way of the offset to a target: step per sample, and in rest of length samples one more. */
-struct pd_ramp {
-    int32_t target;
-    uint32_t length;
-    uint32_t left;
-    uint32_t step;
-    uint32_t rest;
-    uint32_t carry;
 };
 
 struct pd_drive {

@@ -64,3 +64,11 @@ def test_a_message_longer_than_the_buffer_is_left_out(core):
     assert [command.code for command in found] == [CommandCode.STOP]
     assert damaged == 1
     assert len(core.commands(longer, size=80)[0]) == 1
+
+
+def test_full_runs_of_254_bytes_are_unstuffed(core):
+    for length in range(240, 270):
+        wire = encode_command(CommandCode.START, 0x0101, b"\x07" * length)
+        found, damaged = core.commands(wire, size=400)
+        assert [(command.request, command.length) for command in found] == [(0x0101, length)]
+        assert damaged == 0

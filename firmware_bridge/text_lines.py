@@ -111,7 +111,7 @@ class LineReader:
             self._read(lines[middle:], blocks)
 
     def _maybe_parse(self, lines: Sequence[str]) -> NDArray[np.float64] | None:
-        if not any(lines):
+        if not any(map(str.strip, lines)):
             return np.empty((0, self.layout.columns))
         try:
             values = np.loadtxt(lines, delimiter=self.layout.delimiter, comments=None, ndmin=2)

@@ -1,18 +1,20 @@
 """Is a recording sound? What each channel holds, what is missing, and how the clocks agree."""
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.recording import MfrRecording
+from firmware_bridge.suspicions import Codes, Repetition, StuckRuns
 from firmware_bridge.trace import Recording
 
 __all__ = ["ChannelState", "ClockState", "Inspection", "inspect_recording"]
 
 _CLOCK_LIMIT = 1e-3  # a crystal is within 1e-4; what is worse costs amplitude in every line fit
 _CLOCK_SPAN_S = 10.0  # below it the stamps' jitter drowns any offset
+_BLOCK, _LEAST_BLOCK = 64, 16  # samples looked at for repetition
 _STAMP_U_S = 0.05 / 3**0.5  # a frame's arrival, ±50 ms at most, rectangular: our estimate
 
 
@@ -28,6 +30,10 @@ class ChannelState:
         Of the values that are there.
     missing, over_range : int
         Values that are not.
+    stuck_samples, stuck_from : int
+        Length and first sample of a run of one value that is longer than chance, 0 without one.
+    missing_codes : tuple of int
+        Codes of the converter that never occur though those beside them do.
     """
 
     name: str
@@ -38,6 +44,9 @@ class ChannelState:
     standard_deviation: float
     missing: int
     over_range: int
+    stuck_samples: int = 0
+    stuck_from: int = 0
+    missing_codes: tuple[int, ...] = ()
 
     @property
     def is_constant(self) -> bool:
@@ -71,6 +80,8 @@ class Inspection:
     channels: list[ChannelState]
     clock: ClockState | None
     reasons: list[str]
+    repeated_blocks: int = 0
+    block_samples: int = 0
 
     @property
     def is_sound(self) -> bool:
@@ -91,9 +102,67 @@ def inspect_recording(recording: Recording) -> Inspection:
     Inspection
         What was found.
     """
-    channels = [_channel_state(recording, k) for k in range(len(recording.channels))]
+    found = _Suspicions(recording)
+    channels = [
+        found.complete(_channel_state(recording, k), k) for k in range(len(recording.channels))
+    ]
     clock = _clock_state(recording) if isinstance(recording, MfrRecording) else None
-    return Inspection(channels, clock, _reasons(recording, channels, clock))
+    reasons = [*_reasons(recording, channels, clock), *found.reasons(recording, channels)]
+    repetition = found.repetition
+    return Inspection(channels, clock, reasons, len(repetition.repeated), repetition.samples)
+
+
+class _Suspicions:
+    """One look through all channels side by side."""
+
+    def __init__(self, recording: Recording) -> None:
+        is_mfr = isinstance(recording, MfrRecording)
+        slots = recording.file.slots if isinstance(recording, MfrRecording) else 0
+        self.repetition = Repetition(slots if slots >= _LEAST_BLOCK else _BLOCK)
+        self._stuck = StuckRuns(len(recording.channels))
+        self._codes = [Codes(c.scale, c.offset) for c in recording.channels] if is_mfr else []
+        for block in recording.blocks():
+            self.repetition.add(block.start_index, block.values)
+            self._stuck.add(block.start_index, block.values)
+            for k, codes in enumerate(self._codes):
+                codes.add(block.values[:, k])
+
+    def complete(self, state: ChannelState, k: int) -> ChannelState:
+        """Return the state of channel k with what was found."""
+        stuck = self._stuck.is_suspicious(k)
+        return replace(
+            state,
+            stuck_samples=int(self._stuck.longest[k]) if stuck else 0,
+            stuck_from=int(self._stuck.starts[k]) if stuck else 0,
+            missing_codes=tuple(self._codes[k].missing()) if self._codes else (),
+        )
+
+    def reasons(self, recording: Recording, channels: list[ChannelState]) -> list[str]:
+        """Return what speaks against the recording."""
+        out = []
+        for state in channels:
+            if state.stuck_samples:
+                out.append(
+                    f"channel {state.name!r} does not change for "
+                    f"{state.stuck_samples / recording.rate_hz:.4g} s from "
+                    f"{state.stuck_from / recording.rate_hz:.6g} s on: stuck"
+                )
+            if state.missing_codes:
+                out.append(
+                    f"channel {state.name!r}: {_many(len(state.missing_codes), 'code')} absent though "
+                    f"the codes beside occur often (first: {state.missing_codes[0]})"
+                )
+        if self.repetition.is_suspicious:
+            first_s = self.repetition.repeated[0] / recording.rate_hz
+            out.append(
+                f"{_many(len(self.repetition.repeated), 'block')} of {self.repetition.samples} "
+                f"samples equal to an earlier one in every value (first at {first_s:.6g} s)"
+            )
+        return out
+
+
+def _many(count: int, noun: str) -> str:
+    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
 
 
 def _channel_state(recording: Recording, position: int) -> ChannelState:
@@ -128,11 +197,13 @@ def _clock_state(recording: MfrRecording) -> ClockState | None:
     announced = recording.header.announcement
     if announced.simulated and announced.speed != 1.0:
         return None  # such a board runs as fast as it is read
+    if recording.header.info.get("clock") == "host":
+        return None  # the host's clock gave the rate
     stamps = [s for s in recording.stamps if s.stream == recording.stamps[0].stream]
     if len(stamps) < 3:
         return None
     host_s = np.array([(s.monotonic_ns - stamps[0].monotonic_ns) * 1e-9 for s in stamps])
-    board_s = np.array([s.index - stamps[0].index for s in stamps]) / announced.rate_hz
+    board_s = np.array([s.index - stamps[0].index for s in stamps]) / recording.rate_hz
     span_s = float(host_s[-1])
     if span_s < _CLOCK_SPAN_S:
         return None

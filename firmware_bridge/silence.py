@@ -81,10 +81,10 @@ class Silence:
 
     def _maybe_no_lines(self, silent_s: float) -> str:
         if self._bytes and silent_s > _SILENCE_S and not self._is_heard:
-            frames = ", or does it send frames (leave out --text)" if self._zeros else ""
+            frames = ", or does it send frames, without --text" if self._zeros else ""
             return (
                 f"{self._name}: {self._bytes} bytes came in {_SILENCE_S:g} s and no line of numbers "
-                f"is in them; is {self._baud} baud right{frames}?"
+                f"is in them (is {self._baud} baud right{frames}?)"
             )
         if silent_s > _TEXT_SILENCE_S:
             came = f", {self._bytes} other bytes" if self._bytes else ", nor anything else"
@@ -99,4 +99,4 @@ class Silence:
         came = f"{self._bytes} bytes came in {_SILENCE_S:g} s"
         if self._printable > 0.9 * self._bytes:
             return f"{came}, text and no frames (--text records lines of numbers)"
-        return f"{came} and no valid frame is in them; is {self._baud} baud right?"
+        return f"{came} and no valid frame is in them (is {self._baud} baud right?)"

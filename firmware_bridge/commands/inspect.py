@@ -53,6 +53,8 @@ def _document(recording: Any, found: Any) -> dict[str, Any]:  # noqa: ANN401  # 
                 "standard_deviation": _value(state.standard_deviation, state.unit),
                 "missing": state.missing,
                 "over_range": state.over_range,
+                "stuck": _value(state.stuck_samples / recording.rate_hz, "s"),
+                "missing_codes": len(state.missing_codes),
             }
             for state in found.channels
         ],
@@ -67,6 +69,8 @@ def _document(recording: Any, found: Any) -> dict[str, Any]:  # noqa: ANN401  # 
             "offset": _value(found.clock.offset, "1", found.clock.offset_u),
             "span": _value(found.clock.span_s, "s"),
         },
+        "repeated_blocks": found.repeated_blocks,
+        "jitter": _value(recording.timing.jitter_s, "s", recording.timing.jitter_u_s),
         "remarks": recording.remarks,
         "sound": found.is_sound,
         "reasons": found.reasons,
@@ -78,7 +82,7 @@ def _for_people(recording: Any, found: Any) -> str:  # noqa: ANN401
 
     lines = [
         ["recording", f"{recording.path} ({recording.format})"],
-        ["samples", f"{recording.length} at {recording.rate_hz:.9g} Hz"],
+        ["samples", f"{recording.length} at {recording.rate_hz:.9g} Hz{_rate_u(recording)}"],
         ["duration", f"{recording.duration_s:.6g} s"],
         ["gaps", f"{len(recording.gaps)} ({sum(g.length for g in recording.gaps)} samples)"],
         ["over range", f"{recording.over_range} values"],
@@ -104,6 +108,12 @@ def _for_people(recording: Any, found: Any) -> str:  # noqa: ANN401
     parts += [f"remark: {remark}" for remark in recording.remarks]
     parts.append("no reason for distrust found" if found.is_sound else "not sound")
     return "\n\n".join(parts)
+
+
+def _rate_u(recording: Any) -> str:  # noqa: ANN401
+    u = "" if not recording.rate_u_hz else f", u = {recording.rate_u_hz:.2g} Hz"
+    jitter_s = recording.timing.jitter_s
+    return u + (f", time stamps scatter by {jitter_s:.2g} s" if jitter_s else "")
 
 
 def _gap_table(recording: Any) -> str:  # noqa: ANN401

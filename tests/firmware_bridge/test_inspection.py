@@ -114,3 +114,29 @@ def test_the_command_takes_tables_too(tmp_path):
     assert result.exit_code == 0
     assert "100 at 100 Hz" in result.stdout
     assert result.stdout.endswith("no reason for distrust found\n")
+
+
+def test_a_repeated_frame_and_a_stuck_channel_are_reasons(written):
+    samples = noise()
+    samples[5000:5050] = samples[4950:5000]
+    samples[30_000:32_000, 0] = 12
+    result = CliRunner().invoke(inspect, [str(written(samples)), "--json"])
+    document = json.loads(result.stdout)
+    assert document["reasons"] == [
+        "channel 'pd' does not change for 2 s from 30 s on: stuck",
+        "1 block of 50 samples equal to an earlier one in every value (first at 5 s)",
+    ]
+    assert document["repeated_blocks"] == 1
+    assert document["channels"][0]["stuck"]["value"] == 2.0
+    assert result.exit_code == 1
+
+
+def test_missing_codes_are_a_reason(written):
+    rng = np.random.default_rng(9)
+    samples = np.rint(rng.normal(0, 60, (60_000, 2))).astype(np.int16)
+    samples[samples == 8] = 7
+    found = inspect_recording(open_mfr(written(samples)))
+    assert found.reasons == [
+        f"channel {name!r}: 1 code absent though the codes beside occur often (first: 8)"
+        for name in ("pd", "drive")
+    ]

@@ -246,7 +246,7 @@ def test_noise_of_a_wrong_speed_is_named(pty, tmp_path, monkeypatch, in_backgrou
     in_background(pty, lambda: pty.send(os.urandom(500)))
     with pytest.raises(
         DeviceFailedError,
-        match=r"500 bytes came in 0\.3 s and no valid frame is in them; is 115200 baud right\?",
+        match=r"500 bytes came in 0\.3 s and no valid frame is in them \(is 115200 baud right\?\)",
     ):
         record(pty.port, tmp_path / "a.mfr", duration_s=1.0)
 
@@ -357,10 +357,10 @@ def test_noise_where_lines_are_expected_is_named(pty, tmp_path, monkeypatch, bac
     background(send)
     with pytest.raises(DeviceFailedError) as error:
         record(pty.port, tmp_path / "a.mfr", text=True)
-    frames = ", or does it send frames (leave out --text)" if 0 in sent else ""
+    frames = ", or does it send frames, without --text" if 0 in sent else ""
     assert str(error.value) == (
-        f"{pty.port}: 400 bytes came in 0.3 s and no line of numbers is in them; "
-        f"is 115200 baud right{frames}?; nothing was recorded"
+        f"{pty.port}: 400 bytes came in 0.3 s and no line of numbers is in them "
+        f"(is 115200 baud right{frames}?); nothing was recorded"
     )
 
 

@@ -330,3 +330,53 @@ def test_any_well_wrapped_content_is_an_event_or_discarded(content):
     wire = wrap(content)
     for event in decoded(wire):
         assert isinstance(event, (Samples, Announcement, Note, Command, Reply, LockIn, Discarded))
+
+
+def _of(name, filled, slots):
+    counts = (np.arange(2 * filled).reshape(filled, 2) - 3).astype(np.int32)
+    return encode_frame(counts, index=2**33, sequence=2**32 - 1, slots=slots, format=name, flags=1)
+
+
+# Everything the decoder tells apart, by name.
+WIRES = {
+    **{type(event).__name__ + f" {k}": wire for k, (wire, event) in enumerate(MESSAGES)},
+    **{f"{name}, {n} of 5": _of(name, n, 5) for name in ("int16", "int24", "int32") for n in (0, 2, 5)},
+    "a gap": frame(0) + frame(3) + frame(4),
+    "a duplicate": frame(0) + frame(0),
+    "out of order": frame(1) + frame(3) + frame(2),
+    "a restart": frame(5) + frame(0, stream=8),
+    "a message unknown": wrap(bytes([9, 1, 0, 0])),
+    "a version unknown": wrap(bytes([1, 2]) + bytes(40)),
+    "a frame that does not add up": wrap(bytes([1, 1]) + bytes(40)),
+    "damage between": frame(0) + b"\0\x11\x22\0" + frame(1),
+    "no stuffing": b"\0\xf0abc\0" + frame(1),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("name", WIRES)
+@pytest.mark.parametrize(
+    "trailing", [b"", b"\0", b"\0\0\0", b"\x05abc", MESSAGES[1][0], frame(9)[:50]]
+)
+def test_every_case_whole_byte_by_byte_and_with_trailing_bytes(name, trailing):
+    wire = WIRES[name]
+    alone = plain(decoded(wire))
+    assert alone
+    whole = plain(decoded(wire + trailing))
+    assert plain(decoded(wire + trailing, range(1, len(wire + trailing)))) == whole
+    # What is held for its turn comes out at the end: trailing bytes may come out before it.
+    behind = plain(decoded(trailing))
+    assert len(whole) == len(alone) + len(behind)
+    assert all(event in whole for event in [*alone, *behind])
+
+
+@pytest.mark.parametrize(
+    "name",
+    [name for name in WIRES if name.startswith(("int", "Ann", "Note", "Comm", "Reply", "Lock"))],
+)
+def test_any_single_flipped_bit_in_any_message_is_caught(name):
+    wire = WIRES[name]
+    for place in range(1, len(wire) - 1):
+        for bit in range(8):
+            flipped = bytearray(wire)
+            flipped[place] ^= 1 << bit
+            assert {type(e) for e in decoded(bytes(flipped))} <= {Discarded}, (place, bit)

@@ -52,6 +52,22 @@ class LiveLine:
             self._write("\n")
             self._length = 0
 
+    def step_aside(self, record: object) -> bool:  # noqa: ARG002  # a filter of the log
+        """Go to the next line, so that a message of the log gets one of its own.
+
+        Parameters
+        ----------
+        record : object
+            What is logged.
+
+        Returns
+        -------
+        bool
+            True: it is logged.
+        """
+        self.end()
+        return True
+
     def _rate_hz(self) -> float | None:
         (first_s, before), (last_s, samples) = self._seen[0], self._seen[-1]
         return (samples - before) / (last_s - first_s) if last_s > first_s else None

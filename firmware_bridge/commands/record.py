@@ -1,5 +1,6 @@
 """``midfringe record``: serial port to recording."""
 
+import logging
 import signal
 import sys
 from typing import Any
@@ -82,6 +83,8 @@ def record(
             signal.signal(getattr(signal, name), signal.default_int_handler)
     show = not is_quiet() and sys.stderr.isatty()
     line = LiveLine(lambda part: click.echo(part, err=True, nl=False))
+    log = logging.getLogger("firmware_bridge.recording_session")
+    log.addFilter(line.step_aside)
     try:
         summary = record_port(
             port,
@@ -96,6 +99,7 @@ def record(
             progress=line.show if show else None,
         )
     finally:
+        log.removeFilter(line.step_aside)
         line.end()
     click.echo(to_json(_document(summary)) if as_json else _for_people(summary))
     if not is_quiet():

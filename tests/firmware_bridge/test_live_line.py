@@ -37,3 +37,13 @@ def test_a_shorter_line_covers_the_longer_one(monkeypatch):
         "\r2.0 s  500 Hz  0 gaps  buffer 0%",
         "\n",
     ]
+
+
+def test_a_message_of_the_log_gets_a_line_of_its_own(monkeypatch):
+    monkeypatch.setattr("firmware_bridge.live_line.time.monotonic", lambda: 0.0)
+    written = []
+    line = LiveLine(written.append)
+    line.show(progress(rate_hz=None))
+    assert line.step_aside(None)
+    assert line.step_aside(None)
+    assert written == ["\rwaiting for the board", "\n"]

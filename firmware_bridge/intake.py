@@ -233,10 +233,13 @@ class Intake:
             return
         if frame.stream not in self._grid:
             self._begin(announcement, frame)
-        self._keep(message, frame)
+        if not self.is_complete:
+            self._keep(message, frame)
 
     def _begin(self, announcement: Announcement, frame: Samples) -> None:
         """Begin a stream: in a new file where its layout differs, else where the clock says."""
+        # What is held would make the place of what follows too early.
+        self._follow(self._decoder.flush())
         if self._current is not None and not _alike(self._current, announcement):
             self._close_file()
             self.earlier += self._reached
@@ -244,10 +247,12 @@ class Intake:
             self._reached = 0
             self._closed_streams |= self._grid.keys()
             self._grid.clear()
-        else:
-            self._follow(self._decoder.flush())  # what is held would make the place too early
+            self._last = None
         is_first = self._writer is None
         self._current = announcement
+        if self.wanted is not None and self.wanted <= 0:
+            self.is_complete = True  # the file before reached the end, but for rounding
+            return
         grid, grid_u = 0, 0.0
         if is_first:
             self._writer = Writer(

@@ -22,6 +22,7 @@ LOST = -np.inf
 """What stands in every column for a line that was damaged: one missing sample."""
 
 _INT32_MAX = 2**31 - 1
+_TICKS_MAX = 2.0**62
 _NOTES_MAX = 200
 _NOTE_BYTES = 500
 
@@ -159,7 +160,9 @@ class LineFrames:
         self._over.append(np.asarray(over.any(axis=1)))
         is_board = self._opening.clock == "stamps"
         clock_s = (lines.stamps_s if is_board else lines.arrivals_s)[part]
-        ticks = np.rint(np.maximum(clock_s, 0.0) * self._opening.clock_hz)
+        # A stray stamp may be any number.
+        latest_s = _TICKS_MAX / self._opening.clock_hz
+        ticks = np.rint(np.clip(clock_s, 0.0, latest_s) * self._opening.clock_hz)
         self._ticks.append(ticks.astype(np.uint64))
 
     def frames(self) -> list[Piece]:

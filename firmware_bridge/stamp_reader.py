@@ -8,6 +8,7 @@ from firmware_bridge.live_stamps import LiveStamps
 __all__ = ["StampReader"]
 
 _LATE_S = 0.5  # by how much lines may arrive later than others
+_LARGEST_S = 1e12  # 30 000 years
 _SHORTEST_S = 20.0
 _MODULI = (1 << 16, 1 << 30, 1 << 31, 1 << 32)
 """Where boards' counters begin anew: 16 and 32 bits; 2^30 is MicroPython's ``ticks_ms`` (from its
@@ -41,9 +42,10 @@ class StampReader:
         Returns
         -------
         ndarray, shape (n,)
-            In seconds.
+            In seconds; NaN where there is none that can be true.
         """
         stamps = self._where.read(rows) + self._wrapped_s
+        stamps[np.abs(stamps) > _LARGEST_S] = np.nan
         if self._last is not None and not self._where.is_counter:
             stamps = self._unwrapped(stamps, *self._last, arrived_s)
         usable = np.flatnonzero(np.isfinite(stamps))

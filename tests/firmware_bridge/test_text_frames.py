@@ -317,3 +317,23 @@ def test_a_real_stream_is_placed_live_as_the_file_is(tmp_path, name):
     ]
     assert live.rate_hz == pytest.approx(read.rate_hz, abs=4 * live.rate_u_hz)
     np.testing.assert_array_equal(live.trace("1").values, read.trace("1").values)
+
+
+@pytest.mark.parametrize("stray", [b"9" * 30, b"1e308", b"-1e300", b"nan", b"inf"])
+def test_a_stamp_that_cannot_be_true_is_one_missing_sample(tmp_path, stray):
+    times_s, values, arrivals = board(600)
+    chunks = lines_of(np.floor(times_s * 1e3 + 1e-6), values, arrivals)
+    chunks[301] = (chunks[301][0], stray + b" 5\n")
+    recording, _ = record_chunks(tmp_path / "a.mfr", chunks)
+    assert (recording.gaps, recording.length) == ([Gap(300, 1)], 600)
+
+
+def test_another_way_to_print_right_after_a_gap_counts_nothing_twice(tmp_path):
+    times_s, values, arrivals = board(900)
+    chunks = lines_of(np.floor(times_s * 1e3 + 1e-6), values, arrivals)
+    del chunks[397:400]
+    chunks[402:] = [(t, line.replace(b"\n", b" 1 2\n")) for t, line in chunks[402:]]
+    first, _ = record_chunks(tmp_path / "a.mfr", chunks)
+    second = open_recording(tmp_path / "a-2.mfr")
+    assert (first.gaps, first.length) == ([Gap(396, 3)], 404)
+    assert (second.gaps, second.length, len(second.channels)) == ([], 900 - 404, 3)

@@ -2,6 +2,7 @@
 
 import os
 from collections.abc import Sequence
+from math import isfinite
 from typing import Any
 
 import numpy as np
@@ -136,12 +137,12 @@ class MfrRecording(Recording):
             join = self._joins.get(stream)
             if join is not None and placed:
                 start, length_u = max(reached, join.grid + first - join.index), join.grid_u
-            self._check_span(start)
+            self._check_span(int(runs["index"].max()) - first + start)
             if placed:
                 gaps.append(Gap(reached, start - reached, exact=False, length_u=length_u))
             runs["index"] = runs["index"] - np.uint64(first) + np.uint64(start)
             reached = int(runs["index"][-1]) + int(lengths(runs[-1:], self.file.slots)[0])
-            self._check_span(max(reached, int(runs["index"].max())))
+            self._check_span(reached)
             gaps += _gaps_inside(runs, self.file.slots)
             if self._end is not None and self._end.stream == stream:
                 end = self._end.index - first + start
@@ -162,8 +163,9 @@ class MfrRecording(Recording):
         for stamp in self.stamps[:1]:
             first = self._board_index(stamp.stream)
             speed = self.header.announcement.speed * self.header.announcement.rate_hz
-            if first is not None:
-                return stamp.unix_ns / 1e9 - (stamp.index - first) / speed
+            if first is not None and speed > 0:
+                before_s = (stamp.index - first) / speed
+                return stamp.unix_ns / 1e9 - before_s if isfinite(before_s) else None
         return self.header.created_ns / 1e9 if self.header.created_ns else None
 
     def _board_index(self, stream: int) -> int | None:

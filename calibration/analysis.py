@@ -27,18 +27,27 @@ from calibration.readout_slope import readout_slope
 from calibration.record import ActuatorEntry, Calibration
 from calibration.scan import ScanFit, fit_scan
 from calibration.session import RoleRecord, Session
-from calibration.session_checks import cautions_of, checks_of, reasons_of, sign_reasons
+from calibration.session_checks import (
+    cautions_of,
+    failed,
+    reasons_of,
+    repeat_checks,
+    role_reasons,
+    scan_checks,
+    sign_reasons,
+)
 from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
-from calibration.term import Term
+from calibration.term import POWER_DRIFT, Term
 from calibration.working_point import PhaseRecord, invert_fringe
 from metro.bench import Bench
 from metro.drive import peak_factor
 from metro.measured import Measured
 
-__all__ = ["calibrate"]
+__all__ = ["calibrate", "check_bench"]
 
 Paths = Sequence[str | PathLike[str]]
 
+_UNCORRECTED = ("adc.quadratic", "adc.cubic", "drive.pickup", "actuator.tilt", "fringe.drift")
 ASSUMED_DRIFT = 0.002  # relative change of high − low between recordings, where nothing is known
 
 
@@ -82,7 +91,7 @@ def calibrate(
     BridgeError
         If a recording cannot be read.
     """
-    _check_bench(bench)
+    check_bench(bench)
     files = {
         "dark": dark,
         "pickup": pickup,
@@ -95,7 +104,19 @@ def calibrate(
     return _Analysis(bench, Session(files, bench)).calibration()
 
 
-def _check_bench(bench: Bench) -> None:
+def check_bench(bench: Bench) -> None:
+    """Refuse a bench that lacks what a calibration cannot do without.
+
+    Parameters
+    ----------
+    bench : Bench
+        Wavelength with its source, air or vacuum, lines.
+
+    Raises
+    ------
+    CalibrationError
+        The first thing that is missing or cannot be corrected for.
+    """
     if bench.get("laser.wavelength") is None:
         raise CalibrationError(
             "laser.wavelength is the ruler and must be given, with its u and source, got none"
@@ -114,6 +135,13 @@ def _check_bench(bench: Bench) -> None:
             )
     if not bench.lines:
         raise CalibrationError("the bench must name at least one [[line]], got none")
+    for key in _UNCORRECTED:
+        value = bench.magnitude(key, 0.0)
+        if value:
+            raise CalibrationError(
+                f"{key} must have the value 0 with its u, since a known one is not corrected for, "
+                f"got {value:g}"
+            )
 
 
 @dataclass(frozen=True)
@@ -154,7 +182,7 @@ class _Analysis:
     @cached_property
     def drift(self) -> Term:
         """Relative change of high − low from one recording to the next."""
-        name = "power drift between recordings"
+        name = POWER_DRIFT
         if self.bench.get("fringe.drift") is not None:
             u, kind = self.bench.u("fringe.drift"), self.bench.distribution("fringe.drift")
             return Term(name, 0.0, "1", u, distribution=kind)
@@ -202,14 +230,27 @@ class _Analysis:
         measured = dark_level(records)
         return self.bench.get("photodiode.dark") if measured is None else measured
 
-    def combined(self, number: int) -> CombinedLine:
-        """Return one line with both slopes put together."""
+    def _slope_lines(self, number: int) -> dict[str, list[SlopeLine]]:
+        """Return one line in every recording that drives it, by slope."""
         parts: dict[str, list[SlopeLine]] = {"rising": [], "falling": []}
         for slope in self.slopes:
             line = slope.fit.lines[number]
             if is_driven(line):
                 kind, means = slope.phase.slope, slope.phase.means
                 parts[kind].append(SlopeLine.of(kind, line, means, self._setting_v(number)))
+        return parts
+
+    def _by_slope(self) -> list[tuple[float, list[SlopeLine]]]:
+        """Return each line's recordings on one slope, with its frequency [Hz]."""
+        return [
+            (frequency_hz, records)
+            for number, frequency_hz in enumerate(self.frequencies_hz)
+            for records in self._slope_lines(number).values()
+        ]
+
+    def combined(self, number: int) -> CombinedLine:
+        """Return one line with both slopes put together."""
+        parts = self._slope_lines(number)
         if not (parts["rising"] or parts["falling"]):
             raise CalibrationError(
                 f"the line at {self.frequencies_hz[number]:g} Hz is driven in no lines recording"
@@ -228,7 +269,8 @@ class _Analysis:
 
     def actuator(self) -> list[ActuatorEntry]:
         """Return metres per volt at every line."""
-        drive_read = any(slope.record.drive is not None for slope in self.slopes)
+        drive_read = self.slopes[0].record.drive is not None
+        dark_v = 0.0 if self.dark is None else float(self.dark.magnitude)
         return [
             actuator_line(
                 number,
@@ -237,6 +279,7 @@ class _Analysis:
                 self.readout,
                 self.drift,
                 drive_read=drive_read,
+                dark_v=dark_v,
             )
             for number in range(len(self.frequencies_hz))
         ]
@@ -259,6 +302,10 @@ class _Analysis:
         actuator = self.actuator()
         slope, budget = readout_slope(self.readout, self.extremes, self.drift)
         fits = [(s.record.path, s.phase, s.fit) for s in self.slopes]
+        checks = [
+            *scan_checks(self.scans, self.drift),
+            *repeat_checks(self._by_slope(), self.drift),
+        ]
         return Calibration(
             created=datetime.now(UTC).isoformat(timespec="seconds"),
             software=__version__,
@@ -272,10 +319,14 @@ class _Analysis:
             chain=_chain(self.bench),
             conditions=_conditions(self.bench),
             recordings=[record.to_dict() for record in self.session],
-            checks=checks_of(self.scans, self.drift.u),
+            checks=checks,
             assumptions=_assumptions(self.bench),
             cautions=cautions_of(self.bench, self.session, self.drift),
-            reasons=reasons_of(self.scans, fits),
+            reasons=[
+                *reasons_of(self.scans, fits),
+                *role_reasons(self.session, self.extremes, self.dark),
+                *failed(checks),
+            ],
         )
 
 

@@ -94,6 +94,8 @@ def _coherence(one: ChannelFit, other: ChannelFit) -> float:
     """Return how much the phase noise of two channels has in common, −0.95 to 0.95."""
     shared, weights = [0.0], [0.0]
     for line, (a, b) in enumerate(zip(one.noise, other.noise, strict=True)):
+        if a.used.size != b.used.size:
+            continue  # one channel is too broken for bins of its own
         used = a.used & b.used
         first = a.bins[used] * np.conj(one.coefficients[line])
         second = b.bins[used] * np.conj(other.coefficients[line])

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -24,6 +25,10 @@ class Comparison:
     def normalised_error(self) -> float:
         """(measured − truth)/u: mean 0 and standard deviation 1 if u is honest."""
         return (float(self.measured.magnitude) - self.truth) / float(self.measured.u_magnitude)
+
+    def truth_dict(self) -> dict[str, Any]:
+        """Return the truth as a quantity in JSON form."""
+        return Measured.of(self.truth, self.measured.unit).to_dict()
 
     @property
     def inside_95(self) -> bool:

@@ -6,7 +6,7 @@ gaps. The uncertainty comes as a systematic part, common to all samples, and a r
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from math import sqrt
+from math import hypot, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
 from calibration.record import Calibration
+from calibration.term import ADC_REFERENCE, FRINGE_EXTREMES, POWER_DRIFT, RULER
 from calibration.working_point import edge_reasons, invert_fringe
 from firmware_bridge.trace import Channel, Recording, Span
 from metro.kernel.phase import phase_per_metre
@@ -23,10 +24,6 @@ __all__ = ["QUANTITIES", "Conversion", "ConvertedRecording"]
 FloatArray = NDArray[np.float64]
 
 QUANTITIES = {"displacement": "m", "strain": "1", "phase": "rad"}
-# Rows of the readout's budget that do not enter a conversion: volts as read are divided by extremes
-# as read, so that the converter's scale cancels.
-_CANCELS = ("ADC reference",)
-_RULER = ("wavelength", "refractive index")
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,8 +34,10 @@ class Conversion:
     ----------
     quantity, unit : str
         ``"displacement"`` [m], ``"strain"`` [1] or ``"phase"`` [rad].
-    relative_u : float
-        Systematic part: relative standard uncertainty of the scale, common to all samples.
+    scale_u : float
+        Relative standard uncertainty of the scale that every conversion with this calibration has.
+    drift_u : float
+        Relative standard uncertainty from this recording's own power drift.
     noise : float
         Random part: rms of the noise from sample to sample, in ``unit``.
     used_fraction : float
@@ -49,11 +48,17 @@ class Conversion:
 
     quantity: str
     unit: str
-    relative_u: float
+    scale_u: float
+    drift_u: float
     noise: float
     used_fraction: float
     reasons: list[str]
     cautions: list[str]
+
+    @property
+    def relative_u(self) -> float:
+        """Systematic part: relative standard uncertainty common to all samples of the recording."""
+        return hypot(self.scale_u, self.drift_u)
 
 
 class ConvertedRecording(Recording):
@@ -112,20 +117,34 @@ class ConvertedRecording(Recording):
         values = phase_rad.phase_rad * self._per_radian
         return Span(np.repeat(values[:, None], len(channels), axis=1), span.over_range)
 
-    def judge(self) -> Conversion:
-        """Return what the conversion is worth, from one pass over the recording."""
+    def judge(self, from_s: float | None = None, to_s: float | None = None) -> Conversion:
+        """Return what the conversion is worth, from one pass over the recording or a stretch of it.
+
+        Parameters
+        ----------
+        from_s, to_s : float, optional
+            The stretch [s], as for `trace`.
+
+        Returns
+        -------
+        Conversion
+            Uncertainty, share converted, reasons and cautions.
+        """
+        start, stop = self.span(from_s, to_s)
         tally = _Tally()
-        for first in range(0, self.length, _BLOCK):
-            span = self._source.read([self._position], first, min(first + _BLOCK, self.length))
+        for first in range(start, stop, _BLOCK):
+            span = self._source.read([self._position], first, min(first + _BLOCK, stop))
             tally.add(span.values[:, 0], self.calibration.extremes, self.slope)
-        noise_rad = sqrt(tally.square / tally.pairs) if tally.pairs else float("nan")
+        noise_rad = sqrt(tally.square / tally.differences) if tally.differences else float("nan")
         reasons = edge_reasons(1.0 - tally.kept / tally.present) if tally.present else [_EMPTY]
+        scale_u, drift_u = _relative_us(self.calibration, self.quantity, tally)
         return Conversion(
             quantity=self.quantity,
             unit=QUANTITIES[self.quantity],
-            relative_u=_relative_u(self.calibration, self.quantity),
+            scale_u=scale_u,
+            drift_u=drift_u,
             noise=noise_rad * abs(self._per_radian),
-            used_fraction=tally.converted / self.length,
+            used_fraction=tally.converted / (stop - start),
             reasons=[*reasons, *self.calibration.reasons],
             cautions=_cautions(self.calibration, self.slope),
         )
@@ -142,19 +161,24 @@ class _Tally:
     present: int = 0
     kept: int = 0
     converted: int = 0
-    pairs: int = 0
+    differences: int = 0
     square: float = 0.0
+    inverse_sin2: float = 0.0
+    cos_over_sin2: float = 0.0
 
     def add(self, volts: FloatArray, extremes: Extremes, slope: str) -> None:
         phase = invert_fringe(volts, extremes, slope)
         self.present += phase.present
         self.kept += phase.kept
         self.converted += int(np.count_nonzero(np.isfinite(phase.phase_rad)))
-        # second differences leave slow motion alone; white noise of rms σ gives them 6σ²
-        second = np.diff(phase.phase_rad, 2)
-        second = second[np.isfinite(second)]
-        self.pairs += second.size
-        self.square += float(np.sum(second**2)) / 6.0
+        self.inverse_sin2 += phase.kept * phase.means.inverse_sin2
+        self.cos_over_sin2 += phase.kept * phase.means.cos_over_sin2
+        # fourth differences leave motion and lines well below half the rate alone; white noise of
+        # rms σ gives them (1 + 16 + 36 + 16 + 1)σ² = 70σ²
+        fourth = np.diff(phase.phase_rad, 4)
+        fourth = fourth[np.isfinite(fourth)]
+        self.differences += fourth.size
+        self.square += float(np.sum(fourth**2)) / 70.0
 
 
 def _per_radian(calibration: Calibration, quantity: str) -> float:
@@ -174,21 +198,24 @@ def _per_radian(calibration: Calibration, quantity: str) -> float:
     return 1.0 / per_metre / float(chain["arm_length"].magnitude)
 
 
-def _relative_u(calibration: Calibration, quantity: str) -> float:
-    """Return the scale's relative standard uncertainty, from the readout's budget."""
-    budget, slope = calibration.readout_budget, float(calibration.readout_slope.magnitude)
-    left_out = (*_CANCELS, *_RULER) if quantity == "phase" else _CANCELS
-    effects = [c.effect / slope for c in budget.contributions if c.name not in left_out]
+def _relative_us(calibration: Calibration, quantity: str, tally: _Tally) -> tuple[float, float]:
+    """Return the scale's relative u and that of the recording's own drift, at its working points."""
+    extremes, slope = calibration.extremes, float(calibration.readout_slope.magnitude)
+    steep, lean = (v / max(1, tally.kept) for v in (tally.inverse_sin2, tally.cos_over_sin2))
+    rows = {c.name: c for c in calibration.readout_budget.contributions}
+    drifts = [row for name, row in rows.items() if name.startswith(POWER_DRIFT)]
+    left_out = {ADC_REFERENCE, FRINGE_EXTREMES, *(row.name for row in drifts)}
+    left_out |= set(RULER) if quantity == "phase" else set()
+    effects = [row.effect / slope for name, row in rows.items() if name not in left_out]
+    effects.append(extremes.u_of(steep / extremes.swing_v, lean / extremes.swing_v))
     if quantity == "strain":
-        arm = calibration.chain["arm_length"]
-        effects.append(float(arm.u_magnitude or 0.0) / float(arm.magnitude))
-    # the recording has a power drift of its own, as large as that between the scans
-    effects += [
-        c.effect / slope * sqrt(max(1, calibration.extremes.scans))
-        for c in budget.contributions
-        if c.name.startswith("power drift")
-    ]
-    return sqrt(sum(effect**2 for effect in effects))
+        effects.append(float(calibration.chain["arm_length"].relative_u or 0.0))
+    dark_v = 0.0 if calibration.dark is None else float(calibration.dark.magnitude)
+    moved = steep + (extremes.mid_v - dark_v) / extremes.swing_v * lean
+    drift_u = abs(moved) * sqrt(sum(row.u**2 for row in drifts))
+    if extremes.scans:
+        effects.append(drift_u / sqrt(extremes.scans))
+    return sqrt(sum(effect**2 for effect in effects)), drift_u
 
 
 def _cautions(calibration: Calibration, slope: str) -> list[str]:

@@ -23,19 +23,14 @@ FloatArray = NDArray[np.float64]
 class Additive:
     """Volts on the photodiode channel per volt of the drive's reading, in step with the drive.
 
-    ``covariance`` is that of (real, imaginary) part, ``dof`` its degrees of freedom.
+    ``covariance`` is that of (real, imaginary) part, ``dof`` its degrees of freedom; ``lacks`` names
+    what was not measured and is not in it: ``"wires"``, ``"tilt x"``, ``"tilt y"``.
     """
 
     ratio: complex
     covariance: FloatArray
     dof: float = inf
-
-    def __add__(self, other: "Additive") -> "Additive":
-        dof = min(self.dof, other.dof)
-        return Additive(self.ratio + other.ratio, self.covariance + other.covariance, dof)
-
-    def __neg__(self) -> "Additive":
-        return Additive(-self.ratio, self.covariance, self.dof)
+    lacks: frozenset[str] = frozenset()
 
 
 def additive_of(
@@ -46,22 +41,31 @@ def additive_of(
     Parameters
     ----------
     pickup, blocked_x, blocked_y : sequence of Line
-        The same line in recordings with the beam blocked, and with one arm alone, drive on.
+        The same line in recordings with the beam blocked, and with one arm blocked, drive on.
 
     Returns
     -------
     Additive or None
-        Wires alone, or wires and both beams' tilt (each single-arm recording holds the wires too,
-        which are then counted once); None if nothing was measured.
+        The sum of wires and both beams' tilt. Each single-arm recording holds the wires too, which
+        are counted once. None if nothing was measured.
     """
     wires = _mean(pickup)
-    arms = [arm for arm in (_mean(blocked_x), _mean(blocked_y)) if arm is not None]
-    if wires is None:
-        return arms[0] if arms else None
-    total = wires
-    for arm in arms:
-        total = total + arm + -wires
-    return total
+    arms = {"tilt y": _mean(blocked_x), "tilt x": _mean(blocked_y)}
+    seen = [arm for arm in arms.values() if arm is not None]
+    lacks = {name for name, arm in arms.items() if arm is None}
+    if wires is not None:
+        parts = [(1.0 - len(seen), wires), *((1.0, arm) for arm in seen)]
+    elif seen:
+        parts = [(1.0, arm) for arm in seen]
+        lacks |= {"wires"} if len(seen) > 1 else set()  # two arms hold them twice, one arm once
+    else:
+        return None
+    return Additive(
+        ratio=complex(sum(weight * part.ratio for weight, part in parts)),
+        covariance=np.asarray(sum(weight**2 * part.covariance for weight, part in parts)),
+        dof=min(part.dof for _, part in parts),
+        lacks=frozenset(lacks),
+    )
 
 
 def _mean(lines: Sequence[Line]) -> Additive | None:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from functools import cached_property
 from math import pi
 
-from calibration.term import Term
+from calibration.term import ADC_REFERENCE, RULER, Term
 from metro.bench import Bench
 from metro.kernel.phase import phase_per_metre
 from metro.readout import Pole
@@ -61,14 +61,14 @@ class Readout:
         n, u_n = float(index.magnitude), float(index.u_magnitude or 0.0)
         return [
             Term(
-                "wavelength",
+                RULER[0],
                 wavelength_m,
                 "m",
                 self.bench.u("laser.wavelength"),
                 relative=sign / wavelength_m,
                 distribution=self.bench.distribution("laser.wavelength"),
             ),
-            Term("refractive index", n, "1", u_n, relative=-sign / n),
+            Term(RULER[1], n, "1", u_n, relative=-sign / n),
         ]
 
     def response_terms(self, frequency_hz: float, *, recorded: bool) -> list[Term]:
@@ -89,7 +89,7 @@ class Readout:
         divider = self.bench.magnitude("drive.divider", 1.0)
         if recorded and self.bench.get("drive.divider") is not None:
             terms.append(
-                self._stated("drive reading", "drive.divider", "1", relative=1.0 / divider)
+                self._stated("drive reading", "drive.divider", "1", relative=-1.0 / divider)
             )
         if self.bench.get("drive.amplifier_gain") is not None and (
             self.bench.text("drive.point") not in (None, "actuator terminals")
@@ -104,7 +104,7 @@ class Readout:
         """Return the converter's scale; +1 where it makes a reading large that divides."""
         if self.bench.get("adc.reference") is None:
             return []
-        return [self._stated("ADC reference", "adc.reference", "1", relative=sign)]
+        return [self._stated(ADC_REFERENCE, "adc.reference", "1", relative=sign)]
 
     def drive_setting_term(self, number: int) -> list[Term]:
         """Return a line's stated drive, where the drive was not recorded."""

@@ -5,7 +5,7 @@ from math import sqrt
 from calibration import curvature
 from calibration.extremes import Extremes
 from calibration.readout import Readout
-from calibration.term import Term, budget_of
+from calibration.term import FRINGE_EXTREMES, Term, budget_of
 from metro.budget import Budget
 from metro.measured import Measured
 
@@ -29,12 +29,13 @@ def readout_slope(readout: Readout, extremes: Extremes, drift: Term) -> tuple[Me
     tuple of (Measured, Budget)
         Slope [V/m], in volts at the converter's input.
     """
-    slope = extremes.swing_v * readout.phase_per_metre
+    scale = 1.0 + readout.bench.magnitude("adc.reference", 0.0)
+    slope = extremes.swing_v / scale * readout.phase_per_metre
     share = 1.0 / sqrt(extremes.scans) if extremes.scans else 0.0
     u = extremes.u_of(1.0, 0.0) / extremes.swing_v
     terms = [
         *readout.ruler_terms(-1.0),
-        Term("fringe extremes", None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
+        Term(FRINGE_EXTREMES, None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
         drift.with_relative(share),
         *readout.reference_term(-1.0),
         *curvature.swing_terms(readout.bench, extremes),

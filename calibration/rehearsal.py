@@ -7,7 +7,7 @@ from pathlib import Path
 
 import numpy as np
 
-from calibration.analysis import calibrate
+from calibration.analysis import calibrate, check_bench
 from calibration.comparison import Comparison, compare
 from calibration.convert import ConvertedRecording
 from calibration.line_fit import Line
@@ -22,7 +22,7 @@ from metro.bench import Bench
 from metro.budget import Budget, Contribution
 from metro.measured import Measured
 
-__all__ = ["Rehearsal", "rehearse"]
+__all__ = ["Rehearsal", "check_rehearsal", "rehearse"]
 
 Progress = Callable[[str], None]
 
@@ -111,6 +111,27 @@ def rehearse(
     )
 
 
+def check_rehearsal(bench: Bench, seed: int, lines_s: float) -> None:
+    """Refuse what cannot be played or calibrated, before anything is recorded.
+
+    Parameters
+    ----------
+    bench : Bench
+        The bench to play.
+    seed : int
+        Seed of the truth.
+    lines_s : float
+        Duration of a lines recording [s].
+
+    Raises
+    ------
+    MidfringeError
+        What the bench lacks.
+    """
+    check_bench(bench)
+    SimulatedBench(bench, seed).start(session_steps(bench, lines_s)[0].setup)
+
+
 def _by_role(steps: list[Step], files: Mapping[str, Path]) -> dict[str, list[str]]:
     by_role: dict[str, list[str]] = {}
     for step in steps:
@@ -148,6 +169,7 @@ def _displacements(
     fitted = [_fit(conversions[slope], bench, calibration) for slope in ("rising", "falling")]
     correction = 1.0 / abs(Readout(bench).electronics.response(tone.frequency_hz))
     amplitude_m = correction * float(np.mean([abs(line.phasor) for line in fitted]))
+    worth = [conversions[slope].judge() for slope in ("rising", "falling")]
     budget = Budget(
         [
             *(
@@ -161,12 +183,8 @@ def _displacements(
                 )
                 for slope, line in zip(conversions, fitted, strict=True)
             ),
-            Contribution(
-                "scale of the conversion",
-                1.0,
-                conversions["rising"].judge().relative_u,
-                amplitude_m,
-            ),
+            Contribution("scale of the conversion", 1.0, worth[0].scale_u, amplitude_m),
+            *(Contribution("power drift", 0.0, each.drift_u, amplitude_m / 2) for each in worth),
             Contribution(
                 "readout response", 0.0, _response_u(bench, tone.frequency_hz), amplitude_m
             ),

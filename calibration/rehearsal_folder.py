@@ -1,10 +1,10 @@
 """The folder a rehearsal leaves: bench file, recordings, calibration, displacement, page, truth."""
 
+import re
 from importlib.resources import files
 from pathlib import Path
 from typing import Any
 
-from calibration.comparison import Comparison
 from calibration.errors import CalibrationError
 from calibration.rehearsal import Rehearsal
 from calibration.session_plot import Shown, save_session_page
@@ -34,16 +34,33 @@ def rehearsal_bench(given: Bench) -> tuple[Bench, str]:
     Returns
     -------
     tuple of (Bench, str)
-        The bench; without a file the built-in one with the overrides.
+        The bench, without a file the built-in one; overrides stand in the text as well.
     """
-    if given.path:
-        return given, Path(given.path).read_text(encoding="utf-8")
-    text = _BUILT_IN.read_text(encoding="utf-8")
-    bench = load_bench(Path(str(_BUILT_IN)))
-    overrides = {key: given.get(key) for key in OPTIONS.values()}
-    known = {key: value for key, value in overrides.items() if value is not None}
-    lines = [f"# played with {key} = {value}\n" for key, value in known.items()]
-    return bench.replace(known), "".join(lines) + text
+    source = Path(given.path) if given.path else Path(str(_BUILT_IN))
+    kept = load_bench(source)
+    text = source.read_text(encoding="utf-8")
+    for key in OPTIONS.values():
+        value = given.get(key)
+        if value is not None and value != kept.get(key):
+            text = _with_value(text, key, value)
+            kept = kept.replace({key: value})
+    return kept, text
+
+
+def _with_value(text: str, key: str, value: Measured) -> str:
+    """Return the text of a bench file with one value replaced, or added to its section."""
+    section, _, name = key.partition(".")
+    unit = "" if value.unit == "1" else f" {value.unit}"
+    line = f'{name} = "{value.magnitude!r}{unit}"  # from the command line'
+    head = f"[{section}]\n"
+    if head not in text:
+        return f"{text.rstrip()}\n\n{head}{line}\n"
+    before, _, rest = text.partition(head)
+    end = re.search(r"^\[|\Z", rest, re.MULTILINE)
+    place = len(rest) if end is None else end.start()
+    body, after = rest[:place], rest[place:]
+    body, found = re.subn(rf"^{name} *=.*$", line, body, count=1, flags=re.MULTILINE)
+    return before + head + ("" if found else f"{line}\n") + body + after
 
 
 def prepare(folder: Path, *, overwrite: bool) -> None:
@@ -76,7 +93,7 @@ def comparison_document(rehearsal: Rehearsal) -> dict[str, Any]:
     found = rehearsal.comparisons
     return {
         "seed": rehearsal.seed,
-        "truth": {c.name: _truth(c) for c in found},
+        "truth": {c.name: c.truth_dict() for c in found},
         "measured": {c.name: c.measured.to_dict(with_dof=True) for c in found},
         "inside_95": {c.name: c.inside_95 for c in found},
     }
@@ -117,7 +134,3 @@ def leave(rehearsal: Rehearsal, folder: Path, bench_text: str) -> list[str]:
     )
     names = [*written, "displacement.npz", "session.png"]
     return [str(path) for path in rehearsal.files.values()] + [str(folder / n) for n in names]
-
-
-def _truth(comparison: Comparison) -> dict[str, Any]:
-    return Measured.of(comparison.truth, comparison.measured.unit).to_dict()

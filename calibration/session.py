@@ -2,7 +2,7 @@
 
 import hashlib
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from os import PathLike
 from pathlib import Path
 
@@ -12,6 +12,8 @@ from calibration.errors import CalibrationError
 from firmware_bridge.opening import open_recording
 from firmware_bridge.trace import Recording, Trace
 from metro.bench import Bench
+from metro.kernel.photodiode import step_v
+from metro.measured import Measured
 
 __all__ = ["ROLES", "RoleRecord", "Session", "photodiode_name"]
 
@@ -49,7 +51,8 @@ class RoleRecord:
             "file": Path(self.path).name,
             "sha256": _sha256(self.path),
             "samples": self.length,
-            "rate_hz": self.photodiode.rate_hz,
+            "rate": Measured.of(self.photodiode.rate_hz, "Hz").to_dict(),
+            "remarks": list(self.remarks),
             "missing": self.photodiode.missing,
             "over_range": self.photodiode.over_range,
         }
@@ -68,7 +71,8 @@ class Session:
     Raises
     ------
     CalibrationError
-        If a role is unknown, or there is no scan and no given extremes, or no lines recording.
+        If a role is unknown, no lines recording is given, some of them have a drive channel and
+        some not, or a channel is not in volts.
     """
 
     def __init__(self, files: Mapping[str, Sequence[str | PathLike[str]]], bench: Bench) -> None:
@@ -84,6 +88,18 @@ class Session:
                 "(--lines-rising FILE or --lines-falling FILE)"
             )
 
+        read = {record.drive is not None for record in self.slopes}
+        if len(read) > 1:
+            bare = next(record.path for record in self.slopes if record.drive is None)
+            raise CalibrationError(
+                f"all lines recordings must have a drive channel or none, got one without: {bare}"
+            )
+
+    @property
+    def slopes(self) -> list[RoleRecord]:
+        """The lines recordings on both slopes."""
+        return [*self.of("lines-rising"), *self.of("lines-falling")]
+
     def of(self, role: str) -> list[RoleRecord]:
         """Return the records of one role, in the order given."""
         return [record for record in self._records if record.role == role]
@@ -93,15 +109,36 @@ class Session:
 
 
 def _open(role: str, path: str, bench: Bench) -> RoleRecord:
+    if path == "-":
+        raise CalibrationError(
+            "a calibration keeps its recordings' hashes and needs files, got '-'"
+        )
     recording = open_recording(path)
+    drive = _drive(recording, bench)
     return RoleRecord(
         role=role,
         path=path,
-        photodiode=recording.trace(photodiode_name(recording)),
-        drive=_drive(recording, bench),
+        photodiode=_in_volts(recording.trace(photodiode_name(recording)), bench, path),
+        drive=None if drive is None else _in_volts(drive, bench, path),
         length=recording.length,
         remarks=tuple(recording.remarks),
     )
+
+
+def _in_volts(trace: Trace, bench: Bench, path: str) -> Trace:
+    """Return a channel in volts; counts are converted where the bench describes the converter."""
+    if trace.unit == "V":
+        return trace
+    if trace.unit != "1":
+        raise CalibrationError(f"{path}: {trace.name!r} must be in V, got {trace.unit}")
+    if bench.get("adc.bits") is None or bench.get("adc.range") is None:
+        raise CalibrationError(
+            f"{path}: {trace.name!r} has no unit; as ADC counts it needs adc.bits and adc.range "
+            "in the bench"
+        )
+    step = step_v(bench.magnitude("adc.range"), bench.magnitude("adc.bits"))
+    volts = trace.values * step + bench.magnitude("adc.offset", 0.0)
+    return replace(trace, values=volts, unit="V")
 
 
 def photodiode_name(recording: Recording) -> str:

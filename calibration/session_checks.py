@@ -1,26 +1,42 @@
 """What a session lets one check: scans against each other, the sign, and what was left out."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from math import hypot, pi, sqrt
+from math import pi, sqrt
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
 from calibration.record import ActuatorEntry
 from calibration.scan import ScanFit
 from calibration.session import Session
-from calibration.slope_line import is_driven
+from calibration.slope_line import SlopeLine, is_driven
 from calibration.term import Term
 from calibration.working_point import PhaseRecord
 from metro.bench import Bench
+from metro.cautions import bench_cautions
+from metro.measured import Measured
 
-__all__ = ["cautions_of", "checks_of", "reasons_of", "sign_reasons"]
+__all__ = [
+    "cautions_of",
+    "failed",
+    "reasons_of",
+    "repeat_checks",
+    "role_reasons",
+    "scan_checks",
+    "sign_reasons",
+]
 
 AGREEMENT = 1.0  # normalised error |d|/U with U at 95 %: common practice, ISO/IEC 17043
 _K95 = 1.96
+_LIT = 0.05  # of the fringe's swing: light on a recording that should be dark
+_FRINGE = 0.1  # of the swing: rms of a recording that should hold one beam alone
+FAILED = 2.0  # 3.9 standard uncertainties: by chance once in ten thousand
+
+_DRIVEN_ROLES = ("pickup", "blocked-x", "blocked-y")
 
 _MISSING = {
     "dark": "dark level not measured: the contrast is unknown or taken from the bench file",
@@ -33,22 +49,45 @@ _MISSING = {
 }
 
 
-def checks_of(scans: Sequence[ScanFit], drift_u: float) -> list[dict[str, Any]]:
-    """Return the comparison of the scans' high − low: largest difference over its U (95 %)."""
-    if len(scans) < 2:
+def scan_checks(scans: Sequence[ScanFit], drift: Term) -> list[dict[str, Any]]:
+    """Return the comparison of the first and the last scan, where the drift is known otherwise."""
+    if len(scans) < 2 or drift.kind == "A":  # a drift taken from the scans says nothing about them
         return []
     swings = np.array([scan.high - scan.low for scan in scans])
     weights = np.array([-1.0, 1.0])
-    own = [sqrt(float(weights @ scan.covariance @ weights)) for scan in scans]
-    u = hypot(hypot(own[0], own[-1]), sqrt(2.0) * drift_u * float(swings.mean()))
-    error = abs(float(swings[-1] - swings[0])) / (_K95 * u) if u else 0.0
+    own = [float(weights @ scan.covariance @ weights) for scan in (scans[0], scans[-1])]
+    u = sqrt(sum(own) + 2.0 * (drift.u * float(swings.mean())) ** 2)
+    return [_check("high − low of the first and the last scan", float(swings[-1] - swings[0]), u)]
+
+
+def repeat_checks(
+    lines: Sequence[tuple[float, Sequence[SlopeLine]]], drift: Term
+) -> list[dict[str, Any]]:
+    """Return the comparison of the first and the last recording of a line on one slope."""
+    checks = []
+    for frequency_hz, records in lines:
+        if len(records) < 2:
+            continue
+        first, last = records[0], records[-1]
+        own = [float(np.trace(record.covariance)) / 2 for record in (first, last)]
+        u = sqrt(sum(own) + 2.0 * (drift.u * abs(first.ratio)) ** 2)
+        name = f"the line at {frequency_hz:g} Hz, first and last on the {first.slope} slope"
+        checks.append(_check(name, abs(last.ratio) - abs(first.ratio), u))
+    return checks
+
+
+def failed(checks: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Return why a calibration must not be trusted: comparisons far beyond their uncertainty."""
     return [
-        {
-            "name": "high − low of the first and the last scan",
-            "normalised_error": error,
-            "agree": error <= AGREEMENT,
-        }
+        f"{check['name']}: they differ, normalised error {check['normalised_error']:.2g}"
+        for check in checks
+        if check["normalised_error"] > FAILED
     ]
+
+
+def _check(name: str, difference: float, u: float) -> dict[str, Any]:
+    error = abs(difference) / (_K95 * u) if u else 0.0
+    return {"name": name, "normalised_error": error, "agree": error <= AGREEMENT}
 
 
 def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
@@ -60,7 +99,11 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
         cautions.append("laser.wavelength has no u: the wavelength counts as exactly known")
     if "assumed" in drift.name:
         cautions.append("one scan only and no fringe.drift: the power's drift is an assumption")
+    cautions += bench_cautions(bench)
     for record in session:
+        if record.role in _DRIVEN_ROLES and record.drive is None and session.slopes[0].drive:
+            name = Path(record.path).name
+            cautions.append(f"{name} has no drive channel: what it measured could not be used")
         if record.used_fraction < 1.0:
             left_out = 100 * (1.0 - record.used_fraction)
             cautions.append(f"{Path(record.path).name}: {left_out:.2g} % of the samples left out")
@@ -82,8 +125,30 @@ def reasons_of(
     return list(dict.fromkeys(reasons))
 
 
+def role_reasons(session: Session, extremes: Extremes, dark: Measured | None) -> list[str]:
+    """Return why recordings do not look like what their role says."""
+    reasons = []
+    if dark is not None:
+        dark_v, u = float(dark.magnitude), float(dark.u_magnitude or 0.0)
+        if dark_v > extremes.low_v + 4 * u + _LIT * extremes.swing_v:
+            reasons.append(
+                f"the dark level {dark_v:.4g} V lies above the fringe's low {extremes.low_v:.4g} V: "
+                "the beam was not blocked"
+            )
+    for record in session:
+        volts, name = record.photodiode.values, Path(record.path).name
+        level_v, spread_v = float(np.nanmean(volts)), float(np.nanstd(volts))
+        if record.role == "pickup" and level_v > extremes.low_v + _LIT * extremes.swing_v:
+            reasons.append(
+                f"{name}: light {level_v:.3g} V on a pick-up recording: the beam was not blocked"
+            )
+        if record.role.startswith("blocked") and spread_v > _FRINGE * extremes.swing_v:
+            reasons.append(f"{name} shows a fringe, though one arm should be blocked")
+    return reasons
+
+
 def sign_reasons(bench: Bench, entries: Sequence[ActuatorEntry]) -> list[ActuatorEntry]:
-    """Return the entries; the lowest line distrusted if its sign contradicts the declared one."""
+    """Return the entries; all distrusted if the lowest line's sign contradicts the declared one."""
     if bench.get("actuator.polarity") is None:
         return list(entries)
     declared = bench.magnitude("actuator.polarity")
@@ -98,4 +163,4 @@ def sign_reasons(bench: Bench, entries: Sequence[ActuatorEntry]) -> list[Actuato
         f"the sign contradicts the declared polarity: phase {phase_rad:.2f} rad at the lowest line "
         f"(within {pi / 2:.2f} rad of {0.0 if declared > 0 else pi:.2f}); are the slopes swapped?"
     )
-    return [replace(e, reasons=[*e.reasons, reason]) if e is lowest else e for e in entries]
+    return [replace(entry, reasons=[*entry.reasons, reason]) for entry in entries]

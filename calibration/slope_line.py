@@ -6,7 +6,7 @@ photodiode without motion (volts per volt). The two together give both.
 """
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import sqrt
 
 import numpy as np
@@ -78,6 +78,11 @@ class CombinedLine:
         Share of each record; their sum is one.
     means : SlopeMeans
         Averages over the records with the same shares.
+    records : tuple of SlopeMeans
+        The averages of each record.
+    tilt_weight : float
+        Change of ``ratio`` for a relative change of the fringe's swing in step with the drive: the
+        mean of cos φ/|sin φ|, signed by the slope.
     additive : Additive or None
         What adds to the photodiode: found from the two slopes, or as given for one.
     additive_weight : float
@@ -88,6 +93,8 @@ class CombinedLine:
     parts: tuple[tuple[FloatArray, float], ...]
     weights: tuple[float, ...]
     means: SlopeMeans
+    records: tuple[SlopeMeans, ...]
+    tilt_weight: float
     additive: Additive | None
     additive_weight: float
 
@@ -125,18 +132,16 @@ def combine(
 
 
 def is_driven(line: Line) -> bool:
-    """Return whether the line is in the recorded drive; true where no drive was recorded."""
-    if line.drive is None:
-        return True
-    u = sqrt(float(np.trace(line.drive.covariance)) / 2)
-    return bool(abs(line.drive.phasor) > DRIVEN_MIN * u)
+    """Return whether the line is driven: seen in the recorded drive, without one in the response."""
+    seen = line.response if line.drive is None else line.drive
+    u = sqrt(float(np.trace(seen.covariance)) / 2)
+    return bool(abs(seen.phasor) > DRIVEN_MIN * u)
 
 
 def _both(
     rising: Sequence[SlopeLine], falling: Sequence[SlopeLine], swing_v: float
 ) -> CombinedLine:
-    steep_r = float(np.mean([part.means.inverse_sin for part in rising]))
-    steep_f = float(np.mean([part.means.inverse_sin for part in falling]))
+    steep_r, steep_f = _steepness(rising), _steepness(falling)
     share_r, share_f = steep_f / (steep_r + steep_f), steep_r / (steep_r + steep_f)
     records = [*rising, *falling]
     inner = [*_shares(rising), *_shares(falling)]  # of each record within its slope
@@ -159,20 +164,13 @@ def _single(
     records: Sequence[SlopeLine], swing_v: float, additive: Additive | None
 ) -> CombinedLine:
     weights = _shares(records)
-    steep = float(np.mean([part.means.inverse_sin for part in records]))
-    weight = SLOPE_SIGN[records[0].slope] * steep / swing_v
+    weight = SLOPE_SIGN[records[0].slope] * _steepness(records) / swing_v
     combined = _combined(records, weights, additive, weight)
     if additive is None:
         return combined
     # rising (sign −1 of φ) reads A + p·steep/swing: what is known of p is taken off
-    return CombinedLine(
-        combined.ratio + weight * additive.ratio,
-        combined.parts,
-        combined.weights,
-        combined.means,
-        additive,
-        weight,
-    )
+    ratio = combined.ratio + weight * additive.ratio
+    return replace(combined, ratio=ratio, additive=additive)
 
 
 def _combined(
@@ -187,6 +185,8 @@ def _combined(
         parts=tuple((w**2 * part.covariance, part.dof) for w, part in pairs),
         weights=tuple(weights),
         means=_mean_of([part.means for _, part in pairs], weights),
+        records=tuple(part.means for _, part in pairs),
+        tilt_weight=-sum(w * SLOPE_SIGN[part.slope] * part.means.cot for w, part in pairs),
         additive=additive,
         additive_weight=additive_weight,
     )
@@ -196,6 +196,13 @@ def _shares(records: Sequence[SlopeLine]) -> list[float]:
     """Return inverse-variance weights of records on one slope; their sum is one."""
     inverse = np.array([1.0 / max(np.trace(p.covariance), 1e-300) for p in records])
     return [float(share) for share in inverse / inverse.sum()]
+
+
+def _steepness(records: Sequence[SlopeLine]) -> float:
+    """Return ⟨1/|sin φ|⟩ of the records on one slope, weighted as they are."""
+    return sum(
+        w * part.means.inverse_sin for w, part in zip(_shares(records), records, strict=True)
+    )
 
 
 def _sum(arrays: Iterable[FloatArray]) -> FloatArray:

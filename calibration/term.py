@@ -6,7 +6,13 @@ from math import inf
 
 from metro.budget import Budget, Contribution
 
-__all__ = ["Term", "budget_of"]
+__all__ = ["ADC_REFERENCE", "FRINGE_EXTREMES", "POWER_DRIFT", "RULER", "Term", "budget_of"]
+
+# Names of terms that others look for in a kept budget.
+ADC_REFERENCE = "ADC reference"
+FRINGE_EXTREMES = "fringe extremes"
+POWER_DRIFT = "power drift between recordings"
+RULER = ("wavelength", "refractive index")
 
 
 @dataclass(frozen=True)

@@ -126,6 +126,7 @@ def _coverage(name: str, found: Sequence[Comparison]) -> Coverage:
     errors = np.array([comparison.normalised_error for comparison in found])
     sizes = np.array([abs(c.truth) for c in found])
     around_zero = name == "all" or "phase" in name or "clock" in name
+    sizes = np.where(sizes > 0, sizes, 1.0)
     relative = [float(c.measured.u_magnitude) / size for c, size in zip(found, sizes, strict=True)]
     return Coverage(
         name=name,

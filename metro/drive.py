@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from metro.bench import Bench
 
-__all__ = ["peak_factor", "point_factor", "terminal_factor"]
+__all__ = ["amplifier_gain", "peak_factor", "point_factor", "terminal_factor"]
 
 _PEAK: dict[str, float] = {"peak": 1.0, "peak-to-peak": 0.5, "rms": 2.0**0.5}
 
@@ -41,11 +41,8 @@ def point_factor(bench: "Bench") -> float:
         volts into ``assumed_load``, with a source impedance equal to that load, gives up to
         twice as much into a higher one.
     """
-    point = bench.text("drive.point") or "actuator terminals"
-    factor = 1.0
-    if point != "actuator terminals":
-        factor *= bench.magnitude("drive.amplifier_gain", 1.0)
-    if point == "generator setting":
+    factor = amplifier_gain(bench)
+    if bench.text("drive.point") == "generator setting":
         factor *= _load_factor(bench)
     return factor
 
@@ -58,16 +55,35 @@ def terminal_factor(bench: "Bench", *, recorded: bool) -> float:
     bench : Bench
         Section ``[drive]``.
     recorded : bool
-        Whether the reading is the recording's own drive channel, behind ``divider``, or the drive
-        that the bench file states for the line.
+        Whether the reading is the recording's own drive channel, a true voltage behind
+        ``divider``, or the drive that the bench file states for the line.
 
     Returns
     -------
     float
-        Dimensionless.
+        Dimensionless. What a generator shows for an assumed load concerns only the stated drive.
     """
-    divider = bench.magnitude("drive.divider", 1.0) if recorded else 1.0
-    return divider * point_factor(bench)
+    if not recorded:
+        return point_factor(bench)
+    return bench.magnitude("drive.divider", 1.0) * amplifier_gain(bench)
+
+
+def amplifier_gain(bench: "Bench") -> float:
+    """Return the gain between the point where the drive is read and the actuator's terminals.
+
+    Parameters
+    ----------
+    bench : Bench
+        Its ``[drive] point`` and ``amplifier_gain``.
+
+    Returns
+    -------
+    float
+        1 at the terminals.
+    """
+    if (bench.text("drive.point") or "actuator terminals") == "actuator terminals":
+        return 1.0
+    return bench.magnitude("drive.amplifier_gain", 1.0)
 
 
 def _load_factor(bench: "Bench") -> float:

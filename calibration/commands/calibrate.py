@@ -5,6 +5,7 @@ from typing import Any
 import click
 
 from metro.bench import Bench
+from metro.figure_file import check_figure
 from metro.options import bench_options, command, distrust, is_quiet, output_options
 from metro.output import check_writable, to_json, write_whole
 
@@ -52,9 +53,10 @@ def calibrate(
     from calibration.analysis import calibrate as run
     from calibration.summary import calibration_text
 
-    for path in (out, plot):
-        if path is not None:
-            check_writable(path, overwrite)
+    if out is not None:
+        check_writable(out, overwrite)
+    if plot is not None:
+        check_figure(plot, overwrite=overwrite)
     result = run(bench, **roles)
     document = to_json(result.to_dict())
     if plot is not None:

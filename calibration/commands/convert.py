@@ -63,7 +63,7 @@ def convert(
     samples = export_recording(
         converted, out, from_s=reading.from_s, to_s=reading.to_s, overwrite=overwrite
     )
-    worth = converted.judge()
+    worth = converted.judge(reading.from_s, reading.to_s)
     document = {
         "file": out,
         "samples": samples,

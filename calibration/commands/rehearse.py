@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Self
 import click
 
 from metro.bench import Bench
+from metro.extras import require
 from metro.options import bench_options, command, is_quiet, output_options
 from metro.output import table, to_json
 
@@ -51,6 +52,7 @@ def rehearse(
     compares with the truth, which the analysis never sees. Without --bench a built-in bench is
     played; the folder keeps every file, with a commented bench.toml to start from.
     """
+    from calibration.rehearsal import check_rehearsal
     from calibration.rehearsal import rehearse as play
     from calibration.rehearsal_folder import comparison_document, leave, prepare, rehearsal_bench
     from calibration.rehearsal_script import LINES_S, planned, session_steps
@@ -59,9 +61,14 @@ def rehearse(
     lines_s = LINES_S
     if plan_file is not None:
         played, lines_s = planned(played, plan_file)
+    check_rehearsal(played, seed, lines_s)  # before anything is written
     if trials is not None:
+        if out is not None:
+            raise click.UsageError("--out goes with one session; --trials leaves no files")
         _run_trials(played, lines_s, seed, trials, as_json=as_json)
         return
+    for module, what in (("matplotlib", "the session's page"), ("scipy", "its spectrum")):
+        require(module, "bench", what)
     folder = Path(out or "rehearsal")
     prepare(folder, overwrite=overwrite)
     with _progress(len(session_steps(played)) + 2) as step:
@@ -76,8 +83,17 @@ def _run_trials(bench: Bench, lines_s: float, seed: int, trials: int, *, as_json
     with _progress(trials) as step:
         seeds, processes = range(seed, seed + trials), min(trials, os.cpu_count() or 1)
         played = play_trials(bench, seeds, lines_s=lines_s, processes=processes, progress=step)
-        rows = coverage_of(list(played))
-    document = {"seed": seed, "trials": trials, "coverage": [row.to_dict() for row in rows]}
+        sessions = list(played)
+    rows = coverage_of(sessions)
+    document = {
+        "seed": seed,
+        "trials": trials,
+        "truth": [{c.name: c.truth_dict() for c in session} for session in sessions],
+        "measured": [{c.name: c.measured for c in session} for session in sessions],
+        "inside_95": [{c.name: c.inside_95 for c in session} for session in sessions],
+        "files": [],
+        "coverage": [row.to_dict() for row in rows],
+    }
     click.echo(to_json(document) if as_json else coverage_table(rows))
 
 
@@ -122,7 +138,8 @@ def _text(result: "Rehearsal", folder: Path) -> str:
             "",
             (
                 f"{inside} of {len(rows)} true values lie inside their 95 % interval "
-                "(one in twenty is expected outside)"
+                "(one in twenty is expected outside; lines share the drive's and "
+                "the converter's scale, and miss together)"
             ),
             f"all files of the session, with a page (session.png) and a bench.toml: {folder}",
         ]

@@ -1,11 +1,14 @@
 """A simulated bench: the truth of one seed and a new stream of samples for every recording."""
 
+from firmware_bridge.errors import BridgeError
 from firmware_bridge.simulated.setup import Setup
 from firmware_bridge.simulated.stream import Converter, Electronics, SampleStream
 from firmware_bridge.simulated.truth import Truth, draw_truth
 from metro.bench import Bench
 
 __all__ = ["SimulatedBench"]
+
+BITS_MAX = 16  # its frames carry int16
 
 
 class SimulatedBench:
@@ -32,9 +35,7 @@ class SimulatedBench:
         self.converter = _converter(bench)
         self._electronics = Electronics(
             transimpedance_v_per_a=bench.magnitude("photodiode.transimpedance"),
-            mains_hz=50.0
-            if bench.get("mains.frequency") is None
-            else bench.magnitude("mains.frequency"),
+            mains_hz=bench.magnitude("mains.frequency", 50.0),
         )
         self._seed = seed
 
@@ -52,6 +53,8 @@ class SimulatedBench:
 
 def _converter(bench: Bench) -> Converter:
     bits, range_v = int(bench.magnitude("adc.bits")), bench.magnitude("adc.range")
+    if bits > BITS_MAX:
+        raise BridgeError(f"the simulated board has adc.bits up to {BITS_MAX}, got {bits}")
     step_v = range_v / 2**bits
     noise = bench.get("adc.noise")
     return Converter(bits, range_v, step_v if noise is None else float(noise.magnitude))

@@ -151,15 +151,13 @@ class SampleStream:
         tilt = 1.0 + truth.tilt_per_v * self._drive(time_s)
         if beam == "blocked":
             return np.zeros(time_s.size)
-        if beam == "x":
-            return 0.5 * mid_v * tilt
-        if beam == "y":
-            return np.full(time_s.size, 0.5 * mid_v)
+        if beam != "both":
+            return 0.5 * mid_v * (tilt if beam == truth.moved_arm else np.ones(time_s.size))
         phase = truth.phase_per_metre * (self._actuator_m(time_s) + motion_m)
         phase += self._working_rad
         shaken = MAINS_M * truth.phase_per_metre
         phase += shaken * np.cos(2 * pi * self._electronics.mains_hz * time_s)
-        swing = truth.swing_v * np.sqrt(tilt)
+        swing = truth.swing_v * np.sqrt(np.maximum(tilt, 0.0))
         return np.asarray(0.5 * mid_v * (1.0 + tilt) + swing * np.cos(phase))
 
     def _drive(self, time_s: FloatArray) -> FloatArray:
@@ -192,7 +190,7 @@ class SampleStream:
         read_v = self._tones(late_s, lambda f: pole_gain(f, truth.drive_corners_hz))
         if self._setup.scan is not None:
             read_v = read_v + self._setup.scan.volts(late_s)
-        return np.asarray(read_v / truth.divider)
+        return np.asarray(read_v / truth.divider / truth.drive_gain)
 
     def _tones(self, time_s: FloatArray, response: Response) -> FloatArray:
         """Return the sum of the drive's tones, each times a complex response."""

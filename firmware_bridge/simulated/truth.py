@@ -13,6 +13,7 @@ import numpy as np
 
 from firmware_bridge.simulated.response import pole_gain
 from metro.bench import Bench
+from metro.drive import amplifier_gain
 from metro.measured import Measured
 
 __all__ = ["Truth", "draw_truth"]
@@ -36,14 +37,16 @@ class Truth:
     quadratic: float  # ADC non-linearity as fractions of the range
     cubic: float
     divider: float
+    drive_gain: float  # of the amplifier between the drive's reading and the terminals
     channel_delay_s: float
     clock: float  # relative error of the board's clock: its samples come at rate·(1 + clock)
     power_drift_u: float  # relative change of power from one recording to the next
+    moved_arm: str  # "x" or "y": the arm whose mirror the actuator moves, and tilts
     gain_m_per_v: float  # differential displacement per volt at zero frequency, signed
     resonance_hz: float
     quality: float
     actuator_delay_s: float
-    tilt_per_v: float  # relative change of the x arm's power per volt of drive
+    tilt_per_v: float  # relative change of the moved arm's power per volt of drive
     pickup_v_per_v: complex  # electrical pick-up at 100 Hz, proportional to frequency
 
     def actuator(self, frequency_hz: float) -> complex:
@@ -115,9 +118,11 @@ def draw_truth(bench: Bench, seed: int) -> Truth:
         quadratic=_draw(bench, "adc.quadratic", rng, 0.0),
         cubic=_draw(bench, "adc.cubic", rng, 0.0),
         divider=_draw(bench, "drive.divider", rng, 1.0),
+        drive_gain=_draw_drive_gain(bench, rng),
         channel_delay_s=_draw(bench, "adc.channel_delay", rng, 0.0),
         clock=_draw(bench, "adc.clock", rng, 0.0),
         power_drift_u=_stated_u(bench, "fringe.drift"),
+        moved_arm=bench.text("actuator.arm") or "x",
         **_draw_actuator(bench, rng),
     )
 
@@ -146,6 +151,14 @@ def _draw_actuator(bench: Bench, rng: np.random.Generator) -> dict[str, Any]:
         "tilt_per_v": _draw(bench, "actuator.tilt", rng, 0.0),
         "pickup_v_per_v": pickup,
     }
+
+
+def _draw_drive_gain(bench: Bench, rng: np.random.Generator) -> float:
+    """Return the amplifier's gain, where the drive is read before it."""
+    if amplifier_gain(bench) == 1.0:
+        rng.normal()
+        return 1.0
+    return _draw(bench, "drive.amplifier_gain", rng)
 
 
 def _draw_index(bench: Bench, rng: np.random.Generator) -> float:

@@ -1,6 +1,7 @@
 """Calibrations: what a session needs, what it refuses, what it says about what is missing."""
 
 import json
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -133,9 +134,11 @@ def test_without_a_drive_channel_the_stated_drive_is_taken(session, tmp_path):
     simulated, files, calibration = session
     bench, stripped = built_in_bench(), {"scan": files["scan"]}
     for role in ("lines_rising", "lines_falling"):
-        out = tmp_path / f"{role}.npz"
-        assert run(["export", files[role][0], "--channel", "photodiode", "--out", str(out)]) == 0
-        stripped[role] = [str(out)]
+        stripped[role] = []
+        for number, file in enumerate(files[role]):  # the first line again has the others undriven
+            out = tmp_path / f"{role}-{number}.npz"
+            assert run(["export", file, "--channel", "photodiode", "--out", str(out)]) == 0
+            stripped[role].append(str(out))
     bare = calibrate(bench, **stripped)
     for entry, full in zip(bare.actuator, calibration.actuator, strict=True):
         assert entry.phase is None
@@ -261,3 +264,131 @@ def test_commands_refuse_in_one_line(session, tmp_path, capsys):
         assert said.out == "", arguments
         assert said.err.count("\n") == 1, said.err
     assert load(cal).to_dict() == calibration.to_dict()
+
+
+@pytest.mark.parametrize(
+    "drive",
+    [
+        'point = "amplifier input"\namplifier_gain = { value = 20, u = 0.02 }\nreading = "rms"',
+        'point = "generator setting"\nassumed_load = "50 ohm"\nreading = "peak-to-peak"',
+    ],
+)
+def test_a_drive_read_before_the_terminals(tmp_path, drive):
+    text = BENCH_FILE.read_text(encoding="utf-8")
+    text = text.replace('point = "actuator terminals"\nreading = "peak"', drive)
+    path = tmp_path / "bench.toml"
+    path.write_text(text, encoding="utf-8")
+    bench = load_bench(path)
+    bench = replace(bench, lines=tuple(replace(k, drive_v=0.16 / 10) for k in bench.lines))
+    simulated, calibration = calibrated(bench, 8, tmp_path)
+    for entry in calibration.actuator:
+        true = abs(simulated.truth.actuator(float(entry.frequency.magnitude)))
+        assert abs(entry.magnitude.magnitude - true) < 4.5 * entry.magnitude.u_magnitude
+
+
+def exported(file, out, change=None):
+    """Write a recording as CSV, its values and header changed."""
+    assert run(["export", file, "--out", str(out)]) == 0
+    if change is not None:
+        out.write_text(change(out.read_text(encoding="utf-8")), encoding="utf-8")
+    return str(out)
+
+
+def test_counts_are_converted_or_refused(session, tmp_path):
+    """The same recordings as bare ADC counts: converted with adc.bits and range, else refused."""
+    _, files, calibration = session
+
+    def in_counts(name):
+        out = tmp_path / f"{name}.npy"
+        recording = open_recording(files[name][0])
+        step = 10.0 / 2**16
+        traces = [recording.trace(c).values / step for c in ("photodiode", "drive")]
+        rows = zip(np.arange(traces[0].size) / recording.rate_hz, *traces, strict=True)
+        text = "\n".join(f"{t:.6f},{p:.0f},{d:.0f}" for t, p, d in rows)
+        out = tmp_path / f"{name}.csv"
+        out.write_text(f"time_s,photodiode,drive\n{text}\n", encoding="utf-8")
+        return [str(out)]
+
+    counts = {name: in_counts(name) for name in ("scan", "lines_rising", "lines_falling")}
+    found = calibrate(built_in_bench(), **counts)
+    for entry, full in zip(found.actuator, calibration.actuator, strict=True):
+        assert entry.magnitude.magnitude == pytest.approx(full.magnitude.magnitude, rel=0.01)
+    bare = tmp_path / "bench.toml"
+    text = BENCH_FILE.read_text(encoding="utf-8")
+    bare.write_text(without(text, "bits", "quadratic", "cubic"), encoding="utf-8")
+    with pytest.raises(CalibrationError, match="has no unit; as ADC counts it needs adc.bits"):
+        calibrate(load_bench(bare), **counts)
+
+
+def test_drives_recorded_only_in_part_are_refused(session, tmp_path):
+    _, files, _ = session
+    out = tmp_path / "bare.npz"
+    falling = files["lines_falling"][0]
+    assert run(["export", falling, "--channel", "photodiode", "--out", str(out)]) == 0
+    with pytest.raises(CalibrationError, match="must have a drive channel or none"):
+        calibrate(
+            built_in_bench(),
+            scan=files["scan"],
+            lines_rising=files["lines_rising"],
+            lines_falling=[str(out)],
+        )
+
+
+def test_a_known_scale_error_is_corrected(session):
+    """adc.reference = 1 %: the drive's volts and the readout's slope change by that much."""
+    _, files, calibration = session
+    bench = built_in_bench()
+    bench = bench.replace({"adc.reference": Measured.of(0.01, "1", 0.0015)})
+    moved = calibrate(bench, **files)
+    for entry, plain in zip(moved.actuator, calibration.actuator, strict=True):
+        ratio = entry.magnitude.magnitude / plain.magnitude.magnitude
+        assert ratio == pytest.approx(1.01, rel=1e-9)
+    slope = moved.readout_slope.magnitude / calibration.readout_slope.magnitude
+    assert slope == pytest.approx(1 / 1.01, rel=1e-9)
+
+
+@pytest.mark.parametrize(
+    "key", ["adc.quadratic", "adc.cubic", "drive.pickup", "actuator.tilt", "fringe.drift"]
+)
+def test_a_known_error_that_is_not_corrected_is_refused(session, key):
+    bench = built_in_bench()
+    bench = bench.replace({key: Measured.of(0.01, bench.get(key).unit, 1e-4)})
+    with pytest.raises(
+        CalibrationError, match=re.escape(key) + " must have the value 0 with its u"
+    ):
+        calibrate(bench, **session[1])
+
+
+def test_a_repeat_that_differs_is_not_trusted(session, tmp_path):
+    """The last recording on a slope with the photodiode's light 3 % up: the line differs from the first."""
+    _, files, _ = session
+    source = open_recording(files["lines_rising"][0])
+    volts, drive = (source.trace(name).values for name in ("photodiode", "drive"))
+    other = tmp_path / "other.csv"
+    rows = zip(np.arange(volts.size) / source.rate_hz, volts, 0.95 * drive, strict=True)
+    text = "\n".join(f"{t:.6f},{v:.7f},{d:.7f}" for t, v, d in rows)
+    other.write_text(f"time_s,photodiode [V],drive [V]\n{text}\n", encoding="utf-8")
+    calibration = calibrate(
+        built_in_bench(),
+        scan=files["scan"],
+        lines_rising=[files["lines_rising"][0], str(other)],
+        lines_falling=files["lines_falling"],
+    )
+    assert any("they differ" in reason for reason in calibration.reasons)
+
+
+def test_recordings_in_the_wrong_role_are_not_trusted(session):
+    _, files, _ = session
+    lit = calibrate(built_in_bench(), **(files | {"dark": files["scan"]}))
+    assert any("lies above the fringe's low" in reason for reason in lit.reasons)
+    shone = calibrate(built_in_bench(), **(files | {"pickup": files["lines_rising"]}))
+    assert any("the beam was not blocked" in reason for reason in shone.reasons)
+    both = calibrate(built_in_bench(), **(files | {"blocked_x": files["scan"]}))
+    assert any("shows a fringe" in reason for reason in both.reasons)
+
+
+def test_the_rounded_wavelength_in_air_draws_its_caution(session):
+    bench = built_in_bench()
+    bench = bench.replace({"laser.wavelength": Measured.of(632.8e-9, "m", 1e-12)})
+    calibration = calibrate(bench, **session[1])
+    assert any("632.8 nm is the rounded value in air" in text for text in calibration.cautions)

@@ -118,22 +118,26 @@ def test_curvature_terms_are_the_derivatives_of_a_bent_reading():
 
 
 @pytest.mark.parametrize(
-    ("drive", "volts"),
+    ("drive", "stated", "recorded"),
     [
-        ("", 1.0),
-        ('point = "amplifier input"\namplifier_gain = 20', 20.0),
-        ('point = "generator setting"\nassumed_load = "50 ohm"', 2.0),
-        ('point = "generator setting"\nassumed_load = "50 ohm"\nload = "50 ohm"', 1.0),
-        ('point = "generator setting"\nassumed_load = "50 ohm"\nload = "1 Mohm"', 1.9999),
+        ("", 1.0, 10.0),
+        ('point = "amplifier input"\namplifier_gain = 20', 20.0, 200.0),
+        ('point = "generator setting"\nassumed_load = "50 ohm"', 2.0, 10.0),
+        ('point = "generator setting"\nassumed_load = "50 ohm"\nload = "50 ohm"', 1.0, 10.0),
+        ('point = "generator setting"\nassumed_load = "50 ohm"\nload = "1 Mohm"', 1.9999, 10.0),
     ],
 )
-def test_volts_at_the_terminals(tmp_path, drive, volts):
-    """A 50 Ω generator that shows volts into 50 Ω gives twice that into an open end: Ohm's law."""
+def test_volts_at_the_terminals(tmp_path, drive, stated, recorded):
+    """A 50 Ω generator that shows volts into 50 Ω gives twice that into an open end: Ohm's law.
+
+    A recorded drive is a voltage as it is: what a generator shows does not concern it.
+    """
     path = tmp_path / "bench.toml"
     path.write_text(f"[drive]\ndivider = 10\n{drive}\n", encoding="utf-8")
     bench = load_bench(path)
-    assert point_factor(bench) == pytest.approx(volts, rel=1e-6)
-    assert terminal_factor(bench, recorded=True) == pytest.approx(10 * volts, rel=1e-6)
+    assert point_factor(bench) == pytest.approx(stated, rel=1e-6)
+    assert terminal_factor(bench, recorded=False) == pytest.approx(stated, rel=1e-6)
+    assert terminal_factor(bench, recorded=True) == pytest.approx(recorded, rel=1e-6)
 
 
 @pytest.mark.parametrize(

@@ -125,7 +125,7 @@ def export_recording(
     ExportError
         If the suffix is none of these.
     OutputError
-        If the file exists or cannot be written.
+        If the file exists, is the recording itself, or cannot be written.
     BridgeError
         If there is no such channel or stretch.
     """
@@ -133,7 +133,7 @@ def export_recording(
     write = {".csv": _csv, ".npz": _npz, ".h5": _hdf5, ".hdf5": _hdf5}.get(target.suffix.lower())
     if write is None:
         raise ExportError(f"--out must end in .csv, .npz or .h5, got {str(path)!r}")
-    check_writable(target, overwrite)
+    check_writable(target, overwrite, [recording.path])
     chosen = range(len(recording.channels)) if channels is None else map(recording.find, channels)
     stretch = _Stretch(recording, tuple(chosen), *recording.span(from_s, to_s))
     write_whole(target, write(stretch), overwrite=overwrite)

@@ -1,5 +1,6 @@
 """A matplotlib figure into a file, whole or not at all."""
 
+from collections.abc import Iterable
 from io import BytesIO
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -45,7 +46,11 @@ def save_figure(figure: "Figure", path: str | Path, *, overwrite: bool = False) 
     write_whole(path, picture.getvalue(), overwrite=overwrite)
 
 
-def check_figure(path: str | Path, overwrite: bool = False) -> None:  # as the option
+def check_figure(
+    path: str | Path,
+    overwrite: bool = False,  # as the option
+    inputs: Iterable[str | Path | None] = (),
+) -> None:
     """Refuse a picture that could not be written, before it is drawn.
 
     Parameters
@@ -54,17 +59,19 @@ def check_figure(path: str | Path, overwrite: bool = False) -> None:  # as the o
         The file to be.
     overwrite : bool
         Whether an existing file may be replaced.
+    inputs : iterable of path or None
+        Files that are read for it: none of them is ever replaced.
 
     Raises
     ------
     FigureError
         If the suffix is none of PNG, PDF and SVG.
     OutputError
-        If the file exists or cannot be written.
+        If the file exists, is an input or cannot be written.
     """
     if _suffix(path) not in _FORMATS:
         raise FigureError(f"--plot must end in .png, .pdf or .svg, got {str(path)!r}")
-    check_writable(path, overwrite)
+    check_writable(path, overwrite, inputs)
 
 
 def _suffix(path: str | Path) -> str:

@@ -7,11 +7,18 @@ import unicodedata
 from collections.abc import Sequence
 from typing import Any
 
-from metro.whole_file import OutputError, OutputFailedError, check_writable, write_whole
+from metro.whole_file import (
+    OutputError,
+    OutputFailedError,
+    check_document,
+    check_writable,
+    write_whole,
+)
 
 __all__ = [
     "OutputError",
     "OutputFailedError",
+    "check_document",
     "check_writable",
     "plain",
     "table",

@@ -3,11 +3,15 @@
 import os
 import secrets
 import shutil
+from collections.abc import Iterable
 from pathlib import Path
 
 from metro.errors import MetroError
 
-__all__ = ["OutputError", "OutputFailedError", "check_writable", "write_whole"]
+__all__ = ["OutputError", "OutputFailedError", "check_document", "check_writable", "write_whole"]
+
+_NO_DOCUMENTS = (".mfr", ".toml", ".csv", ".npz", ".npy", ".h5", ".hdf5")
+"""Suffixes of recordings and bench files: a JSON document under one is a slip of the hand."""
 
 
 class OutputError(MetroError):
@@ -20,7 +24,11 @@ class OutputFailedError(OutputError):
     exit_code = 3
 
 
-def check_writable(path: str | os.PathLike[str], overwrite: bool = False) -> Path:  # as the option
+def check_writable(
+    path: str | os.PathLike[str],
+    overwrite: bool = False,  # as the option
+    inputs: Iterable[str | os.PathLike[str] | None] = (),
+) -> Path:
     """Refuse a file that could not be written, before long work is begun.
 
     Parameters
@@ -29,6 +37,9 @@ def check_writable(path: str | os.PathLike[str], overwrite: bool = False) -> Pat
         The file to be.
     overwrite : bool
         Whether an existing file may be replaced.
+    inputs : iterable of path or None
+        Files that are read for it: none of them is ever replaced. What is None, empty or ``-``
+        (standard input) is passed over.
 
     Returns
     -------
@@ -38,16 +49,54 @@ def check_writable(path: str | os.PathLike[str], overwrite: bool = False) -> Pat
     Raises
     ------
     OutputError
-        If it exists, is a directory, or its directory is missing or closed to us.
+        If it exists, is an input or a directory, or its directory is missing or closed to us.
     """
     path = Path(path)
     try:
-        problem = _problem(path, overwrite)
+        problem = _clash(path, inputs) or _problem(path, overwrite)
     except OSError as error:
         problem = f"cannot write {path}: {_reason(error)}"
     if problem:
         raise OutputError(problem)
     return path
+
+
+def check_document(
+    path: str | os.PathLike[str],
+    overwrite: bool = False,  # as the option
+    inputs: Iterable[str | os.PathLike[str] | None] = (),
+) -> Path:
+    """Refuse a file for a JSON document as :func:`check_writable` does, and by its suffix.
+
+    Parameters
+    ----------
+    path, overwrite, inputs
+        As for :func:`check_writable`.
+
+    Returns
+    -------
+    Path
+        The same path.
+
+    Raises
+    ------
+    OutputError
+        If it could not be written, is an input, or is named as recordings and bench files are.
+    """
+    path = Path(path)
+    if path.suffix.lower() in _NO_DOCUMENTS:
+        raise OutputError(f"--out is written as JSON: it must not end in {path.suffix}, got {path}")
+    return check_writable(path, overwrite, inputs)
+
+
+def _clash(path: Path, inputs: Iterable[str | os.PathLike[str] | None]) -> str:
+    """Return why a file may not be replaced that is read itself; empty where it is not."""
+    if not path.is_file():
+        return ""
+    for name in inputs:
+        if name and os.fspath(name) != "-" and Path(name).exists() and path.samefile(name):
+            return f"cannot write {path}: it is read for this itself; give another name"
+    return ""
 
 
 def _problem(path: Path, overwrite: bool) -> str:

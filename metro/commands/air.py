@@ -58,7 +58,7 @@ def air(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option eac
     inputs come from the bench file.
     """
     from metro.air_index import solve_air
-    from metro.output import check_writable, to_json, write_whole
+    from metro.output import check_document, to_json, write_whole
 
     if options["co2"] is not None:
         bench = bench.override({"air.co2": _plain(options["co2"], "1")})
@@ -73,7 +73,7 @@ def air(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option eac
         kind,
     )
     if options["out"]:
-        check_writable(options["out"], options["overwrite"])
+        check_document(options["out"], options["overwrite"], [bench.path])
     document = to_json(result.to_dict())
     if options["out"]:
         write_whole(options["out"], document + "\n", overwrite=options["overwrite"])

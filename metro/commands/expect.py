@@ -93,7 +93,7 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
         stage, value = "displacement", _one_arm_m(bench, text)
     else:
         value = stage_si(stage, text, f"--{stage}")
-    _check_files(options)
+    _check_files(bench, options)
     working_phase = options["working_phase"]
     if working_phase is None:
         working_phase = slope_phase_rad(options["slope"])
@@ -114,14 +114,14 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     click.echo(document if options["as_json"] else _page(expectation))
 
 
-def _check_files(options: dict[str, Any]) -> None:
+def _check_files(bench: Bench, options: dict[str, Any]) -> None:
     from metro.figure_file import check_figure
-    from metro.whole_file import check_writable
+    from metro.whole_file import check_document
 
     if options["out"]:
-        check_writable(options["out"], options["overwrite"])
+        check_document(options["out"], options["overwrite"], [bench.path])
     if options["plot"]:
-        check_figure(options["plot"], options["overwrite"])
+        check_figure(options["plot"], options["overwrite"], [bench.path])
 
 
 def _write_files(chain: Chain, document: str, options: dict[str, Any]) -> None:

@@ -64,12 +64,14 @@ def plan(
     One recording of that time on each slope of the fringe is meant, after scans. The drives stay
     within the linear range of the fringe, the drive limit and the converter's range.
     """
-    from metro.output import check_writable, to_json, write_whole
+    from metro.figure_file import check_figure
+    from metro.output import check_document, to_json, write_whole
     from metro.planner import make_plan
 
-    for path in (out, plot):
-        if path:
-            check_writable(path, overwrite)
+    if out:
+        check_document(out, overwrite, [bench.path])
+    if plot:
+        check_figure(plot, overwrite, [bench.path])
     made = make_plan(bench, uncertainty, lines, duration_s=duration, loss=compression)
     if plot:
         from metro.figure_file import save_figure

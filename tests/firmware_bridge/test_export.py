@@ -10,7 +10,7 @@ from firmware_bridge import open_recording
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.export import export_recording
 from firmware_bridge.trace import Channel, Gap, Recording, Span
-from metro.commandline import cli
+from metro.commandline import cli, run
 from metro.output import OutputError
 
 RATE_HZ = 48000.0 * (1 + 7.3e-6)
@@ -139,6 +139,18 @@ def test_files_that_cannot_be_written(tmp_path):
     assert export_recording(made, path, to_s=0.001, overwrite=True) == 49
     with pytest.raises(BridgeError, match=r"^--out must end in .csv, .npz or .h5, got '.*x.wav'$"):
         export_recording(made, tmp_path / "x.wav")
+
+
+def test_the_recording_itself_is_never_replaced(capsys, tmp_path):
+    path = tmp_path / "x.csv"
+    text = "".join(f"{k / 100},{k}\n" for k in range(50))
+    path.write_text(text)
+    code = run(["export", str(path), "--out", str(path), "--overwrite"])
+    captured = capsys.readouterr()
+    assert (code, captured.out, captured.err.count("\n")) == (2, "", 1)
+    with pytest.raises(OutputError, match=r"x\.csv: it is read for this itself"):
+        export_recording(open_recording(path), path, overwrite=True)
+    assert path.read_text() == text
 
 
 def test_the_command(tmp_path):

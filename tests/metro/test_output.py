@@ -15,6 +15,7 @@ from metro.measured import Measured
 from metro.output import (
     OutputError,
     OutputFailedError,
+    check_document,
     check_writable,
     table,
     to_json,
@@ -87,6 +88,29 @@ def test_files_are_written_and_never_overwritten_unasked(tmp_path):
     assert path.read_bytes() == b"third"
     assert stat.S_IMODE(path.stat().st_mode) == 0o640
     assert list(tmp_path.iterdir()) == [path]
+
+
+@pytest.mark.parametrize("name", ["in.csv", "./in.csv", "soft.csv", "hard.csv"])
+def test_an_input_is_never_replaced(tmp_path, monkeypatch, name):
+    monkeypatch.chdir(tmp_path)
+    Path("in.csv").write_text("precious")
+    Path("soft.csv").symlink_to("in.csv")
+    Path("hard.csv").hardlink_to("in.csv")
+    with pytest.raises(OutputError) as caught:
+        check_writable(name, True, [None, "", "-", "gone.csv", tmp_path / "in.csv"])
+    assert str(caught.value) == (
+        f"cannot write {Path(name)}: it is read for this itself; give another name"
+    )
+    Path("other.csv").write_text("precious")
+    assert check_writable("other.csv", True, ["in.csv"]) == Path("other.csv")
+
+
+@pytest.mark.parametrize("suffix", [".mfr", ".toml", ".csv", ".npz", ".npy", ".H5", ".hdf5"])
+def test_json_is_not_written_under_the_name_of_a_recording_or_bench(tmp_path, suffix):
+    path = tmp_path / f"x{suffix}"
+    with pytest.raises(OutputError, match=rf"^--out is written as JSON: .* end in {suffix}, got "):
+        check_document(path, True)
+    assert check_document(tmp_path / "x.json") == tmp_path / "x.json"
 
 
 def test_a_link_stays_a_link(tmp_path):

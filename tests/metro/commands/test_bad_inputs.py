@@ -106,3 +106,21 @@ def test_bad_value_of_a_real_process(command, option, value):
     )
     assert (done.returncode, done.stdout) == (2, "")
     assert len(done.stderr.splitlines()) == 1
+
+
+@pytest.mark.parametrize("name", ["bench.toml", "bench"])
+@pytest.mark.parametrize(
+    ("command", "option"),
+    [("expect", "--out"), ("air", "--out"), ("plan", "--out"), ("expect", "--plot"), ("plan", "--plot")],
+)  # fmt: skip
+def test_the_bench_file_is_never_replaced(capsys, tmp_path, command, option, name):
+    bench = tmp_path / (name if option == "--out" else "bench.svg")
+    bench.write_text('[arms]\nlength = "0.5 m"\n')
+    arguments = GOOD.get(command, ["--uncertainty", "0.3%"])
+    line = [command, "--bench", str(bench), *arguments, option, str(bench), "--overwrite"]
+    assert run(line) == 2
+    captured = capsys.readouterr()
+    assert (captured.out, captured.err.count("\n")) == ("", 1)
+    assert f"{bench}" in captured.err
+    assert "read for this itself" in captured.err or "written as JSON" in captured.err
+    assert bench.read_text() == '[arms]\nlength = "0.5 m"\n'

@@ -12,23 +12,38 @@ from metro.options import ValueType, command, is_quiet, output_options
 __all__ = ["record"]
 
 
-def _list_ports(ctx: click.Context, param: click.Parameter, value: bool) -> None:  # noqa: ARG001  # click's signature
-    if not value:
-        return
+def _list_ports(as_json: bool) -> None:  # as the option
     from firmware_bridge.port import list_ports
-    from metro.output import table
+    from metro.output import table, to_json
 
     found = list_ports()
-    if found:
+    if as_json:
+        ports = [{"name": info.name, "description": info.description} for info in found]
+        click.echo(to_json({"ports": ports}))
+    elif found:
         click.echo(table([[info.name, info.description] for info in found], ["port", "what"]))
     else:
         click.echo("no serial port found on this computer", err=True)
-    ctx.exit(0)
+
+
+def _needed(value: str | None, option: str) -> str:
+    if value is None:
+        raise click.MissingParameter(param_hint=f"'{option}'", param_type="option")
+    return value
+
+
+def _recording_name(out: str) -> str:
+    """Return the name of the recording to be, refused where it would not look like one."""
+    from metro.errors import MetroError
+
+    if not out.lower().endswith(".mfr"):
+        raise MetroError(f"--out must end in .mfr, got {out!r}")
+    return out
 
 
 @command(example="midfringe record --port /dev/ttyACM0 --out run.mfr --duration 60s")
-@click.option("--port", required=True, metavar="P", help="Port or pyserial URL.")
-@click.option("--out", required=True, metavar="FILE", help="The recording to make, NAME.mfr.")
+@click.option("--port", metavar="P", help="Port or pyserial URL; needed.")
+@click.option("--out", metavar="FILE", help="The recording to make, NAME.mfr; needed.")
 @click.option(
     "--duration",
     type=ValueType("s", above=0.0),
@@ -42,24 +57,18 @@ def _list_ports(ctx: click.Context, param: click.Parameter, value: bool) -> None
 @click.option(
     "--rate", type=ValueType("Hz", above=0.0), metavar="F", help="With --text: lines per second."
 )
-@click.option(
-    "--list",
-    is_flag=True,
-    is_eager=True,
-    expose_value=False,
-    callback=_list_ports,
-    help="Show the ports and end.",
-)
+@click.option("--list", "only_list", is_flag=True, help="Show the ports and end.")
 @output_options("json", "overwrite")
 def record(
-    port: str,
-    out: str,
+    port: str | None,
+    out: str | None,
     duration: float | None,
     size: str | None,
     baud: int,
     reconnect: bool,
     text: bool,
     rate: float | None,
+    only_list: bool,
     as_json: bool,
     overwrite: bool,
 ) -> None:
@@ -74,9 +83,13 @@ def record(
     from metro.errors import MetroError
     from metro.output import check_writable, to_json
 
+    if only_list:
+        _list_ports(as_json)
+        return
+    port, out = _needed(port, "--port"), _needed(out, "--out")
     if rate is not None and not text:
         raise MetroError("--rate goes with --text; a board that sends frames announces its rate")
-    check_writable(out, overwrite)
+    check_writable(_recording_name(out), overwrite)
     # A service manager's polite end is treated like Ctrl-C.
     for name in ("SIGTERM", "SIGHUP"):  # and a terminal that is closed
         if hasattr(signal, name):

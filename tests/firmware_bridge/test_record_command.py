@@ -9,7 +9,9 @@ import time
 import pytest
 from wire_board import RATE_HZ, PtyLink, SocketLink, WireBoard
 
+from firmware_bridge.port import PortInfo
 from firmware_bridge.recording import open_mfr
+from metro.commandline import run
 
 PROGRAM = [sys.executable, "-m", "metro", "record"]
 
@@ -111,6 +113,42 @@ def test_what_is_wrong_is_one_line_and_nothing_is_written(tmp_path, arguments, l
     assert (code, out, err.count("\n")) == (2, "", 1)
     assert err.startswith(line)
     assert list(tmp_path.iterdir()) == []
+
+
+@pytest.mark.parametrize("name", ["a.csv", "a", ".mfr.txt"])
+def test_a_recording_is_named_as_one_before_the_port_is_opened(tmp_path, name):
+    path = tmp_path / name
+    code, out, err = run_to_end("--port", "/dev/nowhere", "--out", str(path))
+    assert (code, out) == (2, "")
+    assert err == f"midfringe: --out must end in .mfr, got {str(path)!r}\n"
+
+
+@pytest.mark.parametrize("missing", ["--port", "--out"])
+def test_port_and_file_are_needed(capsys, missing):
+    given = {"--port": "loop://", "--out": "a.mfr"}
+    del given[missing]
+    code = run(["record", *(word for pair in given.items() for word in pair)])
+    captured = capsys.readouterr()
+    assert (code, captured.out, captured.err.count("\n")) == (2, "", 1)
+    assert f"Missing option '{missing}'" in captured.err
+
+
+@pytest.mark.parametrize("order", [("--list", "--json"), ("--json", "--list")])
+def test_the_ports_as_one_json_document(capsys, monkeypatch, order):
+    found = [PortInfo("/dev/ttyACM0", "a board")]
+    monkeypatch.setattr("firmware_bridge.port.list_ports", lambda: found)
+    assert run(["record", *order]) == 0
+    captured = capsys.readouterr()
+    assert json.loads(captured.out) == {
+        "ports": [{"name": "/dev/ttyACM0", "description": "a board"}]
+    }
+    found.clear()
+    assert run(["record", *order]) == 0
+    captured = capsys.readouterr()
+    assert (json.loads(captured.out), captured.err) == ({"ports": []}, "")
+    assert run(["record", "--list"]) == 0
+    captured = capsys.readouterr()
+    assert (captured.out, captured.err) == ("", "no serial port found on this computer\n")
 
 
 def test_an_existing_file_is_kept(tmp_path):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
+from metro.errors import MetroError
 from metro.extras import require
 from metro.sensitivity import Sensitivity, displacement_noise
 
@@ -55,10 +56,16 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
     ------
     MissingExtraError
         If matplotlib is not installed.
+    MetroError
+        If no noise source is known: there is nothing to draw.
     """
     figures = require("matplotlib.figure", "bench", "--plot")
     frequencies = noise_frequencies(chain)
     noises = [displacement_noise(chain, f) for f in frequencies]
+    if not any(noise.total for noise in noises):
+        raise MetroError(
+            f"--plot has nothing to draw, no noise is known; needed: {_advice(noises[0])}"
+        )
     figure = figures.Figure(figsize=(7.5, 5.0), layout="constrained")
     axes = figure.add_subplot()
     for name in noises[0].densities:
@@ -70,9 +77,8 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
         title="Expected noise as differential displacement",
     )
     axes.grid(visible=True, which="both", alpha=0.25)
-    if axes.lines:
-        axes.set(xscale="log", yscale="log")
-        axes.legend()
+    axes.set(xscale="log", yscale="log")
+    axes.legend()
     _strain_axis(axes, chain)
     _say_what_is_missing(axes, noises[0])
     return figure
@@ -99,6 +105,11 @@ def _strain_axis(axes: Any, chain: Chain) -> None:  # noqa: ANN401  # matplotlib
         "right", functions=(lambda x: x / length_m, lambda h: h * length_m)
     )
     right.set_ylabel("strain density [1/√Hz]")
+
+
+def _advice(noise: Sensitivity) -> str:
+    """Return what to give for one source to be known, in one line."""
+    return " ".join(next(iter(noise.missing.values()), "every source is given as 0").split())
 
 
 def _say_what_is_missing(axes: Any, noise: Sensitivity) -> None:  # noqa: ANN401  # matplotlib's Axes

@@ -273,6 +273,17 @@ def test_plot(capsys, tmp_path):
     assert captured.err.startswith("midfringe: --plot must end in .png, .pdf or .svg, got ")
 
 
+def test_no_plot_without_any_noise(capsys, tmp_path):
+    pytest.importorskip("matplotlib")
+    plot, out = tmp_path / "noise.png", tmp_path / "expectation.json"
+    arguments = ["--displacement", "1pm", "--wavelength", "633nm", "--out", str(out)]
+    assert run(["expect", *arguments, "--plot", str(plot)]) == 2
+    captured = capsys.readouterr()
+    assert (captured.out, captured.err.count("\n")) == ("", 1)
+    assert captured.err.startswith("midfringe: --plot has nothing to draw, no noise is known; needed: ")
+    assert list(tmp_path.iterdir()) == []
+
+
 def test_storage_and_coherence_among_the_corrections(capsys, tmp_path):
     bench = tmp_path / "bench.toml"
     bench.write_text(

@@ -363,7 +363,9 @@ def load_bench(path: str | os.PathLike[str]) -> Bench:
 
     path = Path(path)
     try:
-        document = tomllib.loads(path.read_text(encoding="utf-8"))
+        document = tomllib.loads(
+            path.read_text(encoding="utf-8-sig")
+        )  # some editors begin with a mark
     except OSError as error:
         reason = (error.strerror or str(error)).lower()
         raise BenchError(f"cannot read the bench file {path}: {reason}") from None

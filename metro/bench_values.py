@@ -216,11 +216,14 @@ def _uncertainty(rule: Key, u: object, number: float, where: str) -> float:
 
 
 def _number(rule: Key, value: object, where: str) -> float:
+    if rule.whole and rule.minimum == -1.0:
+        number = float(_si(value, where, Key(rule.unit, rule.example)))
+        if number not in (-1.0, 1.0):
+            raise BenchError(f"{where} must be +1 or -1, got {value!r}")
+        return number
     number = float(_si(value, where, rule))
     if rule.whole and number != int(number):
         raise BenchError(f"{where} must be a whole number, got {value!r}")
-    if rule.whole and rule.minimum == -1.0 and number == 0:
-        raise BenchError(f"{where} must be +1 or -1, got {value!r}")
     return number
 
 

@@ -231,7 +231,8 @@ BAD = [
     ('[adc]\nrange = "10 A"', None),
     ('[actuator]\narm = "z"', ", [actuator] arm must be 'x' or 'y', got 'z'"),
     ("[actuator]\npolarity = 0", ", [actuator] polarity must be +1 or -1, got 0"),
-    ("[actuator]\npolarity = 2", None),
+    ("[actuator]\npolarity = 2", ", [actuator] polarity must be +1 or -1, got 2"),
+    ("[actuator]\npolarity = 0.5", ", [actuator] polarity must be +1 or -1, got 0.5"),
     ('[drive]\nreading = "pp"', None),
     (
         '[drive]\ndivider = { value = 10, u = "0.15%" }',
@@ -257,6 +258,14 @@ BAD = [
     ("[laser\n", None),
     ('[laser]\npower = "1 W"\npower = "2 W"', None),
 ]
+
+
+def test_a_byte_order_mark_is_no_part_of_the_file(tmp_path):
+    path = tmp_path / "bench.toml"
+    path.write_bytes(b"\xef\xbb\xbf" + GOOD.encode())
+    marked = load_bench(path)
+    path.write_bytes(GOOD.encode())
+    assert marked == load_bench(path)
 
 
 @pytest.mark.parametrize(("text", "ending"), BAD, ids=lambda v: repr(v)[:40])

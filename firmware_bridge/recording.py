@@ -16,7 +16,10 @@ from firmware_bridge.record_index import RecordIndex, lengths
 from firmware_bridge.recording_header import RecordingError
 from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
 
-__all__ = ["MfrRecording", "open_mfr"]
+__all__ = ["NO_END", "MfrRecording", "open_mfr"]
+
+NO_END = "the recording did not end as asked: it was cut, the port failed, or it still goes on"
+"""What is said of a recording without an end."""
 
 _NEAR = 16384  # samples
 _LENGTH_MAX = 1 << 53  # indices and lengths stay exact as int64 and as float64
@@ -70,6 +73,11 @@ class MfrRecording(Recording):
             start_unix_s=self._started(),
         )
         self.over_range = self._count_over_range()
+
+    @property
+    def has_end(self) -> bool:
+        """True if the file says that the recording ended as asked."""
+        return self._end is not None
 
     def _scan(self) -> RecordIndex:
         index, pieces = RecordIndex(self.file.slots), Pieces()
@@ -137,7 +145,9 @@ class MfrRecording(Recording):
             join = self._joins.get(stream)
             if join is not None and placed:
                 start, length_u = max(reached, join.grid + first - join.index), join.grid_u
-            self._check_span(int(runs["index"].max()) - first + start)
+            last = int(np.argmax(runs["index"]))  # before the counter can wrap in the sums below
+            behind = int(lengths(runs[last : last + 1], self.file.slots)[0])
+            self._check_span(int(runs["index"][last]) + behind - first + start)
             if placed:
                 gaps.append(Gap(reached, start - reached, exact=False, length_u=length_u))
             runs["index"] = runs["index"] - np.uint64(first) + np.uint64(start)
@@ -176,6 +186,7 @@ class MfrRecording(Recording):
         said = [
             (self.damaged, f"{self.damaged} damaged records were left out"),
             (self.duplicates, f"{self.duplicates} records were there twice"),
+            (not self.has_end, NO_END),
             (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
             (len(self._joins) > 1, "the board was restarted or reconnected"),
             ("rate" in self.header.info, f"the rate is {self.header.info.get('rate')}"),

@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.recording import MfrRecording
+from firmware_bridge.recording import NO_END, MfrRecording
 from firmware_bridge.suspicions import Codes, Repetition, StuckRuns
 from firmware_bridge.trace import Recording
 
@@ -238,6 +238,10 @@ def _reasons(
         reasons.append(f"{recording.over_range} values are over-range")
     if isinstance(recording, MfrRecording) and recording.damaged:
         reasons.append(f"{recording.damaged} records are damaged")
+    if isinstance(recording, MfrRecording) and not recording.has_end:
+        reasons.append(NO_END)
+    if isinstance(recording, MfrRecording) and recording.file.tail_bytes:
+        reasons.append("the file ends within a record")
     for state in channels:
         if math.isnan(state.mean):
             reasons.append(f"channel {state.name!r} has no value at all")

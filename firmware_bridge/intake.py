@@ -80,6 +80,7 @@ class Intake:
         self._last: Samples | None = None
         self._unsaid: Counter[str] = Counter()
         self._was_away = False
+        self._has_end = False  # written into the present file
         self.files: list[Path] = []
         """The files written, in order."""
         self.samples = 0
@@ -188,16 +189,29 @@ class Intake:
         """Take note that the port was away: nothing from before will come any more."""
         self._was_away = True
 
-    def close(self) -> None:
-        """Close the recording: the last stamp, what was discarded, everything on the disk."""
+    def close(self, *, is_as_asked: bool = True) -> None:
+        """Close the recording: the last stamp, what was discarded, everything on the disk.
+
+        Parameters
+        ----------
+        is_as_asked : bool
+            Whether it ends by its duration or size, or because someone ended it; else the port or
+            the file failed, and the recording holds no end.
+        """
         for event in self._decoder.close():
             if isinstance(event, Gap):
                 self.gaps += bool(event.length)
-        self._close_file()
+            elif isinstance(event, Samples):
+                self._count(event)  # held until now, for a frame that never came
+        self._close_file(is_as_asked)
 
-    def _close_file(self) -> None:
+    def _close_file(self, is_as_asked: bool = True) -> None:  # private, named at the definition
         if self._writer is None:
             return
+        if is_as_asked and not self._has_end:
+            stream = next(reversed(self._grid))
+            self._writer.note(End(stream, max(0, self._reached - self._grid[stream])))
+        self._has_end = False
         self._stamp()
         self._say_discarded()
         self._earlier_bytes += self._writer.bytes
@@ -339,6 +353,7 @@ class Intake:
         if self._writer is not None:
             end = self.wanted - self._grid[covering.stream]
             self._writer.note(End(covering.stream, end))
+            self._has_end = True
 
     def _discard_message(self, message: bytes, reason: str) -> None:
         self._discard(Discarded(len(encode(message)), reason))

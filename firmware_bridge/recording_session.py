@@ -210,7 +210,7 @@ class RecordingSession:
             self._stop.set()
             self._queue.close()
             try:
-                self._intake.close()
+                self._intake.close(is_as_asked=self._failure is None)
             except BridgeError as error:
                 self._failure = self._failure or error
             self._written.set()

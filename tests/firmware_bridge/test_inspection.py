@@ -8,9 +8,9 @@ from firmware_bridge.announcement import Announcement, ChannelInfo
 from firmware_bridge.commands.inspect import inspect
 from firmware_bridge.envelope import seal_rows
 from firmware_bridge.frame import pack_frames
-from firmware_bridge.host_note import Stamp
+from firmware_bridge.host_note import End, Stamp
 from firmware_bridge.inspection import inspect_recording
-from firmware_bridge.recording import open_mfr
+from firmware_bridge.recording import NO_END, open_mfr
 from firmware_bridge.recording_header import Header
 from firmware_bridge.writer import Writer
 
@@ -19,7 +19,7 @@ RATE_HZ, SLOTS = 1000.0, 50
 
 @pytest.fixture
 def written(tmp_path):
-    def write(samples, *, drop=(), clock_offset=0.0, flags=0):
+    def write(samples, *, drop=(), clock_offset=0.0, flags=0, has_end=True):
         channels = [ChannelInfo("pd", "V", 0.001), ChannelInfo("drive", "V", 0.01)]
         announced = Announcement(3, RATE_HZ, "int16", SLOTS, channels)
         path = tmp_path / "run.mfr"
@@ -43,6 +43,8 @@ def written(tmp_path):
                 end = (k + 1) * SLOTS
                 host_s = end / RATE_HZ / (1 + clock_offset) + float(rng.uniform(0, 0.004))
                 writer.note(Stamp(10**18, round(host_s * 1e9), 3, end))
+        if has_end:
+            writer.note(End(3, len(samples)))
         writer.close()
         return path
 
@@ -81,6 +83,23 @@ def test_what_speaks_against_a_recording_is_named(written):
         "channel 'drive' is constant: dead, stuck or not connected",
     ]
     assert found.channels[0].missing == 150
+
+
+def test_a_recording_without_its_end_is_not_sound(written):
+    found = inspect_recording(open_mfr(written(noise(), has_end=False)))
+    assert found.reasons == [NO_END]
+    assert "did not end as asked" in NO_END
+
+
+def test_a_file_cut_within_a_record_is_not_sound(written):
+    path = written(noise())
+    content = path.read_bytes()
+    path.write_bytes(content[:-1])  # within the end
+    recording = open_mfr(path)
+    assert inspect_recording(recording).reasons == [NO_END, "the file ends within a record"]
+    assert NO_END in recording.remarks
+    path.write_bytes(content + b"\0")
+    assert inspect_recording(open_mfr(path)).reasons == ["the file ends within a record"]
 
 
 def test_over_range_is_counted(written):

@@ -14,7 +14,7 @@ from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.message import CommandCode
 from firmware_bridge.port import Port, PortError
 from firmware_bridge.recorder import record
-from firmware_bridge.recording import open_mfr
+from firmware_bridge.recording import NO_END, open_mfr
 from firmware_bridge.trace import Gap
 
 
@@ -78,6 +78,28 @@ def test_the_duration_counts_the_boards_samples_exactly(pty, tmp_path, duration_
     assert summary.samples == round(duration_s * RATE_HZ)
     assert summary.duration_s == summary.samples / RATE_HZ
     check_ramp(tmp_path / "a.mfr", summary.samples)
+
+
+@pytest.mark.parametrize("end", ["duration", "size", "stop"])
+def test_a_recording_that_ends_as_asked_says_so(pty, tmp_path, in_background, end):
+    board = WireBoard(pty)
+    stop = threading.Event()
+
+    def send():
+        board.run(60)
+        if end == "stop":
+            time.sleep(0.3)
+            stop.set()
+
+    in_background(pty, send)
+    asked = (
+        {"duration_s": 0.7} if end == "duration" else {"size_bytes": 8000} if end == "size" else {}
+    )
+    summary = record(pty.port, tmp_path / "a.mfr", stop=stop, **asked)
+    recording = open_mfr(tmp_path / "a.mfr")
+    assert (recording.has_end, recording.remarks) == (True, [])
+    assert (recording.length, recording.gaps) == (summary.samples, [])
+    assert summary.samples > 500
 
 
 def test_damaged_frames_become_exact_gaps_of_the_recording(pty, tmp_path, in_background):
@@ -336,7 +358,7 @@ def test_a_disk_that_fills_up_says_what_was_kept(pty, tmp_path, in_background):
         f"kept {kept.length} samples ({kept.duration_s:.4g} s) in {tmp_path / 'a.mfr'}"
     )
     check_ramp(tmp_path / "a.mfr", kept.length)
-    assert kept.remarks == []
+    assert kept.remarks == [NO_END]
 
 
 def test_text_where_frames_are_expected_is_named(pty, tmp_path, monkeypatch, in_background):

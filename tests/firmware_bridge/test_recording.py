@@ -12,7 +12,7 @@ from firmware_bridge.frame import encode_frame
 from firmware_bridge.host_note import End, Join, Remark, Stamp
 from firmware_bridge.message import encode_note
 from firmware_bridge.record_index import RUN, RecordIndex
-from firmware_bridge.recording import open_mfr
+from firmware_bridge.recording import NO_END, open_mfr
 from firmware_bridge.recording_header import Header, RecordingError, encode_header
 from firmware_bridge.trace import Gap
 from firmware_bridge.writer import Writer
@@ -145,7 +145,7 @@ def test_a_damaged_record_is_a_gap_and_a_remark(written):
     path.write_bytes(data)
     recording = open_mfr(path)
     assert (len(recording.gaps), recording.gaps[0].length) == (1, 10)
-    assert recording.remarks == ["1 damaged records were left out"]
+    assert recording.remarks == ["1 damaged records were left out", NO_END]
 
 
 def test_every_cut_of_the_tail_still_opens(written):

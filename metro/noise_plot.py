@@ -62,7 +62,7 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
     figures = require("matplotlib.figure", "bench", "--plot")
     frequencies = noise_frequencies(chain)
     noises = [displacement_noise(chain, f) for f in frequencies]
-    if not any(noise.total for noise in noises):
+    if not all(noise.total for noise in noises):
         raise MetroError(
             f"--plot has nothing to draw, no noise is known; needed: {_advice(noises[0])}"
         )

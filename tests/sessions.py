@@ -1,6 +1,7 @@
 """Sessions on the simulated bench for tests."""
 
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -45,11 +46,12 @@ def play(
     *,
     lines_s: float = 8.0,
     keep: Callable[[Step], bool] = lambda _step: True,
+    lean_rad: float = 0.0,
 ) -> tuple[SimulatedBench, dict[str, list[str]]]:
     """Play a session in memory and return the bench with its truth, and the files by role."""
     simulated_bench = SimulatedBench(bench, seed)
     steps = [step for step in session_steps(bench, lines_s) if keep(step)]
-    recordings = [(step.setup, folder / step.file) for step in steps]
+    recordings = [(replace(step.setup, lean_rad=lean_rad), folder / step.file) for step in steps]
     files: dict[str, list[str]] = {}
     for step, path in zip(steps, record_in_memory(simulated_bench, recordings), strict=True):
         files.setdefault(step.role.replace("-", "_"), []).append(str(path))

@@ -138,8 +138,8 @@ def _text(result: "Rehearsal", folder: Path) -> str:
             "",
             (
                 f"{inside} of {len(rows)} true values lie inside their 95 % interval "
-                "(one in twenty is expected outside; lines share the drive's and "
-                "the converter's scale, and miss together)"
+                "(one in twenty is expected outside; "
+                "all lines share the drive reading, so they miss together)"
             ),
             f"all files of the session, with a page (session.png) and a bench.toml: {folder}",
         ]

@@ -40,7 +40,8 @@ class Setup:
     """One state of the bench.
 
     ``beam`` is ``"both"``, ``"x"`` or ``"y"`` (one arm alone) or ``"blocked"``; ``slope`` is where
-    the operator holds the working point: ``"rising"``, ``"falling"`` or None (wherever it is).
+    the operator holds the working point: ``"rising"``, ``"falling"`` or None (wherever it is);
+    ``lean_rad`` how far from mid-fringe that is meant to be, towards the fringe's top.
     """
 
     role: str
@@ -49,12 +50,14 @@ class Setup:
     slope: str | None = None
     tones: tuple[Tone, ...] = field(default=())
     scan: Triangle | None = None
+    lean_rad: float = 0.0
 
     def working_phase_rad(self, rng: np.random.Generator) -> float:
         """Return where the operator leaves the fringe [rad]: near mid-fringe, or anywhere."""
         if self.slope is None:
             return float(rng.uniform(-pi, pi))
-        return MID_FRINGE_RAD[self.slope] + float(rng.normal(0.0, OPERATOR_SPREAD_RAD))
+        middle = MID_FRINGE_RAD[self.slope] + float(rng.normal(0.0, OPERATOR_SPREAD_RAD))
+        return middle * (1.0 - self.lean_rad / abs(middle))
 
 
 OPERATOR_SPREAD_RAD = 0.08  # how well a person sets mid-fringe with a voltmeter

@@ -280,7 +280,9 @@ def test_no_plot_without_any_noise(capsys, tmp_path):
     assert run(["expect", *arguments, "--plot", str(plot)]) == 2
     captured = capsys.readouterr()
     assert (captured.out, captured.err.count("\n")) == ("", 1)
-    assert captured.err.startswith("midfringe: --plot has nothing to draw, no noise is known; needed: ")
+    assert captured.err.startswith(
+        "midfringe: --plot has nothing to draw, no noise is known; needed: "
+    )
     assert list(tmp_path.iterdir()) == []
 
 

@@ -184,7 +184,7 @@ class Codes:
             Empty also where codes come in larger steps, as numbers that were rounded do.
         """
         used = np.flatnonzero(self._hits)
-        if self._is_too_wide or used.size < 2 * _BESIDE:
+        if self._is_too_wide or used.size <= 2 * _BESIDE:
             return []
         step = int(np.gcd.reduce(np.diff(used)))
         hits = self._hits[used[0] :: step]

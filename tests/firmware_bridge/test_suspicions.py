@@ -68,6 +68,14 @@ def test_missing_codes_are_found_and_only_those(step):
     assert found.missing() == [90 * step, 111 * step]
 
 
+def test_a_channel_of_few_codes_is_looked_at_too():
+    rng = np.random.default_rng(6)
+    for count in range(1, 20):
+        found = Codes(1.0, 0.0)
+        found.add(rng.integers(0, count, 5000).astype(float))
+        assert found.missing() == []
+
+
 def test_rounded_numbers_and_rare_codes_are_not_missing():
     rng = np.random.default_rng(4)
     volts = np.rint(np.rint(rng.normal(500, 60, 60_000)) * 3300 / 1024)  # 10 bits, printed in mV

@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.gap_reason import counted, gap_reason
 from firmware_bridge.recording import NO_END, MfrRecording
 from firmware_bridge.suspicions import Codes, Repetition, StuckRuns
 from firmware_bridge.trace import Recording
@@ -149,20 +150,16 @@ class _Suspicions:
                 )
             if state.missing_codes:
                 out.append(
-                    f"channel {state.name!r}: {_many(len(state.missing_codes), 'code')} absent though "
+                    f"channel {state.name!r}: {counted(len(state.missing_codes), 'code')} absent though "
                     f"the codes beside occur often (first: {state.missing_codes[0]})"
                 )
         if self.repetition.is_suspicious:
             first_s = self.repetition.repeated[0] / recording.rate_hz
             out.append(
-                f"{_many(len(self.repetition.repeated), 'block')} of {self.repetition.samples} "
+                f"{counted(len(self.repetition.repeated), 'block')} of {self.repetition.samples} "
                 f"samples equal to an earlier one in every value (first at {first_s:.6g} s)"
             )
         return out
-
-
-def _many(count: int, noun: str) -> str:
-    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
 
 
 def _channel_state(recording: Recording, position: int) -> ChannelState:
@@ -226,18 +223,14 @@ def _reasons(
 ) -> list[str]:
     reasons = []
     if recording.gaps:
-        lost = sum(gap.length for gap in recording.gaps)
-        reasons.append(
-            f"{len(recording.gaps)} gaps, {lost} of {recording.length} samples missing "
-            f"({lost / recording.length:.3%})"
-        )
+        reasons.append(gap_reason(recording.gaps, recording.length))
     estimated = sum(not gap.exact for gap in recording.gaps)
     if estimated:
-        reasons.append(f"{estimated} gaps have an estimated length")
+        reasons.append(f"{counted(estimated, 'gap')} of estimated length")
     if recording.over_range:
-        reasons.append(f"{recording.over_range} values are over-range")
+        reasons.append(f"{counted(recording.over_range, 'value')} over-range")
     if isinstance(recording, MfrRecording) and recording.damaged:
-        reasons.append(f"{recording.damaged} records are damaged")
+        reasons.append(counted(recording.damaged, "damaged record"))
     if isinstance(recording, MfrRecording) and not recording.has_end:
         reasons.append(NO_END)
     if isinstance(recording, MfrRecording) and recording.file.tail_bytes:

@@ -91,6 +91,9 @@ class Intake:
         self.flagged = 0
         """Frames flagged as over-range."""
         self.bytes_discarded = 0
+        self.discarded_midway = 0
+        """Of these the bytes between two frames that were kept; frames received twice not counted."""
+        self._discarded_since = 0  # the last frame that was kept
         self.is_complete = False
         """True once the duration or the size is reached."""
 
@@ -307,6 +310,8 @@ class Intake:
             if room is not None and len(frame.data) > room:
                 message = _shortened(message, room, frame)
             self._writer.append(message)
+        self.discarded_midway += self._discarded_since
+        self._discarded_since = 0
         self._last_ns = self._now_ns
         events = self._decoder.place(frame, message)
         if self._was_away:
@@ -360,6 +365,8 @@ class Intake:
 
     def _discard(self, piece: Discarded) -> None:
         self.bytes_discarded += piece.count
+        if self.files and not piece.reason.startswith("duplicate"):
+            self._discarded_since += piece.count
         self._unsaid[piece.reason.split(" index ")[0]] += piece.count
 
     def _say_discarded(self) -> None:

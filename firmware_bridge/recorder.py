@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.gap_reason import counted, gap_reason
 from firmware_bridge.intake import Intake
 from firmware_bridge.port import ByteSource, open_port
 from firmware_bridge.recording import open_mfr
@@ -43,6 +44,9 @@ class RecordSummary:
         Rate of the last file, and its standard uncertainty where a clock tells it.
     remarks : list of str
         What is odd about the recordings.
+    discarded_midway : int
+        Of the bytes discarded those between frames that were kept: not the first message, which is
+        seldom received from its beginning, and not frames received twice.
     """
 
     file: Path | None
@@ -55,6 +59,15 @@ class RecordSummary:
     rate_hz: float | None = None
     rate_u_hz: float | None = None
     remarks: list[str] = field(default_factory=list)
+    discarded_midway: int = 0
+
+    @property
+    def reasons(self) -> list[str]:
+        """Why the recording must not be trusted as it is; empty where nothing was lost."""
+        found = [gap_reason(self.gaps, self.samples)] if self.gaps else []
+        if self.discarded_midway:
+            found.append(f"{counted(self.discarded_midway, 'byte')} discarded midway")
+        return found
 
 
 def record(
@@ -157,4 +170,5 @@ def _summary(intake: Intake) -> RecordSummary:
         recordings[-1].rate_hz,
         recordings[-1].rate_u_hz,
         list(dict.fromkeys(remark for recording in recordings for remark in recording.remarks)),
+        intake.discarded_midway,
     )

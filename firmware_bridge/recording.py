@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.gap_reason import counted
 from firmware_bridge.host_note import End, Join, Pieces, Remark, Stamp, parse_host_note
 from firmware_bridge.line_clock import FrameClocks, LineClock
 from firmware_bridge.message import MessageError, MessageType, Note, parse_message
@@ -184,8 +185,8 @@ class MfrRecording(Recording):
 
     def _say(self) -> list[str]:
         said = [
-            (self.damaged, f"{self.damaged} damaged records were left out"),
-            (self.duplicates, f"{self.duplicates} records were there twice"),
+            (self.damaged, f"{counted(self.damaged, 'damaged record')} left out"),
+            (self.duplicates, f"{counted(self.duplicates, 'record')} there twice"),
             (not self.has_end, NO_END),
             (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
             (len(self._joins) > 1, "the board was restarted or reconnected"),

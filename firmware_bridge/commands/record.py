@@ -7,7 +7,7 @@ from typing import Any
 
 import click
 
-from metro.options import ValueType, command, is_quiet, output_options
+from metro.options import ValueType, command, distrust, is_quiet, output_options
 
 __all__ = ["record"]
 
@@ -75,7 +75,7 @@ def record(
     """Record a serial port without losing a sample unnoticed.
 
     Ends after --duration, before --size is exceeded, or with Ctrl-C. A recording that changes its channels or rate goes on in
-    NAME-2.mfr.
+    NAME-2.mfr. The exit code is 1 where samples were lost or bytes discarded midway.
     """
     from firmware_bridge.byte_size import parse_byte_size
     from firmware_bridge.live_line import LiveLine
@@ -118,6 +118,8 @@ def record(
     if not is_quiet():
         for remark in summary.remarks:
             click.echo(remark, err=True)
+    if summary.reasons:
+        distrust(summary.reasons)
 
 
 def _gaps(summary: Any) -> list[dict[str, Any]]:  # noqa: ANN401
@@ -138,6 +140,7 @@ def _document(summary: Any) -> dict[str, Any]:  # noqa: ANN401
         "duration": {"value": summary.duration_s, "unit": "s", "u": None},
         "rate": {"value": summary.rate_hz, "unit": "Hz", "u": summary.rate_u_hz},
         "remarks": summary.remarks,
+        "reasons": summary.reasons,
     }
 
 

@@ -29,9 +29,9 @@ def run_to_end(*arguments):
 
 
 @contextlib.contextmanager
-def board_on(link, frames, *, paced=False):
+def board_on(link, frames, *, paced=False, damage=None):
     """A board that starts when it is asked for the first time."""
-    board = WireBoard(link)
+    board = WireBoard(link) if damage is None else WireBoard(link, damage=damage)
 
     def run():
         while not link.received():
@@ -66,6 +66,35 @@ def test_json_has_the_agreed_keys_and_nothing_else_is_on_stdout(tmp_path):
     assert document["bytes_discarded"] == 0
     assert document["duration"] == {"value": 1.5, "unit": "s", "u": None}
     assert open_mfr(path).length == 3000
+
+
+def test_lost_samples_end_with_one_and_the_reason(tmp_path):
+    path = tmp_path / "a.mfr"
+    with board_on(PtyLink(), 100, damage=lambda k, frame: b"" if k == 7 else frame) as board:
+        arguments = ("--port", board.link.port, "--out", str(path), "--duration", "1.5s")
+        code, out, err = run_to_end(*arguments, "--json")
+    reason = "1 gap, 50 of 3000 samples missing (1.667%)"
+    assert (code, err) == (1, f"not to be trusted: {reason}\n")
+    document = json.loads(out)
+    assert (document["samples"], document["reasons"]) == (3000, [reason])
+
+
+def test_bytes_discarded_midway_end_with_one_and_those_before_the_first_message_do_not(tmp_path):
+    noise = b"\0noise on the line\0"
+    for number, expected in ((0, 0), (7, 1)):
+        path = tmp_path / f"{number}.mfr"
+        link = PtyLink()
+
+        def damage(k, frame, number=number):
+            return noise + frame if k == number else frame
+
+        with board_on(link, 100, damage=damage) as board:
+            code, out, err = run_to_end(
+                "--port", board.link.port, "--out", str(path), "--duration", "1.5s", "--json"
+            )
+        assert json.loads(out)["bytes_discarded"] == len(noise) - 2
+        said = "not to be trusted: 17 bytes discarded midway\n" if expected else ""
+        assert (code, err) == (expected, said)
 
 
 @pytest.mark.parametrize("how", [signal.SIGINT, signal.SIGTERM])

@@ -116,6 +116,12 @@ def test_damaged_frames_become_exact_gaps_of_the_recording(pty, tmp_path, in_bac
     gaps = [Gap(3 * SLOTS, 2 * SLOTS), Gap(8 * SLOTS, SLOTS)]
     assert summary.gaps == gaps
     assert summary.bytes_discarded > 2 * 4 * SLOTS
+    # Of the two pieces, the frame that came twice costs nothing.
+    assert 4 * SLOTS < summary.discarded_midway < summary.bytes_discarded - 4 * SLOTS
+    assert summary.reasons == [
+        "2 gaps, 150 of 1000 samples missing (15.000%)",
+        f"{summary.discarded_midway} bytes discarded midway",
+    ]
     check_ramp(tmp_path / "a.mfr", 1000, gaps)
 
 

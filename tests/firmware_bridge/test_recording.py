@@ -145,7 +145,7 @@ def test_a_damaged_record_is_a_gap_and_a_remark(written):
     path.write_bytes(data)
     recording = open_mfr(path)
     assert (len(recording.gaps), recording.gaps[0].length) == (1, 10)
-    assert recording.remarks == ["1 damaged records were left out", NO_END]
+    assert recording.remarks == ["1 damaged record left out", NO_END]
 
 
 def test_every_cut_of_the_tail_still_opens(written):

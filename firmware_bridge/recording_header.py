@@ -119,14 +119,18 @@ def parse_header(data: bytes, path: str) -> tuple[Header, int]:
     RecordingError
         If this is no recording, is newer than this program, or is damaged.
     """
-    if len(data) < _FIXED.size or not data.startswith(MAGIC):
+    if not data or not data.startswith(MAGIC[: len(data)]):
         raise RecordingError(f"{path} is no recording: it does not begin as an .mfr file does")
+    if len(data) < _FIXED.size:
+        raise RecordingError(f"{path} ends within its header: {len(data)} bytes")
     _, major, minor, length, record, _, created_ns, announced, described = _FIXED.unpack_from(data)
     if major > MAJOR:
         raise RecordingError(
             f"{path} has recording format {major}.{minor}; this program reads up to {MAJOR}"
         )
     content = _FIXED.size + announced + described
+    if len(data) < length == -(-(content + 4) // 64) * 64 <= _LENGTH_MAX:
+        raise RecordingError(f"{path} ends within its header: {len(data)} of {length} bytes")
     if not content + 4 <= length <= min(len(data), _LENGTH_MAX) or crc32(data[:length]) != SEALED:
         raise RecordingError(f"{path}: the header of the recording is damaged")
     try:

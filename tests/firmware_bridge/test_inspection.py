@@ -102,6 +102,20 @@ def test_a_file_cut_within_a_record_is_not_sound(written):
     assert inspect_recording(open_mfr(path)).reasons == ["the file ends within a record"]
 
 
+def test_one_of_a_kind_is_said_in_the_singular(written):
+    path = written(noise(), drop=(3,))
+    content = bytearray(path.read_bytes())
+    recording = open_mfr(path)
+    first = len(content) - recording.file.count * recording.file.record_bytes
+    content[first + 100] ^= 1
+    path.write_bytes(content)
+    assert inspect_recording(open_mfr(path)).reasons == [
+        "1 gap, 50 of 59950 samples missing (0.083%)",
+        "1 damaged record",
+    ]
+    assert open_mfr(path).remarks == ["1 damaged record left out"]
+
+
 def test_over_range_is_counted(written):
     samples = noise()
     samples[70, 0] = 32767

@@ -165,6 +165,25 @@ def test_indices_that_cannot_be_true_are_refused(written):
     assert str(error.value) == f"{path} spans {2**63 + 10} samples, more than can be true"
 
 
+@pytest.mark.parametrize("length", [1, 8, 20, 39, 40, 64, 191])
+def test_a_recording_cut_within_its_header_says_so(tmp_path, length):
+    path = tmp_path / "a.mfr"
+    whole = encode_header(Header(announced()))
+    path.write_bytes(whole[:length])
+    with pytest.raises(RecordingError) as error:
+        open_mfr(path)
+    assert str(error.value).startswith(f"{path} ends within its header: {length} ")
+    assert length < len(whole)
+
+
+@pytest.mark.parametrize("content", [b"", b"mfr", b"\x8bmfr\n"])
+def test_what_does_not_begin_as_a_recording_is_none(tmp_path, content):
+    path = tmp_path / "a.mfr"
+    path.write_bytes(content)
+    with pytest.raises(RecordingError, match=r"does not begin as an \.mfr file does$"):
+        open_mfr(path)
+
+
 def test_a_newer_format_is_refused_by_name(tmp_path):
     data = bytearray(encode_header(Header(announced())))
     struct.pack_into("<H", data, 8, 2)

@@ -1,9 +1,14 @@
 """``midfringe export``: recording to CSV, NPZ or HDF5."""
 
+from typing import TYPE_CHECKING
+
 import click
 
 from firmware_bridge.reading import Reading, recording_options
 from metro.options import command, is_quiet, output_options
+
+if TYPE_CHECKING:
+    from firmware_bridge.trace import Recording
 
 __all__ = ["export"]
 
@@ -36,7 +41,14 @@ def export(file: str, reading: Reading, out: str | None, as_json: bool, overwrit
     if as_json:
         from metro.output import to_json
 
-        click.echo(to_json({"file": out, "samples": samples}))
+        document = {"file": out, "samples": samples, "missing": _missing(recording, reading)}
+        click.echo(to_json(document))
     elif not is_quiet():
-        missing = sum(gap.length for gap in recording.gaps)
-        click.echo(f"{out}: {samples} samples ({missing} missing in the recording)")
+        click.echo(f"{out}: {samples} samples ({_missing(recording, reading)} missing)")
+
+
+def _missing(recording: "Recording", reading: Reading) -> int:
+    """Return how many samples the gaps take from the stretch that was written."""
+    start, stop = recording.span(reading.from_s, reading.to_s)
+    parts = [(max(gap.index, start), min(gap.index + gap.length, stop)) for gap in recording.gaps]
+    return sum(max(0, last - first) for first, last in parts)

@@ -158,7 +158,7 @@ def test_the_command(tmp_path):
     source.write_text("".join(f"{k / 100},{k}\n" for k in range(50)))
     result = CliRunner().invoke(cli, ["export", str(source), "--out", str(out), "--json"])
     assert result.exit_code == 0
-    assert json.loads(result.stdout) == {"file": str(out), "samples": 50}
+    assert json.loads(result.stdout) == {"file": str(out), "samples": 50, "missing": 0}
     assert "taken as time in seconds" in result.stderr
     result = CliRunner().invoke(
         cli,
@@ -177,6 +177,23 @@ def test_the_command(tmp_path):
     )
     assert (result.exit_code, result.output) == (0, "")
     assert open_recording(out).length == 10
+
+
+@pytest.mark.parametrize(
+    ("stretch", "missing"), [([], 5), (["--to", "220ms"], 2), (["--from", "1s"], 0)]
+)
+def test_the_command_says_how_many_samples_are_missing(capsys, tmp_path, stretch, missing):
+    source = tmp_path / "in.csv"
+    rows = (k for k in range(200) if not 20 <= k < 25)
+    source.write_text("t (s),u (V)\n" + "".join(f"{k / 100},{k % 7}\n" for k in rows))
+    for form in (["--json"], []):
+        line = ["export", str(source), "--out", str(tmp_path / "x.npz"), "--overwrite"]
+        assert run([*line, *stretch, *form]) == 0
+        said = capsys.readouterr().out
+        if form:
+            assert json.loads(said)["missing"] == missing
+        else:
+            assert said.endswith(f" samples ({missing} missing)\n")
 
 
 def test_a_real_stream_keeps_its_gaps(tmp_path):

@@ -70,8 +70,12 @@ def check_document(
 
     Parameters
     ----------
-    path, overwrite, inputs
-        As for :func:`check_writable`.
+    path : path
+        The file to be.
+    overwrite : bool
+        Whether an existing file may be replaced.
+    inputs : iterable of path or None
+        Files that are read for it, as for :func:`check_writable`.
 
     Returns
     -------

@@ -7,7 +7,7 @@ import click
 from metro.bench import Bench
 from metro.figure_file import check_figure
 from metro.options import bench_options, command, distrust, is_quiet, output_options
-from metro.output import check_writable, to_json, write_whole
+from metro.output import check_document, check_writable, to_json, write_whole
 
 __all__ = ["calibrate"]
 
@@ -53,9 +53,11 @@ def calibrate(
     from calibration.analysis import calibrate as run
     from calibration.summary import calibration_text
 
+    inputs = [bench.path, *(path for paths in roles.values() for path in paths)]
     if out is not None:
-        check_writable(out, overwrite)
+        check_document(out, overwrite, inputs)
     if plot is not None:
+        check_writable(plot, overwrite, inputs)
         check_figure(plot, overwrite=overwrite)
     result = run(bench, **roles)
     document = to_json(result.to_dict())

@@ -54,7 +54,7 @@ def convert(
 
     if out is None:
         raise click.UsageError("--out must name the file to write (.csv, .npz or .h5), got none")
-    check_writable(out, overwrite)
+    check_writable(out, overwrite, [file, calibration_file])
     source = reading.open(file)
     calibration = load(calibration_file)
     converted = ConvertedRecording(

@@ -61,7 +61,7 @@ def emit(
 
     if out is None:
         raise click.UsageError("--out must name the file to write, such as converter.h, got none")
-    check_writable(out, overwrite)
+    check_writable(out, overwrite, [calibration_file, bench.path])
     calibration = None if calibration_file is None else load(calibration_file)
     if calibration is None:
         fringe = fringe_of_bench(bench, slope, is_signed=codes == "signed")

@@ -76,10 +76,10 @@ def fringe(
     from calibration.errors import CalibrationError
     from calibration.found_extremes import usable_scan
     from calibration.fringe_reading import read_fringe
-    from metro.output import check_writable, to_json, write_whole
+    from metro.output import check_document, to_json, write_whole
 
     if out is not None:
-        check_writable(out, overwrite)
+        check_document(out, overwrite, [file, extremes_file, dark, bench.path])
     lines = list(lines_hz) or [line.frequency_hz for line in bench.lines]
     if not lines:
         raise CalibrationError("--line is needed: the frequency of each driven line, such as 1kHz")

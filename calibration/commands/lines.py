@@ -54,10 +54,10 @@ def lines(
     named "drive" is the drive.
     """
     from calibration.line_reading import read_lines
-    from metro.output import check_writable, to_json, write_whole
+    from metro.output import check_document, to_json, write_whole
 
     if out is not None:
-        check_writable(out, overwrite)
+        check_document(out, overwrite, [file, bench.path])
     recording = reading.open(file)
     reading = _with_drive(reading, recording, bench)
     fit = read_lines(

@@ -256,6 +256,15 @@ def test_commands_refuse_in_one_line(session, tmp_path, capsys):
         ["convert", rising, "--calibration", rising, "--out", str(tmp_path / "x.csv")],
         ["convert", rising, "--calibration", str(cal), "--out", str(tmp_path / "x.doc")],
         ["convert", rising, "--calibration", str(cal), "--out", str(cal)],
+        ["convert", rising, "--calibration", str(cal), "--out", str(cal), "--overwrite"],
+        ["lines", rising, "--line", "87.1Hz", "--out", rising, "--overwrite"],
+        ["lines", rising, "--line", "87.1Hz", "--out", str(tmp_path / "x.mfr")],
+        ["fringe", rising, "--line", "87.1Hz", "--out", rising, "--overwrite"],
+        ["emit", "c", "--calibration", str(cal), "--out", str(cal), "--overwrite"],
+        [
+            *("calibrate", "--bench", str(BENCH_FILE), "--scan", rising, "--lines-rising", rising),
+            *("--out", rising, "--overwrite"),
+        ],
         ["rehearse", "--seed", "-1"],
         ["rehearse", "--trials", "0"],
     ):
@@ -264,6 +273,7 @@ def test_commands_refuse_in_one_line(session, tmp_path, capsys):
         assert said.out == "", arguments
         assert said.err.count("\n") == 1, said.err
     assert load(cal).to_dict() == calibration.to_dict()
+    assert [path.name for path in tmp_path.iterdir()] == ["cal.json"]
 
 
 @pytest.mark.parametrize(

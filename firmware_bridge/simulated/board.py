@@ -158,11 +158,10 @@ class SimulatedBoard:
         with self._lock:
             self._setup = setup
             self._number += 1
-            self._halt()
-
-    def _halt(self) -> None:
-        self._source, self._outbox = None, b""
-        termios.tcflush(self._slave, termios.TCIFLUSH)
+            self._source, self._outbox = None, b""
+            # Only here, while nobody reads: a reader would find a port that was ready and is empty,
+            # which is how a port looks that is gone.
+            termios.tcflush(self._slave, termios.TCIFLUSH)
 
     def _run(self) -> None:
         decoder = Decoder()
@@ -189,13 +188,14 @@ class SimulatedBoard:
                 self._answer(event)
 
     def _answer(self, command: Command) -> None:
-        if command.code == CommandCode.START:
-            self._halt()
+        if command.code == CommandCode.START and self._source is not None:
+            self._outbox += encode_reply(Reply(command.code, command.request))  # sends already
+        elif command.code == CommandCode.START:
             self._stream += 1
             self._outbox = encode_reply(Reply(command.code, command.request))
             self._source = wire_bytes(self._bench, self._setup, self._stream, self._number)
         elif command.code == CommandCode.STOP:
-            self._halt()
+            self._source = None
             self._outbox = encode_reply(Reply(command.code, command.request))
         elif command.code == CommandCode.IDENTIFY:
             self._outbox += encode_announcement(announcement_of(self._bench, self._stream))

@@ -41,7 +41,7 @@ def test_the_two_commands_stand_there():
     installs = [line for line in lines if line.startswith(INSTALLS)]
     assert len(installs) == 2
     assert installs[0].endswith("midfringe rehearse")
-    assert installs[1].endswith("pytest -q")
+    assert installs[1].endswith("pytest -q -n 2")
 
 
 def test_every_command_runs(session, monkeypatch):

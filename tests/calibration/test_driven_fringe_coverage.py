@@ -67,7 +67,7 @@ def test_coverage_of_small_records(kind):
     assert np.abs(errors[:, 0]).max() < 6
 
 
-@pytest.mark.slow
+@pytest.mark.trials
 @pytest.mark.parametrize(("kind", "count"), [("deep", 400), ("given", 400), ("drift", 200)])
 def test_coverage_at_the_acceptance_size(kind, count):
     errors, inside, fits = run(kind, count, 20_000)

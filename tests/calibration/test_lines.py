@@ -190,7 +190,7 @@ def test_intervals_cover(kind):
     assert 0.85 < spread < 1.15
 
 
-@pytest.mark.slow
+@pytest.mark.trials
 @pytest.mark.parametrize("kind", KINDS)
 def test_intervals_cover_in_4000_records(kind):
     share, spread = _coverage(kind, 4000)
@@ -199,7 +199,7 @@ def test_intervals_cover_in_4000_records(kind):
     assert 0.97 < spread < 1.03
 
 
-@pytest.mark.slow
+@pytest.mark.trials
 @pytest.mark.parametrize(("kind", "within"), [("white", 0.03), ("walk", 0.05)])
 def test_lines_reach_the_bound(kind, within):
     # Cramér–Rao in white noise: √(2/N)·σ; in 1/f² noise √(S(f)/T), for steps of variance s² at rate r
@@ -216,7 +216,7 @@ def test_lines_reach_the_bound(kind, within):
 
 
 @pytest.mark.parametrize(
-    ("records", "within"), [(20, 0.15), pytest.param(600, 0.04, marks=pytest.mark.slow)]
+    ("records", "within"), [(20, 0.15), pytest.param(600, 0.04, marks=pytest.mark.trials)]
 )
 def test_displacements_under_a_large_drift_have_honest_errors(records, within):
     # What a calibration hands over: metres, lines of nanometres under a random walk a hundred times

@@ -57,7 +57,7 @@ def test_extremes_lie_within_their_uncertainty():
     assert abs(got[:, 3].mean()) < 3e-4
 
 
-@pytest.mark.slow
+@pytest.mark.trials
 def test_normalised_errors_have_unit_width():
     got = pulls(range(1000, 1400))
     assert np.all(np.abs(got[:, :3].mean(axis=0)) < 0.15)

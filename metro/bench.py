@@ -305,13 +305,22 @@ class Bench:
         Returns
         -------
         list of (str, str, str)
-            Key, value as written, source.
+            Key, value as written, source; then the drive lines and the arms' own motion.
         """
-        return [
+        entries = [
             (key, str(self.entries[key]), self.entries[key].source)
             for key in KEYS
             if key in self.entries
         ]
+        lines = [
+            (f"line {number}", str(line), f"{self.path}, [[line]]")
+            for number, line in enumerate(self.lines, 1)
+        ]
+        motion = [
+            (f"motion {number}", str(point), f"{self.path}, [[motion]]")
+            for number, point in enumerate(self.motion, 1)
+        ]
+        return [*entries, *lines, *motion]
 
 
 def _key_of(name: str) -> str:

@@ -3,6 +3,7 @@
 from collections.abc import Iterable
 from dataclasses import dataclass
 
+from metro.display import show
 from metro.errors import MetroError
 from metro.measured import Measured
 
@@ -35,6 +36,11 @@ class BenchLine:
     drive_v: float | None = None
     drive_u_v: float = 0.0
 
+    def __str__(self) -> str:
+        drive = "drive not given" if self.drive_v is None else f"drive {show(self.drive_v, 'V', 7)}"
+        u = f", u = {show(self.drive_u_v, 'V', 3)}" if self.drive_u_v else ""
+        return f"{show(self.frequency_hz, 'Hz', 10)}, {drive}{u}"
+
 
 @dataclass(frozen=True, slots=True)
 class MotionPoint:
@@ -50,6 +56,10 @@ class MotionPoint:
 
     frequency_hz: float
     density_m: float
+
+    def __str__(self) -> str:
+        density = show(self.density_m, "m/Hz**0.5", 5)
+        return f"{density} at {show(self.frequency_hz, 'Hz', 10)}"
 
 
 @dataclass(frozen=True, slots=True)

@@ -78,7 +78,7 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
     )
     axes.grid(visible=True, which="both", alpha=0.25)
     axes.set(xscale="log", yscale="log")
-    axes.legend()
+    figure.legend(loc="outside lower center", ncols=4, frameon=False)
     _strain_axis(axes, chain)
     _say_what_is_missing(axes, noises[0])
     return figure

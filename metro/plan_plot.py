@@ -36,7 +36,7 @@ def plan_figure(plan: Plan, bench: Bench) -> Figure:
         If matplotlib is not installed.
     """
     figure = require("matplotlib.figure", "bench", "--plot").Figure(
-        figsize=(8.0, 8.0), layout="constrained"
+        figsize=(9.5, 7.5), layout="constrained"
     )
     above, below = figure.subplots(2, 1, height_ratios=(3, 2))
     _draw_lines(above, plan, bench)
@@ -68,7 +68,7 @@ def _draw_lines(axes: Any, plan: Plan, bench: Bench) -> None:  # noqa: ANN401  #
         ylabel="displacement amplitude [nm]",
         title=f"Plan for u = {100 * plan.wanted_u:.3g} %: {plan.duration_s:g} s on each slope",
     )
-    axes.legend(loc="best")
+    axes.legend(loc="upper left", bbox_to_anchor=(1.01, 1.0), frameon=False)
     axes.grid(visible=True, which="both", alpha=0.3)
 
 
@@ -81,4 +81,4 @@ def _draw_shares(axes: Any, plan: Plan) -> None:  # noqa: ANN401  # matplotlib's
     axes.axhline(100 * plan.wanted_u, color="tab:red", linestyle="--", label="wanted")
     axes.set_xticks(list(places), [f"{line.frequency_hz:g}" for line in plan.lines])
     axes.set(xlabel="line [Hz]", ylabel="relative standard uncertainty [%]")
-    axes.legend(loc="lower right")
+    axes.legend(loc="upper left", bbox_to_anchor=(1.01, 1.0), frameon=False)

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
 
 __all__ = ["expect"]
 
+_DIGITS = 7  # of a number without an uncertainty: a part in a million still shows
 _GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
 
 
@@ -174,37 +175,59 @@ def _page(expectation: Expectation) -> str:
             "conventions", [f"{name}: {text}" for name, text in expectation.conventions.items()]
         ),
         _texts("cautions", expectation.cautions),
+        _bench_table(expectation.sources),
     ]
-    if expectation.sources:
-        rows = [
-            (key, entry["value"], entry["source"]) for key, entry in expectation.sources.items()
-        ]
-        parts.append(table(rows, ("the bench", "value", "from")))
     return "\n\n".join(part for part in parts if part)
 
 
 def _rows(values: dict[str, Measured | None]) -> list[tuple[str, str]]:
     """Return names and values; no word of uncertainty where the bench gives none."""
+    return [(name.replace("_", " "), _cell(value)) for name, value in values.items()]
+
+
+def _cell(value: Measured | None) -> str:
     from metro.display import show, show_measured
 
-    return [
-        (
-            name.replace("_", " "),
-            "unknown"
-            if value is None
-            else show(value.magnitude, value.unit, 10)
-            if value.u_magnitude is None
-            else show_measured(value),
-        )
-        for name, value in values.items()
-    ]
+    if value is None:
+        return "unknown"
+    if value.u_magnitude is None:
+        return show(value.magnitude, value.unit, _DIGITS)
+    return show_measured(value)
 
 
 def _noise_rows(expectation: Expectation) -> list[tuple[str, str, str]]:
-    displacement, strain = _rows(expectation.noise), _rows(expectation.noise_strain)
-    return [
-        (name, here, there) for (name, here), (_, there) in zip(displacement, strain, strict=True)
+    """Return one row a source, those that are not given last and together."""
+    displacement, strain = expectation.noise, expectation.noise_strain
+    unknown = [name.replace("_", " ") for name, value in displacement.items() if value is None]
+    rows = [
+        (name.replace("_", " "), _cell(value), _cell(strain[name]))
+        for name, value in displacement.items()
+        if value is not None
     ]
+    return [*rows, *((name, "not given", "") for name in unknown)]
+
+
+def _bench_table(sources: dict[str, dict[str, str]]) -> str:
+    """Return every value of the bench with where it came from, the file named once."""
+    from metro.output import table
+
+    if not sources:
+        return ""
+    files = {
+        entry["source"].partition(", [")[0]
+        for entry in sources.values()
+        if ", [" in entry["source"]
+    }
+    file = files.pop() if len(files) == 1 else ""
+    rows = [
+        (
+            key,
+            entry["value"],
+            entry["source"].removeprefix(f"{file}, ") if file else entry["source"],
+        )
+        for key, entry in sources.items()
+    ]
+    return table(rows, ("the bench", "value", f"from {file}" if file else "from"))
 
 
 def _texts(title: str, texts: list[str]) -> str:

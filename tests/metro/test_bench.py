@@ -89,7 +89,11 @@ def test_where_values_came_from(bench):
     assert rows["arms.length"] == ("1 m", "option --arm")
     assert rows["air.temperature"][0] == "21.3 °C, u = 0.3 °C"
     assert rows["laser.source"][0] == "He-Ne, unstabilised"
-    assert list(rows) == [key for key in KEYS if key in rows]
+    assert [key for key in rows if "." in key] == [key for key in KEYS if key in rows]
+    assert [key for key in rows if "." not in key] == [
+        f"line {number}" for number in range(1, len(over.lines) + 1)
+    ]
+    assert rows["line 1"][1].endswith("bench.toml, [[line]]")
 
 
 def test_without_a_file():

@@ -148,7 +148,8 @@ def test_page_for_people(capsys, tmp_path):
         "displacement  1 nm",
         "phase         19.852400 mrad, U = 0.000061 mrad (95 %)",
     ]
-    assert f"laser.wavelength  632.99 nm, u = 1 pm  {bench}, [laser] wavelength" in lines
+    assert f"the bench         value                from {bench}" in lines
+    assert "laser.wavelength  632.99 nm, u = 1 pm  [laser] wavelength" in lines
 
 
 def test_out_file(capsys, tmp_path):

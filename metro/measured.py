@@ -204,6 +204,47 @@ class Measured:
         dof = document.get("dof")
         return cls.of(_restored(value), unit, _restored(u), math.inf if dof is None else dof)
 
+    def to_ufloat(self) -> Any:  # noqa: ANN401  # of uncertainties, scalar or array
+        """Return the value as the ``uncertainties`` package holds it, in SI units.
+
+        Returns
+        -------
+        uncertainties.UFloat or ndarray of UFloat
+            Standard deviation NaN where the uncertainty is unknown. Values from one result are
+            taken as independent; degrees of freedom are not carried along.
+        """
+        from uncertainties import ufloat
+
+        u = math.nan if self._u is None else self._u
+        if not getattr(self._magnitude, "shape", ()):
+            return ufloat(float(self._magnitude), float(u))
+        from uncertainties.unumpy import uarray
+
+        return uarray(self._magnitude, u + 0 * self._magnitude)
+
+    def to_numpy(self) -> Any:  # noqa: ANN401  # ndarray, shape (…, 2)
+        """Return value and standard uncertainty as one array, in SI units.
+
+        Returns
+        -------
+        ndarray, shape (..., 2)
+            The value, then its standard uncertainty; NaN where that is unknown.
+        """
+        import numpy as np
+
+        value = np.asarray(self._magnitude, dtype=float)
+        u = (
+            np.full_like(value, np.nan)
+            if self._u is None
+            else np.broadcast_to(self._u, value.shape)
+        )
+        return np.stack([value, u], axis=-1)
+
+    def _repr_html_(self) -> str:
+        from html import escape
+
+        return escape(str(self))
+
     def __str__(self) -> str:
         from metro.display import show_measured
 

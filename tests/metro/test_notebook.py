@@ -59,7 +59,7 @@ def test_scalar_to_uncertainties_and_numpy():
     doubled = 2 * value.to_ufloat()
     assert (doubled.nominal_value, doubled.std_dev) == pytest.approx((4.0, 0.2))
     assert value.to_numpy() == pytest.approx([2.0, 0.1])
-    assert value._repr_html_() == "2 V, U = 0.2 V (95 %)"
+    assert value._repr_html_() == "2.0 V, U = 0.2 V (95 %)"
 
 
 def test_array_to_uncertainties_and_numpy():

@@ -1,6 +1,5 @@
 """The recordings of one session by role, opened and read channel by channel."""
 
-import hashlib
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from os import PathLike
@@ -9,6 +8,7 @@ from pathlib import Path
 import numpy as np
 
 from calibration.errors import CalibrationError
+from calibration.file_hash import sha256_of
 from firmware_bridge.opening import open_recording
 from firmware_bridge.trace import Recording, Trace
 from metro.bench import Bench
@@ -49,7 +49,7 @@ class RoleRecord:
         return {
             "role": self.role,
             "file": Path(self.path).name,
-            "sha256": _sha256(self.path),
+            "sha256": sha256_of(self.path),
             "samples": self.length,
             "rate": Measured.of(self.photodiode.rate_hz, "Hz").to_dict(),
             "remarks": list(self.remarks),
@@ -153,11 +153,3 @@ def _drive(recording: Recording, bench: Bench) -> Trace | None:
     if wanted is not None:
         return recording.trace(wanted)
     return recording.trace("name:drive") if "drive" in names else None
-
-
-def _sha256(path: str) -> str:
-    digest = hashlib.sha256()
-    with Path(path).open("rb") as file:
-        while chunk := file.read(1 << 20):
-            digest.update(chunk)
-    return digest.hexdigest()

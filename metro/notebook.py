@@ -62,7 +62,9 @@ class NotebookPage:
         return "\n".join([*tables, *([] if figure is None else [html_picture(figure)])])
 
 
-def html_table(rows: Iterable[Sequence[Any]], header: Sequence[str] = ()) -> str:
+def html_table(
+    rows: Iterable[Sequence[Any]], header: Sequence[str] = (), style: str = _CELL
+) -> str:
     """Return rows as an HTML table.
 
     Parameters
@@ -71,6 +73,8 @@ def html_table(rows: Iterable[Sequence[Any]], header: Sequence[str] = ()) -> str
         Cells, as :func:`metro.output.table` takes them.
     header : sequence of str
         Names of the columns.
+    style : str
+        CSS of each cell; empty where the page has a style sheet of its own.
 
     Returns
     -------
@@ -79,10 +83,10 @@ def html_table(rows: Iterable[Sequence[Any]], header: Sequence[str] = ()) -> str
     """
     from metro.display import show_any
 
+    styled = f' style="{style}"' if style else ""
+
     def line(cells: Sequence[Any], tag: str) -> str:
-        inside = "".join(
-            f'<{tag} style="{_CELL}">{escape(show_any(cell))}</{tag}>' for cell in cells
-        )
+        inside = "".join(f"<{tag}{styled}>{escape(show_any(cell))}</{tag}>" for cell in cells)
         return f"<tr>{inside}</tr>"
 
     head = f"<thead>{line(header, 'th')}</thead>" if header else ""

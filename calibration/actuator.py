@@ -11,7 +11,7 @@ from calibration.extremes import Extremes
 from calibration.readout import Readout
 from calibration.record import ActuatorEntry
 from calibration.slope_line import CombinedLine
-from calibration.term import FRINGE_EXTREMES, Term, budget_of
+from calibration.term import FRINGE_EXTREMES, LINE_FIT, Term, budget_of
 from metro.bench import Bench
 from metro.drive import terminal_factor
 from metro.measured import Measured
@@ -152,7 +152,7 @@ def _fit_terms(line: CombinedLine) -> list[Term]:
     for number, (covariance, dof) in enumerate(line.parts, start=1):
         size = _u_along(covariance, along) / abs(line.ratio)
         turn = _u_along(covariance, across) / abs(line.ratio)
-        name = f"line fit, record {number}"
+        name = f"{LINE_FIT}, record {number}"
         terms.append(Term(name, None, "1", size, relative=1.0, kind="A", dof=dof))
         terms.append(Term(name, None, "rad", turn, turn=1.0, kind="A", dof=dof))
     return terms

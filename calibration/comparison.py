@@ -2,12 +2,15 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from math import sqrt
 from typing import Any
 
 import numpy as np
 
 from calibration.record import Calibration
+from calibration.term import LINE_FIT
 from firmware_bridge.simulated.truth import Truth
+from metro.budget import Budget
 from metro.measured import Measured
 
 __all__ = ["Comparison", "compare", "name_of"]
@@ -15,11 +18,25 @@ __all__ = ["Comparison", "compare", "name_of"]
 
 @dataclass(frozen=True)
 class Comparison:
-    """One quantity: the truth, what was measured, and how they compare."""
+    """One quantity: the truth, what was measured, and how they compare.
+
+    Parameters
+    ----------
+    name : str
+        Such as ``"actuator@87.1Hz"``.
+    truth : float
+        In the unit of ``measured``.
+    measured : Measured
+        Result of the analysis.
+    efficiency : float or None
+        Least u that the noise allows over the u of the line fits in the budget; None where the
+        quantity does not rest on a line's noise.
+    """
 
     name: str
     truth: float
     measured: Measured
+    efficiency: float | None = None
 
     @property
     def normalised_error(self) -> float:
@@ -42,7 +59,10 @@ def name_of(quantity: str, frequency_hz: float) -> str:
 
 
 def compare(
-    calibration: Calibration, truth: Truth, displacements: Mapping[float, tuple[float, Measured]]
+    calibration: Calibration,
+    truth: Truth,
+    displacements: Mapping[float, tuple[float, Measured]],
+    bounds: Mapping[float, float] | None = None,
 ) -> list[Comparison]:
     """Return every measured quantity beside its truth.
 
@@ -55,6 +75,8 @@ def compare(
     displacements : mapping of float to (float, Measured)
         By line frequency [Hz]: the drive's true amplitude [V] and the amplitude [m] found in the
         converted recordings.
+    bounds : mapping of float to float, optional
+        By line frequency [Hz]: the least u that the noise allows, relative and in radians.
 
     Returns
     -------
@@ -65,11 +87,16 @@ def compare(
     for entry in calibration.actuator:
         frequency_hz = float(entry.frequency.magnitude)
         response = truth.actuator(frequency_hz)
-        found.append(Comparison(name_of("actuator", frequency_hz), abs(response), entry.magnitude))
+        bound = None if bounds is None else bounds.get(frequency_hz)
+        size = float(entry.magnitude.magnitude)
+        efficiency = _efficiency(entry.budget, bound, size)
+        name = name_of("actuator", frequency_hz)
+        found.append(Comparison(name, abs(response), entry.magnitude, efficiency))
         if entry.phase is not None:
             phase_rad = _near(entry.phase, float(np.angle(response)))
             name = name_of("actuator_phase", frequency_hz)
-            found.append(Comparison(name, phase_rad, entry.phase))
+            efficiency = _efficiency(entry.phase_budget, bound, 1.0)
+            found.append(Comparison(name, phase_rad, entry.phase, efficiency))
     found.append(Comparison("readout_slope", truth.readout_slope, calibration.readout_slope))
     if calibration.contrast is not None:
         found.append(Comparison("contrast", truth.contrast, calibration.contrast))
@@ -79,6 +106,13 @@ def compare(
         moved_m = abs(truth.actuator(frequency_hz)) * drive_v
         found.append(Comparison(name_of("displacement", frequency_hz), moved_m, amplitude))
     return found
+
+
+def _efficiency(budget: Budget, bound: float | None, size: float) -> float | None:
+    """Return the bound over the u of a budget's line fits."""
+    fits = [c.effect for c in budget.contributions if c.name.startswith(LINE_FIT)]
+    u = sqrt(sum(effect**2 for effect in fits))
+    return None if bound is None or not u else bound * size / u
 
 
 def _near(measured: Measured, truth_rad: float) -> float:

@@ -1,7 +1,7 @@
 """A whole session on a simulated bench: record, calibrate, convert, compare with the truth."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import sqrt
 from pathlib import Path
 
@@ -10,6 +10,7 @@ import numpy as np
 from calibration.analysis import calibrate, check_bench
 from calibration.comparison import Comparison, compare
 from calibration.convert import ConvertedRecording
+from calibration.line_bound import line_bound
 from calibration.line_fit import Line
 from calibration.lines import fit_lines_si
 from calibration.readout import Readout
@@ -62,6 +63,7 @@ def rehearse(
     *,
     through_port: bool = True,
     lines_s: float = LINES_S,
+    lean_rad: float = 0.0,
     progress: Progress | None = None,
 ) -> Rehearsal:
     """Play one session and return its result beside the truth.
@@ -78,6 +80,8 @@ def rehearse(
         Record through a pseudo-terminal with the recorder; else decode the same bytes in memory.
     lines_s : float
         Duration of a lines recording [s].
+    lean_rad : float
+        How far from mid-fringe the bench is held, towards the fringe's top [rad].
     progress : callable, optional
         Told what happens next, in a few words.
 
@@ -91,7 +95,8 @@ def rehearse(
     steps = session_steps(bench, lines_s)
     play = record_through_port if through_port else record_in_memory
     files = {}
-    recordings = ((step.setup, folder / step.file) for step in steps)
+    setups = [replace(step.setup, lean_rad=lean_rad) for step in steps]
+    recordings = ((setup, folder / step.file) for setup, step in zip(setups, steps, strict=True))
     for step, path in zip(steps, play(simulated, recordings), strict=True):
         files[step.name] = path
         say(f"recorded {step.name}")
@@ -101,10 +106,12 @@ def rehearse(
     conversions = _conversions(calibration, steps, files)
     displacements = _displacements(bench, calibration, steps, conversions)
     say("converted")
+    frequencies_hz = [line.frequency_hz for line in bench.lines]
+    bounds = {at_hz: line_bound(simulated, steps, at_hz) for at_hz in frequencies_hz}
     return Rehearsal(
         seed=seed,
         calibration=calibration,
-        comparisons=compare(calibration, simulated.truth, displacements),
+        comparisons=compare(calibration, simulated.truth, displacements, bounds),
         files=files,
         roles=roles,
         conversion=conversions["rising"],

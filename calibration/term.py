@@ -6,11 +6,20 @@ from math import inf
 
 from metro.budget import Budget, Contribution
 
-__all__ = ["ADC_REFERENCE", "FRINGE_EXTREMES", "POWER_DRIFT", "RULER", "Term", "budget_of"]
+__all__ = [
+    "ADC_REFERENCE",
+    "FRINGE_EXTREMES",
+    "LINE_FIT",
+    "POWER_DRIFT",
+    "RULER",
+    "Term",
+    "budget_of",
+]
 
 # Names of terms that others look for in a kept budget.
 ADC_REFERENCE = "ADC reference"
 FRINGE_EXTREMES = "fringe extremes"
+LINE_FIT = "line fit"  # and which record
 POWER_DRIFT = "power drift between recordings"
 RULER = ("wavelength", "refractive index")
 

@@ -98,6 +98,9 @@ KEYS: dict[str, Key] = {
     "actuator.gain": Key("m/V", "35 nm/V"),
     "actuator.resonance": _positive("Hz", "2 kHz"),
     "actuator.q": _positive("1", "30"),
+    "actuator.bias": Key("V", "75 V"),
+    "actuator.history": Key("", "poled upwards; swept -20 V to 120 V three times before"),
+    "actuator.reproducibility": Key("1", '{ value = 0, u = "0.1%" }', minimum=-0.5, maximum=0.5),
     "drive.point": Key(
         "",
         "actuator terminals",
@@ -114,6 +117,7 @@ KEYS: dict[str, Key] = {
     "fringe.high": Key("V", "9.69 V"),
     "fringe.drift": Key("1", '{ value = 0, u = "0.03%" }'),
     "mains.frequency": Key("Hz", "50 Hz", minimum=40.0, maximum=70.0),
+    "mains.pickup": _not_negative("V", "0.1 mV"),  # on the photodiode channel, zero to peak
 }
 """Every key but those of ``[[line]]`` and ``[[motion]]``, as ``section.key``."""
 

@@ -14,6 +14,7 @@ from metro.output import table, to_json
 
 if TYPE_CHECKING:
     from calibration.rehearsal import Rehearsal
+    from calibration.trial_bench import TrialBench
 
 __all__ = ["rehearse"]
 
@@ -29,7 +30,16 @@ __all__ = ["rehearse"]
 @click.option(
     "--trials",
     type=click.IntRange(min=1),
-    help="Play this many sessions in memory, seeds counted up from --seed, and print the coverage.",
+    help="Play this many sessions in memory, seeds counted up from --seed, and print coverage, "
+    "distrusted sessions and how near each u comes to the least that the noise allows.",
+)
+@click.option(
+    "--trial-bench",
+    "kinds",
+    multiple=True,
+    metavar="NAME",
+    help="With --trials: good, poor-contrast, clipped, drifting, mains-ridden, short, 8-bit or all. "
+    "Repeatable.  [default: good]",
 )
 @click.option(
     "--plan", "plan_file", metavar="FILE", help="Drives and duration from `midfringe plan`."
@@ -41,6 +51,7 @@ def rehearse(
     bench: Bench,
     seed: int,
     trials: int | None,
+    kinds: tuple[str, ...],
     plan_file: str | None,
     out: str | None,
     as_json: bool,
@@ -57,6 +68,9 @@ def rehearse(
     from calibration.rehearsal_folder import comparison_document, leave, prepare, rehearsal_bench
     from calibration.rehearsal_script import LINES_S, planned, session_steps
 
+    if kinds and trials is None:
+        raise click.UsageError("--trial-bench goes with --trials, got no --trials")
+    chosen = _chosen(kinds)
     played, text = rehearsal_bench(bench)
     lines_s = LINES_S
     if plan_file is not None:
@@ -65,7 +79,7 @@ def rehearse(
     if trials is not None:
         if out is not None:
             raise click.UsageError("--out goes with one session; --trials leaves no files")
-        _run_trials(played, lines_s, seed, trials, as_json=as_json)
+        _run_trials(played, chosen, lines_s, seed, trials, as_json=as_json)
         return
     for module, what in (("matplotlib", "the session's page"), ("scipy", "its spectrum")):
         require(module, "bench", what)
@@ -77,24 +91,43 @@ def rehearse(
     click.echo(to_json(document) if as_json else _text(result, folder))
 
 
-def _run_trials(bench: Bench, lines_s: float, seed: int, trials: int, *, as_json: bool) -> None:
-    from calibration.trials import coverage_of, coverage_table, play_trials
+def _chosen(names: tuple[str, ...]) -> "list[TrialBench]":
+    from calibration.trial_bench import TRIAL_BENCHES
 
-    with _progress(trials) as step:
-        seeds, processes = range(seed, seed + trials), min(trials, os.cpu_count() or 1)
-        played = play_trials(bench, seeds, lines_s=lines_s, processes=processes, progress=step)
-        sessions = list(played)
-    rows = coverage_of(sessions)
-    document = {
-        "seed": seed,
-        "trials": trials,
-        "truth": [{c.name: c.truth_dict() for c in session} for session in sessions],
-        "measured": [{c.name: c.measured for c in session} for session in sessions],
-        "inside_95": [{c.name: c.inside_95 for c in session} for session in sessions],
-        "files": [],
-        "coverage": [row.to_dict() for row in rows],
-    }
-    click.echo(to_json(document) if as_json else coverage_table(rows))
+    unknown = next((name for name in names if name not in {*TRIAL_BENCHES, "all"}), None)
+    if unknown is not None:
+        known = ", ".join(TRIAL_BENCHES)
+        raise click.UsageError(f"--trial-bench must be one of {known} or all, got {unknown!r}")
+    wanted = TRIAL_BENCHES if "all" in names else dict.fromkeys(names or ("good",))
+    return [TRIAL_BENCHES[name] for name in wanted]
+
+
+def _run_trials(
+    bench: Bench,
+    kinds: "list[TrialBench]",
+    lines_s: float,
+    seed: int,
+    trials: int,
+    *,
+    as_json: bool,
+) -> None:
+    from calibration.coverage import trials_document, trials_text
+    from calibration.trial_bench import NOT_MODELLED
+    from calibration.trials import play_trials
+
+    seeds, processes = range(seed, seed + trials), min(trials, os.cpu_count() or 1)
+    played = {}
+    with _progress(trials * len(kinds)) as step:
+        for kind in kinds:
+            sessions = play_trials(
+                bench, seeds, kind=kind, lines_s=lines_s, processes=processes, progress=step
+            )
+            played[kind.name] = list(sessions)
+    if as_json:
+        click.echo(to_json({"seed": seed, "trials": trials} | trials_document(played)))
+        return
+    parts = [trials_text(kind, played[kind.name]) for kind in kinds]
+    click.echo("\n\n".join([*parts, "not modelled: " + "; ".join(NOT_MODELLED)]))
 
 
 class _progress:  # noqa: N801  # used as a function: with _progress(12) as step
@@ -103,7 +136,11 @@ class _progress:  # noqa: N801  # used as a function: with _progress(12) as step
     def __init__(self, length: int) -> None:
         hidden = is_quiet() or not sys.stderr.isatty()
         self._bar = click.progressbar(
-            length=length, label="session", file=sys.stderr, hidden=hidden, item_show_func=str
+            length=length,
+            label="session",
+            file=sys.stderr,
+            hidden=hidden,
+            item_show_func=lambda text: text or "",
         )
 
     def __enter__(self) -> Self:

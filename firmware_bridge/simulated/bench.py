@@ -2,7 +2,7 @@
 
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.simulated.setup import Setup
-from firmware_bridge.simulated.stream import Converter, Electronics, SampleStream
+from firmware_bridge.simulated.stream import MAINS_V, Converter, Electronics, SampleStream
 from firmware_bridge.simulated.truth import Truth, draw_truth
 from metro.bench import Bench
 
@@ -27,6 +27,8 @@ class SimulatedBench:
         The drawn values; the analysis must never see them.
     rate_hz : float
         Nominal sample rate [Hz].
+    transimpedance_v_per_a : float
+        Of the photodiode's amplifier [V/A].
     """
 
     def __init__(self, bench: Bench, seed: int) -> None:
@@ -36,7 +38,9 @@ class SimulatedBench:
         self._electronics = Electronics(
             transimpedance_v_per_a=bench.magnitude("photodiode.transimpedance"),
             mains_hz=bench.magnitude("mains.frequency", 50.0),
+            mains_v=bench.magnitude("mains.pickup", MAINS_V),
         )
+        self.transimpedance_v_per_a = self._electronics.transimpedance_v_per_a
         self._seed = seed
 
     def start(self, setup: Setup, number: int = 1) -> SampleStream:

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Component", "Motion"]
+__all__ = ["Component", "Motion", "spectral_density"]
 
 FloatArray = NDArray[np.float64]
 
@@ -25,6 +25,38 @@ class Component:
     rms: float
     correlation_s: float
     frequency_hz: float = 0.0
+
+
+def spectral_density(components: Sequence[Component], rate_hz: float, frequency_hz: float) -> float:
+    """Return the one-sided spectral density of a sum of components at one frequency.
+
+    Parameters
+    ----------
+    components : sequence of Component
+        Independent processes.
+    rate_hz : float
+        Samples a second [Hz].
+    frequency_hz : float
+        Frequency [Hz], up to half the rate.
+
+    Returns
+    -------
+    float
+        Squared unit of the components a hertz.
+
+    Notes
+    -----
+    A process x[k] = a·x[k−1] + w[k] of rms r has the two-sided density
+    r²(1 − |a|²)/(rate·|1 − a·exp(−2πif/rate)|²); the real part of a complex one the mean of that at
+    f and at −f. Any textbook on time series, for an autoregressive process of first order.
+    """
+    turns = 2 * np.pi * frequency_hz / rate_hz
+    total = 0.0
+    for part in components:
+        pole = np.exp(complex(-1.0 / part.correlation_s, 2 * np.pi * part.frequency_hz) / rate_hz)
+        sides = [1.0 / abs(1.0 - pole * np.exp(-1j * side * turns)) ** 2 for side in (1.0, -1.0)]
+        total += part.rms**2 * (1.0 - abs(pole) ** 2) / rate_hz * sum(sides)
+    return float(total)
 
 
 class Motion:

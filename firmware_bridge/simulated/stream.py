@@ -36,7 +36,8 @@ ARM_MOTION = (
 )
 # Relative laser power within a recording; its slow change is the drift that the bench states.
 POWER_NOISE = (Component(6e-5, 0.3), Component(3e-5, 0.003))
-MAINS_V = (1.2e-4, 0.5e-4, 0.3e-4)  # on the photodiode channel: mains, 2nd and 3rd harmonic
+MAINS_V = 1.2e-4  # on the photodiode channel, where the bench states nothing
+MAINS_SHARES = (1.0, 0.42, 0.25)  # of it: mains, 2nd and 3rd harmonic
 MAINS_M = 3e-10  # the mains also shakes the mirror a little
 AMPLIFIER_TEMPERATURE_K = 300.0
 
@@ -65,10 +66,11 @@ class Converter:
 
 @dataclass(frozen=True)
 class Electronics:
-    """The rest of the photodiode's channel: transimpedance [V/A] and mains frequency [Hz]."""
+    """The rest of the photodiode's channel: transimpedance [V/A]; mains frequency [Hz], size [V]."""
 
     transimpedance_v_per_a: float
     mains_hz: float
+    mains_v: float = MAINS_V
 
 
 class SampleStream:
@@ -178,8 +180,9 @@ class SampleStream:
         """Return what the wires add to the photodiode channel [V]: drive pick-up and mains."""
         pickup = self._truth.pickup_v_per_v
         added_v = self._tones(time_s, lambda frequency_hz: pickup * frequency_hz / 100.0)
-        for order, amplitude_v in enumerate(MAINS_V, start=1):
+        for order, share in enumerate(MAINS_SHARES, start=1):
             turn = 2 * pi * order * self._electronics.mains_hz * time_s
+            amplitude_v = share * self._electronics.mains_v
             added_v = added_v + amplitude_v * np.cos(turn + order * self._mains_phase_rad)
         return added_v
 

@@ -6,9 +6,13 @@ import numpy as np
 import pytest
 from sessions import built_in_bench
 
+from calibration.comparison import Comparison
+from calibration.coverage import coverage_of, coverage_table, reasons_text
 from calibration.rehearsal import rehearse
-from calibration.trials import coverage_of, coverage_table, play_trials
+from calibration.trial_bench import NOT_MODELLED, TRIAL_BENCHES
+from calibration.trials import Trial, play_trials
 from metro.commandline import run
+from metro.measured import Measured
 
 COEFFICIENTS = ("actuator@", "readout_slope")
 
@@ -121,6 +125,51 @@ def test_command_refuses_a_folder_that_holds_something(tmp_path, capsys):
 
 
 def test_trials_print_coverage(capsys):
-    assert run(["rehearse", "--trials", "1", "--seed", "3", "--json"]) == 0
+    arguments = ["rehearse", "--trials", "1", "--seed", "3", "--json"]
+    assert run([*arguments, "--trial-bench", "short", "--trial-bench", "clipped"]) == 0
     document = json.loads(capsys.readouterr().out)
     assert document["coverage"][-1]["name"] == "all"
+    assert list(document["benches"]) == ["short", "clipped"]
+    assert document["benches"]["short"]["distrusted"] == {}
+    assert list(document["benches"]["clipped"]["distrusted"]) == ["3"]
+    assert document["benches"]["clipped"]["coverage"] == []
+    assert document["not_modelled"] == list(NOT_MODELLED)
+
+
+def test_trials_name_distrusted_sessions_and_what_is_not_modelled(capsys):
+    arguments = ["rehearse", "--trials", "1", "--trial-bench", "clipped", "--quiet"]
+    assert run(arguments) == 0
+    said = capsys.readouterr().out
+    assert "1 of 1 sessions are distrusted and left out (seeds 1):" in said
+    assert "the fringe is no cosine" in said
+    assert said.splitlines()[-1].startswith("not modelled: ghost beams")
+
+
+@pytest.mark.parametrize(
+    ("arguments", "message"),
+    [
+        (["--trial-bench", "short"], "--trial-bench goes with --trials, got no --trials"),
+        (
+            ["--trials", "2", "--trial-bench", "shorter"],
+            f"--trial-bench must be one of {', '.join(TRIAL_BENCHES)} or all, got 'shorter'",
+        ),
+    ],
+)
+def test_command_refuses_trial_benches_it_does_not_know(arguments, message, capsys):
+    assert run(["rehearse", *arguments]) == 2
+    said = capsys.readouterr()
+    assert said.out == ""
+    assert said.err == f"midfringe: {message} (see 'midfringe rehearse --help')\n"
+
+
+def test_sessions_that_are_distrusted_do_not_count():
+    good = Comparison("slope", 1.0, Measured.of(1.1, "1", 0.1), efficiency=0.9)
+    bad = Comparison("slope", 1.0, Measured.of(9.0, "1", 0.1))
+    trials = [Trial(1, [good], []), Trial(2, [bad], ["3 % clipped"]), Trial(3, [], ["9 % clipped"])]
+    row = coverage_of(trials)[0]
+    assert (row.trials, row.inside_95, row.efficiency) == (1, 1.0, 0.9)
+    assert row.mean == pytest.approx(1.0)
+    assert reasons_text(trials).splitlines() == [
+        "2 of 3 sessions are distrusted and left out (seeds 2, 3):",
+        "     2  # % clipped",
+    ]

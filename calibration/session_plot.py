@@ -20,7 +20,7 @@ from metro.figure_file import save_figure
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-__all__ = ["Shown", "save_session_page"]
+__all__ = ["Shown", "draw_actuator", "draw_scan", "draw_spectrum", "save_session_page"]
 
 FloatArray = NDArray[np.float64]
 
@@ -92,15 +92,16 @@ def save_session_page(
     figure.suptitle(title, fontsize=12)
     axes = figure.subplots(panels, 1)
     if shown.scan is not None:
-        _draw_scan(axes[0], calibration, shown.scan.values, shown.scan.rate_hz)
-    _draw_spectrum(axes[1], calibration, shown.moved.values, shown.moved.rate_hz)
-    _draw_actuator(axes[2], calibration)
+        draw_scan(axes[0], calibration, shown.scan.values, shown.scan.rate_hz)
+    draw_spectrum(axes[1], calibration, shown.moved.values, shown.moved.rate_hz)
+    draw_actuator(axes[2], calibration)
     if comparisons:
         _draw_comparison(axes[3], comparisons)
     save_figure(figure, path, overwrite=overwrite)
 
 
-def _draw_scan(axes: "Axes", calibration: Calibration, volts: FloatArray, rate_hz: float) -> None:
+def draw_scan(axes: "Axes", calibration: Calibration, volts: FloatArray, rate_hz: float) -> None:
+    """Draw a scan in volts with the fitted extremes."""
     time_s = np.arange(volts.size) / rate_hz
     shown = slice(0, min(volts.size, int(4.0 * rate_hz)))
     extremes = calibration.extremes
@@ -127,9 +128,10 @@ def _draw_scan(axes: "Axes", calibration: Calibration, volts: FloatArray, rate_h
     )
 
 
-def _draw_spectrum(
+def draw_spectrum(
     axes: "Axes", calibration: Calibration, displacement_m: FloatArray, rate_hz: float
 ) -> None:
+    """Draw the amplitude spectral density of a displacement, the lines marked."""
     signal = require("scipy.signal", "bench", "a spectrum")
     filled = np.where(np.isfinite(displacement_m), displacement_m, np.nanmean(displacement_m))
     length = min(filled.size, int(4 * rate_hz))
@@ -158,7 +160,8 @@ def _draw_spectrum(
     axes.grid(which="both", linewidth=0.3, alpha=0.6)
 
 
-def _draw_actuator(axes: "Axes", calibration: Calibration) -> None:
+def draw_actuator(axes: "Axes", calibration: Calibration) -> None:
+    """Draw magnitude and phase of the actuator at each line, with expanded uncertainties."""
     at_hz = [float(entry.frequency.magnitude) for entry in calibration.actuator]
     size = [float(entry.magnitude.magnitude) * 1e9 for entry in calibration.actuator]
     bars = [_expanded(entry.magnitude) * 1e9 for entry in calibration.actuator]

@@ -5,7 +5,7 @@ from metro.display import show
 from metro.measured import Measured
 from metro.output import table
 
-__all__ = ["CONVENTIONS", "calibration_text"]
+__all__ = ["CONVENTIONS", "calibration_text", "expanded_text", "value_text"]
 
 CONVENTIONS = (
     "displacement is the differential arm length, positive when the x arm grows",
@@ -20,10 +20,10 @@ def calibration_text(calibration: Calibration) -> str:
     rows = [
         [
             show(float(entry.frequency.magnitude), "Hz"),
-            _value(entry.magnitude),
-            _expanded(entry.magnitude),
-            "unknown" if entry.phase is None else _value(entry.phase),
-            "" if entry.phase is None else _expanded(entry.phase),
+            value_text(entry.magnitude),
+            expanded_text(entry.magnitude),
+            "unknown" if entry.phase is None else value_text(entry.phase),
+            "" if entry.phase is None else expanded_text(entry.phase),
             "; ".join(entry.reasons) or "no reason for distrust found",
         ]
         for entry in calibration.actuator
@@ -52,15 +52,18 @@ def _readout_rows(calibration: Calibration) -> list[list[str]]:
     }
     known = {name: value for name, value in values.items() if value is not None}
     return [
-        [name, _value(value), f"U = {_expanded(value)} (95 %)"] for name, value in known.items()
+        [name, value_text(value), f"U = {expanded_text(value)} (95 %)"]
+        for name, value in known.items()
     ]
 
 
-def _value(measured: Measured) -> str:
+def value_text(measured: Measured) -> str:
+    """Return a measured value alone, to the digits that its uncertainty deserves."""
     return str(measured).partition(",")[0]
 
 
-def _expanded(measured: Measured) -> str:
+def expanded_text(measured: Measured) -> str:
+    """Return its expanded uncertainty at 95 % alone."""
     _, _, rest = str(measured).partition("U = ")
     return rest.partition(" (")[0]
 

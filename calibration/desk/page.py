@@ -28,7 +28,8 @@ h3 { font-size: 1em; margin: 1.1em 0 .3em; break-after: avoid; }
 table { border-collapse: collapse; margin: .4em 0 .8em; width: 100%; font-size: .88em;
   font-variant-numeric: tabular-nums; }
 th, td { text-align: left; padding: .22em .6em .22em 0; border-bottom: 1px solid #ccc;
-  vertical-align: top; overflow-wrap: anywhere; }
+  vertical-align: top; }
+td:last-child { overflow-wrap: anywhere; }
 th { border-bottom: 1.5px solid #111; font-weight: 600; }
 tr, figure { break-inside: avoid; } thead { display: table-header-group; }
 figure { margin: .6em 0 1em; } figure img { width: 100%; height: auto; }

@@ -15,12 +15,14 @@ from os import PathLike
 import numpy as np
 
 from calibration.actuator import actuator_line
+from calibration.bench_check import check_bench
 from calibration.contrast import contrast
 from calibration.dark import dark_level
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
 from calibration.lines import fit_lines_si
+from calibration.mains import without_mains
 from calibration.pickup import additive_of
 from calibration.readout import Readout
 from calibration.readout_slope import readout_slope
@@ -37,17 +39,17 @@ from calibration.session_checks import (
     sign_reasons,
 )
 from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
+from calibration.statements import assumptions, chain_values, conditions
 from calibration.term import POWER_DRIFT, Term
 from calibration.working_point import PhaseRecord, invert_fringe
 from metro.bench import Bench
 from metro.drive import peak_factor
 from metro.measured import Measured
 
-__all__ = ["calibrate", "check_bench"]
+__all__ = ["calibrate"]
 
 Paths = Sequence[str | PathLike[str]]
 
-_UNCORRECTED = ("adc.quadratic", "adc.cubic", "drive.pickup", "actuator.tilt", "fringe.drift")
 ASSUMED_DRIFT = 0.002  # relative change of high − low between recordings, where nothing is known
 
 
@@ -104,46 +106,6 @@ def calibrate(
     return _Analysis(bench, Session(files, bench)).calibration()
 
 
-def check_bench(bench: Bench) -> None:
-    """Refuse a bench that lacks what a calibration cannot do without.
-
-    Parameters
-    ----------
-    bench : Bench
-        Wavelength with its source, air or vacuum, lines.
-
-    Raises
-    ------
-    CalibrationError
-        The first thing that is missing or cannot be corrected for.
-    """
-    if bench.get("laser.wavelength") is None:
-        raise CalibrationError(
-            "laser.wavelength is the ruler and must be given, with its u and source, got none"
-        )
-    if bench.text("laser.source") is None:
-        raise CalibrationError(
-            "laser.source must say where the wavelength comes from "
-            '(such as source = "wavemeter, 2026-03-01"), got none'
-        )
-    if bench.get("air.index") is None and bench.text("air.medium") is None:
-        missing = [k for k in ("temperature", "pressure") if bench.get(f"air.{k}") is None]
-        if missing:
-            raise CalibrationError(
-                f'[air] must hold temperature and pressure, or medium = "vacuum", got no '
-                f"{' and no '.join(missing)}"
-            )
-    if not bench.lines:
-        raise CalibrationError("the bench must name at least one [[line]], got none")
-    for key in _UNCORRECTED:
-        value = bench.magnitude(key, 0.0)
-        if value:
-            raise CalibrationError(
-                f"{key} must have the value 0 with its u, since a known one is not corrected for, "
-                f"got {value:g}"
-            )
-
-
 @dataclass(frozen=True)
 class _Slope:
     """One lines recording inverted and fitted."""
@@ -163,11 +125,17 @@ class _Analysis:
 
     @cached_property
     def scans(self) -> list[ScanFit]:
-        records = self.session.of("scan")
-        return [fit_scan(_usable(r), r.photodiode.rate_hz) for r in records]
+        """The fringe's extremes in each scan, the mains taken out."""
+        mains_hz = self.bench.magnitude("mains.frequency", 50.0)
+        traces = [record.photodiode for record in self.session.of("scan")]
+        return [
+            fit_scan(without_mains(trace.values, trace.rate_hz, mains_hz), trace.rate_hz)
+            for trace in traces
+        ]
 
     @cached_property
     def extremes(self) -> Extremes:
+        """The mean extremes of the scans, else those that the bench file gives."""
         if self.scans:
             return Extremes.mean_of(self.scans)
         low, high = self.bench.get("fringe.low"), self.bench.get("fringe.high")
@@ -195,6 +163,7 @@ class _Analysis:
 
     @cached_property
     def slopes(self) -> list[_Slope]:
+        """Every lines recording, inverted and fitted."""
         return [
             self._slope(record, slope)
             for slope in ("rising", "falling")
@@ -226,6 +195,7 @@ class _Analysis:
 
     @cached_property
     def dark(self) -> Measured | None:
+        """The level without light, measured or as the bench file gives it."""
         records = [record.photodiode.values for record in self.session.of("dark")]
         measured = dark_level(records)
         return self.bench.get("photodiode.dark") if measured is None else measured
@@ -316,11 +286,11 @@ class _Analysis:
             contrast=None if self.dark is None else contrast(self.bench, self.extremes, self.dark),
             dark=self.dark,
             clock_offset=self.clock_offset(),
-            chain=_chain(self.bench),
-            conditions=_conditions(self.bench),
+            chain=chain_values(self.bench),
+            conditions=conditions(self.bench),
             recordings=[record.to_dict() for record in self.session],
             checks=checks,
-            assumptions=_assumptions(self.bench),
+            assumptions=assumptions(self.bench),
             cautions=cautions_of(self.bench, self.session, self.drift),
             reasons=[
                 *reasons_of(self.scans, fits),
@@ -328,44 +298,3 @@ class _Analysis:
                 *failed(checks),
             ],
         )
-
-
-def _usable(record: RoleRecord) -> np.ndarray:
-    """Return the samples of a scan that are there; a scan's time axis does not matter."""
-    return record.photodiode.values[np.isfinite(record.photodiode.values)]
-
-
-def _chain(bench: Bench) -> dict[str, Measured]:
-    keys = {
-        "wavelength": "laser.wavelength",
-        "round_trips": "arms.round_trips",
-        "arm_length": "arms.length",
-        "amplifier_corner": "photodiode.bandwidth",
-        "antialias_corner": "adc.antialias",
-        "channel_delay": "adc.channel_delay",
-        "adc_bits": "adc.bits",
-        "adc_range": "adc.range",
-        "adc_offset": "adc.offset",
-    }
-    known = {name: bench.get(key) for name, key in keys.items()}
-    chain = {name: value for name, value in known.items() if value is not None}
-    return {**chain, "index": bench.index()}
-
-
-def _conditions(bench: Bench) -> dict[str, Measured]:
-    known = {name: bench.get(f"air.{name}") for name in ("temperature", "pressure", "humidity")}
-    return {name: value for name, value in known.items() if value is not None}
-
-
-def _assumptions(bench: Bench) -> list[str]:
-    arm = bench.text("actuator.arm") or "x"
-    sign = "longer" if bench.magnitude("actuator.polarity", 1.0) > 0 else "shorter"
-    return [
-        f"the wavelength comes from: {bench.text('laser.source')}",
-        (
-            f"sign: a positive drive makes the {arm} arm {sign}; rising is the slope on which the "
-            "voltage grows with the x arm"
-        ),
-        "the actuator is linear at the drive used; hysteresis and creep were not measured",
-        "reproducibility after realignment was not measured",
-    ]

@@ -7,7 +7,8 @@ from pathlib import Path
 
 import numpy as np
 
-from calibration.analysis import calibrate, check_bench
+from calibration.analysis import calibrate
+from calibration.bench_check import check_bench
 from calibration.comparison import Comparison, compare
 from calibration.convert import ConvertedRecording
 from calibration.line_bound import line_bound

@@ -1,0 +1,64 @@
+"""What the bench file states, as a calibration keeps it: chain, conditions, assumptions."""
+
+from metro.bench import Bench
+from metro.measured import Measured
+
+__all__ = ["assumptions", "chain_values", "conditions"]
+
+_CHAIN = {
+    "wavelength": "laser.wavelength",
+    "round_trips": "arms.round_trips",
+    "arm_length": "arms.length",
+    "amplifier_corner": "photodiode.bandwidth",
+    "antialias_corner": "adc.antialias",
+    "channel_delay": "adc.channel_delay",
+    "adc_bits": "adc.bits",
+    "adc_range": "adc.range",
+    "adc_offset": "adc.offset",
+}
+
+
+def chain_values(bench: Bench) -> dict[str, Measured]:
+    """Return wavelength, index and whatever else of the chain is known."""
+    known = {name: bench.get(key) for name, key in _CHAIN.items()}
+    chain = {name: value for name, value in known.items() if value is not None}
+    return {**chain, "index": bench.index()}
+
+
+def conditions(bench: Bench) -> dict[str, Measured]:
+    """Return temperature, pressure and humidity as far as they are stated."""
+    known = {name: bench.get(f"air.{name}") for name in ("temperature", "pressure", "humidity")}
+    return {name: value for name, value in known.items() if value is not None}
+
+
+def assumptions(bench: Bench, *, series: bool = False) -> list[str]:
+    """Return what was taken as given, one line each.
+
+    Parameters
+    ----------
+    bench : Bench
+        Source of the wavelength, arm, polarity.
+    series : bool
+        Whether a drive series was measured.
+
+    Returns
+    -------
+    list of str
+        Sentences.
+    """
+    arm = bench.text("actuator.arm")
+    slopes = "rising is the slope on which the voltage grows with the x arm"
+    if bench.get("actuator.polarity") is None:
+        declared = "which way a positive drive moves the mirror was not declared, nor checked"
+    else:
+        sign = "longer" if bench.magnitude("actuator.polarity") > 0 else "shorter"
+        named = f"{arm} arm" if arm else "x arm (no arm was named)"
+        declared = f"a positive drive is declared to make the {named} {sign}"
+    linear = "the actuator is linear at the drive used"
+    if not series:
+        linear += "; hysteresis and creep were not measured"
+    return [
+        f"the wavelength comes from: {bench.text('laser.source')}",
+        f"sign: {declared}; {slopes}",
+        linear,
+    ]

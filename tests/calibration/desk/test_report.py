@@ -84,7 +84,7 @@ def test_shares_of_the_budget_add_up_in_the_table(session, tmp_path):
     table = html[
         html.index("<th>cause</th>") : html.index("</table>", html.index("<th>cause</th>"))
     ]
-    rows = [re.findall(r"<td>(.*?)</td>", row) for row in table.split("<tr>")[2:]]
+    rows = [re.findall(r"<td>(.*?)</td>", row) for row in table.split("<tr>")[1:]]
     shares = [float(row[1].split()[0]) for row in rows if len(row) > 1 and row[1]]
     budget = load(session / "calibration.json").actuator[0].budget
     groups = {c.group for c in budget.contributions if c.group}

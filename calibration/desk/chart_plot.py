@@ -1,0 +1,149 @@
+"""The chart of a line drawn: results with limits and alarms, cumulative sums, Allan deviation."""
+
+from datetime import UTC, datetime
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from calibration.desk.line_chart import LineChart
+from calibration.desk.utc import unix_of
+from metro.extras import require
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from matplotlib.axes import Axes
+
+__all__ = ["chart_figure"]
+
+# Okabe and Ito's colours, told apart by colour-blind readers.
+_BLUE, _ORANGE, _GREY, _GREEN = "#0072b2", "#d55e00", "#777777", "#009e73"
+_MOST_BARS = 400  # results beyond which their error bars would be one blur
+
+
+def chart_figure(charts: "Sequence[LineChart]") -> Any:  # noqa: ANN401  # matplotlib's Figure
+    """Return a figure of the charts of some lines, a row of three pictures each.
+
+    Parameters
+    ----------
+    charts : sequence of LineChart
+        At least one.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        Results over time, cumulative sums, Allan deviation.
+
+    Raises
+    ------
+    MissingExtraError
+        If matplotlib is not installed.
+    """
+    figures = require("matplotlib.figure", "bench", "--plot")
+    figure = figures.Figure(figsize=(13.0, 3.6 * len(charts)), layout="constrained")
+    grid = figure.add_gridspec(len(charts), 3, width_ratios=(2.2, 1.5, 1.2))
+    for row, chart in enumerate(charts):
+        _draw_results(figure.add_subplot(grid[row, 0]), chart)
+        _draw_sums(figure.add_subplot(grid[row, 1]), chart)
+        _draw_allan(figure.add_subplot(grid[row, 2]), chart)
+    return figure
+
+
+def _draw_results(axes: "Axes", chart: LineChart) -> None:
+    scale, unit = _scale(chart)
+    moments = _dates(chart.time_s)
+    bars = np.where(np.isfinite(chart.u), chart.u, 0.0) if len(moments) <= _MOST_BARS else None
+    axes.errorbar(
+        moments,  # type: ignore[arg-type]  # dates are as good as numbers
+        chart.values * scale,
+        None if bars is None else bars * scale,
+        fmt=".",
+        color=_BLUE,
+        markersize=3.5,
+        elinewidth=0.8,
+        label="result, bar u" if bars is not None else "result",
+    )
+    limits = chart.limits
+    if limits is not None and limits.sample == 1:
+        axes.axhline(limits.centre * scale, color=_GREY, linewidth=1.0, label="mean at first")
+        for level in (limits.low, limits.high):
+            axes.axhline(level * scale, color=_GREY, linewidth=1.0, linestyle="--")
+        axes.plot([], [], color=_GREY, linewidth=1.0, linestyle="--", label="3σ limits")
+    _mark_alarms(axes, chart, label=True)
+    corrected = ", at one temperature" if chart.law.is_used else ""
+    axes.set_title(f"{chart.line_hz:.6g} Hz: {len(chart.values)} results{corrected}")
+    axes.set_ylabel(f"response over drive [{unit}]" if unit else "response over drive")
+    _time_axis(axes)
+    axes.legend(fontsize="x-small", loc="best", framealpha=0.9)
+
+
+def _draw_sums(axes: "Axes", chart: LineChart) -> None:
+    moments: Any = _dates(chart.time_s)
+    axes.plot(moments, chart.sums[:, 0], color=_ORANGE, linewidth=1.2, label="upward")
+    axes.plot(moments, -chart.sums[:, 1], color=_GREEN, linewidth=1.2, label="downward")
+    for level in (chart.rule.h, -chart.rule.h):
+        axes.axhline(level, color=_GREY, linestyle="--", linewidth=1.0)
+    axes.axhline(0.0, color=_GREY, linewidth=0.6)
+    _mark_alarms(axes, chart, label=False)
+    axes.set_ylim(-1.3 * chart.rule.h, 1.3 * chart.rule.h)
+    axes.set_ylabel("cumulative sum [standard deviations]")
+    axes.set_title(f"alarm beyond ±{chart.rule.h:.3g}")
+    _time_axis(axes)
+    axes.legend(fontsize="x-small", loc="best", framealpha=0.9)
+
+
+def _draw_allan(axes: "Axes", chart: LineChart) -> None:
+    axes.set_title("overlapping Allan deviation")
+    axes.set_xlabel("averaging time [s]")
+    if chart.allan is None or not np.all(chart.allan.deviation > 0):
+        axes.text(0.5, 0.5, "too few results", transform=axes.transAxes, ha="center", color=_GREY)
+        return
+    allan, size = chart.allan, abs(float(chart.values.mean()))
+    relative = allan.deviation / size
+    axes.errorbar(
+        allan.tau_s, relative, allan.u / size, fmt="o-", color=_BLUE, markersize=4, capsize=2,
+        label="with u",
+    )  # fmt: skip
+    axes.plot(
+        allan.tau_s,
+        relative[0] * np.sqrt(allan.tau_s[0] / allan.tau_s),
+        color=_GREY,
+        linestyle=":",
+        label="white noise",
+    )
+    axes.set(xscale="log", yscale="log")
+    axes.set_ylabel("of the value")
+    axes.grid(visible=True, which="both", alpha=0.25)
+    axes.legend(fontsize="x-small")
+
+
+def _mark_alarms(axes: "Axes", chart: LineChart, *, label: bool) -> None:
+    for number, alarm in enumerate(chart.alarms):
+        moment: Any = _dates(np.array([unix_of(alarm.time)]))[0]
+        text = "alarm" if label and number == 0 else None
+        axes.axvline(moment, color=_ORANGE, linewidth=1.6, label=text)
+
+
+def _scale(chart: LineChart) -> tuple[float, str]:
+    """Return the factor and unit in which the results read well."""
+    size = float(np.abs(chart.values).max())
+    if chart.unit == "1" or not size > 0:
+        return 1.0, "" if chart.unit == "1" else chart.unit
+    for exponent, prefix in ((0, ""), (-3, "m"), (-6, "µ"), (-9, "n"), (-12, "p")):
+        if size >= 10.0**exponent:
+            return 10.0**-exponent, prefix + chart.unit
+    return 1e15, "f" + chart.unit
+
+
+def _dates(time_s: Any) -> list[datetime]:  # noqa: ANN401  # ndarray
+    return [datetime.fromtimestamp(float(t), UTC) for t in time_s]
+
+
+def _time_axis(axes: "Axes") -> None:
+    from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
+
+    locator = AutoDateLocator(maxticks=7)
+    axes.xaxis.set_major_locator(locator)
+    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))
+    axes.set_xlabel("UTC")
+    axes.grid(visible=True, alpha=0.25)

@@ -76,13 +76,28 @@ class ClockState:
 
 @dataclass(frozen=True, slots=True)
 class Inspection:
-    """The verdict; ``reasons`` says what speaks against the recording, empty where it is sound."""
+    """The verdict on a recording.
+
+    Parameters
+    ----------
+    channels : list of ChannelState
+        What each holds.
+    clock : ClockState or None
+        None where the clocks cannot be compared.
+    reasons : list of str
+        What speaks against the recording, empty where it is sound.
+    repeated_blocks, block_samples : int
+        Blocks equal to an earlier one, and the samples of each.
+    course : tuple of two ndarrays, or None
+        Time of the host and of the board at each stamp [s], both from 0; with `clock` only.
+    """
 
     channels: list[ChannelState]
     clock: ClockState | None
     reasons: list[str]
     repeated_blocks: int = 0
     block_samples: int = 0
+    course: tuple[NDArray[np.float64], NDArray[np.float64]] | None = None
 
     @property
     def is_sound(self) -> bool:
@@ -107,10 +122,13 @@ def inspect_recording(recording: Recording) -> Inspection:
     channels = [
         found.complete(_channel_state(recording, k), k) for k in range(len(recording.channels))
     ]
-    clock = _clock_state(recording) if isinstance(recording, MfrRecording) else None
+    course = _clock_course(recording) if isinstance(recording, MfrRecording) else None
+    clock = None if course is None else _clock_state(*course)
     reasons = [*_reasons(recording, channels, clock), *found.reasons(recording, channels)]
     repetition = found.repetition
-    return Inspection(channels, clock, reasons, len(repetition.repeated), repetition.samples)
+    return Inspection(
+        channels, clock, reasons, len(repetition.repeated), repetition.samples, course
+    )
 
 
 class _Suspicions:
@@ -190,7 +208,10 @@ def _channel_state(recording: Recording, position: int) -> ChannelState:
     return ChannelState(channel.name, channel.unit, low, high, mean, deviation, missing, over_range)
 
 
-def _clock_state(recording: MfrRecording) -> ClockState | None:
+def _clock_course(
+    recording: MfrRecording,
+) -> tuple[NDArray[np.float64], NDArray[np.float64]] | None:
+    """Return the host's and the board's time at each stamp, None where they say nothing."""
     announced = recording.header.announcement
     if announced.simulated and announced.speed != 1.0:
         return None  # such a board runs as fast as it is read
@@ -201,11 +222,12 @@ def _clock_state(recording: MfrRecording) -> ClockState | None:
         return None
     host_s = np.array([(s.monotonic_ns - stamps[0].monotonic_ns) * 1e-9 for s in stamps])
     board_s = np.array([s.index - stamps[0].index for s in stamps]) / recording.rate_hz
-    span_s = float(host_s[-1])
-    if span_s < _CLOCK_SPAN_S:
-        return None
+    return (host_s, board_s) if host_s[-1] >= _CLOCK_SPAN_S else None
+
+
+def _clock_state(host_s: NDArray[np.float64], board_s: NDArray[np.float64]) -> ClockState:
     slope, slope_u = _slope(host_s, board_s)
-    return ClockState(slope - 1.0, slope_u, span_s)
+    return ClockState(slope - 1.0, slope_u, float(host_s[-1]))
 
 
 def _slope(x: NDArray[np.float64], y: NDArray[np.float64]) -> tuple[float, float]:

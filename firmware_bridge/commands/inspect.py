@@ -14,8 +14,15 @@ __all__ = ["inspect"]
 @click.argument("file", metavar="FILE")
 @click.option("--time", metavar="NAME", help="The time column of a table.")
 @click.option("--rate", type=ValueType("Hz", above=0.0), metavar="F", help="Where there is none.")
-@output_options("json")
-def inspect(file: str, time: str | None, rate: float | None, as_json: bool) -> None:
+@output_options("plot", "json", "overwrite")
+def inspect(
+    file: str,
+    time: str | None,
+    rate: float | None,
+    plot: str | None,
+    as_json: bool,
+    overwrite: bool,
+) -> None:
     """Look through a recording: gaps, over-range, channels, the board's clock, and a verdict.
 
     Ends with 1 if something speaks against the recording.
@@ -25,8 +32,17 @@ def inspect(file: str, time: str | None, rate: float | None, as_json: bool) -> N
     from metro.output import to_json
     from metro.units import quantity
 
+    if plot is not None:
+        from metro.figure_file import check_figure
+
+        check_figure(plot, overwrite, [file])
     recording = open_recording(file, time=time, rate=None if rate is None else quantity(rate, "Hz"))
     found = inspect_recording(recording)
+    if plot is not None:
+        from firmware_bridge.inspection_plot import inspection_figure
+        from metro.figure_file import save_figure
+
+        save_figure(inspection_figure(recording, found), plot, overwrite=overwrite)
     if as_json:
         click.echo(to_json(_document(recording, found)))
     else:

@@ -86,7 +86,7 @@ def _mark_missing(axes: Any, overview: Overview, number: int) -> None:  # noqa: 
     missing, edges = overview.missing[number], overview.edges_s
     if not missing.any():
         return
-    axes.autoscale(enable=False)  # the strip has coordinates of its own
+    axes.set_ylim(axes.get_ylim())  # kept: the strip has coordinates of its own
     share = missing / overview.samples
     for start, stop in _runs(share == 1.0):
         axes.axvspan(edges[start], edges[stop], color=_VERMILION, alpha=0.25, linewidth=0)

@@ -12,11 +12,19 @@ if TYPE_CHECKING:
     from calibration.errors import CalibrationError as CalibrationError
     from calibration.fringe_fit import FringeFit as FringeFit
     from calibration.line_fit import LineFit as LineFit
+    from calibration.line_parts import accumulate_lines as accumulate_lines
+    from calibration.line_parts import plan_lines as plan_lines
+    from calibration.line_phasors import LinePhasors as LinePhasors
+    from calibration.line_plan import LinePlan as LinePlan
     from calibration.lines import fit_lines as fit_lines
     from calibration.record import Calibration as Calibration
     from calibration.record import load as load
 
 _HOMES = {
+    "LinePhasors": "calibration.line_phasors",
+    "LinePlan": "calibration.line_plan",
+    "accumulate_lines": "calibration.line_parts",
+    "plan_lines": "calibration.line_parts",
     "LineFit": "calibration.line_fit",
     "fit_lines": "calibration.lines",
     "load": "calibration.record",
@@ -32,10 +40,14 @@ __all__ = [
     "CalibrationError",
     "FringeFit",
     "LineFit",
+    "LinePhasors",
+    "LinePlan",
+    "accumulate_lines",
     "calibrate",
     "fit_driven_fringe",
     "fit_lines",
     "load",
+    "plan_lines",
 ]
 
 

@@ -164,6 +164,8 @@ class LineFit:
         Length of the recording [s], gaps included.
     remarks : tuple of str
         What was done that a reader should know.
+    gaps : tuple of int
+        Lengths of the gaps [samples], in order, where the recording knows them.
     """
 
     lines: tuple[Line, ...]
@@ -174,6 +176,7 @@ class LineFit:
     used_fraction: float
     duration_s: float
     remarks: tuple[str, ...] = field(default=())
+    gaps: tuple[int, ...] = ()
 
     @property
     def clock_offset(self) -> "Measured | None":
@@ -215,6 +218,7 @@ class LineFit:
             "lines": [line.to_dict() for line in self.lines],
             "clock_offset": self.clock_offset,
             "used_fraction": self.used_fraction,
+            "gaps": {"number": len(self.gaps), "samples": sum(self.gaps)},
             "duration": self.duration,
             "remarks": list(self.remarks),
         }

@@ -6,13 +6,14 @@ from typing import TYPE_CHECKING
 
 from calibration.errors import CalibrationError
 from calibration.line_fit import LineFit
-from calibration.lines import fit_lines_si
+from calibration.line_source import RecordingSource
+from calibration.lines import fit_lines_si, fit_source
 from calibration.sampling_times import with_timing
 
 if TYPE_CHECKING:
-    from firmware_bridge.trace import Trace
+    from firmware_bridge.trace import Recording, Trace
 
-__all__ = ["read_lines"]
+__all__ = ["read_lines", "read_recording_lines"]
 
 _OVER_RANGE = 1e-4  # of the samples: what is cut off there would have been the largest
 
@@ -51,8 +52,7 @@ def read_lines(
     CalibrationError
         If no line is named, or one cannot be fitted.
     """
-    if not frequencies_hz:
-        raise CalibrationError("--line is needed: the frequency of each line, such as 1kHz")
+    _check_named(frequencies_hz)
     fit = fit_lines_si(
         response.values,
         response.rate_hz,
@@ -64,11 +64,70 @@ def read_lines(
         value_unit=response.unit,
         drive_unit="1" if drive is None else drive.unit,
     )
-    fit = with_timing(fit, response.timing)
+    traces = [trace for trace in (response, drive) if trace is not None]
+    over_range = {trace.name: trace.over_range for trace in traces}
+    return _judged(with_timing(fit, response.timing), over_range, len(response.values))
+
+
+def read_recording_lines(
+    recording: "Recording",
+    names: Sequence[str],
+    frequencies_hz: Sequence[float],
+    *,
+    from_s: float | None = None,
+    to_s: float | None = None,
+    free: bool = False,
+    mains_hz: float = 50.0,
+) -> LineFit:
+    """Fit the lines of a recording of any size, in bounded memory.
+
+    Parameters
+    ----------
+    recording : Recording
+        Opened.
+    names : sequence of str
+        The photodiode's channel, then perhaps that of the drive monitor.
+    frequencies_hz : sequence of float
+        The lines [Hz].
+    from_s, to_s : float, optional
+        The stretch [s], as :meth:`firmware_bridge.trace.Recording.trace` takes it.
+    free : bool
+        Fit the frequency of each too.
+    mains_hz : float
+        Frequency of the mains [Hz].
+
+    Returns
+    -------
+    LineFit
+        As of :func:`read_lines`, with the gaps of the stretch.
+
+    Raises
+    ------
+    CalibrationError
+        If no line is named, or one cannot be fitted.
+    """
+    _check_named(frequencies_hz)
+    positions = [recording.find(name) for name in names]
+    source = RecordingSource(recording, positions, from_s, to_s)
+    channels = [recording.channels[position] for position in positions]
+    units = (channels[0].unit, channels[-1].unit if len(channels) > 1 else "1")
+    fit = fit_source(source, frequencies_hz, free=free, mains_hz=mains_hz, units=units)
+    over_range = {c.name: n for c, n in zip(channels, source.over_range, strict=True)}
+    fit = _judged(with_timing(fit, recording.timing), over_range, source.length)
+    return replace(fit, gaps=_gaps_within(recording, source.start, source.start + source.length))
+
+
+def _check_named(frequencies_hz: Sequence[float]) -> None:
+    if not frequencies_hz:
+        raise CalibrationError("--line is needed: the frequency of each line, such as 1kHz")
+
+
+def _judged(fit: LineFit, over_range: dict[str, int], samples: int) -> LineFit:
+    """Return a fit distrusted where too many samples of a channel were over range."""
     reasons = [
-        f"clipped: {trace.over_range} samples of {trace.name!r} were over range"
-        for trace in (response, drive)
-        if trace is not None and trace.over_range > _OVER_RANGE * len(trace.values)
+        f"clipped: {number} samples of {name!r} were over range"
+        for name, number in over_range.items()
+        if number > _OVER_RANGE * samples
     ]
     if not reasons:
         return fit
@@ -76,3 +135,9 @@ def read_lines(
         replace(line, distrust_reasons=(*line.distrust_reasons, *reasons)) for line in fit.lines
     )
     return replace(fit, lines=tuple(lines))
+
+
+def _gaps_within(recording: "Recording", start: int, stop: int) -> tuple[int, ...]:
+    """Return the lengths of the gaps in a stretch, what lies outside it cut off."""
+    cut = (min(g.index + g.length, stop) - max(g.index, start) for g in recording.gaps)
+    return tuple(length for length in cut if length > 0)

@@ -7,6 +7,7 @@ the phasors of two parts of a recording add up to those of the whole.
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -30,6 +31,9 @@ _LONGEST_BLOCK = 1 << 14
 _SHORTEST_OF_LONG = 1 << 9
 _FEWEST_BLOCKS = 256
 _FEWEST_OF_LONG = 1024
+_MOST_BLOCKS = (
+    1 << 16
+)  # of each some hundred bytes are kept, and as much again while they are fitted
 _CHUNK_SAMPLES = (
     1 << 22
 )  # 32 MB of float64 a product; bounds the copy of a recording in another format
@@ -118,10 +122,12 @@ def block_length(samples: int) -> int:
     Returns
     -------
     int
-        A power of two: 1 for the shortest records, 16 384 from 17 million samples on.
+        A power of two: 1 for the shortest records, 16 384 from 17 million samples on, more from two
+        thousand million on, so that there are never more than 131 072 blocks.
     """
     wanted = max(1, min(samples // _FEWEST_BLOCKS, _SHORTEST_OF_LONG), samples // _FEWEST_OF_LONG)
-    return min(_LONGEST_BLOCK, int(1 << (wanted.bit_length() - 1)))
+    wanted = max(min(_LONGEST_BLOCK, wanted), samples // _MOST_BLOCKS)
+    return int(1 << (wanted.bit_length() - 1))
 
 
 def start_phases(cycles: NDArray[np.float64], starts: NDArray[np.int64]) -> NDArray[np.float64]:
@@ -187,7 +193,7 @@ def block_phasors(
     """
     size = block_length(len(values)) if block is None else block
     past = np.empty(0) if history is None else np.asarray(history, dtype=np.float64)
-    carriers = _Carriers.of(cycles, size, taps, slopes=slopes)
+    carriers = _carriers(np.asarray(cycles, dtype=np.float64).tobytes(), size, taps, slopes)
     samples = _Samples(values, start_index, past[len(past) - min(len(past), len(taps) - 1) :])
     numbers, products = _whole_blocks(samples, carriers)
     sound = np.isfinite(products).all(axis=1)
@@ -326,6 +332,14 @@ class _Carriers:
     def reach(self) -> int:
         """Samples before a block that its filtered carriers reach into."""
         return len(self.taps) - 1
+
+
+# A recording that is read piece by piece asks for the same columns again and again.
+@lru_cache(maxsize=4)
+def _carriers(
+    cycles: bytes, block: int, taps: tuple[float, ...], slopes: bool
+) -> _Carriers:  # a key
+    return _Carriers.of(np.frombuffer(cycles), block, taps, slopes=slopes)
 
 
 @dataclass(frozen=True, slots=True)

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from calibration.channel_fit import fit_channel
 from calibration.errors import CalibrationError
+from calibration.line_source import ArraySource
 from calibration.phase_course import free_course
 from calibration.phasors import block_phasors
 from calibration.survey import look, nearest_peaks
@@ -82,7 +83,7 @@ def fit_sine(
         )
     cycles = np.array([frequency_hz / rate_hz])
     course = free_course(1, 0, len(samples), rate_hz)
-    survey = look(samples) if free else None
+    survey = look(ArraySource([samples], rate_hz).channels()[0]) if free else None
     if survey is not None:
         cycles = nearest_peaks([survey], cycles)
     for _ in range(_ROUNDS):

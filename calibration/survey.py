@@ -8,10 +8,13 @@ line. It costs one Fourier transform of at most 131 072 samples, whatever the le
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    from calibration.line_source import SourceChannel
 
 __all__ = [
     "MAINS_ORDERS",
@@ -80,12 +83,12 @@ class Survey:
         return float(np.clip(0.5 * (left - right) / curve, -0.5, 0.5)) if curve < 0 else 0.0
 
 
-def look(values: NDArray[Any]) -> Survey | None:
+def look(channel: "SourceChannel") -> Survey | None:
     """Return the survey of the middle of a recording.
 
     Parameters
     ----------
-    values : ndarray, shape (n,)
+    channel : SourceChannel
         Samples, NaN where missing; what is missing is bridged by straight lines.
 
     Returns
@@ -98,9 +101,9 @@ def look(values: NDArray[Any]) -> Survey | None:
     Harris, Proc. IEEE 66 (1978) 51, the minimum four-term window: coefficients from memory, checked by
     its side lobes of −92 dB.
     """
-    length = min(len(values), SURVEYED)
-    first = (len(values) - length) // 2
-    stretch = np.asarray(values[first : first + length], dtype=np.float64)
+    length = min(len(channel), SURVEYED)
+    first = (len(channel) - length) // 2
+    stretch = np.asarray(channel.stretch(first, first + length), dtype=np.float64)
     good = np.isfinite(stretch)
     if good.sum() < max(16, 0.2 * length):
         return None

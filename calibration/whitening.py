@@ -8,7 +8,7 @@ one tap long, no filter at all, where the noise is white.
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +16,9 @@ from numpy.typing import NDArray
 from calibration.phase_course import PhaseCourse
 from calibration.phasors import start_phases
 from calibration.tall_product import tall_product
+
+if TYPE_CHECKING:
+    from calibration.line_source import SourceChannel
 
 __all__ = ["choose_taps", "tap_response"]
 
@@ -48,7 +51,7 @@ def tap_response(taps: tuple[float, ...], cycles: NDArray[np.float64]) -> NDArra
 
 
 def choose_taps(
-    values: NDArray[Any],
+    channel: "SourceChannel",
     cycles: NDArray[np.float64],
     course: PhaseCourse,
     tones: NDArray[np.float64] | None = None,
@@ -57,7 +60,7 @@ def choose_taps(
 
     Parameters
     ----------
-    values : ndarray, shape (n,)
+    channel : SourceChannel
         Samples of any real type, NaN where missing.
     cycles : ndarray, shape (n_lines,)
         Lines present, in cycles a sample; they do not count as noise.
@@ -83,11 +86,11 @@ def choose_taps(
     Schwarz, Ann. Statist. 6 (1978) 461; cited from memory.
     """
     lag = max(1, int(1 / (8 * float(cycles.max()))))
-    orders = [p for p in _ORDERS if 20 * p * lag <= len(values)]
+    orders = [p for p in _ORDERS if 20 * p * lag <= len(channel)]
     if not orders:
         return (1.0,)
     products, rows = _lag_products(
-        values,
+        channel,
         _Waves(cycles if tones is None else np.concatenate([cycles, tones]), course),
         lag,
         orders[-1],
@@ -97,7 +100,7 @@ def choose_taps(
     best, order = _information(products[0, 0], rows, 0), 0
     for p in orders:
         value = _information(_prediction_error(products, p), rows, p)
-        if value < best and _lost_share(values, p * lag) <= _MOST_LOST:
+        if value < best and _lost_share(channel, p * lag) <= _MOST_LOST:
             best, order = value, p
     return _spread_taps(products, order, lag)
 
@@ -125,9 +128,9 @@ def _spread_taps(products: NDArray[np.float64], order: int, lag: int) -> tuple[f
     return tuple(taps.tolist())
 
 
-def _lost_share(values: NDArray[Any], reach: int) -> float:
+def _lost_share(channel: "SourceChannel", reach: int) -> float:
     """Return the share of the present samples that a filter of this reach cannot use."""
-    looked = values[: _SEGMENTS * _SEGMENT_SAMPLES]
+    looked = channel.stretch(0, min(len(channel), _SEGMENTS * _SEGMENT_SAMPLES))
     present = np.isfinite(looked)
     if present.all() or not present.any():
         return 0.0
@@ -152,11 +155,11 @@ class _Waves:
 
 
 def _lag_products(
-    values: NDArray[Any], waves: "_Waves", lag: int, order: int
+    channel: "SourceChannel", waves: "_Waves", lag: int, order: int
 ) -> tuple[NDArray[np.float64], int]:
     """Return Σ of products of the lagged samples, lines and offset taken out, and the row count."""
     total, rows = np.zeros((order + 1, order + 1)), 0
-    for n, lagged in _lagged_rows(values, lag, order):
+    for n, lagged in _lagged_rows(channel, lag, order):
         known = np.hstack([waves.columns(n), np.ones((len(n), 1))])
         if len(n) <= 2 * known.shape[1]:
             continue
@@ -172,16 +175,17 @@ def _lag_products(
 
 
 def _lagged_rows(
-    values: NDArray[Any], lag: int, order: int
+    channel: "SourceChannel", lag: int, order: int
 ) -> Iterator[tuple[NDArray[np.int64], NDArray[np.float64]]]:
     reach = order * lag
-    length = min(len(values), max(_SEGMENT_SAMPLES, 4 * reach))
-    segments = min(_SEGMENTS, max(1, len(values) // length))
-    for begin in np.linspace(0, len(values) - length, segments).astype(np.int64):
+    length = min(len(channel), max(_SEGMENT_SAMPLES, 4 * reach))
+    segments = min(_SEGMENTS, max(1, len(channel) // length))
+    for begin in np.linspace(0, len(channel) - length, segments).astype(np.int64):
         n = np.unique(
             np.linspace(begin + reach, begin + length - 1, _SEGMENT_ROWS).astype(np.int64)
         )
-        lagged = values[n[:, None] - lag * np.arange(order + 1)].astype(np.float64)
+        stretch = channel.stretch(int(begin), int(begin) + length)
+        lagged = stretch[n[:, None] - begin - lag * np.arange(order + 1)].astype(np.float64)
         good = np.isfinite(lagged).all(axis=1)
         if good.any():
             yield n[good], lagged[good]

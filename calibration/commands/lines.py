@@ -53,17 +53,20 @@ def lines(
     Phases are those at the recording's first sample, whatever --from says. Without --drive a channel
     named "drive" is the drive.
     """
-    from calibration.line_reading import read_lines
+    from calibration.line_reading import read_recording_lines
     from metro.output import check_document, to_json, write_whole
 
     if out is not None:
         check_document(out, overwrite, [file, bench.path])
     recording = reading.open(file)
     reading = _with_drive(reading, recording, bench)
-    fit = read_lines(
-        reading.signal(recording),
-        reading.drive(recording),
+    drive = [] if reading.drive_channel is None else [reading.drive_channel]
+    fit = read_recording_lines(
+        recording,
+        [reading.channel_name(recording), *drive],
         list(lines_hz) or [line.frequency_hz for line in bench.lines],
+        from_s=reading.from_s,
+        to_s=reading.to_s,
         free=free,
         mains_hz=mains_hz or _mains(bench),
     )

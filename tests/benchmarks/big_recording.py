@@ -1,0 +1,51 @@
+"""A recording of any size with lines in noise, written fast: for benchmarks and tests of memory."""
+
+import numpy as np
+
+from firmware_bridge.announcement import Announcement, ChannelInfo
+from firmware_bridge.envelope import seal_rows
+from firmware_bridge.frame import pack_frames
+from firmware_bridge.recording_header import Header, encode_header
+
+__all__ = ["LINES_HZ", "RATE_HZ", "VOLTS_A_COUNT", "write_recording"]
+
+RATE_HZ = 100_000.0
+LINES_HZ = (1200.0, 2050.0, 3150.0, 4300.0, 5450.0, 7050.0, 8600.0, 9900.0)
+"""Whole cycles in the period that is written again and again."""
+
+VOLTS_A_COUNT = 1e-4
+_PERIOD = 2000  # samples: 20 ms
+_SLOTS = 500
+_FRAMES = 2000
+_AMPLITUDE = 1000.0  # counts
+
+
+def write_recording(path, size, seed=1):
+    """Write an int16 recording of one channel, of about ``size`` bytes; return its samples.
+
+    The noise comes again after some hundred thousand samples, shifted by 17 samples each time and
+    with a new sign, so that it stays white enough.
+    """
+    announced = Announcement(1, RATE_HZ, "int16", _SLOTS, [ChannelInfo("pd", "V", VOLTS_A_COUNT)])
+    header = Header(announced)
+    step = _SLOTS * _FRAMES
+    t = np.arange(step) / RATE_HZ
+    lines = sum(_AMPLITUDE * np.cos(2 * np.pi * f * t + k) for k, f in enumerate(LINES_HZ))
+    rng = np.random.default_rng(seed)
+    noise = 300.0 * rng.standard_normal(step + 17 * 64)
+    chunks = max(1, round(size / (header.record_bytes * _FRAMES)))
+    with open(path, "wb") as file:  # noqa: PTH123  # a plain file, written as it comes
+        file.write(encode_header(header))
+        for k in range(chunks):
+            shift = 17 * int(rng.integers(64))
+            counts = lines + rng.choice([-1.0, 1.0]) * noise[shift : shift + step]
+            rows = pack_frames(
+                np.rint(counts).astype(np.int16)[:, None],
+                slots=_SLOTS, first_index=k * step, first_sequence=k * _FRAMES,
+                stream=1, clock=0, flags=0, format="int16",
+            )  # fmt: skip
+            sealed = seal_rows(rows)
+            padded = np.zeros((_FRAMES, header.record_bytes), np.uint8)
+            padded[:, : sealed.shape[1]] = sealed
+            file.write(padded.tobytes())
+    return chunks * step

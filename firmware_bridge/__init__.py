@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from firmware_bridge.errors import DeviceFailedError as DeviceFailedError
     from firmware_bridge.frame import encode_frame as encode_frame
     from firmware_bridge.frame import encode_stream as encode_stream
+    from firmware_bridge.live_session import LiveSession as LiveSession
     from firmware_bridge.message import Note as Note
     from firmware_bridge.opening import open_recording as open_recording
     from firmware_bridge.recorder import RecordSummary as RecordSummary
@@ -33,6 +34,7 @@ _HOMES = {
     "DeviceFailedError": "firmware_bridge.errors",
     "Discarded": "firmware_bridge.envelope",
     "Gap": "firmware_bridge.trace",
+    "LiveSession": "firmware_bridge.live_session",
     "Note": "firmware_bridge.message",
     "RecordSummary": "firmware_bridge.recorder",
     "Recording": "firmware_bridge.trace",
@@ -53,6 +55,7 @@ __all__ = [
     "DeviceFailedError",
     "Discarded",
     "Gap",
+    "LiveSession",
     "Note",
     "RecordSummary",
     "Recording",

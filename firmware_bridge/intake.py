@@ -80,6 +80,7 @@ class Intake:
         self._last: Samples | None = None
         self._unsaid: Counter[str] = Counter()
         self._was_away = False
+        self._latest: Announcement | None = None
         self._has_end = False  # written into the present file
         self.files: list[Path] = []
         """The files written, in order."""
@@ -101,6 +102,16 @@ class Intake:
     def is_announced(self) -> bool:
         """Whether the board's announcement for what it sends now is known."""
         return self._writer is not None and not self._pending
+
+    @property
+    def announcement(self) -> Announcement | None:
+        """What the board said last about itself, None from the port's loss until it speaks again."""
+        return self._latest
+
+    @property
+    def bytes_written(self) -> int:
+        """Length of all files together, with what still waits to be written."""
+        return self._earlier_bytes + (0 if self._writer is None else self._writer.bytes)
 
     @property
     def is_known(self) -> bool:
@@ -191,6 +202,7 @@ class Intake:
     def away(self) -> None:
         """Take note that the port was away: nothing from before will come any more."""
         self._was_away = True
+        self._latest = None
 
     def close(self, *, is_as_asked: bool = True) -> None:
         """Close the recording: the last stamp, what was discarded, everything on the disk.
@@ -227,7 +239,7 @@ class Intake:
         except MessageError as error:
             self._discard_message(message, str(error))
             return
-        self._announced[announcement.stream] = announcement
+        self._announced[announcement.stream] = self._latest = announcement
         self._decoder.accept(message)
         waiting, self._pending = self._pending, []
         for frame in waiting:

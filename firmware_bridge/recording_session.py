@@ -6,20 +6,31 @@ import threading
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Protocol
 
 from firmware_bridge.byte_queue import Arrival, ByteQueue
-from firmware_bridge.envelope import Unwrapper
+from firmware_bridge.drive_desk import DriveDesk
+from firmware_bridge.drive_lines import DriveError
+from firmware_bridge.envelope import Discarded, Unwrapper
 from firmware_bridge.errors import BridgeError, DeviceFailedError
-from firmware_bridge.intake import Intake
-from firmware_bridge.message import CommandCode, MessageType, encode_command
+from firmware_bridge.message import (
+    CommandCode,
+    MessageError,
+    MessageType,
+    Reply,
+    encode_command,
+    parse_message,
+)
 from firmware_bridge.port import ByteSource, PortError, PortLostError, open_port
 from firmware_bridge.silence import Silence
+from firmware_bridge.sink import Sink
 from firmware_bridge.text_frames import TextFramer
 
-__all__ = ["Progress", "RecordingSession"]
+__all__ = ["Progress", "RecordingSession", "Watcher"]
 
 _log = logging.getLogger(__name__)
 
+_SAMPLED = (MessageType.SAMPLES, MessageType.LOCK_IN)
 _ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
 _REOPEN_S = 0.25
 
@@ -54,6 +65,30 @@ class Progress:
     is_lost: bool
 
 
+class Watcher(Protocol):
+    """Who is told how a port stands, instead of an end to the recording."""
+
+    def state(self, state: str, reason: str) -> None:
+        """Take note of "connected", "gone" or "silent".
+
+        Parameters
+        ----------
+        state, reason : str
+            Which, and why.
+        """
+
+    def reply(self, text: str, *, refused: bool) -> None:
+        """Take note of what the board says to a command.
+
+        Parameters
+        ----------
+        text : str
+            One line.
+        refused : bool
+            Whether it does not obey.
+        """
+
+
 class RecordingSession:
     """The two threads of one recording and what they share.
 
@@ -63,7 +98,7 @@ class RecordingSession:
         The open port.
     baud : int
         Symbols per second, for opening it again.
-    intake : Intake
+    intake : Sink
         Where messages go.
     framer : TextFramer, optional
         Where the board prints text.
@@ -71,21 +106,30 @@ class RecordingSession:
         Wait for a port that is gone.
     stop : threading.Event
         Ends the recording when set.
+    desk : DriveDesk, optional
+        Who wants drive lines of the board.
+    watcher : Watcher, optional
+        Who is told of a port that is gone, of silence and of refusals; nothing of these ends the
+        session then.
     """
 
     def __init__(
         self,
         source: ByteSource,
         baud: int,
-        intake: Intake,
+        intake: Sink,
         framer: TextFramer | None,
         reconnect: bool,
         stop: threading.Event,
+        desk: DriveDesk | None = None,
+        watcher: Watcher | None = None,
     ) -> None:
         self._source, self._name, self._baud = source, source.name, baud
         self._intake, self._framer, self._reconnect = intake, framer, reconnect
         self._unwrapper = Unwrapper()
         self._stop = stop
+        self._desk = desk
+        self._watcher = watcher
         self._ended = threading.Event()  # the reader will put nothing more
         self._written = threading.Event()
         self._queue = ByteQueue()
@@ -151,6 +195,7 @@ class RecordingSession:
                 if asked_s is None or now_s - asked_s >= _ASK_S:
                     self._ask(is_first=asked_s is None)
                     asked_s = now_s
+                self._drive()
                 try:
                     data = self._source.read()
                 except PortLostError as error:
@@ -161,14 +206,53 @@ class RecordingSession:
                     continue
                 if data:
                     self._queue.put(_arrival(data))
-            if self._framer is None:
-                self._say(CommandCode.STOP)
         except Exception as error:  # noqa: BLE001  # a thread's failure is the recording's
             self._failure = error
             self._stop.set()
         finally:
             self._ended.set()
+            self._leave()
             self._source.close()
+
+    def _leave(self) -> None:
+        """Bring the drive to rest and the board to a stop; on a port that is gone nothing happens."""
+        if self._framer is not None:
+            return
+        if self._desk is not None:
+            for wait_s, requests in self._desk.fall(self._intake.announcement):
+                time.sleep(wait_s)
+                if not all(self._say(code, arguments) for code, arguments in requests):
+                    break  # it goes to rest by itself once nobody speaks
+        self._say(CommandCode.STOP)
+
+    def _drive(self) -> None:
+        """Send what is due for the drive."""
+        if self._desk is None or self._framer is not None:
+            return
+        try:
+            requests = self._desk.due(self._intake.announcement)
+        except BridgeError as error:
+            self._refused(str(error))
+            return
+        for code, arguments in requests:
+            self._desk.sent(self._request + 1, code)
+            self._say(code, arguments)
+        for notice in self._desk.notices():
+            if self._watcher is None:
+                _log.warning("%s", notice)
+            else:
+                self._watcher.reply(notice, refused=True)
+
+    def _heard(self, answer: tuple[str, bool] | None) -> None:
+        if answer is not None and answer[1]:
+            self._refused(answer[0])
+        elif answer is not None and self._watcher is not None:
+            self._watcher.reply(answer[0], refused=False)
+
+    def _refused(self, reason: str) -> None:
+        if self._watcher is None:
+            raise DriveError(f"{self._name}: {reason}")
+        self._watcher.reply(reason, refused=True)
 
     def _ask(self, *, is_first: bool) -> None:
         if self._framer is not None:
@@ -180,12 +264,9 @@ class RecordingSession:
         if is_first:
             self._say(CommandCode.START)
 
-    def _say(self, code: CommandCode) -> None:
-        self._source.write(encode_command(code, self._next_request()))
-
-    def _next_request(self) -> int:
-        self._request = (self._request + 1) % 65536
-        return self._request
+    def _say(self, code: CommandCode, arguments: bytes = b"") -> bool:
+        self._request += 1
+        return self._source.write(encode_command(code, self._request % 65536, arguments))
 
     def _reopen(self) -> bool:
         self._source.close()
@@ -255,18 +336,34 @@ class RecordingSession:
             return framer.heard > before
         pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
-            self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
+            if self._desk is None or self._is_wanted(piece, self._desk):
+                self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
         return any(isinstance(piece, bytes) and piece[0] != MessageType.COMMAND for piece in pieces)
 
+    def _is_wanted(self, piece: bytes | Discarded, desk: DriveDesk) -> bool:
+        """Return whether a piece is to be kept; hear what the board says about its drive."""
+        if isinstance(piece, bytes) and piece[0] == MessageType.REPLY:
+            with contextlib.suppress(MessageError):
+                reply = parse_message(piece)
+                self._heard(desk.heard(reply) if isinstance(reply, Reply) else None)
+        # Samples of a drive that is not yet as wanted would spoil every fit.
+        is_sample = isinstance(piece, bytes) and piece[0] in _SAMPLED
+        return not is_sample or desk.is_settled()
+
     def _back(self) -> None:
         self._is_lost = False
+        if self._desk is not None:
+            self._desk.away()
         if self._framer is not None:
             self._framer.restart()
         self._silence.reset()
         self._intake.away()
         self._intake.remark(f"{self._name} is back")
-        _log.warning("%s is back", self._name)
+        if self._watcher is not None:
+            self._watcher.state("connected", f"{self._name} is back")
+        else:
+            _log.warning("%s is back", self._name)
 
     def _lost(self, reason: str) -> None:
         for piece in self._unwrapper.close():
@@ -276,8 +373,11 @@ class RecordingSession:
         self._intake.remark(f"{self._name} is gone: {reason}")
         if not self._reconnect:
             raise DeviceFailedError(f"{self._name} failed: {reason}; {self._kept()}")
-        _log.warning("%s is gone (%s); waiting for it", self._name, reason)
         self._is_lost = True
+        if self._watcher is not None:
+            self._watcher.state("gone", reason)
+        else:
+            _log.warning("%s is gone (%s); waiting for it", self._name, reason)
 
     def _check_silence(self) -> None:
         if self._is_lost:
@@ -286,7 +386,9 @@ class RecordingSession:
         complaint = self._silence.maybe_complaint(
             intake.is_known, bool(intake.files), self._reconnect
         )
-        if complaint:
+        if complaint and self._watcher is not None:
+            self._watcher.state("silent", complaint)
+        elif complaint:
             self._finish_text()
             raise DeviceFailedError(f"{complaint}; {self._kept()}")
 

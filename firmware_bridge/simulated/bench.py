@@ -1,10 +1,12 @@
 """A simulated bench: the truth of one seed and a new stream of samples for every recording."""
 
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.simulated.live_drive import LiveDrive
 from firmware_bridge.simulated.setup import Setup
 from firmware_bridge.simulated.stream import MAINS_V, Converter, Electronics, SampleStream
 from firmware_bridge.simulated.truth import Truth, draw_truth
 from metro.bench import Bench
+from metro.drive import terminal_factor
 
 __all__ = ["SimulatedBench"]
 
@@ -41,9 +43,11 @@ class SimulatedBench:
             mains_v=bench.magnitude("mains.pickup", MAINS_V),
         )
         self.transimpedance_v_per_a = self._electronics.transimpedance_v_per_a
+        self.terminal_factor = terminal_factor(bench, recorded=True)
+        """Nominal volts at the actuator's terminals per volt of the drive's channel."""
         self._seed = seed
 
-    def start(self, setup: Setup, number: int = 1) -> SampleStream:
+    def start(self, setup: Setup, number: int = 1, drive: LiveDrive | None = None) -> SampleStream:
         """Return the stream of one recording; each ``number`` has noise of its own."""
         return SampleStream(
             setup,
@@ -52,6 +56,7 @@ class SimulatedBench:
             self._electronics,
             self.rate_hz,
             [self._seed, number],
+            drive,
         )
 
 

@@ -2,6 +2,7 @@
 
 Behind the terminal it waits for ``start``, announces itself under a new stream id and sends frames
 as fast as they are read: the terminal's own back-pressure paces it, so nothing is ever dropped.
+Or it runs in real time, to be looked at while drive lines are set over the wire.
 """
 
 import errno
@@ -29,7 +30,9 @@ from firmware_bridge.frame import (
     encode_stream,
 )
 from firmware_bridge.simulated.bench import SimulatedBench
+from firmware_bridge.simulated.live_drive import LiveDrive
 from firmware_bridge.simulated.setup import Setup
+from firmware_bridge.simulated.wired_drive import Pace, WiredDrive
 
 __all__ = ["SimulatedBoard", "wire_bytes"]
 
@@ -41,7 +44,7 @@ FRAMES_AT_ONCE = 16
 _WAIT_S = 0.05
 
 
-def announcement_of(bench: SimulatedBench, stream: int) -> Announcement:
+def announcement_of(bench: SimulatedBench, stream: int, speed: float = SPEED) -> Announcement:
     """Return what the board says about itself for one stream."""
     step_v, half = bench.converter.step_v, 2 ** (bench.converter.bits - 1)
     channels = [
@@ -57,7 +60,7 @@ def announcement_of(bench: SimulatedBench, stream: int) -> Announcement:
         firmware="midfringe",
         simulated=True,
         clock_hz=1_000_000,
-        speed=SPEED,
+        speed=speed,
     )
 
 
@@ -66,7 +69,14 @@ def _slots(rate_hz: float) -> int:
 
 
 def wire_bytes(
-    bench: SimulatedBench, setup: Setup, stream: int, number: int = 1
+    bench: SimulatedBench,
+    setup: Setup,
+    stream: int,
+    number: int = 1,
+    *,
+    speed: float = SPEED,
+    frames_at_once: int = FRAMES_AT_ONCE,
+    drive: LiveDrive | None = None,
 ) -> Iterator[bytes]:
     """Yield the bytes of one recording, endlessly: the announcement, then frames.
 
@@ -80,19 +90,25 @@ def wire_bytes(
         Stream id.
     number : int
         Which recording of the session this is: each has noise of its own.
+    speed : float
+        How fast its clock runs, as announced.
+    frames_at_once : int
+        Frames in what is yielded.
+    drive : LiveDrive, optional
+        Lines set while it runs.
 
     Yields
     ------
     bytes
         Whole messages as they go over the wire.
     """
-    announcement = announcement_of(bench, stream)
+    announcement = announcement_of(bench, stream, speed)
     yield encode_announcement(announcement)
-    samples = bench.start(setup, number)
+    samples = bench.start(setup, number, drive)
     low, high = announcement.channels[0].low, announcement.channels[0].high
     slots, sent, sequence = announcement.slots, 0, 0
     while True:
-        codes = samples.block(slots * FRAMES_AT_ONCE)
+        codes = samples.block(slots * frames_at_once)
         yield encode_stream(
             codes,
             slots=slots,
@@ -104,7 +120,7 @@ def wire_bytes(
             over_range=np.any((codes == low) | (codes == high), axis=1),
         )
         sent += codes.shape[0]
-        sequence += FRAMES_AT_ONCE
+        sequence += frames_at_once
 
 
 class SimulatedBoard:
@@ -116,6 +132,8 @@ class SimulatedBoard:
         The bench behind it.
     setup : Setup
         Its state at first; `set_up` changes it.
+    speed : float, optional
+        Seconds of its clock per second, such as 1 for real time; by default as fast as it is read.
 
     Attributes
     ----------
@@ -123,8 +141,10 @@ class SimulatedBoard:
         Path of the terminal to open, such as ``/dev/pts/3``.
     """
 
-    def __init__(self, bench: SimulatedBench, setup: Setup) -> None:
-        self._bench, self._setup = bench, setup
+    def __init__(self, bench: SimulatedBench, setup: Setup, *, speed: float | None = None) -> None:
+        self._bench, self._setup, self._speed = bench, setup, speed
+        self._wired = WiredDrive(bench)
+        self._pace = Pace(_slots(bench.rate_hz) / bench.rate_hz / speed) if speed else None
         self._stream = 0
         self._number = 1
         self._source: Iterator[bytes] | None = None
@@ -166,11 +186,16 @@ class SimulatedBoard:
     def _run(self) -> None:
         decoder = Decoder()
         while not self._stopping.is_set():
-            busy = bool(self._outbox) or self._source is not None
+            wait_s = _WAIT_S if self._pace is None else self._pace.wait_s(_WAIT_S)
+            busy = bool(self._outbox) or (self._source is not None and wait_s <= 0)
             ready, room, _ = select.select(
-                [self._master], [self._master] if busy else [], [], _WAIT_S
+                [self._master],
+                [self._master] if busy else [],
+                [],
+                wait_s if wait_s > 0 else _WAIT_S,
             )
             with self._lock:
+                self._wired.check_silence()
                 if ready:
                     self._obey(decoder)
                 if room:
@@ -188,23 +213,47 @@ class SimulatedBoard:
                 self._answer(event)
 
     def _answer(self, command: Command) -> None:
+        self._wired.hear()
         if command.code == CommandCode.START and self._source is not None:
             self._outbox += encode_reply(Reply(command.code, command.request))  # sends already
         elif command.code == CommandCode.START:
             self._stream += 1
             self._outbox = encode_reply(Reply(command.code, command.request))
-            self._source = wire_bytes(self._bench, self._setup, self._stream, self._number)
+            self._source = self._begin()
         elif command.code == CommandCode.STOP:
             self._source = None
             self._outbox = encode_reply(Reply(command.code, command.request))
         elif command.code == CommandCode.IDENTIFY:
-            self._outbox += encode_announcement(announcement_of(self._bench, self._stream))
+            announcement = announcement_of(self._bench, self._stream, self._speed or SPEED)
+            self._outbox += encode_announcement(announcement)
+        elif command.code in WiredDrive.CODES:
+            refusal = self._wired.maybe_refusal(command)
+            status = 2 if refusal else 0
+            self._outbox += encode_reply(Reply(command.code, command.request, status, refusal))
         elif command.code != CommandCode.KEEP_ALIVE:
             self._outbox += encode_reply(Reply(command.code, command.request, status=1))
+
+    def _begin(self) -> Iterator[bytes]:
+        if self._pace is None:
+            return wire_bytes(
+                self._bench, self._setup, self._stream, self._number, drive=self._wired.drive
+            )
+        self._pace.begin()
+        return wire_bytes(
+            self._bench,
+            self._setup,
+            self._stream,
+            self._number,
+            speed=self._speed or SPEED,
+            frames_at_once=1,
+            drive=self._wired.drive,
+        )
 
     def _send(self) -> None:
         if not self._outbox and self._source is not None:
             self._outbox = next(self._source)
+            if self._pace is not None:
+                self._pace.count()
         try:
             sent = os.write(self._master, self._outbox)
         except BlockingIOError:

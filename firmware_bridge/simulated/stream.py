@@ -12,6 +12,7 @@ from math import pi
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.simulated.live_drive import LiveDrive
 from firmware_bridge.simulated.motion import Component, Motion
 from firmware_bridge.simulated.response import AHEAD, pole_gain, taps_for_poles
 from firmware_bridge.simulated.setup import Setup
@@ -88,6 +89,8 @@ class SampleStream:
         Nominal sample rate [Hz]; the true one is rate·(1 + clock).
     seed : list of int
         Seed of this recording's noise.
+    drive : LiveDrive, optional
+        Lines that are set while it runs, beside those of the state.
     """
 
     def __init__(
@@ -98,6 +101,7 @@ class SampleStream:
         electronics: Electronics,
         rate_hz: float,
         seed: list[int],
+        drive: LiveDrive | None = None,
     ) -> None:
         self._setup, self._truth, self._converter = setup, truth, converter
         self._electronics = electronics
@@ -113,6 +117,8 @@ class SampleStream:
         self._taps = taps_for_poles(truth.readout_corners_hz, rate_hz)
         self._behind = self._taps.size - 1 - AHEAD
         self._next = -self._behind  # the filter's history: samples before the first one sent
+        self._live = drive or LiveDrive()
+        self._live.restart(self._next / self._rate_hz)
         self._start_m: float | None = None  # where the arms are when the operator sets mid-fringe
         self._held = self._light(AHEAD + self._behind)
         self._sent = 0
@@ -127,6 +133,7 @@ class SampleStream:
         photodiode_v += self._truth.dark_v + self._interference(time_s)
         drive_v = self._drive_reading(time_s)
         volts = np.stack([photodiode_v, drive_v], axis=1)
+        self._live.advance(self._next / self._rate_hz)
         volts += self._converter_rng.normal(0.0, self._converter.noise_v, volts.shape)
         return self._converter.codes(volts, self._truth)
 
@@ -202,4 +209,4 @@ class SampleStream:
             gain = response(tone.frequency_hz)
             turn = 2 * pi * tone.frequency_hz * time_s + tone.phase_rad + np.angle(gain)
             total += tone.amplitude_v * abs(gain) * np.cos(turn)
-        return total
+        return total + self._live.volts(time_s, response)

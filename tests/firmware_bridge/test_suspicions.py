@@ -85,3 +85,13 @@ def test_rounded_numbers_and_rare_codes_are_not_missing():
     rare = Codes(1.0, 0.0)
     rare.add(np.rint(rng.normal(0, 100, 2000)))
     assert rare.missing() == []
+
+
+def test_a_line_switched_on_over_a_quiet_channel_has_no_missing_codes():
+    rng = np.random.default_rng(4)
+    found = Codes(1.0, 0.0)
+    quiet, n = rng.normal(0.0, 1.3, 6000), np.arange(6000)
+    found.add(np.rint(quiet))
+    found.add(np.rint(3000 * np.cos(0.137 * n)))
+    found.add(np.rint(40 + rng.normal(0.0, 1.3, 6000)))  # another level: nothing between them
+    assert found.missing() == []

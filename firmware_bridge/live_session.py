@@ -1,0 +1,292 @@
+"""A port held by a process of its own: look on, record and drive without ever being in its way."""
+
+import signal
+from multiprocessing import get_context
+from multiprocessing.connection import Connection
+from pathlib import Path
+from types import TracebackType
+from typing import TYPE_CHECKING, Self
+
+from firmware_bridge.drive_lines import DriveLine, DriveLines
+from firmware_bridge.errors import BridgeError
+from firmware_bridge.live_events import (
+    LiveBlock,
+    LiveChannels,
+    LiveEvent,
+    LiveGap,
+    LiveRecording,
+    LiveReply,
+    LiveState,
+)
+from firmware_bridge.live_process import LiveOptions, Order, hold_port
+
+if TYPE_CHECKING:
+    from multiprocessing.context import SpawnProcess
+
+__all__ = [
+    "LiveBlock",
+    "LiveChannels",
+    "LiveEvent",
+    "LiveGap",
+    "LiveRecording",
+    "LiveReply",
+    "LiveSession",
+    "LiveState",
+    "recording_in",
+]
+
+_CLOSE_S = 10.0
+_AT_ONCE = 64  # messages of one poll, so that it returns even if they come as fast as it takes them
+
+
+class LiveSession:
+    """Hold a port in another process; use it in a ``with`` block.
+
+    The process reads, records and drives whatever this one does. Whoever polls too seldom loses
+    blocks of the view, never samples of a recording. If this process dies, the other brings the
+    drive to rest, ends the recording and ends itself. A port that is gone is waited for; drive lines
+    are then not set again by themselves.
+
+    Parameters
+    ----------
+    port : str
+        Port name or pyserial URL.
+    baud : int
+        Symbols per second.
+    text : bool
+        The board prints lines of numbers.
+    reconnect : bool
+        Wait for a port that is not there or gone; else the session ends.
+    folder : Path
+        Where recordings go.
+    drive_limit_v : float, optional
+        Largest voltage of all drive lines together [V]; without it no line is set. No interlock.
+    terminal_factor : float
+        Volts that are meant, at the actuator's terminals, per volt of the board's drive channel.
+    """
+
+    def __init__(
+        self,
+        port: str,
+        *,
+        folder: Path,
+        baud: int = 115200,
+        text: bool = False,
+        reconnect: bool = True,
+        drive_limit_v: float | None = None,
+        terminal_factor: float = 1.0,
+    ) -> None:
+        self._options = LiveOptions(port, baud, text, reconnect, drive_limit_v, terminal_factor)
+        self._folder = Path(folder)
+        self._connection: Connection | None = None
+        self._process: SpawnProcess | None = None
+
+    def start(self) -> Self:
+        """Start the process that holds the port; what it finds there comes by `poll`.
+
+        Returns
+        -------
+        LiveSession
+            Itself.
+        """
+        if self._process is not None:
+            return self
+        context = get_context("spawn")
+        ours, theirs = context.Pipe()
+        process = context.Process(
+            target=hold_port, args=(theirs, self._options), name="midfringe port", daemon=True
+        )
+        # Ctrl-C at the terminal reaches every process of it; this one is closed by its parent.
+        blocked = _block_interrupt()
+        try:
+            process.start()
+        finally:
+            _restore_interrupt(blocked)
+        theirs.close()
+        self._connection, self._process = ours, process
+        return self
+
+    def close(self) -> None:
+        """Bring the drive to rest, end the recording, give the port back."""
+        process, connection = self._process, self._connection
+        self._process = self._connection = None
+        if process is None or connection is None:
+            return
+        _send(connection, Order("close"))
+        for _ in range(round(_CLOSE_S / 0.05)):
+            _taken(connection)  # what still waits for us would keep the process from ending
+            process.join(0.05)
+            if process.exitcode is not None:
+                break
+        else:
+            process.terminate()
+            process.join(_CLOSE_S)
+        connection.close()
+
+    def __enter__(self) -> Self:
+        return self.start()
+
+    def __exit__(
+        self,
+        kind: type[BaseException] | None,
+        error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:
+        self.close()
+
+    @property
+    def is_running(self) -> bool:
+        """Whether the process that holds the port is there."""
+        return self._process is not None and self._process.is_alive()
+
+    def poll(self) -> list[LiveEvent]:
+        """Return what has happened since the last time, without waiting.
+
+        Returns
+        -------
+        list of LiveEvent
+            In order; perhaps not yet all of it, if very much has happened.
+        """
+        if self._connection is None:
+            return []
+        events, is_ended = _taken(self._connection)
+        if is_ended:
+            self._connection.close()
+            self._connection = None
+            if not any(isinstance(e, LiveState) and e.state in _LAST for e in events):
+                events.append(LiveState("failed", "the process that held the port has ended"))
+        return events
+
+    def start_recording(self, name: str) -> Path:
+        """Record what comes from now on; a recording that runs ends with the frame before.
+
+        Parameters
+        ----------
+        name : str
+            A plain file name ``NAME.mfr``; it goes into the folder.
+
+        Returns
+        -------
+        Path
+            The file to be.
+
+        Raises
+        ------
+        BridgeError
+            If the name is anything else, or there is such a file.
+        """
+        path = recording_in(self._folder, name)
+        self._order(Order("record", path=path))
+        return path
+
+    def stop_recording(self) -> None:
+        """End the recording that runs."""
+        self._order(Order("end"))
+
+    def set_line(
+        self, slot: int, frequency_hz: float, amplitude_v: float, phase_rad: float = 0.0
+    ) -> None:
+        """Set a line of the drive; what the board says comes as `LiveReply`.
+
+        Parameters
+        ----------
+        slot : int
+            Which of the board's lines, from 0.
+        frequency_hz : float
+            By the board's clock [Hz].
+        amplitude_v : float
+            Zero to peak [V].
+        phase_rad : float
+            At the board's sample 0 [rad].
+
+        Raises
+        ------
+        DriveError
+            If it is no line, or beyond the limit together with the others.
+        """
+        line = DriveLine(frequency_hz, amplitude_v, phase_rad)
+        # The other process checks again, with the lines that are truly set.
+        DriveLines(self._options.drive_limit_v).set(slot, line)
+        self._order(Order("set", slot=slot, line=line))
+
+    def clear_line(self, slot: int) -> None:
+        """Take a line out of the drive.
+
+        Parameters
+        ----------
+        slot : int
+            Which, from 0.
+        """
+        self._order(Order("clear", slot=slot))
+
+    def rest(self) -> None:
+        """Bring the drive to rest, before anything else that was asked."""
+        self._order(Order("rest"))
+
+    def _order(self, order: Order) -> None:
+        if self._connection is None or not _send(self._connection, order):
+            raise BridgeError(f"the process that held {self._options.port} has ended")
+
+
+_LAST = ("failed", "closed")
+
+
+def recording_in(folder: Path, name: str) -> Path:
+    """Return where a recording of a plain name goes.
+
+    Parameters
+    ----------
+    folder : Path
+        Where recordings go.
+    name : str
+        Such as ``run.mfr``.
+
+    Returns
+    -------
+    Path
+        Inside the folder.
+
+    Raises
+    ------
+    BridgeError
+        If the name could lead anywhere else, is no recording's, or is taken.
+    """
+    is_plain = name == Path(name).name and not set(name) & set('/\\:*?"<>|') and name.isprintable()
+    if not is_plain or name.startswith(".") or not name.lower().endswith(".mfr"):
+        raise BridgeError(f"name must be a plain file name NAME.mfr, got {name!r}")
+    path = folder / name
+    if path.exists() or path.is_symlink():
+        raise BridgeError(f"{name} exists already in {folder}")
+    return path
+
+
+def _send(connection: Connection, order: Order) -> bool:
+    try:
+        connection.send(order)
+    except (OSError, ValueError):
+        return False
+    return True
+
+
+def _taken(connection: Connection) -> tuple[list[LiveEvent], bool]:
+    """Return what has come, and whether nothing will come any more."""
+    events: list[LiveEvent] = []
+    try:
+        for _ in range(_AT_ONCE):
+            if not connection.poll(0):
+                return events, False
+            events += connection.recv()
+    except (EOFError, OSError):
+        return events, True
+    return events, False
+
+
+def _block_interrupt() -> set[int] | None:
+    if not hasattr(signal, "pthread_sigmask"):
+        return None
+    return set(signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT}))
+
+
+def _restore_interrupt(before: set[int] | None) -> None:
+    if before is not None:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)

@@ -19,7 +19,7 @@ from calibration.working_point import edge_reasons, invert_fringe
 from firmware_bridge.trace import Channel, Recording, Span
 from metro.kernel.phase import phase_per_metre
 
-__all__ = ["QUANTITIES", "Conversion", "ConvertedRecording"]
+__all__ = ["QUANTITIES", "Conversion", "ConvertedRecording", "per_radian"]
 
 FloatArray = NDArray[np.float64]
 
@@ -96,7 +96,7 @@ class ConvertedRecording(Recording):
             raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
         self.quantity, self.slope, self.calibration = quantity, slope, calibration
         self._source, self._position = source, source.find(channel)
-        self._per_radian = _per_radian(calibration, quantity)
+        self._per_radian = per_radian(calibration, quantity)
         super().__init__(
             path=source.path,
             format=source.format,
@@ -181,7 +181,26 @@ class _Tally:
         self.square += float(np.sum(fourth**2)) / 70.0
 
 
-def _per_radian(calibration: Calibration, quantity: str) -> float:
+def per_radian(calibration: Calibration, quantity: str) -> float:
+    """Return how much of a quantity one radian of optical phase is.
+
+    Parameters
+    ----------
+    calibration : Calibration
+        Its chain: wavelength, index, and for strain the arm length.
+    quantity : str
+        ``"displacement"`` [m], ``"strain"`` [1] or ``"phase"`` [rad].
+
+    Returns
+    -------
+    float
+        In the quantity's unit a radian.
+
+    Raises
+    ------
+    CalibrationError
+        If strain is asked for without an arm length.
+    """
     if quantity == "phase":
         return 1.0
     chain = calibration.chain

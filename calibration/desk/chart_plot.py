@@ -142,8 +142,8 @@ def _dates(time_s: Any) -> list[datetime]:  # noqa: ANN401  # ndarray
 def _time_axis(axes: "Axes") -> None:
     from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
 
-    locator = AutoDateLocator(maxticks=7)
+    locator = AutoDateLocator(maxticks=7)  # type: ignore[no-untyped-call]  # matplotlib's own
     axes.xaxis.set_major_locator(locator)
-    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))
+    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))  # type: ignore[no-untyped-call]  # same
     axes.set_xlabel("UTC")
     axes.grid(visible=True, alpha=0.25)

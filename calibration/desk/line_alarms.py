@@ -1,5 +1,6 @@
 """Watching one line: each new result judged against all before it; alarms where it has shifted."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -9,7 +10,7 @@ from calibration.desk.self_starting import SelfStarting
 from calibration.desk.temperature_law import TemperatureLaw
 from metro.measured import Measured
 
-__all__ = ["Alarm", "LineAlarms"]
+__all__ = ["Alarm", "LineAlarms", "alarms_in"]
 
 _LARGEST_SCORE = 5.0
 """What one result may add, in standard deviations: a single outlier is no lasting shift."""
@@ -84,13 +85,11 @@ class LineAlarms:
         self._temperature_sum = 0.0
         self._count = 0
         self._times: list[str] = []  # since the sums were last zero
+        self.sums = (0.0, 0.0)
+        """Both sums after the last result, upward and downward, in standard deviations; those that
+        raised an alarm too."""
         self.left_out = 0
         """Results that were not trustworthy or lacked a temperature."""
-
-    @property
-    def sums(self) -> tuple[float, float]:
-        """Both sums, upward and downward, in standard deviations."""
-        return self._sums.high, self._sums.low
 
     def add(self, entry: LineEntry) -> Alarm | None:
         """Take a result.
@@ -112,6 +111,7 @@ class LineAlarms:
         if score is None:
             return None
         side = self._sums.add(max(-_LARGEST_SCORE, min(_LARGEST_SCORE, score)))
+        self.sums = (self._sums.high, self._sums.low)
         run = max(self._sums.high_run, self._sums.low_run)
         self._times = [*self._times, entry.time][-run:] if run else []
         if not side:
@@ -145,3 +145,25 @@ class LineAlarms:
             sigma,
             entry.bench,
         )
+
+
+def alarms_in(entries: Sequence[LineEntry], law: TemperatureLaw, rule: CusumRule) -> list[Alarm]:
+    """Return the alarms in a row of results.
+
+    Parameters
+    ----------
+    entries : sequence of LineEntry
+        Of one line, in the order of time.
+    law : TemperatureLaw
+        How results follow temperature.
+    rule : CusumRule
+        When to raise an alarm.
+
+    Returns
+    -------
+    list of Alarm
+        In the order of time.
+    """
+    judge = LineAlarms(rule, law)
+    found = (judge.add(entry) for entry in entries)
+    return [alarm for alarm in found if alarm is not None]

@@ -18,8 +18,8 @@ from calibration.desk.control_chart import (
 from calibration.desk.cusum import CusumRule
 from calibration.desk.drift import Drift, drift_of, lag_one
 from calibration.desk.ledger_errors import LedgerError
-from calibration.desk.line_entry import LineEntry
 from calibration.desk.line_alarms import Alarm, LineAlarms
+from calibration.desk.line_entry import LineEntry
 from calibration.desk.run_rules import RuleHit, run_rules
 from calibration.desk.temperature_law import TemperatureLaw, fitted_coefficient
 from metro.measured import Measured
@@ -200,7 +200,7 @@ def chart_line(
         np.array(sums),
         drift_of(time_s, values, u, unit),
         allan_deviation(time_s, values, unit),
-        _cautions(entries, used, shown, kelvin, values),
+        _cautions(entries, used, shown, kelvin, values, alarms),
     )
 
 
@@ -236,6 +236,7 @@ def _cautions(
     law: TemperatureLaw,
     kelvin: Sequence[float],
     values: FloatArray,
+    alarms: Sequence[Alarm],
 ) -> list[str]:
     found = []
     left_out = len(entries) - len(used)
@@ -250,8 +251,12 @@ def _cautions(
         found.append(
             "no temperature is known: what it does to the line looks like a shift or drift"
         )
-    r = lag_one(values - values.mean()) if len(values) >= FEWEST else 0.0
-    if r > max(0.2, _CLEAR / np.sqrt(len(values))):
+    if alarms:
+        found.append("drift and Allan deviation are taken over the shifts too")
+    steady = [k for k, entry in enumerate(used) if not alarms or entry.time < alarms[0].since]
+    first = values[steady]
+    r = lag_one(first - first.mean()) if len(first) >= FEWEST else 0.0
+    if r > max(0.2, _CLEAR / np.sqrt(len(first))):
         found.append(
             f"neighbouring results hang together (autocorrelation {r:.2f}): limits are too narrow "
             "and alarms come more often than said"

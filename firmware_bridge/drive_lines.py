@@ -149,6 +149,19 @@ class DriveLines:
         """
         self.lines = {k: line for k, line in self.lines.items() if k != slot}
 
+    def description(self) -> str:
+        """Return the lines in words, for the header of a recording.
+
+        Returns
+        -------
+        str
+            Such as ``87.1 Hz 0.2 V 0 rad; 31.7 Hz 0.1 V 0 rad``, zero to peak.
+        """
+        return "; ".join(
+            f"{line.frequency_hz:.15g} Hz {line.amplitude_v:.15g} V {line.phase_rad:.15g} rad"
+            for line in self.lines.values()
+        )
+
     def request(self, slot: int, announcement: Announcement, part: float = 1.0) -> Request:
         """Return the command that sets one of the lines on a board.
 

@@ -2,6 +2,7 @@
 
 import os
 from collections import Counter
+from collections.abc import Callable
 from pathlib import Path
 
 from firmware_bridge.announcement import Announcement, parse_announcement
@@ -11,8 +12,10 @@ from firmware_bridge.envelope import Discarded, seal
 from firmware_bridge.frame import HEADER
 from firmware_bridge.host_note import End, Join, Remark, Stamp
 from firmware_bridge.line_frames import Pause
+from firmware_bridge.live_events import LiveBlock, block_of
 from firmware_bridge.message import WIRE_VERSION, MessageError, MessageType
 from firmware_bridge.recording_header import Header
+from firmware_bridge.rotation import Rotation
 from firmware_bridge.trace import Gap
 from firmware_bridge.writer import Writer
 
@@ -47,6 +50,10 @@ class Intake:
         End before all files together become larger.
     overwrite : bool
         Replace an existing file.
+    rotation : Rotation, optional
+        When to go on in a next file, and in which.
+    on_block : callable, optional
+        Takes a `LiveBlock` for each frame kept, in order but for frames that come late.
     """
 
     def __init__(
@@ -57,8 +64,12 @@ class Intake:
         duration_s: float | None = None,
         size_bytes: int | None = None,
         overwrite: bool = False,
+        rotation: Rotation | None = None,
+        on_block: Callable[[LiveBlock], None] | None = None,
     ) -> None:
         self._path = Path(path)
+        self._rotation = rotation or Rotation()
+        self._on_block = on_block
         self._info = info or {}
         self._duration_s = duration_s
         self._size_bytes = size_bytes
@@ -70,7 +81,8 @@ class Intake:
         self._pauses: dict[int, Pause] = {}
         self._grid: dict[int, int] = {}  # stream: grid index of the board's index 0
         self._closed_streams: set[int] = set()  # those of earlier files
-        self._earlier_s = 0.0
+        self.earlier_s = 0.0
+        """Their length by the board's counting [s]."""
         self._pending: list[bytes] = []
         self._decoder = Decoder()
         self._now_ns = (0, 0)
@@ -79,6 +91,7 @@ class Intake:
         self._reached = 0  # grid index after the last sample
         self._last: Samples | None = None
         self._unsaid: Counter[str] = Counter()
+        self._placed: list[Event] = []
         self._was_away = False
         self._latest: Announcement | None = None
         self._has_end = False  # written into the present file
@@ -123,7 +136,7 @@ class Intake:
         """Grid samples the present file shall have, None without duration or announcement."""
         if self._duration_s is None or self._current is None:
             return None
-        return round((self._duration_s - self._earlier_s) * self._current.rate_hz)
+        return round((self._duration_s - self.earlier_s) * self._current.rate_hz)
 
     @property
     def reached(self) -> int:
@@ -272,7 +285,7 @@ class Intake:
         if self._current is not None and not _alike(self._current, announcement):
             self._close_file()
             self.earlier += self._reached
-            self._earlier_s += self._reached / self._current.rate_hz
+            self.earlier_s += self._reached / self._current.rate_hz
             self._reached = 0
             self._closed_streams |= self._grid.keys()
             self._grid.clear()
@@ -284,12 +297,7 @@ class Intake:
             return
         grid, grid_u = 0, 0.0
         if is_first:
-            self._writer = Writer(
-                self._next_path(),
-                Header(announcement, self._now_ns[1], self._info),
-                overwrite=self._overwrite and not self.files,
-            )
-            self.files.append(self._writer.path)
+            self._open(announcement)
         elif frame.stream in self._pauses:
             pause = self._pauses.pop(frame.stream)
             grid, grid_u = self._reached + pause.length, pause.length_u
@@ -298,11 +306,25 @@ class Intake:
             elapsed = round((self._now_ns[0] - self._last_ns[0]) * 1e-9 * rate)
             grid = max(self._reached, self._reached + elapsed - len(frame.data))
             grid_u = _ARRIVAL_U_S * 2**0.5 * rate
+        self._join(frame, grid, grid_u)
+
+    def _open(self, announcement: Announcement) -> None:
+        info = {**self._info, "follows": self.files[-1].name} if self.files else self._info
+        self._writer = Writer(
+            self._next_path(),
+            Header(announcement, self._now_ns[1], info),
+            overwrite=self._overwrite and not self.files,
+        )
+        self.files.append(self._writer.path)
+
+    def _join(self, frame: Samples, grid: int, grid_u: float) -> None:
         self._grid[frame.stream] = grid - frame.index
-        assert self._writer is not None  # noqa: S101  # made above where there was none
+        assert self._writer is not None  # noqa: S101  # made before
         self._writer.note(Join(frame.stream, frame.index, grid, grid_u))
 
     def _next_path(self) -> Path:
+        if self.files and self._rotation.next_path is not None:
+            return Path(self._rotation.next_path(len(self.files) + 1))
         number = len(self.files) + 1
         while number > 1:
             path = self._path.with_stem(f"{self._path.stem}-{number}")
@@ -316,7 +338,11 @@ class Intake:
         if not self._has_room(self._writer, len(message)):
             self.is_complete = True
             return
+        if self._is_full(self._writer, frame):
+            self._rotate(frame)
         start = frame.index + self._grid[frame.stream]
+        if start < 0 and self._was_written(frame, message):
+            return  # in the file before
         room = None if self.wanted is None else self.wanted - start
         if room is None or room > 0:
             if room is not None and len(frame.data) > room:
@@ -325,13 +351,54 @@ class Intake:
         self.discarded_midway += self._discarded_since
         self._discarded_since = 0
         self._last_ns = self._now_ns
-        events = self._decoder.place(frame, message)
+        events = self._placed or self._decoder.place(frame, message)
+        self._placed = []
         if self._was_away:
             events += self._decoder.flush()
             self._was_away = False
         self._follow(events)
         if not self._stamped_ns:
             self._stamp()
+
+    def _was_written(self, frame: Samples, message: bytes) -> bool:
+        """Return whether a frame from before the present file came twice; else keep its events."""
+        events = self._decoder.place(frame, message)
+        if any(isinstance(event, Discarded) for event in events):
+            self._follow(events)
+            return True
+        self._placed = events
+        return False
+
+    def _is_full(self, writer: Writer, frame: Samples) -> bool:
+        """Return whether the present file ends before this frame, as its rotation asks."""
+        assert self._current is not None  # noqa: S101  # a file has begun
+        start = frame.index + self._grid[frame.stream]
+        if start < max(1, self._reached):  # a late one belongs to what has been
+            return False
+        next_bytes = writer.bytes + (1 + _LAST_NOTES) * writer.record_bytes
+        return self._rotation.is_due(next_bytes, start / self._current.rate_hz)
+
+    def _rotate(self, frame: Samples) -> None:
+        """End the present file before ``frame`` and go on with it in the next one."""
+        assert self._writer is not None  # noqa: S101  # there is a file to end
+        assert self._current is not None  # noqa: S101
+        # What is held comes out; what comes later still is kept in the next file.
+        self._follow(self._decoder.flush())
+        # The end says that what is missing before this frame is missing in the file that ends.
+        self._writer.note(End(frame.stream, frame.index))
+        self._has_end = True
+        length = frame.index + self._grid[frame.stream]
+        ended = self._writer.path
+        self._close_file()
+        self.earlier += length
+        self.earlier_s += length / self._current.rate_hz
+        self._reached = 0
+        self._closed_streams |= self._grid.keys() - {frame.stream}
+        self._grid.clear()
+        self._open(self._current)
+        self._join(frame, 0, 0.0)
+        self._stamped_ns = 0  # the next file needs a stamp of its own
+        self._rotation.ended(ended)
 
     def _follow(self, events: list[Event]) -> None:
         for event in events:
@@ -360,6 +427,9 @@ class Intake:
             self.samples += end - start
             self.flagged += frame.over_range
             self._last = frame
+            if self._on_block is not None and self._current is not None:
+                block = block_of(frame, self._current, self.earlier + start, self._now_ns[1] * 1e-9)
+                self._on_block(block.first(end - start))
         self._reached = max(self._reached, end)
 
     def _complete(self, frame: Samples, start: int) -> None:

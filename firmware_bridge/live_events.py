@@ -1,6 +1,6 @@
 """What a live port tells: channels, blocks of values, gaps, its state, the recording, replies."""
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -78,6 +78,25 @@ class LiveBlock:
     over_range: int = 0
     clock: int = 0
     host_time: float = 0.0
+
+    def first(self, count: int) -> "LiveBlock":
+        """Return the block's first ``count`` samples.
+
+        Parameters
+        ----------
+        count : int
+            At least 1; where there are no more, the block itself.
+
+        Returns
+        -------
+        LiveBlock
+            Over-range counted as far as it reaches.
+        """
+        if count >= len(self.values):
+            return self
+        values = self.values[:count]
+        over_range = int(np.count_nonzero(np.isnan(values)))
+        return replace(self, values=values, over_range=over_range)
 
 
 @dataclass(frozen=True, slots=True)

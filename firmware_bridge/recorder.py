@@ -7,12 +7,16 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from firmware_bridge.drive_desk import DriveDesk
+from firmware_bridge.drive_lines import DriveLines
 from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.gap_reason import counted, gap_reason
 from firmware_bridge.intake import Intake
+from firmware_bridge.live_events import LiveBlock
 from firmware_bridge.port import ByteSource, open_port
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.recording_session import Progress, RecordingSession
+from firmware_bridge.rotation import Rotation
 from firmware_bridge.text_frames import TextFramer
 from firmware_bridge.trace import Gap
 from firmware_bridge.writer import DiskError
@@ -31,9 +35,9 @@ class RecordSummary:
     samples : int
         Samples on the grid, gaps included, all files together.
     gaps : list of Gap
-        On the grid of their file.
+        On the grid of their file; with rotation those of the last file.
     over_range : int
-        Over-range values, all channels.
+        Over-range values, all channels; with rotation those of the last file.
     bytes_discarded : int
         Bytes that arrived and were not kept.
     duration_s : float
@@ -83,6 +87,12 @@ def record(
     overwrite: bool = False,
     progress: Callable[[Progress], None] | None = None,
     stop: threading.Event | None = None,
+    drive: DriveLines | None = None,
+    on_block: Callable[[LiveBlock], None] | None = None,
+    rotate_bytes: int | None = None,
+    rotate_s: float | None = None,
+    next_path: Callable[[int], str | os.PathLike[str]] | None = None,
+    on_ended: Callable[[Path], None] | None = None,
 ) -> RecordSummary:
     """Record what a board sends until the duration or size is reached, Ctrl-C, or ``stop``.
 
@@ -110,6 +120,18 @@ def record(
         Called a few times a second with a `Progress`.
     stop : threading.Event, optional
         Ends the recording when set.
+    drive : DriveLines, optional
+        Lines that the board drives from before the first sample kept until the end; then they come
+        to rest.
+    on_block : callable, optional
+        Takes a `LiveBlock` for each frame kept; it runs beside the reading and may be slow for as
+        long as the queue holds (10 s of a fast link). What it raises ends the recording.
+    rotate_bytes, rotate_s : optional
+        Go on in a next file, without a lost sample, before one is larger or longer than this.
+    next_path : callable, optional
+        Returns the path of file number n (2, 3, …); by default NAME-n.
+    on_ended : callable, optional
+        Takes the path of each file that is complete while the recording goes on.
 
     Returns
     -------
@@ -127,20 +149,33 @@ def record(
         raise BridgeError(f"duration_s must be > 0 s and finite, got {duration_s!r}")
     if Path(path).exists() and not overwrite:
         raise BridgeError(f"{path} exists; --overwrite replaces it")
+    if text and drive is not None and drive.lines:
+        raise BridgeError("drive lines need a board that sends frames, not text")
+    rotation = Rotation(rotate_bytes, rotate_s, next_path, on_ended)
     source = open_port(port, baud) if isinstance(port, str) else port
     framer = TextFramer(secrets.randbits(32), rate_hz) if text else None
     # A framer of text completes it once the first lines have told what it reads.
     info = {"source": "frames"} if framer is None else framer.origin
     info["port"] = source.name
+    desk = None
+    if drive is not None and drive.lines:
+        info["lines"] = drive.description()
+        desk = DriveDesk(drive, is_held=True)
     intake = Intake(
-        path, info=info, duration_s=duration_s, size_bytes=size_bytes, overwrite=overwrite
+        path,
+        info=info,
+        duration_s=duration_s,
+        size_bytes=size_bytes,
+        overwrite=overwrite,
+        rotation=rotation,
+        on_block=on_block,
     )
     stop = stop or threading.Event()
     try:
-        RecordingSession(source, baud, intake, framer, reconnect, stop).run(progress)
+        RecordingSession(source, baud, intake, framer, reconnect, stop, desk).run(progress)
     except DiskError as error:
         raise DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}") from error
-    return _summary(intake)
+    return _summary(intake, is_rotated=rotate_bytes is not None or rotate_s is not None)
 
 
 def _kept_on_disk(files: list[Path]) -> str:
@@ -153,19 +188,24 @@ def _kept_on_disk(files: list[Path]) -> str:
     return f"kept {samples} samples ({time_s:.4g} s) in {', '.join(map(str, files))}"
 
 
-def _summary(intake: Intake) -> RecordSummary:
+def _summary(intake: Intake, *, is_rotated: bool) -> RecordSummary:
     files = intake.files
     if not intake.samples:
         discarded = intake.bytes_discarded
         return RecordSummary(files[0] if files else None, 0, [], 0, discarded, 0.0, files)
-    recordings = [open_mfr(path) for path in files]
+    # Files of a rotation may be many, and gone by now.
+    recordings = [open_mfr(path) for path in (files[-1:] if is_rotated else files)]
+    samples = sum(recording.length for recording in recordings)
+    duration_s = sum(recording.duration_s for recording in recordings)
+    if is_rotated:
+        samples, duration_s = samples + intake.earlier, duration_s + intake.earlier_s
     return RecordSummary(
         files[0],
-        sum(recording.length for recording in recordings),
+        samples,
         [gap for recording in recordings for gap in recording.gaps],
         sum(recording.over_range for recording in recordings),
         intake.bytes_discarded,
-        sum(recording.duration_s for recording in recordings),
+        duration_s,
         files,
         recordings[-1].rate_hz,
         recordings[-1].rate_u_hz,

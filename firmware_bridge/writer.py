@@ -57,7 +57,8 @@ class Writer:
         self.path = Path(path)
         self.records = 0
         """Records written so far."""
-        self._record_bytes = header.record_bytes
+        self.record_bytes = header.record_bytes
+        """Length of a record."""
         self._buffer = bytearray()
         self._number = 0
         self._synced_s = time.monotonic()
@@ -97,14 +98,14 @@ class Writer:
         DiskError
             If the disk is full or gone.
         """
-        if len(message) > self._record_bytes:
-            for piece in cut(message, self._number, self._record_bytes):
+        if len(message) > self.record_bytes:
+            for piece in cut(message, self._number, self.record_bytes):
                 self.append(piece)
             self._number += 1
             return
-        self._buffer += message.ljust(self._record_bytes, b"\0")
+        self._buffer += message.ljust(self.record_bytes, b"\0")
         self.records += 1
-        self.bytes += self._record_bytes
+        self.bytes += self.record_bytes
         if len(self._buffer) >= _BUFFER_BYTES:
             self.flush()
 
@@ -163,7 +164,7 @@ class Writer:
     def _failed(self, error: OSError) -> DiskError:
         """Write nothing any more, and leave whole records only."""
         self._is_failed = True
-        beyond = max(0, self._written - self._header_bytes) % self._record_bytes
+        beyond = max(0, self._written - self._header_bytes) % self.record_bytes
         with suppress(OSError):
             os.ftruncate(self._file, self._written - beyond)
         reason = _MEANINGS.get(error.errno or 0, (error.strerror or str(error)).lower())

@@ -1,0 +1,84 @@
+"""The live page from beginning to end: serve a source until told to stop, then let go of it."""
+
+import asyncio
+import signal
+from collections.abc import Callable
+
+from calibration.desk.watch_guard import Guard
+from calibration.desk.watch_orders import Orders, Source
+from calibration.desk.watch_server import WatchServer
+from calibration.desk.watch_setup import WatchSetup
+from calibration.desk.watch_state import WatchState
+from firmware_bridge.live_events import LiveEvent
+
+__all__ = ["serve"]
+
+
+def serve(
+    source: Source,
+    setup: WatchSetup,
+    guard: Guard,
+    port_number: int,
+    *,
+    is_replay: bool = False,
+    first: list[LiveEvent] | None = None,
+    ready: Callable[[str], None],
+) -> WatchServer:
+    """Serve the page of a source until Ctrl-C or SIGTERM.
+
+    Parameters
+    ----------
+    source : Source
+        Left open: its owner closes it, which brings the drive to rest and ends the recording.
+    setup : WatchSetup
+        What to show.
+    guard : Guard
+        Who may look.
+    port_number : int
+        0 for any that is free.
+    is_replay : bool
+        A recording replayed.
+    first : list of LiveEvent, optional
+        What has been polled already.
+    ready : callable
+        Called with the page's address when it can be opened.
+
+    Returns
+    -------
+    WatchServer
+        As it was at the end.
+
+    Raises
+    ------
+    CalibrationError
+        If the address cannot be served.
+    """
+    state = WatchState(setup)
+    for event in first or ():
+        state.take(event)
+    orders = Orders(source, state, is_replay=is_replay)
+    server = WatchServer(source, state, orders, guard)
+    asyncio.run(_serve(server, port_number, ready))
+    return server
+
+
+async def _serve(server: WatchServer, port_number: int, ready: Callable[[str], None]) -> None:
+    stop = asyncio.Event()
+    loop = asyncio.get_running_loop()
+    for name in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP):
+        loop.add_signal_handler(name, stop.set)
+    number = await server.start(port_number)
+    ready(_address(server.guard, number))
+    await stop.wait()
+    await server.stop()
+
+
+def _address(guard: Guard, number: int) -> str:
+    host = guard.host
+    if host in ("0.0.0.0", "::"):  # noqa: S104  # asked for: served on every address
+        import socket
+
+        host = socket.gethostname()
+    host = f"[{host}]" if ":" in host else host
+    token = "" if guard.token is None else f"?token={guard.token}"
+    return f"http://{host}:{number}/{token}"

@@ -1,0 +1,120 @@
+"""What a live page was asked to show, and what it needs to know about the bench."""
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from calibration.desk.watch_expected import (
+    ExpectedNoise,
+    expected_fringe,
+    expected_noise,
+    known_dark,
+)
+from calibration.desk.watch_fringe import Fringe
+from metro.drive import terminal_factor
+
+if TYPE_CHECKING:
+    from calibration.record import Calibration
+    from metro.bench import Bench
+
+__all__ = ["WatchSetup"]
+
+
+@dataclass(frozen=True, eq=False)
+class WatchSetup:
+    """What to show.
+
+    Parameters
+    ----------
+    title : str
+        Where the samples come from, for people.
+    bench : Bench
+        Whatever is known; it may be empty.
+    calibration : Calibration or None
+        Its extremes and dark go before the bench's.
+    frequencies_hz : tuple of float
+        The lines to follow; those of the bench where empty.
+    slope : str
+        ``"rising"`` or ``"falling"``: the side of the fringe the interferometer rests on.
+    channel, drive : str or None
+        Names of the photodiode's and the drive's channel; None to find them.
+    block_s : float
+        Seconds of samples in each line fit.
+    """
+
+    title: str
+    bench: "Bench"
+    calibration: "Calibration | None" = None
+    frequencies_hz: tuple[float, ...] = ()
+    slope: str = "rising"
+    channel: str | None = None
+    drive: str | None = None
+    block_s: float = 4.0
+
+    @property
+    def lines_hz(self) -> tuple[float, ...]:
+        """The lines to follow [Hz]."""
+        return self.frequencies_hz or tuple(line.frequency_hz for line in self.bench.lines)
+
+    @property
+    def mains_hz(self) -> float:
+        """Frequency of the mains [Hz]."""
+        return self.bench.magnitude("mains.frequency", 50.0)
+
+    @property
+    def dark_v(self) -> float | None:
+        """Voltage without light, where known."""
+        return known_dark(self.bench, self.calibration)
+
+    @property
+    def fringe(self) -> Fringe | None:
+        """The fringe as calibrated or stated, None where it must be found."""
+        return expected_fringe(self.bench, self.calibration)
+
+    def noise(self, rate_hz: float) -> ExpectedNoise | None:
+        """Return the noise to be expected, None where the bench does not say."""
+        return expected_noise(self.bench, rate_hz)
+
+    @property
+    def stated_contrast(self) -> tuple[float, str] | None:
+        """Contrast as calibrated or stated, and where it comes from."""
+        if self.calibration is not None and self.calibration.contrast is not None:
+            return float(self.calibration.contrast.magnitude), "calibration"
+        entry = self.bench.get("arms.contrast")
+        return None if entry is None else (float(entry.magnitude), "bench")
+
+    @property
+    def drive_limit_v(self) -> float | None:
+        """What all lines together may reach at the actuator [V], None where the bench says nothing."""
+        entry = self.bench.get("actuator.drive_limit")
+        return None if entry is None else float(entry.magnitude)
+
+    @property
+    def drive_factor(self) -> float:
+        """Volts at the actuator per volt of the board's drive channel."""
+        return terminal_factor(self.bench, recorded=True)
+
+    def columns(self, names: list[str]) -> tuple[int, int | None]:
+        """Return which channels are photodiode and drive.
+
+        Parameters
+        ----------
+        names : list of str
+            Of the board's channels; at least one.
+
+        Returns
+        -------
+        tuple of int and int or None
+            Positions; no drive where no channel is named so.
+        """
+        drive = self._find(names, self.drive or self.bench.text("drive.channel") or "drive")
+        photodiode = self._find(names, self.channel or "photodiode")
+        if photodiode is None:
+            photodiode = next((k for k in range(len(names)) if k != drive), 0)
+        return photodiode, None if drive == photodiode else drive
+
+    @staticmethod
+    def _find(names: list[str], wanted: str) -> int | None:
+        if wanted.isascii() and wanted.isdigit() and 1 <= int(wanted) <= len(names):
+            return int(wanted) - 1
+        lowered = [name.strip().lower() for name in names]
+        return lowered.index(wanted.lower()) if wanted.lower() in lowered else None

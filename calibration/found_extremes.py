@@ -1,18 +1,19 @@
 """Where a fringe's extremes and dark level come from: given values or another recording."""
 
-import math
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 
+from calibration.dark import dark_level
 from calibration.errors import CalibrationError
 from calibration.scan import ScanFit, fit_scan
 from firmware_bridge.trace import Trace
 from metro.units import si
 from metro.value_text import split_value
 
-__all__ = ["Level", "dark_of_trace", "level_of_text", "usable_scan"]
+__all__ = ["Level", "dark_of_trace", "is_file", "level_of_text", "unit_of_text", "usable_scan"]
 
 _COUNTS = ("", "1", "count", "counts")
 
@@ -53,6 +54,27 @@ def level_of_text(text: str, name: str, unit: str) -> Level:
     return Level(float(si(text, name, "V" if unit in _COUNTS else unit)))
 
 
+def unit_of_text(texts: Iterable[str | None], unit: str) -> str:
+    """Return the unit of a recording, from the levels given for it where it names none itself.
+
+    Parameters
+    ----------
+    texts : iterable of str or None
+        Levels as given on the command line, such as "0.44 V".
+    unit : str
+        Unit of the recording, "1" where it names none.
+
+    Returns
+    -------
+    str
+        "V" where the recording names none and a level has a unit.
+    """
+    if unit not in ("", "1"):
+        return unit
+    own = [split_value(text, "level")[1] for text in texts if text is not None]
+    return "V" if any(name not in _COUNTS for name in own) else unit
+
+
 def dark_of_trace(trace: Trace) -> Level:
     """Return the mean of a recording without light.
 
@@ -71,11 +93,11 @@ def dark_of_trace(trace: Trace) -> Level:
     CalibrationError
         If there are fewer than 32 samples.
     """
-    good = trace.values[np.isfinite(trace.values)]
-    if len(good) < 32:
-        raise CalibrationError(f"a dark recording needs 32 samples, got {len(good)}")
-    blocks = np.array([part.mean() for part in np.array_split(good, 16)])
-    return Level(float(good.mean()), float(blocks.std(ddof=1)) / math.sqrt(len(blocks)))
+    count = int(np.count_nonzero(np.isfinite(trace.values)))
+    level = dark_level([trace.values]) if count >= 32 else None
+    if level is None:
+        raise CalibrationError(f"a dark recording needs 32 samples, got {count}")
+    return Level(float(level.magnitude), float(level.u_magnitude))
 
 
 def is_file(text: str) -> bool:

@@ -2,6 +2,9 @@
 
 from dataclasses import dataclass, field
 
+import numpy as np
+from numpy.typing import NDArray
+
 from metro.measured import Measured
 
 __all__ = ["FringeFit"]
@@ -46,6 +49,8 @@ class FringeFit:
         The record's unit.
     reasons : list of str
         Why the fit must not be trusted; empty where nothing was found.
+    working_course_rad : ndarray, shape (k,)
+        φ without the lines at k moments, evenly from the first sample used to the last [rad].
     """
 
     low: Measured
@@ -64,6 +69,9 @@ class FringeFit:
     used_samples: int
     value_unit: str
     reasons: list[str] = field(default_factory=list)
+    working_course_rad: NDArray[np.float64] = field(
+        default_factory=lambda: np.zeros(1), compare=False, repr=False
+    )
 
     @property
     def is_trustworthy(self) -> bool:

@@ -10,49 +10,106 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["law_harmonics"]
+__all__ = ["law_harmonics", "law_stretches", "typical_law"]
 
 _PASSES = 3
 _POINTS = 300
 _MOST = 120  # stretches looked at in a long scan
 _ORDERS = np.arange(4)
+_MOTION = 4  # terms of a cubic
+
+
+def _waves(phase: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return 1, cos φ, cos 2φ, cos 3φ and sin 2φ, shape (n, 5)."""
+    return np.hstack([np.cos(np.outer(phase, _ORDERS)), np.sin(2.0 * phase)[:, None]])
+
+
+def _slope(phase: NDArray[np.float64], size: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the law's derivative by the phase."""
+    cosines = -np.sin(np.outer(phase, _ORDERS)) @ (_ORDERS * size[:4])
+    return np.asarray(cosines + 2.0 * size[4] * np.cos(2.0 * phase))
 
 
 def _stretch(
     values: NDArray[np.float64],
     time: NDArray[np.float64],
     begins_high: bool,  # private
+    leaning: bool,
 ) -> tuple[float, NDArray[np.float64]]:
-    """Fit the law with φ a cubic in time; return the residual's rms and the harmonics.
+    """Fit the law with φ a cubic in time; return the residual's rms, cos 2φ, cos 3φ and sin 2φ.
 
-    The law is d + b·cos φ + h₂·cos 2φ + h₃·cos 3φ: d and b are free because shaking within the stretch
-    takes from the cosine.
+    The law is d + b·cos φ + h₂·cos 2φ + h₃·cos 3φ + l·sin 2φ: d and b are free because shaking within
+    the stretch takes from the cosine.
     """
     middle = (
         math.pi if begins_high else 2.0 * math.pi
     )  # half-way through the second of three passes
     powers = np.stack([np.ones_like(time), time, time**2, time**3], axis=1)
-    theta = kept = np.array([middle, 1.5 * math.pi, 0.0, 0.0, 0.0, 1.0, 0.0, 0.0])
+    theta = kept = np.array([middle, 1.5 * math.pi, 0.0, 0.0, 0.0, 1.0, 0.0, 0.0, 0.0])
     rest, damping = np.inf, 1e-2
-    matrix, right = np.eye(8), np.zeros(8)
+    matrix, right = np.eye(len(theta)), np.zeros(len(theta))
     for _ in range(25):
-        phase = powers @ theta[:4]
-        waves = np.cos(np.outer(phase, _ORDERS))
-        slope = -np.sin(np.outer(phase, _ORDERS)) @ (_ORDERS * theta[4:])
-        error = values - waves @ theta[4:]
+        phase = powers @ theta[:_MOTION]
+        waves = _waves(phase)
+        error = values - waves @ theta[_MOTION:]
         now = float(np.sqrt(np.mean(error**2)))
         if now > rest * 1.001:
             theta, damping = kept, damping * 8.0
         else:
             done = rest - now < 1e-6 * now
             rest, kept, damping = now, theta, damping / 4.0
-            columns = np.hstack([powers * slope[:, None], waves])
+            columns = np.hstack([powers * _slope(phase, theta[_MOTION:])[:, None], waves])
+            columns[:, -1] *= leaning  # a column of zeros stays at zero
             matrix, right = columns.T @ columns, columns.T @ error
             if done:
                 break
-        lifted = matrix + damping * np.diag(np.diag(matrix)) + 1e-9 * np.eye(8) * len(time)
+        lifted = matrix + damping * np.diag(np.diag(matrix)) + 1e-9 * np.eye(9) * len(time)
         theta = kept + np.linalg.solve(lifted, right)
-    return rest, kept[6:] / max(abs(kept[5]), 0.1)
+    return rest, kept[_MOTION + 2 :] / max(abs(kept[_MOTION + 1]), 0.1)
+
+
+def law_stretches(
+    values: NDArray[np.float64],
+    passes: NDArray[np.int64],
+    low: float,
+    high: float,
+    *,
+    leaning: bool = True,
+) -> NDArray[np.float64]:
+    """Return the harmonics of the fringe law in stretches of one and a half fringes.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Scan over whole fringes, no NaN.
+    passes : ndarray of int, shape (n,)
+        Number of the pass over an extreme that each sample belongs to.
+    low, high : float
+        Extremes, in the scan's unit.
+    leaning : bool, optional
+        Whether sin 2φ is fitted; without it the others are known better.
+
+    Returns
+    -------
+    ndarray, shape (k, 6)
+        Of each stretch: first sample, end, residual's rms over the half span, then cos 2φ, cos 3φ and
+        sin 2φ relative to cos φ. φ grows in time: a law that leans in φ changes the sign of sin 2φ
+        with the direction of the motion.
+    """
+    level = (values - (high + low) / 2.0) * (2.0 / (high - low))
+    begins = np.concatenate([[0], np.flatnonzero(np.diff(passes)) + 1, [len(values)]])
+    found = []
+    stretches = range(1, len(begins) - _PASSES - 1)
+    for k in stretches[:: max(len(stretches) // _MOST, 1)]:
+        first, last = int(begins[k]), int(begins[k + _PASSES])
+        if last - first < 40:
+            continue
+        place = np.unique(np.linspace(first, last - 1, _POINTS).astype(np.int64))
+        time = 2.0 * (place - first) / (last - 1 - first) - 1.0
+        top = bool(level[first : int(begins[k + 1])].mean() > 0.0)
+        rest, share = _stretch(level[place], time, top, leaning)
+        found.append([first, last, rest, *share.tolist()])
+    return np.array(found).reshape(-1, 6)
 
 
 def law_harmonics(
@@ -76,30 +133,32 @@ def law_harmonics(
     ndarray, shape (2,)
         Their standard uncertainties, from the scatter between stretches.
     """
-    level = (values - (high + low) / 2.0) * (2.0 / (high - low))
-    begins = np.concatenate([[0], np.flatnonzero(np.diff(passes)) + 1, [len(values)]])
-    found = []
-    stretches = range(1, len(begins) - _PASSES - 1)
-    for k in stretches[:: max(len(stretches) // _MOST, 1)]:
-        first, last = int(begins[k]), int(begins[k + _PASSES])
-        if last - first < 40:
-            continue
-        place = np.unique(np.linspace(first, last - 1, _POINTS).astype(np.int64))
-        time = 2.0 * (place - first) / (last - 1 - first) - 1.0
-        top = bool(level[first : int(begins[k + 1])].mean() > 0.0)
-        rest, share = _stretch(level[place], time, top)
-        found.append([rest, *share.tolist()])
-    return _typical(np.array(found))
+    typical, u = typical_law(law_stretches(values, passes, low, high, leaning=False))
+    return typical[:2], u[:2]
 
 
-def _typical(
-    found: NDArray[np.float64],
+def typical_law(
+    stretches: NDArray[np.float64],
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Return the mean over the stretches that fit well; a turning point in one spoils it."""
+    """Return the mean over the stretches that fit well; a turning point in one spoils it.
+
+    Parameters
+    ----------
+    stretches : ndarray, shape (k, 6)
+        As from `law_stretches`.
+
+    Returns
+    -------
+    ndarray, shape (3,) or (0,)
+        cos 2φ, cos 3φ and sin 2φ relative to cos φ; empty with fewer than four usable stretches.
+    ndarray, shape (3,) or (0,)
+        Their standard uncertainties, from the scatter between stretches.
+    """
     none = np.zeros(0)
-    if len(found) < 6:
+    if len(stretches) < 6:
         return none, none
-    good = found[found[:, 0] < 1.5 * np.quantile(found[:, 0], 0.4), 1:]
+    rest = stretches[:, 2]
+    good = stretches[rest < 1.5 * np.quantile(rest, 0.4), 3:]
     if len(good) < 4:
         return none, none
     middle = np.median(good, axis=0)

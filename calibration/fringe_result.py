@@ -199,6 +199,7 @@ def fringe_result(
         used_samples=count,
         value_unit=value_unit,
         reasons=reasons(found),
+        working_course_rad=course,
     )
 
 

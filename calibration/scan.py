@@ -15,7 +15,8 @@ from calibration.edge import Edge, fit_edge
 from calibration.errors import CalibrationError
 from calibration.fringe_law import law_harmonics
 from calibration.passes import number_passes
-from calibration.smoother import noise_gain, noise_std, smooth, smoothing_length
+from calibration.smoother import noise_gain, smooth, smoothing_length
+from calibration.swept_record import record_noise
 
 __all__ = ["ScanFit", "fit_scan"]
 
@@ -118,13 +119,18 @@ def _clipped(values: NDArray[np.float64], step: float) -> list[str]:
     return out
 
 
+def _seen(edge: Edge) -> NDArray[np.bool_]:
+    """Return which passes have samples enough near the edge to count."""
+    return np.asarray(edge.weight > min(1e-3, 0.5 / len(edge.weight)))
+
+
 def _variance(edge: Edge, together: float) -> tuple[float, float]:
     """Return the variance of an edge and its degrees of freedom, from the scatter of its passes.
 
     A pass's pull has a variance proportional to its weight; ``together`` is how many samples move
     together, which lifts the independent samples' variance to a floor.
     """
-    used = edge.weight > 1e-3
+    used = _seen(edge)
     n_used = int(used.sum())
     floor = 0.8 * edge.model_u**2 * together + (0.05 * edge.noise) ** 2
     if n_used < 3:
@@ -155,7 +161,7 @@ def _memory(single: NDArray[np.float64]) -> float:
 
 def _trend(edge: Edge, when: NDArray[np.float64]) -> tuple[float, float]:
     """Return the drift of an edge over the scan and its standard uncertainty."""
-    used = edge.weight > 1e-3
+    used = _seen(edge)
     if used.sum() < 6:
         return 0.0, math.inf
     weight, time = edge.weight[used], when[used]
@@ -185,7 +191,7 @@ def _edges(
 def _reasons(lower: Edge, upper: Edge, low: float, high: float, noise: float) -> list[str]:
     """Return why the extremes must not be trusted."""
     reasons = []
-    seen = [int(np.sum(edge.weight > 1e-3)) for edge in (lower, upper)]
+    seen = [int(np.sum(_seen(edge))) for edge in (lower, upper)]
     if sum(seen) < 3 or min(seen) < 1:
         reasons.append(
             f"the scan covers less than one whole fringe: {seen[1]} passes over the top, "
@@ -241,7 +247,7 @@ def fit_scan(values: NDArray[np.float64], rate_hz: float) -> ScanFit:
     if np.ptp(values[good]) <= 0.0:
         raise CalibrationError(f"the scan does not change: every sample is {values[good][0]}")
     step = _converter_step(values[good])
-    raw_noise = noise_std(values)
+    raw_noise = record_noise(values)
     # steps wider than the noise do not average out: then the edges are fitted step by step
     length = smoothing_length(values) if step < 1.5 * raw_noise else 1
     smoothed = smooth(values, length)
@@ -270,11 +276,18 @@ def _fit(
         limit = 0.2 * (lower.value + upper.value)
         if not any(limit > abs(slope) > 3.5 * u for slope, u in trends):
             break
-        drift = drift + np.array([-trends[0][0], trends[1][0]])
         low, high = -lower.value, upper.value
-        span = high - low + (drift[1] - drift[0]) * when
-        level = low + (high - low) * (values - low - drift[0] * when) / span
-        lower, upper, passes = _edges(level, noise, 0.0)
+        moved = drift + np.array([-trends[0][0], trends[1][0]])
+        span = high - low + (moved[1] - moved[0]) * when
+        if float(span.min()) < 0.3 * (
+            high - low
+        ):  # no straight drift: the amplitude comes and goes
+            break
+        trial = low + (high - low) * (values - low - moved[0] * when) / span
+        edges = _edges(trial, noise, 0.0)
+        if -edges[0].value >= edges[1].value:
+            break
+        drift, level, (lower, upper, passes) = moved, trial, edges
     low, high = -lower.value, upper.value
     reasons = _reasons(lower, upper, low, high, noise)
     shape, shape_u = (
@@ -291,7 +304,7 @@ def _fit(
         dof,
         shape,
         shape_u,
-        (int(np.sum(lower.weight > 1e-3)), int(np.sum(upper.weight > 1e-3))),
+        (int(np.sum(_seen(lower))), int(np.sum(_seen(upper)))),
         (float(drift[0]), float(drift[1])),
         reasons + _law_reasons(shape, shape_u),
     )

@@ -10,7 +10,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["noise_gain", "noise_std", "smooth", "smoothing_length"]
+__all__ = ["floor_std", "noise_gain", "noise_std", "smooth", "smoothing_length"]
 
 _LENGTHS = (65, 49, 37, 27, 21, 17, 13, 9, 7, 5)
 _LOSS = 0.15  # allowed rms of the signal taken away, as a fraction of the noise left
@@ -91,6 +91,30 @@ def noise_std(values: NDArray[np.float64]) -> float:
     return float(np.quantile(third, 0.25) / 0.31864 / math.sqrt(20)) if len(third) else 0.0
 
 
+def floor_std(values: NDArray[np.float64]) -> float:
+    """Return the standard deviation of white noise as strong as the spectrum's floor.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Record whose signal leaves half of the spectrum free, however fast; NaN where samples are
+        missing.
+
+    Returns
+    -------
+    float
+        From the lower half of the averaged periodogram; 0 with fewer than 256 samples.
+    """
+    if np.count_nonzero(np.isfinite(values)) < 256:
+        return 0.0
+    return math.sqrt(_floor(_spectrum(values)))
+
+
+def _floor(power: NDArray[np.float64]) -> float:
+    """Return the variance of white noise as strong as a periodogram's floor."""
+    return float(np.median(np.sort(power)[: max(len(power) // 2, 1)])) * 1.2 * len(power)
+
+
 def _spectrum(values: NDArray[np.float64]) -> NDArray[np.float64]:
     """Return the averaged periodogram (Hann, half overlap), its sum the record's variance."""
     good = np.isfinite(values)
@@ -123,10 +147,10 @@ def smoothing_length(values: NDArray[np.float64]) -> int:
     if np.count_nonzero(np.isfinite(values)) < 256:
         return 1
     power = _spectrum(values)
-    floor = float(np.median(np.sort(power)[: max(len(power) // 2, 1)])) * 1.2
+    variance = _floor(power)
+    floor = variance / len(power)
     signal = np.where(power > 2.0 * floor, power, 0.0)
     turn = np.arange(len(power)) * np.pi / max(len(power) - 1, 1)  # rad per sample
-    variance = floor * len(power)
     for length in _LENGTHS:
         k = np.arange(length) - length // 2
         lost = float(np.sum(signal * (1.0 - np.cos(np.outer(turn, k)) @ _kernel(length)) ** 2))

@@ -1,8 +1,8 @@
 """``midfringe fringe``: metres from the fringe."""
 
 import functools
-from collections.abc import Callable
-from dataclasses import replace
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -13,11 +13,21 @@ from metro.options import ValueType, bench_options, command, distrust, is_quiet,
 
 if TYPE_CHECKING:
     from calibration.found_extremes import Level
-    from calibration.fringe_reading import FringeReading
     from calibration.ruler import Ruler
+    from calibration.scan import ScanFit
     from firmware_bridge.trace import Recording, Trace
 
 __all__ = ["fringe"]
+
+
+@dataclass(frozen=True)
+class _Answer:
+    """What a way through the command gave: a document, text for people, a drawing."""
+
+    document: dict[str, Any]
+    text: str
+    reasons: Sequence[str]
+    draw: Callable[[str, bool], None] | None = None
 
 
 def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
@@ -43,6 +53,7 @@ def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
     metavar="F",
     help="A driven line, such as 87.1Hz; repeatable. Default: the lines of the bench.",
 )
+@click.option("--count", is_flag=True, help="Count fringes, even if the bench names lines.")
 @click.option(
     "--extremes",
     "extremes_file",
@@ -52,152 +63,207 @@ def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
 @click.option(
     "--dark", metavar="FILE|VALUE", help="The level without light: a recording or a voltage."
 )
-@recording_options(omit=("drive",))
+@click.option("--monitor", metavar="COLUMN", help="A monitor of the laser's power to divide by.")
+@click.option(
+    "--antiphase", metavar="COLUMN", help="The interferometer's other port, to cancel power drift."
+)
+@recording_options
 @_in_counts_too
 @bench_options
-@output_options("out", "json", "overwrite")
+@output_options("out", "plot", "json", "overwrite")
 def fringe(
     file: str,
     lines_hz: tuple[float, ...],
+    count: bool,
     extremes_file: str | None,
     dark: str | None,
+    monitor: str | None,
+    antiphase: str | None,
     reading: Reading,
     levels: tuple[str | None, str | None],
     bench: Bench,
     out: str | None,
+    plot: str | None,
     as_json: bool,
     overwrite: bool,
 ) -> None:
     """Find extremes, working point and depth of each driven line in the recording FILE.
 
-    The extremes are those given (--low and --high, in volts or counts), those of --extremes, or what
-    the recording shows itself. Without a wavelength there are no metres, and that is no error.
+    Without a line, the fringes of a scan, ramp or motor run are counted instead, pass by pass; --drive
+    then tells the direction. The extremes are those given (--low and --high, in volts or counts), those
+    of --extremes, or what the recording shows itself. Without a wavelength there are no metres, and
+    that is no error.
     """
-    from calibration.errors import CalibrationError
-    from calibration.found_extremes import usable_scan
-    from calibration.fringe_reading import read_fringe
     from metro.output import check_document, to_json, write_whole
 
+    inputs = [file, extremes_file, dark, bench.path]
     if out is not None:
-        check_document(out, overwrite, [file, extremes_file, dark, bench.path])
-    lines = list(lines_hz) or [line.frequency_hz for line in bench.lines]
-    if not lines:
-        raise CalibrationError("--line is needed: the frequency of each driven line, such as 1kHz")
+        check_document(out, overwrite, inputs)
+    if plot is not None:
+        from metro.figure_file import check_figure
+
+        check_figure(plot, overwrite, [*inputs, out])
+    lines = [] if count else list(lines_hz) or [line.frequency_hz for line in bench.lines]
+    _check(lines_hz, count, extremes_file, levels)
+    task = _Task(reading, bench, levels, extremes_file, dark, monitor, antiphase)
+    recording = reading.open(file)
+    answer = task.driven(recording, lines) if lines else task.counted(recording)
+    if out is not None:
+        write_whole(out, to_json(answer.document) + "\n", overwrite=overwrite)
+    if plot is not None and answer.draw is not None:
+        answer.draw(plot, overwrite)
+    click.echo(to_json(answer.document) if as_json else answer.text)
+    reading.tell(recording)
+    if answer.reasons:
+        distrust(answer.reasons)
+
+
+def _check(
+    lines_hz: tuple[float, ...],
+    count: bool,
+    extremes_file: str | None,
+    levels: tuple[str | None, str | None],
+) -> None:
+    from calibration.errors import CalibrationError
+
+    if count and lines_hz:
+        raise CalibrationError("--count stands for --line: give one or the other")
     if extremes_file is not None and any(levels):
         raise CalibrationError("--extremes stands for --low and --high: give one or the other")
-    recording = reading.open(file)
-    trace = reading.signal(recording)
-    low, high = _levels(levels, bench if extremes_file is None else Bench(), trace.unit)
-    scan = None
-    if extremes_file is not None:
-        scan = usable_scan(_whole(reading, extremes_file), extremes_file)
-    result = read_fringe(
-        trace,
-        lines,
-        low=low,
-        high=high,
-        scan=scan,
-        whole=_whole_of(reading, recording),
-        dark=_dark(reading, dark, trace),
-        ruler=_ruler(bench),
-    )
-    document = result.to_dict()
-    if out is not None:
-        write_whole(out, to_json(document) + "\n", overwrite=overwrite)
-    click.echo(to_json(document) if as_json else _for_people(result, bench))
-    reading.tell(recording)
-    if result.reasons:
-        distrust(result.reasons)
 
 
-def _levels(
-    given: tuple[str | None, str | None], bench: Bench, unit: str
-) -> tuple["Level | None", "Level | None"]:
-    from calibration.found_extremes import Level, level_of_text
+@dataclass(frozen=True)
+class _Task:
+    """The options that both ways through the command share."""
 
-    out: list[Level | None] = []
-    for name, text in zip(("low", "high"), given, strict=True):
-        entry = bench.get(f"fringe.{name}")
-        if text is not None:
-            out.append(level_of_text(text, f"--{name}", unit))
-        elif entry is not None and not any(given):
-            out.append(Level(float(entry.magnitude), float(entry.u_magnitude or 0.0)))
-        else:
-            out.append(None)
-    return out[0], out[1]
+    reading: Reading
+    bench: Bench
+    levels: tuple[str | None, str | None]
+    extremes_file: str | None
+    dark: str | None
+    monitor: str | None
+    antiphase: str | None
 
+    def driven(self, recording: "Recording", lines: list[float]) -> _Answer:
+        """Fit driven lines."""
+        from calibration.fringe_plot import save_driven_plot
+        from calibration.fringe_reading import read_fringe
+        from calibration.fringe_tables import driven_tables
 
-def _whole(reading: Reading, path: str) -> "Trace":
-    """Return the photodiode in a whole other recording."""
-    everything = replace(reading, from_s=None, to_s=None)
-    return everything.signal(everything.open(path))
-
-
-def _whole_of(reading: Reading, recording: "Recording") -> "Trace | None":
-    """Return the whole of the same recording where only a stretch was asked for."""
-    if reading.from_s is None and reading.to_s is None:
-        return None
-    return replace(reading, from_s=None, to_s=None).signal(recording)
-
-
-def _dark(reading: Reading, dark: str | None, trace: "Trace") -> "Level | None":
-    from calibration.found_extremes import dark_of_trace, is_file, level_of_text
-
-    if dark is None:
-        return None
-    if is_file(dark):
-        return dark_of_trace(_whole(reading, dark))
-    return level_of_text(dark, "--dark", trace.unit)
-
-
-def _ruler(bench: Bench) -> "Ruler | None":
-    from calibration.ruler import ruler_of
-
-    wavelength = bench.get("laser.wavelength")
-    if wavelength is None:
-        return None
-    trips = round(bench.magnitude("arms.round_trips", 1.0))
-    return ruler_of(wavelength, bench.index(), trips)
-
-
-def _for_people(result: "FringeReading", bench: Bench) -> str:
-    """Return the tables that people read."""
-    from metro.output import table
-
-    fit = result.fit
-    level: list[list[Any]] = [
-        ["low", fit.low, result.extremes_from],
-        ["high", fit.high, result.extremes_from],
-        ["contrast", fit.contrast or "unknown: no --dark", "(high − low)/(high + low − 2·dark)"],
-        ["working phase", fit.working_phase, "0 at the maximum; the sign cannot be told"],
-        ["slope", fit.slope, "dV/dφ there"],
-        ["slope per metre", fit.slope_per_metre or "unknown: no --wavelength", "dV/dx there"],
-    ]
-    metres: list[Any] = list(fit.displacement_amplitude or ()) or [
-        "unknown: no --wavelength"
-    ] * len(fit.phase_amplitude)
-    lines = [
-        [f"{frequency:g} Hz", depth, displacement, phase]
-        for frequency, depth, displacement, phase in zip(
-            result.frequencies_hz, fit.phase_amplitude, metres, fit.phase, strict=True
+        trace = self._trace(recording, self.reading)
+        low, high = self._levels(trace.unit)
+        result = read_fringe(
+            trace,
+            lines,
+            low=low,
+            high=high,
+            scan=self._scan(),
+            whole=self._whole_of(recording),
+            dark=self._dark(trace.unit),
+            ruler=self._ruler(),
         )
-    ]
-    ways = []
-    for route in result.routes:
-        values = route.displacement_amplitude or route.phase_amplitude or []
-        ways.append([route.route, ", ".join(map(str, values)) or "none"])
-        ways.append(["", f"valid: {route.valid_range}"])
-        ways += [["", f"not used: {reason}"] for reason in route.reasons]
-    parts = [
-        table(level),
-        table(lines, ["line", "phase amplitude", "displacement", "phase at t = 0"]),
-        table(ways, ["route", "amplitude"]),
-    ]
-    if result.agreement is not None:
-        word = "consistent" if result.agreement.agree else "not consistent"
-        parts.append(f"routes: normalised error {result.agreement.normalised_error:.2g}, {word}")
-    if fit.displacement_amplitude and bench.in_vacuum and not is_quiet():
-        parts.append("no air entry: the arms are taken to be in vacuum")
-    if not result.reasons:
-        parts.append("no reason for distrust found")
-    return "\n\n".join(parts)
+        remarks = self._remarks(bool(result.fit.displacement_amplitude))
+        return _Answer(
+            result.to_dict(),
+            driven_tables(result, remarks),
+            result.reasons,
+            lambda path, overwrite: save_driven_plot(result, trace, path, overwrite=overwrite),
+        )
+
+    def counted(self, recording: "Recording") -> _Answer:
+        """Count fringes."""
+        from calibration.count_reading import read_count
+        from calibration.found_extremes import Level
+        from calibration.fringe_plot import save_count_plot
+        from calibration.fringe_tables import count_tables
+
+        trace = self._trace(recording, self.reading)
+        low, high = self._levels(trace.unit)
+        scan = self._scan()
+        if scan is not None:
+            low, high = Level(scan.low, scan.low_u), Level(scan.high, scan.high_u)
+        result = read_count(
+            trace,
+            self.reading.drive(recording),
+            low=low,
+            high=high,
+            dark=self._dark(trace.unit),
+            ruler=self._ruler(),
+        )
+        return _Answer(
+            result.to_dict(),
+            count_tables(result, self._remarks(result.ruler is not None)),
+            result.reasons,
+            lambda path, overwrite: save_count_plot(result, path, overwrite=overwrite),
+        )
+
+    def _trace(self, recording: "Recording", reading: Reading) -> "Trace":
+        """Return the photodiode, the power's drift taken out where that was asked for."""
+        from calibration.found_extremes import is_file, unit_of_text
+        from calibration.power_ratio import without_power_drift
+
+        trace = reading.signal(recording)
+        if self.antiphase is None:
+            given = [*self.levels, None if self.dark is None or is_file(self.dark) else self.dark]
+            trace = replace(trace, unit=unit_of_text(given, trace.unit))
+        other = [
+            None if name is None else recording.trace(name, reading.from_s, reading.to_s)
+            for name in (self.monitor, self.antiphase)
+        ]
+        if other == [None, None]:
+            return trace
+        return without_power_drift(trace, other[0], other[1], self._dark(trace.unit))
+
+    def _levels(self, unit: str) -> tuple["Level | None", "Level | None"]:
+        from calibration.found_extremes import Level, level_of_text
+
+        out: list[Level | None] = []
+        for name, text in zip(("low", "high"), self.levels, strict=True):
+            entry = self.bench.get(f"fringe.{name}") if self.extremes_file is None else None
+            if text is not None:
+                out.append(level_of_text(text, f"--{name}", unit))
+            elif entry is not None and not any(self.levels):
+                out.append(Level(float(entry.magnitude), float(entry.u_magnitude or 0.0)))
+            else:
+                out.append(None)
+        return out[0], out[1]
+
+    def _scan(self) -> "ScanFit | None":
+        """Return the extremes of --extremes, None without it."""
+        from calibration.found_extremes import usable_scan
+
+        if self.extremes_file is None:
+            return None
+        everything = replace(self.reading, from_s=None, to_s=None)
+        other = self._trace(everything.open(self.extremes_file), everything)
+        return usable_scan(other, self.extremes_file)
+
+    def _whole_of(self, recording: "Recording") -> "Trace | None":
+        """Return the whole of the same recording where only a stretch was asked for."""
+        if self.reading.from_s is None and self.reading.to_s is None:
+            return None
+        return self._trace(recording, replace(self.reading, from_s=None, to_s=None))
+
+    def _dark(self, unit: str) -> "Level | None":
+        from calibration.found_extremes import dark_of_trace, is_file, level_of_text
+
+        if self.dark is None:
+            return None
+        if is_file(self.dark):
+            everything = replace(self.reading, from_s=None, to_s=None)
+            return dark_of_trace(everything.signal(everything.open(self.dark)))
+        return level_of_text(self.dark, "--dark", unit)
+
+    def _ruler(self) -> "Ruler | None":
+        from calibration.ruler import ruler_of
+
+        wavelength = self.bench.get("laser.wavelength")
+        if wavelength is None:
+            return None
+        trips = round(self.bench.magnitude("arms.round_trips", 1.0))
+        return ruler_of(wavelength, self.bench.index(), trips)
+
+    def _remarks(self, in_metres: bool) -> list[str]:
+        if in_metres and self.bench.in_vacuum and not is_quiet():
+            return ["no air entry: the arms are taken to be in vacuum"]
+        return []

@@ -150,7 +150,6 @@ def test_for_people(capsys, driven):
 @pytest.mark.parametrize(
     ("arguments", "words"),
     [
-        ([], "--line is needed"),
         (["--line", "31.7"], "--line must have a unit"),
         (["--line", "600Hz"], "below half the rate"),
         (["--line", "31.7Hz", "--low", "0.2V"], "low and high must be given together"),

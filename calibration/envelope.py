@@ -1,0 +1,124 @@
+"""The envelope: a fringe's extremes along a record whose level or contrast may change."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.turning_points import turning_points
+
+__all__ = ["Envelope", "constant_envelope", "running_envelope", "running_median"]
+
+FloatArray = NDArray[np.float64]
+
+_NEIGHBOURS = 7  # tops that a running median goes over: one that turned short changes nothing
+
+
+@dataclass(frozen=True)
+class Envelope:
+    """Extremes of the fringe at each sample.
+
+    Attributes
+    ----------
+    low, high : ndarray, shape (n,)
+        In the record's unit.
+    """
+
+    low: FloatArray
+    high: FloatArray
+
+    @property
+    def half_span(self) -> FloatArray:
+        """Half of high − low at each sample."""
+        return (self.high - self.low) / 2.0
+
+    def cosine(self, values: FloatArray) -> FloatArray:
+        """Return cos φ of a record, beyond ±1 where it leaves the envelope.
+
+        Parameters
+        ----------
+        values : ndarray, shape (n,)
+            In the record's unit.
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            Dimensionless.
+        """
+        return np.asarray((values - (self.high + self.low) / 2.0) / self.half_span)
+
+
+def constant_envelope(
+    count: int, low: float, high: float, drift: tuple[float, float] = (0.0, 0.0)
+) -> Envelope:
+    """Return an envelope that is straight.
+
+    Parameters
+    ----------
+    count : int
+        Samples.
+    low, high : float
+        Extremes at the middle of the record.
+    drift : tuple of float
+        Their changes from the first sample to the last.
+
+    Returns
+    -------
+    Envelope
+        In the unit of ``low``.
+    """
+    when = np.linspace(-0.5, 0.5, count)
+    return Envelope(low + drift[0] * when, high + drift[1] * when)
+
+
+def running_median(levels: FloatArray, neighbours: int) -> FloatArray:
+    """Return the median over so many neighbours, the ends mirrored.
+
+    Parameters
+    ----------
+    levels : ndarray, shape (k,)
+        Any unit; at least one.
+    neighbours : int
+        Odd; fewer are taken where there are fewer levels.
+
+    Returns
+    -------
+    ndarray, shape (k,)
+        Same unit.
+    """
+    half = min(neighbours, len(levels)) // 2
+    if len(levels) <= 2 * half:
+        return np.full(len(levels), np.median(levels))
+    padded = np.pad(levels, half, mode="reflect")
+    windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * half + 1)
+    return np.asarray(np.median(windows, axis=1))
+
+
+def running_envelope(values: FloatArray, noise: float) -> Envelope | None:
+    """Return the envelope that runs along the tops and bottoms of a record.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Record, any unit, no NaN.
+    noise : float
+        Standard deviation of its noise, same unit.
+
+    Returns
+    -------
+    Envelope or None
+        None where there are fewer than three tops or three bottoms.
+    """
+    low, high = np.quantile(values, [0.01, 0.99])
+    turns = turning_points(values, max(0.15 * float(high - low), 7.0 * noise))
+    levels = values[turns]
+    if len(turns) < 6:
+        return None
+    is_top = np.diff(levels, prepend=levels[1]) > 0.0
+    index = np.arange(len(values))
+    ends = [
+        np.interp(index, turns[side], running_median(levels[side], _NEIGHBOURS))
+        for side in (~is_top, is_top)
+    ]
+    least = 0.02 * float(high - low)
+    return Envelope(ends[0], np.maximum(ends[1], ends[0] + least))

@@ -100,10 +100,16 @@ class DriveLines:
     """
 
     def __init__(self, limit_v: float | None, terminal_factor: float = 1.0) -> None:
-        self._limit_v = limit_v
+        self.limit_v = limit_v
+        """As given."""
         self._factor = terminal_factor
         self.lines: dict[int, DriveLine] = {}
         """The lines that are set, by slot."""
+
+    @property
+    def peak_v(self) -> float:
+        """What all lines together may reach [V]."""
+        return sum(line.amplitude_v for line in self.lines.values())
 
     def set(self, slot: int, line: DriveLine) -> None:
         """Want a line, in place of the one in its slot.
@@ -130,12 +136,12 @@ class DriveLines:
             raise DriveError(f"frequency_hz must be finite and > 0 Hz, got {line.frequency_hz!r}")
         wanted = {**self.lines, slot: line}
         total_v = sum(each.amplitude_v for each in wanted.values())
-        if self._limit_v is None:
+        if self.limit_v is None:
             raise DriveError("no drive limit is known, so no line is set")
-        if not total_v <= self._limit_v:
+        if not total_v <= self.limit_v:
             raise DriveError(
                 f"the lines together may reach {total_v:g} V, beyond the drive limit "
-                f"of {self._limit_v:g} V"
+                f"of {self.limit_v:g} V"
             )
         self.lines = wanted
 

@@ -349,7 +349,10 @@ class RecordingSession:
                 self._heard(desk.heard(reply) if isinstance(reply, Reply) else None)
         # Samples of a drive that is not yet as wanted would spoil every fit.
         is_sample = isinstance(piece, bytes) and piece[0] in _SAMPLED
-        return not is_sample or desk.is_settled()
+        try:
+            return not is_sample or desk.is_settled()
+        except DriveError as error:
+            raise DriveError(f"{self._name}: {error}") from None
 
     def _back(self) -> None:
         self._is_lost = False

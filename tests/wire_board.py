@@ -13,16 +13,20 @@ import serial
 import serial.rfc2217
 
 from firmware_bridge.announcement import Announcement, ChannelInfo, encode_announcement
+from firmware_bridge.decoder import Command, Decoder
 from firmware_bridge.frame import encode_frame
+from firmware_bridge.message import CommandCode, Reply, encode_reply
 
 __all__ = [
     "RATE_HZ",
     "SLOTS",
+    "AskedBoard",
     "PtyLink",
     "Rfc2217Link",
     "SocketLink",
     "WireBoard",
     "announced",
+    "asked_board",
     "ramp",
 ]
 
@@ -153,14 +157,15 @@ class Rfc2217Link:
 class WireBoard:
     """Send a ramp over a link, in real time or as fast as it is taken."""
 
-    def __init__(self, link, *, stream=1, start=0, rate_hz=RATE_HZ, damage=None):
+    def __init__(self, link, *, stream=1, start=0, rate_hz=RATE_HZ, damage=None, says=announced):
         self.link, self.stream, self.next, self.rate_hz = link, stream, start, rate_hz
+        self._says = says
         self._damage = damage or (lambda number, frame: frame)
         self._number = 0
         self._stop = threading.Event()
 
     def announce(self):
-        self.link.send(encode_announcement(announced(self.stream, rate_hz=self.rate_hz)))
+        self.link.send(encode_announcement(self._says(self.stream, rate_hz=self.rate_hz)))
 
     def frame(self):
         data = encode_frame(
@@ -185,3 +190,51 @@ class WireBoard:
         with contextlib.suppress(OSError):
             self.announce()
             self.send(frames, paced=paced)
+
+
+class AskedBoard:
+    """A board on a terminal that sends in real time once it is asked, and answers commands."""
+
+    def __init__(self, link, *, status=0, answers=True, **settings):
+        self.link, self.board = link, WireBoard(link, **settings)
+        self.status, self._answers = status, answers
+        self.heard, self._stop = [], threading.Event()
+        self._thread = threading.Thread(target=self._run, daemon=True)
+        self._thread.start()
+
+    def _run(self):
+        decoder, begun_s = Decoder(), None
+        with contextlib.suppress(OSError):
+            while not self._stop.wait(0.002):
+                for event in decoder.feed(self.link.received()):
+                    if isinstance(event, Command):
+                        self.heard.append((time.monotonic(), event))
+                        self._answer(event)
+                        begun_s = begun_s or time.monotonic()
+                sent = self.board.next / self.board.rate_hz
+                if begun_s is not None and time.monotonic() - begun_s > sent:
+                    self.link.send(self.board.frame())
+
+    def _answer(self, command):
+        if command.code == CommandCode.IDENTIFY:
+            self.board.announce()
+        elif command.code == CommandCode.SET_LINE and self.status:
+            self.link.send(encode_reply(Reply(command.code, command.request, self.status, "steep")))
+        elif command.code != CommandCode.KEEP_ALIVE and self._answers:
+            self.link.send(encode_reply(Reply(command.code, command.request)))
+
+    def codes(self):
+        return [command.code for _, command in self.heard]
+
+    def close(self):
+        self._stop.set()
+        self._thread.join()
+
+
+@contextlib.contextmanager
+def asked_board(**settings):
+    with (
+        contextlib.closing(PtyLink()) as link,
+        contextlib.closing(AskedBoard(link, **settings)) as board,
+    ):
+        yield board

@@ -7,6 +7,7 @@ from typing import Any
 
 import click
 
+from firmware_bridge.drive_options import DriveLineType
 from metro.options import ValueType, command, distrust, is_quiet, output_options
 
 __all__ = ["record"]
@@ -41,6 +42,23 @@ def _recording_name(out: str) -> str:
     return out
 
 
+def _drive(lines: tuple[Any, ...], bench_file: str | None, limit_v: float | None) -> Any:  # noqa: ANN401
+    """Return the drive that is asked for, or None; its cautions are said whatever is asked."""
+    from firmware_bridge.drive_options import drive_cautions, drive_within
+    from metro.bench import load_bench
+    from metro.errors import MetroError
+
+    if not lines:
+        if limit_v is not None:
+            raise MetroError("--drive-limit goes with --line")
+        return None
+    bench = None if bench_file is None else load_bench(bench_file)
+    drive = drive_within(lines, limit_v, bench)
+    for caution in drive_cautions(drive, bench):
+        click.echo(f"caution: {caution}", err=True)
+    return drive
+
+
 @command(example="midfringe record --port /dev/ttyACM0 --out run.mfr --duration 60s")
 @click.option("--port", metavar="P", help="Port or pyserial URL; needed.")
 @click.option("--out", metavar="FILE", help="The recording to make, NAME.mfr; needed.")
@@ -57,6 +75,27 @@ def _recording_name(out: str) -> str:
 @click.option(
     "--rate", type=ValueType("Hz", above=0.0), metavar="F", help="With --text: lines per second."
 )
+@click.option(
+    "--line",
+    "lines",
+    type=DriveLineType(),
+    multiple=True,
+    metavar="F=A",
+    help="Drive line of the board, such as 87.1Hz=0.2V; repeatable.",
+)
+@click.option(
+    "--bench",
+    "bench_file",
+    envvar="MIDFRINGE_BENCH",
+    metavar="FILE",
+    help="With --line: the bench file, for its drive_limit.",
+)
+@click.option(
+    "--drive-limit",
+    type=ValueType("V", above=0.0),
+    metavar="V",
+    help="With --line: what all lines together may reach.",
+)
 @click.option("--list", "only_list", is_flag=True, help="Show the ports and end.")
 @output_options("json", "overwrite")
 def record(
@@ -68,6 +107,9 @@ def record(
     reconnect: bool,
     text: bool,
     rate: float | None,
+    lines: tuple[Any, ...],
+    bench_file: str | None,
+    drive_limit: float | None,
     only_list: bool,
     as_json: bool,
     overwrite: bool,
@@ -76,6 +118,9 @@ def record(
 
     Ends after --duration, before --size is exceeded, or with Ctrl-C. A recording that changes its channels or rate goes on in
     NAME-2.mfr. The exit code is 1 where samples were lost or bytes discarded midway.
+
+    Lines are set before the first sample that is kept, in volts at the actuator's terminals where a bench says what lies between,
+    and brought to rest at the end; with --reconnect they are set again when the board is back. A limit in software is no interlock.
     """
     from firmware_bridge.byte_size import parse_byte_size
     from firmware_bridge.live_line import LiveLine
@@ -90,6 +135,7 @@ def record(
     if rate is not None and not text:
         raise MetroError("--rate goes with --text; a board that sends frames announces its rate")
     check_writable(_recording_name(out), overwrite)
+    drive = _drive(lines, bench_file, drive_limit)
     # A service manager's polite end is treated like Ctrl-C.
     for name in ("SIGTERM", "SIGHUP"):  # and a terminal that is closed
         if hasattr(signal, name):
@@ -109,6 +155,7 @@ def record(
             rate_hz=rate,
             reconnect=reconnect,
             overwrite=overwrite,
+            drive=drive,
             progress=line.show if show else None,
         )
     finally:

@@ -6,15 +6,13 @@ import signal
 import subprocess
 import sys
 import textwrap
-import threading
 import time
 from pathlib import Path
 
 import numpy as np
 import pytest
-from wire_board import RATE_HZ, SLOTS, PtyLink, WireBoard, ramp
+from wire_board import RATE_HZ, SLOTS, AskedBoard, PtyLink, WireBoard, asked_board, ramp
 
-from firmware_bridge.decoder import Command, Decoder
 from firmware_bridge.drive_lines import DriveError
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_session import (
@@ -26,7 +24,7 @@ from firmware_bridge.live_session import (
     LiveSession,
     LiveState,
 )
-from firmware_bridge.message import CommandCode, Reply, encode_reply
+from firmware_bridge.message import CommandCode
 from firmware_bridge.recording import open_mfr
 
 WAIT_S = 20.0
@@ -53,51 +51,6 @@ class Viewer:
 
     def of(self, kind):
         return [event for event in self.events if isinstance(event, kind)]
-
-
-class AskedBoard:
-    """A board on a terminal that sends in real time once it is asked, and answers commands."""
-
-    def __init__(self, link, **settings):
-        self.link, self.board = link, WireBoard(link, **settings)
-        self.heard, self._stop = [], threading.Event()
-        self._thread = threading.Thread(target=self._run, daemon=True)
-        self._thread.start()
-
-    def _run(self):
-        decoder, begun_s = Decoder(), None
-        with contextlib.suppress(OSError):
-            while not self._stop.wait(0.002):
-                for event in decoder.feed(self.link.received()):
-                    if isinstance(event, Command):
-                        self.heard.append((time.monotonic(), event))
-                        self._answer(event)
-                        begun_s = begun_s or time.monotonic()
-                sent = self.board.next / self.board.rate_hz
-                if begun_s is not None and time.monotonic() - begun_s > sent:
-                    self.link.send(self.board.frame())
-
-    def _answer(self, command):
-        if command.code == CommandCode.IDENTIFY:
-            self.board.announce()
-        elif command.code != CommandCode.KEEP_ALIVE:
-            self.link.send(encode_reply(Reply(command.code, command.request)))
-
-    def codes(self):
-        return [command.code for _, command in self.heard]
-
-    def close(self):
-        self._stop.set()
-        self._thread.join()
-
-
-@contextlib.contextmanager
-def asked_board(**settings):
-    with (
-        contextlib.closing(PtyLink()) as link,
-        contextlib.closing(AskedBoard(link, **settings)) as board,
-    ):
-        yield board
 
 
 def is_file(event):

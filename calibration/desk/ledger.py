@@ -236,8 +236,10 @@ class Ledger:
         CalibrationEntry or None
             None where there is none.
         """
-        found = self.calibrations(bench=bench, until=at)
-        return found[-1] if found else None
+        rows = self._rows(
+            tables().calibrations, "created", bench=bench, since=None, until=at, newest=True
+        )
+        return CalibrationEntry.from_row(rows[0]) if rows else None
 
     def close(self) -> None:
         """Close the database."""
@@ -263,7 +265,9 @@ class Ledger:
         bench: str | None,
         since: str | None,
         until: str | None,
+        newest: bool = False,
     ) -> list[Any]:
+        """Return rows in the order of time, or the newest one alone."""
         from sqlalchemy import select
 
         column = table.c[moment]
@@ -275,5 +279,8 @@ class Ledger:
         if until is not None:
             wanted.append(column < until)
         order = select(table).where(*wanted).order_by(column, table.c.id)
+        if newest:
+            last = (column.desc(), table.c.id.desc())
+            order = select(table).where(*wanted).order_by(*last).limit(1)
         with self._database.reading() as connection:
             return list(connection.execute(order).mappings())

@@ -23,6 +23,8 @@ from firmware_bridge.writer import DiskError
 
 __all__ = ["Progress", "RecordSummary", "record"]
 
+_MOST_NAMED = 4
+
 
 @dataclass(frozen=True, slots=True)
 class RecordSummary:
@@ -179,13 +181,23 @@ def record(
 
 
 def _kept_on_disk(files: list[Path]) -> str:
+    there = [path for path in files if path.exists()]  # of a rotation some may be deleted by now
     try:
-        recordings = [open_mfr(path) for path in files]
+        recordings = [open_mfr(path) for path in there]
     except BridgeError:
+        return "nothing was recorded"
+    if not recordings:
         return "nothing was recorded"
     samples = sum(recording.length for recording in recordings)
     time_s = sum(recording.duration_s for recording in recordings)
-    return f"kept {samples} samples ({time_s:.4g} s) in {', '.join(map(str, files))}"
+    return f"kept {samples} samples ({time_s:.4g} s) in {_named(there)}"
+
+
+def _named(files: list[Path]) -> str:
+    """Return the names of files, of many the first and the last."""
+    if len(files) <= _MOST_NAMED:
+        return ", ".join(map(str, files))
+    return f"{len(files)} files from {files[0]} to {files[-1]}"
 
 
 def _summary(intake: Intake, *, is_rotated: bool) -> RecordSummary:

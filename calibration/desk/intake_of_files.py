@@ -31,8 +31,12 @@ def result_entries(
         JSON from ``midfringe lines``, or a recording, which is measured here.
     measuring : Measuring
         How lines of a recording are measured.
-    time, temperature_k, bench
+    time : str or None
         As for :func:`line_entries_of_file`.
+    temperature_k : float or None
+        Temperature meanwhile [K].
+    bench : str
+        Which bench.
 
     Returns
     -------

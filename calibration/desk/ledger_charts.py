@@ -88,8 +88,14 @@ def charts_of(
         Which lines [Hz]; all where empty.
     since, until : str or None
         From and before these moments, as the ledger keeps times.
-    law, rule, sample, baseline
-        As for :func:`calibration.desk.chart_line`.
+    law : TemperatureLaw, optional
+        As for :func:`calibration.desk.chart_line`, like all that follow.
+    rule : CusumRule, optional
+        Of the alarms.
+    sample : int
+        Results a point.
+    baseline : int
+        Results that the limits come from.
 
     Returns
     -------

@@ -11,7 +11,14 @@ from calibration.extremes import Extremes
 from calibration.readout import Readout
 from calibration.record import ActuatorEntry
 from calibration.slope_line import CombinedLine
-from calibration.term import FRINGE_EXTREMES, LINE_FIT, Term, budget_of
+from calibration.term import (
+    FRINGE_EXTREMES,
+    LINE_FIT,
+    PICKUP_ASSUMED,
+    PICKUP_MEASURED,
+    Term,
+    budget_of,
+)
 from metro.bench import Bench
 from metro.drive import terminal_factor
 from metro.measured import Measured
@@ -172,7 +179,7 @@ def _additive_terms(
         along = _along(line)
         size = weight * _u_along(line.additive.covariance, along)
         turn = weight * _u_along(line.additive.covariance, np.array([-along[1], along[0]]))
-        terms = _pair("pick-up", size, turn, "A", line.additive.dof)
+        terms = _pair(PICKUP_MEASURED, size, turn, "A", line.additive.dof)
     return [
         *terms,
         *(_wires_terms(line, bench, frequency_hz, volts) if "wires" in lacks else []),
@@ -201,7 +208,7 @@ def _wires_terms(line: CombinedLine, bench: Bench, frequency_hz: float, volts: f
     """Return the pick-up of the wires where it was not measured: stated, or assumed."""
     if bench.get("drive.pickup") is None:
         u = ASSUMED_ADDITIVE / sqrt(3.0)
-        return _pair("pick-up (not measured, assumed)", u, u, "B", inf)
+        return _pair(PICKUP_ASSUMED, u, u, "B", inf)
     weight = abs(line.additive_weight / line.ratio)
     u = weight * bench.u("drive.pickup") * frequency_hz / 100.0 * volts
     return _pair("pick-up (not measured, stated)", u, u, "B", inf)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from functools import cached_property
 from math import pi
 
-from calibration.term import ADC_REFERENCE, RULER, Term
+from calibration.term import ADC_REFERENCE, DRIVE_SETTING, RULER, Term
 from metro.bench import Bench
 from metro.kernel.phase import phase_per_metre
 from metro.readout import Pole
@@ -112,7 +112,7 @@ class Readout:
         if not line.drive_v:
             return []
         return [
-            Term("drive setting", line.drive_v, "V", line.drive_u_v, relative=-1.0 / line.drive_v)
+            Term(DRIVE_SETTING, line.drive_v, "V", line.drive_u_v, relative=-1.0 / line.drive_v)
         ]
 
     def _stated(
@@ -134,12 +134,12 @@ _POLES = {"photodiode.bandwidth": "readout response", "adc.antialias": "anti-ali
 
 def _pole_term(pole: Pole, frequency_hz: float) -> Term:
     """Return what the uncertainty of a pole's corner does to a line corrected for it."""
-    ratio = frequency_hz / pole.corner_hz
+    slope = pole.log_slope(frequency_hz)
     return Term(
         _POLES[pole.key],
         pole.corner_hz,
         "Hz",
         pole.u_hz,
-        relative=-(ratio**2) / (1 + ratio**2) / pole.corner_hz,
-        turn=-ratio / (1 + ratio**2) / pole.corner_hz,
+        relative=-slope.real,
+        turn=-slope.imag,
     )

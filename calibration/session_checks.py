@@ -13,7 +13,7 @@ from calibration.line_fit import LineFit
 from calibration.record import ActuatorEntry
 from calibration.scan import ScanFit
 from calibration.session import Session
-from calibration.slope_line import SlopeLine, is_driven
+from calibration.slope_line import SlopeLine, is_driven, is_noise_known
 from calibration.term import Term
 from calibration.working_point import PhaseRecord
 from metro.bench import Bench
@@ -122,6 +122,8 @@ def reasons_of(
             if is_driven(line):  # else nothing was to be found there
                 where = f"{name}: line at {line.frequency_hz:g} Hz"
                 reasons += [f"{where}: {reason}" for reason in line.distrust_reasons]
+                if not is_noise_known(line):
+                    reasons.append(f"{where}: the noise beside it could not be told")
     return list(dict.fromkeys(reasons))
 
 

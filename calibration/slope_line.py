@@ -17,7 +17,7 @@ from calibration.line_fit import Line
 from calibration.pickup import Additive
 from calibration.working_point import SLOPE_SIGN, SlopeMeans
 
-__all__ = ["CombinedLine", "SlopeLine", "combine", "is_driven"]
+__all__ = ["CombinedLine", "SlopeLine", "combine", "is_driven", "is_noise_known"]
 
 DRIVEN_MIN = 10.0  # amplitude over u below which the drive does not hold the line at all
 
@@ -52,7 +52,8 @@ class SlopeLine:
     def of(cls, slope: str, line: Line, means: SlopeMeans, setting_v: float | None) -> "SlopeLine":
         """Return a fitted line over its drive as recorded, else over the generator's setting."""
         if line.ratio is not None:
-            return cls(slope, line.ratio.phasor, line.ratio.covariance, line.ratio.dof, means)
+            covariance, dof = _noise_of(line)
+            return cls(slope, line.ratio.phasor, covariance, dof, means)
         if not setting_v:
             raise CalibrationError(
                 f"the line at {line.frequency_hz:g} Hz has no drive: the recording has no drive "
@@ -136,6 +137,20 @@ def is_driven(line: Line) -> bool:
     seen = line.response if line.drive is None else line.drive
     u = sqrt(float(np.trace(seen.covariance)) / 2)
     return bool(abs(seen.phasor) > DRIVEN_MIN * u)
+
+
+def is_noise_known(line: Line) -> bool:
+    """Return whether the noise beside a line's ratio to the drive could be told."""
+    ratio = line.ratio
+    return ratio is None or bool(ratio.dof >= 1.0 and np.isfinite(ratio.covariance).all())
+
+
+def _noise_of(line: Line) -> tuple[FloatArray, float]:
+    """Return covariance and degrees of freedom of a ratio; without any, those of the response."""
+    assert line.ratio is not None  # noqa: S101  # asked before
+    if is_noise_known(line) or line.drive is None:
+        return line.ratio.covariance, line.ratio.dof
+    return line.response.covariance / abs(line.drive.phasor) ** 2, max(1.0, line.dof)
 
 
 def _both(

@@ -8,9 +8,16 @@ from metro.budget import Budget, Contribution
 
 __all__ = [
     "ADC_REFERENCE",
+    "DRIVE_SETTING",
     "FRINGE_EXTREMES",
     "LINE_FIT",
+    "OPEN_LOOP",
+    "OWN_TERMS",
+    "PICKUP_ASSUMED",
+    "PICKUP_MEASURED",
     "POWER_DRIFT",
+    "REALIGNMENT",
+    "ROUTES",
     "RULER",
     "Term",
     "budget_of",
@@ -20,8 +27,16 @@ __all__ = [
 ADC_REFERENCE = "ADC reference"
 FRINGE_EXTREMES = "fringe extremes"
 LINE_FIT = "line fit"  # and which record
+DRIVE_SETTING = "drive setting"
+OPEN_LOOP = "open-loop"  # gain, phase
+PICKUP_ASSUMED = "pick-up (not measured, assumed)"
+PICKUP_MEASURED = "pick-up (beam blocked)"
+REALIGNMENT = "reproducibility after realignment"
+ROUTES = "disagreement of the routes"
 POWER_DRIFT = "power drift between recordings"
 RULER = ("wavelength", "refractive index")
+# Terms whose error is each line's own; all others come from causes that the lines share.
+OWN_TERMS = (LINE_FIT, DRIVE_SETTING, OPEN_LOOP, PICKUP_ASSUMED, PICKUP_MEASURED)
 
 
 @dataclass(frozen=True)

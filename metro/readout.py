@@ -46,6 +46,23 @@ class Pole:
         """
         return photodiode.one_pole_response(frequency_hz, self.corner_hz)
 
+    def log_slope(self, frequency_hz: float) -> complex:
+        """Return the derivative of the response's logarithm by the corner.
+
+        Parameters
+        ----------
+        frequency_hz : float
+            Frequency [Hz].
+
+        Returns
+        -------
+        complex
+            Relative change of the size a hertz, and change of the phase [rad/Hz]:
+            (ir/(1+ir))/f₀ with r = f/f₀, since the response is 1/(1+ir).
+        """
+        turned = 1j * frequency_hz / self.corner_hz
+        return turned / (1.0 + turned) / self.corner_hz
+
     def relative_effect(self, frequency_hz: float) -> float:
         """Return the relative change of the response's size for one u of the corner.
 
@@ -59,8 +76,7 @@ class Pole:
         float
             r²/(1+r²) · u/f₀ with r = f/f₀.
         """
-        ratio = (frequency_hz / self.corner_hz) ** 2
-        return ratio / (1.0 + ratio) * self.u_hz / self.corner_hz
+        return self.log_slope(frequency_hz).real * self.u_hz
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
 from calibration.scan import fit_scan
+from calibration.smoother import noise_std
 from metro.kernel.contrast import contrast as contrast_of
 
 __all__ = ["Fringe", "FringeFinder", "Resting", "found_fringe", "resting"]
@@ -17,6 +18,8 @@ FloatArray = NDArray[np.float64]
 
 _GOOD_RAD, _FAIR_RAD = 0.26, 0.79  # 15° and 45° from mid-fringe
 _BEYOND = 1.05  # of half the span: farther out, the extremes have moved
+_ABOVE_NOISE = 30.0  # standard deviations from low to high; noise alone reaches ten
+_STILL = 0.8  # of the span known so far: less is a modulation on one slope
 _FOUND_OVER_S, _FOUND_EVERY_S = 30.0, 5.0
 _FOUND_RATE_HZ = 2000.0  # enough for a fringe passed by hand or by a slow scan; bounds the work
 
@@ -30,7 +33,7 @@ class Fringe:
     low_v, high_v : float
         Extremes, high above low, in the photodiode channel's unit.
     origin : str
-        Such as ``"calibration"``, ``"bench"`` or ``"found in the last 30 s"``.
+        Such as ``"calibration"``, ``"bench"`` or ``"widest seen"``.
     contrast : float or None
         (high − low)/(high + low − 2·dark); None without a dark.
     """
@@ -115,8 +118,13 @@ def resting(volts: float, fringe: Fringe, slope: str) -> Resting:
     return Resting(volts, -size if slope == "rising" else size, off, verdict)
 
 
-def found_fringe(values: FloatArray, rate_hz: float, dark_v: float | None) -> Fringe | None:
+def found_fringe(
+    values: FloatArray, rate_hz: float, dark_v: float | None, least_v: float = 0.0
+) -> Fringe | None:
     """Return the fringe that a stretch passed over, None where it did not.
+
+    A sine on one slope has the same extremes as a low fringe that is passed evenly: nothing in the
+    samples tells them apart, so that only the widest that was seen may be taken for the fringe.
 
     Parameters
     ----------
@@ -126,19 +134,24 @@ def found_fringe(values: FloatArray, rate_hz: float, dark_v: float | None) -> Fr
         Of these values.
     dark_v : float or None
         Voltage without light, where known.
+    least_v : float
+        high − low that is already known of; less is not looked at.
 
     Returns
     -------
     Fringe or None
-        Only extremes that a scan of this stretch would be trusted with.
+        Only extremes that a scan of this stretch would be trusted with, well above the noise.
     """
+    good = values[np.isfinite(values)]
+    if not good.size or np.ptp(good) < max(least_v, _ABOVE_NOISE * noise_std(values)):
+        return None
     try:
         scan = fit_scan(values, rate_hz)
     except CalibrationError:
         return None
-    if not scan.is_trustworthy or not scan.high > scan.low:
+    if not scan.is_trustworthy or not scan.high - scan.low >= max(least_v, 1e-300):
         return None
-    return Fringe.of(scan.low, scan.high, f"found in the last {_FOUND_OVER_S:g} s", dark_v)
+    return Fringe.of(scan.low, scan.high, "widest seen", dark_v)
 
 
 class FringeFinder:
@@ -159,7 +172,7 @@ class FringeFinder:
         self._looked = 0
 
     def add(
-        self, start_index: int, values: FloatArray
+        self, start_index: int, values: FloatArray, known: Fringe | None = None
     ) -> Callable[[float | None], Fringe | None] | None:
         """Take the next samples; return a look for the fringe where one is due.
 
@@ -169,6 +182,8 @@ class FringeFinder:
             Index of the first one.
         values : ndarray, shape (n,)
             Photodiode, NaN where missing or over-range.
+        known : Fringe or None
+            The fringe as far as it is known: a much smaller span is not taken for one.
 
         Returns
         -------
@@ -193,4 +208,5 @@ class FringeFinder:
             return None
         self._looked = self._newest
         stretch = np.roll(self._kept, -((self._newest + 1) % size))
-        return lambda dark_v: found_fringe(stretch, self.rate_hz, dark_v)
+        least_v = 0.0 if known is None else _STILL * 2.0 * known.swing_v
+        return lambda dark_v: found_fringe(stretch, self.rate_hz, dark_v, least_v)

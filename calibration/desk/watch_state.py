@@ -188,7 +188,7 @@ class WatchState:
             self._line_job(stream, full)
             for full in stream.lines.add(block.start_index, block.values[:, stream.columns])
         ]
-        look = stream.finder.add(block.start_index, values)
+        look = stream.finder.add(block.start_index, values, self.fringe)
         if look is not None:
             dark_v = self.setup.dark_v
             jobs.append(Job(lambda: look(dark_v), self._take_found))

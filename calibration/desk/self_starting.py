@@ -18,7 +18,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from metro.kernel.student import incomplete_beta, t_two_sided
+from metro.kernel.student import incomplete_beta
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -97,6 +97,4 @@ class SelfStarting:
 
 def _tail(t: float, dof: float) -> float:
     """Return the probability beyond t ≥ 0 on one side, with all its digits."""
-    if t * t < dof:
-        return 0.5 * (1.0 - t_two_sided(t, dof))
     return 0.5 * incomplete_beta(dof / (dof + t * t), 0.5 * dof, 0.5)

@@ -12,10 +12,10 @@ LINE_HZ = 87.1
 START_S = 1_764_547_200  # 2025-12-01T00:00:00Z
 
 
-def result(value, *, unix_s=START_S, u=None, unit="m/V", line_hz=LINE_HZ, **more):
+def result(value, *, unix_s=START_S, u=None, unit="m/V", source="test", **more):
     """Return one line result."""
     measured = Measured.of(float(value), unit, u, 60.0)
-    return LineEntry(iso_of(unix_s), line_hz, measured, is_ratio=True, source="test", **more)
+    return LineEntry(iso_of(unix_s), LINE_HZ, measured, is_ratio=True, source=source, **more)
 
 
 def month(seed, *, step=0.0, swing_k=0.0, per_kelvin=0.0, scatter=1e-3, hours=720, at=480):

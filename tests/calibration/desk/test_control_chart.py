@@ -48,7 +48,7 @@ def test_limits_of_samples_hold_all_but_3_in_1000_means(sample):
 
 
 def test_too_few_results_give_no_limits():
-    with pytest.raises(LedgerError, match="^control limits need at least 8 results, got 7$"):
+    with pytest.raises(LedgerError, match=r"^control limits need at least 8 results, got 7$"):
         individual_limits(np.arange(7.0))
 
 

@@ -113,7 +113,7 @@ def test_distrusted_results_are_left_out():
     chart = chart_line(entries)
     assert len(chart.values) == 49
     assert chart.cautions[0].startswith("1 results were left out")
-    with pytest.raises(LedgerError, match="^of 1 results none is trustworthy"):
+    with pytest.raises(LedgerError, match=r"^of 1 results none is trustworthy"):
         chart_line([entries[10]])
 
 
@@ -135,7 +135,7 @@ def test_the_coefficient_that_results_show_covers_the_true_one():
 def test_a_coefficient_needs_temperatures_that_differ():
     with pytest.raises(LedgerError, match="at least 8 results with a temperature, got 5"):
         fitted_coefficient(month(1, hours=5))
-    with pytest.raises(LedgerError, match="at least 0.05 K apart, got 0 K"):
+    with pytest.raises(LedgerError, match=r"at least 0\.05 K apart, got 0 K"):
         fitted_coefficient(month(1, hours=50))
 
 

@@ -122,6 +122,11 @@ def count_reasons(
             f"the motion does not follow the drive: {got.against_drive:.0%} of the half fringes went "
             "against it"
         )
+    missed, turns = got.unfollowed
+    if missed > max(1, 0.2 * turns):
+        reasons.append(
+            f"the motion does not follow the drive: at {missed} of its {turns} turns the fringes go on"
+        )
     if scan is not None:
         reasons += [reason for reason in scan.reasons if not (fast and "not sharp" in reason)]
     return reasons

@@ -6,7 +6,7 @@ are kept out by a band of hysteresis.
 """
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -227,16 +227,18 @@ def _envelope(
 
 def _turned(got: Unfolded) -> Unfolded:
     """Return the same with the other sign: without a drive the record's net way is positive."""
-    return Unfolded(
-        -got.phase_rad, got.turns, got.passed, got.band, got.cosine_u, got.against_drive
-    )
+    return replace(got, phase_rad=-got.phase_rad)
 
 
 def _end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
     """Return the standard uncertainty of the phase at some samples, in fringes."""
-    sine = np.abs(np.sin(got.phase_rad[places]))
+    angle = np.abs(np.sin(got.phase_rad[places]))
     cosine_u = math.hypot(got.cosine_u, 0.01)  # the extremes, too, are known to about 1 %
-    near = np.minimum(cosine_u / np.maximum(sine, 1e-9), math.sqrt(2.0 * cosine_u))
+    near = np.minimum(cosine_u / np.maximum(angle, 1e-9), math.sqrt(2.0 * cosine_u))
+    # within the band of an extreme the side is not known
+    hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0))
+    folded = np.arcsin(np.minimum(angle, 1.0))
+    near = np.where(folded < hidden, np.hypot(near, folded), near)
     return np.hypot(near / (2.0 * math.pi), _LAW_U)
 
 

@@ -15,9 +15,10 @@ if TYPE_CHECKING:
 
     from calibration.count_reading import CountReading
     from calibration.fringe_reading import FringeReading
+    from calibration.quadrature_reading import QuadratureReading
     from firmware_bridge.trace import Trace
 
-__all__ = ["save_count_plot", "save_driven_plot"]
+__all__ = ["save_count_plot", "save_driven_plot", "save_quadrature_plot"]
 
 FloatArray = NDArray[np.float64]
 
@@ -165,4 +166,46 @@ def save_driven_plot(
     axes[0].set(title="Driven fringe", xlabel="time / s", ylabel=f"photodiode / {unit}")
     axes[0].legend(loc="upper right", fontsize=8)
     _draw_law(axes[1], axes[2], phase, trace.values, low, high, unit)
+    save_figure(figure, path, overwrite=overwrite)
+
+
+def save_quadrature_plot(
+    result: "QuadratureReading", x: "Trace", y: "Trace", path: str | Path, *, overwrite: bool
+) -> None:
+    """Draw two detectors in quadrature: their ellipse, the phase, what the ellipse leaves.
+
+    Parameters
+    ----------
+    result : QuadratureReading
+        Phase and ellipse.
+    x, y : Trace
+        The detectors.
+    path : str or Path
+        PNG, PDF or SVG by its suffix.
+    overwrite : bool
+        Whether an existing file may be replaced.
+    """
+    figures = require("matplotlib.figure", "bench", "a plot")
+    figure = figures.Figure(figsize=(8.27, 10.5), layout="constrained")
+    axes = figure.subplots(3, 1, height_ratios=[3, 2, 1.5])
+    ellipse, phase = result.phase.ellipse, result.phase.phase_rad
+    thin, unit = _thin(len(phase)), _unit(x.unit)
+    axes[0].plot(x.values[thin], y.values[thin], ".", color=BLUE, markersize=1.5, label="record")
+    turn = np.linspace(0.0, 2.0 * np.pi, 400)
+    axes[0].plot(
+        ellipse.radius * np.cos(turn) + ellipse.offset_x,
+        ellipse.radius * np.sin(turn - ellipse.angle_rad) / ellipse.gain_ratio + ellipse.offset_y,
+        color=ORANGE,
+        linewidth=1.0,
+        label="ellipse",
+    )
+    axes[0].set(title="Quadrature", xlabel=f"{x.name} / {unit}", ylabel=f"{y.name} / {unit}")
+    axes[0].set_aspect("equal")
+    axes[0].legend(loc="upper right", fontsize=8)
+    axes[1].plot(x.times_s()[thin], phase[thin] / (2.0 * np.pi), color=BLUE, linewidth=0.8)
+    axes[1].set(xlabel="time / s", ylabel="phase / fringes")
+    size = np.hypot(*ellipse.corrected(x.values, y.values)) / ellipse.radius - 1.0
+    axes[2].axhline(0.0, color=GREY, linewidth=0.8)
+    axes[2].plot(np.mod(phase[thin], 2.0 * np.pi), size[thin], ".", color=BLUE, markersize=1.5)
+    axes[2].set(xlabel="phase, modulo 2π / rad", ylabel="radius / mean − 1", xlim=(0, 2.0 * np.pi))
     save_figure(figure, path, overwrite=overwrite)

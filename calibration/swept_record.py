@@ -5,13 +5,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.smoother import floor_std, noise_gain, noise_std, smooth, smoothing_length
+from calibration.smoother import floor_std, noise_gain, noise_std, smooth
 
 __all__ = ["SweptRecord", "ready_to_count", "record_noise"]
 
 FloatArray = NDArray[np.float64]
 
-_FINE = 8  # samples of a half fringe that one parabola of the average may span at most
+_LONGEST = 65  # samples averaged at most
 
 
 @dataclass(frozen=True)
@@ -85,7 +85,12 @@ def _samples_in_half_fringe(values: FloatArray, noise: float) -> float:
     crossings = seen[1:][np.diff(side[seen]) != 0.0]
     if len(crossings) < 3:
         return float(len(values))
-    return float(np.quantile(np.diff(crossings), 0.05))
+    return float(np.quantile(np.diff(crossings), 0.02))
+
+
+def _length(half_fringe: float) -> int:
+    """Return how many samples to average: a sixth of a half fringe, which bends it by 1e-4."""
+    return max(min(2 * int(half_fringe / 12.0) + 1, _LONGEST), 1)
 
 
 def record_noise(values: FloatArray) -> float:
@@ -128,11 +133,7 @@ def ready_to_count(values: FloatArray) -> SweptRecord:
     filled = np.interp(np.arange(first, stop), good, values[good])
     raw = record_noise(values)
     filled, spikes = _without_spikes(filled, raw)
-    length = smoothing_length(filled)
-    fastest = _samples_in_half_fringe(filled, raw)
-    while length > 1 and length > fastest / _FINE * 4.0:
-        length -= 2
-    length = length if length >= 5 else 1
+    length = _length(_samples_in_half_fringe(filled, raw))
     averaged = _averaged(filled, length)
     noise = max(raw * noise_gain(length) ** 0.5, 1e-6 * float(np.ptp(values[good])))
     return SweptRecord(averaged, noise, first, _gaps(~np.isfinite(inner)), spikes)

@@ -42,6 +42,8 @@ class Unfolded:
         Standard uncertainty of cos φ at one sample.
     against_drive : float
         Share of the travel that went against the drive; 0 without a drive.
+    unfollowed : tuple of int
+        Turns of the drive at which the record goes straight on, and all its turns.
     """
 
     phase_rad: FloatArray
@@ -50,6 +52,7 @@ class Unfolded:
     band: float
     cosine_u: float
     against_drive: float
+    unfollowed: tuple[int, int]
 
 
 def _passed(cosine: FloatArray, turns: NDArray[np.int64], cosine_u: float) -> NDArray[np.bool_]:
@@ -68,13 +71,41 @@ def _passed(cosine: FloatArray, turns: NDArray[np.int64], cosine_u: float) -> ND
     return np.asarray(short < allowed + 4.0 * cosine_u + missed)
 
 
+def drive_turns(drive: FloatArray) -> NDArray[np.int64]:
+    """Return where a drive turns, noise and small steps left out.
+
+    Parameters
+    ----------
+    drive : ndarray, shape (n,)
+        What moves the mirror, any unit.
+
+    Returns
+    -------
+    ndarray of int, shape (k,)
+        Samples.
+    """
+    band = max(0.01 * float(np.ptp(drive)), 7.0 * noise_std(drive)) + 1e-12
+    return turning_points(drive, band)
+
+
+def _unfollowed(drive: FloatArray | None, turns: NDArray[np.int64]) -> tuple[int, int]:
+    """Return how many turns of the drive lie well within a leg, and how many there are."""
+    if drive is None or len(turns) < 2:
+        return 0, 0
+    driven = drive_turns(drive)
+    after = np.clip(np.searchsorted(turns, driven), 1, len(turns) - 1)
+    leg = turns[after] - turns[after - 1]
+    off = np.minimum(np.abs(turns[after] - driven), np.abs(driven - turns[after - 1]))
+    return int(np.count_nonzero(off > 0.3 * leg)), len(driven)
+
+
 def _driven_sides(ends: NDArray[np.int64], angle: FloatArray, drive: FloatArray) -> FloatArray:
     """Return the side of each leg as the drive has it, from −1 to 1; 0 where it does not move.
 
     A leg in which the drive itself turns counts by where most of the angle was gone through.
     """
     span = float(np.ptp(drive))
-    turns = turning_points(drive, max(0.01 * span, 7.0 * noise_std(drive)) + 1e-12)
+    turns = drive_turns(drive)
     ways = np.sign(np.diff(drive[np.concatenate([[0], turns, [len(drive) - 1]])]))
     way = ways[np.searchsorted(turns, np.arange(len(drive) - 1), side="right")]
     if span <= 0.0:
@@ -138,7 +169,13 @@ def unfold_fringe(
     cosine_u = noise / float(np.median(envelope.half_span))
     least = _LEAST_BAND if drive is None else _LEAST_DRIVEN_BAND
     band = min(max(2.0 * least, 7.0 * cosine_u), 1.2)
-    turns = turning_points(np.clip(cosine, -1.5, 1.5), band)
+    level = np.clip(cosine, -1.5, 1.5)
+    turns = turning_points(level, band)
+    # a turn that an end of the record does not stand clear of is noise as likely as not
+    if len(turns) and abs(level[turns[0]] - level[0]) < band:
+        turns = turns[1:]
+    if len(turns) and abs(level[turns[-1]] - level[-1]) < band:
+        turns = turns[:-1]
     angle = np.arccos(np.clip(cosine, -1.0, 1.0))
     ends = np.concatenate([[0], turns, [len(cosine) - 1]])
     passed = _passed(cosine, turns, cosine_u)
@@ -148,4 +185,4 @@ def unfold_fringe(
     whole = np.concatenate([[0.0], np.cumsum(np.where(bottom, side[:-1], 0.0))])
     leg = np.searchsorted(turns, np.arange(len(cosine)), side="left")
     phase = 2.0 * math.pi * whole[leg] + side[leg] * angle
-    return Unfolded(phase, turns, passed, band / 2.0, cosine_u, against)
+    return Unfolded(phase, turns, passed, band / 2.0, cosine_u, against, _unfollowed(drive, turns))

@@ -67,6 +67,11 @@ def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
 @click.option(
     "--antiphase", metavar="COLUMN", help="The interferometer's other port, to cancel power drift."
 )
+@click.option(
+    "--quadrature",
+    metavar="X,Y",
+    help="Two detectors in quadrature, by column: phase from the ellipse they draw.",
+)
 @recording_options
 @_in_counts_too
 @bench_options
@@ -79,6 +84,7 @@ def fringe(
     dark: str | None,
     monitor: str | None,
     antiphase: str | None,
+    quadrature: str | None,
     reading: Reading,
     levels: tuple[str | None, str | None],
     bench: Bench,
@@ -107,7 +113,10 @@ def fringe(
     _check(lines_hz, count, extremes_file, levels)
     task = _Task(reading, bench, levels, extremes_file, dark, monitor, antiphase)
     recording = reading.open(file)
-    answer = task.driven(recording, lines) if lines else task.counted(recording)
+    if quadrature is not None:
+        answer = task.in_quadrature(recording, quadrature, lines)
+    else:
+        answer = task.driven(recording, lines) if lines else task.counted(recording)
     if out is not None:
         write_whole(out, to_json(answer.document) + "\n", overwrite=overwrite)
     if plot is not None and answer.draw is not None:
@@ -195,6 +204,30 @@ class _Task:
             count_tables(result, self._remarks(result.ruler is not None)),
             result.reasons,
             lambda path, overwrite: save_count_plot(result, path, overwrite=overwrite),
+        )
+
+    def in_quadrature(self, recording: "Recording", columns: str, lines: list[float]) -> _Answer:
+        """Read two detectors in quadrature."""
+        from calibration.errors import CalibrationError
+        from calibration.fringe_plot import save_quadrature_plot
+        from calibration.quadrature_reading import quadrature_tables, read_quadrature
+
+        names = [name.strip() for name in columns.split(",")]
+        if len(names) != 2 or not all(names):
+            raise CalibrationError(f"--quadrature needs two columns, such as 2,3, got {columns!r}")
+        if any(self.levels) or self.extremes_file or self.monitor or self.antiphase:
+            raise CalibrationError(
+                "--quadrature finds offsets and gains itself: leave out --low, --high, --extremes, "
+                "--monitor and --antiphase"
+            )
+        span = self.reading.from_s, self.reading.to_s
+        x, y = (recording.trace(name, *span) for name in names)
+        result = read_quadrature(x, y, lines, ruler=self._ruler())
+        return _Answer(
+            result.to_dict(),
+            quadrature_tables(result, self._remarks(result.ruler is not None)),
+            result.reasons,
+            lambda path, overwrite: save_quadrature_plot(result, x, y, path, overwrite=overwrite),
         )
 
     def _trace(self, recording: "Recording", reading: Reading) -> "Trace":

@@ -1,0 +1,164 @@
+"""Counting fringes: scans, motors, piezos with hysteresis; what cannot be counted says why."""
+
+import numpy as np
+import pytest
+from published import records
+from real_data import real_data
+
+from calibration.count_reading import read_count
+from calibration.errors import CalibrationError
+from calibration.fringe_count import count_fringes
+from calibration.ruler import ruler_of
+from calibration.turning_points import turning_points
+from firmware_bridge.opening import open_recording
+from firmware_bridge.trace import Trace
+
+COUNT = 12_000
+TIME = np.arange(COUNT) / 1000.0
+
+
+def triangle(legs):
+    """Return a triangle from 0 to 1 and back, so many legs."""
+    return np.abs((np.linspace(0, legs, COUNT) + 1) % 2 - 1)
+
+
+def volts(phase, seed=0, noise=0.02):
+    rng = np.random.default_rng(seed)
+    start = rng.uniform(0, 2 * np.pi)
+    return 1.0 + 0.8 * np.cos(phase + start) + noise * 0.8 * rng.normal(size=len(phase))
+
+
+def whole(fringes):
+    return 2 * np.pi * fringes * np.linspace(0, 1, COUNT)
+
+
+def test_turning_points_alternate_and_keep_the_band():
+    rng = np.random.default_rng(3)
+    walk = np.cumsum(rng.normal(size=5000))
+    for band in (1.0, 5.0, 20.0):
+        turns = turning_points(walk, band)
+        swings = np.diff(walk[turns])
+        assert np.all(np.abs(swings) >= band)
+        assert np.all(swings[1:] * swings[:-1] < 0)
+        # nothing within a swing turns by more than the band
+        for a, b in zip(turns[:-1], turns[1:], strict=True):
+            part = walk[a : b + 1] * np.sign(walk[b] - walk[a])
+            assert np.max(np.maximum.accumulate(part) - part) < band
+    assert not len(turning_points(np.arange(100.0), 1.0))
+    assert not len(turning_points(np.zeros(2), 1.0))
+
+
+@pytest.mark.parametrize(
+    ("fringes", "noise"), [(1000.3, 0.02), (601.3, 0.05), (30.4, 0.05), (3.2, 0.01), (1801.7, 0.02)]
+)
+def test_a_steady_scan(fringes, noise):
+    got = count_fringes(volts(whole(fringes), 1, noise), 1000.0)
+    assert got.reasons == []
+    assert len(got.passes) == 1
+    assert got.fringes == pytest.approx(fringes, abs=max(4 * got.fringes_u, 0.02))
+
+
+def test_vibration_and_mains_add_no_fringes():
+    shaken = (
+        whole(200.3) + 0.5 * np.sin(2 * np.pi * 33.0 * TIME) + 0.2 * np.sin(2 * np.pi * 50 * TIME)
+    )
+    got = count_fringes(volts(shaken, 2), 1000.0, TIME)
+    assert got.net_fringes == pytest.approx(200.3, abs=0.2)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_piezo_ramps_with_hysteresis(seed):
+    drive = triangle(4)
+    rising = np.diff(drive, append=drive[-1]) >= 0
+    moved = np.where(rising, drive**1.3, drive**0.7)  # the way back lies above the way up
+    got = count_fringes(volts(2 * np.pi * 7.4 * moved, seed), 1000.0, drive)
+    assert [one.direction for one in got.passes] == [1, -1, 1, -1]
+    assert [one.fringes for one in got.passes] == pytest.approx([7.4] * 4, abs=0.12)
+    assert abs(got.net_fringes) < 0.25
+    assert got.per_period is not None
+    assert got.per_period[0] == pytest.approx(14.8, abs=3 * got.per_period[1])
+
+
+def test_method_1_of_iso_16063_11():
+    # s = (λ/8)·R_f: the tabulated metres per unit of R_f, and the same from a sine
+    per_unit = records("bessel")["iso.m1"]
+    drive = np.cos(2 * np.pi * 2.3 * TIME)
+    depth = 31.7
+    trace = Trace("pd", "V", volts(depth * drive, 4), 1000.0)
+    got = read_count(trace, Trace("drive", "V", drive, 1000.0), ruler=ruler_of("632.81 nm"))
+    fringes = 4 * depth / (2 * np.pi)
+    assert got.count.per_period is not None
+    assert got.count.per_period[0] == pytest.approx(fringes, abs=0.1)
+    assert got.amplitude is not None
+    metres = float(got.amplitude.magnitude)
+    assert metres == pytest.approx(per_unit["value"] * got.count.per_period[0], rel=1e-9)
+    assert metres == pytest.approx(632.81e-9 * depth / (4 * np.pi), rel=5e-3)
+
+
+@pytest.mark.parametrize(
+    ("record", "word"),
+    [
+        (volts(whole(4600.3)), "sampled too slowly"),
+        (volts(2 * np.pi * 5000 * np.linspace(0, 1, COUNT) ** 2), "sampled too slowly"),
+        (np.minimum(volts(whole(50)), 1.5), "clipped"),
+        (volts(whole(0.4)), "less than one whole fringe"),
+        (1.0 + (0.1 + 0.9 * np.linspace(0, 1, COUNT)) * (volts(whole(60)) - 1.0), "too uneven"),
+        (volts(whole(1000), noise=0.6), "too noisy"),
+    ],
+)
+def test_what_cannot_be_counted_says_why(record, word):
+    got = count_fringes(record, 1000.0)
+    assert any(word in reason for reason in got.reasons), got.reasons
+
+
+def test_a_long_gap_loses_fringes_and_a_short_one_does_not():
+    record = volts(whole(50.3))
+    record[3000:3020] = np.nan
+    assert count_fringes(record, 1000.0).reasons == []
+    record[5000:5600] = np.nan
+    got = count_fringes(record, 1000.0)
+    assert any("fringes are lost" in reason for reason in got.reasons)
+
+
+def test_a_drive_that_is_not_followed_is_named():
+    got = count_fringes(
+        volts(2 * np.pi * 9.3 * triangle(4), 5), 1000.0, np.sin(2 * np.pi * 1.3 * TIME)
+    )
+    assert any("does not follow the drive" in reason for reason in got.reasons)
+
+
+def test_too_short_or_constant():
+    with pytest.raises(CalibrationError, match="needs 40 samples"):
+        count_fringes(np.arange(10.0), 1000.0)
+    with pytest.raises(CalibrationError, match="does not change"):
+        count_fringes(np.ones(100), 1000.0)
+
+
+@pytest.mark.parametrize(
+    ("name", "column", "first", "band"),
+    [("Task_11_mark_7", "2", 0, [1.0, 3.5]), ("Task_6c_7500", "1", 200, [0.15, 1.5])],
+)
+def test_real_motor_scans(name, column, first, band):
+    from scipy import signal
+
+    recording = open_recording(str(real_data(f"two-detector-motor-scan/{name}.txt")))
+    record = recording.trace(column).values[first:]
+    got = count_fringes(record, recording.rate_hz, recording.trace("6").values[first:])
+    # the same from the phase of the analytic signal, band-passed (scipy)
+    good = np.flatnonzero(np.isfinite(record))
+    sos = signal.butter(3, band, "band", fs=recording.rate_hz, output="sos")
+    passed = signal.sosfiltfilt(sos, np.interp(np.arange(len(record)), good, record[good]))
+    phase = np.unwrap(np.angle(signal.hilbert(passed)))
+    assert abs(got.net_fringes) == pytest.approx((phase[-1] - phase[0]) / (2 * np.pi), abs=0.4)
+    assert got.reasons == []
+    assert len(got.passes) <= 2
+
+
+@pytest.mark.parametrize(
+    ("name", "word"),
+    [("Task_8_6", "lost in them"), ("Task_9_blue", "too uneven"), ("Task_6a_2", "level jumps")],
+)
+def test_real_records_that_cannot_be_trusted(name, word):
+    recording = open_recording(str(real_data(f"two-detector-motor-scan/{name}.txt")))
+    got = count_fringes(recording.trace("1").values, recording.rate_hz)
+    assert any(word in reason for reason in got.reasons), got.reasons

@@ -278,8 +278,9 @@ def quadrature_tables(result: QuadratureReading, remarks: Sequence[str] = ()) ->
     ]
     parts = [table(rows)]
     if result.depths:
-        found = in_metres(result.depths, result.ruler) or ["unknown: no --wavelength"] * len(
-            result.depths
+        none = "unknown: no --wavelength"
+        found: list[Any] = list(
+            in_metres(result.depths, result.ruler) or [none] * len(result.depths)
         )
         parts.append(
             table(

@@ -1,5 +1,7 @@
 """Counting fringes: scans, motors, piezos with hysteresis; what cannot be counted says why."""
 
+import itertools
+
 import numpy as np
 import pytest
 from published import records
@@ -41,7 +43,7 @@ def test_turning_points_alternate_and_keep_the_band():
         assert np.all(np.abs(swings) >= band)
         assert np.all(swings[1:] * swings[:-1] < 0)
         # nothing within a swing turns by more than the band
-        for a, b in zip(turns[:-1], turns[1:], strict=True):
+        for a, b in itertools.pairwise(turns):
             part = walk[a : b + 1] * np.sign(walk[b] - walk[a])
             assert np.max(np.maximum.accumulate(part) - part) < band
     assert not len(turning_points(np.arange(100.0), 1.0))

@@ -16,7 +16,10 @@ from firmware_bridge.trace import Trace
 TABLE = records("quadrature")
 
 
-def signals(phase, p=0.1, q=-0.2, r=1.15, alpha=math.radians(5.0), radius=1.0):
+ANGLE = math.radians(5.0)
+
+
+def signals(phase, p=0.1, q=-0.2, r=1.15, alpha=ANGLE, radius=1.0):
     """Return the two signals after Heydemann's model."""
     x = radius * np.cos(phase) + p
     y = (

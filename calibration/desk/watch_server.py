@@ -3,6 +3,7 @@
 import asyncio
 import json
 import logging
+import socket
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from importlib import resources
@@ -10,7 +11,6 @@ from pathlib import Path
 from typing import Any
 
 import tornado.httpserver
-import tornado.netutil
 import tornado.web
 import tornado.websocket
 
@@ -78,14 +78,16 @@ class WatchServer:
             If it is taken or the address is not this computer's.
         """
         try:
-            sockets = tornado.netutil.bind_sockets(port_number, self.guard.host)
+            family = socket.AF_INET6 if ":" in self.guard.host else socket.AF_INET
+            listening = socket.create_server((self.guard.host, port_number), family=family)
         except OSError as error:
             raise CalibrationError(
                 f"port number {port_number} on {self.guard.host} cannot be served: {error.strerror}"
             ) from None
-        self.port_number = int(sockets[0].getsockname()[1])
+        listening.setblocking(False)
+        self.port_number = int(listening.getsockname()[1])
         self._server = tornado.httpserver.HTTPServer(self._application())
-        self._server.add_sockets(sockets)
+        self._server.add_sockets([listening])
         self._tasks = [
             asyncio.create_task(_again(_POLL_S, self._poll)),
             asyncio.create_task(_again(_SEND_S, self._send)),

@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.gap_reason import counted, gap_reason
+from firmware_bridge.lock_in_recording import LockInRecording
 from firmware_bridge.recording import NO_END, MfrRecording
 from firmware_bridge.suspicions import Codes, Repetition, StuckRuns
 from firmware_bridge.trace import Recording
@@ -251,16 +252,17 @@ def _reasons(
         reasons.append(f"{counted(estimated, 'gap')} of estimated length")
     if recording.over_range:
         reasons.append(f"{counted(recording.over_range, 'value')} over-range")
-    if isinstance(recording, MfrRecording) and recording.damaged:
-        reasons.append(counted(recording.damaged, "damaged record"))
-    if isinstance(recording, MfrRecording) and not recording.has_end:
-        reasons.append(NO_END)
-    if isinstance(recording, MfrRecording) and recording.file.tail_bytes:
-        reasons.append("the file ends within a record")
+    if isinstance(recording, (MfrRecording, LockInRecording)):
+        if recording.damaged:
+            reasons.append(counted(recording.damaged, "damaged record"))
+        if not recording.has_end:
+            reasons.append(NO_END)
+        if recording.file.tail_bytes:
+            reasons.append("the file ends within a record")
     for state in channels:
         if math.isnan(state.mean):
             reasons.append(f"channel {state.name!r} has no value at all")
-        elif state.is_constant:
+        elif state.is_constant and recording.length > 1:
             reasons.append(f"channel {state.name!r} is constant: dead, stuck or not connected")
     if clock is not None and abs(clock.offset) > max(_CLOCK_LIMIT, 3 * clock.offset_u):
         reasons.append(f"the board's clock is off by {clock.offset:+.2%} against the host's")

@@ -13,7 +13,13 @@ from firmware_bridge.frame import HEADER
 from firmware_bridge.host_note import End, Join, Remark, Stamp
 from firmware_bridge.line_frames import Pause
 from firmware_bridge.live_events import LiveBlock, block_of
-from firmware_bridge.message import WIRE_VERSION, MessageError, MessageType
+from firmware_bridge.message import (
+    WIRE_VERSION,
+    LockIn,
+    MessageError,
+    MessageType,
+    parse_message,
+)
 from firmware_bridge.recording_header import Header
 from firmware_bridge.rotation import Rotation
 from firmware_bridge.trace import Gap
@@ -24,6 +30,7 @@ __all__ = ["Intake"]
 _STAMP_NS = 2_000_000_000
 _PENDING_BYTES = 4 << 20
 _LAST_NOTES = 4
+_INDEX_MAX = 1 << 62  # 36 000 years at 4 MHz
 _ARRIVAL_U_S = 0.05 / 3**0.5
 """Standard uncertainty of a frame's arrival: half a system tick and a driver's buffering, ±50 ms at
 most, rectangular. Our estimate."""
@@ -90,6 +97,7 @@ class Intake:
         self._stamped_ns = 0
         self._reached = 0  # grid index after the last sample
         self._last: Samples | None = None
+        self._mark: tuple[int, int, int] | None = None  # stream, index after the last sample, clock
         self._unsaid: Counter[str] = Counter()
         self._placed: list[Event] = []
         self._was_away = False
@@ -99,6 +107,10 @@ class Intake:
         """The files written, in order."""
         self.samples = 0
         """Samples received, all files together."""
+        self.every_s = 0.0
+        """From one lock-in result to the next, where the board sends nothing else."""
+        self.lock_ins = 0
+        """Lock-in results received."""
         self.earlier = 0
         """Grid samples in the files before the present one."""
         self.gaps = 0
@@ -181,6 +193,8 @@ class Intake:
             self._announcement(piece)
         elif piece[0] == MessageType.SAMPLES:
             self._frame(piece)
+        elif piece[0] == MessageType.LOCK_IN:
+            self._lock_in(piece)
         elif self._writer is not None and piece[0] != MessageType.COMMAND:
             # Commands are our own, come back on a port that loops or echoes.
             self._writer.append(piece)
@@ -255,8 +269,11 @@ class Intake:
         self._announced[announcement.stream] = self._latest = announcement
         self._decoder.accept(message)
         waiting, self._pending = self._pending, []
-        for frame in waiting:
-            self._frame(frame)
+        for early in waiting:
+            if early[0] == MessageType.SAMPLES:
+                self._frame(early)
+            else:
+                self._lock_in(early)
 
     def _frame(self, message: bytes) -> None:
         try:
@@ -264,21 +281,70 @@ class Intake:
         except MessageError as error:
             self._discard_message(message, str(error))
             return
+        if frame.index + len(frame.data) > _INDEX_MAX:
+            self._discard_message(message, f"an index beyond any board's ({frame.index})")
+            return
         announcement = self._announced.get(frame.stream)
         if announcement is None:
-            self._pending.append(message)
-            while sum(map(len, self._pending)) > _PENDING_BYTES:
-                self._discard_message(self._pending.pop(0), "frames without an announcement")
+            self._wait_for_announcement(message)
             return
         if frame.stream in self._closed_streams or not _fits(message, announcement):
             self._discard_message(message, "a frame unlike the announcement of this recording")
             return
         if frame.stream not in self._grid:
-            self._begin(announcement, frame)
+            self._begin(announcement, frame.stream, frame.index, len(frame.data))
         if not self.is_complete:
             self._keep(message, frame)
 
-    def _begin(self, announcement: Announcement, frame: Samples) -> None:
+    def _wait_for_announcement(self, message: bytes) -> None:
+        self._pending.append(message)
+        while sum(map(len, self._pending)) > _PENDING_BYTES:
+            self._discard_message(self._pending.pop(0), "frames without an announcement")
+
+    def _lock_in(self, message: bytes) -> None:
+        """Take a lock-in result: it says how far the board is where it sends no samples."""
+        try:
+            result = parse_message(message)
+        except MessageError as error:
+            self._discard_message(message, str(error))
+            return
+        assert isinstance(result, LockIn)  # noqa: S101  # the type byte says so
+        if result.index + result.length > _INDEX_MAX:
+            self._discard_message(message, f"an index beyond any board's ({result.index})")
+            return
+        announcement = self._announced.get(result.stream)
+        if announcement is None:
+            self._wait_for_announcement(message)
+            return
+        if result.stream in self._closed_streams:
+            return
+        if result.stream not in self._grid:
+            self._begin(announcement, result.stream, result.index, result.length)
+        if self._writer is None or self.is_complete:
+            return
+        if not self._has_room(self._writer, len(message)):
+            self.is_complete = True
+            return
+        if self._is_full(self._writer, result.stream, result.index):
+            self._rotate(result.stream, result.index)
+        self._writer.append(message)
+        self.lock_ins += 1
+        self._last_ns = self._now_ns
+        if self._last is None:
+            self._advance(result)
+
+    def _advance(self, result: LockIn) -> None:
+        """Count the samples that a result stands for, of a board that sends nothing else."""
+        end = result.index + result.length
+        if self._current is not None:
+            self.every_s = result.length / (self._current.rate_hz * self._current.speed)
+        self._mark = (result.stream, end, 0)
+        self._reached = max(self._reached, end + self._grid[result.stream])
+        self.is_complete = self.wanted is not None and self._reached >= self.wanted
+        if not self._stamped_ns:
+            self._stamp()
+
+    def _begin(self, announcement: Announcement, stream: int, index: int, length: int) -> None:
         """Begin a stream: in a new file where its layout differs, else where the clock says."""
         # What is held would make the place of what follows too early.
         self._follow(self._decoder.flush())
@@ -289,7 +355,7 @@ class Intake:
             self._reached = 0
             self._closed_streams |= self._grid.keys()
             self._grid.clear()
-            self._last = None
+            self._last = self._mark = None
         is_first = self._writer is None
         self._current = announcement
         if self.wanted is not None and self.wanted <= 0:
@@ -298,15 +364,15 @@ class Intake:
         grid, grid_u = 0, 0.0
         if is_first:
             self._open(announcement)
-        elif frame.stream in self._pauses:
-            pause = self._pauses.pop(frame.stream)
+        elif stream in self._pauses:
+            pause = self._pauses.pop(stream)
             grid, grid_u = self._reached + pause.length, pause.length_u
         else:
             rate = announcement.rate_hz * announcement.speed
             elapsed = round((self._now_ns[0] - self._last_ns[0]) * 1e-9 * rate)
-            grid = max(self._reached, self._reached + elapsed - len(frame.data))
+            grid = max(self._reached, self._reached + elapsed - length)
             grid_u = _ARRIVAL_U_S * 2**0.5 * rate
-        self._join(frame, grid, grid_u)
+        self._join(stream, index, grid, grid_u)
 
     def _open(self, announcement: Announcement) -> None:
         info = {**self._info, "follows": self.files[-1].name} if self.files else self._info
@@ -317,10 +383,10 @@ class Intake:
         )
         self.files.append(self._writer.path)
 
-    def _join(self, frame: Samples, grid: int, grid_u: float) -> None:
-        self._grid[frame.stream] = grid - frame.index
+    def _join(self, stream: int, index: int, grid: int, grid_u: float) -> None:
+        self._grid[stream] = grid - index
         assert self._writer is not None  # noqa: S101  # made before
-        self._writer.note(Join(frame.stream, frame.index, grid, grid_u))
+        self._writer.note(Join(stream, index, grid, grid_u))
 
     def _next_path(self) -> Path:
         if self.files and self._rotation.next_path is not None:
@@ -338,8 +404,8 @@ class Intake:
         if not self._has_room(self._writer, len(message)):
             self.is_complete = True
             return
-        if self._is_full(self._writer, frame):
-            self._rotate(frame)
+        if self._is_full(self._writer, frame.stream, frame.index):
+            self._rotate(frame.stream, frame.index)
         start = frame.index + self._grid[frame.stream]
         if start < 0 and self._was_written(frame, message):
             return  # in the file before
@@ -369,34 +435,34 @@ class Intake:
         self._placed = events
         return False
 
-    def _is_full(self, writer: Writer, frame: Samples) -> bool:
-        """Return whether the present file ends before this frame, as its rotation asks."""
+    def _is_full(self, writer: Writer, stream: int, index: int) -> bool:
+        """Return whether the present file ends before this sample, as its rotation asks."""
         assert self._current is not None  # noqa: S101  # a file has begun
-        start = frame.index + self._grid[frame.stream]
+        start = index + self._grid[stream]
         if start < max(1, self._reached):  # a late one belongs to what has been
             return False
         next_bytes = writer.bytes + (1 + _LAST_NOTES) * writer.record_bytes
         return self._rotation.is_due(next_bytes, start / self._current.rate_hz)
 
-    def _rotate(self, frame: Samples) -> None:
-        """End the present file before ``frame`` and go on with it in the next one."""
+    def _rotate(self, stream: int, index: int) -> None:
+        """End the present file before a sample and go on with it in the next one."""
         assert self._writer is not None  # noqa: S101  # there is a file to end
         assert self._current is not None  # noqa: S101
         # What is held comes out; what comes later still is kept in the next file.
         self._follow(self._decoder.flush())
-        # The end says that what is missing before this frame is missing in the file that ends.
-        self._writer.note(End(frame.stream, frame.index))
+        # The end says that what is missing before this sample is missing in the file that ends.
+        self._writer.note(End(stream, index))
         self._has_end = True
-        length = frame.index + self._grid[frame.stream]
+        length = index + self._grid[stream]
         ended = self._writer.path
         self._close_file()
         self.earlier += length
         self.earlier_s += length / self._current.rate_hz
         self._reached = 0
-        self._closed_streams |= self._grid.keys() - {frame.stream}
+        self._closed_streams |= self._grid.keys() - {stream}
         self._grid.clear()
         self._open(self._current)
-        self._join(frame, 0, 0.0)
+        self._join(stream, index, 0, 0.0)
         self._stamped_ns = 0  # the next file needs a stamp of its own
         self._rotation.ended(ended)
 
@@ -424,9 +490,11 @@ class Intake:
             self._complete(frame, start)
             end = self.wanted
         if start < end:
+            self.every_s = 0.0
             self.samples += end - start
             self.flagged += frame.over_range
             self._last = frame
+            self._mark = (frame.stream, frame.index + len(frame.data), frame.clock)
             if self._on_block is not None and self._current is not None:
                 block = block_of(frame, self._current, self.earlier + start, self._now_ns[1] * 1e-9)
                 self._on_block(block.first(end - start))
@@ -457,12 +525,11 @@ class Intake:
         self._unsaid.clear()
 
     def _stamp(self) -> None:
-        if self._writer is None or self._last is None:
+        if self._writer is None or self._mark is None:
             return
-        frame, (monotonic_ns, unix_ns) = self._last, self._last_ns
+        (stream, end, clock), (monotonic_ns, unix_ns) = self._mark, self._last_ns
         self._stamped_ns = self._now_ns[0]
-        end = frame.index + len(frame.data)
-        self._writer.note(Stamp(unix_ns, monotonic_ns, frame.stream, end, frame.clock))
+        self._writer.note(Stamp(unix_ns, monotonic_ns, stream, end, clock))
 
 
 def _alike(a: Announcement, b: Announcement) -> bool:

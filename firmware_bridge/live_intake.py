@@ -34,6 +34,7 @@ class LiveIntake:
     """
 
     wanted: int | None = None
+    every_s = 0.0
     is_complete = False
 
     def __init__(
@@ -116,7 +117,7 @@ class LiveIntake:
         if isinstance(piece, bytes):
             if piece[0] != MessageType.COMMAND:
                 self._heard_s = time.monotonic()
-            if piece[0] == MessageType.SAMPLES:
+            if piece[0] in (MessageType.SAMPLES, MessageType.LOCK_IN):
                 self.state("connected", "")
         self._with_recording(lambda intake: intake.take(piece, monotonic_ns, unix_ns))
         if isinstance(piece, bytes):

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from firmware_bridge.table import Table
     from metro.units import Quantity
 
-__all__ = ["OpenError", "open_recording"]
+__all__ = ["OpenError", "open_lock_in", "open_recording"]
 
 _HEAD_BYTES = 16
 _NPY = b"\x93NUMPY"
@@ -99,6 +99,29 @@ def open_recording(
         raise OpenError(f"cannot open {os.fspath(path)!r}: {reason.lower()}") from None
 
 
+def open_lock_in(path: str | os.PathLike[str]) -> Recording:
+    """Open the lock-in results of an .mfr recording, whether it holds samples or not.
+
+    Parameters
+    ----------
+    path : path-like
+        The recording.
+
+    Returns
+    -------
+    Recording
+        Amplitude and phase of each line, one value a result.
+
+    Raises
+    ------
+    BridgeError
+        If it is no .mfr recording or holds no lock-in result.
+    """
+    from firmware_bridge.lock_in_recording import LockInRecording
+
+    return LockInRecording(path)
+
+
 def _open(
     content: Path | bytes, name: str, time: str | None, rate_hz: float | None, own_time: bool
 ) -> Recording:
@@ -154,16 +177,25 @@ def _refuse_other_archives(source: Path | BytesIO, name: str) -> None:
 def _open_mfr(
     content: Path | bytes, name: str, time: str | None, rate_hz: float | None
 ) -> Recording:
-    from firmware_bridge.recording import open_mfr
-
     if time is not None or rate_hz is not None:
         option = "--time" if time is not None else "--rate"
         raise OpenError(f"{name} holds its own rate; {option} is for files that do not")
     if isinstance(content, Path):
-        return open_mfr(content)
+        return _open_own(content)
     with tempfile.NamedTemporaryFile(suffix=".mfr") as file:
         file.write(content)
         file.flush()
-        recording = open_mfr(Path(file.name))
+        recording = _open_own(Path(file.name))
         recording.path = name
         return recording
+
+
+def _open_own(path: Path) -> Recording:
+    """Return the samples of a recording, or its lock-in results where it has nothing else."""
+    from firmware_bridge.lock_in_recording import LockInRecording
+    from firmware_bridge.recording import NoSampleError, open_mfr
+
+    try:
+        return open_mfr(path)
+    except NoSampleError:
+        return LockInRecording(path)

@@ -50,6 +50,8 @@ class RecordSummary:
         Rate of the last file, and its standard uncertainty where a clock tells it.
     remarks : list of str
         What is odd about the recordings.
+    lock_ins : int
+        Lock-in results received.
     discarded_midway : int
         Of the bytes discarded those between frames that were kept: not the first message, which is
         seldom received from its beginning, and not frames received twice.
@@ -66,6 +68,7 @@ class RecordSummary:
     rate_u_hz: float | None = None
     remarks: list[str] = field(default_factory=list)
     discarded_midway: int = 0
+    lock_ins: int = 0
 
     @property
     def reasons(self) -> list[str]:
@@ -89,6 +92,7 @@ def record(
     overwrite: bool = False,
     progress: Callable[[Progress], None] | None = None,
     stop: threading.Event | None = None,
+    start: bytes = b"",
     drive: DriveLines | None = None,
     on_block: Callable[[LiveBlock], None] | None = None,
     rotate_bytes: int | None = None,
@@ -122,6 +126,9 @@ def record(
         Called a few times a second with a `Progress`.
     stop : threading.Event, optional
         Ends the recording when set.
+    start : bytes
+        Arguments of the command *start*, from `firmware_bridge.arguments.start_arguments`, where the
+        board shall send more than samples; a board that sends already refuses them.
     drive : DriveLines, optional
         Lines that the board drives from before the first sample kept until the end; then they come
         to rest.
@@ -174,7 +181,8 @@ def record(
     )
     stop = stop or threading.Event()
     try:
-        RecordingSession(source, baud, intake, framer, reconnect, stop, desk).run(progress)
+        session = RecordingSession(source, baud, intake, framer, reconnect, stop, desk, start=start)
+        session.run(progress)
     except DiskError as error:
         raise DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}") from error
     return _summary(intake, is_rotated=rotate_bytes is not None or rotate_s is not None)
@@ -203,8 +211,7 @@ def _named(files: list[Path]) -> str:
 def _summary(intake: Intake, *, is_rotated: bool) -> RecordSummary:
     files = intake.files
     if not intake.samples:
-        discarded = intake.bytes_discarded
-        return RecordSummary(files[0] if files else None, 0, [], 0, discarded, 0.0, files)
+        return _summary_of_no_samples(intake)
     # Files of a rotation may be many, and gone by now.
     recordings = [open_mfr(path) for path in (files[-1:] if is_rotated else files)]
     samples = sum(recording.length for recording in recordings)
@@ -223,4 +230,21 @@ def _summary(intake: Intake, *, is_rotated: bool) -> RecordSummary:
         recordings[-1].rate_u_hz,
         list(dict.fromkeys(remark for recording in recordings for remark in recording.remarks)),
         intake.discarded_midway,
+        intake.lock_ins,
+    )
+
+
+def _summary_of_no_samples(intake: Intake) -> RecordSummary:
+    rate_hz = intake.rate_hz
+    return RecordSummary(
+        intake.files[0] if intake.files else None,
+        0,
+        [],
+        0,
+        intake.bytes_discarded,
+        intake.reached / rate_hz if rate_hz else 0.0,
+        intake.files,
+        rate_hz,
+        discarded_midway=intake.discarded_midway,
+        lock_ins=intake.lock_ins,
     )

@@ -17,13 +17,17 @@ from firmware_bridge.record_index import RecordIndex, lengths
 from firmware_bridge.recording_header import RecordingError
 from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
 
-__all__ = ["NO_END", "MfrRecording", "open_mfr"]
+__all__ = ["NO_END", "MfrRecording", "NoSampleError", "open_mfr"]
 
 NO_END = "the recording did not end as asked: it was cut, the port failed, or it still goes on"
 """What is said of a recording without an end."""
 
 _NEAR = 16384  # samples
 _LENGTH_MAX = 1 << 53  # indices and lengths stay exact as int64 and as float64
+
+
+class NoSampleError(RecordingError):
+    """A recording without one sample; it may hold lock-in results."""
 
 
 class MfrRecording(Recording):
@@ -50,6 +54,8 @@ class MfrRecording(Recording):
         """Records whose CRC does not fit."""
         self.duplicates = 0
         """Samples records that were there twice."""
+        self.lock_ins = 0
+        """Lock-in results; `LockInRecording` reads them."""
         self._joins: dict[int, Join] = {}
         self._end: End | None = None
         self._clocks = self._maybe_clocks()
@@ -113,6 +119,7 @@ class MfrRecording(Recording):
                     self._take(whole, pieces)
                 return
             if message[0] < MessageType.PIECE:
+                self.lock_ins += message[0] == MessageType.LOCK_IN
                 if message[0] == MessageType.NOTE:
                     note = parse_message(message)
                     assert isinstance(note, Note)  # noqa: S101  # the type byte says so
@@ -163,7 +170,8 @@ class MfrRecording(Recording):
             self._check_span(reached)
             placed.append(runs)
         if not placed:
-            raise RecordingError(f"{self.file.path} holds no sample")
+            only = f", only {counted(self.lock_ins, 'lock-in result')}" if self.lock_ins else ""
+            raise NoSampleError(f"{self.file.path} holds no sample{only}")
         return np.concatenate(placed), reached, gaps
 
     def _check_span(self, reached: int) -> None:
@@ -189,6 +197,10 @@ class MfrRecording(Recording):
             (self.duplicates, f"{counted(self.duplicates, 'record')} there twice"),
             (not self.has_end, NO_END),
             (self.file.tail_bytes, f"the file ends within a record ({self.file.tail_bytes} bytes)"),
+            (
+                self.lock_ins,
+                f"{counted(self.lock_ins, 'lock-in result')} beside (inspect --lock-in)",
+            ),
             (len(self._joins) > 1, "the board was restarted or reconnected"),
             ("rate" in self.header.info, f"the rate is {self.header.info.get('rate')}"),
             ("time" in self.header.info, str(self.header.info.get("time"))),

@@ -30,6 +30,7 @@ __all__ = ["Progress", "RecordingSession", "Watcher"]
 
 _log = logging.getLogger(__name__)
 
+_LENGTH = slice(4, 8)  # of a lock-in, in the arguments of start
 _SAMPLED = (MessageType.SAMPLES, MessageType.LOCK_IN)
 _ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
 _REOPEN_S = 0.25
@@ -111,6 +112,8 @@ class RecordingSession:
     watcher : Watcher, optional
         Who is told of a port that is gone, of silence and of refusals; nothing of these ends the
         session then.
+    start : bytes
+        Arguments of *start*.
     """
 
     def __init__(
@@ -123,6 +126,7 @@ class RecordingSession:
         stop: threading.Event,
         desk: DriveDesk | None = None,
         watcher: Watcher | None = None,
+        start: bytes = b"",
     ) -> None:
         self._source, self._name, self._baud = source, source.name, baud
         self._intake, self._framer, self._reconnect = intake, framer, reconnect
@@ -130,6 +134,7 @@ class RecordingSession:
         self._stop = stop
         self._desk = desk
         self._watcher = watcher
+        self._start = start
         self._ended = threading.Event()  # the reader will put nothing more
         self._written = threading.Event()
         self._queue = ByteQueue()
@@ -262,7 +267,7 @@ class RecordingSession:
         else:
             self._say(CommandCode.KEEP_ALIVE)  # else a board's drive goes to rest after 2 s
         if is_first:
-            self._say(CommandCode.START)
+            self._say(CommandCode.START, self._start)
 
     def _say(self, code: CommandCode, arguments: bytes = b"") -> bool:
         self._request += 1
@@ -324,22 +329,23 @@ class RecordingSession:
         elif arrival.is_back:
             self._back()
         else:
-            self._silence.note(arrival.data, self._take_bytes(arrival))
+            self._silence.note(arrival.data, *self._take_bytes(arrival))
 
-    def _take_bytes(self, arrival: Arrival) -> bool:
-        """Return whether anything valid was in it."""
+    def _take_bytes(self, arrival: Arrival) -> tuple[bool, bool]:
+        """Return whether anything valid was in it, and whether that is what is recorded."""
         framer = self._framer
         if framer is not None:
             before = framer.heard
             for line in framer.feed(arrival.data, arrival.monotonic_ns * 1e-9):
                 self._intake.take(line, arrival.monotonic_ns, arrival.unix_ns)
-            return framer.heard > before
+            return framer.heard > before, framer.heard > before
         pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
             if self._desk is None or self._is_wanted(piece, self._desk):
                 self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
-        return any(isinstance(piece, bytes) and piece[0] != MessageType.COMMAND for piece in pieces)
+        kinds = {piece[0] for piece in pieces if isinstance(piece, bytes)} - {MessageType.COMMAND}
+        return bool(kinds), not kinds.isdisjoint(_SAMPLED)
 
     def _is_wanted(self, piece: bytes | Discarded, desk: DriveDesk) -> bool:
         """Return whether a piece is to be kept; hear what the board says about its drive."""
@@ -387,13 +393,24 @@ class RecordingSession:
             return
         intake = self._intake
         complaint = self._silence.maybe_complaint(
-            intake.is_known, bool(intake.files), self._reconnect
+            intake.is_known,
+            bool(intake.files),
+            self._reconnect,
+            max(intake.every_s, self._asked_s()),
         )
         if complaint and self._watcher is not None:
             self._watcher.state("silent", complaint)
         elif complaint:
             self._finish_text()
             raise DeviceFailedError(f"{complaint}; {self._kept()}")
+
+    def _asked_s(self) -> float:
+        """Return how long one lock-in result takes that *start* asked for [s], 0 without."""
+        announced = self._intake.announcement
+        if len(self._start) < _LENGTH.stop or announced is None:
+            return 0.0
+        length = int.from_bytes(self._start[_LENGTH], "little")
+        return length / (announced.rate_hz * announced.speed)
 
     def _kept(self) -> str:
         if not self._intake.files:

@@ -5,7 +5,8 @@ import time
 __all__ = ["Silence"]
 
 _SILENCE_S = 5.0  # without one valid message, or line of numbers among bytes, at the start
-_STALL_S = 10.0  # without a valid message midway
+_IDLE_S = 30.0  # with nothing but announcements, answers and notes at the start
+_STALL_S = 10.0  # without a frame midway
 _TEXT_SILENCE_S = 30.0  # without a line of numbers
 _PRINTABLE = bytes(range(32, 127)) + b"\t\r\n"
 
@@ -25,11 +26,11 @@ class Silence:
 
     def __init__(self, name: str, baud: int, is_text: bool) -> None:
         self._name, self._baud, self._is_text = name, baud, is_text
-        self._heard_s = time.monotonic()
+        self._heard_s = self._sampled_s = time.monotonic()
         self._is_heard = False  # ever
         self._bytes = self._printable = self._zeros = 0  # since the last time something valid came
 
-    def note(self, data: bytes, is_valid: bool) -> None:
+    def note(self, data: bytes, is_valid: bool, is_sampled: bool) -> None:
         """Take note of bytes.
 
         Parameters
@@ -38,7 +39,11 @@ class Silence:
             What came.
         is_valid : bool
             Whether a valid message or line ended in it.
+        is_sampled : bool
+            Whether one of them was what is recorded, not only an answer.
         """
+        if is_sampled:
+            self._sampled_s = time.monotonic()
         if is_valid:
             self._heard_s = time.monotonic()
             self._is_heard = True
@@ -50,9 +55,11 @@ class Silence:
 
     def reset(self) -> None:
         """Begin to wait anew: the port was away."""
-        self._heard_s = time.monotonic()
+        self._heard_s = self._sampled_s = time.monotonic()
 
-    def maybe_complaint(self, is_announced: bool, is_recording: bool, is_patient: bool) -> str:
+    def maybe_complaint(
+        self, is_announced: bool, is_recording: bool, is_patient: bool, every_s: float = 0.0
+    ) -> str:
         """Return what is wrong, empty while it is not yet time to say so.
 
         Parameters
@@ -63,6 +70,8 @@ class Silence:
             Whether samples have been kept.
         is_patient : bool
             Whether to wait for a board that has fallen silent midway.
+        every_s : float
+            From one result to the next of a board that sends those of its lock-in only [s].
 
         Returns
         -------
@@ -72,11 +81,16 @@ class Silence:
         silent_s = time.monotonic() - self._heard_s
         if self._is_text:
             return self._maybe_no_lines(silent_s)
-        if not is_recording and silent_s > _SILENCE_S:
+        idle_s = time.monotonic() - self._sampled_s
+        if not is_recording and silent_s > _SILENCE_S + every_s:
             return f"{self._name}: {self._why_nothing(is_announced)}"
-        if is_recording and silent_s > _STALL_S and not is_patient:
+        if not is_recording and idle_s > _IDLE_S + every_s:
+            return f"{self._name}: the board answers and sent no samples for {_IDLE_S:g} s"
+        stall_s = _STALL_S + 2 * every_s
+        if is_recording and idle_s > stall_s and not is_patient:
             came = f", {self._bytes} other bytes" if self._bytes else ", nor anything else"
-            return f"{self._name} sent no valid frame for {_STALL_S:g} s{came}"
+            came = ", though it answers" if idle_s - silent_s > 1.0 else came
+            return f"{self._name} sent no valid frame for {stall_s:g} s{came}"
         return ""
 
     def _maybe_no_lines(self, silent_s: float) -> str:

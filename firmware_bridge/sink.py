@@ -43,6 +43,10 @@ class Sink(Protocol):
         """Announced rate."""
 
     @property
+    def every_s(self) -> float:
+        """From one lock-in result to the next [s], where a board sends nothing else."""
+
+    @property
     def gaps(self) -> int:
         """Gaps so far."""
 

@@ -16,18 +16,28 @@ __all__ = ["export"]
 @command(example="midfringe export night.mfr --out night.csv")
 @click.argument("file")
 @recording_options(omit=("drive",))
+@click.option("--lock-in", is_flag=True, help="The board's lock-in results beside the samples.")
 @output_options("out", "json", "overwrite")
-def export(file: str, reading: Reading, out: str | None, as_json: bool, overwrite: bool) -> None:
+def export(
+    file: str,
+    reading: Reading,
+    lock_in: bool,
+    out: str | None,
+    as_json: bool,
+    overwrite: bool,
+) -> None:
     """Write the recording FILE as CSV, NPZ or HDF5; the suffix of --out says which.
 
     There is a column time_s, seconds from the first sample, and one for each channel; samples
     that are missing or out of range are nan. NPZ and HDF5 also hold units, gaps, rate and source.
+    Lock-in results are written as amplitude and phase of each line, also where a recording holds nothing else.
     """
     from firmware_bridge.export import export_recording
+    from firmware_bridge.opening import open_lock_in
 
     if out is None:
         raise click.UsageError("--out is needed: a file ending in .csv, .npz or .h5")
-    recording = reading.open(file)
+    recording = open_lock_in(file) if lock_in else reading.open(file)
     channels = None if reading.channel is None else [reading.channel]
     samples = export_recording(
         recording,

@@ -14,21 +14,24 @@ __all__ = ["inspect"]
 @click.argument("file", metavar="FILE")
 @click.option("--time", metavar="NAME", help="The time column of a table.")
 @click.option("--rate", type=ValueType("Hz", above=0.0), metavar="F", help="Where there is none.")
+@click.option("--lock-in", is_flag=True, help="The board's lock-in results beside the samples.")
 @output_options("plot", "json", "overwrite")
 def inspect(
     file: str,
     time: str | None,
     rate: float | None,
+    lock_in: bool,
     plot: str | None,
     as_json: bool,
     overwrite: bool,
 ) -> None:
     """Look through a recording: gaps, over-range, channels, the board's clock, and a verdict.
 
-    Ends with 1 if something speaks against the recording.
+    Ends with 1 if something speaks against the recording. Lock-in results are shown as amplitude and phase of each line, also where a
+    recording holds nothing else.
     """
     from firmware_bridge.inspection import inspect_recording
-    from firmware_bridge.opening import open_recording
+    from firmware_bridge.opening import open_lock_in, open_recording
     from metro.output import to_json
     from metro.units import quantity
 
@@ -36,7 +39,11 @@ def inspect(
         from metro.figure_file import check_figure
 
         check_figure(plot, overwrite, [file])
-    recording = open_recording(file, time=time, rate=None if rate is None else quantity(rate, "Hz"))
+    if lock_in:
+        recording = open_lock_in(file)
+    else:
+        given = None if rate is None else quantity(rate, "Hz")
+        recording = open_recording(file, time=time, rate=given)
     found = inspect_recording(recording)
     if plot is not None:
         from firmware_bridge.inspection_plot import inspection_figure

@@ -183,6 +183,7 @@ def _document(summary: Any) -> dict[str, Any]:  # noqa: ANN401
         "samples": summary.samples,
         "gaps": _gaps(summary),
         "over_range": summary.over_range,
+        "lock_in_results": summary.lock_ins,
         "bytes_discarded": summary.bytes_discarded,
         "duration": {"value": summary.duration_s, "unit": "s", "u": None},
         "rate": {"value": summary.rate_hz, "unit": "Hz", "u": summary.rate_u_hz},
@@ -198,11 +199,13 @@ def _for_people(summary: Any) -> str:  # noqa: ANN401
         return "nothing came; nothing was written"
     missing = sum(gap.length for gap in summary.gaps)
     u = "" if summary.rate_u_hz is None else f", u = {summary.rate_u_hz:.2g} Hz"
+    lock_in = [["lock-in", f"{summary.lock_ins} results"]] if summary.lock_ins else []
     return table(
         [
             ["file", ", ".join(str(path) for path in summary.files)],
             ["samples", str(summary.samples)],
             ["duration", f"{summary.duration_s:.6g} s at {summary.rate_hz:.9g} Hz{u}"],
+            *lock_in,
             ["gaps", f"{len(summary.gaps)} ({missing} samples missing)"],
             ["over range", f"{summary.over_range} values"],
             ["discarded", f"{summary.bytes_discarded} bytes"],

@@ -1,14 +1,16 @@
 """``midfringe log``: unattended recording for weeks, with line results and alarms."""
 
+import contextlib
 import logging
 import signal
 import threading
+from collections.abc import Iterator
 from typing import TYPE_CHECKING, Any
 
 import click
 
 from calibration.desk.ledger_options import Judging, judging_options, ledger_options
-from metro.options import ValueType, command, distrust, is_quiet, is_verbose, output_options
+from metro.options import ValueType, command, distrust, is_quiet, output_options
 
 if TYPE_CHECKING:
     from calibration.desk.ledger import Ledger
@@ -111,10 +113,10 @@ def log(
     stop = threading.Event()
     with folder.held(), Ledger(ledger) as kept:
         plan = _plan(kept, bench_name or "bench", judging, port, options)
-        _set_up(stop)
         lines = LineLog(kept, plan, (lambda _alarm: stop.set()) if until_alarm else None)
         try:
-            summary = UnattendedLog(settings, folder, lines).run(stop)
+            with _asked_to_end(stop), _heard():
+                summary = UnattendedLog(settings, folder, lines).run(stop)
         finally:
             lines.close()
     document = summary.to_dict() | {"results": lines.results, "alarms": lines.alarms}
@@ -195,10 +197,26 @@ def _plan(
     return LogPlan(measuring, is_metres, bench, judging.law, judging.rule, port)
 
 
-def _set_up(stop: threading.Event) -> None:
-    """End cleanly when asked to, and let the log be heard."""
-    for name in ("SIGINT", "SIGTERM", "SIGHUP"):
-        if hasattr(signal, name):
-            signal.signal(getattr(signal, name), lambda *_: stop.set())
-    if not is_quiet() and not is_verbose():
-        logging.getLogger("calibration.desk").setLevel(logging.INFO)
+@contextlib.contextmanager
+def _asked_to_end(stop: threading.Event) -> Iterator[None]:
+    """End cleanly on Ctrl-C, on a service manager's polite end, and when the terminal is closed."""
+    signals = [getattr(signal, n) for n in ("SIGINT", "SIGTERM", "SIGHUP") if hasattr(signal, n)]
+    before = [signal.signal(number, lambda *_: stop.set()) for number in signals]
+    try:
+        yield
+    finally:
+        for number, handler in zip(signals, before, strict=True):
+            signal.signal(number, handler)
+
+
+@contextlib.contextmanager
+def _heard() -> Iterator[None]:
+    """Let the log say what it does, one line each, unless asked to be quiet."""
+    desk = logging.getLogger("calibration.desk")
+    before = desk.level
+    if not is_quiet():
+        desk.setLevel(logging.INFO)
+    try:
+        yield
+    finally:
+        desk.setLevel(before)

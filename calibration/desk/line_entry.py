@@ -94,9 +94,16 @@ class LineEntry:
         -------
         LineEntry
             The ratio where a drive was read, else the amplitude.
+
+        Raises
+        ------
+        LedgerError
+            If the drive does not hold the line at all, so that there is no ratio.
         """
         estimate = line.ratio
         known = line.response if estimate is None else estimate
+        if not isfinite(abs(known.phasor)):
+            raise LedgerError(f"the drive holds no line at {line.frequency_hz:.9g} Hz")
         return cls(
             time=iso_of(unix_s),
             line_hz=float(line.frequency_hz),

@@ -13,7 +13,7 @@ import numpy as np
 from calibration.desk.cusum import CusumRule
 from calibration.desk.ledger import Ledger
 from calibration.desk.ledger_charts import by_line, start_of
-from calibration.desk.ledger_errors import LedgerFailedError
+from calibration.desk.ledger_errors import LedgerError, LedgerFailedError
 from calibration.desk.line_alarms import Alarm, LineAlarms
 from calibration.desk.line_entry import LineEntry
 from calibration.desk.line_window import Stretch
@@ -171,17 +171,22 @@ class LineLog:
         if channels.temperature is not None:
             read = columns[channels.temperature]
             kelvin = float(np.nanmean(read)) + channels.zero_k if np.isfinite(read).any() else None
-        return [
-            LineEntry.of_line(
-                replace(line, frequency_hz=named_hz),
-                unix_s=stretch.ended_unix_s - 0.5 * duration_s / channels.speed,
-                duration_s=duration_s,
-                source=self._plan.source,
-                temperature_k=kelvin,
-                bench=self._plan.bench,
-            )
-            for line, named_hz in zip(fit.lines, self._measuring.lines_hz, strict=True)
-        ]
+        entries = []
+        for line, named_hz in zip(fit.lines, self._measuring.lines_hz, strict=True):
+            try:
+                entry = LineEntry.of_line(
+                    replace(line, frequency_hz=named_hz),
+                    unix_s=stretch.ended_unix_s - 0.5 * duration_s / channels.speed,
+                    duration_s=duration_s,
+                    source=self._plan.source,
+                    temperature_k=kelvin,
+                    bench=self._plan.bench,
+                )
+            except LedgerError as error:
+                _log.warning("no line result: %s", error)
+            else:
+                entries.append(entry)
+        return entries
 
     def _keep(self, entries: list[LineEntry]) -> None:
         """Put results into the ledger; where it fails they wait for the next time."""

@@ -1,15 +1,17 @@
 """The actuator's response at a line: metres per volt, magnitude and phase, each with its budget."""
 
 from collections.abc import Sequence
+from dataclasses import replace
 from math import inf, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
 
 from calibration import curvature
+from calibration.actuator_entry import ActuatorEntry
 from calibration.extremes import Extremes
+from calibration.open_loop import OpenLoop
 from calibration.readout import Readout
-from calibration.record import ActuatorEntry
 from calibration.slope_line import CombinedLine
 from calibration.term import (
     FRINGE_EXTREMES,
@@ -40,6 +42,7 @@ def actuator_line(
     *,
     drive_read: bool,
     dark_v: float = 0.0,
+    loop: OpenLoop | None = None,
 ) -> ActuatorEntry:
     """Return metres per volt at one line.
 
@@ -59,6 +62,8 @@ def actuator_line(
         Whether the drive was read by the recording's own converter.
     dark_v : float
         Level without light [V].
+    loop : OpenLoop, optional
+        Of a servo that held the mirror; the drive was read before the point where it acts.
 
     Returns
     -------
@@ -71,6 +76,8 @@ def actuator_line(
     volts = terminal_factor(bench, recorded=drive_read)
     scale = 1.0 + bench.magnitude("adc.reference", 0.0) if drive_read else 1.0
     response = ratio * scale / readout.phase_per_metre / volts
+    if loop is not None:
+        response *= complex(loop.factor(frequency_hz)[0])
     terms = [
         *readout.ruler_terms(+1.0),
         *_extremes_terms(line, extremes),
@@ -81,8 +88,11 @@ def actuator_line(
         *curvature.line_terms(bench, extremes, line.means.cos, drive_read=drive_read),
         *readout.response_terms(frequency_hz, recorded=drive_read),
         *_additive_terms(line, extremes, bench, frequency_hz, volts),
+        *([] if loop is None else loop.terms(frequency_hz)),
     ]
-    return _finished(frequency_hz, response, terms, line, extremes, drive_read=drive_read)
+    entry = _finished(frequency_hz, response, terms, line, extremes, drive_read=drive_read)
+    ringing = [] if loop is None else loop.reasons(frequency_hz)
+    return replace(entry, reasons=[*entry.reasons, *ringing])
 
 
 def _finished(

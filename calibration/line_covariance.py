@@ -9,7 +9,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.record import ActuatorEntry
+from calibration.actuator_entry import ActuatorEntry
 from calibration.term import OWN_TERMS
 from metro.budget import Budget
 

@@ -1,16 +1,23 @@
 """The calibration file: what was measured, from what, under which assumptions; JSON, versioned."""
 
 import json
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
+from calibration.actuator_entry import ActuatorEntry, maybe_dict, maybe_measured
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
+from calibration.response import ActuatorResponse
+from calibration.schema import misfit
 from metro.budget import Budget
+from metro.errors import MidfringeError
+from metro.extras import MissingExtraError
 from metro.measured import Measured
 from metro.output import plain
 
@@ -22,59 +29,6 @@ VERSION = 1
 
 class CalibrationFileError(CalibrationError):
     """A calibration file that does not hold what it should; the message names the place."""
-
-
-@dataclass(frozen=True)
-class ActuatorEntry:
-    """The actuator at one line.
-
-    Parameters
-    ----------
-    frequency : Measured
-        Frequency of the line [Hz].
-    magnitude, phase : Measured
-        Differential displacement per volt at the actuator [m/V] and its phase [rad]; no phase
-        where the drive was not recorded.
-    pickup : Measured or None
-        What adds to the photodiode without motion, volts per volt of the drive's reading.
-    budget, phase_budget : Budget
-        What stands behind both.
-    reasons : list of str
-        Why the line must not be trusted, empty if there is no reason.
-    """
-
-    frequency: Measured
-    magnitude: Measured
-    phase: Measured | None
-    pickup: Measured | None
-    budget: Budget
-    phase_budget: Budget
-    reasons: list[str] = field(default_factory=list)
-
-    def to_dict(self) -> dict[str, Any]:
-        """Return the JSON form."""
-        return {
-            "frequency": self.frequency.to_dict(with_dof=True),
-            "magnitude": self.magnitude.to_dict(with_dof=True),
-            "phase": _maybe_dict(self.phase),
-            "pickup": _maybe_dict(self.pickup),
-            "budget": self.budget.to_dict(),
-            "phase_budget": self.phase_budget.to_dict(),
-            "reasons": self.reasons,
-        }
-
-    @classmethod
-    def from_dict(cls, document: Mapping[str, Any]) -> "ActuatorEntry":
-        """Return the entry that `to_dict` wrote."""
-        return cls(
-            frequency=Measured.from_dict(document["frequency"]),
-            magnitude=Measured.from_dict(document["magnitude"]),
-            phase=_maybe_measured(document["phase"]),
-            pickup=_maybe_measured(document["pickup"]),
-            budget=Budget.from_dict(document["budget"]),
-            phase_budget=Budget.from_dict(document["phase_budget"]),
-            reasons=list(document["reasons"]),
-        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -107,6 +61,17 @@ class Calibration:
         Comparisons made on the way: name, normalised error, whether it agrees.
     assumptions, cautions, reasons : list of str
         What was taken as given; what a user should know; why it must not be trusted.
+    line_covariance : ndarray or None
+        Of the lines' relative magnitudes, then of their phases [rad]; common terms make them
+        correlated.
+    response : ActuatorResponse or None
+        The actuator between the lines; None where they are too few.
+    drive_series : list of dict
+        What a drive series says about each line.
+    validity : dict
+        Drive, bias, history and temperature under which the calibration holds.
+    open_loop : dict or None
+        File and SHA-256 of the servo's open-loop gain that was undone.
     """
 
     created: str
@@ -125,6 +90,11 @@ class Calibration:
     assumptions: list[str]
     cautions: list[str]
     reasons: list[str]
+    line_covariance: NDArray[np.float64] | None = None
+    response: ActuatorResponse | None = None
+    drive_series: list[dict[str, Any]] = field(default_factory=list)
+    validity: dict[str, Any] = field(default_factory=dict)
+    open_loop: dict[str, Any] | None = None
 
     @property
     def is_trustworthy(self) -> bool:
@@ -154,9 +124,9 @@ class Calibration:
                 "budget": self.readout_budget.to_dict(),
             },
             "extremes": _extremes_to_dict(self.extremes),
-            "contrast": _maybe_dict(self.contrast),
-            "dark": _maybe_dict(self.dark),
-            "clock_offset": _maybe_dict(self.clock_offset),
+            "contrast": maybe_dict(self.contrast),
+            "dark": maybe_dict(self.dark),
+            "clock_offset": maybe_dict(self.clock_offset),
             "chain": {name: value.to_dict(with_dof=True) for name, value in self.chain.items()},
             "conditions": {name: value.to_dict() for name, value in self.conditions.items()},
             "recordings": self.recordings,
@@ -165,6 +135,11 @@ class Calibration:
             "cautions": self.cautions,
             "trustworthy": self.is_trustworthy,
             "reasons": self.reasons,
+            "line_covariance": _covariance_to_dict(self.line_covariance),
+            "response": self.response,
+            "drive_series": self.drive_series,
+            "validity": self.validity,
+            "open_loop": self.open_loop,
         }
         return dict(plain(document))
 
@@ -196,9 +171,9 @@ class Calibration:
                 readout_slope=Measured.from_dict(document["readout"]["slope"]),
                 readout_budget=Budget.from_dict(document["readout"]["budget"]),
                 extremes=_extremes_from_dict(document["extremes"]),
-                contrast=_maybe_measured(document["contrast"]),
-                dark=_maybe_measured(document["dark"]),
-                clock_offset=_maybe_measured(document["clock_offset"]),
+                contrast=maybe_measured(document["contrast"]),
+                dark=maybe_measured(document["dark"]),
+                clock_offset=maybe_measured(document["clock_offset"]),
                 chain={k: Measured.from_dict(v) for k, v in document["chain"].items()},
                 conditions={k: Measured.from_dict(v) for k, v in document["conditions"].items()},
                 recordings=document["recordings"],
@@ -206,10 +181,15 @@ class Calibration:
                 assumptions=document["assumptions"],
                 cautions=document["cautions"],
                 reasons=document["reasons"],
+                line_covariance=_covariance_of(document.get("line_covariance")),
+                response=_response_of(document.get("response")),
+                drive_series=list(document.get("drive_series", ())),
+                validity=dict(document.get("validity", {})),
+                open_loop=document.get("open_loop"),
             )
         except KeyError as error:
             raise CalibrationFileError(f"the calibration has no {error.args[0]!r}") from None
-        except (TypeError, ValueError, AttributeError) as error:
+        except (TypeError, ValueError, AttributeError, ArithmeticError) as error:
             raise CalibrationFileError(f"the calibration does not hold together: {error}") from None
 
 
@@ -229,25 +209,46 @@ def load(path: str | Path) -> Calibration:
     Raises
     ------
     CalibrationFileError
-        If the file cannot be read, is no calibration, or is of a newer version.
+        If the file cannot be read, is no calibration, is of a newer version, or does not fit the
+        schema; the message names the place, the rule and the value.
+    MissingExtraError
+        If jsonschema is not installed.
     """
     try:
-        document = json.loads(Path(path).read_text(encoding="utf-8"))
+        text = Path(path).read_text(encoding="utf-8")
+        document = json.loads(text, parse_constant=_refused, parse_float=_finite)
     except OSError as error:
         raise CalibrationFileError(f"{path}: {error.strerror or error}") from None
-    except ValueError as error:
+    except (ValueError, RecursionError) as error:
         raise CalibrationFileError(f"{path} is no JSON document: {error}") from None
     try:
+        _check_format(document)
+        problem = misfit(document)
+        if problem is not None:
+            raise CalibrationFileError(problem)
         return Calibration.from_dict(document)
-    except CalibrationError as error:
+    except MissingExtraError:
+        raise
+    except MidfringeError as error:
         raise CalibrationFileError(f"{path}: {error}") from None
+
+
+def _refused(name: str) -> float:
+    raise ValueError(f"it holds {name}, which is no number in JSON")
+
+
+def _finite(text: str) -> float:
+    number = float(text)
+    if not math.isfinite(number):
+        raise ValueError(f"it holds {text}, beyond all numbers")
+    return number
 
 
 def _check_format(document: object) -> None:
     if not isinstance(document, Mapping) or document.get("format") != FORMAT:
         raise CalibrationFileError(f"this is no calibration: its format is not {FORMAT!r}")
     version = document.get("version")
-    if not isinstance(version, int) or version < 1:
+    if isinstance(version, bool) or not isinstance(version, int) or version < 1:
         raise CalibrationFileError(f"version must be a whole number from 1, got {version!r}")
     if version > VERSION:
         raise CalibrationFileError(
@@ -276,9 +277,13 @@ def _extremes_from_dict(document: Mapping[str, Any]) -> Extremes:
     )
 
 
-def _maybe_dict(value: Measured | None) -> dict[str, Any] | None:
-    return None if value is None else value.to_dict(with_dof=True)
+def _covariance_to_dict(covariance: NDArray[np.float64] | None) -> dict[str, Any] | None:
+    return None if covariance is None else {"value": covariance, "unit": "1", "u": None}
 
 
-def _maybe_measured(document: Mapping[str, Any] | None) -> Measured | None:
-    return None if document is None else Measured.from_dict(dict(document))
+def _covariance_of(document: Mapping[str, Any] | None) -> NDArray[np.float64] | None:
+    return None if document is None else np.array(document["value"], dtype=np.float64)
+
+
+def _response_of(document: Mapping[str, Any] | None) -> ActuatorResponse | None:
+    return None if document is None else ActuatorResponse.from_dict(document)

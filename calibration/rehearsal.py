@@ -4,6 +4,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from math import sqrt
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -102,7 +103,8 @@ def rehearse(
         files[step.name] = path
         say(f"recorded {step.name}")
     roles = _by_role(steps, files)
-    calibration = calibrate(bench, **roles)
+    by_role: dict[str, Any] = dict(roles)  # paths by parameter, beside others of other types
+    calibration = calibrate(bench, **by_role)
     say("calibrated")
     conversions = _conversions(calibration, steps, files)
     displacements = _displacements(bench, calibration, steps, conversions)

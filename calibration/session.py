@@ -25,6 +25,7 @@ ROLES = (
     "scan",
     "lines-rising",
     "lines-falling",
+    "series",
 )
 
 

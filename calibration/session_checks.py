@@ -8,9 +8,9 @@ from typing import Any
 
 import numpy as np
 
+from calibration.actuator_entry import ActuatorEntry
 from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
-from calibration.record import ActuatorEntry
 from calibration.scan import ScanFit
 from calibration.session import Session
 from calibration.slope_line import SlopeLine, is_driven, is_noise_known

@@ -1,5 +1,10 @@
 """What the bench file states, as a calibration keeps it: chain, conditions, assumptions."""
 
+from collections.abc import Sequence
+
+from calibration.open_loop import OpenLoop
+from calibration.realignment import realignment_statement
+from calibration.record import Calibration
 from metro.bench import Bench
 from metro.measured import Measured
 
@@ -31,13 +36,23 @@ def conditions(bench: Bench) -> dict[str, Measured]:
     return {name: value for name, value in known.items() if value is not None}
 
 
-def assumptions(bench: Bench, *, series: bool = False) -> list[str]:
+def assumptions(
+    bench: Bench,
+    repeats: Sequence[Calibration] = (),
+    loop: OpenLoop | None = None,
+    *,
+    series: bool = False,
+) -> list[str]:
     """Return what was taken as given, one line each.
 
     Parameters
     ----------
     bench : Bench
         Source of the wavelength, arm, polarity.
+    repeats : sequence of Calibration
+        Of other alignments.
+    loop : OpenLoop, optional
+        Of a servo that held the mirror.
     series : bool
         Whether a drive series was measured.
 
@@ -46,19 +61,28 @@ def assumptions(bench: Bench, *, series: bool = False) -> list[str]:
     list of str
         Sentences.
     """
-    arm = bench.text("actuator.arm")
-    slopes = "rising is the slope on which the voltage grows with the x arm"
-    if bench.get("actuator.polarity") is None:
-        declared = "which way a positive drive moves the mirror was not declared, nor checked"
-    else:
-        sign = "longer" if bench.magnitude("actuator.polarity") > 0 else "shorter"
-        named = f"{arm} arm" if arm else "x arm (no arm was named)"
-        declared = f"a positive drive is declared to make the {named} {sign}"
     linear = "the actuator is linear at the drive used"
     if not series:
         linear += "; hysteresis and creep were not measured"
+    held = [
+        (
+            "a servo held the mirror; the drive was read before the point where it acts, and what its "
+            "open-loop gain took off was restored"
+        )
+    ]
     return [
         f"the wavelength comes from: {bench.text('laser.source')}",
-        f"sign: {declared}; {slopes}",
+        f"sign: {_declared(bench)}; rising is the slope on which the voltage grows with the x arm",
         linear,
+        *(held if loop is not None else []),
+        realignment_statement(bench, repeats),
     ]
+
+
+def _declared(bench: Bench) -> str:
+    arm = bench.text("actuator.arm")
+    if bench.get("actuator.polarity") is None:
+        return "which way a positive drive moves the mirror was not declared, nor checked"
+    sign = "longer" if bench.magnitude("actuator.polarity") > 0 else "shorter"
+    named = f"{arm} arm" if arm else "x arm (no arm was named)"
+    return f"a positive drive is declared to make the {named} {sign}"

@@ -7,7 +7,7 @@ import click
 from metro.bench import Bench
 from metro.figure_file import check_figure
 from metro.options import bench_options, command, distrust, is_quiet, output_options
-from metro.output import check_document, check_writable, to_json, write_whole
+from metro.output import check_document, to_json, write_whole
 
 __all__ = ["calibrate"]
 
@@ -19,6 +19,7 @@ _ROLES = {
     "scan": "Over whole fringes, both directions.",
     "lines-rising": "Lines driven, on the rising slope.",
     "lines-falling": "Lines driven, on the falling slope.",
+    "series": "Lines at several drives, up and down, in the order recorded; on either slope.",
 }
 
 
@@ -35,10 +36,34 @@ def _role_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
     "--lines-rising 06-lines-rising.mfr --lines-falling 07-lines-falling.mfr --out cal.json"
 )
 @_role_options
+@click.option(
+    "--repeat",
+    "repeat_files",
+    multiple=True,
+    metavar="FILE",
+    help="Calibrations of this bench after other alignments: their scatter counts. Repeatable.",
+)
+@click.option(
+    "--open-loop",
+    "open_loop_file",
+    metavar="FILE",
+    help="Table of the open-loop gain of a servo that held the mirror (frequency, magnitude, phase, "
+    "u_magnitude, u_phase), the drive being read before the point where the servo acts.",
+)
+@click.option(
+    "--routes/--no-routes",
+    "compare",
+    default=True,
+    show_default=True,
+    help="Compare the slope with the driven fringe, which takes some seconds.",
+)
 @bench_options
 @output_options("out", "plot", "json", "overwrite")
 def calibrate(
     bench: Bench,
+    repeat_files: tuple[str, ...],
+    open_loop_file: str | None,
+    compare: bool,
     out: str | None,
     plot: str | None,
     as_json: bool,
@@ -51,15 +76,24 @@ def calibrate(
     caution and an entry of the budget.
     """
     from calibration.analysis import calibrate as run
+    from calibration.open_loop import load_open_loop
+    from calibration.record import load
     from calibration.summary import calibration_text
 
-    inputs = [bench.path, *(path for paths in roles.values() for path in paths)]
+    recordings = [path for paths in roles.values() for path in paths]
+    inputs = [bench.path, *recordings, *repeat_files, open_loop_file]
     if out is not None:
         check_document(out, overwrite, inputs)
     if plot is not None:
-        check_writable(plot, overwrite, inputs)
-        check_figure(plot, overwrite=overwrite)
-    result = run(bench, **roles)
+        check_figure(plot, overwrite, inputs)
+    by_role: dict[str, Any] = dict(roles)  # paths by parameter, beside others of other types
+    result = run(
+        bench,
+        **by_role,
+        repeat=[load(path) for path in repeat_files],
+        open_loop=None if open_loop_file is None else load_open_loop(open_loop_file),
+        compare=compare,
+    )
     document = to_json(result.to_dict())
     if plot is not None:
         from calibration.session_plot import Shown, save_session_page

@@ -77,7 +77,7 @@ def test_file_comes_back_as_it_was(session, tmp_path):
         ({"format": "other"}, "this is no calibration: its format is not 'midfringe calibration'"),
         ({"version": 2}, "the calibration has version 2; this program reads up to 1"),
         ({"version": "x"}, "version must be a whole number from 1, got 'x'"),
-        ({"readout": {}}, "the calibration has no 'slope'"),
+        ({"readout": {}}, "$.readout must have 'slope', got none"),
     ],
 )
 def test_file_that_does_not_fit_is_refused(session, tmp_path, change, message):

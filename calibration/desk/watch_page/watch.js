@@ -148,6 +148,7 @@ function showTiles(said) {
   write("drive", off ? "none" : drive.sum_v > 0 ? withUnit(drive.sum_v, "V") : "at rest");
   write("drive-more", drive.limit_v !== null && !off ? `limit ${withUnit(drive.limit_v, "V")}` : "");
   mark("tile-drive", drive.sum_v > 0 ? "on" : "");
+  document.body.classList.toggle("stale", said.port.state !== "connected");
   showAlarm(said);
 }
 
@@ -318,7 +319,6 @@ function showLines(said) {
     cell(line.amplitude === null ? "" : phaseText(line.phase_deg, line.phase_u95_deg));
     cell(line.ratio ? Number(line.ratio.toPrecision(4)) : "");
     row.classList.toggle("doubt", line.reasons.length > 0);
-    row.title = line.reasons.join("; ");
     return row;
   });
   if (!rows.length) {
@@ -327,6 +327,16 @@ function showLines(said) {
     rows.push(row);
   }
   $("lines").replaceChildren(...rows);
+  write("doubts", doubts(said.lines, said.line_remarks));
+}
+
+// Why the lines in italics are not to be trusted: each reason once, with the lines it is about.
+function doubts(lines, remarks) {
+  const about = new Map();
+  for (const line of lines) {
+    for (const reason of line.reasons) about.set(reason, [...(about.get(reason) ?? []), Number(line.frequency_hz.toPrecision(7))]);
+  }
+  return [...[...about].map(([reason, which]) => `${which.join(", ")} Hz: ${reason}`), ...(remarks ?? [])].join("; ");
 }
 
 // ---- orders
@@ -462,6 +472,7 @@ function watchConnection() {
   if (performance.now() - page.heard < SILENT_MS) return;
   write("port", "✕ NO CONNECTION");
   $("port").className = "badge bad";
+  document.body.classList.add("stale");
   const alarm = $("alarm");
   alarm.hidden = false;
   alarm.dataset.text = "";

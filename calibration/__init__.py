@@ -10,6 +10,8 @@ if TYPE_CHECKING:
     from calibration.analysis import calibrate as calibrate
     from calibration.driven_fringe import fit_driven_fringe as fit_driven_fringe
     from calibration.errors import CalibrationError as CalibrationError
+    from calibration.fringe_count import FringeCount as FringeCount
+    from calibration.fringe_count import count_fringes as count_fringes
     from calibration.fringe_fit import FringeFit as FringeFit
     from calibration.line_fit import LineFit as LineFit
     from calibration.line_parts import accumulate_lines as accumulate_lines
@@ -17,10 +19,20 @@ if TYPE_CHECKING:
     from calibration.line_phasors import LinePhasors as LinePhasors
     from calibration.line_plan import LinePlan as LinePlan
     from calibration.lines import fit_lines as fit_lines
+    from calibration.quadrature import QuadraturePhase as QuadraturePhase
+    from calibration.quadrature import quadrature_phase as quadrature_phase
     from calibration.record import Calibration as Calibration
     from calibration.record import load as load
+    from calibration.tracking import TrackedPhase as TrackedPhase
+    from calibration.tracking import track_phase as track_phase
 
 _HOMES = {
+    "FringeCount": "calibration.fringe_count",
+    "count_fringes": "calibration.fringe_count",
+    "QuadraturePhase": "calibration.quadrature",
+    "quadrature_phase": "calibration.quadrature",
+    "TrackedPhase": "calibration.tracking",
+    "track_phase": "calibration.tracking",
     "LinePhasors": "calibration.line_phasors",
     "LinePlan": "calibration.line_plan",
     "accumulate_lines": "calibration.line_parts",
@@ -38,16 +50,22 @@ _HOMES = {
 __all__ = [
     "Calibration",
     "CalibrationError",
+    "FringeCount",
     "FringeFit",
     "LineFit",
     "LinePhasors",
     "LinePlan",
+    "QuadraturePhase",
+    "TrackedPhase",
     "accumulate_lines",
     "calibrate",
+    "count_fringes",
     "fit_driven_fringe",
     "fit_lines",
     "load",
     "plan_lines",
+    "quadrature_phase",
+    "track_phase",
 ]
 
 

@@ -244,5 +244,12 @@ def fit_ellipse(x: FloatArray, y: FloatArray) -> Ellipse:
     variance = float(rest @ rest) / max(len(rest) - 5, 1) * _memory(rest)
     covariance = np.linalg.pinv(columns.T @ columns) * variance
     units = np.array([scale, scale, 1.0, 1.0, scale])
-    theta = theta * units + np.array([middle[0], middle[1], 0.0, 0.0, 0.0])
-    return Ellipse(*theta.tolist(), covariance=covariance * np.outer(units, units))
+    p, q, r, alpha, radius = theta.tolist()
+    return Ellipse(
+        p * scale + float(middle[0]),
+        q * scale + float(middle[1]),
+        r,
+        alpha,
+        radius * scale,
+        np.asarray(covariance * np.outer(units, units), dtype=np.float64),
+    )

@@ -278,10 +278,9 @@ def quadrature_tables(result: QuadratureReading, remarks: Sequence[str] = ()) ->
     ]
     parts = [table(rows)]
     if result.depths:
+        known = in_metres(result.depths, result.ruler)
         none = "unknown: no --wavelength"
-        found: list[Any] = list(
-            in_metres(result.depths, result.ruler) or [none] * len(result.depths)
-        )
+        found: list[Any] = [none] * len(result.depths) if known is None else list(known)
         parts.append(
             table(
                 [

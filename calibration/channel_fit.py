@@ -22,6 +22,7 @@ __all__ = ["ChannelFit", "fit_channel"]
 _HIGHEST_DRIFT = 4
 _FAR = 8.0  # bins of 1/T
 _ENOUGH_BLOCKS = 32
+_GROUPS = 256
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,6 +45,12 @@ class ChannelFit:
         Samples used.
     drift : ndarray, shape (n_drift,)
         Coefficients of the drift, offset first.
+    middles, counts : ndarray, shape (n_groups,)
+        Middle [samples] and samples used of some hundred groups of blocks.
+    residual : ndarray of complex, shape (n_groups, n_lines)
+        Residual phasors of each, the phase course taken out.
+    group : int
+        Samples in a full group.
     """
 
     coefficients: NDArray[np.complex128]
@@ -53,6 +60,10 @@ class ChannelFit:
     inflation: NDArray[np.float64]
     used: int
     drift: NDArray[np.float64]
+    middles: NDArray[np.float64]
+    counts: NDArray[np.int64]
+    residual: NDArray[np.complex128]
+    group: int
 
     def line_covariance(self, line: int) -> NDArray[np.float64]:
         """Return the covariance of a line's real and imaginary part, shape (2, 2)."""
@@ -107,7 +118,18 @@ def fit_channel(
         0.25 * phasors.used * (diagonal[:lines] + diagonal[r : r + lines]),
         phasors.used,
         fit.drift,
+        *_grouped(phasors, residual[:, :lines]),
     )
+
+
+def _grouped(
+    phasors: BlockPhasors, residual: NDArray[np.complex128]
+) -> tuple[NDArray[np.float64], NDArray[np.int64], NDArray[np.complex128], int]:
+    size = max(1, len(residual) // _GROUPS)
+    edges = np.arange(0, len(residual), size)
+    counts = np.add.reduceat(phasors.counts, edges)
+    middles = np.add.reduceat(phasors.middles, edges) / np.diff(np.append(edges, len(residual)))
+    return middles, counts, np.add.reduceat(residual, edges), size * phasors.block
 
 
 def _regressors(

@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.line_noise import UNSTEADY
 from calibration.line_result import FittedChannel
 from calibration.survey import MAINS_ORDERS, Survey
 
@@ -25,9 +26,11 @@ _ALIASED = 1.5  # variance over that of a lone line in as many samples without g
 _ROUNDING = 1e-15  # float64: what is left of a constant is no line
 TOO_WEAK = "too weak"
 _UNSTEADY_SHARE = 3e-3  # of the line: less is in its u already, and small
-_UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
 _MODULATED = 0.03  # rms change of the amplitude or phase, relative or rad
 _BY_CHANCE = 1e-4
+# Parts of 16 groups have 32 degrees of freedom: powers 16 times apart among 8 of them in steady noise are
+# rarer than one record in a hundred million.
+_PARTS, _GROUPS_A_PART, _UNEVEN = 8, 16, 16.0
 _CODES_LOOKED_AT = 1 << 16
 
 
@@ -74,6 +77,7 @@ class Doubts:
                     self._weak(channel, line, self.largest[which]),
                     self._unsteady(channel, line),
                     self._modulated(channel, line),
+                    self._uneven(channel, line),
                     "clipped: the samples pile up at the extreme value" if clipped else None,
                 )
                 if reason
@@ -175,7 +179,7 @@ class Doubts:
         u = np.sqrt(2 * noise.variance / channel.fit.used)
         if u <= _UNSTEADY_SHARE * abs(channel.fit.coefficients[line]):
             return None
-        if noise.near > _UNSTEADY:
+        if noise.near > UNSTEADY:
             return (
                 f"not steady: what is left over is {noise.near:.2g} times stronger within 2/T of the line than"
                 " beside it"
@@ -184,6 +188,25 @@ class Doubts:
         if compared > 8 and noise.tones > 0.25 * compared:
             return f"what is left over is not noise: tones in {noise.tones} of {compared} bins"
         return None
+
+    @staticmethod
+    def _uneven(channel: FittedChannel, line: int) -> str | None:
+        fit = channel.fit
+        u = np.sqrt(2 * fit.noise[line].variance / fit.used)
+        if u <= _UNSTEADY_SHARE * abs(fit.coefficients[line]):
+            return None
+        held = fit.counts > 0.5 * fit.counts.max()
+        power = np.abs(fit.residual[held, line]) ** 2 / fit.counts[held]
+        if len(power) < _PARTS * _GROUPS_A_PART:
+            return None
+        levels = np.array([part.mean() for part in np.array_split(power, _PARTS)])
+        ratio = float(levels.max() / max(levels.min(), np.finfo(float).tiny))
+        if ratio <= _UNEVEN:
+            return None
+        return (
+            f"what is left over is {np.sqrt(ratio):.2g} times stronger in one part of the recording than in"
+            " another: fit its quiet part alone"
+        )
 
     def _modulated(self, channel: FittedChannel, line: int) -> str | None:
         noise, phasor = channel.fit.noise[line], channel.fit.coefficients[line]

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
 
-from calibration.phasors import BlockPhasors, block_waves, start_phases
+from calibration.phasors import LONGEST_PRODUCT, BlockPhasors, block_waves, start_phases
 from calibration.tall_product import tall_product
 
 __all__ = [
@@ -255,14 +255,22 @@ def _carrier_moments(
 def _moments(
     cycles: bytes, block: int
 ) -> tuple[NDArray[np.complex128], NDArray[np.complex128], NDArray[np.float64]]:
-    n = np.arange(block)
-    u = (n - 0.5 * (block - 1)) / block
-    waves: NDArray[np.complex128] = np.conj(block_waves(np.frombuffer(cycles), block))
-    powers = np.stack([np.ones_like(u), u, u * u])
-    weighted = powers[:, :, None] * waves
-    both = (waves, np.conj(waves))
-    sums = np.stack([[tall_product(left, right) for right in weighted] for left in both])
-    return sums, np.asarray(weighted.sum(axis=1)), np.asarray(powers.sum(axis=1))
+    carriers = np.frombuffer(cycles)
+    k = len(carriers)
+    sums = np.zeros((2, 3, k, k), dtype=np.complex128)
+    alone, powers = np.zeros((3, k), dtype=np.complex128), np.zeros(3)
+    step = min(block, LONGEST_PRODUCT)
+    own = np.conj(block_waves(carriers, step))
+    for first in range(0, block, step):
+        waves = own * np.exp(1j * start_phases(carriers, np.array([first])))
+        u = (first + np.arange(step) - 0.5 * (block - 1)) / block
+        for p, power in enumerate((np.ones_like(u), u, u * u)):
+            weighted = power[:, None] * waves
+            sums[0, p] += tall_product(waves, weighted)
+            sums[1, p] += tall_product(np.conj(waves), weighted)
+            alone[p] += weighted.sum(axis=0)
+            powers[p] += power.sum()
+    return sums, alone, powers
 
 
 @lru_cache(maxsize=4)

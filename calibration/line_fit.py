@@ -9,6 +9,8 @@ from numpy.typing import NDArray
 from calibration.phasor_estimate import PhasorEstimate
 
 if TYPE_CHECKING:
+    from calibration.line_course import LineBeside, LineCourse
+    from calibration.line_product import LineProduct
     from metro.measured import Measured
     from metro.units import Quantity
 
@@ -37,6 +39,10 @@ class Line:
         Why not to believe it; empty where no reason was found.
     is_phase_refused : bool
         True where the samples have no time of their own, so that only the ratio has a phase.
+    course : LineCourse, optional
+        Amplitude and phase through the recording; None where it is too short for two bins.
+    beside : LineBeside, optional
+        What the fit left over beside the line.
     """
 
     frequency_hz: float
@@ -48,6 +54,8 @@ class Line:
     ratio: PhasorEstimate | None = None
     distrust_reasons: tuple[str, ...] = ()
     is_phase_refused: bool = False
+    course: "LineCourse | None" = field(default=None, repr=False)
+    beside: "LineBeside | None" = field(default=None, repr=False)
 
     @property
     def is_trustworthy(self) -> bool:
@@ -96,7 +104,7 @@ class Line:
         floor = self.density_value / np.sqrt(self.used_s)
         return float(abs(self.phasor) / floor) if floor > 0 else float("inf")
 
-    def to_dict(self) -> dict[str, Any]:
+    def to_dict(self, *, over_time: bool = False) -> dict[str, Any]:
         """Return the line as the JSON output has it, quantities as Measured."""
         drive, ratio = self.drive, self.ratio
         is_known = not self.is_phase_refused
@@ -111,6 +119,7 @@ class Line:
             "ratio": ratio and {"magnitude": ratio.magnitude, "phase": ratio.phase},
             "trustworthy": self.is_trustworthy,
             "reasons": list(self.distrust_reasons),
+            **({"course": self.course and self.course.to_dict()} if over_time else {}),
         }
 
     @property
@@ -164,8 +173,14 @@ class LineFit:
         Length of the recording [s], gaps included.
     remarks : tuple of str
         What was done that a reader should know.
+    notes : tuple of str
+        How it was done, for those who want to know.
     gaps : tuple of int
         Lengths of the gaps [samples], in order, where the recording knows them.
+    clock_drift_per_s : tuple of float, optional
+        Change of the offset in a second, and its standard uncertainty [1/s].
+    products : tuple of LineProduct
+        Harmonics and intermodulation, where they were asked for.
     """
 
     lines: tuple[Line, ...]
@@ -176,7 +191,10 @@ class LineFit:
     used_fraction: float
     duration_s: float
     remarks: tuple[str, ...] = field(default=())
+    notes: tuple[str, ...] = ()
     gaps: tuple[int, ...] = ()
+    clock_drift_per_s: tuple[float, float] | None = None
+    products: "tuple[LineProduct, ...]" = ()
 
     @property
     def clock_offset(self) -> "Measured | None":
@@ -186,6 +204,16 @@ class LineFit:
         if not np.isfinite(self.clock_value):
             return None
         return Measured.of(self.clock_value, "1", self.clock_u, self.clock_dof)
+
+    @property
+    def clock_drift(self) -> "Measured | None":
+        """Change of the clock offset in a second [1/s], None where it cannot be known."""
+        from metro.measured import Measured
+
+        if self.clock_drift_per_s is None:
+            return None
+        value, u = self.clock_drift_per_s
+        return Measured.of(value, "1/s", u, self.clock_dof)
 
     @property
     def duration(self) -> "Quantity":
@@ -212,15 +240,17 @@ class LineFit:
                 about.setdefault(reason, []).append(f"{line.frequency_hz:.9g} Hz")
         return [f"{', '.join(lines)}: {reason}" for reason, lines in about.items()]
 
-    def to_dict(self) -> dict[str, Any]:
-        """Return the fit as the JSON output has it."""
+    def to_dict(self, *, over_time: bool = False) -> dict[str, Any]:
+        """Return the fit as the JSON output has it, the courses of the lines on request."""
         return {
-            "lines": [line.to_dict() for line in self.lines],
+            "lines": [line.to_dict(over_time=over_time) for line in self.lines],
             "clock_offset": self.clock_offset,
+            "clock_drift": self.clock_drift,
             "used_fraction": self.used_fraction,
             "gaps": {"number": len(self.gaps), "samples": sum(self.gaps)},
             "duration": self.duration,
-            "remarks": list(self.remarks),
+            **({"products": [p.to_dict() for p in self.products]} if self.products else {}),
+            "remarks": [*self.remarks, *self.notes],
         }
 
 

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from calibration.phasors import BlockPhasors
 
-__all__ = ["LineNoise", "measure_noise", "noise_bins"]
+__all__ = ["UNSTEADY", "LineNoise", "measure_noise", "noise_bins"]
 
 _MOST_BINS = 32
 _LEAST_BINS = 6
@@ -24,7 +24,8 @@ _REACH = 0.05
 _TONE = 13.0
 _RINGS = (8, 12, 16, 20, 24, 28, 32)
 _LEVEL = 3.0  # standard deviations: by chance twice in a thousand rings
-_UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
+UNSTEADY = 6.0  # 8 degrees of freedom beside 100: exceeded once in 100 000 records
+"""``LineNoise.near`` from which on a line is not steady."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,7 +160,7 @@ def measure_noise(
     dof, tones = max(2.0, 2.0 * counted), int(sound.sum() - toneless.sum())
     close = sound & (np.abs(offsets) <= 2)
     near = float(power[close].mean() / variance) if close.any() and variance > 0 else 1.0
-    if near > _UNSTEADY:
+    if near > UNSTEADY:
         # A line that is not steady is as uncertain as its own skirt, whatever lies further out.
         variance, dof = near * variance, 2.0 * float(close.sum())
     return LineNoise(variance, dof, near, sound, offsets, used, tones, bins)

@@ -13,9 +13,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.coarse_blocks import coarsened
 from calibration.errors import CalibrationError
 from calibration.line_plan import LinePlan
-from calibration.phasors import BlockPhasors, block_phasors, merge_phasors
+from calibration.phasors import LONGEST_PRODUCT, BlockPhasors, block_phasors, merge_phasors
 
 if TYPE_CHECKING:
     from calibration.line_fit import LineFit
@@ -162,15 +163,16 @@ def _lengthened(before: Part, part: Part, reach: int) -> Part:
 def _phasors(
     plan: LinePlan, channel: int, values: NDArray[Any], start: int, history: NDArray[Any] | None
 ) -> BlockPhasors:
-    return block_phasors(
+    found = block_phasors(
         values,
         plan.carriers(channel),
         start_index=start,
-        block=plan.block,
+        block=min(plan.block, LONGEST_PRODUCT),
         taps=plan.taps[channel],
         slopes=plan.is_free,
         history=history,
     )
+    return coarsened(found, plan.block)
 
 
 def sum_lines(source: "LineSource", plan: LinePlan) -> LinePhasors:

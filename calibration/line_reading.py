@@ -78,6 +78,8 @@ def read_recording_lines(
     to_s: float | None = None,
     free: bool = False,
     mains_hz: float = 50.0,
+    harmonics: int = 1,
+    intermodulation: bool = False,
 ) -> LineFit:
     """Fit the lines of a recording of any size, in bounded memory.
 
@@ -95,6 +97,10 @@ def read_recording_lines(
         Fit the frequency of each too.
     mains_hz : float
         Frequency of the mains [Hz].
+    harmonics : int
+        Up to which multiple of each line harmonics are fitted too.
+    intermodulation : bool
+        Fit sums and differences of two lines too.
 
     Returns
     -------
@@ -111,7 +117,15 @@ def read_recording_lines(
     source = RecordingSource(recording, positions, from_s, to_s)
     channels = [recording.channels[position] for position in positions]
     units = (channels[0].unit, channels[-1].unit if len(channels) > 1 else "1")
-    fit = fit_source(source, frequencies_hz, free=free, mains_hz=mains_hz, units=units)
+    fit = fit_source(
+        source,
+        frequencies_hz,
+        free=free,
+        mains_hz=mains_hz,
+        units=units,
+        harmonics=harmonics,
+        intermodulation=intermodulation,
+    )
     over_range = {c.name: n for c, n in zip(channels, source.over_range, strict=True)}
     fit = _judged(with_timing(fit, recording.timing), over_range, source.length)
     return replace(fit, gaps=_gaps_within(recording, source.start, source.start + source.length))

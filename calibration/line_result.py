@@ -51,12 +51,15 @@ class FittedChannel:
         turned = self._phase_covariance(line) * np.outer(_parts(1j * phasor), _parts(1j * phasor))
         return PhasorEstimate(phasor, covariance + turned, self.fit.noise[line].dof, self.unit)
 
+    def factor(self, line: int) -> complex:
+        """Return what leads from a filtered phasor to that at t = 0 in the unit of the samples."""
+        applied = self.followed.applied
+        turn = np.exp(1j * applied.phase(np.zeros(1))[0, line]) if len(applied.theta) else 1.0
+        return complex(turn / self.responses[line])
+
     def steady(self, line: int) -> tuple[complex, NDArray[np.float64]]:
         """Return a line's phasor at t = 0 and its covariance if the phase course were exact."""
-        start = np.zeros(1)
-        applied = self.followed.applied
-        turn = np.exp(1j * applied.phase(start)[0, line]) if len(applied.theta) else 1.0
-        factor = complex(turn / self.responses[line])
+        factor = self.factor(line)
         phasor = complex(self.fit.coefficients[line]) * factor
         rotation = _rotation(factor)
         return phasor, rotation @ self.fit.line_covariance(line) @ rotation.T
@@ -110,8 +113,8 @@ def ratio_estimate(response: FittedChannel, drive: FittedChannel, line: int) -> 
     ratio = top / bottom
     own, other = response.fit.noise[line], drive.fit.noise[line]
     used = own.used & other.used if (own.used & other.used).any() else own.used
-    first = own.bins[used] * _unwhitened(response, line)
-    second = other.bins[used] * _unwhitened(drive, line)
+    first = own.bins[used] * response.factor(line)
+    second = other.bins[used] * drive.factor(line)
     second = second * np.sqrt(response.fit.used / drive.fit.used)
     power = float((np.abs(first) ** 2).mean())
     left = float((np.abs(first - ratio * second) ** 2).mean())
@@ -120,12 +123,6 @@ def ratio_estimate(response: FittedChannel, drive: FittedChannel, line: int) -> 
     rotation = _rotation(1 / bottom)
     dof = own.dof * float(used.sum()) / max(1.0, float(own.used.sum()))
     return PhasorEstimate(ratio, scale * rotation @ covariance @ rotation.T, dof, unit)
-
-
-def _unwhitened(channel: FittedChannel, line: int) -> complex:
-    applied = channel.followed.applied
-    turn = np.exp(1j * applied.phase(np.zeros(1))[0, line]) if len(applied.theta) else 1.0
-    return complex(turn / channel.responses[line])
 
 
 def _ratio_unit(top: str, bottom: str) -> str:

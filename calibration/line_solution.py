@@ -6,6 +6,7 @@ from numpy.typing import NDArray
 from calibration.channel_fit import fit_channel
 from calibration.clock import Followed, follow_phases
 from calibration.distrust import TOO_WEAK, Doubts, is_clipped
+from calibration.line_course import beside_of, course_of
 from calibration.line_fit import Line, LineFit
 from calibration.line_phasors import LinePhasors
 from calibration.line_plan import LinePlan
@@ -48,7 +49,21 @@ def solve_lines(sums: LinePhasors) -> LineFit:
         float(sums.blocks[0].present.sum()) / sums.length,
         sums.length / plan.rate_hz,
         tuple(_remarks(plan)),
+        notes=_notes(plan),
+        clock_drift_per_s=_drift(sums, followed) if np.isfinite(clock) else None,
     )
+
+
+def _drift(sums: LinePhasors, followed: Followed) -> tuple[float, float] | None:
+    """Return the change of the relative offset in a second, and its u."""
+    course = followed.course
+    if 2 not in course.degrees:
+        return None
+    # θ·P₂(x), P₂' = 3x, x one in half a recording: the offset grows by 3θ in that time.
+    at = course.degrees.index(2)
+    scale = 3.0 * sums.plan.rate_hz / course.half * (1 + sums.plan.offset)
+    u = float(np.sqrt(max(0.0, followed.covariance[at, at])))
+    return float(course.theta[at]) * scale, u * scale
 
 
 def _followed(sums: LinePhasors) -> Followed:
@@ -107,6 +122,8 @@ def _line(fitted: list[FittedChannel], plan: LinePlan, doubts: Doubts, k: int) -
         fitted[1].estimate(k) if len(fitted) > 1 else None,
         ratio_estimate(response, fitted[1], k) if len(fitted) > 1 else None,
         doubts.reasons(fitted, k),
+        course=course_of(response, k, plan),
+        beside=beside_of(response, k, plan),
     )
 
 
@@ -118,9 +135,13 @@ def _remarks(plan: LinePlan) -> list[str]:
         )
         if len(plan.cycles) * plan.width == 1:
             remarks.append("one line alone cannot tell a clock that is off from another tone")
-    if plan.reach:
-        remarks.append("the noise is not white: samples and lines went through one short filter")
     return remarks
+
+
+def _notes(plan: LinePlan) -> tuple[str, ...]:
+    if not plan.reach:
+        return ()
+    return ("the noise is not white: samples and lines went through one short filter",)
 
 
 def _clock(plan: LinePlan, followed: Followed) -> tuple[float, float]:

@@ -4,7 +4,8 @@ Lines are fitted jointly with a slow drift by least squares over block phasors, 
 short filter; their u comes from the noise beside each, with its Student factor.
 """
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -12,6 +13,7 @@ from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
 from calibration.line_fit import LineFit
+from calibration.line_product import LineProduct, combinations_of
 from calibration.line_record import settle_lines
 from calibration.line_source import ArraySource, LineSource
 
@@ -28,6 +30,8 @@ def fit_lines(
     drive: "Quantity | NDArray[Any] | None" = None,
     *,
     free: bool = False,
+    harmonics: int = 1,
+    intermodulation: bool = False,
 ) -> LineFit:
     """Fit lines: amplitude, phase, noise beside each, ratio to the drive.
 
@@ -43,6 +47,10 @@ def fit_lines(
         The drive, sampled together with ``samples``.
     free : bool
         Fit the frequency of each line too.
+    harmonics : int
+        Fit harmonics of each line too, up to this multiple; see ``LineFit.products``.
+    intermodulation : bool
+        Fit sums and differences of two lines too.
 
     Returns
     -------
@@ -76,6 +84,8 @@ def fit_lines(
         free=free,
         value_unit=unit,
         drive_unit=drive_unit,
+        harmonics=harmonics,
+        intermodulation=intermodulation,
     )
 
 
@@ -113,6 +123,8 @@ def fit_lines_si(
     value_unit: str = "1",
     drive_unit: str = "1",
     search_clock: bool = True,
+    harmonics: int = 1,
+    intermodulation: bool = False,
 ) -> LineFit:
     """Fit lines to samples given as plain numbers.
 
@@ -136,6 +148,10 @@ def fit_lines_si(
         Coherent SI units of the samples and the drive.
     search_clock : bool
         Look for a common relative frequency error of all lines and follow it.
+    harmonics : int
+        Up to which multiple of each line harmonics are fitted too.
+    intermodulation : bool
+        Fit sums and differences of two lines too.
 
     Returns
     -------
@@ -155,6 +171,8 @@ def fit_lines_si(
         mains_hz=mains_hz,
         units=(value_unit, drive_unit),
         search_clock=search_clock,
+        harmonics=harmonics,
+        intermodulation=intermodulation,
     )
 
 
@@ -166,6 +184,8 @@ def fit_source(
     mains_hz: float = 50.0,
     units: tuple[str, str] = ("1", "1"),
     search_clock: bool = True,
+    harmonics: int = 1,
+    intermodulation: bool = False,
 ) -> LineFit:
     """Fit lines to a recording of any size.
 
@@ -183,6 +203,10 @@ def fit_source(
         Coherent SI units of the samples and the drive.
     search_clock : bool
         Look for a common relative frequency error of all lines and follow it.
+    harmonics : int
+        Up to which multiple of each line harmonics are fitted too.
+    intermodulation : bool
+        Fit sums and differences of two lines too.
 
     Returns
     -------
@@ -194,15 +218,47 @@ def fit_source(
     CalibrationError
         If a frequency cannot be fitted at this rate, or too few samples are there.
     """
-    sums = settle_lines(
-        source,
-        checked_frequencies(frequencies_hz, source.rate_hz),
-        free=free,
-        order=2 if search_clock else 0,
-        mains_hz=mains_hz,
-        units=units,
+    frequencies = checked_frequencies(frequencies_hz, source.rate_hz)
+
+    def fitted(lines_hz: NDArray[np.float64], order: int, *, is_free: bool) -> LineFit:
+        sums = settle_lines(
+            source, lines_hz, free=is_free, order=order, mains_hz=mains_hz, units=units
+        )
+        return sums.fit()
+
+    order = 2 if search_clock else 0
+    if not intermodulation and harmonics == 1:
+        return fitted(frequencies, order, is_free=free)
+    return _with_products(source, frequencies, fitted, order, free, (harmonics, intermodulation))
+
+
+def _with_products(
+    source: LineSource,
+    frequencies: NDArray[np.float64],
+    fitted: Callable[..., LineFit],
+    order: int,
+    free: bool,
+    wanted: tuple[int, bool],
+) -> LineFit:
+    """Fit lines and what they make together at once; with free frequencies in a second fit."""
+    first = fitted(frequencies, order, is_free=True) if free else None
+    if first is not None:
+        frequencies, order = np.array([line.frequency_hz for line in first.lines]), 0
+    made = combinations_of(
+        frequencies.tolist(),
+        source.rate_hz,
+        source.length / source.rate_hz,
+        harmonics=wanted[0],
+        intermodulation=wanted[1],
     )
-    return sums.fit()
+    everything = np.concatenate([frequencies, [one.frequency_hz for one in made]])
+    joint = fitted(everything, order, is_free=False)
+    lines = joint.lines[: len(frequencies)]
+    products = tuple(
+        LineProduct(one.orders, tuple(x for m, x in zip(one.orders, lines, strict=True) if m), line)
+        for one, line in zip(made, joint.lines[len(frequencies) :], strict=True)
+    )
+    return replace(first or replace(joint, lines=lines), products=products)
 
 
 def checked_frequencies(frequencies_hz: Sequence[float], rate_hz: float) -> NDArray[np.float64]:

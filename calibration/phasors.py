@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from calibration.errors import CalibrationError
 
 __all__ = [
+    "LONGEST_PRODUCT",
     "BlockPhasors",
     "block_length",
     "block_phasors",
@@ -27,16 +28,16 @@ __all__ = [
 # 16 384 samples by 18 columns of float64 are 2.4 MB: about a core's second-level cache, through which the
 # recording streams. Fewer, longer blocks leave less to do after the product; a line that is off by
 # 0.01 Hz must not turn by much within one.
-_LONGEST_BLOCK = 1 << 14
+LONGEST_PRODUCT = 1 << 14
+"""Longest block whose carriers are multiplied at once; longer ones are added up."""
+
 _SHORTEST_OF_LONG = 1 << 9
 _FEWEST_BLOCKS = 256
 _FEWEST_OF_LONG = 1024
-_MOST_BLOCKS = (
-    1 << 16
-)  # of each some hundred bytes are kept, and as much again while they are fitted
-_CHUNK_SAMPLES = (
-    1 << 22
-)  # 32 MB of float64 a product; bounds the copy of a recording in another format
+# Of each block some hundred bytes are kept, and a few times that while it is fitted.
+_MOST_BLOCKS = 1 << 15
+# 32 MB of float64 a product: bounds the copy of a recording in another format.
+_CHUNK_SAMPLES = 1 << 22
 _FRACTION = 1 << 24  # the fraction of a cycle a sample that is multiplied in exact integers
 
 
@@ -122,11 +123,11 @@ def block_length(samples: int) -> int:
     Returns
     -------
     int
-        A power of two: 1 for the shortest records, 16 384 from 17 million samples on, more from two
-        thousand million on, so that there are never more than 131 072 blocks.
+        A power of two: 1 for the shortest records, 16 384 from 17 million samples on, more from a
+        thousand million on, so that there are never more than 65 536 blocks.
     """
     wanted = max(1, min(samples // _FEWEST_BLOCKS, _SHORTEST_OF_LONG), samples // _FEWEST_OF_LONG)
-    wanted = max(min(_LONGEST_BLOCK, wanted), samples // _MOST_BLOCKS)
+    wanted = max(min(LONGEST_PRODUCT, wanted), samples // _MOST_BLOCKS)
     return int(1 << (wanted.bit_length() - 1))
 
 

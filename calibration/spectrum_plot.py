@@ -1,5 +1,6 @@
 """The spectrum of a recording beside the noise its bench should have, drawn."""
 
+from itertools import cycle
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,6 +18,15 @@ __all__ = ["spectrum_figure"]
 _POINTS = 4000
 _MARKED = 12
 _APART = 0.06  # decades
+_COLORS = (
+    "tab:orange",
+    "tab:green",
+    "tab:purple",
+    "tab:brown",
+    "tab:olive",
+    "tab:cyan",
+    "tab:gray",
+)
 _SMALL_SOURCE = 0.03  # of the total everywhere: not worth a curve
 
 
@@ -81,10 +91,10 @@ def _draw_density(axes: "Axes", spectrum: "Spectrum") -> None:
             welch.frequency_hz[1:-1], expected.density[1:-1], color="black", linewidth=2.0,
             label="expected",
         )  # fmt: skip
-        for name, source in expected.sources.items():
+        for (name, source), color in zip(expected.sources.items(), cycle(_COLORS), strict=False):
             if (source > _SMALL_SOURCE * expected.density).any():
                 axes.plot(
-                    welch.frequency_hz[1:-1], source[1:-1], linewidth=1.0, linestyle="--",
+                    welch.frequency_hz[1:-1], source[1:-1], linewidth=1.0, linestyle="--", color=color,
                     label=name.replace("_", " "),
                 )  # fmt: skip
     low, high = _limits(spectrum)

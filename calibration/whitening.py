@@ -26,6 +26,7 @@ _ORDERS = (1, 2, 3, 4, 6, 8, 12, 16)
 _SEGMENTS = 8
 _SEGMENT_SAMPLES = 1 << 14
 _SEGMENT_ROWS = 768
+_ROWS_A_COLUMN = 4
 # A filter of reach r loses r samples after each gap. In 1/f² noise no filter costs half the
 # information, so above this share lost a shorter filter is taken.
 _MOST_LOST = 0.4
@@ -160,7 +161,7 @@ def _lag_products(
     """Return Σ of products of the lagged samples, lines and offset taken out, and the row count."""
     total, rows = np.zeros((order + 1, order + 1)), 0
     for n, lagged in _lagged_rows(channel, lag, order):
-        known = np.hstack([waves.columns(n), np.ones((len(n), 1))])
+        known = _known(waves.columns(n), n)
         if len(n) <= 2 * known.shape[1]:
             continue
         # Centred first: an offset far above the noise must not eat the digits of the products.
@@ -172,6 +173,19 @@ def _lag_products(
         total += tall_product(lagged, lagged)
         rows += len(n) - known.shape[1]
     return total, rows
+
+
+def _known(columns: NDArray[np.float64], n: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Return what is no noise: lines, an offset, and lines that grow or slip through the stretch.
+
+    A line that is not steady would look like noise that is strongest right there, and the filter would
+    bend the response around it.
+    """
+    plain = np.hstack([columns, np.ones((len(n), 1))])
+    if len(n) < _ROWS_A_COLUMN * 3 * columns.shape[1]:
+        return plain
+    x = ((n - n.mean()) / max(1.0, float(np.ptp(n))))[:, None]
+    return np.hstack([plain, x * columns, x * x * columns])
 
 
 def _lagged_rows(

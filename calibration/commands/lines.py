@@ -5,13 +5,24 @@ from typing import TYPE_CHECKING
 
 import click
 
+from firmware_bridge.gap_reason import counted
 from firmware_bridge.reading import Reading, recording_options
-from metro.options import ValueType, bench_options, command, distrust, is_quiet, output_options
+from metro.options import (
+    ValueType,
+    bench_options,
+    command,
+    distrust,
+    is_quiet,
+    is_verbose,
+    output_options,
+)
 
 if TYPE_CHECKING:
     from calibration.line_fit import LineFit
+    from calibration.line_product import LineProduct
     from firmware_bridge.trace import Recording
     from metro.bench import Bench
+    from metro.measured import Measured
 
 __all__ = ["lines"]
 
@@ -34,17 +45,29 @@ __all__ = ["lines"]
     metavar="F",
     help="Mains frequency, such as 60Hz. Default: the bench's, else 50Hz.",
 )
+@click.option(
+    "--harmonics",
+    type=click.IntRange(2, 20),
+    metavar="N",
+    help="Fit harmonics of each line too, up to this multiple.",
+)
+@click.option("--intermodulation", is_flag=True, help="Fit sums and differences of two lines too.")
+@click.option("--over-time", is_flag=True, help="Show amplitude and phase in bins of time too.")
 @recording_options
 @bench_options
-@output_options("out", "json", "overwrite")
+@output_options("out", "plot", "json", "overwrite")
 def lines(
     file: str,
     lines_hz: tuple[float, ...],
     free: bool,
     mains_hz: float | None,
+    harmonics: int | None,
+    intermodulation: bool,
+    over_time: bool,
     reading: Reading,
     bench: "Bench",
     out: str | None,
+    plot: str | None,
     as_json: bool,
     overwrite: bool,
 ) -> None:
@@ -54,8 +77,11 @@ def lines(
     named "drive" is the drive.
     """
     from calibration.line_reading import read_recording_lines
+    from metro.figure_file import check_figure, save_figure
     from metro.output import check_document, to_json, write_whole
 
+    if plot is not None:
+        check_figure(plot, overwrite, [file, bench.path, out])
     if out is not None:
         check_document(out, overwrite, [file, bench.path])
     recording = reading.open(file)
@@ -69,14 +95,20 @@ def lines(
         to_s=reading.to_s,
         free=free,
         mains_hz=mains_hz or _mains(bench),
+        harmonics=harmonics or 1,
+        intermodulation=intermodulation,
     )
-    document = to_json(fit.to_dict())
+    document = to_json(fit.to_dict(over_time=over_time))
     if out is not None:
         write_whole(out, document + "\n", overwrite=overwrite)
-    click.echo(document if as_json else _for_people(fit, free=free))
+    if plot is not None:
+        from calibration.line_plot import lines_figure
+
+        save_figure(lines_figure(fit, file), plot, overwrite=overwrite)
+    click.echo(document if as_json else _for_people(fit, free=free, over_time=over_time))
     reading.tell(recording)
     if not is_quiet():
-        for remark in fit.remarks:
+        for remark in (*fit.remarks, *(fit.notes if is_verbose() else ())):
             click.echo(remark, err=True)
     if not fit.is_trustworthy:
         distrust(fit.reasons_by_line())
@@ -100,7 +132,7 @@ def _mains(bench: "Bench") -> float:
     return 50.0 if entry is None else float(entry.magnitude)
 
 
-def _for_people(fit: "LineFit", *, free: bool) -> str:
+def _for_people(fit: "LineFit", *, free: bool, over_time: bool) -> str:
     from metro.display import show
     from metro.output import table
 
@@ -125,12 +157,52 @@ def _for_people(fit: "LineFit", *, free: bool) -> str:
             ]
         trust = "; ".join(line.distrust_reasons) or "no reason for distrust found"
         rows.append(["  trust", trust])
+    rows += [
+        [product.text, f"{product.line.amplitude}; {_relative(product)}"]
+        for product in fit.products
+    ]
     clock = fit.clock_offset
     if clock is not None:
         followed = "followed" if fit.clock_applied else "not told from zero, not followed"
         rows.append(["clock offset of the lines", f"{clock}; {followed}"])
+    if fit.clock_drift is not None:
+        rows.append(["its drift", _parts_per_million(fit.clock_drift)])
+    gaps = f"; {counted(len(fit.gaps), 'gap')}, {sum(fit.gaps)} samples" if fit.gaps else ""
     rows += [
-        ["used", f"{100 * fit.used_fraction:.4g} % of {show(fit.duration_s, 's')}"],
+        ["used", f"{100 * fit.used_fraction:.4g} % of {show(fit.duration_s, 's')}{gaps}"],
         ["convention", "A·cos(2πft + φ), t = 0 at the first sample of the recording"],
     ]
-    return table(rows)
+    return "\n\n".join([table(rows), *(_over_time(fit) if over_time else [])])
+
+
+def _relative(product: "LineProduct") -> str:
+    seen = "" if product.is_seen else ", not seen above the noise"
+    return f"of the line {product.relative}{seen}"
+
+
+def _parts_per_million(drift: "Measured") -> str:
+    factor = drift.coverage_factor(0.95)
+    value, expanded = 1e6 * float(drift.magnitude), 1e6 * factor * float(drift.u_magnitude or 0.0)
+    return f"{value:.3g} ppm/s, U = {expanded:.2g} ppm/s (95 %)"
+
+
+def _over_time(fit: "LineFit") -> list[str]:
+    from metro.display import show
+    from metro.output import table
+
+    tables = []
+    for line in fit.lines:
+        course = line.course
+        if course is None:
+            continue
+        header = [f"{line.frequency_hz:.9g} Hz, time", "amplitude", "u", "phase", "u"]
+        columns = zip(
+            course.time_s, course.amplitude, course.amplitude_u, course.phase_rad,
+            course.phase_u_rad, strict=True,
+        )  # fmt: skip
+        rows = [
+            [show(t, "s"), show(a, course.unit, 6), show(du, course.unit, 2), f"{p:.6g} rad", f"{dp:.2g} rad"]
+            for t, a, du, p, dp in columns
+        ]  # fmt: skip
+        tables.append(table(rows, header=header))
+    return tables

@@ -13,7 +13,6 @@ from calibration.lines import fit_lines, fit_lines_si
 from calibration.phase_course import free_course
 from calibration.phasors import block_phasors, merge_phasors
 from calibration.sine_fit import fit_sine
-from metro.kernel.student import t_quantile
 
 RATE = 4000.0
 LINES = np.array([31.7, 87.13, 211.37])  # no whole cycles in 10 s
@@ -25,11 +24,11 @@ def _tones(t, frequencies, phasors):
 
 
 def _pulls(estimate, truth):
-    """Errors of amplitude and phase over their u, and Student's factor."""
+    """Errors of amplitude and phase over their u."""
     size = abs(truth)
     along = (abs(estimate.phasor) - size) / estimate.along_u
     across = np.angle(estimate.phasor / truth) * size / estimate.across_u
-    return along, across, t_quantile(0.95, estimate.dof)
+    return along, across
 
 
 # --- against general least squares ------------------------------------------------------------
@@ -123,96 +122,9 @@ def test_phases_count_from_the_first_sample_of_the_recording():
         assert abs(one.phasor - other.phasor) < 1e-9
 
 
-# --- coverage ---------------------------------------------------------------------------------
+# --- honest errors ----------------------------------------------------------------------------
 
-# Without a stated reason: share of 95 % intervals that cover. Its own standard deviation over n
-# intervals is √(0.95·0.05/n): 0.34 % for 4000.
-
-
-def _noise(kind, rng, n):
-    white = 0.1 * rng.standard_normal(n)
-    if kind == "walk":
-        return np.cumsum(0.05 * rng.standard_normal(n))
-    if kind == "mains":
-        t = np.arange(n) / RATE
-        mains = 50 + 0.02 * rng.standard_normal()
-        strengths = (1.0, 0.1, 0.3)
-        return white + sum(
-            a * np.cos(2 * np.pi * k * mains * t + rng.uniform(0, 6))
-            for k, a in enumerate(strengths, 1)
-        )
-    return white
-
-
-def _record(kind, seed, n=8000):
-    rng = np.random.default_rng(seed)
-    f = np.array([31.7, 87.13, 211.37])
-    if kind == "neighbour":
-        f[1] = f[0] + 2 * RATE / n
-    sizes = rng.uniform(0.5, 1.0, 3) if kind != "quantised" else np.full(3, 2.0)
-    truth = sizes * np.exp(1j * rng.uniform(-3, 3, 3))
-    t = np.arange(n) / RATE
-    driven = truth * 0.5 * np.exp(0.3j)
-    values = _tones(t, f, truth) + _noise(kind, rng, n)
-    drive = _tones(t, f, driven) + 0.02 * rng.standard_normal(n)
-    if kind == "quantised":
-        values = np.rint(values + 0.4 * rng.standard_normal(n) + 2048.3)
-    if kind == "gaps":
-        for start in rng.integers(0, n, 16):
-            values[start : start + n // 160] = np.nan
-    return values, drive, f, truth, driven
-
-
-def _coverage(kind, records):
-    inside, pulls = [], []
-    for seed in range(records):
-        values, drive, f, truth, driven = _record(kind, seed)
-        fit = fit_lines_si(values, RATE, f, drive)
-        for k, line in enumerate(fit.lines):
-            for estimate, exact in ((line.response, truth[k]), (line.ratio, truth[k] / driven[k])):
-                along, across, factor = _pulls(estimate, exact)
-                inside += [abs(along) < factor, abs(across) < factor]
-                pulls += [along, across]
-        # The true offset is zero.
-        inside.append(abs(fit.clock_value) < t_quantile(0.95, fit.clock_dof) * fit.clock_u)
-    return float(np.mean(inside)), float(np.std(pulls))
-
-
-KINDS = ["white", "walk", "mains", "gaps", "neighbour", "quantised"]
-
-
-@pytest.mark.parametrize("kind", KINDS)
-def test_intervals_cover(kind):
-    # 30 records of 13 intervals, correlated within a record (amplitudes and ratios share their
-    # noise): as good as 30·7 independent ones, σ = 1.5 %, and 5 % for the spread. Three σ.
-    share, spread = _coverage(kind, 30)
-    assert 0.905 < share < 0.995
-    assert 0.85 < spread < 1.15
-
-
-@pytest.mark.trials
-@pytest.mark.parametrize("kind", KINDS)
-def test_intervals_cover_in_4000_records(kind):
-    share, spread = _coverage(kind, 4000)
-    print(f"{kind}: {100 * share:.2f} % inside, pulls {spread:.3f}")
-    assert 0.935 < share < 0.965
-    assert 0.97 < spread < 1.03
-
-
-@pytest.mark.trials
-@pytest.mark.parametrize(("kind", "within"), [("white", 0.03), ("walk", 0.05)])
-def test_lines_reach_the_bound(kind, within):
-    # Cramér–Rao in white noise: √(2/N)·σ; in 1/f² noise √(S(f)/T), for steps of variance s² at rate r
-    # S = s²/(2·r·sin²(πf/r)). 10 000 records know a standard deviation to 0.7 %.
-    n, errors = 8000, []
-    for seed in range(10_000):
-        rng = np.random.default_rng(seed)
-        values = np.cos(2 * np.pi * 87.13 * np.arange(n) / RATE + rng.uniform(0, 6))
-        values += _noise(kind, rng, n)
-        errors.append(abs(fit_lines_si(values, RATE, [87.13]).lines[0].phasor) - 1)
-    steps = 2 * 0.05**2 / (4 * RATE * np.sin(np.pi * 87.13 / RATE) ** 2)
-    bound = np.sqrt(2 / n) * 0.1 if kind == "white" else np.sqrt(steps * RATE / n)
-    assert np.std(errors) / bound == pytest.approx(1.0, abs=within)
+# Coverage in six kinds of noise and the bounds: long_runs/line_statistics.py.
 
 
 @pytest.mark.parametrize(
@@ -235,8 +147,8 @@ def test_displacements_under_a_large_drift_have_honest_errors(records, within):
         drive = _tones(t, f, np.full(6, driven)) + 1e-4 * rng.standard_normal(n)
         fit = fit_lines_si(values, 2000.0, f, drive, value_unit="m", drive_unit="V")
         for line, exact in zip(fit.lines, truth, strict=True):
-            pulls += _pulls(line.response, exact)[:2]
-            pulls += _pulls(line.ratio, exact / driven)[:2]
+            pulls += _pulls(line.response, exact)
+            pulls += _pulls(line.ratio, exact / driven)
     assert np.std(pulls) == pytest.approx(1.0, abs=within)
     assert np.mean(pulls) == pytest.approx(0.0, abs=1.2 * within)
 
@@ -316,7 +228,7 @@ def test_free_frequency_and_its_u():
         values = np.cos(2 * np.pi * f * np.arange(n) / RATE + 1) + 0.1 * rng.standard_normal(n)
         line = fit_lines_si(values, RATE, [87.13], free=True).lines[0]
         errors.append(line.frequency_hz - f)
-        pulls += [errors[-1] / line.frequency_u_hz, *_pulls(line.response, np.exp(1j))[:2]]
+        pulls += [errors[-1] / line.frequency_u_hz, *_pulls(line.response, np.exp(1j))]
     bound = np.sqrt(6 / (np.pi**2 * n)) * 0.1 * RATE / n
     assert np.std(errors) / bound == pytest.approx(1.0, abs=0.3)
     assert np.std(pulls) == pytest.approx(1.0, abs=0.2)
@@ -464,7 +376,7 @@ def test_a_working_point_at_a_fringe_top_is_not_trusted():
     early = fit_lines_si(data[:100, 1], 200.0, [30.0])
     assert "at a fringe top or bottom" in early.distrust_reasons[0]
     swept = fit_lines_si(data[:, 1], 200.0, [30.0])
-    assert "the working point wandered" in swept.distrust_reasons[0]
+    assert "times stronger in one part of the recording" in swept.distrust_reasons[0]
     locked = fit_lines_si(data[520:, 1], 200.0, [30.0], start_index=520)
     assert locked.is_trustworthy
     assert abs(locked.lines[0].phasor) == pytest.approx(2.53, rel=5e-3)

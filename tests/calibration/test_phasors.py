@@ -5,6 +5,7 @@ import itertools
 import numpy as np
 import pytest
 
+from calibration.coarse_blocks import coarsened
 from calibration.errors import CalibrationError
 from calibration.phasors import block_length, block_phasors, merge_phasors, start_phases
 
@@ -101,6 +102,21 @@ def test_parts_merge_to_the_whole(seed, taps):
         np.testing.assert_allclose(getattr(merged, name), getattr(whole, name), atol=1e-12)
 
 
+@pytest.mark.parametrize("slopes", [False, True])
+def test_short_blocks_add_up_to_long_ones(slopes):
+    # Rounding of sums of 512 terms of order 1.
+    values = _samples(seed=11)
+    values[1024:2560] = np.nan
+    keys = {"start_index": 777, "taps": TAPS, "slopes": slopes}
+    long = block_phasors(values, CYCLES, block=512, **keys)
+    coarse = coarsened(block_phasors(values, CYCLES, block=16, **keys), 512)
+    assert coarse.block == 512
+    for name in ("numbers", "counts", "present", "touched", "masks"):
+        np.testing.assert_array_equal(getattr(coarse, name), getattr(long, name))
+    for name in ("sums", "drift", *(["slopes"] if slopes else [])):
+        np.testing.assert_allclose(getattr(coarse, name), getattr(long, name), atol=1e-11)
+
+
 def test_two_parts_add_up():
     values = _samples(seed=9)
     whole = block_phasors(values, CYCLES, block=32)
@@ -134,5 +150,5 @@ def test_phases_far_into_a_recording_are_exact():
 
 
 def test_block_length_is_a_power_of_two_that_fits_the_cache():
-    lengths = [block_length(n) for n in (10, 300, 1000, 40_000, 10**6, 10**9)]
-    assert lengths == [1, 1, 2, 128, 512, 16384]
+    lengths = [block_length(n) for n in (10, 300, 1000, 40_000, 10**6, 10**9, 5 * 10**9)]
+    assert lengths == [1, 1, 2, 128, 512, 16384, 131_072]

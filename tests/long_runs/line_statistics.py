@@ -22,7 +22,7 @@ from numpy.polynomial import legendre
 from calibration.lines import fit_lines_si
 from metro.kernel.student import t_quantile
 
-__all__ = ["BOUNDS", "KINDS", "Tally", "bound_batch", "coverage_batch", "judged"]
+__all__ = ["BATCH", "BOUNDS", "KINDS", "Tally", "bound_batch", "coverage_batch", "judged"]
 
 RATE = 4000.0
 SAMPLES = 8000

@@ -161,3 +161,54 @@ def test_a_real_working_point_at_a_fringe_top_ends_with_1(capsys):
     assert line["trustworthy"] is False
     assert "at a fringe top or bottom" in line["reasons"][0]
     assert "not to be trusted: 30 Hz: the response is" in err
+
+
+def test_gaps_harmonics_and_the_course_are_shown(capsys, recording, tmp_path):
+    pytest.importorskip("matplotlib")
+    rows = recording.read_text().splitlines()
+    holes, plot = tmp_path / "holes.csv", tmp_path / "lines.png"
+    holes.write_text("\n".join(rows[:1000] + rows[1400:2000] + rows[2003:]) + "\n")
+    arguments = [
+        holes,
+        "--line",
+        "31.7Hz",
+        "--line",
+        "87.1Hz",
+        "--harmonics",
+        3,
+        "--intermodulation",
+    ]
+    code, out, err = lines(capsys, *arguments, "--over-time", "--plot", plot)
+    assert code == 1  # there is no line at 87.1 Hz
+    assert "2 gaps, 403 samples" in out
+    assert "2 × 31.7 Hz" in out
+    assert "87.1 Hz − 31.7 Hz" in out
+    assert "31.7 Hz, time" in out
+    assert "ppm/s" in out
+    assert "filter" not in err
+    assert plot.read_bytes().startswith(b"\x89PNG")
+    _, out, _ = lines(capsys, *arguments, "--over-time", "--json")
+    document = json.loads(out)
+    assert document["gaps"] == {"number": 2, "samples": 403}
+    assert len(document["products"]) == 6
+    first = document["products"][0]
+    assert (first["of"], first["orders"], first["seen"]) == ([31.7], [2], False)
+    assert set(first["relative"]) >= {"value", "unit", "u"}
+    course = document["lines"][0]["course"]
+    assert len(course["time"]["value"]) == len(course["phase"]["u"])
+    assert document["clock_drift"]["unit"] == "1/s"
+
+
+def test_the_filter_is_told_where_it_is_asked_for(capsys, tmp_path):
+    t = np.arange(8000) / 1000
+    walk = np.cumsum(0.01 * np.random.default_rng(1).standard_normal(len(t)))
+    volts = np.cos(2 * np.pi * 31.7 * t) + walk
+    path = tmp_path / "walk.csv"
+    path.write_text(
+        "\n".join(["time,pd", "s,V", *(f"{a:.3f},{b:.6f}" for a, b in zip(t, volts, strict=True))])
+        + "\n"
+    )
+    code, _, err = lines(capsys, path, "--line", "31.7Hz")
+    assert (code, err) == (0, "")
+    _, _, err = lines(capsys, path, "--line", "31.7Hz", "--verbose")
+    assert "the noise is not white" in err

@@ -9,6 +9,7 @@ from calibration.desk.watch_orders import Orders, Source
 from calibration.desk.watch_server import WatchServer
 from calibration.desk.watch_setup import WatchSetup
 from calibration.desk.watch_state import WatchState
+from firmware_bridge.errors import DeviceFailedError
 from firmware_bridge.live_events import LiveEvent
 
 __all__ = ["serve"]
@@ -52,6 +53,8 @@ def serve(
     ------
     CalibrationError
         If the address cannot be served.
+    DeviceFailedError
+        At the end, if the port had failed for good.
     """
     state = WatchState(setup)
     for event in first or ():
@@ -59,6 +62,11 @@ def serve(
     orders = Orders(source, state, is_replay=is_replay)
     server = WatchServer(source, state, orders, guard)
     asyncio.run(_serve(server, port_number, ready))
+    port = server.state.port
+    if port.state == "failed":
+        raise DeviceFailedError(
+            f"{setup.title}: {port.reason}; whether the drive is at rest is not known"
+        )
     return server
 
 

@@ -1,0 +1,134 @@
+"""``midfringe watch`` as a command: its address, its end, and what it refuses."""
+
+import urllib.request
+
+import numpy as np
+import pytest
+from sessions import BENCH_FILE
+from watch_browser import Program
+
+from calibration.desk.watch import serve
+from calibration.desk.watch_guard import Guard
+from calibration.desk.watch_replay import Replay
+from calibration.desk.watch_setup import WatchSetup
+from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveGap, LiveState
+from firmware_bridge.opening import open_recording
+from metro.bench import Bench
+from metro.commandline import run
+
+
+@pytest.fixture(autouse=True)
+def no_bench(monkeypatch):
+    monkeypatch.delenv("MIDFRINGE_BENCH", raising=False)
+
+
+@pytest.fixture
+def recording(tmp_path):
+    """Return a CSV of 2 s at 500 Hz with a value beyond the range of nothing: NaN."""
+    time_s = np.arange(1000) / 500
+    rows = [f"{t:.3f},{2 + np.cos(2 * np.pi * 31.7 * t):.6f}" for t in time_s]
+    path = tmp_path / "scope.csv"
+    path.write_text("\n".join(["time,photodiode", "s,V", *rows]) + "\n")
+    return path
+
+
+@pytest.mark.parametrize(
+    ("arguments", "said"),
+    [
+        ([], "one of PORT, --simulate and --replay is needed, and only one"),
+        (["/dev/x", "--simulate"], "one of PORT, --simulate and --replay is needed, and only one"),
+        (["--simulate", "--speed", "2"], "--speed goes with --replay"),
+        (["--replay", "no.mfr"], "no.mfr"),
+        (["/dev/no-such-port"], "/dev/no-such-port"),
+        (["--simulate", "--folder", "/no/such"], "--folder must be a directory that exists"),
+        (["--simulate", "--token", "short"], "--token must be at least 8 letters"),
+        (["--simulate", "--bench", "no.toml"], "no.toml"),
+        (["--simulate", "--adc-bits", "24"], "adc.bits up to 16, got 24"),
+        (["--simulate", "--calibration", "no.json"], "no.json"),
+        (["--simulate", "--line", "31.7"], "31.7"),
+        (["--simulate", "--host", "203.0.113.7"], "port number 8642 on 203.0.113.7 cannot be served"),
+    ],
+)  # fmt: skip
+def test_wrong_input_is_one_line_and_exit_code_2(capsys, arguments, said):
+    assert run(["watch", *arguments]) == 2
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert said in err
+    assert err.count("\n") == 1
+
+
+def test_a_replay_is_served_until_ctrl_c(recording):
+    program = Program("--replay", recording, "--line", "31.7Hz", "--bench", BENCH_FILE)
+    assert program.url.startswith("http://127.0.0.1:")
+    with urllib.request.urlopen(program.url) as answer:  # noqa: S310  # our own
+        assert b"midfringe watch" in answer.read()
+    assert program.end() == (0, "ended\n")
+
+
+class Failing:
+    """A source whose port has failed."""
+
+    def poll(self):
+        return [LiveState("failed", "out of order")]
+
+
+def test_a_port_that_failed_is_told_at_the_end_with_exit_code_3(monkeypatch):
+    async def at_once(server, _number, _ready):
+        server._poll()
+
+    monkeypatch.setattr("calibration.desk.watch._serve", at_once)
+    setup = WatchSetup("board", Bench())
+    with pytest.raises(DeviceFailedError, match="board: out of order; whether the drive") as caught:
+        serve(Failing(), setup, Guard("127.0.0.1"), 0, ready=print)
+    assert caught.value.exit_code == 3
+
+
+def test_a_replay_gives_every_sample_once_at_its_own_pace(recording, monkeypatch):
+    now_s = [100.0]
+    monkeypatch.setattr("calibration.desk.watch_replay.time.monotonic", lambda: now_s[0])
+    replay = Replay(open_recording(recording), speed=2.0)
+    said, state = replay.poll()
+    assert isinstance(said, LiveChannels)
+    assert (said.rate_hz, [c.name for c in said.channels]) == (500.0, ["photodiode"])
+    assert said.full_scale_v is None
+    assert state.state == "connected"
+    values = []
+    for moment_s in (100.1, 100.1001, 100.55, 100.9, 101.4):
+        now_s[0] = moment_s
+        for event in replay.poll():
+            if isinstance(event, LiveBlock):
+                assert event.start_index == sum(map(len, values))
+                values.append(event.values[:, 0])
+        due = int((moment_s - 100.0) * 2 * 500)
+        assert sum(map(len, values)) == min(due, 1000)
+    np.testing.assert_array_equal(
+        np.concatenate(values), open_recording(recording).trace("photodiode").values
+    )
+    assert replay.poll() == []
+
+
+def test_a_replay_tells_gaps_and_its_end(tmp_path, monkeypatch):
+    path = tmp_path / "gap.csv"
+    kept = [*range(300), *range(450, 1000)]
+    path.write_text("t,v\n" + "\n".join(f"{k / 500:.3f},{k}" for k in kept) + "\n")
+    now_s = [0.0]
+    monkeypatch.setattr("calibration.desk.watch_replay.time.monotonic", lambda: now_s[0])
+    replay = Replay(open_recording(path))
+    replay.poll()
+    now_s[0] = 60.0
+    events = replay.poll()
+    assert [e for e in events if isinstance(e, LiveGap)] == [
+        LiveGap(300, 150, exact=False)  # by the stamps of a text file
+    ]
+    assert events[-1] == LiveState("closed", "the recording is over")
+    blocks = [e for e in events if isinstance(e, LiveBlock)]
+    assert sum(np.count_nonzero(np.isfinite(b.values)) for b in blocks) == 850
+
+
+def test_a_replay_has_neither_drive_nor_recording(recording):
+    replay = Replay(open_recording(recording))
+    with pytest.raises(BridgeError, match="nothing to record"):
+        replay.start_recording("x.mfr")
+    with pytest.raises(BridgeError, match="is not set"):
+        replay.set_line(0, 31.7, 1.0)

@@ -1,20 +1,22 @@
-"""Recordings to CSV, NPZ and HDF5, to be opened by other programs alone.
+"""Recordings to CSV, NPY, NPZ and HDF5, to be opened by other programs alone.
 
-All three hold a column ``time_s`` (seconds from the recording's first sample) and one column a
+All hold a column ``time_s`` (seconds from the recording's first sample) and one column a
 channel, one row a sample, NaN where a sample is missing or out of range. CSV has one header line,
 ``photodiode [V]``, and numbers in the fewest digits that give the same float back. NPZ and HDF5
 hold beside that, as JSON under ``midfringe``: format version, rate and its uncertainty, units,
-gaps, over-range count, remarks, source and time of export; HDF5 also as attributes.
+gaps, over-range count, remarks, source and time of export; HDF5 also as attributes. NPY holds
+records with one field a column and nothing beside. All are written block by block: memory does not
+grow with the recording.
 """
 
 import json
 import zipfile
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
-from io import BytesIO, StringIO
 from pathlib import Path
-from typing import Any
+from typing import Any, BinaryIO
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,7 +25,7 @@ from firmware_bridge.column_name import split_header
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.trace import Recording, Span
 from metro.extras import require
-from metro.output import check_writable, write_whole
+from metro.output import check_writable, writing_whole
 
 __all__ = ["FORMAT_VERSION", "ExportError", "export_recording"]
 
@@ -46,6 +48,12 @@ class _Stretch:
     channels: tuple[int, ...]
     start: int
     stop: int
+    beside: Mapping[str, Any]
+
+    @property
+    def count(self) -> int:
+        """Number of samples."""
+        return self.stop - self.start
 
     @property
     def keys(self) -> list[str]:
@@ -63,12 +71,24 @@ class _Stretch:
         """Units of the columns."""
         return [self.recording.channels[position].unit for position in self.channels]
 
+    def bounds(self) -> Iterator[tuple[int, int]]:
+        """Yield the grid indices of one block after another."""
+        for first in range(self.start, self.stop, _BLOCK):
+            yield first, min(first + _BLOCK, self.stop)
+
+    def times(self, first: int, last: int) -> NDArray[np.float64]:
+        """Return the times of a block, shape (n,) [s]."""
+        return np.arange(first, last) / self.recording.rate_hz
+
     def blocks(self) -> Iterator[tuple[NDArray[np.float64], Span]]:
         """Yield times, shape (n,), and values, shape (n, channels), of one block after another."""
-        for first in range(self.start, self.stop, _BLOCK):
-            last = min(first + _BLOCK, self.stop)
-            span = self.recording.read(self.channels, first, last)
-            yield np.arange(first, last) / self.recording.rate_hz, span
+        for first, last in self.bounds():
+            yield self.times(first, last), self.recording.read(self.channels, first, last)
+
+    def column(self, position: int) -> Iterator[Span]:
+        """Yield one channel, values of shape (n, 1), of one block after another."""
+        for first, last in self.bounds():
+            yield self.recording.read([position], first, last)
 
     def metadata(self) -> dict[str, Any]:
         """Return what stands beside the arrays."""
@@ -88,6 +108,7 @@ class _Stretch:
             "units": {_TIME: "s", **dict(zip(self.keys, self.units, strict=True))},
             "gaps": [(a - self.start, b - a, gap.length_u) for a, b, gap in clipped if a < b],
             "remarks": list(recording.remarks),
+            **self.beside,
         }
 
 
@@ -99,21 +120,24 @@ def export_recording(
     from_s: float | None = None,
     to_s: float | None = None,
     overwrite: bool = False,
+    beside: Mapping[str, Any] | None = None,
 ) -> int:
-    """Write a recording as CSV, NPZ or HDF5.
+    """Write a recording as CSV, NPY, NPZ or HDF5.
 
     Parameters
     ----------
     recording : Recording
         Opened.
     path : str or Path
-        The file to be: its suffix ``.csv``, ``.npz``, ``.h5`` or ``.hdf5`` says the kind.
+        The file to be: its suffix ``.csv``, ``.npy``, ``.npz``, ``.h5`` or ``.hdf5`` says the kind.
     channels : sequence of str, optional
         Names or column numbers, by default all.
     from_s, to_s : float, optional
         The stretch [s].
     overwrite : bool
         Whether an existing file may be replaced.
+    beside : mapping, optional
+        What else goes into the metadata of NPZ and HDF5, in plain JSON types.
 
     Returns
     -------
@@ -130,25 +154,26 @@ def export_recording(
         If there is no such channel or stretch.
     """
     target = Path(path)
-    write = {".csv": _csv, ".npz": _npz, ".h5": _hdf5, ".hdf5": _hdf5}.get(target.suffix.lower())
+    kinds = {".csv": _csv, ".npy": _npy, ".npz": _npz, ".h5": _hdf5, ".hdf5": _hdf5}
+    write = kinds.get(target.suffix.lower())
     if write is None:
-        raise ExportError(f"--out must end in .csv, .npz or .h5, got {str(path)!r}")
+        raise ExportError(f"--out must end in .csv, .npy, .npz or .h5, got {str(path)!r}")
     check_writable(target, overwrite, [recording.path])
     chosen = range(len(recording.channels)) if channels is None else map(recording.find, channels)
-    stretch = _Stretch(recording, tuple(chosen), *recording.span(from_s, to_s))
-    write_whole(target, write(stretch), overwrite=overwrite)
-    return stretch.stop - stretch.start
+    span = recording.span(from_s, to_s)
+    stretch = _Stretch(recording, tuple(chosen), *span, beside or {})
+    with writing_whole(target, overwrite=overwrite) as file:
+        write(stretch, file)
+    return stretch.count
 
 
-def _csv(stretch: _Stretch) -> bytes:
+def _csv(stretch: _Stretch, file: BinaryIO) -> None:
     labels = map(_label, stretch.keys, stretch.units)
-    text = StringIO()
-    text.write(",".join(_quoted(label) for label in [_TIME, *labels]) + "\n")
+    file.write((",".join(_quoted(label) for label in [_TIME, *labels]) + "\n").encode())
     for times, span in stretch.blocks():
         # repr gives the fewest digits that make the same float again.
         columns = [map(repr, column.tolist()) for column in (times, *span.values.T)]
-        text.writelines(f"{','.join(row)}\n" for row in zip(*columns, strict=True))
-    return text.getvalue().encode()
+        file.write("".join(f"{','.join(row)}\n" for row in zip(*columns, strict=True)).encode())
 
 
 def _label(name: str, unit: str) -> str:
@@ -162,39 +187,75 @@ def _quoted(label: str) -> str:
     return '"' + label.replace('"', '""') + '"' if any(mark in label for mark in ',"') else label
 
 
-def _arrays(stretch: _Stretch) -> tuple[dict[str, NDArray[np.float64]], dict[str, Any]]:
-    """Return the columns and the metadata, the over-range values counted while they are read."""
-    parts = list(stretch.blocks())
-    values = np.concatenate([span.values for _, span in parts])
-    arrays = {_TIME: np.concatenate([times for times, _ in parts])}
-    arrays |= {key: np.ascontiguousarray(values[:, k]) for k, key in enumerate(stretch.keys)}
-    return arrays, stretch.metadata() | {"over_range": sum(span.over_range for _, span in parts)}
+def _npy(stretch: _Stretch, file: BinaryIO) -> None:
+    fields = np.dtype(
+        [(name, np.float64) for name in (_TIME, *map(_label, stretch.keys, stretch.units))]
+    )
+    _npy_header(file, fields, stretch.count)
+    for times, span in stretch.blocks():
+        rows = np.empty(times.size, fields)
+        for name, column in zip(fields.names or (), (times, *span.values.T), strict=True):
+            rows[name] = column
+        file.write(rows.tobytes())
 
 
-def _npz(stretch: _Stretch) -> bytes:
-    arrays, metadata = _arrays(stretch)
-    document = np.array(json.dumps(metadata, ensure_ascii=False))
-    memory = BytesIO()
-    # Written member by member: numpy.savez takes no array called "file".
-    with zipfile.ZipFile(memory, "w") as archive:
-        for key, array in [*arrays.items(), ("midfringe", document)]:
-            with archive.open(f"{key}.npy", "w", force_zip64=True) as member:
-                np.lib.format.write_array(member, array, allow_pickle=False)
-    return memory.getvalue()
+def _npy_header(file: Any, dtype: np.dtype[Any], count: int) -> None:  # noqa: ANN401  # a stream
+    described = {
+        "descr": np.lib.format.dtype_to_descr(dtype),
+        "fortran_order": False,
+        "shape": (count,),
+    }
+    np.lib.format.write_array_header_2_0(file, described)
 
 
-def _hdf5(stretch: _Stretch) -> bytes:
+def _npz(stretch: _Stretch, file: BinaryIO) -> None:
+    over_range = 0
+    # Written member by member: numpy.savez takes no array called "file", and whole arrays only.
+    with zipfile.ZipFile(file, "w") as archive:
+        with _member(archive, _TIME, stretch.count) as member:
+            for first, last in stretch.bounds():
+                member.write(stretch.times(first, last).tobytes())
+        for key, position in zip(stretch.keys, stretch.channels, strict=True):
+            with _member(archive, key, stretch.count) as member:
+                for span in stretch.column(position):
+                    member.write(span.values[:, 0].tobytes())
+                    over_range += span.over_range
+        document = np.array(_document(stretch, over_range))
+        with archive.open("midfringe.npy", "w", force_zip64=True) as member:
+            np.lib.format.write_array(member, document, allow_pickle=False)
+
+
+@contextmanager
+def _member(archive: zipfile.ZipFile, key: str, count: int) -> Iterator[Any]:
+    """Open one float64 array of an NPZ file for writing, its header written."""
+    with archive.open(f"{key}.npy", "w", force_zip64=True) as member:
+        _npy_header(member, np.dtype(np.float64), count)
+        yield member
+
+
+def _document(stretch: _Stretch, over_range: int) -> str:
+    return json.dumps(stretch.metadata() | {"over_range": over_range}, ensure_ascii=False)
+
+
+def _hdf5(stretch: _Stretch, file: BinaryIO) -> None:
     h5py = require("h5py", "bench", "writing HDF5")
-    arrays, metadata = _arrays(stretch)
-    memory = BytesIO()
-    with h5py.File(memory, "w", track_order=True) as file:
-        for key, array in arrays.items():
-            dataset = file.create_dataset(key.replace("/", "∕"), data=array)  # "/" makes groups
-            dataset.attrs["unit"] = metadata["units"][key]
-        file.attrs["rate_hz"] = metadata["rate_hz"]
-        file.attrs["columns"] = [key.replace("/", "∕") for key in arrays]
-        file.attrs["gaps"] = np.array(
+    metadata = stretch.metadata()
+    keys = [_TIME, *stretch.keys]
+    names = [key.replace("/", "∕") for key in keys]  # "/" makes groups
+    over_range = 0
+    with h5py.File(file, "w", track_order=True) as kept:
+        for name, key in zip(names, keys, strict=True):
+            made = kept.create_dataset(name, (stretch.count,), np.float64)
+            made.attrs["unit"] = metadata["units"][key]
+        place = 0
+        for times, span in stretch.blocks():
+            for name, column in zip(names, (times, *span.values.T), strict=True):
+                kept[name][place : place + times.size] = column
+            place += times.size
+            over_range += span.over_range
+        kept.attrs["rate_hz"] = metadata["rate_hz"]
+        kept.attrs["columns"] = names
+        kept.attrs["gaps"] = np.array(
             [gap[:2] for gap in metadata["gaps"]], dtype=np.int64
         ).reshape(-1, 2)
-        file.attrs["midfringe"] = json.dumps(metadata, ensure_ascii=False)
-    return memory.getvalue()
+        kept.attrs["midfringe"] = _document(stretch, over_range)

@@ -13,6 +13,7 @@ from metro.whole_file import (
     check_document,
     check_writable,
     write_whole,
+    writing_whole,
 )
 
 __all__ = [
@@ -24,6 +25,7 @@ __all__ = [
     "table",
     "to_json",
     "write_whole",
+    "writing_whole",
 ]
 
 

@@ -3,12 +3,21 @@
 import os
 import secrets
 import shutil
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
 from pathlib import Path
+from typing import BinaryIO, cast
 
 from metro.errors import MetroError
 
-__all__ = ["OutputError", "OutputFailedError", "check_document", "check_writable", "write_whole"]
+__all__ = [
+    "OutputError",
+    "OutputFailedError",
+    "check_document",
+    "check_writable",
+    "write_whole",
+    "writing_whole",
+]
 
 _NO_DOCUMENTS = (".mfr", ".toml", ".csv", ".npz", ".npy", ".h5", ".hdf5")
 """Suffixes of recordings and bench files: a JSON document under one is a slip of the hand."""
@@ -142,15 +151,42 @@ def write_whole(
     OutputError
         If it exists or cannot be written; what was there before is then still there.
     """
-    path = check_writable(path, overwrite).resolve()  # a link stays, its target is replaced
     content = data.encode() if isinstance(data, str) else data
+    with writing_whole(path, overwrite=overwrite) as file:
+        file.write(content)
+
+
+@contextmanager
+def writing_whole(path: str | os.PathLike[str], *, overwrite: bool = False) -> Iterator[BinaryIO]:
+    """Open a file to be written piece by piece, there whole at the end or not at all.
+
+    Parameters
+    ----------
+    path : path
+        The file to be; a device such as ``/dev/null`` is written to directly.
+    overwrite : bool
+        Whether an existing file may be replaced.
+
+    Yields
+    ------
+    file
+        Binary; what is not a device can be read and sought in as well.
+
+    Raises
+    ------
+    OutputError
+        If it exists or cannot be written; what was there before is then still there.
+    """
+    path = check_writable(path, overwrite).resolve()  # a link stays, its target is replaced
     if _is_device(path):
-        _fill(path, path, content, "wb")
+        with _filling(path, path, "wb") as file:
+            yield file
         return
     # In the same directory, so that the final rename stays within one file system.
     temporary = path.with_name(f".midfringe-{os.getpid()}-{secrets.token_hex(4)}.part")
     try:
-        _fill(temporary, path, content, "xb")
+        with _filling(temporary, path, "x+b") as file:
+            yield file
         _put_in_place(temporary, path, overwrite)
     finally:
         temporary.unlink(missing_ok=True)
@@ -160,16 +196,17 @@ def _is_device(path: Path) -> bool:
     return path.exists() and not path.is_file()
 
 
-def _fill(target: Path, named: Path, content: bytes, mode: str) -> None:
+@contextmanager
+def _filling(target: Path, named: Path, mode: str) -> Iterator[BinaryIO]:
     try:
-        file = target.open(mode)
+        file = cast("BinaryIO", target.open(mode))
     except OSError as error:
         raise OutputError(f"cannot write {named}: {_reason(error)}") from None
     try:
         with file:
-            file.write(content)
+            yield file
             file.flush()
-            if mode == "xb":
+            if mode != "wb":
                 os.fsync(file.fileno())
     except OSError as error:
         raise OutputFailedError(

@@ -130,6 +130,25 @@ def test_hdf5_opens_in_h5py_alone(tmp_path):
         assert file.attrs["gaps"].tolist() == [[1000, 234]]
 
 
+def test_npy_holds_records_with_the_times(tmp_path):
+    made, path = Made(), tmp_path / "x.npy"
+    assert export_recording(made, path) == N
+    rows = np.load(path)
+    assert rows.dtype.names == ("time_s", "photodiode [V]", "drive")
+    np.testing.assert_array_equal(rows["photodiode [V]"], made.values[:, 0])
+    back = open_recording(path)
+    assert back.rate_hz == pytest.approx(RATE_HZ, rel=1e-9)
+    assert [(c.name, c.unit) for c in back.channels] == [("photodiode", "V"), ("drive", "1")]
+    np.testing.assert_array_equal(back.trace("drive").values, made.values[:, 1])
+
+
+def test_what_stands_beside_is_kept(tmp_path):
+    path = tmp_path / "x.npz"
+    export_recording(Made(), path, beside={"uncertainty": {"systematic": 0.01}})
+    kept = json.loads(str(np.load(path)["midfringe"]))
+    assert kept["uncertainty"] == {"systematic": 0.01}
+
+
 def test_files_that_cannot_be_written(tmp_path):
     made, path = Made(), tmp_path / "x.csv"
     path.write_text("precious")
@@ -137,7 +156,9 @@ def test_files_that_cannot_be_written(tmp_path):
         export_recording(made, path)
     assert path.read_text() == "precious"
     assert export_recording(made, path, to_s=0.001, overwrite=True) == 49
-    with pytest.raises(BridgeError, match=r"^--out must end in .csv, .npz or .h5, got '.*x.wav'$"):
+    with pytest.raises(
+        BridgeError, match=r"^--out must end in .csv, .npy, .npz or .h5, got '.*x.wav'$"
+    ):
         export_recording(made, tmp_path / "x.wav")
 
 

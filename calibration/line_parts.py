@@ -32,9 +32,17 @@ def plan_lines(
 
     Parameters
     ----------
-    samples, rate, frequencies, drive, free
-        As for :func:`calibration.fit_lines`. The recording itself, or one of the same kind: the
-        first minutes of a long one, say.
+    samples : Quantity or ndarray, shape (n,)
+        The recording itself, or one of the same kind: the first minutes of a long one, say. NaN
+        where samples are missing; bare numbers have the unit "1".
+    rate : Quantity or str
+        Sampling rate, such as ``"4 kHz"``.
+    frequencies : sequence of Quantity or str
+        The lines, such as ``["31.7 Hz", "87.1 Hz"]``.
+    drive : Quantity or ndarray, shape (n,), optional
+        The drive, sampled together with ``samples``.
+    free : bool
+        Fit the frequency of each line too.
     start_index : int
         Number of ``samples[0]`` counted from the recording's first sample.
 

@@ -20,13 +20,17 @@ _FRAMES = 2000
 _AMPLITUDE = 1000.0  # counts
 
 
-def write_recording(path, size, seed=1):
-    """Write an int16 recording of one channel, of about ``size`` bytes; return its samples.
+def write_recording(path, size, seed=1, drive=False):
+    """Write an int16 recording of about ``size`` bytes; return its samples.
+
+    It has the channel "pd", and with ``drive`` another that has half of the lines and no noise of its own.
 
     The noise comes again after some hundred thousand samples, shifted by 17 samples each time and
     with a new sign, so that it stays white enough.
     """
-    announced = Announcement(1, RATE_HZ, "int16", _SLOTS, [ChannelInfo("pd", "V", VOLTS_A_COUNT)])
+    names = ("pd", "drive") if drive else ("pd",)
+    channels = [ChannelInfo(name, "V", VOLTS_A_COUNT) for name in names]
+    announced = Announcement(1, RATE_HZ, "int16", _SLOTS, channels)
     header = Header(announced)
     step = _SLOTS * _FRAMES
     t = np.arange(step) / RATE_HZ
@@ -40,7 +44,7 @@ def write_recording(path, size, seed=1):
             shift = 17 * int(rng.integers(64))
             counts = lines + rng.choice([-1.0, 1.0]) * noise[shift : shift + step]
             rows = pack_frames(
-                np.rint(counts).astype(np.int16)[:, None],
+                np.rint(np.stack([counts, 0.5 * lines][: len(names)], axis=1)).astype(np.int16),
                 slots=_SLOTS, first_index=k * step, first_sequence=k * _FRAMES,
                 stream=1, clock=0, flags=0, format="int16",
             )  # fmt: skip

@@ -40,7 +40,7 @@ def _child(command, path):
     )
     begin = time.perf_counter()
     with contextlib.redirect_stdout(io.StringIO()):
-        code = run([command, path, *lines, "--json", "--quiet"])
+        code = run([command, path, "--channel", "pd", *lines, "--json", "--quiet"])
     took = time.perf_counter() - begin
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
     print(json.dumps({"code": code, "seconds": took, "peak_mb": peak}))
@@ -71,6 +71,7 @@ def _sum_rate():
 def main():
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("--bytes", type=float, default=1e9, help="of the largest recording")
+    parser.add_argument("--drive", action="store_true", help="two channels, lines with their ratio")
     parser.add_argument("--folder", help="where there is room for it")
     parser.add_argument("--child", nargs=2, metavar=("COMMAND", "FILE"), help=argparse.SUPPRESS)
     arguments = parser.parse_args()
@@ -83,7 +84,7 @@ def main():
     for part in (1e-3, 1e-2, 1e-1, 1.0):
         with tempfile.TemporaryDirectory(dir=arguments.folder) as folder:
             path = Path(folder, "big.mfr")
-            samples = write_recording(path, part * arguments.bytes)
+            samples = write_recording(path, part * arguments.bytes, drive=arguments.drive)
             for command in ("lines", "spectrum"):
                 found = min((measured(command, path) for _ in range(2)), key=lambda f: f["seconds"])
                 too_much += found["peak_mb"] > LIMIT_MB or found["code"] != 0

@@ -64,6 +64,19 @@ def test_lost_records_are_gaps(path, tmp_path):
         assert abs(line.phasor) == pytest.approx(1000 * VOLTS_A_COUNT, rel=3e-3)
 
 
+def test_response_and_drive_together(tmp_path, monkeypatch):
+    monkeypatch.setattr(calibration.line_source, "_CHUNK_SAMPLES", 70_000)
+    path = tmp_path / "two.mfr"
+    write_recording(path, 4e6, drive=True)
+    recording = open_mfr(path)
+    fit = read_recording_lines(recording, ["pd", "drive"], LINES_HZ)
+    whole = read_lines(recording.trace("pd"), recording.trace("drive"), LINES_HZ)
+    assert _numbers(fit) == pytest.approx(_numbers(whole), rel=1e-11)
+    for line, other in zip(fit.lines, whole.lines, strict=True):
+        assert line.ratio.phasor == pytest.approx(2, rel=3e-3)
+        assert line.ratio.phasor == pytest.approx(other.ratio.phasor, rel=1e-11)
+
+
 def test_every_sample_comes_once_and_in_order(path):
     recording = open_mfr(path)
     source = RecordingSource(recording, [0], 0.5, 5.0)

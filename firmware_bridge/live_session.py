@@ -121,6 +121,9 @@ class LiveSession:
         else:
             process.terminate()
             process.join(_CLOSE_S)
+            if process.exitcode is None:  # else the end of this program would wait for it
+                process.kill()
+                process.join(_CLOSE_S)
         connection.close()
 
     def __enter__(self) -> Self:

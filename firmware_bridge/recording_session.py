@@ -297,7 +297,7 @@ class RecordingSession:
             self._queue.close()
             try:
                 self._intake.close(is_as_asked=self._failure is None)
-            except BridgeError as error:
+            except BaseException as error:  # noqa: BLE001  # else the end would be waited for forever
                 self._failure = self._failure or error
             self._written.set()
 

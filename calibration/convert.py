@@ -1,20 +1,21 @@
 """A recording run backwards through a calibration: volts to phase, displacement or strain.
 
 Every sample is inverted on a named slope of the fringe with the calibration's extremes; gaps stay
-gaps. The uncertainty comes as a systematic part, common to all samples, and a random one.
+gaps. Filters may undo what the readout or a servo does against frequency. The uncertainty comes as a
+systematic part, common to all samples, and a random one. All is done block by block, as it is read.
 """
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from math import hypot, sqrt
+from math import hypot
 
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.conversion_filter import CORNERS, FilterStage
+from calibration.conversion_tally import ConversionTally, relative_us
 from calibration.errors import CalibrationError
-from calibration.extremes import Extremes
 from calibration.record import Calibration
-from calibration.term import ADC_REFERENCE, FRINGE_EXTREMES, POWER_DRIFT, RULER
 from calibration.working_point import edge_reasons, invert_fringe
 from firmware_bridge.trace import Channel, Recording, Span
 from metro.kernel.phase import phase_per_metre
@@ -76,6 +77,8 @@ class ConvertedRecording(Recording):
         ``"displacement"``, ``"strain"`` or ``"phase"``.
     slope : str
         On which side of the fringe the recording lies: ``"rising"`` or ``"falling"``.
+    stages : sequence of FilterStage
+        Applied to the converted samples, one after the other.
 
     Raises
     ------
@@ -90,11 +93,14 @@ class ConvertedRecording(Recording):
         calibration: Calibration,
         quantity: str = "displacement",
         slope: str = "rising",
+        stages: Sequence[FilterStage] = (),
     ) -> None:
         if quantity not in QUANTITIES:
             names = ", ".join(QUANTITIES)
             raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
         self.quantity, self.slope, self.calibration = quantity, slope, calibration
+        self.stages = tuple(stages)
+        self._reach = sum(stage.filter.reach for stage in self.stages)
         self._source, self._position = source, source.find(channel)
         self._per_radian = per_radian(calibration, quantity)
         super().__init__(
@@ -112,10 +118,24 @@ class ConvertedRecording(Recording):
 
     def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
         """Return converted samples; see `Recording.read`."""
-        span = self._source.read([self._position], start, stop)
-        phase_rad = invert_fringe(span.values[:, 0], self.calibration.extremes, self.slope)
-        values = phase_rad.phase_rad * self._per_radian
-        return Span(np.repeat(values[:, None], len(channels), axis=1), span.over_range)
+        first, last = max(0, start - self._reach), min(self.length, stop + self._reach)
+        span = self._source.read([self._position], first, last)
+        values = self._converted(span.values[:, 0])
+        if self._reach:
+            # beyond the ends nothing was recorded, and what a filter makes of it is not known
+            before, after = self._reach - (start - first), self._reach - (last - stop)
+            values = np.pad(values, (before, after), constant_values=np.nan)
+            for stage in self.stages:
+                values = stage.filter.apply(values)
+            over_range = self._source.read([self._position], start, stop).over_range
+        else:
+            over_range = span.over_range
+        return Span(np.repeat(values[:, None], len(channels), axis=1), over_range)
+
+    def _converted(self, values: FloatArray) -> FloatArray:
+        """Return samples of the source in the quantity's unit, shape (n,), before any filter."""
+        phase = invert_fringe(values, self.calibration.extremes, self.slope)
+        return np.asarray(phase.phase_rad * self._per_radian)
 
     def judge(self, from_s: float | None = None, to_s: float | None = None) -> Conversion:
         """Return what the conversion is worth, from one pass over the recording or a stretch of it.
@@ -131,54 +151,30 @@ class ConvertedRecording(Recording):
             Uncertainty, share converted, reasons and cautions.
         """
         start, stop = self.span(from_s, to_s)
-        tally = _Tally()
+        tally = ConversionTally()
         for first in range(start, stop, _BLOCK):
             span = self._source.read([self._position], first, min(first + _BLOCK, stop))
             tally.add(span.values[:, 0], self.calibration.extremes, self.slope)
-        noise_rad = sqrt(tally.square / tally.differences) if tally.differences else float("nan")
+            if self.stages:
+                out = self.read([0], first, min(first + _BLOCK, stop)).values[:, 0]
+                tally.count_filtered(out)
+        noise = tally.noise(abs(self._per_radian))
         reasons = edge_reasons(1.0 - tally.kept / tally.present) if tally.present else [_EMPTY]
-        scale_u, drift_u = _relative_us(self.calibration, self.quantity, tally)
+        scale_u, drift_u = relative_us(self.calibration, self.quantity, tally)
         return Conversion(
             quantity=self.quantity,
             unit=QUANTITIES[self.quantity],
-            scale_u=scale_u,
+            scale_u=hypot(scale_u, *(stage.relative_u for stage in self.stages)),
             drift_u=drift_u,
-            noise=noise_rad * abs(self._per_radian),
-            used_fraction=tally.converted / (stop - start),
+            noise=noise,
+            used_fraction=tally.used / (stop - start),
             reasons=[*reasons, *self.calibration.reasons],
-            cautions=_cautions(self.calibration, self.slope),
+            cautions=_cautions(self.calibration, self.slope, self.stages),
         )
 
 
 _BLOCK = 1 << 18
 _EMPTY = "the recording holds no sample"
-
-
-@dataclass
-class _Tally:
-    """Counts over the blocks of a recording."""
-
-    present: int = 0
-    kept: int = 0
-    converted: int = 0
-    differences: int = 0
-    square: float = 0.0
-    inverse_sin2: float = 0.0
-    cos_over_sin2: float = 0.0
-
-    def add(self, volts: FloatArray, extremes: Extremes, slope: str) -> None:
-        phase = invert_fringe(volts, extremes, slope)
-        self.present += phase.present
-        self.kept += phase.kept
-        self.converted += int(np.count_nonzero(np.isfinite(phase.phase_rad)))
-        self.inverse_sin2 += phase.kept * phase.means.inverse_sin2
-        self.cos_over_sin2 += phase.kept * phase.means.cos_over_sin2
-        # fourth differences leave motion and lines well below half the rate alone; white noise of
-        # rms σ gives them (1 + 16 + 36 + 16 + 1)σ² = 70σ²
-        fourth = np.diff(phase.phase_rad, 4)
-        fourth = fourth[np.isfinite(fourth)]
-        self.differences += fourth.size
-        self.square += float(np.sum(fourth**2)) / 70.0
 
 
 def per_radian(calibration: Calibration, quantity: str) -> float:
@@ -217,33 +213,15 @@ def per_radian(calibration: Calibration, quantity: str) -> float:
     return 1.0 / per_metre / float(chain["arm_length"].magnitude)
 
 
-def _relative_us(calibration: Calibration, quantity: str, tally: _Tally) -> tuple[float, float]:
-    """Return the scale's relative u and that of the recording's own drift, at its working points."""
-    extremes, slope = calibration.extremes, float(calibration.readout_slope.magnitude)
-    steep, lean = (v / max(1, tally.kept) for v in (tally.inverse_sin2, tally.cos_over_sin2))
-    rows = {c.name: c for c in calibration.readout_budget.contributions}
-    drifts = [row for name, row in rows.items() if name.startswith(POWER_DRIFT)]
-    left_out = {ADC_REFERENCE, FRINGE_EXTREMES, *(row.name for row in drifts)}
-    left_out |= set(RULER) if quantity == "phase" else set()
-    effects = [row.effect / slope for name, row in rows.items() if name not in left_out]
-    effects.append(extremes.u_of(steep / extremes.swing_v, lean / extremes.swing_v))
-    if quantity == "strain":
-        effects.append(float(calibration.chain["arm_length"].relative_u or 0.0))
-    dark_v = 0.0 if calibration.dark is None else float(calibration.dark.magnitude)
-    moved = steep + (extremes.mid_v - dark_v) / extremes.swing_v * lean
-    drift_u = abs(moved) * sqrt(sum(row.u**2 for row in drifts))
-    if extremes.scans:
-        effects.append(drift_u / sqrt(extremes.scans))
-    return sqrt(sum(effect**2 for effect in effects)), drift_u
-
-
-def _cautions(calibration: Calibration, slope: str) -> list[str]:
+def _cautions(calibration: Calibration, slope: str, stages: Sequence[FilterStage]) -> list[str]:
     cautions = [f"the recording is taken to lie on the {slope} slope"]
-    for name in ("amplifier corner", "antialias corner"):
-        corner = calibration.chain.get(name.replace(" ", "_"))
-        if corner is None:
-            continue
-        cautions.append(
-            f"the {name} at {float(corner.magnitude):g} Hz is not undone: fast motion reads small"
-        )
+    cautions += [stage.text for stage in stages]
+    undone = any(stage.undoes_readout for stage in stages)
+    for name in () if undone else CORNERS:
+        corner = calibration.chain.get(name)
+        if corner is not None:
+            cautions.append(
+                f"the {name.replace('_', ' ')} at {float(corner.magnitude):g} Hz is not undone: fast "
+                "motion reads small (--undo-readout)"
+            )
     return [*cautions, *calibration.cautions]

@@ -155,7 +155,11 @@ class ActuatorResponse:
         ResponseRangeError
             If a frequency lies outside the lines.
         """
-        at_hz = self._checked(frequency_hz)
+        return self.extrapolated(self._checked(frequency_hz))
+
+    def extrapolated(self, frequency_hz: FloatArray) -> ComplexArray:
+        """Return the model's response anywhere [m/V], shape (n,): without any promise beyond the lines."""
+        at_hz = np.asarray(frequency_hz, dtype=np.float64)
         return np.asarray(self.sign * np.exp(self._log(self.shape, self.values, at_hz)))
 
     def u_at(self, frequency_hz: float | FloatArray) -> tuple[FloatArray, FloatArray]:

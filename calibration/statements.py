@@ -6,6 +6,7 @@ from calibration.open_loop import OpenLoop
 from calibration.realignment import realignment_statement
 from calibration.record import Calibration
 from metro.bench import Bench
+from metro.drive import terminal_factor
 from metro.measured import Measured
 
 __all__ = ["assumptions", "chain_values", "conditions"]
@@ -27,7 +28,9 @@ def chain_values(bench: Bench) -> dict[str, Measured]:
     """Return wavelength, index and whatever else of the chain is known."""
     known = {name: bench.get(key) for name, key in _CHAIN.items()}
     chain = {name: value for name, value in known.items() if value is not None}
-    return {**chain, "index": bench.index()}
+    # volts at the actuator's terminals per volt of the recorded drive; its u is in the budgets
+    factor = Measured.of(terminal_factor(bench, recorded=True), "1")
+    return {**chain, "index": bench.index(), "drive_factor": factor}
 
 
 def conditions(bench: Bench) -> dict[str, Measured]:

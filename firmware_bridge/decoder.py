@@ -4,14 +4,14 @@ No input or output happens here, and no content raises.
 """
 
 import struct
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.cobs import encode
-from firmware_bridge.envelope import Discarded, Unwrapper
+from firmware_bridge.envelope import Discarded, Unwrapper, seal
 from firmware_bridge.frame import HEADER, OVER_RANGE
 from firmware_bridge.message import (
     WIRE_VERSION,
@@ -39,11 +39,14 @@ __all__ = [
     "Reply",
     "Samples",
     "parse_samples",
+    "renamed",
 ]
 
 _HEADER = struct.Struct("<BBHIIBBHQQHH")
 _STREAMS_KEPT = 4
 _RATES_KEPT = 64
+_AHEAD = 64  # frames between the first two that come through after a new beginning
+_OTHER_ID = 0x9E3779B9  # odd: steps through every id
 _BESIDE = (MessageType.NOTE, MessageType.COMMAND, MessageType.REPLY, MessageType.LOCK_IN)
 
 
@@ -101,6 +104,8 @@ class Decoder:
         self._orders: dict[int, StreamOrder[Samples]] = {}
         self._current: int | None = None
         self._rates: dict[int, float] = {}
+        self._names: dict[int, int] = {}  # stream as sent: by which id it goes since it began again
+        self._stray: tuple[Samples, bytes] | None = None
 
     def feed(self, data: bytes) -> list[Event]:
         """Return the events that ``data`` completes.
@@ -127,6 +132,77 @@ class Decoder:
         """
         return self._opened(self._unwrapper.close()) + self.flush()
 
+    def admit(self, frame: Samples, message: bytes) -> list[tuple[Samples, bytes]]:
+        """Return the frames to go on with, under another stream id where their board began again.
+
+        Parameters
+        ----------
+        frame : Samples
+            The message, parsed.
+        message : bytes
+            Content and CRC.
+
+        Returns
+        -------
+        list of (Samples, bytes)
+            In the order of arrival; empty where it takes the next frame to tell.
+        """
+        before = self.strays()
+        frame, message = _under(self.name_of(frame.stream), frame, message)
+        order = self._orders.get(frame.stream)
+        if order is None or not order.is_back(frame.index, len(frame.data), message):
+            return [*before, (frame, message)]
+        if not before or not _follows(frame, before[0][0]):
+            self._stray = (frame, message)
+            return before
+        name = self.rename(frame.stream)
+        return [_under(name, *each) for each in (*before, (frame, message))]
+
+    def strays(self) -> list[tuple[Samples, bytes]]:
+        """Return what `admit` still keeps for the next frame, which will not come.
+
+        Returns
+        -------
+        list of (Samples, bytes)
+            At most one.
+        """
+        stray, self._stray = self._stray, None
+        return [] if stray is None else [stray]
+
+    def rename(self, stream: int) -> int:
+        """Have a stream that begins again go by a new id; return it.
+
+        Parameters
+        ----------
+        stream : int
+            The id by which it went.
+
+        Returns
+        -------
+        int
+            One that no stream has.
+        """
+        name = stream
+        while name in self._orders or name in self._names or name in self._rates:
+            name = (name + _OTHER_ID) % 2**32
+        sent = self.sent_as(stream)
+        self._rate(name, self._rates.get(sent, 0.0))
+        self._names[sent] = name
+        return name
+
+    def name_of(self, stream: int) -> int:
+        """Return the id by which a stream goes: as it is sent, unless it began again."""
+        return self._names.get(stream, stream)
+
+    def sent_as(self, stream: int) -> int:
+        """Return the id under which the board sends a stream."""
+        return next((sent for sent, name in self._names.items() if name == stream), stream)
+
+    def _rate(self, stream: int, rate_hz: float) -> None:
+        self._rates[stream] = rate_hz
+        while len(self._rates) > _RATES_KEPT:
+            del self._rates[next(iter(self._rates))]
+
     def flush(self) -> list[Event]:
         """Return what was still held, with the gaps before it: nothing missing will come any more.
 
@@ -135,7 +211,8 @@ class Decoder:
         list of Samples or Gap
             In order.
         """
-        return [event for order in self._orders.values() for event in order.flush()]
+        events = [event for each in self.strays() for event in self.place(*each)]
+        return events + [event for order in self._orders.values() for event in order.flush()]
 
     def _opened(self, pieces: list[bytes | Discarded]) -> list[Event]:
         events: list[Event] = []
@@ -164,12 +241,11 @@ class Decoder:
             return [_refused(message, f"wire version {version}; this program knows {WIRE_VERSION}")]
         try:
             if kind == MessageType.SAMPLES:
-                return self.place(parse_samples(message), message)
+                frames = self.admit(parse_samples(message), message)
+                return [event for each in frames for event in self.place(*each)]
             if kind == MessageType.ANNOUNCEMENT:
                 announcement = parse_announcement(message)
-                self._rates[announcement.stream] = announcement.rate_hz
-                if len(self._rates) > _RATES_KEPT:
-                    del self._rates[next(iter(self._rates))]
+                self._rate(announcement.stream, announcement.rate_hz)
                 return [announcement]
             if kind in _BESIDE:
                 return [parse_message(message)]
@@ -248,6 +324,36 @@ def parse_samples(message: bytes) -> Samples:
     end = _HEADER.size + filled * channels * width
     data = unpack_samples(message[_HEADER.size : end], channels, width)
     return Samples(index, data, bool(flags & OVER_RANGE), clock, stream, sequence, flags)
+
+
+def renamed(message: bytes, stream: int) -> bytes:
+    """Return a sealed samples frame or lock-in result under another stream id.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC.
+    stream : int
+        Stream id.
+
+    Returns
+    -------
+    bytes
+        Sealed anew.
+    """
+    return seal(message[:4] + stream.to_bytes(4, "little") + message[8:-4])
+
+
+def _under(name: int, frame: Samples, message: bytes) -> tuple[Samples, bytes]:
+    if name == frame.stream:
+        return frame, message
+    return replace(frame, stream=name), renamed(message, name)
+
+
+def _follows(frame: Samples, before: Samples) -> bool:
+    """Return whether two frames that lie behind are the beginning of one new counting."""
+    ahead = frame.index - before.index
+    return frame.stream == before.stream and 0 < ahead <= _AHEAD * max(1, len(before.data))
 
 
 def _refused(message: bytes, reason: str) -> Discarded:

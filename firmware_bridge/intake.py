@@ -3,11 +3,12 @@
 import os
 from collections import Counter
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.cobs import encode
-from firmware_bridge.decoder import Decoder, Event, Samples, parse_samples
+from firmware_bridge.decoder import Decoder, Event, Samples, parse_samples, renamed
 from firmware_bridge.envelope import Discarded, seal
 from firmware_bridge.frame import HEADER
 from firmware_bridge.host_note import End, Join, Remark, Stamp
@@ -240,6 +241,8 @@ class Intake:
             Whether it ends by its duration or size, or because someone ended it; else the port or
             the file failed, and the recording holds no end.
         """
+        for each in self._decoder.strays():
+            self._admitted(*each)
         for event in self._decoder.close():
             if isinstance(event, Gap):
                 self.gaps += bool(event.length)
@@ -284,10 +287,14 @@ class Intake:
         if frame.index + len(frame.data) > _INDEX_MAX:
             self._discard_message(message, f"an index beyond any board's ({frame.index})")
             return
-        announcement = self._announced.get(frame.stream)
-        if announcement is None:
+        if frame.stream not in self._announced:
             self._wait_for_announcement(message)
             return
+        for each in self._decoder.admit(frame, message):
+            self._admitted(*each)
+
+    def _admitted(self, frame: Samples, message: bytes) -> None:
+        announcement = self._announcement_of(frame.stream)
         if frame.stream in self._closed_streams or not _fits(message, announcement):
             self._discard_message(message, "a frame unlike the announcement of this recording")
             return
@@ -295,6 +302,16 @@ class Intake:
             self._begin(announcement, frame.stream, frame.index, len(frame.data))
         if not self.is_complete:
             self._keep(message, frame)
+
+    def _announcement_of(self, stream: int) -> Announcement:
+        """Return the announcement of a stream that has one, also where it began again."""
+        if stream not in self._announced:
+            sent = self._decoder.sent_as(stream)
+            self._announced[stream] = replace(self._announced[sent], stream=stream)
+            self.remark(
+                f"the board began again under its stream id {sent}; it goes by {stream} here"
+            )
+        return self._announced[stream]
 
     def _wait_for_announcement(self, message: bytes) -> None:
         self._pending.append(message)
@@ -312,10 +329,11 @@ class Intake:
         if result.index + result.length > _INDEX_MAX:
             self._discard_message(message, f"an index beyond any board's ({result.index})")
             return
-        announcement = self._announced.get(result.stream)
-        if announcement is None:
+        if result.stream not in self._announced:
             self._wait_for_announcement(message)
             return
+        result, message = self._renamed(result, message)
+        announcement = self._announcement_of(result.stream)
         if result.stream in self._closed_streams:
             return
         if result.stream not in self._grid:
@@ -332,6 +350,16 @@ class Intake:
         self._last_ns = self._now_ns
         if self._last is None:
             self._advance(result)
+
+    def _renamed(self, result: LockIn, message: bytes) -> tuple[LockIn, bytes]:
+        """Return a result under the id by which its stream goes; results never come late."""
+        name = self._decoder.name_of(result.stream)
+        mark, end = self._mark, result.index + result.length
+        if self._last is None and mark is not None and mark[0] == name and end <= mark[1]:
+            name = self._decoder.rename(name)
+        if name == result.stream:
+            return result, message
+        return replace(result, stream=name), renamed(message, name)
 
     def _advance(self, result: LockIn) -> None:
         """Count the samples that a result stands for, of a board that sends nothing else."""

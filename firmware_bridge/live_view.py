@@ -40,7 +40,7 @@ class LiveView:
     def is_announced(self) -> bool:
         """Whether what comes now can be shown."""
         return self.announcement is not None and (
-            self.stream is None or self.stream in self._announced
+            self.stream is None or self._decoder.sent_as(self.stream) in self._announced
         )
 
     @property
@@ -91,7 +91,7 @@ class LiveView:
                 self._reached = max(self._reached, start + event.length)
         elif isinstance(event, Samples):
             self.stream = event.stream
-            announcement = self._announced.get(event.stream)
+            announcement = self._announced.get(self._decoder.sent_as(event.stream))
             if announcement is not None:
                 self._samples(event, announcement, monotonic_ns, unix_ns)
 

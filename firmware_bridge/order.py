@@ -71,6 +71,33 @@ class StreamOrder(Generic[T]):
             return self._hold(index, length, frame, message)
         return self._late(index, length, frame, message)
 
+    def is_back(self, index: int, length: int, message: bytes) -> bool:
+        """Tell whether a frame cannot be one of this stream again: its board may have begun anew.
+
+        Parameters
+        ----------
+        index, length : int
+            First sample and number of samples.
+        message : bytes
+            The frame with its CRC.
+
+        Returns
+        -------
+        bool
+            True where the frame lies behind and is neither known by its CRC nor just late.
+        """
+        if not self._begun or index >= self.expected or not length:
+            return False
+        known = self._checks.get(index)
+        if known is not None:
+            return known != message[-4:]
+        is_far = self.expected - index > _CHECKS_KEPT * length
+        return is_far or not self._is_open(index, length)
+
+    def _is_open(self, index: int, length: int) -> bool:
+        place = bisect_right(self._starts, index) - 1
+        return place >= 0 and index + length <= self._ends[place]
+
     def flush(self) -> list[T | Gap | Discarded]:
         """Give out everything held, with the gaps between.
 
@@ -119,8 +146,8 @@ class StreamOrder(Generic[T]):
         return [*out, frame]
 
     def _late(self, index: int, length: int, frame: T, message: bytes) -> list[T | Gap | Discarded]:
-        place = bisect_right(self._starts, index) - 1
-        if place >= 0 and index + length <= self._ends[place]:
+        if self._is_open(index, length):
+            place = bisect_right(self._starts, index) - 1
             start, end = self._starts[place], self._ends[place]
             left = [(a, b) for a, b in ((start, index), (index + length, end)) if a < b]
             self._starts[place : place + 1] = [a for a, _ in left]

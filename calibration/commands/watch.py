@@ -106,10 +106,10 @@ def watch(
 
     for module in ("tornado", "bokeh"):
         require(module, "live", "watch")
-    from calibration.desk.watch import serve
-    from calibration.desk.watch_guard import guarded
-    from calibration.desk.watch_setup import WatchSetup
-    from calibration.desk.watch_source import Choice, opened_source
+    from calibration.desk.watch.guard import guarded
+    from calibration.desk.watch.opening import Choice, opened_source
+    from calibration.desk.watch.serving import serve
+    from calibration.desk.watch.setup import WatchSetup
     from calibration.record import load
     from calibration.rehearsal_folder import rehearsal_bench
     from metro.errors import MetroError

@@ -15,12 +15,12 @@ import time
 from pathlib import Path
 
 import numpy as np
+from live_page import Program
 from long_runs.lines_board import LINES_HZ, counts
 from tornado.httpclient import HTTPRequest
 from tornado.websocket import websocket_connect
-from watch_browser import Program
 
-from calibration.desk.watch_wire import unpack
+from calibration.desk.watch.wire import unpack
 from firmware_bridge.opening import open_recording
 
 __all__ = ["GROWTH_MB", "LATENCY_S", "watch_under_load"]

@@ -9,12 +9,12 @@ import pytest
 from tornado.httpclient import AsyncHTTPClient, HTTPRequest
 from tornado.websocket import websocket_connect
 
-from calibration.desk.watch_guard import Guard
-from calibration.desk.watch_orders import Orders
-from calibration.desk.watch_server import WatchServer
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_state import WatchState
-from calibration.desk.watch_wire import unpack
+from calibration.desk.watch.guard import Guard
+from calibration.desk.watch.orders import Orders
+from calibration.desk.watch.server import WatchServer
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.state import WatchState
+from calibration.desk.watch.wire import unpack
 from calibration.errors import CalibrationError
 from firmware_bridge.announcement import ChannelInfo
 from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveReply, LiveState

@@ -7,15 +7,15 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from calibration.desk.watch_replay import Replay
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_simulated import simulated_board
+from calibration.desk.watch.replay import Replay
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.simulated import simulated_board
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_events import LiveEvent, LiveState
 from firmware_bridge.live_session import LiveSession
 
 if TYPE_CHECKING:
-    from calibration.desk.watch_orders import Source
+    from calibration.desk.watch.source import Source
 
 __all__ = ["Choice", "opened_source"]
 

@@ -4,8 +4,11 @@ import numpy as np
 import pytest
 from sessions import built_in_bench
 
-from calibration.desk.watch_expected import expected_fringe, expected_noise, known_dark
-from calibration.desk.watch_fringe import Fringe, FringeFinder, found_fringe, resting
+from calibration.desk.watch.fringe import Fringe, resting
+from calibration.desk.watch.fringe_finder import FringeFinder, found_fringe
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.stated_fringe import expected_fringe, known_dark
+from firmware_bridge.announcement import ChannelInfo
 from metro.bench import Bench
 from metro.sensitivity import displacement_noise
 
@@ -112,14 +115,20 @@ def test_the_bench_says_its_fringe():
 
 def test_the_expected_noise_is_that_of_the_bench_as_the_converter_sees_it():
     bench = built_in_bench()
-    noise = expected_noise(bench, 4000.0)
-    assert noise.sources == ("shot", "johnson", "adc", "motion of the arms")
+    channel = ChannelInfo("photodiode", "V")
+    noise = WatchSetup("test", bench).noise(4000.0, channel, np.array([100.0, 500.0]))
+    assert set(noise.sources) == {"shot", "johnson", "adc", "motion"}
     chain = bench.chain()
     # At 500 Hz: light, electronics and the stated motion, through slope, amplifier (5 kHz) and
     # anti-alias filter (1.5 kHz); aperture and delay take little.
     total_m = np.hypot(displacement_noise(chain, 500.0).total, 6e-12 * 233.9 / 500.0)
     slope = chain.working_point().slope_v_m
     through = 1 / np.hypot(1, 0.1) / np.hypot(1, 1 / 3)
-    assert noise.at(np.array([500.0]))[0] == pytest.approx(total_m * slope * through, rel=0.15)
-    assert np.isnan(noise.at(np.array([1e-3, 1e5]))).all()
-    assert expected_noise(Bench(), 4000.0) is None
+    assert noise.density[1] == pytest.approx(total_m * slope * through, rel=0.15)
+
+
+def test_where_nothing_is_known_no_noise_is_expected():
+    frequency_hz = np.array([1.0, 10.0])
+    volts, plain = ChannelInfo("photodiode", "V", 1e-3), ChannelInfo("photodiode", "1")
+    assert WatchSetup("test", Bench()).noise(4000.0, volts, frequency_hz) is None
+    assert WatchSetup("test", built_in_bench()).noise(4000.0, plain, frequency_hz) is None

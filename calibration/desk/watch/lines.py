@@ -2,111 +2,23 @@
 
 from collections import deque
 from collections.abc import Sequence
-from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.errors import CalibrationError
-from calibration.line_fit import Line, LineFit
-from calibration.lines import fit_lines_si
+from calibration.desk.watch.line_block import LineBlock, LinePoint, expanded_95, point_of
 
-__all__ = ["LineBlock", "LinePoint", "LineWatch", "fit_block"]
+if TYPE_CHECKING:
+    from calibration.line_fit import LineFit
+
+__all__ = ["LineWatch"]
 
 FloatArray = NDArray[np.float64]
 
 _FEWEST_CYCLES = 8  # of the lowest line in a block, and as many between two neighbours
 _LONGEST_BLOCK_S = 60.0
 _POINTS = 150  # of each line: ten minutes of four-second blocks
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class LineBlock:
-    """Samples to be fitted.
-
-    Parameters
-    ----------
-    start_index : int
-        Index of the first sample.
-    response : ndarray, shape (n,)
-        Photodiode, NaN where missing or over-range.
-    drive : ndarray, shape (n,), optional
-        The drive, where it is recorded.
-    rate_hz : float
-        Samples per second.
-    frequencies_hz : tuple of float
-        The lines.
-    mains_hz : float
-        Mains frequency [Hz].
-    units : tuple of str
-        Of response and drive.
-    """
-
-    start_index: int
-    response: FloatArray
-    drive: FloatArray | None
-    rate_hz: float
-    frequencies_hz: tuple[float, ...]
-    mains_hz: float
-    units: tuple[str, str]
-
-
-@dataclass(frozen=True, slots=True)
-class LinePoint:
-    """One line in one block.
-
-    Parameters
-    ----------
-    time_s : float
-        Middle of the block [s] from the stream's sample 0.
-    amplitude, amplitude_u95 : float
-        Zero to peak, and its expanded uncertainty (95 %), in the channel's unit.
-    phase_rad, phase_u95_rad : float
-        Of response/drive where the drive holds the line, else of A·cos(2πft + φ) with t = 0 at the
-        stream's sample 0; and its expanded uncertainty (95 %).
-    ratio : float or None
-        Size of response/drive, where the drive holds the line.
-    reasons : tuple of str
-        Why not to believe it.
-    """
-
-    time_s: float
-    amplitude: float
-    amplitude_u95: float
-    phase_rad: float
-    phase_u95_rad: float
-    ratio: float | None = None
-    reasons: tuple[str, ...] = ()
-
-
-def fit_block(block: LineBlock) -> LineFit | None:
-    """Fit the lines in a block.
-
-    Parameters
-    ----------
-    block : LineBlock
-        Its samples.
-
-    Returns
-    -------
-    LineFit or None
-        Phases at the block's first sample; None where too little is there to fit.
-    """
-    drive = block.drive
-    if drive is not None and not np.nanstd(drive) > 0:
-        drive = None
-    try:
-        return fit_lines_si(
-            block.response,
-            block.rate_hz,
-            block.frequencies_hz,
-            drive,
-            mains_hz=block.mains_hz,
-            value_unit=block.units[0],
-            drive_unit=block.units[1],
-        )
-    except (CalibrationError, np.linalg.LinAlgError):
-        return None
 
 
 class LineWatch:
@@ -233,7 +145,7 @@ class LineWatch:
         lines, mains = self.frequencies_hz, self._mains_hz
         return [LineBlock(start, held[0], drive, self._rate_hz, lines, mains, self._units)]
 
-    def take(self, block: LineBlock, fit: LineFit | None) -> None:
+    def take(self, block: LineBlock, fit: "LineFit | None") -> None:
         """Keep what a fit found.
 
         Parameters
@@ -246,38 +158,10 @@ class LineWatch:
         if fit is None or block.frequencies_hz != self.frequencies_hz:
             return
         offset = fit.clock_offset
-        self.clock = None if offset is None else (fit.clock_value, _u95(offset))
+        self.clock = None if offset is None else (fit.clock_value, expanded_95(offset))
         for frequency_hz, line in zip(block.frequencies_hz, fit.lines, strict=True):
-            self._points[frequency_hz].append(_point(block, frequency_hz, line))
+            self._points[frequency_hz].append(point_of(block, frequency_hz, line))
 
     def points(self, frequency_hz: float) -> tuple[LinePoint, ...]:
         """Return what is known of one line, oldest first."""
         return tuple(self._points.get(frequency_hz, ()))
-
-
-def _point(block: LineBlock, frequency_hz: float, line: Line) -> LinePoint:
-    time_s = (block.start_index + 0.5 * block.response.size) / block.rate_hz
-    held = line.drive is not None and abs(line.drive.phasor) > 5.0 * line.drive.along_u
-    ratio = line.ratio if held and line.ratio is not None else None
-    phase = ratio.phase if ratio is not None else line.phase
-    turns = 0.0 if ratio is not None else _turns(frequency_hz, block.start_index, block.rate_hz)
-    angle = float(phase.magnitude) - 2 * np.pi * turns
-    return LinePoint(
-        time_s,
-        abs(line.phasor),
-        _u95(line.amplitude),
-        float(np.angle(np.exp(1j * angle))),
-        min(_u95(phase), np.pi),
-        None if ratio is None else abs(ratio.phasor),
-        line.distrust_reasons,
-    )
-
-
-def _turns(frequency_hz: float, start_index: int, rate_hz: float) -> float:
-    """Return the fraction of a turn at a sample, exact to 1e-6 for days of samples."""
-    whole, part = divmod(start_index / rate_hz, 1.0)
-    return (whole * (frequency_hz % 1.0) + part * frequency_hz) % 1.0
-
-
-def _u95(measured: object) -> float:
-    return float(measured.expanded(0.95).magnitude)  # type: ignore[attr-defined]  # a Measured

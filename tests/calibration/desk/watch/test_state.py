@@ -4,16 +4,16 @@ import numpy as np
 import pytest
 from sessions import built_in_bench
 
-from calibration.desk.watch_document import (
-    figures,
+from calibration.desk.watch.arrays import (
     fringe_arrays,
     line_arrays,
     spectrum_arrays,
     trace_arrays,
 )
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_state import WatchState
-from calibration.desk.watch_wire import pack, unpack
+from calibration.desk.watch.document import figures
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.state import WatchState
+from calibration.desk.watch.wire import pack, unpack
 from firmware_bridge.announcement import ChannelInfo
 from firmware_bridge.live_events import (
     LiveBlock,

@@ -6,7 +6,7 @@ import socket
 
 import pytest
 
-from calibration.desk.watch_guard import Guard, guarded, is_loopback
+from calibration.desk.watch.guard import Guard, guarded, is_loopback
 from calibration.errors import CalibrationError
 
 TOKEN = "correct-horse-battery"  # noqa: S105  # invented

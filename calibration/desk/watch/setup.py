@@ -3,17 +3,19 @@
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from calibration.desk.watch_expected import (
-    ExpectedNoise,
-    expected_fringe,
-    expected_noise,
-    known_dark,
-)
-from calibration.desk.watch_fringe import Fringe
+from calibration.desk.watch.fringe import Fringe
+from calibration.desk.watch.stated_fringe import expected_fringe, known_dark
+from calibration.expected_noise import ExpectedNoise, bench_as_measured, expected_noise
+from firmware_bridge.trace import Channel
 from metro.drive import terminal_factor
+from metro.errors import MetroError
 
 if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
     from calibration.record import Calibration
+    from firmware_bridge.announcement import ChannelInfo
     from metro.bench import Bench
 
 __all__ = ["WatchSetup"]
@@ -70,9 +72,33 @@ class WatchSetup:
         """The fringe as calibrated or stated, None where it must be found."""
         return expected_fringe(self.bench, self.calibration)
 
-    def noise(self, rate_hz: float) -> ExpectedNoise | None:
-        """Return the noise to be expected, None where the bench does not say."""
-        return expected_noise(self.bench, rate_hz)
+    def noise(
+        self, rate_hz: float, channel: "ChannelInfo", frequency_hz: "NDArray[np.float64]"
+    ) -> ExpectedNoise | None:
+        """Return the noise to be expected, None where nothing says.
+
+        Parameters
+        ----------
+        rate_hz : float
+            Samples per second.
+        channel : ChannelInfo
+            The photodiode's.
+        frequency_hz : ndarray, shape (n,)
+            Where [Hz]; above 0.
+
+        Returns
+        -------
+        ExpectedNoise or None
+            Volts; None for a channel in another unit, or where no source is known.
+        """
+        if channel.unit != "V" or self.bench == type(self.bench)():
+            return None
+        seen = Channel(channel.name, channel.unit, channel.scale, channel.offset)
+        bench = bench_as_measured(self.bench, rate_hz, seen, self.calibration)
+        try:
+            return expected_noise(bench, "voltage", frequency_hz)
+        except MetroError:
+            return None
 
     @property
     def stated_contrast(self) -> tuple[float, str] | None:

@@ -5,9 +5,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from calibration.desk.watch_orders import SLOTS, Answer, Orders
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_state import WatchState
+from calibration.desk.watch.orders import SLOTS, Answer, Orders
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.state import WatchState
 from firmware_bridge.announcement import ChannelInfo
 from firmware_bridge.live_events import LiveChannels, LiveState
 from firmware_bridge.live_session import recording_in

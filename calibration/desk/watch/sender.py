@@ -4,16 +4,17 @@ import time
 from dataclasses import dataclass, field
 from typing import Any
 
-from calibration.desk.watch_document import (
-    figures,
+from calibration.desk.watch.arrays import (
     fringe_arrays,
     line_arrays,
     spectrum_arrays,
     trace_arrays,
 )
-from calibration.desk.watch_orders import Orders
-from calibration.desk.watch_state import WINDOWS_S, WatchState
-from calibration.desk.watch_wire import pack
+from calibration.desk.watch.document import figures
+from calibration.desk.watch.orders import Orders
+from calibration.desk.watch.state import WatchState
+from calibration.desk.watch.stream import WINDOWS_S
+from calibration.desk.watch.wire import pack
 
 __all__ = ["Latency", "Viewer", "message_for"]
 
@@ -77,7 +78,7 @@ def message_for(viewer: Viewer, state: WatchState, orders: Orders, latency: Late
     Returns
     -------
     bytes
-        See `watch_wire`.
+        See `wire`.
     """
     arrays = trace_arrays(state, viewer.window_s)
     if viewer.ticks % _SLOW_TICKS == 0:

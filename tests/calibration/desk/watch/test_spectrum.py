@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import signal
 
-from calibration.desk.watch_spectrum import RunningSpectrum
+from calibration.desk.watch.spectrum import RunningSpectrum
 
 RATE_HZ = 1000.0
 

@@ -3,7 +3,8 @@
 import numpy as np
 import pytest
 
-from calibration.desk.watch_lines import LineWatch, fit_block
+from calibration.desk.watch.line_block import fit_block
+from calibration.desk.watch.lines import LineWatch
 
 RATE_HZ = 1000.0
 

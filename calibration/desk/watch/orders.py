@@ -4,47 +4,19 @@ Everything is checked here, whatever the page has checked, and again by the proc
 """
 
 from dataclasses import dataclass
-from math import isfinite, radians
-from pathlib import Path
-from typing import Any, Protocol
+from typing import Any
 
-from calibration.desk.watch_state import WINDOWS_S, WatchState
+from calibration.desk.watch.order_values import number, phase
+from calibration.desk.watch.source import Source
+from calibration.desk.watch.state import WatchState
+from calibration.desk.watch.stream import WINDOWS_S
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines
 from firmware_bridge.errors import BridgeError
-from firmware_bridge.live_events import LiveEvent
 from metro.errors import MetroError
-from metro.units import si
 
-__all__ = ["SLOTS", "Answer", "Orders", "Source"]
+__all__ = ["SLOTS", "Answer", "Orders"]
 
 SLOTS = 8  # lines that a page offers; how many there are, the board says
-
-
-class Source(Protocol):
-    """Where the samples come from: a port held by another process, or a recording replayed."""
-
-    def poll(self) -> list[LiveEvent]:
-        """Return what has happened since the last time, without waiting."""
-
-    def start_recording(self, name: str) -> Path:
-        """Record into a plain file name from now on."""
-
-    def stop_recording(self) -> None:
-        """End the recording that runs."""
-
-    def set_line(
-        self, slot: int, frequency_hz: float, amplitude_v: float, phase_rad: float = 0.0
-    ) -> None:
-        """Set a line of the drive."""
-
-    def clear_line(self, slot: int) -> None:
-        """Take a line out of the drive."""
-
-    def rest(self) -> None:
-        """Bring the drive to rest."""
-
-    def close(self) -> None:
-        """Bring the drive to rest, end the recording, give the port back."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,9 +131,9 @@ class Orders:
             return Answer(reason, refused=True)
         slot = self._slot(order.get("slot"))
         line = DriveLine(
-            _number(order["frequency"], "frequency", "Hz"),
-            _number(order["amplitude"], "amplitude", "V"),
-            _phase(order.get("phase", 0.0)),
+            number(order["frequency"], "frequency", "Hz"),
+            number(order["amplitude"], "amplitude", "V"),
+            phase(order.get("phase", 0.0)),
         )
         before = dict(self._lines.lines)
         self._lines.set(slot, line)
@@ -219,29 +191,6 @@ class Orders:
             "can_record": not self._is_replay,
             "windows_s": list(WINDOWS_S),
         }
-
-
-def _number(given: Any, name: str, unit: str) -> float:  # noqa: ANN401  # from a page
-    """Return a value in SI: a number in the unit that the page shows, or text with a unit."""
-    if isinstance(given, bool) or not isinstance(given, int | float | str):
-        raise MetroError(f"{name} must be a number in {unit}, got {given!r}")
-    try:
-        value = float(given)
-    except ValueError:
-        value = float(si(given, name, unit))
-    if not isfinite(value):
-        raise MetroError(f"{name} must be finite, got {given!r}")
-    return value
-
-
-def _phase(given: Any) -> float:  # noqa: ANN401  # from a page
-    """Return a phase in radians from degrees, or from text with a unit."""
-    if isinstance(given, str) and not given.strip():
-        return 0.0
-    try:
-        return radians(float(given))
-    except (TypeError, ValueError):
-        return _number(given, "phase", "rad")
 
 
 def _one_line(error: Exception) -> str:

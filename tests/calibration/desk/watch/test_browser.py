@@ -5,10 +5,10 @@ from urllib.parse import urlsplit
 
 import numpy as np
 import pytest
+from live_page import Board, Page, Program, open_browser, until
 from scipy.special import j1
 from selenium.webdriver.common.keys import Keys
 from sessions import BENCH_FILE
-from watch_browser import Board, Page, Program, open_browser, until
 
 from firmware_bridge.opening import open_recording
 

@@ -12,13 +12,19 @@ from typing import Any
 
 import tornado.httpserver
 import tornado.web
-import tornado.websocket
 
-from calibration.desk.watch_figures import figures_json
-from calibration.desk.watch_guard import Guard
-from calibration.desk.watch_orders import Answer, Orders, Source
-from calibration.desk.watch_sender import Latency, Viewer, message_for
-from calibration.desk.watch_state import Job, WatchState
+from calibration.desk.watch.figures import figures_json
+from calibration.desk.watch.guard import Guard
+from calibration.desk.watch.handlers import (
+    FiguresHandler,
+    FileHandler,
+    LiveHandler,
+    PageHandler,
+)
+from calibration.desk.watch.orders import Answer, Orders
+from calibration.desk.watch.sender import Latency, message_for
+from calibration.desk.watch.source import Source
+from calibration.desk.watch.state import Job, WatchState
 from calibration.errors import CalibrationError
 
 __all__ = ["WatchServer"]
@@ -28,9 +34,7 @@ _log = logging.getLogger(__name__)
 _POLL_S = 0.05
 _SEND_S = 0.1
 _JOBS = 8  # fits that wait; beyond, the newest are left out rather than piled up
-_VIEWERS = 8
 _ORDER_BYTES = 4096
-_TOKEN_COOKIE_DAYS = 1.0
 
 
 class WatchServer:
@@ -106,7 +110,7 @@ class WatchServer:
         await asyncio.sleep(0)
 
     def _application(self) -> tornado.web.Application:
-        page = Path(str(resources.files("calibration.desk") / "watch_page"))
+        page = Path(str(resources.files("calibration.desk.watch") / "page"))
         shared: dict[str, Any] = {"server": self}
         return tornado.web.Application(
             [
@@ -193,149 +197,3 @@ def _bokeh_scripts() -> Path:
 def _log_request(handler: tornado.web.RequestHandler) -> None:
     # without the query, in which a token may stand
     _log.debug("%s %s %d", handler.request.method, handler.request.path, handler.get_status())
-
-
-class _Guarded(tornado.web.RequestHandler):
-    """Refuse, before anything else, what the guard refuses."""
-
-    def initialize(self, server: WatchServer, **_more: Any) -> None:  # noqa: ANN401  # of tornado
-        self.watch = server
-
-    def prepare(self) -> None:
-        guard, headers = self.watch.guard, self.request.headers
-        if not guard.is_known_host(headers.get("Host")):
-            raise tornado.web.HTTPError(403, reason="Unknown Host")
-        token = self.get_query_argument("token", None)
-        if not guard.is_right_token(token, self.get_cookie(self._cookie)):
-            raise tornado.web.HTTPError(403, reason="Token Missing or Wrong")
-
-    @property
-    def _cookie(self) -> str:
-        return f"midfringe-{self.watch.port_number}"
-
-    def set_default_headers(self) -> None:
-        host = self.request.headers.get("Host", "")
-        own = (
-            f"'self' ws://{host}" if host.replace(":", "").replace(".", "").isalnum() else "'self'"
-        )
-        self.set_header(
-            "Content-Security-Policy",
-            "default-src 'none'; script-src 'self'; style-src 'self' 'unsafe-inline'; "
-            f"img-src 'self' data:; connect-src {own}; base-uri 'none'; form-action 'none'; "
-            "frame-ancestors 'none'",
-        )
-        self.set_header("X-Content-Type-Options", "nosniff")
-        self.set_header("Referrer-Policy", "no-referrer")
-        self.set_header("Cross-Origin-Resource-Policy", "same-origin")
-        self.set_header("Cache-Control", "no-store")
-        self.clear_header("Server")
-
-    def write_error(self, status_code: int, **_more: Any) -> None:  # noqa: ANN401  # of tornado
-        self.set_header("Content-Type", "text/plain; charset=utf-8")
-        self.finish(f"{status_code}: {self._reason}\n")
-
-
-class PageHandler(_Guarded):
-    """The page itself; a token in the address moves into a cookie."""
-
-    def get(self) -> None:
-        """Answer with the page, or send the browser to the address without the token."""
-        token = self.get_query_argument("token", None)
-        if token is not None and self.watch.guard.token is not None:
-            self.set_cookie(
-                self._cookie,
-                token,
-                expires_days=_TOKEN_COOKIE_DAYS,
-                httponly=True,
-                samesite="Lax",
-            )
-            self.redirect("/", status=303)
-            return
-        self.set_header("Content-Type", "text/html; charset=utf-8")
-        self.finish(self.settings["page"].read_bytes())
-
-
-class FiguresHandler(_Guarded):
-    """The figures, for BokehJS."""
-
-    def get(self) -> None:
-        """Answer with JSON."""
-        self.set_header("Content-Type", "application/json")
-        self.finish(self.watch.figures)
-
-
-class FileHandler(_Guarded, tornado.web.StaticFileHandler):
-    """A file of the installed packages."""
-
-    def initialize(self, server: WatchServer, path: str) -> None:  # type: ignore[override]  # with the server
-        """Take the server and the folder."""
-        _Guarded.initialize(self, server)
-        tornado.web.StaticFileHandler.initialize(self, path)
-
-
-class LiveHandler(_Guarded, tornado.websocket.WebSocketHandler):
-    """A page that is open: messages go out, orders come in."""
-
-    def initialize(self, server: WatchServer, **more: Any) -> None:  # noqa: ANN401  # of tornado
-        """Take the server."""
-        _Guarded.initialize(self, server, **more)
-        self.viewer = Viewer()
-        self._sending: Any = None
-
-    def check_origin(self, origin: str) -> bool:
-        """Return whether the page is ours."""
-        return self.watch.guard.is_own_origin(origin, self.request.headers.get("Host"))
-
-    def prepare(self) -> None:
-        """Refuse what the guard refuses, also a websocket without an Origin, and a crowd."""
-        _Guarded.prepare(self)
-        if not self.check_origin(self.request.headers.get("Origin", "")):
-            raise tornado.web.HTTPError(403, reason="Foreign Origin")
-        if len(self.watch.lives) >= _VIEWERS:
-            raise tornado.web.HTTPError(503, reason="Too Many Pages")
-
-    def open(self, *_args: str, **_kwargs: str) -> None:
-        """Count the page in."""
-        self.set_nodelay(True)
-        self.watch.lives.add(self)
-
-    def on_close(self) -> None:
-        """Count the page out."""
-        self.watch.lives.discard(self)
-
-    def on_message(self, message: str | bytes) -> None:
-        """Obey an order; its answer is shown on every page."""
-        try:
-            order = json.loads(message)
-        except (ValueError, RecursionError):
-            order = None
-        if isinstance(order, dict) and order.get("do") == "show":
-            self.viewer.wish(order)
-            return
-        answer = self.watch.orders.obey(order)
-        if answer is not None:
-            self.watch.tell(answer)
-
-    def send(self, make: Callable[["LiveHandler"], bytes]) -> None:
-        """Send a message, unless the last one is still on its way: a slow page gets fewer."""
-        if self._sending is not None and not self._sending.done():
-            return
-        self._sending = self._written(make(self), binary=True)
-
-    def say(self, text: str) -> None:
-        """Send a line of text."""
-        self._written(text, binary=False)
-
-    def _written(self, message: str | bytes, *, binary: bool) -> Any:  # noqa: ANN401  # a future
-        try:
-            return asyncio.ensure_future(_quietly(self.write_message(message, binary=binary)))
-        except tornado.websocket.WebSocketClosedError:
-            self.watch.lives.discard(self)
-            return None
-
-
-async def _quietly(writing: Any) -> None:  # noqa: ANN401  # a future
-    try:
-        await writing
-    except (tornado.websocket.WebSocketClosedError, tornado.iostream.StreamClosedError):
-        return

@@ -1,5 +1,5 @@
 // The live page: takes messages from the server, fills figures and tiles, sends orders.
-// Message: u32 length, JSON padded to four bytes, float32 arrays (see watch_wire.py).
+// Message: u32 length, JSON padded to four bytes, float32 arrays (see wire.py).
 
 const COLOURS = ["#56b4e9", "#e69f00", "#009e73", "#f0e442", "#cc79a7", "#d55e00", "#bbbbbb", "#0072b2"];
 const WINDOWS = [1, 10, 60];
@@ -20,7 +20,7 @@ async function embedFigures() {
   }
 }
 
-// A source, range or figure by the name it was given in watch_figures.py.
+// A source, range or figure by the name it was given in figures.py.
 function model(name) {
   if (!page.models[name]) {
     for (const each of Bokeh.documents) page.models[name] ??= each.get_model_by_name(name);

@@ -5,17 +5,17 @@ Nothing here knows of browsers or ports. Memory is bounded by the windows shown,
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.desk.watch_counts import Losses
-from calibration.desk.watch_envelope import Envelope, EnvelopeView
-from calibration.desk.watch_fringe import Fringe, FringeFinder, Resting, resting
-from calibration.desk.watch_lines import LineBlock, LineWatch, fit_block
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_spectrum import RunningSpectrum
+from calibration.desk.watch.envelope import Envelope, EnvelopeView
+from calibration.desk.watch.fringe import Fringe, Resting, resting
+from calibration.desk.watch.line_block import LineBlock, fit_block
+from calibration.desk.watch.losses import Losses
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.stream import REST_S, Stream
 from firmware_bridge.live_events import (
     LiveBlock,
     LiveChannels,
@@ -26,17 +26,10 @@ from firmware_bridge.live_events import (
     LiveState,
 )
 
-if TYPE_CHECKING:
-    from calibration.desk.watch_expected import ExpectedNoise
-
-__all__ = ["WINDOWS_S", "Job", "Stream", "WatchState"]
+__all__ = ["Job", "WatchState"]
 
 FloatArray = NDArray[np.float64]
 
-WINDOWS_S = (1.0, 10.0, 60.0)
-"""The stretches of the trace that a page can show [s]."""
-
-_REST_S = 0.25  # the working point is the mean of this
 _SETTLE_S = 1.0  # after a change of the drive, before lines are fitted again
 
 
@@ -46,46 +39,6 @@ class Job:
 
     work: Callable[[], Any]
     deliver: Callable[[Any], None]
-
-
-class Stream:
-    """All that depends on the board's channels and rate; a board that changes them gets another.
-
-    Parameters
-    ----------
-    setup : WatchSetup
-        What to show.
-    said : LiveChannels
-        What the board says of itself.
-    """
-
-    def __init__(self, setup: WatchSetup, said: LiveChannels) -> None:
-        self.said, rate_hz = said, said.rate_hz
-        names = [info.name for info in said.channels]
-        self.photodiode, self.drive = setup.columns(names)
-        self.columns = [k for k in (self.photodiode, self.drive) if k is not None]
-        units = [said.channels[k].unit for k in self.columns]
-        self.unit = units[0]
-        self.envelopes = {window_s: Envelope(rate_hz, window_s) for window_s in WINDOWS_S}
-        self.spectrum = RunningSpectrum(rate_hz)
-        self.noise: ExpectedNoise | None = setup.noise(rate_hz) if self.unit == "V" else None
-        self.finder = FringeFinder(rate_hz)
-        self.lines = LineWatch(
-            rate_hz,
-            setup.block_s,
-            setup.mains_hz,
-            (units[0], units[-1]),
-            has_drive=self.drive is not None,
-        )
-        self.rest = Envelope(rate_hz, _REST_S, bins=2)
-        self.samples = 0  # index after the newest
-        self.mean = np.nan
-        self.arrived_unix_s = 0.0
-
-    @property
-    def time_s(self) -> float:
-        """Stream time of the newest sample [s]."""
-        return self.samples / self.said.rate_hz
 
 
 class WatchState:
@@ -198,7 +151,7 @@ class WatchState:
         """Follow the mean with the time constant of the working point."""
         good = values[np.isfinite(values)]
         if good.size:
-            kept = np.exp(-good.size / (stream.said.rate_hz * _REST_S))
+            kept = np.exp(-good.size / (stream.said.rate_hz * REST_S))
             old = stream.mean if np.isfinite(stream.mean) else float(good.mean())
             stream.mean = kept * old + (1.0 - kept) * float(good.mean())
 
@@ -231,7 +184,7 @@ class WatchState:
         return self.setup.stated_contrast
 
     def trace(self, window_s: float) -> EnvelopeView:
-        """Return the envelope of the photodiode over one of `WINDOWS_S`."""
+        """Return the envelope of the photodiode over one of `stream.WINDOWS_S`."""
         if self.stream is None:
             return Envelope(1.0, window_s).view()
         return self.stream.envelopes[window_s].view()

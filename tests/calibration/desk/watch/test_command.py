@@ -4,13 +4,13 @@ import urllib.request
 
 import numpy as np
 import pytest
+from live_page import Program
 from sessions import BENCH_FILE
-from watch_browser import Program
 
-from calibration.desk.watch import serve
-from calibration.desk.watch_guard import Guard
-from calibration.desk.watch_replay import Replay
-from calibration.desk.watch_setup import WatchSetup
+from calibration.desk.watch.guard import Guard
+from calibration.desk.watch.replay import Replay
+from calibration.desk.watch.serving import serve
+from calibration.desk.watch.setup import WatchSetup
 from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveGap, LiveState
 from firmware_bridge.opening import open_recording
@@ -77,7 +77,7 @@ def test_a_port_that_failed_is_told_at_the_end_with_exit_code_3(monkeypatch):
     async def at_once(server, _number, _ready):
         server._poll()
 
-    monkeypatch.setattr("calibration.desk.watch._serve", at_once)
+    monkeypatch.setattr("calibration.desk.watch.serving._serve", at_once)
     setup = WatchSetup("board", Bench())
     with pytest.raises(DeviceFailedError, match="board: out of order; whether the drive") as caught:
         serve(Failing(), setup, Guard("127.0.0.1"), 0, ready=print)
@@ -86,7 +86,7 @@ def test_a_port_that_failed_is_told_at_the_end_with_exit_code_3(monkeypatch):
 
 def test_a_replay_gives_every_sample_once_at_its_own_pace(recording, monkeypatch):
     now_s = [100.0]
-    monkeypatch.setattr("calibration.desk.watch_replay.time.monotonic", lambda: now_s[0])
+    monkeypatch.setattr("calibration.desk.watch.replay.time.monotonic", lambda: now_s[0])
     replay = Replay(open_recording(recording), speed=2.0)
     said, state = replay.poll()
     assert isinstance(said, LiveChannels)
@@ -113,7 +113,7 @@ def test_a_replay_tells_gaps_and_its_end(tmp_path, monkeypatch):
     kept = [*range(300), *range(450, 1000)]
     path.write_text("t,v\n" + "\n".join(f"{k / 500:.3f},{k}" for k in kept) + "\n")
     now_s = [0.0]
-    monkeypatch.setattr("calibration.desk.watch_replay.time.monotonic", lambda: now_s[0])
+    monkeypatch.setattr("calibration.desk.watch.replay.time.monotonic", lambda: now_s[0])
     replay = Replay(open_recording(path))
     replay.poll()
     now_s[0] = 60.0

@@ -4,11 +4,12 @@ import asyncio
 import signal
 from collections.abc import Callable
 
-from calibration.desk.watch_guard import Guard
-from calibration.desk.watch_orders import Orders, Source
-from calibration.desk.watch_server import WatchServer
-from calibration.desk.watch_setup import WatchSetup
-from calibration.desk.watch_state import WatchState
+from calibration.desk.watch.guard import Guard
+from calibration.desk.watch.orders import Orders
+from calibration.desk.watch.server import WatchServer
+from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.source import Source
+from calibration.desk.watch.state import WatchState
 from firmware_bridge.errors import DeviceFailedError
 from firmware_bridge.live_events import LiveEvent
 

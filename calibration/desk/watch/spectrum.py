@@ -5,6 +5,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.welch import WelchSum
+
 __all__ = ["RunningSpectrum", "SpectrumView"]
 
 FloatArray = NDArray[np.float64]
@@ -61,11 +63,9 @@ class RunningSpectrum:
         wanted = min(max(rate_hz / _RESOLUTION_HZ, _SHORTEST), _LONGEST)
         self.length = 1 << int(np.ceil(np.log2(wanted)))
         self._rate_hz = rate_hz
-        turns = np.arange(self.length) / self.length
-        self._window = 0.5 - 0.5 * np.cos(2 * np.pi * turns)
-        self._scale = 2.0 / (rate_hz * float(np.sum(self._window**2)))
-        self.frequencies_hz = np.fft.rfftfreq(self.length, 1 / rate_hz)
+        self.frequencies_hz: FloatArray = np.asarray(np.fft.rfftfreq(self.length, 1 / rate_hz))
         self._edges = _edges(self.frequencies_hz.size, bins)
+        self._bandwidth_hz = 0.0
         self.clear()
 
     def clear(self) -> None:
@@ -103,16 +103,24 @@ class RunningSpectrum:
                 self._filled = half
 
     def _average(self) -> None:
-        mean = float(self._held.mean())
-        if not np.isfinite(mean):
+        welch = WelchSum(self.length, self._rate_hz)
+        welch.add(self._held)
+        found = welch.result()
+        if not found.segments:
             self._left_out += 1
             return
-        spectrum = np.fft.rfft((self._held - mean) * self._window)
-        power = self._scale * (spectrum.real**2 + spectrum.imag**2)
-        power[0] *= 0.5
-        power[-1] *= 0.5
         self._averages = min(self._averages + 1, _AVERAGES)
-        self._power += (power - self._power) / self._averages
+        self._power += (found.power - self._power) / self._averages
+        self._bandwidth_hz = found.noise_bandwidth_hz
+
+    @property
+    def shown_hz(self) -> FloatArray:
+        """Middle of each bin of the view [Hz], shape (n,)."""
+        return np.asarray(self._binned(np.add, self.frequencies_hz) / np.diff(self._edges))
+
+    def _binned(self, how: np.ufunc, values: FloatArray) -> FloatArray:
+        """Bring values at every frequency but 0 and half the rate into the bins of the view."""
+        return np.asarray(how.reduceat(values[1:-1], self._edges[:-1]))
 
     def power_density(self) -> FloatArray:
         """Return the averaged power density at every frequency, shape (length/2 + 1,)."""
@@ -126,22 +134,16 @@ class RunningSpectrum:
         SpectrumView
             Empty arrays before the first whole segment.
         """
-        bandwidth_hz = 1.5 * self._rate_hz / self.length  # of the Hann window
         if not self._averages:
             none = np.zeros(0)
-            return SpectrumView(none, none, none, 0.0, self._left_out, bandwidth_hz)
-        power, starts = self._power[1:-1], self._edges[:-1]
-        widths = np.diff(self._edges)
-        mean = np.add.reduceat(power, starts) / widths
-        middles = np.add.reduceat(self.frequencies_hz[1:-1], starts) / widths
-        highest = np.maximum.reduceat(power, starts)
+            return SpectrumView(none, none, none, 0.0, self._left_out, self._bandwidth_hz)
         return SpectrumView(
-            middles,
-            np.sqrt(mean),
-            np.sqrt(highest),
+            self.shown_hz,
+            np.sqrt(self._binned(np.add, self._power) / np.diff(self._edges)),
+            np.sqrt(self._binned(np.maximum, self._power)),
             float(self._averages),
             self._left_out,
-            bandwidth_hz,
+            self._bandwidth_hz,
         )
 
 

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from calibration.desk.watch_envelope import Envelope
+from calibration.desk.watch.envelope import Envelope
 
 
 def fed(envelope, values, rng, missing=()):

@@ -1,0 +1,36 @@
+"""What a live page needs of the place its samples come from."""
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Protocol
+
+if TYPE_CHECKING:
+    from firmware_bridge.live_events import LiveEvent
+
+__all__ = ["Source"]
+
+
+class Source(Protocol):
+    """Where the samples come from: a port held by another process, or a recording replayed."""
+
+    def poll(self) -> "list[LiveEvent]":
+        """Return what has happened since the last time, without waiting."""
+
+    def start_recording(self, name: str) -> Path:
+        """Record into a plain file name from now on."""
+
+    def stop_recording(self) -> None:
+        """End the recording that runs."""
+
+    def set_line(
+        self, slot: int, frequency_hz: float, amplitude_v: float, phase_rad: float = 0.0
+    ) -> None:
+        """Set a line of the drive."""
+
+    def clear_line(self, slot: int) -> None:
+        """Take a line out of the drive."""
+
+    def rest(self) -> None:
+        """Bring the drive to rest."""
+
+    def close(self) -> None:
+        """Bring the drive to rest, end the recording, give the port back."""

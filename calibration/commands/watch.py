@@ -1,5 +1,6 @@
 """``midfringe watch``: the live page in a browser."""
 
+import os
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -13,6 +14,10 @@ if TYPE_CHECKING:
 __all__ = ["watch"]
 
 _NUMBER = 8642
+
+# The fits share two cores with the port's process and the browser: a linear-algebra library that
+# takes all of them for a small product, and waits, costs four times as much. Before numpy is loaded.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
 
 @command(example="midfringe watch --simulate")

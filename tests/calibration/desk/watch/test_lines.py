@@ -148,7 +148,11 @@ def test_blocks_are_long_enough_to_tell_close_lines_apart():
 def test_no_more_points_are_kept_than_are_shown():
     watch = LineWatch(RATE_HZ, block_s=0.3)
     watch.set_lines([100.0])
-    followed(watch, stream(60.0, [(100.0, 1.0, 0.0)]), size=5000)
+    blocks = watch.add(0, stream(60.0, [(100.0, 1.0, 0.0)]))
+    assert len(blocks) == 200
+    fit = fit_block(blocks[0])
+    for block in blocks:
+        watch.take(block, fit)
     points = watch.points(100.0)
     assert len(points) == 150
     assert points[-1].time_s == pytest.approx(59.85)

@@ -21,10 +21,11 @@ ComplexArray = NDArray[np.complex128]
 
 HIGHEST = 0.45  # of the rate: room for the taper below half of it
 BELOW, ABOVE = 0.5, 0.25  # of the band's ends: widths over which the filter falls to zero outside
+MARGIN = 0.4  # of these widths, over which it does not fall yet
 _BETA = 9.0  # of the window: side lobes of 1e-4
 _LOBES = 6.0  # taps a taper, in periods of its width: the window's main lobe is 2·√(1+(9/π)²) = 6.1
 _TAPS_MAX = 1 << 20
-_ERROR_SMALL, _ERROR_MAX = 1e-3, 0.01
+_ERROR_SMALL, _ERROR_MAX = 2e-3, 0.01
 
 
 @dataclass(frozen=True, eq=False)
@@ -153,9 +154,13 @@ def _designed(
 
 
 def _taper(grid_hz: FloatArray, from_hz: float, to_hz: float, rate_hz: float) -> FloatArray:
-    """Return 1 in the band and a quarter period of a cosine down to zero on either side."""
+    """Return 1 in the band and a little beyond, then half a period of a cosine down to zero.
+
+    The margin keeps what the window smooths at the cosine's ends out of the band.
+    """
     above = min(ABOVE * to_hz, 0.5 * rate_hz - to_hz)
     outside = np.clip((grid_hz - to_hz) / above, 0.0, 1.0)
     if from_hz:
         outside = np.maximum(outside, np.clip((from_hz - grid_hz) / (BELOW * from_hz), 0.0, 1.0))
-    return np.asarray(0.5 * (1.0 + np.cos(np.pi * outside)))
+    fallen = np.clip((outside - MARGIN) / (1.0 - MARGIN), 0.0, 1.0)
+    return np.asarray(0.5 * (1.0 + np.cos(np.pi * fallen)))

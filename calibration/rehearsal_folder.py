@@ -1,6 +1,7 @@
 """The folder a rehearsal leaves: bench file, recordings, calibration, displacement, page, truth."""
 
 import re
+from collections.abc import Sequence
 from importlib.resources import files
 from pathlib import Path
 from typing import Any
@@ -9,12 +10,19 @@ from calibration.errors import CalibrationError
 from calibration.rehearsal import Rehearsal
 from calibration.session_plot import Shown, save_session_page
 from firmware_bridge.export import export_recording
-from metro.bench import Bench, load_bench
+from metro.bench import Bench, BenchLine, load_bench
 from metro.bench_keys import OPTIONS
 from metro.measured import Measured
 from metro.output import to_json, write_whole
 
-__all__ = ["FolderError", "comparison_document", "leave", "prepare", "rehearsal_bench"]
+__all__ = [
+    "FolderError",
+    "comparison_document",
+    "leave",
+    "prepare",
+    "rehearsal_bench",
+    "with_lines",
+]
 
 _BUILT_IN = files("firmware_bridge.simulated").joinpath("bench.toml")
 
@@ -61,6 +69,35 @@ def _with_value(text: str, key: str, value: Measured) -> str:
     body, after = rest[:place], rest[place:]
     body, found = re.subn(rf"^{name} *=.*$", line, body, count=1, flags=re.MULTILINE)
     return before + head + ("" if found else f"{line}\n") + body + after
+
+
+def with_lines(text: str, lines: Sequence[BenchLine]) -> str:
+    """Return the text of a bench file with other lines, as a plan sets them.
+
+    Parameters
+    ----------
+    text : str
+        TOML; its ``[[line]]`` tables go, all else stays.
+    lines : sequence of BenchLine
+        Frequencies and drives.
+
+    Returns
+    -------
+    str
+        With one ``[[line]]`` each at the place of the first old one, or at the end.
+    """
+    new = "\n".join(
+        f'[[line]]\nfrequency = "{line.frequency_hz!r} Hz"\n'
+        + ("" if line.drive_v is None else f'drive = "{line.drive_v!r} V"  # from the plan\n')
+        for line in lines
+    )
+    # a table ends where the next begins, or where comments that introduce the next do
+    table = re.compile(r"^\[\[line\]\][^\n]*\n(?:(?!\[|#)[^\n]*\n?)*", re.MULTILINE)
+    first = table.search(text)
+    if first is None:
+        return f"{text.rstrip()}\n\n{new}"
+    rest = table.sub("", text[first.end() :])
+    return f"{text[: first.start()]}{new}\n{rest}"
 
 
 def prepare(folder: Path, *, overwrite: bool) -> None:

@@ -32,6 +32,7 @@ LEAST_S = 10.0  # scans and handling take as long: shorter recordings save nothi
 LEAST_CYCLES = 100.0
 MAINS_APART_HZ = 0.1  # no time is spent on a line nearer to what the mains sweeps
 LEAST_APART = 10.0  # reciprocal durations between neighbours, for the noise beside each to be seen
+ROUNDING = 1.01  # the most that three digits add to a drive
 
 
 @dataclass(frozen=True)
@@ -179,7 +180,9 @@ class Setting:
         """Duration of each lines recording [s]."""
         if self.given_s is not None:
             return self.given_s
-        return max(_rounded_up(self.limit.scale**-2), _rounded_up(self._least_s()))
+        # longer than the limit asks for, so that drives can be rounded up below it
+        least_s = (ROUNDING / self.limit.scale) ** 2
+        return max(_rounded_up(least_s), _rounded_up(self._least_s()))
 
     def _least_s(self) -> float:
         """Return the time that resolves each line from its neighbours and the mains."""
@@ -202,9 +205,12 @@ class Setting:
     @cached_property
     def terminals_v(self) -> list[float]:
         """Amplitude of each line at the actuator's terminals, zero to peak [V]."""
-        scale = min(self.duration_s**-0.5, self.limit.scale)
+        wanted = self.duration_s**-0.5
+        # up, so that the wanted u is reached; down where a limit lies too near for that
+        has_room = wanted * ROUNDING <= self.limit.scale * (1 + 1e-9)
+        scale = min(wanted, self.limit.scale)
         return [
-            _three_digits(self.actuator.terminals_v(scale * m, f))
+            _three_digits(self.actuator.terminals_v(scale * m, f), up=has_room)
             for m, f in zip(self.unit_m, self.frequencies_hz, strict=True)
         ]
 
@@ -227,10 +233,11 @@ class Setting:
         return bool(self.limit.scale <= 1.05 * self.duration_s**-0.5)
 
 
-def _three_digits(volts: float) -> float:
-    """Return a voltage cut to three digits, as a generator is set; never more than asked for."""
+def _three_digits(volts: float, *, up: bool) -> float:
+    """Return a voltage of three digits, as a generator is set; at most 1 % from what is asked for."""
     step = 10.0 ** (math.floor(math.log10(volts)) - 2)
-    return float(f"{step * math.floor(volts / step + 1e-9):.3g}")
+    digits = math.ceil(volts / step - 1e-9) if up else math.floor(volts / step + 1e-9)
+    return float(f"{step * digits:.3g}")
 
 
 def _rounded_up(seconds: float) -> float:

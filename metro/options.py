@@ -143,6 +143,8 @@ def output_options(*names: str) -> Callable[[F], F]:
 
 def _remember(meta: str, ctx: click.Context, param: click.Parameter, value: bool) -> None:  # noqa: ARG001  # click's callback
     ctx.meta[meta] = value
+    if ctx.meta.get(_QUIET) and ctx.meta.get(_VERBOSE):
+        raise click.UsageError("--quiet and --verbose exclude each other, got both", ctx)
     level = logging.WARNING
     if ctx.meta.get(_QUIET):
         level = logging.ERROR

@@ -65,7 +65,13 @@ def rehearse(
     """
     from calibration.rehearsal import check_rehearsal
     from calibration.rehearsal import rehearse as play
-    from calibration.rehearsal_folder import comparison_document, leave, prepare, rehearsal_bench
+    from calibration.rehearsal_folder import (
+        comparison_document,
+        leave,
+        prepare,
+        rehearsal_bench,
+        with_lines,
+    )
     from calibration.rehearsal_script import LINES_S, planned, session_steps
 
     if kinds and trials is None:
@@ -75,6 +81,7 @@ def rehearse(
     lines_s = LINES_S
     if plan_file is not None:
         played, lines_s = planned(played, plan_file)
+        text = with_lines(text, played.lines)
     check_rehearsal(played, seed, lines_s)  # before anything is written
     if trials is not None:
         if out is not None:

@@ -186,7 +186,8 @@ class SimulatedBoard:
     def _run(self) -> None:
         decoder = Decoder()
         while not self._stopping.is_set():
-            wait_s = _WAIT_S if self._pace is None else self._pace.wait_s(_WAIT_S)
+            # without a pace it sends whenever there is room
+            wait_s = 0.0 if self._pace is None else self._pace.wait_s(_WAIT_S)
             busy = bool(self._outbox) or (self._source is not None and wait_s <= 0)
             ready, room, _ = select.select(
                 [self._master],

@@ -176,7 +176,7 @@ def test_command_with_filters(session, tmp_path, capsys):
         out = str(tmp_path / f"{number}.npz")
         assert run([*arguments, *options, "--out", out]) == 0
         document = json.loads(capsys.readouterr().out)
-        assert 0.2 < document["used_fraction"] < 1.0
+        assert 0.1 < document["used_fraction"] < 1.0
         assert document["uncertainty"]["systematic"]["value"] > 0
     out = str(tmp_path / "x.npz")
     assert run([*arguments, "--actuator", "--quantity", "phase", "--out", out]) == 2

@@ -6,7 +6,9 @@ import pytest
 from sessions import BENCH_FILE, built_in_bench
 
 from calibration.rehearsal import rehearse
+from calibration.rehearsal_folder import with_lines
 from calibration.rehearsal_script import planned
+from metro.bench import BenchLine, load_bench
 from metro.commandline import run
 from metro.plan import load_plan
 
@@ -50,6 +52,28 @@ def test_command_takes_the_plan(tmp_path, capsys):
     capsys.readouterr()
     assert run(["rehearse", "--plan", str(plan), "--out", str(tmp_path / "session")]) == 0
     assert "actuator@87.1Hz" in capsys.readouterr().out
+    kept, built_in = load_bench(tmp_path / "session" / "bench.toml"), built_in_bench()
+    assert kept.lines == tuple(load_plan(plan).bench_lines)
+    assert kept.motion == built_in.motion
+    assert {k: e.value for k, e in kept.entries.items()} == {
+        k: e.value for k, e in built_in.entries.items()
+    }
+
+
+def test_a_bench_without_lines_gets_them_at_its_end():
+    lines = (BenchLine(31.7, 0.5), BenchLine(87.1, None))
+    assert with_lines('[arms]\nlength = "1 m"\n', lines) == (
+        '[arms]\nlength = "1 m"\n\n[[line]]\nfrequency = "31.7 Hz"\ndrive = "0.5 V"  # from the plan\n'
+        '\n[[line]]\nfrequency = "87.1 Hz"\n'
+    )
+
+
+@pytest.mark.parametrize("wanted", ["0.25%", "0.3%", "0.5%", "1%", "2%"])
+def test_a_plan_without_reasons_reaches_what_is_wanted(tmp_path, wanted):
+    """Drives are rounded to three digits so that the promise holds, never just above it."""
+    plan = load_plan(made(tmp_path, wanted))
+    if not plan.all_reasons:
+        assert max(line.expected_u for line in plan.lines) <= plan.wanted_u
 
 
 def test_a_line_without_a_drive_is_refused(tmp_path, capsys):

@@ -180,12 +180,26 @@ def record(
         on_block=on_block,
     )
     stop = stop or threading.Event()
+    is_rotated = rotate_bytes is not None or rotate_s is not None
     try:
         session = RecordingSession(source, baud, intake, framer, reconnect, stop, desk, start=start)
         session.run(progress)
     except DiskError as error:
-        raise DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}") from error
-    return _summary(intake, is_rotated=rotate_bytes is not None or rotate_s is not None)
+        failure = DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}")
+        failure.kept = _maybe_summary(intake, is_rotated=is_rotated)
+        raise failure from error
+    except DeviceFailedError as error:
+        error.kept = _maybe_summary(intake, is_rotated=is_rotated)
+        raise
+    return _summary(intake, is_rotated=is_rotated)
+
+
+def _maybe_summary(intake: Intake, *, is_rotated: bool) -> RecordSummary | None:
+    """Return what was kept, None where the files cannot be read."""
+    try:
+        return _summary(intake, is_rotated=is_rotated)
+    except BridgeError:
+        return None
 
 
 def _kept_on_disk(files: list[Path]) -> str:

@@ -3,8 +3,11 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.gap_reason import counted
+
 __all__ = ["usable_rows", "without_lags"]
 
+_HAVE_NO_STAMP = "have no readable time stamp and are"
 _LAG_ROWS = 64  # rows within which a late stamp must have caught up
 
 
@@ -26,23 +29,22 @@ def usable_rows(stamps_s: NDArray[np.float64], remarks: list[str]) -> NDArray[np
     rows = np.flatnonzero(np.isfinite(stamps_s))
     if rows.size < stamps_s.size:
         count = stamps_s.size - rows.size
-        remarks.append(
-            f"{count} of {stamps_s.size} rows have no readable time stamp and are left out"
-        )
+        have = "has no readable time stamp and is" if count == 1 else _HAVE_NO_STAMP
+        remarks.append(f"{count} of {counted(stamps_s.size, 'row')} {have} left out")
     stamps = stamps_s[rows]
     stray = _strays(stamps)
     if stray.any():
         first = rows[np.argmax(stray)] + 1
         remarks.append(
-            f"{np.count_nonzero(stray)} rows with a stray time stamp are left out (first: row {first})"
+            f"{_rows(stray)} with a stray time stamp {_are(stray)} left out (first: row {first})"
         )
         rows, stamps = rows[~stray], stamps[~stray]
     backwards = np.flatnonzero(np.diff(stamps) < 0)
     if backwards.size:
         row = int(backwards[0]) + 1
         remarks.append(
-            f"the time stamps go back at row {rows[row] + 1}: the {row} rows before it are read, "
-            f"the {rows.size - row} from there on are not"
+            f"the time stamps go back at row {rows[row] + 1}: what stands before it is read "
+            f"({counted(row, 'row')}), the rest is not ({counted(rows.size - row, 'row')})"
         )
         rows = rows[:row]
     return rows
@@ -89,15 +91,17 @@ def without_lags(
     before = _least_ahead(missing[::-1])[::-1]
     kept[1:] = ~(still & (_least_ahead(missing)[1:] < before[:-1]))
     if not kept.all():
-        remarks.append(f"{np.count_nonzero(~kept)} rows repeat a time stamp and are left out")
+        repeat = "repeats" if np.count_nonzero(~kept) == 1 else "repeat"
+        remarks.append(f"{_rows(~kept)} {repeat} a time stamp and {_are(~kept)} left out")
     index = index[kept]
     rows = np.arange(index.size)
     placed = np.maximum.accumulate(_least_ahead(index - rows)) + rows
     late = int(np.count_nonzero(placed != index))
     if late:
         worst = float(np.abs(index - placed).max()) * step_s
+        be = "is" if late == 1 else "are"
         remarks.append(
-            f"{late} time stamps are late, by up to {worst:.3g} s; the samples are put back"
+            f"{counted(late, 'time stamp')} {be} late, by up to {worst:.3g} s; the samples are put back"
         )
     whole = np.zeros(kept.size, dtype=np.int64)
     whole[kept] = placed
@@ -109,3 +113,11 @@ def _least_ahead(values: NDArray[np.int64]) -> NDArray[np.int64]:
     padded = np.concatenate((values, np.repeat(values[-1], _LAG_ROWS)))
     windows = np.lib.stride_tricks.sliding_window_view(padded, _LAG_ROWS + 1)
     return np.asarray(windows.min(axis=1))
+
+
+def _rows(marked: NDArray[np.bool_]) -> str:
+    return counted(int(np.count_nonzero(marked)), "row")
+
+
+def _are(marked: NDArray[np.bool_]) -> str:
+    return "is" if np.count_nonzero(marked) == 1 else "are"

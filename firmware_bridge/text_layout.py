@@ -6,9 +6,11 @@ from dataclasses import dataclass
 from firmware_bridge.header_line import find_header
 from firmware_bridge.text_fields import maybe_number, split_fields
 
-__all__ = ["TextLayout", "maybe_find_layout"]
+__all__ = ["TextLayout", "are_two_kinds_of_commas", "maybe_find_layout"]
 
 _MINIMUM_RUN = 3  # lines alike in a row that count as data and not as numbers in a preamble
+
+_COMMA_LINES = 1000
 
 # In the order of preference where several fit equally well.
 _CANDIDATES: tuple[tuple[str | None, str], ...] = (
@@ -119,6 +121,44 @@ def _is_decimal_comma(lines: Sequence[str]) -> bool:
     fractions = [pair[1] for pair in pairs]
     return all(text.isdecimal() for text in fractions) and any(
         len(text) > 1 and text.startswith("0") for text in fractions
+    )
+
+
+def are_two_kinds_of_commas(layout: TextLayout, text: str) -> bool:
+    """Tell whether lines like ``0,052,1,340`` are numbers with decimal commas parted by commas.
+
+    Parameters
+    ----------
+    layout : TextLayout
+        As found.
+    text : str
+        Lines of it.
+
+    Returns
+    -------
+    bool
+        True if every second field is digits of one length, some with a zero ahead, and no other
+        field has decimals; or if there are half as many names as fields.
+    """
+    if layout.delimiter != "," or layout.columns % 2 or layout.columns < 4:
+        return False
+    lines = text.split("\n", _COMMA_LINES)[:_COMMA_LINES]
+    rows = [[field.strip() for field in line.split(",")] for line in lines if line.strip()]
+    rows = [row for row in rows if len(row) == layout.columns]
+    wholes = [field.lstrip("+-") for row in rows for field in row[::2]]
+    if not rows or not all(map(str.isdecimal, wholes)):
+        return False
+    fractions = list(zip(*(row[1::2] for row in rows), strict=True))
+    if not all(map(str.isdecimal, (field for column in fractions for field in column))):
+        return False
+    names = [word for word in (layout.preamble or ("",))[-1].split(",") if word.strip()]
+    if len(names) * 2 == layout.columns and not any(map(str.isdecimal, names)):
+        return True
+    return all(
+        len(set(map(len, column))) == 1
+        and len(column[0]) > 1
+        and any(field.startswith("0") for field in column)
+        for column in fractions
     )
 
 

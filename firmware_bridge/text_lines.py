@@ -28,7 +28,8 @@ class Fault:
     row : int
         How many rows were read before it.
     kind : str
-        "text" (no number in it: no row was made) or "damaged" (a row of NaN stands for it).
+        "text" (no number in it: no row was made), "damaged" (a row of NaN stands for it) or "value"
+        (the row is there, NaN where it could not be read).
     fields : int
         Number of its fields.
     text : str
@@ -56,12 +57,15 @@ class LineReader:
         Rows read so far.
     faults : list of Fault
         Lines that were no rows, in order.
+    keeps_parts : bool
+        Whether a line of the right number of fields is a row though some of them are unreadable.
     """
 
     layout: TextLayout
     line: int = 0
     rows: int = 0
     faults: list[Fault] = field(default_factory=list)
+    keeps_parts: bool = False
 
     def read(self, text: str) -> list[NDArray[np.float64]]:
         """Read a stretch of whole lines.
@@ -136,6 +140,9 @@ class LineReader:
         numbers = [_entry(text) for text in fields]
         if len(fields) == self.layout.columns and self._is_row(numbers):
             return [np.nan if number is None else number for number in numbers]
+        if self.keeps_parts and len(fields) == self.layout.columns and self._is_most(numbers):
+            self.faults.append(Fault(self.line, self.rows, "value", len(fields), line))
+            return [np.nan if number is None else number for number in numbers]
         damaged = any(number is not None for number in numbers) or _is_mostly_digits(line)
         kind = "damaged" if damaged else "text"
         self.faults.append(Fault(self.line, self.rows, kind, len(fields), line))
@@ -143,6 +150,10 @@ class LineReader:
 
     def _is_row(self, numbers: Sequence[float | None]) -> bool:
         return all(numbers[i] is not None for i in self.layout.filled)
+
+    def _is_most(self, numbers: Sequence[float | None]) -> bool:
+        there = sum(numbers[i] is not None for i in self.layout.filled)
+        return 2 * there >= len(self.layout.filled)
 
 
 def _is_mostly_digits(line: str) -> bool:

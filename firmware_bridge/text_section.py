@@ -81,7 +81,7 @@ def maybe_read_section(data: bytes, offset: int, line: int) -> TextSection | Non
     if layout is None:
         return None
     start = offset + sum(len(text) + 1 for text in head[: layout.first_line])
-    reader = LineReader(layout, line + layout.first_line)
+    reader = LineReader(layout, line + layout.first_line, keeps_parts=True)
     section = TextSection(layout, reader, line + layout.first_line)
     stop = _blank_lines_after(data, start)
     for text in _stretches(data, start, stop):

@@ -12,6 +12,7 @@ from firmware_bridge.preamble import maybe_stated_rate_hz
 from firmware_bridge.printed_digits import finest_digits
 from firmware_bridge.table import Table
 from firmware_bridge.text_encoding import decode_line, is_text, plain_text
+from firmware_bridge.text_layout import are_two_kinds_of_commas
 from firmware_bridge.text_section import TextSection, maybe_read_section
 
 __all__ = ["TextError", "columns_kept", "read_text_table"]
@@ -53,6 +54,12 @@ def read_text_table(data: bytes, name: str) -> Table:
         raise TextError(
             f"{name} has no line of numbers; a recording has one or more numbers a line"
         )
+    if are_two_kinds_of_commas(section.layout, section.last_text):
+        line = section.last_text.partition("\n")[0][:60]
+        raise TextError(
+            f"{name}: decimal commas and commas between the columns cannot be told apart "
+            f"({line!r}); write it with semicolons between the columns, or with decimal points"
+        )
     return _to_table(section, [*_fault_remarks(section), *_rest_remarks(data, section)])
 
 
@@ -60,6 +67,7 @@ def _fault_remarks(section: TextSection) -> list[str]:
     remarks = []
     for kind, what in (
         ("damaged", "could not be read and {are} taken as missing"),
+        ("value", "with a value that could not be read {are} kept, that value missing"),
         ("text", "of text between the data {are} left out"),
     ):
         faults = [fault for fault in section.reader.faults if fault.kind == kind]

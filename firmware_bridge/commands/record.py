@@ -123,6 +123,7 @@ def record(
     and brought to rest at the end; with --reconnect they are set again when the board is back. A limit in software is no interlock.
     """
     from firmware_bridge.byte_size import parse_byte_size
+    from firmware_bridge.errors import DeviceFailedError
     from firmware_bridge.live_line import LiveLine
     from firmware_bridge.recorder import record as record_port
     from metro.errors import MetroError
@@ -158,6 +159,10 @@ def record(
             drive=drive,
             progress=line.show if show else None,
         )
+    except DeviceFailedError as error:
+        if as_json and error.kept is not None:
+            click.echo(to_json(_document(error.kept) | {"failure": str(error)}))
+        raise
     finally:
         log.removeFilter(line.step_aside)
         line.end()
@@ -189,6 +194,7 @@ def _document(summary: Any) -> dict[str, Any]:  # noqa: ANN401
         "rate": {"value": summary.rate_hz, "unit": "Hz", "u": summary.rate_u_hz},
         "remarks": summary.remarks,
         "reasons": summary.reasons,
+        "failure": None,
     }
 
 

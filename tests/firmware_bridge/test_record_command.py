@@ -207,3 +207,40 @@ def test_a_port_that_goes_midway_ends_with_three_and_what_was_kept(tmp_path):
         f"midfringe: {link.port} failed: the other side closed the connection; "
         f"kept 500 samples (0.25 s) in {tmp_path / 'a.mfr'}\n"
     )
+
+
+def test_json_says_what_was_kept_when_the_port_goes(tmp_path):
+    path, link = tmp_path / "a.mfr", SocketLink()
+
+    def send():
+        WireBoard(link).run(40)
+        link.hang_up()
+
+    thread = threading.Thread(target=send, daemon=True)
+    thread.start()
+    code, out, err = run_to_end("--port", link.port, "--out", str(path), "--json")
+    thread.join()
+    link.close()
+    found = json.loads(out)
+    assert code == 3
+    assert (found["samples"], found["file"], found["gaps"]) == (2000, str(path), [])
+    assert found["failure"] in err
+    assert found["failure"].endswith(f"kept 2000 samples (1 s) in {path}")
+
+
+def test_json_of_nothing_kept_is_a_document_too(tmp_path):
+    link = SocketLink()
+
+    def send():
+        link.accept()
+        link.hang_up()
+
+    thread = threading.Thread(target=send, daemon=True)
+    thread.start()
+    path = str(tmp_path / "a.mfr")
+    code, out, _ = run_to_end("--port", link.port, "--out", path, "--json")
+    thread.join()
+    link.close()
+    found = json.loads(out)
+    assert (code, found["samples"], found["file"]) == (3, 0, None)
+    assert found["failure"].endswith("nothing was recorded")

@@ -100,7 +100,7 @@ def test_a_row_sent_twice_is_left_out_and_no_gap_is_lost_for_it():
     grid = fit_grid(rows * 0.01, 1e-3, "x")
     assert spans(grid) == [(100, 10)]
     assert np.array_equal(grid.index, np.delete(K, range(100, 110)))
-    assert grid.remarks == ["1 rows repeat a time stamp and are left out"]
+    assert grid.remarks == ["1 row repeats a time stamp and is left out"]
 
 
 def test_a_long_pause_need_not_be_a_whole_number_of_samples():
@@ -118,7 +118,7 @@ def test_stray_and_missing_stamps_are_left_out():
     grid = fit_grid(stamps, 0.0, "x")
     assert spans(grid) == [(500, 1), (700, 1), (900, 1)]
     assert grid.remarks == [
-        "1 of 2000 rows have no readable time stamp and are left out",
+        "1 of 2000 rows has no readable time stamp and is left out",
         "2 rows with a stray time stamp are left out (first: row 501)",
     ]
 
@@ -128,8 +128,8 @@ def test_a_clock_that_starts_anew_ends_the_recording():
     assert np.array_equal(grid.index, K[:700])
     (remark,) = grid.remarks
     assert remark == (
-        "the time stamps go back at row 701: the 700 rows before it are read, "
-        "the 2000 from there on are not"
+        "the time stamps go back at row 701: what stands before it is read (700 rows), "
+        "the rest is not (2000 rows)"
     )
 
 

@@ -147,10 +147,22 @@ def test_rows_without_values_are_gaps_and_infinities_over_range(opened):
 
 
 def test_damaged_lines_keep_the_samples_after_them_in_place(opened):
-    text = "pd,b\n" + "".join("1,#\n" if k == 30 else f"{k},0\n" for k in K)
+    text = "pd,b,c\n" + "".join("1,#,@\n" if k == 30 else f"{k},0,0\n" for k in K)
     recording = opened(text, rate="1 Hz")
     np.testing.assert_array_equal(recording.trace("pd").values, np.where(K == 30, np.nan, K))
     assert recording.gaps == [Gap(30, 1)]
+
+
+def test_one_unreadable_value_costs_only_itself(opened):
+    text = "pd,b\n" + "".join("30,0#7\n" if k == 30 else f"{k},0\n" for k in K)
+    recording = opened(text, rate="1 Hz")
+    np.testing.assert_array_equal(recording.trace("pd").values, K)
+    assert np.flatnonzero(np.isnan(recording.trace("b").values)).tolist() == [30]
+    assert recording.gaps == []
+    assert recording.trace("b").missing == 1
+    assert recording.remarks == [
+        "1 line with a value that could not be read is kept, that value missing (first: line 32, '30,0#7')"
+    ]
 
 
 def test_stretches_count_from_the_first_sample_or_in_own_time(opened):
@@ -203,6 +215,6 @@ def test_a_date_that_is_none_is_a_damaged_line(opened):
     recording = opened("time,pd\n" + "".join(rows))
     assert recording.gaps == [Gap(20, 1, exact=False, length_u=recording.gaps[0].length_u)]
     assert recording.remarks[1:] == [
-        "1 line could not be read and is taken as missing (first: line 22, '2024-02-31 23:59:20,20')",
-        "1 of 50 rows have no readable time stamp and are left out",
+        "1 line with a value that could not be read is kept, that value missing (first: line 22, '2024-02-31 23:59:20,20')",
+        "1 of 50 rows has no readable time stamp and is left out",
     ]

@@ -88,13 +88,14 @@ def test_words_for_missing_and_over_range_values():
 
 def test_damaged_lines_stay_as_rows_of_nan_and_are_counted():
     lines = [f"{k / 10},{k},{2 * k}" for k in range(200)]
-    lines[17], lines[90], lines[150] = "1.7,1", "9.0,9\x00#,18", "hello world"
+    lines[17], lines[90], lines[150] = "1.7,1", "9.0,9\x00#,180", "hello world"
     table = read_text_table(("t,a,b\n" + "\n".join(lines) + "\n19.9").encode(), "x")
     expected = np.array([(k / 10, k, 2 * k) for k in range(200) if k != 150])
-    expected[[17, 90]] = np.nan
+    expected[17], expected[90, 1] = np.nan, np.nan
     assert np.array_equal(values(table), expected, equal_nan=True)
     assert table.remarks == [
-        "3 lines could not be read and are taken as missing (first: line 19, '1.7,1')",
+        "2 lines could not be read and are taken as missing (first: line 19, '1.7,1')",
+        "1 line with a value that could not be read is kept, that value missing (first: line 92, '9.0,9\\x00#,180')",
         "1 line of text between the data is left out (first: line 152, 'hello world')",
     ]
 
@@ -204,3 +205,32 @@ def test_damaged_texts_raise_nothing_but_bridge_errors(seed):
             continue
         block = next(recording.blocks(4096))
         assert block.values.shape[1] == len(recording.channels)
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "".join(f"{k // 100},{k % 100:02d},-{k // 50},{k % 50:02d}\n" for k in range(150)),
+        "t,pd\n" + "".join(f"{k},5,{k * k},25\n" for k in range(20)),
+    ],
+)
+def test_commas_of_two_kinds_are_not_guessed_at(text):
+    with pytest.raises(TextError) as error:
+        read_text_table(text.encode(), "x.csv")
+    first = next(line for line in text.split("\n") if line[0].isdigit())
+    assert str(error.value) == (
+        "x.csv: decimal commas and commas between the columns cannot be told apart "
+        f"({first!r}); write it with semicolons between the columns, or with decimal points"
+    )
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "".join(f"{k},{k % 7},{k % 3},{k * 37}\n" for k in range(150)),
+        "".join(f"{k},0.5,{k % 3},07\n" for k in range(150)),
+        "a,b,c,d\n" + "".join(f"{k},{k % 100},{k % 3},{k % 10}\n" for k in range(150)),
+    ],
+)
+def test_whole_numbers_parted_by_commas_are_read(text):
+    assert len(read_text_table(text.encode(), "x.csv").columns) == 4

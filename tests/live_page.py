@@ -60,12 +60,14 @@ class Board:
     """A simulated board in real time behind a link that stays when the board is unplugged."""
 
     def __init__(self, link, seed=1):
-        self.port, self._seed, self._board = str(link), seed, None
+        self.port, self._board, self._starts = str(link), None, 0
         self.bench = SimulatedBench(built_in_bench(), seed)
         self.plug_in()
 
     def plug_in(self):
         self._board = SimulatedBoard(self.bench, Setup("watch", inf, slope="rising"), speed=1.0)
+        self._board._stream = 100 * self._starts  # a board that starts has a stream id of its own
+        self._starts += 1
         self._board.__enter__()
         Path(self.port).unlink(missing_ok=True)
         Path(self.port).symlink_to(self._board.port)

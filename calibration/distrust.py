@@ -14,7 +14,7 @@ from calibration.line_noise import UNSTEADY
 from calibration.line_result import FittedChannel
 from calibration.survey import MAINS_ORDERS, Survey
 
-__all__ = ["LEAST_SNR", "TOO_WEAK", "Doubts", "is_clipped"]
+__all__ = ["LEAST_SNR", "TOO_WEAK", "Doubts", "fringe_top_reason", "is_clipped"]
 
 LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
 _LEAST_CYCLES = 4.0
@@ -146,10 +146,7 @@ class Doubts:
         if powers[1][1] < _SEEN or powers[1][0] <= powers[0][0]:
             return None
         times = float(np.sqrt(powers[1][0] / max(powers[0][0], np.finfo(float).tiny)))
-        return (
-            f"the response is {times:.2g} times stronger at {2 * own:g} Hz, twice the line: the working point is"
-            " at a fringe top or bottom"
-        )
+        return fringe_top_reason(times, own)
 
     @staticmethod
     def _peak_power(survey: Survey, place: float) -> tuple[float, float]:
@@ -227,6 +224,27 @@ class Doubts:
         if alike > 0:
             return f"its amplitude changes by {100 * depth:.2g} % rms in the recording: the working point wandered"
         return f"its phase changes by {depth:.2g} rad rms in the recording"
+
+
+def fringe_top_reason(times: float, frequency_hz: float) -> str:
+    """Return what is said of a line that is weaker than its second harmonic.
+
+    Parameters
+    ----------
+    times : float
+        How much weaker.
+    frequency_hz : float
+        The line [Hz].
+
+    Returns
+    -------
+    str
+        The reason not to believe it.
+    """
+    return (
+        f"the response is {times:.2g} times stronger at {2 * frequency_hz:g} Hz, twice the line: the working point is"
+        " at a fringe top or bottom"
+    )
 
 
 def is_clipped(values: NDArray[Any]) -> bool:

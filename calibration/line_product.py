@@ -93,6 +93,7 @@ class LineProduct:
             "phase": None if self.line.is_phase_refused else self.line.phase,
             "relative": self.relative,
             "seen": self.is_seen,
+            "reasons": [r for r in self.line.distrust_reasons if not r.startswith(TOO_WEAK)],
         }
 
 

@@ -11,8 +11,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.distrust import fringe_top_reason
 from calibration.errors import CalibrationError
-from calibration.line_fit import LineFit
+from calibration.line_fit import Line, LineFit
 from calibration.line_product import LineProduct, combinations_of
 from calibration.line_record import settle_lines
 from calibration.line_source import ArraySource, LineSource
@@ -258,7 +259,20 @@ def _with_products(
         LineProduct(one.orders, tuple(x for m, x in zip(one.orders, lines, strict=True) if m), line)
         for one, line in zip(made, joint.lines[len(frequencies) :], strict=True)
     )
-    return replace(first or replace(joint, lines=lines), products=products)
+    if first is not None:
+        return replace(first, products=products)
+    lines = tuple(_beside_harmonic(line, k, products) for k, line in enumerate(lines))
+    return replace(joint, lines=lines, products=products)
+
+
+def _beside_harmonic(line: Line, number: int, products: tuple[LineProduct, ...]) -> Line:
+    """Return a line, distrusted where its second harmonic is fitted too and is stronger."""
+    for product in products:
+        times = abs(product.line.phasor) / max(abs(line.phasor), np.finfo(float).tiny)
+        if product.orders[number] == 2 and product.is_seen and times > 1:
+            reason = fringe_top_reason(times, line.frequency_hz)
+            return replace(line, distrust_reasons=(*line.distrust_reasons, reason))
+    return line
 
 
 def checked_frequencies(frequencies_hz: Sequence[float], rate_hz: float) -> NDArray[np.float64]:

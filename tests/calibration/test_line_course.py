@@ -104,6 +104,15 @@ def test_what_a_bent_curve_makes(free, offset):
         assert abs(one.phasor - other.phasor) < 0.5 * other.response.along_u
 
 
+@pytest.mark.parametrize("harmonics", [1, 2])
+def test_a_fringe_top_is_named_whether_the_harmonic_is_fitted_or_not(harmonics):
+    turns = 2 * np.pi * 87.13 * np.arange(20_000) / RATE
+    values = 0.05 * np.cos(turns) + np.cos(2 * turns)
+    values += 0.01 * np.random.default_rng(1).standard_normal(20_000)
+    fit = fit_lines_si(values, RATE, [87.13], harmonics=harmonics)
+    assert "at a fringe top or bottom" in " ".join(fit.distrust_reasons)
+
+
 def test_relative_amplitudes_scatter_as_their_u_says():
     pulls = []
     for seed in range(60):

@@ -5,6 +5,7 @@ phase of one cause together; line fits and measured pick-up are each line's own.
 """
 
 from collections.abc import Sequence
+from math import sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,7 @@ from calibration.actuator_entry import ActuatorEntry
 from calibration.term import OWN_TERMS
 from metro.budget import Budget
 
-__all__ = ["line_covariance"]
+__all__ = ["line_covariance", "own_u"]
 
 FloatArray = NDArray[np.float64]
 
@@ -47,6 +48,12 @@ def line_covariance(entries: Sequence[ActuatorEntry]) -> FloatArray:
                 else:
                     shared.setdefault(name, np.zeros(count))[row] += effect
     return np.asarray(np.diag(own) + sum(np.outer(e, e) for e in shared.values()))
+
+
+def own_u(budget: Budget, names: tuple[str, ...] = OWN_TERMS) -> float:
+    """Return the u of the terms that are a line's own, in the budget's unit."""
+    effects = [c.effect for c in budget.contributions if c.name.startswith(names)]
+    return sqrt(sum(effect**2 for effect in effects))
 
 
 def _effects(budget: Budget, scale: float) -> list[tuple[str, float]]:

@@ -1,6 +1,6 @@
 """One page about a calibrated session: fringe, spectrum, actuator, and truth where it is known."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from calibration.comparison import Comparison
 from calibration.convert import ConvertedRecording
 from calibration.record import Calibration
+from calibration.response_plot import draw_residuals, draw_response
 from calibration.session import photodiode_name
 from firmware_bridge.opening import open_recording
 from firmware_bridge.trace import Trace
@@ -26,6 +27,7 @@ FloatArray = NDArray[np.float64]
 
 # Blue, orange and grey of the Okabe-Ito set: told apart by colour-blind readers and in print.
 BLUE, ORANGE, GREY = "#0072b2", "#d55e00", "#777777"
+SEGMENT_S = 4.0  # of the spectrum, where the recording is that long
 
 
 @dataclass(frozen=True, eq=False)
@@ -87,25 +89,29 @@ def save_session_page(
         Whether an existing file may be replaced.
     """
     figures = require("matplotlib.figure", "bench", "a plot")
-    panels = 4 if comparisons else 3
-    figure = figures.Figure(figsize=(8.27, 11.69 * panels / 4), layout="constrained")
-    figure.suptitle(title, fontsize=12)
-    axes = figure.subplots(panels, 1)
-    if shown.scan is not None:
-        draw_scan(axes[0], calibration, shown.scan.values, shown.scan.rate_hz)
-    draw_spectrum(axes[1], calibration, shown.moved.values, shown.moved.rate_hz)
-    draw_actuator(axes[2], calibration)
+    scan, moved, response = shown.scan, shown.moved, calibration.response
+    panels: list[Callable[[Axes], None]] = []
+    if scan is not None:
+        panels.append(lambda axes: draw_scan(axes, calibration, scan.values, scan.rate_hz))
+    panels.append(lambda axes: draw_spectrum(axes, calibration, moved.values, moved.rate_hz))
+    panels.append(lambda axes: draw_actuator(axes, calibration))
+    if response is not None:
+        panels.append(lambda axes: draw_residuals(axes, calibration.actuator, response))
     if comparisons:
-        _draw_comparison(axes[3], comparisons)
+        panels.append(lambda axes: _draw_comparison(axes, comparisons))
+    figure = figures.Figure(figsize=(8.27, 11.69 * len(panels) / 4), layout="constrained")
+    figure.suptitle(title, fontsize=12)
+    for draw, axes in zip(panels, figure.subplots(len(panels), 1), strict=True):
+        draw(axes)
     save_figure(figure, path, overwrite=overwrite)
 
 
 def draw_scan(axes: "Axes", calibration: Calibration, volts: FloatArray, rate_hz: float) -> None:
     """Draw a scan in volts with the fitted extremes."""
     time_s = np.arange(volts.size) / rate_hz
-    shown = slice(0, min(volts.size, int(4.0 * rate_hz)))
     extremes = calibration.extremes
-    axes.plot(time_s[shown], volts[shown], color=BLUE, linewidth=0.8, label="photodiode")
+    axes.plot(time_s, volts, color=BLUE, linewidth=0.8, label="photodiode", rasterized=True)
+    axes.margins(x=0.0)
     for level_v, name, offset in ((extremes.high_v, "high", 3), (extremes.low_v, "low", -3)):
         axes.axhline(level_v, color=ORANGE, linewidth=1.0, linestyle="--")
         axes.annotate(
@@ -134,7 +140,7 @@ def draw_spectrum(
     """Draw the amplitude spectral density of a displacement, the lines marked."""
     signal = require("scipy.signal", "bench", "a spectrum")
     filled = np.where(np.isfinite(displacement_m), displacement_m, np.nanmean(displacement_m))
-    length = min(filled.size, int(4 * rate_hz))
+    length = min(filled.size, int(SEGMENT_S * rate_hz))
     frequency_hz, density = signal.welch(filled, rate_hz, window="hann", nperseg=length)
     axes.loglog(frequency_hz[2:], np.sqrt(density[2:]) * 1e12, color=BLUE, linewidth=0.7)
     for entry in calibration.actuator:
@@ -152,7 +158,7 @@ def draw_spectrum(
             color=ORANGE,
         )
     axes.set(
-        title="Spectrum of the converted lines recording (Hann, 4 s)",
+        title=f"Spectrum of the converted lines recording (Hann, {length / rate_hz:.3g} s)",
         xlabel="frequency / Hz",
         ylabel="displacement / (pm/√Hz)",
         xlim=(0.5, rate_hz / 2),
@@ -180,6 +186,8 @@ def draw_actuator(axes: "Axes", calibration: Calibration) -> None:
     turned.errorbar(
         [f for f, _ in phased], phase, yerr=turns, fmt="s", color=ORANGE, capsize=4, markersize=3
     )
+    if calibration.response is not None:
+        draw_response(axes, turned, calibration.response)
     turned.set_ylabel("phase / °", color=ORANGE)
 
 

@@ -1,5 +1,7 @@
 """A calibration in words and a table, for a person."""
 
+from typing import Any
+
 from calibration.record import Calibration
 from metro.display import show
 from metro.measured import Measured
@@ -37,6 +39,11 @@ def calibration_text(calibration: Calibration) -> str:
         "",
     ]
     parts += ["budget of the readout slope:", calibration.readout_budget.table(), ""]
+    parts += [
+        *_response_lines(calibration),
+        *_series_lines(calibration),
+        *_validity_lines(calibration),
+    ]
     parts += [f"check: {_check(check)}" for check in calibration.checks]
     parts += [f"assumed: {text}" for text in calibration.assumptions]
     parts += [f"convention: {text}" for text in CONVENTIONS]
@@ -55,6 +62,59 @@ def _readout_rows(calibration: Calibration) -> list[list[str]]:
         [name, value_text(value), f"U = {expanded_text(value)} (95 %)"]
         for name, value in known.items()
     ]
+
+
+def _response_lines(calibration: Calibration) -> list[str]:
+    """Return the response between the lines in words."""
+    found = calibration.response
+    if found is None:
+        return []
+    parts = [f"gain {found.gain}", f"delay {found.delay}"]
+    for resonance in found.resonances():
+        q = resonance["q"]
+        damping = "undamped as far as the lines tell" if q is None else f"Q {q}"
+        parts.append(f"resonance {resonance['frequency']}, {damping}")
+    if found.loss is not None:
+        parts.append(f"loss factor {found.loss}")
+    return [
+        (
+            f"response from {show(found.from_hz, 'Hz')} to {show(found.to_hz, 'Hz')}, between the "
+            f"lines only ({found.shape.text}): chi-square {found.chi_square:.3g} for {found.dof} "
+            "degrees of freedom"
+        ),
+        *(f"response: {part}" for part in parts),
+    ]
+
+
+def _series_lines(calibration: Calibration) -> list[str]:
+    """Return what the drive series say, one line each."""
+    lines = []
+    for series in calibration.drive_series:
+        low, high, at_hz = (value_text(_of(series[name])) for name in ("from", "to", "frequency"))
+        up_down = "not measured" if series["up_down"] is None else _of(series["up_down"])
+        lines.append(
+            f"drive series at {at_hz}, {low} to {high}: without drive {_of(series['small_signal'])}; "
+            f"grows by {_of(series['amplitude_slope'])}; down minus up {up_down}"
+        )
+    return lines
+
+
+def _validity_lines(calibration: Calibration) -> list[str]:
+    """Return the actuator's conditions in one line."""
+    found = calibration.validity
+    known = [
+        f"{name.replace('_', ' ')} {value_text(_of(found[name]))}"
+        for name in ("drive_from", "drive_to", "bias", "temperature")
+        if found.get(name) is not None
+    ]
+    history = found.get("history")
+    known.append(f"history {history}" if history else "history not stated")
+    return [f"holds for: {'; '.join(known)}"] if found else []
+
+
+def _of(value: Measured | dict[str, Any]) -> Measured:
+    """Return a quantity that may stand in its JSON form."""
+    return value if isinstance(value, Measured) else Measured.from_dict(value)
 
 
 def value_text(measured: Measured) -> str:

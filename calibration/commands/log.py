@@ -113,12 +113,12 @@ def log(
     stop = threading.Event()
     with folder.held(), Ledger(ledger) as kept:
         plan = _plan(kept, bench_name or "bench", judging, port, options)
-        lines = LineLog(kept, plan, (lambda _alarm: stop.set()) if until_alarm else None)
-        try:
-            with _asked_to_end(stop), _heard():
+        with _asked_to_end(stop), _heard():
+            lines = LineLog(kept, plan, (lambda _alarm: stop.set()) if until_alarm else None)
+            try:
                 summary = UnattendedLog(settings, folder, lines).run(stop)
-        finally:
-            lines.close()
+            finally:
+                lines.close()
     document = summary.to_dict() | {"results": lines.results, "alarms": lines.alarms}
     if as_json:
         click.echo(to_json(document))

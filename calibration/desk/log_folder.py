@@ -94,12 +94,14 @@ class LogFolder:
         """
         sizes = {path: _size(path) for path in self.recordings()}
         total = sum(sizes.values())
-        # Room for what comes until this is asked again, as much as since the last time.
-        growth = max(0, total - self._seen_bytes) if self._seen_bytes else 0
+        # Room for what comes until this is asked again: twice the most that came in between so far,
+        # since records are written in pieces of half a second.
+        if self._seen_bytes:
+            self._grown = max(self._grown, total - self._seen_bytes)
         closed = [path for path in sizes if path != running]
         deleted = []
         for path in closed:
-            if not self._is_due(path, total + growth):
+            if not self._is_due(path, total + 2 * self._grown):
                 break
             with contextlib.suppress(FileNotFoundError):
                 path.unlink()

@@ -91,7 +91,9 @@ class CountReading:
                 "unknown: one photodiode without a drive cannot tell it, nor a turn within 40° of a "
                 "fringe's extreme"
             )
-        return "from the drive, taken to move the phase upwards as it grows"
+        return (
+            "from the drive: up is where it makes the phase grow, by its polarity as declared or +1"
+        )
 
     @property
     def fringes(self) -> Measured:

@@ -13,7 +13,7 @@ __all__ = ["count_reasons"]
 FloatArray = NDArray[np.float64]
 
 _FASTEST = 1.0 / 3.0  # fringes per sample; at one half the direction is lost
-_EVEN = 0.75  # least span over greatest
+_EVEN = 0.85  # least span over greatest
 _MOST_NOISE = 0.12  # of cos φ: the band would be above 0.4 of the span
 
 

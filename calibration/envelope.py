@@ -94,7 +94,9 @@ def running_median(levels: FloatArray, neighbours: int) -> FloatArray:
     return np.asarray(np.median(windows, axis=1))
 
 
-def running_envelope(values: FloatArray, noise: float) -> Envelope | None:
+def running_envelope(
+    values: FloatArray, noise: float, least_swing: float = 0.15
+) -> Envelope | None:
     """Return the envelope that runs along the tops and bottoms of a record.
 
     Parameters
@@ -103,6 +105,8 @@ def running_envelope(values: FloatArray, noise: float) -> Envelope | None:
         Record, any unit, no NaN.
     noise : float
         Standard deviation of its noise, same unit.
+    least_swing : float, optional
+        Swings below this share of the whole range are no fringes.
 
     Returns
     -------
@@ -110,7 +114,7 @@ def running_envelope(values: FloatArray, noise: float) -> Envelope | None:
         None where there are fewer than three tops or three bottoms.
     """
     low, high = np.quantile(values, [0.01, 0.99])
-    turns = turning_points(values, max(0.15 * float(high - low), 7.0 * noise))
+    turns = turning_points(values, max(least_swing * float(high - low), 7.0 * noise))
     levels = values[turns]
     if len(turns) < 6:
         return None

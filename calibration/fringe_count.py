@@ -25,6 +25,7 @@ FloatArray = NDArray[np.float64]
 
 _TURN_BAND_RAD = math.pi  # a way back of less than half a fringe is vibration, not a new pass
 _END_BAND_RAD = 1.0  # nor is a shorter one at an end of the record
+_HIDDEN = 0.16  # fringes: 28° there and back
 _LAW_U = 0.005  # fringes: what a harmonic of 3 % in the law moves the phase by
 
 
@@ -100,14 +101,14 @@ class FringeCount:
 
     @property
     def fringes_u(self) -> float:
-        """Standard uncertainty of ``fringes``, ends taken as independent.
+        """Standard uncertainty of ``fringes``.
 
         Returns
         -------
         float
-            In fringes.
+            In fringes; what hides next to an extreme hides at every turn alike, so that it adds up.
         """
-        return math.sqrt(math.fsum(one.fringes_u**2 for one in self.passes))
+        return math.fsum(one.fringes_u for one in self.passes)
 
     @property
     def per_period(self) -> tuple[float, float] | None:
@@ -129,7 +130,8 @@ class FringeCount:
         # a turning point that was not seen makes two passes one
         if float(whole.min()) < 0.5 * float(whole.max()) or self.passes[0].direction == 0:
             return None
-        return float(pairs.mean()), max(each, scatter) / math.sqrt(len(pairs))
+        # what hides next to an extreme hides at every turn alike: the mean does not lessen it
+        return float(pairs.mean()), max(each, scatter / math.sqrt(len(pairs)))
 
 
 def count_fringes(
@@ -206,23 +208,46 @@ def _envelope(
 ) -> tuple[Envelope, tuple[float, float]]:
     """Return the envelope to count by, and the least and greatest span along the record."""
     count = len(record.values)
-    running = running_envelope(record.values, record.noise)
     if extremes is not None:
         straight = constant_envelope(count, *extremes)
     else:
         straight = constant_envelope(count, scan.low, scan.high, scan.drift)
+    # swings over most of the range first: where a mirror shakes, small ones are no fringes
+    for least_swing in (0.7, 0.15):
+        running = running_envelope(record.values, record.noise, least_swing)
+        if running is not None and _is_near(straight, running, record.noise):
+            return straight, _range(running)
     if running is None:
-        return straight, (
-            2.0 * float(straight.half_span.min()),
-            2.0 * float(straight.half_span.max()),
-        )
-    spans = np.quantile(2.0 * running.half_span, [0.02, 0.98])
-    span_range = (float(spans[0]), float(spans[1]))
+        return straight, _range(straight)
+    return running, _range(running)
+
+
+def _is_near(straight: Envelope, running: Envelope, noise: float) -> bool:
+    """Return whether tops and bottoms lie on a straight envelope."""
     far = np.maximum(np.abs(running.low - straight.low), np.abs(running.high - straight.high))
-    straight_holds = float(np.quantile(far, 0.98)) < 0.06 * float(straight.half_span.mean()) + (
-        5.0 * record.noise
-    )
-    return (straight if straight_holds else running), span_range
+    limit = 0.06 * float(straight.half_span.mean()) + 5.0 * noise
+    return float(np.quantile(far, 0.98)) < limit
+
+
+def _range(envelope: Envelope) -> tuple[float, float]:
+    """Return the least and greatest span along a record, outliers left out."""
+    spans = np.quantile(2.0 * envelope.half_span, [0.02, 0.98])
+    return float(spans[0]), float(spans[1])
+
+
+def _shaking(passes: list[Pass], has_drive: bool) -> list[str]:  # private
+    """Return whether the mirror turns so often that a drive is needed to follow it."""
+    if has_drive or len(passes) < 8:
+        return []
+    usual = float(np.median([one.fringes for one in passes]))
+    if usual > 3.0:
+        return []
+    return [
+        (
+            f"no scan: the mirror turns {len(passes) - 1} times, after {usual:.2g} fringes as a rule; its "
+            "vibration is counted. Give the driven lines (--line), a pilot (--pilot) or the drive (--drive)"
+        )
+    ]
 
 
 def _turned(got: Unfolded) -> Unfolded:
@@ -254,6 +279,8 @@ def _passes(got: Unfolded, record: SweptRecord, drive: FloatArray | None) -> lis
     u = _end_u(got, ends)
     # where the mirror turns next to an extreme, the way beyond the extreme may be taken for one back
     hidden = math.acos(1.0 - min(2.0 * got.band, 1.0)) / (2.0 * math.pi)
+    if drive is None:  # then a turn that far from an extreme is taken for going over it
+        hidden = max(hidden, _HIDDEN)
     u[1:-1] = np.hypot(u[1:-1], hidden)
     out = []
     for k in range(len(ends) - 1):

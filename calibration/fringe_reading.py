@@ -153,7 +153,9 @@ def read_fringe(
             source = "whole fringes elsewhere in the recording"
             fit = _fit(trace, frequencies_hz, low, high, dark, ruler)
     reasons += fit.reasons
-    routes = fringe_routes(trace.values, trace.rate_hz, frequencies_hz, fit, ruler)
+    routes = fringe_routes(
+        trace.values, trace.rate_hz, frequencies_hz, fit, ruler, trace.start_index
+    )
     agreement = agreement_of(routes)
     if agreement is not None and agreement.normalised_error > _CLEAR_DISAGREEMENT:
         reasons.append(

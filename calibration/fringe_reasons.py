@@ -16,6 +16,11 @@ _NOT_DETERMINED = (
     "the working point stays (it moved by {moved:.2g} rad); give the extremes (--low and --high, or "
     "--extremes a scan)"
 )
+_NO_FRINGE = (
+    "depth not determined by this record: what the fit leaves is as large as the fringe it takes; the "
+    "line may be too weak to tell depth from contrast: give the extremes (--low and --high, or --extremes "
+    "a scan)"
+)
 _AT_EXTREME = (
     "the working point sits at a fringe {where} (phase {phase:.2f} rad): there a line moves the light "
     "only at twice its frequency"
@@ -52,7 +57,7 @@ def _undetermined(
     prior: Prior | None, depths: list[tuple[float, float]], drift_rad: float
 ) -> list[str]:
     """Return why a depth is not determined."""
-    deepest = max(depth + 3.0 * u for depth, u in depths)
+    deepest = max(depth for depth, _ in depths)
     # with extremes known, or swept over, a small line is a weak one and no more
     worst = 0.1 if prior is None and drift_rad < 2.5 else 0.3
     if prior is None and deepest < 1.0 and drift_rad < 2.5:
@@ -150,7 +155,11 @@ def fringe_reasons(
         reasons.append(
             f"sampled too slowly: the phase turns by up to {fastest:.2g} rad a sample, π is the limit"
         )
-    return reasons + _misfit(found, prior, half_span, values)
+    misfit = _misfit(found, prior, half_span, values)
+    poor = math.sqrt(found.squares / np.count_nonzero(np.isfinite(values))) > 0.35 * half_span
+    if prior is None and poor and not any("not determined" in one for one in reasons):
+        reasons.insert(0, _NO_FRINGE)
+    return reasons + misfit
 
 
 def _misfit(

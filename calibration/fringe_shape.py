@@ -13,6 +13,7 @@ __all__ = ["DirectionShape", "FringeShape", "fringe_shape"]
 FloatArray = NDArray[np.float64]
 
 _CLEAR = 0.01  # a harmonic of the law is named above this, three standard uncertainties allowed for
+_BESIDE = 7  # stretches on either side of a step; they overlap by two thirds
 _STEP = 8.0  # robust standard deviations by which a jump of tops or bottoms stands out
 
 
@@ -146,20 +147,22 @@ def _lean_causes(shapes: list[DirectionShape]) -> list[str]:
 
 
 def _step_causes(values: FloatArray, stretches: FloatArray) -> list[str]:
-    """Name sudden changes of tops or bottoms from one stretch to the next."""
-    if len(stretches) < 8:
+    """Name lasting changes of tops or bottoms from one stretch to the next."""
+    if len(stretches) < 4 * _BESIDE:
         return []
     out = []
     for name, pick in (("top", np.max), ("bottom", np.min)):
         ends = np.array([pick(values[int(a) : int(b)]) for a, b in stretches[:, :2]])
-        jumps = np.diff(ends)
+        # medians over some on either side: a turn of the mirror in one stretch is no step
+        windows = np.median(np.lib.stride_tricks.sliding_window_view(ends, _BESIDE), axis=1)
+        jumps = windows[_BESIDE:] - windows[:-_BESIDE]
         usual = 1.4826 * float(np.median(np.abs(jumps - np.median(jumps))))
         worst = int(np.argmax(np.abs(jumps)))
         least = max(_STEP * usual, 0.05 * float(np.ptp(values)))
         if abs(jumps[worst]) > least:
             out.append(
-                f"the fringe's {name} jumps by {jumps[worst]:.3g} at sample "
-                f"{int(stretches[worst + 1, 0])}; likely causes: a mode hop of the laser, or a knock"
+                f"the fringe's {name} jumps by {jumps[worst]:.3g} near sample "
+                f"{int(stretches[worst + _BESIDE, 0])}; likely causes: a mode hop of the laser, or a knock"
             )
     return out
 

@@ -11,6 +11,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.deep_routes import counting_route, recurrence_route
 from calibration.fringe_fit import FringeFit
 from calibration.lines import fit_lines_si
 from calibration.route import Route, in_metres
@@ -205,6 +206,7 @@ def fringe_routes(
     frequencies_hz: Sequence[float],
     fit: FringeFit,
     ruler: Ruler | None = None,
+    start_index: int = 0,
 ) -> list[Route]:
     """Return what each route makes of a driven record.
 
@@ -220,11 +222,14 @@ def fringe_routes(
         The driven fringe of this record, whose extremes the slope uses.
     ruler : Ruler, optional
         Metres per radian.
+    start_index : int, optional
+        Number of the first sample counted from the recording's first, where t = 0.
 
     Returns
     -------
     list of Route
-        Driven fringe, mid-fringe slope, harmonic ratios; each keeps to its valid range.
+        Driven fringe, mid-fringe slope, harmonic ratios, and with one line Bessel recurrences and
+        fringe counting; each keeps to its valid range.
     """
     spacing = 4.0 * rate_hz / len(values)
     higher = _harmonic_frequencies(rate_hz, frequencies_hz, spacing)
@@ -236,8 +241,12 @@ def fringe_routes(
     for amplitude, own in zip(amplitudes, higher, strict=True):
         sets.append([amplitude, *rest[: len(own)]])
         rest = rest[len(own) :]
-    return [
+    routes = [
         _driven(fit, ruler),
         _slope(values, fit, amplitudes, ruler),
         _ratios(fit, sets, ruler),
     ]
+    if len(frequencies_hz) == 1:
+        one = (values, rate_hz, float(frequencies_hz[0]), fit, ruler, start_index)
+        routes += [recurrence_route(*one), counting_route(*one)]
+    return routes

@@ -22,7 +22,8 @@ FloatArray = NDArray[np.float64]
 
 _ROUNDS = 3
 _PERIODS = (4.0, 12.0, 36.0)  # of the pilot in a block
-_GATE = 0.9  # |cos φ| expected up to which a sample is inverted: 26° from an extreme
+_MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+_SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
 _LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
 _WEAKEST = 0.5  # size of (cos φ, sin φ) that a block must show; 1 where nothing moves fast
 
@@ -207,11 +208,22 @@ def _followed(
     # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it
     # would pull the phase away from the extremes
     clear = np.abs(phase - expected) < np.abs(np.sin(expected))
-    inverted = present & ~lost & (np.abs(np.cos(expected)) < _GATE) & (np.abs(cosine) < 1.0) & clear
+    inverted = present & ~lost & _inside(course, expected, pilot) & (np.abs(cosine) < 1.0) & clear
     carried = present & ~lost & ~inverted
     phase = np.where(inverted, phase, np.where(carried, expected, np.nan))
     reasons = _reasons(pilot, present, lost, inverted)
     return TrackedPhase(phase, inverted, carried, pilot, [], reasons), course
+
+
+def _inside(course: FloatArray, expected: FloatArray, pilot: Pilot) -> NDArray[np.bool_]:
+    """Return the samples that lie clear of the extremes.
+
+    With a shallow pilot whole periods are kept or left out, so that what is left out does not go with
+    the pilot; a deep one leaves no whole period.
+    """
+    if pilot.depth_rad < _SHALLOW:
+        return np.asarray(np.abs(np.sin(course)) > math.sin(_MARGIN + pilot.depth_rad))
+    return np.asarray(np.abs(np.sin(expected)) > math.sin(_MARGIN))
 
 
 def _torn(course: FloatArray, length: int) -> NDArray[np.bool_]:
@@ -254,7 +266,7 @@ def _reasons(
             "for the pilot; whole fringes may be missing after that"
         )
     share = np.count_nonzero(inverted) / max(there, 1)
-    if share < 0.5:
+    if share < 0.2:
         reasons.append(f"only {share:.0%} of the samples lie where the fringe can be inverted")
     return reasons
 

@@ -1,7 +1,7 @@
 """``midfringe fringe``: metres from the fringe."""
 
 import functools
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -44,7 +44,7 @@ def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
     example="midfringe fringe scope.csv --channel 3 --line 1kHz --low 0.5V --high 10.2V "
     '--wavelength "632.99 nm"'
 )
-@click.argument("file")
+@click.argument("files", nargs=-1, required=True, metavar="FILE...")
 @click.option(
     "--line",
     "lines_hz",
@@ -72,12 +72,24 @@ def _in_counts_too(function: Callable[..., Any]) -> Callable[..., Any]:
     metavar="X,Y",
     help="Two detectors in quadrature, by column: phase from the ellipse they draw.",
 )
+@click.option(
+    "--null",
+    is_flag=True,
+    help="Several recordings at different drives: where the line's first harmonic vanishes.",
+)
+@click.option(
+    "--pilot",
+    "pilot_hz",
+    type=ValueType("Hz", above=0.0),
+    metavar="F",
+    help="Track a free-running bench through its fringes by this driven line.",
+)
 @recording_options
 @_in_counts_too
 @bench_options
 @output_options("out", "plot", "json", "overwrite")
 def fringe(
-    file: str,
+    files: tuple[str, ...],
     lines_hz: tuple[float, ...],
     count: bool,
     extremes_file: str | None,
@@ -85,6 +97,8 @@ def fringe(
     monitor: str | None,
     antiphase: str | None,
     quadrature: str | None,
+    null: bool,
+    pilot_hz: float | None,
     reading: Reading,
     levels: tuple[str | None, str | None],
     bench: Bench,
@@ -96,13 +110,14 @@ def fringe(
     """Find extremes, working point and depth of each driven line in the recording FILE.
 
     Without a line, the fringes of a scan, ramp or motor run are counted instead, pass by pass; --drive
-    then tells the direction. The extremes are those given (--low and --high, in volts or counts), those
+    then tells the direction. With --quadrature the phase comes from two detectors, with --pilot from a
+    driven line while the bench runs freely, with --null from a series of recordings. The extremes are those given (--low and --high, in volts or counts), those
     of --extremes, or what the recording shows itself. Without a wavelength there are no metres, and
     that is no error.
     """
     from metro.output import check_document, to_json, write_whole
 
-    inputs = [file, extremes_file, dark, bench.path]
+    inputs = [*files, extremes_file, dark, bench.path]
     if out is not None:
         check_document(out, overwrite, inputs)
     if plot is not None:
@@ -110,33 +125,48 @@ def fringe(
 
         check_figure(plot, overwrite, [*inputs, out])
     lines = [] if count else list(lines_hz) or [line.frequency_hz for line in bench.lines]
-    _check(lines_hz, count, extremes_file, levels)
+    ways = {"--count": count, "--quadrature": quadrature, "--null": null, "--pilot": pilot_hz}
+    _check(files, lines_hz, ways, extremes_file, levels)
     task = _Task(reading, bench, levels, extremes_file, dark, monitor, antiphase)
-    recording = reading.open(file)
-    if quadrature is not None:
+    recordings = [reading.open(file) for file in files]
+    recording = recordings[0]
+    if null:
+        answer = task.nulls(recordings, lines)
+    elif quadrature is not None:
         answer = task.in_quadrature(recording, quadrature, lines)
+    elif pilot_hz is not None:
+        answer = task.tracked(recording, pilot_hz, lines)
     else:
         answer = task.driven(recording, lines) if lines else task.counted(recording)
+    if plot is not None and answer.draw is None:
+        raise click.UsageError("--plot draws driven, counted and quadrature recordings only")
     if out is not None:
         write_whole(out, to_json(answer.document) + "\n", overwrite=overwrite)
     if plot is not None and answer.draw is not None:
         answer.draw(plot, overwrite)
     click.echo(to_json(answer.document) if as_json else answer.text)
-    reading.tell(recording)
+    for one in recordings:
+        reading.tell(one)
     if answer.reasons:
         distrust(answer.reasons)
 
 
 def _check(
+    files: tuple[str, ...],
     lines_hz: tuple[float, ...],
-    count: bool,
+    ways: Mapping[str, object],
     extremes_file: str | None,
     levels: tuple[str | None, str | None],
 ) -> None:
     from calibration.errors import CalibrationError
 
-    if count and lines_hz:
+    chosen = [name for name, value in ways.items() if value]
+    if len(chosen) > 1:
+        raise CalibrationError(f"{chosen[0]} stands for {chosen[1]}: give one or the other")
+    if ways["--count"] and lines_hz:
         raise CalibrationError("--count stands for --line: give one or the other")
+    if len(files) > 1 and not ways["--null"]:
+        raise CalibrationError(f"several recordings are for --null only, got {len(files)} files")
     if extremes_file is not None and any(levels):
         raise CalibrationError("--extremes stands for --low and --high: give one or the other")
 
@@ -191,9 +221,12 @@ class _Task:
         scan = self._scan()
         if scan is not None:
             low, high = Level(scan.low, scan.low_u), Level(scan.high, scan.high_u)
+        drive = self.reading.drive(recording)
+        if drive is not None:
+            drive = replace(drive, values=drive.values * self._polarity())
         result = read_count(
             trace,
-            self.reading.drive(recording),
+            drive,
             low=low,
             high=high,
             dark=self._dark(trace.unit),
@@ -229,6 +262,53 @@ class _Task:
             result.reasons,
             lambda path, overwrite: save_quadrature_plot(result, x, y, path, overwrite=overwrite),
         )
+
+    def nulls(self, recordings: list["Recording"], lines: list[float]) -> _Answer:
+        """Find the nulls of one line over a series of drives."""
+        from calibration.errors import CalibrationError
+        from calibration.null_reading import null_tables, read_nulls
+
+        if len(lines) != 1:
+            raise CalibrationError(f"--null needs one --line, got {len(lines)}")
+        pairs = []
+        for recording in recordings:
+            drive = self.reading.drive(recording)
+            if drive is None:
+                raise CalibrationError("--null needs --drive, the column of the drive monitor")
+            pairs.append((self._trace(recording, self.reading), drive))
+        result = read_nulls(pairs, lines[0], ruler=self._ruler())
+        text = null_tables(result, self._remarks(result.ruler is not None))
+        return _Answer(result.to_dict(), text, result.reasons)
+
+    def tracked(self, recording: "Recording", pilot_hz: float, lines: list[float]) -> _Answer:
+        """Track a free-running bench."""
+        from calibration.errors import CalibrationError
+        from calibration.found_extremes import Level, usable_scan
+        from calibration.tracked_reading import read_tracked, tracked_tables
+
+        trace = self._trace(recording, self.reading)
+        low, high = self._levels(trace.unit)
+        scan, reasons = self._scan(), []
+        if scan is None and low is None and high is None:
+            scan = usable_scan(trace, recording.path)  # it runs over whole fringes itself
+        if scan is not None:
+            low, high = Level(scan.low, scan.low_u), Level(scan.high, scan.high_u)
+            reasons = [f"extremes: {reason}" for reason in scan.reasons]
+        if low is None or high is None:
+            raise CalibrationError("low and high must be given together")
+        result = read_tracked(
+            trace,
+            pilot_hz,
+            lines,
+            low,
+            high,
+            drive=self.reading.drive(recording),
+            polarity=self._polarity(),
+            ruler=self._ruler(),
+        )
+        result = replace(result, reasons=[*reasons, *result.reasons])
+        text = tracked_tables(result, self._remarks(result.ruler is not None))
+        return _Answer(result.to_dict(), text, result.reasons)
 
     def _trace(self, recording: "Recording", reading: Reading) -> "Trace":
         """Return the photodiode, the power's drift taken out where that was asked for."""
@@ -295,6 +375,11 @@ class _Task:
             return None
         trips = round(self.bench.magnitude("arms.round_trips", 1.0))
         return ruler_of(wavelength, self.bench.index(), trips)
+
+    def _polarity(self) -> int:
+        """Return 1 where the drive makes the differential arm length grow, as the bench declares."""
+        declared = round(self.bench.magnitude("actuator.polarity", 1.0))
+        return -declared if self.bench.text("actuator.arm") == "y" else declared
 
     def _remarks(self, in_metres: bool) -> list[str]:
         if in_metres and self.bench.in_vacuum and not is_quiet():

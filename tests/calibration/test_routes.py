@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from scipy import special
 
+from calibration.bessel_recurrence import recurrence_depth, signed_harmonics
 from calibration.bessel_table import bessel_rows, bessel_table
 from calibration.driven_fringe import fit_driven_fringe_si
 from calibration.route import Agreement, Route, agreement_of
@@ -78,8 +79,10 @@ def test_routes_agree_where_they_are_valid():
         "driven fringe",
         "mid-fringe slope",
         "harmonic ratios",
+        "Bessel recurrences",
+        "fringe counting",
     ]
-    for route in routes:
+    for route in routes[:3]:
         assert not route.reasons
         assert route.valid_range
         assert float(route.phase_amplitude[0].magnitude) == pytest.approx(0.9, rel=0.02)
@@ -130,3 +133,50 @@ def test_agreement_needs_two_routes():
     got = agreement_of([one, two, bad])
     # u² of the difference: 0.02² − 0.01² (Hausman 1978)
     assert got == Agreement(pytest.approx(0.1 / (2 * math.sqrt(3e-4))), False, ("other",))
+
+
+@pytest.mark.parametrize("depth", [2.7, 5.0, 31.0, 100 * math.pi])
+def test_bessel_recurrences_cover(depth):
+    # noise of 20 dB; pulls of mean 0 and width 1 within five standard errors
+    pulls, rate, count = [], 1000.0, 8 if depth > 100 else 24
+    for seed in range(count):
+        rng = np.random.default_rng(seed)
+        f = rate / (2.7 * (depth + 6))
+        angle = 2 * np.pi * f * np.arange(20_000) / rate + rng.uniform(0, 6)
+        volts = 2 + np.cos(rng.uniform(0.3, 2.8) + depth * np.cos(angle))
+        volts += rng.normal(size=len(volts)) / np.sqrt(200)
+        highest = min(math.ceil(depth) + 8, int(0.49 * rate / f))
+        got, u, misfit = recurrence_depth(*signed_harmonics(volts, angle, highest))
+        assert misfit < 12  # few harmonics: noise, too, is known from few
+        pulls.append((got - depth) / u)
+    assert abs(np.mean(pulls)) < 5 / math.sqrt(count)
+    assert 0.4 < np.std(pulls) < 1.7
+
+
+def test_recurrences_of_scipys_bessel_functions():
+    for depth in (2.6, 11.0, 77.0):
+        harmonics = special.jv(np.arange(math.ceil(depth) + 9), depth)
+        got, _, misfit = recurrence_depth(harmonics, 1e-9)
+        assert got == pytest.approx(depth, rel=1e-7)
+        assert misfit < 1.0
+    assert math.isnan(recurrence_depth(np.zeros(4), 1e-3)[0])
+
+
+def test_deep_routes_keep_to_their_ranges():
+    ruler = ruler_of("632.81 nm")
+    for depth, words in ((0.9, "2.5 rad to 100π rad"), (4.0, "6.3 rad is the least")):
+        volts = record([depth], [31.0], 1.1)
+        fit = fit_driven_fringe_si(volts, RATE_HZ, [31.0], low=0.2, high=2.2)
+        routes = {route.route: route for route in fringe_routes(volts, RATE_HZ, [31.0], fit, ruler)}
+        reasons = routes["Bessel recurrences"].reasons + routes["fringe counting"].reasons
+        assert any(words in reason for reason in reasons)
+    volts = record([20.0], [7.0], 1.1)
+    fit = fit_driven_fringe_si(volts, RATE_HZ, [7.0])
+    routes = {route.route: route for route in fringe_routes(volts, RATE_HZ, [7.0], fit, ruler)}
+    for name in ("Bessel recurrences", "fringe counting"):
+        depth = routes[name].phase_amplitude[0]
+        assert routes[name].reasons == []
+        assert abs(float(depth.magnitude) - 20.0) < 4 * float(depth.u_magnitude)
+    agreement = agreement_of(list(routes.values()))
+    assert agreement is not None
+    assert agreement.agree

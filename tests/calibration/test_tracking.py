@@ -71,7 +71,7 @@ def test_a_drift_too_fast_for_the_pilot_is_lost_and_says_so():
     phase[30_000:] += 3000.0 * (TIME[30_000:] - TIME[30_000]) ** 2
     got = track_phase(volts(phase), RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
     assert any("lost" in reason for reason in got.reasons)
-    assert got.inverted[:29_000].mean() > 0.5
+    assert got.inverted[:29_000].mean() > 0.4
 
 
 def test_without_a_pilot_the_first_extreme_ends_it():

@@ -223,3 +223,158 @@ def test_fibre_modulator_under_control(capsys, extra, least, most):
     )
     assert code == 0
     assert least < json.loads(out)["phase_amplitude"][0]["value"] < most
+
+
+@pytest.fixture
+def swept(tmp_path):
+    """Return a scan up and down over 12.3 fringes with its drive; no units in the header."""
+    time = np.arange(8000) / 1000
+    drive = np.abs((np.linspace(0, 2, 8000) + 1) % 2 - 1)
+    volts = 2 + np.cos(2 * np.pi * 12.3 * drive + 2.0)
+    volts += 0.01 * np.random.default_rng(5).normal(size=8000)
+    path = tmp_path / "swept.csv"
+    rows = np.column_stack([time, volts, drive])
+    np.savetxt(path, rows, delimiter=",", header="time,light,ramp", comments="", fmt="%.7g")
+    return path
+
+
+def test_a_scan_is_counted(capsys, swept):
+    arguments = ("--channel", "light", "--drive", "ramp", "--wavelength", "632.9908nm", "--json")
+    code, out, _ = run(capsys, swept, *arguments)
+    assert code == 0
+    document = json.loads(out)
+    assert [one["direction"] for one in document["passes"]] == ["up", "down"]
+    for one in document["passes"]:
+        assert one["fringes"]["value"] == pytest.approx(12.3, abs=0.1)
+        # half a wavelength is one fringe
+        metres = one["displacement"]["value"]
+        assert metres == pytest.approx(one["fringes"]["value"] * 632.9908e-9 / 2, rel=1e-9)
+    assert document["low"]["value"] == pytest.approx(1.0, abs=0.01)
+    assert document["phase_amplitude"] == []
+    assert document["trustworthy"] is True
+    assert {one["direction"] for one in document["shape"]["directions"]} == {"up", "down"}
+
+
+def test_a_scan_for_people_and_as_a_picture(capsys, swept, tmp_path):
+    target = tmp_path / "scan.png"
+    code, out, _ = run(capsys, swept, "--channel", "light", "--plot", target)
+    assert code == 0
+    assert "unknown: one photodiode without a drive cannot tell it" in out
+    assert "cos 2φ" in out
+    assert target.read_bytes().startswith(b"\x89PNG")
+    code, _, err = run(capsys, swept, "--channel", "light", "--plot", target)
+    assert (code, "--overwrite" in err) == (2, True)
+
+
+def test_levels_in_volts_give_their_unit_to_a_file_without(capsys, swept):
+    levels = ("--low", "1000mV", "--high", "3V", "--json")
+    code, out, _ = run(capsys, swept, "--channel", "light", *levels)
+    document = json.loads(out)
+    assert (document["low"]["value"], document["low"]["unit"]) == (1.0, "V")
+    assert document["span"]["unit"] == "V"
+    assert code == 0
+
+
+def test_a_drawing_of_a_driven_fringe(capsys, driven, tmp_path):
+    target = tmp_path / "driven.svg"
+    levels = ("--low", "0.2V", "--high", "2.2V")
+    code, _, _ = run(capsys, driven, "--line", "31.7Hz", *levels, "--plot", target)
+    assert code == 0
+    text = target.read_text("utf-8")
+    assert text.startswith("<?xml")
+
+
+@pytest.fixture
+def freely(tmp_path):
+    """Return a bench that runs through its fringes, and two detectors in quadrature on it."""
+    time = np.arange(24_000) / 4000
+    phase = 3 * time + 0.3 * np.cos(2 * np.pi * 401.3 * time + 0.6)
+    phase += 0.15 * np.cos(2 * np.pi * 87.1 * time + 1.0)
+    rng = np.random.default_rng(6)
+    x, y = (
+        2 + part + 0.01 * rng.normal(size=len(time))
+        for part in (np.cos(phase), 0.8 * np.sin(phase + 0.1))
+    )
+    path = tmp_path / "freely.csv"
+    rows = np.column_stack([time, x, y, np.cos(2 * np.pi * 401.3 * time + 0.6)])
+    np.savetxt(path, rows, delimiter=",", header="time/s,x/V,y/V,drive/V", comments="", fmt="%.8g")
+    return path
+
+
+def test_a_free_bench_is_followed_by_a_pilot(capsys, freely, tmp_path):
+    lines = ("--line", "87.1Hz", "--channel", "2", "--drive", "4", "--wavelength", "632.9908nm")
+    code, out, _ = run(capsys, freely, "--pilot", "401.3Hz", *lines, "--json")
+    document = json.loads(out)
+    assert code == 0
+    assert document["phase_amplitude"][0]["value"] == pytest.approx(0.15, rel=0.02)
+    assert document["displacement_amplitude"][0]["value"] == pytest.approx(
+        0.15 * 632.9908e-9 / (4 * np.pi), rel=0.02
+    )
+    assert any("polarity as declared" in one for one in document["assumptions"])
+    code, out, _ = run(capsys, freely, "--pilot", "401.3Hz", *lines)
+    assert (code, "assumed: sign" in out) == (0, True)
+
+
+def test_quadrature(capsys, freely, tmp_path):
+    target = tmp_path / "ellipse.png"
+    arguments = ("--quadrature", "2,3", "--line", "87.1Hz", "--wavelength", "632.9908nm")
+    code, out, _ = run(capsys, freely, *arguments, "--json")
+    document = json.loads(out)
+    assert code == 0
+    assert document["phase_amplitude"][0]["value"] == pytest.approx(0.15, rel=0.02)
+    assert document["quadrature"]["angle"]["value"] == pytest.approx(-0.1, abs=0.01)
+    assert document["quadrature"]["periodic_error_displacement"]["unit"] == "m"
+    code, out, _ = run(capsys, freely, *arguments, "--plot", target)
+    assert code == 0
+    assert "π is the limit" in out
+    assert target.exists()
+
+
+def test_nulls_over_a_drive_series(capsys, tmp_path):
+    rng, files = np.random.default_rng(7), []
+    time = np.arange(6000) / 6000
+    for drive in np.linspace(0.5, 2.9, 7):
+        swing = np.cos(2 * np.pi * 160 * time + 0.8)
+        light = 2 + np.cos(rng.uniform(0.5, 1.2) + 2 * drive * swing) + 0.01 * rng.normal(size=6000)
+        rows = np.column_stack([time, light, drive * np.cos(2 * np.pi * 160 * time + 0.3)])
+        files.append(tmp_path / f"at{len(files)}.csv")
+        np.savetxt(
+            files[-1], rows, delimiter=",", header="time,light,drive", comments="", fmt="%.8g"
+        )
+    arguments = ("--null", "--line", "160Hz", "--channel", "light", "--drive", "drive")
+    code, out, _ = run(capsys, *files, *arguments, "--wavelength", "632.81nm", "--json")
+    document = json.loads(out)
+    assert code == 0
+    (null,) = document["nulls"]
+    # first null of J1: 193 nm for 632.81 nm, ISO 16063-11:1999, method 2 (from memory)
+    assert null["displacement"]["value"] == pytest.approx(193.0e-9, abs=0.1e-9)
+    assert null["drive"]["value"] == pytest.approx(3.8317 / 2, rel=2e-3)
+    assert document["phase_per_drive"]["value"] == pytest.approx(2.0, rel=2e-3)
+    code, out, _ = run(capsys, *files, *arguments)
+    assert (code, "from the nulls" in out) == (0, True)
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["--count", "--line", "1Hz"], "--count stands for --line"),
+        (["--count", "--pilot", "1Hz"], "--count stands for --pilot"),
+        (["--quadrature", "2"], "needs two columns"),
+        (["--quadrature", "2,3", "--low", "1V", "--high", "2V"], "leave out --low"),
+        (["--null", "--line", "1Hz"], "--null needs --drive"),
+        (["--null"], "--null needs one --line"),
+        (["--pilot", "1Hz", "--low", "1V"], "must be given together"),
+        (["--monitor", "2", "--antiphase", "3"], "one or the other"),
+        (["--pilot", "10Hz", "--low", "0V", "--high", "4V", "--plot", "x.png"], "--plot draws"),
+    ],
+)
+def test_ways_that_do_not_go_together(capsys, swept, arguments, words):
+    code, out, err = run(capsys, swept, "--channel", "light", *arguments)
+    assert (code, out) == (2, "")
+    assert words in err
+    assert len(err.strip().splitlines()) == 1
+
+
+def test_several_files_are_for_nulls_only(capsys, swept):
+    code, _, err = run(capsys, swept, swept)
+    assert (code, "for --null only, got 2 files" in err) == (2, True)

@@ -2,6 +2,7 @@
 
 import errno
 import os
+import secrets
 import stat
 import time
 from contextlib import suppress
@@ -62,28 +63,43 @@ class Writer:
         self._buffer = bytearray()
         self._number = 0
         self._synced_s = time.monotonic()
-        flags = os.O_WRONLY | os.O_CREAT | (os.O_TRUNC if overwrite else os.O_EXCL)
-        try:
-            self._file = os.open(self.path, flags | getattr(os, "O_BINARY", 0), 0o644)
-        except FileExistsError:
-            raise BridgeError(f"{path} exists; --overwrite replaces it") from None
-        except OSError as error:
-            reason = (error.strerror or str(error)).lower()
-            raise BridgeError(f"{path} cannot be written: {reason}") from None
         begin = encode_header(header)
         self.bytes = len(begin)
         """Length of the file with what still waits to be written."""
         self._header_bytes = len(begin)
         self._written = 0
         self._is_failed = False
+        self._begin(begin, overwrite=overwrite)
+
+    def _begin(self, begin: bytes, *, overwrite: bool) -> None:
+        """Make the file with its header: whoever sees it under its name sees a recording."""
+        flags = os.O_WRONLY | os.O_CREAT | (os.O_TRUNC if overwrite else os.O_EXCL)
+        made = self.path
+        try:
+            is_new = not overwrite and not self.path.exists()
+            if is_new:
+                made = self.path.with_name(f".midfringe-{secrets.token_hex(6)}.part")
+            self._file = os.open(made, flags | getattr(os, "O_BINARY", 0), 0o644)
+        except FileExistsError:
+            raise BridgeError(f"{self.path} exists; --overwrite replaces it") from None
+        except OSError as error:
+            raise self._not_written((error.strerror or str(error)).lower()) from None
         try:
             self._write(begin)
             self.sync()
-        except DiskError as error:
+            if is_new:
+                _put_in_place(made, self.path)
+        except (DiskError, OSError) as error:
             os.close(self._file)
-            if stat.S_ISREG(self.path.stat().st_mode):
-                self.path.unlink()  # without its header it is no recording
-            raise BridgeError(f"{path} cannot be written: {error.reason}") from None
+            if stat.S_ISREG(made.stat().st_mode):
+                made.unlink()  # without its header it is no recording
+            if isinstance(error, FileExistsError):
+                raise BridgeError(f"{self.path} exists; --overwrite replaces it") from None
+            reason = error.reason if isinstance(error, DiskError) else str(error.strerror).lower()
+            raise self._not_written(reason) from None
+
+    def _not_written(self, reason: str) -> BridgeError:
+        return BridgeError(f"{self.path} cannot be written: {reason}")
 
     def append(self, message: bytes) -> None:
         """Append one sealed message, in one record or, where it is longer, in several.
@@ -169,3 +185,17 @@ class Writer:
             os.ftruncate(self._file, self._written - beyond)
         reason = _MEANINGS.get(error.errno or 0, (error.strerror or str(error)).lower())
         return DiskError(self.path, reason)
+
+
+def _put_in_place(made: Path, path: Path) -> None:
+    """Give a new file its name, never that of another one."""
+    try:
+        os.link(made, path)  # refuses a file that appeared meanwhile; a rename would not
+    except FileExistsError:
+        raise
+    except OSError:  # a file system without hard links
+        if path.exists():
+            raise FileExistsError(errno.EEXIST, os.strerror(errno.EEXIST), str(path)) from None
+        made.rename(path)
+    else:
+        made.unlink()

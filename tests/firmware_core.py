@@ -78,7 +78,7 @@ class Core:
         return bytes(out[:length])
 
     def encode_frame(self, payload, room=ROOM, **fields):
-        frame = Frame(**fields)
+        frame = Frame(kind=0x0101, **fields)  # samples, version 1
         return self._written(self.library.pd_frame_encode, c.byref(frame), payload, room=room)
 
     def encode_announcement(self, announcement, ratio, room=ROOM):

@@ -20,15 +20,17 @@ LINES = 6
 
 class Frame(c.Structure):
     _fields_ = [
-        ("channels", c.c_uint8),
-        ("format", c.c_uint8),
+        ("kind", c.c_uint16),
         ("flags", c.c_uint16),
-        ("slots", c.c_uint16),
-        ("filled", c.c_uint16),
         ("stream", c.c_uint32),
         ("sequence", c.c_uint32),
+        ("channels", c.c_uint8),
+        ("format", c.c_uint8),
+        ("slots", c.c_uint16),
         ("index", c.c_uint64),
         ("clock", c.c_uint64),
+        ("filled", c.c_uint16),
+        ("reserved", c.c_uint16),
     ]
 
 
@@ -40,6 +42,7 @@ class Channel(c.Structure):
     _fields_ = [
         ("name", c.c_char_p),
         ("unit", c.c_char_p),
+        # struct pd_range, in place
         ("scale_f64", c.c_uint64),
         ("offset_f64", c.c_uint64),
         ("low", c.c_int32),

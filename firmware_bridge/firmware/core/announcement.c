@@ -5,8 +5,7 @@
 #include "wire.h"
 
 enum {
-    FIXED_WORDS = 10,
-    CHANNEL_WORDS = 6
+    FIXED_WORDS = 10
 };
 
 static void put_text(struct pd_envelope *envelope, const char *text)
@@ -14,19 +13,12 @@ static void put_text(struct pd_envelope *envelope, const char *text)
     const size_t length = pd_text_length(text, 255);
 
     pd_put_byte(envelope, (uint8_t)length);
-    pd_put_bytes(envelope, (const uint8_t *)text, length);
+    pd_put(envelope, text, length);
 }
 
 static void put_channel(struct pd_envelope *envelope, const struct pd_channel *channel)
 {
-    const uint32_t words[CHANNEL_WORDS] = {(uint32_t)(channel->scale_f64 & 0xFFFFFFFFu),
-                                           (uint32_t)(channel->scale_f64 >> 32),
-                                           (uint32_t)(channel->offset_f64 & 0xFFFFFFFFu),
-                                           (uint32_t)(channel->offset_f64 >> 32),
-                                           (uint32_t)channel->low,
-                                           (uint32_t)channel->high};
-
-    pd_put_words(envelope, words, CHANNEL_WORDS);
+    pd_put(envelope, &channel->range, sizeof channel->range);
     put_text(envelope, channel->name);
     put_text(envelope, channel->unit);
 }
@@ -34,7 +26,7 @@ static void put_channel(struct pd_envelope *envelope, const struct pd_channel *c
 static void put_body(struct pd_envelope *envelope, const struct pd_identity *identity,
                      const uint32_t *words)
 {
-    pd_put_words(envelope, words, FIXED_WORDS);
+    pd_put(envelope, words, 4 * FIXED_WORDS);
     put_text(envelope, identity->board);
     put_text(envelope, identity->firmware);
     for (uint32_t k = 0; k < identity->channel_count; k++) {

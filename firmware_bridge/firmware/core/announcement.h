@@ -15,14 +15,18 @@ struct pd_rate {
     uint32_t denominator;
 };
 
-/* One channel: value in unit = counts * scale + offset. */
-struct pd_channel {
-    const char *name; /* UTF-8, at most 255 bytes, as every text here */
-    const char *unit;
+/* Value in unit = counts * scale + offset; in the order of the wire, without padding. */
+struct pd_range {
     uint64_t scale_f64;
     uint64_t offset_f64;
     int32_t low; /* codes at the ends of the converter's range */
     int32_t high;
+};
+
+struct pd_channel {
+    const char *name; /* UTF-8, at most 255 bytes, as every text here */
+    const char *unit;
+    struct pd_range range;
 };
 
 /* What never changes while the board runs. */

@@ -61,7 +61,7 @@ void pd_envelope_head(struct pd_envelope *envelope, uint8_t type, uint16_t body)
 {
     const uint32_t head = type | (uint32_t)PD_WIRE_VERSION << 8 | (uint32_t)body << 16;
 
-    pd_put_words(envelope, &head, 1);
+    pd_put(envelope, &head, sizeof head);
 }
 
 void pd_put_byte(struct pd_envelope *envelope, uint8_t byte)
@@ -71,17 +71,12 @@ void pd_put_byte(struct pd_envelope *envelope, uint8_t byte)
     stuff(envelope, byte);
 }
 
-void pd_put_words(struct pd_envelope *envelope, const uint32_t *words, size_t count)
+void pd_put(struct pd_envelope *envelope, const void *data, size_t count)
 {
-    for (size_t k = 0; k < 4 * count; k++) {
-        pd_put_byte(envelope, (uint8_t)(words[k / 4] >> (8 * (k % 4)) & 0xFFu));
-    }
-}
+    const uint8_t *bytes = data;
 
-void pd_put_bytes(struct pd_envelope *envelope, const uint8_t *data, size_t count)
-{
     for (size_t k = 0; k < count; k++) {
-        pd_put_byte(envelope, data[k]);
+        pd_put_byte(envelope, bytes[k]);
     }
 }
 
@@ -89,7 +84,7 @@ size_t pd_envelope_close(struct pd_envelope *envelope)
 {
     const uint32_t crc = envelope->crc ^ 0xFFFFFFFFu;
 
-    pd_put_words(envelope, &crc, 1);
+    pd_put(envelope, &crc, sizeof crc);
     close_run(envelope);
     emit(envelope, 0);
     return envelope->at <= envelope->size ? envelope->at : 0;

@@ -6,6 +6,10 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#if defined __BYTE_ORDER__ && __BYTE_ORDER__ != __ORDER_LITTLE_ENDIAN__
+#error "structures go onto the wire as they lie in memory: this core needs a little-endian processor"
+#endif
+
 /* Room that a message of n bytes (its CRC not counted) needs on the wire, at most. */
 #define PD_WRAPPED_MAX(n) ((n) + 4u + ((n) + 4u) / 254u + 1u + 2u)
 
@@ -26,10 +30,8 @@ void pd_envelope_head(struct pd_envelope *envelope, uint8_t type, uint16_t body)
 
 void pd_put_byte(struct pd_envelope *envelope, uint8_t byte);
 
-/* Little-endian words of 32 bits, into which every fixed part of the wire divides. */
-void pd_put_words(struct pd_envelope *envelope, const uint32_t *words, size_t count);
-
-void pd_put_bytes(struct pd_envelope *envelope, const uint8_t *data, size_t count);
+/* Put memory as it is: every processor this is for has the byte order of the wire. */
+void pd_put(struct pd_envelope *envelope, const void *data, size_t count);
 
 /* Return the number of bytes written, 0 if the output was too small for them. */
 size_t pd_envelope_close(struct pd_envelope *envelope);

@@ -1,7 +1,5 @@
 #include "frame.h"
 
-#include "wire.h"
-
 void pd_sample_pack(int32_t sample, uint8_t format, uint8_t *out)
 {
     uint32_t bits = (uint32_t)sample;
@@ -12,21 +10,9 @@ void pd_sample_pack(int32_t sample, uint8_t format, uint8_t *out)
     }
 }
 
-static void put_header(struct pd_envelope *envelope, const struct pd_frame *frame)
-{
-    const uint32_t words[PD_FRAME_HEAD / 4] = {
-        PD_SAMPLES | (uint32_t)PD_WIRE_VERSION << 8 | (uint32_t)frame->flags << 16,
-        frame->stream,
-        frame->sequence,
-        frame->channels | (uint32_t)frame->format << 8 | (uint32_t)frame->slots << 16,
-        (uint32_t)(frame->index & 0xFFFFFFFFu),
-        (uint32_t)(frame->index >> 32),
-        (uint32_t)(frame->clock & 0xFFFFFFFFu),
-        (uint32_t)(frame->clock >> 32),
-        frame->filled};
-
-    pd_put_words(envelope, words, PD_FRAME_HEAD / 4);
-}
+/* No padding before its end: else the array's length is negative. */
+typedef char pd_frame_is_as_on_the_wire[offsetof(struct pd_frame, reserved) == PD_FRAME_HEAD - 2 ? 1
+                                                                                             : -1];
 
 size_t pd_frame_encode(const struct pd_frame *frame, const uint8_t *payload, uint8_t *out,
                        size_t size)
@@ -37,8 +23,8 @@ size_t pd_frame_encode(const struct pd_frame *frame, const uint8_t *payload, uin
     struct pd_envelope envelope;
 
     pd_envelope_open(&envelope, out, size);
-    put_header(&envelope, frame);
-    pd_put_bytes(&envelope, payload, used);
+    pd_put(&envelope, frame, PD_FRAME_HEAD);
+    pd_put(&envelope, payload, used);
     for (size_t k = used; k < room; k++) {
         pd_put_byte(&envelope, 0);
     }

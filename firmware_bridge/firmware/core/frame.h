@@ -6,25 +6,30 @@
 #include <stdint.h>
 
 #include "envelope.h"
+#include "wire.h"
 
 enum {
-    PD_FRAME_HEAD = 36
+    PD_FRAME_HEAD = 36,
+    PD_FRAME_KIND = PD_SAMPLES | PD_WIRE_VERSION << 8
 };
 
 /* Room that a frame needs on the wire, at most. */
 #define PD_FRAME_MAX(slots, channels, format) \
     PD_WRAPPED_MAX((size_t)PD_FRAME_HEAD + (size_t)(slots) * (channels) * (format))
 
+/* Its first PD_FRAME_HEAD bytes are the head of the message, in the order of the wire. */
 struct pd_frame {
-    uint8_t channels;
-    uint8_t format; /* bytes per sample: 2, 3 or 4 */
+    uint16_t kind; /* PD_FRAME_KIND */
     uint16_t flags;
-    uint16_t slots;
-    uint16_t filled; /* of the slots */
     uint32_t stream;
     uint32_t sequence;
-    uint64_t index; /* of the first sample */
-    uint64_t clock; /* board clock at the first sample */
+    uint8_t channels;
+    uint8_t format; /* bytes per sample: 2, 3 or 4 */
+    uint16_t slots;
+    uint64_t index;  /* of the first sample */
+    uint64_t clock;  /* board clock at the first sample */
+    uint16_t filled; /* of the slots */
+    uint16_t reserved;
 };
 
 /* Write one sample as the wire packs it: little-endian, `format` bytes. */

@@ -76,24 +76,13 @@ void pd_lock_in_push(struct pd_lock_in *lock_in, const struct pd_line *lines, in
     }
 }
 
-static void put_line(struct pd_envelope *envelope, uint32_t step, const int64_t *sums)
-{
-    uint32_t words[LINE_WORDS];
-
-    words[0] = step;
-    for (uint32_t k = 0; k < 2; k++) {
-        words[2 * k + 1] = (uint32_t)((uint64_t)sums[k] & 0xFFFFFFFFu);
-        words[2 * k + 2] = (uint32_t)((uint64_t)sums[k] >> 32);
-    }
-    pd_put_words(envelope, words, LINE_WORDS);
-}
-
 size_t pd_lock_in_encode(struct pd_lock_in *lock_in, const struct pd_line *lines, uint32_t stream,
                          uint8_t *out, size_t size)
 {
     uint32_t words[FIXED_WORDS] = {stream, (uint32_t)(lock_in->done_index & 0xFFFFFFFFu),
                                    (uint32_t)(lock_in->done_index >> 32), lock_in->length,
                                    lock_in->channel | (uint32_t)PD_CARRIER_SHIFT << 8};
+    int64_t(*const sums)[2] = lock_in->sums[lock_in->active ^ 1u];
     struct pd_envelope envelope;
     uint32_t steps[PD_LINES];
     uint32_t count = 0;
@@ -109,10 +98,11 @@ size_t pd_lock_in_encode(struct pd_lock_in *lock_in, const struct pd_line *lines
     words[FIXED_WORDS - 1] |= count << 16;
     pd_envelope_open(&envelope, out, size);
     pd_envelope_head(&envelope, PD_LOCK_IN, (uint16_t)(4 * (FIXED_WORDS + LINE_WORDS * count)));
-    pd_put_words(&envelope, words, FIXED_WORDS);
+    pd_put(&envelope, words, sizeof words);
     for (uint32_t k = 0; k < PD_LINES; k++) {
         if (steps[k] != 0) {
-            put_line(&envelope, steps[k], lock_in->sums[lock_in->active ^ 1u][k]);
+            pd_put(&envelope, &steps[k], sizeof steps[k]);
+            pd_put(&envelope, sums[k], sizeof sums[k]);
         }
     }
     lock_in->is_done = false;

@@ -21,6 +21,7 @@ void pd_ring_init(struct pd_ring *ring, struct pd_frame *blocks, uint8_t *payloa
     ring->taken = 0;
     for (uint32_t k = 0; k < count; k++) {
         blocks[k].filled = 0;
+        blocks[k].reserved = 0;
     }
     pd_ring_begin(ring, 0, slots_max);
 }
@@ -47,6 +48,7 @@ static bool is_full(const struct pd_ring *ring)
 static void begin_block(struct pd_ring *ring, struct pd_frame *block, uint64_t index,
                         uint64_t clock)
 {
+    block->kind = PD_FRAME_KIND;
     block->index = index;
     block->clock = clock;
     block->stream = ring->stream;

@@ -22,8 +22,8 @@ static size_t encode(uint8_t type, const uint32_t *words, size_t count, const ch
 
     pd_envelope_open(&envelope, out, size);
     pd_envelope_head(&envelope, type, (uint16_t)(4 * count + length));
-    pd_put_words(&envelope, words, count);
-    pd_put_bytes(&envelope, (const uint8_t *)text, length);
+    pd_put(&envelope, words, 4 * count);
+    pd_put(&envelope, text, length);
     return pd_envelope_close(&envelope);
 }
 

@@ -13,8 +13,8 @@ enum {
 };
 
 static const struct pd_channel channels[CHANNELS] = {
-    {"pd", "V", PD_F64_ZERO, PD_F64_ZERO, -8388608, 8388607},
-    {"drive", "V", PD_F64_ZERO, PD_F64_ZERO, -8388608, 8388607}};
+    {"pd", "V", {PD_F64_ZERO, PD_F64_ZERO, -8388608, 8388607}},
+    {"drive", "V", {PD_F64_ZERO, PD_F64_ZERO, -8388608, 8388607}}};
 
 static bool set_rate(struct pd_rate *rate)
 {

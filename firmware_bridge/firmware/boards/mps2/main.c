@@ -22,8 +22,8 @@ enum {
 
 static const struct pd_channel channels[CHANNELS] = {
     /* 2^-11 V and 2^-10 V a count: +-1 V at the photodiode, +-2 V at the drive */
-    {"photodiode", "V", UINT64_C(0x3F40000000000000), PD_F64_ZERO, -CODE_MAX - 1, CODE_MAX},
-    {"drive", "V", UINT64_C(0x3F50000000000000), PD_F64_ZERO, -REST, CODE_MAX}};
+    {"photodiode", "V", {UINT64_C(0x3F40000000000000), PD_F64_ZERO, -CODE_MAX - 1, CODE_MAX}},
+    {"drive", "V", {UINT64_C(0x3F50000000000000), PD_F64_ZERO, -REST, CODE_MAX}}};
 
 static bool set_rate(struct pd_rate *rate);
 

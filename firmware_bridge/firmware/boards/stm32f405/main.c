@@ -25,8 +25,8 @@ enum {
 #define OFFSET UINT64_C(0x3FFA666666666666)
 
 static const struct pd_channel channels[CHANNELS] = {
-    {"photodiode", "V", SCALE, OFFSET, -MIDDLE, MIDDLE - 1},
-    {"drive", "V", SCALE, OFFSET, -MIDDLE, MIDDLE - 1}};
+    {"photodiode", "V", {SCALE, OFFSET, -MIDDLE, MIDDLE - 1}},
+    {"drive", "V", {SCALE, OFFSET, -MIDDLE, MIDDLE - 1}}};
 
 static bool set_rate(struct pd_rate *rate);
 

@@ -4,9 +4,10 @@ from calibration import curvature
 from calibration.extremes import Extremes
 from calibration.term import FRINGE_EXTREMES, Term, budget_of
 from metro.bench import Bench
+from metro.budget import Budget
 from metro.measured import Measured
 
-__all__ = ["contrast"]
+__all__ = ["contrast", "contrast_budget"]
 
 
 def contrast(bench: Bench, extremes: Extremes, dark: Measured) -> Measured:
@@ -26,16 +27,20 @@ def contrast(bench: Bench, extremes: Extremes, dark: Measured) -> Measured:
     Measured
         Dimensionless.
     """
+    value, budget = contrast_budget(bench, extremes, dark)
+    return budget.measured(value)
+
+
+def contrast_budget(bench: Bench, extremes: Extremes, dark: Measured) -> tuple[float, Budget]:
+    """Return the contrast of a fringe and what stands behind it; see `contrast`."""
     dark_v = float(dark.magnitude)
     level_v = extremes.mid_v - dark_v
     value = extremes.swing_v / level_v
-    u, u_dark = (
-        extremes.u_of(1.0 / extremes.swing_v, -1.0 / level_v),
-        float(dark.u_magnitude or 0.0),
-    )
+    u = extremes.u_of(1.0 / extremes.swing_v, -1.0 / level_v)
+    u_dark = float(dark.u_magnitude or 0.0)
     terms = [
         Term(FRINGE_EXTREMES, None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
         Term("dark level", dark_v, "V", u_dark, relative=1.0 / level_v, kind="A", dof=dark.dof),
         *curvature.contrast_terms(bench, extremes, dark_v),
     ]
-    return budget_of(terms, value, "1")[0].measured(value)
+    return value, budget_of(terms, value, "1")[0]

@@ -72,6 +72,10 @@ class PtyLink:
         except BlockingIOError:
             return b""
 
+    def give_up(self):
+        """Let a sender that waits for room, which nobody makes any more, fail."""
+        self._is_closed.set()
+
     def close(self):
         self._is_closed.set()
         time.sleep(0.12)  # a sender that waits for room has seen it
@@ -228,6 +232,7 @@ class AskedBoard:
 
     def close(self):
         self._stop.set()
+        self.link.give_up()
         self._thread.join()
 
 

@@ -71,3 +71,32 @@ def test_records_are_in_the_file_after_a_sync_whatever_happens_next(tmp_path):
     writer.sync()
     assert (tmp_path / "run.mfr").stat().st_size == begin + HEADER.record_bytes
     writer.close()
+
+
+def test_under_its_name_a_recording_has_its_header_from_the_first_moment(tmp_path, monkeypatch):
+    path, seen = tmp_path / "run.mfr", []
+    real = Writer.sync
+
+    def watched(writer, **options):
+        seen.append(path.exists())
+        real(writer, **options)
+
+    monkeypatch.setattr(Writer, "sync", watched)
+    Writer(path, HEADER).close()
+    assert seen == [False, True]
+    assert [p.name for p in tmp_path.iterdir()] == ["run.mfr"]
+
+
+def test_a_recording_that_appears_meanwhile_is_left_alone(tmp_path, monkeypatch):
+    path = tmp_path / "run.mfr"
+    real = Writer.sync
+
+    def slow(writer, **options):
+        real(writer, **options)
+        path.write_text("another's")
+
+    monkeypatch.setattr(Writer, "sync", slow)
+    with pytest.raises(BridgeError, match=r"run\.mfr exists; --overwrite replaces it$"):
+        Writer(path, HEADER)
+    assert path.read_text() == "another's"
+    assert [p.name for p in tmp_path.iterdir()] == ["run.mfr"]

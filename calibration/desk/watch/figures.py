@@ -191,7 +191,7 @@ def _course(name: str, label: str, scale: str) -> Any:  # noqa: ANN401  # Bokeh'
         x_range=_range(f"{name}_x", -5.0, 0.0),
         y_range=_range(f"{name}_y", 1e-3, 1.0),
     )
-    source = _source(f"{name}_data", "x", "y", "low", "high", "colour")
+    source = _source(f"{name}_data", "x", "y", "low", "high", "colour", "marker")
     figure.segment(x0="x", x1="x", y0="low", y1="high", source=source, color="colour", line_width=2)
-    figure.scatter("x", "y", source=source, size=6, color="colour")
+    figure.scatter("x", "y", source=source, size=7, color="colour", marker="marker")
     return figure

@@ -2,6 +2,7 @@
 // Message: u32 length, JSON padded to four bytes, float32 arrays (see wire.py).
 
 const COLOURS = ["#56b4e9", "#e69f00", "#009e73", "#f0e442", "#cc79a7", "#d55e00", "#bbbbbb", "#0072b2"];
+const MARKERS = [["circle", "●"], ["square", "■"], ["triangle", "▲"], ["diamond", "◆"], ["inverted_triangle", "▼"], ["plus", "✚"], ["x", "✖"], ["star", "★"]];
 const WINDOWS = [1, 10, 60];
 const SILENT_MS = 800; // without a message the page says so
 const $ = (id) => document.getElementById(id);
@@ -145,7 +146,7 @@ function showTiles(said) {
   write("recording-more", recording.file ? `${plainName(recording.file)}, ${withUnit(recording.bytes, "B")}` : recording.reason || "");
   mark("tile-recording", recording.file ? "on" : "");
   const drive = said.drive, off = drive.why_not && !drive.lines.length;
-  write("drive", off ? "none" : drive.sum_v > 0 ? withUnit(drive.sum_v, "V") : "at rest");
+  write("drive", off ? "none" : drive.sum_v > 0 ? `${Number(drive.sum_v.toPrecision(3))} V` : "at rest");
   write("drive-more", drive.limit_v !== null && !off ? `limit ${withUnit(drive.limit_v, "V")}` : "");
   mark("tile-drive", drive.sum_v > 0 ? "on" : "");
   document.body.classList.toggle("stale", said.port.state !== "connected");
@@ -189,12 +190,12 @@ function span(values, low = Infinity, high = -Infinity) {
 }
 
 // A range that moves only when it must: it takes in everything, and shrinks when three times too large.
-function steady(name, low, high, share = 0.12) {
+function steady(name, low, high, share = 0.12, atOnce = false) {
   if (!(high >= low)) return;
   const range = model(name), spread = high - low || Math.abs(high) * 0.01 || 1e-6;
   const start = low - share * spread, end = high + share * spread;
   if (!range) return;
-  if (low < range.start || high > range.end || range.end - range.start > 3 * (end - start)) reach(name, start, end);
+  if (atOnce || low < range.start || high > range.end || range.end - range.start > 3 * (end - start)) reach(name, start, end);
 }
 
 function showTrace(said, arrays) {
@@ -214,7 +215,8 @@ function showTrace(said, arrays) {
   label("fringe", `${said.source.shown ?? "photodiode"}${unit}`);
   let [bottom, top] = span(high, ...span(low));
   if (fringe && !page.zoomed) { bottom = Math.min(bottom, fringe.low); top = Math.max(top, fringe.high); }
-  steady("trace_y", bottom, top);
+  steady("trace_y", bottom, top, 0.12, page.rescale);
+  page.rescale = false;
 }
 
 function showFringe(said, arrays) {
@@ -273,7 +275,12 @@ function showCourses(said, arrays) {
   const all = [...number.keys()], clear = all.filter((k) => ua[k] < 0.5 * a[k]), known = all.filter((k) => up[k] < 60);
   const oldest = Math.min(-1, Math.floor(Math.min(0, ...t) / 60));
   for (const name of ["amplitude_x", "change_x", "phase_x"]) reach(name, oldest, 0);
-  const colour = (rows) => rows.map((k) => COLOURS[number[k] % COLOURS.length]), x = (rows) => rows.map((k) => t[k] / 60);
+  // Colour, marker and a little distance tell the lines apart.
+  const looks = (rows) => ({
+    x: rows.map((k) => t[k] / 60 + 0.005 * oldest * number[k]),
+    colour: rows.map((k) => COLOURS[number[k] % COLOURS.length]),
+    marker: rows.map((k) => MARKERS[number[k] % MARKERS.length][0]),
+  });
   const unit = said.source.unit === "1" ? "" : ` / ${said.source.unit}`;
   label("amplitude", `amplitude${unit}`);
   label("phase", page.change ? "change / °" : "phase / °");
@@ -281,21 +288,22 @@ function showCourses(said, arrays) {
   if (page.change) {
     const first = middles(a, number, clear), y = clear.map((k) => 100 * (a[k] / first[number[k]] - 1));
     const u = clear.map((k) => (100 * ua[k]) / first[number[k]]);
-    course("change", x(clear), y, u, colour(clear));
+    course("change", looks(clear), y, u);
   } else {
     const y = all.map((k) => a[k]), low = all.map((k) => Math.max(a[k] - ua[k], 0.1 * a[k])), high = all.map((k) => a[k] + ua[k]);
-    fill("amplitude_data", { x: x(all), y, low, high, colour: colour(all) });
-    const [bottom, top] = span(high, ...span(low));
+    fill("amplitude_data", { ...looks(all), y, low, high });
+    const ruling = clear.length ? clear : all; // lines lost in noise do not rule the scale
+    const [bottom, top] = span(ruling.map((k) => high[k]), ...span(ruling.map((k) => low[k])));
     if (top > bottom) reach("amplitude_y", bottom / 1.6, top * 1.6);
   }
   const middle = middles(p, number, known);
   const y = known.map((k) => (page.change ? wrapped(p[k] - middle[number[k]]) : p[k]));
-  course("phase", x(known), y, known.map((k) => up[k]), colour(known), page.change ? null : [-190, 190]);
+  course("phase", looks(known), y, known.map((k) => up[k]), page.change ? null : [-190, 190]);
 }
 
-function course(name, x, y, u, colour, fixed = null) {
+function course(name, looks, y, u, fixed = null) {
   const low = y.map((v, k) => v - u[k]), high = y.map((v, k) => v + u[k]);
-  fill(`${name}_data`, { x, y, low, high, colour });
+  fill(`${name}_data`, { ...looks, y, low, high });
   if (fixed) reach(`${name}_y`, ...fixed);
   else steady(`${name}_y`, ...span(high, ...span(low)));
 }
@@ -313,7 +321,7 @@ function showLines(said) {
   const rows = said.lines.map((line, k) => {
     const row = document.createElement("tr");
     const cell = (text) => row.appendChild(Object.assign(document.createElement("td"), { textContent: text }));
-    const head = cell(`${Number(line.frequency_hz.toPrecision(7))} Hz`);
+    const head = cell(`${MARKERS[k % MARKERS.length][1]} ${Number(line.frequency_hz.toPrecision(7))} Hz`);
     head.style.color = COLOURS[k % COLOURS.length];
     cell(line.amplitude === null ? "waits …" : measured(line.amplitude, line.amplitude_u95, unit));
     cell(line.amplitude === null ? "" : phaseText(line.phase_deg, line.phase_u95_deg));
@@ -372,7 +380,7 @@ function showForms(said) {
   const recording = Boolean(said.recording.file), drive = said.drive;
   const button = $("record");
   button.classList.toggle("on", recording);
-  write("record", recording ? "■ end recording" : "● record");
+  write("record", recording ? "■ end" : "● record");
   button.disabled = $("name").disabled = !drive.can_record;
   if (page.wasRecording && !recording) $("name").value = "";
   page.wasRecording = recording;
@@ -383,7 +391,7 @@ function showForms(said) {
   page.driven = key;
   $("driven").replaceChildren(...drive.lines.map((line) => {
     const item = document.createElement("li"), clear = document.createElement("button");
-    clear.textContent = `✕ ${Number(line.frequency_hz.toPrecision(7))} Hz, ${withUnit(line.amplitude_v, "V", 4)}`;
+    clear.textContent = `✕ ${Number(line.frequency_hz.toPrecision(7))} Hz ${withUnit(line.amplitude_v, "V", 4)}`;
     clear.setAttribute("aria-label", `clear the line at ${line.frequency_hz} Hz`);
     clear.onclick = () => order({ do: "clear line", slot: line.slot });
     item.append(clear);
@@ -411,7 +419,7 @@ function setChange() {
 }
 
 const KEYS = {
-  r: record, " ": () => toggle("frozen", "freeze"), z: () => toggle("zoomed", "zoom"), c: setChange,
+  r: record, " ": () => toggle("frozen", "freeze"), z: () => { toggle("zoomed", "zoom"); page.rescale = true; }, c: setChange,
   n: () => order({ do: "new average" }), d: () => document.body.classList.toggle("dim"),
   w: () => setWindow(WINDOWS[(WINDOWS.indexOf(page.window) + 1) % WINDOWS.length]),
 };

@@ -1,13 +1,12 @@
 """The ledger on SQLite and on PostgreSQL: what goes in comes out, whoever writes at the same time."""
 
-import shutil
 import sqlite3
 import subprocess
 import sys
 from pathlib import Path
 
 import pytest
-from ledgers import START_S, month, result
+from ledgers import START_S, month, result, sample_calibration, sample_ledger
 from postgres import postgres_url
 
 from calibration.desk.calibration_entry import CalibrationEntry
@@ -17,7 +16,6 @@ from calibration.desk.line_entry import LineEntry, entries_of_document
 from calibration.desk.utc import iso_of, parse_time, unix_of
 from metro.measured import Measured
 
-SAMPLE = Path(__file__).parent / "samples" / "ledger-v1.sqlite"
 WRITER = """
 import sys
 from ledgers import result
@@ -38,21 +36,6 @@ def place(request, tmp_path):
         return
     with postgres_url() as url:
         yield url
-
-
-def calibration_file(tmp_path):
-    """Return the calibration that the sample holds, as a file."""
-    with Ledger(copied(tmp_path)) as ledger:
-        (entry,) = ledger.calibrations()
-    path = tmp_path / "cal.json"
-    path.write_text(entry.text, encoding="utf-8")
-    return path
-
-
-def copied(tmp_path):
-    path = tmp_path / "sample.ledger"
-    shutil.copy(SAMPLE, path)
-    return str(path)
 
 
 def test_line_results_come_back_as_they_were(place):
@@ -85,7 +68,7 @@ def test_line_results_come_back_as_they_were(place):
 
 
 def test_a_file_is_not_taken_twice(place, tmp_path):
-    entry = CalibrationEntry.of_file(calibration_file(tmp_path))
+    entry = sample_calibration(tmp_path)
     line = result(1.0, sha256="a" * 64)
     with Ledger(place) as ledger:
         assert ledger.add_calibration(entry)
@@ -98,7 +81,7 @@ def test_a_file_is_not_taken_twice(place, tmp_path):
 
 
 def test_the_calibration_in_force_is_the_last_one_made(place, tmp_path):
-    old = CalibrationEntry.of_file(calibration_file(tmp_path))
+    old = sample_calibration(tmp_path)
     text = old.text.replace(old.calibration.created, "2031-01-01T00:00:00+00:00")
     (tmp_path / "new.json").write_text(text, encoding="utf-8")
     new = CalibrationEntry.of_file(tmp_path / "new.json")
@@ -144,7 +127,7 @@ def test_8_writers_with_1000_entries_each_lose_nothing(place):
 
 
 def test_a_ledger_of_version_1_is_read(tmp_path):
-    with Ledger(copied(tmp_path), create=False) as ledger:
+    with Ledger(sample_ledger(tmp_path), create=False) as ledger:
         (calibration,) = ledger.calibrations()
         lines = ledger.line_results()
     assert calibration.sha256.startswith("f0bf9f2a23df")
@@ -154,7 +137,7 @@ def test_a_ledger_of_version_1_is_read(tmp_path):
 
 
 def test_a_newer_ledger_is_refused_by_name(tmp_path):
-    path = copied(tmp_path)
+    path = sample_ledger(tmp_path)
     with sqlite3.connect(path) as connection:
         connection.execute("UPDATE midfringe_ledger SET version = 2")
     connection.close()

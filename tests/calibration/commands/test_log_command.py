@@ -1,0 +1,188 @@
+"""``midfringe log`` on a board in real time: recordings in a row, results, ends of every kind."""
+
+import contextlib
+import json
+import resource
+import signal
+import subprocess
+import sys
+import threading
+import time
+
+import numpy as np
+import pytest
+from long_runs.killed_log import without_drive
+from wire_board import asked_board
+
+from calibration.desk.ledger import Ledger
+from firmware_bridge.opening import open_recording
+from metro.commandline import run
+
+
+@pytest.fixture(autouse=True)
+def no_ledger(monkeypatch):
+    monkeypatch.delenv("MIDFRINGE_LEDGER", raising=False)
+
+
+@pytest.fixture
+def board():
+    with asked_board(says=without_drive) as asked:
+        yield asked
+
+
+def arguments(board, folder, *more):
+    return [
+        *("log", board.link.port, "--out", str(folder / "bench")),
+        *("--ledger", str(folder / "l.ledger"), "--line", "87.1Hz", "--every=0.4s", *more),
+    ]
+
+
+def ramp_in(folder):
+    """Return the board's count in the recordings, one after the other."""
+    parts = []
+    for path in sorted(folder.glob("bench-*.mfr"), key=lambda p: (p.stat().st_mtime_ns, p.name)):
+        recording = open_recording(path)
+        values = recording.read([0, 1], 0, recording.length).values
+        parts.append(np.rint(values[:, 0] / 0.5) + 2**15 * np.rint(values[:, 1]))
+    return np.concatenate(parts)
+
+
+def test_recordings_follow_one_another_without_a_lost_sample(board, tmp_path, capsys):
+    more = ("--duration=2s", "--rotate-every=0.5s", "--quiet", "--json")
+    assert run(arguments(board, tmp_path, *more)) == 0
+    out, err = capsys.readouterr()
+    document = json.loads(out)
+    assert err == ""
+    assert len(document["files"]) == 4
+    assert document["results"] == 5
+    assert document["alarms"] == []
+    assert np.array_equal(ramp_in(tmp_path), np.arange(4000))
+    with Ledger(str(tmp_path / "l.ledger"), create=False) as ledger:
+        entries = ledger.line_results()
+    assert [entry.line_hz for entry in entries] == [87.1] * 5
+    assert not entries[0].is_ratio
+    assert entries[0].source == board.link.port
+    assert abs(entries[-1].unix_s - time.time()) < 30
+
+
+def test_every_step_is_one_line_on_standard_error(board, tmp_path, capsys):
+    assert run(arguments(board, tmp_path, "--duration=1.2s", "--rotate-every=0.5s")) == 0
+    _, err = capsys.readouterr()
+    lines = err.splitlines()
+    assert sum(line.startswith("info: 87.1 Hz: ") for line in lines) == 3
+    assert sum("is complete" in line for line in lines) == 2
+    assert all(line.startswith(("info: ", "warning: ")) for line in lines)
+
+
+def test_all_recordings_stay_within_what_is_kept(board, tmp_path, capsys):
+    most = 0
+    done = threading.Event()
+
+    def look():
+        nonlocal most
+        while not done.wait(0.02):
+            with contextlib.suppress(FileNotFoundError):  # deleted just now
+                most = max(most, sum(p.stat().st_size for p in tmp_path.glob("*.mfr")))
+
+    watcher = threading.Thread(target=look)
+    watcher.start()
+    more = ("--duration=6s", "--keep-bytes=40kB", "--quiet", "--json")
+    code = run(arguments(board, tmp_path, *more))
+    done.set()
+    watcher.join()
+    document = json.loads(capsys.readouterr().out)
+    assert code == 0
+    assert document["deleted"] >= 2  # 6 s are 60 kB
+    assert most <= 40_000
+    ramp = ramp_in(tmp_path)
+    assert np.array_equal(ramp, np.arange(12000)[-len(ramp) :])
+
+
+def start(board, folder, *more, **settings):
+    return subprocess.Popen(
+        [sys.executable, "-m", "metro", *arguments(board, folder, *more)],
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
+        **settings,
+    )
+
+
+def wait_for_recording(folder):
+    begun_s = time.monotonic()
+    while not list(folder.glob("*.mfr")):
+        assert time.monotonic() - begun_s < 60
+        time.sleep(0.01)
+
+
+@pytest.mark.parametrize("number", [signal.SIGTERM, signal.SIGINT, signal.SIGHUP])
+def test_a_polite_end_is_clean(board, tmp_path, number):
+    with start(board, tmp_path, "--quiet") as process:
+        wait_for_recording(tmp_path)
+        time.sleep(0.6)
+        process.send_signal(number)
+        out, err = process.communicate(timeout=30)
+    assert (process.returncode, err) == (0, "")
+    assert out.startswith("1 recordings here, 0 deleted in time, ")
+    (path,) = tmp_path.glob("*.mfr")
+    assert not any("end" in remark for remark in open_recording(path).remarks)
+    ramp = ramp_in(tmp_path)
+    assert np.array_equal(ramp, np.arange(len(ramp)))
+    assert len(ramp) >= 1000
+
+
+def test_a_full_disk_says_what_was_kept_and_ends_with_3(tmp_path):
+    """The limit on a file's size stands for it; the ledger's files are smaller."""
+
+    def limit():
+        resource.setrlimit(resource.RLIMIT_FSIZE, (300_000, 300_000))
+
+    with (
+        asked_board(says=without_drive, rate_hz=40_000.0) as board,
+        start(board, tmp_path, "--quiet", preexec_fn=limit) as process,
+    ):
+        _, err = process.communicate(timeout=60)
+    assert process.returncode == 3
+    assert "cannot be written any further: a file may not be larger here; kept " in err
+    assert err.count("\n") == 1
+    ramp = ramp_in(tmp_path)
+    assert f"kept {len(ramp)} samples" in err
+    assert np.array_equal(ramp, np.arange(len(ramp)))
+
+
+def test_a_second_log_in_the_same_place_is_refused(board, tmp_path, capsys):
+    with start(board, tmp_path, "--quiet") as process:
+        wait_for_recording(tmp_path)
+        assert run(arguments(board, tmp_path)) == 2
+        process.terminate()
+        process.communicate(timeout=30)
+    assert "another log is writing" in capsys.readouterr().err
+
+
+def refused(capsys, *words):
+    assert run(["log", *map(str, words)]) == 2
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert err.count("\n") == 1
+    return err
+
+
+def test_wrong_input_is_one_line(tmp_path, capsys):
+    out = ("/dev/none", "--out", tmp_path / "bench")
+    place = ("--ledger", tmp_path / "l.ledger")
+    line = ("--line", "50Hz")
+    assert "Missing option '--out'" in refused(capsys, "/dev/none")
+    assert "--ledger is needed" in refused(capsys, *out)
+    assert "--line is needed: no calibration is in force" in refused(capsys, *out, *place)
+    assert "--slope needs a calibration in force" in refused(
+        capsys, *out, *place, *line, "--slope=rising"
+    )
+    assert "/dev/none" in refused(capsys, *out, *place, *line)
+    assert "--over must be at most --every, 60 s, got 61 s" in refused(
+        capsys, *out, *place, *line, "--over=61s"
+    )
+    assert "--rotate-bytes must be at most half of --keep-bytes" in refused(
+        capsys, *out, *place, *line, "--keep-bytes=1MB", "--rotate-bytes=600kB"
+    )
+    assert "--rate goes with --text" in refused(capsys, *out, *place, *line, "--rate=5Hz")
+    assert not list(tmp_path.glob("*.mfr"))

@@ -156,7 +156,7 @@ def record(
     """
     if duration_s is not None and not 0 < duration_s < float("inf"):
         raise BridgeError(f"duration_s must be > 0 s and finite, got {duration_s!r}")
-    if Path(path).exists() and not overwrite:
+    if not overwrite and _exists(Path(path)):
         raise BridgeError(f"{path} exists; --overwrite replaces it")
     if text and drive is not None and drive.lines:
         raise BridgeError("drive lines need a board that sends frames, not text")
@@ -192,6 +192,13 @@ def record(
         error.kept = _maybe_summary(intake, is_rotated=is_rotated)
         raise
     return _summary(intake, is_rotated=is_rotated)
+
+
+def _exists(path: Path) -> bool:
+    try:
+        return path.exists()
+    except OSError:  # a folder that may not be read: making the file will say so
+        return False
 
 
 def _maybe_summary(intake: Intake, *, is_rotated: bool) -> RecordSummary | None:

@@ -331,21 +331,22 @@ class RecordingSession:
         else:
             self._silence.note(arrival.data, *self._take_bytes(arrival))
 
-    def _take_bytes(self, arrival: Arrival) -> tuple[bool, bool]:
-        """Return whether anything valid was in it, and whether that is what is recorded."""
+    def _take_bytes(self, arrival: Arrival) -> tuple[bool, bool, bool]:
+        """Return whether anything valid was in it, what is recorded, and our own commands."""
         framer = self._framer
         if framer is not None:
             before = framer.heard
             for line in framer.feed(arrival.data, arrival.monotonic_ns * 1e-9):
                 self._intake.take(line, arrival.monotonic_ns, arrival.unix_ns)
-            return framer.heard > before, framer.heard > before
+            return framer.heard > before, framer.heard > before, False
         pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
             if self._desk is None or self._is_wanted(piece, self._desk):
                 self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
-        kinds = {piece[0] for piece in pieces if isinstance(piece, bytes)} - {MessageType.COMMAND}
-        return bool(kinds), not kinds.isdisjoint(_SAMPLED)
+        kinds = {piece[0] for piece in pieces if isinstance(piece, bytes)}
+        others = kinds - {MessageType.COMMAND}
+        return bool(others), not others.isdisjoint(_SAMPLED), MessageType.COMMAND in kinds
 
     def _is_wanted(self, piece: bytes | Discarded, desk: DriveDesk) -> bool:
         """Return whether a piece is to be kept; hear what the board says about its drive."""

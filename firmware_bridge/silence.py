@@ -28,9 +28,10 @@ class Silence:
         self._name, self._baud, self._is_text = name, baud, is_text
         self._heard_s = self._sampled_s = time.monotonic()
         self._is_heard = False  # ever
+        self._is_echo = False
         self._bytes = self._printable = self._zeros = 0  # since the last time something valid came
 
-    def note(self, data: bytes, is_valid: bool, is_sampled: bool) -> None:
+    def note(self, data: bytes, is_valid: bool, is_sampled: bool, is_echo: bool = False) -> None:
         """Take note of bytes.
 
         Parameters
@@ -41,7 +42,10 @@ class Silence:
             Whether a valid message or line ended in it.
         is_sampled : bool
             Whether one of them was what is recorded, not only an answer.
+        is_echo : bool
+            Whether our own commands came back in it.
         """
+        self._is_echo = self._is_echo or is_echo
         if is_sampled:
             self._sampled_s = time.monotonic()
         if is_valid:
@@ -110,6 +114,11 @@ class Silence:
             return f"the board announced itself and sent no samples for {_SILENCE_S:g} s"
         if not self._bytes:
             return f"the board is silent for {_SILENCE_S:g} s"
+        if self._is_echo:
+            return (
+                f"only our own commands came back for {_SILENCE_S:g} s: the port loops or echoes, and "
+                "no board speaks"
+            )
         came = f"{self._bytes} bytes came in {_SILENCE_S:g} s"
         if self._printable > 0.9 * self._bytes:
             return f"{came}, text and no frames (--text records lines of numbers)"

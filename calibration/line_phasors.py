@@ -119,7 +119,14 @@ class LinePhasors:
         """
         from calibration.line_solution import solve_lines
 
-        return solve_lines(self)
+        return solve_lines(self.checked())
+
+    def checked(self) -> "LinePhasors":
+        """Return the same; raise a CalibrationError where a channel has no value at all."""
+        for name, phasors in zip(("samples", "drive"), self.blocks, strict=False):
+            if not phasors.used:
+                raise CalibrationError(f"{name}: no value is there, all are NaN")
+        return self
 
     def joined(self) -> "LinePhasors":
         """Return the same with what filters could not use at the seams between parts put in."""

@@ -105,7 +105,7 @@ def _taps(source: LineSource, plan: LinePlan, course: PhaseCourse) -> tuple[tupl
 
 def _given_lines(source: LineSource, plan: LinePlan) -> LinePhasors:
     """Sum lines at given frequencies, their common clock followed."""
-    sums = sum_lines(source, plan)
+    sums = sum_lines(source, plan).checked()
     stretch = float(min(source.length, SURVEYED))
     followed = follow_phases(sums.blocks, len(plan.cycles), plan.course, stretch)
     taps = _taps(source, plan, followed.applied)
@@ -122,7 +122,7 @@ def _free_lines(source: LineSource, plan: LinePlan) -> LinePhasors:
 
 def _free_rounds(source: LineSource, plan: LinePlan) -> LinePhasors:
     """Gauss–Newton in the frequencies, the carriers renewed in each round."""
-    sums = sum_lines(source, plan)
+    sums = sum_lines(source, plan).checked()
     for _ in range(_FREE_ROUNDS):
         fits = [fit_channel(phasors, len(plan.cycles), plan.course) for phasors in sums.blocks]
         step, _ = combine_steps(fits)

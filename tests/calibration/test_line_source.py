@@ -5,10 +5,12 @@ import pytest
 from big_recording import LINES_HZ, RATE_HZ, VOLTS_A_COUNT, write_recording
 
 import calibration.line_source
+from calibration.errors import CalibrationError
 from calibration.line_reading import read_lines, read_recording_lines
 from calibration.line_source import RecordingSource
 from calibration.lines import fit_source
 from firmware_bridge.recording import open_mfr
+from firmware_bridge.trace import Span
 
 
 @pytest.fixture(scope="module")
@@ -75,6 +77,17 @@ def test_response_and_drive_together(tmp_path, monkeypatch):
     for line, other in zip(fit.lines, whole.lines, strict=True):
         assert line.ratio.phasor == pytest.approx(2, rel=3e-3)
         assert line.ratio.phasor == pytest.approx(other.ratio.phasor, rel=1e-11)
+
+
+def test_a_channel_without_a_value_is_refused(path):
+    recording = open_mfr(path)
+
+    def nothing(positions, start, stop):
+        return Span(np.full((stop - start, len(positions)), np.nan), 0)
+
+    recording.read = nothing
+    with pytest.raises(CalibrationError, match="samples: no value is there, all are NaN"):
+        read_recording_lines(recording, ["pd"], LINES_HZ)
 
 
 def test_every_sample_comes_once_and_in_order(path):

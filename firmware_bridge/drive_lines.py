@@ -63,7 +63,7 @@ class DriveLine:
 
 
 def full_scale_v(announcement: Announcement) -> float | None:
-    """Return the full scale of a board's drive: the largest voltage its drive channel can show.
+    """Return the full scale of a board's drive: what its drive channel shows at its highest code.
 
     Parameters
     ----------
@@ -75,16 +75,10 @@ def full_scale_v(announcement: Announcement) -> float | None:
     float or None
         [V] of that channel; None where no channel named "drive" is in volts.
     """
-    bottom, top = announcement.code_limits
     for info in announcement.channels:
         if info.name.lower() == DRIVE_CHANNEL and info.unit == "V":
-            codes = (
-                bottom if info.low is None else info.low,
-                top if info.high is None else info.high,
-            )
-            # The highest code stands for full scale less one code.
-            ends = [abs(code * info.scale + info.offset) for code in codes]
-            return max(ends)
+            high = announcement.code_limits[1] if info.high is None else info.high
+            return abs(high * info.scale + info.offset) or None
     return None
 
 

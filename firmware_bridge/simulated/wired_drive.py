@@ -62,7 +62,8 @@ class WiredDrive:
         self.drive = LiveDrive()
         self._rate_hz = bench.rate_hz
         self._true_rate_hz = bench.rate_hz * (1.0 + bench.truth.clock)
-        self._full_v = bench.converter.range_v / 2 * bench.terminal_factor
+        high = 2 ** (bench.converter.bits - 1) - 1
+        self._full_v = high * bench.converter.step_v * bench.terminal_factor
         self._heard_s = time.monotonic()
 
     def hear(self) -> None:

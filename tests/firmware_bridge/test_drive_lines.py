@@ -37,14 +37,14 @@ def board(**drive):
 @pytest.mark.parametrize(
     ("drive", "full_v"),
     [
-        ({"scale": 2.0**-10, "low": -2048, "high": 2047}, 2.0),
+        ({"scale": 2.0**-10, "low": -2048, "high": 2047}, 2047 / 1024),
         ({"scale": 3.3 / 65536, "offset": 1.65}, 3.3 * (1 - 2**-16)),
-        ({"scale": 1e-3}, 32.768),
+        ({"scale": 1e-3}, 32.767),
         ({"scale": 1e-3, "unit": "mV"}, None),
         ({"scale": 1e-3, "name": "monitor"}, None),
     ],
 )
-def test_full_scale_is_the_largest_voltage_the_drive_channel_can_show(drive, full_v):
+def test_full_scale_is_what_the_drive_channel_shows_at_its_highest_code(drive, full_v):
     assert full_scale_v(board(**drive)) == pytest.approx(full_v)
 
 
@@ -55,7 +55,7 @@ def test_a_line_becomes_a_command_as_the_specification_has_it():
     assert code == CommandCode.SET_LINE
     slot, _, amplitude, step, phase = struct.unpack("<BBHII", arguments)
     assert slot == 1
-    assert amplitude == round(0.5 * 0.5 / 10 / 2.0 * 65536)
+    assert amplitude == round(0.5 * 0.5 / 10 / (2047 / 1024) * 65536)
     assert step == round(40.0 / 2000.0 * 2**32)
     assert phase == 3 * 2**30
 
@@ -65,7 +65,9 @@ def test_lines_fall_evenly_and_end_in_rest():
     lines.set(0, DriveLine(40.0, 1.0))
     steps = list(lines.fall(board(scale=2.0**-10, low=-2048, high=2047)))
     sizes = [struct.unpack("<BBHII", request[0][1])[2] for _, request in steps[:-1]]
-    np.testing.assert_allclose(np.array(sizes) / 32768, np.arange(0.9, 0.05, -0.1), atol=2e-5)
+    np.testing.assert_allclose(
+        np.array(sizes) / 65536 * 2047 / 1024, np.arange(0.9, 0.05, -0.1), atol=2e-5
+    )
     assert [code for code, _ in steps[-1][1]] == [CommandCode.CLEAR_LINE, CommandCode.RAMP]
     assert sum(wait_s for wait_s, _ in steps) == pytest.approx(0.25)
 

@@ -23,7 +23,7 @@ from firmware_bridge.simulated.setup import Setup, Tone
 from firmware_bridge.simulated.wired_drive import WiredDrive
 from metro.bench import load_bench
 
-FULL_V = 50.0  # the bench file: a converter of +-5 V behind a divider of 10
+FULL_V = 50.0 * 32767 / 32768  # the bench file: a converter of +-5 V behind a divider of 10
 
 
 @pytest.fixture(scope="module")

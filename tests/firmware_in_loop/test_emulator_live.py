@@ -118,6 +118,30 @@ def test_a_recording_goes_through_inspect_and_lines(elf, tmp_path):
         assert u < 2e-4
 
 
+def test_record_drives_the_lines_it_is_told_and_leaves_the_board_at_rest(elf, tmp_path):
+    path = tmp_path / "driven.mfr"
+    with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:
+        done, recorded = midfringe(
+            "record", "--port", board.port, "--out", path, "--duration", "3s", "--json",
+            "--line", "87.1Hz=0.6V", "--line", "31.7Hz=0.4V@1rad", "--drive-limit", "1.5V",
+        )  # fmt: skip
+        assert done.returncode == 0, done.stderr
+        host = Host(board.port)
+        host.say(CommandCode.START)
+        host.listen(lambda events: end_of(events) >= 200)
+        host.close()
+    assert (recorded["samples"], recorded["gaps"]) == (3_000, [])
+    drive = [event.data[:, 1] for event in host.events if isinstance(event, Samples)]
+    assert not np.any(np.concatenate(drive))
+    done, fitted = midfringe(
+        "lines", path, "--channel", "photodiode", "--drive", "drive", "--line", "87.1Hz",
+        "--line", "31.7Hz", "--json",
+    )  # fmt: skip
+    sizes = [line["drive"]["amplitude"]["value"] for line in fitted["lines"]]
+    # half a code of 1 mV in each sample, and amplitudes in 2^-16 of 2 V
+    assert sizes == pytest.approx([0.6, 0.4], abs=2e-4)
+
+
 def test_the_drive_rests_when_the_host_is_silent(elf):
     with Emulator(elf) as board:
         host = Host(board.port)

@@ -25,6 +25,12 @@ PLAN = LogPlan(
 )
 
 
+@pytest.fixture(autouse=True)
+def heard(caplog):
+    """Hear what is logged, whatever a command before has set."""
+    caplog.set_level(logging.WARNING, "calibration.desk")
+
+
 @pytest.fixture
 def ledger(tmp_path):
     with Ledger(str(tmp_path / "bench.ledger")) as opened:

@@ -57,7 +57,7 @@ def _undetermined(
     prior: Prior | None, depths: list[tuple[float, float]], drift_rad: float
 ) -> list[str]:
     """Return why a depth is not determined."""
-    deepest = max(depth for depth, _ in depths)
+    deepest = max(depth + 3.0 * u for depth, u in depths)  # what may be 1 rad is not refused
     # with extremes known, or swept over, a small line is a weak one and no more
     worst = 0.1 if prior is None and drift_rad < 2.5 else 0.3
     if prior is None and deepest < 1.0 and drift_rad < 2.5:

@@ -24,7 +24,7 @@ RATE_HZ = 1000.0
 SAMPLES = 20_000
 KINDS = ("deep", "given", "drift", "exact", "undetermined")
 """1 to 320 rad alone; below 1 rad with extremes given with u; below 1 rad with π of drift and more;
-1 to 320 rad without noise; below 0.9 rad with neither."""
+1 to 320 rad without noise; below 0.8 rad with neither."""
 _SHARE = {"exact": 0.1, "undetermined": 0.1}  # of the records of the others
 _WRONG = 6.0  # a wrong minimum lies further off than this many standard uncertainties
 _LIMITS = (0.935, 0.965)
@@ -36,7 +36,7 @@ def made(kind, seed, samples=SAMPLES):
     deep = kind in ("deep", "exact")
     depth = np.exp(rng.uniform(0, np.log(320)) if deep else rng.uniform(np.log(0.02), 0))
     if kind == "undetermined":
-        depth *= 0.9  # nearer to 1 rad the estimate itself may lie above
+        depth *= 0.8  # nearer to 1 rad the record may not exclude that it is deep enough
     if samples < SAMPLES:  # short records: neither the deepest nor the smallest
         depth = min(depth, 40.0) if deep else max(depth, 0.1)
     f = RATE_HZ / (2.5 * (depth + 5)) * rng.uniform(0.5, 1.0)

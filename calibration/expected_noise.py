@@ -97,7 +97,9 @@ _CHAIN_KEYS = {
 }
 
 
-def expected_noise(bench: "Bench", quantity: str, frequency_hz: FloatArray) -> ExpectedNoise | None:
+def expected_noise(
+    bench: "Bench", quantity: str, frequency_hz: FloatArray, *, undone: bool = False
+) -> ExpectedNoise | None:
     """Return the noise that a bench should show.
 
     Parameters
@@ -108,6 +110,8 @@ def expected_noise(bench: "Bench", quantity: str, frequency_hz: FloatArray) -> E
         ``"displacement"`` [m], ``"strain"`` [1], ``"phase"`` [rad] or ``"voltage"`` [V].
     frequency_hz : ndarray, shape (n_bins,)
         Bins of the spectrum [Hz], the first may be 0.
+    undone : bool
+        Whether what amplifier, filter and aperture take away was put back into the recording.
 
     Returns
     -------
@@ -118,7 +122,7 @@ def expected_noise(bench: "Bench", quantity: str, frequency_hz: FloatArray) -> E
     lowest = float(frequency_hz[frequency_hz > 0][0])
     asked = np.geomspace(lowest, frequency_hz[-1], _points(lowest, float(frequency_hz[-1])))
     noises = [displacement_noise(chain, f) for f in asked.tolist()]
-    scale = _scale(chain, quantity, asked)
+    scale = _scale(chain, quantity, asked, undone)
     if scale is None:
         return None
     found = {
@@ -157,7 +161,9 @@ def _points(lowest: float, highest: float) -> int:
     return max(2, int(_A_DECADE * np.log10(highest / lowest)) + 1)
 
 
-def _scale(chain: "Chain", quantity: str, frequency_hz: FloatArray) -> FloatArray | None:
+def _scale(
+    chain: "Chain", quantity: str, frequency_hz: FloatArray, undone: bool
+) -> FloatArray | None:
     """Return what a metre of differential displacement shows as, amplifier, filter and aperture included.
 
     A recording that was converted sample by sample has lost at high frequency what they take away, so
@@ -169,7 +175,7 @@ def _scale(chain: "Chain", quantity: str, frequency_hz: FloatArray) -> FloatArra
         return None
     if quantity == "voltage":
         return np.asarray(volts[1:])
-    bench, seen = chain.bench, volts[1:] / volts[0]
+    bench, seen = chain.bench, np.ones(len(frequency_hz)) if undone else volts[1:] / volts[0]
     if quantity == "strain":
         return np.asarray(seen / bench.magnitude("arms.length"))
     if quantity == "phase":

@@ -26,6 +26,7 @@ def read_spectrum(
     from_s: float | None = None,
     to_s: float | None = None,
     resolution_hz: float | None = None,
+    undo_readout: bool = False,
 ) -> "tuple[Spectrum, Conversion | None]":
     """Return the spectrum of a recording with the noise its bench should have.
 
@@ -47,6 +48,8 @@ def read_spectrum(
         The stretch [s].
     resolution_hz : float, optional
         Distance of the bins [Hz].
+    undo_readout : bool
+        Undo what amplifier and anti-alias filter take off, in the recording and in what is expected.
 
     Returns
     -------
@@ -63,9 +66,11 @@ def read_spectrum(
         found = find_spectrum(recording, channel, resolution_hz=resolution_hz, **stretch)
         worth = None
     else:
+        from calibration.conversion_filter import readout_stage
         from calibration.convert import ConvertedRecording
 
-        converted = ConvertedRecording(recording, channel, calibration, quantity, slope)
+        stages = [readout_stage(calibration, recording.rate_hz)] if undo_readout else []
+        converted = ConvertedRecording(recording, channel, calibration, quantity, slope, stages)
         found = find_spectrum(converted, "1", resolution_hz=resolution_hz, **stretch)
         worth = converted.judge(from_s, to_s)
     if quantity == "voltage" and found.unit != "V":
@@ -73,11 +78,11 @@ def read_spectrum(
     measured = bench_as_measured(
         bench, recording.rate_hz, recording.channels[recording.find(channel)], calibration
     )
-    return _with_expected(found, measured, quantity), worth
+    return _with_expected(found, measured, quantity, undo_readout), worth
 
 
-def _with_expected(found: Spectrum, bench: "Bench", quantity: str) -> Spectrum:
-    expected = expected_noise(bench, quantity, found.welch.frequency_hz)
+def _with_expected(found: Spectrum, bench: "Bench", quantity: str, undone: bool) -> Spectrum:
+    expected = expected_noise(bench, quantity, found.welch.frequency_hz, undone=undone)
     if expected is None:
         remark = "no expected noise: no noise source is known; give --bench"
         return replace(found, remarks=(*found.remarks, remark))

@@ -47,6 +47,9 @@ __all__ = ["spectrum"]
     help="The side of the fringe the recording lies on.",
 )
 @click.option(
+    "--undo-readout", is_flag=True, help="Undo what amplifier and anti-alias filter take off."
+)
+@click.option(
     "--resolution",
     "resolution_hz",
     type=ValueType("Hz", above=0.0),
@@ -61,6 +64,7 @@ def spectrum(
     calibration_file: str | None,
     quantity: str | None,
     slope: str,
+    undo_readout: bool,
     resolution_hz: float | None,
     reading: Reading,
     bench: "Bench",
@@ -84,6 +88,8 @@ def spectrum(
 
     if quantity is not None and calibration_file is None:
         raise click.UsageError(f"--quantity {quantity} needs --calibration, got none")
+    if undo_readout and calibration_file is None:
+        raise click.UsageError("--undo-readout needs --calibration, got none")
     inputs = [file, bench.path, calibration_file]
     if out is not None:
         is_table = out.lower().endswith(".csv")
@@ -103,6 +109,7 @@ def spectrum(
         from_s=reading.from_s,
         to_s=reading.to_s,
         resolution_hz=resolution_hz,
+        undo_readout=undo_readout,
     )
     reasons, cautions = ([], []) if worth is None else (worth.reasons, worth.cautions)
     systematic = 0.0 if worth is None else worth.relative_u

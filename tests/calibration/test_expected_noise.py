@@ -47,6 +47,10 @@ def test_what_filters_take_away_is_taken_from_motion_and_not_from_the_converter(
     np.testing.assert_allclose(found.sources["adc"], found.sources["adc"][0], rtol=1e-3)
     at = float(found.sources["motion"][400])
     assert at == pytest.approx(1e-9 / 400 / np.sqrt(2), rel=0.02)
+    undone = expected_noise(bench, "displacement", frequency, undone=True)
+    assert float(undone.sources["motion"][400]) == pytest.approx(1e-9 / 400, rel=2e-3)
+    lifted = undone.sources["adc"] / found.sources["adc"]
+    assert float(lifted[400]) == pytest.approx(np.sqrt(2), rel=0.02)
     both = np.hypot(found.sources["adc"], found.sources["motion"])
     np.testing.assert_allclose(found.density, both, rtol=3e-3)
     assert "stated from 1 Hz to 1000 Hz" in found.remarks[-1]

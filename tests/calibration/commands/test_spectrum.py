@@ -121,6 +121,7 @@ def test_a_stretch_and_files(capsys, recording, bench, tmp_path):
         (["--resolution", "500Hz"], "--resolution must lie between 0.1 Hz and 125 Hz"),
         (["--resolution", "0.01Hz"], "--resolution must lie between"),
         (["--quantity", "strain"], "--quantity strain needs --calibration"),
+        (["--undo-readout"], "--undo-readout needs --calibration"),
         (["--calibration", "missing.json"], "missing.json"),
         (["--channel", "drive"], "no channel named 'drive'"),
         (["--from", "20s"], "has no sample from 20 s"),

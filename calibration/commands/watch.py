@@ -68,7 +68,7 @@ os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     "--host",
     default="127.0.0.1",
     metavar="ADDRESS",
-    help="Serve beyond this computer; with a token.",
+    help="Serve beyond this computer: with a token, not encrypted.",
 )
 @click.option(
     "--port-number",

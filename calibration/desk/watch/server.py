@@ -131,8 +131,9 @@ class WatchServer:
         for event in self.source.poll():
             for job in self.state.take(event):
                 self._do(job)
-        self.orders.follow_port()
+        self.orders.drive.follow_port()
         for reply in self.state.take_replies():
+            self.orders.drive.hear(reply)
             self.tell(Answer(reply.text, reply.refused), by_board=True)
 
     def _do(self, job: Job) -> None:

@@ -145,12 +145,17 @@ function showTiles(said) {
   write("recording", recording.file ? clockTime(recording.duration_s) : "off");
   write("recording-more", recording.file ? `${plainName(recording.file)}, ${withUnit(recording.bytes, "B")}` : recording.reason || "");
   mark("tile-recording", recording.file ? "on" : "");
-  const drive = said.drive, off = drive.why_not && !drive.lines.length;
-  write("drive", off ? "none" : drive.sum_v > 0 ? `${Number(drive.sum_v.toPrecision(3))} V` : "at rest");
-  write("drive-more", drive.limit_v !== null && !off ? `limit ${withUnit(drive.limit_v, "V")}` : "");
-  mark("tile-drive", drive.sum_v > 0 ? "on" : "");
+  showDrive(said.drive, ["gone", "silent", "failed"].includes(said.port.state));
   document.body.classList.toggle("stale", said.port.state !== "connected");
   showAlarm(said);
+}
+
+// A drive that cannot be reached is unknown, not at rest.
+function showDrive(drive, isAway) {
+  const none = drive.why_not && !drive.lines.length, isUnknown = isAway && !none;
+  write("drive", none ? "none" : isUnknown ? "unknown" : drive.sum_v > 0 ? `${Number(drive.sum_v.toPrecision(3))} V` : "at rest");
+  write("drive-more", none || drive.limit_v === null ? "" : isUnknown ? "board not reached" : `limit ${withUnit(drive.limit_v, "V")}`);
+  mark("tile-drive", isUnknown ? "bad" : drive.sum_v > 0 ? "on" : "");
 }
 
 function showRest(said) {

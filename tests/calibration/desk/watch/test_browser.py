@@ -163,6 +163,7 @@ def test_unplugging_shows_within_a_second_and_recovers(page, board):
     until(lambda: "PORT GONE" in page.text("alarm"), 5.0, "alarm")
     assert time.monotonic() - begun_s < 1.0
     assert page.text("port") == "✕ PORT GONE"
+    assert page.text("drive") == "unknown"  # whether it rests cannot be known
     board.plug_in()
     page.has("port", "connected", 10.0)
     until(lambda: not page.element("alarm").is_displayed(), 2.0, "no alarm")

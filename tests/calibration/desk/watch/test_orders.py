@@ -5,11 +5,12 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from calibration.desk.watch.orders import SLOTS, Answer, Orders
+from calibration.desk.watch.drive import SLOTS
+from calibration.desk.watch.orders import Answer, Orders
 from calibration.desk.watch.setup import WatchSetup
 from calibration.desk.watch.state import WatchState
 from firmware_bridge.announcement import ChannelInfo
-from firmware_bridge.live_events import LiveChannels, LiveState
+from firmware_bridge.live_events import LiveChannels, LiveReply, LiveState
 from firmware_bridge.live_session import recording_in
 from metro.bench import Bench
 from metro.measured import Measured
@@ -114,7 +115,7 @@ def test_what_is_no_line_is_refused_and_not_passed_on(desk, wrong):
     assert answer.refused
     assert "\n" not in answer.text
     assert source.asked == []
-    assert orders.lines == {}
+    assert orders.drive.lines == {}
 
 
 @pytest.mark.parametrize(
@@ -154,7 +155,7 @@ def test_stop_rests_the_drive_and_forgets_the_lines(desk):
     orders.obey(line())
     assert orders.obey({"do": "stop"}) == Answer("drive stopped")
     assert source.asked[-1] == ("rest",)
-    assert orders.lines == {}
+    assert orders.drive.lines == {}
     assert state.stream.lines.frequencies_hz == ()
 
 
@@ -170,7 +171,7 @@ def test_without_a_limit_or_a_drive_no_line_is_set(tmp_path):
         made(tmp_path, said=board(full_scale_v=None)),
         made(tmp_path, is_replay=True),
     ):
-        assert orders.obey(line()) == Answer(orders.why_no_drive(), refused=True)
+        assert orders.obey(line()) == Answer(orders.drive.why_not(), refused=True)
         assert source.asked == []
 
 
@@ -183,16 +184,16 @@ def test_a_replay_records_nothing(tmp_path):
 
 def test_a_port_or_board_that_was_away_has_no_lines_set(desk):
     orders, _, state = desk
-    orders.follow_port()
+    orders.drive.follow_port()
     orders.obey(line())
     state.take(LiveState("gone", "unplugged"))
-    orders.follow_port()
-    assert orders.lines == {}
+    orders.drive.follow_port()
+    assert orders.drive.lines == {}
     state.take(LiveState("connected"))
     orders.obey(line())
     state.take(board(stream=2))
-    orders.follow_port()
-    assert orders.lines == {}
+    orders.drive.follow_port()
+    assert orders.drive.lines == {}
 
 
 def test_all_slots_taken(desk):
@@ -202,3 +203,33 @@ def test_all_slots_taken(desk):
     assert orders.obey(line(60.0, 0.1)) == Answer(
         f"all {SLOTS} lines are set; clear one first", refused=True
     )
+
+
+def test_a_line_that_the_board_refuses_is_not_set(desk):
+    orders, _, state = desk
+    orders.obey(line(31.7, 1.0))
+    orders.obey(line(87.1, 2.0))
+    orders.drive.hear(LiveReply("set line: done"))
+    orders.drive.hear(LiveReply("the board refuses to set line: no such slot", refused=True))
+    assert list(orders.drive.lines) == [0]
+    assert state.stream.lines.frequencies_hz == (31.7,)
+
+
+def test_where_a_line_in_place_of_another_is_refused_the_other_stays(desk):
+    orders, _, _ = desk
+    orders.obey(line(31.7, 1.0))
+    orders.drive.hear(LiveReply("set line: done"))
+    orders.obey(line(31.7, 4.0, slot=0))
+    orders.drive.hear(
+        LiveReply("a line of 4 V is beyond the board's full scale of 2 V", refused=True)
+    )
+    assert orders.drive.lines[0].amplitude_v == 1.0
+
+
+def test_other_answers_never_make_a_drive_look_at_rest(desk):
+    orders, _, _ = desk
+    orders.obey(line(31.7, 1.0))
+    for text, refused in (("ramp: done", False), ("clear line: done", False),
+                          ("run.mfr exists already", True), ("no space left on device", True)):  # fmt: skip
+        orders.drive.hear(LiveReply(text, refused))
+    assert orders.document()["sum_v"] == 1.0

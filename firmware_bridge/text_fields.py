@@ -50,10 +50,10 @@ def maybe_number(field: str, decimal: str = ".") -> float | None:
     float or None
         The number; NaN and infinity are numbers here.
     """
-    if _NOT_FINITE.fullmatch(field):
-        return float(field)
-    if decimal == ",":
+    if decimal == "," and ("," in field or "." in field):
         if "." in field or not _COMMA_NUMBER.fullmatch(field):
             return None
         field = field.replace(",", ".")
-    return float(field) if _NUMBER.fullmatch(field) else None
+    if _NUMBER.fullmatch(field) or _NOT_FINITE.fullmatch(field):
+        return float(field)
+    return None

@@ -67,7 +67,7 @@ def maybe_find_layout(lines: Sequence[str]) -> TextLayout | None:
         The layout of the first block of data; None where no line holds numbers.
     """
     best: tuple[tuple[int, int], str | None, str, int, int] | None = None
-    for delimiter, decimal in _CANDIDATES:
+    for delimiter, decimal in _candidates("\n".join(lines)):
         counts = [_count_numbers(line, delimiter, decimal) for line in lines]
         start, columns = _first_block(counts, lines)
         score = (sum(count > 0 for count in counts), columns)
@@ -81,6 +81,15 @@ def maybe_find_layout(lines: Sequence[str]) -> TextLayout | None:
     if columns == 1:
         delimiter = None
     return _describe(lines, delimiter, decimal, start, columns)
+
+
+def _candidates(text: str) -> list[tuple[str | None, str]]:
+    """Return what may be a layout of the text: marks that do not occur in it part nothing."""
+    return [
+        (delimiter, decimal)
+        for delimiter, decimal in _CANDIDATES
+        if (delimiter is None or delimiter in text) and (decimal == "." or "," in text)
+    ]
 
 
 def _count_numbers(line: str, delimiter: str | None, decimal: str) -> int:

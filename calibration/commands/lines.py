@@ -98,7 +98,8 @@ def lines(
         harmonics=harmonics or 1,
         intermodulation=intermodulation,
     )
-    document = to_json(fit.to_dict(over_time=over_time))
+    begun = {"file": file, "start": _start(recording, reading)}
+    document = to_json(fit.to_dict(over_time=over_time) | begun)
     if out is not None:
         write_whole(out, document + "\n", overwrite=overwrite)
     if plot is not None:
@@ -112,6 +113,17 @@ def lines(
             click.echo(remark, err=True)
     if not fit.is_trustworthy:
         distrust(fit.reasons_by_line())
+
+
+def _start(recording: "Recording", reading: Reading) -> str | None:
+    """Return when the stretch that was fitted began, UTC, where the recording knows."""
+    if recording.start_unix_s is None:
+        return None
+    from datetime import UTC, datetime
+
+    first, _ = recording.span(reading.from_s, reading.to_s)
+    moment = datetime.fromtimestamp(recording.start_unix_s + first / recording.rate_hz, UTC)
+    return moment.isoformat(timespec="microseconds")
 
 
 def _with_drive(reading: Reading, recording: "Recording", bench: "Bench") -> Reading:

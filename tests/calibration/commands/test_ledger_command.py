@@ -5,8 +5,11 @@ import json
 import numpy as np
 import pytest
 from ledgers import month, result, sample_calibration, sample_ledger
+from sessions import built_in_bench, play
 
 from calibration.desk.ledger import Ledger
+from calibration.desk.utc import unix_of
+from firmware_bridge.opening import open_recording
 from metro.commandline import run
 
 
@@ -199,3 +202,24 @@ def test_several_benches_are_charted_apart(capsys, tmp_path):
     code, out, _ = ledger(capsys, "chart", "--ledger", place, "--bench-name", "south", "--quiet")
     assert code == 0
     assert "20, mean 33.001 nm/V" in out
+
+
+def test_what_lines_writes_of_a_recording_says_when_it_was(capsys, tmp_path):
+    """Of a board's recording the header's clock tells; 2 s after its beginning, by --from."""
+    _, files = play(built_in_bench(), 1, tmp_path, keep=lambda step: step.role == "lines-rising")
+    (recording, *_) = files["lines_rising"]
+    found = tmp_path / "lines.json"
+    line = ("--line", "87.1Hz", "--from", "2s", "--out", str(found), "--quiet")
+    run(["lines", recording, *line])
+    capsys.readouterr()
+    document = json.loads(found.read_text())
+    begun_s = open_recording(recording).start_unix_s
+    assert document["file"] == recording
+    assert unix_of(document["start"]) == pytest.approx(begun_s + 2.0, abs=1e-5)
+    code, out, _ = ledger(
+        capsys, "add", "--lines", found, "--ledger", tmp_path / "l.ledger", "--json"
+    )
+    (entry,) = json.loads(out)["entries"]
+    assert code == 0
+    half_s = 0.5 * document["duration"]["value"]
+    assert unix_of(entry["time"]) == pytest.approx(begun_s + 2.0 + half_s, abs=1e-5)

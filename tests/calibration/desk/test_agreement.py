@@ -95,12 +95,12 @@ def test_what_cannot_be_compared_is_refused(calibration):
 
 @pytest.mark.slow
 def test_a_line_measured_again_agrees_where_nothing_has_changed(tmp_path):
-    """Eight benches drawn from their bench file: the first line again, not used by the calibration.
+    """Five benches drawn from their bench file: the first line again, not used by the calibration.
 
-    At 95 % one in twenty may miss: of eight at most two (99.4 %).
+    At 95 % one in twenty may miss: of five at most one (97.7 %).
     """
     bench, misses, shifted = built_in_bench(), 0, 0
-    for seed in range(8):
+    for seed in range(5):
         folder = tmp_path / str(seed)
         folder.mkdir()
         _, files = play(bench, seed, folder)
@@ -118,5 +118,5 @@ def test_a_line_measured_again_agrees_where_nothing_has_changed(tmp_path):
             ),
         )
         shifted += not agreement(moved, calibration).is_agreed
-    assert misses <= 2
-    assert shifted == 8
+    assert misses <= 1
+    assert shifted == 5

@@ -7,7 +7,7 @@ from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, Self
 
-from firmware_bridge.drive_lines import DriveLine, DriveLines
+from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_events import (
     LiveBlock,
@@ -207,6 +207,8 @@ class LiveSession:
         DriveError
             If it is no line, or beyond the limit together with the others.
         """
+        if self._options.text:
+            raise DriveError("drive lines need a board that sends frames, not text")
         line = DriveLine(frequency_hz, amplitude_v, phase_rad)
         # The other process checks again, with the lines that are truly set.
         DriveLines(self._options.drive_limit_v).set(slot, line)

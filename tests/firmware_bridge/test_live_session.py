@@ -259,6 +259,12 @@ def test_lines_are_set_within_the_limit_and_rest_comes_first(tmp_path):
     assert CommandCode.RAMP in codes[last:]
 
 
+def test_a_text_board_has_no_lines(tmp_path):
+    live = LiveSession("/dev/none", folder=tmp_path, text=True, drive_limit_v=1.0)
+    with pytest.raises(DriveError, match=r"^drive lines need a board that sends frames, not text$"):
+        live.set_line(0, 87.1, 0.1)
+
+
 @pytest.mark.slow
 def test_without_a_limit_no_line_is_set(tmp_path):
     with asked_board() as board, LiveSession(board.link.port, folder=tmp_path) as live:

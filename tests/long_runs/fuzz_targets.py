@@ -22,6 +22,7 @@ from firmware_bridge.envelope import Unwrapper, seal, wrap
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.frame import encode_frame
 from firmware_bridge.host_note import End, Join, Remark, Stamp, cut, seal_host_note
+from firmware_bridge.lock_in_recording import LockInRecording
 from firmware_bridge.message import (
     LockIn,
     MessageType,
@@ -220,6 +221,10 @@ def _check_line(error):
     assert "\n" not in text, f"more than one line: {text!r}"
 
 
+def _pieces(message, record_bytes):
+    return [message] if len(message) <= record_bytes else cut(message, 1, record_bytes)
+
+
 class RecordingTarget:
     """Recordings: damaged anywhere, or in a header or record whose CRC is made to fit again."""
 
@@ -241,6 +246,13 @@ class RecordingTarget:
         wires += [_frame(name, slots, channels, k, stream=8) for k in (0, 1)]
         messages += [seal(content) for content in _contents(wires)]
         messages += [seal_host_note(Join(8, 0, 100, 3.0)), seal_host_note(Remark("hm"))]
+        steps = ((8589934, -(2**40), 3), (1, 0, 2**30))
+        results = [LockIn(7, 40 * k, 40, 0, 14, steps[: 1 + k % 2]) for k in (0, 1, 3)]
+        messages += [
+            part
+            for content in _contents(list(map(encode_lock_in, results)))
+            for part in _pieces(seal(content), header.record_bytes)
+        ]
         messages += cut(seal(long_note), 0, header.record_bytes)
         messages += [seal_host_note(End(8, slots * 4))]
         step = header.record_bytes
@@ -277,10 +289,11 @@ class RecordingTarget:
 
     def run(self, data):
         self._path.write_bytes(data)
-        try:
-            _read(open_mfr(self._path))
-        except BridgeError as error:
-            _check_line(error)
+        for opened in (open_mfr, LockInRecording):
+            try:
+                _read(opened(self._path))
+            except BridgeError as error:
+                _check_line(error)
 
 
 class BenchTarget:

@@ -127,8 +127,8 @@ def log(
             f"{len(summary.files)} recordings here, {summary.deleted} deleted in time, "
             f"{lines.results} line results, {len(lines.alarms)} alarms"
         )
-    if lines.alarms:
-        distrust([str(alarm) for alarm in lines.alarms])
+    if lines.reasons:
+        distrust(lines.reasons)
 
 
 def _sizes(keep_bytes: str | None, rotate_bytes: str | None) -> tuple[int | None, int | None]:

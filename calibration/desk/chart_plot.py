@@ -18,7 +18,7 @@ __all__ = ["chart_figure"]
 
 # Okabe and Ito's colours, told apart by colour-blind readers.
 _BLUE, _ORANGE, _GREY, _GREEN = "#0072b2", "#d55e00", "#777777", "#009e73"
-_MOST_BARS = 400  # results beyond which their error bars would be one blur
+_MOST_BARS = 150  # results beyond which their error bars would be one blur
 
 
 def chart_figure(charts: "Sequence[LineChart]") -> Any:  # noqa: ANN401  # matplotlib's Figure
@@ -121,7 +121,7 @@ def _mark_alarms(axes: "Axes", chart: LineChart, *, label: bool) -> None:
     for number, alarm in enumerate(chart.alarms):
         moment: Any = _dates(np.array([unix_of(alarm.time)]))[0]
         text = "alarm" if label and number == 0 else None
-        axes.axvline(moment, color=_ORANGE, linewidth=1.6, label=text)
+        axes.axvline(moment, color=_ORANGE, linewidth=1.6, alpha=1.0 if label else 0.4, label=text)
 
 
 def _scale(chart: LineChart) -> tuple[float, str]:

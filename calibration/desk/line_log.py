@@ -99,7 +99,9 @@ class LineLog:
         """Line results in the ledger."""
         self.alarms: list[Alarm] = []
         self.failure: BaseException | None = None
-        """What ended the thread, if anything did."""
+        """The first thing that went wrong unforeseen, if anything did."""
+        self.lost = 0
+        """Results that the ledger, failing to the end, did not take."""
         self._thread.start()
 
     def put(self, stretch: Stretch, channels: LoggedChannels) -> None:
@@ -122,8 +124,17 @@ class LineLog:
         self._queue.put(None)
         self._thread.join()
         self._keep([])
-        if self._waiting:
-            _log.error("%d line results are lost: the ledger failed", len(self._waiting))
+        self.lost = len(self._waiting)
+
+    @property
+    def reasons(self) -> list[str]:
+        """Why the lines, or their results, must not be trusted."""
+        found = [str(alarm) for alarm in self.alarms]
+        if self.lost:
+            found.append(f"{self.lost} line results are lost: the ledger failed to the end")
+        if self.failure is not None:
+            found.append(f"line results are missing: {self.failure}")
+        return found
 
     def _run(self) -> None:
         while (item := self._queue.get()) is not None:

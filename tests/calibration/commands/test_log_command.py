@@ -11,11 +11,16 @@ import time
 
 import numpy as np
 import pytest
+from ledgers import result, sample_ledger
 from long_runs.killed_log import without_drive
+from sessions import built_in_bench
 from wire_board import asked_board
 
 from calibration.desk.ledger import Ledger
+from calibration.rehearsal_script import session_steps
 from firmware_bridge.opening import open_recording
+from firmware_bridge.simulated.bench import SimulatedBench
+from firmware_bridge.simulated.board import SimulatedBoard
 from metro.commandline import run
 
 
@@ -96,6 +101,30 @@ def test_all_recordings_stay_within_what_is_kept(board, tmp_path, capsys):
     assert most <= 40_000
     ramp = ramp_in(tmp_path)
     assert np.array_equal(ramp, np.arange(12000)[-len(ramp) :])
+
+
+def test_an_alarm_is_a_log_line_and_an_exit_code(tmp_path, capsys):
+    """A month of results 3 % lower than what the board's lines are now; measured in metres."""
+    place = sample_ledger(tmp_path)
+    with Ledger(place, create=False) as ledger:
+        now_s = time.time()
+        last = [entry.value for entry in ledger.line_results(line_hz=87.1)]
+        rng = np.random.default_rng(1)
+        values = 0.97 * last[-1].magnitude * (1 + 1e-3 * rng.standard_normal(60))
+        ledger.add_line_results(
+            result(value, unix_s=now_s + 9e6 + k) for k, value in enumerate(values)
+        )
+    steps = session_steps(built_in_bench(), 1e5)
+    setup = next(step.setup for step in steps if step.role == "lines-rising")
+    with SimulatedBoard(SimulatedBench(built_in_bench(), 1), setup, speed=20.0) as board:
+        words = ["log", board.port, "--out", str(tmp_path / "bench"), "--ledger", place]
+        options = ["--line", "87.1Hz", "--slope=rising", "--every=5s", "--until-alarm"]
+        assert run([*words, *options]) == 1
+    out, err = capsys.readouterr()
+    assert ", 1 alarms" in out
+    (line,) = [line for line in err.splitlines() if line.startswith("warning: alarm: ")]
+    assert "line at 87.1 Hz has shifted by about" in line
+    assert err.splitlines()[-1].startswith("not to be trusted: line at 87.1 Hz has shifted")
 
 
 def start(board, folder, *more, **settings):

@@ -183,3 +183,30 @@ def test_the_history_of_other_lines_does_not_matter(ledger):
     put_all(log, [stretch(0)])
     assert log.results == 1
     assert log.alarms == []
+
+
+def test_results_that_the_ledger_never_took_are_told(ledger, monkeypatch):
+    def failing(_entries):
+        raise LedgerFailedError("the ledger failed: the disk is full")
+
+    log = LineLog(ledger, PLAN)
+    monkeypatch.setattr(ledger, "add_line_results", failing)
+    put_all(log, [stretch(0), stretch(1)])
+    assert log.reasons == ["2 line results are lost: the ledger failed to the end"]
+
+
+def test_what_is_unforeseen_is_told_and_the_log_goes_on(ledger, monkeypatch, caplog):
+    log = LineLog(ledger, PLAN)
+    real, calls = log._entries, []
+
+    def odd(*arguments):
+        calls.append(arguments)
+        if len(calls) == 1:
+            raise ZeroDivisionError("odd")
+        return real(*arguments)
+
+    monkeypatch.setattr(log, "_entries", odd)
+    put_all(log, [stretch(0), stretch(1)])
+    assert log.results == 1
+    assert log.reasons == ["line results are missing: odd"]
+    assert "no line result: odd" in caplog.text

@@ -201,8 +201,23 @@ class _Analysis(SessionFits):
     def _cautions(self) -> list[str]:
         return [
             *cautions_of(self.bench, self.session, self.drift),
+            *self._lean_cautions(),
             *response_cautions(self.response, len(self.actuator) if self.drive_read else 0),
             *(text for text in self.series if isinstance(text, str)),
+        ]
+
+    def _lean_cautions(self) -> list[str]:
+        leans = [lean for _, lean in self.levelled if lean is not None]
+        if not leans:
+            return []
+        swing_v = 2 * self.extremes.swing_v
+        share = max(max(abs(k.high_slope), abs(k.low_slope)) for k in leans) / swing_v
+        return [
+            (
+                f"the fringe leans with the drive in {len(leans)} of {len(self.levelled)} scans, up to "
+                f"{100 * share:.2g} % of high − low a volt of its reading: the actuator tilts its "
+                "mirror; the extremes are those at the drive of the lines"
+            )
         ]
 
     def _checks(self) -> list[dict[str, Any]]:

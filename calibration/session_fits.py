@@ -18,6 +18,7 @@ from calibration.lines import fit_lines_si
 from calibration.mains import without_mains
 from calibration.pickup import additive_of
 from calibration.scan import ScanFit, fit_scan
+from calibration.scan_tilt import Lean, level_scan
 from calibration.session import RoleRecord, Session
 from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
 from calibration.term import POWER_DRIFT, Term
@@ -60,13 +61,31 @@ class SessionFits:
 
     @cached_property
     def scans(self) -> list[ScanFit]:
-        """The fringe's extremes in each scan, the mains taken out."""
-        mains_hz = self.bench.magnitude("mains.frequency", 50.0)
-        traces = [record.photodiode for record in self.session.of("scan")]
+        """The fringe's extremes in each scan, mains and the drive's tilt taken out."""
         return [
-            fit_scan(without_mains(trace.values, trace.rate_hz, mains_hz), trace.rate_hz)
-            for trace in traces
+            fit_scan(values, record.photodiode.rate_hz)
+            for record, (values, _) in zip(self.session.of("scan"), self.levelled, strict=True)
         ]
+
+    @cached_property
+    def levelled(self) -> list[tuple[FloatArray, Lean | None]]:
+        """Each scan without the mains, its fringe as it is at the drive of the lines."""
+        mains_hz = self.bench.magnitude("mains.frequency", 50.0)
+        out: list[tuple[FloatArray, Lean | None]] = []
+        for record in self.session.of("scan"):
+            trace, drive = record.photodiode, record.drive
+            values = without_mains(trace.values, trace.rate_hz, mains_hz)
+            if drive is None:
+                out.append((values, None))
+            else:
+                out.append(level_scan(values, drive.values, self._lines_bias_v()))
+        return out
+
+    def _lines_bias_v(self) -> float:
+        """Return the mean of the recorded drive of the lines [V], 0 where it is not recorded."""
+        drives = [r.drive.values for r in self.session.slopes if r.drive is not None]
+        means = [float(np.nanmean(drive)) for drive in drives if np.isfinite(drive).any()]
+        return float(np.mean(means)) if means else 0.0
 
     @cached_property
     def extremes(self) -> Extremes:

@@ -1,5 +1,6 @@
 """``midfringe watch`` as a command: its address, its end, and what it refuses."""
 
+import sys
 import urllib.request
 
 import numpy as np
@@ -55,6 +56,16 @@ def test_wrong_input_is_one_line_and_exit_code_2(capsys, arguments, said):
     out, err = capsys.readouterr()
     assert out == ""
     assert said in err
+    assert err.count("\n") == 1
+
+
+@pytest.mark.parametrize("package", ["tornado", "bokeh"])
+def test_a_missing_package_is_named_with_what_installs_it(capsys, monkeypatch, package):
+    monkeypatch.setitem(sys.modules, package, None)
+    assert run(["watch", "--simulate"]) == 2
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert err.endswith(f"watch: needs {package}; run: pip install 'midfringe[live]'\n")
     assert err.count("\n") == 1
 
 

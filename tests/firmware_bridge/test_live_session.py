@@ -215,11 +215,10 @@ def test_a_viewer_that_does_not_look_costs_the_view_not_the_recording(tmp_path):
         viewer = Viewer(live)
         viewer.state("waiting")
         live.start_recording("a.mfr")
+        viewer.until(is_file)
         board, frames = WireBoard(link), 12_000
         board.announce()
-        board.send(1)
-        viewer.until(is_file)
-        board.send(frames - 1)  # 600 000 samples, 10 MB of values: more than is held for a viewer
+        board.send(frames)  # 600 000 samples, 10 MB of values: more than is held for a viewer
         time.sleep(0.5)
         behind = viewer.state("behind")
         viewer.until(lambda e: is_file(e) and e.samples == frames * SLOTS)

@@ -11,7 +11,7 @@ from postgres import postgres_url
 
 from calibration.desk.calibration_entry import CalibrationEntry
 from calibration.desk.ledger import Ledger
-from calibration.desk.ledger_errors import LedgerError
+from calibration.desk.ledger_errors import LedgerError, LedgerFailedError
 from calibration.desk.line_entry import LineEntry, entries_of_document
 from calibration.desk.utc import iso_of, parse_time, unix_of
 from metro.measured import Measured
@@ -181,6 +181,19 @@ def test_a_month_goes_in_at_once(place):
     with Ledger(place) as ledger:
         assert ledger.add_line_results(month(1)) == 720
         assert ledger.line_results(since=iso_of(START_S + 3600 * 719))[0].temperature_k
+
+
+def test_a_database_that_fails_midway_ends_with_3(tmp_path):
+    path = str(tmp_path / "bench.ledger")
+    with Ledger(path) as ledger:
+        with sqlite3.connect(path) as connection:
+            connection.execute("DROP TABLE line_results")
+        connection.close()
+        with pytest.raises(
+            LedgerFailedError, match=r"failed: no such table: line_results$"
+        ) as failed:
+            ledger.add_line_result(result(1.0))
+    assert failed.value.exit_code == 3
 
 
 def test_times_are_utc():

@@ -60,6 +60,31 @@ def _too_fast(got: Unfolded) -> list[str]:
     ]
 
 
+def _drive_jumps(got: Unfolded, drive: FloatArray | None) -> list[str]:
+    """Return whether the drive leaps so far in a sample that the fringes of the leap are not seen."""
+    if drive is None or len(got.turns) < 3:
+        return []
+    moved = np.abs(np.diff(drive))
+    # fringes per unit of drive where both move steadily
+    places = got.turns[:: max(len(got.turns) // 200, 1)]
+    way = np.abs(np.diff(drive[places]))
+    if not np.any(way > 0.0):
+        return []
+    scale = float(np.median(np.abs(np.diff(got.phase_rad[places]))[way > 0.0] / way[way > 0.0]))
+    usual = 10.0 * float(np.quantile(moved, 0.95)) + 0.02 * float(np.ptp(drive))
+    leaps = (moved > usual) & (moved * scale / (2.0 * np.pi) > _FASTEST)
+    if not leaps.any():
+        return []
+    worst = int(np.argmax(np.where(leaps, moved, 0.0)))
+    return [
+        (
+            f"sampled too slowly: at {int(leaps.sum())} samples, first at {int(np.flatnonzero(leaps)[0])}, the "
+            f"drive leaps by up to {moved[worst] * scale / (2.0 * np.pi):.2g} fringes in a sample, which are "
+            "not seen"
+        )
+    ]
+
+
 def _uneven(record: SweptRecord, envelope: Envelope, span_range: tuple[float, float]) -> list[str]:
     out = []
     if span_range[0] < _EVEN * span_range[1]:
@@ -84,6 +109,7 @@ def count_reasons(
     got: Unfolded,
     scan: ScanFit | None,
     span_range: tuple[float, float],
+    drive: FloatArray | None = None,
 ) -> list[str]:
     """Return why a count must not be trusted.
 
@@ -101,6 +127,8 @@ def count_reasons(
         Extremes found in the record; None where they were given.
     span_range : tuple of float
         Least and greatest span of the fringe.
+    drive : ndarray, shape (n,), optional
+        What moves the mirror, beside the record as it was counted.
 
     Returns
     -------
@@ -109,6 +137,7 @@ def count_reasons(
     """
     reasons = _too_fast(got)
     fast = bool(reasons)
+    reasons += _drive_jumps(got, drive)
     reasons += _lost_in_gaps(record, got) + _uneven(record, envelope, span_range)
     if got.cosine_u > _MOST_NOISE:
         reasons.append(

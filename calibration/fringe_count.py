@@ -191,8 +191,9 @@ def count_fringes(
         span_range,
         record.spikes,
         count_reasons(
-            values, record, envelope, got, scan if extremes is None else None, span_range
-        ),
+            values, record, envelope, got, scan if extremes is None else None, span_range, along
+        )
+        + _shaking(passes, drive is not None),
     )
 
 

@@ -57,7 +57,8 @@ def _solved_slope(
     depths, sine = [0.0] * len(amplitudes), 1.0
     for _ in range(200):
         null = math.prod(bessels(0, m)[0] for m in depths)
-        cosine = (mean - offset) / (half_span * blur * null) if null else math.inf
+        size = half_span * blur * null
+        cosine = (mean - offset) / size if abs(size) > 1e-9 * half_span else math.inf
         if not abs(cosine) < 1.0:
             return None
         sine = math.sqrt(1.0 - cosine**2)

@@ -253,10 +253,11 @@ def fit_scan(values: NDArray[np.float64], rate_hz: float) -> ScanFit:
     smoothed = smooth(values, length)
     used = np.flatnonzero(np.isfinite(smoothed))
     noise = max(raw_noise, 0.3 * step) * math.sqrt(noise_gain(length))
+    clipped = _clipped(values[good], step)
     if length > 1:
         step = 0.0  # averages fall between the converter's steps
     fit = _fit(smoothed[used], used / len(values) - 0.5, noise, step, 1.0 / noise_gain(length))
-    return replace(fit, reasons=_clipped(values[good], step) + fit.reasons)
+    return replace(fit, reasons=clipped + fit.reasons)
 
 
 def _fit(

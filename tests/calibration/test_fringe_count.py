@@ -129,6 +129,23 @@ def test_a_drive_that_is_not_followed_is_named():
     assert any("does not follow the drive" in reason for reason in got.reasons)
 
 
+def test_a_flyback_within_a_sample_is_named():
+    ramp = (TIME * 0.5) % 1.0
+    got = count_fringes(volts(2 * np.pi * 8.6 * ramp, 6), 1000.0, ramp)
+    assert any("the drive leaps by up to 8.6 fringes" in reason for reason in got.reasons)
+    slow = np.where(ramp < 0.9, ramp / 0.9, (1 - ramp) / 0.1)
+    got = count_fringes(volts(2 * np.pi * 8.6 * slow, 6), 1000.0, slow)
+    assert got.reasons == []
+    assert [one.direction for one in got.passes[:4]] == [1, -1, 1, -1]
+
+
+def test_coarse_levels_are_not_taken_for_clipping():
+    rough = np.round(volts(2 * np.pi * 5.3 * triangle(4), 7, 0.01) / 0.02) * 0.02
+    got = count_fringes(rough, 1000.0, np.round(triangle(4) * 200) / 200)
+    assert got.reasons == []
+    assert [one.fringes for one in got.passes] == pytest.approx([5.3] * 4, abs=0.12)
+
+
 def test_too_short_or_constant():
     with pytest.raises(CalibrationError, match="needs 40 samples"):
         count_fringes(np.arange(10.0), 1000.0)

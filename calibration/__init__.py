@@ -19,10 +19,13 @@ if TYPE_CHECKING:
     from calibration.line_phasors import LinePhasors as LinePhasors
     from calibration.line_plan import LinePlan as LinePlan
     from calibration.lines import fit_lines as fit_lines
+    from calibration.open_loop import OpenLoop as OpenLoop
+    from calibration.open_loop import load_open_loop as load_open_loop
     from calibration.quadrature import QuadraturePhase as QuadraturePhase
     from calibration.quadrature import quadrature_phase as quadrature_phase
     from calibration.record import Calibration as Calibration
     from calibration.record import load as load
+    from calibration.response import ActuatorResponse as ActuatorResponse
     from calibration.tracking import TrackedPhase as TrackedPhase
     from calibration.tracking import track_phase as track_phase
 
@@ -40,6 +43,9 @@ _HOMES = {
     "LineFit": "calibration.line_fit",
     "fit_lines": "calibration.lines",
     "load": "calibration.record",
+    "ActuatorResponse": "calibration.response",
+    "OpenLoop": "calibration.open_loop",
+    "load_open_loop": "calibration.open_loop",
     "calibrate": "calibration.analysis",
     "Calibration": "calibration.record",
     "CalibrationError": "calibration.errors",
@@ -48,6 +54,7 @@ _HOMES = {
 }
 
 __all__ = [
+    "ActuatorResponse",
     "Calibration",
     "CalibrationError",
     "FringeCount",
@@ -55,6 +62,7 @@ __all__ = [
     "LineFit",
     "LinePhasors",
     "LinePlan",
+    "OpenLoop",
     "QuadraturePhase",
     "TrackedPhase",
     "accumulate_lines",
@@ -63,6 +71,7 @@ __all__ = [
     "fit_driven_fringe",
     "fit_lines",
     "load",
+    "load_open_loop",
     "plan_lines",
     "quadrature_phase",
     "track_phase",

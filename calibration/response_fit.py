@@ -61,11 +61,13 @@ class _Found:
     values: FloatArray
     covariance: FloatArray
     chi_square: float
+    data: int
 
     @property
     def criterion(self) -> float:
-        """Akaike's: the covariance is stated and not taken from the residuals, so uncorrected."""
-        return self.chi_square + 2.0 * self.values.size
+        """Akaike's, corrected for few data: parameters that little speaks for are left out."""
+        p = self.values.size
+        return self.chi_square + 2.0 * p + 2.0 * p * (p + 1) / max(1, self.data - p - 1)
 
 
 def fit_response(
@@ -85,11 +87,12 @@ def fit_response(
     Returns
     -------
     ActuatorResponse or None
-        With the order of least Akaike criterion; None for fewer than three lines.
+        With the order of least corrected Akaike criterion; None for fewer than three lines.
 
     References
     ----------
-    Akaike, IEEE Trans. Autom. Control 19, 716 (1974); from memory.
+    Akaike, IEEE Trans. Autom. Control 19, 716 (1974); Hurvich and Tsai, Biometrika 76, 297 (1989)
+    (correction for few data); from memory.
     """
     order = np.argsort(at_hz)
     lines = _lines(at_hz[order], response[order], covariance, order)
@@ -204,7 +207,8 @@ def _fit(lines: _Lines, shape: Shape) -> _Found:
     curved = min(refined, key=lambda one: _square(lines, shape, one))
     sign, linear, left = _linear(lines, shape, curved)
     values = np.concatenate([linear, curved])
-    return _Found(shape, sign, values, _covariance(lines, shape, values), float(left @ left))
+    covariance = _covariance(lines, shape, values)
+    return _Found(shape, sign, values, covariance, float(left @ left), left.size)
 
 
 def _starts(lines: _Lines, shape: Shape) -> list[FloatArray]:

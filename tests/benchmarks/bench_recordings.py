@@ -28,8 +28,6 @@ LIMIT_MB = 300.0
 
 def _child(command, path):
     """Run a command in this process; print its time and the memory that the process needed."""
-    import resource
-
     from metro.commandline import run
 
     if command == "sum":
@@ -42,17 +40,25 @@ def _child(command, path):
     with contextlib.redirect_stdout(io.StringIO()):
         code = run([command, path, "--channel", "pd", *lines, "--json", "--quiet"])
     took = time.perf_counter() - begin
-    peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
-    print(json.dumps({"code": code, "seconds": took, "peak_mb": peak}))
+    print(json.dumps({"code": code, "seconds": took, "peak_mb": _peak_mb()}))
+
+
+def _peak_mb():
+    """Return the peak memory of this process; ru_maxrss would begin with that of its parent."""
+    status = Path("/proc/self/status")
+    if status.exists():
+        (line,) = (row for row in status.read_text().splitlines() if row.startswith("VmHWM"))
+        return int(line.split()[1]) / 1024
+    import resource
+
+    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
 
 
 def measured(command, path):
-    """Return exit code, seconds and peak memory [MB] of a command in a process of its own.
-
-    This process stays small, since a child begins with the peak of its parent.
-    """
+    """Return exit code, seconds and peak memory [MB] of a command in a process of its own."""
+    environment = os.environ | {"PYTHONPATH": str(Path(__file__).resolve().parents[1])}
     made = subprocess.run(
-        [sys.executable, __file__, "--child", command, str(path)],
+        [sys.executable, __file__, "--child", command, str(path)], env=environment,
         capture_output=True, text=True, check=True,
     )  # fmt: skip
     return json.loads(made.stdout)

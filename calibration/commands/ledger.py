@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from calibration.desk.agreement import Agreement
+    from calibration.desk.calibration_entry import CalibrationEntry
     from calibration.desk.ledger import Ledger
     from calibration.desk.line_chart import LineChart
 
@@ -55,7 +56,7 @@ def ledger() -> None:
     "lines_files",
     multiple=True,
     metavar="FILE",
-    help="Line results ('midfringe lines --json'), or a recording to measure; repeatable.",
+    help="Line results ('midfringe lines --json'; - from a pipe), or a recording; repeatable.",
 )
 @sourcing_options
 @ledger_options
@@ -81,10 +82,10 @@ def add(
         raise click.UsageError("nothing to add: name a calibration, or give --lines FILE")
     bench = bench_name or "bench"
     calibrations = [CalibrationEntry.of_file(path, bench) for path in files]
+    known = sorted([*_calibrations(ledger, bench), *calibrations], key=lambda c: c.created)
+    in_force = known[-1].calibration if known else None
+    results = [sourcing.entries(path, in_force, bench) for path in lines_files]
     with Ledger(ledger) as kept:
-        known = sorted([*kept.calibrations(bench=bench), *calibrations], key=lambda c: c.created)
-        in_force = known[-1].calibration if known else None
-        results = [sourcing.entries(path, in_force, bench) for path in lines_files]
         added = [entry for entry in calibrations if kept.add_calibration(entry)]
         new = [group for group in results if kept.add_line_results(group)]
     entries: list[Any] = [*added, *(entry for group in new for entry in group)]
@@ -95,6 +96,18 @@ def add(
         click.echo(f"{len(added)} calibrations and {sum(map(len, new))} line results added")
     if held and not is_quiet():
         click.echo(f"{held} files were in the ledger already", err=True)
+
+
+def _calibrations(place: str, bench: str) -> "list[CalibrationEntry]":
+    """Return the calibrations of a bench, none where there is no ledger yet."""
+    from calibration.desk.ledger import Ledger
+    from calibration.desk.ledger_errors import LedgerError
+
+    try:
+        with Ledger(place, create=False) as kept:
+            return kept.calibrations(bench=bench)
+    except LedgerError:
+        return []  # whoever opens it to write says what is wrong with it
 
 
 def _since_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator

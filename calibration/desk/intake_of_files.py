@@ -2,6 +2,7 @@
 
 import hashlib
 import json
+import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -12,7 +13,29 @@ from calibration.desk.utc import iso_of, parse_time, unix_of
 if TYPE_CHECKING:
     from calibration.desk.measured_lines import Measuring
 
-__all__ = ["line_entries_of_file", "result_entries"]
+__all__ = ["is_document", "line_entries_of_file", "result_entries"]
+
+
+def is_document(path: str) -> bool:
+    """Return whether a file is JSON, as ``midfringe lines --json`` prints it, not a recording.
+
+    Parameters
+    ----------
+    path : str
+        The file; ``-``, standard input, is taken as JSON.
+
+    Returns
+    -------
+    bool
+        By its suffix or its first letter.
+    """
+    if path == "-" or path.lower().endswith(".json"):
+        return True
+    try:
+        with Path(path).open("rb") as file:
+            return file.read(64).lstrip().startswith(b"{")
+    except OSError:
+        return False  # whoever opens it says why it cannot be
 
 
 def result_entries(
@@ -48,7 +71,7 @@ def result_entries(
     LedgerError
         If the file holds no lines, or nothing says when they were measured.
     """
-    if Path(path).suffix.lower() == ".json":
+    if is_document(path):
         return line_entries_of_file(path, time=time, temperature_k=temperature_k, bench=bench)
     from calibration.desk.measured_lines import entries_of_recording
     from calibration.file_hash import sha256_of
@@ -104,7 +127,7 @@ def line_entries_of_file(
         If the file cannot be read, holds no lines, or nothing says when they were measured.
     """
     try:
-        content = Path(path).read_bytes()
+        content = sys.stdin.buffer.read() if path == "-" else Path(path).read_bytes()
         document = json.loads(content)
     except OSError as error:
         raise LedgerError(f"{path}: {(error.strerror or str(error)).lower()}") from None

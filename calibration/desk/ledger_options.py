@@ -167,14 +167,13 @@ class Sourcing:
         LedgerError
             If no line is named, the file holds none, or nothing says when it was measured.
         """
-        from calibration.desk.intake_of_files import result_entries
+        from calibration.desk.intake_of_files import is_document, result_entries
         from calibration.desk.measured_lines import Measuring
 
         lines_hz = self.lines_hz
         if not lines_hz and calibration is not None:
             lines_hz = tuple(float(line.frequency.magnitude) for line in calibration.actuator)
-        is_recording = not path.lower().endswith(".json")
-        if is_recording and not lines_hz:
+        if not lines_hz and not is_document(path):
             raise LedgerError(
                 f"{path}: no calibration is in force, so --line must name its lines, got none"
             )

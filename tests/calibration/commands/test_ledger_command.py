@@ -1,6 +1,7 @@
 """``midfringe ledger``: the JSON that programs rely on, the exit codes, what people read."""
 
 import json
+from io import BytesIO, TextIOWrapper
 
 import numpy as np
 import pytest
@@ -102,6 +103,20 @@ def test_a_document_that_says_when_it_began_needs_no_time(capsys, tmp_path):
     assert entry["source"] == "today.mfr"
 
 
+def test_results_come_through_a_pipe_or_under_any_name(capsys, tmp_path, monkeypatch):
+    text = json.dumps(lines_document(start="2027-01-02T03:00:00+00:00"))
+    piped = TextIOWrapper(BytesIO(text.encode()))
+    monkeypatch.setattr("sys.stdin", piped)
+    place = ("--ledger", tmp_path / "l")
+    assert ledger(capsys, "add", "--lines", "-", *place)[1].endswith("1 line results added\n")
+    (tmp_path / "today").write_text(text)
+    code, _, err = ledger(capsys, "add", "--lines", tmp_path / "today", *place)
+    assert (code, err) == (0, "1 files were in the ledger already\n")
+    assert "none': no such file" in refused(
+        capsys, "add", "--lines", tmp_path / "none", "--line", "5Hz", *place
+    )
+
+
 def test_a_chart_tells_the_step_and_ends_with_1(capsys, kept, tmp_path):
     picture = tmp_path / "chart.png"
     code, out, err = ledger(capsys, "chart", "--ledger", kept, "--plot", picture, "--json")
@@ -179,6 +194,7 @@ def test_wrong_input_is_one_line(capsys, tmp_path, kept):
     assert "--run-length must be from 10" in refused(capsys, "chart", *place, "--run-length", "1")
     assert "no bench 'north'" in refused(capsys, "chart", *place, "--bench-name", "north")
     assert not (tmp_path / "none").exists()
+    assert not (tmp_path / "new.ledger").exists()
 
 
 def test_the_ledger_may_be_named_once_and_for_all(capsys, kept, monkeypatch):

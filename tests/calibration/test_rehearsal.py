@@ -61,6 +61,36 @@ def test_the_truth_lies_inside_as_often_as_it_should():
     check_coverage(400, 0.15, 0.1, 0.02)
 
 
+@pytest.mark.trials
+@pytest.mark.parametrize(
+    "name", [name for name in TRIAL_BENCHES if name not in ("good", "clipped")]
+)
+def test_every_kind_of_bench_covers(name):
+    """200 sessions. The coverage within 3 points: 2 of the 1.5 points of fully common comparisons;
+    spreads within 0.25, 5 of their deviations (1/sqrt(398)), since few degrees of freedom widen them.
+    """
+    kind = TRIAL_BENCHES[name]
+    trials = list(play_trials(built_in_bench(), range(1, 201), kind=kind, processes=2))
+    rows = coverage_of(trials)
+    told = f"{coverage_table(rows)}\n{reasons_text(trials)}"
+    print(told)
+    assert sum(not trial.is_trusted for trial in trials) <= 20, told
+    assert 0.92 < rows[-1].inside_95 < 0.98, told
+    for row in rows[:-1]:
+        assert abs(row.mean) < 0.3, told
+        assert row.spread < 1.25, told
+        if row.efficiency is not None:
+            assert row.efficiency > 0.8, told
+
+
+@pytest.mark.slow
+def test_a_clipped_bench_is_always_distrusted():
+    kind = TRIAL_BENCHES["clipped"]
+    trials = list(play_trials(built_in_bench(), range(1, 5), kind=kind))
+    assert not any(trial.is_trusted for trial in trials)
+    assert all("no cosine" in " ".join(trial.reasons) for trial in trials)
+
+
 @pytest.mark.slow
 def test_sixty_sessions_cover():
     """60 sessions: 3.5 standard deviations of the spread (1/sqrt(118) = 9.2 %) and of the mean

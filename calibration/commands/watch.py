@@ -9,6 +9,7 @@ import click
 from metro.options import ValueType, bench_options, command, is_quiet, output_options
 
 if TYPE_CHECKING:
+    from firmware_bridge.trace import Recording
     from metro.bench import Bench
 
 __all__ = ["watch"]
@@ -117,6 +118,7 @@ def watch(
     from calibration.desk.watch.setup import WatchSetup
     from calibration.record import load
     from calibration.rehearsal_folder import rehearsal_bench
+    from firmware_bridge.opening import open_recording
     from metro.errors import MetroError
 
     if sum((port is not None, simulate, replay is not None)) != 1:
@@ -126,17 +128,18 @@ def watch(
     if not Path(folder).is_dir():
         raise MetroError(f"--folder must be a directory that exists, got {folder!r}")
     guard = guarded(host, token)
+    recording = None if replay is None else open_recording(replay)
     setup = WatchSetup(
         title="simulated bench" if simulate else str(port or replay),
         bench=rehearsal_bench(bench)[0] if simulate else bench,
         calibration=None if calibration_file is None else load(calibration_file),
         frequencies_hz=lines_hz,
         slope=slope,
-        channel=channel,
-        drive=drive,
+        channel=channel if recording is None else _place(recording, channel),
+        drive=drive if recording is None else _place(recording, drive),
         block_s=block_s,
     )
-    choice = Choice(port, simulate, seed, replay, speed or 1.0, baud, text, Path(folder))
+    choice = Choice(port, simulate, seed, recording, speed or 1.0, baud, text, Path(folder))
     with opened_source(choice, setup) as (source, first):
         serve(
             source,
@@ -149,3 +152,8 @@ def watch(
         )
     if not is_quiet():
         click.echo("ended" if replay else "ended: drive at rest, recording closed", err=True)
+
+
+def _place(recording: "Recording", name: str | None) -> int | None:
+    """Return the position of a channel, named as for every recording."""
+    return None if name is None else recording.find(name)

@@ -174,6 +174,7 @@ def _spectrum() -> Any:  # noqa: ANN401  # Bokeh's figure
     )
     legend = figure.legend[0]
     legend.location = "bottom_left"
+    legend.items[1].name = "spectrum_expected"
     legend.background_fill_color, legend.background_fill_alpha = _GROUND, 0.7
     legend.border_line_color = None
     legend.label_text_color, legend.label_text_font_size = _INK, _TEXT_SIZE

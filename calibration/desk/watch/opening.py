@@ -16,6 +16,7 @@ from firmware_bridge.live_session import LiveSession
 
 if TYPE_CHECKING:
     from calibration.desk.watch.source import Source
+    from firmware_bridge.trace import Recording
 
 __all__ = ["Choice", "opened_source"]
 
@@ -34,7 +35,7 @@ class Choice:
         A simulated board.
     seed : int
         Of its truth and noise.
-    replay : str or None
+    replay : Recording or None
         A recording.
     speed : float
         Of the replay.
@@ -49,7 +50,7 @@ class Choice:
     port: str | None = None
     is_simulated: bool = False
     seed: int = 1
-    replay: str | None = None
+    replay: "Recording | None" = None
     speed: float = 1.0
     baud: int = 115200
     text: bool = False
@@ -79,9 +80,7 @@ def opened_source(choice: Choice, setup: WatchSetup) -> Iterator[tuple["Source",
     """
     with ExitStack() as stack:
         if choice.replay is not None:
-            from firmware_bridge.opening import open_recording
-
-            yield Replay(open_recording(choice.replay), choice.speed), []
+            yield Replay(choice.replay, choice.speed), []
             return
         if choice.is_simulated:
             port = stack.enter_context(simulated_board(setup.bench, choice.seed, setup.slope))

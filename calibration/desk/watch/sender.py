@@ -98,5 +98,5 @@ def message_for(viewer: Viewer, state: WatchState, orders: Orders, latency: Late
                 "bandwidth_hz": view.noise_bandwidth_hz,
                 "sources": [] if state.stream.noise is None else list(state.stream.noise.sources),
             }
-        document["line_remarks"] = list(state.stream.lines.remarks)
+        document["line_remarks"] = [*state.stream.remarks, *state.stream.lines.remarks]
     return pack(document, arrays)

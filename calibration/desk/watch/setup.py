@@ -37,8 +37,9 @@ class WatchSetup:
         The lines to follow; those of the bench where empty.
     slope : str
         ``"rising"`` or ``"falling"``: the side of the fringe the interferometer rests on.
-    channel, drive : str or None
-        Names of the photodiode's and the drive's channel; None to find them.
+    channel, drive : str, int or None
+        The photodiode's and the drive's channel: a name, or only digits for its number counted from
+        1; a position counted from 0; None to find it.
     block_s : float
         Seconds of samples in each line fit.
     """
@@ -48,8 +49,8 @@ class WatchSetup:
     calibration: "Calibration | None" = None
     frequencies_hz: tuple[float, ...] = ()
     slope: str = "rising"
-    channel: str | None = None
-    drive: str | None = None
+    channel: str | int | None = None
+    drive: str | int | None = None
     block_s: float = 4.0
 
     @property
@@ -132,15 +133,38 @@ class WatchSetup:
         tuple of int and int or None
             Positions; no drive where no channel is named so.
         """
-        drive = self._find(names, self.drive or self.bench.text("drive.channel") or "drive")
-        photodiode = self._find(names, self.channel or "photodiode")
+        drive = self._find(names, self.drive, self.bench.text("drive.channel") or "drive")
+        photodiode = self._find(names, self.channel, "photodiode")
         if photodiode is None:
             photodiode = next((k for k in range(len(names)) if k != drive), 0)
         return photodiode, None if drive == photodiode else drive
 
+    def remarks(self, names: list[str]) -> tuple[str, ...]:
+        """Return which channels were asked for and are not there.
+
+        Parameters
+        ----------
+        names : list of str
+            Of the board's channels.
+
+        Returns
+        -------
+        tuple of str
+            One line each.
+        """
+        asked = {"photodiode": self.channel, "drive": self.drive}
+        return tuple(
+            f"no channel {wanted!r} for the {what}: there are {', '.join(names)}"
+            for what, wanted in asked.items()
+            if wanted is not None and self._find(names, wanted, "") is None
+        )
+
     @staticmethod
-    def _find(names: list[str], wanted: str) -> int | None:
-        if wanted.isascii() and wanted.isdigit() and 1 <= int(wanted) <= len(names):
-            return int(wanted) - 1
-        lowered = [name.strip().lower() for name in names]
-        return lowered.index(wanted.lower()) if wanted.lower() in lowered else None
+    def _find(names: list[str], wanted: str | int | None, usual: str) -> int | None:
+        if isinstance(wanted, int):
+            return wanted if 0 <= wanted < len(names) else None
+        if wanted is not None and wanted.isascii() and wanted.isdigit():
+            return int(wanted) - 1 if 1 <= int(wanted) <= len(names) else None
+        name = (usual if wanted is None else wanted).removeprefix("name:").strip().lower()
+        lowered = [each.strip().lower() for each in names]
+        return lowered.index(name) if name in lowered else None

@@ -38,6 +38,7 @@ class Stream:
         self.said, rate_hz = said, said.rate_hz
         names = [info.name for info in said.channels]
         self.photodiode, self.drive = setup.columns(names)
+        self.remarks = setup.remarks(names)
         self.columns = [k for k in (self.photodiode, self.drive) if k is not None]
         units = [said.channels[k].unit for k in self.columns]
         self.unit = units[0]

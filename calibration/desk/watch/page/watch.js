@@ -146,7 +146,7 @@ function showTiles(said) {
   write("recording-more", recording.file ? `${plainName(recording.file)}, ${withUnit(recording.bytes, "B")}` : recording.reason || "");
   mark("tile-recording", recording.file ? "on" : "");
   showDrive(said.drive, ["gone", "silent", "failed"].includes(said.port.state));
-  document.body.classList.toggle("stale", said.port.state !== "connected");
+  document.body.classList.toggle("stale", ["gone", "silent", "failed"].includes(said.port.state));
   showAlarm(said);
 }
 
@@ -259,6 +259,8 @@ function showSpectrum(said, arrays) {
     reach("spectrum_y", start, end);
     page.scaled = true;
   }
+  const expected = model("spectrum_expected");
+  if (expected) expected.visible = arrays.spectrum_expected.some((v) => v > 0);
   const lines = said.lines;
   const top = range ? range.end * 0.9 : 1;
   fill("spectrum_lines", {

@@ -6,12 +6,15 @@ import urllib.request
 import numpy as np
 import pytest
 from live_page import Program
+from real_data import real_data
 from sessions import BENCH_FILE
 
+from calibration.desk.watch.document import figures
 from calibration.desk.watch.guard import Guard
 from calibration.desk.watch.replay import Replay
 from calibration.desk.watch.serving import serve
 from calibration.desk.watch.setup import WatchSetup
+from calibration.desk.watch.state import WatchState
 from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveGap, LiveState
 from firmware_bridge.opening import open_recording
@@ -74,6 +77,14 @@ def test_a_replay_is_served_until_ctrl_c(recording):
     assert program.url.startswith("http://127.0.0.1:")
     with urllib.request.urlopen(program.url) as answer:  # noqa: S310  # our own
         assert b"midfringe watch" in answer.read()
+    assert program.end() == (0, "ended\n")
+
+
+def test_channels_of_a_replay_are_named_as_those_of_every_recording(capsys, recording):
+    # Column 1 is the time, column 2 the photodiode; there is no third.
+    assert run(["watch", "--replay", str(recording), "--channel", "3"]) == 2
+    assert "column 3 is no channel" in capsys.readouterr().err
+    program = Program("--replay", recording, "--channel", "2")
     assert program.end() == (0, "ended\n")
 
 
@@ -143,3 +154,26 @@ def test_a_replay_has_neither_drive_nor_recording(recording):
         replay.start_recording("x.mfr")
     with pytest.raises(BridgeError, match="is not set"):
         replay.set_line(0, 31.7, 1.0)
+
+
+def test_a_real_recording_shows_its_line(monkeypatch):
+    # Its README: after 2.5 s locked, 30 Hz line of 2.53 V for a drive of 100.4 mV, mean 5.13 V
+    # between extremes of 0.44 V and 9.69 V.
+    path = real_data("fiber-modulator-calline/fom-pa/fom-pa-control-actuation.csv")
+    recording = open_recording(path)
+    bench = Bench.of(low="0.44 V", high="9.69 V")
+    state = WatchState(WatchSetup("real", bench, None, (30.0,), "rising", 0, 1, block_s=1.0))
+    now_s = [0.0]
+    monkeypatch.setattr("calibration.desk.watch.replay.time.monotonic", lambda: now_s[0])
+    replay = Replay(recording)
+    for _ in range(60):
+        for event in replay.poll():
+            for job in state.take(event):
+                job.deliver(job.work())
+        now_s[0] += 0.1
+    shown = figures(state)
+    (line,) = shown["lines"]
+    assert line["amplitude"] == pytest.approx(2.53, abs=0.02)
+    assert line["amplitude"] / line["ratio"] == pytest.approx(0.1004, rel=0.005)
+    assert shown["rest"]["verdict"] == "at mid-fringe"
+    assert shown["port"]["state"] == "closed"

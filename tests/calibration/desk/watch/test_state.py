@@ -177,6 +177,14 @@ def test_channels_are_found_by_name_or_number():
     assert setup.columns(["a", "Photodiode", "b"]) == (1, None)
     assert setup.columns(["a"]) == (0, None)
     assert WatchSetup("test", Bench(), channel="2", drive="1").columns(["a", "b"]) == (1, 0)
+    assert WatchSetup("test", Bench(), channel="name:2").columns(["1", "2", "3"]) == (1, None)
+    assert WatchSetup("test", Bench(), channel=0).columns(["1", "2", "3"]) == (0, None)
+    wrong = WatchSetup("test", Bench(), channel="pd", drive="4")
+    assert wrong.columns(["a", "b"]) == (0, None)
+    assert wrong.remarks(["a", "b"]) == (
+        "no channel 'pd' for the photodiode: there are a, b",
+        "no channel '4' for the drive: there are a, b",
+    )
 
 
 def test_what_is_sent_is_what_the_state_holds_and_json_can_hold(state):

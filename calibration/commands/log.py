@@ -18,6 +18,7 @@ if TYPE_CHECKING:
 
 __all__ = ["log"]
 
+_WRONG_INPUT = 2
 _SHARE = 8  # of what is kept: the largest recording, unless told
 
 
@@ -111,7 +112,7 @@ def log(
     folder = LogFolder(out, Retention(keep, keep_for))
     settings = _settings(port, largest, options)
     stop = threading.Event()
-    with folder.held(), Ledger(ledger) as kept:
+    with folder.held(), Ledger(ledger) as kept, _nothing_left(kept):
         plan = _plan(kept, bench_name or "bench", judging, port, options)
         with _asked_to_end(stop), _heard():
             lines = LineLog(kept, plan, (lambda _alarm: stop.set()) if until_alarm else None)
@@ -195,6 +196,19 @@ def _plan(
     calibration = in_force.calibration if in_force is not None and is_metres else None
     measuring = Measuring(lines_hz, calibration, options["slope"] or "rising", options["mains"])
     return LogPlan(measuring, is_metres, bench, judging.law, judging.rule, port)
+
+
+@contextlib.contextmanager
+def _nothing_left(kept: "Ledger") -> Iterator[None]:
+    """Leave no new ledger behind where the input is wrong."""
+    from metro.errors import MidfringeError
+
+    try:
+        yield
+    except MidfringeError as error:
+        if error.exit_code == _WRONG_INPUT:
+            kept.discard_if_new()
+        raise
 
 
 @contextlib.contextmanager

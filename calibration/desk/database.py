@@ -43,7 +43,8 @@ class Database:
 
     def __init__(self, place: str, *, create: bool) -> None:
         require("sqlalchemy", "ledger", "a ledger")
-        self.place = place
+        self._file = None if "://" in place else Path(place)
+        self._was_there = self._file is None or self._file.exists()
         self._engine = _engine(place, create=create)
         self._readers = self._engine.execution_options(is_reader=True)
         self.name = self._engine.url.render_as_string(hide_password=True)
@@ -89,6 +90,14 @@ class Database:
     def close(self) -> None:
         """Close every connection."""
         self._engine.dispose()
+
+    def discard_if_new(self) -> None:
+        """Close, and delete a file that this opening has made: nothing came of what it was for."""
+        self.close()
+        if self._file is None or self._was_there:
+            return
+        for suffix in ("", "-wal", "-shm"):
+            self._file.with_name(self._file.name + suffix).unlink(missing_ok=True)
 
     @contextlib.contextmanager
     def _failing(self) -> Iterator[None]:

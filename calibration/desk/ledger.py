@@ -245,6 +245,13 @@ class Ledger:
         """Close the database."""
         self._database.close()
 
+    def discard_if_new(self) -> None:
+        """Close; delete the file of a ledger that was made just now and is empty still."""
+        if self.benches():
+            self.close()
+        else:
+            self._database.discard_if_new()
+
     def __enter__(self) -> Self:
         return self
 

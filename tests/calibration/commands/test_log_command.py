@@ -214,4 +214,14 @@ def test_wrong_input_is_one_line(tmp_path, capsys):
         capsys, *out, *place, *line, "--keep-bytes=1MB", "--rotate-bytes=600kB"
     )
     assert "--rate goes with --text" in refused(capsys, *out, *place, *line, "--rate=5Hz")
-    assert not list(tmp_path.glob("*.mfr"))
+    assert [path.name for path in tmp_path.iterdir()] == [".bench.lock"]
+
+
+def test_a_port_that_is_none_leaves_a_ledger_with_entries_alone(tmp_path, capsys):
+    place = tmp_path / "l.ledger"
+    with Ledger(str(place)) as ledger:
+        ledger.add_line_result(result(1.0))
+    out = ("/dev/none", "--out", tmp_path / "bench")
+    assert "/dev/none" in refused(capsys, *out, "--ledger", place, "--line", "50Hz")
+    with Ledger(str(place), create=False) as ledger:
+        assert len(ledger.line_results()) == 1

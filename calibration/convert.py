@@ -12,6 +12,7 @@ from math import hypot
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.channel_volts import channel_volts
 from calibration.conversion_filter import CORNERS, FilterStage
 from calibration.conversion_tally import ConversionTally, relative_us
 from calibration.errors import CalibrationError
@@ -83,7 +84,8 @@ class ConvertedRecording(Recording):
     Raises
     ------
     CalibrationError
-        If the quantity or slope has another name, or strain is asked for without an arm length.
+        If the quantity or slope has another name, the channel is not in volts, or strain is asked
+        for without an arm length.
     """
 
     def __init__(
@@ -103,6 +105,7 @@ class ConvertedRecording(Recording):
         self._reach = sum(stage.filter.reach for stage in self.stages)
         self._source, self._position = source, source.find(channel)
         self._per_radian = per_radian(calibration, quantity)
+        self._volts = channel_volts(source, self._position, calibration)
         super().__init__(
             path=source.path,
             format=source.format,
@@ -134,7 +137,8 @@ class ConvertedRecording(Recording):
 
     def _converted(self, values: FloatArray) -> FloatArray:
         """Return samples of the source in the quantity's unit, shape (n,), before any filter."""
-        phase = invert_fringe(values, self.calibration.extremes, self.slope)
+        volts = self._volts.of(values)
+        phase = invert_fringe(volts, self.calibration.extremes, self.slope)
         return np.asarray(phase.phase_rad * self._per_radian)
 
     def judge(self, from_s: float | None = None, to_s: float | None = None) -> Conversion:
@@ -154,7 +158,8 @@ class ConvertedRecording(Recording):
         tally = ConversionTally()
         for first in range(start, stop, _BLOCK):
             span = self._source.read([self._position], first, min(first + _BLOCK, stop))
-            tally.add(span.values[:, 0], self.calibration.extremes, self.slope)
+            volts = self._volts.of(span.values[:, 0])
+            tally.add(volts, self.calibration.extremes, self.slope)
             if self.stages:
                 out = self.read([0], first, min(first + _BLOCK, stop)).values[:, 0]
                 tally.count_filtered(out)
@@ -169,7 +174,10 @@ class ConvertedRecording(Recording):
             noise=noise,
             used_fraction=tally.used / (stop - start),
             reasons=[*reasons, *self.calibration.reasons],
-            cautions=_cautions(self.calibration, self.slope, self.stages),
+            cautions=[
+                *([self._volts.caution] if self._volts.caution else []),
+                *_cautions(self.calibration, self.slope, self.stages),
+            ],
         )
 
 

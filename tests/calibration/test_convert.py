@@ -14,6 +14,7 @@ from calibration.conversion_filter import loop_stage, readout_stage
 from calibration.convert import ConvertedRecording
 from calibration.convert_plot import course_of
 from calibration.driven_displacement import DrivenDisplacement
+from calibration.errors import CalibrationError
 from calibration.open_loop import load_open_loop
 from calibration.record import load
 from firmware_bridge.opening import open_recording
@@ -141,6 +142,37 @@ def test_every_kind_of_file_holds_the_same_and_its_gaps(session, tmp_path, suffi
         kept = json.loads(str(np.load(out)["midfringe"]))
         assert kept["uncertainty"] == document["uncertainty"]
         assert kept["gaps"] == [[1000, 100, 0.0]]
+
+
+def bare(path, values, label="photodiode"):
+    rows = "\n".join(f"{k / 4000:.6f},{v!r}" for k, v in enumerate(values.tolist()))
+    path.write_text(f"time_s,{label}\n{rows}\n", encoding="utf-8")
+    return open_recording(path)
+
+
+def test_counts_are_told_from_volts_and_other_units_refused(session, tmp_path):
+    _, files, calibration, _ = session
+    volts = open_recording(files["lines_rising"][0]).trace("photodiode").values[:3000]
+    counts = np.rint(volts / (10.0 / 2**16))
+    expected = ConvertedRecording(
+        bare(tmp_path / "v.csv", counts * (10.0 / 2**16), "photodiode [V]"),
+        "photodiode",
+        calibration,
+    )
+    for name, values, told in (
+        ("counts", counts, "it is taken as ADC counts"),
+        ("volts", counts * (10.0 / 2**16), "it is taken as volts"),
+    ):
+        source = bare(tmp_path / f"{name}.csv", values)
+        found = ConvertedRecording(source, "photodiode", calibration)
+        np.testing.assert_allclose(
+            found.trace("displacement").values, expected.trace("displacement").values, atol=1e-15
+        )
+        assert any(told in text for text in found.judge().cautions)
+    with pytest.raises(CalibrationError, match="'photodiode' must be in V, got A"):
+        ConvertedRecording(
+            bare(tmp_path / "a.csv", volts, "photodiode [A]"), "photodiode", calibration
+        )
 
 
 def test_a_plot_is_drawn_and_nothing_else_changes(session, tmp_path, capsys):

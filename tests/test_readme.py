@@ -57,6 +57,9 @@ def test_every_command_runs(session, monkeypatch):
 def test_every_option_of_the_bench_session_exists(arguments):
     command = cli.get_command(click.Context(cli), arguments[0])
     assert command is not None
+    if isinstance(command, click.Group):
+        command = command.get_command(click.Context(command), arguments[1])
+        assert command is not None
     known = {option for param in command.params for option in param.opts}
     assert {word for word in arguments if re.match(r"--[a-z]", word)} <= known
 

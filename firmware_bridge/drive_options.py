@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines
+from firmware_bridge.lock_in_start import LockInStart
 from metro.errors import MetroError
 from metro.units import si
 
@@ -16,7 +17,7 @@ if TYPE_CHECKING:
 else:
     _ParamType = click.ParamType  # not generic before click 8.2
 
-__all__ = ["DriveLineType", "drive_cautions", "drive_within"]
+__all__ = ["DriveLineType", "LockInType", "drive_cautions", "drive_within"]
 
 _EXAMPLE = "such as 87.1Hz=0.2V, or 87.1Hz=0.2V@0.5rad with a phase"
 
@@ -63,6 +64,47 @@ class DriveLineType(_ParamType):
         return DriveLine(
             si(frequency, name, "Hz"), si(amplitude, name, "V"), si(phase or "0 rad", name, "rad")
         )
+
+
+class LockInType(_ParamType):
+    """An option value CHANNEL=TIME, the channel by name or by number from 1."""
+
+    name = "LOCK-IN"
+
+    def convert(
+        self,
+        value: Any,  # noqa: ANN401  # text from the command line
+        param: click.Parameter | None,
+        ctx: click.Context | None,  # noqa: ARG002  # click's signature
+    ) -> Any:  # noqa: ANN401  # a LockInStart
+        """Return the lock-in.
+
+        Parameters
+        ----------
+        value : str
+            As given.
+        param : click.Parameter, optional
+            The option.
+        ctx : click.Context, optional
+            Not used.
+
+        Returns
+        -------
+        LockInStart
+            In SI.
+
+        Raises
+        ------
+        MetroError
+            If it is none.
+        """
+        if isinstance(value, LockInStart):
+            return value
+        name = "--lock-in" if param is None else param.opts[0]
+        channel, equals, time = str(value).rpartition("=")
+        if not equals or not channel:
+            raise MetroError(f"{name} must be CHANNEL=TIME, such as photodiode=1s, got {value!r}")
+        return LockInStart(channel, si(time, name, "s", above=0.0))
 
 
 def drive_within(

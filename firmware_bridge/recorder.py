@@ -13,6 +13,7 @@ from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.gap_reason import counted, gap_reason
 from firmware_bridge.intake import Intake
 from firmware_bridge.live_events import LiveBlock
+from firmware_bridge.lock_in_start import LockInStart
 from firmware_bridge.port import ByteSource, open_port
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.recording_session import Progress, RecordingSession
@@ -92,7 +93,7 @@ def record(
     overwrite: bool = False,
     progress: Callable[[Progress], None] | None = None,
     stop: threading.Event | None = None,
-    start: bytes = b"",
+    lock_in: LockInStart | None = None,
     drive: DriveLines | None = None,
     on_block: Callable[[LiveBlock], None] | None = None,
     rotate_bytes: int | None = None,
@@ -126,9 +127,8 @@ def record(
         Called a few times a second with a `Progress`.
     stop : threading.Event, optional
         Ends the recording when set.
-    start : bytes
-        Arguments of the command *start*, from `firmware_bridge.arguments.start_arguments`, where the
-        board shall send more than samples; a board that sends already refuses them.
+    lock_in : LockInStart, optional
+        Have the board's own lock-in send results, and no samples.
     drive : DriveLines, optional
         Lines that the board drives from before the first sample kept until the end; then they come
         to rest.
@@ -158,6 +158,8 @@ def record(
         raise BridgeError(f"duration_s must be > 0 s and finite, got {duration_s!r}")
     if not overwrite and _exists(Path(path)):
         raise BridgeError(f"{path} exists; --overwrite replaces it")
+    if text and lock_in is not None:
+        raise BridgeError("a lock-in needs a board that sends frames, not text")
     if text and drive is not None and drive.lines:
         raise BridgeError("drive lines need a board that sends frames, not text")
     rotation = Rotation(rotate_bytes, rotate_s, next_path, on_ended)
@@ -182,7 +184,9 @@ def record(
     stop = stop or threading.Event()
     is_rotated = rotate_bytes is not None or rotate_s is not None
     try:
-        session = RecordingSession(source, baud, intake, framer, reconnect, stop, desk, start=start)
+        session = RecordingSession(
+            source, baud, intake, framer, reconnect, stop, desk, lock_in=lock_in
+        )
         session.run(progress)
     except DiskError as error:
         failure = DeviceFailedError(f"{error}; {_kept_on_disk(intake.files)}")

@@ -13,6 +13,7 @@ from firmware_bridge.drive_desk import DriveDesk
 from firmware_bridge.drive_lines import DriveError
 from firmware_bridge.envelope import Discarded, Unwrapper
 from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.lock_in_start import LockInStart
 from firmware_bridge.message import (
     CommandCode,
     MessageError,
@@ -30,7 +31,7 @@ __all__ = ["Progress", "RecordingSession", "Watcher"]
 
 _log = logging.getLogger(__name__)
 
-_LENGTH = slice(4, 8)  # of a lock-in, in the arguments of start
+_IDLE_S = 1.5  # a board that samples sends a frame every 0.5 s at least
 _SAMPLED = (MessageType.SAMPLES, MessageType.LOCK_IN)
 _ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
 _REOPEN_S = 0.25
@@ -112,8 +113,8 @@ class RecordingSession:
     watcher : Watcher, optional
         Who is told of a port that is gone, of silence and of refusals; nothing of these ends the
         session then.
-    start : bytes
-        Arguments of *start*.
+    lock_in : LockInStart, optional
+        What the board is asked for instead of samples.
     """
 
     def __init__(
@@ -126,7 +127,7 @@ class RecordingSession:
         stop: threading.Event,
         desk: DriveDesk | None = None,
         watcher: Watcher | None = None,
-        start: bytes = b"",
+        lock_in: LockInStart | None = None,
     ) -> None:
         self._source, self._name, self._baud = source, source.name, baud
         self._intake, self._framer, self._reconnect = intake, framer, reconnect
@@ -134,7 +135,8 @@ class RecordingSession:
         self._stop = stop
         self._desk = desk
         self._watcher = watcher
-        self._start = start
+        self._lock_in = lock_in
+        self._is_started = False
         self._ended = threading.Event()  # the reader will put nothing more
         self._written = threading.Event()
         self._queue = ByteQueue()
@@ -201,6 +203,7 @@ class RecordingSession:
                     self._ask(is_first=asked_s is None)
                     asked_s = now_s
                 self._drive()
+                self._begin()
                 try:
                     data = self._source.read()
                 except PortLostError as error:
@@ -266,8 +269,31 @@ class RecordingSession:
             self._say(CommandCode.IDENTIFY)
         else:
             self._say(CommandCode.KEEP_ALIVE)  # else a board's drive goes to rest after 2 s
-        if is_first:
-            self._say(CommandCode.START, self._start)
+        # A board that was reset waits to be started; one that sends goes on as it is.
+        if is_first or self._silence.idle_s > _IDLE_S + self._every_s:
+            self._is_started = False
+        self._begin()
+
+    @property
+    def _every_s(self) -> float:
+        """From one lock-in result to the next [s], 0 where samples are expected."""
+        asked_s = 0.0 if self._lock_in is None else self._lock_in.time_s
+        return max(asked_s, self._intake.every_s)
+
+    def _begin(self) -> None:
+        """Have the board send, once what is asked for can be said."""
+        if self._is_started or self._framer is not None:
+            return
+        arguments = b""
+        if self._lock_in is not None:
+            announced = self._intake.announcement
+            # Its sums begin with the start: the lines must be there before.
+            if announced is None or (self._desk is not None and not self._desk.is_settled()):
+                return
+            arguments = self._lock_in.arguments(announced)
+            self._say(CommandCode.STOP)
+        self._is_started = True
+        self._say(CommandCode.START, arguments)
 
     def _say(self, code: CommandCode, arguments: bytes = b"") -> bool:
         self._request += 1
@@ -397,21 +423,13 @@ class RecordingSession:
             intake.is_known,
             bool(intake.files),
             self._reconnect,
-            max(intake.every_s, self._asked_s()),
+            self._every_s,
         )
         if complaint and self._watcher is not None:
             self._watcher.state("silent", complaint)
         elif complaint:
             self._finish_text()
             raise DeviceFailedError(f"{complaint}; {self._kept()}")
-
-    def _asked_s(self) -> float:
-        """Return how long one lock-in result takes that *start* asked for [s], 0 without."""
-        announced = self._intake.announcement
-        if len(self._start) < _LENGTH.stop or announced is None:
-            return 0.0
-        length = int.from_bytes(self._start[_LENGTH], "little")
-        return length / (announced.rate_hz * announced.speed)
 
     def _kept(self) -> str:
         if not self._intake.files:

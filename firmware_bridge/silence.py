@@ -31,6 +31,11 @@ class Silence:
         self._is_echo = False
         self._bytes = self._printable = self._zeros = 0  # since the last time something valid came
 
+    @property
+    def idle_s(self) -> float:
+        """How long nothing has come of what is recorded [s]."""
+        return time.monotonic() - self._sampled_s
+
     def note(self, data: bytes, is_valid: bool, is_sampled: bool, is_echo: bool = False) -> None:
         """Take note of bytes.
 

@@ -7,7 +7,7 @@ from typing import Any
 
 import click
 
-from firmware_bridge.drive_options import DriveLineType
+from firmware_bridge.drive_options import DriveLineType, LockInType
 from metro.options import ValueType, command, distrust, is_quiet, output_options
 
 __all__ = ["record"]
@@ -84,6 +84,12 @@ def _drive(lines: tuple[Any, ...], bench_file: str | None, limit_v: float | None
     help="Drive line of the board, such as 87.1Hz=0.2V; repeatable.",
 )
 @click.option(
+    "--lock-in",
+    type=LockInType(),
+    metavar="C=T",
+    help="The board's lock-in of a channel instead of samples: photodiode=1s.",
+)
+@click.option(
     "--bench",
     "bench_file",
     envvar="MIDFRINGE_BENCH",
@@ -108,6 +114,7 @@ def record(
     text: bool,
     rate: float | None,
     lines: tuple[Any, ...],
+    lock_in: Any,  # noqa: ANN401  # a LockInStart; modules load when called
     bench_file: str | None,
     drive_limit: float | None,
     only_list: bool,
@@ -120,7 +127,7 @@ def record(
     NAME-2.mfr. The exit code is 1 where samples were lost or bytes discarded midway.
 
     Lines are set before the first sample that is kept, in volts at the actuator's terminals where a bench says what lies between,
-    and brought to rest at the end; with --reconnect they are set again when the board is back. A limit in software is no interlock.
+    and brought to rest at the end; after a reset of the board they are set again. A limit in software is no interlock.
     """
     from firmware_bridge.byte_size import parse_byte_size
     from firmware_bridge.errors import DeviceFailedError
@@ -157,6 +164,7 @@ def record(
             reconnect=reconnect,
             overwrite=overwrite,
             drive=drive,
+            lock_in=lock_in,
             progress=line.show if show else None,
         )
     except DeviceFailedError as error:

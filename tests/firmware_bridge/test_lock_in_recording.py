@@ -11,12 +11,13 @@ import pytest
 from wire_board import RATE_HZ, SLOTS, PtyLink, WireBoard, ramp
 
 from firmware_bridge.announcement import Announcement, ChannelInfo, encode_announcement
-from firmware_bridge.arguments import start_arguments
+from firmware_bridge.decoder import Command, Decoder
 from firmware_bridge.envelope import Unwrapper
 from firmware_bridge.errors import DeviceFailedError
 from firmware_bridge.frame import encode_frame
 from firmware_bridge.intake import Intake
 from firmware_bridge.lock_in_recording import LockInRecording
+from firmware_bridge.lock_in_start import LockInError, LockInStart
 from firmware_bridge.message import CommandCode, LockIn, Reply, encode_lock_in, encode_reply
 from firmware_bridge.opening import open_lock_in, open_recording
 from firmware_bridge.recorder import record
@@ -186,7 +187,7 @@ def test_a_board_that_sends_nothing_else_is_recorded(tmp_path):
             time.sleep(0.02)
             link.send(encode_lock_in(result(k * LENGTH)))
 
-    summary = on_a_port(tmp_path, send, duration_s=4.0, start=start_arguments(samples=False))
+    summary = on_a_port(tmp_path, send, duration_s=4.0, lock_in=LockInStart("pd", 0.5))
     assert (summary.samples, summary.lock_ins, summary.duration_s) == (0, 8, 4.0)
     assert summary.file == tmp_path / "a.mfr"
     recording = open_recording(summary.file)
@@ -206,3 +207,47 @@ def test_a_board_that_only_answers_has_stalled(tmp_path):
     with pytest.raises(DeviceFailedError) as error:
         on_a_port(tmp_path, send)
     assert "sent no valid frame for 10 s, though it answers; kept 500 samples" in str(error.value)
+
+
+@pytest.mark.parametrize(
+    ("channel", "time_s", "message"),
+    [
+        ("nix", 1.0, "the board has no channel 'nix'; it has 1 'pd', 2 'drive'"),
+        ("3", 1.0, "the board has no channel '3'; it has 1 'pd', 2 'drive'"),
+        ("pd", 1e-4, "a lock-in over 0.0001 s would take 0 samples; 1 to 2^32 - 1 are possible"),
+    ],
+)
+def test_a_lock_in_that_cannot_be_is_refused(channel, time_s, message):
+    board = Announcement(1, RATE_HZ, "int16", SLOTS, [ChannelInfo("pd"), ChannelInfo("drive")])
+    with pytest.raises(LockInError) as error:
+        LockInStart(channel, time_s).arguments(board)
+    assert str(error.value) == message
+
+
+def test_the_lock_in_asked_for_is_the_specifications():
+    board = Announcement(1, RATE_HZ, "int16", SLOTS, [ChannelInfo("pd"), ChannelInfo("drive")])
+    for channel in ("drive", "2"):
+        assert LockInStart(channel, 0.5).arguments(board) == bytes([2, 1, 0, 0, 232, 3, 0, 0])
+
+
+def test_a_board_that_was_reset_is_started_again(tmp_path):
+    """As a board of the specification does: after a reset it announces itself and waits."""
+    starts = []
+
+    def send(link):
+        board, decoder, begun = WireBoard(link), Decoder(), time.monotonic()
+        board.announce()
+        board.send(10)
+        board = WireBoard(link, stream=9)
+        board.announce()
+        while time.monotonic() < begun + 8 and not board.next:
+            for event in decoder.feed(link.received()):
+                if isinstance(event, Command) and event.code == CommandCode.START:
+                    starts.append(event)
+                    board.send(140)
+            time.sleep(0.01)
+
+    summary = on_a_port(tmp_path, send, duration_s=3.0)
+    assert summary.samples == 6000
+    assert len(starts) == 1
+    assert not summary.gaps[0].exact

@@ -142,6 +142,30 @@ def test_record_drives_the_lines_it_is_told_and_leaves_the_board_at_rest(elf, tm
     assert sizes == pytest.approx([0.6, 0.4], abs=2e-4)
 
 
+def test_the_boards_own_lock_in_is_recorded_instead_of_samples(elf, tmp_path):
+    path = tmp_path / "lock-in.mfr"
+    with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:
+        done, recorded = midfringe(
+            "record", "--port", board.port, "--out", path, "--duration", "3s", "--json",
+            "--lock-in", "drive=0.5s", "--line", "40Hz=0.6V", "--line", "62Hz=0.4V@1rad",
+            "--drive-limit", "1.5V",
+        )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    assert (recorded["samples"], recorded["lock_in_results"]) == (0, 6)
+    recording = open_recording(path)
+    assert (recording.length, recording.rate_hz, recording.gaps) == (6, 2.0, [])
+    # whole cycles of both in 0.5 s; the drive's channel is of the same sample: half a code of 1 mV
+    for frequency, amplitude_v, phase_rad in (("40", 0.6, 0.0), ("62", 0.4, 1.0)):
+        values = recording.trace(f"drive {frequency} Hz amplitude").values
+        np.testing.assert_allclose(values, amplitude_v, atol=2e-4)
+        phases = recording.trace(f"drive {frequency} Hz phase").values
+        (first,) = recording._joins.values()  # the recording's time begins there, the line's at 0
+        at_first = phase_rad + 2 * np.pi * float(frequency) * first / 1000.0
+        np.testing.assert_allclose(np.angle(np.exp(1j * (phases - at_first))), 0, atol=1e-3)
+    done, seen = midfringe("inspect", path, "--json")
+    assert [c["name"] for c in seen["channels"]] == [c.name for c in recording.channels]
+
+
 def test_the_drive_rests_when_the_host_is_silent(elf):
     with Emulator(elf) as board:
         host = Host(board.port)

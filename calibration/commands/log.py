@@ -54,7 +54,7 @@ _SHARE = 8  # of what is kept: the largest recording, unless told
     metavar="T",
     help="Stretch of each fit; all of --every.",
 )
-@click.option("--channel", metavar="NAME", help="The photodiode's channel.")
+@click.option("--channel", metavar="NAME", help="The photodiode's channel, or its number.")
 @click.option("--drive", metavar="NAME", help="The drive's channel.")
 @click.option("--temperature-channel", metavar="NAME", help="A channel in K or degC.")
 @click.option("--mains", type=ValueType("Hz", above=0.0), default=50.0, metavar="F", help="50Hz.")
@@ -160,6 +160,8 @@ def _settings(port: str, largest: int | None, options: dict[str, Any]) -> Any:  
         raise LedgerError(f"--over must be at most --every, {options['every']:g} s, got {over:g} s")
     if options["rate"] is not None and not options["text"]:
         raise LedgerError("--rate goes with --text; a board that sends frames announces its rate")
+    if options["text"] and options["rate"] is None:
+        raise LedgerError("--text needs --rate, the lines per second: frequencies rest on it")
     return LogSettings(
         port,
         options["baud"],

@@ -21,7 +21,7 @@ class ChannelChoice:
     Parameters
     ----------
     photodiode, drive, temperature : str or None
-        Names of channels.
+        Names of channels, or their numbers from 1; ``name:3`` is the name "3".
     """
 
     photodiode: str | None = None
@@ -128,8 +128,10 @@ def _maybe(names: list[str], wanted: str | None) -> int | None:
 
 
 def _find(names: list[str], wanted: str) -> int:
-    if names.count(wanted) != 1:
-        raise LedgerError(
-            f"no channel named {wanted!r}; the board has {', '.join(map(repr, names))}"
-        )
-    return names.index(wanted)
+    """Return the channel of a name, or of a number counted from 1, as in a recording."""
+    if wanted.isascii() and wanted.isdigit() and 1 <= int(wanted) <= len(names):
+        return int(wanted) - 1
+    named = wanted.removeprefix("name:")
+    if names.count(named) != 1:
+        raise LedgerError(f"no channel {wanted!r}; the board has {', '.join(map(repr, names))}")
+    return names.index(named)

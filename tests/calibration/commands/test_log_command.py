@@ -1,6 +1,7 @@
 """``midfringe log`` on a board in real time: recordings in a row, results, ends of every kind."""
 
 import contextlib
+import itertools
 import json
 import resource
 import signal
@@ -14,7 +15,7 @@ import pytest
 from ledgers import result, sample_ledger
 from long_runs.killed_log import without_drive
 from sessions import built_in_bench
-from wire_board import asked_board
+from wire_board import PtyLink, asked_board
 
 from calibration.desk.ledger import Ledger
 from calibration.rehearsal_script import session_steps
@@ -214,7 +215,37 @@ def test_wrong_input_is_one_line(tmp_path, capsys):
         capsys, *out, *place, *line, "--keep-bytes=1MB", "--rotate-bytes=600kB"
     )
     assert "--rate goes with --text" in refused(capsys, *out, *place, *line, "--rate=5Hz")
+    assert "--text needs --rate" in refused(capsys, *out, *place, *line, "--text")
     assert [path.name for path in tmp_path.iterdir()] == [".bench.lock"]
+
+
+def test_a_board_that_prints_text_is_logged_too(tmp_path, capsys):
+    """0.3 V at 10 Hz in lines of text, 200 a second; the second column is a temperature's number."""
+    stop = threading.Event()
+
+    def print_lines(link):
+        begun_s = time.monotonic()
+        for k in itertools.count():
+            volts = 1.5 + 0.3 * np.cos(2 * np.pi * 10 * k / 200)
+            with contextlib.suppress(OSError):
+                link.send(f"{volts:.4f} {k % 7}\n".encode())
+            if stop.wait(max(0.0, begun_s + k / 200 - time.monotonic())):
+                return
+
+    with contextlib.closing(PtyLink()) as link:
+        sender = threading.Thread(target=print_lines, args=(link,))
+        sender.start()
+        words = ["log", link.port, "--text", "--rate=200Hz", "--line=10Hz", "--channel=1"]
+        place = ["--out", str(tmp_path / "b"), "--ledger", str(tmp_path / "l")]
+        code = run([*words, *place, "--every=1s", "--duration=2s", "--quiet", "--json"])
+        stop.set()
+        link.give_up()
+        sender.join()
+    assert code == 0
+    assert json.loads(capsys.readouterr().out)["results"] == 2
+    with Ledger(str(tmp_path / "l")) as ledger:
+        for entry in ledger.line_results():
+            assert entry.value.magnitude == pytest.approx(0.3, abs=3e-4)
 
 
 def test_a_port_that_is_none_leaves_a_ledger_with_entries_alone(tmp_path, capsys):

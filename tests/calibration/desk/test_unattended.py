@@ -109,7 +109,9 @@ def test_channels_are_found_by_their_usual_or_given_names(tmp_path):
     assert (found.photodiode, found.drive, found.temperature) == (1, 0, None)
     found = LoggedChannels.of_recording(path, ChannelChoice("drive", "photodiode", "t"))
     assert (found.used, found.zero_k, found.rate_hz) == ([0, 1, 2], 273.15, 1000.0)
-    with pytest.raises(LedgerError, match="no channel named 'x'; the board has 'drive', 'photod"):
+    found = LoggedChannels.of_recording(path, ChannelChoice("name:photodiode", "1"))
+    assert (found.photodiode, found.drive) == (1, 0)
+    with pytest.raises(LedgerError, match="no channel 'x'; the board has 'drive', 'photod"):
         LoggedChannels.of_recording(path, ChannelChoice(drive="x"))
     with pytest.raises(LedgerError, match="channel 'drive' must be in K or degC, got 'V'"):
         LoggedChannels.of_recording(path, ChannelChoice(temperature="drive"))

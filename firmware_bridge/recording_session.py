@@ -13,7 +13,7 @@ from firmware_bridge.drive_desk import DriveDesk
 from firmware_bridge.drive_lines import DriveError
 from firmware_bridge.envelope import Discarded, Unwrapper
 from firmware_bridge.errors import BridgeError, DeviceFailedError
-from firmware_bridge.lock_in_start import LockInStart
+from firmware_bridge.lock_in_start import LockInError, LockInStart
 from firmware_bridge.message import (
     CommandCode,
     MessageError,
@@ -251,6 +251,20 @@ class RecordingSession:
             else:
                 self._watcher.reply(notice, refused=True)
 
+    def _hear(self, message: bytes) -> None:
+        """Hear what the board says to commands about its drive and lock-in."""
+        try:
+            reply = parse_message(message)
+        except MessageError:
+            return
+        if not isinstance(reply, Reply):
+            return
+        if self._lock_in is not None and reply.code == CommandCode.START and reply.status:
+            reason = reply.text or "it has none"
+            raise LockInError(f"{self._name}: the board refuses the lock-in: {reason}")
+        if self._desk is not None:
+            self._heard(self._desk.heard(reply))
+
     def _heard(self, answer: tuple[str, bool] | None) -> None:
         if answer is not None and answer[1]:
             self._refused(answer[0])
@@ -367,6 +381,8 @@ class RecordingSession:
             return framer.heard > before, framer.heard > before, False
         pieces = self._unwrapper.feed(arrival.data)
         for piece in pieces:
+            if isinstance(piece, bytes) and piece[0] == MessageType.REPLY:
+                self._hear(piece)
             if self._desk is None or self._is_wanted(piece, self._desk):
                 self._intake.take(piece, arrival.monotonic_ns, arrival.unix_ns)
         # Our own commands come back from a port that loops or echoes: they are no sign of a board.
@@ -375,11 +391,7 @@ class RecordingSession:
         return bool(others), not others.isdisjoint(_SAMPLED), MessageType.COMMAND in kinds
 
     def _is_wanted(self, piece: bytes | Discarded, desk: DriveDesk) -> bool:
-        """Return whether a piece is to be kept; hear what the board says about its drive."""
-        if isinstance(piece, bytes) and piece[0] == MessageType.REPLY:
-            with contextlib.suppress(MessageError):
-                reply = parse_message(piece)
-                self._heard(desk.heard(reply) if isinstance(reply, Reply) else None)
+        """Return whether a piece is to be kept."""
         # Samples of a drive that is not yet as wanted would spoil every fit.
         is_sample = isinstance(piece, bytes) and piece[0] in _SAMPLED
         try:

@@ -215,7 +215,10 @@ class SimulatedBoard:
 
     def _answer(self, command: Command) -> None:
         self._wired.hear()
-        if command.code == CommandCode.START and self._source is not None:
+        if command.code == CommandCode.START and command.arguments[:1] not in (b"", b"\1"):
+            answer = Reply(command.code, command.request, 2, "no such start")  # it has no lock-in
+            self._outbox += encode_reply(answer)
+        elif command.code == CommandCode.START and self._source is not None:
             self._outbox += encode_reply(Reply(command.code, command.request))  # sends already
         elif command.code == CommandCode.START:
             self._stream += 1

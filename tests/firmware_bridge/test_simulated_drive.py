@@ -14,8 +14,10 @@ from firmware_bridge.arguments import (
     ramp_arguments,
 )
 from firmware_bridge.decoder import Announcement, Command, Decoder, Reply, Samples
+from firmware_bridge.lock_in_start import LockInError, LockInStart
 from firmware_bridge.message import CommandCode, encode_command
 from firmware_bridge.port import open_port
+from firmware_bridge.recorder import record
 from firmware_bridge.simulated.bench import SimulatedBench
 from firmware_bridge.simulated.board import SimulatedBoard
 from firmware_bridge.simulated.live_drive import FADE_S, LiveDrive
@@ -119,3 +121,11 @@ def test_in_real_time_the_board_answers_and_rests_when_the_host_is_silent(bench)
     loud = np.flatnonzero(np.abs(drive_v) > 0.1)
     assert 1.8 * 4000 < loud[-1] - loud[0] < 2.4 * 4000  # 2 s of silence, then to rest
     np.testing.assert_allclose(drive_v[loud[-1] + 400 :], 0, atol=3e-3)
+
+
+def test_without_a_lock_in_the_board_refuses_one_in_one_line(bench, tmp_path):
+    with SimulatedBoard(bench, Setup("run", 1.0, slope="rising"), speed=1.0) as board:
+        with pytest.raises(LockInError) as error:
+            record(board.port, tmp_path / "a.mfr", lock_in=LockInStart("photodiode", 0.5))
+        assert str(error.value) == (f"{board.port}: the board refuses the lock-in: no such start")
+    assert list(tmp_path.iterdir()) == []

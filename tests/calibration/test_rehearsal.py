@@ -179,13 +179,15 @@ def test_trials_name_distrusted_sessions_and_what_is_not_modelled(capsys):
     ("arguments", "message"),
     [
         (["--trial-bench", "short"], "--trial-bench goes with --trials, got no --trials"),
+        (["-q", "-v"], "--quiet and --verbose exclude each other, got both"),
+        (["--verbose", "--quiet"], "--quiet and --verbose exclude each other, got both"),
         (
             ["--trials", "2", "--trial-bench", "shorter"],
             f"--trial-bench must be one of {', '.join(TRIAL_BENCHES)} or all, got 'shorter'",
         ),
     ],
 )
-def test_command_refuses_trial_benches_it_does_not_know(arguments, message, capsys):
+def test_command_refuses_options_that_do_not_go_together(arguments, message, capsys):
     assert run(["rehearse", *arguments]) == 2
     said = capsys.readouterr()
     assert said.out == ""

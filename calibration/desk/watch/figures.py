@@ -100,7 +100,9 @@ def _trace() -> Any:  # noqa: ANN401  # Bokeh's figure
     )
     levels = _source("trace_levels", "y")
     figure.hspan(y="y", source=levels, line_color=_DIM, line_dash="dashed", line_width=1)
-    source = _source("trace_data", "x", "low", "high")
+    source = _source("trace_data", "x", "low", "high", "middle")
+    # Where a bin holds one sample, this line is the trace; else it lies within the envelope.
+    figure.line("x", "middle", source=source, color=_SKY, line_width=1.5, line_join="round")
     figure.segment(
         x0="x",
         x1="x",

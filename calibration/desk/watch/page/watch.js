@@ -205,7 +205,7 @@ function steady(name, low, high, share = 0.12, atOnce = false) {
 
 function showTrace(said, arrays) {
   const x = arrays.trace_t, low = arrays.trace_low, high = arrays.trace_high, lost = arrays.trace_lost;
-  fill("trace_data", { x, low, high });
+  fill("trace_data", { x, low, high, middle: low.map((v, k) => (v + high[k]) / 2) });
   const bin = x.length > 1 ? x[1] - x[0] : said.window_s, left = [], width = [];
   for (let k = 0; k < x.length; k++) {
     if (!lost[k]) continue;

@@ -10,6 +10,7 @@ import time
 from math import inf
 from pathlib import Path
 
+import numpy as np
 import pytest
 from sessions import built_in_bench
 
@@ -71,6 +72,12 @@ class Board:
         self._board.__enter__()
         Path(self.port).unlink(missing_ok=True)
         Path(self.port).symlink_to(self._board.port)
+
+    def drive_v(self):
+        """Return the largest voltage that the drive will reach, as it has been told so far."""
+        drive = self._board._wired.drive
+        time_s = drive.now_s + 0.5 + np.arange(4000) / 4000
+        return float(np.abs(drive.volts(time_s, lambda _frequency_hz: 1.0 + 0.0j)).max())
 
     def unplug(self):
         if self._board is not None:

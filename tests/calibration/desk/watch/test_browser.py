@@ -189,14 +189,16 @@ def test_a_wrong_token_is_refused_and_the_right_one_leaves_the_address(browser, 
         assert program.end()[0] == 0
 
 
-def test_the_end_of_the_program_shows_and_leaves_a_closed_recording(page, program, folder):
+def test_the_end_of_the_program_shows_and_leaves_a_closed_recording(page, program, board, folder):
     page.set_line(87.1, 0.2)
     page.type("name", "last")
     page.element("record").click()
     page.has("recording-more", "last.mfr")
     time.sleep(1.0)
+    assert board.drive_v() == pytest.approx(0.2, rel=0.01)
     code, said = program.end()
     assert code == 0
+    assert board.drive_v() == 0.0
     assert "drive at rest, recording closed" in said
     until(lambda: "NO CONNECTION" in page.text("alarm"), 2.0, "alarm")
     recording = open_recording(folder / "last.mfr")

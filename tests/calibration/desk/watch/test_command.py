@@ -1,13 +1,18 @@
 """``midfringe watch`` as a command: its address, its end, and what it refuses."""
 
+import asyncio
+import json
 import sys
+import time
 import urllib.request
 
 import numpy as np
 import pytest
-from live_page import Program
+from live_page import Board, Program, until
 from real_data import real_data
 from sessions import BENCH_FILE
+from tornado.httpclient import HTTPRequest
+from tornado.websocket import websocket_connect
 
 from calibration.desk.watch.document import figures
 from calibration.desk.watch.guard import Guard
@@ -154,6 +159,45 @@ def test_a_replay_has_neither_drive_nor_recording(recording):
         replay.start_recording("x.mfr")
     with pytest.raises(BridgeError, match="is not set"):
         replay.set_line(0, 31.7, 1.0)
+
+
+async def ordered(url, *orders):
+    """Give orders as a page does and wait for the answer to each."""
+    request = HTTPRequest(url.replace("http", "ws") + "live", headers={"Origin": url.rstrip("/")})
+    live = await websocket_connect(request)
+    for order in orders:
+        await live.write_message(json.dumps(order))
+        while True:
+            message = await live.read_message()
+            if isinstance(message, str) and not json.loads(message)["board"]:
+                assert not json.loads(message)["refused"], message
+                break
+    live.close()
+    while await live.read_message() is not None:
+        pass
+
+
+@pytest.mark.slow
+def test_a_killed_program_leaves_a_drive_at_rest_and_a_recording_that_opens(tmp_path):
+    board = Board(tmp_path / "board")
+    program = Program(board.port, "--bench", BENCH_FILE, "--folder", tmp_path)
+    try:
+        orders = [
+            {"do": "set line", "frequency": 87.1, "amplitude": 0.4},
+            {"do": "record", "name": "killed"},
+        ]
+        asyncio.run(ordered(program.url, *orders))
+        until(lambda: board.drive_v() > 0.39, 5.0, "drive on")
+        time.sleep(1.5)
+        program.process.kill()
+        # The process that holds the port sees it at once; a board rests by itself after 2 s.
+        until(lambda: board.drive_v() == 0.0, 1.8, "drive at rest")
+        program.process.communicate(timeout=20.0)  # until that process has ended too
+        recording = open_recording(tmp_path / "killed.mfr")
+        assert recording.duration_s > 1.0
+        assert not any("cut" in remark for remark in recording.remarks)
+    finally:
+        board.unplug()
 
 
 def test_a_real_recording_shows_its_line(monkeypatch):

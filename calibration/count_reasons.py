@@ -14,7 +14,7 @@ FloatArray = NDArray[np.float64]
 
 _FASTEST = 1.0 / 3.0  # fringes per sample; at one half the direction is lost
 _EVEN = 0.85  # least span over greatest
-_MOST_NOISE = 0.12  # of cos φ: the band would be above 0.4 of the span
+_MOST_NOISE = 0.08  # of cos φ: the band would be above a quarter of the span
 
 
 def _lost_in_gaps(record: SweptRecord, got: Unfolded) -> list[str]:
@@ -146,15 +146,15 @@ def count_reasons(
         )
     if record.spikes > 2 + 1e-3 * len(values):
         reasons.append(f"{record.spikes} lone samples far off their neighbours were left out")
-    if got.against_drive > 0.1:
+    if got.against_drive > 0.15:
         reasons.append(
-            f"the motion does not follow the drive: {got.against_drive:.0%} of the half fringes went "
+            f"the motion does not follow the drive: {got.against_drive:.0%} of the way went "
             "against it"
         )
     missed, turns = got.unfollowed
     if missed > max(1, 0.2 * turns):
         reasons.append(
-            f"the motion does not follow the drive: at {missed} of its {turns} turns the fringes go on"
+            f"the motion does not follow the drive: at {missed} of {turns} of its turns the fringes go on"
         )
     if scan is not None:
         reasons += [reason for reason in scan.reasons if not (fast and "not sharp" in reason)]

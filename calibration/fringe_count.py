@@ -15,9 +15,10 @@ from calibration.count_reasons import count_reasons
 from calibration.envelope import Envelope, constant_envelope, running_envelope
 from calibration.errors import CalibrationError
 from calibration.scan import ScanFit, fit_scan
-from calibration.swept_record import SweptRecord, ready_to_count
+from calibration.smoother import noise_std
+from calibration.swept_record import SweptRecord, averaged, ready_to_count
 from calibration.turning_points import turning_points
-from calibration.unfolding import Unfolded, unfold_fringe
+from calibration.unfolding import Unfolded, drive_turns, slow_spots, unfold_fringe
 
 __all__ = ["FringeCount", "Pass", "count_fringes"]
 
@@ -187,13 +188,13 @@ def count_fringes(
         passes,
         phase,
         float(got.phase_rad[-1] - got.phase_rad[0]) / (2.0 * math.pi),
-        math.hypot(*ends.tolist()),
+        math.hypot(*ends.tolist(), *(one.fringes_u for one in passes[1:-1])),
         span_range,
         record.spikes,
         count_reasons(
             values, record, envelope, got, scan if extremes is None else None, span_range, along
         )
-        + _shaking(passes, drive is not None),
+        + _shaking(passes, along),
     )
 
 
@@ -201,7 +202,10 @@ def _bridged(drive: FloatArray) -> FloatArray:
     good = np.flatnonzero(np.isfinite(drive))
     if len(good) < 2:
         raise CalibrationError("the drive has no samples where the photodiode has")
-    return np.interp(np.arange(len(drive)), good, drive[good])
+    filled = np.interp(np.arange(len(drive)), good, drive[good])
+    # where noise hides the steps of the drive, so does it the moment of its turn
+    noise, step = noise_std(filled), float(np.median(np.abs(np.diff(filled))))
+    return averaged(filled, 33) if noise > 0.1 * step else filled
 
 
 def _envelope(
@@ -236,17 +240,26 @@ def _range(envelope: Envelope) -> tuple[float, float]:
     return float(spans[0]), float(spans[1])
 
 
-def _shaking(passes: list[Pass], has_drive: bool) -> list[str]:  # private
-    """Return whether the mirror turns so often that a drive is needed to follow it."""
-    if has_drive or len(passes) < 8:
-        return []
+def _shaking(passes: list[Pass], drive: FloatArray | None) -> list[str]:
+    """Return whether the mirror turns more often than a scan does."""
+    if drive is not None:
+        wanted, seen = len(drive_turns(drive)), len(passes) - 1
+        if abs(seen - wanted) <= 1 + 0.02 * wanted:  # one at an end may be too short to count
+            return []
+        return [
+            (
+                f"the motion does not follow the drive: the mirror turns {seen} times, the drive {wanted} "
+                "times; vibration is counted"
+            )
+        ]
+    short = [one for one in passes[1:-1] if one.fringes < 1.0]
     usual = float(np.median([one.fringes for one in passes]))
-    if usual > 3.0:
+    if len(short) < 2 and (len(passes) < 8 or usual > 3.0):
         return []
     return [
         (
-            f"no scan: the mirror turns {len(passes) - 1} times, after {usual:.2g} fringes as a rule; its "
-            "vibration is counted. Give the driven lines (--line), a pilot (--pilot) or the drive (--drive)"
+            f"no steady scan: the mirror turns {len(passes) - 1} times, after {usual:.2g} fringes as a rule; "
+            "its vibration is counted. Give the driven lines (--line), a pilot (--pilot) or the drive (--drive)"
         )
     ]
 
@@ -283,9 +296,11 @@ def _passes(got: Unfolded, record: SweptRecord, drive: FloatArray | None) -> lis
     if drive is None:  # then a turn that far from an extreme is taken for going over it
         hidden = max(hidden, _HIDDEN)
     u[1:-1] = np.hypot(u[1:-1], hidden)
+    spots = slow_spots(got.turns, len(phase))
     out = []
     for k in range(len(ends) - 1):
         start, stop = int(ends[k]), int(ends[k + 1])
+        unseen = np.count_nonzero((spots > start) & (spots < stop)) if drive is None else 0
         way = float(phase[stop] - phase[start])
         direction = 0 if drive is None else int(np.sign(way))
         out.append(
@@ -293,7 +308,7 @@ def _passes(got: Unfolded, record: SweptRecord, drive: FloatArray | None) -> lis
                 start + record.first,
                 stop + record.first,
                 abs(way) / (2.0 * math.pi),
-                math.hypot(u[k], u[k + 1]),
+                math.hypot(u[k], u[k + 1]) + _HIDDEN * unseen,
                 direction,
                 fastest_of(got, start, stop),
             )

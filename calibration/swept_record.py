@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 
 from calibration.smoother import floor_std, noise_gain, noise_std, smooth
 
-__all__ = ["SweptRecord", "ready_to_count", "record_noise"]
+__all__ = ["SweptRecord", "averaged", "ready_to_count", "record_noise"]
 
 FloatArray = NDArray[np.float64]
 
@@ -61,8 +61,21 @@ def _without_spikes(values: FloatArray, noise: float) -> tuple[FloatArray, int]:
     return out, len(where)
 
 
-def _averaged(values: FloatArray, length: int) -> FloatArray:
-    """Return local parabolas' middle values; near the ends, the end parabola's."""
+def averaged(values: FloatArray, length: int) -> FloatArray:
+    """Return local parabolas' middle values; near the ends, the end parabola's.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Record, no NaN.
+    length : int
+        Samples in one parabola, odd; below 5 nothing is averaged.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+        As long as the record.
+    """
     if length < 5 or len(values) < 2 * length:
         return values
     out = smooth(values, length)
@@ -134,6 +147,6 @@ def ready_to_count(values: FloatArray) -> SweptRecord:
     raw = record_noise(values)
     filled, spikes = _without_spikes(filled, raw)
     length = _length(_samples_in_half_fringe(filled, raw))
-    averaged = _averaged(filled, length)
+    level = averaged(filled, length)
     noise = max(raw * noise_gain(length) ** 0.5, 1e-6 * float(np.ptp(values[good])))
-    return SweptRecord(averaged, noise, first, _gaps(~np.isfinite(inner)), spikes)
+    return SweptRecord(level, noise, first, _gaps(~np.isfinite(inner)), spikes)

@@ -14,7 +14,7 @@ from calibration.envelope import Envelope, running_median
 from calibration.smoother import noise_std
 from calibration.turning_points import turning_points
 
-__all__ = ["Unfolded", "unfold_fringe"]
+__all__ = ["Unfolded", "drive_turns", "slow_spots", "unfold_fringe"]
 
 FloatArray = NDArray[np.float64]
 
@@ -43,7 +43,8 @@ class Unfolded:
     against_drive : float
         Share of the travel that went against the drive; 0 without a drive.
     unfollowed : tuple of int
-        Turns of the drive at which the record goes straight on, and all its turns.
+        Turns of the drive away from the extremes at which the record goes straight on, and how many
+        turns lie there.
     """
 
     phase_rad: FloatArray
@@ -65,10 +66,52 @@ def _passed(cosine: FloatArray, turns: NDArray[np.int64], cosine_u: float) -> ND
     # only a maximum can lie at the top, only a minimum at the bottom
     way = np.sign(np.diff(cosine[turns], prepend=cosine[0]))
     short = 1.0 - way * cosine[turns]
-    # how much tops differ of themselves: uneven light, vibration
-    scatter = 1.4826 * float(np.median(np.abs(short - np.median(short))))
+    # how much tops differ of themselves: uneven light; only where whole half fringes lie on both sides
+    swing = np.abs(np.diff(cosine[turns]))
+    whole = np.minimum(np.concatenate([swing, [0.0]]), np.concatenate([[0.0], swing])) > 1.4
+    scatter = 0.0
+    if np.count_nonzero(whole) >= 5:
+        scatter = 1.4826 * float(np.median(np.abs(short[whole] - np.median(short[whole]))))
     allowed = min(max(_SHORT, 6.0 * scatter), 0.45)
-    return np.asarray(short < allowed + 4.0 * cosine_u + missed)
+    passed = short < allowed + 4.0 * cosine_u + missed
+    return _one_of_each_group(passed, short, 0.05 + 2.5 * cosine_u + missed)
+
+
+def _one_of_each_group(
+    passed: NDArray[np.bool_], short: FloatArray, near: FloatArray
+) -> NDArray[np.bool_]:
+    """Return the same without tops that lie clearly below another of the same visit to the top.
+
+    Two tops with no bottom between belong to one visit; where the mirror shakes, the lower one is a
+    turn short of the extreme.
+    """
+    out = passed.copy()
+    for k in np.flatnonzero(passed[:-2] & ~passed[1:-1] & passed[2:]).tolist():
+        low, high = (k, k + 2) if short[k] > short[k + 2] else (k + 2, k)
+        if short[low] > near[low] and short[low] > short[high] + 0.5 * near[high]:
+            out[low] = False
+    return out
+
+
+def slow_spots(turns: NDArray[np.int64], count: int) -> NDArray[np.int64]:
+    """Return the turns about which the fringes go by far more slowly than before and after.
+
+    Parameters
+    ----------
+    turns : ndarray of int, shape (k,)
+        Samples at which a record turns.
+    count : int
+        Samples of the record.
+
+    Returns
+    -------
+    ndarray of int
+        Samples; the mirror may have turned there unseen.
+    """
+    legs = np.diff(np.concatenate([[0], turns, [count - 1]])).astype(float)
+    if len(legs) < 9:
+        return np.zeros(0, dtype=np.int64)
+    return np.asarray(turns[legs[:-1] + legs[1:] > 3.0 * running_median(legs, 9)[:-1]])
 
 
 def drive_turns(drive: FloatArray) -> NDArray[np.int64]:
@@ -88,11 +131,17 @@ def drive_turns(drive: FloatArray) -> NDArray[np.int64]:
     return turning_points(drive, band)
 
 
-def _unfollowed(drive: FloatArray | None, turns: NDArray[np.int64]) -> tuple[int, int]:
-    """Return how many turns of the drive lie well within a leg, and how many there are."""
+def _unfollowed(
+    drive: FloatArray | None, turns: NDArray[np.int64], cosine: FloatArray
+) -> tuple[int, int]:
+    """Return how many turns of the drive lie well within a leg, and how many could be seen there.
+
+    Next to an extreme a turn of the mirror may not show; those are left out.
+    """
     if drive is None or len(turns) < 2:
         return 0, 0
     driven = drive_turns(drive)
+    driven = driven[np.abs(cosine[driven]) < 0.6]
     after = np.clip(np.searchsorted(turns, driven), 1, len(turns) - 1)
     leg = turns[after] - turns[after - 1]
     off = np.minimum(np.abs(turns[after] - driven), np.abs(driven - turns[after - 1]))
@@ -158,7 +207,8 @@ def unfold_fringe(
     noise : float
         Standard deviation of the noise of ``values``, same unit.
     drive : ndarray, shape (n,), optional
-        What moves the mirror, any unit: its direction tells that of the phase.
+        What moves the mirror, any unit, averaged where it is noisy: its direction tells that of the
+        phase.
 
     Returns
     -------
@@ -185,4 +235,6 @@ def unfold_fringe(
     whole = np.concatenate([[0.0], np.cumsum(np.where(bottom, side[:-1], 0.0))])
     leg = np.searchsorted(turns, np.arange(len(cosine)), side="left")
     phase = 2.0 * math.pi * whole[leg] + side[leg] * angle
-    return Unfolded(phase, turns, passed, band / 2.0, cosine_u, against, _unfollowed(drive, turns))
+    return Unfolded(
+        phase, turns, passed, band / 2.0, cosine_u, against, _unfollowed(drive, turns, cosine)
+    )

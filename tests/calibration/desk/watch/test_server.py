@@ -205,9 +205,10 @@ def test_with_a_token_everything_asks_for_it():
 def test_messages_come_and_the_trace_moves_on():
     async def scenario(desk):
         live = await desk.open()
-        first, *_, last = await messages(live, 25)
+        got = await messages(live, 25)
+        first, last = got[0], got[-1]
         assert last[0]["source"]["time_s"] > first[0]["source"]["time_s"] + 1.0
-        assert last[0]["latency_s"] < 0.5
+        assert np.median([document["latency_s"] for document, _ in got]) < 0.5
         assert last[1]["trace_high"].max() == pytest.approx(3.0, abs=1e-3)
         spectra = [arrays for _, arrays in [first, last] if "spectrum_f" in arrays]
         assert spectra

@@ -95,13 +95,16 @@ class LogFolder:
         sizes = {path: _size(path) for path in self.recordings()}
         total = sum(sizes.values())
         # Room for what comes until this is asked again: twice the most that came in between so far,
-        # since records are written in pieces of half a second.
+        # since records are written in pieces of half a second; a quarter of all at most.
         if self._seen_bytes:
             self._grown = max(self._grown, total - self._seen_bytes)
+        margin = 0 if running is None else 2 * self._grown
+        if self.retention.keep_bytes is not None:
+            margin = min(margin, self.retention.keep_bytes // 4)
         closed = [path for path in sizes if path != running]
         deleted = []
         for path in closed:
-            if not self._is_due(path, total + 2 * self._grown):
+            if not self._is_due(path, total + margin):
                 break
             with contextlib.suppress(FileNotFoundError):
                 path.unlink()

@@ -22,7 +22,7 @@ __all__ = ["LogSettings", "LogSummary", "UnattendedLog"]
 
 _log = logging.getLogger(__name__)
 
-_TIDY_S = 1.0
+_TIDY_S = 0.3  # records are written twice a second
 _AGAIN_S = 5.0  # before a port or disk that failed is tried again
 
 

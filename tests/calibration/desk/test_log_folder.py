@@ -63,6 +63,15 @@ def test_growth_to_come_is_kept_free(tmp_path):
     assert log.tidy(paths[-1]) == paths[:1]
 
 
+def test_no_room_is_kept_once_nothing_runs_and_never_more_than_a_quarter(tmp_path):
+    paths = recordings(tmp_path, 4)
+    log = LogFolder(tmp_path / "bench", Retention(keep_bytes=8000))
+    log.tidy(paths[-1])
+    paths[-1].write_bytes(bytes(4900))  # 7900 now, 3900 more than before
+    assert log.tidy(None) == []
+    assert log.tidy(paths[-1]) == paths[:2]  # 5900: a quarter of 8000 is left
+
+
 def test_the_running_one_is_never_deleted(tmp_path):
     paths = recordings(tmp_path, 1, size=9000)
     log = LogFolder(tmp_path / "bench", Retention(keep_bytes=100, keep_s=1.0))

@@ -55,18 +55,30 @@ def pulls(truth, calibration):
     return found
 
 
-def test_both_slopes_remove_them(tmp_path):
-    """4 seeds of 8 values. The shares are 10 to 30 u: what is not removed would show at once."""
+def check_both_slopes(seeds, folder):
     found, sizes = [], []
-    for seed in range(1, 5):
-        truth, calibration = session(seed, tmp_path, BOTH)
+    for seed in seeds:
+        truth, calibration = session(seed, folder, BOTH)
         assert calibration.is_trustworthy, calibration.all_reasons
         found.append(pulls(truth, calibration))
         sizes.append(PICKUP / calibration.actuator[1].magnitude.relative_u)
     assert np.median(sizes) > 8
     assert np.abs(found).max() < 4.5
-    # magnitudes of one session share the drive's reading: about 4 + 16 independent values
-    assert np.sqrt(np.mean(np.square(found))) < 1.5
+    return found
+
+
+def test_both_slopes_remove_them(tmp_path):
+    """The shares are 10 to 30 u: what is not removed would show at once."""
+    check_both_slopes(range(1, 3), tmp_path)
+
+
+@pytest.mark.slow
+def test_both_slopes_remove_them_for_many_seeds(tmp_path):
+    """12 seeds of 8 values; magnitudes of one session share the drive's reading, so that there are
+    about 12 + 48 independent ones: an rms of 1 ± 9 %.
+    """
+    found = check_both_slopes(range(1, 13), tmp_path)
+    assert 0.7 < np.sqrt(np.mean(np.square(found))) < 1.35
 
 
 def stating(pickup_u, tilt_u):
@@ -80,6 +92,7 @@ def stating(pickup_u, tilt_u):
     return stated(bench, drive__pickup=pickup_u, actuator__tilt=tilt_u)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("slope", ["06-lines-rising", "07-lines-falling"])
 def test_one_slope_alone_budgets_them_as_the_bench_states(tmp_path, slope):
     """Stated with about what is injected: 3 % of 1.3 V a volt at 87 Hz, 1 % of it over half of 2 V."""
@@ -108,6 +121,7 @@ def test_one_slope_alone_without_a_statement_says_that_it_assumes(tmp_path):
     assert any("pick-up is not separated from motion" in c for c in calibration.cautions)
 
 
+@pytest.mark.slow
 def test_one_slope_with_everything_measured_removes_them(tmp_path):
     names = ("02-pickup", "03-blocked-x", "04-blocked-y", "05-scan", "06-lines-rising")
     found = []

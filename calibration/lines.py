@@ -70,7 +70,7 @@ def fit_lines(
     -----
     Least squares of all lines and a slow drift at once, in noise whitened by a short linear
     prediction. Without a fitted frequency the common error of all lines, the clock's, is followed
-    where it is larger than four times its u.
+    where it is so large as by chance once in 500 000 recordings, 4.8 times its u or more.
     """
     from metro.units import si
 

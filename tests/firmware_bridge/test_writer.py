@@ -1,3 +1,4 @@
+import contextlib
 import resource
 from pathlib import Path
 
@@ -21,24 +22,27 @@ def test_a_disk_that_is_full_at_the_start_is_one_line():
     assert Path("/dev/full").exists()
 
 
-@pytest.fixture
-def small_files():
-    """No file may grow beyond 1000 bytes."""
+@contextlib.contextmanager
+def small_files(limit):
+    """No file may grow beyond so many bytes: the test's own output neither, so not for longer."""
     before = resource.getrlimit(resource.RLIMIT_FSIZE)
-    resource.setrlimit(resource.RLIMIT_FSIZE, (1000, before[1]))
-    yield
-    resource.setrlimit(resource.RLIMIT_FSIZE, before)
+    resource.setrlimit(resource.RLIMIT_FSIZE, (limit, before[1]))
+    try:
+        yield
+    finally:
+        resource.setrlimit(resource.RLIMIT_FSIZE, before)
 
 
-def test_a_disk_that_fills_up_leaves_whole_records(tmp_path, small_files):
-    writer = Writer(tmp_path / "run.mfr", HEADER)
-    begin = writer.bytes
-    for _ in range(20):
+def test_a_disk_that_fills_up_leaves_whole_records(tmp_path):
+    with small_files(1000):
+        writer = Writer(tmp_path / "run.mfr", HEADER)
+        begin = writer.bytes
+        for _ in range(20):
+            writer.append(bytes(50))
+        with pytest.raises(DiskError) as error:
+            writer.flush()
         writer.append(bytes(50))
-    with pytest.raises(DiskError) as error:
-        writer.flush()
-    writer.append(bytes(50))
-    writer.close()
+        writer.close()
     path = tmp_path / "run.mfr"
     assert str(error.value) == (
         f"{path} cannot be written any further: a file may not be larger here"
@@ -48,9 +52,8 @@ def test_a_disk_that_fills_up_leaves_whole_records(tmp_path, small_files):
     assert 1000 - 64 < path.stat().st_size <= 1000
 
 
-def test_a_file_without_room_for_its_header_is_not_left_behind(tmp_path, small_files):
-    resource.setrlimit(resource.RLIMIT_FSIZE, (50, resource.getrlimit(resource.RLIMIT_FSIZE)[1]))
-    with pytest.raises(BridgeError, match="a file may not be larger here"):
+def test_a_file_without_room_for_its_header_is_not_left_behind(tmp_path):
+    with small_files(50), pytest.raises(BridgeError, match="a file may not be larger here"):
         Writer(tmp_path / "run.mfr", HEADER)
     assert list(tmp_path.iterdir()) == []
 

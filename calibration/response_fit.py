@@ -11,7 +11,8 @@ from math import exp, log, pi
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.response import ActuatorResponse, Shape, log_response
+from calibration.response import ActuatorResponse
+from calibration.response_shape import Shape, log_response
 from metro.extras import require
 
 __all__ = ["LINES_MIN", "fit_response", "response_cautions"]

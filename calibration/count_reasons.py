@@ -85,6 +85,22 @@ def _drive_jumps(got: Unfolded, drive: FloatArray | None) -> list[str]:
     ]
 
 
+def _short_swings(record: SweptRecord, envelope: Envelope, got: Unfolded) -> list[str]:
+    """Return whether the record mostly swings over less than the span of a fringe."""
+    swing = np.abs(np.diff(envelope.cosine(record.values)[got.turns]))
+    if len(swing) < 6:
+        return []
+    share = float(swing[swing < 1.2].sum() / swing.sum())
+    if share <= 0.4:
+        return []
+    return [
+        (
+            f"no scan: {share:.0%} of the way is in swings over less than 60 % of the fringe's span; the mirror "
+            "vibrates about a working point. Give the driven lines (--line) or a pilot (--pilot)"
+        )
+    ]
+
+
 def _uneven(record: SweptRecord, envelope: Envelope, span_range: tuple[float, float]) -> list[str]:
     out = []
     if span_range[0] < _EVEN * span_range[1]:
@@ -138,6 +154,7 @@ def count_reasons(
     reasons = _too_fast(got)
     fast = bool(reasons)
     reasons += _drive_jumps(got, drive)
+    reasons += _short_swings(record, envelope, got)
     reasons += _lost_in_gaps(record, got) + _uneven(record, envelope, span_range)
     if got.cosine_u > _MOST_NOISE:
         reasons.append(

@@ -173,6 +173,14 @@ def test_real_motor_scans(name, column, first, band):
     assert len(got.passes) <= 2
 
 
+def test_a_real_bench_held_near_mid_fringe_is_no_scan():
+    # a sweep over one fringe, then a 30 Hz line under control
+    path = real_data("fiber-modulator-calline/fom-pa/fom-pa-control-actuation.csv")
+    recording = open_recording(str(path))
+    got = count_fringes(recording.trace("2").values, recording.rate_hz)
+    assert any(reason.startswith("no scan") for reason in got.reasons)
+
+
 @pytest.mark.parametrize(
     ("name", "word"),
     [("Task_8_6", "lost in them"), ("Task_9_blue", "too uneven"), ("Task_6a_2", "level jumps")],

@@ -7,6 +7,7 @@ from numpy.typing import NDArray
 
 from calibration.descent import Prior
 from calibration.fringe_search import Found
+from calibration.scan import clipping
 
 __all__ = ["fringe_reasons"]
 
@@ -159,7 +160,7 @@ def fringe_reasons(
     poor = math.sqrt(found.squares / np.count_nonzero(np.isfinite(values))) > 0.35 * half_span
     if prior is None and poor and not any("not determined" in one for one in reasons):
         reasons.insert(0, _NO_FRINGE)
-    return reasons + misfit
+    return reasons + clipping(values) + misfit
 
 
 def _misfit(

@@ -18,7 +18,7 @@ from calibration.passes import number_passes
 from calibration.smoother import noise_gain, smooth, smoothing_length
 from calibration.swept_record import record_noise
 
-__all__ = ["ScanFit", "fit_scan"]
+__all__ = ["ScanFit", "clipping", "fit_scan"]
 
 _MIN_SAMPLES = 40
 
@@ -117,6 +117,23 @@ def _clipped(values: NDArray[np.float64], step: float) -> list[str]:
                 f"the {name} is clipped: {last} samples of {len(values)} lie on the last value"
             )
     return out
+
+
+def clipping(values: NDArray[np.float64]) -> list[str]:
+    """Return at which ends a record is clipped.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Record, any unit; NaN where samples are missing.
+
+    Returns
+    -------
+    list of str
+        One line an end; empty where samples pile up at neither.
+    """
+    good = values[np.isfinite(values)]
+    return _clipped(good, _converter_step(good))
 
 
 def _seen(edge: Edge) -> NDArray[np.bool_]:

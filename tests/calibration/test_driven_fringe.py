@@ -259,3 +259,15 @@ def test_a_free_running_bench(sweeps):
     assert float(fit.high.magnitude) == pytest.approx(2.2, abs=8e-3)
     moved = fit.working_range_rad[1] - fit.working_range_rad[0]
     assert moved == pytest.approx(np.ptp(phase), rel=0.05)
+
+
+def test_a_clipped_record_is_named():
+    t = np.arange(20_000) / 2000.0
+    phase = 1.0 + 3.0 * np.cos(2 * np.pi * 17.3 * t) + 5.0 * np.cos(2 * np.pi * 5.1 * t + 1)
+    volts = 2 + 1.5 * np.cos(phase) + 0.02 * np.random.default_rng(1).normal(size=len(t))
+    for clipped in (np.minimum(volts, 3.2), np.maximum(volts, 0.6), np.minimum(volts, 3.48)):
+        fit = fit_driven_fringe_si(clipped, 2000.0, [17.3, 5.1])
+        assert any("clipped" in reason for reason in fit.reasons)
+    assert fit_driven_fringe_si(volts, 2000.0, [17.3, 5.1]).reasons == []
+    rough = np.round(volts / 0.05) * 0.05
+    assert fit_driven_fringe_si(rough, 2000.0, [17.3, 5.1]).reasons == []

@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from sessions import built_in_bench
+from sessions import built_in_bench, calibrated
 
 from calibration.desk.watch.fringe import Fringe, resting
 from calibration.desk.watch.fringe_finder import FringeFinder, found_fringe
@@ -132,3 +132,16 @@ def test_where_nothing_is_known_no_noise_is_expected():
     volts, plain = ChannelInfo("photodiode", "V", 1e-3), ChannelInfo("photodiode", "1")
     assert WatchSetup("test", Bench()).noise(4000.0, volts, frequency_hz) is None
     assert WatchSetup("test", built_in_bench()).noise(4000.0, plain, frequency_hz) is None
+
+
+def test_a_calibration_goes_before_the_bench(tmp_path):
+    _, calibration = calibrated(built_in_bench(), 1, tmp_path)
+    setup = WatchSetup("test", Bench.of(low="0.44 V", high="9.69 V"), calibration)
+    assert setup.fringe.origin == "calibration"
+    assert (setup.fringe.low_v, setup.fringe.high_v) == (
+        calibration.extremes.low_v,
+        calibration.extremes.high_v,
+    )
+    assert setup.dark_v == calibration.dark.magnitude
+    assert setup.fringe.contrast == pytest.approx(float(calibration.contrast.magnitude), rel=1e-3)
+    assert setup.stated_contrast == (float(calibration.contrast.magnitude), "calibration")

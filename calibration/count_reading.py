@@ -97,12 +97,24 @@ class CountReading:
 
     @property
     def fringes(self) -> Measured:
-        """Fringes of all passes together."""
+        """Fringes of all passes together.
+
+        Returns
+        -------
+        Measured
+            Dimensionless.
+        """
         return Measured.of(self.count.fringes, "1", self.count.fringes_u)
 
     @property
     def amplitude(self) -> Measured | None:
-        """Displacement amplitude after ISO 16063-11, method 1, λ/8 a fringe per period [m]."""
+        """Displacement amplitude after ISO 16063-11, method 1, λ/8 a fringe per period.
+
+        Returns
+        -------
+        Measured or None
+            Zero to peak [m]; None without a wavelength or without two whole passes.
+        """
         per_period = self.count.per_period
         return None if per_period is None else self.metres(per_period[0] / 4.0, per_period[1] / 4.0)
 

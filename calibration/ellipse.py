@@ -22,7 +22,7 @@ _NAMES = ("offset_x", "offset_y", "gain_ratio", "angle_rad", "radius")
 
 @dataclass(frozen=True)
 class Ellipse:
-    """x = R·cos φ + p and y = R·sin(φ − α)/r + q.
+    """The ellipse x = R·cos φ + p, y = R·sin(φ − α)/r + q.
 
     Attributes
     ----------
@@ -47,7 +47,7 @@ class Ellipse:
 
     @property
     def parameters(self) -> FloatArray:
-        """p, q, r, α and R in this order.
+        """Parameters p, q, r, α and R in this order.
 
         Returns
         -------

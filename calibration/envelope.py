@@ -29,7 +29,13 @@ class Envelope:
 
     @property
     def half_span(self) -> FloatArray:
-        """Half of high − low at each sample."""
+        """Half of high − low at each sample.
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            In the record's unit.
+        """
         return (self.high - self.low) / 2.0
 
     def cosine(self, values: FloatArray) -> FloatArray:

@@ -58,13 +58,25 @@ class QuadratureReading:
 
     @property
     def fringes(self) -> Measured:
-        """Fringes of all passes together."""
+        """Fringes of all passes together.
+
+        Returns
+        -------
+        Measured
+            Dimensionless.
+        """
         u = math.sqrt(math.fsum(one.fringes_u**2 for one in self.passes))
         return Measured.of(math.fsum(one.fringes for one in self.passes), "1", u)
 
     @property
     def depths(self) -> list[Measured]:
-        """Depth of each line [rad], the periodic error in its u."""
+        """Depth of each line, the periodic error in its u.
+
+        Returns
+        -------
+        list of Measured
+            Depths [rad]; empty without lines.
+        """
         if self.lines is None:
             return []
         left = math.hypot(self.phase.periodic_error_rad, self.phase.periodic_error_u_rad)

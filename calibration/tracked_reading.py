@@ -60,6 +60,11 @@ class TrackedReading:
 
         A wrong span stretches the phase by up to its relative error at mid-fringe; averaged over whole
         fringes it is less, and not taken as less here.
+
+        Returns
+        -------
+        list of Measured
+            Depths [rad].
         """
         span = float(self.high.magnitude - self.low.magnitude)
         own = float(np.hypot(self.low.u_magnitude or 0.0, self.high.u_magnitude or 0.0)) / span

@@ -2,11 +2,22 @@
 
 import re
 import shlex
+import shutil
+import signal
+import subprocess
+import sys
+import time
+from dataclasses import replace
 from pathlib import Path
 
 import click
+import numpy as np
 import pytest
 
+from calibration.rehearsal_script import session_steps
+from firmware_bridge.simulated.bench import SimulatedBench
+from firmware_bridge.simulated.board import SimulatedBoard
+from metro.bench import load_bench
 from metro.commandline import cli, run
 
 README = Path(__file__).resolve().parents[1] / "README.md"
@@ -62,6 +73,87 @@ def test_every_option_of_the_bench_session_exists(arguments):
         assert command is not None
     known = {option for param in command.params for option in param.opts}
     assert {word for word in arguments if re.match(r"--[a-z]", word)} <= known
+
+
+STATES = {  # what stands on the bench when the page says to record a file
+    "dark": ("blocked", False), "pickup": ("blocked", True), "no-x": ("y", True), "no-y": ("x", True),
+    "first": ("both", False), "scan": ("both", False), "scan2": ("both", False),
+    "rising": ("both", True), "falling": ("both", True),
+}  # fmt: skip
+ENDLESS = ("watch", "log")
+
+
+def setup_for(name, bench):
+    """Return the simulated bench's state for a recording of the page, as the page describes it."""
+    beam, driven = STATES[name]
+    steps = {step.role: step.setup for step in session_steps(bench)}
+    if name.startswith("scan"):
+        return steps["scan"]
+    slope = "falling" if name == "falling" else "rising"
+    setup = replace(steps[f"lines-{slope}"], beam=beam)
+    return setup if driven else replace(setup, tones=())
+
+
+def scope_file(folder):
+    """Leave what an oscilloscope saves: time, drive, light on a fringe driven at 1 kHz."""
+    t = np.arange(20000) * 2e-5
+    drive = 0.1 * np.cos(2 * np.pi * 1000 * t)
+    noise = np.random.default_rng(1).normal(0, 2e-3, t.size)
+    light = 5.065 + 4.625 * np.cos(np.pi / 2 + 3.8 * drive) + noise
+    rows = np.column_stack([t, drive, light])
+    np.savetxt(
+        folder / "scope.csv", rows, "%.9g", ",", header="time,drive,light\ns,V,V", comments=""
+    )
+
+
+def interrupted(arguments, seconds):
+    """Run a command that never ends by itself, stop it as Ctrl-C does, and return its exit code."""
+    program = subprocess.Popen([sys.executable, "-m", "metro", *arguments])
+    time.sleep(seconds)
+    program.send_signal(signal.SIGINT)
+    return program.wait(30)
+
+
+@pytest.mark.slow
+def test_the_bench_session_runs_on_a_simulated_board(session, monkeypatch, tmp_path):
+    """Every command of the page, in its order, with a simulated board where a real one is named."""
+    for needed in ("scipy", "matplotlib", "bokeh", "sqlalchemy"):
+        pytest.importorskip(needed)
+    shutil.copytree(session / "rehearsal", tmp_path / "rehearsal")
+    shutil.copy(session / "rehearsal" / "bench.toml", tmp_path)
+    shutil.copy(session / "rehearsal" / "06-lines-rising.mfr", tmp_path / "run.mfr")
+    scope_file(tmp_path)
+    monkeypatch.chdir(tmp_path)
+    bench = load_bench("bench.toml")
+    for arguments in commands("text"):
+        out = arguments[arguments.index("--out") + 1] if "--out" in arguments else "first.mfr"
+        live = arguments[0] in ENDLESS
+        setup = setup_for(Path(out).stem if Path(out).stem in STATES else "rising", bench)
+        simulated = SimulatedBench(bench, 1)
+        with SimulatedBoard(simulated, setup, speed=1.0 if live else None) as board:
+            called = [board.port if word == "/dev/ttyACM0" else word for word in arguments]
+            if live:
+                extra = ["--port-number", "0"] if arguments[0] == "watch" else ["--every", "4s"]
+                assert interrupted([*called, *extra], 10.0) == 0, arguments
+            else:
+                assert run(called) == 0, arguments
+    assert (tmp_path / "report.html").stat().st_size > 10_000
+    assert list(tmp_path.glob("bench-log-*.mfr"))
+
+
+def test_python_examples_run(session, monkeypatch):
+    monkeypatch.chdir(session)
+    (example,) = blocks("python")
+    names = {}
+    exec(example, names)  # noqa: S102  # our own page
+    assert abs(names["fit"].lines[0].amplitude.value.to("V").magnitude) > 0
+
+
+def test_the_bench_file_example_loads(tmp_path):
+    (example,) = blocks("toml")
+    path = tmp_path / "bench.toml"
+    path.write_text(example, encoding="utf-8")
+    assert load_bench(path).text("laser.source").startswith("He-Ne")
 
 
 def test_the_printed_table_is_the_one_that_comes(session, monkeypatch, capsys):

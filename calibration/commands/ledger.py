@@ -76,6 +76,7 @@ def add(
     """
     from calibration.desk.calibration_entry import CalibrationEntry
     from calibration.desk.ledger import Ledger
+    from firmware_bridge.gap_reason import counted
     from metro.output import to_json
 
     if not files and not lines_files:
@@ -93,9 +94,10 @@ def add(
     if as_json:
         click.echo(to_json({"entries": entries, "alarms": [], "already_held": held}))
     else:
-        click.echo(f"{len(added)} calibrations and {sum(map(len, new))} line results added")
+        lines_added = counted(sum(map(len, new)), "line result")
+        click.echo(f"{counted(len(added), 'calibration')} and {lines_added} added")
     if held and not is_quiet():
-        click.echo(f"{held} files were in the ledger already", err=True)
+        click.echo(f"{counted(held, 'file')} already in the ledger", err=True)
 
 
 def _calibrations(place: str, bench: str) -> "list[CalibrationEntry]":

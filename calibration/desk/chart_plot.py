@@ -18,6 +18,7 @@ __all__ = ["chart_figure"]
 
 # Okabe and Ito's colours, told apart by colour-blind readers.
 _BLUE, _ORANGE, _GREY, _GREEN = "#0072b2", "#d55e00", "#777777", "#009e73"
+_LEAST_S = 60.0
 _MOST_BARS = 150  # results beyond which their error bars would be one blur
 
 
@@ -73,7 +74,7 @@ def _draw_results(axes: "Axes", chart: LineChart) -> None:
     corrected = ", at one temperature" if chart.law.is_used else ""
     axes.set_title(f"{chart.line_hz:.6g} Hz: {len(chart.values)} results{corrected}")
     axes.set_ylabel(f"response over drive [{unit}]" if unit else "response over drive")
-    _time_axis(axes)
+    _time_axis(axes, chart.time_s)
     axes.legend(fontsize="x-small", loc="best", framealpha=0.9)
 
 
@@ -88,7 +89,7 @@ def _draw_sums(axes: "Axes", chart: LineChart) -> None:
     axes.set_ylim(-1.3 * chart.rule.h, 1.3 * chart.rule.h)
     axes.set_ylabel("cumulative sum [standard deviations]")
     axes.set_title(f"alarm beyond ±{chart.rule.h:.3g}")
-    _time_axis(axes)
+    _time_axis(axes, chart.time_s)
     axes.legend(fontsize="x-small", loc="best", framealpha=0.9)
 
 
@@ -139,9 +140,17 @@ def _dates(time_s: Any) -> list[datetime]:  # noqa: ANN401  # ndarray
     return [datetime.fromtimestamp(float(t), UTC) for t in time_s]
 
 
-def _time_axis(axes: "Axes") -> None:
+def _limits(time_s: Any) -> list[datetime]:  # noqa: ANN401  # ndarray
+    """Return the ends of the time axis: at least a minute, since one result alone has no span."""
+    low, high = float(np.min(time_s)), float(np.max(time_s))
+    margin_s = max(0.05 * (high - low), _LEAST_S / 2)
+    return _dates([low - margin_s, high + margin_s])
+
+
+def _time_axis(axes: "Axes", time_s: Any) -> None:  # noqa: ANN401  # ndarray
     from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
 
+    axes.set_xlim(*_limits(time_s))  # type: ignore[arg-type]  # dates are as good as numbers
     locator = AutoDateLocator(maxticks=7)  # type: ignore[no-untyped-call]  # matplotlib's own
     axes.xaxis.set_major_locator(locator)
     axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))  # type: ignore[no-untyped-call]  # same

@@ -80,7 +80,7 @@ def test_calibrations_and_lines_are_added_and_listed(capsys, tmp_path):
 
     code, out, err = ledger(capsys, "add", *files, *time, *place)
     assert (code, out) == (0, "0 calibrations and 0 line results added\n")
-    assert err == "2 files were in the ledger already\n"
+    assert err == "2 files already in the ledger\n"
 
     code, out, _ = ledger(capsys, "list", *place, "--json")
     document = json.loads(out)
@@ -108,10 +108,10 @@ def test_results_come_through_a_pipe_or_under_any_name(capsys, tmp_path, monkeyp
     piped = TextIOWrapper(BytesIO(text.encode()))
     monkeypatch.setattr("sys.stdin", piped)
     place = ("--ledger", tmp_path / "l")
-    assert ledger(capsys, "add", "--lines", "-", *place)[1].endswith("1 line results added\n")
+    assert ledger(capsys, "add", "--lines", "-", *place)[1].endswith("1 line result added\n")
     (tmp_path / "today").write_text(text)
     code, _, err = ledger(capsys, "add", "--lines", tmp_path / "today", *place)
-    assert (code, err) == (0, "1 files were in the ledger already\n")
+    assert (code, err) == (0, "1 file already in the ledger\n")
     assert "none': no such file" in refused(
         capsys, "add", "--lines", tmp_path / "none", "--line", "5Hz", *place
     )

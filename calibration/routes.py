@@ -234,7 +234,9 @@ def fringe_routes(
     """
     spacing = 4.0 * rate_hz / len(values)
     higher = _harmonic_frequencies(rate_hz, frequencies_hz, spacing)
-    wanted = [*frequencies_hz, *(f for own in higher for f in own)]
+    # harmonics that are not there would mislead a search for the clock; the driven fringe has it
+    stretch = 1.0 + (0.0 if fit.clock_offset is None else float(fit.clock_offset.magnitude))
+    wanted = [f * stretch for f in (*frequencies_hz, *(f for own in higher for f in own))]
     lines = fit_lines_si(values, rate_hz, wanted, search_clock=False).lines
     amplitudes = [line.amplitude for line in lines[: len(frequencies_hz)]]
     rest = [line.amplitude for line in lines[len(frequencies_hz) :]]

@@ -11,6 +11,8 @@ import numpy as np
 import pytest
 from long_runs import fringe_statistics as statistics
 
+from calibration.driven_fringe import fit_driven_fringe_si
+
 
 def run(kind, count, samples):
     records = [statistics.fitted(kind, seed, samples) for seed in range(count)]
@@ -34,6 +36,29 @@ def test_no_bias_without_noise_and_no_depth_without_ground():
     nothing = run("undetermined", 12, 3000)
     assert nothing["undetermined"] == 12
     assert statistics.verdict(exact) == statistics.verdict(nothing) == []
+
+
+@pytest.mark.parametrize(("depth", "seed"), [(1.4, 1), (7.3, 2), (29.0, 3), (104.0, 4), (251.0, 5)])
+def test_the_fit_misses_as_the_noise_does(depth, seed):
+    # Gauss–Markov: in white noise the least-squares estimate linearised about the truth has the
+    # variance σ²(JᵀJ)⁻¹ exactly, and no unbiased one has less. The fit must follow it record by
+    # record: coverage then is that of the noise itself, whatever the depth.
+    count, half, sigma = 20_000, 0.8, 0.8 / np.sqrt(200)
+    rng = np.random.default_rng(seed)
+    turn = 2 * np.pi / (2.5 * (depth + 5)) * 0.83
+    angle = turn * np.arange(count) + 0.7
+    phase = 1.1 + depth * np.cos(angle)
+    noise = sigma * rng.normal(size=count)
+    sine = -half * np.sin(phase)
+    slopes = [np.ones(count), np.cos(phase), sine * np.cos(angle), -sine * np.sin(angle), sine]
+    matrix = np.stack(slopes, axis=1)
+    covariance = np.linalg.inv(matrix.T @ matrix) * sigma**2
+    ideal = (covariance @ (matrix.T @ noise))[2] / sigma**2
+    fit = fit_driven_fringe_si(2.0 + half * np.cos(phase) + noise, 1.0, [turn / (2 * np.pi)])
+    (got,) = fit.phase_amplitude
+    u = float(np.sqrt(covariance[2, 2]))
+    assert float(got.u_magnitude) == pytest.approx(u, rel=0.06)
+    assert float(got.magnitude) - depth == pytest.approx(ideal, abs=0.2 * u)
 
 
 def test_a_run_goes_on_where_it_ended(tmp_path, monkeypatch, capsys):

@@ -108,6 +108,25 @@ def test_slope_counts_the_other_lines():
     assert naive / 0.2 == pytest.approx(1 - 0.054, abs=1e-3)
 
 
+def test_slope_follows_the_clock():
+    # 9 ppm over 60 s turn 233.9 Hz by 0.8 rad: a fit at the nominal frequency loses 2.5 %, and the
+    # scatter of its blocks grows with the frequency
+    f, off = [31.7, 233.9], 9e-6
+    rng = np.random.default_rng(3)
+    t = np.arange(60_000) / RATE_HZ
+    phase = 1.7 + sum(0.2 * np.cos(2 * np.pi * g * (1 + off) * t + g) for g in f)
+    volts = 1.2 + np.cos(phase) + 0.01 * rng.normal(size=len(t))
+    fit = fit_driven_fringe_si(volts, RATE_HZ, f, low=0.2, high=2.2)
+    assert float(fit.clock_offset.magnitude) == pytest.approx(off, rel=0.02)
+    slope = fringe_routes(volts, RATE_HZ, f, fit)[1]
+    assert not slope.reasons
+    # √(2/N)·σ/sin φ0: the white-noise bound of an amplitude (S/T with one-sided S = 2σ²/rate)
+    bound = math.sqrt(2 / len(t)) * 0.01 / math.sin(1.7)
+    for depth in slope.phase_amplitude:
+        assert abs(float(depth.magnitude) - 0.2) < 4 * float(depth.u_magnitude)
+        assert 0.7 * bound < float(depth.u_magnitude) < 1.6 * bound
+
+
 @pytest.mark.parametrize(
     ("depth", "working", "place", "words"),
     [

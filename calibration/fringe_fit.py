@@ -1,17 +1,23 @@
 """The fringe fit: what a driven fringe gave, with uncertainties and reasons for distrust."""
 
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from metro.measured import Measured
+from metro.notebook import NotebookPage
+from metro.output import plain
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
 
 __all__ = ["FringeFit"]
 
 
 @dataclass(frozen=True)
-class FringeFit:
+class FringeFit(NotebookPage):
     """Extremes, working point and depth of each line.
 
     One photodiode cannot tell (φ, x) from (−φ, −x): the sign is chosen so that the working phase lies
@@ -94,3 +100,34 @@ class FringeFit:
             Same as ``reasons``.
         """
         return self.reasons
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the measured values and the verdict as plain JSON values."""
+        values = {
+            name: getattr(self, name)
+            for name in (
+                "low", "high", "contrast", "slope", "slope_per_metre", "working_phase",
+                "phase_amplitude", "phase", "displacement_amplitude", "clock_offset",
+            )
+        }  # fmt: skip
+        verdict = {"trustworthy": self.is_trustworthy, "reasons": self.reasons}
+        return dict(plain({**values, **verdict}))
+
+    def notebook_tables(self) -> "list[tuple[Sequence[str], Iterable[Sequence[Any]]]]":
+        """Return the fringe, and the depth of each line."""
+        fringe = [
+            ("low", self.low),
+            ("high", self.high),
+            ("contrast", self.contrast),
+            ("working phase", self.working_phase),
+            ("slope", self.slope),
+            ("slope per metre", self.slope_per_metre),
+            ("trust", "; ".join(self.reasons) or "no reason for distrust found"),
+        ]
+        unknown: list[Measured | None] = [None] * len(self.phase_amplitude)
+        metres = self.displacement_amplitude or unknown
+        lines = list(
+            zip(range(1, len(metres) + 1), self.phase_amplitude, self.phase, metres, strict=True)
+        )
+        header = ("line", "depth", "phase", "displacement")
+        return [(("fringe", ""), fringe), (header, lines)]

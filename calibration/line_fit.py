@@ -7,8 +7,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.phasor_estimate import PhasorEstimate
+from metro.notebook import NotebookPage, maybe_figure
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
     from calibration.line_course import LineBeside, LineCourse
     from calibration.line_product import LineProduct
     from metro.measured import Measured
@@ -154,7 +157,7 @@ class Line:
 
 
 @dataclass(frozen=True, slots=True)
-class LineFit:
+class LineFit(NotebookPage):
     """All lines of one fit.
 
     Parameters
@@ -231,6 +234,64 @@ class LineFit:
     def distrust_reasons(self) -> tuple[str, ...]:
         """All reasons, each once."""
         return tuple(dict.fromkeys(r for line in self.lines for r in line.distrust_reasons))
+
+    def to_numpy(self) -> NDArray[np.void]:
+        """Return the lines as one structured array.
+
+        Returns
+        -------
+        ndarray, shape (n_lines,)
+            Fields frequency [Hz], amplitude and u_amplitude (unit of the samples), phase and u_phase
+            [rad], noise_density (unit/√Hz), snr, trustworthy.
+        """
+        rows = [
+            (
+                line.frequency_hz,
+                line.amplitude.magnitude,
+                line.amplitude.u_magnitude,
+                line.phase.magnitude,
+                line.phase.u_magnitude,
+                line.noise_density.magnitude,
+                line.snr_value,
+                line.is_trustworthy,
+            )
+            for line in self.lines
+        ]
+        names = [
+            "frequency",
+            "amplitude",
+            "u_amplitude",
+            "phase",
+            "u_phase",
+            "noise_density",
+            "snr",
+        ]
+        return np.array(rows, dtype=[*((name, float) for name in names), ("trustworthy", bool)])
+
+    def notebook_tables(self) -> "list[tuple[Sequence[str], Iterable[Sequence[Any]]]]":
+        """Return the lines as a table, and what is common to them as another."""
+        lines = [
+            (
+                f"{line.frequency_hz:.9g} Hz",
+                line.amplitude,
+                line.phase,
+                f"{line.snr_value:.4g}",
+                "; ".join(line.distrust_reasons) or "no reason for distrust found",
+            )
+            for line in self.lines
+        ]
+        common = [
+            ("clock offset of the lines", self.clock_offset),
+            ("used", f"{100 * self.used_fraction:.4g} % of {self.duration_s:.6g} s"),
+            ("convention", "A·cos(2πft + φ), t = 0 at the first sample of the recording"),
+        ]
+        return [(("line", "amplitude", "phase", "A/√(S/T)", "trust"), lines), ((), common)]
+
+    def notebook_figure(self) -> Any:  # noqa: ANN401  # matplotlib's Figure or None
+        """Return the noise beside each line and its course."""
+        from calibration.line_plot import lines_figure
+
+        return maybe_figure(lambda: lines_figure(self, "lines"))
 
     def reasons_by_line(self) -> list[str]:
         """Return all reasons, each with the lines it is about."""

@@ -2,7 +2,7 @@
 
 import json
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -19,6 +19,7 @@ from metro.budget import Budget
 from metro.errors import MidfringeError
 from metro.extras import MissingExtraError
 from metro.measured import Measured
+from metro.notebook import NotebookPage, maybe_figure
 from metro.output import plain
 
 __all__ = ["FORMAT", "VERSION", "ActuatorEntry", "Calibration", "CalibrationFileError", "load"]
@@ -32,7 +33,7 @@ class CalibrationFileError(CalibrationError):
 
 
 @dataclass(frozen=True, eq=False)
-class Calibration:
+class Calibration(NotebookPage):
     """A calibration with all that stands behind it.
 
     Parameters
@@ -110,6 +111,27 @@ class Calibration:
             for reason in entry.reasons
         ]
         return [*self.reasons, *lines]
+
+    def notebook_tables(self) -> list[tuple[Sequence[str], Iterable[Sequence[Any]]]]:
+        """Return the actuator's lines and the readout."""
+        lines = [
+            (entry.frequency, entry.magnitude, entry.phase, "; ".join(entry.reasons))
+            for entry in self.actuator
+        ]
+        readout = [
+            ("readout slope", self.readout_slope),
+            ("contrast", self.contrast),
+            ("dark level", self.dark),
+            ("clock offset", self.clock_offset),
+            ("trust", "; ".join(self.all_reasons) or "no reason for distrust found"),
+        ]
+        return [(("line", "actuator", "phase", ""), lines), ((), readout)]
+
+    def notebook_figure(self) -> Any:  # noqa: ANN401  # matplotlib's Figure or None
+        """Return the response with its uncertainties."""
+        from calibration.session_plot import response_figure
+
+        return maybe_figure(lambda: response_figure(self))
 
     def to_dict(self) -> dict[str, Any]:
         """Return the JSON form, as the file holds it."""

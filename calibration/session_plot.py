@@ -21,7 +21,14 @@ from metro.figure_file import save_figure
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-__all__ = ["Shown", "draw_actuator", "draw_scan", "draw_spectrum", "save_session_page"]
+__all__ = [
+    "Shown",
+    "draw_actuator",
+    "draw_scan",
+    "draw_spectrum",
+    "response_figure",
+    "save_session_page",
+]
 
 FloatArray = NDArray[np.float64]
 
@@ -164,6 +171,14 @@ def draw_spectrum(
         xlim=(0.5, rate_hz / 2),
     )
     axes.grid(which="both", linewidth=0.3, alpha=0.6)
+
+
+def response_figure(calibration: Calibration) -> Any:  # noqa: ANN401  # matplotlib's Figure
+    """Return the actuator's response alone as a figure."""
+    figures = require("matplotlib.figure", "bench", "a plot")
+    figure = figures.Figure(figsize=(7.4, 2.8), layout="constrained")
+    draw_actuator(figure.add_subplot(), calibration)
+    return figure
 
 
 def draw_actuator(axes: "Axes", calibration: Calibration) -> None:

@@ -9,9 +9,11 @@ from numpy.typing import NDArray
 from calibration.errors import CalibrationError
 from calibration.line_source import RecordingSource
 from calibration.welch import OVERLAP, WINDOW, WelchDensity, WelchSum
+from metro.display import show
+from metro.notebook import NotebookPage, maybe_figure
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Iterable, Sequence
 
     from calibration.expected_noise import ExpectedNoise
     from firmware_bridge.trace import Gap, Recording
@@ -48,7 +50,7 @@ class SpectralLine:
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class Spectrum:
+class Spectrum(NotebookPage):
     """An amplitude spectral density with what it is compared with.
 
     Parameters
@@ -89,6 +91,29 @@ class Spectrum:
     def ratio(self) -> FloatArray | None:
         """Measured over expected density, shape (n_bins,)."""
         return None if self.expected is None else self.welch.density / self.expected.density
+
+    def to_numpy(self) -> FloatArray:
+        """Return frequency [Hz], density and its standard uncertainty, shape (n_bins, 3)."""
+        welch = self.welch
+        u = np.broadcast_to(welch.density_u, welch.density.shape)
+        return np.stack([welch.frequency_hz, welch.density, u], axis=-1)
+
+    def notebook_tables(self) -> "list[tuple[Sequence[str], Iterable[Sequence[Any]]]]":
+        """Return how the spectrum was made, and its strongest lines."""
+        made = [
+            ("window", f"{WINDOW}, {self.segment} samples, overlap {100 * OVERLAP:g} %"),
+            ("noise bandwidth", f"{self.welch.noise_bandwidth_hz:.4g} Hz"),
+            ("segments", self.welch.segments),
+            ("used", f"{100 * self.used_fraction:.4g} %"),
+        ]
+        lines = [(f"{x.frequency_hz:.6g} Hz", show(x.amplitude, self.unit)) for x in self.lines]
+        return [((), made), (("line", "amplitude"), lines)]
+
+    def notebook_figure(self) -> Any:  # noqa: ANN401  # matplotlib's Figure or None
+        """Return the density with what is expected."""
+        from calibration.spectrum_plot import spectrum_figure
+
+        return maybe_figure(lambda: spectrum_figure(self, "spectrum", "amplitude"))
 
     def to_dict(self) -> dict[str, Any]:
         """Return the spectrum as the JSON output has it."""

@@ -10,10 +10,13 @@ from metro.conventions import conventions
 from metro.corrections import Correction, Direction, corrections
 from metro.kernel.noise import averaging_time_s, signal_to_noise
 from metro.measured import Measured
+from metro.notebook import NotebookPage
 from metro.sensitivity import Sensitivity, displacement_noise, strain_scale
 from metro.stages import STAGES, UNITS
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
     from metro.chain import Chain
 
 __all__ = ["Expectation", "expect"]
@@ -23,7 +26,7 @@ STRAIN_DENSITY = "1/Hz**0.5"
 
 
 @dataclass(frozen=True, slots=True)
-class Expectation:
+class Expectation(NotebookPage):
     """Everything that ``midfringe expect`` prints.
 
     Parameters
@@ -59,6 +62,16 @@ class Expectation:
     corrections: dict[str, Correction]
     cautions: list[str]
     sources: dict[str, dict[str, str]]
+
+    def notebook_tables(self) -> list[tuple[Sequence[str], Iterable[Sequence[Any]]]]:
+        """Return the stages, the working point, the noise and the signal-to-noise ratio."""
+        parts = (
+            ("stage", self.stages),
+            ("working point", self.working_point),
+            ("noise", self.noise),
+            ("signal to noise", self.snr),
+        )
+        return [((name, ""), list(values.items())) for name, values in parts]
 
     def to_dict(self) -> dict[str, Any]:
         """Return the JSON form.

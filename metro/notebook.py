@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-from base64 import b64encode
-from html import escape
-from io import BytesIO
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Sequence
+    from collections.abc import Callable, Iterable, Sequence
 
-__all__ = ["NotebookPage", "html_picture", "html_table"]
+__all__ = ["NotebookPage", "html_picture", "html_table", "maybe_figure"]
 
 _DPI = 90  # a notebook's column is some 900 pixels wide
 _CELL = "padding:2px 10px;text-align:left;font-variant-numeric:tabular-nums"
@@ -62,6 +59,27 @@ class NotebookPage:
         return "\n".join([*tables, *([] if figure is None else [html_picture(figure)])])
 
 
+def maybe_figure(draw: Callable[[], Any]) -> Any:  # noqa: ANN401  # matplotlib's Figure or None
+    """Return what a function draws, None where matplotlib is not installed.
+
+    Parameters
+    ----------
+    draw : callable
+        Returns a figure.
+
+    Returns
+    -------
+    matplotlib.figure.Figure or None
+        The figure.
+    """
+    from metro.extras import MissingExtraError
+
+    try:
+        return draw()
+    except MissingExtraError:
+        return None
+
+
 def html_table(
     rows: Iterable[Sequence[Any]], header: Sequence[str] = (), style: str = _CELL
 ) -> str:
@@ -81,6 +99,8 @@ def html_table(
     str
         One ``<table>``; every text escaped.
     """
+    from html import escape
+
     from metro.display import show_any
 
     styled = f' style="{style}"' if style else ""
@@ -108,6 +128,10 @@ def html_picture(figure: Any, text: str = "") -> str:  # noqa: ANN401  # matplot
     str
         An ``<img>`` with the PNG inside.
     """
+    from base64 import b64encode
+    from html import escape
+    from io import BytesIO
+
     picture = BytesIO()
     figure.savefig(picture, format="png", dpi=_DPI)
     inside = b64encode(picture.getvalue()).decode()

@@ -12,7 +12,9 @@ __all__ = ["Sink"]
 class Sink(Protocol):
     """A taker of messages, such as `Intake`, which describes each of these."""
 
-    files: list[Path]
+    @property
+    def files(self) -> list[Path]:
+        """The files written, in order."""
 
     @property
     def announcement(self) -> Announcement | None:

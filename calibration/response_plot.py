@@ -59,9 +59,12 @@ def draw_residuals(
             side * at_hz, 100 * values, yerr=bars, fmt=marker, color=colour, capsize=4, label=name
         )
     axes.axhline(0, color=GREY, linewidth=0.8)
-    axes.set(
-        title=f"Lines minus response ({response.shape.text}): chi-square "
+    axes.set_title(
+        f"Lines minus response ({response.shape.text}): chi-square "
         f"{response.chi_square:.3g} for {response.dof} degrees of freedom",
+        fontsize=10,
+    )
+    axes.set(
         xlabel="frequency / Hz",
         ylabel="residual (own u, 95 %)",
         xlim=(0, 1.1 * float(at_hz.max())),

@@ -7,7 +7,15 @@ from metro.display import show
 from metro.measured import Measured
 from metro.output import table
 
-__all__ = ["CONVENTIONS", "calibration_text", "expanded_text", "value_text"]
+__all__ = [
+    "CONVENTIONS",
+    "calibration_text",
+    "expanded_text",
+    "response_lines",
+    "series_lines",
+    "validity_lines",
+    "value_text",
+]
 
 CONVENTIONS = (
     "displacement is the differential arm length, positive when the x arm grows",
@@ -40,9 +48,9 @@ def calibration_text(calibration: Calibration) -> str:
     ]
     parts += ["budget of the readout slope:", calibration.readout_budget.table(), ""]
     parts += [
-        *_response_lines(calibration),
-        *_series_lines(calibration),
-        *_validity_lines(calibration),
+        *response_lines(calibration),
+        *series_lines(calibration),
+        *validity_lines(calibration),
     ]
     parts += [f"check: {_check(check)}" for check in calibration.checks]
     parts += [f"assumed: {text}" for text in calibration.assumptions]
@@ -64,7 +72,7 @@ def _readout_rows(calibration: Calibration) -> list[list[str]]:
     ]
 
 
-def _response_lines(calibration: Calibration) -> list[str]:
+def response_lines(calibration: Calibration) -> list[str]:
     """Return the response between the lines in words."""
     found = calibration.response
     if found is None:
@@ -86,7 +94,7 @@ def _response_lines(calibration: Calibration) -> list[str]:
     ]
 
 
-def _series_lines(calibration: Calibration) -> list[str]:
+def series_lines(calibration: Calibration) -> list[str]:
     """Return what the drive series say, one line each."""
     lines = []
     for series in calibration.drive_series:
@@ -99,7 +107,7 @@ def _series_lines(calibration: Calibration) -> list[str]:
     return lines
 
 
-def _validity_lines(calibration: Calibration) -> list[str]:
+def validity_lines(calibration: Calibration) -> list[str]:
     """Return the actuator's conditions in one line."""
     found = calibration.validity
     known = [

@@ -29,7 +29,8 @@ table { border-collapse: collapse; margin: .4em 0 .8em; width: 100%; font-size: 
   font-variant-numeric: tabular-nums; }
 th, td { text-align: left; padding: .22em .6em .22em 0; border-bottom: 1px solid #ccc;
   vertical-align: top; }
-td:last-child { overflow-wrap: anywhere; }
+td:not(:first-child):not(:last-child) { white-space: nowrap; }
+.long td:last-child { overflow-wrap: anywhere; }
 th { border-bottom: 1.5px solid #111; font-weight: 600; }
 tr, figure { break-inside: avoid; } thead { display: table-header-group; }
 figure { margin: .6em 0 1em; } figure img { width: 100%; height: auto; }
@@ -121,10 +122,36 @@ def bullets(texts: Iterable[str], heading: str = "") -> str:
     return f"{head}<ul>{items}</ul>" if items else ""
 
 
-def table(rows: Sequence[Sequence[Any]], header: Sequence[str], heading: str = "") -> str:
-    """Return a table under a small heading; nothing without rows."""
+def table(
+    rows: Sequence[Sequence[Any]],
+    header: Sequence[str],
+    heading: str = "",
+    *,
+    long_last: bool = False,
+) -> str:
+    """Return a table under a small heading; nothing without rows.
+
+    Parameters
+    ----------
+    rows : sequence of sequences
+        Cells, as :func:`metro.output.table` takes them.
+    header : sequence of str
+        Names of the columns.
+    heading : str
+        Plain text.
+    long_last : bool
+        Whether the last column may be broken anywhere, such as a hash.
+
+    Returns
+    -------
+    str
+        HTML.
+    """
+    if not rows:
+        return ""
     head = f"<h3>{escape(heading)}</h3>" if heading else ""
-    return head + html_table(rows, header, style="") if rows else ""
+    inside = head + html_table(rows, header, style="")
+    return f'<div class="long">{inside}</div>' if long_last else inside
 
 
 def picture(figure: Any, caption: str) -> str:  # noqa: ANN401  # matplotlib's Figure

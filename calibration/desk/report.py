@@ -11,7 +11,14 @@ from typing import TYPE_CHECKING, Any
 
 from calibration.desk import report_figures as figures
 from calibration.desk.page import HtmlPage, bullets, note, paragraph, picture, table
-from calibration.summary import CONVENTIONS, expanded_text, value_text
+from calibration.summary import (
+    CONVENTIONS,
+    expanded_text,
+    response_lines,
+    series_lines,
+    validity_lines,
+    value_text,
+)
 from metro.display import show
 
 if TYPE_CHECKING:
@@ -19,6 +26,7 @@ if TYPE_CHECKING:
 
     from calibration.desk.evidence import Evidence
     from calibration.record import ActuatorEntry, Calibration
+    from metro.bench import Bench
     from metro.budget import Budget
     from metro.measured import Measured
 
@@ -53,7 +61,10 @@ _ABSOLUTE_ZERO_K = 273.15
 
 
 def report_page(
-    calibration: Calibration, evidence: Sequence[Evidence] = (), title: str = ""
+    calibration: Calibration,
+    evidence: Sequence[Evidence] = (),
+    title: str = "",
+    bench: Bench | None = None,
 ) -> str:
     """Return the report of a calibration.
 
@@ -65,6 +76,8 @@ def report_page(
         Its recordings as found; pictures are drawn from those that are unchanged.
     title : str
         Heading; a plain one where empty.
+    bench : Bench, optional
+        For the noise that is expected beside the spectrum.
 
     Returns
     -------
@@ -85,7 +98,7 @@ def report_page(
     page.section("Conditions", *_conditions(calibration))
     page.section("Budget", *_budget(calibration))
     page.section("Routes and consistency", *_consistency(calibration))
-    page.section("Fringe, spectrum, response", *_pictures(calibration, evidence))
+    page.section("Fringe, spectrum, response", *_pictures(calibration, evidence, bench))
     page.section("Conventions", bullets(CONVENTIONS))
     page.section("What rests on statements", *_statements(calibration))
     page.section("Cautions", bullets(CAUTIONS))
@@ -122,6 +135,7 @@ def _result(calibration: Calibration) -> list[str]:
         ),
         table(rows, header, "Actuator"),
         table(readout, ("quantity", "value", "U (95 %)", "k"), "Readout"),
+        bullets([*response_lines(calibration), *series_lines(calibration)], "Between the lines"),
     ]
 
 
@@ -153,7 +167,10 @@ def _cells(value: Measured | None) -> tuple[str, str, str]:
 def _conditions(calibration: Calibration) -> list[str]:
     chain = [(_CHAIN.get(name, name), *_cells(value)) for name, value in calibration.chain.items()]
     air = [(_CONDITIONS.get(n, n), *_condition(n, v)) for n, v in calibration.conditions.items()]
-    return [table([*chain, *air], ("what", "value", "U (95 %)", "k"))]
+    return [
+        table([*chain, *air], ("what", "value", "U (95 %)", "k")),
+        bullets(validity_lines(calibration)),
+    ]
 
 
 def _condition(name: str, value: Measured) -> tuple[str, str, str]:
@@ -239,10 +256,12 @@ def _consistency(calibration: Calibration) -> list[str]:
     return [paragraph(text), rows] if rows else [paragraph("No second route was recorded.")]
 
 
-def _pictures(calibration: Calibration, evidence: Sequence[Evidence]) -> list[str]:
+def _pictures(
+    calibration: Calibration, evidence: Sequence[Evidence], bench: Bench | None
+) -> list[str]:
     drawn = [
         picture(figure, caption)
-        for figure, caption in figures.session_figures(calibration, evidence)
+        for figure, caption in figures.session_figures(calibration, evidence, bench)
     ]
     left_out = [
         f"{item.file} ({item.role}) is {item.state}: nothing is drawn from it"
@@ -254,11 +273,10 @@ def _pictures(calibration: Calibration, evidence: Sequence[Evidence]) -> list[st
 
 def _statements(calibration: Calibration) -> list[str]:
     unmeasured = [
-        f"{item.name}: {_percent(item.effect / float(entry.magnitude.magnitude))} of the actuator "
-        f"at {show(float(entry.frequency.magnitude), 'Hz', 6)}"
+        f"{item.name}: {_assumed(item.effect / float(entry.magnitude.magnitude))}"
         for entry in calibration.actuator[:1]
         for item in entry.budget.contributions
-        if "not measured" in item.name
+        if "(not " in item.name
     ]
     return [
         bullets(calibration.assumptions, "Taken as given"),
@@ -266,12 +284,18 @@ def _statements(calibration: Calibration) -> list[str]:
     ]
 
 
+def _assumed(share: float) -> str:
+    return (
+        f"{_percent(share)} is in the budget for it" if share else "nothing is in the budget for it"
+    )
+
+
 def _files(evidence: Sequence[Evidence]) -> list[str]:
     rows = [
         (e.role, e.file, e.samples, e.missing, e.over_range, e.state, e.sha256) for e in evidence
     ]
     header = ("role", "file", "samples", "missing", "over range", "now", "SHA-256")
-    return [table(rows, header)]
+    return [table(rows, header, long_last=True)]
 
 
 def _versions(calibration: Calibration) -> str:

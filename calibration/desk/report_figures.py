@@ -5,13 +5,16 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from calibration.errors import CalibrationError
+from firmware_bridge.errors import BridgeError
 from metro.extras import require
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
+    from pathlib import Path
 
     from calibration.desk.evidence import Evidence
     from calibration.record import Calibration
+    from metro.bench import Bench
     from metro.budget import Budget
 
 __all__ = ["budget_figure", "session_figures"]
@@ -54,7 +57,7 @@ def budget_figure(budget: Budget, size: float, title: str) -> Any:  # noqa: ANN4
 
 
 def session_figures(
-    calibration: Calibration, evidence: Sequence[Evidence]
+    calibration: Calibration, evidence: Sequence[Evidence], bench: Bench | None = None
 ) -> Iterator[tuple[Any, str]]:
     """Yield the pictures of a session with their captions.
 
@@ -64,45 +67,84 @@ def session_figures(
         The result.
     evidence : sequence of Evidence
         Only unchanged recordings are drawn from.
+    bench : Bench, optional
+        For the noise that is expected.
 
     Yields
     ------
     tuple of (matplotlib.figure.Figure, str)
         Fringe and spectrum where their recordings are there; the response always.
     """
-    from calibration import session_plot
-
-    shown = _shown(calibration, evidence)
-    if shown is not None and shown.scan is not None:
-        figure = _figure(2.6)
-        session_plot.draw_scan(
-            figure.add_subplot(), calibration, shown.scan.values, shown.scan.rate_hz
-        )
-        yield figure, "A scan over whole fringes, with the extremes fitted to all scans."
-    if shown is not None:
-        figure = _figure(3.0)
-        session_plot.draw_spectrum(
-            figure.add_subplot(), calibration, shown.moved.values, shown.moved.rate_hz
-        )
-        yield figure, "Displacement of the lines recording, by this calibration; lines dashed."
-    figure = _figure(2.8)
-    session_plot.draw_actuator(figure.add_subplot(), calibration)
-    yield figure, "Response of the actuator: magnitude and phase with their expanded uncertainties."
+    yield from _fringe(calibration, evidence)
+    yield from _spectrum(calibration, evidence, bench)
+    yield from _response(calibration)
 
 
-def _shown(calibration: Calibration, evidence: Sequence[Evidence]) -> Any:  # noqa: ANN401  # Shown
-    from calibration.session_plot import Shown
+def _fringe(calibration: Calibration, evidence: Sequence[Evidence]) -> Iterator[tuple[Any, str]]:
+    from calibration.session import photodiode_name
+    from calibration.session_plot import draw_scan
+    from firmware_bridge.opening import open_recording
 
-    files: dict[str, list[str]] = {}
-    for item in evidence:
-        if item.is_unchanged:
-            files.setdefault(item.role, []).append(str(item.path))
-    if not (files.get("lines-rising") or files.get("lines-falling")):
-        return None
+    path = _first(evidence, "scan")
+    if path is None:
+        return
+    recording = open_recording(path)
+    scan = recording.trace(photodiode_name(recording))
+    figure = _figure(2.6)
+    draw_scan(figure.add_subplot(), calibration, scan.values, scan.rate_hz)
+    yield figure, "A scan over whole fringes, with the extremes fitted to all scans."
+
+
+def _spectrum(
+    calibration: Calibration, evidence: Sequence[Evidence], bench: Bench | None
+) -> Iterator[tuple[Any, str]]:
+    from calibration.session import photodiode_name
+    from calibration.spectrum_plot import spectrum_figure
+    from calibration.spectrum_reading import read_spectrum
+    from firmware_bridge.opening import open_recording
+    from metro.bench import Bench as AnyBench
+
+    rising, falling = _first(evidence, "lines-rising"), _first(evidence, "lines-falling")
+    path, slope = (rising, "rising") if rising else (falling, "falling")
+    if path is None:
+        return
+    recording = open_recording(path)
     try:
-        return Shown.of_files(calibration, files)
-    except CalibrationError:  # a picture is no result: the report goes on without it
-        return None
+        found, _ = read_spectrum(
+            recording,
+            photodiode_name(recording),
+            bench or AnyBench.of(),
+            calibration,
+            "displacement",
+            slope,
+        )
+    except (CalibrationError, BridgeError):
+        return  # a picture is no result: the report goes on without it
+    figure = spectrum_figure(found, f"lines recording, {slope} slope", "displacement")
+    figure.set_size_inches(8.6, 5.2 if found.expected else 4.0)
+    beside = " beside the noise that the bench should have" if found.expected else ""
+    yield figure, f"Spectral density of the displacement, by this calibration{beside}."
+
+
+def _response(calibration: Calibration) -> Iterator[tuple[Any, str]]:
+    from calibration.response_plot import draw_residuals
+    from calibration.session_plot import response_figure
+
+    yield (
+        response_figure(calibration),
+        "Response of the actuator: magnitude and phase with their expanded uncertainties.",
+    )
+    if calibration.response is not None:
+        figure = _figure(2.6)
+        draw_residuals(figure.add_subplot(), calibration.actuator, calibration.response)
+        yield (
+            figure,
+            "What the fitted response leaves of the lines, with each line's own part of U.",
+        )
+
+
+def _first(evidence: Sequence[Evidence], role: str) -> Path | None:
+    return next((item.path for item in evidence if item.is_unchanged and item.role == role), None)
 
 
 def _figure(height: float) -> Any:  # noqa: ANN401  # matplotlib's Figure

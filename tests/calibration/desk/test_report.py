@@ -60,7 +60,7 @@ def test_page_has_every_part_and_loads_nothing(session, tmp_path, capsys):
         "Result", "Conditions", "Budget", "Routes and consistency", "Fringe, spectrum, response",
         "Conventions", "What rests on statements", "Cautions", "Files", "Versions",
     ]  # fmt: skip
-    assert len(page.loads) == 4
+    assert len(page.loads) == 5
     assert all(source.startswith("data:image/svg+xml;base64,") for source in page.loads)
     text = " ".join(page.texts)
     calibration = load(session / "calibration.json")

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.column_name import split_header
+from firmware_bridge.column_name import split_headers
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.table import Table
 
@@ -78,13 +78,14 @@ def arrays_to_table(
     own = metadata_of(stated, name)
     remarks = [f"{', '.join(left_out)}: of another length, not read"] if left_out else []
     # Our own names hold no units; others may, such as "U (mV)".
-    parts = {key: (key, "") if own else split_header(key) for key in chosen}
+    keys = list(chosen)
+    names, stated_units = (keys, [""] * len(keys)) if own else split_headers(keys)
     words = {key: word for key, word in (units or own.get("units", {})).items() if word}
     return Table(
         format=format,
         columns=[_as_float(column) for column in chosen.values()],
-        names=[parts[key][0].strip() for key in chosen],
-        units=[str(words.get(key, parts[key][1])) for key in chosen],
+        names=[name.strip() for name in names],
+        units=[str(words.get(key, word)) for key, word in zip(keys, stated_units, strict=True)],
         resolutions=[0.0] * len(chosen),
         rate_hz=own.get("rate_hz") or _maybe_rate_hz(stated),
         rate_u_hz=own.get("rate_u_hz"),

@@ -1,11 +1,12 @@
 """Names and units of columns, as the headers of recordings write them."""
 
 import re
+from collections.abc import Sequence
 from functools import cache
 
 from metro.errors import MetroError
 
-__all__ = ["is_unit_word", "si_unit", "split_header", "time_unit_s"]
+__all__ = ["bare_name", "is_unit_word", "si_unit", "split_header", "split_headers", "time_unit_s"]
 
 # Words that instruments and sketches print, beside what the unit registry reads.
 _SYNONYMS = {
@@ -107,9 +108,16 @@ _TIME_NAME = re.compile(
     re.IGNORECASE,
 )
 _WITH_UNIT = re.compile(
-    r"(?P<name>.*?)\s*(?:\[(?P<a>[^\]]*)\]|\((?P<b>[^()]*)\)|\s/\s*(?P<c>\S+)|/(?P<d>[^\s/]+)"
+    r"(?P<name>.*?)\s*(?:\[(?P<a>[^\]]*)\]|\((?P<b>[^()]*)\)|\s/\s*(?P<c>\S+)|/\s*(?P<d>[^\s/]+)"
     r"|\s+in\s+(?P<e>\S+))\s*"
 )
+
+
+_LETTERS = re.compile(r"[^\W\d_]+")
+_SCALED = re.compile(
+    r"(?:da|[fpnumcdhkMGT])?(?:V|A|W|s|Hz|m|rad|K|Pa|N|J|g|T|F|C|S|H|eV|mol|ohm)|per"
+)
+_SHORT = 3  # letters
 
 
 def split_header(header: str) -> tuple[str, str]:
@@ -133,6 +141,47 @@ def split_header(header: str) -> tuple[str, str]:
         if is_unit_word(word):
             return match["name"].strip(), word.strip()
     return header.strip(), ""
+
+
+def split_headers(headers: Sequence[str]) -> tuple[list[str], list[str]]:
+    """Return names and units of all columns.
+
+    Parameters
+    ----------
+    headers : sequence of str
+        The fields of a header line.
+
+    Returns
+    -------
+    tuple of (list of str, list of str)
+        Names and words for units. Columns that only their units tell apart keep their whole header
+        as name.
+    """
+    parts = [split_header(header) for header in headers]
+    names = [name for name, _ in parts]
+    for k, header in enumerate(headers):
+        if parts[k][1] and [name for name, _ in parts].count(parts[k][0]) > 1:
+            names[k] = header.strip()
+    return names, [unit for _, unit in parts]
+
+
+def bare_name(wanted: str, names: Sequence[str]) -> str:
+    """Return the name that a header stands for, where it is given with its unit.
+
+    Parameters
+    ----------
+    wanted : str
+        As a user writes it: ``"pd (V)"`` for the column ``"pd"``, or the name itself.
+    names : sequence of str
+        The columns there are.
+
+    Returns
+    -------
+    str
+        One of the names if there is such a one, else ``wanted``.
+    """
+    name = split_header(wanted)[0]
+    return name if wanted not in names and name in names else wanted
 
 
 def is_unit_word(word: str) -> bool:
@@ -176,12 +225,25 @@ def si_unit(word: str) -> tuple[str, float, float] | None:
 
     if len(spelled) > 40 or not re.match(r"[^\W\d_]|[%°‰√/1]", spelled):
         return None
-    if spell_unit(spelled).isalnum() and spell_unit(spelled) not in _SYMBOLS:
+    plain = spell_unit(spelled)
+    if plain.isalnum() and plain not in _SYMBOLS:
+        return None
+    if not all(map(_is_symbol, _LETTERS.findall(plain))):
         return None
     try:
         return si_form(parse_quantity(f"1 {spelled}").units)
     except MetroError:
         return None
+
+
+def _is_symbol(letters: str) -> bool:
+    """Tell whether a part of a compound unit is one of the trade's, and no chance reading.
+
+    The registry reads the "pd" of "pd/V" as a picoday and the "dac" of "dac/V" as ten speeds of
+    light; longer words are rarely read by chance.
+    """
+    known = letters in _SYMBOLS or letters.lower() in _WORDS or _SCALED.fullmatch(letters)
+    return len(letters) > _SHORT or bool(known)
 
 
 def time_unit_s(name: str, word: str) -> tuple[float, bool] | None:

@@ -6,7 +6,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.column_name import si_unit
+from firmware_bridge.column_name import bare_name, si_unit
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.missing_rows import with_missing
 from firmware_bridge.stamps import Grid, fit_grid
@@ -95,6 +95,21 @@ class TableRecording(Recording):
             channel = self.channels[position]
             row[self._grid.index[first:last] - start] = column * channel.scale + channel.offset
         return Span(values.T, over_range)
+
+    def find(self, name: str) -> int:
+        """Return the position in ``channels`` of a channel, also by its header as the file has it.
+
+        Parameters
+        ----------
+        name : str
+            As for `Recording.find`, or a header with its unit such as ``"pd (V)"``.
+
+        Returns
+        -------
+        int
+            Position in ``self.channels``.
+        """
+        return super().find(bare_name(name, [channel.name for channel in self.channels]))
 
     def _stored(self, position: int, part: slice) -> NDArray[np.float64]:
         column = self._columns[position]

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import ChannelInfo
-from firmware_bridge.column_name import si_unit, split_header
+from firmware_bridge.column_name import si_unit, split_headers
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.line_placer import LinePlacer
 from firmware_bridge.live_stamps import LiveStamps, maybe_find_stamps
@@ -146,12 +146,12 @@ def _table(layout: TextLayout, lines: Sequence[str]) -> tuple[Table, NDArray[np.
             rows.append(number)
     values = np.concatenate([np.empty((0, layout.columns)), *blocks])
     header = layout.header or ("",) * layout.columns
-    parts = [split_header(text) for text in header]
-    units = layout.units or tuple(unit for _, unit in parts)
+    names, stated = split_headers(header)
+    units = layout.units or stated
     table = Table(
         format="text",
         columns=list(values.T),
-        names=[name for name, _ in parts],
+        names=names,
         units=units,
         resolutions=finest_digits([lines[k] for k in rows], layout),
     )

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.calendar_stamps import stamps_to_seconds
-from firmware_bridge.column_name import split_header
+from firmware_bridge.column_name import split_headers
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.preamble import maybe_stated_rate_hz
 from firmware_bridge.printed_digits import finest_digits
@@ -101,13 +101,13 @@ def _to_table(section: TextSection, remarks: list[str]) -> Table:
     layout, values = section.layout, section.values()
     header = layout.header or ("",) * layout.columns
     kept = columns_kept(values, header)
-    parts = [split_header(text) for text in header]
-    units = layout.units or tuple(unit for _, unit in parts)
+    names, stated = split_headers(header)
+    units = layout.units or stated
     resolutions = _resolutions(section)
     return Table(
         format="csv" if layout.delimiter and layout.delimiter in ",;" else "text",
         columns=[np.ascontiguousarray(values[:, k]) for k in kept],
-        names=[parts[k][0] for k in kept],
+        names=[names[k] for k in kept],
         units=[units[k] for k in kept],
         resolutions=[resolutions[k] for k in kept],
         rate_hz=maybe_stated_rate_hz(layout.preamble),

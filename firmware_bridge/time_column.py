@@ -5,7 +5,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.column_name import time_unit_s
+from firmware_bridge.column_name import bare_name, time_unit_s
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.table import Table
 
@@ -82,7 +82,7 @@ def _find(table: Table, wanted: str, name: str) -> int:
         if 1 <= int(wanted) <= len(table.names):
             return int(wanted) - 1
         raise TimeColumnError(f"{name} has no column {wanted}; it has {_listed(table)}")
-    header = wanted.removeprefix("name:")
+    header = bare_name(wanted.removeprefix("name:"), table.names)
     found = [k for k, text in enumerate(table.names) if text == header]
     if len(found) == 1:
         return found[0]

@@ -3,8 +3,8 @@
 import re
 from collections.abc import Sequence
 
-from firmware_bridge.column_name import is_unit_word
 from firmware_bridge.text_fields import split_fields
+from firmware_bridge.unit_word import is_unit_word
 
 __all__ = ["find_header"]
 

@@ -3,7 +3,7 @@
 import re
 from collections.abc import Sequence
 
-from firmware_bridge.column_name import si_unit
+from firmware_bridge.unit_word import si_unit
 
 __all__ = ["maybe_stated_rate_hz"]
 

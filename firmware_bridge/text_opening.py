@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import ChannelInfo
-from firmware_bridge.column_name import si_unit, split_headers
+from firmware_bridge.column_name import split_headers
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.line_placer import LinePlacer
 from firmware_bridge.live_stamps import LiveStamps, maybe_find_stamps
@@ -18,6 +18,7 @@ from firmware_bridge.table import Table
 from firmware_bridge.text_layout import TextLayout, maybe_find_layout
 from firmware_bridge.text_lines import LineReader
 from firmware_bridge.text_table import columns_kept
+from firmware_bridge.unit_word import si_unit
 
 __all__ = ["TextOpening", "maybe_open_text"]
 

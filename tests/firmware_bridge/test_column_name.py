@@ -2,15 +2,10 @@
 
 import pytest
 
-from firmware_bridge.column_name import (
-    bare_name,
-    is_unit_word,
-    si_unit,
-    split_header,
-    split_headers,
-)
+from firmware_bridge.column_name import bare_name, split_header, split_headers
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.opening import open_recording
+from firmware_bridge.unit_word import is_unit_word, si_unit
 
 UNITS = {
     "V": ("V", 1.0),

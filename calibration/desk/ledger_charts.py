@@ -3,6 +3,7 @@
 from bisect import bisect_right
 from collections.abc import Sequence
 from itertools import pairwise
+from typing import Any
 
 from calibration.desk.cusum import CusumRule
 from calibration.desk.ledger import Ledger
@@ -11,7 +12,7 @@ from calibration.desk.line_chart import LineChart, chart_line
 from calibration.desk.line_entry import LineEntry
 from calibration.desk.temperature_law import TemperatureLaw
 
-__all__ = ["by_line", "charts_of", "start_of"]
+__all__ = ["alarms_of", "by_line", "charts_of", "start_of"]
 
 _SAME_LINE = 1e-3
 
@@ -143,3 +144,11 @@ def _groups_at(
             f"the ledger {ledger.name} has no result of a line at {line_hz:g} Hz{after}"
         )
     return found
+
+
+def alarms_of(kept: Ledger, bench: str, law: TemperatureLaw, rule: CusumRule) -> list[Any]:
+    """Return a bench's alarms since its calibration in force."""
+    from calibration.desk.line_alarms import alarms_in
+
+    entries = kept.line_results(bench=bench, since=start_of(kept, bench, None, whole=False))
+    return [alarm for group in by_line(entries) for alarm in alarms_in(group, law, rule)]

@@ -9,9 +9,11 @@ from typing import TYPE_CHECKING, Any, TypeVar
 import click
 
 from calibration.desk.ledger_errors import LedgerError
-from metro.options import ValueType
+from metro.options import ValueType, is_quiet
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from calibration.desk.cusum import CusumRule
     from calibration.desk.line_entry import LineEntry
     from calibration.desk.temperature_law import TemperatureLaw
@@ -23,7 +25,10 @@ __all__ = [
     "judging_options",
     "ledger_options",
     "ledger_place",
+    "moment",
+    "since_options",
     "sourcing_options",
+    "tell",
 ]
 
 F = TypeVar("F", bound=Callable[..., Any])
@@ -297,3 +302,27 @@ def judging_options(function: F) -> F:
     ):
         wrapped = click.option(declaration, name, **settings)(wrapped)
     return wrapped  # type: ignore[no-any-return]  # the options stand for ``judging``
+
+
+def since_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
+    """Add --since and --until."""
+    for name, text in (
+        ("--until", "Only before this time, ISO 8601."),
+        ("--since", "Only from this time on, ISO 8601 (UTC where it does not say)."),
+    ):
+        function = click.option(name, metavar="TIME", help=text)(function)
+    return function
+
+
+def moment(text: str | None, name: str) -> str | None:
+    """Return the time that an option gives, as the ledger keeps times; None where not given."""
+    from calibration.desk.utc import parse_time
+
+    return None if text is None else parse_time(text, name)
+
+
+def tell(lines: "Sequence[str]") -> None:
+    """Print cautions on standard error, unless only errors are wanted."""
+    if not is_quiet():
+        for line in lines:
+            click.echo(f"caution: {line}", err=True)

@@ -1,10 +1,11 @@
 """Moments as the ledger keeps them: UTC, ISO 8601, to the microsecond, so that they sort as text."""
 
+import time
 from datetime import UTC, datetime
 
 from calibration.desk.ledger_errors import LedgerError
 
-__all__ = ["iso_of", "parse_time", "unix_of"]
+__all__ = ["iso_of", "now", "parse_time", "unix_of"]
 
 
 def iso_of(unix_s: float) -> str:
@@ -68,3 +69,8 @@ def parse_time(text: str, name: str) -> str:
         raise LedgerError(
             f"{name} must be a time in ISO 8601, such as 2026-03-01T12:00:00Z, got {text!r}"
         ) from None
+
+
+def now() -> str:
+    """Return the present moment as the ledger keeps times."""
+    return iso_of(time.time())

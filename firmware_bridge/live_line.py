@@ -5,7 +5,7 @@ from collections.abc import Callable
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
-    from firmware_bridge.recording_session import Progress
+    from firmware_bridge.recording_progress import Progress
 
 __all__ = ["LiveLine"]
 

@@ -6,7 +6,7 @@ from firmware_bridge.announcement import Announcement
 from firmware_bridge.arguments import start_arguments
 from firmware_bridge.errors import BridgeError
 
-__all__ = ["LockInError", "LockInStart"]
+__all__ = ["LockInError", "LockInStart", "result_every_s"]
 
 
 class LockInError(BridgeError):
@@ -65,3 +65,21 @@ class LockInStart:
             f"the board has no channel {self.channel!r}; it has "
             + ", ".join(f"{k} {name!r}" for k, name in enumerate(names, start=1))
         )
+
+
+def result_every_s(asked: LockInStart | None, came_s: float) -> float:
+    """Return the time from one lock-in result to the next.
+
+    Parameters
+    ----------
+    asked : LockInStart or None
+        What the board was asked for.
+    came_s : float
+        From one result to the next as they come [s], 0 where samples come.
+
+    Returns
+    -------
+    float
+        The longer of both [s], 0 where samples are expected.
+    """
+    return max(0.0 if asked is None else asked.time_s, came_s)

@@ -16,7 +16,8 @@ from firmware_bridge.live_events import LiveBlock
 from firmware_bridge.lock_in_start import LockInStart
 from firmware_bridge.port import ByteSource, open_port
 from firmware_bridge.recording import open_mfr
-from firmware_bridge.recording_session import Progress, RecordingSession
+from firmware_bridge.recording_progress import Progress
+from firmware_bridge.recording_session import RecordingSession
 from firmware_bridge.rotation import Rotation
 from firmware_bridge.text_frames import TextFramer
 from firmware_bridge.trace import Gap

@@ -150,7 +150,7 @@ def record(
             signal.signal(getattr(signal, name), signal.default_int_handler)
     show = not is_quiet() and sys.stderr.isatty()
     line = LiveLine(lambda part: click.echo(part, err=True, nl=False))
-    log = logging.getLogger("firmware_bridge.recording_session")
+    log = logging.getLogger("firmware_bridge.port_watch")
     log.addFilter(line.step_aside)
     try:
         summary = record_port(

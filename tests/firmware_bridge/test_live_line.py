@@ -1,5 +1,5 @@
 from firmware_bridge.live_line import LiveLine, line_of
-from firmware_bridge.recording_session import Progress
+from firmware_bridge.recording_progress import Progress
 
 
 def progress(samples=1000, **changes):

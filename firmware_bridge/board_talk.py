@@ -1,0 +1,119 @@
+"""What is said to a board that sends frames: who are you, drive so, start, go on, stop."""
+
+import time
+
+from firmware_bridge.drive_desk import DriveDesk
+from firmware_bridge.errors import BridgeError
+from firmware_bridge.lock_in_start import LockInStart, result_every_s
+from firmware_bridge.message import CommandCode, encode_command
+from firmware_bridge.port import ByteSource
+from firmware_bridge.port_watch import PortWatch
+from firmware_bridge.silence import Silence
+from firmware_bridge.sink import Sink
+
+__all__ = ["BoardTalk"]
+
+_ASK_S = 0.5  # how often an unannounced board is asked again, and others that the host is there
+_IDLE_S = 1.5  # a board that samples sends a frame every 0.5 s at least
+
+
+class BoardTalk:
+    """Say what is due; called by the thread that reads the port.
+
+    Parameters
+    ----------
+    port : ByteSource
+        Where the board listens.
+    intake : Sink
+        Knows what the board has said about itself.
+    silence : Silence
+        Knows how long it has sent nothing.
+    watch : PortWatch
+        Who is told of drive lines that cannot be.
+    desk : DriveDesk, optional
+        Who wants drive lines of the board.
+    lock_in : LockInStart, optional
+        What the board is asked for instead of samples.
+    """
+
+    def __init__(
+        self,
+        port: ByteSource,
+        intake: Sink,
+        silence: Silence,
+        watch: PortWatch,
+        desk: DriveDesk | None,
+        lock_in: LockInStart | None,
+    ) -> None:
+        self._port, self._intake, self._silence, self._watch = port, intake, silence, watch
+        self._desk, self._lock_in = desk, lock_in
+        self._asked_s: float | None = None  # None: the port has just been opened
+        self._is_started = False
+        self._request = 0
+
+    def opened(self) -> None:
+        """Take note that the port was opened again: the board is asked anew."""
+        self._asked_s = None
+
+    def speak(self) -> None:
+        """Say what is due."""
+        now_s = time.monotonic()
+        if self._asked_s is None or now_s - self._asked_s >= _ASK_S:
+            self._ask(is_first=self._asked_s is None)
+            self._asked_s = now_s
+        self._drive()
+        self._begin()
+
+    def leave(self) -> None:
+        """Bring the drive to rest and the board to a stop; on a port that is gone nothing happens."""
+        if self._desk is not None:
+            for wait_s, requests in self._desk.fall(self._intake.announcement):
+                time.sleep(wait_s)
+                if not all(self._say(code, arguments) for code, arguments in requests):
+                    break  # it goes to rest by itself once nobody speaks
+        self._say(CommandCode.STOP)
+
+    def _ask(self, *, is_first: bool) -> None:
+        if is_first or not self._intake.is_announced:
+            self._say(CommandCode.IDENTIFY)
+        else:
+            self._say(CommandCode.KEEP_ALIVE)  # else a board's drive goes to rest after 2 s
+        # A board that was reset waits to be started; one that sends goes on as it is.
+        every_s = result_every_s(self._lock_in, self._intake.every_s)
+        if is_first or self._silence.idle_s > _IDLE_S + every_s:
+            self._is_started = False
+        self._begin()
+
+    def _drive(self) -> None:
+        """Send what is due for the drive."""
+        if self._desk is None:
+            return
+        try:
+            requests = self._desk.due(self._intake.announcement)
+        except BridgeError as error:
+            self._watch.refused(str(error))
+            return
+        for code, arguments in requests:
+            self._desk.sent(self._request + 1, code)
+            self._say(code, arguments)
+        for notice in self._desk.notices():
+            self._watch.notice(notice)
+
+    def _begin(self) -> None:
+        """Have the board send, once what is asked for can be said."""
+        if self._is_started:
+            return
+        arguments = b""
+        if self._lock_in is not None:
+            announced = self._intake.announcement
+            # Its sums begin with the start: the lines must be there before.
+            if announced is None or (self._desk is not None and not self._desk.is_settled()):
+                return
+            arguments = self._lock_in.arguments(announced)
+            self._say(CommandCode.STOP)
+        self._is_started = True
+        self._say(CommandCode.START, arguments)
+
+    def _say(self, code: CommandCode, arguments: bytes = b"") -> bool:
+        self._request += 1
+        return self._port.write(encode_command(code, self._request % 65536, arguments))

@@ -185,7 +185,7 @@ class _Task:
 
     def driven(self, recording: "Recording", lines: list[float]) -> _Answer:
         """Fit driven lines."""
-        from calibration.fringe_plot import save_driven_plot
+        from calibration.driven_plot import save_driven_plot
         from calibration.fringe_reading import read_fringe
         from calibration.fringe_tables import driven_tables
 
@@ -211,9 +211,9 @@ class _Task:
 
     def counted(self, recording: "Recording") -> _Answer:
         """Count fringes."""
+        from calibration.count_plot import save_count_plot
         from calibration.count_reading import read_count
         from calibration.found_extremes import Level
-        from calibration.fringe_plot import save_count_plot
         from calibration.fringe_tables import count_tables
 
         trace = self._trace(recording, self.reading)
@@ -242,7 +242,7 @@ class _Task:
     def in_quadrature(self, recording: "Recording", columns: str, lines: list[float]) -> _Answer:
         """Read two detectors in quadrature."""
         from calibration.errors import CalibrationError
-        from calibration.fringe_plot import save_quadrature_plot
+        from calibration.quadrature_plot import save_quadrature_plot
         from calibration.quadrature_reading import quadrature_tables, read_quadrature
 
         names = [name.strip() for name in columns.split(",")]

@@ -18,7 +18,9 @@ from calibration.conversion_tally import ConversionTally, relative_us
 from calibration.errors import CalibrationError
 from calibration.record import Calibration
 from calibration.working_point import edge_reasons, invert_fringe
-from firmware_bridge.trace import Channel, Recording, Span
+from firmware_bridge.channel import Channel
+from firmware_bridge.span import Span
+from firmware_bridge.trace import Recording
 from metro.kernel.phase import phase_per_metre
 
 __all__ = ["QUANTITIES", "Conversion", "ConvertedRecording", "per_radian"]

@@ -9,7 +9,9 @@ from calibration.conversion_tally import ConversionTally
 from calibration.convert import Conversion
 from calibration.errors import CalibrationError
 from calibration.record import Calibration
-from firmware_bridge.trace import Channel, Recording, Span
+from firmware_bridge.channel import Channel
+from firmware_bridge.span import Span
+from firmware_bridge.trace import Recording
 
 __all__ = ["DrivenDisplacement"]
 

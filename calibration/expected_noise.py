@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from calibration.record import Calibration
-    from firmware_bridge.trace import Channel
+    from firmware_bridge.channel import Channel
     from metro.bench import Bench
     from metro.bench_entry import MotionPoint
     from metro.chain import Chain

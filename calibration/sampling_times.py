@@ -10,7 +10,7 @@ from calibration.line_fit import Line, LineFit
 from calibration.phasor_estimate import PhasorEstimate
 
 if TYPE_CHECKING:
-    from firmware_bridge.trace import Timing
+    from firmware_bridge.timing import Timing
 
 __all__ = ["HOST_ONLY", "with_timing"]
 

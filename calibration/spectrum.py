@@ -16,7 +16,8 @@ if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
 
     from calibration.expected_noise import ExpectedNoise
-    from firmware_bridge.trace import Gap, Recording
+    from firmware_bridge.gap import Gap
+    from firmware_bridge.trace import Recording
 
 __all__ = ["SpectralLine", "Spectrum", "find_spectrum"]
 

@@ -17,12 +17,12 @@ if TYPE_CHECKING:
     from firmware_bridge.errors import DeviceFailedError as DeviceFailedError
     from firmware_bridge.frame import encode_frame as encode_frame
     from firmware_bridge.frame import encode_stream as encode_stream
+    from firmware_bridge.gap import Gap as Gap
     from firmware_bridge.live_session import LiveSession as LiveSession
     from firmware_bridge.message import Note as Note
     from firmware_bridge.opening import open_recording as open_recording
     from firmware_bridge.recorder import RecordSummary as RecordSummary
     from firmware_bridge.recorder import record as record
-    from firmware_bridge.trace import Gap as Gap
     from firmware_bridge.trace import Recording as Recording
     from firmware_bridge.trace import Trace as Trace
 
@@ -33,7 +33,7 @@ _HOMES = {
     "Decoder": "firmware_bridge.decoder",
     "DeviceFailedError": "firmware_bridge.errors",
     "Discarded": "firmware_bridge.envelope",
-    "Gap": "firmware_bridge.trace",
+    "Gap": "firmware_bridge.gap",
     "LiveSession": "firmware_bridge.live_session",
     "Note": "firmware_bridge.message",
     "RecordSummary": "firmware_bridge.recorder",

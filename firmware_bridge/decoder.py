@@ -13,6 +13,7 @@ from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.cobs import encode
 from firmware_bridge.envelope import Discarded, Unwrapper, seal
 from firmware_bridge.frame import HEADER, OVER_RANGE
+from firmware_bridge.gap import Gap
 from firmware_bridge.message import (
     WIRE_VERSION,
     Command,
@@ -25,7 +26,6 @@ from firmware_bridge.message import (
 )
 from firmware_bridge.order import StreamOrder
 from firmware_bridge.sample_packing import unpack_samples
-from firmware_bridge.trace import Gap
 
 __all__ = [
     "Announcement",

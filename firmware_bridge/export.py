@@ -23,7 +23,8 @@ from numpy.typing import NDArray
 
 from firmware_bridge.column_name import split_header
 from firmware_bridge.errors import BridgeError
-from firmware_bridge.trace import Recording, Span
+from firmware_bridge.span import Span
+from firmware_bridge.trace import Recording
 from metro.extras import require
 from metro.output import check_writable, writing_whole
 

@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 
-from firmware_bridge.trace import Gap
+from firmware_bridge.gap import Gap
 
 __all__ = ["counted", "gap_reason"]
 

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from firmware_bridge.pleasing_rate import pleasing_rate_hz
 from firmware_bridge.steady_rate import fit_step
-from firmware_bridge.trace import Timing
+from firmware_bridge.timing import Timing
 
 __all__ = ["FrameClocks", "LineClock"]
 

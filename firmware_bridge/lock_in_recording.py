@@ -11,13 +11,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.arguments import step_frequency_hz
+from firmware_bridge.channel import Channel
+from firmware_bridge.gap import Gap
 from firmware_bridge.gap_reason import counted
 from firmware_bridge.host_note import End, Join, Pieces, Stamp, parse_host_note
 from firmware_bridge.message import LockIn, MessageError, MessageType, parse_message
 from firmware_bridge.record_file import RecordFile
 from firmware_bridge.recording import NO_END
 from firmware_bridge.recording_header import RecordingError
-from firmware_bridge.trace import Channel, Gap, Recording, Span
+from firmware_bridge.span import Span
+from firmware_bridge.trace import Recording
 
 __all__ = ["LockInRecording"]
 

@@ -6,9 +6,9 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.gap import Gap
 from firmware_bridge.stamps import Grid
 from firmware_bridge.table import Table
-from firmware_bridge.trace import Gap
 
 __all__ = ["with_missing"]
 

@@ -6,7 +6,7 @@ from typing import Generic, TypeVar
 
 from firmware_bridge.cobs import encode
 from firmware_bridge.envelope import Discarded
-from firmware_bridge.trace import Gap
+from firmware_bridge.gap import Gap
 
 __all__ = ["StreamOrder"]
 

@@ -20,7 +20,7 @@ from typing import TYPE_CHECKING, Any, TypeVar, overload
 
 import click
 
-from firmware_bridge.trace import ChannelError
+from firmware_bridge.channel import ChannelError
 from metro.options import ValueType, is_quiet
 
 if TYPE_CHECKING:

@@ -10,6 +10,7 @@ from pathlib import Path
 from firmware_bridge.drive_desk import DriveDesk
 from firmware_bridge.drive_lines import DriveLines
 from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.gap import Gap
 from firmware_bridge.gap_reason import counted, gap_reason
 from firmware_bridge.intake import Intake
 from firmware_bridge.live_events import LiveBlock
@@ -20,7 +21,6 @@ from firmware_bridge.recording_progress import Progress
 from firmware_bridge.recording_session import RecordingSession
 from firmware_bridge.rotation import Rotation
 from firmware_bridge.text_frames import TextFramer
-from firmware_bridge.trace import Gap
 from firmware_bridge.writer import DiskError
 
 __all__ = ["Progress", "RecordSummary", "record"]

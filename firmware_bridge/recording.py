@@ -8,6 +8,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.channel import Channel
+from firmware_bridge.gap import Gap
 from firmware_bridge.gap_reason import counted
 from firmware_bridge.host_note import End, Join, Pieces, Remark, Stamp, parse_host_note
 from firmware_bridge.line_clock import FrameClocks, LineClock
@@ -15,7 +17,9 @@ from firmware_bridge.message import MessageError, MessageType, Note, parse_messa
 from firmware_bridge.record_file import RecordFile
 from firmware_bridge.record_index import RecordIndex, lengths
 from firmware_bridge.recording_header import RecordingError
-from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
+from firmware_bridge.span import Span
+from firmware_bridge.timing import Timing
+from firmware_bridge.trace import Recording
 
 __all__ = ["NO_END", "MfrRecording", "NoSampleError", "open_mfr"]
 

@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.gap import Gap
 from firmware_bridge.pleasing_rate import pleasing_rate_hz
 from firmware_bridge.stamp_order import usable_rows, without_lags
 from firmware_bridge.steady_rate import (
@@ -15,7 +16,6 @@ from firmware_bridge.steady_rate import (
     maybe_exact_step_s,
     maybe_single_step_s,
 )
-from firmware_bridge.trace import Gap
 
 __all__ = ["Grid", "StampsError", "fit_grid"]
 

@@ -6,13 +6,17 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.channel import Channel
 from firmware_bridge.column_name import bare_name
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.gap import Gap
 from firmware_bridge.missing_rows import with_missing
+from firmware_bridge.span import Span
 from firmware_bridge.stamps import Grid, fit_grid
 from firmware_bridge.table import Table
 from firmware_bridge.time_column import TimeColumn, maybe_find_time, named_time
-from firmware_bridge.trace import Channel, Gap, Recording, Span, Timing
+from firmware_bridge.timing import Timing
+from firmware_bridge.trace import Recording
 from firmware_bridge.unit_word import si_unit
 
 __all__ = ["RateError", "TableRecording", "to_recording"]

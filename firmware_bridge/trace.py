@@ -1,4 +1,4 @@
-"""What every recording is, whatever file it came from: channels and traces on one regular grid."""
+"""What every recording is, whatever file it came from: traces of channels on one regular grid."""
 
 import math
 from abc import ABC, abstractmethod
@@ -8,113 +8,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.errors import BridgeError
+from firmware_bridge.channel import Channel, find_channel
+from firmware_bridge.gap import Gap
+from firmware_bridge.span import Block, Span, SpanError
+from firmware_bridge.timing import BY_BOARD, Timing
 
-__all__ = [
-    "Block",
-    "Channel",
-    "ChannelError",
-    "Gap",
-    "Recording",
-    "Span",
-    "SpanError",
-    "Timing",
-    "Trace",
-]
-
-
-class ChannelError(BridgeError):
-    """A channel name that the recording does not have, or has more than once."""
-
-
-class SpanError(BridgeError):
-    """A stretch of time that lies outside the recording or is empty."""
-
-
-@dataclass(frozen=True, slots=True)
-class Channel:
-    """One channel of a recording: value in ``unit`` = counts · ``scale`` + ``offset``.
-
-    Parameters
-    ----------
-    name : str
-        Header or announced name.
-    unit : str
-        Unit of the values, "1" where none is known.
-    scale, offset : float
-        From counts to ``unit``; 1 and 0 where the file holds the values themselves.
-    """
-
-    name: str
-    unit: str = "1"
-    scale: float = 1.0
-    offset: float = 0.0
-
-
-@dataclass(frozen=True, slots=True)
-class Gap:
-    """Samples that never arrived.
-
-    Parameters
-    ----------
-    index : int
-        First missing sample: in a recording counted on its grid, from a decoder by the board.
-    length : int
-        Number of missing samples; 0 where it cannot be known (a decoder at a board reset).
-    exact : bool
-        True where the board's own counting gives the length, False where a clock does.
-    length_u : float
-        Standard uncertainty of ``length`` in samples, 0 where exact.
-    """
-
-    index: int
-    length: int
-    exact: bool = True
-    length_u: float = 0.0
-
-
-@dataclass(frozen=True, slots=True)
-class Timing:
-    """What the times of a recording's samples rest on.
-
-    Parameters
-    ----------
-    is_by_host : bool
-        True where nothing but the arrival of the samples at the host tells their times: a sample
-        lost on the way moves all that follow, and phases mean nothing.
-    jitter_s, jitter_u_s : float
-        Rms distance of the moments of sampling from the regular grid [s], and its standard
-        uncertainty. A line of frequency f loses the factor exp(−(2πf·jitter)²/2) to it.
-    """
-
-    is_by_host: bool = False
-    jitter_s: float = 0.0
-    jitter_u_s: float = 0.0
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class Span:
-    """Values of some channels over some samples, as a recording reads them.
-
-    Parameters
-    ----------
-    values : ndarray, shape (n, channels)
-        Float64 in channel units, NaN where missing or over-range.
-    over_range : int
-        How many of the NaN are over-range values; the others are missing.
-    """
-
-    values: NDArray[np.float64]
-    over_range: int = 0
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class Block:
-    """A stretch of a recording: ``values`` as in `Span`, from sample ``start_index`` on."""
-
-    start_index: int
-    values: NDArray[np.float64]
-    over_range: int = 0
+__all__ = ["Recording", "Trace"]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -144,7 +43,7 @@ class Trace:
     start_index: int = 0
     missing: int = 0
     over_range: int = 0
-    timing: Timing = Timing()
+    timing: Timing = BY_BOARD
 
     def times_s(self) -> NDArray[np.float64]:
         """Return the times of the values [s], 0 at the recording's first sample.
@@ -205,7 +104,7 @@ class Recording(ABC):
         remarks: Sequence[str] = (),
         columns: Sequence[int] | None = None,
         start_unix_s: float | None = None,
-        timing: Timing = Timing(),
+        timing: Timing = BY_BOARD,
     ) -> None:
         self.path = path
         self.format = format
@@ -261,28 +160,7 @@ class Recording(ABC):
         ChannelError
             If there is no such channel, or two of that name.
         """
-        if name.isascii() and name.isdigit():
-            return self._find_column(int(name))
-        wanted = name.removeprefix("name:")
-        found = [k for k, channel in enumerate(self.channels) if channel.name == wanted]
-        if len(found) != 1:
-            what = "more than one channel" if found else "no channel"
-            raise ChannelError(f"{self.path} has {what} named {wanted!r}; it has {self._listed()}")
-        return found[0]
-
-    def _find_column(self, number: int) -> int:
-        if number not in self.columns:
-            raise ChannelError(
-                f"{self.path}: column {number} is no channel (columns count from 1, the time "
-                f"column included); it has {self._listed()}"
-            )
-        return self.columns.index(number)
-
-    def _listed(self) -> str:
-        return ", ".join(
-            f"{column} {channel.name!r}"
-            for column, channel in zip(self.columns, self.channels, strict=True)
-        )
+        return find_channel(name, self.channels, self.columns, self.path)
 
     def trace(self, name: str, from_s: float | None = None, to_s: float | None = None) -> Trace:
         """Return one channel, or the stretch ``from_s`` ≤ t < ``to_s`` of it.

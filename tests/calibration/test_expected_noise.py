@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from calibration.expected_noise import bench_as_measured, expected_noise
-from firmware_bridge.trace import Channel
+from firmware_bridge.channel import Channel
 from metro.bench import Bench
 from metro.bench_entry import MotionPoint
 from metro.sensitivity import displacement_noise

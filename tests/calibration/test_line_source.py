@@ -10,7 +10,7 @@ from calibration.line_reading import read_lines, read_recording_lines
 from calibration.line_source import RecordingSource
 from calibration.lines import fit_source
 from firmware_bridge.recording import open_mfr
-from firmware_bridge.trace import Span
+from firmware_bridge.span import Span
 
 
 @pytest.fixture(scope="module")

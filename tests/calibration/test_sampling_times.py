@@ -8,7 +8,8 @@ from text_board import arrivals_of, record_chunks
 from calibration.commands.lines import lines
 from calibration.line_reading import read_lines
 from calibration.sampling_times import HOST_ONLY
-from firmware_bridge.trace import Timing, Trace
+from firmware_bridge.timing import Timing
+from firmware_bridge.trace import Trace
 
 RATE_HZ, LINE_HZ, AMPLITUDE, PHASE = 200.0, 61.3, 1.5, 0.7
 

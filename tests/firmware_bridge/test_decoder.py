@@ -10,6 +10,7 @@ from firmware_bridge.cobs import decode, encode
 from firmware_bridge.decoder import Decoder, Samples
 from firmware_bridge.envelope import MESSAGE_MAX, Discarded, wrap
 from firmware_bridge.frame import encode_frame
+from firmware_bridge.gap import Gap
 from firmware_bridge.message import (
     Command,
     LockIn,
@@ -20,7 +21,6 @@ from firmware_bridge.message import (
     encode_note,
     encode_reply,
 )
-from firmware_bridge.trace import Gap
 
 N = 20  # samples a frame
 ANNOUNCED = Announcement(

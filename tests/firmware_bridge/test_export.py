@@ -7,9 +7,12 @@ from click.testing import CliRunner
 from real_data import real_data
 
 from firmware_bridge import open_recording
+from firmware_bridge.channel import Channel
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.export import export_recording
-from firmware_bridge.trace import Channel, Gap, Recording, Span
+from firmware_bridge.gap import Gap
+from firmware_bridge.span import Span
+from firmware_bridge.trace import Recording
 from metro.commandline import cli, run
 from metro.output import OutputError
 

@@ -7,11 +7,11 @@ import pytest
 from click.testing import CliRunner
 
 from firmware_bridge.announcement import Announcement, ChannelInfo
+from firmware_bridge.channel import ChannelError
 from firmware_bridge.cobs import decode
 from firmware_bridge.frame import encode_frame
 from firmware_bridge.reading import Reading, recording_options
 from firmware_bridge.recording_header import Header
-from firmware_bridge.trace import ChannelError
 from firmware_bridge.writer import Writer
 from metro.errors import MidfringeError
 

@@ -11,11 +11,11 @@ from wire_board import RATE_HZ, SLOTS, PtyLink, Rfc2217Link, SocketLink, WireBoa
 
 from firmware_bridge.decoder import Command, Decoder
 from firmware_bridge.errors import BridgeError, DeviceFailedError
+from firmware_bridge.gap import Gap
 from firmware_bridge.message import CommandCode
 from firmware_bridge.port import Port, PortError
 from firmware_bridge.recorder import record
 from firmware_bridge.recording import NO_END, open_mfr
-from firmware_bridge.trace import Gap
 
 
 @pytest.fixture

@@ -9,12 +9,12 @@ from firmware_bridge.announcement import Announcement, ChannelInfo, encode_annou
 from firmware_bridge.cobs import decode
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.frame import encode_frame
+from firmware_bridge.gap import Gap
 from firmware_bridge.host_note import End, Join, Remark, Stamp
 from firmware_bridge.message import encode_note
 from firmware_bridge.record_index import RUN, RecordIndex
 from firmware_bridge.recording import NO_END, open_mfr
 from firmware_bridge.recording_header import Header, RecordingError, encode_header
-from firmware_bridge.trace import Gap
 from firmware_bridge.writer import Writer
 
 SLOTS, RATE_HZ = 10, 100.0

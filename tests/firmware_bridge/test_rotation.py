@@ -12,11 +12,11 @@ from firmware_bridge.announcement import Announcement, ChannelInfo, encode_annou
 from firmware_bridge.envelope import Unwrapper
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.frame import encode_frame
+from firmware_bridge.gap import Gap
 from firmware_bridge.intake import Intake
 from firmware_bridge.recorder import record
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.rotation import Rotation
-from firmware_bridge.trace import Gap
 
 
 def take(intake, data):

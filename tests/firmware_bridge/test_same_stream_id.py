@@ -9,11 +9,11 @@ from firmware_bridge.announcement import Announcement, ChannelInfo, encode_annou
 from firmware_bridge.decoder import Decoder, Discarded, Gap, Samples
 from firmware_bridge.envelope import Unwrapper
 from firmware_bridge.frame import encode_frame
+from firmware_bridge.gap import Gap as GridGap
 from firmware_bridge.intake import Intake
 from firmware_bridge.live_events import LiveBlock, LiveGap
 from firmware_bridge.live_view import LiveView
 from firmware_bridge.recording import open_mfr
-from firmware_bridge.trace import Gap as GridGap
 
 SLOTS, RATE_HZ, STREAM = 10, 1000.0, 7
 

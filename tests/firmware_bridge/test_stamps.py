@@ -1,8 +1,8 @@
 import numpy as np
 import pytest
 
+from firmware_bridge.gap import Gap
 from firmware_bridge.stamps import StampsError, fit_grid
-from firmware_bridge.trace import Gap
 
 K = np.arange(2000)
 

@@ -3,7 +3,7 @@ import pytest
 
 from firmware_bridge import open_recording
 from firmware_bridge.errors import BridgeError
-from firmware_bridge.trace import Gap
+from firmware_bridge.gap import Gap
 
 K = np.arange(100)
 

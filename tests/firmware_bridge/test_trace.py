@@ -1,7 +1,9 @@
 import numpy as np
 import pytest
 
-from firmware_bridge.trace import Channel, ChannelError, Recording, Span, SpanError
+from firmware_bridge.channel import Channel, ChannelError
+from firmware_bridge.span import Span, SpanError
+from firmware_bridge.trace import Recording
 
 
 class Ramp(Recording):

@@ -112,8 +112,8 @@ def test_samples_that_were_never_sent_are_seen(recorded):
 
 
 def test_a_gap_that_is_told_wrongly_is_seen(recorded, monkeypatch):
+    from firmware_bridge.gap import Gap
     from firmware_bridge.recording import MfrRecording
-    from firmware_bridge.trace import Gap
 
     place = MfrRecording._place
 

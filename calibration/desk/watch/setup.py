@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 from calibration.desk.watch.fringe import Fringe
 from calibration.desk.watch.stated_fringe import expected_fringe, known_dark
 from calibration.expected_noise import ExpectedNoise, bench_as_measured, expected_noise
-from firmware_bridge.trace import Channel
+from firmware_bridge.channel import Channel
 from metro.drive import terminal_factor
 from metro.errors import MetroError
 

@@ -17,7 +17,7 @@ from metro.expectation import expect
 from metro.output import to_json
 
 RATE_HZ = 4000.0
-SAMPLE = Path(calibration.__file__).parents[1] / "tests/calibration/samples/calibration-1.json"
+SAMPLE = Path(__file__).parent / "samples" / "calibration-1.json"
 
 
 @pytest.fixture(scope="module")

@@ -9,7 +9,8 @@ from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
 from calibration.found_extremes import Level
-from calibration.fringe_count import FringeCount, Pass, count_fringes
+from calibration.fringe_count import FringeCount, count_fringes
+from calibration.fringe_pass import Pass
 from calibration.fringe_shape import FringeShape, fringe_shape
 from calibration.passes import number_passes
 from calibration.ruler import Ruler

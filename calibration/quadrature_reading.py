@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from calibration.fringe_count import Pass
+from calibration.fringe_pass import Pass
 from calibration.lines import fit_lines_si
 from calibration.quadrature import QuadraturePhase, quadrature_phase
 from calibration.route import in_metres

@@ -1,0 +1,141 @@
+"""Passes of a swept mirror: the stretches in which it went one way, with their fringes."""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.envelope import running_median
+from calibration.turning_points import turning_points
+from calibration.unfolding import Unfolded, slow_spots
+
+__all__ = ["Pass", "cut_passes", "end_u"]
+
+FloatArray = NDArray[np.float64]
+
+_TURN_BAND_RAD = math.pi  # a way back of less than half a fringe is vibration, not a new pass
+_END_BAND_RAD = 1.0  # nor is a shorter one at an end of the record
+_HIDDEN = 0.16  # fringes: 28° there and back
+_LAW_U = 0.005  # fringes: what a harmonic of 3 % in the law moves the phase by
+
+
+@dataclass(frozen=True)
+class Pass:
+    """A stretch in which the mirror went one way.
+
+    Attributes
+    ----------
+    start_index, stop_index : int
+        Samples of the record, the last one included.
+    fringes : float
+        Fringes gone through, > 0.
+    fringes_u : float
+        Standard uncertainty.
+    direction : int
+        1 with the drive, −1 against it, 0 where unknown.
+    fastest : float
+        Fringes per sample where it went fastest.
+    """
+
+    start_index: int
+    stop_index: int
+    fringes: float
+    fringes_u: float
+    direction: int
+    fastest: float
+
+
+def end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
+    """Return the standard uncertainty of the phase at some samples.
+
+    Parameters
+    ----------
+    got : Unfolded
+        Phase and turns.
+    places : ndarray of int, shape (k,)
+        Samples.
+
+    Returns
+    -------
+    ndarray, shape (k,)
+        In fringes.
+    """
+    angle = np.abs(np.sin(got.phase_rad[places]))
+    cosine_u = math.hypot(got.cosine_u, 0.01)  # the extremes, too, are known to about 1 %
+    near = np.minimum(cosine_u / np.maximum(angle, 1e-9), math.sqrt(2.0 * cosine_u))
+    # within the band of an extreme the side is not known, nor where the extreme may lie between samples
+    hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0)) + 0.6 * _steps(got)[places]
+    folded = np.arcsin(np.minimum(angle, 1.0))
+    near = np.where(folded < hidden, np.hypot(near, folded), near)
+    return np.hypot(near / (2.0 * math.pi), _LAW_U)
+
+
+def _steps(got: Unfolded) -> FloatArray:
+    """Return the phase step about each sample [rad], over several half fringes."""
+    count = len(got.phase_rad)
+    if len(got.turns) < 3:
+        return np.zeros(count)
+    legs = running_median(np.diff(got.turns).astype(float), 5)
+    middles = 0.5 * (got.turns[1:] + got.turns[:-1])
+    return np.asarray(np.interp(np.arange(count), middles, math.pi / np.maximum(legs, 1.0)))
+
+
+def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass]:
+    """Cut the phase where the mirror turned.
+
+    Parameters
+    ----------
+    got : Unfolded
+        Phase and turns.
+    first : int
+        Number of the first sample in the record it came from.
+    drive : ndarray, shape (n,), or None
+        What moves the mirror, beside the phase.
+
+    Returns
+    -------
+    list of Pass
+        In order.
+    """
+    phase = got.phase_rad
+    turns = turning_points(phase, _TURN_BAND_RAD)
+    while len(turns) and abs(phase[turns[0]] - phase[0]) < _END_BAND_RAD:
+        turns = turns[1:]
+    while len(turns) and abs(phase[turns[-1]] - phase[-1]) < _END_BAND_RAD:
+        turns = turns[:-1]
+    ends = np.concatenate([[0], turns, [len(phase) - 1]])
+    u = end_u(got, ends)
+    # where the mirror turns next to an extreme, the way beyond the extreme may be taken for one back
+    hidden = math.acos(1.0 - min(2.0 * got.band, 1.0)) / (2.0 * math.pi)
+    if drive is None:  # then a turn that far from an extreme is taken for going over it
+        hidden = max(hidden, _HIDDEN)
+    u[1:-1] = np.hypot(u[1:-1], np.maximum(hidden, 0.5 * _steps(got)[turns] / (2.0 * math.pi)))
+    spots = slow_spots(got.turns, len(phase))
+    out = []
+    for k in range(len(ends) - 1):
+        start, stop = int(ends[k]), int(ends[k + 1])
+        unseen = np.count_nonzero((spots > start) & (spots < stop)) if drive is None else 0
+        way = float(phase[stop] - phase[start])
+        direction = 0 if drive is None else int(np.sign(way))
+        out.append(
+            Pass(
+                start + first,
+                stop + first,
+                abs(way) / (2.0 * math.pi),
+                math.hypot(u[k], u[k + 1]) + _HIDDEN * unseen,
+                direction,
+                _fastest_of(got, start, stop),
+            )
+        )
+    return out
+
+
+def _fastest_of(got: Unfolded, start: int, stop: int) -> float:
+    """Return the greatest fringes per sample between two samples, over four half fringes each."""
+    turns = got.turns[(got.turns >= start) & (got.turns <= stop)]
+    if len(turns) < 2:
+        span = abs(float(got.phase_rad[stop] - got.phase_rad[start])) / (2.0 * math.pi)
+        return span / max(stop - start, 1)
+    over = min(4, len(turns) - 1)
+    return float(np.max(0.5 * over / (turns[over:] - turns[:-over])))

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 from firmware_bridge.errors import BridgeError
 
-__all__ = ["Channel", "ChannelError", "find_channel"]
+__all__ = ["Channel", "ChannelError", "find_channel", "listed"]
 
 
 class ChannelError(BridgeError):
@@ -63,8 +63,8 @@ def find_channel(name: str, channels: Sequence[Channel], columns: Sequence[int],
     found = [k for k, channel in enumerate(channels) if channel.name == wanted]
     if len(found) != 1:
         what = "more than one channel" if found else "no channel"
-        listed = _listed(channels, columns)
-        raise ChannelError(f"{path} has {what} named {wanted!r}; it has {listed}")
+        has = listed(channels, columns)
+        raise ChannelError(f"{path} has {what} named {wanted!r}; it has {has}")
     return found[0]
 
 
@@ -74,11 +74,25 @@ def _find_column(
     if number not in columns:
         raise ChannelError(
             f"{path}: column {number} is no channel (columns count from 1, the time "
-            f"column included); it has {_listed(channels, columns)}"
+            f"column included); it has {listed(channels, columns)}"
         )
     return columns.index(number)
 
 
-def _listed(channels: Sequence[Channel], columns: Sequence[int]) -> str:
+def listed(channels: Sequence[Channel], columns: Sequence[int]) -> str:
+    """Return the channels with their column numbers, for messages.
+
+    Parameters
+    ----------
+    channels : sequence of Channel
+        All of them.
+    columns : sequence of int
+        The column number of each.
+
+    Returns
+    -------
+    str
+        One line.
+    """
     named = zip(columns, channels, strict=True)
     return ", ".join(f"{column} {channel.name!r}" for column, channel in named)

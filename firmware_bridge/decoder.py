@@ -10,7 +10,6 @@ from typing import Any
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import Announcement, parse_announcement
-from firmware_bridge.cobs import encode
 from firmware_bridge.envelope import Discarded, Unwrapper, seal
 from firmware_bridge.frame import HEADER, OVER_RANGE
 from firmware_bridge.gap import Gap
@@ -238,7 +237,11 @@ class Decoder:
         """
         kind, version = message[0], message[1]
         if version != WIRE_VERSION:
-            return [_refused(message, f"wire version {version}; this program knows {WIRE_VERSION}")]
+            return [
+                Discarded.message(
+                    message, f"wire version {version}; this program knows {WIRE_VERSION}"
+                )
+            ]
         try:
             if kind == MessageType.SAMPLES:
                 frames = self.admit(parse_samples(message), message)
@@ -250,8 +253,8 @@ class Decoder:
             if kind in _BESIDE:
                 return [parse_message(message)]
         except MessageError as error:
-            return [_refused(message, str(error))]
-        return [_refused(message, f"unknown message type {kind:#04x}")]
+            return [Discarded.message(message, str(error))]
+        return [Discarded.message(message, f"unknown message type {kind:#04x}")]
 
     def place(self, frame: Samples, message: bytes) -> list[Event]:
         """Return what comes out when one parsed frame is put into its place.
@@ -354,10 +357,6 @@ def _follows(frame: Samples, before: Samples) -> bool:
     """Return whether two frames that lie behind are the beginning of one new counting."""
     ahead = frame.index - before.index
     return frame.stream == before.stream and 0 < ahead <= _AHEAD * max(1, len(before.data))
-
-
-def _refused(message: bytes, reason: str) -> Discarded:
-    return Discarded(len(encode(message)), reason)
 
 
 assert _HEADER.size == HEADER.itemsize  # noqa: S101  # one layout, written twice for speed

@@ -44,6 +44,24 @@ class Discarded:
     count: int
     reason: str
 
+    @classmethod
+    def message(cls, message: bytes, reason: str) -> "Discarded":
+        """Return a whole message as it is thrown away.
+
+        Parameters
+        ----------
+        message : bytes
+            Content and CRC.
+        reason : str
+            Why, in words.
+
+        Returns
+        -------
+        Discarded
+            As long as the message was on the wire.
+        """
+        return cls(len(encode(message)), reason)
+
 
 def seal(content: bytes) -> bytes:
     """Return ``content`` with its CRC-32 behind it.

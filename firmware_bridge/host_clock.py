@@ -2,7 +2,7 @@
 
 from firmware_bridge.host_note import Stamp
 
-__all__ = ["ARRIVAL_U_S", "HostClock"]
+__all__ = ["ARRIVAL_U_S", "HostClock", "missing_before"]
 
 ARRIVAL_U_S = 0.05 / 3**0.5
 """Standard uncertainty of a frame's arrival: half a system tick and a driver's buffering, ±50 ms at
@@ -95,3 +95,23 @@ class HostClock:
         (stream, end, clock), (monotonic_ns, unix_ns) = self._mark, self._last_ns
         self._stamped_ns = self.now_ns[0]
         return Stamp(unix_ns, monotonic_ns, stream, end, clock)
+
+
+def missing_before(length: int, since_s: float, rate_hz: float) -> int:
+    """Return how many samples are missing before a stream, as the host's clock tells.
+
+    Parameters
+    ----------
+    length : int
+        Samples of its first frame, which has just come.
+    since_s : float
+        How long ago the last samples before it came [s].
+    rate_hz : float
+        Samples per second of the host's time.
+
+    Returns
+    -------
+    int
+        0 or more.
+    """
+    return max(0, round(since_s * rate_hz) - length)

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from firmware_bridge.mask_runs import mask_runs
 from firmware_bridge.overview import overview_of
 from metro.extras import require
 
@@ -88,7 +89,7 @@ def _mark_missing(axes: Any, overview: Overview, number: int) -> None:  # noqa: 
         return
     axes.set_ylim(axes.get_ylim())  # kept: the strip has coordinates of its own
     share = missing / overview.samples
-    for start, stop in _runs(share == 1.0):
+    for start, stop in mask_runs(share == 1.0):
         axes.axvspan(edges[start], edges[stop], color=_VERMILION, alpha=0.25, linewidth=0)
     strip = np.where(share > 0, np.maximum(share, _FAINTEST), 0.0)
     axes.pcolormesh(
@@ -107,12 +108,6 @@ def _draw_clock(axes: Any, host_s: NDArray[np.float64], board_s: NDArray[np.floa
     axes.set(xlabel="host's time / s", ylabel="board − host / ms")
     axes.set_title("the board's clock against the host's", fontsize=8, loc="right", color=_GREY)
     axes.grid(linewidth=0.3, alpha=0.6)
-
-
-def _runs(marked: NDArray[np.bool_]) -> list[tuple[int, int]]:
-    """Return the first and the one-past-last position of each run of True."""
-    steps = np.diff(np.concatenate(([False], marked, [False])).astype(np.int8))
-    return list(zip(np.flatnonzero(steps > 0), np.flatnonzero(steps < 0), strict=True))
 
 
 def _wrapped(text: str) -> str:

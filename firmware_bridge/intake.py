@@ -273,9 +273,14 @@ class Intake:
 
 def _parsed(message: bytes) -> Samples | LockIn:
     """Return what is in a samples frame or a lock-in result."""
-    piece = parse_samples(message) if message[0] == MessageType.SAMPLES else parse_message(message)
-    assert isinstance(piece, Samples | LockIn)  # noqa: S101  # the type byte says so
-    length = len(piece.data) if isinstance(piece, Samples) else piece.length
+    piece: Samples | LockIn
+    if message[0] == MessageType.SAMPLES:
+        piece = parse_samples(message)
+        length = len(piece.data)
+    else:
+        result = parse_message(message)
+        assert isinstance(result, LockIn)  # noqa: S101  # the type byte says so
+        piece, length = result, result.length
     if piece.index + length > _INDEX_MAX:
         raise MessageError(f"an index beyond any board's ({piece.index})")
     return piece

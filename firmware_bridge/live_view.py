@@ -5,6 +5,7 @@ from collections.abc import Callable
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.decoder import Decoder, Event, Samples
 from firmware_bridge.gap import Gap
+from firmware_bridge.host_clock import missing_before
 from firmware_bridge.live_events import LiveEvent, LiveGap, block_of, channels_of
 from firmware_bridge.message import MessageError, MessageType
 
@@ -114,7 +115,7 @@ class LiveView:
         missing = 0
         if self._last_ns:
             rate_hz = announcement.rate_hz * announcement.speed
-            elapsed = round((monotonic_ns - self._last_ns) * 1e-9 * rate_hz)
-            missing = max(0, elapsed - len(frame.data))
+            since_s = (monotonic_ns - self._last_ns) * 1e-9
+            missing = missing_before(len(frame.data), since_s, rate_hz)
             self._emit(LiveGap(self._reached, missing, exact=False))
         self._origin[frame.stream] = self._reached + missing - frame.index

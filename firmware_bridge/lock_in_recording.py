@@ -15,6 +15,7 @@ from firmware_bridge.channel import Channel
 from firmware_bridge.gap import Gap
 from firmware_bridge.gap_reason import counted
 from firmware_bridge.host_note import End, Join, Pieces, Stamp, parse_host_note
+from firmware_bridge.mask_runs import mask_runs
 from firmware_bridge.message import LockIn, MessageError, MessageType, parse_message
 from firmware_bridge.record_file import RecordFile
 from firmware_bridge.recording import NO_END
@@ -93,7 +94,7 @@ class LockInRecording(Recording):
             rate_hz=announced.rate_hz / max(1, length),
             channels=channels,
             length=count,
-            gaps=_gaps(missing),
+            gaps=[Gap(start, stop - start) for start, stop in mask_runs(missing)],
             remarks=self._say(length / announced.rate_hz),
             start_unix_s=self._started(),
         )
@@ -203,8 +204,3 @@ def _phasors(rows: NDArray[Any], step: int) -> NDArray[np.complex128]:
     turns = np.array([step * int(origin) % 2**32 for origin in np.unique(rows["origin"])])
     turn = turns[np.unique(rows["origin"], return_inverse=True)[1]]
     return np.asarray(2 * sums / size * np.exp(2j * pi * turn / 2**32))
-
-
-def _gaps(missing: NDArray[np.bool_]) -> list[Gap]:
-    edges = np.flatnonzero(np.diff(np.concatenate(([False], missing, [False])).astype(np.int8)))
-    return [Gap(int(a), int(b - a)) for a, b in edges.reshape(-1, 2)]

@@ -4,7 +4,6 @@ from bisect import bisect_right
 from collections import deque
 from typing import Generic, TypeVar
 
-from firmware_bridge.cobs import encode
 from firmware_bridge.envelope import Discarded
 from firmware_bridge.gap import Gap
 
@@ -165,9 +164,9 @@ class StreamOrder(Generic[T]):
 
 
 def _duplicate(message: bytes, index: int) -> Discarded:
-    return Discarded(len(encode(message)), f"duplicate of the frame at index {index}")
+    return Discarded.message(message, f"duplicate of the frame at index {index}")
 
 
 def _conflict(message: bytes, index: int) -> Discarded:
     reason = f"other samples for index {index}, which has been received"
-    return Discarded(len(encode(message)), reason)
+    return Discarded.message(message, reason)

@@ -20,7 +20,7 @@ from typing import TYPE_CHECKING, Any, TypeVar, overload
 
 import click
 
-from firmware_bridge.channel import ChannelError
+from firmware_bridge.channel import ChannelError, listed
 from metro.options import ValueType, is_quiet
 
 if TYPE_CHECKING:
@@ -156,8 +156,8 @@ class Reading:
         usual = [k for k, name in enumerate(names) if name.lower() in _USUAL]
         if len(usual) == 1:
             return str(recording.columns[usual[0]])
-        listed = ", ".join(f"{k} {n!r}" for k, n in zip(recording.columns, names, strict=True))
-        raise ChannelError(f"{recording.path} has several channels; give --channel: {listed}")
+        has = listed(recording.channels, recording.columns)
+        raise ChannelError(f"{recording.path} has several channels; give --channel: {has}")
 
     def signal(self, recording: "Recording") -> "Trace":
         """Return the photodiode's trace over the stretch asked for.

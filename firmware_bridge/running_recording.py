@@ -4,10 +4,9 @@ from typing import TYPE_CHECKING
 
 from firmware_bridge.announced_frame import is_alike
 from firmware_bridge.announcement import Announcement
-from firmware_bridge.cobs import encode
 from firmware_bridge.discard_tally import DiscardTally
 from firmware_bridge.envelope import Discarded
-from firmware_bridge.host_clock import ARRIVAL_U_S, HostClock
+from firmware_bridge.host_clock import ARRIVAL_U_S, HostClock, missing_before
 from firmware_bridge.host_note import End, Join, Remark
 from firmware_bridge.recording_files import RecordingFiles
 from firmware_bridge.recording_grid import RecordingGrid
@@ -69,7 +68,7 @@ class RunningRecording:
         reason : str
             Why.
         """
-        self.discard(Discarded(len(encode(message)), reason))
+        self.discard(Discarded.message(message, reason))
 
     def stamp(self) -> None:
         """Write when the last samples came, if there is a file and any came."""
@@ -145,8 +144,8 @@ class RunningRecording:
             pause = self.pauses.pop(stream)
             return reached + pause.length, pause.length_u
         rate_hz = announcement.rate_hz * announcement.speed
-        elapsed = round(self.clock.since_s * rate_hz)
-        return max(reached, reached + elapsed - length), ARRIVAL_U_S * 2**0.5 * rate_hz
+        missing = missing_before(length, self.clock.since_s, rate_hz)
+        return reached + missing, ARRIVAL_U_S * 2**0.5 * rate_hz
 
     def _join(self, stream: int, index: int, place: int, place_u: float) -> None:
         self.grid.join(stream, index, place)

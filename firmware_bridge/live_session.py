@@ -1,11 +1,8 @@
 """A port held by a process of its own: look on, record and drive without ever being in its way."""
 
-import signal
-from multiprocessing import get_context
-from multiprocessing.connection import Connection
 from pathlib import Path
 from types import TracebackType
-from typing import TYPE_CHECKING, Self
+from typing import Self
 
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines
 from firmware_bridge.errors import BridgeError
@@ -18,10 +15,9 @@ from firmware_bridge.live_events import (
     LiveReply,
     LiveState,
 )
-from firmware_bridge.live_process import LiveOptions, Order, hold_port
-
-if TYPE_CHECKING:
-    from multiprocessing.context import SpawnProcess
+from firmware_bridge.live_process import LiveOptions, Order
+from firmware_bridge.port_process import PortProcess
+from firmware_bridge.recording_name import recording_in
 
 __all__ = [
     "LiveBlock",
@@ -32,11 +28,9 @@ __all__ = [
     "LiveReply",
     "LiveSession",
     "LiveState",
-    "recording_in",
 ]
 
-_CLOSE_S = 10.0
-_AT_ONCE = 64  # messages of one poll, so that it returns even if they come as fast as it takes them
+_LAST = ("failed", "closed")
 
 
 class LiveSession:
@@ -78,8 +72,7 @@ class LiveSession:
     ) -> None:
         self._options = LiveOptions(port, baud, text, reconnect, drive_limit_v, terminal_factor)
         self._folder = Path(folder)
-        self._connection: Connection | None = None
-        self._process: SpawnProcess | None = None
+        self._process = PortProcess(self._options)
 
     def start(self) -> Self:
         """Start the process that holds the port; what it finds there comes by `poll`.
@@ -89,42 +82,12 @@ class LiveSession:
         LiveSession
             Itself.
         """
-        if self._process is not None:
-            return self
-        context = get_context("spawn")
-        ours, theirs = context.Pipe()
-        process = context.Process(
-            target=hold_port, args=(theirs, self._options), name="midfringe port", daemon=True
-        )
-        # Ctrl-C at the terminal reaches every process of it; this one is closed by its parent.
-        blocked = _block_interrupt()
-        try:
-            process.start()
-        finally:
-            _restore_interrupt(blocked)
-        theirs.close()
-        self._connection, self._process = ours, process
+        self._process.start()
         return self
 
     def close(self) -> None:
         """Bring the drive to rest, end the recording, give the port back."""
-        process, connection = self._process, self._connection
-        self._process = self._connection = None
-        if process is None or connection is None:
-            return
-        _send(connection, Order("close"))
-        for _ in range(round(_CLOSE_S / 0.05)):
-            _taken(connection)  # what still waits for us would keep the process from ending
-            process.join(0.05)
-            if process.exitcode is not None:
-                break
-        else:
-            process.terminate()
-            process.join(_CLOSE_S)
-            if process.exitcode is None:  # else the end of this program would wait for it
-                process.kill()
-                process.join(_CLOSE_S)
-        connection.close()
+        self._process.close()
 
     def __enter__(self) -> Self:
         return self.start()
@@ -140,7 +103,7 @@ class LiveSession:
     @property
     def is_running(self) -> bool:
         """Whether the process that holds the port is there."""
-        return self._process is not None and self._process.is_alive()
+        return self._process.is_running
 
     def poll(self) -> list[LiveEvent]:
         """Return what has happened since the last time, without waiting.
@@ -150,14 +113,9 @@ class LiveSession:
         list of LiveEvent
             In order; perhaps not yet all of it, if very much has happened.
         """
-        if self._connection is None:
-            return []
-        events, is_ended = _taken(self._connection)
-        if is_ended:
-            self._connection.close()
-            self._connection = None
-            if not any(isinstance(e, LiveState) and e.state in _LAST for e in events):
-                events.append(LiveState("failed", "the process that held the port has ended"))
+        events, is_ended = self._process.taken()
+        if is_ended and not any(isinstance(e, LiveState) and e.state in _LAST for e in events):
+            events.append(LiveState("failed", "the process that held the port has ended"))
         return events
 
     def start_recording(self, name: str) -> Path:
@@ -229,69 +187,5 @@ class LiveSession:
         self._order(Order("rest"))
 
     def _order(self, order: Order) -> None:
-        if self._connection is None or not _send(self._connection, order):
+        if not self._process.send(order):
             raise BridgeError(f"the process that held {self._options.port} has ended")
-
-
-_LAST = ("failed", "closed")
-
-
-def recording_in(folder: Path, name: str) -> Path:
-    """Return where a recording of a plain name goes.
-
-    Parameters
-    ----------
-    folder : Path
-        Where recordings go.
-    name : str
-        Such as ``run.mfr``.
-
-    Returns
-    -------
-    Path
-        Inside the folder.
-
-    Raises
-    ------
-    BridgeError
-        If the name could lead anywhere else, is no recording's, or is taken.
-    """
-    is_plain = name == Path(name).name and not set(name) & set('/\\:*?"<>|') and name.isprintable()
-    if not is_plain or name.startswith(".") or not name.lower().endswith(".mfr"):
-        raise BridgeError(f"name must be a plain file name NAME.mfr, got {name!r}")
-    path = folder / name
-    if path.exists() or path.is_symlink():
-        raise BridgeError(f"{name} exists already in {folder}")
-    return path
-
-
-def _send(connection: Connection, order: Order) -> bool:
-    try:
-        connection.send(order)
-    except (OSError, ValueError):
-        return False
-    return True
-
-
-def _taken(connection: Connection) -> tuple[list[LiveEvent], bool]:
-    """Return what has come, and whether nothing will come any more."""
-    events: list[LiveEvent] = []
-    try:
-        for _ in range(_AT_ONCE):
-            if not connection.poll(0):
-                return events, False
-            events += connection.recv()
-    except (EOFError, OSError):
-        return events, True
-    return events, False
-
-
-def _block_interrupt() -> set[int] | None:
-    if not hasattr(signal, "pthread_sigmask"):
-        return None
-    return set(signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT}))
-
-
-def _restore_interrupt(before: set[int] | None) -> None:
-    if before is not None:
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)

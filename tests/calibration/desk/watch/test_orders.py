@@ -11,7 +11,7 @@ from calibration.desk.watch.setup import WatchSetup
 from calibration.desk.watch.state import WatchState
 from firmware_bridge.announcement import ChannelInfo
 from firmware_bridge.live_events import LiveChannels, LiveReply, LiveState
-from firmware_bridge.live_session import recording_in
+from firmware_bridge.recording_name import recording_in
 from metro.bench import Bench
 from metro.measured import Measured
 

@@ -2,11 +2,14 @@
 
 from firmware_bridge.host_note import Stamp
 
-__all__ = ["ARRIVAL_U_S", "HostClock", "missing_before"]
+__all__ = ["ARRIVAL_U_S", "ELAPSED_U_S", "HostClock", "missing_before"]
 
 ARRIVAL_U_S = 0.05 / 3**0.5
-"""Standard uncertainty of a frame's arrival: half a system tick and a driver's buffering, ±50 ms at
+"""Standard uncertainty of an arrival [s]: half a system tick and a driver's buffering, ±50 ms at
 most, rectangular. Our estimate."""
+
+ELAPSED_U_S = ARRIVAL_U_S * 2**0.5
+"""Standard uncertainty of the time between two arrivals [s]."""
 
 _STAMP_NS = 2_000_000_000
 

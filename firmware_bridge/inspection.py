@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.gap_reason import counted, gap_reason
+from firmware_bridge.host_clock import ARRIVAL_U_S
 from firmware_bridge.lock_in_recording import LockInRecording
 from firmware_bridge.recording import NO_END, MfrRecording
 from firmware_bridge.suspicions import Codes, Repetition, StuckRuns
@@ -17,7 +18,6 @@ __all__ = ["ChannelState", "ClockState", "Inspection", "inspect_recording"]
 _CLOCK_LIMIT = 1e-3  # a crystal is within 1e-4; what is worse costs amplitude in every line fit
 _CLOCK_SPAN_S = 10.0  # below it the stamps' jitter drowns any offset
 _BLOCK, _LEAST_BLOCK = 64, 16  # samples looked at for repetition
-_STAMP_U_S = 0.05 / 3**0.5  # a frame's arrival, ±50 ms at most, rectangular: our estimate
 
 
 @dataclass(frozen=True, slots=True)
@@ -238,7 +238,7 @@ def _slope(x: NDArray[np.float64], y: NDArray[np.float64]) -> tuple[float, float
     slope = float(x @ y) / weight
     scatter = float(np.sum((y - slope * x) ** 2)) / (x.size - 2)
     # Few stamps may agree by chance: the scatter is taken no smaller than what a stamp is good for.
-    return slope, math.sqrt(max(scatter, _STAMP_U_S**2 / x.size) / weight)
+    return slope, math.sqrt(max(scatter, ARRIVAL_U_S**2 / x.size) / weight)
 
 
 def _reasons(

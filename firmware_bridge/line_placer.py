@@ -1,49 +1,22 @@
 """Lines to their places on the grid as they arrive: what is missing, what is only late."""
 
-from dataclasses import dataclass
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["LinePlacer", "PlacedLines"]
+from firmware_bridge.host_clock import ELAPSED_U_S
+from firmware_bridge.placed_lines import PlacedLines
+from firmware_bridge.stamp_step import StampStep
+
+__all__ = ["LinePlacer"]
 
 _AHEAD_LINES = 64  # lines within which late stamps must have caught up
 _AHEAD_S = 0.5  # … or this long, and a few lines
 _AHEAD_FEW = 3
-_TRACKED = 8  # lines over which the phase of the stamps is averaged
-_REFINED = 256  # lines from which on their own stamps tell the step better than the first seconds
 _LONG = 20  # samples: a pause and not lost lines
 _SURE = 0.1  # samples: a gap known better than this has an exact length
 _CLOCK_SET_S = 2.0  # a board's clock that leaves the host's by more was set or started anew
-_ARRIVAL_U_S = 0.05 / 3**0.5 * 2**0.5
-"""Standard uncertainty of the time between two arrivals: ±50 ms each at most, rectangular. Our
-estimate."""
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class PlacedLines:
-    """Lines without a gap between them.
-
-    Parameters
-    ----------
-    rows : ndarray, shape (n, columns)
-        Their numbers.
-    stamps_s, arrivals_s : ndarray, shape (n,)
-        By the board's clock and by the host's.
-    missing : int
-        Samples missing before them.
-    missing_u : float
-        Standard uncertainty of ``missing``; 0 where it is exact.
-    is_restart : bool
-        True where the board's clock began anew, so that the host's tells ``missing``.
-    """
-
-    rows: NDArray[np.float64]
-    stamps_s: NDArray[np.float64]
-    arrivals_s: NDArray[np.float64]
-    missing: int = 0
-    missing_u: float = 0.0
-    is_restart: bool = False
 
 
 class LinePlacer:
@@ -71,31 +44,26 @@ class LinePlacer:
     def __init__(
         self, step_s: float, step_u: float, scatter_s: float, least: int = 1, by_host: bool = False
     ) -> None:
-        self._step_s, self._step_u, self._scatter_s = step_s, step_u, scatter_s
+        self._step = StampStep(step_s, step_u, scatter_s)
         self._least, self._by_host = least, by_host
         self._held: PlacedLines | None = None
-        self._at_s: float | None = None  # the stamp, smoothed, of the last line placed
-        self._since = (0.0, 0)  # stamp where the present stretch began, and samples since
         self._arrived_s = 0.0  # of the last line placed
         self._was_away = False
         self.late_lines = 0
         """Lines whose stamps were late, and that were put back."""
         self.worst_late_s = 0.0
         """By how much the latest of them."""
-        self._square, self._counted = 0.0, 0
 
     @property
     def scatter_s(self) -> float:
         """Rms scatter of the stamps about a steady step so far [s]."""
-        if self._counted < _REFINED:
-            return self._scatter_s
-        return float(np.sqrt(self._square / self._counted)) * self._step_s
+        return self._step.scatter_s
 
     @property
     def last_stamp_s(self) -> float | None:
         """The latest stamp, held lines included; None before the first."""
         held = self._held
-        return self._at_s if held is None else float(held.stamps_s[-1])
+        return self._step.at_s if held is None else float(held.stamps_s[-1])
 
     def away(self) -> None:
         """Take note that the port was away: lines are missing, however few."""
@@ -122,7 +90,7 @@ class LinePlacer:
             In order.
         """
         new = PlacedLines(rows, stamps_s, arrivals_s)
-        self._held = new if self._held is None else _joined(self._held, new)
+        self._held = new if self._held is None else self._held.followed_by(new)
         return self._release(float(arrivals_s[-1]) if arrivals_s.size else 0.0)
 
     def tick(self, now_s: float) -> list[PlacedLines]:
@@ -154,9 +122,9 @@ class LinePlacer:
         out = []
         while self._held is not None and self._held.rows.size:
             held = self._held
-            if self._at_s is None:
-                self._begin(float(held.stamps_s[0]))
-            ahead = self._ahead(held.stamps_s)
+            if self._step.at_s is None:
+                self._step.begin_before(float(held.stamps_s[0]))
+            ahead = self._step.ahead(held.stamps_s)
             jump, kind = self._first_jump(ahead)
             if jump:
                 out.append(self._plain(held, ahead, jump))
@@ -172,25 +140,14 @@ class LinePlacer:
         # By the host's clock any number of lines may have waited in its buffers.
         return np.inf if self._by_host else _AHEAD_LINES
 
-    def _begin(self, stamp_s: float) -> None:
-        self._at_s = stamp_s - self._step_s
-        self._since = (stamp_s, -1)
-
-    def _ahead(self, stamps_s: NDArray[np.float64]) -> NDArray[np.float64]:
-        """Return by how many samples each line is later than if none were missing."""
-        assert self._at_s is not None  # noqa: S101  # set before the first line is placed
-        step = np.arange(1, stamps_s.size + 1)
-        late: NDArray[np.float64] = (stamps_s - self._at_s) / self._step_s - step
-        return late
-
     @property
     def _back(self) -> float:
-        return -max(3.0, 1.0 / self._step_s)
+        return -max(3.0, 1.0 / self._step.step_s)
 
     @property
     def _margin(self) -> float:
         # The least of many scattered stamps is early by twice their scatter.
-        return 0.0 if self._by_host else min(2 * self.scatter_s / self._step_s, 0.35)
+        return 0.0 if self._by_host else min(2 * self.scatter_s / self._step.step_s, 0.35)
 
     def _first_jump(self, ahead: NDArray[np.float64]) -> tuple[int, str]:
         """Return the first line that may follow a gap or a restart, and which of them."""
@@ -206,37 +163,20 @@ class LinePlacer:
 
     def _plain(self, held: PlacedLines, ahead: NDArray[np.float64], count: int) -> PlacedLines:
         """Give out the first lines as they come, and follow the phase of their stamps."""
-        self._advance(ahead[:count])
+        self._step.advance(ahead[:count], 0, self._reach)
         self._arrived_s = float(held.arrivals_s[count - 1])
         return self._taken(held, count)
 
-    def _advance(self, ahead: NDArray[np.float64], missing: int = 0) -> None:
-        assert self._at_s is not None  # noqa: S101  # set before the first line is placed
-        ahead = ahead - missing
-        near = ahead[np.abs(ahead) < max(0.5, self._least - 0.5)]
-        moved = 0.0
-        if near.size:
-            mean = float(near.mean())
-            moved = mean * near.size / (near.size + _TRACKED)
-            self._square += float(np.sum((near - moved) ** 2))
-            self._counted += near.size
-        count = ahead.size + missing
-        self._at_s += (count + moved) * self._step_s
-        start_s, samples = self._since
-        self._since = (start_s, samples + count)
-        if samples + count >= _REFINED and self._at_s > start_s:
-            self._step_s = (self._at_s - start_s) / (samples + count)
-            self._step_u = 2 * self.scatter_s / (self._at_s - start_s)
+    @property
+    def _reach(self) -> float:
+        return max(0.5, self._least - 0.5)
 
     def _taken(
         self, held: PlacedLines, count: int, missing: int = 0, u: float = 0.0, restart: bool = False
     ) -> PlacedLines:
-        parts = [slice(count), slice(count, None)]
-        first, rest = (
-            (held.rows[part], held.stamps_s[part], held.arrivals_s[part]) for part in parts
-        )
-        self._held = PlacedLines(*rest) if rest[1].size else None
-        return PlacedLines(*first, missing, u, restart)
+        rest = held.part(slice(count, None))
+        self._held = rest if rest.stamps_s.size else None
+        return replace(held.part(slice(count)), missing=missing, missing_u=u, is_restart=restart)
 
     def _after_jump(self, held: PlacedLines, ahead: NDArray[np.float64], kind: str) -> PlacedLines:
         """Place the first line held, now that enough of those behind it are seen."""
@@ -252,46 +192,49 @@ class LinePlacer:
             # What is late now has caught up soon after: the line waited in a buffer.
             self._note_late(float(ahead[0]))
             return self._one(held, ahead, 0, 0.0)
-        gap_s = missing * self._step_s
+        return self._after_gap(held, ahead, missing)
+
+    def _after_gap(
+        self, held: PlacedLines, ahead: NDArray[np.float64], missing: int
+    ) -> PlacedLines:
+        """Place the first line held behind a gap of the stamps, if the host's clock saw it too."""
+        gap_s = missing * self._step.step_s
         elapsed_s = float(held.arrivals_s[0]) - self._arrived_s
         if not self._by_host and gap_s > 1.1 * elapsed_s + _CLOCK_SET_S:
             return self._restarted(held)
         self._was_away = False
-        own_u = _ARRIVAL_U_S if self._by_host else 1.5 * self.scatter_s
-        u = float(np.hypot(own_u / self._step_s, missing * self._step_u))
-        if missing > _LONG and not self._by_host:
-            # A long pause need not be a whole number of samples: what is left over is uncertain.
-            u = max(u, abs(float(ahead[0]) - missing))
+        u = self._gap_u(missing, float(ahead[0]) - missing)
         if not self._by_host and u < _SURE:
             return self._one(held, ahead, missing, 0.0)
         placed = self._one(held, ahead, missing, u)
-        self._at_s, self._since = float(placed.stamps_s[0]), (float(placed.stamps_s[0]), 0)
+        self._step.begin_at(float(placed.stamps_s[0]))
         return placed
+
+    def _gap_u(self, missing: int, left_over: float) -> float:
+        """Return the standard uncertainty of the length of a gap, in samples."""
+        own_u_s = ELAPSED_U_S if self._by_host else 1.5 * self.scatter_s
+        u = float(np.hypot(own_u_s / self._step.step_s, missing * self._step.step_u))
+        if missing > _LONG and not self._by_host:
+            # A long pause need not be a whole number of samples: what is left over is uncertain.
+            return max(u, abs(left_over))
+        return u
 
     def _note_late(self, ahead: float) -> None:
         if ahead >= 1 and not self._by_host:  # else it is mere jitter
             self.late_lines += 1
-            self.worst_late_s = max(self.worst_late_s, ahead * self._step_s)
+            self.worst_late_s = max(self.worst_late_s, ahead * self._step.step_s)
 
     def _one(
         self, held: PlacedLines, ahead: NDArray[np.float64], missing: int, u: float
     ) -> PlacedLines:
-        self._advance(ahead[:1], missing)
+        self._step.advance(ahead[:1], missing, self._reach)
         self._arrived_s = float(held.arrivals_s[0])
         return self._taken(held, 1, missing, u)
 
     def _restarted(self, held: PlacedLines) -> PlacedLines:
         elapsed_s = float(held.arrivals_s[0]) - self._arrived_s
-        missing = max(0, round(elapsed_s / self._step_s) - 1)
+        missing = max(0, round(elapsed_s / self._step.step_s) - 1)
         self._was_away = False
-        self._at_s, self._since = float(held.stamps_s[0]), (float(held.stamps_s[0]), 0)
+        self._step.begin_at(float(held.stamps_s[0]))
         self._arrived_s = float(held.arrivals_s[0])
-        return self._taken(held, 1, missing, _ARRIVAL_U_S / self._step_s, restart=True)
-
-
-def _joined(a: PlacedLines, b: PlacedLines) -> PlacedLines:
-    return PlacedLines(
-        np.concatenate((a.rows, b.rows)),
-        np.concatenate((a.stamps_s, b.stamps_s)),
-        np.concatenate((a.arrivals_s, b.arrivals_s)),
-    )
+        return self._taken(held, 1, missing, ELAPSED_U_S / self._step.step_s, restart=True)

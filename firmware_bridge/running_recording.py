@@ -6,7 +6,7 @@ from firmware_bridge.announced_frame import is_alike
 from firmware_bridge.announcement import Announcement
 from firmware_bridge.discard_tally import DiscardTally
 from firmware_bridge.envelope import Discarded
-from firmware_bridge.host_clock import ARRIVAL_U_S, HostClock, missing_before
+from firmware_bridge.host_clock import ELAPSED_U_S, HostClock, missing_before
 from firmware_bridge.host_note import End, Join, Remark
 from firmware_bridge.recording_files import RecordingFiles
 from firmware_bridge.recording_grid import RecordingGrid
@@ -145,7 +145,7 @@ class RunningRecording:
             return reached + pause.length, pause.length_u
         rate_hz = announcement.rate_hz * announcement.speed
         missing = missing_before(length, self.clock.since_s, rate_hz)
-        return reached + missing, ARRIVAL_U_S * 2**0.5 * rate_hz
+        return reached + missing, ELAPSED_U_S * rate_hz
 
     def _join(self, stream: int, index: int, place: int, place_u: float) -> None:
         self.grid.join(stream, index, place)

@@ -11,7 +11,6 @@ if TYPE_CHECKING:
     from firmware_bridge.announcement import ChannelInfo as ChannelInfo
     from firmware_bridge.announcement import encode_announcement as encode_announcement
     from firmware_bridge.decoder import Decoder as Decoder
-    from firmware_bridge.decoder import Samples as Samples
     from firmware_bridge.envelope import Discarded as Discarded
     from firmware_bridge.errors import BridgeError as BridgeError
     from firmware_bridge.errors import DeviceFailedError as DeviceFailedError
@@ -23,6 +22,7 @@ if TYPE_CHECKING:
     from firmware_bridge.opening import open_recording as open_recording
     from firmware_bridge.recorder import RecordSummary as RecordSummary
     from firmware_bridge.recorder import record as record
+    from firmware_bridge.samples_frame import Samples as Samples
     from firmware_bridge.trace import Recording as Recording
     from firmware_bridge.trace import Trace as Trace
 
@@ -38,7 +38,7 @@ _HOMES = {
     "Note": "firmware_bridge.message",
     "RecordSummary": "firmware_bridge.recorder",
     "Recording": "firmware_bridge.trace",
-    "Samples": "firmware_bridge.decoder",
+    "Samples": "firmware_bridge.samples_frame",
     "Trace": "firmware_bridge.trace",
     "encode_announcement": "firmware_bridge.announcement",
     "encode_frame": "firmware_bridge.frame",

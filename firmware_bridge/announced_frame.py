@@ -1,9 +1,9 @@
 """A sealed frame beside the announcement of its stream: whether it fits, and how it is shortened."""
 
 from firmware_bridge.announcement import Announcement
-from firmware_bridge.decoder import Samples
 from firmware_bridge.envelope import seal
 from firmware_bridge.frame import HEADER
+from firmware_bridge.samples_frame import Samples
 
 __all__ = ["fits", "is_alike", "shortened"]
 

@@ -3,13 +3,14 @@
 from collections.abc import Callable
 
 from firmware_bridge.announcement import Announcement
-from firmware_bridge.decoder import Decoder, Event, Samples
+from firmware_bridge.decoder import Decoder, Event
 from firmware_bridge.envelope import Discarded
 from firmware_bridge.gap import Gap
 from firmware_bridge.host_note import End
 from firmware_bridge.live_events import LiveBlock, block_of
 from firmware_bridge.message import LockIn
 from firmware_bridge.running_recording import RunningRecording
+from firmware_bridge.samples_frame import Samples
 
 __all__ = ["CountedSamples"]
 

@@ -3,15 +3,10 @@
 No input or output happens here, and no content raises.
 """
 
-import struct
-from dataclasses import dataclass, replace
-from typing import Any
-
-from numpy.typing import NDArray
+from dataclasses import replace
 
 from firmware_bridge.announcement import Announcement, parse_announcement
-from firmware_bridge.envelope import Discarded, Unwrapper, seal
-from firmware_bridge.frame import HEADER, OVER_RANGE
+from firmware_bridge.envelope import Discarded, Unwrapper
 from firmware_bridge.gap import Gap
 from firmware_bridge.message import (
     WIRE_VERSION,
@@ -24,7 +19,8 @@ from firmware_bridge.message import (
     parse_message,
 )
 from firmware_bridge.order import StreamOrder
-from firmware_bridge.sample_packing import unpack_samples
+from firmware_bridge.samples_frame import Samples, parse_samples, renamed
+from firmware_bridge.stream_names import StreamNames
 
 __all__ = [
     "Announcement",
@@ -37,43 +33,12 @@ __all__ = [
     "Note",
     "Reply",
     "Samples",
-    "parse_samples",
-    "renamed",
 ]
 
-_HEADER = struct.Struct("<BBHIIBBHQQHH")
 _STREAMS_KEPT = 4
 _RATES_KEPT = 64
 _AHEAD = 64  # frames between the first two that come through after a new beginning
-_OTHER_ID = 0x9E3779B9  # odd: steps through every id
 _BESIDE = (MessageType.NOTE, MessageType.COMMAND, MessageType.REPLY, MessageType.LOCK_IN)
-
-
-@dataclass(eq=False, slots=True)
-class Samples:
-    """The samples of one frame.
-
-    Parameters
-    ----------
-    index : int
-        Index of the first sample, counted by the board.
-    data : ndarray of int16 or int32, shape (n, channels)
-        Counts.
-    over_range : bool
-        True if the board flagged a sample of this frame as over-range.
-    clock : int
-        Board clock at the first sample.
-    stream, sequence, flags : int
-        As in the frame.
-    """
-
-    index: int
-    data: NDArray[Any]
-    over_range: bool
-    clock: int
-    stream: int = 0
-    sequence: int = 0
-    flags: int = 0
 
 
 Event = Samples | Gap | Discarded | Announcement | Note | Command | Reply | LockIn
@@ -103,7 +68,7 @@ class Decoder:
         self._orders: dict[int, StreamOrder[Samples]] = {}
         self._current: int | None = None
         self._rates: dict[int, float] = {}
-        self._names: dict[int, int] = {}  # stream as sent: by which id it goes since it began again
+        self._names = StreamNames()
         self._stray: tuple[Samples, bytes] | None = None
 
     def feed(self, data: bytes) -> list[Event]:
@@ -181,21 +146,18 @@ class Decoder:
         int
             One that no stream has.
         """
-        name = stream
-        while name in self._orders or name in self._names or name in self._rates:
-            name = (name + _OTHER_ID) % 2**32
         sent = self.sent_as(stream)
+        name = self._names.renew(stream, taken=self._orders.keys() | self._rates.keys())
         self._rate(name, self._rates.get(sent, 0.0))
-        self._names[sent] = name
         return name
 
     def name_of(self, stream: int) -> int:
         """Return the id by which a stream goes: as it is sent, unless it began again."""
-        return self._names.get(stream, stream)
+        return self._names.of(stream)
 
     def sent_as(self, stream: int) -> int:
         """Return the id under which the board sends a stream."""
-        return next((sent for sent, name in self._names.items() if name == stream), stream)
+        return self._names.sent_as(stream)
 
     def _rate(self, stream: int, rate_hz: float) -> None:
         self._rates[stream] = rate_hz
@@ -294,59 +256,6 @@ class Decoder:
         return events
 
 
-def parse_samples(message: bytes) -> Samples:
-    """Return the samples of one unwrapped frame.
-
-    Parameters
-    ----------
-    message : bytes
-        Content and CRC.
-
-    Returns
-    -------
-    Samples
-        What is in it.
-
-    Raises
-    ------
-    MessageError
-        If its fields do not fit each other.
-    """
-    if len(message) < _HEADER.size + 4:
-        raise MessageError(f"a samples frame of {len(message)} bytes is too short")
-    (_, _, flags, stream, sequence, channels, width, slots, index, clock, filled, _) = (
-        _HEADER.unpack_from(message)
-    )
-    room = slots * channels * width
-    if width not in (2, 3, 4) or not channels or filled > slots:
-        raise MessageError(
-            f"a samples frame with {channels} channels, format {width}, {filled} of {slots} filled"
-        )
-    if len(message) != _HEADER.size + room + 4:
-        raise MessageError(f"a samples frame of {len(message)} bytes, its header says {room + 40}")
-    end = _HEADER.size + filled * channels * width
-    data = unpack_samples(message[_HEADER.size : end], channels, width)
-    return Samples(index, data, bool(flags & OVER_RANGE), clock, stream, sequence, flags)
-
-
-def renamed(message: bytes, stream: int) -> bytes:
-    """Return a sealed samples frame or lock-in result under another stream id.
-
-    Parameters
-    ----------
-    message : bytes
-        Content and CRC.
-    stream : int
-        Stream id.
-
-    Returns
-    -------
-    bytes
-        Sealed anew.
-    """
-    return seal(message[:4] + stream.to_bytes(4, "little") + message[8:-4])
-
-
 def _under(name: int, frame: Samples, message: bytes) -> tuple[Samples, bytes]:
     if name == frame.stream:
         return frame, message
@@ -357,6 +266,3 @@ def _follows(frame: Samples, before: Samples) -> bool:
     """Return whether two frames that lie behind are the beginning of one new counting."""
     ahead = frame.index - before.index
     return frame.stream == before.stream and 0 < ahead <= _AHEAD * max(1, len(before.data))
-
-
-assert _HEADER.size == HEADER.itemsize  # noqa: S101  # one layout, written twice for speed

@@ -3,9 +3,10 @@
 from firmware_bridge.announced_frame import fits, shortened
 from firmware_bridge.announced_streams import AnnouncedStreams
 from firmware_bridge.counted_samples import CountedSamples
-from firmware_bridge.decoder import Decoder, Event, Samples
+from firmware_bridge.decoder import Decoder, Event
 from firmware_bridge.envelope import Discarded
 from firmware_bridge.running_recording import RunningRecording
+from firmware_bridge.samples_frame import Samples
 
 __all__ = ["FrameIntake"]
 

@@ -7,7 +7,7 @@ from pathlib import Path
 from firmware_bridge.announced_streams import AnnouncedStreams
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.counted_samples import CountedSamples
-from firmware_bridge.decoder import Decoder, Samples, parse_samples
+from firmware_bridge.decoder import Decoder
 from firmware_bridge.envelope import Discarded
 from firmware_bridge.frame_intake import FrameIntake
 from firmware_bridge.host_note import Remark
@@ -25,6 +25,7 @@ from firmware_bridge.recording_files import RecordingFiles
 from firmware_bridge.recording_grid import RecordingGrid
 from firmware_bridge.rotation import Rotation
 from firmware_bridge.running_recording import RunningRecording
+from firmware_bridge.samples_frame import Samples, parse_samples
 
 __all__ = ["Intake"]
 

@@ -7,8 +7,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import Announcement, ChannelInfo
-from firmware_bridge.decoder import Samples
 from firmware_bridge.drive_lines import full_scale_v
+from firmware_bridge.samples_frame import Samples
 
 __all__ = [
     "LiveBlock",

@@ -3,11 +3,12 @@
 from collections.abc import Callable
 
 from firmware_bridge.announcement import Announcement, parse_announcement
-from firmware_bridge.decoder import Decoder, Event, Samples
+from firmware_bridge.decoder import Decoder, Event
 from firmware_bridge.gap import Gap
 from firmware_bridge.host_clock import missing_before
 from firmware_bridge.live_events import LiveEvent, LiveGap, block_of, channels_of
 from firmware_bridge.message import MessageError, MessageType
+from firmware_bridge.samples_frame import Samples
 
 __all__ = ["LiveView"]
 

@@ -4,9 +4,10 @@ from dataclasses import replace
 
 from firmware_bridge.announced_streams import AnnouncedStreams
 from firmware_bridge.counted_samples import CountedSamples
-from firmware_bridge.decoder import Decoder, renamed
+from firmware_bridge.decoder import Decoder
 from firmware_bridge.message import LockIn
 from firmware_bridge.running_recording import RunningRecording
+from firmware_bridge.samples_frame import renamed
 
 __all__ = ["LockInIntake"]
 

@@ -285,12 +285,16 @@ class Budget:
         Raises
         ------
         BudgetError
-            If a key is missing.
+            If a key is missing, or a group cannot be correlated so.
         """
         try:
             contributions = [_contribution_of(item) for item in document["contributions"]]
-            return cls(contributions, document["correlations"], document["unit"])
-        except (KeyError, TypeError) as error:
+            correlations = document["correlations"]
+            for label, correlation in correlations.items():
+                members = sum(item.group == label for item in contributions)
+                correlation_matrix(label, members, correlation)
+            return cls(contributions, correlations, document["unit"])
+        except (KeyError, TypeError, AttributeError) as error:
             raise BudgetError(f"not a budget: {type(error).__name__} {error}") from None
 
 

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, example, given, settings
 from hypothesis import strategies as st
 from jsonschema import Draft202012Validator
 from sessions import built_in_bench, play
@@ -157,6 +157,8 @@ ANYTHING = st.recursive(
     max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
 )
 @given(path=st.sampled_from(PLACES), value=ANYTHING | st.just(KeyError))
+@example(path=("actuator", 1, "budget", "correlations"), value={"": [None]})
+@example(path=("actuator", 1, "budget", "correlations"), value={"": [[1.0, 0.5], [0.5]]})
 def test_any_change_is_read_or_refused_in_one_line(tmp_path, path, value):
     file = tmp_path / "fuzz.json"
     file.write_text(json.dumps(changed(path, value)), encoding="utf-8")

@@ -115,12 +115,13 @@ def test_a_gap_that_is_told_wrongly_is_seen(recorded, monkeypatch):
     from firmware_bridge.gap import Gap
     from firmware_bridge.recording import MfrRecording
 
-    place = MfrRecording._place
+    place = MfrRecording._placed
 
     def one_longer(self, index):
-        runs, length, gaps = place(self, index)
-        return runs, length, [Gap(gap.index, gap.length + 1) for gap in gaps]
+        placing = place(self, index)
+        placing.gaps = [Gap(gap.index, gap.length + 1) for gap in placing.gaps]
+        return placing
 
-    monkeypatch.setattr(MfrRecording, "_place", one_longer)
+    monkeypatch.setattr(MfrRecording, "_placed", one_longer)
     verdict = recorded(lambda m: [*m[:5], *m[6:]], lost={5})
     assert verdict.gaps_wrong == 2  # one that is not so, one that is not told

@@ -220,7 +220,11 @@ def test_wrong_input_is_one_line(tmp_path, capsys):
 
 
 def test_a_board_that_prints_text_is_logged_too(tmp_path, capsys):
-    """0.3 V at 10 Hz in lines of text, 200 a second; the second column is a temperature's number."""
+    """0.3 V at 10 Hz in lines of text, 200 a second; the second column is a temperature's number.
+
+    Times are the host's: a printer that pauses may have half of a stretch placed a line late, which is
+    0.314 rad of 10 Hz and takes 1 − cos(0.157) = 1.2 % off the amplitude at most.
+    """
     stop = threading.Event()
 
     def print_lines(link):
@@ -245,7 +249,7 @@ def test_a_board_that_prints_text_is_logged_too(tmp_path, capsys):
     assert json.loads(capsys.readouterr().out)["results"] == 2
     with Ledger(str(tmp_path / "l")) as ledger:
         for entry in ledger.line_results():
-            assert entry.value.magnitude == pytest.approx(0.3, abs=3e-4)
+            assert entry.value.magnitude == pytest.approx(0.3, rel=0.013)
 
 
 def test_a_port_that_is_none_leaves_a_ledger_with_entries_alone(tmp_path, capsys):

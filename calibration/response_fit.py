@@ -143,7 +143,9 @@ def response_cautions(response: ActuatorResponse | None, lines: int) -> list[str
 
 
 def _p_value(chi_square: float, dof: int) -> float:
-    return float(require("scipy.stats", "bench", "fitting a response").chi2.sf(chi_square, dof))
+    """Return the chance of so large a chi-square: the regularised upper incomplete gamma function."""
+    special = require("scipy.special", "bench", "a response between lines")
+    return float(special.gammaincc(dof / 2, chi_square / 2))
 
 
 def _lines(

@@ -128,8 +128,9 @@ def test_a_dominant_term_can_neither_be_left_out_nor_doubled(name, tmp_path):
     assert doubled < 0.70, f"{name} doubled: rms {doubled:.2f}"
 
 
+@pytest.mark.slow
 def test_the_drive_reading_can_neither_be_left_out_nor_doubled(tmp_path):
-    """The quick one of them: 12 sessions, relative standard deviation of the rms 20 %."""
+    """The quickest of them: 12 sessions, relative standard deviation of the rms 20 %."""
     seeds = range(1, 13)
     errors = np.array([session_error("drive reading", seed, tmp_path) for seed in seeds])
     right, without, doubled = (spread(column) for column in errors.T)

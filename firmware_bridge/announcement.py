@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from firmware_bridge.envelope import wrap
-from firmware_bridge.message import MessageError, MessageType, body_of, pack
+from firmware_bridge.message_head import MessageError, MessageType, body_of, pack
 
 __all__ = [
     "FORMATS",

@@ -8,7 +8,7 @@ import struct
 from fractions import Fraction
 from math import pi
 
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 
 __all__ = [
     "ALL_LINES",

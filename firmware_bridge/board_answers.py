@@ -4,7 +4,8 @@ from firmware_bridge.drive_desk import DriveDesk
 from firmware_bridge.drive_lines import DriveError
 from firmware_bridge.envelope import Discarded
 from firmware_bridge.lock_in_start import LockInError, LockInStart
-from firmware_bridge.message import CommandCode, MessageError, MessageType, Reply, parse_message
+from firmware_bridge.message import CommandCode, Reply, parse_message
+from firmware_bridge.message_head import MessageError, MessageType
 from firmware_bridge.port_watch import PortWatch
 
 __all__ = ["MEASURED", "BoardAnswers"]

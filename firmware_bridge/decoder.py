@@ -8,16 +8,8 @@ from dataclasses import replace
 from firmware_bridge.announcement import Announcement, parse_announcement
 from firmware_bridge.envelope import Discarded, Unwrapper
 from firmware_bridge.gap import Gap
-from firmware_bridge.message import (
-    WIRE_VERSION,
-    Command,
-    LockIn,
-    MessageError,
-    MessageType,
-    Note,
-    Reply,
-    parse_message,
-)
+from firmware_bridge.message import Command, LockIn, Note, Reply, parse_message
+from firmware_bridge.message_head import WIRE_VERSION, MessageError, MessageType
 from firmware_bridge.order import StreamOrder
 from firmware_bridge.samples_frame import Samples, parse_samples, renamed
 from firmware_bridge.stream_names import StreamNames

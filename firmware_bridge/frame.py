@@ -16,16 +16,8 @@ from firmware_bridge.announcement import (
     encode_announcement,
 )
 from firmware_bridge.envelope import MESSAGE_MAX, wrap_rows
-from firmware_bridge.message import (
-    WIRE_VERSION,
-    CommandCode,
-    MessageError,
-    MessageType,
-    Reply,
-    encode_command,
-    encode_note,
-    encode_reply,
-)
+from firmware_bridge.message import CommandCode, Reply, encode_command, encode_note, encode_reply
+from firmware_bridge.message_head import WIRE_VERSION, MessageError, MessageType
 from firmware_bridge.sample_packing import pack_samples
 
 __all__ = [

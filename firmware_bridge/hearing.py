@@ -7,7 +7,7 @@ from firmware_bridge.board_answers import MEASURED, BoardAnswers
 from firmware_bridge.byte_queue import Arrival
 from firmware_bridge.envelope import Unwrapper
 from firmware_bridge.line_frames import Piece
-from firmware_bridge.message import MessageType
+from firmware_bridge.message_head import MessageType
 from firmware_bridge.sink import Sink
 from firmware_bridge.text_frames import TextFramer
 

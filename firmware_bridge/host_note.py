@@ -5,7 +5,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from firmware_bridge.envelope import seal
-from firmware_bridge.message import MessageError, MessageType, body_of, pack
+from firmware_bridge.message_head import MessageError, MessageType, body_of, pack
 
 __all__ = [
     "End",

@@ -14,13 +14,8 @@ from firmware_bridge.host_note import Remark
 from firmware_bridge.line_frames import Pause
 from firmware_bridge.live_events import LiveBlock
 from firmware_bridge.lock_in_intake import LockInIntake
-from firmware_bridge.message import (
-    WIRE_VERSION,
-    LockIn,
-    MessageError,
-    MessageType,
-    parse_message,
-)
+from firmware_bridge.message import LockIn, parse_message
+from firmware_bridge.message_head import WIRE_VERSION, MessageError, MessageType
 from firmware_bridge.recording_files import RecordingFiles
 from firmware_bridge.recording_grid import RecordingGrid
 from firmware_bridge.rotation import Rotation

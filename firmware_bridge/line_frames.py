@@ -9,7 +9,7 @@ from firmware_bridge.announcement import Announcement, pack_announcement
 from firmware_bridge.envelope import Discarded, seal, seal_rows
 from firmware_bridge.frame import OVER_RANGE, pack_frames
 from firmware_bridge.host_note import Remark
-from firmware_bridge.message import MessageType, pack
+from firmware_bridge.message_head import MessageType, pack
 from firmware_bridge.placed_lines import PlacedLines
 from firmware_bridge.text_opening import TextOpening
 

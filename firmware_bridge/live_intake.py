@@ -11,7 +11,7 @@ from firmware_bridge.intake import Intake
 from firmware_bridge.line_frames import Piece
 from firmware_bridge.live_events import LiveEvent, LiveRecording, LiveReply, LiveState
 from firmware_bridge.live_view import LiveView
-from firmware_bridge.message import MessageType
+from firmware_bridge.message_head import MessageType
 
 __all__ = ["LiveIntake"]
 

@@ -7,7 +7,7 @@ from firmware_bridge.decoder import Decoder, Event
 from firmware_bridge.gap import Gap
 from firmware_bridge.host_clock import missing_before
 from firmware_bridge.live_events import LiveEvent, LiveGap, block_of, channels_of
-from firmware_bridge.message import MessageError, MessageType
+from firmware_bridge.message_head import MessageError, MessageType
 from firmware_bridge.samples_frame import Samples
 
 __all__ = ["LiveView"]

@@ -16,7 +16,8 @@ from firmware_bridge.gap import Gap
 from firmware_bridge.gap_reason import counted
 from firmware_bridge.host_note import End, Join, Pieces, Stamp, parse_host_note
 from firmware_bridge.mask_runs import mask_runs
-from firmware_bridge.message import LockIn, MessageError, MessageType, parse_message
+from firmware_bridge.message import LockIn, parse_message
+from firmware_bridge.message_head import MessageError, MessageType
 from firmware_bridge.record_file import RecordFile
 from firmware_bridge.recording import NO_END
 from firmware_bridge.recording_header import RecordingError

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from firmware_bridge.announcement import FORMATS
 from firmware_bridge.envelope import SEALED
 from firmware_bridge.frame import HEADER
-from firmware_bridge.message import WIRE_VERSION, MessageType
+from firmware_bridge.message_head import WIRE_VERSION, MessageType
 from firmware_bridge.recording_header import RecordingError, parse_header
 
 __all__ = ["Chunk", "RecordFile"]

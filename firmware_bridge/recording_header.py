@@ -14,7 +14,7 @@ from firmware_bridge.announcement import (
 from firmware_bridge.envelope import SEALED, seal
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.frame import HEADER
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 
 __all__ = ["MAGIC", "MAJOR", "MINOR", "Header", "RecordingError", "encode_header", "parse_header"]
 

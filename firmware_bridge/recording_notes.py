@@ -1,7 +1,8 @@
 """What stands in a recording beside its samples: stamps, joins, remarks, notes of the board, the end."""
 
 from firmware_bridge.host_note import End, Join, Pieces, Remark, Stamp, parse_host_note
-from firmware_bridge.message import MessageError, MessageType, Note, parse_message
+from firmware_bridge.message import Note, parse_message
+from firmware_bridge.message_head import MessageError, MessageType
 
 __all__ = ["RecordingNotes"]
 

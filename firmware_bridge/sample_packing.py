@@ -5,7 +5,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 
 __all__ = ["pack_samples", "unpack_samples"]
 

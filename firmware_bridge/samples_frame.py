@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from firmware_bridge.envelope import seal
 from firmware_bridge.frame import HEADER, OVER_RANGE
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 from firmware_bridge.sample_packing import unpack_samples
 
 __all__ = ["Samples", "parse_samples", "renamed"]

@@ -16,7 +16,7 @@ from firmware_bridge.arguments import (
     start_arguments,
     step_frequency_hz,
 )
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 
 
 @given(st.floats(1e-6, 0.499999), st.floats(1.0, 1e6))

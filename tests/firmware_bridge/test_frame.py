@@ -7,7 +7,7 @@ import pytest
 from firmware_bridge.cobs import decode
 from firmware_bridge.decoder import Decoder, Samples
 from firmware_bridge.frame import encode_frame, encode_stream
-from firmware_bridge.message import MessageError
+from firmware_bridge.message_head import MessageError
 
 FORMATS = [(np.int16, None, 2), (np.int32, "int24", 3), (np.int32, None, 4)]
 

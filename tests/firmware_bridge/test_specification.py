@@ -34,7 +34,6 @@ from firmware_bridge.message import (
     Command,
     CommandCode,
     LockIn,
-    MessageType,
     Note,
     Reply,
     encode_command,
@@ -42,6 +41,7 @@ from firmware_bridge.message import (
     encode_note,
     encode_reply,
 )
+from firmware_bridge.message_head import MessageType
 from firmware_bridge.recording_header import Header, encode_header, parse_header
 
 PAGE = Path(firmware_bridge.__file__).with_name("SPEC.md").read_text(encoding="utf-8")

@@ -6,7 +6,8 @@ from text_board import arrivals_of, lines_of, record_chunks
 from firmware_bridge.announcement import parse_announcement
 from firmware_bridge.decoder import Decoder, Gap, Samples
 from firmware_bridge.envelope import Discarded
-from firmware_bridge.message import MessageType, Note
+from firmware_bridge.message import Note
+from firmware_bridge.message_head import MessageType
 from firmware_bridge.opening import open_recording
 from firmware_bridge.text_frames import TextFramer
 

@@ -4,7 +4,7 @@ import numpy as np
 
 from firmware_bridge.envelope import wrap
 from firmware_bridge.frame import CommandCode, encode_command, encode_note
-from firmware_bridge.message import MessageType, pack
+from firmware_bridge.message_head import MessageType, pack
 
 
 def asked(command):

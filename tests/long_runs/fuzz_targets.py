@@ -25,13 +25,13 @@ from firmware_bridge.host_note import End, Join, Remark, Stamp, cut, seal_host_n
 from firmware_bridge.lock_in_recording import LockInRecording
 from firmware_bridge.message import (
     LockIn,
-    MessageType,
     Reply,
     encode_command,
     encode_lock_in,
     encode_note,
     encode_reply,
 )
+from firmware_bridge.message_head import MessageType
 from firmware_bridge.recording import open_mfr
 from firmware_bridge.recording_header import Header, encode_header
 from firmware_bridge.text_frames import TextFramer

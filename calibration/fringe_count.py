@@ -165,7 +165,7 @@ def count_fringes(
         count_reasons(
             values, record, envelope, got, scan if extremes is None else None, span_range, along
         )
-        + shaking_reasons(passes, along),
+        + shaking_reasons(passes, got, envelope.cosine(record.values), along),
     )
 
 

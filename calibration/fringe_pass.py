@@ -17,6 +17,7 @@ FloatArray = NDArray[np.float64]
 _TURN_BAND_RAD = math.pi  # a way back of less than half a fringe is vibration, not a new pass
 _END_BAND_RAD = 1.0  # nor is a shorter one at an end of the record
 _HIDDEN = 0.16  # fringes: 28° there and back
+_LEAST_SHORT = 0.005  # of half the span: 6° of phase
 _LAW_U = 0.005  # fringes: what a harmonic of 3 % in the law moves the phase by
 
 
@@ -62,12 +63,14 @@ def end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
         In fringes.
     """
     angle = np.abs(np.sin(got.phase_rad[places]))
-    cosine_u = math.hypot(got.cosine_u, 0.01)  # the extremes, too, are known to about 1 %
-    near = np.minimum(cosine_u / np.maximum(angle, 1e-9), math.sqrt(2.0 * cosine_u))
+    step = _steps(got)[places]
+    # the extremes, too, are known to about 1 %, less well where they lie between samples
+    cosine_u = np.hypot(got.cosine_u, 0.01 + 0.03 * step / math.pi)
+    near = np.minimum(cosine_u / np.maximum(angle, 1e-9), np.sqrt(2.0 * cosine_u))
     # within the band of an extreme the side is not known, nor where the extreme may lie between samples
-    hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0)) + 0.6 * _steps(got)[places]
+    hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0)) + 0.75 * step
     folded = np.arcsin(np.minimum(angle, 1.0))
-    near = np.where(folded < hidden, np.hypot(near, folded), near)
+    near = np.where(folded < hidden, np.hypot(near, 1.2 * folded), near)
     return np.hypot(near / (2.0 * math.pi), _LAW_U)
 
 
@@ -79,6 +82,22 @@ def _steps(got: Unfolded) -> FloatArray:
     legs = running_median(np.diff(got.turns).astype(float), 5)
     middles = 0.5 * (got.turns[1:] + got.turns[:-1])
     return np.asarray(np.interp(np.arange(count), middles, math.pi / np.maximum(legs, 1.0)))
+
+
+def _low_tops(got: Unfolded) -> tuple[NDArray[np.int64], FloatArray]:
+    """Return the tops and bottoms that lie short of the others, and by how many fringes.
+
+    One that is taken for going over the extreme may be a turn of the mirror next to it.
+    """
+    turns = got.turns[got.passed]
+    short = 1.0 - np.abs(np.cos(got.phase_rad[turns]))
+    if len(turns) < 4:
+        return turns[:0], short[:0]
+    usual = float(np.median(short))
+    scatter = 1.4826 * float(np.median(np.abs(short - usual)))
+    missed = 1.0 - np.cos(0.5 * _steps(got)[turns])
+    low = short > usual + 5.0 * scatter + 3.0 * got.cosine_u + missed + _LEAST_SHORT
+    return turns[low], np.arccos(1.0 - short[low]) / (2.0 * math.pi)
 
 
 def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass]:
@@ -112,10 +131,14 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
         hidden = max(hidden, _HIDDEN)
     u[1:-1] = np.hypot(u[1:-1], np.maximum(hidden, 0.5 * _steps(got)[turns] / (2.0 * math.pi)))
     spots = slow_spots(got.turns, len(phase))
+    low_tops, each = _low_tops(got)
     out = []
     for k in range(len(ends) - 1):
         start, stop = int(ends[k]), int(ends[k + 1])
-        unseen = np.count_nonzero((spots > start) & (spots < stop)) if drive is None else 0
+        unseen = 0.0
+        if drive is None:
+            unseen = _HIDDEN * np.count_nonzero((spots > start) & (spots < stop))
+            unseen += math.fsum(each[(low_tops > start) & (low_tops < stop)])
         way = float(phase[stop] - phase[start])
         direction = 0 if drive is None else int(np.sign(way))
         out.append(
@@ -123,7 +146,7 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
                 start + first,
                 stop + first,
                 abs(way) / (2.0 * math.pi),
-                math.hypot(u[k], u[k + 1]) + _HIDDEN * unseen,
+                math.hypot(u[k], u[k + 1]) + unseen,
                 direction,
                 _fastest_of(got, start, stop),
             )

@@ -183,7 +183,9 @@ def _sides(
         return slopes[0] * np.concatenate([[1.0], np.cumprod(flips)]), 0.0
     driven = _driven_sides(ends, angle, drive)
     side = np.empty(len(slopes))
-    side[0] = np.sign(driven[0]) or slopes[0]
+    # until the first extreme all legs lie on one side: most of the way goes with the drive
+    begin = int(np.argmax(passed)) + 1 if passed.any() else len(slopes)
+    side[0] = np.sign(np.sum((driven * np.abs(change))[:begin])) or slopes[0]
     for k in range(1, len(side)):
         clear = abs(driven[k]) > 0.2
         side[k] = side[k - 1]

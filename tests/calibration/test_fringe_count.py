@@ -81,6 +81,69 @@ def test_piezo_ramps_with_hysteresis(seed):
     assert got.per_period[0] == pytest.approx(14.8, abs=3 * got.per_period[1])
 
 
+def harsh(kind, rng):
+    """Return the drive and the true phase of a mirror that is driven hard or seen coarsely."""
+    x = np.linspace(0, 1, COUNT)
+    drive = np.abs((int(rng.integers(2, 9)) * x + 1) % 2 - 1)
+    if kind == "coarse":  # 2.5 to 5 samples a fringe, one way
+        drive, way = x, COUNT / rng.uniform(2.5, 5)
+    elif kind == "reversing":
+        way = rng.uniform(2, 60)
+    elif kind == "coarse and reversing":
+        way = COUNT / rng.uniform(2.5, 5) / np.abs(np.diff(drive)).sum()
+    else:  # from rest to 2.5 samples a fringe and slower
+        drive, way = x ** rng.uniform(1.2, 2.5), rng.uniform(20, 0.15 * COUNT)
+    size = rng.choice([0.0, 0.3, 1.0, 3.0]) * rng.uniform(0.5, 1)
+    shaken = size * np.sin(2 * np.pi * rng.uniform(1, 60) * TIME + rng.uniform(0, 6))
+    shaken += 0.3 * size * np.sin(2 * np.pi * 50 * TIME)
+    return drive, 2 * np.pi * way * drive + shaken
+
+
+@pytest.mark.parametrize("has_drive", [True, False])
+@pytest.mark.parametrize("kind", ["coarse", "reversing", "coarse and reversing", "from rest"])
+def test_a_harsh_count_is_right_or_distrusted(kind, has_drive):
+    trusted = 0
+    for seed in range(8):
+        rng = np.random.default_rng([seed, len(kind)])
+        drive, phase = harsh(kind, rng)
+        got = count_fringes(
+            volts(phase, seed, float(rng.choice([0.003, 0.02]))),
+            1000.0,
+            drive if has_drive else None,
+        )
+        if got.reasons:
+            continue
+        trusted += 1
+        true = (phase[-1] - phase[0]) / (2 * np.pi)
+        if has_drive:
+            assert abs(got.net_fringes - true) < 2.5 * got.net_u, (seed, got.net_fringes, true)
+        ends = [0, *turning_points(phase, np.pi).tolist(), COUNT - 1]
+        whole_way = np.abs(np.diff(phase[ends])).sum() / (2 * np.pi)
+        # a way to and fro of less than half a fringe at an end is part of its pass
+        assert abs(got.fringes - whole_way) < 2.5 * got.fringes_u + 0.15, (seed, got.fringes)
+    assert trusted >= (1 if kind == "coarse" or has_drive else 0)
+
+
+def test_shaking_over_two_extremes_is_named():
+    # a mirror that goes back by more than half a fringe passes extremes on its way back
+    shaken = whole(40.3) + 2.4 * np.sin(2 * np.pi * 9.0 * TIME)
+    got = count_fringes(volts(shaken, 3, 0.01), 1000.0, TIME)
+    assert any("shakes to and fro" in reason for reason in got.reasons), got.reasons
+    gently = whole(200.3) + 0.4 * np.sin(2 * np.pi * 33.0 * TIME)
+    got = count_fringes(volts(gently, 3, 0.01), 1000.0, TIME)
+    assert not any("shakes to and fro" in reason for reason in got.reasons), got.reasons
+    assert got.net_fringes == pytest.approx(200.3, abs=0.2)
+
+
+def test_a_turn_among_coarse_samples_is_named_without_a_drive():
+    turned = 2 * np.pi * 1600.3 * triangle(2) + 0.9
+    got = count_fringes(volts(turned, 2, 0.01), 1000.0)
+    assert any("to see the mirror turn" in reason for reason in got.reasons), got.reasons
+    steady = count_fringes(volts(whole(3200.6), 2, 0.03), 1000.0)
+    assert steady.reasons == []
+    assert steady.fringes == pytest.approx(3200.6, abs=2 * steady.fringes_u)
+
+
 def test_method_1_of_iso_16063_11():
     # s = (λ/8)·R_f: the tabulated metres per unit of R_f, and the same from a sine
     per_unit = records("bessel")["iso.m1"]

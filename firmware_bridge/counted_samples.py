@@ -160,9 +160,11 @@ class CountedSamples:
     def _complete(self, frame: Samples, start: int, wanted: int) -> None:
         """Say where the recording ends, in the stream that covers its end."""
         self._recording.is_complete = True
-        covering = frame if start < wanted or self._last is None else self._last
+        last, grid = self._last, self._recording.grid
+        # A rotated file may not know the stream of the last frame: that one is in the file before.
+        covering = frame if start < wanted or last is None or last.stream not in grid else last
         if self._recording.files.is_open:
-            end = self._recording.grid.index(covering.stream, wanted)
+            end = max(0, grid.index(covering.stream, wanted))
             self._recording.files.note(End(covering.stream, end))
 
     def _take(self, frame: Samples, start: int, count: int) -> None:

@@ -76,7 +76,7 @@ class FrameIntake:
     def _keep(self, frame: Samples, message: bytes) -> None:
         if not self._counted.make_room(frame.stream, frame.index, message):
             return
-        events: list[Event] = []
+        events: list[Event] | None = None  # None: the decoder has not seen it yet
         start = self._recording.grid.place(frame.stream, frame.index)
         if start < 0:
             events = self._decoder.place(frame, message)
@@ -84,7 +84,8 @@ class FrameIntake:
                 self._counted.follow(events)
                 return  # it is in the file before
         self._write(frame, message, start)
-        events = events or self._decoder.place(frame, message)
+        if events is None:
+            events = self._decoder.place(frame, message)
         if self._was_away:
             events += self._decoder.flush()
             self._was_away = False

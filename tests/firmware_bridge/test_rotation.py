@@ -93,6 +93,41 @@ def test_frames_that_come_late_or_twice_over_the_seam_are_kept_once(tmp_path):
     assert intake.bytes_discarded > 4 * SLOTS
 
 
+def test_a_frame_held_over_the_seam_is_placed_once(tmp_path):
+    """Frames swapped about the seam: none counts as a duplicate that is none."""
+    intake = Intake(tmp_path / "a.mfr", rotation=Rotation(rotate_s=0.5))
+    take(intake, announced())
+    count = round(0.5 * RATE_HZ / SLOTS)
+    order = [*range(count - 2), count + 2, count, count - 2, count - 1, count + 1]
+    for data in frames([*order, *range(count + 3, count + 10)]):
+        take(intake, data)
+    intake.close()
+    assert (intake.samples, intake.bytes_discarded) == ((count + 10) * SLOTS, 0)
+
+
+def test_a_board_that_restarts_beyond_the_end_ends_the_recording(tmp_path):
+    intake = Intake(tmp_path / "a.mfr", duration_s=1.0, rotation=Rotation(rotate_s=0.5))
+    take(intake, announced())
+    for data in frames(range(round(0.55 * RATE_HZ / SLOTS))):
+        take(intake, data)
+    again = encode_announcement(
+        Announcement(
+            2,
+            RATE_HZ,
+            "int16",
+            SLOTS,
+            [ChannelInfo("pd", "V", 0.5), ChannelInfo("drive", "V", 1.0)],
+        )
+    )
+    late = time.monotonic_ns() + 2_000_000_000
+    first = encode_frame(ramp(0, SLOTS), index=0, sequence=0, stream=2)
+    for data in (again, first):
+        for piece in Unwrapper().feed(b"\0" + data + b"\0"):
+            intake.take(piece, late, time.time_ns())
+    intake.close()
+    assert intake.is_complete
+
+
 def test_the_next_files_are_named_by_who_asks(tmp_path):
     intake, _, _ = rotated(
         tmp_path, range(30), rotate_s=0.25, next_path=lambda n: tmp_path / f"hour-{n:03d}.mfr"

@@ -55,7 +55,7 @@ def end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
     got : Unfolded
         Phase and turns.
     places : ndarray of int, shape (k,)
-        Samples.
+        Samples, the first and the last among them.
 
     Returns
     -------
@@ -71,7 +71,22 @@ def end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
     hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0)) + 0.75 * step
     folded = np.arcsin(np.minimum(angle, 1.0))
     near = np.where(folded < hidden, np.hypot(near, 1.2 * folded), near)
-    return np.hypot(near / (2.0 * math.pi), _LAW_U)
+    out = np.hypot(near / (2.0 * math.pi), _LAW_U)
+    out[[0, -1]] = np.hypot(out[[0, -1]], _touched(got))
+    return np.asarray(out)
+
+
+def _touched(got: Unfolded) -> FloatArray:
+    """Return what is not known of both ends where the extreme next to one is left on the side it was met.
+
+    The mirror shook over it and back: whether the end lies before or beyond it, the record does not tell.
+    """
+    places = got.turns[got.passed]
+    out = np.zeros(2)
+    for k, (end, near, next_one) in enumerate(((0, 0, 1), (-1, -1, -2))):
+        if len(places) > 1 and np.prod(np.cos(got.phase_rad[places[[near, next_one]]])) > 0.0:
+            out[k] = abs(got.phase_rad[end] - got.phase_rad[places[near]]) / (2.0 * math.pi)
+    return out
 
 
 def _steps(got: Unfolded) -> FloatArray:

@@ -1,10 +1,11 @@
 """What a conversion can undo or apply against frequency, as a filter within a band.
 
 The readout's poles make fast motion read small; a servo takes off most of the free displacement; and the
-actuator's response turns a recorded drive into what it moves.
+actuator's response turns a recorded drive, which its own channel has made small and late, into what it
+moves.
 """
 
-from math import hypot
+from math import hypot, pi
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,7 @@ from calibration.band_filter import ABOVE, BELOW, BandFilter, design_filter
 from calibration.errors import CalibrationError
 from calibration.open_loop import OpenLoop
 from calibration.record import Calibration
-from metro.readout import Pole
+from metro.readout import Pole, Readout
 
 __all__ = ["CORNERS", "FilterStage", "actuator_stage", "loop_stage", "readout_stage"]
 
@@ -71,23 +72,26 @@ def readout_stage(calibration: Calibration, rate_hz: float) -> FilterStage:
     CalibrationError
         If the calibration keeps no corner.
     """
-    corners = [calibration.chain[name] for name in CORNERS if name in calibration.chain]
-    if not corners:
+    electronics = _electronics(calibration)
+    poles = electronics.poles
+    if not poles:
         raise CalibrationError(
             "there is no readout to undo: the calibration keeps neither amplifier_corner nor "
             "antialias_corner"
         )
 
-    poles = [Pole("", float(c.magnitude), float(c.u_magnitude or 0.0)) for c in corners]
-
     def inverse(at_hz: FloatArray) -> ComplexArray:
-        responses = [[pole.response(float(f)) for f in at_hz] for pole in poles]
-        return np.asarray(1.0 / np.prod(responses, axis=0))
+        return np.asarray(
+            1.0 / np.array([electronics.response(f) for f in at_hz.tolist()]), complex
+        )
 
     made = design_filter(inverse, 0.0, np.inf, rate_hz)
     u = hypot(*(pole.relative_effect(made.to_hz) for pole in poles))
-    text = "amplifier and anti-alias filter are undone"
-    return FilterStage(made, u, text, undoes_readout=True)
+    what = "amplifier, anti-alias filter and aperture" if electronics.aperture_s else _POLES
+    return FilterStage(made, u, f"{what} are undone", undoes_readout=True)
+
+
+_POLES = "amplifier and anti-alias filter"
 
 
 def loop_stage(loop: OpenLoop, rate_hz: float) -> FilterStage:
@@ -125,16 +129,53 @@ def actuator_stage(calibration: Calibration, rate_hz: float) -> FilterStage:
             "the calibration keeps no response of the actuator between its lines (it takes at "
             "least three lines and a recorded drive)"
         )
-    volts = float(factor.magnitude)
-    made = design_filter(
-        lambda at_hz: volts * response.extrapolated(at_hz),
-        response.from_hz,
-        response.to_hz,
-        rate_hz,
-    )
-    relative, turn = response.u_at(_grid(made))
-    u = float(np.hypot(relative, turn).max())
-    return FilterStage(made, u, "the drive is taken through the actuator's response")
+    volts, electronics = float(factor.magnitude), _electronics(calibration)
+
+    def moved(at_hz: FloatArray) -> ComplexArray:
+        read = [
+            electronics.counts_response(f) * electronics.drive_response(f) for f in at_hz.tolist()
+        ]
+        return np.asarray(volts * response.extrapolated(at_hz) / np.array(read))
+
+    made = design_filter(moved, response.from_hz, response.to_hz, rate_hz)
+    grid_hz = _grid(made)
+    relative, turn = response.u_at(grid_hz)
+    delay = calibration.chain.get("channel_delay")
+    late = 0.0 if delay is None else 2 * pi * float(delay.u_magnitude or 0.0)
+    pole = electronics.antialias
+    filtered = [
+        0.0 if pole is None else abs(pole.log_slope(f)) * pole.u_hz for f in grid_hz.tolist()
+    ]
+    u = np.sqrt(relative**2 + turn**2 + (late * grid_hz) ** 2 + np.square(filtered))
+    return FilterStage(made, float(u.max()), _drive_text(electronics))
+
+
+def _drive_text(electronics: Readout) -> str:
+    undone = [
+        *([] if electronics.antialias is None else ["anti-alias filter"]),
+        *(["aperture"] if electronics.aperture_s else []),
+        *(["delay"] if electronics.drive_delay_s else []),
+    ]
+    text = "the drive is taken through the actuator's response"
+    if not undone:
+        return text
+    listed = " and ".join([", ".join(undone[:-1]), undone[-1]] if undone[1:] else undone)
+    return f"{text}, with its channel's {listed} undone,"
+
+
+def _electronics(calibration: Calibration) -> Readout:
+    """Return amplifier, anti-alias filter, aperture and channel delay as a calibration keeps them."""
+    amplifier, antialias = (_maybe_pole(calibration, name) for name in CORNERS)
+    times = (calibration.chain.get(name) for name in ("aperture", "channel_delay"))
+    aperture_s, delay_s = (0.0 if t is None else float(t.magnitude) for t in times)
+    return Readout(amplifier, antialias, aperture_s, delay_s)
+
+
+def _maybe_pole(calibration: Calibration, name: str) -> Pole | None:
+    corner = calibration.chain.get(name)
+    if corner is None:
+        return None
+    return Pole(name, float(corner.magnitude), float(corner.u_magnitude or 0.0))
 
 
 def _grid(made: BandFilter) -> FloatArray:

@@ -4,10 +4,10 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from calibration.channel_volts import channel_volts
 from calibration.conversion_filter import actuator_stage
 from calibration.conversion_tally import ConversionTally
 from calibration.convert import Conversion
-from calibration.errors import CalibrationError
 from calibration.record import Calibration
 from firmware_bridge.channel import Channel
 from firmware_bridge.span import Span
@@ -38,9 +38,7 @@ class DrivenDisplacement(Recording):
 
     def __init__(self, source: Recording, channel: str, calibration: Calibration) -> None:
         self._source, self._position = source, source.find(channel)
-        unit = source.channels[self._position].unit
-        if unit != "V":
-            raise CalibrationError(f"{source.path}: the drive's channel must be in V, got {unit}")
+        self._volts = channel_volts(source, self._position, calibration)
         self._calibration = calibration
         self.stage = actuator_stage(calibration, source.rate_hz)
         super().__init__(
@@ -62,7 +60,7 @@ class DrivenDisplacement(Recording):
         first, last = max(0, start - reach), min(self.length, stop + reach)
         span = self._source.read([self._position], first, last)
         around = (reach - (start - first), reach - (last - stop))
-        values = np.pad(span.values[:, 0], around, constant_values=np.nan)
+        values = np.pad(self._volts.of(span.values[:, 0]), around, constant_values=np.nan)
         out = self.stage.filter.apply(values)
         return Span(np.repeat(out[:, None], len(channels), axis=1), span.over_range)
 
@@ -91,5 +89,9 @@ class DrivenDisplacement(Recording):
             noise=tally.noise(1.0),
             used_fraction=tally.used / (stop - start),
             reasons=[] if tally.used else ["no sample has the filter's reach of samples around it"],
-            cautions=[self.stage.text, *self._calibration.cautions],
+            cautions=[
+                *([self._volts.caution] if self._volts.caution else []),
+                self.stage.text,
+                *self._calibration.cautions,
+            ],
         )

@@ -18,6 +18,7 @@ _CHAIN = {
     "amplifier_corner": "photodiode.bandwidth",
     "antialias_corner": "adc.antialias",
     "channel_delay": "adc.channel_delay",
+    "aperture": "adc.aperture",
     "adc_bits": "adc.bits",
     "adc_range": "adc.range",
     "adc_offset": "adc.offset",

@@ -53,6 +53,7 @@ _CHAIN = {
     "amplifier_corner": "amplifier's corner",
     "antialias_corner": "anti-alias filter's corner",
     "channel_delay": "drive behind the photodiode",
+    "aperture": "converter's averaging time",
     "adc_bits": "bits of the converter",
     "adc_range": "range of the converter",
 }

@@ -3,6 +3,7 @@
 import json
 import subprocess
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -10,7 +11,7 @@ import pytest
 from sessions import built_in_bench, play
 
 from calibration.analysis import calibrate
-from calibration.conversion_filter import loop_stage, readout_stage
+from calibration.conversion_filter import actuator_stage, loop_stage, readout_stage
 from calibration.convert import ConvertedRecording
 from calibration.convert_plot import course_of
 from calibration.driven_displacement import DrivenDisplacement
@@ -19,6 +20,7 @@ from calibration.open_loop import load_open_loop
 from calibration.record import load
 from firmware_bridge.opening import open_recording
 from metro.commandline import run
+from metro.measured import Measured
 
 SAMPLE = Path(__file__).parent / "samples" / "calibration-1.json"
 
@@ -119,6 +121,49 @@ def test_the_drive_shows_what_the_actuator_moves(session):
         assert abs(moved / volts) == pytest.approx(true, rel=0.01)
     assert 0 < worth.relative_u < 0.01
     assert worth.used_fraction == pytest.approx(1 - 2 * reach / source.length)
+
+
+@pytest.mark.parametrize(("corner_hz", "delay_s"), [(400.0, 12e-6), (1500.0, 150e-6)])
+def test_the_drive_moves_what_the_fringe_shows(tmp_path, corner_hz, delay_s):
+    """A slow filter and a late channel before the drive: the displacement is that of the fringe."""
+    changed = {
+        "adc.antialias": Measured.of(corner_hz, "Hz", 0.01 * corner_hz),
+        "adc.channel_delay": Measured.of(delay_s, "s", 0.5e-6),
+    }
+    bench = built_in_bench().replace(changed)
+    _, files = play(bench, 6, tmp_path, lines_s=6.0)
+    calibration = calibrate(bench, **files)
+    source = open_recording(files["lines_rising"][0])
+    driven = DrivenDisplacement(source, "drive", calibration)
+    undone = readout_stage(calibration, source.rate_hz)
+    fringe = ConvertedRecording(source, "photodiode", calibration, stages=[undone])
+    moved, seen = (one.trace("displacement").values for one in (driven, fringe))
+    inner = slice(driven.stage.filter.reach, -driven.stage.filter.reach)
+    u = driven.judge().relative_u
+    for at_hz in (31.7, 87.1, 141.3, 233.9):
+        ratio = line(moved[inner], at_hz, source.rate_hz) / line(seen[inner], at_hz, source.rate_hz)
+        assert abs(ratio - 1) < 3 * u
+    assert u < 0.008
+    assert "with its channel's anti-alias filter and delay undone" in driven.judge().cautions[0]
+
+
+def test_the_drive_channels_corner_and_delay_enter_the_u(session):
+    """Against the formula: |if/f0/(1+if/f0)|·u/f0 and 2πf·u of the delay at the highest line."""
+    _, files, calibration, _ = session
+    rate_hz = open_recording(files["lines_rising"][0]).rate_hz
+    plain = actuator_stage(calibration, rate_hz).relative_u
+    turned = 1j * 233.9 / 1500.0
+    pole = abs(turned / (1 + turned)) / 1500.0
+    late = 2 * np.pi * 233.9
+    for name, unit, value, u, effect in (
+        ("antialias_corner", "Hz", 1500.0, 150.0, pole),
+        ("channel_delay", "s", 12e-6, 2e-5, late),
+    ):
+        known = float(calibration.chain[name].u_magnitude)
+        chain = {**calibration.chain, name: Measured.of(value, unit, u)}
+        found = actuator_stage(replace(calibration, chain=chain), rate_hz).relative_u
+        added = np.sqrt(found**2 - plain**2)
+        assert added == pytest.approx(effect * np.sqrt(u**2 - known**2), rel=0.02)
 
 
 @pytest.mark.parametrize("suffix", ["csv", "npy", "npz", "h5"])

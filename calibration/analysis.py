@@ -204,6 +204,7 @@ class _Analysis(SessionFits):
             *self._lean_cautions(),
             *response_cautions(self.response, len(self.actuator) if self.drive_read else 0),
             *(text for text in self.series if isinstance(text, str)),
+            *([] if self.loop is None else self.loop.cautions),
         ]
 
     def _lean_cautions(self) -> list[str]:

@@ -5,6 +5,7 @@ actuator's response turns a recorded drive, which its own channel has made small
 moves.
 """
 
+from collections.abc import Sequence
 from math import hypot, pi
 
 import numpy as np
@@ -12,16 +13,17 @@ from numpy.typing import NDArray
 
 from calibration.band_filter import ABOVE, BELOW, BandFilter, design_filter
 from calibration.errors import CalibrationError
-from calibration.open_loop import OpenLoop
+from calibration.open_loop import SIGN, OpenLoop
 from calibration.record import Calibration
 from metro.readout import Pole, Readout
 
-__all__ = ["CORNERS", "FilterStage", "actuator_stage", "loop_stage", "readout_stage"]
+__all__ = ["CORNERS", "UNREACHED", "FilterStage", "actuator_stage", "loop_stage", "readout_stage"]
 
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
 CORNERS = ("amplifier_corner", "antialias_corner")
+UNREACHED = "no sample has the filter's reach of samples around it"
 _GRID = 64  # frequencies of the band at which the largest u is looked for
 
 
@@ -39,6 +41,8 @@ class FilterStage:
         What it does.
     undoes_readout : bool
         Whether the readout's corners are undone by it.
+    reasons, cautions : sequence of str
+        Why what it leaves must not be trusted; what a user should know.
     """
 
     def __init__(
@@ -48,8 +52,11 @@ class FilterStage:
         text: str,
         *,
         undoes_readout: bool = False,
+        reasons: Sequence[str] = (),
+        cautions: Sequence[str] = (),
     ) -> None:
         self.filter, self.undoes_readout = filter, undoes_readout
+        self.reasons, self.cautions = list(reasons), list(cautions)
         self.relative_u = hypot(relative_u, filter.error)
         self.text = (
             f"{text} from {filter.from_hz:g} Hz to {filter.to_hz:g} Hz"
@@ -105,7 +112,13 @@ def loop_stage(loop: OpenLoop, rate_hz: float) -> FilterStage:
     )
     size, turn, share = loop.effect(_grid(made))
     u = np.hypot(size, turn) * np.abs(share)
-    return FilterStage(made, float(u.max()), "the free displacement is restored")
+    return FilterStage(
+        made,
+        float(u.max()),
+        f"the free displacement is restored by 1 + G ({SIGN})",
+        reasons=loop.band_reasons(made.from_hz, made.to_hz),
+        cautions=loop.cautions,
+    )
 
 
 def actuator_stage(calibration: Calibration, rate_hz: float) -> FilterStage:

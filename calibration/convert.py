@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.channel_volts import channel_volts
-from calibration.conversion_filter import CORNERS, FilterStage
+from calibration.conversion_filter import CORNERS, UNREACHED, FilterStage
 from calibration.conversion_tally import ConversionTally, relative_us
 from calibration.errors import CalibrationError
 from calibration.record import Calibration
@@ -166,7 +166,7 @@ class ConvertedRecording(Recording):
                 out = self.read([0], first, min(first + _BLOCK, stop)).values[:, 0]
                 tally.count_filtered(out)
         noise = tally.noise(abs(self._per_radian))
-        reasons = edge_reasons(1.0 - tally.kept / tally.present) if tally.present else [_EMPTY]
+        reasons = _reasons(tally)
         scale_u, drift_u = relative_us(self.calibration, self.quantity, tally)
         return Conversion(
             quantity=self.quantity,
@@ -175,7 +175,11 @@ class ConvertedRecording(Recording):
             drift_u=drift_u,
             noise=noise,
             used_fraction=tally.used / (stop - start),
-            reasons=[*reasons, *self.calibration.reasons],
+            reasons=[
+                *reasons,
+                *(reason for stage in self.stages for reason in stage.reasons),
+                *self.calibration.reasons,
+            ],
             cautions=[
                 *([self._volts.caution] if self._volts.caution else []),
                 *_cautions(self.calibration, self.slope, self.stages),
@@ -223,9 +227,16 @@ def per_radian(calibration: Calibration, quantity: str) -> float:
     return 1.0 / per_metre / float(chain["arm_length"].magnitude)
 
 
+def _reasons(tally: ConversionTally) -> list[str]:
+    if not tally.present:
+        return [_EMPTY]
+    unreached = [] if tally.used or not tally.converted else [UNREACHED]
+    return [*edge_reasons(1.0 - tally.kept / tally.present), *unreached]
+
+
 def _cautions(calibration: Calibration, slope: str, stages: Sequence[FilterStage]) -> list[str]:
     cautions = [f"the recording is taken to lie on the {slope} slope"]
-    cautions += [stage.text for stage in stages]
+    cautions += [text for stage in stages for text in (stage.text, *stage.cautions)]
     undone = any(stage.undoes_readout for stage in stages)
     for name in () if undone else CORNERS:
         corner = calibration.chain.get(name)

@@ -5,7 +5,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from calibration.channel_volts import channel_volts
-from calibration.conversion_filter import actuator_stage
+from calibration.conversion_filter import UNREACHED, actuator_stage
 from calibration.conversion_tally import ConversionTally
 from calibration.convert import Conversion
 from calibration.record import Calibration
@@ -88,7 +88,7 @@ class DrivenDisplacement(Recording):
             drift_u=0.0,
             noise=tally.noise(1.0),
             used_fraction=tally.used / (stop - start),
-            reasons=[] if tally.used else ["no sample has the filter's reach of samples around it"],
+            reasons=[] if tally.used else [UNREACHED],
             cautions=[
                 *([self._volts.caution] if self._volts.caution else []),
                 self.stage.text,

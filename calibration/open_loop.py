@@ -21,15 +21,17 @@ from firmware_bridge.text_table import read_text_table
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-__all__ = ["OpenLoop", "OpenLoopError", "load_open_loop"]
+__all__ = ["SIGN", "OpenLoop", "OpenLoopError", "load_open_loop"]
 
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
 _RADIANS = {"rad": 1.0, "deg": pi / 180, "°": pi / 180, "degree": pi / 180, "degrees": pi / 180}
-_HERTZ = {"": 1.0, "1": 1.0, "hz": 1.0, "khz": 1e3, "mhz": 1e6}
+_HERTZ = {"": 1.0, "1": 1.0, "mHz": 1e-3, "Hz": 1.0, "kHz": 1e3, "MHz": 1e6}
 _PURE = ("", "1")
 NEAR_ZERO = 0.1  # |1 + G| below which the servo rings and nothing is restored
+_BETWEEN = 512  # frequencies of a band at which it is looked for, beside the table's own
+SIGN = "G is counted such that a large positive one holds the mirror"
 
 
 class OpenLoopError(CalibrationError):
@@ -114,9 +116,43 @@ class OpenLoop:
     def reasons(self, at_hz: float) -> list[str]:
         """Return why a line must not be trusted: the servo rings at its frequency."""
         left = float(abs(self.factor(at_hz)[0]))
-        if left >= NEAR_ZERO:
+        return [] if left >= NEAR_ZERO else [_rings("there", left)]
+
+    def band_reasons(self, from_hz: float, to_hz: float) -> list[str]:
+        """Return why a band must not be trusted: the servo rings within it.
+
+        Parameters
+        ----------
+        from_hz, to_hz : float
+            Ends of the band, within the table [Hz].
+
+        Returns
+        -------
+        list of str
+            One reason, with the frequency at which |1 + G| is least; empty where there is none.
+        """
+        rows = self.frequency_hz[(self.frequency_hz > from_hz) & (self.frequency_hz < to_hz)]
+        at_hz = np.concatenate([np.linspace(from_hz, to_hz, _BETWEEN), rows])
+        left = np.abs(self.factor(at_hz))
+        least = int(np.argmin(left))
+        if left[least] >= NEAR_ZERO:
             return []
-        return [f"the servo rings there: |1 + G| is {left:.2g}, at least {NEAR_ZERO:g} is needed"]
+        return [_rings(f"at {at_hz[least]:.4g} Hz", float(left[least]))]
+
+    @property
+    def cautions(self) -> list[str]:
+        """What counts as exact, because the table says nothing about it."""
+        parts = [
+            word
+            for word, u in (("magnitude", self.relative_u), ("phase", self.phase_u))
+            if not u.any()
+        ]
+        if not parts:
+            return []
+        columns = ", ".join(f"u_{word}" for word in parts)
+        return [
+            f"the open-loop gain counts as exact in {' and '.join(parts)}: the table has no {columns}"
+        ]
 
     def to_dict(self) -> dict[str, Any]:
         """Return what a calibration keeps of it."""
@@ -134,6 +170,10 @@ class OpenLoop:
         return np.asarray(np.log(wanted))
 
 
+def _rings(where: str, left: float) -> str:
+    return f"the servo rings {where}: |1 + G| is {left:.2g}, at least {NEAR_ZERO:g} is needed"
+
+
 def load_open_loop(path: str | PathLike[str]) -> OpenLoop:
     """Return the open-loop gain kept in a text table.
 
@@ -141,7 +181,8 @@ def load_open_loop(path: str | PathLike[str]) -> OpenLoop:
     ----------
     path : path
         Columns ``frequency``, ``magnitude``, ``phase`` and, if known, ``u_magnitude`` (of the
-        magnitude itself) and ``u_phase``; the phases' header says ``[deg]`` or ``[rad]``.
+        magnitude itself) and ``u_phase``; the phases' header says ``[deg]`` or ``[rad]``, that of
+        the frequencies ``[mHz]``, ``[Hz]``, ``[kHz]`` or ``[MHz]``.
 
     Returns
     -------
@@ -172,7 +213,14 @@ def load_open_loop(path: str | PathLike[str]) -> OpenLoop:
     turn = _scaled(path, columns, "phase", _RADIANS)
     u_size = _scaled(path, columns, "u_magnitude", dict.fromkeys(_PURE, 1.0), size.size)
     u_turn = _scaled(path, columns, "u_phase", _RADIANS, size.size)
-    _check(path, frequency_hz, size, {"u_magnitude": u_size, "u_phase": u_turn})
+    everything = {
+        "frequency": frequency_hz,
+        "magnitude": size,
+        "phase": turn,
+        "u_magnitude": u_size,
+        "u_phase": u_turn,
+    }
+    _check(path, everything)
     logarithm = np.log(size) + 1j * np.unwrap(turn)
     return OpenLoop(str(path), frequency_hz, logarithm, u_size / size, u_turn)
 
@@ -187,24 +235,24 @@ def _scaled(
     """Return a column in SI units; zeros where it may be missing."""
     if name not in columns:
         return np.zeros(otherwise)
-    values, unit = columns[name][0], columns[name][1].lower()
+    values, unit = columns[name]
     if unit not in units:
-        named = {"phase": "[rad] or [deg]", "frequency": "[Hz] or [kHz]"}
+        named = {"phase": "[rad] or [deg]", "frequency": "[mHz], [Hz], [kHz] or [MHz]"}
         wanted = named.get(name.removeprefix("u_"), "no unit")
-        raise OpenLoopError(f"{path}: column {name!r} must have {wanted}, got [{columns[name][1]}]")
+        raise OpenLoopError(f"{path}: column {name!r} must have {wanted}, got [{unit}]")
     return values * units[unit]
 
 
-def _check(
-    path: str | PathLike[str],
-    frequency_hz: FloatArray,
-    size: FloatArray,
-    uncertainties: dict[str, FloatArray],
-) -> None:
+def _check(path: str | PathLike[str], columns: dict[str, FloatArray]) -> None:
+    frequency_hz = columns["frequency"]
     rules: Sequence[tuple[str, FloatArray, NDArray[np.bool_]]] = (
+        *((f"{name} must be finite", v, ~np.isfinite(v)) for name, v in columns.items()),
         ("frequency must be > 0 Hz", frequency_hz, ~(frequency_hz > 0)),
-        ("magnitude must be > 0", size, ~((size > 0) & np.isfinite(size))),
-        *((f"{name} must be ≥ 0", u, ~(u >= 0)) for name, u in uncertainties.items()),
+        ("magnitude must be > 0", columns["magnitude"], ~(columns["magnitude"] > 0)),
+        *(
+            (f"{name} must be ≥ 0", columns[name], ~(columns[name] >= 0))
+            for name in ("u_magnitude", "u_phase")
+        ),
     )
     for rule, values, broken in rules:
         if broken.any():

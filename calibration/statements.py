@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 
-from calibration.open_loop import OpenLoop
+from calibration.open_loop import SIGN, OpenLoop
 from calibration.realignment import realignment_statement
 from calibration.record import Calibration
 from metro.bench import Bench
@@ -71,7 +71,7 @@ def assumptions(
     held = [
         (
             "a servo held the mirror; the drive was read before the point where it acts, and what its "
-            "open-loop gain took off was restored"
+            f"open-loop gain took off was restored by 1 + G ({SIGN})"
         )
     ]
     return [

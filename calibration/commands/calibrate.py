@@ -48,7 +48,8 @@ def _role_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
     "open_loop_file",
     metavar="FILE",
     help="Table of the open-loop gain of a servo that held the mirror (frequency, magnitude, phase, "
-    "u_magnitude, u_phase), the drive being read before the point where the servo acts.",
+    "u_magnitude, u_phase), the drive being read before the point where the servo acts; a large "
+    "positive gain holds the mirror.",
 )
 @click.option(
     "--routes/--no-routes",

@@ -48,7 +48,7 @@ __all__ = ["convert"]
     "open_loop_file",
     metavar="FILE",
     help="Restore the free displacement that a servo took off: table of its open-loop gain "
-    "(frequency, magnitude, phase, u_magnitude, u_phase).",
+    "(frequency, magnitude, phase, u_magnitude, u_phase); a large positive gain holds the mirror.",
 )
 @click.option(
     "--actuator",

@@ -263,6 +263,38 @@ def test_command_with_filters(session, tmp_path, capsys):
     assert "keeps no response of the actuator between its lines" in capsys.readouterr().err
 
 
+def test_a_ringing_servo_gives_exit_code_one(session, tmp_path, capsys):
+    """|1 + G| = 0.005 all over the band, by hand: what is left is noise, made 200 times larger."""
+    _, files, _, cal = session
+    table, out = tmp_path / "ring.csv", tmp_path / "moved.npz"
+    text = "frequency [Hz],magnitude,phase [deg]\n20,0.995,180\n400,0.995,180\n"
+    table.write_text(text, encoding="utf-8")
+    arguments = ["convert", files["lines_rising"][0], "--calibration", cal, "--out", str(out)]
+    assert run([*arguments, "--open-loop", str(table), "--json"]) == 1
+    told = capsys.readouterr()
+    document = json.loads(told.out)
+    assert [
+        r.split(": ")[1] for r in document["reasons"] if r.startswith("the servo rings at")
+    ] == ["|1 + G| is 0.005, at least 0.1 is needed"]
+    cautions = document["cautions"]
+    assert any("by 1 + G (G is counted such that a large positive one holds" in c for c in cautions)
+    assert any("counts as exact in magnitude and phase" in text for text in cautions)
+    assert "the servo rings at" in told.err
+
+
+def test_a_recording_shorter_than_the_filter_gives_exit_code_one(session, tmp_path, capsys):
+    _, files, _, cal = session
+    volts = open_recording(files["lines_rising"][0]).trace("photodiode").values[:60]
+    bare(tmp_path / "short.csv", volts, "photodiode [V]")
+    table = loop_table(tmp_path / "loop.csv")
+    arguments = ["convert", str(tmp_path / "short.csv"), "--calibration", cal, "--json"]
+    arguments += ["--open-loop", table, "--out", str(tmp_path / "x.npz")]
+    assert run(arguments) == 1
+    document = json.loads(capsys.readouterr().out)
+    assert document["used_fraction"] == 0
+    assert "no sample has the filter's reach of samples around it" in document["reasons"]
+
+
 MEMORY = """
 import resource, sys
 from metro.commandline import run

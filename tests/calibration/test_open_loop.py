@@ -45,6 +45,31 @@ def test_radians_and_kilohertz_are_understood(tmp_path):
     assert loop.terms(10.0)[0].u == 0.0
 
 
+@pytest.mark.parametrize(
+    ("unit", "hertz"), [("mHz", 1e-3), ("Hz", 1.0), ("kHz", 1e3), ("MHz", 1e6)]
+)
+def test_millihertz_are_no_megahertz(tmp_path, unit, hertz):
+    """SI Brochure, 9th edition (2019), table 7: m is 10⁻³, M is 10⁶."""
+    rows = [(10, 5.0, -30), (100, 3.0, -60)]
+    path = written(tmp_path / "a.csv", f"frequency [{unit}],magnitude,phase [deg]", rows)
+    np.testing.assert_allclose(load_open_loop(path).frequency_hz, np.array([10, 100]) * hertz)
+
+
+def test_what_the_table_does_not_say_counts_as_exact_and_is_told(tmp_path):
+    rows = [(10, 5.0, -30, 0.1), (100, 3.0, -60, 0.1)]
+    head = "frequency [Hz],magnitude,phase [deg],u_magnitude"
+    half = load_open_loop(written(tmp_path / "half.csv", head, rows))
+    assert half.cautions == [
+        "the open-loop gain counts as exact in phase: the table has no u_phase"
+    ]
+    bare = load_open_loop(
+        written(tmp_path / "bare.csv", head.removesuffix(",u_magnitude"), [r[:3] for r in rows])
+    )
+    (told,) = bare.cautions
+    assert told.endswith("exact in magnitude and phase: the table has no u_magnitude, u_phase")
+    assert load_open_loop(written(tmp_path / "whole.csv")).cautions == []
+
+
 def test_its_uncertainty_enters_as_a_monte_carlo_says(tmp_path):
     """20000 draws of the gain: u of |1 + G| and of its phase to 3 % (deviation 0.5 %)."""
     loop = load_open_loop(written(tmp_path / "loop.csv"))
@@ -82,6 +107,26 @@ def test_its_uncertainty_enters_as_a_monte_carlo_says(tmp_path):
         ),
         ("frequency,magnitude,phase [deg]", [(2, 2, 3), (1, 2, 3)], "must ascend, got 1 Hz"),
         (
+            "frequency,magnitude,phase [deg]",
+            [(1, 2, np.nan), (2, 2, 3)],
+            "row 1: phase must be finite, got nan",
+        ),
+        (
+            "frequency,magnitude,phase [deg]",
+            [(1, 2, 3), (np.inf, 2, 3)],
+            "row 2: frequency must be finite, got inf",
+        ),
+        (
+            "frequency,magnitude,phase [deg],u_magnitude",
+            [(1, 2, 3, 0.1), (2, 2, 3, np.inf)],
+            "row 2: u_magnitude must be finite, got inf",
+        ),
+        (
+            "frequency [s],magnitude,phase [deg]",
+            [(1, 2, 3), (2, 2, 3)],
+            "column 'frequency' must have [mHz], [Hz], [kHz] or [MHz], got [s]",
+        ),
+        (
             "frequency,magnitude,phase [deg],u_phase [deg]",
             [(1, 2, 3, 1), (2, 2, 3, -1)],
             "u_phase must be ≥ 0, got -0.0174533",
@@ -114,3 +159,15 @@ def test_a_ringing_servo_is_distrusted(tmp_path):
         written(tmp_path / "ring.csv", "frequency [Hz],magnitude,phase [deg]", rows)
     )
     assert loop.reasons(31.7)[0].startswith("the servo rings there: |1 + G| is ")
+
+
+def test_a_band_in_which_the_servo_rings_is_distrusted(tmp_path):
+    """G = −1 between two rows, by hand: 0.5 and 2 at −180° are 1 at the geometric mean, 40 Hz."""
+    rows = [(10, 0.5, -180), (160, 2.0, -180)]
+    loop = load_open_loop(
+        written(tmp_path / "ring.csv", "frequency [Hz],magnitude,phase [deg]", rows)
+    )
+    (reason,) = loop.band_reasons(10.0, 160.0)
+    assert reason.startswith("the servo rings at ")
+    assert float(reason.split()[4]) == pytest.approx(40.0, rel=0.02)
+    assert loop.band_reasons(10.0, 20.0) == []

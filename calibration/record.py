@@ -22,7 +22,15 @@ from metro.measured import Measured
 from metro.notebook import NotebookPage, maybe_figure
 from metro.output import plain
 
-__all__ = ["FORMAT", "VERSION", "ActuatorEntry", "Calibration", "CalibrationFileError", "load"]
+__all__ = [
+    "FORMAT",
+    "VERSION",
+    "ActuatorEntry",
+    "Calibration",
+    "CalibrationFileError",
+    "load",
+    "parse",
+]
 
 FORMAT = "midfringe calibration"
 VERSION = 1
@@ -238,9 +246,37 @@ def load(path: str | Path) -> Calibration:
     """
     try:
         text = Path(path).read_text(encoding="utf-8")
-        document = json.loads(text, parse_constant=_refused, parse_float=_finite)
     except OSError as error:
         raise CalibrationFileError(f"{path}: {error.strerror or error}") from None
+    except ValueError as error:
+        raise CalibrationFileError(f"{path} is no JSON document: {error}") from None
+    return parse(text, path)
+
+
+def parse(text: str, path: str | Path) -> Calibration:
+    """Return the calibration in the text of a file.
+
+    Parameters
+    ----------
+    text : str
+        JSON, written by ``midfringe calibrate``.
+    path : str or Path
+        Where it comes from, for messages.
+
+    Returns
+    -------
+    Calibration
+        With every measured value and its degrees of freedom.
+
+    Raises
+    ------
+    CalibrationFileError
+        As for `load`.
+    MissingExtraError
+        If jsonschema is not installed.
+    """
+    try:
+        document = json.loads(text, parse_constant=_refused, parse_float=_finite)
     except (ValueError, RecursionError) as error:
         raise CalibrationFileError(f"{path} is no JSON document: {error}") from None
     try:

@@ -9,8 +9,7 @@ from typing import Any
 
 from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.utc import parse_time
-from calibration.errors import CalibrationError
-from calibration.record import Calibration
+from calibration.record import Calibration, CalibrationFileError, parse
 from metro.measured import Measured
 
 __all__ = ["CalibrationEntry"]
@@ -59,17 +58,19 @@ class CalibrationEntry:
         Raises
         ------
         LedgerError
-            If the file cannot be read or is no calibration.
+            If the file cannot be read, is no calibration or breaks the schema.
+        MissingExtraError
+            If jsonschema is not installed.
         """
         try:
             text = Path(path).read_text(encoding="utf-8")
-            calibration = Calibration.from_dict(json.loads(text))
+            calibration = parse(text, path)
         except OSError as error:
             raise LedgerError(f"{path}: {(error.strerror or str(error)).lower()}") from None
         except ValueError as error:
             raise LedgerError(f"{path} is no JSON document: {error}") from None
-        except CalibrationError as error:
-            raise LedgerError(f"{path}: {error}") from None
+        except CalibrationFileError as error:
+            raise LedgerError(str(error)) from None
         return cls(calibration, text, str(path), bench)
 
     @property

@@ -239,3 +239,22 @@ def test_what_lines_writes_of_a_recording_says_when_it_was(capsys, tmp_path):
     assert code == 0
     half_s = 0.5 * document["duration"]["value"]
     assert unix_of(entry["time"]) == pytest.approx(begun_s + 2.0 + half_s, abs=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("broken", "told"),
+    [
+        (
+            lambda d: d["chain"]["wavelength"].update(value=0.0),
+            "$.chain.wavelength.value must be > 0",
+        ),
+        (lambda d: d.update(actuator=[]), "$.actuator must have at least 1 entries"),
+    ],
+)
+def test_a_calibration_that_breaks_the_schema_is_not_added(capsys, tmp_path, broken, told):
+    document = sample_calibration(tmp_path).calibration.to_dict()
+    broken(document)
+    file, place = tmp_path / "broken.json", tmp_path / "new.ledger"
+    file.write_text(json.dumps(document))
+    assert told in refused(capsys, "add", file, "--ledger", place)
+    assert not place.exists()

@@ -2,8 +2,9 @@
 
 import math
 from abc import ABC, abstractmethod
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,8 +13,11 @@ from firmware_bridge.channel import Channel, find_channel
 from firmware_bridge.gap import Gap
 from firmware_bridge.span import Block, Span, SpanError
 from firmware_bridge.timing import BY_BOARD, Timing
+from metro.notebook import NotebookPage, maybe_figure
 
 __all__ = ["Recording", "Trace"]
+
+_SHOWN_SAMPLES = 20_000_000  # drawn in a notebook within a second or two
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -56,7 +60,7 @@ class Trace:
         return (self.start_index + np.arange(self.values.size)) / self.rate_hz
 
 
-class Recording(ABC):
+class Recording(NotebookPage, ABC):
     """A recording on a regular grid: ``length`` samples at ``rate_hz``, gaps included.
 
     Subclasses say what the file holds and implement `read`.
@@ -118,6 +122,31 @@ class Recording(ABC):
         self.columns = tuple(columns or range(1, len(self.channels) + 1))
         self.start_unix_s = start_unix_s
         self.timing = timing
+
+    def notebook_tables(self) -> list[tuple[Sequence[str], Iterable[Sequence[Any]]]]:
+        """Return what the recording holds, and its channels."""
+        held = [
+            ("recording", f"{self.path} ({self.format})"),
+            ("samples", f"{self.length} at {self.rate_hz:.9g} Hz"),
+            ("duration", f"{self.duration_s:.6g} s"),
+            ("gaps", f"{len(self.gaps)} ({sum(gap.length for gap in self.gaps)} samples)"),
+            ("over range", f"{self.over_range} values"),
+            *(("remark", remark) for remark in self.remarks),
+        ]
+        channels = [
+            (number, channel.name, "counts" if channel.unit == "1" else channel.unit)
+            for number, channel in zip(self.columns, self.channels, strict=True)
+        ]
+        return [((), held), (("column", "channel", "unit"), channels)]
+
+    def notebook_figure(self) -> Any:  # noqa: ANN401  # matplotlib's Figure or None
+        """Return every channel at a glance; None where reading it all would take long."""
+        if self.length > _SHOWN_SAMPLES:
+            return None
+        from firmware_bridge.inspection import inspect_recording
+        from firmware_bridge.inspection_plot import inspection_figure
+
+        return maybe_figure(lambda: inspection_figure(self, inspect_recording(self)))
 
     @property
     def duration_s(self) -> float:

@@ -56,6 +56,14 @@ def test_spectrum(tmp_path, record):
     assert (rows[:, 2] > 0).all()
 
 
+def test_recording(tmp_path, record):
+    np.savez(tmp_path / "x.npz", light=record, rate=RATE_HZ)
+    page = open_recording(tmp_path / "x.npz", rate="4 kHz")._repr_html_()
+    assert "40000 at 4000 Hz" in page
+    assert "light" in page
+    assert "data:image/png" in page
+
+
 def test_fringe():
     t = np.arange(20000) / RATE_HZ
     noise = np.random.default_rng(5).normal(0, 1e-3, t.size)

@@ -1,11 +1,13 @@
 """A matplotlib figure into a file, whole or not at all."""
 
 from collections.abc import Iterable
+from importlib.util import find_spec
 from io import BytesIO
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from metro.errors import MetroError
+from metro.extras import require
 from metro.whole_file import check_writable, write_whole
 
 if TYPE_CHECKING:
@@ -66,12 +68,16 @@ def check_figure(
     ------
     FigureError
         If the suffix is none of PNG, PDF and SVG.
+    MissingExtraError
+        If there is nothing to draw with.
     OutputError
         If the file exists, is an input or cannot be written.
     """
     if _suffix(path) not in _FORMATS:
         raise FigureError(f"--plot must end in .png, .pdf or .svg, got {str(path)!r}")
     check_writable(path, overwrite, inputs)
+    if find_spec("matplotlib") is None:  # looked for, not loaded: what is refused costs no second
+        require("matplotlib.figure", "bench", "--plot")
 
 
 def _suffix(path: str | Path) -> str:

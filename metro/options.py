@@ -136,9 +136,24 @@ def output_options(*names: str) -> Callable[[F], F]:
         for name in reversed(names):
             declarations, settings = _OUTPUT[name]
             function = click.option(*declarations, **settings)(function)  # type: ignore[arg-type]  # one table for all
-        return function
+        return _with_own_files(function) if {"out", "plot"} <= set(names) else function
 
     return add
+
+
+def _with_own_files(function: F) -> F:
+    """Refuse one file for two outputs, and say of a failed one what was written before it."""
+
+    @functools.wraps(function)
+    def with_own_files(*args: Any, **kwargs: Any) -> Any:  # noqa: ANN401  # any command
+        from metro.output_files import check_distinct, telling_what_is_kept
+
+        files = {f"--{name}": kwargs.get(name) for name in ("out", "plot")}
+        check_distinct(files)
+        with telling_what_is_kept(files):
+            return function(*args, **kwargs)
+
+    return with_own_files  # type: ignore[return-value]  # the same signature
 
 
 def _remember(meta: str, ctx: click.Context, param: click.Parameter, value: bool) -> None:  # noqa: ARG001  # click's callback

@@ -115,6 +115,8 @@ def _clash(path: Path, inputs: Iterable[str | os.PathLike[str] | None]) -> str:
 def _problem(path: Path, overwrite: bool) -> str:
     """Return why a file cannot be written; empty where nothing speaks against it."""
     parent = path.parent
+    if os.fspath(path) == "-":
+        return "an output must be a file, got '-'; --json writes to standard output"
     if path.is_dir():
         return f"cannot write {path}: it is a directory"
     if _is_device(path):

@@ -3,7 +3,6 @@
 import time
 
 from firmware_bridge.drive_desk import DriveDesk
-from firmware_bridge.errors import BridgeError
 from firmware_bridge.lock_in_start import LockInStart, result_every_s
 from firmware_bridge.message import CommandCode, encode_command
 from firmware_bridge.port import ByteSource
@@ -88,14 +87,11 @@ class BoardTalk:
         """Send what is due for the drive."""
         if self._desk is None:
             return
-        try:
-            requests = self._desk.due(self._intake.announcement)
-        except BridgeError as error:
-            self._watch.refused(str(error))
-            return
-        for code, arguments in requests:
+        for code, arguments in self._desk.due(self._intake.announcement):
             self._desk.sent(self._request + 1, code)
-            self._say(code, arguments)
+            self._say(code, arguments)  # whatever becomes of it: without an answer it is repeated
+        for reason in self._desk.refusals():
+            self._watch.refused(reason)
         for notice in self._desk.notices():
             self._watch.notice(notice)
 

@@ -1,19 +1,25 @@
 """Between those who want drive lines and the port: what is due to be sent, what was answered."""
 
+import contextlib
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 
 from firmware_bridge.announcement import Announcement
 from firmware_bridge.arguments import clear_arguments
+from firmware_bridge.board_lines import BoardLines, SentLine
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines, Request, rest_requests
 from firmware_bridge.errors import BridgeError
+from firmware_bridge.live_events import LiveLines
 from firmware_bridge.message import CommandCode, Reply
 
 __all__ = ["DriveDesk"]
 
 _SETTLE_S = 0.3  # slew, and the filters behind the drive
 _ANSWER_S = 5.0
+_REPEAT_S = 0.5  # a command without an answer is sent again
+_ROUNDING = 1e-12  # sums of the same amplitudes in another order
+_REST = frozenset((CommandCode.CLEAR_LINE, CommandCode.RAMP))
 _UNKNOWN = 1  # status of a reply
 _NAMES = {
     CommandCode.SET_LINE: "set line",
@@ -25,6 +31,11 @@ _NAMES = {
 class DriveDesk:
     """Keep the wanted lines and what is still to be sent; every method may be called by any thread.
 
+    Whatever is asked in whatever order, and whichever commands or answers are lost: what the board
+    may drive stays within the limit. A line waits until those it replaces are confirmed to be
+    gone. Rest is sent before everything, again and again until the board has confirmed it, and no
+    line before that.
+
     Parameters
     ----------
     lines : DriveLines
@@ -33,19 +44,34 @@ class DriveDesk:
         Set the lines again whenever the board or the port has been away, and wait for its answers
         before the first sample is kept: for a recording with given lines. Otherwise the drive
         is brought to rest whenever the port has been opened and stays there until a line is set.
+    tell : callable, optional
+        Takes `LiveLines` at every change.
     """
 
-    def __init__(self, lines: DriveLines, *, is_held: bool) -> None:
-        self._lines, self._is_held = lines, is_held
-        self._lock = threading.Lock()
+    def __init__(
+        self,
+        lines: DriveLines,
+        *,
+        is_held: bool,
+        tell: Callable[[LiveLines], None] | None = None,
+    ) -> None:
+        self._lines, self._is_held, self._tell = lines, is_held, tell
+        self._lock = threading.RLock()
+        self._board = BoardLines()
         self._stream: int | None = None
-        self._due: list[int] = []  # slots to be set or cleared
-        self._rests = not is_held
-        self._open: dict[int, CommandCode] = {}  # requests without an answer
-        self._sent_s: float | None = None
-        self._since_s = time.monotonic()
+        self._due: list[int] = list(lines.lines)  # slots to be set or cleared
+        self._rest_open: frozenset[CommandCode] = _REST  # what of a rest is not confirmed
+        self._rest_serial = 0  # from which on answers count for it
+        self._rest_s: float | None = None  # when it was made last
+        self._asked_s: dict[int, float] = {}  # since when a slot's line has no answer
+        self._is_away = False
+        self._sent_s: float | None = None  # the last one
+        self._first_s: float | None = None  # and the first one since the port was away
         self._was_settled = False
+        self._orders = 0
+        self._told: LiveLines | None = None
         self._notices: list[str] = []
+        self._refusals: list[str] = []
 
     @property
     def are_any(self) -> bool:
@@ -61,10 +87,17 @@ class DriveDesk:
             From 0.
         line : DriveLine
             What it shall be.
+
+        Raises
+        ------
+        DriveError
+            Also while the port is away: nobody could tell when it would be set.
         """
         with self._lock:
+            if self._is_away:
+                raise DriveError("the port is gone, so no line is set")
             self._lines.set(slot, line)
-            self._due.append(slot)
+            self._want(slot)
 
     def clear(self, slot: int) -> None:
         """Want no line in this slot.
@@ -76,19 +109,54 @@ class DriveDesk:
         """
         with self._lock:
             self._lines.clear(slot)
-            self._due.append(slot)
+            self._want(slot)
+
+    def _want(self, slot: int) -> None:
+        self._asked_s.pop(slot, None)
+        self._due.append(slot)
+        self._show()
 
     def rest(self) -> None:
         """Want the drive at rest, before anything else that waits."""
         with self._lock:
             self._lines.lines = {}
             self._due.clear()
-            self._rests = True
+            self._asked_s.clear()
+            self._rest_again()
+            self._show()
+
+    def _rest_again(self) -> None:
+        self._rest_open, self._rest_s = _REST, None
+        self._rest_serial = self._board.serial  # answers to what was sent before do not count
+
+    def took(self, order: int) -> None:
+        """Take note that an order has been obeyed or refused, and tell.
+
+        Parameters
+        ----------
+        order : int
+            Its number.
+        """
+        with self._lock:
+            self._orders = order
+            self._show()
+
+    def _show(self) -> None:
+        if self._tell is None:
+            return
+        is_at_rest = not self._rest_open and not self._board.largest
+        seen = LiveLines(self._board.largest, dict(self._lines.lines), is_at_rest, self._orders)
+        if seen != self._told:
+            self._told = seen
+            self._tell(seen)  # under the lock: so they come in order
 
     def away(self) -> None:
         """Take note that the port was away."""
         with self._lock:
+            self._is_away, self._first_s = True, None
             self._restart()
+            self._rest_again()
+            self._show()
 
     def notices(self) -> list[str]:
         """Return what has happened to the lines since the last time.
@@ -102,6 +170,18 @@ class DriveDesk:
             notices, self._notices = self._notices, []
             return notices
 
+    def refusals(self) -> list[str]:
+        """Return why lines were not sent since the last time.
+
+        Returns
+        -------
+        list of str
+            For people; such a line is no longer wanted, and what its slot held before still is.
+        """
+        with self._lock:
+            refusals, self._refusals = self._refusals, []
+            return refusals
+
     def due(self, announcement: Announcement | None) -> list[Request]:
         """Return what is to be sent now.
 
@@ -113,28 +193,30 @@ class DriveDesk:
         Returns
         -------
         list of Request
-            Rest first.
-
-        Raises
-        ------
-        BridgeError
-            If the board cannot do what is wanted; that line is then no longer wanted.
+            Rest first. What cannot be sent is told by `refusals`.
         """
         with self._lock:
             if announcement is None:
                 return []
+            self._is_away = False
             if announcement.stream != self._stream:
-                if self._stream is not None or self._is_held:
+                if self._stream is not None:
                     self._restart()
                 self._stream = announcement.stream
-            requests = self._lines_of_rest(announcement)
-            slots, self._due = self._due, []
-            for slot in dict.fromkeys(slots):
-                requests.append(self._request(slot, announcement))
+            now_s = time.monotonic()
+            requests = self._requests_of_rest(announcement, now_s)
+            overdue = self._board.overdue(now_s - _REPEAT_S)
+            self._due = list(dict.fromkeys([*self._due, *overdue]))
+            self._give_up(now_s)
+            self._refuse(announcement)
+            if not self._rest_open:
+                requests += self._requests_of_lines(announcement, now_s)
+            self._show()
             return requests
 
     def _restart(self) -> None:
-        self._open.clear()
+        """Set held lines again, as the board counts anew; forget others."""
+        self._asked_s.clear()
         if self._is_held:
             self._due = list(self._lines.lines)
             if self._was_settled:
@@ -143,26 +225,84 @@ class DriveDesk:
                 )
             return
         if self._lines.lines:
-            self._notices.append("the board or its port was away; its drive is at rest")
-        self._lines.lines, self._due, self._rests = {}, [], True
+            self._notices.append("the board or its port was away; its drive is brought to rest")
+        self._lines.lines, self._due = {}, []
+        self._rest_again()
 
-    def _lines_of_rest(self, announcement: Announcement) -> list[Request]:
-        if not self._rests:
+    def _requests_of_rest(self, announcement: Announcement, now_s: float) -> list[Request]:
+        is_made = self._rest_s is not None and now_s - self._rest_s < _REPEAT_S
+        if not self._rest_open or is_made:
             return []
-        self._rests = False
-        return rest_requests(announcement.rate_hz)
+        self._rest_s = now_s
+        requests = rest_requests(announcement.rate_hz)
+        for code, _ in requests:
+            self._board.make(code, None, None, now_s)
+        return requests
 
-    def _request(self, slot: int, announcement: Announcement) -> Request:
-        if slot not in self._lines.lines:
-            return CommandCode.CLEAR_LINE, clear_arguments(slot)
-        try:
-            return self._lines.request(slot, announcement)
-        except BridgeError:
+    def _refuse(self, announcement: Announcement) -> None:
+        """Take back what cannot be: each line by itself, and the youngest beyond the limit."""
+        for slot in reversed(self._due.copy()):
+            line = self._lines.lines.get(slot)
+            if line is None:
+                continue
+            try:
+                self._lines.request(slot, announcement)
+                before = self._board.last(slot)
+                if before is None or before.amplitude_v < line.amplitude_v:
+                    self._lines.set(slot, line)  # others may have been restored since
+            except BridgeError as error:
+                self._refusals.append(str(error))
+                self._due.remove(slot)
+                self._restore(slot)
+
+    def _restore(self, slot: int) -> None:
+        """Want again what a slot holds as far as is known; where it is not, want none."""
+        refused, before = self._lines.lines.get(slot), self._board.last(slot)
+        kept = {k: line for k, line in self._lines.lines.items() if k != slot}
+        if before is not None and before == refused:  # sent once without an answer
+            self._due.append(slot)
+        elif before is not None:
+            kept[slot] = before
+        self._lines.lines = kept
+        self._asked_s.pop(slot, None)
+
+    def _requests_of_lines(self, announcement: Announcement, now_s: float) -> list[Request]:
+        slots, self._due = self._due, []
+        requests = []
+        for slot in slots:
+            line = self._lines.lines.get(slot)
+            if line is None:
+                code, arguments = CommandCode.CLEAR_LINE, clear_arguments(slot)
+            elif self._fits(slot, line):
+                code, arguments = self._lines.request(slot, announcement)
+                self._asked_s.setdefault(slot, now_s)
+            else:
+                self._due.append(slot)  # until those it replaces are confirmed to be gone
+                continue
+            self._board.make(code, slot, line, now_s)
+            requests.append((code, arguments))
+        return requests
+
+    def _fits(self, slot: int, line: DriveLine) -> bool:
+        limit_v = self._lines.limit_v
+        return limit_v is not None and (
+            self._board.peak_v(slot, line) <= limit_v * (1.0 + _ROUNDING)
+        )
+
+    def _give_up(self, now_s: float) -> None:
+        """Clear a line to which the board does not answer; a held one ends the recording."""
+        for slot, since_s in list(self._asked_s.items()):
+            if self._is_held or now_s - since_s < _ANSWER_S:
+                continue
+            del self._asked_s[slot]
             self._lines.clear(slot)
-            raise
+            self._due = list(dict.fromkeys([*self._due, slot]))
+            self._refusals.append(
+                f"the board does not answer to set line for {_ANSWER_S:g} s; it is cleared"
+            )
 
     def sent(self, number: int, code: CommandCode) -> None:
-        """Take note of what was sent.
+        """Take note of what was sent, in the order of `due`.
 
         Parameters
         ----------
@@ -172,10 +312,9 @@ class DriveDesk:
             What it asks.
         """
         with self._lock:
-            self._open[number % 65536] = code
+            self._board.number(number, code)
             self._sent_s = time.monotonic()
-            while len(self._open) > 256:  # of a board that never answers
-                del self._open[next(iter(self._open))]
+            self._first_s = self._first_s or self._sent_s
 
     def heard(self, reply: Reply) -> tuple[str, bool] | None:
         """Return what the board says to a command of this desk, and whether it refuses it.
@@ -191,14 +330,35 @@ class DriveDesk:
             One line; None if the command was not ours.
         """
         with self._lock:
-            code = self._open.pop(reply.request, None)
-        if code is None or code != reply.code:
-            return None
+            code = next((code for code in _NAMES if code == reply.code), None)
+            if code is None:
+                return None
+            sent = self._board.answered(reply.request, code, is_done=not reply.status)
+            if sent is None:
+                return None
+            self._follow(sent, reply.status)
+            self._show()
         if not reply.status:
             return f"{_NAMES[code]}: done", False
+        if reply.status == _UNKNOWN and code == CommandCode.RAMP:
+            return "the board's drive has no offset", False
         if reply.status == _UNKNOWN:
             return "the board has no drive lines", True
         return f"the board refuses to {_NAMES[code]}: {reply.text or 'without a reason'}", True
+
+    def _follow(self, sent: SentLine, status: int) -> None:
+        """Draw the conclusions from an answer."""
+        if sent.slot is None:
+            # a board that knows no such command has nothing that could be brought to rest
+            if status in (0, _UNKNOWN) and sent.serial >= self._rest_serial:
+                self._rest_open -= {sent.code}
+            if not self._rest_open:
+                self._board.rested()
+            return
+        if self._lines.lines.get(sent.slot) == sent.line:
+            self._asked_s.pop(sent.slot, None)
+            if status and sent.line is not None:  # nothing has changed
+                self._restore(sent.slot)
 
     def is_settled(self) -> bool:
         """Return whether the first samples may be kept: all lines are set, and a moment has passed.
@@ -217,10 +377,10 @@ class DriveDesk:
             return True
         now_s = time.monotonic()
         with self._lock:
-            answered = self._sent_s is not None and not self._open and not self._due
-            self._was_settled = answered and now_s - (self._sent_s or now_s) >= _SETTLE_S
-            waits_s = now_s - (self._since_s if self._sent_s is None else self._sent_s)
-        if not answered and self._sent_s is not None and waits_s > _ANSWER_S:
+            is_done = self._board.is_answered and not self._due and not self._rest_open
+            self._was_settled = is_done and now_s - (self._sent_s or now_s) >= _SETTLE_S
+            waits_s = now_s - (self._first_s or now_s)
+        if not is_done and waits_s > _ANSWER_S:
             raise DriveError(f"the board does not answer to set line for {_ANSWER_S:g} s")
         return self._was_settled
 
@@ -235,13 +395,14 @@ class DriveDesk:
         Yields
         ------
         tuple of float and list of Request
-            None where no line was ever set.
+            None where nothing was ever sent.
         """
         with self._lock:
             if announcement is None or self._sent_s is None:
                 return
-            try:
-                steps = list(self._lines.fall(announcement))
-            except BridgeError:  # a line this board cannot have was never set
-                steps = [(0.0, rest_requests(announcement.rate_hz))]
+            steps = [(0.0, rest_requests(announcement.rate_hz))]
+            falling = self._lines.holding(self._board.sure)
+            if falling.lines:
+                with contextlib.suppress(BridgeError):  # of a board that is another one by now
+                    steps = list(falling.fall(announcement))
         yield from steps

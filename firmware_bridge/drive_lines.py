@@ -149,6 +149,23 @@ class DriveLines:
         """
         self.lines = {k: line for k, line in self.lines.items() if k != slot}
 
+    def holding(self, lines: dict[int, DriveLine]) -> "DriveLines":
+        """Return other lines under the same limit and factor.
+
+        Parameters
+        ----------
+        lines : dict of int to DriveLine
+            By slot.
+
+        Returns
+        -------
+        DriveLines
+            Not checked against the limit.
+        """
+        other = DriveLines(self.limit_v, self._factor)
+        other.lines = dict(lines)
+        return other
+
     def description(self) -> str:
         """Return the lines in words, for the header of a recording.
 

@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from firmware_bridge.announcement import Announcement, ChannelInfo
-from firmware_bridge.drive_lines import full_scale_v
+from firmware_bridge.drive_lines import DriveLine, full_scale_v
 from firmware_bridge.samples_frame import Samples
 
 __all__ = [
@@ -15,6 +15,7 @@ __all__ = [
     "LiveChannels",
     "LiveEvent",
     "LiveGap",
+    "LiveLines",
     "LiveRecording",
     "LiveReply",
     "LiveState",
@@ -143,7 +144,30 @@ class LiveReply:
     refused: bool = field(default=False)
 
 
-LiveEvent = LiveChannels | LiveBlock | LiveGap | LiveState | LiveRecording | LiveReply
+@dataclass(frozen=True, slots=True)
+class LiveLines:
+    """The lines of the drive, told at every change of them.
+
+    Parameters
+    ----------
+    lines : dict of int to DriveLine
+        The largest that each of the board's slots may hold, by its answers.
+    wanted : dict of int to DriveLine
+        What the slots shall hold in the end.
+    is_at_rest : bool
+        Whether the board has confirmed that all lines are cleared and the offset goes to 0, and no
+        line has been sent since.
+    orders : int
+        Number of the last order that is taken account of here.
+    """
+
+    lines: dict[int, DriveLine]
+    wanted: dict[int, DriveLine]
+    is_at_rest: bool = False
+    orders: int = 0
+
+
+LiveEvent = LiveChannels | LiveBlock | LiveGap | LiveState | LiveRecording | LiveReply | LiveLines
 
 
 def channels_of(announcement: Announcement) -> LiveChannels:

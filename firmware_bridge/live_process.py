@@ -38,12 +38,13 @@ class LiveOptions:
 
 @dataclass(frozen=True, slots=True)
 class Order:
-    """What the viewer asks: "record", "end", "set", "clear", "rest" or "close"."""
+    """What the viewer asks: "record", "end", "set", "clear", "rest" or "close"; numbered."""
 
     what: str
     path: Path | None = None
     slot: int = 0
     line: DriveLine | None = None
+    number: int = 0
 
 
 class _AbsentPort:
@@ -96,7 +97,10 @@ def _run(
     info = {"source": "frames"} if framer is None else framer.origin
     info["port"] = source.name
     intake = LiveIntake(pipe.put, info, options.text)
-    desk = DriveDesk(DriveLines(options.drive_limit_v, options.terminal_factor), is_held=False)
+    lines = DriveLines(options.drive_limit_v, options.terminal_factor)
+    desk = DriveDesk(lines, is_held=False, tell=pipe.put)
+    if isinstance(source, _AbsentPort):
+        desk.away()
     if not isinstance(source, _AbsentPort):
         intake.state("waiting", "the port is open and the board has sent nothing yet")
     listener = threading.Thread(
@@ -131,6 +135,7 @@ def _listen(
                 _obey(order, intake, desk)
             except BridgeError as error:
                 intake.reply(str(error), refused=True)
+            desk.took(order.number)
     stop.set()
 
 

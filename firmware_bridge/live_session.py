@@ -1,5 +1,6 @@
 """A port held by a process of its own: look on, record and drive without ever being in its way."""
 
+from dataclasses import replace
 from pathlib import Path
 from types import TracebackType
 from typing import Self
@@ -11,6 +12,7 @@ from firmware_bridge.live_events import (
     LiveChannels,
     LiveEvent,
     LiveGap,
+    LiveLines,
     LiveRecording,
     LiveReply,
     LiveState,
@@ -24,6 +26,7 @@ __all__ = [
     "LiveChannels",
     "LiveEvent",
     "LiveGap",
+    "LiveLines",
     "LiveRecording",
     "LiveReply",
     "LiveSession",
@@ -73,6 +76,7 @@ class LiveSession:
         self._options = LiveOptions(port, baud, text, reconnect, drive_limit_v, terminal_factor)
         self._folder = Path(folder)
         self._process = PortProcess(self._options)
+        self._orders = 0
 
     def start(self) -> Self:
         """Start the process that holds the port; what it finds there comes by `poll`.
@@ -146,8 +150,8 @@ class LiveSession:
 
     def set_line(
         self, slot: int, frequency_hz: float, amplitude_v: float, phase_rad: float = 0.0
-    ) -> None:
-        """Set a line of the drive; what the board says comes as `LiveReply`.
+    ) -> int:
+        """Set a line of the drive; what the board says comes as `LiveReply` and `LiveLines`.
 
         Parameters
         ----------
@@ -160,32 +164,50 @@ class LiveSession:
         phase_rad : float
             At the board's sample 0 [rad].
 
+        Returns
+        -------
+        int
+            Number of the order; see `LiveLines`.
+
         Raises
         ------
         DriveError
-            If it is no line, or beyond the limit together with the others.
+            If it is no line, or by itself beyond the limit.
         """
         if self._options.text:
             raise DriveError("drive lines need a board that sends frames, not text")
         line = DriveLine(frequency_hz, amplitude_v, phase_rad)
         # The other process checks again, with the lines that are truly set.
         DriveLines(self._options.drive_limit_v).set(slot, line)
-        self._order(Order("set", slot=slot, line=line))
+        return self._order(Order("set", slot=slot, line=line))
 
-    def clear_line(self, slot: int) -> None:
+    def clear_line(self, slot: int) -> int:
         """Take a line out of the drive.
 
         Parameters
         ----------
         slot : int
             Which, from 0.
+
+        Returns
+        -------
+        int
+            Number of the order.
         """
-        self._order(Order("clear", slot=slot))
+        return self._order(Order("clear", slot=slot))
 
-    def rest(self) -> None:
-        """Bring the drive to rest, before anything else that was asked."""
-        self._order(Order("rest"))
+    def rest(self) -> int:
+        """Bring the drive to rest, before anything else that was asked.
 
-    def _order(self, order: Order) -> None:
-        if not self._process.send(order):
-            raise BridgeError(f"the process that held {self._options.port} has ended")
+        Returns
+        -------
+        int
+            Number of the order; `LiveLines` tells when the board has confirmed it.
+        """
+        return self._order(Order("rest"))
+
+    def _order(self, order: Order) -> int:
+        self._orders += 1
+        if self._process.send(replace(order, number=self._orders)):
+            return self._orders
+        raise BridgeError(f"the process that held {self._options.port} has ended")

@@ -10,7 +10,7 @@ from calibration.record import Calibration
 from firmware_bridge.trace import Recording
 from metro.kernel.photodiode import step_v
 
-__all__ = ["ChannelVolts", "channel_volts"]
+__all__ = ["ChannelVolts", "channel_volts", "volts_of"]
 
 _LOOKED_AT = 4096  # samples, to tell counts from volts
 
@@ -41,7 +41,7 @@ class ChannelVolts:
 
 
 def channel_volts(recording: Recording, position: int, calibration: Calibration) -> ChannelVolts:
-    """Return how a channel becomes volts.
+    """Return how a channel of a recording becomes volts.
 
     Parameters
     ----------
@@ -49,6 +49,38 @@ def channel_volts(recording: Recording, position: int, calibration: Calibration)
         The recording.
     position : int
         Of the channel.
+    calibration : Calibration
+        Keeps the converter's bits and range, where the bench gave them.
+
+    Returns
+    -------
+    ChannelVolts
+        As `volts_of` says.
+
+    Raises
+    ------
+    CalibrationError
+        If the channel has another unit.
+    """
+    channel = recording.channels[position]
+    values = recording.read([position], 0, min(_LOOKED_AT, recording.length)).values[:, 0]
+    try:
+        return volts_of(channel.name, channel.unit, values, calibration)
+    except CalibrationError as error:
+        raise CalibrationError(f"{recording.path}: {error}") from None
+
+
+def volts_of(
+    name: str, unit: str, values: NDArray[np.float64], calibration: Calibration
+) -> ChannelVolts:
+    """Return how a channel becomes volts.
+
+    Parameters
+    ----------
+    name, unit : str
+        Of the channel.
+    values : ndarray, shape (n,)
+        Some of its samples, NaN where missing.
     calibration : Calibration
         Keeps the converter's bits and range, where the bench gave them.
 
@@ -63,21 +95,18 @@ def channel_volts(recording: Recording, position: int, calibration: Calibration)
     CalibrationError
         If the channel has another unit.
     """
-    channel = recording.channels[position]
-    if channel.unit == "V":
+    if unit == "V":
         return ChannelVolts()
-    if channel.unit != "1":
-        raise CalibrationError(
-            f"{recording.path}: {channel.name!r} must be in V, got {channel.unit}"
-        )
+    if unit != "1":
+        raise CalibrationError(f"{name!r} must be in V, got {unit}")
     bits, range_v = calibration.chain.get("adc_bits"), calibration.chain.get("adc_range")
-    values = recording.read([position], 0, min(_LOOKED_AT, recording.length)).values[:, 0]
+    values = values[:_LOOKED_AT]
     values = values[np.isfinite(values)]
     if bits is None or range_v is None or (values != np.rint(values)).any():
-        return ChannelVolts(caution=f"{channel.name!r} has no unit: it is taken as volts")
+        return ChannelVolts(caution=f"{name!r} has no unit: it is taken as volts")
     offset = calibration.chain.get("adc_offset")
     return ChannelVolts(
         scale=step_v(float(range_v.magnitude), float(bits.magnitude)),
         offset_v=0.0 if offset is None else float(offset.magnitude),
-        caution=f"{channel.name!r} has no unit and holds whole numbers: it is taken as ADC counts",
+        caution=f"{name!r} has no unit and holds whole numbers: it is taken as ADC counts",
     )

@@ -13,16 +13,16 @@ from numpy.typing import NDArray
 
 from calibration.band_filter import ABOVE, BELOW, BandFilter, design_filter
 from calibration.errors import CalibrationError
+from calibration.kept_readout import kept_readout
 from calibration.open_loop import SIGN, OpenLoop
 from calibration.record import Calibration
-from metro.readout import Pole, Readout
+from metro.readout import Readout
 
-__all__ = ["CORNERS", "UNREACHED", "FilterStage", "actuator_stage", "loop_stage", "readout_stage"]
+__all__ = ["UNREACHED", "FilterStage", "actuator_stage", "loop_stage", "readout_stage"]
 
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
-CORNERS = ("amplifier_corner", "antialias_corner")
 UNREACHED = "no sample has the filter's reach of samples around it"
 _GRID = 64  # frequencies of the band at which the largest u is looked for
 
@@ -79,7 +79,7 @@ def readout_stage(calibration: Calibration, rate_hz: float) -> FilterStage:
     CalibrationError
         If the calibration keeps no corner.
     """
-    electronics = _electronics(calibration)
+    electronics = kept_readout(calibration)
     poles = electronics.poles
     if not poles:
         raise CalibrationError(
@@ -142,7 +142,7 @@ def actuator_stage(calibration: Calibration, rate_hz: float) -> FilterStage:
             "the calibration keeps no response of the actuator between its lines (it takes at "
             "least three lines and a recorded drive)"
         )
-    volts, electronics = float(factor.magnitude), _electronics(calibration)
+    volts, electronics = float(factor.magnitude), kept_readout(calibration)
 
     def moved(at_hz: FloatArray) -> ComplexArray:
         read = [
@@ -174,21 +174,6 @@ def _drive_text(electronics: Readout) -> str:
         return text
     listed = " and ".join([", ".join(undone[:-1]), undone[-1]] if undone[1:] else undone)
     return f"{text}, with its channel's {listed} undone,"
-
-
-def _electronics(calibration: Calibration) -> Readout:
-    """Return amplifier, anti-alias filter, aperture and channel delay as a calibration keeps them."""
-    amplifier, antialias = (_maybe_pole(calibration, name) for name in CORNERS)
-    times = (calibration.chain.get(name) for name in ("aperture", "channel_delay"))
-    aperture_s, delay_s = (0.0 if t is None else float(t.magnitude) for t in times)
-    return Readout(amplifier, antialias, aperture_s, delay_s)
-
-
-def _maybe_pole(calibration: Calibration, name: str) -> Pole | None:
-    corner = calibration.chain.get(name)
-    if corner is None:
-        return None
-    return Pole(name, float(corner.magnitude), float(corner.u_magnitude or 0.0))
 
 
 def _grid(made: BandFilter) -> FloatArray:

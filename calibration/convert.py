@@ -13,9 +13,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.channel_volts import channel_volts
-from calibration.conversion_filter import CORNERS, UNREACHED, FilterStage
+from calibration.conversion_filter import UNREACHED, FilterStage
 from calibration.conversion_tally import ConversionTally, relative_us
 from calibration.errors import CalibrationError
+from calibration.kept_readout import CORNERS
 from calibration.record import Calibration
 from calibration.working_point import edge_reasons, invert_fringe
 from firmware_bridge.channel import Channel

@@ -19,6 +19,7 @@ _CHAIN = {
     "antialias_corner": "adc.antialias",
     "channel_delay": "adc.channel_delay",
     "aperture": "adc.aperture",
+    "polarity": "actuator.polarity",
     "adc_bits": "adc.bits",
     "adc_range": "adc.range",
     "adc_offset": "adc.offset",

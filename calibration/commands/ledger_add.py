@@ -4,7 +4,7 @@ from typing import Any
 
 import click
 
-from calibration.desk.ledger_options import Sourcing, ledger_options, sourcing_options
+from calibration.desk.ledger_options import Sourcing, ledger_options, sourcing_options, tell
 from metro.options import command, is_quiet, output_options
 
 __all__ = ["EXAMPLE", "add"]
@@ -59,5 +59,6 @@ def add(
     else:
         lines_added = counted(sum(map(len, new)), "line result")
         click.echo(f"{counted(len(added), 'calibration')} and {lines_added} added")
+    tell(list(dict.fromkeys(c for group in results for entry in group for c in entry.cautions)))
     if held and not is_quiet():
         click.echo(f"{counted(held, 'file')} already in the ledger", err=True)

@@ -1,7 +1,8 @@
 """Whether a line measured today agrees with the calibration in force.
 
 What both share (wavelength, index, the converter's scale, the drive's reading, the fringe's extremes)
-cancels between them and is left out of the difference's uncertainty: it would hide a change.
+cancels between them and is left out of the difference's uncertainty: it would hide a change. Magnitude
+and phase are compared each by itself.
 """
 
 from dataclasses import dataclass
@@ -9,8 +10,10 @@ from math import hypot, inf, sqrt
 from typing import TYPE_CHECKING, Any
 
 from calibration.desk.ledger_errors import LedgerError
+from calibration.desk.own_uncertainty import DRIVE, own_u
+from calibration.desk.phase_agreement import PhaseAgreement, phase_agreement
 from calibration.desk.temperature_law import TemperatureLaw
-from calibration.term import ADC_REFERENCE, FRINGE_EXTREMES, POWER_DRIFT, RULER
+from calibration.kept_readout import kept_readout
 from metro.measured import Measured
 
 if TYPE_CHECKING:
@@ -19,9 +22,6 @@ if TYPE_CHECKING:
 
 __all__ = ["Agreement", "agreement"]
 
-_DRIVE = ("drive reading", "drive amplifier")
-_READOUT = ("readout response", "anti-alias response", "channel delay")
-_SHARED = frozenset({*RULER, ADC_REFERENCE, FRINGE_EXTREMES, *_DRIVE, *_READOUT})
 _SAME_LINE = 1e-3
 
 
@@ -36,7 +36,9 @@ class Agreement:
     measured, expected : Measured
         Corrected for temperature; u without what both share.
     normalised_error : float
-        |difference| over its expanded uncertainty (95 %); agreement up to 1.
+        |difference| of the magnitudes over its expanded uncertainty (95 %); agreement up to 1.
+    phase : PhaseAgreement or None
+        The same of the phases; None where the result has none.
     reasons : list of str
         Why the result does not agree, or says nothing; empty where it agrees.
     cautions : list of str
@@ -47,6 +49,7 @@ class Agreement:
     measured: Measured
     expected: Measured
     normalised_error: float
+    phase: PhaseAgreement | None
     reasons: list[str]
     cautions: list[str]
 
@@ -71,6 +74,7 @@ class Agreement:
             "expected": self.expected,
             "relative_difference": self.relative_difference,
             "normalised_error": self.normalised_error,
+            "phase": None if self.phase is None else self.phase.to_dict(),
             "agree": self.is_agreed,
             "reasons": self.reasons,
             "cautions": self.cautions,
@@ -110,24 +114,40 @@ def agreement(
     law = TemperatureLaw() if law is None else law
     expected, pickup = _expected(entry, actuator, calibration)
     measured = _at_calibration(entry, calibration, law)
-    relative_u, dof = _own_u(actuator)
+    own, dof = own_u(actuator.budget)
+    own *= expected / float(actuator.magnitude.magnitude)
     # One slope alone cannot tell pick-up from motion: all of it, at any phase against the line.
-    u_expected = hypot(relative_u * expected, pickup / sqrt(2.0))
+    u_expected = hypot(own, pickup / sqrt(2.0))
     foretold = Measured.of(expected, entry.value.unit, u_expected, dof)
     both = _difference(measured, foretold)
     expanded = both.coverage_factor() * float(both.u_magnitude)
     error = abs(float(both.magnitude)) / expanded if expanded > 0 else inf
     reasons = [f"the result is not to be trusted: {reason}" for reason in entry.reasons]
     reasons += [f"the calibration is not to be trusted: {r}" for r in calibration.all_reasons]
-    found = Agreement(entry, measured, foretold, error, reasons, [])
+    phase = phase_agreement(entry, actuator, calibration, pickup / expected)
+    found = Agreement(entry, measured, foretold, error, phase, reasons, [])
     if error > 1.0:
         reasons.append(
             f"the line at {entry.line_hz:.9g} Hz differs from the calibration of "
             f"{calibration.created} by {100 * found.relative_difference:+.2g} %, "
             f"{error:.2g} times the uncertainty of the difference (95 %)"
         )
+    turned = "" if phase is None else phase.reason(entry.line_hz, calibration.created)
+    reasons += [turned] if turned else []
     found.cautions.extend(_cautions(entry, calibration, law))
+    found.cautions.extend(_phase_cautions(phase))
     return found
+
+
+def _phase_cautions(phase: PhaseAgreement | None) -> list[str]:
+    if phase is None:
+        return ["the result has no phase: its magnitude alone is compared"]
+    found = (
+        []
+        if phase.measured.u_magnitude is not None
+        else ["the phase of the result has no uncertainty of its own; it is taken as exact"]
+    )
+    return [*found, *([phase.caution] if phase.caution else [])]
 
 
 def _actuator(entry: "LineEntry", calibration: "Calibration") -> "ActuatorEntry":
@@ -163,9 +183,8 @@ def _expected(
 ) -> tuple[float, float]:
     """Return the ratio as it should be read, and what pick-up may add to it."""
     per_volt_read = float(actuator.magnitude.magnitude) * _drive_factor(actuator)
-    corner = calibration.chain.get("amplifier_corner")
-    if corner is not None:  # the calibration is corrected for it, the reading is not
-        per_volt_read /= hypot(1.0, entry.line_hz / float(corner.magnitude))
+    # the calibration is corrected for the amplifier, the reading is not
+    per_volt_read *= abs(kept_readout(calibration).voltage_response(entry.line_hz))
     slope = float(calibration.readout_slope.magnitude)
     pickup = 0.0 if actuator.pickup is None else float(actuator.pickup.magnitude)
     if entry.value.unit == "m/V":
@@ -177,25 +196,9 @@ def _drive_factor(actuator: "ActuatorEntry") -> float:
     """Return volts at the actuator per volt of the drive's reading, as the budget keeps them."""
     factor = 1.0
     for row in actuator.budget.contributions:
-        if row.name in _DRIVE:
+        if row.name in DRIVE:
             factor *= row.value
     return factor
-
-
-def _own_u(actuator: "ActuatorEntry") -> tuple[float, float]:
-    """Return the relative u of a coefficient without what today's result shares with it, and its dof.
-
-    The power drifts from recording to recording: once in the calibration, once today.
-    """
-    variance, weak = 0.0, 0.0
-    for row in actuator.budget.contributions:
-        if row.name in _SHARED:
-            continue
-        own = (row.sensitivity * row.u) ** 2 * (2.0 if row.name.startswith(POWER_DRIFT) else 1.0)
-        variance += own
-        weak += own**2 / row.dof
-    size = float(actuator.magnitude.magnitude)
-    return sqrt(variance) / size, variance**2 / weak if weak > 0 else inf
 
 
 def _at_calibration(
@@ -225,7 +228,7 @@ def _difference(a: Measured, b: Measured) -> Measured:
 
 
 def _cautions(entry: "LineEntry", calibration: "Calibration", law: TemperatureLaw) -> list[str]:
-    found = []
+    found = list(entry.cautions)
     if entry.value.unit == "1":
         found.append(
             "volts per volt agree at mid-fringe only: away from it, or at another power, convert "

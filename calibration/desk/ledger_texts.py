@@ -90,13 +90,24 @@ def agreement_text(found: "Sequence[Agreement]", created: str) -> str:
             str(each.expected),
             f"{100 * each.relative_difference:+.3g} %",
             f"{each.normalised_error:.2f}",
+            *_phase_cells(each),
             "agrees" if each.is_agreed else "does not agree",
         ]
         for each in found
     ]
-    header = ["line", "measured", "calibration", "difference", "difference/U", "verdict"]
+    header = ["line", "measured", "calibration", "difference", "difference/U"]
+    header += ["phase difference", "difference/U", "verdict"]
     note = (
-        f"calibration in force: {created}; per volt of the drive's reading; uncertainties without what "
+        f"calibration in force: {created}; compared: magnitude, and phase where it is known; per volt of the drive's reading; uncertainties without what "
         "both share (wavelength, index, converter's scale, drive's reading, extremes)"
     )
     return f"{table(rows, header)}\n{note}"
+
+
+def _phase_cells(each: "Agreement") -> list[object]:
+    if each.phase is None:
+        return ["not known", ""]
+    return [
+        f"{1e3 * float(each.phase.difference.magnitude):+.3g} mrad",
+        f"{each.phase.normalised_error:.2f}",
+    ]

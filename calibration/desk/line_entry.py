@@ -49,6 +49,8 @@ class LineEntry:
         Of the file it came from: the same file is not taken twice.
     bench : str
         Which bench, where several share a ledger.
+    cautions : tuple of str
+        What was taken for granted when it was measured; told then, not kept in the ledger.
     """
 
     time: str
@@ -64,6 +66,7 @@ class LineEntry:
     source: str = ""
     sha256: str | None = field(default=None, compare=False)
     bench: str = "bench"
+    cautions: tuple[str, ...] = field(default=(), compare=False)
 
     @classmethod
     def of_line(

@@ -93,6 +93,7 @@ class LineLog:
         self._judges = self._fed()
         self._waiting: deque[LineEntry] = deque(maxlen=_MOST_WAITING)
         self._is_failing = False
+        self._told: set[str] = set()
         self._queue: queue.Queue[tuple[Stretch, LoggedChannels] | None] = queue.Queue(maxsize=2)
         self._thread = threading.Thread(target=self._run, name="line results", daemon=True)
         self.results = 0
@@ -169,13 +170,18 @@ class LineLog:
 
     def _entries(self, stretch: Stretch, channels: LoggedChannels) -> list[LineEntry]:
         columns = dict(zip(channels.used, stretch.values.T, strict=True))
-        drive = None if channels.drive is None else columns[channels.drive]
+        measuring = self._measuring
+        light = measuring.in_volts("photodiode", channels.unit, columns[channels.photodiode])
+        read = None if channels.drive is None else columns[channels.drive]
+        drive = None if read is None else measuring.in_volts("drive", channels.drive_unit, read)
+        self._tell((*light.cautions, *(() if drive is None else drive.cautions)))
         duration_s = len(stretch.values) / channels.rate_hz
-        fit = self._measuring.fit(
-            columns[channels.photodiode],
-            drive,
+        fit = measuring.fit(
+            light.values,
+            None if drive is None else drive.values,
             channels.rate_hz,
-            unit=channels.unit,
+            unit=light.unit,
+            drive_unit="V" if drive is None else drive.unit,
             over_range=stretch.over_range,
         )
         kelvin = None
@@ -183,7 +189,7 @@ class LineLog:
             read = columns[channels.temperature]
             kelvin = float(np.nanmean(read)) + channels.zero_k if np.isfinite(read).any() else None
         entries = []
-        for line, named_hz in zip(fit.lines, self._measuring.lines_hz, strict=True):
+        for line, named_hz in zip(fit.lines, measuring.lines_hz, strict=True):
             try:
                 entry = LineEntry.of_line(
                     replace(line, frequency_hz=named_hz),
@@ -198,6 +204,13 @@ class LineLog:
             else:
                 entries.append(entry)
         return entries
+
+    def _tell(self, cautions: tuple[str, ...]) -> None:
+        """Say what is taken for granted, once."""
+        for caution in cautions:
+            if caution not in self._told:
+                self._told.add(caution)
+                _log.warning("%s", caution)
 
     def _keep(self, entries: list[LineEntry]) -> None:
         """Put results into the ledger; where it fails they wait for the next time."""

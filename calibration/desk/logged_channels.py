@@ -47,6 +47,8 @@ class LoggedChannels:
         What is added to a temperature to be in kelvin.
     speed : float
         How much faster than real time the board runs: 1 unless it is a simulated one.
+    drive_unit : str
+        Of the drive's channel.
     """
 
     rate_hz: float
@@ -56,6 +58,7 @@ class LoggedChannels:
     temperature: int | None
     zero_k: float
     speed: float = 1.0
+    drive_unit: str = "V"
 
     @property
     def used(self) -> list[int]:
@@ -109,6 +112,7 @@ class LoggedChannels:
             temperature,
             zero_k,
             announced.speed,
+            "V" if drive is None else announced.channels[drive].unit,
         )
 
 

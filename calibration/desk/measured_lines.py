@@ -6,9 +6,11 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.channel_volts import volts_of
 from calibration.convert import per_radian
 from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.line_entry import LineEntry
+from calibration.errors import CalibrationError
 from calibration.lines import fit_lines_si
 from calibration.working_point import invert_fringe
 
@@ -17,11 +19,20 @@ if TYPE_CHECKING:
     from calibration.record import Calibration
     from firmware_bridge.trace import Recording
 
-__all__ = ["Measuring", "entries_of_recording"]
+__all__ = ["InVolts", "Measuring", "entries_of_recording"]
 
 FloatArray = NDArray[np.float64]
 
 _OVER_RANGE = 1e-4  # of the samples: what is cut off there would have been the largest
+
+
+@dataclass(frozen=True, eq=False)
+class InVolts:
+    """Samples of a channel, shape (n,), their unit, and what was taken for granted."""
+
+    values: FloatArray
+    unit: str
+    cautions: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -46,6 +57,31 @@ class Measuring:
     slope: str = "rising"
     mains_hz: float = 50.0
 
+    def in_volts(self, name: str, unit: str, values: FloatArray) -> "InVolts":
+        """Return a channel as the calibration wants it; as it is where there is no calibration.
+
+        Parameters
+        ----------
+        name, unit : str
+            Of the channel.
+        values : ndarray, shape (n,)
+            Its samples, NaN where missing.
+
+        Returns
+        -------
+        InVolts
+            Samples, their unit, and what was taken for granted.
+
+        Raises
+        ------
+        CalibrationError
+            If there is a calibration and the channel has another unit.
+        """
+        if self.calibration is None:
+            return InVolts(values, unit)
+        found = volts_of(name, unit, values, self.calibration)
+        return InVolts(found.of(values), "V", (found.caution,) if found.caution else ())
+
     def fit(
         self,
         volts: FloatArray,
@@ -53,6 +89,7 @@ class Measuring:
         rate_hz: float,
         *,
         unit: str = "V",
+        drive_unit: str = "V",
         over_range: int = 0,
     ) -> "LineFit":
         """Return the lines in a stretch of samples.
@@ -60,11 +97,11 @@ class Measuring:
         Parameters
         ----------
         volts, drive : ndarray, shape (n,)
-            Photodiode and, where it is read, the drive; NaN where missing.
+            Photodiode and, where it is read, the drive, from `in_volts`; NaN where missing.
         rate_hz : float
             Samples per second.
-        unit : str
-            Of ``volts`` where there is no calibration.
+        unit, drive_unit : str
+            Of the two channels, from `in_volts`.
         over_range : int
             How many of the NaN were over range.
 
@@ -92,7 +129,7 @@ class Measuring:
             drive,
             mains_hz=self.mains_hz,
             value_unit=unit,
-            drive_unit="V",
+            drive_unit=drive_unit,
         )
         if over_range > _OVER_RANGE * len(volts):
             reasons.append(f"clipped: {over_range} samples were over range")
@@ -141,17 +178,28 @@ def entries_of_recording(
         If the recording cannot be read.
     """
     response = recording.trace(photodiode)
-    driven = None if drive is None else recording.trace(drive)
+    read = None if drive is None else recording.trace(drive)
+    try:
+        light = measuring.in_volts(response.name, response.unit, response.values)
+        driven = None if read is None else measuring.in_volts(read.name, read.unit, read.values)
+    except CalibrationError as error:
+        raise LedgerError(f"{recording.path}: {error}") from None
     fit = measuring.fit(
-        response.values,
+        light.values,
         None if driven is None else driven.values,
         recording.rate_hz,
-        unit=response.unit,
+        unit=light.unit,
+        drive_unit="V" if driven is None else driven.unit,
         over_range=response.over_range,
     )
     return [
         LineEntry.of_line(
-            line, unix_s=unix_s, duration_s=fit.duration_s, source=recording.path, **more
+            line,
+            unix_s=unix_s,
+            duration_s=fit.duration_s,
+            source=recording.path,
+            cautions=(*light.cautions, *(() if driven is None else driven.cautions)),
+            **more,
         )
         for line in fit.lines
     ]

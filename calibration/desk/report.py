@@ -54,6 +54,7 @@ _CHAIN = {
     "antialias_corner": "anti-alias filter's corner",
     "channel_delay": "drive behind the photodiode",
     "aperture": "converter's averaging time",
+    "polarity": "declared polarity of the actuator",
     "adc_bits": "bits of the converter",
     "adc_range": "range of the converter",
 }

@@ -42,7 +42,7 @@ def lines_document(ratio=332.7e-9, line_hz=87.1, **more):
                 "snr": quantity(900.0, "1", 3.0),
                 "ratio": {
                     "magnitude": quantity(ratio, "m/V", 0.2e-9),
-                    "phase": quantity(0.1, "rad", 1e-3),
+                    "phase": quantity(-0.0325, "rad", 1e-3),
                 },
                 "trustworthy": True,
                 "reasons": [],
@@ -158,12 +158,13 @@ def test_todays_line_agrees_or_does_not(capsys, tmp_path):
     assert code == 0
     assert document["agree"] is True
     assert document["comparisons"][0]["normalised_error"] < 1
+    assert document["comparisons"][0]["phase"]["normalised_error"] < 1
     assert set(document) >= {"entries", "alarms"}
     today.write_text(json.dumps(lines_document(ratio=332.7e-9 * 1.01)))
     code, out, err = ledger(capsys, "check", today, *place)
     assert code == 1
     assert "does not agree" in out
-    assert err.startswith("not to be trusted: the line at 87.1 Hz differs from the calibration of")
+    assert "not to be trusted: the line at 87.1 Hz differs from the calibration of" in err
     code, out, _ = ledger(capsys, "check", *place)  # the newest results in the ledger
     assert code == 0
     assert out.count("agrees") == 4

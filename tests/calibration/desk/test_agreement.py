@@ -13,6 +13,7 @@ from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.measured_lines import Measuring, entries_of_recording
 from calibration.desk.temperature_law import TemperatureLaw
 from firmware_bridge.opening import open_recording
+from metro.measured import Measured
 
 
 @pytest.fixture
@@ -91,6 +92,101 @@ def test_what_cannot_be_compared_is_refused(calibration):
         LedgerError, match="rests on the drive's setting, the result on its reading"
     ):
         agreement(result(1.0), bare)
+
+
+def expected_phase(calibration):
+    """Return the phase read at 87.1 Hz: behind by the amplifier's pole and the drive's later reading."""
+    kept = calibration.actuator[1].phase.magnitude
+    return kept - np.arctan(87.1 / 5000.0) - 2 * np.pi * 87.1 * 12e-6
+
+
+def with_polarity(calibration):
+    return replace(calibration, chain={**calibration.chain, "polarity": Measured.of(1.0, "1")})
+
+
+@pytest.mark.parametrize("turned", [0.0, np.pi, 0.05, np.pi - 0.05])
+def test_phases_are_compared_with_the_declared_polarity(calibration, turned):
+    ratio, phase = expected_ratio(calibration), expected_phase(calibration)
+    line = result(ratio, u=ratio * 1e-4, phase=Measured.of(phase + turned, "rad", 1e-4, 60.0))
+    found = agreement(line, with_polarity(calibration))
+    assert found.phase.difference.magnitude == pytest.approx(
+        np.angle(np.exp(1j * turned)), abs=1e-9
+    )
+    assert found.is_agreed == (turned == 0.0)
+    assert found.cautions == []
+    if turned:
+        (reason,) = found.reasons
+        assert reason.startswith(
+            "the phase of the line at 87.1 Hz differs from the calibration of "
+        )
+        assert ("half a turn: is it the other slope" in reason) == (turned > 3)
+    undeclared = agreement(line, calibration)
+    assert undeclared.is_agreed == (turned in (0.0, np.pi))
+    assert undeclared.cautions[0].startswith("the phase is compared modulo half a turn: the calibr")
+
+
+def test_the_slope_of_volts_per_volt_is_not_known(calibration):
+    ratio = expected_ratio(calibration) * calibration.readout_slope.magnitude
+    phase = Measured.of(expected_phase(calibration) + np.pi, "rad", 1e-4, 60.0)
+    found = agreement(result(ratio, u=ratio * 1e-4, unit="1", phase=phase), calibration)
+    assert found.is_agreed
+    assert "on which slope they were measured" in found.cautions[1]
+
+
+def test_a_result_without_a_phase_is_told(calibration):
+    ratio = expected_ratio(calibration)
+    found = agreement(result(ratio, u=ratio * 1e-4), calibration)
+    assert found.cautions == ["the result has no phase: its magnitude alone is compared"]
+
+
+@pytest.fixture(scope="module")
+def session(tmp_path_factory):
+    _, files = play(built_in_bench(), 3, tmp_path_factory.mktemp("session"), lines_s=6.0)
+    return files, calibrate(built_in_bench(), **files)
+
+
+def test_the_wrong_slope_does_not_agree(session):
+    """A simulated bench whose polarity is declared: the falling slope read as rising turns the sign."""
+    files, calibration = session
+    recording = open_recording(files["lines_falling"][0])
+    for slope, agrees in (("falling", True), ("rising", False)):
+        measuring = Measuring((87.1,), calibration, slope)
+        (entry,) = entries_of_recording(recording, "photodiode", "drive", measuring, unix_s=1.7e9)
+        found = agreement(entry, calibration)
+        assert found.is_agreed == agrees
+    assert "half a turn: is it the other slope, or is a connection swapped?" in found.reasons[-1]
+
+
+def written(path, recording, unit, scale):
+    """Return a text table of the recording with its channels in another unit."""
+    pd, drive = (recording.trace(name).values[:8000] * scale for name in ("photodiode", "drive"))
+    rows = "\n".join(
+        f"{k / 4000:.6f},{a!r},{b!r}"
+        for k, (a, b) in enumerate(zip(pd.tolist(), drive.tolist(), strict=True))
+    )
+    path.write_text(f"time_s,photodiode{unit},drive{unit}\n{rows}\n", encoding="utf-8")
+    return open_recording(path)
+
+
+def test_the_channels_unit_is_looked_at(session, tmp_path):
+    """Counts of the known converter give what volts give; amperes are refused."""
+    files, calibration = session
+    recording = open_recording(files["lines_rising"][0])
+    measuring = Measuring((87.1,), calibration, "rising")
+    volts = written(tmp_path / "v.csv", recording, " [V]", 1.0)
+    counts = written(tmp_path / "c.csv", recording, "", 2**16 / 10.0)
+    (wanted,), (found,) = (
+        entries_of_recording(one, "photodiode", "drive", measuring, unix_s=1.7e9)
+        for one in (volts, counts)
+    )
+    assert found.value.magnitude == pytest.approx(wanted.value.magnitude, rel=1e-9)
+    assert found.value.unit == "m/V"
+    assert wanted.cautions == ()
+    assert [text.split(" has ")[0] for text in found.cautions] == ["'photodiode'", "'drive'"]
+    assert all("it is taken as ADC counts" in text for text in found.cautions)
+    amperes = written(tmp_path / "a.csv", recording, " [A]", 1.0)
+    with pytest.raises(LedgerError, match=r"a\.csv: 'photodiode' must be in V, got A$"):
+        entries_of_recording(amperes, "photodiode", "drive", measuring, unix_s=1.7e9)
 
 
 @pytest.mark.slow

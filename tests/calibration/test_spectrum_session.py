@@ -61,3 +61,31 @@ def test_strain_is_displacement_over_the_arm(session, capsys):
     )
     assert found["strain"]["density"]["unit"] == "1/Hz**0.5"
     assert found["displacement"]["systematic"] > 0
+
+
+@pytest.fixture(scope="module")
+def ratios(tmp_path_factory):
+    """Return bins [Hz] and measured over expected of a minute near mid-fringe, in bins of 0.25 Hz."""
+    folder, bench = tmp_path_factory.mktemp("minute"), built_in_bench()
+    _, files = play(bench, 6, folder, lines_s=60.0)
+    recording = open_recording(files["lines_rising"][0])
+    found, _ = read_spectrum(
+        recording,
+        "photodiode",
+        bench,
+        calibrate(bench, **files),
+        "displacement",
+        resolution_hz=0.25,
+    )
+    return found.welch.frequency_hz, found.ratio
+
+
+@pytest.mark.parametrize(
+    ("low_hz", "high_hz"),
+    [(1, 3), (3, 10), (10, 30), (30, 100), (64, 84), (100, 300), (300, 1000), (1000, 1900)],
+)
+def test_the_expected_noise_of_the_built_in_bench_holds(ratios, low_hz, high_hz):
+    """The median of each band; points of two digits and power laws between them are within 10 %."""
+    frequency, ratio = ratios
+    inside = (frequency >= low_hz) & (frequency < high_hz)
+    assert np.median(ratio[inside]) == pytest.approx(1.0, abs=0.12)

@@ -254,7 +254,7 @@ class _Analysis(SessionFits):
             cautions=self._cautions(),
             reasons=[
                 *reasons_of(self.scans, fits),
-                *role_reasons(self.session, self.extremes, self.dark),
+                *role_reasons(self.bench, self.session, self.extremes, self.dark),
                 *failed(checks),
                 *(reason for series in found for reason in series.reasons),
             ],

@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 from os import PathLike
 from pathlib import Path
 
@@ -31,7 +32,11 @@ ROLES = (
 
 @dataclass(frozen=True, eq=False)
 class RoleRecord:
-    """One recording in its role: photodiode trace, drive trace if there is one, and its origin."""
+    """One recording in its role: photodiode trace, drive trace if there is one, and its origin.
+
+    ``step_v`` is what one count of the photodiode's channel is worth [V], as the board announced it;
+    None where the file holds no counts of its own.
+    """
 
     role: str
     path: str
@@ -39,23 +44,31 @@ class RoleRecord:
     drive: Trace | None
     length: int
     remarks: tuple[str, ...] = field(default=())
+    step_v: float | None = None
 
     @property
     def used_fraction(self) -> float:
         """Part of the samples that is neither missing nor over-range."""
         return float(np.count_nonzero(np.isfinite(self.photodiode.values))) / self.length
 
+    @cached_property
+    def sha256(self) -> str:
+        """The SHA-256 of the file."""
+        return sha256_of(self.path)
+
     def to_dict(self) -> dict[str, object]:
-        """Return what a calibration keeps of its recording: role, file, SHA-256, counts."""
+        """Return what a calibration keeps of its recording: role, file, SHA-256, counts, step."""
+        step = None if self.step_v is None else Measured.of(self.step_v, "V").to_dict()
         return {
             "role": self.role,
             "file": Path(self.path).name,
-            "sha256": sha256_of(self.path),
+            "sha256": self.sha256,
             "samples": self.length,
             "rate": Measured.of(self.photodiode.rate_hz, "Hz").to_dict(),
             "remarks": list(self.remarks),
             "missing": self.photodiode.missing,
             "over_range": self.photodiode.over_range,
+            "step": step,
         }
 
 
@@ -72,8 +85,8 @@ class Session:
     Raises
     ------
     CalibrationError
-        If a role is unknown, no lines recording is given, some of them have a drive channel and
-        some not, or a channel is not in volts.
+        If a role is unknown, one file stands in two places, no lines recording is given, some of
+        them have a drive channel and some not, or a channel is not in volts.
     """
 
     def __init__(self, files: Mapping[str, Sequence[str | PathLike[str]]], bench: Bench) -> None:
@@ -83,6 +96,7 @@ class Session:
         self._records = [
             _open(role, str(path), bench) for role in ROLES for path in files.get(role, ())
         ]
+        _check_distinct(self._records)
         if not (self.of("lines-rising") or self.of("lines-falling")):
             raise CalibrationError(
                 "a calibration needs at least one recording of lines on a slope, got none "
@@ -109,6 +123,21 @@ class Session:
         return iter(self._records)
 
 
+def _check_distinct(records: Sequence[RoleRecord]) -> None:
+    """Refuse one recording in two places: it would be compared with itself, or count twice.
+
+    A drive series may hold the lines recordings, which it does not count again.
+    """
+    seen: dict[tuple[str, bool], RoleRecord] = {}
+    for record in records:
+        first = seen.setdefault((record.sha256, record.role == "series"), record)
+        if first is not record:
+            raise CalibrationError(
+                "each recording must stand in one role, once, got the same samples as "
+                f"--{first.role} {first.path} and as --{record.role} {record.path}"
+            )
+
+
 def _open(role: str, path: str, bench: Bench) -> RoleRecord:
     if path == "-":
         raise CalibrationError(
@@ -116,14 +145,21 @@ def _open(role: str, path: str, bench: Bench) -> RoleRecord:
         )
     recording = open_recording(path)
     drive = _drive(recording, bench)
+    name = photodiode_name(recording)
     return RoleRecord(
         role=role,
         path=path,
-        photodiode=_in_volts(recording.trace(photodiode_name(recording)), bench, path),
+        photodiode=_in_volts(recording.trace(name), bench, path),
         drive=None if drive is None else _in_volts(drive, bench, path),
         length=recording.length,
         remarks=tuple(recording.remarks),
+        step_v=_step_v(recording, recording.find(name)),
     )
+
+
+def _step_v(recording: Recording, position: int) -> float | None:
+    channel = recording.channels[position]
+    return channel.scale if recording.format == "mfr" and channel.unit == "V" else None
 
 
 def _in_volts(trace: Trace, bench: Bench, path: str) -> Trace:

@@ -9,6 +9,11 @@ from typing import Any
 import numpy as np
 
 from calibration.actuator_entry import ActuatorEntry
+from calibration.bench_contradictions import (
+    contradiction_cautions,
+    remark_cautions,
+    step_reasons,
+)
 from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
 from calibration.scan import ScanFit
@@ -107,7 +112,8 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
         if record.used_fraction < 1.0:
             left_out = 100 * (1.0 - record.used_fraction)
             cautions.append(f"{Path(record.path).name}: {left_out:.2g} % of the samples left out")
-    return cautions
+    records = list(session)
+    return [*cautions, *contradiction_cautions(bench, records), *remark_cautions(records)]
 
 
 def reasons_of(
@@ -127,9 +133,11 @@ def reasons_of(
     return list(dict.fromkeys(reasons))
 
 
-def role_reasons(session: Session, extremes: Extremes, dark: Measured | None) -> list[str]:
-    """Return why recordings do not look like what their role says."""
-    reasons = []
+def role_reasons(
+    bench: Bench, session: Session, extremes: Extremes, dark: Measured | None
+) -> list[str]:
+    """Return why recordings do not look like what their role and the bench file say."""
+    reasons = step_reasons(bench, session)
     if dark is not None:
         dark_v, u = float(dark.magnitude), float(dark.u_magnitude or 0.0)
         if dark_v > extremes.low_v + 4 * u + _LIT * extremes.swing_v:

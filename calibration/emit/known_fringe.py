@@ -2,7 +2,9 @@
 
 import numpy as np
 
+from calibration.bench_contradictions import step_contradiction
 from calibration.emit.coded_fringe import CodedFringe
+from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
 from calibration.record import Calibration
 from metro.bench import Bench
@@ -38,12 +40,15 @@ def fringe_of_calibration(
     Raises
     ------
     MidfringeError
-        If the converter is not known or the fringe does not fit it.
+        If the converter is not known, contradicts the step of the calibration's recordings, or the
+        fringe does not fit it. A converter given as an option is meant to be another one, which
+        sees the same volts.
     """
     chain = calibration.chain
     known = {key: chain[name] for name, key in _CHAIN.items() if name in chain}
     known = {key: value for key, value in known.items() if bench.get(key) is None}
     bench = bench.replace(known, "calibration")
+    _check_step(calibration, bench)
     round_trips = chain.get("round_trips")
     origin = [
         f"calibration of {calibration.created}, midfringe {calibration.software}",
@@ -55,6 +60,20 @@ def fringe_of_calibration(
         1.0 if round_trips is None else float(round_trips.magnitude),
     )
     return _coded(calibration.extremes, per_metre, bench, slope, is_signed, origin)
+
+
+def _check_step(calibration: Calibration, bench: Bench) -> None:
+    entries = [bench.entries.get(key) for key in ("adc.bits", "adc.range")]
+    if any(entry is not None and entry.source.startswith("option") for entry in entries):
+        return
+    for record in calibration.recordings:
+        step = record.get("step")
+        said = None if step is None else step_contradiction(bench, float(step["value"]))
+        if said is not None:
+            raise CalibrationError(
+                f"{record['file']}: {said}: the stated converter must be the one that recorded; "
+                "--adc-bits and --adc-range give another one that is meant"
+            )
 
 
 def fringe_of_bench(bench: Bench, slope: str, *, is_signed: bool) -> CodedFringe:

@@ -188,7 +188,7 @@ def test_a_wandering_working_point_is_distrusted(session):
     _, files, _ = session
     calibration = calibrate(
         built_in_bench(),
-        scan=files["scan"],
+        scan=files["scan"][1:],
         lines_falling=[*files["lines_falling"], files["scan"][0]],
     )
     assert not calibration.is_trustworthy
@@ -389,11 +389,13 @@ def test_a_repeat_that_differs_is_not_trusted(session, tmp_path):
 
 def test_recordings_in_the_wrong_role_are_not_trusted(session):
     _, files, _ = session
-    lit = calibrate(built_in_bench(), **(files | {"dark": files["scan"]}))
+    second, first = {"scan": files["scan"][1:]}, files["scan"][:1]
+    lit = calibrate(built_in_bench(), **(files | second | {"dark": first}))
     assert any("lies above the fringe's low" in reason for reason in lit.reasons)
-    shone = calibrate(built_in_bench(), **(files | {"pickup": files["lines_rising"]}))
+    rising = {"pickup": files["lines_rising"], "lines_rising": ()}
+    shone = calibrate(built_in_bench(), **(files | rising))
     assert any("the beam was not blocked" in reason for reason in shone.reasons)
-    both = calibrate(built_in_bench(), **(files | {"blocked_x": files["scan"]}))
+    both = calibrate(built_in_bench(), **(files | second | {"blocked_x": first}))
     assert any("shows a fringe" in reason for reason in both.reasons)
 
 

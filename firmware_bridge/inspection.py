@@ -259,6 +259,8 @@ def _reasons(
             reasons.append(NO_END)
         if recording.file.tail_bytes:
             reasons.append("the file ends within a record")
+    else:
+        reasons += recording.reasons
     for state in channels:
         if math.isnan(state.mean):
             reasons.append(f"channel {state.name!r} has no value at all")

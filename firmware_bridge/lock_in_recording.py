@@ -97,6 +97,7 @@ class LockInRecording(Recording):
             length=count,
             gaps=[Gap(start, stop - start) for start, stop in mask_runs(missing)],
             remarks=self._say(length / announced.rate_hz),
+            reasons=[] if self.has_end else [NO_END],
             start_unix_s=self._started(),
         )
 

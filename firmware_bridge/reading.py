@@ -21,7 +21,7 @@ from typing import TYPE_CHECKING, Any, TypeVar, overload
 import click
 
 from firmware_bridge.channel import ChannelError, listed
-from metro.options import ValueType, is_quiet
+from metro.options import ValueType, distrust, is_quiet
 
 if TYPE_CHECKING:
     from firmware_bridge.trace import Recording, Trace
@@ -31,6 +31,9 @@ __all__ = ["Reading", "recording_options"]
 F = TypeVar("F", bound=Callable[..., Any])
 
 _USUAL = ("photodiode", "pd", "signal")  # what --channel means where it is not given
+
+_OPENED = "firmware_bridge.opened"
+_JUDGED = "firmware_bridge.judged"
 
 _OPTIONS: dict[str, tuple[tuple[str, ...], dict[str, Any]]] = {
     "time": (
@@ -128,7 +131,31 @@ class Reading:
         from metro.units import quantity
 
         rate = None if self.rate_hz is None else quantity(self.rate_hz, "Hz")
-        return open_recording(path, time=self.time, rate=rate, own_time=self.own_time)
+        recording = open_recording(path, time=self.time, rate=rate, own_time=self.own_time)
+        context = click.get_current_context(silent=True)
+        if context is not None:
+            context.meta.setdefault(_OPENED, []).append((self, recording))
+        return recording
+
+    def reasons(self, recording: "Recording") -> list[str]:
+        """Return why the stretch asked for must not be trusted, whatever is made of it.
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+
+        Returns
+        -------
+        list of str
+            Such as that a large part of the file could not be read. That a recording was cut
+            says nothing against a stretch that ends before.
+        """
+        from firmware_bridge.recording import NO_END
+
+        if self.to_s is None or recording.span(self.from_s, self.to_s)[1] == recording.length:
+            return recording.reasons
+        return [reason for reason in recording.reasons if reason != NO_END]
 
     def channel_name(self, recording: "Recording") -> str:
         """Return the channel that is meant: the one given, the only one, or the photodiode.
@@ -209,17 +236,33 @@ class Reading:
         recording : Recording
             Opened.
         """
+        context = click.get_current_context(silent=True)
+        is_judged = context is not None and context.meta.get(_JUDGED, False)
+        reasons = self.reasons(recording) if is_judged else []
         if not is_quiet():
             for remark in recording.remarks:
+                if remark in reasons:
+                    continue  # said at the end
                 click.echo(f"{recording.path}: {remark}", err=True)
+
+
+def _distrust_opened(meta: dict[str, Any]) -> None:
+    """End with 1 where something speaks against a recording that was opened."""
+    opened = meta.get(_OPENED, [])
+    reasons = [f"{item.path}: {text}" for reading, item in opened for text in reading.reasons(item)]
+    if reasons:
+        distrust(list(dict.fromkeys(reasons)))
 
 
 @overload
 def recording_options(function: F) -> F: ...
 @overload
-def recording_options(*, omit: tuple[str, ...]) -> Callable[[F], F]: ...
+def recording_options(*, omit: tuple[str, ...], is_judged: bool = True) -> Callable[[F], F]: ...
 def recording_options(
-    function: Callable[..., Any] | None = None, *, omit: tuple[str, ...] = ()
+    function: Callable[..., Any] | None = None,
+    *,
+    omit: tuple[str, ...] = (),
+    is_judged: bool = True,
 ) -> Callable[..., Any]:
     """Add ``--time --channel --drive --rate --from --to --own-time``; pass them as ``reading``.
 
@@ -229,6 +272,9 @@ def recording_options(
         Takes ``reading``, a `Reading`.
     omit : tuple of str
         Options that the command does not have, such as ``("drive",)``.
+    is_judged : bool
+        Whether the command ends with 1, its result written, where a recording that it opened has
+        reasons against it; False where nothing is concluded from the samples.
 
     Returns
     -------
@@ -236,17 +282,27 @@ def recording_options(
         Takes the options instead. Also used as ``@recording_options(omit=("drive",))``.
     """
     if function is None:
-        return functools.partial(_with_options, omit=omit)
-    return _with_options(function, omit)
+        return functools.partial(_with_options, omit=omit, is_judged=is_judged)
+    return _with_options(function, omit, is_judged=is_judged)
 
 
-def _with_options(function: F, omit: tuple[str, ...]) -> F:
+def _with_options(function: F, omit: tuple[str, ...], *, is_judged: bool) -> F:
     chosen = {key: value for key, value in _OPTIONS.items() if key not in omit}
 
     @functools.wraps(function)
     def with_reading(*args: Any, **kwargs: Any) -> Any:  # noqa: ANN401  # any command
         given = {names[1]: kwargs.pop(names[1]) for names, _ in chosen.values()}
-        return function(*args, reading=Reading(**given), **kwargs)
+        meta = click.get_current_context().meta
+        meta[_JUDGED] = is_judged
+        try:
+            result = function(*args, reading=Reading(**given), **kwargs)
+        except click.exceptions.Exit as end:
+            if is_judged and end.exit_code == 1:
+                _distrust_opened(meta)
+            raise
+        if is_judged:
+            _distrust_opened(meta)
+        return result
 
     for names, settings in reversed(chosen.values()):
         with_reading = click.option(*names, **settings)(with_reading)

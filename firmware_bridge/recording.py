@@ -74,6 +74,7 @@ class MfrRecording(Recording):
             gaps=placing.gaps,
             over_range=self._reader.count_over_range(placing.reached),
             remarks=self._say(),
+            reasons=[] if self.has_end else [NO_END],
             columns=self._columns_printed(),
             start_unix_s=self._started(),
         )

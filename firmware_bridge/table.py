@@ -34,6 +34,10 @@ class Table:
         First row, length and standard uncertainty of the length, where the file lists its gaps.
     over_range : int
         How many NaN outside the gaps are over-range values, where the file states it.
+    unread : int
+        Rows of the file that are not in the columns, such as those of further sections.
+    damaged : int
+        Rows in the columns that could not be read: NaN in each.
     remarks : sequence of str
         What a reader should know, one line each.
     """
@@ -47,6 +51,8 @@ class Table:
     rate_u_hz: float | None = None
     gaps: Sequence[tuple[int, int, float]] | None = None
     over_range: int = 0
+    unread: int = 0
+    damaged: int = 0
     remarks: list[str] = field(default_factory=list)
 
     @property

@@ -21,6 +21,8 @@ from firmware_bridge.unit_word import si_unit
 
 __all__ = ["RateError", "TableRecording", "to_recording"]
 
+_LOSS = 0.01  # of the rows; common practice: less is an accident, more is another measurement
+
 
 class RateError(BridgeError):
     """A recording without a time column and without a rate."""
@@ -43,6 +45,8 @@ class TableRecording(Recording):
         What a reader should know.
     own_time : bool
         Whether ``from_s`` and ``to_s`` are the file's own stamps.
+    reasons : sequence of str
+        Why it must not be trusted as a whole.
     """
 
     def __init__(
@@ -53,6 +57,7 @@ class TableRecording(Recording):
         grid: Grid,
         remarks: Sequence[str],
         own_time: bool = False,
+        reasons: Sequence[str] = (),
     ) -> None:
         self._columns = [table.columns[k] for k in positions]
         self._grid = grid
@@ -70,6 +75,7 @@ class TableRecording(Recording):
             gaps=grid.gaps,
             over_range=sum(int(np.isinf(column[grid.rows]).sum()) for column in self._columns),
             remarks=remarks,
+            reasons=reasons,
             columns=[k + 1 for k in positions],
             timing=Timing(jitter_s=grid.jitter_s, jitter_u_s=grid.jitter_s / (2 * rows) ** 0.5),
         )
@@ -182,7 +188,18 @@ def to_recording(
         raise RateError(f"{path} has a time column and no channel beside it")
     table = with_missing(table, positions, grid)
     remarks += _unit_remarks(table, positions)
-    return TableRecording(path, table, positions, grid, remarks, own_time)
+    reasons = _losses(table, grid, has_stamps=found is not None)
+    return TableRecording(path, table, positions, grid, remarks, own_time, reasons)
+
+
+def _losses(table: Table, grid: Grid, *, has_stamps: bool) -> list[str]:
+    """Return what is said of a file of which a large part could not be used."""
+    total = table.rows + table.unread
+    # A damaged row has no stamp either: with stamps it is not among the rows of the grid.
+    left = total - grid.rows.size + (0 if has_stamps else table.damaged)
+    if left <= _LOSS * total:
+        return []
+    return [f"{left} of {total} rows of the file are left out ({100 * left / total:.3g} %)"]
 
 
 def _grid(

@@ -8,6 +8,7 @@ from itertools import groupby
 import numpy as np
 from numpy.typing import NDArray
 
+from firmware_bridge.going_on import goes_on
 from firmware_bridge.text_encoding import decode_line
 from firmware_bridge.text_fields import split_fields
 from firmware_bridge.text_layout import TextLayout, maybe_find_layout
@@ -87,7 +88,7 @@ def maybe_read_section(data: bytes, offset: int, line: int) -> TextSection | Non
     for text in _stretches(data, start, stop):
         section.blocks += reader.read(text)
         section.last_text = text
-        cut = _maybe_next_section(reader.faults, layout)
+        cut = _maybe_next_section(reader.faults, layout, section.blocks)
         if cut is not None:
             section.rest = (_line_offset(data, start, cut.line - section.first_line), cut.line)
             reader.rows = cut.row
@@ -115,8 +116,11 @@ def _blank_lines_after(data: bytes, start: int) -> int:
     return found + 1 if found > 0 and b"\n" in data[start:found].strip() else len(data)
 
 
-def _maybe_next_section(faults: Sequence[Fault], layout: TextLayout) -> Fault | None:
+def _maybe_next_section(
+    faults: Sequence[Fault], layout: TextLayout, blocks: Sequence[NDArray[np.float64]]
+) -> Fault | None:
     """Return the first line of the next section, if the lines that are no rows tell of one."""
+    rows: NDArray[np.float64] | None = None
     run: list[Fault] = []
     for _, group in groupby(
         faults, key=lambda fault: (fault.kind, fault.row * (fault.kind == "text"))
@@ -124,7 +128,9 @@ def _maybe_next_section(faults: Sequence[Fault], layout: TextLayout) -> Fault | 
         members = list(group)
         if members[0].kind == "text":
             if members[0].row and _has_header(members, layout):
-                return members[0]
+                rows = np.concatenate(blocks) if rows is None else rows
+                if not goes_on(rows, members[0].row):
+                    return members[0]
             continue
         for fault in members:
             follows = run and (run[-1].row + 1, run[-1].fields) == (fault.row, fault.fields)

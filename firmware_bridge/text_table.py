@@ -60,7 +60,8 @@ def read_text_table(data: bytes, name: str) -> Table:
             f"{name}: decimal commas and commas between the columns cannot be told apart "
             f"({line!r}); write it with semicolons between the columns, or with decimal points"
         )
-    return _to_table(section, [*_fault_remarks(section), *_rest_remarks(data, section)])
+    rest, unread = _rest_remarks(data, section)
+    return _to_table(section, [*_fault_remarks(section), *rest], unread)
 
 
 def _fault_remarks(section: TextSection) -> list[str]:
@@ -80,24 +81,27 @@ def _fault_remarks(section: TextSection) -> list[str]:
     return remarks
 
 
-def _rest_remarks(data: bytes, section: TextSection) -> list[str]:
-    """Return a remark for each section after the first."""
+def _rest_remarks(data: bytes, section: TextSection) -> tuple[list[str], int]:
+    """Return a remark for each section after the first, and how many rows they have."""
     remarks: list[str] = []
-    rest, number = section.rest, 2
+    rest, number, unread = section.rest, 2, 0
     while rest is not None:
         if number > _LISTED:
-            return [*remarks, f"from line {rest[1] + 1} on more sections follow; not read"]
+            more = f"from line {rest[1] + 1} on more sections follow; not read"
+            return [*remarks, more], unread + data.count(b"\n", rest[0])
         following = maybe_read_section(data, *rest)
         if following is None:
-            return [*remarks, f"from line {rest[1] + 1} on nothing could be read"]
+            nothing = f"from line {rest[1] + 1} on nothing could be read"
+            return [*remarks, nothing], unread + data.count(b"\n", rest[0])
         rows = following.values().shape[0]
+        unread += rows
         names = ", ".join(following.layout.header) or f"{following.layout.columns} columns"
         remarks.append(f"section {number} (line {rest[1] + 1}: {rows} rows of {names}) is not read")
         rest, number = following.rest, number + 1
-    return remarks
+    return remarks, unread
 
 
-def _to_table(section: TextSection, remarks: list[str]) -> Table:
+def _to_table(section: TextSection, remarks: list[str], unread: int) -> Table:
     layout, values = section.layout, section.values()
     header = layout.header or ("",) * layout.columns
     kept = columns_kept(values, header)
@@ -111,6 +115,8 @@ def _to_table(section: TextSection, remarks: list[str]) -> Table:
         units=[units[k] for k in kept],
         resolutions=[resolutions[k] for k in kept],
         rate_hz=maybe_stated_rate_hz(layout.preamble),
+        unread=unread,
+        damaged=sum(f.kind == "damaged" and f.row < len(values) for f in section.reader.faults),
         remarks=remarks,
     )
 

@@ -85,6 +85,8 @@ class Recording(NotebookPage, ABC):
         Number of over-range values, all channels together.
     remarks : sequence of str
         What a reader should know, one line each.
+    reasons : sequence of str
+        Why it must not be trusted as a whole: it was cut, or a large part could not be read.
     columns : sequence of int, optional
         The file's column number of each channel, from 1 with the time column counted; by default
         1, 2, 3 …
@@ -106,6 +108,7 @@ class Recording(NotebookPage, ABC):
         gaps: Sequence[Gap] = (),
         over_range: int = 0,
         remarks: Sequence[str] = (),
+        reasons: Sequence[str] = (),
         columns: Sequence[int] | None = None,
         start_unix_s: float | None = None,
         timing: Timing = BY_BOARD,
@@ -119,6 +122,7 @@ class Recording(NotebookPage, ABC):
         self.gaps = list(gaps)
         self.over_range = over_range
         self.remarks = list(remarks)
+        self.reasons = list(reasons)
         self.columns = tuple(columns or range(1, len(self.channels) + 1))
         self.start_unix_s = start_unix_s
         self.timing = timing

@@ -1,8 +1,10 @@
 """The files that one run of a command writes: each a file of its own, and told of when one fails."""
 
 import os
+import stat
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
+from pathlib import Path
 
 from metro.errors import MidfringeError
 from metro.whole_file import OutputError
@@ -23,12 +25,12 @@ def check_distinct(files: Mapping[str, str | None]) -> None:
     OutputError
         If two of them are the same file, also by a link or a detour such as ``./``.
     """
-    taken: dict[str, str] = {}
+    taken: dict[Path, str] = {}
     for option, name in files.items():
         if not name:
             continue
-        place = os.path.realpath(name)
-        if place in taken and (not os.path.exists(place) or os.path.isfile(place)):
+        place = Path(os.path.realpath(name))
+        if place in taken and (not place.exists() or place.is_file()):
             raise OutputError(
                 f"{taken[place]} and {option} must name different files, got {name!r} for both"
             )
@@ -64,7 +66,7 @@ def telling_what_is_kept(files: Mapping[str, str | None]) -> Iterator[None]:
 def _state(name: str) -> tuple[int, int] | None:
     """Return what changes when a file is written; None where there is no file."""
     try:
-        found = os.stat(name)
+        found = Path(name).stat()
     except (OSError, ValueError):
         return None
-    return (found.st_ino, found.st_mtime_ns) if os.path.isfile(name) else None
+    return (found.st_ino, found.st_mtime_ns) if stat.S_ISREG(found.st_mode) else None

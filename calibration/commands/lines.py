@@ -98,7 +98,11 @@ def lines(
         harmonics=harmonics or 1,
         intermodulation=intermodulation,
     )
-    begun = {"file": file, "start": _start(recording, reading)}
+    begun = {
+        "file": file,
+        "start": _start(recording, reading),
+        "recording_reasons": reading.reasons(recording),
+    }
     document = to_json(fit.to_dict(over_time=over_time) | begun)
     if out is not None:
         write_whole(out, document + "\n", overwrite=overwrite)

@@ -114,7 +114,8 @@ def spectrum(
     reasons, cautions = ([], []) if worth is None else (worth.reasons, worth.cautions)
     systematic = 0.0 if worth is None else worth.relative_u
     document = {**found.to_dict(), "quantity": kind, "systematic": systematic}
-    text = to_json(document | {"reasons": reasons, "cautions": cautions})
+    against = [*reasons, *reading.reasons(recording)]
+    text = to_json(document | {"reasons": against, "cautions": cautions})
     if out is not None:
         content = spectrum_csv(found) if out.lower().endswith(".csv") else text + "\n"
         write_whole(out, content, overwrite=overwrite)

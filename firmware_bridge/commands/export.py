@@ -15,7 +15,7 @@ __all__ = ["export"]
 
 @command(example="midfringe export night.mfr --out night.csv")
 @click.argument("file")
-@recording_options(omit=("drive",))
+@recording_options(omit=("drive",), is_judged=False)
 @click.option("--lock-in", is_flag=True, help="The board's lock-in results beside the samples.")
 @output_options("out", "json", "overwrite")
 def export(

@@ -1,4 +1,4 @@
-import os
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -31,25 +31,25 @@ def folder(tmp_path, monkeypatch):
 def test_one_file_for_two_outputs_is_refused_before_anything_is_written(
     command, mode, other, capsys
 ):
-    os.symlink("x.png", "link.png")
+    Path("link.png").symlink_to("x.png")
     assert run([*command, "--out", "x.png", "--plot", other, *mode]) == 2
     said = capsys.readouterr()
     assert said.err.count("\n") == 1
     assert "--out and --plot must name different files" in said.err
-    assert not os.path.exists("x.png")
+    assert not Path("x.png").exists()
 
 
 def test_a_hyphen_is_no_file(capsys):
     assert run(["lines", "run.csv", "--line", "50Hz", "--out", "-"]) == 2
     assert "an output must be a file, got '-'" in capsys.readouterr().err
-    assert not os.path.exists("-")
+    assert not Path("-").exists()
 
 
 def test_different_names_and_devices_are_taken():
     check_distinct({"--out": "a", "--plot": "b", "--save": None})
     check_distinct({"--out": "/dev/null", "--plot": "/dev/null"})
     with pytest.raises(OutputError, match="different files"):
-        check_distinct({"--out": "run.csv", "--plot": os.path.abspath("run.csv")})
+        check_distinct({"--out": "run.csv", "--plot": str(Path("run.csv").resolve())})
 
 
 def test_a_disk_that_fills_up_is_told_with_what_is_whole(capsys, monkeypatch):
@@ -60,7 +60,7 @@ def test_a_disk_that_fills_up_is_told_with_what_is_whole(capsys, monkeypatch):
     command = ["lines", "run.csv", "--line", "50Hz", "--out", "x.json", "--plot", "x.png"]
     assert run(command) == 3
     assert "no space left on device; x.json is whole and kept" in capsys.readouterr().err
-    assert os.path.exists("x.json")
+    assert Path("x.json").exists()
 
 
 def test_files_that_were_there_before_are_not_told():

@@ -33,7 +33,7 @@ __all__ = [
     "LiveState",
 ]
 
-_LAST = ("failed", "closed")
+_UNASKED = LiveState("failed", "the process that held the port was told to end")
 
 
 class LiveSession:
@@ -118,7 +118,9 @@ class LiveSession:
             In order; perhaps not yet all of it, if very much has happened.
         """
         events, is_ended = self._process.taken()
-        if is_ended and not any(isinstance(e, LiveState) and e.state in _LAST for e in events):
+        # it was not asked to by this one, else nothing would be taken any more
+        events = [_UNASKED if event == LiveState("closed") else event for event in events]
+        if is_ended and not any(isinstance(e, LiveState) and e.state == "failed" for e in events):
             events.append(LiveState("failed", "the process that held the port has ended"))
         return events
 

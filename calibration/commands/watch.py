@@ -141,7 +141,7 @@ def watch(
     )
     choice = Choice(port, simulate, seed, recording, speed or 1.0, baud, text, Path(folder))
     with opened_source(choice, setup) as (source, first):
-        serve(
+        server = serve(
             source,
             setup,
             guard,
@@ -151,7 +151,9 @@ def watch(
             ready=click.echo,
         )
     if not is_quiet():
-        click.echo("ended" if replay else "ended: drive at rest, recording closed", err=True)
+        has_drive = server.orders.drive.condition != "none"
+        told = "ended: drive at rest, recording closed" if has_drive else "ended: recording closed"
+        click.echo("ended" if replay else told, err=True)
 
 
 def _place(recording: "Recording", name: str | None) -> int | None:

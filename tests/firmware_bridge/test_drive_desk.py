@@ -276,7 +276,7 @@ def test_whatever_is_asked_and_lost_the_limit_holds_and_a_stop_stops(monkeypatch
             # what is shown is never less than what is driven
             assert bench.told[-1].lines[k].amplitude_v >= volts - STEP_V
     bench.lost = lambda: False
-    bench.run()
+    bench.run(10)
     assert bench.told[-1].lines == bench.told[-1].wanted
     assert sorted(bench.board) == sorted(bench.told[-1].wanted)
     for k, line in bench.told[-1].wanted.items():

@@ -1,21 +1,32 @@
-"""The lines of the drive as a live page shows them: asked for, taken back where refused, forgotten."""
+"""The lines of the drive as a live page shows them: those that the port's process says may be on."""
 
+from dataclasses import dataclass
 from typing import Any
 
 from calibration.desk.watch.state import WatchState
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines
-from firmware_bridge.live_events import LiveReply
+from firmware_bridge.live_events import LiveLines
 
 __all__ = ["SLOTS", "ShownDrive"]
 
 SLOTS = 8
 """Lines that a page offers; how many there are, the board says."""
 
-_ABOUT_SETTING = ("set line", "a line of", "drive lines", "half the")
+AWAY = ("gone", "silent", "failed", "closed")
+"""States of a port behind which nobody can tell what is driven."""
+
+
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """An order that the port's process has not taken account of yet; no slot: all of them."""
+
+    order: int
+    slot: int | None
+    line: DriveLine | None
 
 
 class ShownDrive:
-    """The lines that are set as far as is known; a drive that may be on is never shown at rest.
+    """The lines that may be on; a drive is shown at rest only where the board has confirmed it.
 
     Parameters
     ----------
@@ -28,14 +39,44 @@ class ShownDrive:
     def __init__(self, state: WatchState, *, is_replay: bool) -> None:
         self._state, self._is_replay = state, is_replay
         self.limit_v = state.setup.drive_limit_v
-        self._lines = DriveLines(self.limit_v)
-        self._stream: int | None = None
-        self._unanswered: list[tuple[int, DriveLine | None]] = []  # slot, and what it held before
+        self._said: LiveLines | None = None
+        self._asked: list[_Asked] = []
+        self._stop: int | None = None  # the order, until it is confirmed
+        self._driven: tuple[float, ...] = ()
+
+    @property
+    def wanted(self) -> dict[int, DriveLine]:
+        """The lines that shall be set in the end, by slot."""
+        wanted = {} if self._said is None else dict(self._said.wanted)
+        for asked in self._asked:
+            if asked.slot is None:
+                wanted.clear()
+            elif asked.line is None:
+                wanted.pop(asked.slot, None)
+            else:
+                wanted[asked.slot] = asked.line
+        return wanted
 
     @property
     def lines(self) -> dict[int, DriveLine]:
-        """The lines that are set, by slot."""
-        return self._lines.lines
+        """The largest line that each slot may hold now or soon, by slot."""
+        found = {} if self._said is None else dict(self._said.lines)
+        for slot, line in self.wanted.items():
+            if slot not in found or found[slot].amplitude_v <= line.amplitude_v:
+                found[slot] = line
+        return dict(sorted(found.items()))
+
+    @property
+    def is_away(self) -> bool:
+        """Whether the port or the board cannot be reached."""
+        return not self._is_replay and self._state.port.state in AWAY
+
+    @property
+    def is_at_rest(self) -> bool:
+        """Whether the board has confirmed that it is at rest, and can still be reached."""
+        said = self._said
+        is_confirmed = said is not None and said.is_at_rest and not self._asked
+        return is_confirmed and not self.is_away
 
     def why_not(self) -> str | None:
         """Return why no line can be set, None where it can."""
@@ -43,6 +84,8 @@ class ShownDrive:
             return "a recording is replayed: there is no drive"
         if self.limit_v is None:
             return "the bench file states no [actuator] drive_limit: no line is set from here"
+        if self.is_away:
+            return f"the port is {self._state.port.state}: no line is set"
         stream = self._state.stream
         if stream is None:
             return "no board has announced itself"
@@ -69,7 +112,7 @@ class ShownDrive:
             If it is anything else, or none is free.
         """
         if given is None or given == "":
-            free = [slot for slot in range(SLOTS) if slot not in self.lines]
+            free = [slot for slot in range(SLOTS) if slot not in self.wanted]
             if not free:
                 raise DriveError(f"all {SLOTS} lines are set; clear one first")
             return free[0]
@@ -93,56 +136,71 @@ class ShownDrive:
             With the reason.
         """
         trial = DriveLines(self.limit_v)
-        trial.lines = dict(self.lines)
+        trial.lines = self.wanted
         trial.set(slot, line)
 
-    def take(self, slot: int, line: DriveLine) -> None:
-        """Take note of a line that was asked for; errors as `check`."""
-        before = self.lines.get(slot)
-        self._lines.set(slot, line)
-        self._unanswered = [*self._unanswered[-SLOTS:], (slot, before)]
-        self._tell()
-
-    def clear(self, slot: int) -> None:
-        """Take note of a slot that was cleared."""
-        self._lines.clear(slot)
-        self._tell()
-
-    def forget(self) -> None:
-        """Take note that no line is set any more."""
-        self._unanswered.clear()
-        if self.lines:
-            self._lines.lines = {}
-            self._tell()
-
-    def follow_port(self) -> None:
-        """Take note of a port or board that was away: its drive comes to rest and stays there."""
-        stream = None if self._state.stream is None else self._state.stream.said.stream
-        was_away = self._state.port.state in ("gone", "failed", "closed")
-        if was_away or (self._stream is not None and stream != self._stream):
-            self.forget()
-        self._stream = stream
-
-    def hear(self, reply: LiveReply) -> None:
-        """Take note of what the port answers: a line that was refused is not set.
+    def take(self, order: int, slot: int, line: DriveLine | None) -> None:
+        """Take note of a line that was asked for, or of a slot to be cleared.
 
         Parameters
         ----------
-        reply : LiveReply
-            Where it is not plainly about a line, the lines stay as they are.
+        order : int
+            Its number.
+        slot : int
+            Which.
+        line : DriveLine or None
+            What it shall hold.
         """
-        is_about = any(word in reply.text for word in _ABOUT_SETTING)
-        if not self._unanswered or not is_about:
-            return
-        slot, before = self._unanswered.pop(0)
-        if reply.refused:
-            kept = {k: line for k, line in self.lines.items() if k != slot}
-            self._lines.lines = kept if before is None else {**kept, slot: before}
-            self._tell()
+        self._asked.append(_Asked(order, slot, line))
+        self._tell()
+
+    def stop(self, order: int) -> None:
+        """Take note that rest was asked for, under this number."""
+        self._stop = order
+        self._asked.append(_Asked(order, None, None))
+        self._tell()
+
+    def hear(self, said: LiveLines) -> bool:
+        """Take note of what the port's process says of the lines.
+
+        Parameters
+        ----------
+        said : LiveLines
+            By the board's answers.
+
+        Returns
+        -------
+        bool
+            Whether this confirms a stop.
+        """
+        self._said = said
+        self._asked = [asked for asked in self._asked if asked.order > said.orders]
+        self._tell()
+        is_stopped = self._stop is not None and said.orders >= self._stop and said.is_at_rest
+        if is_stopped:
+            self._stop = None
+        return is_stopped
 
     def _tell(self) -> None:
-        driven = [line.frequency_hz for line in self.lines.values() if line.amplitude_v > 0]
-        self._state.set_driven(tuple(driven))
+        driven = tuple(line.frequency_hz for line in self.lines.values() if line.amplitude_v > 0)
+        if driven != self._driven:
+            self._driven = driven
+            self._state.set_driven(driven)
+
+    @property
+    def condition(self) -> str:
+        """What is known: "none", "unknown", "stopping", "on", "at rest"."""
+        stream = self._state.stream
+        has_drive = stream is not None and stream.said.full_scale_v is not None
+        if self._is_replay or (not self.lines and not has_drive):
+            return "none"
+        if self.is_away:
+            return "unknown"
+        if self._stop is not None:
+            return "stopping"
+        if any(line.amplitude_v > 0 for line in self.lines.values()):
+            return "on"
+        return "at rest" if self.is_at_rest else "unknown"
 
     def document(self) -> dict[str, Any]:
         """Return what a page shows of the drive."""
@@ -157,6 +215,7 @@ class ShownDrive:
         ]
         return {
             "why_not": self.why_not(),
+            "condition": self.condition,
             "limit_v": self.limit_v,
             "sum_v": sum(line.amplitude_v for line in self.lines.values()),
             "lines": lines,

@@ -16,7 +16,8 @@ if TYPE_CHECKING:
 
 __all__ = ["FiguresHandler", "FileHandler", "LiveHandler", "PageHandler"]
 
-_VIEWERS = 8
+_VIEWERS = 8  # pages with plots; others show figures, and their stop works
+_PAGES = 64
 _TOKEN_COOKIE_DAYS = 1.0
 
 
@@ -116,17 +117,24 @@ class LiveHandler(_Guarded, tornado.websocket.WebSocketHandler):
         _Guarded.prepare(self)
         if not self.check_origin(self.request.headers.get("Origin", "")):
             raise tornado.web.HTTPError(403, reason="Foreign Origin")
-        if len(self.watch.lives) >= _VIEWERS:
+        if len(self.watch.lives) >= _PAGES:
             raise tornado.web.HTTPError(503, reason="Too Many Pages")
 
     def open(self, *_args: str, **_kwargs: str) -> None:
         """Count the page in."""
         self.set_nodelay(True)
+        shown = sum(live.viewer.has_plots for live in self.watch.lives)
+        self.viewer.has_plots = shown < _VIEWERS
         self.watch.lives.add(self)
 
     def on_close(self) -> None:
-        """Count the page out."""
+        """Count the page out; another one gets its plots."""
         self.watch.lives.discard(self)
+        waiting = [live for live in self.watch.lives if not live.viewer.has_plots]
+        if self.viewer.has_plots and waiting:
+            self.viewer.has_plots = False
+            waiting[0].viewer.has_plots = True
+            waiting[0].viewer.ticks = 0
 
     def on_message(self, message: str | bytes) -> None:
         """Obey an order; its answer is shown on every page."""

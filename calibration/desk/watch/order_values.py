@@ -1,12 +1,17 @@
 """Values in orders from a page: numbers in the unit that the page shows, or text with a unit."""
 
-from math import isfinite, radians
+import re
+from math import inf, isfinite, radians
 from typing import Any
 
 from metro.errors import MetroError
 from metro.units import si
 
 __all__ = ["number", "phase"]
+
+# A decimal number and nothing else that `float` takes: no underscores, no digits of other scripts.
+_PLAIN = re.compile(r"[ \t]*[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?[ \t]*")
+_WITH_UNIT = re.compile(r"[ -~µμΩ°]+")
 
 
 def number(given: Any, name: str, unit: str) -> float:  # noqa: ANN401  # from a page
@@ -31,12 +36,14 @@ def number(given: Any, name: str, unit: str) -> float:  # noqa: ANN401  # from a
     """
     if isinstance(given, bool) or not isinstance(given, int | float | str):
         raise MetroError(f"{name} must be a number in {unit}, got {given!r}")
-    try:
-        value = float(given)
-    except ValueError:
+    if isinstance(given, str) and not _PLAIN.fullmatch(given):
+        if "_" in given or not _WITH_UNIT.fullmatch(given):
+            raise MetroError(f"{name} must be a number in {unit} or have a unit, got {given!r}")
         value = float(si(given, name, unit))
+    else:
+        value = _float(given)
     if not isfinite(value):
-        raise MetroError(f"{name} must be finite, got {given!r}")
+        raise MetroError(f"{name} must be finite, got {str(given)[:40]!r}")
     return value
 
 
@@ -60,7 +67,15 @@ def phase(given: Any) -> float:  # noqa: ANN401  # from a page
     """
     if isinstance(given, str) and not given.strip():
         return 0.0
-    try:
-        return radians(float(given))
-    except (TypeError, ValueError):
+    is_plain = isinstance(given, str) and _PLAIN.fullmatch(given)
+    if isinstance(given, str) and not is_plain:
         return number(given, "phase", "rad")
+    return radians(number(given, "phase", "°"))
+
+
+def _float(given: float | str) -> float:
+    """Return a float, infinite where there is none so large."""
+    try:
+        return float(given)
+    except OverflowError:
+        return inf

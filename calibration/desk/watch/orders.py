@@ -6,7 +6,7 @@ Everything is checked here, whatever the page has checked, and again by the proc
 from dataclasses import dataclass
 from typing import Any
 
-from calibration.desk.watch.drive import ShownDrive
+from calibration.desk.watch.drive import AWAY, ShownDrive
 from calibration.desk.watch.order_values import number, phase
 from calibration.desk.watch.source import Source
 from calibration.desk.watch.state import WatchState
@@ -15,7 +15,10 @@ from firmware_bridge.drive_lines import DriveLine
 from firmware_bridge.errors import BridgeError
 from metro.errors import MetroError
 
-__all__ = ["Answer", "Orders"]
+__all__ = ["NOT_KNOWN", "Answer", "Orders"]
+
+NOT_KNOWN = "whether the drive is at rest is not known"
+"""Where nobody has confirmed it."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,19 +72,35 @@ class Orders:
             return Answer("no such order", refused=True)
         try:
             return doer(order)
-        except (MetroError, BridgeError, KeyError, TypeError, ValueError, OSError) as error:
+        except (
+            MetroError,
+            BridgeError,
+            KeyError,
+            TypeError,
+            ValueError,
+            OverflowError,
+            OSError,
+        ) as error:
             return Answer(_one_line(error), refused=True)
 
     def _stop(self, _order: dict[str, Any]) -> Answer:
         if self._is_replay:
             return Answer("a recording is replayed: there is no drive")
-        self._source.rest()
-        self.drive.forget()
-        return Answer("drive stopped")
+        try:
+            self.drive.stop(self._source.rest())
+        except BridgeError as error:
+            return Answer(f"{_one_line(error)}; {NOT_KNOWN}", refused=True)
+        if self.drive.is_away:
+            state = self._state.port.state
+            return Answer(f"stop sent, but the port is {state}; {NOT_KNOWN}", refused=True)
+        return Answer("stop sent")  # the board's answers confirm it
 
     def _record(self, order: dict[str, Any]) -> Answer:
         if self._is_replay:
             return Answer("a recording is replayed: there is nothing to record", refused=True)
+        port = self._state.port
+        if port.state in AWAY:
+            return Answer(f"the port is {port.state}: no recording can begin", refused=True)
         name = str(order["name"]).strip()
         name = name if name.lower().endswith(".mfr") else f"{name}.mfr"
         return Answer(f"recording to {self._source.start_recording(name).name}")
@@ -101,15 +120,16 @@ class Orders:
             phase(order.get("phase", 0.0)),
         )
         self.drive.check(slot, line)
-        self._source.set_line(slot, line.frequency_hz, line.amplitude_v, line.phase_rad)
-        self.drive.take(slot, line)
-        return Answer(f"line {slot + 1} set: {line.frequency_hz:g} Hz, {line.amplitude_v:g} V")
+        number_of_order = self._source.set_line(
+            slot, line.frequency_hz, line.amplitude_v, line.phase_rad
+        )
+        self.drive.take(number_of_order, slot, line)
+        return Answer(f"line {slot + 1} sent: {line.frequency_hz:g} Hz, {line.amplitude_v:g} V")
 
     def _clear_line(self, order: dict[str, Any]) -> Answer:
         slot = self.drive.slot(order["slot"])
-        self._source.clear_line(slot)
-        self.drive.clear(slot)
-        return Answer(f"line {slot + 1} cleared")
+        self.drive.take(self._source.clear_line(slot), slot, None)
+        return Answer(f"clear line {slot + 1} sent")
 
     def _new_average(self, _order: dict[str, Any]) -> None:
         if self._state.stream is not None:

@@ -85,11 +85,13 @@ class Replay:
             f"{phase_rad:g} rad is not set"
         )
 
-    def clear_line(self, slot: int) -> None:
+    def clear_line(self, slot: int) -> int:  # noqa: ARG002  # there is none
         """Do nothing: there is no drive."""
+        return 0
 
-    def rest(self) -> None:
+    def rest(self) -> int:
         """Do nothing: there is no drive."""
+        return 0
 
     def close(self) -> None:
         """Do nothing: the file is read as needed."""

@@ -27,6 +27,7 @@ class Viewer:
 
     window_s: float = 10.0
     ticks: int = 0
+    has_plots: bool = True
 
     def wish(self, order: dict[str, Any]) -> None:
         """Show another stretch of the trace, if it is one of `WINDOWS_S`."""
@@ -80,13 +81,14 @@ def message_for(viewer: Viewer, state: WatchState, orders: Orders, latency: Late
     bytes
         See `wire`.
     """
-    arrays = trace_arrays(state, viewer.window_s)
-    if viewer.ticks % _SLOW_TICKS == 0:
+    arrays = trace_arrays(state, viewer.window_s) if viewer.has_plots else {}
+    if viewer.has_plots and viewer.ticks % _SLOW_TICKS == 0:
         arrays |= {**fringe_arrays(state), **spectrum_arrays(state), **line_arrays(state)}
     viewer.ticks += 1
     document = figures(state) | {
         "drive": orders.document(),
         "window_s": viewer.window_s,
+        "has_plots": viewer.has_plots,
         "latency_s": latency.newest_s,
     }
     if state.stream is not None:

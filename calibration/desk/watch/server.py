@@ -93,7 +93,7 @@ class WatchServer:
         self._server = tornado.httpserver.HTTPServer(self._application())
         self._server.add_sockets([listening])
         self._tasks = [
-            asyncio.create_task(_again(_POLL_S, self._poll)),
+            asyncio.create_task(_again(_POLL_S, self.poll)),
             asyncio.create_task(_again(_SEND_S, self._send)),
         ]
         return self.port_number
@@ -127,13 +127,15 @@ class WatchServer:
             websocket_ping_timeout=4,
         )
 
-    def _poll(self) -> None:
+    def poll(self) -> None:
+        """Take what the source tells, and pass on what pages must know."""
         for event in self.source.poll():
             for job in self.state.take(event):
                 self._do(job)
-        self.orders.drive.follow_port()
+        for said in self.state.take_drive_lines():
+            if self.orders.drive.hear(said):
+                self.tell(Answer("drive stopped"))
         for reply in self.state.take_replies():
-            self.orders.drive.hear(reply)
             self.tell(Answer(reply.text, reply.refused), by_board=True)
 
     def _do(self, job: Job) -> None:

@@ -1,19 +1,25 @@
 """The live page from beginning to end: serve a source until told to stop, then let go of it."""
 
 import asyncio
+import contextlib
 import signal
+import time
 from collections.abc import Callable
 
 from calibration.desk.watch.guard import Guard
-from calibration.desk.watch.orders import Orders
+from calibration.desk.watch.orders import NOT_KNOWN, Orders
 from calibration.desk.watch.server import WatchServer
 from calibration.desk.watch.setup import WatchSetup
 from calibration.desk.watch.source import Source
 from calibration.desk.watch.state import WatchState
-from firmware_bridge.errors import DeviceFailedError
+from firmware_bridge.errors import BridgeError, DeviceFailedError
 from firmware_bridge.live_events import LiveEvent
 
 __all__ = ["serve"]
+
+_CONFIRM_S = 2.0
+_AGAIN_S = 0.02
+_DONE = ("at rest", "none")
 
 
 def serve(
@@ -55,7 +61,7 @@ def serve(
     CalibrationError
         If the address cannot be served.
     DeviceFailedError
-        At the end, if the port had failed for good.
+        At the end, if the port is away or the board does not confirm that its drive is at rest.
     """
     state = WatchState(setup)
     for event in first or ():
@@ -63,12 +69,35 @@ def serve(
     orders = Orders(source, state, is_replay=is_replay)
     server = WatchServer(source, state, orders, guard)
     asyncio.run(_serve(server, port_number, ready))
-    port = server.state.port
-    if port.state == "failed":
-        raise DeviceFailedError(
-            f"{setup.title}: {port.reason}; whether the drive is at rest is not known"
-        )
+    if not is_replay:
+        _end(server)
     return server
+
+
+def _end(server: WatchServer) -> None:
+    """End the recording, bring the drive to rest, and wait until the board has confirmed it."""
+    reason = _maybe_unknown(server)
+    with contextlib.suppress(BridgeError):  # of a port's process that is there no more
+        server.source.stop_recording()
+        server.orders.obey({"do": "stop"})
+    end_s = time.monotonic() + _CONFIRM_S
+    drive = server.orders.drive
+    while not reason and drive.condition not in _DONE and time.monotonic() < end_s:
+        time.sleep(_AGAIN_S)
+        server.poll()
+        reason = _maybe_unknown(server)
+    if not reason and drive.condition not in _DONE:
+        reason = "the board has not confirmed the stop"
+    if reason:
+        raise DeviceFailedError(f"{server.state.setup.title}: {reason}; {NOT_KNOWN}")
+
+
+def _maybe_unknown(server: WatchServer) -> str:
+    """Return why nobody can tell what is driven, or nothing."""
+    port = server.state.port
+    if not server.orders.drive.is_away:
+        return ""
+    return port.reason or f"the port is {port.state}"
 
 
 async def _serve(server: WatchServer, port_number: int, ready: Callable[[str], None]) -> None:

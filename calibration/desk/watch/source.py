@@ -23,14 +23,14 @@ class Source(Protocol):
 
     def set_line(
         self, slot: int, frequency_hz: float, amplitude_v: float, phase_rad: float = 0.0
-    ) -> None:
-        """Set a line of the drive."""
+    ) -> int:
+        """Set a line of the drive; return the number of the order, see `LiveLines`."""
 
-    def clear_line(self, slot: int) -> None:
-        """Take a line out of the drive."""
+    def clear_line(self, slot: int) -> int:
+        """Take a line out of the drive; return the number of the order."""
 
-    def rest(self) -> None:
-        """Bring the drive to rest."""
+    def rest(self) -> int:
+        """Bring the drive to rest; return the number of the order."""
 
     def close(self) -> None:
         """Bring the drive to rest, end the recording, give the port back."""

@@ -21,6 +21,7 @@ from firmware_bridge.live_events import (
     LiveChannels,
     LiveEvent,
     LiveGap,
+    LiveLines,
     LiveRecording,
     LiveReply,
     LiveState,
@@ -58,6 +59,8 @@ class WatchState:
         self.recording = LiveRecording(None)
         self.replies: list[LiveReply] = []
         """What the board answered since `take_replies`."""
+        self.drive_lines: list[LiveLines] = []
+        """What was said of the drive since `take_drive_lines`."""
         self.found: Fringe | None = None
         self._stated = setup.fringe
         self._driven_hz: tuple[float, ...] = ()
@@ -88,7 +91,14 @@ class WatchState:
                 self.recording = event
             case LiveReply():
                 self.replies.append(event)
+            case LiveLines():
+                self.drive_lines.append(event)
         return []
+
+    def take_drive_lines(self) -> list[LiveLines]:
+        """Return what was said of the drive since the last call."""
+        said, self.drive_lines = self.drive_lines, []
+        return said
 
     def take_replies(self) -> list[LiveReply]:
         """Return what the board answered since the last call."""

@@ -110,7 +110,9 @@ function show(buffer) {
   page.latest = said;
   showTiles(said);
   showForms(said);
-  if (page.frozen) return;
+  document.body.classList.toggle("crowded", !said.has_plots);
+  $("crowded").hidden = said.has_plots;
+  if (page.frozen || !said.has_plots) return;
   showTrace(said, arrays);
   showFringe(said, arrays);
   if ("spectrum_f" in arrays) { showSpectrum(said, arrays); showCourses(said, arrays); showLines(said); }
@@ -145,17 +147,17 @@ function showTiles(said) {
   write("recording", recording.file ? clockTime(recording.duration_s) : "off");
   write("recording-more", recording.file ? `${plainName(recording.file)}, ${withUnit(recording.bytes, "B")}` : recording.reason || "");
   mark("tile-recording", recording.file ? "on" : "");
-  showDrive(said.drive, ["gone", "silent", "failed"].includes(said.port.state));
+  showDrive(said.drive);
   document.body.classList.toggle("stale", ["gone", "silent", "failed"].includes(said.port.state));
   showAlarm(said);
 }
 
 // A drive that cannot be reached is unknown, not at rest.
-function showDrive(drive, isAway) {
-  const none = drive.why_not && !drive.lines.length, isUnknown = isAway && !none;
-  write("drive", none ? "none" : isUnknown ? "unknown" : drive.sum_v > 0 ? `${Number(drive.sum_v.toPrecision(3))} V` : "at rest");
-  write("drive-more", none || drive.limit_v === null ? "" : isUnknown ? "board not reached" : `limit ${withUnit(drive.limit_v, "V")}`);
-  mark("tile-drive", isUnknown ? "bad" : drive.sum_v > 0 ? "on" : "");
+function showDrive(drive) {
+  const what = drive.condition, volts = `${Number(drive.sum_v.toPrecision(3))} V`;
+  write("drive", what === "on" ? volts : what === "stopping" ? "stop sent" : what);
+  write("drive-more", what === "none" || drive.limit_v === null ? "" : what === "unknown" ? "not confirmed" : what === "stopping" ? "not confirmed yet" : `limit ${withUnit(drive.limit_v, "V")}`);
+  mark("tile-drive", what === "unknown" || what === "stopping" ? "bad" : what === "on" ? "on" : "");
 }
 
 function showRest(said) {

@@ -20,8 +20,17 @@ from calibration.desk.watch.replay import Replay
 from calibration.desk.watch.serving import serve
 from calibration.desk.watch.setup import WatchSetup
 from calibration.desk.watch.state import WatchState
+from firmware_bridge.announcement import ChannelInfo
+from firmware_bridge.drive_lines import DriveLine
 from firmware_bridge.errors import BridgeError, DeviceFailedError
-from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveGap, LiveState
+from firmware_bridge.live_events import (
+    LiveBlock,
+    LiveChannels,
+    LiveGap,
+    LiveLines,
+    LiveReply,
+    LiveState,
+)
 from firmware_bridge.opening import open_recording
 from metro.bench import Bench
 from metro.commandline import run
@@ -99,12 +108,75 @@ class Failing:
     def poll(self):
         return [LiveState("failed", "out of order")]
 
+    def stop_recording(self):
+        raise BridgeError("the process that held it has ended")
+
+    rest = stop_recording
+
+
+class Ending:
+    """A port with a drive that says at the end what it is told to say."""
+
+    def __init__(self, *says):
+        self.asked, self.says = [], list(says)
+        self.waiting = [
+            LiveState("connected"),
+            LiveChannels(
+                500.0, (ChannelInfo("pd", "V"), ChannelInfo("drive", "V")), full_scale_v=5.0
+            ),
+            LiveLines({0: DriveLine(87.1, 1.0)}, {0: DriveLine(87.1, 1.0)}),
+        ]
+
+    def poll(self):
+        events, self.waiting = self.waiting, []
+        return events
+
+    def stop_recording(self):
+        self.asked.append("end")
+
+    def rest(self):
+        self.asked.append("rest")
+        self.waiting += self.says
+        return 1
+
+
+def at_once(monkeypatch):
+    async def serve_at_once(server, _number, _ready):
+        server.poll()
+
+    monkeypatch.setattr("calibration.desk.watch.serving._serve", serve_at_once)
+
+
+def test_at_the_end_the_board_confirms_that_its_drive_is_at_rest(monkeypatch):
+    at_once(monkeypatch)
+    source = Ending(LiveLines({}, {}, is_at_rest=True, orders=1))
+    server = serve(source, WatchSetup("board", Bench()), Guard("127.0.0.1"), 0, ready=print)
+    assert server.orders.drive.condition == "at rest"
+    assert source.asked == ["end", "rest"]
+
+
+@pytest.mark.parametrize(
+    ("said", "reason"),
+    [
+        (LiveState("gone", "unplugged"), "unplugged"),
+        (LiveState("silent", "nothing valid came"), "nothing valid came"),
+        (LiveState("failed", "the process was told to end"), "the process was told to end"),
+        (LiveLines({}, {}, is_at_rest=True, orders=0), "the board has not confirmed the stop"),
+        (LiveReply("ramp: done"), "the board has not confirmed the stop"),
+    ],
+)
+def test_an_end_without_that_is_unknown_with_exit_code_3(monkeypatch, said, reason):
+    at_once(monkeypatch)
+    monkeypatch.setattr("calibration.desk.watch.serving._CONFIRM_S", 0.1)
+    setup = WatchSetup("board", Bench())
+    with pytest.raises(DeviceFailedError) as caught:
+        serve(Ending(said), setup, Guard("127.0.0.1"), 0, ready=print)
+    assert str(caught.value) == f"board: {reason}; whether the drive is at rest is not known"
+    assert caught.value.exit_code == 3
+
 
 def test_a_port_that_failed_is_told_at_the_end_with_exit_code_3(monkeypatch):
-    async def at_once(server, _number, _ready):
-        server._poll()
-
-    monkeypatch.setattr("calibration.desk.watch.serving._serve", at_once)
+    at_once(monkeypatch)
     setup = WatchSetup("board", Bench())
     with pytest.raises(DeviceFailedError, match="board: out of order; whether the drive") as caught:
         serve(Failing(), setup, Guard("127.0.0.1"), 0, ready=print)

@@ -10,7 +10,9 @@ from calibration.desk.watch.orders import Answer, Orders
 from calibration.desk.watch.setup import WatchSetup
 from calibration.desk.watch.state import WatchState
 from firmware_bridge.announcement import ChannelInfo
-from firmware_bridge.live_events import LiveChannels, LiveReply, LiveState
+from firmware_bridge.drive_lines import DriveLine
+from firmware_bridge.errors import BridgeError
+from firmware_bridge.live_events import LiveChannels, LiveLines, LiveState
 from firmware_bridge.recording_name import recording_in
 from metro.bench import Bench
 from metro.measured import Measured
@@ -35,12 +37,15 @@ class Recorded:
 
     def set_line(self, slot, frequency_hz, amplitude_v, phase_rad=0.0):
         self.asked.append(("set", slot, frequency_hz, amplitude_v, phase_rad))
+        return len(self.asked)
 
     def clear_line(self, slot):
         self.asked.append(("clear", slot))
+        return len(self.asked)
 
     def rest(self):
         self.asked.append(("rest",))
+        return len(self.asked)
 
     def close(self):
         pass
@@ -75,14 +80,14 @@ def line(frequency=87.1, amplitude=2.0, **more):
 
 def test_a_line_goes_into_the_first_free_slot_and_is_followed(desk):
     orders, source, state = desk
-    assert orders.obey(line(phase=90)) == Answer("line 1 set: 87.1 Hz, 2 V")
-    assert orders.obey(line("141.3 Hz", "500 mV")) == Answer("line 2 set: 141.3 Hz, 0.5 V")
+    assert orders.obey(line(phase=90)) == Answer("line 1 sent: 87.1 Hz, 2 V")
+    assert orders.obey(line("141.3 Hz", "500 mV")) == Answer("line 2 sent: 141.3 Hz, 0.5 V")
     assert source.asked == [
         ("set", 0, 87.1, 2.0, pytest.approx(np.pi / 2)), ("set", 1, 141.3, 0.5, 0.0),
     ]  # fmt: skip
     assert state.stream.lines.frequencies_hz == (87.1, 141.3)
     assert orders.document()["sum_v"] == 2.5
-    orders.obey({"do": "clear line", "slot": 0})
+    assert orders.obey({"do": "clear line", "slot": 0}) == Answer("clear line 1 sent")
     assert state.stream.lines.frequencies_hz == (141.3,)
     assert orders.obey(line(31.7)).text.startswith("line 1 ")
 
@@ -150,13 +155,60 @@ def test_a_plain_name_is_recorded_into_the_folder_once(desk, tmp_path):
     assert orders.obey({"do": "end recording"}) == Answer("recording ended")
 
 
-def test_stop_rests_the_drive_and_forgets_the_lines(desk):
+def test_stop_is_confirmed_by_the_board_and_not_before(desk):
     orders, source, state = desk
     orders.obey(line())
-    assert orders.obey({"do": "stop"}) == Answer("drive stopped")
+    told(orders, source, {0: DriveLine(87.1, 2.0)})
+    assert orders.drive.condition == "on"
+    assert orders.obey({"do": "stop"}) == Answer("stop sent")
     assert source.asked[-1] == ("rest",)
-    assert orders.drive.lines == {}
+    assert orders.drive.wanted == {}
+    assert orders.drive.condition == "stopping"
+    assert not told(orders, source, {0: DriveLine(87.1, 2.0)}, wanted={})
+    assert orders.document()["sum_v"] == 2.0  # still driven, as far as is known
+    # at rest, but before the stop was heard of
+    before = LiveLines({}, {}, is_at_rest=True, orders=len(source.asked) - 1)
+    assert not orders.drive.hear(before)
+    assert orders.drive.condition == "stopping"
+    assert told(orders, source, {}, is_at_rest=True)
+    assert orders.drive.condition == "at rest"
     assert state.stream.lines.frequencies_hz == ()
+
+
+def told(orders, source, lines, wanted=None, *, is_at_rest=False):
+    """The port's process says what it knows after every order."""
+    wanted = lines if wanted is None else wanted
+    return orders.drive.hear(LiveLines(lines, wanted, is_at_rest, len(source.asked)))
+
+
+@pytest.mark.parametrize("how", ["gone", "silent", "failed"])
+def test_nothing_is_claimed_of_a_port_that_is_away(desk, how):
+    orders, source, state = desk
+    told(orders, source, {}, is_at_rest=True)
+    state.take(LiveState(how, "unplugged"))
+    assert orders.drive.condition == "unknown"
+    assert not orders.drive.is_at_rest
+    stop = orders.obey({"do": "stop"})
+    assert stop.refused
+    assert stop.text.endswith(f"the port is {how}; whether the drive is at rest is not known")
+    assert source.asked == [("rest",)]
+    record = orders.obey({"do": "record", "name": "run"})
+    assert record == Answer(f"the port is {how}: no recording can begin", refused=True)
+    assert orders.obey(line()) == Answer(f"the port is {how}: no line is set", refused=True)
+    assert source.asked == [("rest",)]
+
+
+def test_a_stop_that_nobody_takes_is_said_to_be_unknown(desk):
+    orders, source, _ = desk
+
+    def ended():
+        raise BridgeError("the process that held it has ended")
+
+    source.rest = ended
+    assert orders.obey({"do": "stop"}) == Answer(
+        "the process that held it has ended; whether the drive is at rest is not known",
+        refused=True,
+    )
 
 
 def test_stop_is_passed_on_whatever_is_known_of_the_drive(tmp_path):
@@ -182,20 +234,6 @@ def test_a_replay_records_nothing(tmp_path):
     assert orders.document()["can_record"] is False
 
 
-def test_a_port_or_board_that_was_away_has_no_lines_set(desk):
-    orders, _, state = desk
-    orders.drive.follow_port()
-    orders.obey(line())
-    state.take(LiveState("gone", "unplugged"))
-    orders.drive.follow_port()
-    assert orders.drive.lines == {}
-    state.take(LiveState("connected"))
-    orders.obey(line())
-    state.take(board(stream=2))
-    orders.drive.follow_port()
-    assert orders.drive.lines == {}
-
-
 def test_all_slots_taken(desk):
     orders, _, _ = desk
     for k in range(SLOTS):
@@ -205,31 +243,62 @@ def test_all_slots_taken(desk):
     )
 
 
-def test_a_line_that_the_board_refuses_is_not_set(desk):
-    orders, _, state = desk
+def test_only_what_the_port_says_is_shown(desk):
+    orders, source, state = desk
     orders.obey(line(31.7, 1.0))
     orders.obey(line(87.1, 2.0))
-    orders.drive.hear(LiveReply("set line: done"))
-    orders.drive.hear(LiveReply("the board refuses to set line: no such slot", refused=True))
+    assert orders.document()["sum_v"] == 3.0  # may be set at any moment
+    told(orders, source, {0: DriveLine(31.7, 1.0)})  # the board has refused the other one
     assert list(orders.drive.lines) == [0]
     assert state.stream.lines.frequencies_hz == (31.7,)
 
 
-def test_where_a_line_in_place_of_another_is_refused_the_other_stays(desk):
-    orders, _, _ = desk
-    orders.obey(line(31.7, 1.0))
-    orders.drive.hear(LiveReply("set line: done"))
-    orders.obey(line(31.7, 4.0, slot=0))
-    orders.drive.hear(
-        LiveReply("a line of 4 V is beyond the board's full scale of 2 V", refused=True)
-    )
-    assert orders.drive.lines[0].amplitude_v == 1.0
+def test_where_a_line_in_place_of_another_is_not_answered_the_larger_is_shown(desk):
+    orders, source, _ = desk
+    told(orders, source, {0: DriveLine(31.7, 4.0)})
+    orders.obey(line(31.7, 1.0, slot=0))
+    assert orders.document()["sum_v"] == 4.0
+    orders.obey({"do": "clear line", "slot": 0})
+    assert orders.document()["sum_v"] == 4.0
+    assert not orders.obey(line(87.1, 4.5)).refused  # it will wait for the other to be gone
+    told(orders, source, {0: DriveLine(87.1, 4.5)})
+    assert orders.document()["sum_v"] == 4.5
 
 
-def test_other_answers_never_make_a_drive_look_at_rest(desk):
+def test_an_order_on_its_way_is_not_forgotten_over_news_from_before(desk):
     orders, _, _ = desk
     orders.obey(line(31.7, 1.0))
-    for text, refused in (("ramp: done", False), ("clear line: done", False),
-                          ("run.mfr exists already", True), ("no space left on device", True)):  # fmt: skip
-        orders.drive.hear(LiveReply(text, refused))
+    orders.drive.hear(LiveLines({}, {}, is_at_rest=True, orders=0))
     assert orders.document()["sum_v"] == 1.0
+    assert orders.drive.condition == "on"
+    assert orders.obey(line(87.1, 1.0)).text.startswith("line 2 ")
+
+
+@pytest.mark.parametrize("large", [10**400, -(10**400), "9" * 400, "1e400"])
+def test_a_number_too_large_for_a_float_is_refused(desk, large):
+    orders, source, _ = desk
+    for name in ("frequency", "amplitude", "phase"):
+        answer = orders.obey(line() | {name: large})
+        assert answer.refused
+        assert len(answer.text) < 100
+    assert source.asked == []
+
+
+@pytest.mark.parametrize(
+    "odd", ["1_0", "\u0663", "\uff11", "1_0 Hz", "0x10", "1 2", True, "infinity"]
+)
+def test_what_only_a_programming_language_takes_for_a_number_is_refused(desk, odd):
+    orders, source, _ = desk
+    for name in ("frequency", "amplitude", "phase"):
+        assert orders.obey(line() | {name: odd}).refused
+    assert source.asked == []
+
+
+@pytest.mark.parametrize(
+    ("said", "phase_deg"), [("90", 90), (" -45.5 ", -45.5), ("0.5 rad", 28.64788975654116),
+                            ("90 deg", 90), (".5e1", 5), ("", 0), (30, 30)],
+)  # fmt: skip
+def test_a_phase_is_in_degrees_unless_it_has_a_unit(desk, said, phase_deg):
+    orders, source, _ = desk
+    assert not orders.obey(line(phase=said)).refused
+    assert np.degrees(source.asked[0][4]) == pytest.approx(phase_deg)

@@ -17,7 +17,8 @@ from calibration.desk.watch.state import WatchState
 from calibration.desk.watch.wire import unpack
 from calibration.errors import CalibrationError
 from firmware_bridge.announcement import ChannelInfo
-from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveReply, LiveState
+from firmware_bridge.drive_lines import DriveLine
+from firmware_bridge.live_events import LiveBlock, LiveChannels, LiveLines, LiveReply, LiveState
 from metro.bench import Bench
 from metro.measured import Measured
 
@@ -44,10 +45,17 @@ class Tone:
 
     def set_line(self, slot, frequency_hz, amplitude_v, phase_rad=0.0):
         self.asked.append((slot, frequency_hz, amplitude_v, phase_rad))
-        self.waiting.append(LiveReply("set line: done"))
+        lines = {slot: DriveLine(frequency_hz, amplitude_v, phase_rad)}
+        self.waiting += [
+            LiveReply("set line: done"),
+            LiveLines(lines, lines, False, len(self.asked)),
+        ]
+        return len(self.asked)
 
     def rest(self):
         self.asked.append("rest")
+        self.waiting.append(LiveLines({}, {}, is_at_rest=True, orders=len(self.asked)))
+        return len(self.asked)
 
 
 class Desk:
@@ -235,6 +243,7 @@ def test_orders_are_obeyed_and_answered_on_every_page():
         assert said["refused"]
         assert "beyond the drive limit of 5 V" in said["text"]
         await other.write_message(json.dumps({"do": "stop"}))
+        assert (await answer(other))["text"] == "stop sent"
         assert (await answer(other))["text"] == "drive stopped"
         assert desk.source.asked[-1] == "rest"
         await until(live, lambda document: document["drive"]["sum_v"] == 0.0)
@@ -269,11 +278,22 @@ def test_what_is_no_order_does_no_harm():
     serving(scenario)
 
 
-def test_a_crowd_of_pages_is_refused():
+def test_a_ninth_page_has_figures_and_a_stop_and_the_plots_of_one_that_closes(monkeypatch):
+    monkeypatch.setattr("calibration.desk.watch.handlers._PAGES", 9)
+
     async def scenario(desk):
-        lives = [await desk.open() for _ in range(8)]
+        lives = [await desk.open() for _ in range(9)]
+        document, arrays = (await messages(lives[8], 2))[-1]
+        assert not document["has_plots"]
+        assert not arrays
+        assert document["source"]["rate_hz"] == RATE_HZ
+        assert (await messages(lives[7], 1))[0][0]["has_plots"]
         await desk.refused(status=503)
-        assert len(lives) == 8
+        await lives[8].write_message(json.dumps({"do": "stop"}))
+        assert (await answer(lives[8]))["text"] == "stop sent"
+        assert (await answer(lives[8]))["text"] == "drive stopped"
+        lives[0].close()
+        await until(lives[8], lambda document: document["has_plots"])
 
     serving(scenario)
 

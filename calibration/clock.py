@@ -82,16 +82,26 @@ def combine_steps(fits: Sequence[ChannelFit]) -> tuple[NDArray[np.float64], NDAr
     size = len(fits[0].steps)
     joint = np.zeros((len(fits) * size, len(fits) * size))
     parts = [fit.covariance[first:, first:] for fit in fits]
+    roots = [_root(part) for part in parts]
     for i, own in enumerate(parts):
-        for j, other in enumerate(parts):
-            u = np.outer(np.sqrt(np.diag(own)), np.sqrt(np.diag(other)))
-            shared = own if i == j else _coherence(fits[i], fits[j]) * np.eye(size) * u
+        for j in range(len(parts)):
+            # Between roots, what is shared leaves the whole a covariance, however the terms of a
+            # channel of which only a part is there hang together.
+            shared = own if i == j else _coherence(fits[i], fits[j]) * roots[i] @ roots[j].T
             joint[i * size : (i + 1) * size, j * size : (j + 1) * size] = shared
     information = _inverse(joint)
     both = np.tile(np.eye(size), (len(fits), 1))
     covariance = _inverse(both.T @ information @ both)
     steps = np.concatenate([fit.steps for fit in fits])
     return covariance @ (both.T @ information @ steps), covariance
+
+
+def _root(covariance: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the matrix that times its own transpose is the covariance, nearest to its diagonal."""
+    u = np.sqrt(np.maximum(np.diag(covariance), np.finfo(float).tiny))
+    values, vectors = np.linalg.eigh(covariance / np.outer(u, u))
+    root = (vectors * np.sqrt(np.maximum(values, 0.0))) @ vectors.T
+    return np.asarray(u[:, None] * root)
 
 
 def _coherence(one: ChannelFit, other: ChannelFit) -> float:

@@ -25,6 +25,7 @@ FloatArray = NDArray[np.float64]
 
 _LONGEST = 1 << 16
 _SHORTEST = 16
+_FINE = 256  # samples: with fewer, lines cannot be told from what lies beside them
 _WANTED_SEGMENTS = 16  # the u of a bin is then an eighth of it
 _WELL_USED = 0.7
 _LITTLE_USED = 0.5
@@ -164,7 +165,8 @@ def find_spectrum(
     from_s, to_s : float, optional
         The stretch [s].
     resolution_hz : float, optional
-        Distance of the bins [Hz]; by default what leaves about sixteen segments.
+        Distance of the bins [Hz]; by default what leaves about sixteen segments, or fewer
+        where a record is so short that those would resolve no line.
 
     Returns
     -------
@@ -217,7 +219,8 @@ def _segment(source: RecordingSource, gaps: "Sequence[Gap]", resolution_hz: floa
                 f"{source.rate_hz / _SHORTEST:.3g} Hz for this stretch, got {resolution_hz:.3g} Hz"
             )
         return wanted
-    most = max(_SHORTEST, min(_LONGEST, 2 * source.length // _WANTED_SEGMENTS))
+    fine = min(_FINE, source.length // 2)  # few long segments of a short record
+    most = max(_SHORTEST, min(_LONGEST, max(fine, 2 * source.length // _WANTED_SEGMENTS)))
     segment = int(1 << (most.bit_length() - 1))
     ends = [(g.index, g.index + g.length) for g in gaps]
     starts = np.array([source.start, *(end for _, end in ends)])

@@ -1,8 +1,11 @@
 """A board that says nothing, or nothing that can be understood: when to give up, and why."""
 
+import logging
 import time
 
 __all__ = ["Silence"]
+
+_LOG = logging.getLogger("firmware_bridge.port_watch")  # steps aside for the line of progress
 
 _SILENCE_S = 5.0  # without one valid message, or line of numbers among bytes, at the start
 _IDLE_S = 30.0  # with nothing but announcements, answers and notes at the start
@@ -28,7 +31,7 @@ class Silence:
         self._name, self._baud, self._is_text = name, baud, is_text
         self._heard_s = self._sampled_s = time.monotonic()
         self._is_heard = False  # ever
-        self._is_echo = False
+        self._is_echo = self._is_told = False
         self._bytes = self._printable = self._zeros = 0  # since the last time something valid came
 
     @property
@@ -89,7 +92,7 @@ class Silence:
         """
         silent_s = time.monotonic() - self._heard_s
         if self._is_text:
-            return self._maybe_no_lines(silent_s)
+            return self._maybe_no_lines(silent_s, is_patient)
         idle_s = time.monotonic() - self._sampled_s
         if not is_recording and silent_s > _SILENCE_S + every_s:
             return f"{self._name}: {self._why_nothing(is_announced)}"
@@ -102,7 +105,15 @@ class Silence:
             return f"{self._name} sent no valid frame for {stall_s:g} s{came}"
         return ""
 
-    def _maybe_no_lines(self, silent_s: float) -> str:
+    def _maybe_no_lines(self, silent_s: float, is_patient: bool) -> str:  # private
+        if not self._is_heard and not self._bytes and silent_s > _SILENCE_S:
+            nothing = f"{self._name} sent nothing for {_SILENCE_S:g} s"
+            if not is_patient:
+                return f"{nothing} (is it the right port? --reconnect waits for a first line)"
+            if not self._is_told:
+                self._is_told = True
+                _LOG.warning("%s; waiting for a first line", nothing)
+            return ""
         if self._bytes and silent_s > _SILENCE_S and not self._is_heard:
             frames = ", or does it send frames, without --text" if self._zeros else ""
             return (

@@ -10,8 +10,11 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from calibration.desk.ledger_errors import LedgerError
+from metro.errors import MidfringeError
 
 __all__ = ["LogFolder", "Retention"]
+
+_WRONG_INPUT = 2  # the exit code at which a command leaves no file behind
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,24 +138,32 @@ class LogFolder:
             If another one has it.
         """
         path = self.folder / f".{self.name}.lock"
+        is_new = not path.exists()
         try:
             descriptor = os.open(path, os.O_CREAT | os.O_RDWR, 0o644)
         except OSError as error:
             raise LedgerError(f"{path}: {(error.strerror or str(error)).lower()}") from None
         try:
-            _lock(descriptor, self)
-            yield
+            _lock(descriptor, self, path)
+            try:
+                yield
+            except MidfringeError as error:
+                if is_new and error.exit_code == _WRONG_INPUT:
+                    path.unlink(missing_ok=True)  # still held: who waits for it sees it gone
+                raise
         finally:
             os.close(descriptor)  # with it the lock; the file stays, so that two cannot hold it
 
 
-def _lock(descriptor: int, folder: LogFolder) -> None:
+def _lock(descriptor: int, folder: LogFolder, path: Path) -> None:
     try:
         import fcntl
     except ImportError:  # no such locks on this system
         return
     try:
         fcntl.flock(descriptor, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        if not path.exists() or path.stat().st_ino != os.fstat(descriptor).st_ino:
+            raise OSError  # the log that made it has just taken it away
     except OSError:
         raise LedgerError(
             f"--out: another log is writing {folder.folder / folder.name} already"

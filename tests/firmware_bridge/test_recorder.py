@@ -261,6 +261,27 @@ def test_a_stop_event_ends_it_with_everything_kept(pty, tmp_path, in_background)
     assert summary.samples == 400
 
 
+def test_a_silent_port_is_named_where_lines_are_expected(pty, tmp_path, monkeypatch):
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
+    with pytest.raises(DeviceFailedError) as error:
+        record(pty.port, tmp_path / "a.mfr", duration_s=1.0, text=True)
+    assert error.value.exit_code == 3
+    assert str(error.value) == (
+        f"{pty.port} sent nothing for 0.3 s (is it the right port? --reconnect waits for a first "
+        "line); nothing was recorded"
+    )
+    assert not (tmp_path / "a.mfr").exists()
+
+
+def test_waiting_for_a_first_line_is_said_once(pty, tmp_path, monkeypatch, caplog):
+    monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.2)
+    stop = threading.Event()
+    threading.Timer(0.9, stop.set).start()
+    record(pty.port, tmp_path / "a.mfr", text=True, rate_hz=50.0, reconnect=True, stop=stop)
+    waiting = f"{pty.port} sent nothing for 0.2 s; waiting for a first line"
+    assert [entry.message for entry in caplog.records].count(waiting) == 1
+
+
 def test_a_silent_board_is_named_and_nothing_is_left(pty, tmp_path, monkeypatch):
     monkeypatch.setattr("firmware_bridge.silence._SILENCE_S", 0.3)
     with pytest.raises(DeviceFailedError) as error:

@@ -100,6 +100,22 @@ def test_gaps_are_told_and_left_out(capsys, tmp_path):
     assert found["used_fraction"] == pytest.approx(0.98)
 
 
+def test_a_line_in_a_short_record_is_found(capsys, tmp_path):
+    rate_hz, count = 10_000, 1000
+    t = np.arange(count) / rate_hz
+    noise = np.random.default_rng(7).normal(0.0, 0.01, count)
+    rows = np.column_stack((t, 1.0 + 0.2 * np.cos(2 * np.pi * 1000 * t) + noise))
+    np.savetxt(tmp_path / "s.csv", rows, delimiter=",", header="time (s),pd (V)", comments="")
+    code, out, _ = spectrum(capsys, tmp_path / "s.csv", "--json")
+    found = json.loads(out)
+    assert code == 0
+    (line,) = found["lines"]
+    bin_hz = rate_hz / found["segment"]
+    assert 1000 / bin_hz >= 8
+    assert line["frequency"]["value"] == pytest.approx(1000, abs=0.2 * bin_hz)
+    assert line["amplitude"]["value"] == pytest.approx(0.2, rel=0.02)
+
+
 def test_a_stretch_and_files(capsys, recording, bench, tmp_path):
     pytest.importorskip("matplotlib")
     table, plot = tmp_path / "s.csv", tmp_path / "s.png"

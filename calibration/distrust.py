@@ -23,7 +23,6 @@ _MAINS_WANDER = 1e-3  # of the mains frequency; grids stay within 0.05 Hz in 50 
 _MAINS_SHARE = 1e-3  # of the line: a smaller pick-up does not matter beside drive and ADC
 _SEEN = 20.0  # power over floor from which a peak is there: e^−20 in noise
 _ALIASED = 1.5  # variance over that of a lone line in as many samples without gaps
-_ROUNDING = 1e-15  # float64: what is left of a constant is no line
 TOO_WEAK = "too weak"
 _UNSTEADY_SHARE = 3e-3  # of the line: less is in its u already, and small
 _MODULATED = 0.03  # rms change of the amplitude or phase, relative or rad
@@ -164,8 +163,7 @@ class Doubts:
 
     def _weak(self, channel: FittedChannel, line: int, largest: float) -> str | None:
         size = abs(channel.steady(line)[0])
-        floor = channel.density(line, self.rate_hz) / np.sqrt(channel.fit.used / self.rate_hz)
-        floor = max(floor, _ROUNDING * largest)
+        floor = channel.floor(line, self.rate_hz, largest)
         if size > LEAST_SNR * floor:
             return None
         snr = size / floor if floor else 0.0

@@ -34,6 +34,9 @@ class Line:
         Amplitude spectral density of the noise beside the line, unit of the samples/√Hz.
     used_s : float
         Time really used [s].
+    floor_value : float
+        √(S/T), or what rounding leaves where that is more, in the unit of the samples: a line is
+        told from nothing by its amplitude over it.
     drive : PhasorEstimate, optional
         The line in the drive channel.
     ratio : PhasorEstimate, optional
@@ -53,6 +56,7 @@ class Line:
     response: PhasorEstimate
     density_value: float
     used_s: float
+    floor_value: float
     drive: PhasorEstimate | None = None
     ratio: PhasorEstimate | None = None
     distrust_reasons: tuple[str, ...] = ()
@@ -103,9 +107,11 @@ class Line:
 
     @property
     def snr_value(self) -> float:
-        """A/√(S/T) as a plain number; infinite where no noise was found."""
-        floor = self.density_value / np.sqrt(self.used_s)
-        return float(abs(self.phasor) / floor) if floor > 0 else float("inf")
+        """A/√(S/T), by `floor_value`, as a plain number; infinite where nothing but the line is."""
+        floor = self.floor_value
+        if floor > 0:
+            return float(abs(self.phasor) / floor)
+        return float("inf") if abs(self.phasor) > 0 else 0.0
 
     def to_dict(self, *, over_time: bool = False) -> dict[str, Any]:
         """Return the line as the JSON output has it, quantities as Measured."""

@@ -12,6 +12,8 @@ from calibration.whitening import tap_response
 
 __all__ = ["FittedChannel", "ratio_estimate"]
 
+_ROUNDING = 1e-15  # float64: what is left of a constant is no line
+
 
 @dataclass(frozen=True, slots=True)
 class FittedChannel:
@@ -68,6 +70,26 @@ class FittedChannel:
         """Return the one-sided amplitude spectral density beside a line, unit/√Hz."""
         variance = self.fit.noise[line].variance
         return float(np.sqrt(2 * variance / rate_hz) / abs(self.responses[line]))
+
+    def floor(self, line: int, rate_hz: float, largest: float) -> float:
+        """Return what stands for a line's amplitude where there is none: √(S/T), or rounding.
+
+        Parameters
+        ----------
+        line : int
+            Number of the line.
+        rate_hz : float
+            Samples a second [Hz].
+        largest : float
+            Largest absolute value of the samples: what is left of a constant is its rounding.
+
+        Returns
+        -------
+        float
+            In the unit of the samples.
+        """
+        floor = self.density(line, rate_hz) / np.sqrt(self.fit.used / rate_hz)
+        return float(max(floor, _ROUNDING * largest))
 
     def _phase_covariance(self, line: int) -> float:
         course = self.followed.course

@@ -119,6 +119,7 @@ def _line(fitted: list[FittedChannel], plan: LinePlan, doubts: Doubts, k: int) -
         response.estimate(k),
         response.density(k, rate_hz),
         response.fit.used / rate_hz,
+        response.floor(k, rate_hz, doubts.largest[0]),
         fitted[1].estimate(k) if len(fitted) > 1 else None,
         ratio_estimate(response, fitted[1], k) if len(fitted) > 1 else None,
         doubts.reasons(fitted, k),

@@ -415,3 +415,15 @@ def test_half_a_channel_may_be_missing(lines, missing):
     for line in fit.lines:
         assert line.ratio.phasor == pytest.approx(1.0, abs=1e-3)
         assert 1e-6 < np.sqrt(np.trace(line.ratio.covariance)) < 1e-3
+
+
+@pytest.mark.parametrize("constant", [1.5, 1.234])
+def test_a_constant_has_one_signal_to_noise(constant):
+    fit = fit_lines_si(np.full(8000, constant), 4000.0, [87.1, 31.7])
+    for line in fit.lines:
+        assert line.snr_value < 5
+        weak = f"too weak: signal to noise {line.snr_value:.2g}, 5 is needed"
+        assert line.distrust_reasons[0] == weak
+    nothing = fit_lines_si(np.zeros(8000), 4000.0, [87.1]).lines[0]
+    assert nothing.snr_value == 0
+    assert nothing.distrust_reasons[0] == "too weak: signal to noise 0, 5 is needed"

@@ -8,7 +8,7 @@ from firmware_bridge.gap import Gap
 from firmware_bridge.host_clock import missing_before
 from firmware_bridge.live_events import LiveEvent, LiveGap, block_of, channels_of
 from firmware_bridge.message_head import MessageError, MessageType
-from firmware_bridge.samples_frame import Samples
+from firmware_bridge.samples_frame import Samples, parse_samples
 
 __all__ = ["LiveView"]
 
@@ -33,6 +33,7 @@ class LiveView:
         self._origin: dict[int, int] = {}  # stream: view index of its index 0
         self._reached = 0
         self._last_ns = 0
+        self._was_away = False
         self.announcement: Announcement | None = None
         """What the board said last, None from the port's loss until it speaks again."""
         self.stream: int | None = None
@@ -64,12 +65,33 @@ class LiveView:
             self._announce(message)
         if message[0] not in (MessageType.ANNOUNCEMENT, MessageType.SAMPLES):
             return
+        if self._was_away and message[0] == MessageType.SAMPLES:
+            self._was_away = False
+            self._maybe_anew(message)
         for event in self._decoder.accept(message):
             self._show(event, monotonic_ns, unix_ns)
 
+    def _maybe_anew(self, message: bytes) -> None:
+        """Forget what came before a loss of the port where the board counts from further back.
+
+        It may send the very same frames again under the same id, which would be dropped as received
+        twice: a converter that shows nothing but zeros does.
+        """
+        try:
+            frame = parse_samples(message)
+        except MessageError:
+            return
+        origin = self._origin.get(self._decoder.name_of(frame.stream))
+        if origin is None or frame.index + origin >= self._reached:
+            return
+        self._decoder, self.stream = Decoder(), None
+        self._origin.clear()
+        for said in self._messages.values():
+            self._decoder.accept(said)
+
     def away(self) -> None:
         """Take note that the port was away: nothing from before will come any more."""
-        self.announcement = None
+        self.announcement, self._was_away = None, True
         for event in self._decoder.flush():
             self._show(event, self._last_ns, 0)
 

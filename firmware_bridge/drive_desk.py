@@ -18,6 +18,7 @@ __all__ = ["DriveDesk"]
 _SETTLE_S = 0.3  # slew, and the filters behind the drive
 _ANSWER_S = 5.0
 _REPEAT_S = 0.5  # a command without an answer is sent again
+_AGAIN_S = 0.05
 _ROUNDING = 1e-12  # sums of the same amplitudes in another order
 _REST = frozenset((CommandCode.CLEAR_LINE, CommandCode.RAMP))
 _UNKNOWN = 1  # status of a reply
@@ -406,3 +407,5 @@ class DriveDesk:
                 with contextlib.suppress(BridgeError):  # of a board that is another one by now
                     steps = list(falling.fall(announcement))
         yield from steps
+        # Nobody reads the answers any more: once again, in case the first was damaged on its way.
+        yield _AGAIN_S, rest_requests(announcement.rate_hz)

@@ -239,6 +239,26 @@ def test_a_board_that_does_not_answer_ends_a_recording_with_lines(monkeypatch):
         bench.desk.is_settled()
 
 
+def test_a_fall_never_rises_and_ends_at_rest_although_one_command_in_a_row_is_lost(bench):
+    bench.desk.set(0, DriveLine(87.1, 2.0))
+    bench.run()
+    bench.lost = lambda: True
+    bench.desk.set(0, DriveLine(87.1, 4.0))  # on its way: the board may hold the one or the other
+    bench.speak()
+    bench.desk.set(1, DriveLine(31.7, 0.5))
+    bench.lost = lambda: False
+    bench.run(1, every_s=0.1)
+    assert sorted(bench.board) == [0, 1]
+    steps, before_v = list(bench.desk.fall(announced())), bench.driven_v
+    for k, (_, requests) in enumerate(steps):
+        for code, arguments in requests if k != len(steps) - 2 else ():
+            bench.obey(code, arguments)
+        assert bench.driven_v <= before_v
+        before_v = bench.driven_v
+    assert bench.driven_v == 0.0
+    assert sum(wait_s for wait_s, _ in steps) < 0.5
+
+
 @pytest.mark.parametrize("seed", range(60))
 @pytest.mark.parametrize("loss", [0.0, 0.3])
 def test_whatever_is_asked_and_lost_the_limit_holds_and_a_stop_stops(monkeypatch, seed, loss):

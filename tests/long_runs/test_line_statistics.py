@@ -25,16 +25,26 @@ def test_intervals_cover(kind):
     # 20 records of 13 intervals, correlated within a record (amplitudes and ratios share their
     # noise): as good as 20·7 independent ones, σ = 1.8 %, and 6 % for the spread. Three σ.
     tally = coverage_batch(kind, 11, 0, records=20)
-    number, inside, _, squares = np.sum(list(tally.values()), axis=0)
+    pooled = {name: row for name, row in tally.items() if not name.startswith("line ")}
+    number, inside, _, squares = np.sum(list(pooled.values()), axis=0)
     assert number == 20 * 13
     assert inside / number > 0.895
     assert 0.82 < np.sqrt(squares / number) < 1.18
 
 
+def test_each_line_is_tallied_by_itself():
+    tally = coverage_batch("neighbour", 11, 0, records=2)
+    for name in ("amplitude", "phase", "ratio amplitude", "ratio phase"):
+        lines = [tally[f"line {number} {name}"] for number in (1, 2, 3)]
+        assert [row[0] for row in lines] == [2, 2, 2]
+        np.testing.assert_allclose(np.sum(lines, axis=0), tally[name])
+
+
 @pytest.mark.slow
 @pytest.mark.parametrize("kind", KINDS)
 def test_intervals_cover_in_200_records(kind):
-    # Of each quantity 600 intervals, σ = 0.9 %, of the clock 200, σ = 1.5 %. Three and a half σ.
+    # Of each quantity 600 intervals, σ = 0.9 %, of a line alone and of the clock 200, σ = 1.5 %. Three
+    # and a half σ.
     for name, number, share, *_ in judged(kind, _summed(coverage_batch, kind, 12, 200)):
         least = 0.95 - 3.5 * np.sqrt(0.95 * 0.05 / number)
         assert float(share.split()[0]) / 100 > least, (name, share)

@@ -247,9 +247,10 @@ def load(path: str | Path) -> Calibration:
     try:
         text = Path(path).read_text(encoding="utf-8")
     except OSError as error:
-        raise CalibrationFileError(f"{path}: {error.strerror or error}") from None
-    except ValueError as error:
-        raise CalibrationFileError(f"{path} is no JSON document: {error}") from None
+        reason = (error.strerror or str(error)).lower()
+        raise CalibrationFileError(f"cannot read the calibration {path}: {reason}") from None
+    except ValueError:  # bytes that are no text, such as those of a picture
+        raise CalibrationFileError(f"{path} is no JSON document: it is no UTF-8 text") from None
     return parse(text, path)
 
 

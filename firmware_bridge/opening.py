@@ -89,7 +89,10 @@ def open_recording(
     try:
         source = Path(path)
         # A pipe can be read only once, and has no length.
-        is_file = stat.S_ISREG(source.stat().st_mode)
+        mode = source.stat().st_mode
+        if stat.S_ISCHR(mode) or stat.S_ISBLK(mode):  # it may have no end
+            raise OpenError(f"cannot open {os.fspath(path)!r}: it is no regular file or pipe")
+        is_file = stat.S_ISREG(mode)
         content: Path | bytes = source if is_file else source.read_bytes()
         return _open(content, str(source), time, rate_hz, own_time)
     except (OSError, ValueError) as error:

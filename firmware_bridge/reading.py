@@ -15,7 +15,7 @@ Use it on any command that takes a recording::
 
 import functools
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any, TypeVar, overload
 
 import click
@@ -227,6 +227,39 @@ class Reading:
         if self.drive_channel is None:
             return None
         return recording.trace(self.drive_channel, self.from_s, self.to_s)
+
+    def with_drive(self, recording: "Recording", wanted: str | None = None) -> "Reading":
+        """Return how to read the drive too: as given, as wanted, or the channel called "drive".
+
+        Parameters
+        ----------
+        recording : Recording
+            Opened.
+        wanted : str, optional
+            The drive's column as the bench names it.
+
+        Returns
+        -------
+        Reading
+            The same where there is no such channel, or where it is the one that is read.
+
+        Raises
+        ------
+        ChannelError
+            If the wanted channel is not there, or it is not clear which one is read.
+        """
+        if self.drive_channel is not None:
+            return self
+        if wanted is None:
+            named = [
+                str(column)
+                for column, c in zip(recording.columns, recording.channels, strict=True)
+                if c.name.strip().lower() == "drive"
+            ]
+            wanted = named[0] if len(named) == 1 else None
+        if wanted is None or recording.find(wanted) == recording.find(self.channel_name(recording)):
+            return self
+        return replace(self, drive_channel=wanted)
 
     def tell(self, recording: "Recording") -> None:
         """Write the remarks of a recording on standard error, unless ``--quiet``.

@@ -1,5 +1,6 @@
 """CSV and text files to a table: the first section is read, the rest reported."""
 
+import re
 from collections.abc import Sequence
 
 import numpy as np
@@ -18,6 +19,10 @@ from firmware_bridge.text_section import TextSection, maybe_read_section
 __all__ = ["TextError", "columns_kept", "read_text_table"]
 
 _LISTED = 10  # sections
+_HEAD_BYTES = 1 << 16
+_GROUP = 3  # digits between the commas of thousands
+_QUOTED = re.compile(rb'"([+-]?\d*),(\d+)([eE][+-]?\d+)?"')
+_QUOTED_PAIR = re.compile(rb'"[+-]?\d*,\d+(?:[eE][+-]?\d+)?"[ \t]*,|,[ \t]*"[+-]?\d*,\d+')
 
 
 class TextError(BridgeError):
@@ -48,7 +53,7 @@ def read_text_table(data: bytes, name: str) -> Table:
     data = plain_text(data)
     if not is_text(data):
         raise TextError(f"{name} is neither a text nor a known kind of recording")
-    data = stamps_to_seconds(data)
+    data = _with_points(stamps_to_seconds(data))
     section = maybe_read_section(data, 0, 0)
     if section is None:
         raise TextError(
@@ -62,6 +67,21 @@ def read_text_table(data: bytes, name: str) -> Table:
         )
     rest, unread = _rest_remarks(data, section)
     return _to_table(section, [*_fault_remarks(section), *rest], unread)
+
+
+def _with_points(data: bytes) -> bytes:
+    """Return quoted numbers with decimal commas, parted by commas, with decimal points.
+
+    Groups of three digits throughout may be thousands: they are left as they are.
+    """
+    head = data[:_HEAD_BYTES]
+    if not _QUOTED_PAIR.search(head):
+        return data
+    fractions = [match[2] for match in _QUOTED.finditer(head)]
+    zeros = any(match[1].strip(b"+-") in (b"", b"0") for match in _QUOTED.finditer(head))
+    if not zeros and all(len(digits) == _GROUP for digits in fractions):
+        return data
+    return _QUOTED.sub(rb"\1.\2\3", data)
 
 
 def _fault_remarks(section: TextSection) -> list[str]:

@@ -9,6 +9,8 @@ from metro.measured import Measured
 
 __all__ = ["NORMAL", "RECTANGULAR", "BenchError", "BenchLine", "Entry", "MotionPoint", "nearest"]
 
+_LISTED = 12  # known names: more would hide what is wrong
+
 NORMAL = "normal"
 RECTANGULAR = "rectangular"
 """The distributions from which the error of a value may come."""
@@ -103,9 +105,13 @@ def nearest(name: str, known: Iterable[str]) -> str:
     Returns
     -------
     str
-        Such as ``"; the nearest known is 'laser'"``; empty where none is near.
+        Such as ``"; the nearest known is 'laser'"``; where none is near, all of them, or nothing
+        where these are many.
     """
     from difflib import get_close_matches
 
-    close = get_close_matches(name, list(known), 1, 0.5)
-    return f"; the nearest known is {close[0]!r}" if close else ""
+    names = list(known)
+    close = get_close_matches(name, names, 1, 0.5)
+    if close:
+        return f"; the nearest known is {close[0]!r}"
+    return f"; known are {', '.join(map(repr, names))}" if len(names) <= _LISTED else ""

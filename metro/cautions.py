@@ -14,6 +14,12 @@ __all__ = ["bench_cautions", "wave_cautions"]
 
 HENE_AIR_M = 632.8e-9
 _PART = 1e-3
+_ELECTRON_VOLT_M = (
+    6.62607015e-34 * 299792458.0 / 1.602176634e-19
+)  # h·c/e, exact: SI Brochure, 9th ed.
+# The band gap of silicon, 1.12 eV at 300 K (S. M. Sze, Physics of Semiconductor Devices; from memory).
+_SILICON_M = _ELECTRON_VOLT_M / 1.12
+_INFRARED_M = 20e-6  # no interferometer's laser on a bench
 
 
 def bench_cautions(bench: Bench) -> list[str]:
@@ -50,7 +56,32 @@ def bench_cautions(bench: Bench) -> list[str]:
         not bench.in_vacuum and bench.get("air.index") is None and bench.get("air.humidity") is None
     ):
         cautions.append("no humidity given: the air is taken to be dry; 50 % at 20 °C is 4e-7 less")
-    return cautions + _converter_cautions(bench)
+    return cautions + _converter_cautions(bench) + _photodiode_cautions(bench)
+
+
+def _photodiode_cautions(bench: Bench) -> list[str]:
+    """Return where a photodiode yields too much, or sees nothing at the wavelength."""
+    wavelength, responsivity = (
+        bench.get(key) for key in ("laser.wavelength", "photodiode.responsivity")
+    )
+    if wavelength is None:
+        return []
+    wavelength_m = float(wavelength.magnitude)
+    cautions = []
+    if responsivity is not None:
+        electrons = float(responsivity.magnitude) * _ELECTRON_VOLT_M / wavelength_m
+        if electrons > 1.0:
+            cautions.append(
+                f"the responsivity, {float(responsivity.magnitude):.4g} A/W, is {electrons:.3g} electrons"
+                " a photon: more than 1 is an avalanche photodiode or a slip"
+            )
+    has_photodiode = any(key.startswith("photodiode.") for key in bench.entries)
+    if wavelength_m > _SILICON_M and (has_photodiode or wavelength_m > _INFRARED_M):
+        cautions.append(
+            f"the wavelength, {1e6 * wavelength_m:.4g} µm, is infrared beyond 1.1 µm, where a silicon"
+            " photodiode sees nothing: is the unit right?"
+        )
+    return cautions
 
 
 def _converter_cautions(bench: Bench) -> list[str]:

@@ -115,7 +115,7 @@ _OFFSETS = {"degree_Celsius": 273.15, "degree_Fahrenheit": 459.67 * 5 / 9}
 
 def _magnitude_and_unit(value: object, name: str, unit: str) -> tuple[Any, Any]:
     if isinstance(value, str):
-        number, text = split_value(value, name)
+        number, text = split_value(value, name, unit)
         if not text and unit not in _RATIO_UNITS:
             raise MetroError(_wrong_dimension(value, name, unit))
         return number, parse_unit(text or unit, name, value)

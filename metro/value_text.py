@@ -39,7 +39,7 @@ _SPELLINGS = (
 _ROOT = re.compile(r"√\s*\(?([A-Za-z]+)\)?|\bsqrt\(\s*([A-Za-z]+)\s*\)")
 
 
-def split_value(text: str, name: str = "value") -> tuple[float, str]:
+def split_value(text: str, name: str = "value", unit: str = "") -> tuple[float, str]:
     """Split a value into its number and the text of its unit.
 
     Parameters
@@ -48,6 +48,8 @@ def split_value(text: str, name: str = "value") -> tuple[float, str]:
         One number, an optional space, one unit: ``"42cm"``, ``"632.8 nm"``, ``"-3pm"``, ``"0.5"``.
     name : str
         What the value is, for the message.
+    unit : str
+        What is expected, for the message: ``"1"`` for a pure number.
 
     Returns
     -------
@@ -62,16 +64,14 @@ def split_value(text: str, name: str = "value") -> tuple[float, str]:
     stripped = text.strip().replace("−", "-")
     match = _NUMBER.fullmatch(stripped)
     if match is None or _COMMA.match(stripped):
-        raise MetroError(_why_no_number(text, stripped, name))
+        raise MetroError(_why_no_number(text, stripped, name, unit))
     number = float(match[1])
     if not math.isfinite(number):
         raise MetroError(f"{name} must be a finite number, got {text!r}")
-    unit = spell_unit(match[2])
-    if unit and not _UNIT.fullmatch(unit):
-        raise MetroError(
-            f"{name} must be one number and one unit (such as '632.8 nm'), without arithmetic, got {text!r}"
-        )
-    return number, unit
+    written = spell_unit(match[2])
+    if written and not _UNIT.fullmatch(written):
+        raise MetroError(f"{name} must be {_form(unit)}, without arithmetic, got {text!r}")
+    return number, written
 
 
 def spell_unit(unit: str) -> str:
@@ -93,9 +93,14 @@ def spell_unit(unit: str) -> str:
     return unit.strip()
 
 
-def _why_no_number(text: str, stripped: str, name: str) -> str:
+def _form(unit: str) -> str:
+    """Return how a value of a unit is written, for messages."""
+    return "a number" if unit == "1" else "one number and one unit (such as '632.8 nm')"
+
+
+def _why_no_number(text: str, stripped: str, name: str, unit: str) -> str:
     if _COMMA.match(stripped):
         return f"{name} must be written with a decimal point, not a comma, got {text!r}"
     if _NOT_FINITE.match(stripped):
         return f"{name} must be a finite number, got {text!r}"
-    return f"{name} must be one number and one unit (such as '632.8 nm'), got {text!r}"
+    return f"{name} must be {_form(unit)}, got {text!r}"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import PurePath
 from typing import TYPE_CHECKING
 
 import click
@@ -15,12 +16,14 @@ if TYPE_CHECKING:
 
 __all__ = ["emit"]
 
+_SUFFIXES = {"c": (".h", ".hpp", ".c", ".inc"), "micropython": (".py",)}
+
 
 @command(
     example="midfringe emit c --low 0.44V --high 2.87V --wavelength 632.9908nm "
     "--adc-bits 12 --adc-range 3.3V --codes unsigned --out converter.h"
 )
-@click.argument("language", type=click.Choice(["c", "micropython"]))
+@click.argument("language", type=click.Choice(list(_SUFFIXES)), metavar="LANGUAGE")
 @click.option("--calibration", "calibration_file", metavar="FILE", help="From calibrate.")
 @click.option(
     "--slope",
@@ -48,7 +51,7 @@ def emit(
     as_json: bool,
     overwrite: bool,
 ) -> None:
-    """Write a converter for the board: codes to displacement near mid-fringe, in integers.
+    """Write a converter for the board in LANGUAGE, c or micropython: codes to displacement near mid-fringe, in integers.
 
     From a calibration, or from --low, --high and --wavelength. The file proves its worst-case
     error; it is for looking and logging, not for closed loops.
@@ -61,6 +64,10 @@ def emit(
 
     if out is None:
         raise click.UsageError("--out must name the file to write, such as converter.h, got none")
+    suffix = PurePath(out).suffix.lower()
+    if suffix not in _SUFFIXES[language] and not out.startswith("/dev/"):
+        known = " or ".join(_SUFFIXES[language])
+        raise click.UsageError(f"--out must end in {known} for {language}, got {out!r}")
     check_writable(out, overwrite, [calibration_file, bench.path])
     calibration = None if calibration_file is None else load(calibration_file)
     if calibration is None:

@@ -116,8 +116,10 @@ def fringe(
     lines = [] if count else list(lines_hz) or [line.frequency_hz for line in bench.lines]
     ways = {"--count": count, "--quadrature": quadrature, "--null": null, "--pilot": pilot_hz}
     _check(files, lines_hz, ways, extremes_file, levels)
-    source = FringeSource(reading, bench, levels, extremes_file, dark, monitor, antiphase)
     recordings = [reading.open(file) for file in files]
+    if null or not (lines or quadrature or pilot_hz):  # these look at the drive
+        reading = reading.with_drive(recordings[0], bench.text("drive.channel"))
+    source = FringeSource(reading, bench, levels, extremes_file, dark, monitor, antiphase)
     answer = _answer(source, recordings, lines, quadrature, null, pilot_hz)
     if plot is not None and answer.draw is None:
         raise click.UsageError("--plot draws driven, counted and quadrature recordings only")

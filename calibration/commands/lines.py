@@ -1,6 +1,6 @@
 """``midfringe lines``: amplitude and phase of each line, ratio to the drive."""
 
-from dataclasses import replace
+import math
 from typing import TYPE_CHECKING
 
 import click
@@ -85,7 +85,7 @@ def lines(
     if out is not None:
         check_document(out, overwrite, [file, bench.path])
     recording = reading.open(file)
-    reading = _with_drive(reading, recording, bench)
+    reading = reading.with_drive(recording, bench.text("drive.channel"))
     drive = [] if reading.drive_channel is None else [reading.drive_channel]
     fit = read_recording_lines(
         recording,
@@ -130,19 +130,6 @@ def _start(recording: "Recording", reading: Reading) -> str | None:
     return moment.isoformat(timespec="microseconds")
 
 
-def _with_drive(reading: Reading, recording: "Recording", bench: "Bench") -> Reading:
-    """Name the drive channel: as given, as the bench says, or the one called "drive"."""
-    if reading.drive_channel is not None:
-        return reading
-    wanted = bench.text("drive.channel")
-    if wanted is None:
-        named = [c.name for c in recording.channels if c.name.strip().lower() == "drive"]
-        wanted = named[0] if len(named) == 1 else None
-    if wanted is None or recording.find(wanted) == recording.find(reading.channel_name(recording)):
-        return reading
-    return replace(reading, drive_channel=wanted)
-
-
 def _mains(bench: "Bench") -> float:
     entry = bench.get("mains.frequency")
     return 50.0 if entry is None else float(entry.magnitude)
@@ -157,7 +144,7 @@ def _for_people(fit: "LineFit", *, free: bool, over_time: bool) -> str:
         rows += [
             ["line", str(line.frequency) if free else show(line.frequency_hz, "Hz", 9)],
             ["  amplitude, zero to peak", str(line.amplitude)],
-            ["  phase at t = 0", "refused" if line.is_phase_refused else str(line.phase)],
+            ["  phase at t = 0", "refused" if line.is_phase_refused else _angle(line.phase)],
             ["  noise beside it", show(line.density_value, line.noise_density.unit, 3)],
             ["  signal to noise A/√(S/T)", f"{line.snr_value:.4g}"],
         ]
@@ -166,10 +153,10 @@ def _for_people(fit: "LineFit", *, free: bool, over_time: bool) -> str:
                 ["  drive, zero to peak", str(line.drive.amplitude)],
                 [
                     "  drive phase at t = 0",
-                    "refused" if line.is_phase_refused else str(line.drive.phase),
+                    "refused" if line.is_phase_refused else _angle(line.drive.phase),
                 ],
                 ["  response/drive", str(line.ratio.magnitude)],
-                ["  phase of response/drive", str(line.ratio.phase)],
+                ["  phase of response/drive", _angle(line.ratio.phase)],
             ]
         trust = "; ".join(line.distrust_reasons) or "no reason for distrust found"
         rows.append(["  trust", trust])
@@ -189,6 +176,12 @@ def _for_people(fit: "LineFit", *, free: bool, over_time: bool) -> str:
         ["convention", "A·cos(2πft + φ), t = 0 at the first sample of the recording"],
     ]
     return "\n\n".join([table(rows), *(_over_time(fit) if over_time else [])])
+
+
+def _angle(phase: "Measured") -> str:
+    """Return a phase, unknown where half a turn does not bound its error."""
+    half_width = phase.coverage_factor(0.95) * float(phase.u_magnitude or 0.0)
+    return str(phase) if half_width < math.pi else "unknown (U is half a turn or more)"
 
 
 def _relative(product: "LineProduct") -> str:

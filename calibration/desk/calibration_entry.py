@@ -66,11 +66,12 @@ class CalibrationEntry:
             text = Path(path).read_text(encoding="utf-8")
             calibration = parse(text, path)
         except OSError as error:
-            raise LedgerError(f"{path}: {(error.strerror or str(error)).lower()}") from None
-        except ValueError as error:
-            raise LedgerError(f"{path} is no JSON document: {error}") from None
+            reason = (error.strerror or str(error)).lower()
+            raise LedgerError(f"cannot read the calibration {path}: {reason}") from None
         except CalibrationFileError as error:
             raise LedgerError(str(error)) from None
+        except ValueError:  # bytes that are no text, such as those of a picture
+            raise LedgerError(f"{path} is no JSON document: it is no UTF-8 text") from None
         return cls(calibration, text, str(path), bench)
 
     @property

@@ -162,12 +162,11 @@ def _lock(descriptor: int, folder: LogFolder, path: Path) -> None:
         return
     try:
         fcntl.flock(descriptor, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        if not path.exists() or path.stat().st_ino != os.fstat(descriptor).st_ino:
-            raise OSError  # the log that made it has just taken it away
+        is_ours = path.exists() and os.path.samestat(path.stat(), os.fstat(descriptor))
     except OSError:
-        raise LedgerError(
-            f"--out: another log is writing {folder.folder / folder.name} already"
-        ) from None
+        is_ours = False
+    if not is_ours:  # held by another, or just taken away by the log that made it
+        raise LedgerError(f"--out: another log is writing {folder.folder / folder.name} already")
 
 
 def _begun(path: Path) -> tuple[str, int]:

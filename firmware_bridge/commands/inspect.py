@@ -70,6 +70,7 @@ def _document(recording: Any, found: Any) -> dict[str, Any]:  # noqa: ANN401  # 
         "channels": [
             {
                 "name": state.name,
+                "column": column,
                 "minimum": _value(state.minimum, state.unit),
                 "maximum": _value(state.maximum, state.unit),
                 "mean": _value(state.mean, state.unit),
@@ -79,7 +80,7 @@ def _document(recording: Any, found: Any) -> dict[str, Any]:  # noqa: ANN401  # 
                 "stuck": _value(state.stuck_samples / recording.rate_hz, "s"),
                 "missing_codes": len(state.missing_codes),
             }
-            for state in found.channels
+            for column, state in zip(recording.columns, found.channels, strict=True)
         ],
         "gaps": [
             {"index": g.index, "length": g.length, "exact": g.exact, "length_u": g.length_u}
@@ -111,8 +112,10 @@ def _for_people(recording: Any, found: Any) -> str:  # noqa: ANN401
         ["over range", f"{recording.over_range} values"],
         ["clock", _clock(found.clock)],
     ]
+    is_table = not recording.format.startswith("mfr")
     channels = [
         [
+            *([column] if is_table else []),
             s.name,
             s.unit,
             s.minimum,
@@ -122,9 +125,19 @@ def _for_people(recording: Any, found: Any) -> str:  # noqa: ANN401
             s.missing,
             s.over_range,
         ]
-        for s in found.channels
+        for column, s in zip(recording.columns, found.channels, strict=True)
     ]
-    names = ["channel", "unit", "minimum", "maximum", "mean", "std dev", "missing", "over range"]
+    names = [
+        *(["column"] if is_table else []),
+        "channel",
+        "unit",
+        "minimum",
+        "maximum",
+        "mean",
+        "std dev",
+        "missing",
+        "over range",
+    ]
     parts = [table(lines), table(channels, names)]
     if recording.gaps:
         parts.append(_gap_table(recording))

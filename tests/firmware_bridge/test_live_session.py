@@ -1,6 +1,7 @@
 """A port in a process of its own: what comes, what is recorded, and what no viewer can spoil."""
 
 import contextlib
+import multiprocessing
 import os
 import signal
 import subprocess
@@ -13,12 +14,13 @@ import numpy as np
 import pytest
 from wire_board import RATE_HZ, SLOTS, AskedBoard, PtyLink, WireBoard, asked_board, ramp
 
-from firmware_bridge.drive_lines import DriveError
+from firmware_bridge.drive_lines import DriveError, DriveLine
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_session import (
     LiveBlock,
     LiveChannels,
     LiveGap,
+    LiveLines,
     LiveRecording,
     LiveReply,
     LiveSession,
@@ -314,6 +316,35 @@ def test_if_the_viewer_is_killed_the_drive_rests_and_the_recording_ends(tmp_path
     recording = open_mfr(tmp_path / "a.mfr")
     assert recording.has_end
     check_ramps([tmp_path / "a.mfr"], recording.length)
+
+
+def test_a_process_that_is_told_to_end_by_another_is_a_failure(tmp_path):
+    with asked_board() as board, LiveSession(board.link.port, folder=tmp_path) as live:
+        viewer = Viewer(live)
+        viewer.until(lambda e: isinstance(e, LiveBlock))
+        (port,) = [p for p in multiprocessing.active_children() if p.name == "midfringe port"]
+        os.kill(port.pid, signal.SIGTERM)
+        assert viewer.state("failed").reason == "the process that held the port was told to end"
+        port.join(WAIT_S)
+        with pytest.raises(BridgeError, match=r"has ended$"):
+            live.rest()
+
+
+def test_the_lines_that_a_board_may_drive_are_told(tmp_path):
+    line, other = DriveLine(87.1, 0.3), DriveLine(31.7, 0.2)
+    with (
+        asked_board() as board,
+        LiveSession(board.link.port, folder=tmp_path, drive_limit_v=0.5) as live,
+    ):
+        viewer = Viewer(live)
+        viewer.until(lambda e: isinstance(e, LiveLines) and e.is_at_rest)
+        order = live.set_line(0, line.frequency_hz, line.amplitude_v)
+        viewer.until(lambda e: e == LiveLines({0: line}, {0: line}, False, order))
+        viewer.until(lambda e: e == LiveReply("set line: done"))
+        order = live.set_line(1, other.frequency_hz, 0.3)  # beyond the limit
+        viewer.until(lambda e: e == LiveLines({0: line}, {0: line}, False, order))
+        order = live.rest()
+        viewer.until(lambda e: e == LiveLines({}, {}, True, order))
 
 
 def test_close_and_start_may_come_twice(tmp_path):

@@ -68,14 +68,24 @@ def serve(
         state.take(event)
     orders = Orders(source, state, is_replay=is_replay)
     server = WatchServer(source, state, orders, guard)
-    asyncio.run(_serve(server, port_number, ready))
-    if not is_replay:
-        _end(server)
+    reason = asyncio.run(_whole(server, port_number, ready, is_replay=is_replay))
+    if reason:
+        raise DeviceFailedError(f"{setup.title}: {reason}; {NOT_KNOWN}")
     return server
 
 
-def _end(server: WatchServer) -> None:
-    """End the recording, bring the drive to rest, and wait until the board has confirmed it."""
+async def _whole(
+    server: WatchServer, port_number: int, ready: Callable[[str], None], *, is_replay: bool
+) -> str:
+    """Serve until told to stop; return why it is not known what is driven then, or nothing."""
+    await _serve(server, port_number, ready)
+    reason = "" if is_replay else await _ended(server)  # pages still see how the stop goes
+    await server.stop()
+    return reason
+
+
+async def _ended(server: WatchServer) -> str:
+    """End the recording, bring the drive to rest, and wait until the board has confirmed it; say why not."""
     reason = _maybe_unknown(server)
     with contextlib.suppress(BridgeError):  # of a port's process that is there no more
         server.source.stop_recording()
@@ -83,13 +93,12 @@ def _end(server: WatchServer) -> None:
     end_s = time.monotonic() + _CONFIRM_S
     drive = server.orders.drive
     while not reason and drive.condition not in _DONE and time.monotonic() < end_s:
-        time.sleep(_AGAIN_S)
+        await asyncio.sleep(_AGAIN_S)
         server.poll()
         reason = _maybe_unknown(server)
     if not reason and drive.condition not in _DONE:
-        reason = "the board has not confirmed the stop"
-    if reason:
-        raise DeviceFailedError(f"{server.state.setup.title}: {reason}; {NOT_KNOWN}")
+        return "the board has not confirmed the stop"
+    return reason
 
 
 def _maybe_unknown(server: WatchServer) -> str:
@@ -108,7 +117,6 @@ async def _serve(server: WatchServer, port_number: int, ready: Callable[[str], N
     number = await server.start(port_number)
     ready(_address(server.guard, number))
     await stop.wait()
-    await server.stop()
 
 
 def _address(guard: Guard, number: int) -> str:

@@ -158,8 +158,7 @@ def count_fringes(
         passes,
         phase,
         float(got.phase_rad[-1] - got.phase_rad[0]) / (2.0 * math.pi),
-        # what hides next to an extreme hides at every turn alike, so that it adds up
-        math.hypot(*ends.tolist()) + math.fsum(one.fringes_u for one in passes[1:-1]),
+        _net_u(ends, passes, drive is not None),
         span_range,
         record.spikes,
         count_reasons(
@@ -167,6 +166,16 @@ def count_fringes(
         )
         + shaking_reasons(passes, got, envelope.cosine(record.values), along),
     )
+
+
+def _net_u(ends: FloatArray, passes: list[Pass], has_drive: bool) -> float:
+    """Return the standard uncertainty of the net way.
+
+    With a drive a turn that hides next to an extreme takes as much from the pass before it as from the
+    pass after, and cancels; without one the passes between may be taken for others.
+    """
+    both = math.hypot(*ends.tolist())
+    return both if has_drive else both + math.fsum(one.fringes_u for one in passes)
 
 
 def _bridged(drive: FloatArray) -> FloatArray:

@@ -18,6 +18,7 @@ _TURN_BAND_RAD = math.pi  # a way back of less than half a fringe is vibration, 
 _END_BAND_RAD = 1.0  # nor is a shorter one at an end of the record
 _HIDDEN = 0.16  # fringes: 28° there and back
 _LEAST_SHORT = 0.005  # of half the span: 6° of phase
+_SEEN = 7.0  # standard deviations of the noise by which a dip stands out
 _LAW_U = 0.005  # fringes: what a harmonic of 3 % in the law moves the phase by
 
 
@@ -115,6 +116,37 @@ def _low_tops(got: Unfolded) -> tuple[NDArray[np.int64], FloatArray]:
     return turns[low], np.arccos(1.0 - short[low]) / (2.0 * math.pi)
 
 
+def _dips(got: Unfolded) -> tuple[NDArray[np.int64], FloatArray]:
+    """Return where the level leaves an extreme and comes back, and by how many fringes it went.
+
+    Vibration makes such a dip, and so does a mirror that turns a little way beyond the extreme.
+    """
+    level = np.cos(got.phase_rad)
+    turns = turning_points(level, _seen(got))
+    kind = np.sign(np.diff(level[turns], prepend=level[0]))  # 1: a maximum
+    shallow = 1.0 - np.abs(level[turns])
+    dips = (kind * level[turns] < 0.0) & (shallow < 2.0 * got.band)
+    return turns[dips], np.arccos(1.0 - shallow[dips]) / (2.0 * math.pi)
+
+
+def _seen(got: Unfolded) -> float:
+    """Return the least change of cos φ that stands out of the noise."""
+    return max(_SEEN * got.cosine_u, _LEAST_SHORT)
+
+
+def _unseen(got: Unfolded, start: int, stop: int, spots: NDArray[np.int64]) -> float:
+    """Return what turns that were taken for going over an extreme may have done to a pass.
+
+    A turn that far before or beyond an extreme changes the fringes by twice its distance, U by as much.
+    """
+    # a dip or a shortfall that the noise, or the time between two samples, hides
+    step = float(np.max(_steps(got)[start : stop + 1]))
+    always = (math.acos(max(1.0 - _seen(got), -1.0)) + 0.5 * step) / (2.0 * math.pi)
+    each = [(spots, np.full(len(spots), _HIDDEN)), _low_tops(got), _dips(got)]
+    slow, low, dip = (math.fsum(sizes[(at > start) & (at < stop)]) for at, sizes in each)
+    return max(min(always, _HIDDEN), slow, low + dip)
+
+
 def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass]:
     """Cut the phase where the mirror turned.
 
@@ -146,14 +178,12 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
         hidden = max(hidden, _HIDDEN)
     u[1:-1] = np.hypot(u[1:-1], np.maximum(hidden, 0.5 * _steps(got)[turns] / (2.0 * math.pi)))
     spots = slow_spots(got.turns, len(phase))
-    low_tops, each = _low_tops(got)
     out = []
     for k in range(len(ends) - 1):
         start, stop = int(ends[k]), int(ends[k + 1])
-        unseen = 0.0
-        if drive is None:
-            unseen = _HIDDEN * np.count_nonzero((spots > start) & (spots < stop))
-            unseen += math.fsum(each[(low_tops > start) & (low_tops < stop)])
+        pass_u = math.hypot(u[k], u[k + 1])
+        if drive is None:  # what hides next to an extreme hides at both ends alike
+            pass_u = float(u[k] + u[k + 1]) + _unseen(got, start, stop, spots)
         way = float(phase[stop] - phase[start])
         direction = 0 if drive is None else int(np.sign(way))
         out.append(
@@ -161,7 +191,7 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
                 start + first,
                 stop + first,
                 abs(way) / (2.0 * math.pi),
-                math.hypot(u[k], u[k + 1]) + unseen,
+                pass_u,
                 direction,
                 _fastest_of(got, start, stop),
             )

@@ -144,6 +144,31 @@ def test_a_turn_among_coarse_samples_is_named_without_a_drive():
     assert steady.fringes == pytest.approx(3200.6, abs=2 * steady.fringes_u)
 
 
+@pytest.mark.parametrize("start", [0.8, 0.05, -0.1, 2.9, 3.2])
+@pytest.mark.parametrize("count", [2000, 20_000])
+def test_a_turn_next_to_an_extreme_is_covered_without_a_drive(start, count):
+    rng = np.random.default_rng(1)
+    there = 1 - np.abs(np.linspace(-1, 1, count))
+    for end in (-0.65, -0.3, -0.1, 0.0, 0.05, 0.2, 0.5, 0.65, 0.8, 1.2):
+        way = 6 * np.pi + end - start
+        record = 2 + 1.9 * np.cos(start + way * there) + 3e-3 * rng.normal(size=count)
+        got = count_fringes(record, 1000.0)
+        assert abs(got.fringes - way / np.pi) < 2 * got.fringes_u, (end, got.fringes, got.fringes_u)
+
+
+def test_the_net_count_of_driven_triangles_has_a_u_as_wide_as_its_errors():
+    pulls = []
+    for seed in range(60):
+        rng = np.random.default_rng(seed)
+        drive = triangle(int(rng.integers(2, 6)) + rng.uniform(0.1, 0.9))
+        phase = 2 * np.pi * rng.uniform(4, 30) * drive + rng.uniform(0, 2 * np.pi)
+        record = 2 + 1.9 * np.cos(phase) + 0.04 * rng.normal(size=COUNT)
+        got = count_fringes(record, 1000.0, drive)
+        pulls.append((got.net_fringes - (phase[-1] - phase[0]) / (2 * np.pi)) / got.net_u)
+    assert 0.7 < np.sqrt(np.mean(np.square(pulls))) < 1.3, pulls
+    assert np.max(np.abs(pulls)) < 4.0
+
+
 def test_method_1_of_iso_16063_11():
     # s = (λ/8)·R_f: the tabulated metres per unit of R_f, and the same from a sine
     per_unit = records("bessel")["iso.m1"]

@@ -112,7 +112,8 @@ function show(buffer) {
   showForms(said);
   document.body.classList.toggle("crowded", !said.has_plots);
   $("crowded").hidden = said.has_plots;
-  if (page.frozen || !said.has_plots) return;
+  if (page.frozen) return;
+  if (!said.has_plots) { showLines(said); return; }
   showTrace(said, arrays);
   showFringe(said, arrays);
   if ("spectrum_f" in arrays) { showSpectrum(said, arrays); showCourses(said, arrays); showLines(said); }

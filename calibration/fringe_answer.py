@@ -10,7 +10,10 @@ from calibration.found_extremes import Level
 from calibration.fringe_source import FringeSource
 from firmware_bridge.trace import Recording
 
-__all__ = ["FringeAnswer", "counted_answer", "driven_answer", "null_answer"]
+__all__ = ["FringeAnswer", "counted_answer", "driven_answer", "is_scan_without", "null_answer"]
+
+_FRINGES_MIN = 2.0  # a pass: fewer are hardly a scan
+_SEEN = 5.0  # standard uncertainties by which a line is seen
 
 
 @dataclass(frozen=True)
@@ -80,6 +83,41 @@ def driven_answer(
         bool(result.fit.displacement_amplitude),
         partial(save_driven_plot, result, trace),
     )
+
+
+def is_scan_without(source: FringeSource, recording: Recording, lines_hz: Sequence[float]) -> bool:
+    """Return whether fringes pass in a record in which no line stands out.
+
+    Parameters
+    ----------
+    source : FringeSource
+        What is known beside the record.
+    recording : Recording
+        A scan, or lines about a working point.
+    lines_hz : sequence of float
+        Lines that the bench names [Hz].
+
+    Returns
+    -------
+    bool
+        True only where the fringes are counted without a reason for distrust and no line is seen.
+    """
+    import numpy as np
+
+    from calibration.fringe_count import count_fringes
+    from calibration.lines import fit_lines_si
+
+    trace = source.trace(recording)
+    try:
+        count = count_fringes(trace.values, trace.rate_hz)
+        if count.reasons or count.fringes < _FRINGES_MIN * len(count.passes):
+            return False
+        good = np.flatnonzero(np.isfinite(count.phase_rad))
+        phase = np.interp(np.arange(len(count.phase_rad)), good, count.phase_rad[good])
+        fit = fit_lines_si(phase, trace.rate_hz, lines_hz, search_clock=False)
+    except CalibrationError:
+        return False
+    return all(line.snr_value < _SEEN for line in fit.lines)
 
 
 def counted_answer(source: FringeSource, recording: Recording) -> FringeAnswer:

@@ -113,10 +113,21 @@ def fringe(
         from metro.figure_file import check_figure
 
         check_figure(plot, overwrite, [*inputs, out])
-    lines = [] if count else list(lines_hz) or [line.frequency_hz for line in bench.lines]
+    of_bench = [] if lines_hz or count else [line.frequency_hz for line in bench.lines]
+    lines = list(lines_hz) or of_bench
     ways = {"--count": count, "--quadrature": quadrature, "--null": null, "--pilot": pilot_hz}
     _check(files, lines_hz, ways, extremes_file, levels)
     recordings = [reading.open(file) for file in files]
+    remarks = []
+    if of_bench and not any(ways.values()):
+        from calibration.fringe_answer import is_scan_without
+
+        probe = FringeSource(reading, bench, levels, extremes_file, dark, monitor, antiphase)
+        if is_scan_without(probe, recordings[0], lines):
+            lines = []
+            remarks = [
+                "the bench's lines are not seen and fringes pass: fringes are counted; --line fits lines"
+            ]
     if null or not (lines or quadrature or pilot_hz):  # these look at the drive
         reading = reading.with_drive(recordings[0], bench.text("drive.channel"))
     source = FringeSource(reading, bench, levels, extremes_file, dark, monitor, antiphase)
@@ -127,10 +138,15 @@ def fringe(
         write_whole(out, to_json(answer.document) + "\n", overwrite=overwrite)
     if plot is not None and answer.draw is not None:
         answer.draw(plot, overwrite=overwrite)
-    click.echo(to_json(answer.document) if as_json else answer.text(_remarks(answer, bench)))
+    click.echo(
+        to_json(answer.document) if as_json else answer.text([*remarks, *_remarks(answer, bench)])
+    )
     for one in recordings:
         reading.tell(one)
     if answer.reasons:
+        if of_bench and lines and not any(ways.values()):
+            hint = "the lines are the bench's: a scan, ramp or motor run is counted with --count"
+            distrust([*answer.reasons, hint])
         distrust(answer.reasons)
 
 

@@ -378,3 +378,21 @@ def test_ways_that_do_not_go_together(capsys, swept, arguments, words):
 def test_several_files_are_for_nulls_only(capsys, swept):
     code, _, err = run(capsys, swept, swept)
     assert (code, "for --null only, got 2 files" in err) == (2, True)
+
+
+def lined_bench(tmp_path):
+    """Return a bench that names a line, as most do."""
+    path = tmp_path / "bench.toml"
+    path.write_text('[[line]]\nfrequency = "31.7 Hz"\ndrive = "160 mV"\n')
+    return path
+
+
+def test_a_scan_is_counted_although_the_bench_names_lines(capsys, swept, driven, tmp_path):
+    bench = lined_bench(tmp_path)
+    code, out, _ = run(capsys, swept, "--channel", "light", "--drive", "ramp", "--bench", bench)
+    assert code == 0
+    assert "the bench's lines are not seen and fringes pass: fringes are counted" in out
+    code, out, err = run(capsys, driven, "--channel", "photodiode", "--bench", bench)
+    assert code == 1
+    assert "phase amplitude" in out
+    assert "a scan, ramp or motor run is counted with --count" in err

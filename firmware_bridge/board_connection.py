@@ -85,6 +85,8 @@ class BoardConnection:
             intake.is_known, bool(intake.files), self._is_patient, every_s
         )
         if complaint and not self._watch.maybe_silent(complaint):
+            if self._is_patient and self._silence.waits_for_a_first_line():
+                return
             self._hearing.finish()
             raise DeviceFailedError(f"{complaint}; {_kept(intake)}")
 

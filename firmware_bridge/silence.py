@@ -92,7 +92,7 @@ class Silence:
         """
         silent_s = time.monotonic() - self._heard_s
         if self._is_text:
-            return self._maybe_no_lines(silent_s, is_patient)
+            return self._maybe_no_lines(silent_s)
         idle_s = time.monotonic() - self._sampled_s
         if not is_recording and silent_s > _SILENCE_S + every_s:
             return f"{self._name}: {self._why_nothing(is_announced)}"
@@ -105,15 +105,27 @@ class Silence:
             return f"{self._name} sent no valid frame for {stall_s:g} s{came}"
         return ""
 
-    def _maybe_no_lines(self, silent_s: float, is_patient: bool) -> str:  # private
+    def waits_for_a_first_line(self) -> bool:
+        """Tell, once in the log, that nothing has come of a board that prints lines.
+
+        Returns
+        -------
+        bool
+            False where something has come: what is wrong then does not pass by waiting.
+        """
+        if not self._is_text or self._is_heard or self._bytes:
+            return False
+        if not self._is_told:
+            self._is_told = True
+            _LOG.warning("%s sent nothing for %g s; waiting for a line", self._name, _SILENCE_S)
+        return True
+
+    def _maybe_no_lines(self, silent_s: float) -> str:
         if not self._is_heard and not self._bytes and silent_s > _SILENCE_S:
-            nothing = f"{self._name} sent nothing for {_SILENCE_S:g} s"
-            if not is_patient:
-                return f"{nothing} (is it the right port? --reconnect waits for a first line)"
-            if not self._is_told:
-                self._is_told = True
-                _LOG.warning("%s; waiting for a first line", nothing)
-            return ""
+            return (
+                f"{self._name} sent nothing for {_SILENCE_S:g} s (is it the right port? --reconnect "
+                "waits for a first line)"
+            )
         if self._bytes and silent_s > _SILENCE_S and not self._is_heard:
             frames = ", or does it send frames, without --text" if self._zeros else ""
             return (

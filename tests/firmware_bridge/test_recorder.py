@@ -278,7 +278,7 @@ def test_waiting_for_a_first_line_is_said_once(pty, tmp_path, monkeypatch, caplo
     stop = threading.Event()
     threading.Timer(0.9, stop.set).start()
     record(pty.port, tmp_path / "a.mfr", text=True, rate_hz=50.0, reconnect=True, stop=stop)
-    waiting = f"{pty.port} sent nothing for 0.2 s; waiting for a first line"
+    waiting = f"{pty.port} sent nothing for 0.2 s; waiting for a line"
     assert [entry.message for entry in caplog.records].count(waiting) == 1
 
 

@@ -14,7 +14,6 @@ from calibration.open_loop import OpenLoop
 from calibration.readout import Readout
 from calibration.slope_line import CombinedLine
 from calibration.term import (
-    FRINGE_EXTREMES,
     LINE_FIT,
     PICKUP_ASSUMED,
     PICKUP_MEASURED,
@@ -144,9 +143,7 @@ def _extremes_terms(line: CombinedLine, extremes: Extremes) -> list[Term]:
     """Return what an error of the extremes does to a line read between them."""
     swing = line.means.inverse_sin2 / extremes.swing_v
     mid = line.means.cos_over_sin2 / extremes.swing_v
-    u = extremes.u_of(swing, mid)
-    kind = "A" if extremes.scans else "B"
-    return [Term(FRINGE_EXTREMES, None, "1", u, relative=1.0, kind=kind, dof=extremes.dof)]
+    return [extremes.term(extremes.u_of(swing, mid))]
 
 
 def _drift_term(line: CombinedLine, extremes: Extremes, dark_v: float, drift: Term) -> Term:

@@ -32,6 +32,7 @@ from calibration.session import Session
 from calibration.session_checks import (
     cautions_of,
     failed,
+    line_reasons,
     reasons_of,
     repeat_checks,
     role_reasons,
@@ -239,7 +240,7 @@ class _Analysis(SessionFits):
         return Calibration(
             created=datetime.now(UTC).isoformat(timespec="seconds"),
             software=__version__,
-            actuator=sign_reasons(self.bench, self.actuator),
+            actuator=sign_reasons(self.bench, line_reasons(self.actuator, fits)),
             readout_slope=slope,
             readout_budget=budget,
             extremes=self.extremes,

@@ -2,7 +2,7 @@
 
 from calibration import curvature
 from calibration.extremes import Extremes
-from calibration.term import FRINGE_EXTREMES, Term, budget_of
+from calibration.term import Term, budget_of
 from metro.bench import Bench
 from metro.budget import Budget
 from metro.measured import Measured
@@ -39,7 +39,7 @@ def contrast_budget(bench: Bench, extremes: Extremes, dark: Measured) -> tuple[f
     u = extremes.u_of(1.0 / extremes.swing_v, -1.0 / level_v)
     u_dark = float(dark.u_magnitude or 0.0)
     terms = [
-        Term(FRINGE_EXTREMES, None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
+        extremes.term(u),
         Term("dark level", dark_v, "V", u_dark, relative=1.0 / level_v, kind="A", dof=dark.dof),
         *curvature.contrast_terms(bench, extremes, dark_v),
     ]

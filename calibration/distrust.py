@@ -13,10 +13,10 @@ from numpy.typing import NDArray
 from calibration.line_noise import UNSTEADY
 from calibration.line_result import FittedChannel
 from calibration.survey import MAINS_ORDERS, Survey
+from metro.kernel.noise import LEAST_SNR
 
-__all__ = ["LEAST_SNR", "TOO_WEAK", "Doubts", "fringe_top_reason", "is_clipped"]
+__all__ = ["TOO_WEAK", "Doubts", "fringe_top_reason", "is_clipped"]
 
-LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
 _LEAST_CYCLES = 4.0
 _CROWDED = 1.5  # bins of 1/T: nearer, two lines share their amplitude as they please
 _MAINS_WANDER = 1e-3  # of the mains frequency; grids stay within 0.05 Hz in 50 Hz nearly always

@@ -9,8 +9,11 @@ from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
 from calibration.scan import ScanFit
+from calibration.term import FRINGE_EXTREMES, Term
 
 __all__ = ["Extremes"]
+
+_UNSTATED = f"{FRINGE_EXTREMES} (not measured: as given, u not stated)"
 
 FloatArray = NDArray[np.float64]
 
@@ -71,3 +74,20 @@ class Extremes:
         """Return the standard uncertainty of a·swing + b·mid."""
         weights = np.array([mid_weight - swing_weight, mid_weight + swing_weight]) / 2
         return sqrt(max(0.0, float(weights @ self.covariance @ weights)))
+
+    def term(self, u: float) -> Term:
+        """Return the budget's entry of the extremes, which says where nothing is known of their u.
+
+        Parameters
+        ----------
+        u : float
+            Relative standard uncertainty of a coefficient by them.
+
+        Returns
+        -------
+        Term
+            From statistics where scans gave them.
+        """
+        name = FRINGE_EXTREMES if self.scans or self.covariance.any() else _UNSTATED
+        kind = "A" if self.scans else "B"
+        return Term(name, None, "1", u, relative=1.0, kind=kind, dof=self.dof)

@@ -5,7 +5,7 @@ from math import sqrt
 from calibration import curvature
 from calibration.extremes import Extremes
 from calibration.readout import Readout
-from calibration.term import FRINGE_EXTREMES, Term, budget_of
+from calibration.term import Term, budget_of
 from metro.budget import Budget
 from metro.measured import Measured
 
@@ -35,7 +35,7 @@ def readout_slope(readout: Readout, extremes: Extremes, drift: Term) -> tuple[Me
     u = extremes.u_of(1.0, 0.0) / extremes.swing_v
     terms = [
         *readout.ruler_terms(-1.0),
-        Term(FRINGE_EXTREMES, None, "1", u, relative=1.0, kind="A", dof=extremes.dof),
+        extremes.term(u),
         drift.with_relative(share),
         *readout.reference_term(-1.0),
         *curvature.swing_terms(readout.bench, extremes),

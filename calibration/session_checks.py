@@ -28,6 +28,7 @@ from metro.measured import Measured
 __all__ = [
     "cautions_of",
     "failed",
+    "line_reasons",
     "reasons_of",
     "repeat_checks",
     "role_reasons",
@@ -102,6 +103,7 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
         cautions.append("photodiode.bandwidth not stated: the amplifier is taken as fast enough")
     if not bench.u("laser.wavelength"):
         cautions.append("laser.wavelength has no u: the wavelength counts as exactly known")
+    cautions += _given_extremes(bench, session)
     if "assumed" in drift.name:
         cautions.append("one scan only and no fringe.drift: the power's drift is an assumption")
     cautions += bench_cautions(bench)
@@ -116,21 +118,59 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
     return [*cautions, *contradiction_cautions(bench, records), *remark_cautions(records)]
 
 
+def _given_extremes(bench: Bench, session: Session) -> list[str]:
+    if session.of("scan"):
+        return []
+    return [
+        f"extremes as given, u not stated: {key} counts as exactly known; state its u in the bench "
+        "file, as { value = …, u = … }, or record a scan"
+        for key in ("fringe.low", "fringe.high")
+        if not bench.u(key)
+    ]
+
+
 def reasons_of(
     scans: Sequence[ScanFit], fits: Sequence[tuple[str, PhaseRecord, LineFit]]
 ) -> list[str]:
-    """Return why the calibration must not be trusted, one line each."""
+    """Return why the calibration as a whole must not be trusted, one line each."""
     reasons = [f"scan: {reason}" for scan in scans for reason in scan.reasons]
-    for path, phase, fit in fits:
-        name = Path(path).name
-        reasons += [f"{name}: {reason}" for reason in phase.distrust_reasons]
-        for line in fit.lines:
-            if is_driven(line):  # else nothing was to be found there
-                where = f"{name}: line at {line.frequency_hz:g} Hz"
-                reasons += [f"{where}: {reason}" for reason in line.distrust_reasons]
-                if not is_noise_known(line):
-                    reasons.append(f"{where}: the noise beside it could not be told")
+    for path, phase, _ in fits:
+        reasons += [f"{Path(path).name}: {reason}" for reason in phase.distrust_reasons]
     return list(dict.fromkeys(reasons))
+
+
+def line_reasons(
+    entries: Sequence[ActuatorEntry], fits: Sequence[tuple[str, PhaseRecord, LineFit]]
+) -> list[ActuatorEntry]:
+    """Return the entries with what the fits of the recordings say against their line.
+
+    Parameters
+    ----------
+    entries : sequence of ActuatorEntry
+        In the order of the lines.
+    fits : sequence of (str, PhaseRecord, LineFit)
+        Each lines recording: its path and its fit, lines in the same order.
+
+    Returns
+    -------
+    list of ActuatorEntry
+        Reasons name their recording.
+    """
+    return [
+        replace(entry, reasons=[*entry.reasons, *_said_of_line(fits, number)])
+        for number, entry in enumerate(entries)
+    ]
+
+
+def _said_of_line(fits: Sequence[tuple[str, PhaseRecord, LineFit]], number: int) -> list[str]:
+    said = []
+    for path, _, fit in fits:
+        line, name = fit.lines[number], Path(path).name
+        if is_driven(line):  # else nothing was to be found there
+            said += [f"{name}: {reason}" for reason in line.distrust_reasons]
+            if not is_noise_known(line):
+                said.append(f"{name}: the noise beside it could not be told")
+    return list(dict.fromkeys(said))
 
 
 def role_reasons(

@@ -2,8 +2,9 @@
 
 Each line's u is that of metres per volt, measured once on each slope of the fringe for the time T:
 u² = floor² + S/(2T)/A², with the noise density S beside the line and the amplitude A. All lines are
-given the same statistical share, so that A grows as √S; the amplitudes go up together until the
-linear range, the drive limit or the converter's range ends them, and the time follows.
+given the same statistical share, so that A grows as √S, but never less than a fit needs to see it;
+the amplitudes go up together until the linear range, the drive limit or the converter's range ends
+them, and the time follows.
 """
 
 from __future__ import annotations
@@ -20,6 +21,7 @@ from metro.chain import Chain
 from metro.collisions import MAINS_WANDER
 from metro.depths import Limit, largest_scale
 from metro.floor import Floor, floor_of, is_drive_read
+from metro.kernel.noise import LEAST_SNR
 from metro.motion import LineNoise, line_noise
 from metro.planned_line import PlanError
 
@@ -32,6 +34,7 @@ LEAST_S = 10.0  # scans and handling take as long: shorter recordings save nothi
 LEAST_CYCLES = 100.0
 MAINS_APART_HZ = 0.1  # no time is spent on a line nearer to what the mains sweeps
 LEAST_APART = 10.0  # reciprocal durations between neighbours, for the noise beside each to be seen
+PLANNED_SNR = 2.0 * LEAST_SNR  # the gain is known roughly, and some recordings are shorter
 ROUNDING = 1.01  # the most that three digits add to a drive
 
 
@@ -148,7 +151,7 @@ class Setting:
         """Amplitudes that would do in one second [m]."""
         return [
             math.hypot(noise.total, noise.drive)
-            / math.sqrt(2.0 * (self.wanted_u**2 - floor.relative_u**2))
+            * max(PLANNED_SNR, (2.0 * (self.wanted_u**2 - floor.relative_u**2)) ** -0.5)
             for noise, floor in zip(self.noises, self.floors, strict=True)
         ]
 

@@ -23,9 +23,11 @@ __all__ = [
     "noise_cautions",
     "safety_cautions",
     "unstated_cautions",
+    "wish_cautions",
 ]
 
 _VISIBLE_M = (400e-9, 700e-9)
+LARGE_WISH = 0.05  # a calibration is seldom wanted so coarse
 RESONANT = 3.0  # response, or its reciprocal, from which the drive cannot be foretold
 
 
@@ -190,6 +192,29 @@ def unstated_cautions(keys: Sequence[str]) -> list[str]:
             " recordings"
         )
     return cautions
+
+
+def wish_cautions(wanted_u: float) -> list[str]:
+    """Return the caution about an uncertainty so large that a per cent sign was likely forgotten.
+
+    Parameters
+    ----------
+    wanted_u : float
+        Relative standard uncertainty asked for.
+
+    Returns
+    -------
+    list of str
+        One line at most.
+    """
+    if wanted_u <= LARGE_WISH:
+        return []
+    return [
+        (
+            f"an uncertainty of {wanted_u:g} is {100 * wanted_u:g} %: did you mean {wanted_u:g}%? The"
+            " drives are no smaller than a fit needs to see the lines"
+        )
+    ]
 
 
 def fringe_checks(

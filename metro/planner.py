@@ -12,7 +12,7 @@ from metro.collisions import collisions
 from metro.depths import LINEAR_LOSS, compressions, harmonics
 from metro.drive_setting import Setting
 from metro.intermodulation import products
-from metro.kernel.noise import signal_to_noise
+from metro.kernel.noise import LEAST_SNR, signal_to_noise
 from metro.plan import Plan, PlanError, PlannedLine, PlannedProduct
 from metro.plan_cautions import (
     RESONANT,
@@ -21,6 +21,7 @@ from metro.plan_cautions import (
     noise_cautions,
     safety_cautions,
     unstated_cautions,
+    wish_cautions,
 )
 
 if TYPE_CHECKING:
@@ -135,7 +136,7 @@ class _Planner:
             second_harmonic=overtones[0],
             third_harmonic=overtones[1],
             budget=budget,
-            reasons=[*self._collisions[place], *self._line_reasons(frequency, expected)],
+            reasons=[*self._collisions[place], *self._line_reasons(frequency, expected, snr)],
         )
 
     def _fit_terms(self, amplitude_m: float, noise: LineNoise) -> list[Contribution]:
@@ -160,8 +161,13 @@ class _Planner:
             offset_rad=OFFSET_RAD,
         )
 
-    def _line_reasons(self, frequency_hz: float, expected_u: float) -> list[str]:
+    def _line_reasons(self, frequency_hz: float, expected_u: float, snr: float) -> list[str]:
         reasons = []
+        if snr < LEAST_SNR:
+            reasons.append(
+                f"{self.set.duration_s:g} s are too short: signal to noise {snr:.2g}, {LEAST_SNR:g} is"
+                f" needed, as {self.set.limit.reason}"
+            )
         if expected_u > 1.02 * self.set.wanted_u:  # more than the rounding of the drive
             reasons.append(
                 f"{self.set.duration_s:g} s are too short: u is {100 * expected_u:.3g} %, as"
@@ -189,6 +195,7 @@ class _Planner:
     def _cautions(self) -> list[str]:
         unstated = dict.fromkeys(key for floor in self.set.floors for key in floor.unstated)
         cautions = [
+            *wish_cautions(self.set.wanted_u),
             *noise_cautions(self.set.bench, self.set.noises, self.set.frequencies_hz),
             *unstated_cautions(list(unstated)),
             *actuator_cautions(self.set.actuator, self.set.bench, self.set.frequencies_hz),

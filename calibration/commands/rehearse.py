@@ -9,7 +9,7 @@ import click
 
 from metro.bench import Bench
 from metro.extras import require
-from metro.options import bench_options, command, is_quiet, output_options
+from metro.options import bench_options, command, distrust, is_quiet, output_options
 from metro.output import table, to_json
 
 if TYPE_CHECKING:
@@ -96,6 +96,8 @@ def rehearse(
         result = play(played, seed, folder, lines_s=lines_s, progress=step)
     document = comparison_document(result) | {"files": leave(result, folder, text)}
     click.echo(to_json(document) if as_json else _text(result, folder))
+    if not result.calibration.is_trustworthy:
+        distrust(result.calibration.all_reasons)
 
 
 def _chosen(names: tuple[str, ...]) -> "list[TrialBench]":

@@ -11,6 +11,7 @@ from math import sqrt
 from .constants import BOLTZMANN_J_K, ELEMENTARY_CHARGE_C
 
 __all__ = [
+    "LEAST_SNR",
     "averaging_time_s",
     "effective_noise_v",
     "johnson_current",
@@ -21,6 +22,8 @@ __all__ = [
     "shot_current",
     "signal_to_noise",
 ]
+
+LEAST_SNR = 5.0  # below, a line cannot be told from the largest of a hundred noise bins
 
 
 def shot_current(current_a: float) -> float:

@@ -2,6 +2,7 @@
 
 import json
 import shutil
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -11,9 +12,11 @@ from calibration.analysis import calibrate
 from calibration.bench_contradictions import step_contradiction
 from calibration.emit.known_fringe import fringe_of_calibration
 from calibration.errors import CalibrationError
+from calibration.summary import calibration_text
 from firmware_bridge.recording import NO_END
 from metro.bench import Bench
 from metro.commandline import run
+from metro.measured import Measured
 
 KEPT = {"05-scan", "06-lines-rising", "07-lines-falling"}
 CUT = 0.6  # of the file
@@ -121,3 +124,33 @@ def test_calibrate_says_so_and_ends_with_1(session, tmp_path, capsys):
     assert run(["emit", "c", "--calibration", str(out), "--out", str(header)]) == 2
     assert not header.exists()
     assert "must be the one that recorded" in capsys.readouterr().err
+
+
+def test_given_extremes_without_u_are_said_to_count_as_exact(session):
+    lines = {name: files for name, files in session.items() if name != "scan"}
+    given = built_in_bench().override({"low": "0.1 V", "high": "3.9 V"})
+    made = calibrate(given, **lines)
+    said = [text for text in made.cautions if text.startswith("extremes as given, u not stated")]
+    assert [text.split(": ")[1].split()[0] for text in said] == ["fringe.low", "fringe.high"]
+    name = "fringe extremes (not measured: as given, u not stated)"
+    for budget in (made.readout_budget, *(entry.budget for entry in made.actuator)):
+        assert name in [row.name for row in budget.contributions]
+    known = {key: Measured.of(v, "V", 1e-3) for key, v in (("low", 0.1), ("high", 3.9))}
+    stated = calibrate(given.replace({f"fringe.{k}": v for k, v in known.items()}), **lines)
+    assert not any("u not stated" in text for text in stated.cautions)
+    assert name not in [row.name for row in stated.readout_budget.contributions]
+
+
+def test_a_weak_line_is_distrusted_in_its_own_row(tmp_path):
+    """A line of 33 pm in 40 pm/√Hz for 6 s, signal to noise 2: its row says so, the others do not."""
+    bench = built_in_bench()
+    lines = (replace(bench.lines[0], drive_v=1e-3), *bench.lines[1:])
+    bench = replace(bench, lines=lines)
+    _, files = play(bench, 6, tmp_path, lines_s=6.0, keep=lambda step: step.name in KEPT)
+    made = calibrate(bench, **files)
+    weak, *others = made.actuator
+    assert any(text.startswith("06-lines-rising.mfr: too weak") for text in weak.reasons)
+    assert not any(entry.reasons for entry in others)
+    row, *other_rows = calibration_text(made).splitlines()[1:5]
+    assert "too weak" in row
+    assert all("no reason for distrust found" in other for other in other_rows)

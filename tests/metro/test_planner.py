@@ -9,6 +9,7 @@ import pytest
 from metro.bench import Bench, BenchError, load_bench
 from metro.depths import compressions
 from metro.errors import MetroError
+from metro.kernel.noise import LEAST_SNR
 from metro.plan import PlanError, load_plan
 from metro.planner import make_plan
 
@@ -59,6 +60,28 @@ def test_within_the_linear_range():
     gentle = make_plan(BENCH, 0.0022, loss=0.001)
     assert max(line.compression for line in gentle.lines) <= 0.001
     assert gentle.duration_s == pytest.approx(10 * plan.duration_s, rel=0.1)
+
+
+def test_a_forgotten_per_cent_sign_is_asked_about_and_every_line_is_seen():
+    """0.3 is 30 %: by u alone √(1/2)/0.3 = 2.4 of signal to noise would do, where a fit needs 5."""
+    plan = make_plan(BENCH, 0.3)
+    assert plan.cautions[0].startswith("an uncertainty of 0.3 is 30 %: did you mean 0.3%?")
+    assert plan.all_reasons == []
+    for line in plan.lines:
+        # twice what a fit needs, less the two digits of the drive's rounding
+        assert 2 * LEAST_SNR * 0.99 <= line.snr < 2.5 * LEAST_SNR
+        assert line.expected_u < 0.3
+    assert not any("did you mean" in text for text in make_plan(BENCH, 0.05).cautions)
+
+
+def test_a_line_that_no_fit_would_see_is_a_reason():
+    """A drive limit so low that the time asked for leaves less signal to noise than 5."""
+    bench = BENCH.override({"actuator.drive_limit": "0.2 mV"})
+    plan = make_plan(bench, 0.9, duration_s=10.0)
+    weak = [line for line in plan.lines if line.snr < LEAST_SNR]
+    assert weak
+    for line in weak:
+        assert any(f"signal to noise {line.snr:.2g}, 5 is needed" in text for text in line.reasons)
 
 
 def test_a_modest_wish_takes_the_least_time_and_less_drive():

@@ -65,6 +65,7 @@ def calibrate(
     repeat: Sequence[Calibration] = (),
     open_loop: OpenLoop | None = None,
     compare: bool = False,
+    kept_in: str | PathLike[str] | None = None,
 ) -> Calibration:
     """Return the calibration of a session.
 
@@ -90,6 +91,8 @@ def calibrate(
         Of a servo that held the mirror, with the drive read before the point where it acts.
     compare : bool
         Whether the driven fringe is fitted beside the slope, which takes seconds.
+    kept_in : path, optional
+        Folder of the calibration's file, from which it then keeps the recordings' paths.
 
     Returns
     -------
@@ -115,7 +118,12 @@ def calibrate(
         "series": series,
     }
     analysis = _Analysis(
-        bench, Session(files, bench), repeats=repeat, loop=open_loop, compares=compare
+        bench,
+        Session(files, bench),
+        repeats=repeat,
+        loop=open_loop,
+        compares=compare,
+        kept_in=kept_in,
     )
     return analysis.calibration()
 
@@ -131,10 +139,11 @@ class _Analysis(SessionFits):
         repeats: Sequence[Calibration] = (),
         loop: OpenLoop | None = None,
         compares: bool = False,
+        kept_in: str | PathLike[str] | None = None,
     ) -> None:
         super().__init__(bench, session)
         self.repeats, self.loop, self.compares = repeats, loop, compares
-        self.readout = Readout(bench)
+        self.readout, self.kept_in = Readout(bench), kept_in
 
     @cached_property
     def routes(self) -> list[RouteCheck] | None:
@@ -249,7 +258,7 @@ class _Analysis(SessionFits):
             clock_offset=self.clock_offset(),
             chain=chain_values(self.bench),
             conditions=conditions(self.bench),
-            recordings=[record.to_dict() for record in self.session],
+            recordings=[record.to_dict(self.kept_in) for record in self.session],
             checks=checks,
             assumptions=assumptions(self.bench, self.repeats, self.loop, series=bool(found)),
             cautions=self._cautions(),

@@ -16,6 +16,7 @@ from calibration.extremes import Extremes
 from calibration.response import ActuatorResponse
 from calibration.schema import misfit
 from metro.budget import Budget
+from metro.display import show
 from metro.errors import MidfringeError
 from metro.extras import MissingExtraError
 from metro.measured import Measured
@@ -123,7 +124,12 @@ class Calibration(NotebookPage):
     def notebook_tables(self) -> list[tuple[Sequence[str], Iterable[Sequence[Any]]]]:
         """Return the actuator's lines and the readout."""
         lines = [
-            (entry.frequency, entry.magnitude, entry.phase, "; ".join(entry.reasons))
+            (
+                show(float(entry.frequency.magnitude), "Hz", 6),
+                entry.magnitude,
+                entry.phase,
+                "; ".join(entry.reasons),
+            )
             for entry in self.actuator
         ]
         readout = [

@@ -4,6 +4,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property
 from os import PathLike
+from os.path import relpath
 from pathlib import Path
 
 import numpy as np
@@ -56,8 +57,19 @@ class RoleRecord:
         """The SHA-256 of the file."""
         return sha256_of(self.path)
 
-    def to_dict(self) -> dict[str, object]:
-        """Return what a calibration keeps of its recording: role, file, SHA-256, counts, step."""
+    def path_from(self, folder: str | PathLike[str]) -> str | None:
+        """Return the file's path from a folder, with slashes; None from another drive."""
+        try:
+            return Path(relpath(self.path, folder)).as_posix()
+        except ValueError:  # Windows, another drive
+            return None
+
+    def to_dict(self, folder: str | PathLike[str] | None = None) -> dict[str, object]:
+        """Return what a calibration keeps of its recording: role, file, SHA-256, counts, step.
+
+        The path from the calibration's own folder too, where that is known.
+        """
+        path = None if folder is None else self.path_from(folder)
         step = None if self.step_v is None else Measured.of(self.step_v, "V").to_dict()
         return {
             "role": self.role,
@@ -69,6 +81,7 @@ class RoleRecord:
             "missing": self.photodiode.missing,
             "over_range": self.photodiode.over_range,
             "step": step,
+            **({} if path is None else {"path": path}),
         }
 
 

@@ -34,7 +34,7 @@ LEAST_S = 10.0  # scans and handling take as long: shorter recordings save nothi
 LEAST_CYCLES = 100.0
 MAINS_APART_HZ = 0.1  # no time is spent on a line nearer to what the mains sweeps
 LEAST_APART = 10.0  # reciprocal durations between neighbours, for the noise beside each to be seen
-PLANNED_SNR = 2.0 * LEAST_SNR  # the gain is known roughly, and some recordings are shorter
+PLANNED_SNR = 3.0 * LEAST_SNR  # the gain is known roughly, and some recordings are shorter
 ROUNDING = 1.01  # the most that three digits add to a drive
 
 

@@ -1,5 +1,6 @@
 """``midfringe calibrate``: a session's recordings and the bench file to a calibration."""
 
+from pathlib import Path
 from typing import Any
 
 import click
@@ -94,6 +95,7 @@ def calibrate(
         repeat=[load(path) for path in repeat_files],
         open_loop=None if open_loop_file is None else load_open_loop(open_loop_file),
         compare=compare,
+        kept_in=None if out is None else Path(out).parent,
     )
     document = to_json(result.to_dict())
     if plot is not None:

@@ -19,7 +19,7 @@ __all__ = ["report"]
     "--recordings",
     "folder",
     metavar="FOLDER",
-    help="Where its recordings lie; the calibration's own folder if not given.",
+    help="Where its recordings lie; where the calibration says, from its own folder, if not given.",
 )
 @click.option("--bench", "bench_file", metavar="FILE", help="For the noise that is expected.")
 @click.option("--title", metavar="TEXT", default="", help="Heading of the page.")
@@ -47,7 +47,8 @@ def report(
     check_writable(out, overwrite, [calibration_file, bench_file])
     bench = None if bench_file is None else load_bench(bench_file)
     calibration = load(calibration_file)
-    evidence = find_evidence(calibration, folder or Path(calibration_file).parent)
+    beside = Path(calibration_file).parent
+    evidence = find_evidence(calibration, folder or beside, follow=folder is None)
     write_whole(out, report_page(calibration, evidence, title, bench), overwrite=overwrite)
     lost = [
         f"{item.role}: {item.file} is {item.state}" for item in evidence if not item.is_unchanged

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from pathlib import Path
+from pathlib import Path, PurePosixPath, PureWindowsPath
 from typing import TYPE_CHECKING
 
 from calibration.errors import CalibrationError
@@ -46,7 +46,9 @@ class Evidence:
         return self.state == "unchanged"
 
 
-def find_evidence(calibration: Calibration, folder: str | Path) -> list[Evidence]:
+def find_evidence(
+    calibration: Calibration, folder: str | Path, *, follow: bool = False
+) -> list[Evidence]:
     """Return the recordings of a calibration as they are found now.
 
     Parameters
@@ -55,6 +57,9 @@ def find_evidence(calibration: Calibration, folder: str | Path) -> list[Evidence
         What names them.
     folder : str or Path
         Where to look, by the name that the calibration kept.
+    follow : bool
+        Whether to look where the calibration says, too: ``folder`` is then its own, from which the
+        kept paths count. Paths from the root, and those to another name, are not followed.
 
     Returns
     -------
@@ -69,12 +74,15 @@ def find_evidence(calibration: Calibration, folder: str | Path) -> list[Evidence
     folder = Path(folder)
     if not folder.is_dir():
         raise CalibrationError(f"recordings must lie in a folder, got {str(folder)!r}")
-    return [_evidence(record, folder) for record in calibration.recordings]
+    return [_evidence(record, folder, follow=follow) for record in calibration.recordings]
 
 
-def _evidence(record: dict[str, object], folder: Path) -> Evidence:
+def _evidence(record: dict[str, object], folder: Path, *, follow: bool) -> Evidence:
     # the name alone: a calibration from elsewhere must not make this program read any file it likes
     path = folder / Path(str(record["file"])).name
+    kept = str(record.get("path") or "")
+    if follow and not path.is_file() and _is_near(kept, path.name):
+        path = folder / kept
     known = str(record["sha256"])
     counts = {name: int(str(record.get(name, 0))) for name in ("samples", "missing", "over_range")}
     return Evidence(
@@ -85,6 +93,13 @@ def _evidence(record: dict[str, object], folder: Path) -> Evidence:
         state=_state(path, known),
         **counts,
     )
+
+
+def _is_near(kept: str, name: str) -> bool:
+    """Return whether a kept path is relative, on any system, and leads to the kept name."""
+    windows = PureWindowsPath(kept)
+    rooted = PurePosixPath(kept).is_absolute() or windows.drive or windows.root
+    return not rooted and "\\" not in kept and PurePosixPath(kept).name == name
 
 
 def _state(path: Path, known: str) -> str:

@@ -55,6 +55,7 @@ _CHAIN = {
     "channel_delay": "drive behind the photodiode",
     "aperture": "converter's averaging time",
     "polarity": "declared polarity of the actuator",
+    "drive_factor": "volts at the actuator per volt of the recorded drive",
     "adc_bits": "bits of the converter",
     "adc_range": "range of the converter",
 }

@@ -10,13 +10,16 @@ from sessions import BENCH_FILE, built_in_bench, play
 
 from calibration.analysis import calibrate
 from calibration.bench_contradictions import step_contradiction
+from calibration.desk.evidence import find_evidence
 from calibration.emit.known_fringe import fringe_of_calibration
 from calibration.errors import CalibrationError
+from calibration.schema import misfit
 from calibration.summary import calibration_text
 from firmware_bridge.recording import NO_END
 from metro.bench import Bench
 from metro.commandline import run
 from metro.measured import Measured
+from metro.output import to_json
 
 KEPT = {"05-scan", "06-lines-rising", "07-lines-falling"}
 CUT = 0.6  # of the file
@@ -154,3 +157,23 @@ def test_a_weak_line_is_distrusted_in_its_own_row(tmp_path):
     row, *other_rows = calibration_text(made).splitlines()[1:5]
     assert "too weak" in row
     assert all("no reason for distrust found" in other for other in other_rows)
+
+
+def test_recordings_are_found_again_from_the_calibration_s_folder(session, tmp_path):
+    own, other = tmp_path / "own", tmp_path / "other"
+    own.mkdir()
+    other.mkdir()
+    moved = {role: [shutil.copy(path, other) for path in paths] for role, paths in session.items()}
+    made = calibrate(built_in_bench(), **moved, kept_in=own)
+    assert [record["path"] for record in made.recordings] == [
+        f"../other/{name}.mfr" for name in sorted(KEPT)
+    ]
+    assert misfit(json.loads(to_json(made.to_dict()))) is None
+    assert all(item.is_unchanged for item in find_evidence(made, own, follow=True))
+    assert {item.state for item in find_evidence(made, own)} == {"not found"}
+    for path in (str(other / "05-scan.mfr"), "../other/06-lines-rising.mfr", "C:/05-scan.mfr"):
+        record = made.recordings[0] | {"path": path}  # from the root, or to another name
+        told = replace(made, recordings=[record])
+        assert find_evidence(told, own, follow=True)[0].state == "not found"
+    table = made.notebook_tables()[0][1]
+    assert next(iter(table))[0] == "31.7 Hz"

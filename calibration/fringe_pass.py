@@ -35,7 +35,7 @@ class Pass:
     fringes_u : float
         Standard uncertainty.
     direction : int
-        1 with the drive, −1 against it, 0 where unknown.
+        1 where the drive rises, −1 where it falls, 0 where unknown or against the drive.
     fastest : float
         Fringes per sample where it went fastest.
     """
@@ -186,6 +186,8 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
             pass_u = float(u[k] + u[k + 1]) + _unseen(got, start, stop, spots)
         way = float(phase[stop] - phase[start])
         direction = 0 if drive is None else int(np.sign(way))
+        if drive is not None and direction * (drive[stop] - drive[start]) < 0.0:
+            direction = 0  # the mirror went against the drive, which then does not tell
         out.append(
             Pass(
                 start + first,

@@ -261,6 +261,18 @@ def test_real_motor_scans(name, column, first, band):
     assert len(got.passes) <= 2
 
 
+def test_a_drive_that_only_rises_never_tells_down():
+    recording = open_recording(str(real_data("two-detector-motor-scan/Task_6c_7500.txt")))
+    drive, record = recording.trace("6").values, recording.trace("1").values
+    assert np.diff(drive[np.isfinite(drive)]).min() > 0
+    assert all(one.direction == 1 for one in count_fringes(record, 62.5, drive).passes)
+    time = TIME / TIME[-1]  # a mirror that goes back by two fringes while its drive rises
+    phase = 2 * np.pi * (20.3 * time - 4.0 * np.clip(4 * np.abs(time - 0.5), 0, 1))
+    for along in (phase, phase[::-1]):
+        got = count_fringes(volts(along, 3, 0.005), 1000.0, TIME)
+        assert all(one.direction != -1 for one in got.passes), got.passes
+
+
 def test_a_real_bench_held_near_mid_fringe_is_no_scan():
     # a sweep over one fringe, then a 30 Hz line under control
     path = real_data("fiber-modulator-calline/fom-pa/fom-pa-control-actuation.csv")

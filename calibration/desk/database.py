@@ -176,6 +176,8 @@ def _checked_file(place: str, *, create: bool) -> Path:
                 begin = file.read(len(_SQLITE_BEGIN))
             if begin not in {b"", _SQLITE_BEGIN}:
                 raise LedgerError(f"{place} is no ledger: it is not an SQLite file")
+            if begin:
+                _check_own(path)
         elif not create:
             raise LedgerError(f"there is no ledger {place}; 'midfringe ledger add' makes one")
         elif not path.parent.is_dir():
@@ -183,6 +185,21 @@ def _checked_file(place: str, *, create: bool) -> Path:
     except OSError as error:
         raise LedgerError(f"{place}: {(error.strerror or str(error)).lower()}") from None
     return path
+
+
+def _check_own(path: Path) -> None:
+    """Refuse someone else's SQLite file before anything, the journal's mode included, is changed."""
+    import sqlite3
+
+    try:
+        with contextlib.closing(
+            sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, timeout=_BUSY_S)
+        ) as connection:
+            held = {name for (name,) in connection.execute("SELECT name FROM sqlite_master")}
+    except sqlite3.Error as error:
+        raise LedgerError(f"the ledger {path} cannot be opened: {error}") from None
+    if held and tables().schema.name not in held:
+        raise LedgerError(f"{path} is no ledger: it is an SQLite file of another program")
 
 
 def _sqlite(path: Path) -> "Engine":

@@ -1,5 +1,6 @@
 """Unattended logging for weeks: rotating recordings, line results, alarms; it goes on by itself."""
 
+import contextlib
 import logging
 import threading
 import time
@@ -188,7 +189,8 @@ class UnattendedLog:
         return path
 
     def _ended(self, path: Path) -> None:
-        _log.info("recording %s is complete, %d bytes", path, path.stat().st_size)
+        with contextlib.suppress(FileNotFoundError):  # deleted already, to keep within the limit
+            _log.info("recording %s is complete, %d bytes", path, path.stat().st_size)
 
     def _tidy(self, *, force: bool = False) -> None:
         now_s = time.monotonic()

@@ -99,6 +99,7 @@ def convert(
         options = (quantity, slope, undo_readout, open_loop_file)
         converted = _converted(source, reading, calibration, *options)
     worth = converted.judge(reading.from_s, reading.to_s)
+    side = [] if actuator else _side(source, reading, calibration, slope)
     uncertainty = {
         "systematic": {"value": worth.relative_u, "unit": "1", "u": None},
         "random": {"value": worth.noise, "unit": worth.unit, "u": None},
@@ -119,14 +120,14 @@ def convert(
         "used_fraction": worth.used_fraction,
         "gaps": len(converted.gaps),
         "reasons": worth.reasons,
-        "cautions": worth.cautions,
+        "cautions": [*worth.cautions, *side],
     }
     if plot is not None:
         _draw(converted, reading, plot, f"u {_percent(worth.relative_u)} common", overwrite)
     click.echo(to_json(document) if as_json else _text(document))
     if not is_quiet():
         reading.tell(source)
-        for caution in worth.cautions:
+        for caution in (*worth.cautions, *side):
             click.echo(f"caution: {caution}", err=True)
     if worth.reasons:
         distrust(worth.reasons)
@@ -151,6 +152,14 @@ def _converted(
     return ConvertedRecording(
         source, reading.channel_name(source), calibration, quantity, slope, stages
     )
+
+
+def _side(
+    source: "Recording", reading: Reading, calibration: "Calibration", slope: str
+) -> list[str]:
+    from calibration.slope_side import side_cautions
+
+    return side_cautions(source, reading.channel_name(source), calibration, slope)
 
 
 def _driven(

@@ -10,8 +10,10 @@ from real_data import real_data
 from calibration.count_reading import read_count
 from calibration.errors import CalibrationError
 from calibration.fringe_count import count_fringes
+from calibration.fringe_pass import cut_passes
 from calibration.ruler import ruler_of
 from calibration.turning_points import turning_points
+from calibration.unfolding import Unfolded
 from firmware_bridge.opening import open_recording
 from firmware_bridge.trace import Trace
 
@@ -266,11 +268,16 @@ def test_a_drive_that_only_rises_never_tells_down():
     drive, record = recording.trace("6").values, recording.trace("1").values
     assert np.diff(drive[np.isfinite(drive)]).min() > 0
     assert all(one.direction == 1 for one in count_fringes(record, 62.5, drive).passes)
-    time = TIME / TIME[-1]  # a mirror that goes back by two fringes while its drive rises
-    phase = 2 * np.pi * (20.3 * time - 4.0 * np.clip(4 * np.abs(time - 0.5), 0, 1))
-    for along in (phase, phase[::-1]):
-        got = count_fringes(volts(along, 3, 0.005), 1000.0, TIME)
-        assert all(one.direction != -1 for one in got.passes), got.passes
+
+
+def test_a_pass_against_the_drive_has_no_direction():
+    phase = np.concatenate([np.linspace(9, 0, 500), np.linspace(0, 60, 3000)])
+    none = np.zeros(0, dtype=np.int64)
+    got = Unfolded(phase, none, none.astype(bool), 0.05, 0.005, 0.0, (0, 0))
+    rising = np.arange(len(phase), dtype=float)
+    assert [one.direction for one in cut_passes(got, 0, rising)] == [0, 1]
+    there_and_back = np.abs(rising - 500)[::-1].max() - np.abs(rising - 500)
+    assert [one.direction for one in cut_passes(got, 0, -there_and_back)] == [-1, 1]
 
 
 def test_a_real_bench_held_near_mid_fringe_is_no_scan():

@@ -10,6 +10,8 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
+from metro.kernel.student import t_quantile
+
 __all__ = ["law_harmonics", "law_stretches", "typical_law"]
 
 _PASSES = 3
@@ -167,4 +169,6 @@ def typical_law(
     good = good[near] if near.sum() >= 4 else good
     # neighbouring stretches share two passes of three: so many are independent
     independent = max(len(good) / _PASSES, 1.0)
-    return good.mean(axis=0), good.std(axis=0, ddof=1) / math.sqrt(independent)
+    # and few of them know their own scatter badly: as wide as Student's interval at 95 %
+    widened = t_quantile(0.95, max(independent - 1.0, 1.0)) / t_quantile(0.95, 1e6)
+    return good.mean(axis=0), widened * good.std(axis=0, ddof=1) / math.sqrt(independent)

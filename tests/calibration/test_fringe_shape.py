@@ -79,3 +79,24 @@ def test_without_a_drive_the_direction_is_unknown():
     assert [one.direction for one in got.shape.directions] == ["unknown"]
     assert got.direction.startswith("unknown")
     assert got.to_dict()["net_fringes"] is None
+
+
+def test_the_law_of_a_shaken_scan_is_a_cosine_within_its_u():
+    # eight seconds of a triangle over five fringes, shaken slowly: a dozen stretches a direction
+    count, rate_hz = 32_000, 4000.0
+    drive = 2 * np.abs((np.linspace(0, 4, count) + 1.5) % 2 - 1) - 1
+    low_pass = 1 / (1 + (np.fft.rfftfreq(count, 1 / rate_hz) / 5) ** 2)
+    for seed in range(8):
+        rng = np.random.default_rng(seed)
+        phase = 2 * np.pi * 2.37 * drive + rng.uniform(0, 2 * np.pi)
+        shaken = np.fft.irfft(np.fft.rfft(rng.normal(size=count)) * low_pass, count)
+        phase += 0.06 * shaken / shaken.std()
+        values = 2 + 1.9 * np.cos(phase) + 0.003 * rng.normal(size=count)
+        shape = read_count(
+            Trace("pd", "V", values, rate_hz), Trace("drive", "V", drive, rate_hz)
+        ).shape
+        assert shape is not None
+        assert shape.causes == []
+        for one in shape.directions:
+            assert abs(one.lean) < 3 * one.lean_u, (seed, one)
+            assert abs(one.second) < 3 * one.second_u, (seed, one)

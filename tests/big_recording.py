@@ -5,6 +5,7 @@ import numpy as np
 from firmware_bridge.announcement import Announcement, ChannelInfo
 from firmware_bridge.envelope import seal_rows
 from firmware_bridge.frame import pack_frames
+from firmware_bridge.host_note import End, seal_host_note
 from firmware_bridge.recording_header import Header, encode_header
 
 __all__ = ["LINES_HZ", "RATE_HZ", "VOLTS_A_COUNT", "write_recording"]
@@ -52,4 +53,6 @@ def write_recording(path, size, seed=1, drive=False):
             padded = np.zeros((_FRAMES, header.record_bytes), np.uint8)
             padded[:, : sealed.shape[1]] = sealed
             file.write(padded.tobytes())
+        end = seal_host_note(End(1, chunks * step))
+        file.write(end.ljust(header.record_bytes, b"\0"))
     return chunks * step

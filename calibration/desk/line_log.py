@@ -105,6 +105,11 @@ class LineLog:
         """Results that the ledger, failing to the end, did not take."""
         self._thread.start()
 
+    @property
+    def lines_hz(self) -> tuple[float, ...]:
+        """Frequencies of the lines that are measured [Hz]."""
+        return tuple(self._measuring.lines_hz)
+
     def put(self, stretch: Stretch, channels: LoggedChannels) -> None:
         """Hand on a stretch; it never waits.
 

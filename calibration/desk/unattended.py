@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.line_log import LineLog
 from calibration.desk.line_window import MOST_SAMPLES, LineWindow
 from calibration.desk.log_folder import LogFolder
@@ -146,6 +147,10 @@ class UnattendedLog:
             try:
                 self._record(stop)
                 break
+            except LedgerError:  # of the options, at the first samples: nothing is left behind
+                for path in self._files:
+                    path.unlink(missing_ok=True)
+                raise
             except (DeviceFailedError, PortError) as error:
                 if not self._settings.reconnect:
                     raise
@@ -203,16 +208,32 @@ class UnattendedLog:
     def _take(self, block: "LiveBlock") -> None:
         """Take a block of the running recording, in the recorder's thread."""
         if self._described != self._running and self._running is not None:
-            self._describe(self._running)
+            self._begin(self._running)
         if self._window is None or self._channels is None or self._lines is None:
             return
         for stretch in self._window.add(block):
             self._lines.put(stretch, self._channels)
 
+    def _begin(self, path: Path) -> None:
+        """Describe a new recording; one that has lost what is logged is recorded all the same."""
+        self._described = path
+        try:
+            self._describe(path)
+        except LedgerError as error:
+            if self._channels is None:  # wrong from the beginning
+                raise
+            self._window = None
+            _log.warning("%s: %s; recorded without line results", path, error)
+
     def _describe(self, path: Path) -> None:
         """Find the channels of a new recording; the stretch goes on where they are the same."""
         channels = LoggedChannels.of_recording(path, self._settings.channels)
-        self._described = path
+        highest_hz = 0.0 if self._lines is None else max(self._lines.lines_hz, default=0.0)
+        if highest_hz >= 0.5 * channels.rate_hz:
+            raise LedgerError(
+                f"--line must be below half the board's rate, {0.5 * channels.rate_hz:.6g} Hz, "
+                f"got {highest_hz:.6g} Hz"
+            )
         if channels == self._channels and self._window is not None:
             return
         settings, rate_hz = self._settings, channels.rate_hz

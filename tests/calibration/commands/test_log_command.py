@@ -18,6 +18,8 @@ from sessions import built_in_bench
 from wire_board import PtyLink, asked_board
 
 from calibration.desk.ledger import Ledger
+from calibration.desk.ledger_errors import LedgerError
+from calibration.desk.unattended import UnattendedLog
 from calibration.rehearsal_script import session_steps
 from firmware_bridge.opening import open_recording
 from firmware_bridge.simulated.bench import SimulatedBench
@@ -69,6 +71,41 @@ def test_recordings_follow_one_another_without_a_lost_sample(board, tmp_path, ca
     assert not entries[0].is_ratio
     assert entries[0].source == board.link.port
     assert abs(entries[-1].unix_s - time.time()) < 30
+
+
+@pytest.mark.parametrize(
+    ("more", "told"),
+    [
+        (["--channel=nosuch"], "no channel 'nosuch'; the board has "),
+        (["--line=3kHz"], "--line must be below half the board's rate, 1000 Hz, got 3000 Hz"),
+    ],
+)
+def test_what_the_board_does_not_have_is_one_line_and_leaves_nothing(
+    board, tmp_path, capsys, more, told
+):
+    assert run(arguments(board, tmp_path, "--duration=5s", *more)) == 2
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert [line for line in err.splitlines() if not line.startswith("info: ")] == [
+        f"midfringe: {told}" if told[-1] != " " else err.splitlines()[-1]
+    ]
+    assert told in err
+    assert list(tmp_path.glob("*.mfr")) == []
+
+
+def test_a_board_that_comes_back_with_other_channels_is_recorded_on(tmp_path, caplog):
+    """Later the channels are the board's matter: results stop, the recording does not."""
+    log = UnattendedLog.__new__(UnattendedLog)
+    log._channels, log._window, log._described = object(), object(), None
+
+    def describe(_path):
+        raise LedgerError("no channel 'pd'; the board has 'a'")
+
+    log._describe = describe
+    with caplog.at_level("WARNING"):
+        log._begin(tmp_path / "b.mfr")
+    assert log._window is None
+    assert "no channel 'pd'; the board has 'a'; recorded without line results" in caplog.text
 
 
 def test_every_step_is_one_line_on_standard_error(board, tmp_path, capsys):

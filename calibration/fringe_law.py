@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from metro.kernel.student import t_quantile
 
-__all__ = ["law_harmonics", "law_stretches", "typical_law"]
+__all__ = ["law_harmonics", "law_stretches", "student_width", "typical_law"]
 
 _PASSES = 3
 _POINTS = 300
@@ -135,13 +135,13 @@ def law_harmonics(
     ndarray, shape (2,)
         Their standard uncertainties, from the scatter between stretches.
     """
-    typical, u = typical_law(law_stretches(values, passes, low, high, leaning=False))
+    typical, u, _ = typical_law(law_stretches(values, passes, low, high, leaning=False))
     return typical[:2], u[:2]
 
 
 def typical_law(
     stretches: NDArray[np.float64],
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+) -> tuple[NDArray[np.float64], NDArray[np.float64], int]:
     """Return the mean over the stretches that fit well; a turning point in one spoils it.
 
     Parameters
@@ -155,20 +155,37 @@ def typical_law(
         cos 2φ, cos 3φ and sin 2φ relative to cos φ; empty with fewer than four usable stretches.
     ndarray, shape (3,) or (0,)
         Their standard uncertainties, from the scatter between stretches.
+    int
+        Stretches that fit well.
     """
     none = np.zeros(0)
     if len(stretches) < 6:
-        return none, none
+        return none, none, 0
     rest = stretches[:, 2]
     good = stretches[rest < 1.5 * np.quantile(rest, 0.4), 3:]
     if len(good) < 4:
-        return none, none
+        return none, none, len(good)
     middle = np.median(good, axis=0)
     spread = 1.4826 * np.median(np.abs(good - middle), axis=0) + 1e-6
     near = np.all(np.abs(good - middle) < 3.5 * spread, axis=1)
     good = good[near] if near.sum() >= 4 else good
     # neighbouring stretches share two passes of three: so many are independent
     independent = max(len(good) / _PASSES, 1.0)
-    # and few of them know their own scatter badly: as wide as Student's interval at 95 %
-    widened = t_quantile(0.95, max(independent - 1.0, 1.0)) / t_quantile(0.95, 1e6)
-    return good.mean(axis=0), widened * good.std(axis=0, ddof=1) / math.sqrt(independent)
+    return good.mean(axis=0), good.std(axis=0, ddof=1) / math.sqrt(independent), len(good)
+
+
+def student_width(stretches: int) -> float:
+    """Return by how much an interval at 95 % is wider since few stretches know their own scatter.
+
+    Parameters
+    ----------
+    stretches : int
+        Of three passes each, of which neighbours share two.
+
+    Returns
+    -------
+    float
+        1 for many; Student's factor over the normal one.
+    """
+    dof = max(stretches / _PASSES - 1.0, 1.0)
+    return t_quantile(0.95, dof) / t_quantile(0.95, 1e6)

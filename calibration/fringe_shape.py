@@ -6,7 +6,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.fringe_law import law_stretches, typical_law
+from calibration.fringe_law import law_stretches, student_width, typical_law
 
 __all__ = ["DirectionShape", "FringeShape", "fringe_shape"]
 
@@ -99,9 +99,10 @@ def _direction_shapes(stretches: FloatArray, ways: NDArray[np.int64]) -> list[Di
     out = []
     for way, name in ((1, "up"), (-1, "down"), (0, "unknown")):
         own = stretches[ways == way]
-        typical, u = typical_law(own)
+        typical, u, good = typical_law(own)
         if len(typical):
             second, third, lean = typical.tolist()
+            u = student_width(good) * u
             out.append(DirectionShape(name, second, third, lean, u[0], u[1], u[2], len(own)))
     return out
 

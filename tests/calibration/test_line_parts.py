@@ -75,7 +75,10 @@ def test_a_recording_split_at_random_and_merged_gives_the_fit_of_the_whole(kind,
     merged = parts[order[0]].merge(*(parts[k] for k in order[1:])).fit()
     whole = calibration.accumulate_lines(values, plan, drive, start_index=start).fit()
     for (name, got), (_, exact) in zip(_numbers(merged), _numbers(whole), strict=True):
-        assert got == pytest.approx(exact, rel=1e-12, abs=1e-12 if name == "phase" else 0), name
+        # The u of a phase at t = 0, which may lie 5000 samples before the data, is a small difference of
+        # large terms of phase, clock and drift: rounding comes out some 1e4 times larger, 1.1e-12 at worst.
+        relative = 2e-12 if name == "u of phase" else 1e-12
+        assert got == pytest.approx(exact, rel=relative, abs=1e-12 if name == "phase" else 0), name
     assert merged.clock_value == pytest.approx(whole.clock_value, abs=1e-12, nan_ok=True)
     assert merged.distrust_reasons == whole.distrust_reasons
 

@@ -103,9 +103,11 @@ async def _ended(server: WatchServer) -> str:
 
 def _maybe_unknown(server: WatchServer) -> str:
     """Return why nobody can tell what is driven, or nothing."""
-    port = server.state.port
-    if not server.orders.drive.is_away:
+    port, drive = server.state.port, server.orders.drive
+    if not drive.is_away:
         return ""
+    if port.state == "silent" and drive.condition == "none":
+        return ""  # a board without drive lines that sends no more drives nothing
     return port.reason or f"the port is {port.state}"
 
 

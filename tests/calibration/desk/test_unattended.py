@@ -69,6 +69,7 @@ class Lines:
 
     def __init__(self):
         self.found, self.results, self.alarms = [], 0, []
+        self.lines_hz = [31.7]
 
     def put(self, stretch, channels):
         self.found.append((stretch, channels))

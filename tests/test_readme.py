@@ -55,6 +55,7 @@ def test_the_two_commands_stand_there():
     assert installs[1].endswith("pytest -q -n 2")
 
 
+@pytest.mark.slow
 def test_every_command_runs(session, monkeypatch):
     """In the order of the page, since later ones use what earlier ones leave."""
     monkeypatch.chdir(session)

@@ -387,6 +387,7 @@ def test_a_repeat_that_differs_is_not_trusted(session, tmp_path):
     assert any("they differ" in reason for reason in calibration.reasons)
 
 
+@pytest.mark.slow
 def test_recordings_in_the_wrong_role_are_not_trusted(session):
     _, files, _ = session
     second, first = {"scan": files["scan"][1:]}, files["scan"][:1]

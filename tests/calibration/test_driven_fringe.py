@@ -81,6 +81,7 @@ def test_noise_free_bias_is_below_1e_5(depth, extremes, drift):
     assert float(fit.high.magnitude - fit.low.magnitude) == pytest.approx(2.0, rel=1e-5)
 
 
+@pytest.mark.slow
 def test_several_lines_at_once():
     depths = [0.2, 0.3, 0.15, 0.25, 0.2, 0.1]
     for seed in range(2):
@@ -91,6 +92,7 @@ def test_several_lines_at_once():
             assert abs(np.angle(np.exp(1j * (phase.magnitude - p)))) < 5 * phase.u_magnitude
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "depths", [(4.0, 1.5), (0.3, 6.0), (2.5, 2.0), (12.0, 11.0), (5.5, 11.5, 0.2)]
 )
@@ -243,6 +245,7 @@ def test_fibre_modulator_at_a_fringe_top_is_refused():
         assert any("fringe top" in reason for reason in fit.reasons)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("sweeps", [4, 15])
 def test_a_free_running_bench(sweeps):
     # 10 s of a bench whose arms run over many fringes, back and forth, under a shallow line

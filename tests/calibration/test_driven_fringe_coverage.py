@@ -20,6 +20,7 @@ def run(kind, count, samples):
     return row
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("kind", ["deep", "given", "drift"])
 def test_coverage_of_small_records(kind):
     count = 30 if kind == "drift" else 60
@@ -29,6 +30,7 @@ def test_coverage_of_small_records(kind):
     assert row["wrong"] == 0
 
 
+@pytest.mark.slow
 def test_no_bias_without_noise_and_no_depth_without_ground():
     exact = run("exact", 12, 3000)
     assert exact["worst"] < 1e-5

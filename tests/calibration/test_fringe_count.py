@@ -101,6 +101,7 @@ def harsh(kind, rng):
     return drive, 2 * np.pi * way * drive + shaken
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("has_drive", [True, False])
 @pytest.mark.parametrize("kind", ["coarse", "reversing", "coarse and reversing", "from rest"])
 def test_a_harsh_count_is_right_or_distrusted(kind, has_drive):
@@ -146,6 +147,7 @@ def test_a_turn_among_coarse_samples_is_named_without_a_drive():
     assert steady.fringes == pytest.approx(3200.6, abs=2 * steady.fringes_u)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("start", [0.8, 0.05, -0.1, 2.9, 3.2])
 @pytest.mark.parametrize("count", [2000, 20_000])
 def test_a_turn_next_to_an_extreme_is_covered_without_a_drive(start, count):
@@ -158,6 +160,7 @@ def test_a_turn_next_to_an_extreme_is_covered_without_a_drive(start, count):
         assert abs(got.fringes - way / np.pi) < 2 * got.fringes_u, (end, got.fringes, got.fringes_u)
 
 
+@pytest.mark.slow
 def test_the_net_count_of_driven_triangles_has_a_u_as_wide_as_its_errors():
     pulls = []
     for seed in range(60):

@@ -392,6 +392,7 @@ def test_a_dead_channel_is_distrusted_and_no_crash(values, drive):
         assert "too weak" in " | ".join(fit.distrust_reasons)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("free", [False, True])
 def test_the_shortest_records_do_not_crash(free):
     for n in range(16, 64):

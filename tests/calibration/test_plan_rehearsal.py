@@ -36,6 +36,7 @@ def check(plan_file, seeds, folder, factor):
         assert promised / factor < median(values) < promised * factor, line
 
 
+@pytest.mark.slow
 def test_two_sessions_come_near_their_plan(tmp_path):
     check(made(tmp_path, "0.5%"), range(1, 3), tmp_path, 1.5)
 

@@ -153,6 +153,7 @@ ANYTHING = st.recursive(
 )
 
 
+@pytest.mark.slow
 @settings(
     max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
 )

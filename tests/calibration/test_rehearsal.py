@@ -22,6 +22,7 @@ def quick_rows():
     return coverage_of(list(play_trials(built_in_bench(), range(1, 13), lines_s=8.0)))
 
 
+@pytest.mark.slow
 def test_short_sessions_cover(quick_rows):
     """12 sessions of 12 quantities, partly common: loose bounds, for gross errors only.
 
@@ -166,6 +167,7 @@ def test_trials_print_coverage(capsys):
     assert document["not_modelled"] == list(NOT_MODELLED)
 
 
+@pytest.mark.slow
 def test_trials_name_distrusted_sessions_and_what_is_not_modelled(capsys):
     arguments = ["rehearse", "--trials", "1", "--trial-bench", "clipped", "--quiet"]
     assert run(arguments) == 0

@@ -154,6 +154,7 @@ def test_agreement_needs_two_routes():
     assert got == Agreement(pytest.approx(0.1 / (2 * math.sqrt(3e-4))), False, ("other",))
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("depth", [2.7, 5.0, 31.0, 100 * math.pi])
 def test_bessel_recurrences_cover(depth):
     # noise of 20 dB; pulls of mean 0 and width 1 within five standard errors

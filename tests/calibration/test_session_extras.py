@@ -168,6 +168,7 @@ def test_without_other_alignments_the_budget_says_so(session):
     assert (term.name, term.u) == ("reproducibility after realignment (stated)", 0.004)
 
 
+@pytest.mark.slow
 def test_the_routes_agree_and_stand_in_the_budget(session):
     _, files, first = session
     assert any("routes (not compared)" in c.name for c in first.actuator[0].budget.contributions)

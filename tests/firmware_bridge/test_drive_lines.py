@@ -102,6 +102,7 @@ def driven(amplitude_v=0.5, limit_v=1000.0):
     return lines
 
 
+@pytest.mark.slow
 def test_lines_are_set_before_the_first_sample_kept_and_at_rest_in_the_end(tmp_path):
     stop = threading.Event()
     with asked_board() as there:
@@ -156,6 +157,7 @@ def test_text_boards_have_no_lines(tmp_path):
         record("/dev/none", tmp_path / "a.mfr", text=True, drive=driven())
 
 
+@pytest.mark.slow
 def test_after_a_reset_the_lines_are_set_again(tmp_path):
     stop = threading.Event()
     with asked_board() as there:

@@ -109,6 +109,7 @@ def first_end(viewer):
     return next((event for event in viewer.of(LiveRecording) if event.file is None), None)
 
 
+@pytest.mark.slow
 def test_gaps_and_over_range_are_shown(tmp_path):
     def damage(number, frame):
         return b"" if number == 3 else frame
@@ -212,6 +213,7 @@ def test_a_silent_board_is_named(tmp_path):
         assert "the board is silent for 5 s" in viewer.state("silent").reason
 
 
+@pytest.mark.slow
 def test_a_viewer_that_does_not_look_costs_the_view_not_the_recording(tmp_path):
     with contextlib.closing(PtyLink()) as link, LiveSession(link.port, folder=tmp_path) as live:
         viewer = Viewer(live)

@@ -230,6 +230,7 @@ def test_the_lock_in_asked_for_is_the_specifications():
         assert LockInStart(channel, 0.5).arguments(board) == bytes([2, 1, 0, 0, 232, 3, 0, 0])
 
 
+@pytest.mark.slow
 def test_a_board_that_was_reset_is_started_again(tmp_path):
     """As a board of the specification does: after a reset it announces itself and waits."""
     starts = []

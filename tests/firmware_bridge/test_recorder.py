@@ -330,6 +330,7 @@ def test_lines_of_numbers_become_a_recording(pty, tmp_path, background):
     np.testing.assert_allclose(recording.trace("2").values, np.arange(50) / 4, atol=1e-12)
 
 
+@pytest.mark.slow
 def test_a_rate_by_the_hosts_clock_is_remarked_and_fitted_over_all(pty, tmp_path, background):
     def send():
         for k in range(2000):

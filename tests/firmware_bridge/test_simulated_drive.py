@@ -99,6 +99,7 @@ def test_what_the_drive_cannot_do_is_refused(bench):
     assert wired.maybe_refusal(Command(CommandCode.SET_LINE, 0, b"")) == "wrong length"
 
 
+@pytest.mark.slow
 def test_in_real_time_the_board_answers_and_rests_when_the_host_is_silent(bench):
     decoder, events = Decoder(), []
     wanted = set_line(0, 87.1, 2.0).arguments

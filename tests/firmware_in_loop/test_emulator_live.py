@@ -118,6 +118,7 @@ def test_a_recording_goes_through_inspect_and_lines(elf, tmp_path):
         assert u < 2e-4
 
 
+@pytest.mark.slow
 def test_record_drives_the_lines_it_is_told_and_leaves_the_board_at_rest(elf, tmp_path):
     path = tmp_path / "driven.mfr"
     with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:
@@ -142,6 +143,7 @@ def test_record_drives_the_lines_it_is_told_and_leaves_the_board_at_rest(elf, tm
     assert sizes == pytest.approx([0.6, 0.4], abs=2e-4)
 
 
+@pytest.mark.slow
 def test_the_boards_own_lock_in_is_recorded_instead_of_samples(elf, tmp_path):
     path = tmp_path / "lock-in.mfr"
     with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:
@@ -166,6 +168,7 @@ def test_the_boards_own_lock_in_is_recorded_instead_of_samples(elf, tmp_path):
     assert [c["name"] for c in seen["channels"]] == [c.name for c in recording.channels]
 
 
+@pytest.mark.slow
 def test_the_drive_rests_when_the_host_is_silent(elf):
     with Emulator(elf) as board:
         host = Host(board.port)
@@ -203,6 +206,7 @@ def at_rest(events):
     return len(frames) > 10 and not any(frame.data[:, 1].any() for frame in frames[-3:])
 
 
+@pytest.mark.slow
 def test_a_board_that_dies_leaves_what_it_had_sent(elf, tmp_path):
     path = tmp_path / "died.mfr"
     with Emulator(elf) as board:

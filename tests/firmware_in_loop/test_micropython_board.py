@@ -140,6 +140,7 @@ def test_it_says_the_same_bytes_as_the_c_core(core, interpreter, tmp_path, name)
     assert len(expected) > 500
 
 
+@pytest.mark.slow
 def test_it_is_recorded_through_a_terminal(interpreter, tmp_path):
     master, slave = os.openpty()
     tty.setraw(slave)

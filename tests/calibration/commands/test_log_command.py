@@ -55,6 +55,7 @@ def ramp_in(folder):
     return np.concatenate(parts)
 
 
+@pytest.mark.slow
 def test_recordings_follow_one_another_without_a_lost_sample(board, tmp_path, capsys):
     more = ("--duration=2s", "--rotate-every=0.5s", "--quiet", "--json")
     assert run(arguments(board, tmp_path, *more)) == 0
@@ -117,6 +118,7 @@ def test_every_step_is_one_line_on_standard_error(board, tmp_path, capsys):
     assert all(line.startswith(("info: ", "warning: ")) for line in lines)
 
 
+@pytest.mark.slow
 def test_all_recordings_stay_within_what_is_kept(board, tmp_path, capsys):
     most = 0
     done = threading.Event()
@@ -198,6 +200,7 @@ def test_a_polite_end_is_clean(board, tmp_path, number):
     assert len(ramp) >= 1000
 
 
+@pytest.mark.slow
 def test_a_full_disk_says_what_was_kept_and_ends_with_3(tmp_path):
     """The limit on a file's size stands for it; the ledger's files are smaller."""
 
@@ -256,6 +259,7 @@ def test_wrong_input_is_one_line(tmp_path, capsys):
     assert list(tmp_path.iterdir()) == []
 
 
+@pytest.mark.slow
 def test_a_board_that_prints_text_is_logged_too(tmp_path, capsys):
     """0.3 V at 10 Hz in lines of text, 200 a second; the second column is a temperature's number.
 

@@ -210,6 +210,7 @@ def test_with_a_token_everything_asks_for_it():
     serving(scenario, guard=Guard("127.0.0.1", TOKEN))
 
 
+@pytest.mark.slow
 def test_messages_come_and_the_trace_moves_on():
     async def scenario(desk):
         live = await desk.open()

@@ -35,6 +35,7 @@ def test_short_sessions_cover(quick_rows):
     assert quick_rows[-1].inside_95 > 0.85
 
 
+@pytest.mark.slow
 def test_coverage_table_has_a_line_a_quantity(quick_rows):
     lines = coverage_table(quick_rows).splitlines()
     assert len(lines) == len(quick_rows) + 1

@@ -5,13 +5,15 @@ Run with both cores and the library's own choice of kernels::
     env -u OPENBLAS_CORETYPE -u OPENBLAS_L2_SIZE python tests/benchmarks/bench_lines.py [samples]
 
 Rates are per sample: curve_fit and lstsq on the first 10⁶ samples, numpy.sum, the product alone and the
-complete fit on all (3·10⁷ unless given).
+complete fit on all (3·10⁷ unless given). Then the complete fit of the first thousandth, hundredth, tenth
+and of all: over these three decades the time a sample must not rise.
 """
 
 import os
 import resource
 import sys
 import time
+from itertools import pairwise
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -22,6 +24,8 @@ from calibration.phasors import block_phasors
 RATE = 4000.0
 LINES = np.array([31.7, 47.3, 87.1, 123.4, 211.3, 307.9, 401.1, 503.7])
 FIRST = 1_000_000
+DECADES = (1000, 100, 10, 1)  # parts of the record whose times are compared
+FLAT = 1.25  # a sample of a longer record may take as much as one of a shorter, and a quarter for the noise
 
 
 def _record(samples):
@@ -62,6 +66,19 @@ def _table(t):
     return np.hstack([waves.real, waves.imag, drift])
 
 
+def _print_decades(values):
+    """Print the time a sample over three decades of length, and whether it keeps from rising."""
+    lengths = [len(values) // part for part in DECADES]
+    times_ns = [
+        1e9 / _rate(n, lambda: fit_lines_si(values[:n], RATE, LINES), 7)  # noqa: B023  # at once
+        for n in lengths
+    ]
+    for n, time_ns in zip(lengths, times_ns, strict=True):
+        print(f"line fit of {n:11,d} samples {time_ns:10.3f} ns a sample")
+    flat = all(after <= FLAT * before for before, after in pairwise(times_ns))
+    print(f"cost at most linear over three decades: {'yes' if flat else 'NO'}")
+
+
 def main():
     samples = int(float(sys.argv[1])) if len(sys.argv) > 1 else 30_000_000
     values = _record(samples)
@@ -84,6 +101,7 @@ def main():
     print(f"line fit / lstsq          {ours / rates['numpy.linalg.lstsq, table ready']:8.1f}")
     print(f"block phasors / numpy.sum {rates['block phasors'] / total:8.3f}")
     print(f"line fit / numpy.sum      {ours / total:8.3f}")
+    _print_decades(values)
     names = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "OPENBLAS_CORETYPE")
     threads = ", ".join(f"{name}={os.environ.get(name, 'not set')}" for name in names)
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1e6

@@ -26,7 +26,7 @@ from metro.options import ValueType, distrust, is_quiet
 if TYPE_CHECKING:
     from firmware_bridge.trace import Recording, Trace
 
-__all__ = ["Reading", "recording_options"]
+__all__ = ["Reading", "opened_reasons", "recording_options"]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -279,12 +279,29 @@ class Reading:
                 click.echo(f"{recording.path}: {remark}", err=True)
 
 
-def _distrust_opened(meta: dict[str, Any]) -> None:
-    """End with 1 where something speaks against a recording that was opened."""
+def opened_reasons() -> list[str]:
+    """Return why the recordings that the running command opened must not be trusted.
+
+    Returns
+    -------
+    list of str
+        Each once, with its file; empty outside a command.
+    """
+    context = click.get_current_context(silent=True)
+    return [] if context is None else _reasons_of(context.meta)
+
+
+def _reasons_of(meta: dict[str, Any]) -> list[str]:
     opened = meta.get(_OPENED, [])
     reasons = [f"{item.path}: {text}" for reading, item in opened for text in reading.reasons(item)]
+    return list(dict.fromkeys(reasons))
+
+
+def _distrust_opened(meta: dict[str, Any]) -> None:
+    """End with 1 where something speaks against a recording that was opened."""
+    reasons = _reasons_of(meta)
     if reasons:
-        distrust(list(dict.fromkeys(reasons)))
+        distrust(reasons)
 
 
 @overload

@@ -134,20 +134,20 @@ def fringe(
     answer = _answer(source, recordings, lines, quadrature, null, pilot_hz)
     if plot is not None and answer.draw is None:
         raise click.UsageError("--plot draws driven, counted and quadrature recordings only")
+    remarks += _remarks(answer, bench)
+    hints = []
+    if answer.reasons and of_bench and lines and not any(ways.values()):
+        hints = ["the lines are the bench's: a scan, ramp or motor run is counted with --count"]
+    document = _document(answer, [*remarks, *hints], recordings)
     if out is not None:
-        write_whole(out, to_json(answer.document) + "\n", overwrite=overwrite)
+        write_whole(out, to_json(document) + "\n", overwrite=overwrite)
     if plot is not None and answer.draw is not None:
         answer.draw(plot, overwrite=overwrite)
-    click.echo(
-        to_json(answer.document) if as_json else answer.text([*remarks, *_remarks(answer, bench)])
-    )
+    click.echo(to_json(document) if as_json else answer.text(remarks))
     for one in recordings:
         reading.tell(one)
     if answer.reasons:
-        if of_bench and lines and not any(ways.values()):
-            hint = "the lines are the bench's: a scan, ramp or motor run is counted with --count"
-            distrust([*answer.reasons, hint])
-        distrust(answer.reasons)
+        distrust([*answer.reasons, *hints])
 
 
 def _check(
@@ -190,6 +190,23 @@ def _answer(
     if lines:
         return fringe_answer.driven_answer(source, recordings[0], lines)
     return fringe_answer.counted_answer(source, recordings[0])
+
+
+def _document(
+    answer: "FringeAnswer", remarks: list[str], recordings: "list[Recording]"
+) -> dict[str, Any]:
+    """Return the JSON document with what else is said: remarks, and what the recordings say."""
+    from firmware_bridge.reading import opened_reasons
+
+    reasons = [*answer.document["reasons"], *opened_reasons()]
+    said = [f"{one.path}: {text}" for one in recordings for text in one.remarks]
+    told = [text for text in dict.fromkeys(said) if text not in reasons]
+    return {
+        **answer.document,
+        "trustworthy": not reasons,
+        "reasons": reasons,
+        "remarks": [*remarks, *told],
+    }
 
 
 def _remarks(answer: "FringeAnswer", bench: Bench) -> list[str]:

@@ -396,3 +396,31 @@ def test_a_scan_is_counted_although_the_bench_names_lines(capsys, swept, driven,
     assert code == 1
     assert "phase amplitude" in out
     assert "a scan, ramp or motor run is counted with --count" in err
+
+
+def test_json_says_what_the_page_says(capsys, swept, driven, tmp_path):
+    bench = lined_bench(tmp_path)
+    code, out, _ = run(
+        capsys, swept, "--channel", "light", "--drive", "ramp", "--bench", bench, "--json"
+    )
+    assert code == 0
+    said = "the bench's lines are not seen and fringes pass: fringes are counted"
+    assert any(text.startswith(said) for text in json.loads(out)["remarks"])
+    code, out, _ = run(capsys, driven, "--channel", "photodiode", "--bench", bench, "--json")
+    assert code == 1
+    assert any("is counted with --count" in text for text in json.loads(out)["remarks"])
+
+
+def test_json_has_the_recordings_own_reasons(capsys, driven, tmp_path):
+    """Rows that cannot be read, 5 % of the file: the result is distrusted, and JSON says so too."""
+    rows = driven.read_text().splitlines()
+    holed = tmp_path / "holed.csv"
+    holed.write_text("\n".join(rows[:2] + [r if k % 20 else "?,?" for k, r in enumerate(rows[2:])]))
+    levels = ("--low", "0.2V", "--high", "2.2V", "--line", "31.7Hz")
+    code, out, err = run(capsys, holed, *levels, "--json")
+    document = json.loads(out)
+    assert code == 1
+    assert document["trustworthy"] is False
+    own = [text for text in document["reasons"] if text.startswith(str(holed))]
+    assert own
+    assert own[0] in err

@@ -1,12 +1,14 @@
 """Sizes of files as people write them."""
 
+import math
 import re
 
 from firmware_bridge.errors import BridgeError
 
-__all__ = ["parse_byte_size"]
+__all__ = ["byte_size_text", "parse_byte_size"]
 
 _SIZE = re.compile(r"\s*(\d+(?:\.\d*)?|\.\d+)\s*([kMGT]?)(i?)B\s*")
+_DIGITS = 3
 _POWERS = {"": 0, "k": 1, "M": 2, "G": 3, "T": 4}
 
 
@@ -41,3 +43,24 @@ def parse_byte_size(text: str, name: str) -> int:
     if not 1 <= size < 2**63:
         raise BridgeError(f"{name} must be a size such as '500 MB' or '2 GiB', got {text!r}")
     return round(size)
+
+
+def byte_size_text(number: float, *, is_up: bool = False) -> str:
+    """Return a number of bytes as people write it.
+
+    Parameters
+    ----------
+    number : float
+        Bytes, > 0.
+    is_up : bool
+        Round up, where less would be too little.
+
+    Returns
+    -------
+    str
+        Three digits in powers of 1000, such as ``"115 MB"``; whole bytes below a thousand.
+    """
+    step = 10.0 ** max(0, math.floor(math.log10(number)) + 1 - _DIGITS)
+    rounded = max(1.0, (math.ceil if is_up else round)(number / step) * step)
+    power = min(math.floor(math.log10(rounded)) // 3, 4)
+    return f"{rounded / 1000**power:.4g} {'kMGT'[power - 1] if power else ''}B"

@@ -15,10 +15,13 @@ from metro.options import ValueType, command, distrust, is_quiet, output_options
 if TYPE_CHECKING:
     from calibration.desk.ledger import Ledger
     from calibration.desk.line_log import LogPlan
+    from calibration.desk.log_room import LeastRoom
+    from calibration.desk.unattended import LogSettings
 
 __all__ = ["log"]
 
 _WRONG_INPUT = 2
+_LONGEST_S = 3600.0
 _SHARE = 8  # of what is kept: the largest recording, unless told
 
 
@@ -61,12 +64,11 @@ _SHARE = 8  # of what is kept: the largest recording, unless told
 @click.option(
     "--rotate-every",
     type=ValueType("s", above=0.0),
-    default=3600.0,
     metavar="T",
     help="Longest recording: 1 h.",
 )
 @click.option("--rotate-bytes", metavar="S", help="Largest recording, such as 500MB.")
-@click.option("--keep-bytes", metavar="S", help="Of all recordings, such as 20GB.")
+@click.option("--keep-bytes", metavar="S", help="Of all recordings, at least two: 20GB.")
 @click.option(
     "--keep-for", type=ValueType("s", above=0.0), metavar="T", help="Of recordings, such as 30day."
 )
@@ -99,8 +101,9 @@ def log(
     """Log PORT unattended: rotating recordings, line results to the ledger, alarms.
 
     Goes on until Ctrl-C or SIGTERM. Of the recordings NAME-YYYYmmddTHHMMSSZ.mfr the oldest are
-    deleted in time, as --keep-bytes and --keep-for say; the running one never. The exit code is 1
-    where there was an alarm.
+    deleted in time, as --keep-bytes and --keep-for say; the running one never. --keep-bytes that
+    would not hold two recordings at the board's rate are refused. The exit code is 1 where there
+    was an alarm.
     """
     from calibration.desk.ledger import Ledger
     from calibration.desk.line_log import LineLog
@@ -110,7 +113,8 @@ def log(
 
     keep, largest = _sizes(keep_bytes, rotate_bytes)
     folder = LogFolder(out, Retention(keep, keep_for))
-    settings = _settings(port, largest, options)
+    room = None if keep is None else _room(keep, rotate_bytes is not None, options)
+    settings = _settings(port, largest, room, options)
     stop = threading.Event()
     with folder.held(), Ledger(ledger) as kept, _nothing_left(kept):
         plan = _plan(kept, bench_name or "bench", judging, port, options)
@@ -150,7 +154,23 @@ def _sizes(keep_bytes: str | None, rotate_bytes: str | None) -> tuple[int | None
     return keep, largest
 
 
-def _settings(port: str, largest: int | None, options: dict[str, Any]) -> Any:  # noqa: ANN401  # LogSettings
+def _room(keep: int, is_size_given: bool, options: dict[str, Any]) -> "LeastRoom":
+    """Return what must be kept: two recordings as long as is asked for, else as a line result.
+
+    Two of a size that is given fit in any case, but for very small ones.
+    """
+    from calibration.desk.log_room import LeastRoom
+
+    if is_size_given:
+        return LeastRoom(keep)
+    if options["rotate_every"] is not None:
+        return LeastRoom(keep, options["rotate_every"], "--rotate-every")
+    return LeastRoom(keep, options["every"], "--every")
+
+
+def _settings(
+    port: str, largest: int | None, room: "LeastRoom | None", options: dict[str, Any]
+) -> "LogSettings":
     from calibration.desk.ledger_errors import LedgerError
     from calibration.desk.logged_channels import ChannelChoice
     from calibration.desk.unattended import LogSettings
@@ -170,10 +190,11 @@ def _settings(port: str, largest: int | None, options: dict[str, Any]) -> Any:  
         options["reconnect"],
         options["duration"],
         largest,
-        options["rotate_every"],
+        options["rotate_every"] or _LONGEST_S,
         options["every"],
         over,
         ChannelChoice(options["channel"], options["drive"], options["temperature_channel"]),
+        room,
     )
 
 

@@ -82,13 +82,15 @@ class LogFolder:
         found = [path for path in self.folder.iterdir() if self._pattern.fullmatch(path.name)]
         return sorted(found, key=_begun)
 
-    def tidy(self, running: Path | None) -> list[Path]:
+    def tidy(self, running: Path | None, *, by_size: bool = True) -> list[Path]:
         """Delete closed recordings that are not to be kept, the oldest first.
 
         Parameters
         ----------
         running : Path or None
             The recording that is being written: never deleted.
+        by_size : bool
+            Whether to keep within ``keep_bytes``; else by age alone.
 
         Returns
         -------
@@ -107,7 +109,7 @@ class LogFolder:
         closed = [path for path in sizes if path != running]
         deleted = []
         for path in closed:
-            if not self._is_due(path, total + margin):
+            if not self._is_due(path, total + margin if by_size else 0):
                 break
             with contextlib.suppress(FileNotFoundError):
                 path.unlink()

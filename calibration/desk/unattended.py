@@ -12,6 +12,7 @@ from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.line_log import LineLog
 from calibration.desk.line_window import MOST_SAMPLES, LineWindow
 from calibration.desk.log_folder import LogFolder
+from calibration.desk.log_room import LeastRoom
 from calibration.desk.logged_channels import ChannelChoice, LoggedChannels
 from firmware_bridge.errors import DeviceFailedError
 from firmware_bridge.port import PortError
@@ -52,6 +53,8 @@ class LogSettings:
         From one line result to the next, and how long a stretch each is fitted over [s].
     channels : ChannelChoice
         What they are called.
+    room : LeastRoom or None
+        What must fit into what is kept; checked before anything is deleted for its size.
     """
 
     port: str
@@ -65,6 +68,7 @@ class LogSettings:
     every_s: float = 60.0
     over_s: float = 60.0
     channels: ChannelChoice = field(default_factory=ChannelChoice)
+    room: LeastRoom | None = None
 
 
 @dataclass(frozen=True)
@@ -118,6 +122,7 @@ class UnattendedLog:
         self._channels: LoggedChannels | None = None
         self._window: LineWindow | None = None
         self._tidied_s = 0.0
+        self._is_room_known = settings.room is None or lines is None
         self._files: list[Path] = []
         self._begun_s = time.monotonic()
 
@@ -157,6 +162,8 @@ class UnattendedLog:
                 if str(error) != told:
                     _log.warning("%s; trying again", error)
                 told = str(error)
+                if isinstance(error, DeviceFailedError):  # of a full disk: room must be made
+                    self._is_room_known = True
             self._tidy(force=True)
             stop.wait(_AGAIN_S)
         self._running = None
@@ -202,7 +209,7 @@ class UnattendedLog:
         if not force and now_s - self._tidied_s < _TIDY_S:
             return
         self._tidied_s = now_s
-        for path in self._folder.tidy(self._running):
+        for path in self._folder.tidy(self._running, by_size=self._is_room_known):
             _log.info("recording %s is deleted, to keep within what may be kept", path)
 
     def _take(self, block: "LiveBlock") -> None:
@@ -217,6 +224,7 @@ class UnattendedLog:
     def _begin(self, path: Path) -> None:
         """Describe a new recording; one that has lost what is logged is recorded all the same."""
         self._described = path
+        self._check_room(path)
         try:
             self._describe(path)
         except LedgerError as error:
@@ -224,6 +232,18 @@ class UnattendedLog:
                 raise
             self._window = None
             _log.warning("%s: %s; recorded without line results", path, error)
+
+    def _check_room(self, path: Path) -> None:
+        """Refuse too little room at the first samples; a board that sends more later is recorded on."""
+        if self._settings.room is None:
+            return
+        try:
+            self._settings.room.check(path)
+        except LedgerError as error:
+            if self._channels is None:
+                raise
+            _log.warning("%s: %s", path, error)
+        self._is_room_known = True
 
     def _describe(self, path: Path) -> None:
         """Find the channels of a new recording; the stretch goes on where they are the same."""

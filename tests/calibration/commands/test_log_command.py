@@ -19,7 +19,7 @@ from wire_board import PtyLink, asked_board
 
 from calibration.desk.ledger import Ledger
 from calibration.desk.ledger_errors import LedgerError
-from calibration.desk.unattended import UnattendedLog
+from calibration.desk.unattended import LogSettings, UnattendedLog
 from calibration.rehearsal_script import session_steps
 from firmware_bridge.opening import open_recording
 from firmware_bridge.simulated.bench import SimulatedBench
@@ -74,9 +74,22 @@ def test_recordings_follow_one_another_without_a_lost_sample(board, tmp_path, ca
     assert abs(entries[-1].unix_s - time.time()) < 30
 
 
+# A frame has 36 + 50·2·2 + 4 = 240 bytes, 40 a second; two of 2 s are 38.4 kB beside two headers.
 @pytest.mark.parametrize(
     ("more", "told"),
     [
+        (
+            ["--keep-bytes=30kB", "--rotate-every=2s"],
+            "--keep-bytes must hold two recordings of --rotate-every 2 s: 39 kB at the board's 9.6 kB/s, got 30 kB",
+        ),
+        (
+            ["--keep-bytes=500kB", "--every=60s"],
+            "--keep-bytes must hold two recordings of --every 60 s: ",
+        ),
+        (
+            ["--keep-bytes=5kB", "--rotate-bytes=2kB"],
+            "--keep-bytes must hold two recordings of 1 s: ",
+        ),
         (["--channel=nosuch"], "no channel 'nosuch'; the board has "),
         (["--line=3kHz"], "--line must be below half the board's rate, 1000 Hz, got 3000 Hz"),
     ],
@@ -98,6 +111,7 @@ def test_a_board_that_comes_back_with_other_channels_is_recorded_on(tmp_path, ca
     """Later the channels are the board's matter: results stop, the recording does not."""
     log = UnattendedLog.__new__(UnattendedLog)
     log._channels, log._window, log._described = object(), object(), None
+    log._settings = LogSettings("port")
 
     def describe(_path):
         raise LedgerError("no channel 'pd'; the board has 'a'")

@@ -10,6 +10,7 @@ import firmware_bridge.recorder
 from calibration.desk import unattended
 from calibration.desk.ledger_errors import LedgerError
 from calibration.desk.log_folder import LogFolder, Retention
+from calibration.desk.log_room import LeastRoom
 from calibration.desk.logged_channels import ChannelChoice, LoggedChannels
 from calibration.desk.unattended import LogSettings, UnattendedLog
 from firmware_bridge.announcement import Announcement, ChannelInfo
@@ -97,6 +98,54 @@ def test_stretches_go_on_over_rotations_and_begin_anew_with_other_channels(monke
     assert [channels.unit for _, channels in lines.found] == ["V", "V", "V", "mV"]
     for number, (stretch, _) in enumerate(lines.found[:3]):
         assert np.array_equal(stretch.values[:, 0], np.arange(400.0) + 400 * number)
+
+
+@pytest.fixture
+def kept(tmp_path):
+    """Three recordings of another day, 3 kB, of which 2 kB may be kept."""
+    for hour in range(3):
+        (tmp_path / f"bench-20260101T{hour:02}0000Z.mfr").write_bytes(bytes(1000))
+    return LogFolder(tmp_path / "bench", Retention(keep_bytes=2000))
+
+
+def test_nothing_is_deleted_before_the_room_for_two_recordings_is_known(
+    monkeypatch, kept, tmp_path
+):
+    """1000 lines a second of a channel of 2 bytes, five a frame of 56 bytes: 64 in the file."""
+
+    def record(_port, path, *, on_block, progress, **_options):
+        progress(None)
+        recording(path, ChannelInfo("pd", "V"))
+        on_block(LiveBlock(0, np.zeros((5, 1))))
+
+    monkeypatch.setattr(firmware_bridge.recorder, "record", record)
+    settings = LogSettings("port", room=LeastRoom(2000, 1.0, "--rotate-every"))
+    log = UnattendedLog(settings, kept, Lines())
+    with pytest.raises(
+        LedgerError, match=r"two recordings of --rotate-every 1 s: 25\.\d+ kB at the"
+    ):
+        log.run(threading.Event())
+    assert len(list(tmp_path.glob("*.mfr"))) == 3
+
+
+def test_a_full_disk_is_made_room_on_whatever_the_board_sends(failing, kept, tmp_path):
+    _, failures = failing
+    failures.append(DeviceFailedError(FULL))
+    settings = LogSettings("port", reconnect=True, room=LeastRoom(2000))
+    UnattendedLog(settings, kept, Lines()).run(threading.Event())
+    assert len(list(tmp_path.glob("*.mfr"))) == 2
+
+
+def test_a_board_that_sends_more_later_is_recorded_on(tmp_path, caplog):
+    slow = recording(tmp_path / "a.mfr", ChannelInfo("pd", "V"), rate_hz=1.0)
+    fast = recording(tmp_path / "b.mfr", ChannelInfo("pd", "V"), rate_hz=10_000.0)
+    settings = LogSettings("port", room=LeastRoom(200_000, 10.0, "--every"))
+    log = UnattendedLog(settings, LogFolder(tmp_path / "x", Retention(200_000)), Lines())
+    log._check_room(slow)  # a frame of 5 samples each half second at least: 128 bytes a second
+    log._channels = LoggedChannels.of_recording(slow, ChannelChoice())
+    with caplog.at_level("WARNING"):
+        log._check_room(fast)
+    assert "b.mfr: --keep-bytes must hold two recordings of --every 10 s: " in caplog.text
 
 
 def test_channels_are_found_by_their_usual_or_given_names(tmp_path):

@@ -32,7 +32,7 @@ th, td { text-align: left; padding: .22em .6em .22em 0; border-bottom: 1px solid
 td:not(:first-child):not(:last-child) { white-space: nowrap; }
 .long td:last-child { overflow-wrap: anywhere; }
 th { border-bottom: 1.5px solid #111; font-weight: 600; }
-tr, figure { break-inside: avoid; } thead { display: table-header-group; }
+tr, figure { break-inside: avoid; } tbody tr:nth-child(-n+2) { break-after: avoid; } thead { display: table-header-group; }
 figure { margin: .6em 0 1em; } figure img { width: 100%; height: auto; }
 figcaption { font-size: .88em; color: #333; }
 p { margin: .4em 0; } ul { margin: .3em 0 .8em; padding-left: 1.2em; } li { margin: .15em 0; }

@@ -135,7 +135,7 @@ def _response(calibration: Calibration) -> Iterator[tuple[Any, str]]:
         "Response of the actuator: magnitude and phase with their expanded uncertainties.",
     )
     if calibration.response is not None:
-        figure = _figure(2.6)
+        figure = _figure(2.2)
         draw_residuals(figure.add_subplot(), calibration.actuator, calibration.response)
         yield (
             figure,

@@ -7,15 +7,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
+from calibration.working_phase import block_sums
 from metro.kernel.bessel import bessels
 
-__all__ = ["Pilot", "WorkingPhases", "find_pilot", "pilot_angle", "seen_pilot", "working_phases"]
+__all__ = ["Pilot", "find_pilot", "pilot_block", "pilot_frequency", "seen_pilot"]
 
 FloatArray = NDArray[np.float64]
 
 _FEWEST = 16
 _LEAST_DEPTH = 0.03
 _DEEPEST = 2.3  # J0 and J1 both well away from zero below that
+_CLOCK = 0.02  # relative: boards on an RC oscillator are 1 % off
+_COHERENT = 0.5  # of the blocks: by chance seldom more than (ln n/n)^½ of n blocks turn together
+_SEARCHED = 4.0  # periods of the pilot in a block while its frequency is looked for
 
 
 @dataclass(frozen=True)
@@ -25,13 +29,11 @@ class Pilot:
     Attributes
     ----------
     frequency_hz : float
-        As given [Hz].
+        In the board's time [Hz].
     depth_rad : float
         Depth [rad].
     phase_rad : float
         Phase of its motion at t = 0 [rad]; to half a turn, the sign, it is set from outside.
-    block : int
-        Samples in a block.
     reasons : list of str
         Why it must not be trusted.
     """
@@ -39,146 +41,39 @@ class Pilot:
     frequency_hz: float
     depth_rad: float
     phase_rad: float
-    block: int
     reasons: list[str] = field(default_factory=list)
 
 
-@dataclass(frozen=True)
-class WorkingPhases:
-    """Slow phase in blocks that overlap by half.
+def pilot_block(rate_hz: float, pilot_hz: float, count: int, periods: float) -> int:
+    """Return how many samples a block of so many periods has.
 
-    Attributes
+    Parameters
     ----------
-    middle : ndarray, shape (k,)
-        Middles of the blocks [samples].
-    phase_rad : ndarray, shape (k,)
-        Phase over the expected one [rad], unwrapped.
-    size : ndarray, shape (k,)
-        Size of (cos φ, sin φ) found; 1 where the extremes hold and nothing moves fast.
-    length : int
-        Samples in a block.
+    rate_hz : float
+        Sample rate [Hz].
+    pilot_hz : float
+        The line [Hz].
+    count : int
+        Samples of the record.
+    periods : float
+        Of the pilot in a block.
+
+    Returns
+    -------
+    int
+        Even, 16 and more.
+
+    Raises
+    ------
+    CalibrationError
+        If the record is shorter than two blocks.
     """
-
-    middle: FloatArray
-    phase_rad: FloatArray
-    size: FloatArray
-    length: int
-
-    def course(self, count: int) -> FloatArray:
-        """Return the slow phase at each sample.
-
-        Parameters
-        ----------
-        count : int
-            Samples.
-
-        Returns
-        -------
-        ndarray, shape (n,)
-            Phase [rad].
-        """
-        return np.interp(np.arange(count), self.middle, self.phase_rad)
-
-    def lost(self, count: int, weakest: float) -> NDArray[np.bool_]:
-        """Return the samples in whose blocks the pilot shows too little.
-
-        Parameters
-        ----------
-        count : int
-            Samples.
-        weakest : float
-            Least size.
-
-        Returns
-        -------
-        ndarray of bool, shape (n,)
-            True where the phase is lost.
-        """
-        size = np.interp(np.arange(count), self.middle, np.minimum(self.size, 2.0))
-        return np.asarray((size < weakest) | (size > 1.6))
-
-
-def _block(rate_hz: float, pilot_hz: float, count: int, periods: float) -> int:
     half = max(round(0.5 * periods * rate_hz / pilot_hz), _FEWEST // 2)
     if 4 * half > count:
         raise CalibrationError(
             f"a pilot at {pilot_hz:g} Hz needs {4 * half} samples and more, got {count}"
         )
     return 2 * half
-
-
-def _sums(parts: FloatArray, length: int) -> FloatArray:
-    """Return the sums over blocks that overlap by half, last axis first cut to whole half blocks."""
-    half = length // 2
-    starts = np.arange(0, parts.shape[-1] - half + 1, half)
-    single = np.add.reduceat(parts[..., : starts[-1] + half], starts, axis=-1)
-    return np.asarray(single[..., 1:] + single[..., :-1])
-
-
-def _middles(count: int, length: int) -> FloatArray:
-    half = length // 2
-    blocks = (count // half) - 1
-    return half * np.arange(1, blocks + 1, dtype=float) - 0.5
-
-
-def pilot_angle(pilot: Pilot, count: int, rate_hz: float, start_index: int) -> FloatArray:
-    """Return the pilot's own motion.
-
-    Parameters
-    ----------
-    pilot : Pilot
-        As found.
-    count : int
-        Samples.
-    rate_hz : float
-        Sample rate [Hz].
-    start_index : int
-        Number of the first sample counted from the recording's first, where t = 0.
-
-    Returns
-    -------
-    ndarray, shape (n,)
-        Phase [rad].
-    """
-    time = (start_index + np.arange(count)) / rate_hz
-    turned = 2.0 * np.pi * pilot.frequency_hz * time + pilot.phase_rad
-    return np.asarray(pilot.depth_rad * np.cos(turned))
-
-
-def working_phases(cosine: FloatArray, expected: FloatArray, pilot: Pilot) -> WorkingPhases:
-    """Return how far the phase is off an expected one, block by block.
-
-    Parameters
-    ----------
-    cosine : ndarray, shape (n,)
-        The record between −1 and 1; NaN where samples are missing.
-    expected : ndarray, shape (n,)
-        Expected phase, the pilot's motion included [rad].
-    pilot : Pilot
-        For the length of a block.
-
-    Returns
-    -------
-    WorkingPhases
-        From least squares of cos(expected + δ) in each block: all harmonics of the pilot serve.
-    """
-    good = np.isfinite(cosine)
-    record = np.where(good, cosine, 0.0)
-    one, two = np.where(good, np.cos(expected), 0.0), np.where(good, -np.sin(expected), 0.0)
-    parts = np.stack([one * one, one * two, two * two, one * record, two * record])
-    a, b, d, u, v = _sums(parts, pilot.block)
-    bottom = a * d - b * b
-    usable = bottom > 1e-6 * np.maximum(a + d, 1e-12) ** 2
-    safe = np.where(usable, bottom, 1.0)
-    c = np.where(usable, (d * u - b * v) / safe, 0.0)
-    s = np.where(usable, (a * v - b * u) / safe, 0.0)
-    middle = _middles(len(cosine), pilot.block)
-    size = np.hypot(c, s)
-    kept = size > 0.2
-    if np.count_nonzero(kept) < 2:
-        raise CalibrationError(f"the pilot at {pilot.frequency_hz:g} Hz shows in no two blocks")
-    phase = np.interp(middle, middle[kept], np.unwrap(np.arctan2(s[kept], c[kept])))
-    return WorkingPhases(middle, phase, size, pilot.block)
 
 
 def _harmonics(
@@ -192,7 +87,7 @@ def _harmonics(
     record = np.where(good, cosine, 0.0)
     pairs = [(i, j) for i in range(3) for j in range(i, 3)]
     parts = np.stack([columns[i] * columns[j] for i, j in pairs] + [c * record for c in columns])
-    sums = _sums(parts, length)
+    sums = block_sums(parts, length)
     matrix = np.empty((sums.shape[1], 3, 3))
     for k, (i, j) in enumerate(pairs):
         matrix[:, i, j] = matrix[:, j, i] = sums[k]
@@ -215,13 +110,55 @@ def _depth(mean: FloatArray, first: FloatArray) -> float:
     return float(grid[int(np.argmin(miss))])
 
 
+def pilot_frequency(
+    cosine: FloatArray, rate_hz: float, pilot_hz: float, start_index: int = 0
+) -> float:
+    """Return the pilot's frequency in the board's time, which is not the generator's.
+
+    Parameters
+    ----------
+    cosine : ndarray, shape (n,)
+        The record between −1 and 1; NaN where samples are missing.
+    rate_hz : float
+        Sample rate [Hz].
+    pilot_hz : float
+        As the generator has it [Hz].
+    start_index : int, optional
+        Number of the first sample.
+
+    Returns
+    -------
+    float
+        Frequency [Hz], within 2 %: where the squares of the first harmonics, free of the sign that
+        changes at every extreme, turn at one rate; as given where they do not.
+    """
+    # differences over half a period double the pilot and leave next to nothing of slow fringes, whose
+    # leakage would show at the blocks' own rate
+    half = max(1, round(0.5 * rate_hz / pilot_hz))
+    bare = cosine[2 * half :] - 2.0 * cosine[half:-half] + cosine[: -2 * half]
+    length = pilot_block(rate_hz, pilot_hz, len(bare), _SEARCHED)
+    _, first = _harmonics(bare, rate_hz, pilot_hz, start_index, length)
+    size = 8 * 2 ** math.ceil(math.log2(len(first)))
+    power = np.abs(np.fft.fft(first**2, size))
+    block_hz = rate_hz / (length // 2)
+    turning_hz = np.fft.fftfreq(size, 1.0 / block_hz)
+    power[np.abs(turning_hz) > 2.0 * _CLOCK * pilot_hz] = 0.0
+    top = int(np.argmax(power))
+    if power[top] < _COHERENT * float(np.sum(np.abs(first) ** 2)):
+        return pilot_hz
+    left, middle, right = (float(power[(top + step) % size]) for step in (-1, 0, 1))
+    curve = left - 2.0 * middle + right
+    shift = 0.5 * (left - right) / curve if curve < 0.0 and min(left, right) > 0.0 else 0.0
+    return pilot_hz + 0.5 * float(turning_hz[top] + shift * block_hz / size)
+
+
 def find_pilot(
     cosine: FloatArray,
     rate_hz: float,
     pilot_hz: float,
+    length: int,
     start_index: int = 0,
     phase_rad: float | None = None,
-    periods: float = 4.0,
 ) -> Pilot:
     """Find depth and phase of a pilot line in a record that runs through its fringes.
 
@@ -232,25 +169,19 @@ def find_pilot(
     rate_hz : float
         Sample rate [Hz].
     pilot_hz : float
-        The line [Hz].
+        The line in the board's time [Hz].
+    length : int
+        Samples in a block; blocks overlap by half.
     start_index : int, optional
         Number of the first sample counted from the recording's first, where t = 0.
     phase_rad : float, optional
         Phase of its motion to half a turn; sets the sign.
-    periods : float, optional
-        Of the pilot in a block; blocks overlap by half.
 
     Returns
     -------
     Pilot
         Depth and phase.
-
-    Raises
-    ------
-    CalibrationError
-        If the record is too short.
     """
-    length = _block(rate_hz, pilot_hz, len(cosine), periods)
     mean, first = _harmonics(cosine, rate_hz, pilot_hz, start_index, length)
     # −2·sin φ·J1·e^{iψ}: the sign of sin φ drops out of the square
     phase = 0.5 * float(np.angle(np.sum(first**2)))
@@ -267,7 +198,7 @@ def find_pilot(
         )
     if depth > 0.95 * _DEEPEST:
         reasons.append(f"the pilot at {pilot_hz:g} Hz is too deep: {_DEEPEST:g} rad is the limit")
-    return Pilot(pilot_hz, depth, math.remainder(phase, 2.0 * math.pi), length, reasons)
+    return Pilot(pilot_hz, depth, math.remainder(phase, 2.0 * math.pi), reasons)
 
 
 def seen_pilot(moved: FloatArray, rate_hz: float, pilot: Pilot, start_index: int = 0) -> Pilot:

@@ -6,9 +6,9 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from calibration.errors import CalibrationError
 from calibration.found_extremes import Level
 from calibration.lines import fit_lines_si
+from calibration.pilot_drive import driven_pilot
 from calibration.route import in_metres
 from calibration.ruler import Ruler
 from calibration.tracking import TrackedPhase, track_phase
@@ -170,22 +170,16 @@ def read_tracked(
     CalibrationError
         If the extremes, the pilot or a line break a rule.
     """
-    phase = None
+    phase, seen_hz = None, pilot_hz
     if drive is not None:
-        driven = fit_lines_si(
-            drive.values, drive.rate_hz, [pilot_hz], start_index=drive.start_index
-        ).lines[0]
-        if not driven.is_trustworthy:
-            raise CalibrationError(
-                f"the drive shows no pilot at {pilot_hz:g} Hz: {'; '.join(driven.distrust_reasons)}"
-            )
-        phase = float(driven.phase.magnitude) + (np.pi if polarity < 0 else 0.0)
+        seen_hz, phase = driven_pilot(drive, pilot_hz)
+        phase += np.pi if polarity < 0 else 0.0
     tracked = track_phase(
         trace.values,
         trace.rate_hz,
         low.value,
         high.value,
-        pilot_hz,
+        seen_hz,
         pilot_phase_rad=phase,
         start_index=trace.start_index,
     )

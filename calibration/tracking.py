@@ -6,26 +6,19 @@ its odd ones as sin φ.
 """
 
 import math
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
-from calibration.pilot import Pilot, find_pilot, pilot_angle, seen_pilot, working_phases
-from calibration.smoother import floor_std, noise_std
+from calibration.pilot import Pilot
+from calibration.tracked_course import TrackedCourse
 from calibration.working_point import EDGE
 
-__all__ = ["TrackedPhase", "track_phase"]
+__all__ = ["TrackedPhase", "track_phase", "tracking_assumptions", "tracking_reasons"]
 
 FloatArray = NDArray[np.float64]
-
-_ROUNDS = 3
-_PERIODS = (4.0, 12.0, 36.0)  # of the pilot in a block
-_MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
-_SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
-_LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
-_WEAKEST = 0.5  # size of (cos φ, sin φ) that a block must show; 1 where nothing moves fast
 
 
 @dataclass(frozen=True)
@@ -135,112 +128,39 @@ def track_phase(
         raise CalibrationError(
             f"pilot_hz must be above 0 and below 0.45 of the rate of {rate_hz:g} Hz, got {pilot_hz:g}"
         )
-    return _with_pilot(cosine, rate_hz, pilot_hz, pilot_phase_rad, start_index)
+    start_s = start_index / rate_hz
+    phase = None if pilot_phase_rad is None else pilot_phase_rad + 2 * math.pi * pilot_hz * start_s
+    course = TrackedCourse(lambda k, n: cosine[k:n], len(cosine), rate_hz, pilot_hz, phase)
+    whole, pilot = course.read(0, len(cosine)), course.pilot.pilot(start_s)
+    return TrackedPhase(
+        whole.phase_rad,
+        whole.inverted,
+        whole.carried,
+        pilot,
+        tracking_assumptions(course, phase),
+        tracking_reasons(course),
+    )
 
 
-def _branches(cosine: FloatArray, expected: FloatArray, noise: float) -> FloatArray:
-    """Return the phase nearest to the expected one whose cosine is the record's.
+def tracking_assumptions(course: TrackedCourse, phase_rad: float | None) -> list[str]:
+    """Return what sign and whole fringes of a tracked record rest on.
 
-    The bend of arccos makes noise pull the phase towards the extremes by cos φ·u²/(2 sin³ φ): taken
-    off to the second order.
+    Parameters
+    ----------
+    course : TrackedCourse
+        As tracked.
+    phase_rad : float or None
+        Of the pilot's motion at sample 0, as its drive has it; None where no drive was recorded.
+
+    Returns
+    -------
+    list of str
+        Sentences.
     """
-    held = np.clip(cosine, -1.0, 1.0)
-    sine = np.maximum(np.sqrt(1.0 - np.cos(expected) ** 2), 0.3)
-    angle = np.arccos(held) + held * noise**2 / (2.0 * sine**3)
-    turn = 2.0 * np.pi
-    up = angle + turn * np.round((expected - angle) / turn)
-    down = -angle + turn * np.round((expected + angle) / turn)
-    return np.where(np.abs(up - expected) <= np.abs(down - expected), up, down)
-
-
-def _noise(cosine: FloatArray) -> float:
-    floor = floor_std(cosine)
-    return min(noise_std(cosine), floor) if floor else noise_std(cosine)
-
-
-def _with_pilot(
-    cosine: FloatArray,
-    rate_hz: float,
-    pilot_hz: float,
-    pilot_phase_rad: float | None,
-    start_index: int,
-) -> TrackedPhase:
-    """Track with a pilot: slow course from blocks, then the branch of each sample."""
-    tries = []
-    for periods in _PERIODS:
-        try:
-            tries.append(_tried(cosine, rate_hz, pilot_hz, pilot_phase_rad, start_index, periods))
-        except CalibrationError:
-            if not tries:
-                raise
-    return max(tries, key=lambda one: (np.count_nonzero(one.known), np.count_nonzero(one.inverted)))
-
-
-def _tried(
-    cosine: FloatArray,
-    rate_hz: float,
-    pilot_hz: float,
-    pilot_phase_rad: float | None,
-    start_index: int,
-    periods: float,
-) -> TrackedPhase:
-    """Track with blocks of so many periods of the pilot: short for fast drift, long for noise."""
-    pilot = find_pilot(cosine, rate_hz, pilot_hz, start_index, pilot_phase_rad, periods)
-    first, course = _followed(cosine, rate_hz, pilot, start_index)
-    pilot = seen_pilot(first.for_lines - course, rate_hz, pilot, start_index)
-    got, _ = _followed(cosine, rate_hz, pilot, start_index)
-    return replace(got, assumptions=_assumptions(pilot, pilot_phase_rad))
-
-
-def _followed(
-    cosine: FloatArray, rate_hz: float, pilot: Pilot, start_index: int
-) -> tuple[TrackedPhase, FloatArray]:
-    """Follow a known pilot; return the slow course as well."""
-    swing = pilot_angle(pilot, len(cosine), rate_hz, start_index)
-    course = np.zeros(len(cosine))
-    for _ in range(_ROUNDS):
-        blocks = working_phases(cosine, course + swing, pilot)
-        course = course + blocks.course(len(cosine))
-    expected = course + swing
-    lost = blocks.lost(len(cosine), _WEAKEST) | _torn(course, blocks.length)
-    present = np.isfinite(cosine)
-    phase = _branches(cosine, expected, _noise(cosine))
-    # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it
-    # would pull the phase away from the extremes
-    clear = np.abs(phase - expected) < np.abs(np.sin(expected))
-    inverted = present & ~lost & _inside(course, expected, pilot) & (np.abs(cosine) < 1.0) & clear
-    carried = present & ~lost & ~inverted
-    phase = np.where(inverted, phase, np.where(carried, expected, np.nan))
-    reasons = _reasons(pilot, present, lost, inverted)
-    return TrackedPhase(phase, inverted, carried, pilot, [], reasons), course
-
-
-def _inside(course: FloatArray, expected: FloatArray, pilot: Pilot) -> NDArray[np.bool_]:
-    """Return the samples that lie clear of the extremes.
-
-    With a shallow pilot whole periods are kept or left out, so that what is left out does not go with
-    the pilot; a deep one leaves no whole period.
-    """
-    if pilot.depth_rad < _SHALLOW:
-        return np.asarray(np.abs(np.sin(course)) > math.sin(_MARGIN + pilot.depth_rad))
-    return np.asarray(np.abs(np.sin(expected)) > math.sin(_MARGIN))
-
-
-def _torn(course: FloatArray, length: int) -> NDArray[np.bool_]:
-    """Return where the slow course moves too far within half a block."""
-    half = max(length // 2, 1)
-    moved = np.zeros(len(course))
-    if len(course) > half:
-        moved[half:] = np.abs(course[half:] - course[:-half])
-        moved[:half] = moved[half]
-    return np.asarray(moved > _LARGEST_STEP)
-
-
-def _assumptions(pilot: Pilot, pilot_phase_rad: float | None) -> list[str]:
     whole = "whole fringes: the slow phase moves by less than 1.6 rad within half a block, two periods of the pilot and more"
-    if pilot_phase_rad is None:
+    if phase_rad is None:
         return [whole, "the sign is not known: phase and −phase fit alike"]
-    off = abs(math.remainder(pilot.phase_rad - pilot_phase_rad, 2.0 * math.pi))
+    off = abs(math.remainder(course.pilot.knots[0].phase_rad - phase_rad, 2.0 * math.pi))
     return [
         whole,
         (
@@ -250,22 +170,33 @@ def _assumptions(pilot: Pilot, pilot_phase_rad: float | None) -> list[str]:
     ]
 
 
-def _reasons(
-    pilot: Pilot,
-    present: NDArray[np.bool_],
-    lost: NDArray[np.bool_],
-    inverted: NDArray[np.bool_],
-) -> list[str]:
-    reasons = list(pilot.reasons)
-    there = int(np.count_nonzero(present))
-    gone = int(np.count_nonzero(present & lost))
-    if gone:
-        first = int(np.flatnonzero(present & lost)[0])
+def tracking_reasons(course: TrackedCourse) -> list[str]:
+    """Return why a tracked phase must not be trusted.
+
+    Parameters
+    ----------
+    course : TrackedCourse
+        As tracked.
+
+    Returns
+    -------
+    list of str
+        Empty where nothing was found.
+    """
+    tally, reasons = course.tally, course.pilot.pilot(0.0).reasons
+    if tally.lost:
         reasons.append(
-            f"the phase is lost for {gone} of {there} samples, first at sample {first}: it moved too fast "
-            "for the pilot; whole fringes may be missing after that"
+            f"the phase is lost for {tally.lost} of {tally.present} samples, first at sample "
+            f"{tally.first_lost}: it moved too fast for the pilot; whole fringes may be missing after that"
         )
-    share = np.count_nonzero(inverted) / max(there, 1)
+    jumps = tally.jumps(course.length)
+    if jumps:
+        first, count = jumps[0]
+        reasons.append(
+            f"whole fringes may be missing after {len(jumps)} stretches without a phase, the first of "
+            f"{count} samples from sample {first}: at the drift's usual speed a fringe is not far off"
+        )
+    share = tally.inverted / max(tally.present, 1)
     if share < 0.2:
         reasons.append(f"only {share:.0%} of the samples lie where the fringe can be inverted")
     return reasons

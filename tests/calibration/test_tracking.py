@@ -5,6 +5,7 @@ import pytest
 
 from calibration.errors import CalibrationError
 from calibration.lines import fit_lines_si
+from calibration.tracked_course import TrackedCourse
 from calibration.tracking import track_phase
 
 RATE_HZ, COUNT, PILOT_HZ = 4000.0, 60_000, 401.3
@@ -29,7 +30,7 @@ def volts(phase, noise=0.005, seed=1):
 def test_phase_is_carried_over_the_extremes(speed, depth):
     phase = moved(speed, depth)
     record = volts(phase)
-    record[5000:5100] = np.nan
+    record[5000:5050] = np.nan
     got = track_phase(record, RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
     error = got.phase_rad - phase
     error -= 2 * np.pi * np.round(np.nanmedian(error) / (2 * np.pi))
@@ -101,3 +102,58 @@ def test_a_pilot_that_is_not_there_is_named():
 def test_wrong_input(arguments, words):
     with pytest.raises(CalibrationError, match=words):
         track_phase(np.ones(1000), *arguments)
+
+
+@pytest.mark.parametrize("parts_per_million", [-10_000, -100, 30])
+def test_a_board_whose_clock_is_off_is_followed(parts_per_million):
+    """Boards on an RC oscillator are 1 % off: the pilot turns by a hundred fringes in a minute."""
+    time = TIME * (1 + 1e-6 * parts_per_million)
+    phase = 0.4 + 3.0 * time + 0.3 * np.cos(2 * np.pi * PILOT_HZ * time + 0.6)
+    got = track_phase(volts(phase), RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
+    assert got.reasons == []
+    assert got.known.all()
+    assert got.pilot.frequency_hz == pytest.approx(PILOT_HZ * (1 + 1e-6 * parts_per_million), 3e-6)
+    assert got.pilot.depth_rad == pytest.approx(0.3, rel=0.01)
+    assert np.sqrt(np.mean((got.phase_rad - phase) ** 2)) < 0.01
+
+
+def tracked_in_pieces(record, piece):
+    cosine = (record - 2.0) / 1.5
+    course = TrackedCourse(lambda k, n: cosine[k:n], COUNT, RATE_HZ, PILOT_HZ, 0.6, piece, 40)
+    return course, course.read(0, COUNT)
+
+
+@pytest.mark.parametrize("speed", [3.0, -60.0])
+def test_pieces_make_what_the_whole_makes(speed):
+    record = volts(moved(speed))
+    record[20_000:20_007] = np.nan
+    one, whole = tracked_in_pieces(record, COUNT)
+    many, pieces = tracked_in_pieces(record, 5000)
+    assert (one.pieces, many.pieces) == (1, 12)
+    same = whole.inverted & pieces.inverted
+    assert same.sum() > 0.999 * max(whole.inverted.sum(), pieces.inverted.sum())
+    np.testing.assert_allclose(pieces.phase_rad[same], whole.phase_rad[same], atol=1e-4)
+    both = whole.carried & pieces.carried
+    np.testing.assert_allclose(pieces.phase_rad[both], whole.phase_rad[both], atol=0.02)
+    assert (whole.known == pieces.known).mean() > 0.9999
+    for first, last in ((0, 10), (4990, 5010), (4960, 17_000), (59_990, 60_000)):
+        part = many.read(first, last)
+        np.testing.assert_array_equal(part.phase_rad, pieces.phase_rad[first:last])
+        np.testing.assert_array_equal(part.carried, pieces.carried[first:last])
+
+
+def test_with_one_pilot_pieces_are_the_whole_to_rounding():
+    record = volts(moved(8.0))
+    (one, whole), (many, _) = (tracked_in_pieces(record, n) for n in (COUNT, 5000))
+    many.pilot, many.noise = one.pilot, one.noise
+    many.piece.cache_clear()
+    pieces = many.read(0, COUNT)
+    np.testing.assert_array_equal(whole.inverted, pieces.inverted)
+    np.testing.assert_allclose(pieces.phase_rad, whole.phase_rad, atol=1e-9)
+
+
+def test_a_gap_longer_than_a_fringe_takes_is_told():
+    record = volts(moved(30.0))
+    record[5000:5800] = np.nan  # 0.2 s: a fringe
+    got = track_phase(record, RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
+    assert any("after 1 stretches without a phase, the first of 8" in one for one in got.reasons)

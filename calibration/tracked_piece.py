@@ -1,0 +1,151 @@
+"""A piece of a free-running record followed: its slow course, and each sample's branch of the fringe."""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibration.working_phase import working_phases
+
+__all__ = ["TrackedPiece", "follow"]
+
+FloatArray = NDArray[np.float64]
+
+_ROUNDS = 3
+_MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+_SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
+_LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
+_WEAKEST = 0.5  # size of (cos φ, sin φ) that a block must show; 1 where nothing moves fast
+
+
+@dataclass(frozen=True)
+class TrackedPiece:
+    """Samples of a record, followed.
+
+    Attributes
+    ----------
+    phase_rad : ndarray, shape (n,)
+        Phase [rad]; NaN where it is not known.
+    inverted, carried, lost : ndarray of bool, shape (n,)
+        Samples inverted between the extremes, carried on at one, and present but lost.
+    course_rad : ndarray, shape (n,)
+        The slow phase [rad].
+    expected_rad : ndarray, shape (n,)
+        The slow phase and the pilot [rad].
+    """
+
+    phase_rad: FloatArray
+    inverted: NDArray[np.bool_]
+    carried: NDArray[np.bool_]
+    lost: NDArray[np.bool_]
+    course_rad: FloatArray
+    expected_rad: FloatArray
+
+    @property
+    def known(self) -> NDArray[np.bool_]:
+        """Samples whose phase is known, inverted or carried; shape (n,)."""
+        return self.inverted | self.carried
+
+    def part(self, first: int, last: int, turns: int = 0) -> "TrackedPiece":
+        """Return a stretch of it, moved by whole fringes.
+
+        Parameters
+        ----------
+        first, last : int
+            Samples of the piece.
+        turns : int, optional
+            Whole fringes to add.
+
+        Returns
+        -------
+        TrackedPiece
+            The stretch.
+        """
+        own, moved = slice(first, last), 2.0 * np.pi * turns
+        return TrackedPiece(
+            self.phase_rad[own] + moved,
+            self.inverted[own],
+            self.carried[own],
+            self.lost[own],
+            self.course_rad[own] + moved,
+            self.expected_rad[own] + moved,
+        )
+
+
+def follow(
+    cosine: FloatArray, swing: FloatArray, depth_rad: float, length: int, noise: float
+) -> TrackedPiece:
+    """Follow a record whose fast motion is known: slow course from blocks, then each sample's branch.
+
+    Parameters
+    ----------
+    cosine : ndarray, shape (n,)
+        The record between −1 and 1; NaN where samples are missing; two blocks and more.
+    swing : ndarray, shape (n,)
+        The pilot's motion [rad].
+    depth_rad : float
+        Its depth [rad].
+    length : int
+        Samples in a block, even.
+    noise : float
+        Standard deviation of the record's noise.
+
+    Returns
+    -------
+    TrackedPiece
+        Its first block's phase lies within half a turn of zero.
+    """
+    count = len(cosine)
+    course = np.zeros(count)
+    for _ in range(_ROUNDS):
+        blocks = working_phases(cosine, course + swing, length)
+        course = course + blocks.course(count)
+    expected = course + swing
+    lost = blocks.lost(count, _WEAKEST) | _torn(course, length)
+    present = np.isfinite(cosine)
+    phase = _branches(cosine, expected, noise)
+    # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it
+    # would pull the phase away from the extremes
+    clear = np.abs(phase - expected) < np.abs(np.sin(expected))
+    inside = _inside(course, expected, depth_rad)
+    inverted = present & ~lost & inside & (np.abs(cosine) < 1.0) & clear
+    carried = present & ~lost & ~inverted
+    phase = np.where(inverted, phase, np.where(carried, expected, np.nan))
+    return TrackedPiece(phase, inverted, carried, present & lost, course, expected)
+
+
+def _branches(cosine: FloatArray, expected: FloatArray, noise: float) -> FloatArray:
+    """Return the phase nearest to the expected one whose cosine is the record's.
+
+    The bend of arccos makes noise pull the phase towards the extremes by cos φ·u²/(2 sin³ φ): taken
+    off to the second order.
+    """
+    held = np.clip(cosine, -1.0, 1.0)
+    sine = np.maximum(np.sqrt(1.0 - np.cos(expected) ** 2), 0.3)
+    angle = np.arccos(held) + held * noise**2 / (2.0 * sine**3)
+    turn = 2.0 * np.pi
+    up = angle + turn * np.round((expected - angle) / turn)
+    down = -angle + turn * np.round((expected + angle) / turn)
+    return np.where(np.abs(up - expected) <= np.abs(down - expected), up, down)
+
+
+def _inside(course: FloatArray, expected: FloatArray, depth_rad: float) -> NDArray[np.bool_]:
+    """Return the samples that lie clear of the extremes.
+
+    With a shallow pilot whole periods are kept or left out, so that what is left out does not go with
+    the pilot; a deep one leaves no whole period.
+    """
+    if depth_rad < _SHALLOW:
+        return np.asarray(np.abs(np.sin(course)) > math.sin(_MARGIN + depth_rad))
+    return np.asarray(np.abs(np.sin(expected)) > math.sin(_MARGIN))
+
+
+def _torn(course: FloatArray, length: int) -> NDArray[np.bool_]:
+    """Return where the slow course moves too far within half a block."""
+    half = max(length // 2, 1)
+    moved = np.zeros(len(course))
+    if len(course) > half:
+        moved[half:] = np.abs(course[half:] - course[:-half])
+        moved[:half] = moved[half]
+    return np.asarray(moved > _LARGEST_STEP)

@@ -1,11 +1,13 @@
 """The database of a ledger: opened, its schema made or checked, its transactions."""
 
 import contextlib
+import logging
 from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from calibration.desk.ledger_errors import LedgerError, LedgerFailedError
+from calibration.desk.sqlite_file import identity_of, sqlite_engine
 from calibration.desk.tables import VERSION, tables
 from metro.extras import require
 
@@ -14,8 +16,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Database"]
 
-_BUSY_S = 60.0  # how long a writer waits for the others before it gives up
-_SQLITE_BEGIN = b"SQLite format 3\0"
+_log = logging.getLogger(__name__)
+
 _LOCK = 0x6D66_6C64  # "mfld": any number, the same for everyone who makes a schema
 
 
@@ -24,7 +26,7 @@ class Database:
 
     Writers never lose an entry to one another: on SQLite each transaction takes the write lock when
     it begins and waits for it, readers go on meanwhile (write-ahead log), and a commit is on the disk
-    when it returns.
+    when it returns. A file that is gone by then, moved or deleted, is made anew in its place.
 
     Parameters
     ----------
@@ -52,6 +54,7 @@ class Database:
             self.name = str(self._engine.url.database)
         with self._failing_at_start():
             self._check_or_make(create=create)
+        self._identity = self._identified()
 
     @contextlib.contextmanager
     def writing(self) -> Iterator["Connection"]:
@@ -67,8 +70,14 @@ class Database:
         LedgerFailedError
             If the database fails; nothing of this transaction is kept then.
         """
-        with self._failing(), self._engine.begin() as connection:
-            yield connection
+        with self._failing():
+            while True:
+                with self._engine.begin() as connection:
+                    # Asked with the write lock, under which alone a ledger is deleted.
+                    if self._identified() == self._identity:
+                        yield connection
+                        return
+                self._renew()
 
     @contextlib.contextmanager
     def reading(self) -> Iterator["Connection"]:
@@ -93,11 +102,32 @@ class Database:
 
     def discard_if_new(self) -> None:
         """Close, and delete a file that this opening has made: nothing came of what it was for."""
-        self.close()
         if self._file is None or self._was_there:
+            self.close()
             return
-        for suffix in ("", "-wal", "-shm"):
-            self._file.with_name(self._file.name + suffix).unlink(missing_ok=True)
+        with self._failing(), self._engine.begin() as connection:
+            if self._identified() == self._identity and self._is_empty(connection):
+                with contextlib.suppress(PermissionError):  # of a system that keeps open files
+                    for suffix in ("", "-wal", "-shm"):
+                        self._file.with_name(self._file.name + suffix).unlink(missing_ok=True)
+        self.close()
+
+    def _identified(self) -> tuple[int, int] | None:
+        return None if self._file is None else identity_of(self._file)
+
+    def _renew(self) -> None:
+        """Make the ledger again where its file is gone or another one."""
+        _log.warning("the ledger %s is gone; a new one is made in its place", self.name)
+        self.close()
+        self._check_or_make(create=True)
+        self._identity = self._identified()
+
+    @staticmethod
+    def _is_empty(connection: "Connection") -> bool:
+        from sqlalchemy import select
+
+        held = (connection.execute(select(t.c.id).limit(1)) for t in tables().of_entries)
+        return all(rows.first() is None for rows in held)
 
     @contextlib.contextmanager
     def _failing(self) -> Iterator[None]:
@@ -154,7 +184,7 @@ def _engine(place: str, *, create: bool) -> "Engine":
     from sqlalchemy.exc import ArgumentError
 
     if "://" not in place:
-        return _sqlite(_checked_file(place, create=create))
+        return sqlite_engine(place, create=create)
     try:
         url: URL = make_url(place)
     except (ArgumentError, ValueError):
@@ -166,85 +196,6 @@ def _engine(place: str, *, create: bool) -> "Engine":
         )
     require("psycopg", "ledger", "a ledger in PostgreSQL")
     return create_engine(url.set(drivername="postgresql+psycopg"), pool_pre_ping=True)
-
-
-def _checked_file(place: str, *, create: bool) -> Path:
-    path = Path(place)
-    try:
-        if path.exists():
-            with path.open("rb") as file:
-                begin = file.read(len(_SQLITE_BEGIN))
-            if begin not in {b"", _SQLITE_BEGIN}:
-                raise LedgerError(f"{place} is no ledger: it is not an SQLite file")
-            if begin:
-                _check_own(path)
-        elif not create:
-            raise LedgerError(f"there is no ledger {place}; 'midfringe ledger add' makes one")
-        elif not path.parent.is_dir():
-            raise LedgerError(f"the ledger {place} cannot be made: no directory {path.parent}")
-    except OSError as error:
-        raise LedgerError(f"{place}: {(error.strerror or str(error)).lower()}") from None
-    return path
-
-
-def _check_own(path: Path) -> None:
-    """Refuse someone else's SQLite file before anything, the journal's mode included, is changed."""
-    import sqlite3
-
-    try:
-        with contextlib.closing(
-            sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, timeout=_BUSY_S)
-        ) as connection:
-            held = {name for (name,) in connection.execute("SELECT name FROM sqlite_master")}
-    except sqlite3.Error as error:
-        raise LedgerError(f"the ledger {path} cannot be opened: {error}") from None
-    if held and tables().schema.name not in held:
-        raise LedgerError(f"{path} is no ledger: it is an SQLite file of another program")
-
-
-def _sqlite(path: Path) -> "Engine":
-    from sqlalchemy import create_engine, event
-    from sqlalchemy.engine import URL
-
-    engine = create_engine(
-        URL.create("sqlite", database=str(path)), connect_args={"timeout": _BUSY_S}
-    )
-    event.listen(engine, "connect", _set_up)
-    event.listen(engine, "begin", _begin)
-    return engine
-
-
-def _set_up(connection: Any, _record: object) -> None:  # noqa: ANN401  # sqlite3's connection
-    connection.isolation_level = None  # transactions begin as `_begin` says, not as sqlite3 guesses
-    cursor = connection.cursor()
-    cursor.execute(f"PRAGMA busy_timeout={round(1000 * _BUSY_S)}")
-    cursor.execute("PRAGMA foreign_keys=ON")
-    cursor.execute("PRAGMA synchronous=FULL")
-    if cursor.execute("PRAGMA journal_mode").fetchone()[0] != "wal":
-        _set_wal(cursor)
-    cursor.close()
-
-
-def _set_wal(cursor: Any) -> None:  # noqa: ANN401  # sqlite3's cursor
-    """Change to the write-ahead log; where others are at it too the busy handler is not asked."""
-    import sqlite3
-    import time
-
-    begun_s = time.monotonic()
-    while True:
-        try:
-            cursor.execute("PRAGMA journal_mode=WAL")
-        except sqlite3.OperationalError as error:
-            if "locked" not in str(error) or time.monotonic() - begun_s > _BUSY_S:
-                raise
-            time.sleep(0.01)
-        else:
-            return
-
-
-def _begin(connection: "Connection") -> None:
-    is_reader = connection.get_execution_options().get("is_reader", False)
-    connection.exec_driver_sql("BEGIN" if is_reader else "BEGIN IMMEDIATE")
 
 
 def _reason(error: Any) -> str:  # noqa: ANN401  # SQLAlchemy's wrapper of the driver's error

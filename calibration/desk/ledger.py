@@ -189,7 +189,7 @@ class Ledger:
         """Return the names of the benches that have entries, in order."""
         from sqlalchemy import select, union
 
-        both = union(*(select(t.c.bench) for t in (tables().calibrations, tables().lines)))
+        both = union(*(select(t.c.bench) for t in tables().of_entries))
         with self._database.reading() as connection:
             return sorted(row[0] for row in connection.execute(both))
 
@@ -247,10 +247,7 @@ class Ledger:
 
     def discard_if_new(self) -> None:
         """Close; delete the file of a ledger that was made just now and is empty still."""
-        if self.benches():
-            self.close()
-        else:
-            self._database.discard_if_new()
+        self._database.discard_if_new()
 
     def __enter__(self) -> Self:
         return self

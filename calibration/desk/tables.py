@@ -39,6 +39,11 @@ class Tables:
     actuators: "Table"
     lines: "Table"
 
+    @property
+    def of_entries(self) -> tuple["Table", "Table"]:
+        """Those that say whether a ledger holds anything."""
+        return self.calibrations, self.lines
+
 
 @cache
 def tables() -> Tables:

@@ -21,7 +21,7 @@ def _lost_in_gaps(record: SweptRecord, got: Unfolded) -> list[str]:
     """Return how many gaps are too long for the phase to be carried over them."""
     if not len(record.gaps):
         return []
-    legs = np.concatenate([[0], got.turns, [len(record.values) - 1]])
+    legs = np.concatenate([[0], got.swings, [len(record.values) - 1]])
     before = np.searchsorted(legs, record.gaps[:, 0], side="right") - 1
     ends = record.gaps[:, 0] + record.gaps[:, 1]
     # the leg that holds a gap is stretched by it: its neighbours say how fast the fringes went
@@ -46,10 +46,10 @@ def _lost_in_gaps(record: SweptRecord, got: Unfolded) -> list[str]:
 
 def _too_fast(got: Unfolded) -> list[str]:
     """Return whether the fringes went by too fast for the sampling."""
-    if len(got.turns) < 3:
+    if len(got.swings) < 3:
         return []
-    over = min(4, len(got.turns) - 1)
-    speeds = 0.5 * over / (got.turns[over:] - got.turns[:-over])
+    over = min(4, len(got.swings) - 1)
+    speeds = 0.5 * over / (got.swings[over:] - got.swings[:-over])
     if float(speeds.max()) <= _FASTEST:
         return []
     return [
@@ -87,7 +87,7 @@ def _drive_jumps(got: Unfolded, drive: FloatArray | None) -> list[str]:
 
 def _short_swings(record: SweptRecord, envelope: Envelope, got: Unfolded) -> list[str]:
     """Return whether the record mostly swings over less than the span of a fringe."""
-    swing = np.abs(np.diff(envelope.cosine(record.values)[got.turns]))
+    swing = np.abs(np.diff(envelope.cosine(record.values)[got.swings]))
     if len(swing) < 6:
         return []
     share = float(swing[swing < 1.2].sum() / swing.sum())

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.envelope import running_median
+from calibration.half_fringes import half_fringe_samples
 from calibration.turning_points import turning_points
 from calibration.unfolding import Unfolded, slow_spots
 
@@ -93,11 +93,9 @@ def _touched(got: Unfolded) -> FloatArray:
 def _steps(got: Unfolded) -> FloatArray:
     """Return the phase step about each sample [rad], over several half fringes."""
     count = len(got.phase_rad)
-    if len(got.turns) < 3:
+    if len(got.swings) < 3:
         return np.zeros(count)
-    legs = running_median(np.diff(got.turns).astype(float), 5)
-    middles = 0.5 * (got.turns[1:] + got.turns[:-1])
-    return np.asarray(np.interp(np.arange(count), middles, math.pi / np.maximum(legs, 1.0)))
+    return math.pi / half_fringe_samples(got.swings, np.arange(count), count)
 
 
 def _low_tops(got: Unfolded) -> tuple[NDArray[np.int64], FloatArray]:
@@ -127,6 +125,27 @@ def _dips(got: Unfolded) -> tuple[NDArray[np.int64], FloatArray]:
     shallow = 1.0 - np.abs(level[turns])
     dips = (kind * level[turns] < 0.0) & (shallow < 2.0 * got.band)
     return turns[dips], np.arccos(1.0 - shallow[dips]) / (2.0 * math.pi)
+
+
+def _shaken(got: Unfolded, turns: NDArray[np.int64]) -> FloatArray:
+    """Return what is not known of turns of a mirror that shakes next to an extreme, in fringes.
+
+    Where the level comes close to it more than once, each time may have gone over it or not.
+    """
+    places = got.turns[got.passed]
+    off = np.arccos(np.abs(np.cos(got.phase_rad[places])))
+    out = np.zeros(len(turns))
+    if len(got.swings) < 3:
+        return out
+    after = np.clip(np.searchsorted(got.swings, turns), 1, len(got.swings) - 1)
+    first = np.searchsorted(places, got.swings[after - 1])
+    stop = np.searchsorted(places, got.swings[after], side="right")
+    for k, (a, b) in enumerate(zip(first.tolist(), stop.tolist(), strict=True)):
+        kind = np.cos(got.phase_rad[places[a:b]]) > 0.0
+        for side in (kind, ~kind):
+            if np.count_nonzero(side) > 1:
+                out[k] = max(out[k], float(off[a:b][side].max()) / (1.7 * math.pi))
+    return out
 
 
 def _seen(got: Unfolded) -> float:
@@ -176,8 +195,9 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
     hidden = math.acos(1.0 - min(2.0 * got.band, 1.0)) / (2.0 * math.pi)
     if drive is None:  # then a turn that far from an extreme is taken for going over it
         hidden = max(hidden, _HIDDEN)
-    u[1:-1] = np.hypot(u[1:-1], np.maximum(hidden, 0.5 * _steps(got)[turns] / (2.0 * math.pi)))
-    spots = slow_spots(got.turns, len(phase))
+    unseen = np.maximum(hidden, 0.5 * _steps(got)[turns] / (2.0 * math.pi))
+    u[1:-1] = np.hypot(u[1:-1], np.maximum(unseen, _shaken(got, turns)))
+    spots = slow_spots(got.swings, len(phase))
     out = []
     for k in range(len(ends) - 1):
         start, stop = int(ends[k]), int(ends[k + 1])
@@ -203,7 +223,7 @@ def cut_passes(got: Unfolded, first: int, drive: FloatArray | None) -> list[Pass
 
 def _fastest_of(got: Unfolded, start: int, stop: int) -> float:
     """Return the greatest fringes per sample between two samples, over four half fringes each."""
-    turns = got.turns[(got.turns >= start) & (got.turns <= stop)]
+    turns = got.swings[(got.swings >= start) & (got.swings <= stop)]
     if len(turns) < 2:
         span = abs(float(got.phase_rad[stop] - got.phase_rad[start])) / (2.0 * math.pi)
         return span / max(stop - start, 1)

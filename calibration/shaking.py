@@ -5,8 +5,9 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.driven_way import drive_turns
 from calibration.fringe_pass import Pass
-from calibration.unfolding import Unfolded, drive_turns
+from calibration.unfolding import Unfolded
 
 __all__ = ["kinks", "shaking_reasons"]
 
@@ -73,9 +74,9 @@ def _reversals(got: Unfolded, drive: FloatArray) -> list[str]:
 
 def _unsteady(got: Unfolded, cosine: FloatArray) -> list[str]:
     """Return whether fringes sampled coarsely go unsteadily, with no drive to tell the direction."""
-    if len(got.turns) < 3 or len(cosine) < 3:
+    if len(got.swings) < 3 or len(cosine) < 3:
         return []
-    samples = 2.0 * float(np.quantile(np.diff(got.turns), 0.1))
+    samples = 2.0 * float(np.quantile(np.diff(got.swings), 0.1))
     spots = kinks(cosine) if samples < _COARSE else np.zeros(0, dtype=np.int64)
     if not len(spots):
         return []

@@ -5,21 +5,23 @@ an extreme it carries on. Where the record turns back short of an extreme, the m
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.driven_way import against_drive, driven_sides, unfollowed_turns
 from calibration.envelope import Envelope, running_median
-from calibration.smoother import noise_std
+from calibration.half_fringes import half_fringe_samples, whole_swings
 from calibration.turning_points import turning_points
 
-__all__ = ["Unfolded", "drive_turns", "slow_spots", "unfold_fringe"]
+__all__ = ["Unfolded", "slow_spots", "unfold_fringe"]
 
 FloatArray = NDArray[np.float64]
 
 _LEAST_BAND = 0.1  # of the span: vibration of up to 0.6 rad makes no turn next to an extreme
 _LEAST_DRIVEN_BAND = 0.005  # the drive, not the band, tells vibration from a turn
+_UP_TO = 0.15  # rad: what an extreme known to 1 % leaves open
 _SHORT = 0.12  # a top this much below the extreme still counts as gone over: 28° of phase
 
 
@@ -45,6 +47,8 @@ class Unfolded:
     unfollowed : tuple of int
         Turns of the drive away from the extremes at which the record goes straight on, and how many
         turns lie there.
+    swings : ndarray of int
+        Those turns that end a swing over most of the fringe; all where these are too few.
     """
 
     phase_rad: FloatArray
@@ -54,14 +58,17 @@ class Unfolded:
     cosine_u: float
     against_drive: float
     unfollowed: tuple[int, int]
+    swings: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
 
 
-def _passed(cosine: FloatArray, turns: NDArray[np.int64], cosine_u: float) -> NDArray[np.bool_]:
+def _passed(
+    cosine: FloatArray, turns: NDArray[np.int64], swings: NDArray[np.int64], cosine_u: float
+) -> NDArray[np.bool_]:
     """Return which turns lie at an extreme, allowing for noise and for samples that miss the top."""
     if not len(turns):
         return np.zeros(0, dtype=bool)
     # a sample is up to half a step of π/samples off the top; a lone quick jerk is no quick fringe
-    samples = np.maximum(running_median(np.diff(turns, append=len(cosine)).astype(float), 7), 1.0)
+    samples = half_fringe_samples(swings, turns, len(cosine))
     missed = 1.0 - np.cos(np.minimum(0.5 * np.pi / samples, 0.5 * np.pi))
     # only a maximum can lie at the top, only a minimum at the bottom
     way = np.sign(np.diff(cosine[turns], prepend=cosine[0]))
@@ -93,15 +100,17 @@ def _one_of_each_group(
     return out
 
 
-def slow_spots(turns: NDArray[np.int64], count: int) -> NDArray[np.int64]:
+def slow_spots(turns: NDArray[np.int64], count: int, times: float = 3.0) -> NDArray[np.int64]:
     """Return the turns about which the fringes go by far more slowly than before and after.
 
     Parameters
     ----------
     turns : ndarray of int, shape (k,)
-        Samples at which a record turns.
+        Samples at which a record turns after a whole swing.
     count : int
         Samples of the record.
+    times : float, optional
+        How much longer than usual both half fringes there are together, against one.
 
     Returns
     -------
@@ -111,88 +120,39 @@ def slow_spots(turns: NDArray[np.int64], count: int) -> NDArray[np.int64]:
     legs = np.diff(np.concatenate([[0], turns, [count - 1]])).astype(float)
     if len(legs) < 9:
         return np.zeros(0, dtype=np.int64)
-    return np.asarray(turns[legs[:-1] + legs[1:] > 3.0 * running_median(legs, 9)[:-1]])
+    return np.asarray(turns[legs[:-1] + legs[1:] > times * running_median(legs, 9)[:-1]])
 
 
-def drive_turns(drive: FloatArray) -> NDArray[np.int64]:
-    """Return where a drive turns, noise and small steps left out.
-
-    Parameters
-    ----------
-    drive : ndarray, shape (n,)
-        What moves the mirror, any unit.
-
-    Returns
-    -------
-    ndarray of int, shape (k,)
-        Samples.
-    """
-    band = max(0.01 * float(np.ptp(drive)), 7.0 * noise_std(drive)) + 1e-12
-    return turning_points(drive, band)
-
-
-def _unfollowed(
-    drive: FloatArray | None, turns: NDArray[np.int64], cosine: FloatArray
-) -> tuple[int, int]:
-    """Return how many turns of the drive lie well within a leg, and how many could be seen there.
-
-    Next to an extreme a turn of the mirror may not show; those are left out.
-    """
-    if drive is None or len(turns) < 2:
-        return 0, 0
-    driven = drive_turns(drive)
-    driven = driven[np.abs(cosine[driven]) < 0.6]
-    after = np.clip(np.searchsorted(turns, driven), 1, len(turns) - 1)
-    leg = turns[after] - turns[after - 1]
-    off = np.minimum(np.abs(turns[after] - driven), np.abs(driven - turns[after - 1]))
-    return int(np.count_nonzero(off > 0.3 * leg)), len(driven)
-
-
-def _driven_sides(ends: NDArray[np.int64], angle: FloatArray, drive: FloatArray) -> FloatArray:
-    """Return the side of each leg as the drive has it, from −1 to 1; 0 where it does not move.
-
-    A leg in which the drive itself turns counts by where most of the angle was gone through.
-    """
-    span = float(np.ptp(drive))
-    turns = drive_turns(drive)
-    ways = np.sign(np.diff(drive[np.concatenate([[0], turns, [len(drive) - 1]])]))
-    way = ways[np.searchsorted(turns, np.arange(len(drive) - 1), side="right")]
-    if span <= 0.0:
-        way = np.zeros(len(drive) - 1)
-    moved = np.concatenate([[0.0], np.cumsum(way * np.diff(angle))])
-    travel = np.concatenate([[0.0], np.cumsum(np.abs(np.diff(angle)))])
-    return np.asarray(np.diff(moved[ends]) / np.maximum(np.diff(travel[ends]), 1e-12))
-
-
-def _hidden_turns(ends: NDArray[np.int64]) -> NDArray[np.bool_]:
+def _hidden_turns(ends: NDArray[np.int64], swings: NDArray[np.int64]) -> NDArray[np.bool_]:
     """Return at which turns the fringes all but stop: there the mirror turned at an extreme."""
-    legs = np.diff(ends).astype(float)
-    if len(legs) < 9:
-        return np.zeros(len(legs) - 1, dtype=bool)
-    return np.asarray(legs[:-1] + legs[1:] > 6.0 * running_median(legs, 9)[:-1])
+    return np.isin(ends[1:-1], slow_spots(swings, int(ends[-1]) + 1, 6.0))
 
 
 def _sides(
-    angle: FloatArray, ends: NDArray[np.int64], passed: NDArray[np.bool_], drive: FloatArray | None
-) -> tuple[FloatArray, float]:
-    """Return the side of each leg, s in φ = 2πj + s·a, and the share of travel against the drive."""
+    angle: FloatArray,
+    ends: NDArray[np.int64],
+    passed: NDArray[np.bool_],
+    swings: NDArray[np.int64],
+    drive: FloatArray | None,
+) -> FloatArray:
+    """Return the side of each leg, s in φ = 2πj + s·a."""
     change = np.diff(angle[ends])
     slopes = np.where(change < 0.0, -1.0, 1.0)
     if drive is None:
-        flips = np.where(passed & ~_hidden_turns(ends), -1.0, 1.0)
-        return slopes[0] * np.concatenate([[1.0], np.cumprod(flips)]), 0.0
-    driven = _driven_sides(ends, angle, drive)
-    side = np.empty(len(slopes))
-    # until the first extreme all legs lie on one side: most of the way goes with the drive
-    begin = int(np.argmax(passed)) + 1 if passed.any() else len(slopes)
-    side[0] = np.sign(np.sum((driven * np.abs(change))[:begin])) or slopes[0]
+        flips = np.where(passed & ~_hidden_turns(ends, swings), -1.0, 1.0)
+        return np.asarray(slopes[0] * np.concatenate([[1.0], np.cumprod(flips)]))
+    # all legs from one extreme to the next lie on one side: vibration makes many of one
+    own = np.concatenate([[0], np.cumsum(passed)])
+    bounds = ends[np.concatenate([[0], np.flatnonzero(passed) + 1, [len(ends) - 1]])]
+    driven = driven_sides(bounds, angle, drive)
+    # where the drive does not tell, only what comes right up to the extreme goes over it
+    off = np.abs(np.sin(angle[bounds[:-1]]))
+    side = np.empty(len(driven))
+    side[0] = np.sign(driven[0]) or slopes[0]
     for k in range(1, len(side)):
-        clear = abs(driven[k]) > 0.2
-        side[k] = side[k - 1]
-        if passed[k - 1]:
-            side[k] = np.sign(driven[k]) if clear else -side[k - 1]
-    against = np.where(driven * side < -0.2, np.abs(change), 0.0)
-    return side, float(against.sum() / max(np.abs(change).sum(), 1e-12))
+        onward = -side[k - 1] if off[k] < _UP_TO else side[k - 1]
+        side[k] = np.sign(driven[k]) if abs(driven[k]) > 0.2 else onward
+    return np.asarray(side[own])
 
 
 def unfold_fringe(
@@ -230,13 +190,21 @@ def unfold_fringe(
         turns = turns[:-1]
     angle = np.arccos(np.clip(cosine, -1.0, 1.0))
     ends = np.concatenate([[0], turns, [len(cosine) - 1]])
-    passed = _passed(cosine, turns, cosine_u)
-    side, against = _sides(angle, ends, passed, drive)
+    swings = whole_swings(level, turns, band)
+    passed = _passed(cosine, turns, swings, cosine_u)
+    side = _sides(angle, ends, passed, swings, drive)
     # over a bottom, φ = 2πj + sπ, the next leg hangs on 2π(j + s) where the side changes
     bottom = (cosine[turns] < 0.0) & (side[1:] != side[:-1])
     whole = np.concatenate([[0.0], np.cumsum(np.where(bottom, side[:-1], 0.0))])
     leg = np.searchsorted(turns, np.arange(len(cosine)), side="left")
     phase = 2.0 * math.pi * whole[leg] + side[leg] * angle
     return Unfolded(
-        phase, turns, passed, band / 2.0, cosine_u, against, _unfollowed(drive, turns, cosine)
+        phase,
+        turns,
+        passed,
+        band / 2.0,
+        cosine_u,
+        against_drive(phase, drive),
+        unfollowed_turns(drive, level, band),
+        swings,
     )

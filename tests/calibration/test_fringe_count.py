@@ -70,6 +70,32 @@ def test_vibration_and_mains_add_no_fringes():
     assert got.net_fringes == pytest.approx(200.3, abs=0.2)
 
 
+def test_a_slow_scan_that_shakes_is_counted():
+    shaking = 0.1 * np.sin(2 * np.pi * 87.3 * TIME)  # faster than the scan itself
+    slowing = 18.6 * (1 - np.exp(-TIME / 4)) / (1 - np.exp(-3))
+    got = count_fringes(volts(2 * np.pi * slowing + shaking, 3), 1000.0)
+    assert got.reasons == []
+    assert got.fringes == pytest.approx(18.6, abs=0.1)
+    ramp = (TIME / 3) % 1
+    saw = np.where(ramp < 0.9, ramp / 0.9, (1 - ramp) / 0.1)
+    rough = saw + 0.005 * np.random.default_rng(1).normal(size=COUNT)
+    got = count_fringes(volts(2 * np.pi * 5.9 * saw + shaking, 3), 1000.0, rough)
+    assert got.reasons == []
+    assert [one.direction for one in got.passes] == [1, -1] * 4
+    assert [one.fringes for one in got.passes[1:]] == pytest.approx([5.9] * 7, abs=0.1)
+
+
+def test_a_mirror_that_turns_later_than_its_drive_and_shakes_follows_it():
+    drive = np.sin(2 * np.pi * 0.2 * TIME)
+    late = np.sin(2 * np.pi * 0.2 * TIME - 0.15) + 0.007 * np.sin(2 * np.pi * 71.0 * TIME)
+    for start in np.linspace(0, 6, 7):
+        record = 1.0 + 0.8 * np.cos(2 * np.pi * 4.3 * late + start)
+        got = count_fringes(record, 1000.0, drive)
+        assert got.reasons == []
+        # from peak to peak of what shakes on top
+        assert all(abs(one.fringes - 8.66) < 2 * one.fringes_u < 0.4 for one in got.passes[1:-1])
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_piezo_ramps_with_hysteresis(seed):
     drive = triangle(4)

@@ -7,6 +7,7 @@ from firmware_bridge.lock_in_start import LockInError, LockInStart
 from firmware_bridge.message import CommandCode, Reply, parse_message
 from firmware_bridge.message_head import MessageError, MessageType
 from firmware_bridge.port_watch import PortWatch
+from firmware_bridge.samples_frame import place_of
 
 __all__ = ["MEASURED", "BoardAnswers"]
 
@@ -80,7 +81,8 @@ class BoardAnswers:
         if self._desk is None or not (isinstance(piece, bytes) and piece[0] in MEASURED):
             return True
         try:
-            return self._desk.is_settled()
+            is_samples = piece[0] == MessageType.SAMPLES
+            return self._desk.is_settled(place_of(piece) if is_samples else None)
         except DriveError as error:
             raise DriveError(f"{self._watch.name}: {error}") from None
 

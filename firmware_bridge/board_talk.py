@@ -3,6 +3,7 @@
 import time
 
 from firmware_bridge.drive_desk import DriveDesk
+from firmware_bridge.farewell import Farewell
 from firmware_bridge.lock_in_start import LockInStart, result_every_s
 from firmware_bridge.message import CommandCode, encode_command
 from firmware_bridge.port import ByteSource
@@ -64,12 +65,11 @@ class BoardTalk:
         self._begin()
 
     def leave(self) -> None:
-        """Bring the drive to rest and the board to a stop; on a port that is gone nothing happens."""
+        """Bring the drive to rest and the board to a stop; say where the rest is not confirmed."""
         if self._desk is not None:
-            for wait_s, requests in self._desk.fall(self._intake.announcement):
-                time.sleep(wait_s)
-                if not all(self._say(code, arguments) for code, arguments in requests):
-                    break  # it goes to rest by itself once nobody speaks
+            complaint = Farewell(self._port, self._say).rest(self._desk, self._intake)
+            if complaint:
+                self._watch.notice(f"{self._watch.name}: {complaint}")
         self._say(CommandCode.STOP)
 
     def _ask(self, *, is_first: bool) -> None:
@@ -110,6 +110,8 @@ class BoardTalk:
         self._is_started = True
         self._say(CommandCode.START, arguments)
 
-    def _say(self, code: CommandCode, arguments: bytes = b"") -> bool:
+    def _say(self, code: CommandCode, arguments: bytes = b"") -> int:
+        """Send a command; return the number of the request, 0 where the port does not take it."""
         self._request += 1
-        return self._port.write(encode_command(code, self._request % 65536, arguments))
+        is_sent = self._port.write(encode_command(code, self._request % 65536, arguments))
+        return self._request if is_sent else 0

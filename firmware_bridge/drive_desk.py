@@ -8,25 +8,19 @@ from collections.abc import Callable, Iterator
 from firmware_bridge.announcement import Announcement
 from firmware_bridge.arguments import clear_arguments
 from firmware_bridge.board_lines import BoardLines, SentLine
+from firmware_bridge.drive_answer import answer_text, drive_command
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines, Request, rest_requests
+from firmware_bridge.drive_rest import DriveRest
+from firmware_bridge.drive_settling import DriveSettling
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_events import LiveLines
 from firmware_bridge.message import CommandCode, Reply
 
 __all__ = ["DriveDesk"]
 
-_SETTLE_S = 0.3  # slew, and the filters behind the drive
 _ANSWER_S = 5.0
 _REPEAT_S = 0.5  # a command without an answer is sent again
-_AGAIN_S = 0.05
 _ROUNDING = 1e-12  # sums of the same amplitudes in another order
-_REST = frozenset((CommandCode.CLEAR_LINE, CommandCode.RAMP))
-_UNKNOWN = 1  # status of a reply
-_NAMES = {
-    CommandCode.SET_LINE: "set line",
-    CommandCode.CLEAR_LINE: "clear line",
-    CommandCode.RAMP: "ramp",
-}
 
 
 class DriveDesk:
@@ -61,14 +55,11 @@ class DriveDesk:
         self._board = BoardLines()
         self._stream: int | None = None
         self._due: list[int] = list(lines.lines)  # slots to be set or cleared
-        self._rest_open: frozenset[CommandCode] = _REST  # what of a rest is not confirmed
-        self._rest_serial = 0  # from which on answers count for it
-        self._rest_s: float | None = None  # when it was made last
+        self._rest = DriveRest()
+        self._settling = DriveSettling()
+        self._rate_hz: float | None = None
         self._asked_s: dict[int, float] = {}  # since when a slot's line has no answer
         self._is_away = False
-        self._sent_s: float | None = None  # the last one
-        self._first_s: float | None = None  # and the first one since the port was away
-        self._was_settled = False
         self._orders = 0
         self._told: LiveLines | None = None
         self._notices: list[str] = []
@@ -123,12 +114,8 @@ class DriveDesk:
             self._lines.lines = {}
             self._due.clear()
             self._asked_s.clear()
-            self._rest_again()
+            self._rest.want(self._board.serial)
             self._show()
-
-    def _rest_again(self) -> None:
-        self._rest_open, self._rest_s = _REST, None
-        self._rest_serial = self._board.serial  # answers to what was sent before do not count
 
     def took(self, order: int) -> None:
         """Take note that an order has been obeyed or refused, and tell.
@@ -145,7 +132,7 @@ class DriveDesk:
     def _show(self) -> None:
         if self._tell is None:
             return
-        is_at_rest = not self._rest_open and not self._board.largest
+        is_at_rest = not self._rest.is_open and not self._board.largest
         seen = LiveLines(self._board.largest, dict(self._lines.lines), is_at_rest, self._orders)
         if seen != self._told:
             self._told = seen
@@ -154,9 +141,10 @@ class DriveDesk:
     def away(self) -> None:
         """Take note that the port was away."""
         with self._lock:
-            self._is_away, self._first_s = True, None
+            self._is_away = True
+            self._settling.away()
             self._restart()
-            self._rest_again()
+            self._rest.want(self._board.serial)
             self._show()
 
     def notices(self) -> list[str]:
@@ -204,13 +192,14 @@ class DriveDesk:
                 if self._stream is not None:
                     self._restart()
                 self._stream = announcement.stream
+            self._rate_hz = announcement.rate_hz
             now_s = time.monotonic()
             requests = self._requests_of_rest(announcement, now_s)
             overdue = self._board.overdue(now_s - _REPEAT_S)
             self._due = list(dict.fromkeys([*self._due, *overdue]))
             self._give_up(now_s)
             self._refuse(announcement)
-            if not self._rest_open:
+            if not self._rest.is_open:
                 requests += self._requests_of_lines(announcement, now_s)
             self._show()
             return requests
@@ -220,7 +209,7 @@ class DriveDesk:
         self._asked_s.clear()
         if self._is_held:
             self._due = list(self._lines.lines)
-            if self._was_settled:
+            if self._settling.is_over:
                 self._notices.append(
                     "the board or its port was away; its drive lines are set again"
                 )
@@ -228,14 +217,10 @@ class DriveDesk:
         if self._lines.lines:
             self._notices.append("the board or its port was away; its drive is brought to rest")
         self._lines.lines, self._due = {}, []
-        self._rest_again()
+        self._rest.want(self._board.serial)
 
     def _requests_of_rest(self, announcement: Announcement, now_s: float) -> list[Request]:
-        is_made = self._rest_s is not None and now_s - self._rest_s < _REPEAT_S
-        if not self._rest_open or is_made:
-            return []
-        self._rest_s = now_s
-        requests = rest_requests(announcement.rate_hz)
+        requests = self._rest.due(announcement.rate_hz, now_s, _REPEAT_S)
         for code, _ in requests:
             self._board.make(code, None, None, now_s)
         return requests
@@ -314,8 +299,7 @@ class DriveDesk:
         """
         with self._lock:
             self._board.number(number, code)
-            self._sent_s = time.monotonic()
-            self._first_s = self._first_s or self._sent_s
+            self._settling.sent()
 
     def heard(self, reply: Reply) -> tuple[str, bool] | None:
         """Return what the board says to a command of this desk, and whether it refuses it.
@@ -331,7 +315,7 @@ class DriveDesk:
             One line; None if the command was not ours.
         """
         with self._lock:
-            code = next((code for code in _NAMES if code == reply.code), None)
+            code = drive_command(reply)
             if code is None:
                 return None
             sent = self._board.answered(reply.request, code, is_done=not reply.status)
@@ -339,21 +323,13 @@ class DriveDesk:
                 return None
             self._follow(sent, reply.status)
             self._show()
-        if not reply.status:
-            return f"{_NAMES[code]}: done", False
-        if reply.status == _UNKNOWN and code == CommandCode.RAMP:
-            return "the board's drive has no offset", False
-        if reply.status == _UNKNOWN:
-            return "the board has no drive lines", True
-        return f"the board refuses to {_NAMES[code]}: {reply.text or 'without a reason'}", True
+        return answer_text(code, reply.status, reply.text)
 
     def _follow(self, sent: SentLine, status: int) -> None:
         """Draw the conclusions from an answer."""
         if sent.slot is None:
-            # a board that knows no such command has nothing that could be brought to rest
-            if status in (0, _UNKNOWN) and sent.serial >= self._rest_serial:
-                self._rest_open -= {sent.code}
-            if not self._rest_open:
+            self._rest.heard(sent.code, sent.serial, status)
+            if not self._rest.is_open:
                 self._board.rested()
             return
         if self._lines.lines.get(sent.slot) == sent.line:
@@ -361,8 +337,13 @@ class DriveDesk:
             if status and sent.line is not None:  # nothing has changed
                 self._restore(sent.slot)
 
-    def is_settled(self) -> bool:
+    def is_settled(self, at: tuple[int, int] | None = None) -> bool:
         """Return whether the first samples may be kept: all lines are set, and a moment has passed.
+
+        Parameters
+        ----------
+        at : tuple of int and int, optional
+            Stream id and first sample of what has arrived; by default none come.
 
         Returns
         -------
@@ -374,19 +355,14 @@ class DriveDesk:
         DriveError
             If the board does not answer.
         """
-        if self._was_settled or not self._is_held or not self.are_any:
+        if self._settling.is_over or not self._is_held or not self.are_any:
             return True
-        now_s = time.monotonic()
         with self._lock:
-            is_done = self._board.is_answered and not self._due and not self._rest_open
-            self._was_settled = is_done and now_s - (self._sent_s or now_s) >= _SETTLE_S
-            waits_s = now_s - (self._first_s or now_s)
-        if not is_done and waits_s > _ANSWER_S:
-            raise DriveError(f"the board does not answer to set line for {_ANSWER_S:g} s")
-        return self._was_settled
+            is_done = self._board.is_answered and not self._due and not self._rest.is_open
+            return self._settling.wait(is_done=is_done, at=at, rate_hz=self._rate_hz)
 
     def fall(self, announcement: Announcement | None) -> Iterator[tuple[float, list[Request]]]:
-        """Yield how long to wait [s] and what to send then, until the drive is at rest.
+        """Yield how long to wait [s] and what to send then, the rest last.
 
         Parameters
         ----------
@@ -399,7 +375,7 @@ class DriveDesk:
             None where nothing was ever sent.
         """
         with self._lock:
-            if announcement is None or self._sent_s is None:
+            if announcement is None or not self._settling.has_sent:
                 return
             steps = [(0.0, rest_requests(announcement.rate_hz))]
             falling = self._lines.holding(self._board.sure)
@@ -407,5 +383,3 @@ class DriveDesk:
                 with contextlib.suppress(BridgeError):  # of a board that is another one by now
                     steps = list(falling.fall(announcement))
         yield from steps
-        # Nobody reads the answers any more: once again, in case the first was damaged on its way.
-        yield _AGAIN_S, rest_requests(announcement.rate_hz)

@@ -53,8 +53,15 @@ class PortReader:
             self._stop.set()
         finally:
             self.ended.set()
+            self._leave()
+
+    def _leave(self) -> None:
+        try:
             if self._talk is not None:
                 self._talk.leave()
+        except Exception as error:  # noqa: BLE001  # a thread's failure is the recording's
+            self.failure = self.failure or error
+        finally:
             self._port.close()
 
     def _read(self) -> bool:

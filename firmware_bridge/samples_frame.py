@@ -11,7 +11,7 @@ from firmware_bridge.frame import HEADER, OVER_RANGE
 from firmware_bridge.message_head import MessageError
 from firmware_bridge.sample_packing import unpack_samples
 
-__all__ = ["Samples", "parse_samples", "renamed"]
+__all__ = ["Samples", "parse_samples", "place_of", "renamed"]
 
 _HEADER = struct.Struct("<BBHIIBBHQQHH")
 
@@ -76,6 +76,25 @@ def parse_samples(message: bytes) -> Samples:
     end = _HEADER.size + filled * channels * width
     data = unpack_samples(message[_HEADER.size : end], channels, width)
     return Samples(index, data, bool(flags & OVER_RANGE), clock, stream, sequence, flags)
+
+
+def place_of(message: bytes) -> tuple[int, int] | None:
+    """Return where an unwrapped frame stands, without its samples.
+
+    Parameters
+    ----------
+    message : bytes
+        Content and CRC.
+
+    Returns
+    -------
+    tuple of int and int, or None
+        Stream id and index of the first sample; None where the header is cut short.
+    """
+    if len(message) < _HEADER.size:
+        return None
+    _, _, _, stream, _, _, _, _, index, _, _, _ = _HEADER.unpack_from(message)
+    return stream, index
 
 
 def renamed(message: bytes, stream: int) -> bytes:

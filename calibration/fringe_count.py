@@ -17,6 +17,7 @@ from calibration.fringe_pass import Pass, cut_passes, end_u
 from calibration.scan import ScanFit, fit_scan
 from calibration.shaking import shaking_reasons
 from calibration.smoother import noise_std
+from calibration.standstill import standing_reasons
 from calibration.swept_envelope import envelope_of
 from calibration.swept_record import averaged, ready_to_count
 from calibration.unfolding import Unfolded, unfold_fringe
@@ -164,7 +165,8 @@ def count_fringes(
         count_reasons(
             values, record, envelope, got, scan if extremes is None else None, span_range, along
         )
-        + shaking_reasons(passes, got, envelope.cosine(record.values), along),
+        + shaking_reasons(passes, got, envelope.cosine(record.values), along)
+        + standing_reasons(values[record.first : stop], record, envelope, got, along),
     )
 
 

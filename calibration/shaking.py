@@ -7,6 +7,7 @@ from numpy.typing import NDArray
 
 from calibration.driven_way import drive_turns
 from calibration.fringe_pass import Pass
+from calibration.standstill import standing_stretches
 from calibration.unfolding import Unfolded
 
 __all__ = ["kinks", "shaking_reasons"]
@@ -78,6 +79,10 @@ def _unsteady(got: Unfolded, cosine: FloatArray) -> list[str]:
         return []
     samples = 2.0 * float(np.quantile(np.diff(got.swings), 0.1))
     spots = kinks(cosine) if samples < _COARSE else np.zeros(0, dtype=np.int64)
+    # where a motor starts from rest or stops, the fringes begin and end so
+    rests = standing_stretches(cosine, max(int(1.5 * samples), 12), 0.1 + 8.0 * got.cosine_u)
+    edges = np.concatenate([rests.ravel(), [-1000]])
+    spots = spots[np.abs(spots[:, None] - edges).min(axis=1) > samples]
     if not len(spots):
         return []
     return [

@@ -258,6 +258,22 @@ def test_a_flyback_within_a_sample_is_named():
     assert [one.direction for one in got.passes[:4]] == [1, -1, 1, -1]
 
 
+@pytest.mark.parametrize("fringes", [30.3, 1400.7])
+def test_a_laser_that_goes_off_midway_is_named_and_a_motor_that_rests_is_not(fringes):
+    ramp = np.clip(1.6 * np.linspace(0, 1, COUNT) - 0.3, 0, 1)  # rests before and after
+    record = volts(2 * np.pi * fringes * ramp, 3)
+    for drive in (None, ramp):
+        got = count_fringes(record, 1000.0, drive)
+        assert got.reasons == []
+        assert got.fringes == pytest.approx(fringes, abs=3 * got.fringes_u)
+    for dark in (0.2, 0.7):  # at full contrast, and with room light
+        off = np.where(TIME > 7.0, dark, record)
+        reasons = count_fringes(off, 1000.0, np.linspace(0, 1, COUNT)).reasons
+        assert any("the drive moves on meanwhile" in reason for reason in reasons)
+    reasons = count_fringes(np.where(TIME > 7.0, 0.2, record), 1000.0).reasons
+    assert any("laser off, beam blocked" in reason for reason in reasons)
+
+
 def test_coarse_levels_are_not_taken_for_clipping():
     rough = np.round(volts(2 * np.pi * 5.3 * triangle(4), 7, 0.01) / 0.02) * 0.02
     got = count_fringes(rough, 1000.0, np.round(triangle(4) * 200) / 200)

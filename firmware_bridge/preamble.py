@@ -1,5 +1,6 @@
 """What the lines before the data say: the sampling rate that an instrument writes there."""
 
+import itertools
 import re
 from collections.abc import Sequence
 
@@ -17,6 +18,10 @@ _INTERVAL = re.compile(
 _RATE = re.compile(
     r"(?:sampl\w*[ _-]*(?:rate|freq\w*)|\brate|\bfs|\brate_hz)\b" + _VALUE, re.IGNORECASE
 )
+_INCREMENT = re.compile(
+    r"(?:x[ _-]?)?incr\w*|sampl\w*[ _-]*(?:interval|period)|d[tx]", re.IGNORECASE
+)
+_LONE = re.compile(r"(?P<value>[+-]?[\d.]+(?:[eE][+-]?\d+)?)\s*(?P<unit>[^\W\d_]*)")
 
 
 def maybe_stated_rate_hz(preamble: Sequence[str]) -> float | None:
@@ -39,6 +44,19 @@ def maybe_stated_rate_hz(preamble: Sequence[str]) -> float | None:
         interval = _INTERVAL.search(line)
         if interval and (value := _in_unit(interval, "s")):
             return 1.0 / value
+    return _interval_below(preamble)
+
+
+def _interval_below(preamble: Sequence[str]) -> float | None:
+    """Return the rate where a column is headed "Increment" and holds it on the next line alone."""
+    for head, below in itertools.pairwise(preamble):
+        names, values = (re.split(r"[,;\t]", line) for line in (head, below))
+        for name, value in zip(names, values, strict=False):
+            if not _INCREMENT.fullmatch(name.strip(' "')):
+                continue
+            match = _LONE.fullmatch(value.strip(' "'))
+            if match and (interval := _in_unit(match, "s")):
+                return 1.0 / interval
     return None
 
 

@@ -140,6 +140,8 @@ def test_the_rate_a_preamble_states():
     ]:
         table = read_text_table(f"{line}\nv\n1\n2\n3\n".encode(), "x")
         assert table.rate_hz == pytest.approx(rate, rel=1e-14)
+    counted = "X,CH1,Start,Increment\nSequence,Volt,-1.0e-01,2.000e-04\n0,1.5,\n1,1.6,\n2,1.4,\n"
+    assert read_text_table(counted.encode(), "x").rate_hz == pytest.approx(5000.0, rel=1e-14)
 
 
 @pytest.mark.parametrize(

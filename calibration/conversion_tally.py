@@ -42,7 +42,11 @@ class ConversionTally:
         self.converted += int(np.count_nonzero(np.isfinite(phase.phase_rad)))
         self.inverse_sin2 += phase.kept * phase.means.inverse_sin2
         self.cos_over_sin2 += phase.kept * phase.means.cos_over_sin2
-        count, square = _fourth_differences(phase.phase_rad)
+        self.add_differences(phase.phase_rad)
+
+    def add_differences(self, phase_rad: FloatArray) -> None:
+        """Add the noise of a block of phases."""
+        count, square = _fourth_differences(phase_rad)
         self.differences += count
         self.square += square
 
@@ -68,10 +72,17 @@ class ConversionTally:
 
 
 def relative_us(
-    calibration: Calibration, quantity: str, tally: ConversionTally
+    calibration: Calibration,
+    quantity: str,
+    tally: ConversionTally,
+    extremes: Extremes | None = None,
 ) -> tuple[float, float]:
-    """Return the scale's relative u and that of the recording's own drift, at its working points."""
-    extremes, slope = calibration.extremes, float(calibration.readout_slope.magnitude)
+    """Return the scale's relative u and that of the recording's own drift, at its working points.
+
+    With the calibration's extremes unless others are given.
+    """
+    extremes = extremes or calibration.extremes
+    slope = float(calibration.readout_slope.magnitude)
     steep, lean = (v / max(1, tally.kept) for v in (tally.inverse_sin2, tally.cos_over_sin2))
     rows = {c.name: c for c in calibration.readout_budget.contributions}
     drifts = [row for name, row in rows.items() if name.startswith(POWER_DRIFT)]

@@ -20,14 +20,14 @@ def driven_pilot(drive: Trace, pilot_hz: float) -> tuple[float, float]:
     Returns
     -------
     tuple of (float, float)
-        Frequency in the board's time [Hz], phase at t = 0 [rad].
+        Frequency in the board's time [Hz], phase at the trace's first sample [rad].
 
     Raises
     ------
     CalibrationError
         If the drive does not show it.
     """
-    fit = fit_lines_si(drive.values, drive.rate_hz, [pilot_hz], start_index=drive.start_index)
+    fit = fit_lines_si(drive.values, drive.rate_hz, [pilot_hz])
     driven = fit.lines[0]
     if not driven.is_trustworthy:
         raise CalibrationError(

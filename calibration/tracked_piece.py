@@ -1,6 +1,5 @@
 """A piece of a free-running record followed: its slow course, and each sample's branch of the fringe."""
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -14,6 +13,7 @@ FloatArray = NDArray[np.float64]
 
 _ROUNDS = 3
 _MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+_ENDS = 0.35  # rad more within half a block of either end
 _SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
 _LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
 _WEAKEST = 0.5  # size of (cos φ, sin φ) that a block must show; 1 where nothing moves fast
@@ -108,7 +108,7 @@ def follow(
     # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it
     # would pull the phase away from the extremes
     clear = np.abs(phase - expected) < np.abs(np.sin(expected))
-    inside = _inside(course, expected, depth_rad)
+    inside = _inside(course, expected, depth_rad, _margin(count, length))
     inverted = present & ~lost & inside & (np.abs(cosine) < 1.0) & clear
     carried = present & ~lost & ~inverted
     phase = np.where(inverted, phase, np.where(carried, expected, np.nan))
@@ -130,15 +130,28 @@ def _branches(cosine: FloatArray, expected: FloatArray, noise: float) -> FloatAr
     return np.where(np.abs(up - expected) <= np.abs(down - expected), up, down)
 
 
-def _inside(course: FloatArray, expected: FloatArray, depth_rad: float) -> NDArray[np.bool_]:
+def _margin(count: int, length: int) -> FloatArray:
+    """Return the distance from an extreme that a sample must have [rad], shape (n,).
+
+    It is wider beyond the middles of the first and the last block, where the course only goes on straight.
+    """
+    margin = np.full(count, _MARGIN)
+    margin[: length // 2] += _ENDS
+    margin[(count // (length // 2) - 1) * (length // 2) :] += _ENDS
+    return margin
+
+
+def _inside(
+    course: FloatArray, expected: FloatArray, depth_rad: float, margin: FloatArray
+) -> NDArray[np.bool_]:
     """Return the samples that lie clear of the extremes.
 
     With a shallow pilot whole periods are kept or left out, so that what is left out does not go with
     the pilot; a deep one leaves no whole period.
     """
     if depth_rad < _SHALLOW:
-        return np.asarray(np.abs(np.sin(course)) > math.sin(_MARGIN + depth_rad))
-    return np.asarray(np.abs(np.sin(expected)) > math.sin(_MARGIN))
+        return np.asarray(np.abs(np.sin(course)) > np.sin(margin + depth_rad))
+    return np.asarray(np.abs(np.sin(expected)) > np.sin(margin))
 
 
 def _torn(course: FloatArray, length: int) -> NDArray[np.bool_]:

@@ -174,6 +174,7 @@ def read_tracked(
     if drive is not None:
         seen_hz, phase = driven_pilot(drive, pilot_hz)
         phase += np.pi if polarity < 0 else 0.0
+        phase -= 2.0 * np.pi * seen_hz * drive.start_index / drive.rate_hz  # at t = 0
     tracked = track_phase(
         trace.values,
         trace.rate_hz,

@@ -20,6 +20,11 @@ __all__ = ["TrackedPhase", "track_phase", "tracking_assumptions", "tracking_reas
 
 FloatArray = NDArray[np.float64]
 
+DECLARED = (
+    "the mirror moves with the pilot's drive, its polarity as declared, well below the actuator's "
+    "resonance"
+)
+
 
 @dataclass(frozen=True)
 class TrackedPhase:
@@ -142,7 +147,9 @@ def track_phase(
     )
 
 
-def tracking_assumptions(course: TrackedCourse, phase_rad: float | None) -> list[str]:
+def tracking_assumptions(
+    course: TrackedCourse, phase_rad: float | None, said: str = DECLARED
+) -> list[str]:
     """Return what sign and whole fringes of a tracked record rest on.
 
     Parameters
@@ -151,6 +158,8 @@ def tracking_assumptions(course: TrackedCourse, phase_rad: float | None) -> list
         As tracked.
     phase_rad : float or None
         Of the pilot's motion at sample 0, as its drive has it; None where no drive was recorded.
+    said : str, optional
+        From where it is known which way the drive moves the mirror.
 
     Returns
     -------
@@ -163,10 +172,7 @@ def tracking_assumptions(course: TrackedCourse, phase_rad: float | None) -> list
     off = abs(math.remainder(course.pilot.knots[0].phase_rad - phase_rad, 2.0 * math.pi))
     return [
         whole,
-        (
-            "sign: the mirror moves with the pilot's drive, its polarity as declared, well below the "
-            f"actuator's resonance (the pilot's phase is off that by {math.degrees(off):.0f}°)"
-        ),
+        f"sign: {said} (the pilot's phase is off that by {math.degrees(off):.0f}°)",
     ]
 
 

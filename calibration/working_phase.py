@@ -44,9 +44,13 @@ class WorkingPhases:
         Returns
         -------
         ndarray, shape (n,)
-            Phase [rad].
+            Phase [rad]; straight on beyond the middles of the first and the last block.
         """
-        return np.interp(np.arange(count), self.middle, self.phase_rad)
+        middle, phase, half = self.middle, self.phase_rad, self.length // 2
+        first, last = 2.0 * phase[0] - phase[1], 2.0 * phase[-1] - phase[-2]
+        at = np.concatenate([[middle[0] - half], middle, [middle[-1] + half]])
+        whole = np.concatenate([[first], phase, [last]])
+        return np.asarray(np.interp(np.arange(count), at, whole))
 
     def lost(self, count: int, weakest: float) -> NDArray[np.bool_]:
         """Return the samples in whose blocks the fast motion shows too little.

@@ -12,10 +12,11 @@ from calibration.record import Calibration
 from calibration.rehearsal_script import Step, session_steps
 from firmware_bridge.simulated.bench import SimulatedBench
 from firmware_bridge.simulated.playing import record_in_memory
+from firmware_bridge.simulated.setup import Drift, Setup, Tone
 from metro.bench import Bench, load_bench
 from metro.measured import Measured
 
-__all__ = ["built_in_bench", "calibrated", "play", "spread", "stated"]
+__all__ = ["built_in_bench", "calibrated", "free_session", "play", "spread", "stated"]
 
 BENCH_FILE = Path(simulated.__file__).with_name("bench.toml")
 
@@ -56,6 +57,35 @@ def play(
     for step, path in zip(steps, record_in_memory(simulated_bench, recordings), strict=True):
         files.setdefault(step.role.replace("-", "_"), []).append(str(path))
     return simulated_bench, files
+
+
+def free_session(
+    bench: Bench,
+    seed: int,
+    folder: Path,
+    *,
+    lines_s: float = 8.0,
+    names: tuple[str, ...] = ("01", "05", "06", "07", "09"),
+) -> tuple[SimulatedBench, dict[str, list[str]], tuple[Tone, ...]]:
+    """Play steps of a session and the lines on a bench that drifts over fringes; return the tones too."""
+    simulated_bench = SimulatedBench(bench, seed)
+    rng = np.random.default_rng([seed, 1])
+    drift = Drift(
+        float(rng.uniform(-250e-9, 250e-9)),
+        float(rng.uniform(100e-9, 300e-9)),
+        float(rng.uniform(4.0, 12.0)),
+    )
+    steps = session_steps(bench, lines_s)
+    tones = next(step.setup.tones for step in steps if step.role == "lines-rising")
+    steps = [step for step in steps if step.name[:2] in names]
+    free = Setup("free", lines_s, tones=tones, drift=drift)
+    steps.append(Step("20-free", "lines-free", free))
+    folder.mkdir(exist_ok=True)
+    recordings = [(step.setup, folder / step.file) for step in steps]
+    files: dict[str, list[str]] = {}
+    for step, path in zip(steps, record_in_memory(simulated_bench, recordings), strict=True):
+        files.setdefault(step.role.replace("-", "_"), []).append(str(path))
+    return simulated_bench, files, tones
 
 
 def calibrated(

@@ -1,18 +1,20 @@
 """``midfringe convert``: a recording through a calibration to displacement, strain or phase."""
 
+from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
 import click
 
 from firmware_bridge.reading import Reading, recording_options
 from metro.figure_file import check_figure
-from metro.options import command, distrust, is_quiet, output_options
+from metro.options import ValueType, command, distrust, is_quiet, output_options
 from metro.output import check_writable, table, to_json
 
 if TYPE_CHECKING:
     from calibration.convert import ConvertedRecording
     from calibration.driven_displacement import DrivenDisplacement
     from calibration.record import Calibration
+    from calibration.tracked_recording import TrackedConversion, TrackedRecording
     from firmware_bridge.trace import Recording
 
 __all__ = ["convert"]
@@ -55,7 +57,20 @@ __all__ = ["convert"]
     is_flag=True,
     help="Convert the drive's channel instead: what it moves, by the response between the lines.",
 )
-@recording_options(omit=("drive",))
+@click.option(
+    "--pilot",
+    "pilot_hz",
+    type=ValueType("Hz", above=0.0),
+    metavar="F",
+    help="Track a free-running bench through its fringes by this driven line; --drive, or a channel "
+    "called drive, sets the sign.",
+)
+@click.option(
+    "--own-extremes",
+    is_flag=True,
+    help="With --pilot: take the fringe's extremes from the recording itself.",
+)
+@recording_options
 @output_options("out", "plot", "json", "overwrite")
 def convert(
     file: str,
@@ -65,6 +80,8 @@ def convert(
     undo_readout: bool,
     open_loop_file: str | None,
     actuator: bool,
+    pilot_hz: float | None,
+    own_extremes: bool,
     reading: Reading,
     out: str | None,
     plot: str | None,
@@ -75,6 +92,10 @@ def convert(
 
     Recordings of any size are converted in bounded memory. Gaps stay gaps. The uncertainty is
     printed, and kept in NPZ and HDF5, as a systematic part, common to all samples, and a random one.
+
+    With --pilot the recording may run freely through its fringes. A column "carried" then stands beside
+    the values: 0 where a sample was inverted, 1 where it lies at an extreme and shows the slow course and
+    the pilot only, empty or NaN where the phase is not known.
     """
     from calibration.record import load
     from firmware_bridge.export import export_recording
@@ -87,30 +108,40 @@ def convert(
     check_writable(out, overwrite, inputs)
     if plot is not None:
         check_figure(plot, overwrite, inputs)
-    if actuator and (quantity != "displacement" or undo_readout or open_loop_file):
-        raise click.UsageError(
-            "--actuator gives displacement from the drive: it goes without --quantity, "
-            "--undo-readout and --open-loop"
-        )
+    given = {"--undo-readout": undo_readout, "--open-loop": open_loop_file}
+    _check(quantity, given, actuator, pilot_hz, own_extremes, reading)
     source, calibration = reading.open(file), load(calibration_file)
+    side = []
     if actuator:
         converted: Any = _driven(source, reading, calibration)
+    elif pilot_hz is not None:
+        converted = _tracked(source, reading, calibration, pilot_hz, quantity, own_extremes)
     else:
         options = (quantity, slope, undo_readout, open_loop_file)
         converted = _converted(source, reading, calibration, *options)
-    worth = converted.judge(reading.from_s, reading.to_s)
-    side = [] if actuator else _side(source, reading, calibration, slope)
+        side = _side(source, reading, calibration, slope)
+    stretch = () if pilot_hz is not None else (reading.from_s, reading.to_s)
+    worth = converted.judge(*stretch)
     uncertainty = {
         "systematic": {"value": worth.relative_u, "unit": "1", "u": None},
         "random": {"value": worth.noise, "unit": worth.unit, "u": None},
     }
+    more: dict[str, Any] = {}
+    if pilot_hz is not None:
+        uncertainty |= _tracked_uncertainty(worth)
+        more = {"carried_fraction": worth.carried_fraction, "assumptions": worth.assumptions}
     samples = export_recording(
         converted,
         out,
         from_s=reading.from_s,
         to_s=reading.to_s,
         overwrite=overwrite,
-        beside={"quantity": quantity, "uncertainty": uncertainty, "reasons": worth.reasons},
+        beside={
+            "quantity": quantity,
+            "uncertainty": uncertainty,
+            "reasons": worth.reasons,
+            **more,
+        },
     )
     document = {
         "file": out,
@@ -121,9 +152,13 @@ def convert(
         "gaps": len(converted.gaps),
         "reasons": worth.reasons,
         "cautions": [*worth.cautions, *side],
+        **more,
     }
     if plot is not None:
-        _draw(converted, reading, plot, f"u {_percent(worth.relative_u)} common", overwrite)
+        common = f"u {_percent(worth.relative_u)} common"
+        if pilot_hz is not None:
+            common += f", {_shown(uncertainty['periodic'])} in every fringe; extremes carried"
+        _draw(converted, reading, plot, common, overwrite)
     click.echo(to_json(document) if as_json else _text(document))
     if not is_quiet():
         reading.tell(source)
@@ -131,6 +166,60 @@ def convert(
             click.echo(f"caution: {caution}", err=True)
     if worth.reasons:
         distrust(worth.reasons)
+
+
+def _check(
+    quantity: str,
+    given: Mapping[str, object],
+    actuator: bool,
+    pilot_hz: float | None,
+    own_extremes: bool,
+    reading: Reading,
+) -> None:
+    """Refuse options that do not go together."""
+    if actuator and (quantity != "displacement" or any(given.values())):
+        raise click.UsageError(
+            "--actuator gives displacement from the drive: it goes without --quantity, "
+            "--undo-readout and --open-loop"
+        )
+    if pilot_hz is None:
+        alone = {"--own-extremes": own_extremes, "--drive": reading.drive_channel}
+        for name in [name for name, value in alone.items() if value]:
+            raise click.UsageError(f"{name} is for a free-running bench: it needs --pilot")
+        return
+    context = click.get_current_context()
+    chosen = context.get_parameter_source("slope") is click.core.ParameterSource.COMMANDLINE
+    ways = {**given, "--actuator": actuator, "--slope": chosen}
+    for name in [name for name, value in ways.items() if value]:
+        raise click.UsageError(
+            f"--pilot follows a bench that runs freely over both slopes: it goes without {name}"
+        )
+
+
+def _tracked(
+    source: "Recording",
+    reading: Reading,
+    calibration: "Calibration",
+    pilot_hz: float,
+    quantity: str,
+    own_extremes: bool,
+) -> "TrackedRecording":
+    from calibration.tracked_recording import TrackedRecording
+
+    name = reading.channel_name(source)
+    drive = reading.with_drive(source).drive_channel
+    span = reading.from_s, reading.to_s
+    return TrackedRecording(
+        source, name, calibration, pilot_hz, quantity, drive, *span, own=own_extremes
+    )
+
+
+def _tracked_uncertainty(worth: "TrackedConversion") -> dict[str, Any]:
+    return {
+        "small_motion": {"value": worth.small_u, "unit": "1", "u": None},
+        "periodic": {"value": worth.periodic_u, "unit": worth.unit, "u": None},
+        "carried": {"value": worth.carried_noise, "unit": worth.unit, "u": None},
+    }
 
 
 def _converted(
@@ -186,17 +275,32 @@ def _percent(relative: float) -> str:
 
 
 def _text(document: dict[str, Any]) -> str:
-    from metro.display import show
 
     uncertainty = document["uncertainty"]
-    random = uncertainty["random"]
+    is_tracked = "periodic" in uncertainty
+    common = "systematic u, over many fringes" if is_tracked else "systematic u, all samples alike"
     rows: list[list[object]] = [
         ["file", document["file"]],
         ["samples", document["samples"]],
         ["gaps", document["gaps"]],
         ["quantity", document["quantity"]],
-        ["systematic u, all samples alike", _percent(uncertainty["systematic"]["value"])],
-        ["random, rms from sample to sample", show(random["value"], random["unit"], 2)],
+        [common, _percent(uncertainty["systematic"]["value"])],
+        ["random, rms from sample to sample", _shown(uncertainty["random"])],
         ["used", f"{100 * float(document['used_fraction']):.4g} %"],
     ]
-    return table(rows)
+    if is_tracked:
+        rows[5:5] = [
+            ["systematic u, small motions", _percent(uncertainty["small_motion"]["value"])],
+            ["u that comes again in every fringe", _shown(uncertainty["periodic"])],
+        ]
+        share = f"{100 * float(document['carried_fraction']):.3g} %"
+        left_out = f"{_shown(uncertainty['carried'])} rms of faster motion left out"
+        rows.append(["of it carried over extremes", f"{share}, {left_out}"])
+    assumed = [f"assumed: {one}" for one in document.get("assumptions", ())]
+    return "\n".join([table(rows), *assumed])
+
+
+def _shown(quantity: dict[str, Any]) -> str:
+    from metro.display import show
+
+    return show(quantity["value"], quantity["unit"], 2)

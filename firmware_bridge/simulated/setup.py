@@ -6,7 +6,7 @@ from math import pi
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Setup", "Tone", "Triangle"]
+__all__ = ["Drift", "Setup", "Tone", "Triangle"]
 
 FloatArray = NDArray[np.float64]
 
@@ -36,12 +36,27 @@ class Triangle:
 
 
 @dataclass(frozen=True)
+class Drift:
+    """A slow course of the arms by themselves, on a bench that nobody holds at mid-fringe."""
+
+    speed_m_per_s: float
+    sway_m: float = 0.0
+    sway_period_s: float = 10.0
+
+    def metres(self, time_s: FloatArray) -> FloatArray:
+        """Return the differential displacement [m] at each time, shape (n,); zero at t = 0."""
+        sway_m = self.sway_m * np.sin(2 * pi * time_s / self.sway_period_s)
+        return np.asarray(self.speed_m_per_s * time_s + sway_m)
+
+
+@dataclass(frozen=True)
 class Setup:
     """One state of the bench.
 
     ``beam`` is ``"both"``, ``"x"`` or ``"y"`` (one arm alone) or ``"blocked"``; ``slope`` is where
     the operator holds the working point: ``"rising"``, ``"falling"`` or None (wherever it is);
-    ``lean_rad`` how far from mid-fringe that is meant to be, towards the fringe's top.
+    ``lean_rad`` how far from mid-fringe that is meant to be, towards the fringe's top; ``drift`` a slow
+    course of the arms where the bench runs freely.
     """
 
     role: str
@@ -51,6 +66,7 @@ class Setup:
     tones: tuple[Tone, ...] = field(default=())
     scan: Triangle | None = None
     lean_rad: float = 0.0
+    drift: Drift | None = None
 
     def working_phase_rad(self, rng: np.random.Generator) -> float:
         """Return where the operator leaves the fringe [rad]: near mid-fringe, or anywhere."""

@@ -145,6 +145,8 @@ class SampleStream:
         if self._start_m is None:
             self._start_m = float(motion_m[0])
         motion_m -= self._start_m
+        if self._setup.drift is not None:
+            motion_m += self._setup.drift.metres(time_s)
         optical_v = self._optical(time_s, motion_m) * (self._power_scale + power)
         impedance = self._electronics.transimpedance_v_per_a
         shot_v = impedance * shot_current(1.0 / impedance)  # at one volt; grows as its root

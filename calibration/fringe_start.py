@@ -8,7 +8,7 @@ guessed, tie the first harmonic to the mean.
 
 import itertools
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from calibration.bessel_table import bessel_rows
 from calibration.harmonic_blocks import HarmonicBlocks, lay_blocks
 from calibration.line_shape import LineShape, likely_motions
+from calibration.record_band import highest_turn, thinned
 from calibration.tone_chain import chain_tones, working_by_regression
 
 __all__ = ["FringeStart", "find_starts"]
@@ -141,6 +142,31 @@ def find_starts(
     list of FringeStart
         Most likely first, at most 48.
     """
+    reach = highest_turn(values)
+    few, many = thinned(values, reach)
+    if many == 1:
+        return _starts(values, turns, low, high, periods, reach)
+    # the same moment is the middle of both
+    late = np.exp(0.5j * turns * (len(values) - many * len(few)))
+    return [
+        replace(
+            start,
+            phasors=start.phasors * late,
+            middle=start.middle * many + (many - 1) / 2.0,
+        )
+        for start in _starts(few, turns * many, low, high, periods, reach * many)
+    ]
+
+
+def _starts(
+    values: NDArray[np.float64],
+    turns: NDArray[np.float64],
+    low: float | None,
+    high: float | None,
+    periods: float,
+    reach: float,
+) -> list[FringeStart]:
+    """Find start values from harmonics up to the highest frequency of the record."""
     period = 2.0 * np.pi / float(turns.min())
     apart = min([abs(a - b) for a, b in itertools.combinations(turns.tolist(), 2)], default=np.inf)
     blocks = lay_blocks(values, max(3.0 * period, 3.0 * 2.0 * np.pi / apart), period, periods)
@@ -160,7 +186,7 @@ def find_starts(
             values, max(blocks.values.shape[1], min(len(values) / 4.0, 16384.0)), period
         )
         for laid in (long, blocks):  # long ones tell mixed tones apart, short ones follow a drift
-            starts += _from_chains(laid, turns, centre, options, known)
+            starts += _from_chains(laid, turns, centre, reach, options, known)
     for choice in _choices(options):
         starts += _from_choice(blocks, choice, known, extremes)
     return starts[:48]
@@ -170,6 +196,7 @@ def _from_chains(
     blocks: HarmonicBlocks,
     turns: NDArray[np.float64],
     centre: float,
+    reach: float,
     options: list[list[tuple[LineShape, float]]],
     known: tuple[float, float] | None,
 ) -> list[FringeStart]:
@@ -181,7 +208,7 @@ def _from_chains(
         if depth > 0.7
     ]
     out = []
-    for chain in chain_tones(blocks, turns, centre, first) if first else []:
+    for chain in chain_tones(blocks, turns, centre, first, reach) if first else []:
         offset, half_span, working = working_by_regression(blocks, turns, centre, chain.phasors)
         offset, half_span = known or (offset, half_span)
         out.append(FringeStart(offset, half_span, chain.phasors, blocks.middle, working))

@@ -63,8 +63,17 @@ def _comb(
     """Return the harmonics −highest … highest of a complex record in every block."""
     length = left.shape[1]
     order = np.arange(-highest, highest + 1)
-    carriers = np.exp(-1j * turn * np.outer(np.arange(length) - length / 2.0, order))
-    return np.asarray(left @ carriers / length * np.exp(-1j * turn * np.outer(middle, order)))
+    carriers = np.ones((len(order), length), dtype=np.complex128)
+    first = np.exp(-1j * turn * (np.arange(length) - length / 2.0))
+    for k in range(1, highest + 1):  # powers of the first cost a tenth of as many exponentials
+        np.multiply(carriers[highest + k - 1], first, out=carriers[highest + k])
+        np.conj(carriers[highest + k], out=carriers[highest - k])
+    return np.asarray(left @ carriers.T / length * np.exp(-1j * turn * np.outer(middle, order)))
+
+
+def _highest(turn: float, reach: float) -> int:
+    """Return the highest harmonic of a line that is looked at."""
+    return min(max(int(np.pi / turn * 0.96), 1), int(1.3 * reach / turn) + 8, _HIGHEST)
 
 
 def _options(comb: NDArray[np.complex128], deepest: float) -> list[tuple[float, complex]]:
@@ -97,7 +106,11 @@ def _options(comb: NDArray[np.complex128], deepest: float) -> list[tuple[float, 
 
 
 def _next(
-    blocks: HarmonicBlocks, turns: NDArray[np.float64], centre: float, chain: Chain
+    blocks: HarmonicBlocks,
+    turns: NDArray[np.float64],
+    centre: float,
+    chain: Chain,
+    reach: float,
 ) -> list[Chain]:
     """Return the chain with one more line, in the likeliest ways."""
     window = blocks.values - blocks.window_mean[:, None] * _window(blocks)
@@ -106,8 +119,7 @@ def _next(
     for line, turn in enumerate(turns.tolist()):
         if line in chain.found:
             continue
-        highest = min(max(int(np.pi / turn * 0.96), 1), _HIGHEST)
-        comb = _comb(left, blocks.middle - centre, turn, highest)
+        comb = _comb(left, blocks.middle - centre, turn, _highest(turn, reach))
         for power, phasor in _options(comb, min(0.95 * np.pi / turn, float(_HIGHEST))):
             phasors = chain.phasors.copy()
             phasors[line] = phasor
@@ -125,6 +137,7 @@ def chain_tones(
     turns: NDArray[np.float64],
     centre: float,
     first: list[tuple[int, complex]],
+    reach: float = math.pi,
 ) -> list[Chain]:
     """Find all lines one after another, from several guesses of the first.
 
@@ -138,6 +151,8 @@ def chain_tones(
         Sample index at which phases count as zero.
     first : list of tuple
         Guesses (line, phasor) to begin with.
+    reach : float, optional
+        Highest frequency of the record, as phase per sample [rad].
 
     Returns
     -------
@@ -153,16 +168,20 @@ def chain_tones(
         phasors[line] = phasor
         beam.append(Chain(phasors, (line,), 0.0))
     for _ in range(len(turns) - 1):
-        longer = [chain for known in beam for chain in _next(few, turns, centre, known)]
+        longer = [chain for known in beam for chain in _next(few, turns, centre, known, reach)]
         longer.sort(key=lambda chain: -chain.score)
         beam = _different(longer)[:_BEAM]
-    again = [_again(few, turns, centre, chain) for chain in beam]
+    again = [_again(few, turns, centre, chain, reach) for chain in beam]
     again.sort(key=lambda chain: -chain.score)
     return _different(again)
 
 
 def _again(
-    blocks: HarmonicBlocks, turns: NDArray[np.float64], centre: float, chain: Chain
+    blocks: HarmonicBlocks,
+    turns: NDArray[np.float64],
+    centre: float,
+    chain: Chain,
+    reach: float,
 ) -> Chain:
     """Return the chain with every line found again in what all the others leave."""
     for _ in range(_ROUNDS):
@@ -171,7 +190,7 @@ def _again(
             phasors = chain.phasors.copy()
             phasors[line] = 0.0
             others = tuple(other for other in chain.found if other != line)
-            best = _next(blocks, turns, centre, Chain(phasors, others, 0.0))
+            best = _next(blocks, turns, centre, Chain(phasors, others, 0.0), reach)
             chain = max([chain, *best], key=lambda one: one.score)
         if chain.score < 1.001 * before:
             break

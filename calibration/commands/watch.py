@@ -147,6 +147,7 @@ def watch(
             guard,
             port_number,
             is_replay=replay is not None,
+            is_text=text,
             first=first,
             ready=click.echo,
         )

@@ -34,10 +34,12 @@ class ShownDrive:
         Its setup has the limit; told of every change, so that it follows the lines.
     is_replay : bool
         A recording replayed has no drive.
+    is_text : bool
+        A board that prints text drives nothing that it could be asked for.
     """
 
-    def __init__(self, state: WatchState, *, is_replay: bool) -> None:
-        self._state, self._is_replay = state, is_replay
+    def __init__(self, state: WatchState, *, is_replay: bool, is_text: bool = False) -> None:
+        self._state, self._is_replay, self._is_text = state, is_replay, is_text
         self.limit_v = state.setup.drive_limit_v
         self._said: LiveLines | None = None
         self._asked: list[_Asked] = []
@@ -82,6 +84,8 @@ class ShownDrive:
         """Return why no line can be set, None where it can."""
         if self._is_replay:
             return "a recording is replayed: there is no drive"
+        if self._is_text:
+            return "a board that prints text takes no orders"
         if self.limit_v is None:
             return "the bench file states no [actuator] drive_limit: no line is set from here"
         if self.is_away:
@@ -192,7 +196,7 @@ class ShownDrive:
         """What is known: "none", "unknown", "stopping", "on", "at rest"."""
         stream = self._state.stream
         has_drive = stream is not None and stream.said.full_scale_v is not None
-        if self._is_replay or (not self.lines and not has_drive):
+        if self._is_replay or self._is_text or (not self.lines and not has_drive):
             return "none"
         if self.is_away:
             return "unknown"

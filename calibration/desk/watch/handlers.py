@@ -9,6 +9,7 @@ import tornado.iostream
 import tornado.web
 import tornado.websocket
 
+from calibration.desk.watch.orders import OF_DRIVE
 from calibration.desk.watch.sender import Viewer
 
 if TYPE_CHECKING:
@@ -147,7 +148,8 @@ class LiveHandler(_Guarded, tornado.websocket.WebSocketHandler):
             return
         answer = self.watch.orders.obey(order)
         if answer is not None:
-            self.watch.tell(answer)
+            is_of_drive = isinstance(order, dict) and str(order.get("do")) in OF_DRIVE
+            self.watch.tell(answer, is_of_drive=is_of_drive)
 
     def send(self, make: Callable[["LiveHandler"], bytes]) -> None:
         """Send a message, unless the last one is still on its way: a slow page gets fewer."""

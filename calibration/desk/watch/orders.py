@@ -15,7 +15,10 @@ from firmware_bridge.drive_lines import DriveLine
 from firmware_bridge.errors import BridgeError
 from metro.errors import MetroError
 
-__all__ = ["NOT_KNOWN", "Answer", "Orders"]
+__all__ = ["NOT_KNOWN", "OF_DRIVE", "Answer", "Orders"]
+
+OF_DRIVE = frozenset(("stop", "set line", "clear line"))
+"""Orders whose answers belong beside the drive's controls."""
 
 NOT_KNOWN = "whether the drive is at rest is not known"
 """Where nobody has confirmed it."""
@@ -23,10 +26,21 @@ NOT_KNOWN = "whether the drive is at rest is not known"
 
 @dataclass(frozen=True, slots=True)
 class Answer:
-    """What became of an order; ``refused`` where nothing was done."""
+    """What became of an order.
+
+    Parameters
+    ----------
+    text : str
+        For people.
+    refused : bool
+        Whether nothing was done.
+    is_stop_over : bool
+        Whether nothing more will be heard of a stop: it is confirmed, or cannot be.
+    """
 
     text: str
     refused: bool = False
+    is_stop_over: bool = False
 
 
 class Orders:
@@ -40,11 +54,21 @@ class Orders:
         Told of the lines that are set.
     is_replay : bool
         A recording replayed: it has neither drive nor recording.
+    is_text : bool
+        A board that prints text: nothing can be told to it.
     """
 
-    def __init__(self, source: Source, state: WatchState, *, is_replay: bool = False) -> None:
+    def __init__(
+        self,
+        source: Source,
+        state: WatchState,
+        *,
+        is_replay: bool = False,
+        is_text: bool = False,
+    ) -> None:
         self._source, self._state, self._is_replay = source, state, is_replay
-        self.drive = ShownDrive(state, is_replay=is_replay)
+        self._is_text = is_text
+        self.drive = ShownDrive(state, is_replay=is_replay, is_text=is_text)
         self._doers = {
             "stop": self._stop,
             "record": self._record,
@@ -85,7 +109,13 @@ class Orders:
 
     def _stop(self, _order: dict[str, Any]) -> Answer:
         if self._is_replay:
-            return Answer("a recording is replayed: there is no drive")
+            return Answer("a recording is replayed: there is no drive", is_stop_over=True)
+        if self._is_text:
+            return Answer(
+                "a board that prints text cannot be told to stop: switch the driver off",
+                refused=True,
+                is_stop_over=True,
+            )
         try:
             self.drive.stop(self._source.rest())
         except BridgeError as error:

@@ -134,9 +134,9 @@ class WatchServer:
                 self._do(job)
         for said in self.state.take_drive_lines():
             if self.orders.drive.hear(said):
-                self.tell(Answer("drive stopped"))
+                self.tell(Answer("drive stopped", is_stop_over=True), is_of_drive=True)
         for reply in self.state.take_replies():
-            self.tell(Answer(reply.text, reply.refused), by_board=True)
+            self.tell(Answer(reply.text, reply.refused), by_board=True, is_of_drive=True)
 
     def _do(self, job: Job) -> None:
         if self._jobs >= _JOBS:
@@ -162,7 +162,7 @@ class WatchServer:
         for live in list(self.lives):
             live.send(lambda live: message_for(live.viewer, self.state, self.orders, self.latency))
 
-    def tell(self, answer: Answer, *, by_board: bool = False) -> None:
+    def tell(self, answer: Answer, *, by_board: bool = False, is_of_drive: bool = False) -> None:
         """Show a line of text on every page.
 
         Parameters
@@ -171,12 +171,22 @@ class WatchServer:
             What to show.
         by_board : bool
             Whether it comes from the port rather than from here.
+        is_of_drive : bool
+            Whether it belongs beside the drive's controls.
         """
         if answer.refused:
             _log.warning("%s", answer.text)
         else:
             _log.info("%s", answer.text)
-        text = json.dumps({"text": answer.text, "refused": answer.refused, "board": by_board})
+        text = json.dumps(
+            {
+                "text": answer.text,
+                "refused": answer.refused,
+                "stop_over": answer.is_stop_over,
+                "board": by_board,
+                "of_drive": is_of_drive,
+            }
+        )
         for live in list(self.lives):
             live.say(text)
 

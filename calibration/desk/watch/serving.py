@@ -29,6 +29,7 @@ def serve(
     port_number: int,
     *,
     is_replay: bool = False,
+    is_text: bool = False,
     first: list[LiveEvent] | None = None,
     ready: Callable[[str], None],
 ) -> WatchServer:
@@ -46,6 +47,8 @@ def serve(
         0 for any that is free.
     is_replay : bool
         A recording replayed.
+    is_text : bool
+        A board that prints text.
     first : list of LiveEvent, optional
         What has been polled already.
     ready : callable
@@ -66,7 +69,7 @@ def serve(
     state = WatchState(setup)
     for event in first or ():
         state.take(event)
-    orders = Orders(source, state, is_replay=is_replay)
+    orders = Orders(source, state, is_replay=is_replay, is_text=is_text)
     server = WatchServer(source, state, orders, guard)
     reason = asyncio.run(_whole(server, port_number, ready, is_replay=is_replay))
     if reason:

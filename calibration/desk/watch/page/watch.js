@@ -346,6 +346,20 @@ function showLines(said) {
   }
   $("lines").replaceChildren(...rows);
   write("doubts", doubts(said.lines, said.line_remarks));
+  showReasons();
+}
+
+// A button for what does not fit into the box of the lines, while it does not.
+function showReasons() {
+  const box = $("box-lines"), isOpen = box.classList.contains("open");
+  $("reasons").hidden = !isOpen && box.scrollHeight <= box.clientHeight + 2;
+}
+
+function openReasons() {
+  const isOpen = $("box-lines").classList.toggle("open");
+  $("reasons").setAttribute("aria-expanded", String(isOpen));
+  write("reasons", isOpen ? "less" : "all of it");
+  showReasons();
 }
 
 // Why the lines in italics are not to be trusted: each reason once, with the lines it is about.
@@ -354,22 +368,25 @@ function doubts(lines, remarks) {
   for (const line of lines) {
     for (const reason of line.reasons) about.set(reason, [...(about.get(reason) ?? []), Number(line.frequency_hz.toPrecision(7))]);
   }
-  return [...[...about].map(([reason, which]) => `${which.join(", ")} Hz: ${reason}`), ...(remarks ?? [])].join("; ");
+  return [...[...about].map(([reason, which]) => `${which.join(", ")} Hz: ${reason}`), ...(remarks ?? [])].join(";\n");
 }
 
 // ---- orders
 
 function order(what) {
-  if (page.socket?.readyState !== WebSocket.OPEN) { answer({ text: "no connection to the program", refused: true }); return false; }
+  if (page.socket?.readyState !== WebSocket.OPEN) { answer({ text: "no connection to the program", refused: true, of_drive: OF_DRIVE.includes(what.do) }); return false; }
   page.socket.send(JSON.stringify(what));
   return true;
 }
 
+const OF_DRIVE = ["stop", "set line", "clear line"];
+
 function answer(said) {
-  if (said.board && !said.refused) { write("answer", `${$("answer").textContent.split(" · ")[0]} · board: ${said.text}`); return; }
-  write("answer", said.text);
-  $("answer").classList.toggle("refused", said.refused);
-  if (said.text === "drive stopped") { page.stopWanted = false; $("stop").classList.remove("pending"); }
+  const place = said.of_drive ? "drive-answer" : "answer";
+  if (said.stop_over) { page.stopWanted = false; $("stop").classList.remove("pending"); }
+  if (said.board && !said.refused) { write(place, `${$(place).textContent.split(" · ")[0]} · board: ${said.text}`); return; }
+  write(place, said.text);
+  $(place).classList.toggle("refused", said.refused);
 }
 
 function stopDrive() {
@@ -430,7 +447,7 @@ function setChange() {
 
 const KEYS = {
   r: record, " ": () => toggle("frozen", "freeze"), z: () => { toggle("zoomed", "zoom"); page.rescale = true; }, c: setChange,
-  n: () => order({ do: "new average" }), d: () => document.body.classList.toggle("dim"),
+  n: () => order({ do: "new average" }), d: () => document.body.classList.toggle("dim"), q: openReasons,
   w: () => setWindow(WINDOWS[(WINDOWS.indexOf(page.window) + 1) % WINDOWS.length]),
 };
 
@@ -456,6 +473,7 @@ function listen() {
   $("freeze").onclick = KEYS[" "];
   $("change").onclick = KEYS.c;
   $("average").onclick = KEYS.n;
+  $("reasons").onclick = openReasons;
 }
 
 // ---- connection

@@ -76,7 +76,7 @@ def test_the_page_moves_and_asks_nobody_else(page, program):
 def test_a_line_set_in_the_page_appears_in_spectrum_and_amplitude(page, board):
     until(lambda: page.data("spectrum_data")["x"], 10.0, "spectrum")
     page.set_line(233.9, 0.5)
-    page.has("answer", "233.9 Hz, 0.5 V")
+    page.has("drive-answer", "233.9 Hz, 0.5 V")
     page.has("drive", "0.5 V")
     # 0.5 V through the drawn actuator into metres, radians and, by J1, into volts.
     truth = board.bench.truth
@@ -105,7 +105,7 @@ def test_more_than_the_drive_limit_is_refused_with_the_reason(page):
     page.set_line(87.1, 39)
     page.has("drive", "39 V")
     page.set_line(141.3, 1.5)
-    assert "beyond the drive limit of 40 V" in page.has("answer", "limit")
+    assert "beyond the drive limit of 40 V" in page.has("drive-answer", "limit")
     assert page.text("drive") == "39 V"
 
 
@@ -123,7 +123,7 @@ def test_stop_zeroes_the_drive(page, folder, how):
         page.press(Keys.ESCAPE)
     else:
         page.element("frequency").send_keys("12" + Keys.ESCAPE)
-    page.has("answer", "drive stopped", 2.0)
+    page.has("drive-answer", "drive stopped", 2.0)
     page.has("drive", "at rest", 2.0)
     time.sleep(1.5)
     page.press("r")
@@ -205,7 +205,7 @@ def test_the_end_of_the_program_shows_and_leaves_a_closed_recording(page, progra
     assert recording.duration_s > 0.5
     assert not any("cut" in remark for remark in recording.remarks)
     page.element("stop").click()
-    assert "no connection" in page.text("answer")
+    assert "no connection" in page.text("drive-answer")
 
 
 def test_everything_can_be_reached_by_keyboard(page):

@@ -62,11 +62,11 @@ def board(stream=1, full_scale_v=5.0):
     return LiveChannels(1000.0, channels, full_scale_v=full_scale_v, stream=stream)
 
 
-def made(tmp_path, *, limit_v=5.0, said=None, is_replay=False):
+def made(tmp_path, *, limit_v=5.0, said=None, **kind):
     state = WatchState(WatchSetup("test", bench(limit_v)))
     state.take(said or board())
     source = Recorded(tmp_path)
-    return Orders(source, state, is_replay=is_replay), source, state
+    return Orders(source, state, **kind), source, state
 
 
 @pytest.fixture
@@ -222,6 +222,7 @@ def test_without_a_limit_or_a_drive_no_line_is_set(tmp_path):
         made(tmp_path, limit_v=None),
         made(tmp_path, said=board(full_scale_v=None)),
         made(tmp_path, is_replay=True),
+        made(tmp_path, is_text=True),
     ):
         assert orders.obey(line()) == Answer(orders.drive.why_not(), refused=True)
         assert source.asked == []
@@ -232,6 +233,17 @@ def test_a_replay_records_nothing(tmp_path):
     assert orders.obey({"do": "record", "name": "run"}).refused
     assert source.asked == []
     assert orders.document()["can_record"] is False
+
+
+@pytest.mark.parametrize("kind", ["is_replay", "is_text"])
+def test_a_stop_where_nobody_can_be_told_is_over(tmp_path, kind):
+    """The board that prints text may well drive, by a column called so: it cannot be asked."""
+    orders, source, _ = made(tmp_path, **{kind: True})
+    said = orders.obey({"do": "stop"})
+    assert said.is_stop_over
+    assert said.refused == (kind == "is_text")
+    assert source.asked == []
+    assert orders.drive.condition == "none"
 
 
 def test_all_slots_taken(desk):

@@ -74,13 +74,13 @@ def noise_figure(chain: Chain) -> Any:  # noqa: ANN401  # matplotlib's Figure
     axes.set(
         xlabel="frequency [Hz]",
         ylabel="displacement density [m/√Hz]",
-        title="Expected noise as differential displacement",
     )
+    figure.suptitle("Expected noise as differential displacement")
+    axes.set_title(_missing(noises[0]), fontsize="small", alpha=0.7, wrap=True)
     axes.grid(visible=True, which="both", alpha=0.25)
     axes.set(xscale="log", yscale="log")
     figure.legend(loc="outside lower center", ncols=4, frameon=False)
     _strain_axis(axes, chain)
-    _say_what_is_missing(axes, noises[0])
     return figure
 
 
@@ -112,13 +112,7 @@ def _advice(noise: Sensitivity) -> str:
     return " ".join(next(iter(noise.missing.values()), "every source is given as 0").split())
 
 
-def _say_what_is_missing(axes: Any, noise: Sensitivity) -> None:  # noqa: ANN401  # matplotlib's Axes
-    if noise.missing:
-        names = ", ".join(name.replace("_", " ") for name in noise.missing)
-        axes.annotate(
-            f"not given: {names}",
-            (0.01, 0.01),
-            xycoords="axes fraction",
-            fontsize="small",
-            alpha=0.7,
-        )
+def _missing(noise: Sensitivity) -> str:
+    """Return what no curve is there for; it stands above the axes, where it meets no curve."""
+    names = ", ".join(name.replace("_", " ") for name in noise.missing)
+    return f"not given: {names}" if names else ""

@@ -5,8 +5,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from calibration.desk.control_chart import FEWEST
 from calibration.desk.line_chart import LineChart
 from calibration.desk.utc import unix_of
+from firmware_bridge.gap_reason import counted
 from metro.extras import require
 
 if TYPE_CHECKING:
@@ -18,12 +20,16 @@ __all__ = ["chart_figure"]
 
 # Okabe and Ito's colours, told apart by colour-blind readers.
 _BLUE, _ORANGE, _GREY, _GREEN = "#0072b2", "#d55e00", "#777777", "#009e73"
+_HEIGHT, _FEW_HEIGHT, _FEW_IN_ROW = 3.6, 3.0, 4
+_WIDTHS = (2.2, 1.5, 1.2)
 _LEAST_S = 60.0
 _MOST_BARS = 150  # results beyond which their error bars would be one blur
 
 
 def chart_figure(charts: "Sequence[LineChart]") -> Any:  # noqa: ANN401  # matplotlib's Figure
     """Return a figure of the charts of some lines, a row of three pictures each.
+
+    Lines with too few results for limits show the results alone, several in a row.
 
     Parameters
     ----------
@@ -33,7 +39,7 @@ def chart_figure(charts: "Sequence[LineChart]") -> Any:  # noqa: ANN401  # matpl
     Returns
     -------
     matplotlib.figure.Figure
-        Results over time, cumulative sums, Allan deviation.
+        Results over time; with enough of them cumulative sums and Allan deviation.
 
     Raises
     ------
@@ -41,13 +47,40 @@ def chart_figure(charts: "Sequence[LineChart]") -> Any:  # noqa: ANN401  # matpl
         If matplotlib is not installed.
     """
     figures = require("matplotlib.figure", "bench", "--plot")
-    figure = figures.Figure(figsize=(13.0, 3.6 * len(charts)), layout="constrained")
-    grid = figure.add_gridspec(len(charts), 3, width_ratios=(2.2, 1.5, 1.2))
+    few = [chart for chart in charts if len(chart.values) < FEWEST]
+    many = [chart for chart in charts if len(chart.values) >= FEWEST]
+    few_rows = -(-len(few) // _FEW_IN_ROW)
+    height = _HEIGHT * len(many) + _FEW_HEIGHT * few_rows
+    figure = figures.Figure(figsize=(13.0, max(height, _HEIGHT)), layout="constrained")
+    parts = [part for part, rows in (("many", many), ("few", few)) if rows]
+    sizes = {"many": _HEIGHT * len(many), "few": _FEW_HEIGHT * few_rows}
+    grid = figure.add_gridspec(len(parts), 1, height_ratios=[sizes[part] for part in parts])
+    for place, part in enumerate(parts):
+        if part == "many":
+            _draw_many(figure, grid[place].subgridspec(len(many), 3, width_ratios=_WIDTHS), many)
+        else:
+            _draw_few(figure, grid[place].subgridspec(few_rows, min(len(few), _FEW_IN_ROW)), few)
+    return figure
+
+
+def _draw_many(figure: Any, grid: Any, charts: "Sequence[LineChart]") -> None:  # noqa: ANN401  # matplotlib's
     for row, chart in enumerate(charts):
         _draw_results(figure.add_subplot(grid[row, 0]), chart)
         _draw_sums(figure.add_subplot(grid[row, 1]), chart)
         _draw_allan(figure.add_subplot(grid[row, 2]), chart)
-    return figure
+
+
+def _draw_few(figure: Any, grid: Any, charts: "Sequence[LineChart]") -> None:  # noqa: ANN401  # matplotlib's
+    """Draw the results alone; say what there will be from enough of them on."""
+    for number, chart in enumerate(charts):
+        axes = figure.add_subplot(grid[divmod(number, grid.ncols)])
+        _draw_results(axes, chart)
+        axes.margins(y=0.35)
+    figure.supxlabel(
+        f"limits, cumulative sums and Allan deviation are drawn from {FEWEST} results of a line on",
+        fontsize="small",
+        color=_GREY,
+    )
 
 
 def _draw_results(axes: "Axes", chart: LineChart) -> None:
@@ -72,7 +105,7 @@ def _draw_results(axes: "Axes", chart: LineChart) -> None:
         axes.plot([], [], color=_GREY, linewidth=1.0, linestyle="--", label="3σ limits")
     _mark_alarms(axes, chart, label=True)
     corrected = ", at one temperature" if chart.law.is_used else ""
-    axes.set_title(f"{chart.line_hz:.6g} Hz: {len(chart.values)} results{corrected}")
+    axes.set_title(f"{chart.line_hz:.6g} Hz: {counted(len(chart.values), 'result')}{corrected}")
     axes.set_ylabel(f"response over drive [{unit}]" if unit else "response over drive")
     _time_axis(axes, chart.time_s)
     axes.legend(fontsize="x-small", loc="best", framealpha=0.9)
@@ -151,8 +184,12 @@ def _time_axis(axes: "Axes", time_s: Any) -> None:  # noqa: ANN401  # ndarray
     from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
 
     axes.set_xlim(*_limits(time_s))  # type: ignore[arg-type]  # dates are as good as numbers
-    locator = AutoDateLocator(maxticks=7)  # type: ignore[no-untyped-call]  # matplotlib's own
-    axes.xaxis.set_major_locator(locator)
-    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))  # type: ignore[no-untyped-call]  # same
     axes.set_xlabel("UTC")
     axes.grid(visible=True, alpha=0.25)
+    if not np.ptp(time_s) > 0:  # one moment alone
+        moment = _dates(time_s[:1])
+        axes.set_xticks(moment, [f"{moment[0]:%Y-%m-%d %H:%M}"])  # type: ignore[arg-type]  # same
+        return
+    locator = AutoDateLocator(minticks=2, maxticks=6)  # type: ignore[no-untyped-call]  # matplotlib's own
+    axes.xaxis.set_major_locator(locator)
+    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator))  # type: ignore[no-untyped-call]  # same

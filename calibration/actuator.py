@@ -84,7 +84,9 @@ def actuator_line(
         *_fit_terms(line),
         *readout.drive_terms(recorded=drive_read),
         *(readout.reference_term(+1.0) if drive_read else readout.drive_setting_term(number)),
-        *curvature.line_terms(bench, extremes, line.means.cos, drive_read=drive_read),
+        *curvature.line_terms(
+            bench, extremes, line.cosines or (line.means.cos,), drive_read=drive_read
+        ),
         *readout.response_terms(frequency_hz, recorded=drive_read),
         *_additive_terms(line, extremes, bench, frequency_hz, volts),
         *([] if loop is None else loop.terms(frequency_hz)),
@@ -189,7 +191,7 @@ def _additive_terms(
         terms = _pair(PICKUP_MEASURED, size, turn, "A", line.additive.dof)
     return [
         *terms,
-        *(_wires_terms(line, bench, frequency_hz, volts) if "wires" in lacks else []),
+        *(_wires_terms(line, extremes, bench, frequency_hz, volts) if "wires" in lacks else []),
         *(_stated_tilt(line, extremes, bench, volts) if lacks - {"wires"} else []),
     ]
 
@@ -211,10 +213,12 @@ def _residue_terms(line: CombinedLine, extremes: Extremes) -> list[Term]:
     ]
 
 
-def _wires_terms(line: CombinedLine, bench: Bench, frequency_hz: float, volts: float) -> list[Term]:
+def _wires_terms(
+    line: CombinedLine, extremes: Extremes, bench: Bench, frequency_hz: float, volts: float
+) -> list[Term]:
     """Return the pick-up of the wires where it was not measured: stated, or assumed."""
     if bench.get("drive.pickup") is None:
-        u = ASSUMED_ADDITIVE / sqrt(3.0)
+        u = ASSUMED_ADDITIVE / sqrt(3.0) * line.one_sided(extremes.swing_v)
         return _pair(PICKUP_ASSUMED, u, u, "B", inf)
     weight = abs(line.additive_weight / line.ratio)
     u = weight * bench.u("drive.pickup") * frequency_hz / 100.0 * volts
@@ -227,7 +231,8 @@ def _stated_tilt(line: CombinedLine, extremes: Extremes, bench: Bench, volts: fl
     Tilt adds to the light and changes the fringe's swing, in step with each other.
     """
     if bench.get("actuator.tilt") is None:
-        u, name = ASSUMED_ADDITIVE / sqrt(3.0), "beam tilt (not measured, assumed)"
+        u = ASSUMED_ADDITIVE / sqrt(3.0) * line.one_sided(extremes.swing_v)
+        name = "beam tilt (not measured, assumed)"
         return [Term(name, None, "1", u, relative=1.0, distribution="rectangular")]
     side = -1.0 if line.additive_weight > 0 else 1.0  # the rising slope has a negative weight
     reach = abs(extremes.mid_v * abs(line.additive_weight) + side * line.tilt_weight) / 2

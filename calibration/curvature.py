@@ -5,7 +5,7 @@ quadratic part, x³ − x for the cubic one, both zero at the ends. Extremes, li
 through the same curve, so that only what differs between them stays.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -51,8 +51,10 @@ class _Bend:
         return push / (extremes.swing_v**2 - offset_v**2)
 
 
-def line_terms(bench: Bench, extremes: Extremes, cosine: float, *, drive_read: bool) -> list[Term]:
-    """Return the curvature in a line at a working point, against the extremes.
+def line_terms(
+    bench: Bench, extremes: Extremes, cosines: Sequence[float], *, drive_read: bool
+) -> list[Term]:
+    """Return the curvature in a line at its working points, against the extremes.
 
     Parameters
     ----------
@@ -60,8 +62,8 @@ def line_terms(bench: Bench, extremes: Extremes, cosine: float, *, drive_read: b
         ``adc.quadratic``, ``adc.cubic`` with their u, and ``adc.range``.
     extremes : Extremes
         The fringe's extremes.
-    cosine : float
-        Mean cos φ of the record.
+    cosines : sequence of float
+        cos φ of the record: its mean, or levels that stand for equal parts of it.
     drive_read : bool
         Whether the drive was read, around zero, by the same converter.
 
@@ -70,10 +72,11 @@ def line_terms(bench: Bench, extremes: Extremes, cosine: float, *, drive_read: b
     list of Term
         One a stated shape.
     """
-    level_v = extremes.mid_v + cosine * extremes.swing_v
+    levels_v = [extremes.mid_v + cosine * extremes.swing_v for cosine in cosines]
 
     def effect(bend: _Bend) -> float:
-        relative = bend.slope(level_v) - bend.sine(extremes, level_v)
+        each = [bend.slope(level_v) - bend.sine(extremes, level_v) for level_v in levels_v]
+        relative = float(np.mean(each))
         return relative - bend.slope(0.0) if drive_read else relative
 
     return _terms(bench, effect)

@@ -82,6 +82,8 @@ class Calibration(NotebookPage):
         Drive, bias, history and temperature under which the calibration holds.
     open_loop : dict or None
         File and SHA-256 of the servo's open-loop gain that was undone.
+    routes : list of dict
+        Further routes to metres per volt, each with its valid range and its own coefficients.
     """
 
     created: str
@@ -105,6 +107,7 @@ class Calibration(NotebookPage):
     drive_series: list[dict[str, Any]] = field(default_factory=list)
     validity: dict[str, Any] = field(default_factory=dict)
     open_loop: dict[str, Any] | None = None
+    routes: list[dict[str, Any]] = field(default_factory=list)
 
     @property
     def is_trustworthy(self) -> bool:
@@ -176,6 +179,7 @@ class Calibration(NotebookPage):
             "drive_series": self.drive_series,
             "validity": self.validity,
             "open_loop": self.open_loop,
+            "routes": self.routes,
         }
         return dict(plain(document))
 
@@ -222,6 +226,7 @@ class Calibration(NotebookPage):
                 drive_series=list(document.get("drive_series", ())),
                 validity=dict(document.get("validity", {})),
                 open_loop=document.get("open_loop"),
+                routes=list(document.get("routes", ())),
             )
         except KeyError as error:
             raise CalibrationFileError(f"the calibration has no {error.args[0]!r}") from None

@@ -1,4 +1,4 @@
-"""The slope route against the driven fringe: two ways from the same samples to radians.
+"""The slope route against others: the driven fringe from the same samples, a bench that runs freely.
 
 The slope inverts each sample between the extremes and fits lines to the phase; the driven fringe fits
 all lines, the working point and the extremes to the volts at once (ISO 16063-11 method 3 carried
@@ -18,7 +18,6 @@ from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
 from calibration.slope_line import is_driven
 from calibration.term import ROUTES, Term
-from calibration.working_point import invert_fringe
 
 __all__ = ["SAMPLES", "RouteCheck", "compare_routes", "route_term"]
 
@@ -30,27 +29,31 @@ _K95 = 1.96
 
 @dataclass(frozen=True)
 class RouteCheck:
-    """The two routes at one line, on one stretch of a recording.
+    """Two routes at one line.
 
     Parameters
     ----------
     frequency_hz : float
         Of the line [Hz].
-    slope_rad, fringe_rad : float
-        Its amplitude by either route [rad].
-    u_rad : float
-        Standard uncertainty of their difference [rad], from the noise of both fits.
+    one, other : float
+        Its amplitude, or its coefficient, by either route, in one unit.
+    u : float
+        Standard uncertainty of their difference, in that unit: the noise of both fits and what else
+        they do not have in common.
+    routes : str
+        Both routes in words.
     """
 
     frequency_hz: float
-    slope_rad: float
-    fringe_rad: float
-    u_rad: float
+    one: float
+    other: float
+    u: float
+    routes: str = "slope and driven fringe"
 
     @property
     def difference(self) -> float:
-        """Driven fringe minus slope, relative."""
-        return self.fringe_rad / self.slope_rad - 1.0
+        """The other minus the one, relative."""
+        return self.other / self.one - 1.0
 
     @property
     def excess_u(self) -> float:
@@ -58,14 +61,14 @@ class RouteCheck:
 
         The excess is taken as the half-width of a rectangular distribution: common practice.
         """
-        own = self.u_rad / self.slope_rad
+        own = self.u / self.one
         return sqrt(max(0.0, self.difference**2 - own**2)) / sqrt(3.0)
 
     def to_dict(self) -> dict[str, Any]:
         """Return it as a check of the calibration."""
-        error = abs(self.difference) * self.slope_rad / (_K95 * self.u_rad) if self.u_rad else 0.0
+        error = abs(self.difference) * self.one / (_K95 * self.u) if self.u else 0.0
         return {
-            "name": f"slope and driven fringe at {self.frequency_hz:g} Hz "
+            "name": f"{self.routes} at {self.frequency_hz:g} Hz "
             f"(they differ by {100 * self.difference:+.2g} %)",
             "normalised_error": error,
             "agree": error <= 1.0,
@@ -73,9 +76,14 @@ class RouteCheck:
 
 
 def compare_routes(
-    volts: FloatArray, rate_hz: float, fit: LineFit, extremes: Extremes, slope: str
+    volts: FloatArray,
+    rate_hz: float,
+    fit: LineFit,
+    extremes: Extremes,
+    phase_rad: FloatArray,
+    name: str = "slope",
 ) -> list[RouteCheck]:
-    """Return both routes at every driven line of a stretch of a lines recording.
+    """Return the driven fringe beside another route at every driven line of a stretch of a recording.
 
     Parameters
     ----------
@@ -84,11 +92,13 @@ def compare_routes(
     rate_hz : float
         Samples a second [Hz].
     fit : LineFit
-        The slope route's fit of the whole recording: its lines in the board's time.
+        The other route's fit of the whole recording: its lines in the board's time.
     extremes : Extremes
         The fringe's extremes.
-    slope : str
-        ``"rising"`` or ``"falling"``.
+    phase_rad : ndarray, shape (n,)
+        The samples inverted by the other route, NaN where they are not.
+    name : str
+        The other route.
 
     Returns
     -------
@@ -113,9 +123,9 @@ def compare_routes(
             high_u=float(u_high),
             value_unit="V",
         )
-        phase_rad = invert_fringe(stretch, extremes, slope).phase_rad
+        inverted = np.ascontiguousarray(phase_rad[:SAMPLES])
         sloped = fit_lines_si(
-            phase_rad, rate_hz, frequencies_hz, value_unit="rad", search_clock=False
+            inverted, rate_hz, frequencies_hz, value_unit="rad", search_clock=False
         )
     except CalibrationError:
         return []
@@ -127,6 +137,7 @@ def compare_routes(
             float(by_slope.amplitude.magnitude),
             float(by_fringe.magnitude),
             float(np.hypot(by_slope.amplitude.u_magnitude, by_fringe.u_magnitude)),
+            f"{name} and driven fringe",
         )
         for line, by_slope, by_fringe in zip(
             lines, sloped.lines, fringe.phase_amplitude, strict=True

@@ -27,6 +27,7 @@ ROLES = (
     "scan",
     "lines-rising",
     "lines-falling",
+    "lines-free",
     "series",
 )
 
@@ -110,15 +111,16 @@ class Session:
             _open(role, str(path), bench) for role in ROLES for path in files.get(role, ())
         ]
         _check_distinct(self._records)
-        if not (self.of("lines-rising") or self.of("lines-falling")):
+        if not self.driven:
             raise CalibrationError(
                 "a calibration needs at least one recording of lines on a slope, got none "
-                "(--lines-rising FILE or --lines-falling FILE)"
+                "(--lines-rising FILE or --lines-falling FILE, or --lines-free FILE where the bench "
+                "runs freely)"
             )
 
-        read = {record.drive is not None for record in self.slopes}
+        read = {record.drive is not None for record in self.driven}
         if len(read) > 1:
-            bare = next(record.path for record in self.slopes if record.drive is None)
+            bare = next(record.path for record in self.driven if record.drive is None)
             raise CalibrationError(
                 f"all lines recordings must have a drive channel or none, got one without: {bare}"
             )
@@ -127,6 +129,11 @@ class Session:
     def slopes(self) -> list[RoleRecord]:
         """The lines recordings on both slopes."""
         return [*self.of("lines-rising"), *self.of("lines-falling")]
+
+    @property
+    def driven(self) -> list[RoleRecord]:
+        """All lines recordings: on both slopes, then free-running."""
+        return [*self.slopes, *self.of("lines-free")]
 
     def of(self, role: str) -> list[RoleRecord]:
         """Return the records of one role, in the order given."""

@@ -98,7 +98,10 @@ def _check(name: str, difference: float, u: float) -> dict[str, Any]:
 
 def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
     """Return what a user of the calibration should know, one line each."""
-    cautions = [text for role, text in _MISSING.items() if not session.of(role)]
+    missing = dict(_MISSING)
+    if not session.slopes:  # a free-running bench passes both: what that leaves is said elsewhere
+        missing = {role: text for role, text in missing.items() if not role.startswith("lines-")}
+    cautions = [text for role, text in missing.items() if not session.of(role)]
     if bench.get("photodiode.bandwidth") is None:
         cautions.append("photodiode.bandwidth not stated: the amplifier is taken as fast enough")
     if not bench.u("laser.wavelength"):
@@ -108,7 +111,7 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
         cautions.append("one scan only and no fringe.drift: the power's drift is an assumption")
     cautions += bench_cautions(bench)
     for record in session:
-        if record.role in _DRIVEN_ROLES and record.drive is None and session.slopes[0].drive:
+        if record.role in _DRIVEN_ROLES and record.drive is None and session.driven[0].drive:
             name = Path(record.path).name
             cautions.append(f"{name} has no drive channel: what it measured could not be used")
         if record.used_fraction < 1.0:

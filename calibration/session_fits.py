@@ -13,10 +13,12 @@ from numpy.typing import NDArray
 from calibration.dark import dark_level
 from calibration.errors import CalibrationError
 from calibration.extremes import Extremes
+from calibration.free_line import FreeLine, combine_free
+from calibration.free_record import FreeRecord
 from calibration.line_fit import LineFit
 from calibration.lines import fit_lines_si
 from calibration.mains import without_mains
-from calibration.pickup import additive_of
+from calibration.pickup import Additive, additive_of
 from calibration.scan import ScanFit, fit_scan
 from calibration.scan_tilt import Lean, level_scan
 from calibration.session import RoleRecord, Session
@@ -53,10 +55,12 @@ class SessionFits:
         The bench file.
     session : Session
         Its recordings by role.
+    pilot_hz : float, optional
+        The pilot of free-running recordings [Hz]; by default the highest line.
     """
 
-    def __init__(self, bench: Bench, session: Session) -> None:
-        self.bench, self.session = bench, session
+    def __init__(self, bench: Bench, session: Session, pilot_hz: float | None = None) -> None:
+        self.bench, self.session, self._pilot_hz = bench, session, pilot_hz
         self.frequencies_hz = [line.frequency_hz for line in bench.lines]
 
     @cached_property
@@ -83,7 +87,7 @@ class SessionFits:
 
     def _lines_bias_v(self) -> float:
         """Return the mean of the recorded drive of the lines [V], 0 where it is not recorded."""
-        drives = [r.drive.values for r in self.session.slopes if r.drive is not None]
+        drives = [r.drive.values for r in self.session.driven if r.drive is not None]
         means = [float(np.nanmean(drive)) for drive in drives if np.isfinite(drive).any()]
         return float(np.mean(means)) if means else 0.0
 
@@ -127,6 +131,31 @@ class SessionFits:
     def _slope(self, record: RoleRecord, slope: str) -> FittedSlope:
         phase = invert_fringe(record.photodiode.values, self.extremes, slope)
         return FittedSlope(record, phase, self.fit(record, phase.phase_rad, "rad"))
+
+    @cached_property
+    def free(self) -> list[FreeRecord]:
+        """Every free-running lines recording, tracked and fitted."""
+        records = self.session.of("lines-free")
+        pilot_hz = self._pilot_hz or max(self.frequencies_hz)
+        return [
+            FreeRecord.of(
+                record,
+                self.extremes,
+                pilot_hz,
+                self._motion_rad(pilot_hz),
+                lambda r, phase: self.fit(r, phase, "rad"),
+            )
+            for record in records
+        ]
+
+    def _motion_rad(self, pilot_hz: float) -> float:
+        """Return the phase of motion over drive at the pilot: as the slopes have it, else as declared."""
+        if pilot_hz in self.frequencies_hz and self.slopes:
+            ratio = self.combined[self.frequencies_hz.index(pilot_hz)].ratio
+            return float(np.angle(ratio))
+        declared = self.bench.magnitude("actuator.polarity", 1.0)
+        declared *= -1.0 if self.bench.text("actuator.arm") == "y" else 1.0
+        return 0.0 if declared > 0 else float(np.pi)
 
     def fit(
         self, record: RoleRecord, values: FloatArray, unit: str, part: slice = WHOLE
@@ -195,21 +224,46 @@ class SessionFits:
 
     @cached_property
     def combined(self) -> list[CombinedLine]:
-        """Each line with both slopes put together."""
+        """Each line with both slopes put together, or as free-running recordings have it."""
         return [self._combined(number) for number in range(len(self.frequencies_hz))]
 
     def _combined(self, number: int) -> CombinedLine:
         parts = self._slope_lines(number)
         if not (parts["rising"] or parts["falling"]):
+            if number in (free := {} if self.slopes else self.combined_free):
+                return free[number]
             raise CalibrationError(
                 f"the line at {self.frequencies_hz[number]:g} Hz is driven in no lines recording"
             )
+        additive = self._additive(number)
+        return combine(parts["rising"], parts["falling"], self.extremes.swing_v, additive)
+
+    def _additive(self, number: int) -> Additive | None:
+        """Return what adds to a line without motion, as recordings without a fringe tell."""
         blocked = {
             role: [fit.lines[number] for fit in fits if is_driven(fit.lines[number])]
             for role, fits in self.blocked_fits.items()
         }
-        additive = additive_of(blocked["pickup"], blocked["blocked-x"], blocked["blocked-y"])
-        return combine(parts["rising"], parts["falling"], self.extremes.swing_v, additive)
+        return additive_of(blocked["pickup"], blocked["blocked-x"], blocked["blocked-y"])
+
+    @cached_property
+    def combined_free(self) -> dict[int, CombinedLine]:
+        """Each line that free-running recordings drive, by its place in the bench."""
+        found = {k: self._free_lines(k) for k in range(len(self.frequencies_hz))}
+        return {
+            number: combine_free(parts, self.extremes.swing_v, self._additive(number))
+            for number, parts in found.items()
+            if parts
+        }
+
+    def _free_lines(self, number: int) -> list[FreeLine]:
+        return [
+            FreeLine(
+                SlopeLine.of("both", line, free.means.means, self._setting_v(number)), free.means
+            )
+            for free in self.free
+            if is_driven(line := free.fit.lines[number])
+        ]
 
     def _setting_v(self, number: int) -> float | None:
         """Return the drive of a line as the bench file states it, zero to peak [V]."""
@@ -219,11 +273,12 @@ class SessionFits:
     @cached_property
     def drive_read(self) -> bool:
         """Whether the drive was recorded beside the photodiode."""
-        return self.slopes[0].record.drive is not None
+        return self.session.driven[0].drive is not None
 
     def clock_offset(self) -> Measured | None:
         """Return the mean relative clock offset of the lines recordings, None if unknown."""
-        found = [slope.fit.clock_offset for slope in self.slopes]
+        fits = [slope.fit for slope in self.slopes] + [free.fit for free in self.free]
+        found = [fit.clock_offset for fit in fits]
         known = [offset for offset in found if offset is not None and offset.u_magnitude]
         if not known:
             return None

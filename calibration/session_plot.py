@@ -46,11 +46,11 @@ class Shown:
     scan : Trace
         Photodiode samples [V] of a scan; None without one.
     moved : Trace
-        Displacement [m] of a lines recording.
+        Displacement [m] of a lines recording on a slope; None without one.
     """
 
     scan: Trace | None
-    moved: Trace
+    moved: Trace | None
 
     @classmethod
     def of_files(cls, calibration: Calibration, roles: Mapping[str, Sequence[str]]) -> "Shown":
@@ -58,14 +58,16 @@ class Shown:
         by_role = {role.replace("_", "-"): paths for role, paths in roles.items()}
         scans = by_role.get("scan", ())
         slope = "rising" if by_role.get("lines-rising") else "falling"
-        source = open_recording(by_role[f"lines-{slope}"][0])
-        moved = ConvertedRecording(
-            source, photodiode_name(source), calibration, "displacement", slope
-        )
+        lines, moved = by_role.get(f"lines-{slope}", ()), None
+        if lines:
+            source = open_recording(lines[0])
+            name = photodiode_name(source)
+            converted = ConvertedRecording(source, name, calibration, "displacement", slope)
+            moved = converted.trace("displacement")
         scan = open_recording(scans[0]) if scans else None
         return cls(
             scan=None if scan is None else scan.trace(photodiode_name(scan)),
-            moved=moved.trace("displacement"),
+            moved=moved,
         )
 
 
@@ -100,7 +102,8 @@ def save_session_page(
     panels: list[Callable[[Axes], None]] = []
     if scan is not None:
         panels.append(lambda axes: draw_scan(axes, calibration, scan.values, scan.rate_hz))
-    panels.append(lambda axes: draw_spectrum(axes, calibration, moved.values, moved.rate_hz))
+    if moved is not None:
+        panels.append(lambda axes: draw_spectrum(axes, calibration, moved.values, moved.rate_hz))
     panels.append(lambda axes: draw_actuator(axes, calibration))
     if response is not None:
         panels.append(lambda axes: draw_residuals(axes, calibration.actuator, response))

@@ -88,6 +88,9 @@ class CombinedLine:
         What adds to the photodiode: found from the two slopes, or as given for one.
     additive_weight : float
         Change of ``ratio`` per unit of the additive's error [rad], signed; zero with both slopes.
+    cosines : tuple of float
+        Working points cos φ, each of an equal part of the samples; empty where their mean stands for
+        all.
     """
 
     ratio: complex
@@ -98,11 +101,27 @@ class CombinedLine:
     tilt_weight: float
     additive: Additive | None
     additive_weight: float
+    cosines: tuple[float, ...] = ()
 
     @property
     def both_slopes(self) -> bool:
         """Whether rising and falling slope were both measured."""
         return self.additive_weight == 0.0
+
+    def one_sided(self, swing_v: float) -> float:
+        """Return how much of an additive remains: 1 on one slope, less where both were passed.
+
+        Parameters
+        ----------
+        swing_v : float
+            Half of high − low.
+
+        Returns
+        -------
+        float
+            |⟨1/sin φ⟩| over ⟨1/|sin φ|⟩.
+        """
+        return min(1.0, abs(self.additive_weight) * swing_v / self.means.inverse_sin)
 
 
 def combine(

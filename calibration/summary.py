@@ -12,6 +12,7 @@ __all__ = [
     "calibration_text",
     "expanded_text",
     "response_lines",
+    "route_lines",
     "series_lines",
     "validity_lines",
     "value_text",
@@ -50,6 +51,7 @@ def calibration_text(calibration: Calibration) -> str:
     parts += [
         *response_lines(calibration),
         *series_lines(calibration),
+        *route_lines(calibration),
         *validity_lines(calibration),
     ]
     parts += [f"check: {_check(check)}" for check in calibration.checks]
@@ -104,6 +106,26 @@ def series_lines(calibration: Calibration) -> list[str]:
             f"drive series at {at_hz}, {low} to {high}: without drive {_of(series['small_signal'])}; "
             f"grows by {_of(series['amplitude_slope'])}; down minus up {up_down}"
         )
+    return lines
+
+
+def route_lines(calibration: Calibration) -> list[str]:
+    """Return the further routes: range, recordings, and their coefficients where others decide."""
+    lines = []
+    for route in calibration.routes:
+        lines.append(f"route {route['route']}: valid with {route['valid_range']}")
+        for one in route["recordings"]:
+            pilot = "no pilot"
+            if one["pilot"] is not None:
+                depth, seen = one["depth"]["value"], one["pilot"]["value"]
+                pilot = f"pilot {show(seen, 'Hz', 6)} of {show(depth, 'rad', 3)}"
+            lines.append(
+                f"route {route['route']}: {one['file']}, {pilot}, {one['inverted_fraction']:.0%} of the "
+                f"samples inverted, phase known for {one['known_fraction']:.0%}"
+            )
+        for entry in () if route["decides"] else route["actuator"]:
+            at_hz = value_text(_of(entry["frequency"]))
+            lines.append(f"route {route['route']} at {at_hz}: {_of(entry['magnitude'])}")
     return lines
 
 

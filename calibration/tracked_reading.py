@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from calibration.found_extremes import Level
+from calibration.free_record import FREE_RANGE, OWN_GAPS
 from calibration.lines import fit_lines_si
 from calibration.pilot_drive import driven_pilot
 from calibration.route import in_metres
@@ -21,9 +22,6 @@ if TYPE_CHECKING:
 
 __all__ = ["TrackedReading", "read_tracked", "tracked_tables"]
 
-# what a line fit says of gaps that alias: here they are the extremes, left out, and its u counts them
-_OWN_GAPS = "the pattern of the gaps aliases"
-_RANGE = "extremes known, a pilot of 0.03 rad to 2.3 rad, drift slow against the pilot"
 
 
 @dataclass(frozen=True)
@@ -120,7 +118,7 @@ class TrackedReading:
                     "route": "tracked phase",
                     "displacement_amplitude": metres,
                     "phase_amplitude": self.depths,
-                    "valid_range": _RANGE,
+                    "valid_range": FREE_RANGE,
                     "reasons": self.reasons,
                 }
             ],
@@ -199,7 +197,7 @@ def read_tracked(
         Measured.of(low.value, trace.unit, low.u),
         Measured.of(high.value, trace.unit, high.u),
         ruler,
-        [*tracked.reasons, *(one for one in lines.reasons_by_line() if _OWN_GAPS not in one)],
+        [*tracked.reasons, *(one for one in lines.reasons_by_line() if OWN_GAPS not in one)],
     )
 
 

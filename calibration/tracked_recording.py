@@ -41,11 +41,14 @@ class TrackedConversion(Conversion):
 
     Parameters
     ----------
-    quantity, unit, scale_u, drift_u, noise, used_fraction, reasons, cautions
-        As for `Conversion`.
+    quantity, unit : str
+        As for `Conversion`, like the others up to ``cautions``.
+    scale_u, drift_u, noise, used_fraction : float
+        ``scale_u`` is that of a motion over many fringes.
+    reasons, cautions : list of str
+        Why it must not be trusted; what a user should know.
     small_u : float
-        Relative standard uncertainty of a motion that is small against a fringe; ``scale_u`` is that of
-        one over many fringes.
+        Relative standard uncertainty of a motion that is small against a fringe.
     periodic_u : float
         Standard uncertainty from the extremes, which comes again in every fringe, in ``unit``.
     carried_noise : float

@@ -7,7 +7,7 @@ import click
 
 from metro.bench import Bench
 from metro.figure_file import check_figure
-from metro.options import bench_options, command, distrust, is_quiet, output_options
+from metro.options import ValueType, bench_options, command, distrust, is_quiet, output_options
 from metro.output import check_document, to_json, write_whole
 
 __all__ = ["calibrate"]
@@ -20,6 +20,7 @@ _ROLES = {
     "scan": "Over whole fringes, both directions.",
     "lines-rising": "Lines driven, on the rising slope.",
     "lines-falling": "Lines driven, on the falling slope.",
+    "lines-free": "Lines driven on a bench that runs freely through its fringes.",
     "series": "Lines at several drives, up and down, in the order recorded; on either slope.",
 }
 
@@ -37,6 +38,13 @@ def _role_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
     "--lines-rising 06-lines-rising.mfr --lines-falling 07-lines-falling.mfr --out cal.json"
 )
 @_role_options
+@click.option(
+    "--pilot",
+    "pilot_hz",
+    type=ValueType("Hz", above=0.0),
+    metavar="F",
+    help="The driven line by which --lines-free is tracked. Default: the bench's highest.",
+)
 @click.option(
     "--repeat",
     "repeat_files",
@@ -57,12 +65,13 @@ def _role_options(function: Any) -> Any:  # noqa: ANN401  # a click decorator
     "compare",
     default=True,
     show_default=True,
-    help="Compare the slope with the driven fringe, which takes some seconds.",
+    help="Compare the slopes, or the free-running bench, with the driven fringe, which takes some seconds.",
 )
 @bench_options
 @output_options("out", "plot", "json", "overwrite")
 def calibrate(
     bench: Bench,
+    pilot_hz: float | None,
     repeat_files: tuple[str, ...],
     open_loop_file: str | None,
     compare: bool,
@@ -74,8 +83,9 @@ def calibrate(
 ) -> None:
     """Turn a session's recordings and the bench file into a calibration with its budget.
 
-    --scan and one of --lines-rising and --lines-falling are the least; what is missing becomes a
-    caution and an entry of the budget.
+    --scan and one of --lines-rising, --lines-falling and --lines-free are the least; what is missing
+    becomes a caution and an entry of the budget. With lines on a slope, --lines-free is a second route
+    that is compared with it.
     """
     from calibration.analysis import calibrate as run
     from calibration.open_loop import load_open_loop
@@ -94,6 +104,7 @@ def calibrate(
         **by_role,
         repeat=[load(path) for path in repeat_files],
         open_loop=None if open_loop_file is None else load_open_loop(open_loop_file),
+        pilot_hz=pilot_hz,
         compare=compare,
         kept_in=None if out is None else Path(out).parent,
     )

@@ -108,7 +108,7 @@ def test_curvature_terms_are_the_derivatives_of_a_bent_reading():
 
     size = 1e-5
     for number, (q, c) in enumerate(((size, 0.0), (0.0, size))):
-        line = line_terms(bench, EXTREMES, cosine, drive_read=True)[number]
+        line = line_terms(bench, EXTREMES, (cosine,), drive_read=True)[number]
         found = (line_over_drive(q, c) / line_over_drive(0.0, 0.0) - 1) / size
         assert line.relative == pytest.approx(found, rel=2e-3, abs=2e-4)
         found = (swing(q, c) / swing(0.0, 0.0) - 1) / size

@@ -5,9 +5,10 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from calibration.caution_lines import caution_lines
 from firmware_bridge.reading import Reading, recording_options
 from metro.figure_file import check_figure
-from metro.options import ValueType, command, distrust, is_quiet, output_options
+from metro.options import ValueType, command, distrust, is_quiet, is_verbose, output_options
 from metro.output import check_writable, table, to_json
 
 if TYPE_CHECKING:
@@ -162,7 +163,8 @@ def convert(
     click.echo(to_json(document) if as_json else _text(document))
     if not is_quiet():
         reading.tell(source)
-        for caution in (*worth.cautions, *side):
+        cautions = (*worth.cautions, *side)
+        for caution in caution_lines(cautions, calibration.cautions, is_verbose=is_verbose()):
             click.echo(f"caution: {caution}", err=True)
     if worth.reasons:
         distrust(worth.reasons)

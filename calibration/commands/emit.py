@@ -7,7 +7,15 @@ from typing import TYPE_CHECKING
 
 import click
 
-from metro.options import bench_options, command, distrust, is_quiet, output_options
+from calibration.caution_lines import caution_lines
+from metro.options import (
+    bench_options,
+    command,
+    distrust,
+    is_quiet,
+    is_verbose,
+    output_options,
+)
 
 if TYPE_CHECKING:
     from calibration.emit.cubic_pieces import CubicPieces
@@ -113,7 +121,8 @@ def _warn(calibration: Calibration | None) -> None:
     if calibration is None:
         return
     if not is_quiet():
-        for caution in calibration.cautions:
+        kept = calibration.cautions
+        for caution in caution_lines(kept, kept, is_verbose=is_verbose()):
             click.echo(f"caution: {caution}", err=True)
     if calibration.all_reasons:
         distrust(calibration.all_reasons)

@@ -23,7 +23,6 @@ if TYPE_CHECKING:
 __all__ = ["TrackedReading", "read_tracked", "tracked_tables"]
 
 
-
 @dataclass(frozen=True)
 class TrackedReading:
     """What a free-running recording says.

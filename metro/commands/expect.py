@@ -12,12 +12,9 @@ from metro.options import ValueType, bench_options, command, output_options
 if TYPE_CHECKING:
     from metro.bench import Bench
     from metro.chain import Chain
-    from metro.expectation import Expectation
-    from metro.measured import Measured
 
 __all__ = ["expect"]
 
-_DIGITS = 7  # of a number without an uncertainty: a part in a million still shows
 _GIVEN = ("strain", "displacement", "phase", "fringes", "voltage", "counts")
 
 
@@ -85,6 +82,7 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     """
     from metro.chain import Chain
     from metro.expectation import expect as expect_of
+    from metro.expectation_page import expectation_page
     from metro.fringe_law import slope_phase_rad
     from metro.output import to_json
     from metro.stages import stage_si
@@ -112,7 +110,7 @@ def expect(bench: Bench, **options: Any) -> None:  # noqa: ANN401  # one option 
     )
     document = to_json(expectation.to_dict())
     _write_files(chain, document, options)
-    click.echo(document if options["as_json"] else _page(expectation))
+    click.echo(document if options["as_json"] else expectation_page(expectation))
 
 
 def _check_files(bench: Bench, options: dict[str, Any]) -> None:
@@ -159,76 +157,3 @@ def _direction(options: dict[str, Any]) -> Any:  # noqa: ANN401  # a Direction o
 
     angles = [options[name] for name in ("theta", "phi", "psi")]
     return None if angles == [None, None, None] else Direction(*(angle or 0.0 for angle in angles))
-
-
-def _page(expectation: Expectation) -> str:
-    """Return the tables for people."""
-    from metro.output import table
-
-    parts = [
-        table(_rows(expectation.stages), ("stage", "change")),
-        table(_rows(expectation.working_point), ("working point", "")),
-        table(_noise_rows(expectation), ("noise", "displacement density", "strain density")),
-        table(_rows(expectation.snr), ("signal to noise", "")),
-        _texts("corrections", [c.text for c in expectation.corrections.values()]),
-        _texts(
-            "conventions", [f"{name}: {text}" for name, text in expectation.conventions.items()]
-        ),
-        _texts("cautions", expectation.cautions),
-        _bench_table(expectation.sources),
-    ]
-    return "\n\n".join(part for part in parts if part)
-
-
-def _rows(values: dict[str, Measured | None]) -> list[tuple[str, str]]:
-    """Return names and values; no word of uncertainty where the bench gives none."""
-    return [(name.replace("_", " "), _cell(value)) for name, value in values.items()]
-
-
-def _cell(value: Measured | None) -> str:
-    from metro.display import show, show_measured
-
-    if value is None:
-        return "unknown"
-    if value.u_magnitude is None:
-        return show(value.magnitude, value.unit, _DIGITS)
-    return show_measured(value)
-
-
-def _noise_rows(expectation: Expectation) -> list[tuple[str, str, str]]:
-    """Return one row a source, those that are not given last and together."""
-    displacement, strain = expectation.noise, expectation.noise_strain
-    unknown = [name.replace("_", " ") for name, value in displacement.items() if value is None]
-    rows = [
-        (name.replace("_", " "), _cell(value), _cell(strain[name]))
-        for name, value in displacement.items()
-        if value is not None
-    ]
-    return [*rows, *((name, "not given", "") for name in unknown)]
-
-
-def _bench_table(sources: dict[str, dict[str, str]]) -> str:
-    """Return every value of the bench with where it came from, the file named once."""
-    from metro.output import table
-
-    if not sources:
-        return ""
-    files = {
-        entry["source"].partition(", [")[0]
-        for entry in sources.values()
-        if ", [" in entry["source"]
-    }
-    file = files.pop() if len(files) == 1 else ""
-    rows = [
-        (
-            key,
-            entry["value"],
-            entry["source"].removeprefix(f"{file}, ") if file else entry["source"],
-        )
-        for key, entry in sources.items()
-    ]
-    return table(rows, ("the bench", "value", f"from {file}" if file else "from"))
-
-
-def _texts(title: str, texts: list[str]) -> str:
-    return "\n".join([title, *(f"  {text}" for text in texts)]) if texts else ""

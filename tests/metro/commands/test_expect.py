@@ -1,6 +1,7 @@
 """``midfringe expect``: the figures it must give, what it says, and what it loads."""
 
 import json
+import re
 import subprocess
 import sys
 import time
@@ -150,6 +151,21 @@ def test_page_for_people(capsys, tmp_path):
     ]
     assert f"the bench         value                from {bench}" in lines
     assert "laser.wavelength  632.99 nm, u = 1 pm  [laser] wavelength" in lines
+
+
+def test_the_page_ends_in_short(capsys):
+    """1 nm at 632.9908 nm in vacuum is 4π·1/632.9908 rad; text lines fit a terminal."""
+    air = ("--arm", "0.42m", "--wavelength", "632.9908nm", "--power", "80uW")
+    assert run(["expect", "--displacement", "1nm", *air, "--responsivity", "0.41A/W"]) == 0
+    page = capsys.readouterr().out
+    heads = ["stage ", "working point", "noise ", "signal to noise", "corrections", "conventions"]
+    heads += ["the bench", "cautions", "in short"]
+    sections = page.split("\n\n")
+    assert [text.startswith(head) for text, head in zip(sections, heads, strict=True)] == [True] * 9
+    assert max(map(len, page.splitlines())) <= 118
+    short = sections[-1].splitlines()
+    assert short[1] == "  strain 2.381e-09 ↔ displacement 1 nm ↔ phase 19.85 mrad"
+    assert re.fullmatch(r"  signal to noise .+ after 1 s; by then .+ fm reaches 1", short[2])
 
 
 def test_out_file(capsys, tmp_path):

@@ -156,6 +156,9 @@ def _drift_term(line: CombinedLine, extremes: Extremes, dark_v: float, drift: Te
     lean = (extremes.mid_v - dark_v) / extremes.swing_v
     moved = [means.inverse_sin2 + lean * means.cos_over_sin2 for means in line.records]
     own = [w * m for w, m in zip(line.weights, moved, strict=True)]
+    if extremes.own and len(own) == extremes.scans:  # each recording's own power is in its extremes
+        mean = sum(own) / len(own)
+        return drift.with_relative(sqrt(sum((share - mean) ** 2 for share in own)))
     of_scans = sum(own) ** 2 / extremes.scans if extremes.scans else 0.0
     return drift.with_relative(sqrt(sum(share**2 for share in own) + of_scans))
 

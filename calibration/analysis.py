@@ -179,7 +179,10 @@ class _Analysis(SessionEntries):
         if not self.slopes:
             entries = [self.with_free_reasons(k, entry) for k, entry in enumerate(entries)]
         driven = [(s.record, s.fit) for s in self.slopes] + [(f.record, f.fit) for f in self.free]
-        free = [reason for record in self.free for reason in record.reasons]
+        free = [
+            *(f"extremes: {reason}" for scan in self.own_scans for reason in scan.reasons),
+            *(reason for record in self.free for reason in record.reasons),
+        ]
         checks = self._checks()
         found = [series for series in self.series if isinstance(series, DriveSeries)]
         return Calibration(

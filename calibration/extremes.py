@@ -32,6 +32,8 @@ class Extremes:
         Degrees of freedom of the covariance.
     scans : int
         How many scans they are the mean of; 0 when given.
+    own : bool
+        Whether those scans are the lines recordings themselves, on a bench that runs freely.
     """
 
     low_v: float
@@ -39,6 +41,7 @@ class Extremes:
     covariance: FloatArray
     dof: float = inf
     scans: int = 0
+    own: bool = False
 
     def __post_init__(self) -> None:
         if not self.high_v > self.low_v:

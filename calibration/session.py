@@ -17,7 +17,7 @@ from metro.bench import Bench
 from metro.kernel.photodiode import step_v
 from metro.measured import Measured
 
-__all__ = ["ROLES", "RoleRecord", "Session", "photodiode_name"]
+__all__ = ["ROLES", "RoleRecord", "Session", "has_extremes", "photodiode_name"]
 
 ROLES = (
     "dark",
@@ -196,6 +196,11 @@ def _in_volts(trace: Trace, bench: Bench, path: str) -> Trace:
     step = step_v(bench.magnitude("adc.range"), bench.magnitude("adc.bits"))
     volts = trace.values * step + bench.magnitude("adc.offset", 0.0)
     return replace(trace, values=volts, unit="V")
+
+
+def has_extremes(bench: Bench) -> bool:
+    """Return whether a bench file gives both extremes of the fringe."""
+    return bench.get("fringe.low") is not None and bench.get("fringe.high") is not None
 
 
 def photodiode_name(recording: Recording) -> str:

@@ -17,7 +17,7 @@ from calibration.bench_contradictions import (
 from calibration.extremes import Extremes
 from calibration.line_fit import LineFit
 from calibration.scan import ScanFit
-from calibration.session import Session
+from calibration.session import Session, has_extremes
 from calibration.slope_line import SlopeLine, is_driven, is_noise_known
 from calibration.term import Term
 from calibration.working_point import PhaseRecord
@@ -101,6 +101,8 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
     missing = dict(_MISSING)
     if not session.slopes:  # a free-running bench passes both: what that leaves is said elsewhere
         missing = {role: text for role, text in missing.items() if not role.startswith("lines-")}
+    if session.of("lines-free") and not has_extremes(bench):
+        missing["scan"] = "no scan: the fringe's extremes are those of the free-running recordings"
     cautions = [text for role, text in missing.items() if not session.of(role)]
     if bench.get("photodiode.bandwidth") is None:
         cautions.append("photodiode.bandwidth not stated: the amplifier is taken as fast enough")
@@ -122,7 +124,7 @@ def cautions_of(bench: Bench, session: Session, drift: Term) -> list[str]:
 
 
 def _given_extremes(bench: Bench, session: Session) -> list[str]:
-    if session.of("scan"):
+    if session.of("scan") or not has_extremes(bench):
         return []
     return [
         f"extremes as given, u not stated: {key} counts as exactly known; state its u in the bench "

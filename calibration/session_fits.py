@@ -3,7 +3,7 @@
 Each quantity is computed once, from those before it, when it is first asked for.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from math import sqrt
 
@@ -21,7 +21,7 @@ from calibration.mains import without_mains
 from calibration.pickup import Additive, additive_of
 from calibration.scan import ScanFit, fit_scan
 from calibration.scan_tilt import Lean, level_scan
-from calibration.session import RoleRecord, Session
+from calibration.session import RoleRecord, Session, has_extremes
 from calibration.slope_line import CombinedLine, SlopeLine, combine, is_driven
 from calibration.term import POWER_DRIFT, Term
 from calibration.working_point import PhaseRecord, invert_fringe
@@ -93,10 +93,12 @@ class SessionFits:
 
     @cached_property
     def extremes(self) -> Extremes:
-        """The mean extremes of the scans, else those that the bench file gives."""
+        """The mean extremes of the scans, else the bench file's, else the free recordings' own."""
         if self.scans:
             return Extremes.mean_of(self.scans)
         low, high = self.bench.get("fringe.low"), self.bench.get("fringe.high")
+        if self.own_scans:
+            return replace(Extremes.mean_of(self.own_scans), own=True)
         if low is None or high is None:
             raise CalibrationError(
                 "a calibration needs the fringe's extremes: at least one --scan FILE, "
@@ -104,6 +106,18 @@ class SessionFits:
             )
         u = [float(v.u_magnitude or 0.0) ** 2 for v in (low, high)]
         return Extremes(low.magnitude, high.magnitude, np.diag(u))
+
+    @cached_property
+    def own_scans(self) -> list[ScanFit]:
+        """The extremes of free-running recordings, which pass whole fringes; empty beside a scan."""
+        if self.scans or has_extremes(self.bench):
+            return []
+        mains_hz = self.bench.magnitude("mains.frequency", 50.0)
+        traces = [record.photodiode for record in self.session.of("lines-free")]
+        return [
+            fit_scan(without_mains(trace.values, trace.rate_hz, mains_hz), trace.rate_hz)
+            for trace in traces
+        ]
 
     @cached_property
     def drift(self) -> Term:

@@ -11,10 +11,12 @@ from typing import TYPE_CHECKING, Any
 
 from calibration.desk import report_figures as figures
 from calibration.desk.page import HtmlPage, bullets, note, paragraph, picture, table
+from calibration.desk.report_budget import budget_section, percent
 from calibration.summary import (
     CONVENTIONS,
     expanded_text,
     response_lines,
+    route_lines,
     series_lines,
     validity_lines,
     value_text,
@@ -27,7 +29,6 @@ if TYPE_CHECKING:
     from calibration.desk.evidence import Evidence
     from calibration.record import ActuatorEntry, Calibration
     from metro.bench import Bench
-    from metro.budget import Budget
     from metro.measured import Measured
 
 __all__ = ["CAUTIONS", "NO_CERTIFICATE", "report_page"]
@@ -99,7 +100,7 @@ def report_page(
     page.add(_verdict(calibration), note(NO_CERTIFICATE))
     page.section("Result", *_result(calibration))
     page.section("Conditions", *_conditions(calibration))
-    page.section("Budget", *_budget(calibration))
+    page.section("Budget", *budget_section(calibration))
     page.section("Routes and consistency", *_consistency(calibration))
     page.section("Fringe, spectrum, response", *_pictures(calibration, evidence, bench))
     page.section("Conventions", bullets(CONVENTIONS))
@@ -139,6 +140,7 @@ def _result(calibration: Calibration) -> list[str]:
         table(rows, header, "Actuator"),
         table(readout, ("quantity", "value", "U (95 %)", "k"), "Readout"),
         bullets([*response_lines(calibration), *series_lines(calibration)], "Between the lines"),
+        bullets(route_lines(calibration), "Another route"),
     ]
 
 
@@ -184,62 +186,6 @@ def _condition(name: str, value: Measured) -> tuple[str, str, str]:
     number = float(value.magnitude) - _ABSOLUTE_ZERO_K
     celsius, u, k = _cells(Measured.of(number, "K", value.u_magnitude, value.dof))
     return celsius.replace(" K", " °C"), u, k
-
-
-def _budget(calibration: Calibration) -> list[str]:
-    lines = calibration.actuator
-    budgets = {show(float(e.frequency.magnitude), "Hz", 6): e.budget for e in lines}
-    sizes = [float(entry.magnitude.magnitude) for entry in lines]
-    first = next(iter(budgets))
-    return [
-        paragraph(
-            "Relative standard uncertainty by cause, in per cent of the actuator's magnitude; "
-            "causes common to several lines carry one sign for all of them."
-        ),
-        table(_shares(budgets, sizes), ("cause", *budgets)),
-        picture(
-            figures.budget_figure(lines[0].budget, sizes[0], f"Actuator at {first}"),
-            f"Causes of the standard uncertainty of the actuator at {first}, largest first.",
-        ),
-        _full_table(lines[0].budget, f"Actuator at {first}, in full"),
-        _full_table(calibration.readout_budget, "Readout slope, in full"),
-    ]
-
-
-def _shares(budgets: dict[str, Budget], sizes: Sequence[float]) -> list[tuple[str, ...]]:
-    """Return one row a cause: its share of u at each line, the sum in quadrature last."""
-    columns = [
-        {c.name: c.effect / size for c in budget.contributions}
-        for budget, size in zip(budgets.values(), sizes, strict=True)
-    ]
-    names = dict.fromkeys(name for column in columns for name in column)
-    rows = [(name, *(_percent(column.get(name)) for column in columns)) for name in names]
-    sums = [
-        _percent(budget.combined()[0] / size)
-        for budget, size in zip(budgets.values(), sizes, strict=True)
-    ]
-    return [*rows, ("combined, with correlations", *sums)]
-
-
-def _percent(share: float | None) -> str:
-    return "" if share is None else f"{100 * abs(share):.3g} %"
-
-
-def _full_table(budget: Budget, heading: str) -> str:
-    rows = [
-        (
-            item.name,
-            show(item.value, item.unit, 7),
-            show(item.u, item.unit, 3),
-            f"{item.sensitivity:.3g}",
-            show(abs(item.effect), budget.unit, 3),
-            f"{item.kind}, {item.distribution}",
-            "∞" if item.dof == float("inf") else f"{item.dof:.3g}",
-        )
-        for item in budget.contributions
-    ]
-    header = ("cause", "value", "u", "sensitivity", "effect", "kind", "dof")
-    return table(rows, header, heading)
 
 
 def _consistency(calibration: Calibration) -> list[str]:
@@ -289,7 +235,7 @@ def _statements(calibration: Calibration) -> list[str]:
 
 def _assumed(share: float) -> str:
     return (
-        f"{_percent(share)} is in the budget for it" if share else "nothing is in the budget for it"
+        f"{percent(share)} is in the budget for it" if share else "nothing is in the budget for it"
     )
 
 

@@ -178,10 +178,22 @@ def test_routes_are_compared(session):
 
 def test_a_pilot_that_the_drive_has_not_is_named(session):
     _, files, _, _ = session
+    levels = {"fringe.low": Measured.of(0.1, "V", 0.01), "fringe.high": Measured.of(3.9, "V", 0.01)}
     with pytest.raises(CalibrationError, match="the drive shows no pilot at 60 Hz"):
-        calibrate(
-            built_in_bench(), scan=files["scan"], lines_free=files["lines_free"], pilot_hz=60.0
-        )
+        calibrate(built_in_bench().replace(levels), lines_free=files["lines_free"], pilot_hz=60.0)
+
+
+def test_without_a_scan_the_extremes_are_its_own(session):
+    """No power drift lies between a recording and itself."""
+    simulated, files, alone, _ = session
+    own = calibrate(built_in_bench(), lines_free=files["lines_free"])
+    assert own.extremes.low_v == pytest.approx(alone.extremes.low_v, abs=0.01)
+    assert any("are those of the free-running recordings" in text for text in own.cautions)
+    assert not any("as given" in text for text in own.cautions)
+    for entry in own.actuator:
+        assert not any(row.name.startswith("power drift") for row in entry.budget.contributions)
+        true = simulated.truth.actuator(float(entry.frequency.magnitude))
+        assert abs(entry.magnitude.magnitude - abs(true)) < 4.5 * entry.magnitude.u_magnitude
 
 
 def test_without_any_lines_it_says_what_is_needed(session):

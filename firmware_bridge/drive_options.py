@@ -1,6 +1,6 @@
 """Drive lines on the command line: ``--line 87.1Hz=0.2V``, within a limit that someone has stated."""
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING, Any
 
 import click
@@ -22,89 +22,77 @@ __all__ = ["DriveLineType", "LockInType", "drive_cautions", "drive_within"]
 _EXAMPLE = "such as 87.1Hz=0.2V, or 87.1Hz=0.2V@0.5rad with a phase"
 
 
-class DriveLineType(_ParamType):
+class _Assigned(_ParamType):
+    """An option value NAME=VALUE of one kind; ``parse`` takes a text and the option's name."""
+
+    def __init__(self, usual: str, kind: type[Any], parse: Callable[[str, str], Any]) -> None:
+        self._usual, self._kind, self._parse = usual, kind, parse
+
+    def convert(
+        self,
+        value: Any,  # noqa: ANN401  # text from the command line
+        param: click.Parameter | None,
+        ctx: click.Context | None,  # noqa: ARG002  # click's signature
+    ) -> Any:  # noqa: ANN401  # of the kind
+        """Return what the text says.
+
+        Parameters
+        ----------
+        value : str
+            As given.
+        param : click.Parameter, optional
+            The option.
+        ctx : click.Context, optional
+            Not used.
+
+        Returns
+        -------
+        object
+            In SI.
+
+        Raises
+        ------
+        MetroError
+            If it is none.
+        """
+        if isinstance(value, self._kind):
+            return value
+        return self._parse(str(value), self._usual if param is None else param.opts[0])
+
+
+def _drive_line(text: str, name: str) -> DriveLine:
+    frequency, equals, rest = text.partition("=")
+    amplitude, _, phase = rest.partition("@")
+    if not equals:
+        raise MetroError(f"{name} must be FREQUENCY=AMPLITUDE, {_EXAMPLE}, got {text!r}")
+    return DriveLine(
+        si(frequency, name, "Hz"), si(amplitude, name, "V"), si(phase or "0 rad", name, "rad")
+    )
+
+
+def _lock_in(text: str, name: str) -> LockInStart:
+    channel, equals, time = text.rpartition("=")
+    if not equals or not channel:
+        raise MetroError(f"{name} must be CHANNEL=TIME, such as photodiode=1s, got {text!r}")
+    return LockInStart(channel, si(time, name, "s", above=0.0))
+
+
+class DriveLineType(_Assigned):
     """An option value FREQUENCY=AMPLITUDE or FREQUENCY=AMPLITUDE@PHASE, zero to peak."""
 
     name = "LINE"
 
-    def convert(
-        self,
-        value: Any,  # noqa: ANN401  # text from the command line
-        param: click.Parameter | None,
-        ctx: click.Context | None,  # noqa: ARG002  # click's signature
-    ) -> Any:  # noqa: ANN401  # a DriveLine
-        """Return the line.
-
-        Parameters
-        ----------
-        value : str
-            As given.
-        param : click.Parameter, optional
-            The option.
-        ctx : click.Context, optional
-            Not used.
-
-        Returns
-        -------
-        DriveLine
-            In SI.
-
-        Raises
-        ------
-        MetroError
-            If it is none.
-        """
-        if isinstance(value, DriveLine):
-            return value
-        name = "--line" if param is None else param.opts[0]
-        frequency, equals, rest = str(value).partition("=")
-        amplitude, _, phase = rest.partition("@")
-        if not equals:
-            raise MetroError(f"{name} must be FREQUENCY=AMPLITUDE, {_EXAMPLE}, got {value!r}")
-        return DriveLine(
-            si(frequency, name, "Hz"), si(amplitude, name, "V"), si(phase or "0 rad", name, "rad")
-        )
+    def __init__(self) -> None:
+        super().__init__("--line", DriveLine, _drive_line)
 
 
-class LockInType(_ParamType):
+class LockInType(_Assigned):
     """An option value CHANNEL=TIME, the channel by name or by number from 1."""
 
     name = "LOCK-IN"
 
-    def convert(
-        self,
-        value: Any,  # noqa: ANN401  # text from the command line
-        param: click.Parameter | None,
-        ctx: click.Context | None,  # noqa: ARG002  # click's signature
-    ) -> Any:  # noqa: ANN401  # a LockInStart
-        """Return the lock-in.
-
-        Parameters
-        ----------
-        value : str
-            As given.
-        param : click.Parameter, optional
-            The option.
-        ctx : click.Context, optional
-            Not used.
-
-        Returns
-        -------
-        LockInStart
-            In SI.
-
-        Raises
-        ------
-        MetroError
-            If it is none.
-        """
-        if isinstance(value, LockInStart):
-            return value
-        name = "--lock-in" if param is None else param.opts[0]
-        channel, equals, time = str(value).rpartition("=")
-        if not equals or not channel:
-            raise MetroError(f"{name} must be CHANNEL=TIME, such as photodiode=1s, got {value!r}")
-        return LockInStart(channel, si(time, name, "s", above=0.0))
+    def __init__(self) -> None:
+        super().__init__("--lock-in", LockInStart, _lock_in)
 
 
 def drive_within(

@@ -4,7 +4,8 @@ from typing import Any
 
 import click
 
-from calibration.desk.ledger_options import Sourcing, ledger_options, sourcing_options, tell
+from calibration.desk.ledger_options import ledger_options, tell
+from calibration.desk.sourcing_options import Sourcing, sourcing_options
 from metro.options import command, is_quiet, output_options
 
 __all__ = ["EXAMPLE", "add"]

@@ -2,14 +2,8 @@
 
 import click
 
-from calibration.desk.ledger_options import (
-    Judging,
-    judging_options,
-    ledger_options,
-    moment,
-    since_options,
-    tell,
-)
+from calibration.desk.judging_options import Judging, judging_options
+from calibration.desk.ledger_options import ledger_options, moment, since_options, tell
 from metro.options import ValueType, command, distrust, output_options
 
 __all__ = ["chart"]

@@ -2,14 +2,9 @@
 
 import click
 
-from calibration.desk.ledger_options import (
-    Judging,
-    Sourcing,
-    judging_options,
-    ledger_options,
-    sourcing_options,
-    tell,
-)
+from calibration.desk.judging_options import Judging, judging_options
+from calibration.desk.ledger_options import ledger_options, tell
+from calibration.desk.sourcing_options import Sourcing, sourcing_options
 from metro.options import command, distrust, output_options
 
 __all__ = ["check"]

@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from calibration.desk.ledger_options import Judging, judging_options, ledger_options
+from calibration.desk.judging_options import Judging, judging_options
+from calibration.desk.ledger_options import ledger_options
 from metro.options import ValueType, command, distrust, is_quiet, output_options
 
 if TYPE_CHECKING:

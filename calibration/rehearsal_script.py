@@ -54,23 +54,23 @@ def session_steps(bench: Bench, lines_s: float = LINES_S) -> list[Step]:
     half, tenth = 0.4 * lines_s, 0.1 * lines_s
 
     def lines(name: str, slope: str, seconds: float, driven: tuple[Tone, ...]) -> Step:
-        setup = Setup(name, seconds, slope=slope, tones=driven)
+        setup = Setup(seconds, slope=slope, tones=driven)
         return Step(name, f"lines-{slope}", setup)
 
     def blocked(name: str, role: str, beam: str, seconds: float, *, drive: bool) -> Step:
         driven = tones if drive else ()
-        return Step(name, role, Setup(name, seconds, beam=beam, tones=driven))
+        return Step(name, role, Setup(seconds, beam=beam, tones=driven))
 
     return [
         blocked("01-dark", "dark", "blocked", tenth, drive=False),
         blocked("02-pickup", "pickup", "blocked", half, drive=True),
         blocked("03-blocked-x", "blocked-x", "y", half, drive=True),
         blocked("04-blocked-y", "blocked-y", "x", half, drive=True),
-        Step("05-scan", "scan", Setup("scan", half, scan=scan)),
+        Step("05-scan", "scan", Setup(half, scan=scan)),
         lines("06-lines-rising", "rising", lines_s, tones),
         lines("07-lines-falling", "falling", lines_s, tones),
         lines("08-first-line-again", "rising", half, tones[:1]),
-        Step("09-scan", "scan", Setup("scan", half, scan=scan)),
+        Step("09-scan", "scan", Setup(half, scan=scan)),
         blocked("10-dark", "dark", "blocked", tenth, drive=False),
     ]
 

@@ -66,7 +66,7 @@ class Board:
         self.plug_in()
 
     def plug_in(self):
-        self._board = SimulatedBoard(self.bench, Setup("watch", inf, slope="rising"), speed=1.0)
+        self._board = SimulatedBoard(self.bench, Setup(inf, slope="rising"), speed=1.0)
         self._board._stream = 100 * self._starts  # a board that starts has a stream id of its own
         self._starts += 1
         self._board.__enter__()

@@ -78,7 +78,7 @@ def free_session(
     steps = session_steps(bench, lines_s)
     tones = next(step.setup.tones for step in steps if step.role == "lines-rising")
     steps = [step for step in steps if step.name[:2] in names]
-    free = Setup("free", lines_s, tones=tones, drift=drift)
+    free = Setup(lines_s, tones=tones, drift=drift)
     steps.append(Step("20-free", "lines-free", free))
     folder.mkdir(exist_ok=True)
     recordings = [(step.setup, folder / step.file) for step in steps]

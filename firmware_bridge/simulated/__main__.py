@@ -45,7 +45,7 @@ def main(bench_file: str | None, seed: int, slope: str, beam: str, triangle: flo
     with as_file(files("firmware_bridge.simulated").joinpath("bench.toml")) as built_in:
         bench = load_bench(bench_file or built_in)
     scan = None if triangle is None else Triangle(triangle, 4.0)
-    setup = Setup("port", inf, beam=beam, slope=None if scan else slope, scan=scan)
+    setup = Setup(inf, beam=beam, slope=None if scan else slope, scan=scan)
     with SimulatedBoard(SimulatedBench(bench, seed), setup, speed=1.0) as board:
         click.echo(board.port)
         sys.stdout.flush()

@@ -59,7 +59,6 @@ class Setup:
     course of the arms where the bench runs freely.
     """
 
-    role: str
     duration_s: float
     beam: str = "both"
     slope: str | None = None

@@ -179,7 +179,7 @@ def test_after_a_reset_the_lines_are_set_again(tmp_path):
 def test_the_command_drives_a_simulated_bench_within_its_limit(tmp_path):
     bench = SimulatedBench(load_bench(BENCH), 5)
     path = str(tmp_path / "a.mfr")
-    with SimulatedBoard(bench, Setup("run", 1.0, slope="rising"), speed=1.0) as there:
+    with SimulatedBoard(bench, Setup(1.0, slope="rising"), speed=1.0) as there:
         words = ["--port", there.port, "--out", path, "--duration", "1 s", "--bench", str(BENCH)]
         done = subprocess.run(
             [sys.executable, "-m", "metro", "record", *words, "--line", "87.1Hz=0.5V@0.5rad"],

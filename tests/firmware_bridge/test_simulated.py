@@ -101,7 +101,7 @@ def test_line_appears_with_its_true_size_at_the_photodiode(bench):
     simulated = SimulatedBench(bench, 4)
     truth, rate_hz, n = simulated.truth, simulated.rate_hz, 40_000
     tone = Tone(233.9, 0.16, 0.3)
-    samples = simulated.start(Setup("lines", 10.0, slope="rising", tones=(tone,)))
+    samples = simulated.start(Setup(10.0, slope="rising", tones=(tone,)))
     volts = samples.block(n)[:, 0] * simulated.converter.step_v
     cosine = (volts / (1 + truth.reference) - truth.dark_v) / truth.swing_v - 1 / truth.contrast
     phase_rad = -np.arccos(np.clip(cosine, -1, 1))
@@ -118,13 +118,13 @@ def test_rising_and_falling_slopes_are_what_they_say(bench):
     simulated = SimulatedBench(bench, 4)
     for slope, sign in (("rising", 1.0), ("falling", -1.0)):
         tone = Tone(31.7, 0.16)
-        codes = simulated.start(Setup("lines", 4.0, slope=slope, tones=(tone,))).block(16_000)
+        codes = simulated.start(Setup(4.0, slope=slope, tones=(tone,))).block(16_000)
         photodiode, drive = (codes - codes.mean(axis=0)).T
         assert np.sign(np.sum(photodiode * drive)) == sign
 
 
 def test_wire_holds_every_sample_in_order(bench):
-    setup = Setup("dark", 2.0, beam="blocked")
+    setup = Setup(2.0, beam="blocked")
     source = wire_bytes(SimulatedBench(bench, 1), setup, stream=5)
     decoder = Decoder()
     events = decoder.feed(b"".join(next(source) for _ in range(4))) + decoder.close()
@@ -138,5 +138,5 @@ def test_wire_holds_every_sample_in_order(bench):
 
 
 def test_board_closes_cleanly_without_a_reader(bench):
-    with SimulatedBoard(SimulatedBench(bench, 1), Setup("dark", 1.0, beam="blocked")) as board:
+    with SimulatedBoard(SimulatedBench(bench, 1), Setup(1.0, beam="blocked")) as board:
         assert Path(board.port).exists()

@@ -40,7 +40,7 @@ def set_line(slot, frequency_hz, volts, phase_rad=0.0, rate_hz=4000.0):
 
 def test_a_line_fades_in_and_out_and_keeps_its_phase(bench):
     wired = WiredDrive(bench)
-    stream = bench.start(Setup("run", 1.0, slope="rising"), drive=wired.drive)
+    stream = bench.start(Setup(1.0, slope="rising"), drive=wired.drive)
     quiet = stream.block(4000)
     assert wired.maybe_refusal(set_line(0, 87.1, 2.0, 0.4)) == ""
     begins, on = 4000 + 24, stream.block(8000)  # what the filter has seen already stays
@@ -103,7 +103,7 @@ def test_what_the_drive_cannot_do_is_refused(bench):
 def test_in_real_time_the_board_answers_and_rests_when_the_host_is_silent(bench):
     decoder, events = Decoder(), []
     wanted = set_line(0, 87.1, 2.0).arguments
-    with SimulatedBoard(bench, Setup("run", 1.0, slope="rising"), speed=1.0) as board:
+    with SimulatedBoard(bench, Setup(1.0, slope="rising"), speed=1.0) as board:
         port = open_port(board.port)
         port.write(encode_command(CommandCode.START, 1))
         begun_s = time.monotonic()
@@ -125,7 +125,7 @@ def test_in_real_time_the_board_answers_and_rests_when_the_host_is_silent(bench)
 
 
 def test_without_a_lock_in_the_board_refuses_one_in_one_line(bench, tmp_path):
-    with SimulatedBoard(bench, Setup("run", 1.0, slope="rising"), speed=1.0) as board:
+    with SimulatedBoard(bench, Setup(1.0, slope="rising"), speed=1.0) as board:
         with pytest.raises(LockInError) as error:
             record(board.port, tmp_path / "a.mfr", lock_in=LockInStart("photodiode", 0.5))
         assert str(error.value) == (f"{board.port}: the board refuses the lock-in: no such start")

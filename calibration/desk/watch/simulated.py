@@ -75,7 +75,7 @@ def _run(connection: Connection, bench: "Bench", seed: int, slope: str) -> None:
     signal(SIGINT, SIG_IGN)  # Ctrl-C is for the page's program, which then lets go of us
     try:
         simulated = SimulatedBench(bench, seed)
-        setup = Setup("watch", inf, slope=slope)
+        setup = Setup(inf, slope=slope)
     except (MetroError, BridgeError) as error:
         connection.send((False, str(error)))
         return

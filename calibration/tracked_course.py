@@ -16,7 +16,7 @@ from calibration.errors import CalibrationError
 from calibration.pilot import pilot_block, pilot_frequency
 from calibration.pilot_course import PilotCourse, PilotKnot, pilot_knot
 from calibration.smoother import floor_std, noise_std
-from calibration.tracked_piece import TrackedPiece, follow
+from calibration.tracked_piece import MARGIN, TrackedPiece, fast_reach, follow
 
 __all__ = ["PIECE", "TrackedCourse"]
 
@@ -28,6 +28,7 @@ _REACH = (
     12  # half blocks that a piece sees beyond its ends: a round's course reaches over one or two
 )
 _LONGEST = 1 << 21  # samples: longer blocks are left out, the pieces would not fit into memory
+_ROOM = 0.2  # rad between an extreme and what 99 of 100 samples move beside the pilot
 _PROBES = 6  # pieces from which frequency, noise and length of the blocks are found
 
 
@@ -69,9 +70,11 @@ class TrackedCourse:
         self._read, self.count, self.rate_hz = read, count, rate_hz
         self._piece, self._pilot_hz, self._phase_rad = piece, pilot_hz, phase_rad
         pilot_block(rate_hz, pilot_hz, count, _PERIODS[0])
-        self.tally = CourseTally()
+        self.tally, self.margin_rad = CourseTally(), MARGIN
         probes = self._probes()
         self._set(self._best_length(probes) if length is None else length)
+        reaches = [fast_reach(piece) for piece in self._probed(probes, self.length)]
+        self.margin_rad = max(MARGIN, float(np.median(reaches or [0.0])) + _ROOM)
         self.pilot = self._pilot_course()
         self._turns: list[int] = []
         self._join()
@@ -152,15 +155,19 @@ class TrackedCourse:
 
     def _tried(self, probes: list[tuple[int, FloatArray]], length: int) -> tuple[int, int]:
         """Return how many samples are known, and how many inverted, with blocks of a length."""
-        known = inverted = 0
+        pieces = self._probed(probes, length)
+        known = sum(int(np.count_nonzero(piece.known)) for piece in pieces)
+        return known, sum(int(np.count_nonzero(piece.inverted)) for piece in pieces)
+
+    def _probed(self, probes: list[tuple[int, FloatArray]], length: int) -> list[TrackedPiece]:
+        """Return the probes followed, each by a pilot of its own."""
+        pieces = []
         for first, cosine in probes:
-            if len(cosine) < 2 * length:
-                continue
-            knot = self._knot(cosine, first, length, [])
-            got = self._followed(cosine, first, PilotCourse(self.frequency_hz, (knot,)), length)
-            known += int(np.count_nonzero(got.known))
-            inverted += int(np.count_nonzero(got.inverted))
-        return known, inverted
+            if len(cosine) >= 2 * length:
+                knot = self._knot(cosine, first, length, [])
+                course = PilotCourse(self.frequency_hz, (knot,))
+                pieces.append(self._followed(cosine, first, course, length))
+        return pieces
 
     def _knot(
         self, cosine: FloatArray, first: int, length: int, before: list[PilotKnot]
@@ -180,7 +187,7 @@ class TrackedCourse:
         self, cosine: FloatArray, first: int, course: PilotCourse, length: int
     ) -> TrackedPiece:
         swing = course.swing(first, first + len(cosine), self.rate_hz)
-        return follow(cosine, swing, course.depth_rad, length, self.noise)
+        return follow(cosine, swing, course.depth_rad, length, self.noise, self.margin_rad)
 
     def _pilot_course(self) -> PilotCourse:
         """Return the pilot, one knot a piece."""

@@ -7,12 +7,14 @@ from numpy.typing import NDArray
 
 from calibration.working_phase import working_phases
 
-__all__ = ["TrackedPiece", "follow"]
+__all__ = ["MARGIN", "TrackedPiece", "fast_reach", "follow"]
 
 FloatArray = NDArray[np.float64]
 
 _ROUNDS = 3
-_MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+_PARTS = 8
+_NEAR = 0.95  # |sin φ| of a sample near mid-fringe
 _ENDS = 0.35  # rad more within half a block of either end
 _SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
 _LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
@@ -74,7 +76,12 @@ class TrackedPiece:
 
 
 def follow(
-    cosine: FloatArray, swing: FloatArray, depth_rad: float, length: int, noise: float
+    cosine: FloatArray,
+    swing: FloatArray,
+    depth_rad: float,
+    length: int,
+    noise: float,
+    margin_rad: float = MARGIN,
 ) -> TrackedPiece:
     """Follow a record whose fast motion is known: slow course from blocks, then each sample's branch.
 
@@ -90,6 +97,9 @@ def follow(
         Samples in a block, even.
     noise : float
         Standard deviation of the record's noise.
+    margin_rad : float, optional
+        Distance from an extreme within which no sample is inverted [rad]: room for what moves beside the
+        slow course and the pilot.
 
     Returns
     -------
@@ -108,11 +118,31 @@ def follow(
     # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it
     # would pull the phase away from the extremes
     clear = np.abs(phase - expected) < np.abs(np.sin(expected))
-    inside = _inside(course, expected, depth_rad, _margin(count, length))
+    inside = _inside(course, expected, depth_rad, _margin(count, length, margin_rad))
     inverted = present & ~lost & inside & (np.abs(cosine) < 1.0) & clear
     carried = present & ~lost & ~inverted
     phase = np.where(inverted, phase, np.where(carried, expected, np.nan))
     return TrackedPiece(phase, inverted, carried, present & lost, course, expected)
+
+
+def fast_reach(piece: TrackedPiece) -> float:
+    """Return how far the phase moves beside the slow course and the pilot [rad].
+
+    Parameters
+    ----------
+    piece : TrackedPiece
+        Followed with any margin.
+
+    Returns
+    -------
+    float
+        The distance that one of a hundred samples near mid-fringe exceeds, where 1.25 rad may be seen, in
+        most parts of the piece; 0 where no sample lies there.
+    """
+    near = piece.inverted & (np.abs(np.sin(piece.expected_rad)) > _NEAR)
+    apart = np.abs(piece.phase_rad[near] - piece.expected_rad[near])
+    parts = [part for part in np.array_split(apart, _PARTS) if part.size]
+    return float(np.median([np.quantile(part, 0.99) for part in parts])) if parts else 0.0
 
 
 def _branches(cosine: FloatArray, expected: FloatArray, noise: float) -> FloatArray:
@@ -130,15 +160,15 @@ def _branches(cosine: FloatArray, expected: FloatArray, noise: float) -> FloatAr
     return np.where(np.abs(up - expected) <= np.abs(down - expected), up, down)
 
 
-def _margin(count: int, length: int) -> FloatArray:
+def _margin(count: int, length: int, margin_rad: float) -> FloatArray:
     """Return the distance from an extreme that a sample must have [rad], shape (n,).
 
     It is wider beyond the middles of the first and the last block, where the course only goes on straight.
     """
-    margin = np.full(count, _MARGIN)
+    margin = np.full(count, margin_rad)
     margin[: length // 2] += _ENDS
     margin[(count // (length // 2) - 1) * (length // 2) :] += _ENDS
-    return margin
+    return np.minimum(margin, 0.5 * np.pi)
 
 
 def _inside(
@@ -150,7 +180,9 @@ def _inside(
     the pilot; a deep one leaves no whole period.
     """
     if depth_rad < _SHALLOW:
-        return np.asarray(np.abs(np.sin(course)) > np.sin(margin + depth_rad))
+        return np.asarray(
+            np.abs(np.sin(course)) > np.sin(np.minimum(margin + depth_rad, 0.5 * np.pi))
+        )
     return np.asarray(np.abs(np.sin(expected)) > np.sin(margin))
 
 

@@ -73,7 +73,17 @@ class TrackedPhase:
         -------
         ndarray, shape (n,)
             Phase [rad].
+
+        Raises
+        ------
+        CalibrationError
+            If no sample is inverted.
         """
+        if not self.inverted.any():
+            raise CalibrationError(
+                "no sample lies where the fringe can be inverted: what moves beside the pilot and the "
+                "slow drift reaches from one extreme to the next"
+            )
         return np.where(self.inverted, self.phase_rad, np.nan)
 
 

@@ -157,3 +157,13 @@ def test_a_gap_longer_than_a_fringe_takes_is_told():
     record[5000:5800] = np.nan  # 0.2 s: a fringe
     got = track_phase(record, RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
     assert any("after 1 stretches without a phase, the first of 8" in one for one in got.reasons)
+
+
+@pytest.mark.parametrize("size", [0.2, 0.35])
+def test_deep_lines_beside_the_pilot_are_kept_clear_of_the_extremes(size):
+    """Four lines reach 3 and 5 times as far as the margin: no sample is taken on the wrong branch."""
+    lines = sum(size * np.cos(2 * np.pi * f * TIME + f) for f in (87.1, 31.7, 141.3))
+    phase = 0.4 + 2.0 * TIME + 0.2 * np.cos(2 * np.pi * PILOT_HZ * TIME + 0.6) + lines
+    got = track_phase(volts(phase, 0.002), RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
+    assert got.inverted.any()
+    assert np.abs(got.phase_rad - phase)[got.inverted].max() < 0.05

@@ -14,6 +14,7 @@ FloatArray = NDArray[np.float64]
 
 _FASTEST = 1.0 / 3.0  # fringes per sample; at one half the direction is lost
 _EVEN = 0.85  # least span over greatest
+_MOST_UNEVEN = 0.1  # of cos φ
 _MOST_NOISE = 0.08  # of cos φ: the band would be above a quarter of the span
 
 
@@ -155,6 +156,11 @@ def count_reasons(
     fast = bool(reasons)
     reasons += _drive_jumps(got, drive)
     reasons += _short_swings(record, envelope, got)
+    if got.uneven > _MOST_UNEVEN:
+        reasons.append(
+            f"the fringe's tops and bottoms scatter by {got.uneven:.1%} of half its span from one to the "
+            f"next, {_MOST_UNEVEN:.0%} is the limit: lamp light, mains or power noise lies on top"
+        )
     reasons += _lost_in_gaps(record, got) + _uneven(record, envelope, span_range)
     if got.cosine_u > _MOST_NOISE:
         reasons.append(

@@ -12,6 +12,7 @@ __all__ = ["Envelope", "constant_envelope", "running_envelope", "running_median"
 FloatArray = NDArray[np.float64]
 
 _NEIGHBOURS = 7  # tops that a running median goes over: one that turned short changes nothing
+_MOST_BEYOND = 0.5  # of what the levels differ: so far a trend is carried on
 
 
 @dataclass(frozen=True)
@@ -100,6 +101,23 @@ def running_median(levels: FloatArray, neighbours: int) -> FloatArray:
     return np.asarray(np.median(windows, axis=1))
 
 
+def _along(count: int, places: NDArray[np.int64], levels: FloatArray) -> FloatArray:
+    """Return the running median of levels at every sample, its trend carried on to both ends."""
+    half = _NEIGHBOURS // 2
+    if len(levels) < 2 * _NEIGHBOURS:
+        return np.interp(np.arange(count), places, running_median(levels, _NEIGHBOURS))
+    middles = running_median(levels, _NEIGHBOURS)[half:-half]
+    at = places[half : len(places) - half].astype(float)
+    reach = _MOST_BEYOND * float(np.median(np.abs(levels - np.median(levels))) + np.ptp(middles))
+    points, level = [at], [middles]
+    for end, near, next_one in ((0.0, 0, half), (count - 1.0, -1, -1 - half)):
+        slope = (middles[near] - middles[next_one]) / (at[near] - at[next_one])
+        on = middles[near] + float(np.clip(slope * (end - at[near]), -reach, reach))
+        points.insert(0 if near == 0 else len(points), np.array([end]))
+        level.insert(0 if near == 0 else len(level), np.array([on]))
+    return np.interp(np.arange(count), np.concatenate(points), np.concatenate(level))
+
+
 def running_envelope(
     values: FloatArray, noise: float, least_swing: float = 0.15
 ) -> Envelope | None:
@@ -125,10 +143,6 @@ def running_envelope(
     if len(turns) < 6:
         return None
     is_top = np.diff(levels, prepend=levels[1]) > 0.0
-    index = np.arange(len(values))
-    ends = [
-        np.interp(index, turns[side], running_median(levels[side], _NEIGHBOURS))
-        for side in (~is_top, is_top)
-    ]
+    ends = [_along(len(values), turns[side], levels[side]) for side in (~is_top, is_top)]
     least = 0.02 * float(high - low)
     return Envelope(ends[0], np.maximum(ends[1], ends[0] + least))

@@ -11,6 +11,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.ac_coupling import ac_reasons
 from calibration.count_reasons import count_reasons
 from calibration.errors import CalibrationError
 from calibration.fringe_pass import Pass, cut_passes, end_u
@@ -166,6 +167,7 @@ def count_fringes(
             values, record, envelope, got, scan if extremes is None else None, span_range, along
         )
         + shaking_reasons(passes, got, envelope.cosine(record.values), along)
+        + ac_reasons(record, got)
         + standing_reasons(values[record.first : stop], record, envelope, got, along),
     )
 
@@ -187,7 +189,11 @@ def _bridged(drive: FloatArray) -> FloatArray:
     filled = np.interp(np.arange(len(drive)), good, drive[good])
     # where noise hides the steps of the drive, so does it the moment of its turn
     noise, step = noise_std(filled), float(np.median(np.abs(np.diff(filled))))
-    return averaged(filled, 33) if noise > 0.1 * step else filled
+    if noise <= 0.1 * step:
+        return filled
+    # until what is left stays within a hundredth of the drive's range, from peak to peak
+    needed = 2.25 * (9.0 * noise / max(0.01 * float(np.ptp(filled)), 1e-300)) ** 2
+    return averaged(filled, 2 * int(min(max(needed, 33.0), max(len(filled) / 100.0, 33.0)) / 2) + 1)
 
 
 def _turned(got: Unfolded) -> Unfolded:

@@ -66,7 +66,8 @@ def end_u(got: Unfolded, places: NDArray[np.int64]) -> FloatArray:
     angle = np.abs(np.sin(got.phase_rad[places]))
     step = _steps(got)[places]
     # the extremes, too, are known to about 1 %, less well where they lie between samples
-    cosine_u = np.hypot(got.cosine_u, 0.01 + 0.03 * step / math.pi)
+    # the tops pick the most of what lies on top: elsewhere it is about twice their scatter
+    cosine_u = np.hypot(math.hypot(got.cosine_u, 2.0 * got.uneven), 0.01 + 0.03 * step / math.pi)
     near = np.minimum(cosine_u / np.maximum(angle, 1e-9), np.sqrt(2.0 * cosine_u))
     # within the band of an extreme the side is not known, nor where the extreme may lie between samples
     hidden = math.acos(max(1.0 - 2.0 * got.band, -1.0)) + 0.75 * step

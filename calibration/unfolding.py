@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from calibration.driven_way import against_drive, driven_sides, unfollowed_turns
 from calibration.envelope import Envelope, running_median
 from calibration.half_fringes import half_fringe_samples, whole_swings
+from calibration.swept_record import averaged
 from calibration.turning_points import turning_points
 
 __all__ = ["Unfolded", "slow_spots", "unfold_fringe"]
@@ -21,6 +22,7 @@ FloatArray = NDArray[np.float64]
 
 _LEAST_BAND = 0.1  # of the span: vibration of up to 0.6 rad makes no turn next to an extreme
 _LEAST_DRIVEN_BAND = 0.005  # the drive, not the band, tells vibration from a turn
+_NEAR_END = 0.95  # of cos φ
 _UP_TO = 0.15  # rad: what an extreme known to 1 % leaves open
 _SHORT = 0.12  # a top this much below the extreme still counts as gone over: 28° of phase
 
@@ -49,6 +51,8 @@ class Unfolded:
         turns lie there.
     swings : ndarray of int
         Those turns that end a swing over most of the fringe; all where these are too few.
+    uneven : float
+        How much the tops and bottoms of whole fringes scatter, in cos φ, beyond noise and sampling.
     """
 
     phase_rad: FloatArray
@@ -59,6 +63,40 @@ class Unfolded:
     against_drive: float
     unfollowed: tuple[int, int]
     swings: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
+    uneven: float = 0.0
+
+
+def _uneven(cosine: FloatArray, swings: NDArray[np.int64], cosine_u: float) -> float:
+    """Return the scatter of tops and bottoms with whole half fringes on both sides."""
+    level = cosine[swings]
+    swing = np.abs(np.diff(level))
+    whole = np.flatnonzero(np.minimum(swing[1:], swing[:-1]) > 1.2) + 1
+    samples = half_fringe_samples(swings, swings, len(cosine))
+    scatters = []
+    for side in (level > 0.0, level <= 0.0):
+        own = whole[side[whole]]
+        if len(own) < 5:
+            return 0.0
+        missed = 1.0 - np.cos(0.5 * np.pi / samples[own])
+        about = np.abs(level[own] - np.median(level[own]))
+        scatter = 1.4826 * float(np.median(about))
+        scatters.append(scatter**2 - (0.35 * float(np.median(missed))) ** 2)
+    return math.sqrt(max(max(scatters) - (1.5 * cosine_u) ** 2, 0.0))
+
+
+def _ripple(cosine: FloatArray, swings: NDArray[np.int64], cosine_u: float) -> float:
+    """Return what lies on top of the fringe, quicker than it, beyond noise.
+
+    It is looked for at tops and bottoms, where vibration of the mirror moves the level little.
+    """
+    half = half_fringe_samples(swings, swings, len(cosine))
+    length = 2 * int(float(np.quantile(half, 0.1)) / 6.0) + 1 if len(swings) > 2 else 1
+    if length < 5:
+        return 0.0
+    rest = (cosine - averaged(cosine, length))[np.abs(cosine) > _NEAR_END]
+    if len(rest) < 2 * length:
+        return 0.0
+    return math.sqrt(max(float(np.mean(rest**2)) - (1.3 * cosine_u) ** 2, 0.0))
 
 
 def _passed(
@@ -207,4 +245,5 @@ def unfold_fringe(
         against_drive(phase, drive),
         unfollowed_turns(drive, level, band),
         swings,
+        max(_uneven(cosine, swings, cosine_u), _ripple(cosine, swings, cosine_u)),
     )

@@ -274,6 +274,39 @@ def test_a_laser_that_goes_off_midway_is_named_and_a_motor_that_rests_is_not(fri
     assert any("laser off, beam blocked" in reason for reason in reasons)
 
 
+def behind_a_capacitor(record, samples):
+    keep = np.exp(-1.0 / samples)
+    out = np.zeros(len(record))
+    for k in range(1, len(record)):
+        out[k] = keep * (out[k - 1] + record[k] - record[k - 1])
+    return out
+
+
+def test_ac_coupling_is_named_where_fringes_slow_down():
+    way = 27.4 * triangle(3)
+    record = volts(2 * np.pi * way, 8)
+    assert count_fringes(record, 1000.0).reasons == []
+    assert count_fringes(record - record.mean(), 1000.0).reasons == []
+    slow = 2 * np.pi * (way + 1.5 * np.sin(TIME))  # unsteady: slow here, fast there
+    sunk = behind_a_capacitor(volts(slow, 8), 1000.0)
+    assert any("AC-coupled" in reason for reason in count_fringes(sunk, 1000.0).reasons)
+
+
+@pytest.mark.parametrize("hertz", [2.3, 9.7, 31.0])
+def test_lamp_light_on_top_is_in_the_u_or_named(hertz):
+    for seed in range(4):
+        flicker = 0.15 * np.cos(2 * np.pi * hertz * TIME + seed)
+        for drive in (None, TIME):
+            got = count_fringes(volts(whole(40.3), seed, 0.003) + flicker, 1000.0, drive)
+            assert got.reasons or abs(got.net_fringes - 40.3) < 3 * got.net_u
+
+
+def test_extremes_that_drift_are_carried_on_to_the_ends():
+    power = 1 + 0.12 * TIME / 12
+    got = count_fringes(volts(2 * np.pi * 4.3 * triangle(4), 4, 0.005) * power, 1000.0, triangle(4))
+    assert abs(got.net_fringes) < 3 * got.net_u < 0.06
+
+
 def test_coarse_levels_are_not_taken_for_clipping():
     rough = np.round(volts(2 * np.pi * 5.3 * triangle(4), 7, 0.01) / 0.02) * 0.02
     got = count_fringes(rough, 1000.0, np.round(triangle(4) * 200) / 200)

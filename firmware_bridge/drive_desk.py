@@ -6,7 +6,6 @@ import time
 from collections.abc import Callable, Iterator
 
 from firmware_bridge.announcement import Announcement
-from firmware_bridge.arguments import clear_arguments
 from firmware_bridge.board_lines import BoardLines, SentLine
 from firmware_bridge.drive_answer import answer_text, drive_command
 from firmware_bridge.drive_lines import DriveError, DriveLine, DriveLines, Request, rest_requests
@@ -15,12 +14,11 @@ from firmware_bridge.drive_settling import DriveSettling
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.live_events import LiveLines
 from firmware_bridge.message import CommandCode, Reply
+from firmware_bridge.wanted_lines import WantedLines
 
 __all__ = ["DriveDesk"]
 
-_ANSWER_S = 5.0
 _REPEAT_S = 0.5  # a command without an answer is sent again
-_ROUNDING = 1e-12  # sums of the same amplitudes in another order
 
 
 class DriveDesk:
@@ -50,25 +48,23 @@ class DriveDesk:
         is_held: bool,
         tell: Callable[[LiveLines], None] | None = None,
     ) -> None:
-        self._lines, self._is_held, self._tell = lines, is_held, tell
+        self._is_held, self._tell = is_held, tell
         self._lock = threading.RLock()
         self._board = BoardLines()
+        self._wanted = WantedLines(lines, self._board, is_patient=is_held)
         self._stream: int | None = None
-        self._due: list[int] = list(lines.lines)  # slots to be set or cleared
         self._rest = DriveRest()
         self._settling = DriveSettling()
         self._rate_hz: float | None = None
-        self._asked_s: dict[int, float] = {}  # since when a slot's line has no answer
         self._is_away = False
         self._orders = 0
         self._told: LiveLines | None = None
         self._notices: list[str] = []
-        self._refusals: list[str] = []
 
     @property
     def are_any(self) -> bool:
         """Whether a line is wanted."""
-        return bool(self._lines.lines)
+        return self._wanted.are_any
 
     def set(self, slot: int, line: DriveLine) -> None:
         """Want a line; errors as `DriveLines.set`.
@@ -88,8 +84,8 @@ class DriveDesk:
         with self._lock:
             if self._is_away:
                 raise DriveError("the port is gone, so no line is set")
-            self._lines.set(slot, line)
-            self._want(slot)
+            self._wanted.set(slot, line)
+            self._show()
 
     def clear(self, slot: int) -> None:
         """Want no line in this slot.
@@ -100,20 +96,13 @@ class DriveDesk:
             From 0.
         """
         with self._lock:
-            self._lines.clear(slot)
-            self._want(slot)
-
-    def _want(self, slot: int) -> None:
-        self._asked_s.pop(slot, None)
-        self._due.append(slot)
-        self._show()
+            self._wanted.clear(slot)
+            self._show()
 
     def rest(self) -> None:
         """Want the drive at rest, before anything else that waits."""
         with self._lock:
-            self._lines.lines = {}
-            self._due.clear()
-            self._asked_s.clear()
+            self._wanted.drop()
             self._rest.want(self._board.serial)
             self._show()
 
@@ -133,7 +122,7 @@ class DriveDesk:
         if self._tell is None:
             return
         is_at_rest = not self._rest.is_open and not self._board.largest
-        seen = LiveLines(self._board.largest, dict(self._lines.lines), is_at_rest, self._orders)
+        seen = LiveLines(self._board.largest, self._wanted.lines, is_at_rest, self._orders)
         if seen != self._told:
             self._told = seen
             self._tell(seen)  # under the lock: so they come in order
@@ -168,8 +157,7 @@ class DriveDesk:
             For people; such a line is no longer wanted, and what its slot held before still is.
         """
         with self._lock:
-            refusals, self._refusals = self._refusals, []
-            return refusals
+            return self._wanted.take_refusals()
 
     def due(self, announcement: Announcement | None) -> list[Request]:
         """Return what is to be sent now.
@@ -195,28 +183,24 @@ class DriveDesk:
             self._rate_hz = announcement.rate_hz
             now_s = time.monotonic()
             requests = self._requests_of_rest(announcement, now_s)
-            overdue = self._board.overdue(now_s - _REPEAT_S)
-            self._due = list(dict.fromkeys([*self._due, *overdue]))
-            self._give_up(now_s)
-            self._refuse(announcement)
+            self._wanted.look(announcement, now_s, _REPEAT_S)
             if not self._rest.is_open:
-                requests += self._requests_of_lines(announcement, now_s)
+                requests += self._wanted.requests(announcement, now_s)
             self._show()
             return requests
 
     def _restart(self) -> None:
         """Set held lines again, as the board counts anew; forget others."""
-        self._asked_s.clear()
         if self._is_held:
-            self._due = list(self._lines.lines)
+            self._wanted.again()
             if self._settling.is_over:
                 self._notices.append(
                     "the board or its port was away; its drive lines are set again"
                 )
             return
-        if self._lines.lines:
+        if self._wanted.are_any:
             self._notices.append("the board or its port was away; its drive is brought to rest")
-        self._lines.lines, self._due = {}, []
+        self._wanted.drop()
         self._rest.want(self._board.serial)
 
     def _requests_of_rest(self, announcement: Announcement, now_s: float) -> list[Request]:
@@ -224,68 +208,6 @@ class DriveDesk:
         for code, _ in requests:
             self._board.make(code, None, None, now_s)
         return requests
-
-    def _refuse(self, announcement: Announcement) -> None:
-        """Take back what cannot be: each line by itself, and the youngest beyond the limit."""
-        for slot in reversed(self._due.copy()):
-            line = self._lines.lines.get(slot)
-            if line is None:
-                continue
-            try:
-                self._lines.request(slot, announcement)
-                before = self._board.last(slot)
-                if before is None or before.amplitude_v < line.amplitude_v:
-                    self._lines.set(slot, line)  # others may have been restored since
-            except BridgeError as error:
-                self._refusals.append(str(error))
-                self._due.remove(slot)
-                self._restore(slot)
-
-    def _restore(self, slot: int) -> None:
-        """Want again what a slot holds as far as is known; where it is not, want none."""
-        refused, before = self._lines.lines.get(slot), self._board.last(slot)
-        kept = {k: line for k, line in self._lines.lines.items() if k != slot}
-        if before is not None and before == refused:  # sent once without an answer
-            self._due.append(slot)
-        elif before is not None:
-            kept[slot] = before
-        self._lines.lines = kept
-        self._asked_s.pop(slot, None)
-
-    def _requests_of_lines(self, announcement: Announcement, now_s: float) -> list[Request]:
-        slots, self._due = self._due, []
-        requests = []
-        for slot in slots:
-            line = self._lines.lines.get(slot)
-            if line is None:
-                code, arguments = CommandCode.CLEAR_LINE, clear_arguments(slot)
-            elif self._fits(slot, line):
-                code, arguments = self._lines.request(slot, announcement)
-                self._asked_s.setdefault(slot, now_s)
-            else:
-                self._due.append(slot)  # until those it replaces are confirmed to be gone
-                continue
-            self._board.make(code, slot, line, now_s)
-            requests.append((code, arguments))
-        return requests
-
-    def _fits(self, slot: int, line: DriveLine) -> bool:
-        limit_v = self._lines.limit_v
-        return limit_v is not None and (
-            self._board.peak_v(slot, line) <= limit_v * (1.0 + _ROUNDING)
-        )
-
-    def _give_up(self, now_s: float) -> None:
-        """Clear a line to which the board does not answer; a held one ends the recording."""
-        for slot, since_s in list(self._asked_s.items()):
-            if self._is_held or now_s - since_s < _ANSWER_S:
-                continue
-            del self._asked_s[slot]
-            self._lines.clear(slot)
-            self._due = list(dict.fromkeys([*self._due, slot]))
-            self._refusals.append(
-                f"the board does not answer to set line for {_ANSWER_S:g} s; it is cleared"
-            )
 
     def sent(self, number: int, code: CommandCode) -> None:
         """Take note of what was sent, in the order of `due`.
@@ -332,10 +254,7 @@ class DriveDesk:
             if not self._rest.is_open:
                 self._board.rested()
             return
-        if self._lines.lines.get(sent.slot) == sent.line:
-            self._asked_s.pop(sent.slot, None)
-            if status and sent.line is not None:  # nothing has changed
-                self._restore(sent.slot)
+        self._wanted.answered(sent, status)
 
     def is_settled(self, at: tuple[int, int] | None = None) -> bool:
         """Return whether the first samples may be kept: all lines are set, and a moment has passed.
@@ -358,7 +277,9 @@ class DriveDesk:
         if self._settling.is_over or not self._is_held or not self.are_any:
             return True
         with self._lock:
-            is_done = self._board.is_answered and not self._due and not self._rest.is_open
+            is_done = (
+                self._board.is_answered and not self._wanted.are_due and not self._rest.is_open
+            )
             return self._settling.wait(is_done=is_done, at=at, rate_hz=self._rate_hz)
 
     def fall(self, announcement: Announcement | None) -> Iterator[tuple[float, list[Request]]]:
@@ -378,7 +299,7 @@ class DriveDesk:
             if announcement is None or not self._settling.has_sent:
                 return
             steps = [(0.0, rest_requests(announcement.rate_hz))]
-            falling = self._lines.holding(self._board.sure)
+            falling = self._wanted.falling()
             if falling.lines:
                 with contextlib.suppress(BridgeError):  # of a board that is another one by now
                     steps = list(falling.fall(announcement))

@@ -64,11 +64,18 @@ def _reversals(got: Unfolded, drive: FloatArray) -> list[str]:
     far = alone & (back > _HALF_FRINGE)
     if not far.any():
         return []
-    first = int(ends[short[int(np.argmax(far)) + 1]])
+    near = ends[short[np.flatnonzero(far) + 1]]
+    first, last, count = int(near[0]), int(near[-1]), len(got.phase_rad)
+    rest = ""
+    if last < 0.3 * count:
+        rest = "; what comes after can be counted by --from"
+    elif first > 0.7 * count:
+        rest = "; what comes before can be counted by --to"
+    where = f"near sample {first}" if last == first else f"from sample {first} to {last}"
     return [
         (
-            f"the motion does not follow the drive: first near sample {first}, the mirror shakes to and "
-            "fro by half a fringe and more, which the drive does not tell from going on"
+            f"the motion does not follow the drive: {where}, the mirror shakes to and fro by half a fringe "
+            f"and more, which the drive does not tell from going on{rest}"
         )
     ]
 

@@ -4,6 +4,7 @@ from typing import Any
 
 from calibration.record import Calibration
 from metro.display import show
+from metro.headed_text import headed
 from metro.measured import Measured
 from metro.output import table
 
@@ -40,24 +41,38 @@ def calibration_text(calibration: Calibration) -> str:
         for entry in calibration.actuator
     ]
     header = ["line", "actuator", "U (95 %)", "phase", "U (95 %)", "trust"]
-    parts = [table(rows, header=header), "", table(_readout_rows(calibration)), ""]
     first = calibration.actuator[0]
-    parts += [
-        f"budget of the actuator at {show(float(first.frequency.magnitude), 'Hz')}:",
-        first.budget.table(),
-        "",
+    at = show(float(first.frequency.magnitude), "Hz")
+    found = [*response_lines(calibration), *series_lines(calibration), *route_lines(calibration)]
+    parts = [
+        table(rows, header=header),
+        table(_readout_rows(calibration)),
+        f"budget of the actuator at {at}\n{first.budget.table()}",
+        f"budget of the readout slope\n{calibration.readout_budget.table()}",
+        headed("between the lines, and other routes", found),
+        headed("conditions", validity_lines(calibration)),
+        headed("checks", [_check(check) for check in calibration.checks]),
+        headed("taken as given", calibration.assumptions),
+        headed("conventions", CONVENTIONS),
+        headed("in short", _in_short(calibration)),
     ]
-    parts += ["budget of the readout slope:", calibration.readout_budget.table(), ""]
-    parts += [
-        *response_lines(calibration),
-        *series_lines(calibration),
-        *route_lines(calibration),
-        *validity_lines(calibration),
+    return "\n\n".join(part for part in parts if part)
+
+
+def _in_short(calibration: Calibration) -> list[str]:
+    """Return the result once more, for the end of a long page."""
+    lines = [
+        f"actuator at {show(float(entry.frequency.magnitude), 'Hz')}: {entry.magnitude}"
+        for entry in calibration.actuator
     ]
-    parts += [f"check: {_check(check)}" for check in calibration.checks]
-    parts += [f"assumed: {text}" for text in calibration.assumptions]
-    parts += [f"convention: {text}" for text in CONVENTIONS]
-    return "\n".join(parts)
+    lines.append(f"readout slope at mid-fringe: {calibration.readout_slope}")
+    against = calibration.all_reasons
+    lines.append(
+        f"not to be trusted: {len(against)} reasons, named below"
+        if against
+        else "no reason for distrust found"
+    )
+    return lines
 
 
 def _readout_rows(calibration: Calibration) -> list[list[str]]:

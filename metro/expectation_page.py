@@ -5,14 +5,12 @@ What a reader asks for stands first, and once more in the last lines, where a te
 
 from __future__ import annotations
 
-import textwrap
 from typing import TYPE_CHECKING
 
 from metro.display import show, show_measured
+from metro.headed_text import headed
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
-
     from metro.expectation import Expectation
     from metro.measured import Measured
 
@@ -20,7 +18,6 @@ __all__ = ["expectation_page"]
 
 _DIGITS = 7  # of a number without an uncertainty: a part in a million still shows
 _SHORT_DIGITS = 4
-_WIDTH = 118  # columns of a text; tables are as wide as they need
 _SHORT = ("strain", "displacement", "phase", "voltage", "counts")
 
 
@@ -46,11 +43,11 @@ def expectation_page(expectation: Expectation) -> str:
         table(_rows(expectation.working_point), ("working point", "")),
         table(_noise_rows(expectation), ("noise", "displacement density", "strain density")),
         table(_rows(expectation.snr), ("signal to noise", "")),
-        _texts("corrections", [c.text for c in expectation.corrections.values()]),
-        _texts("conventions", conventions),
+        headed("corrections", [c.text for c in expectation.corrections.values()]),
+        headed("conventions", conventions),
         _bench_table(expectation.sources),
-        _texts("cautions", expectation.cautions),
-        _texts("in short", _in_short(expectation)),
+        headed("cautions", expectation.cautions),
+        headed("in short", _in_short(expectation)),
     ]
     return "\n\n".join(part for part in parts if part)
 
@@ -124,19 +121,3 @@ def _bench_table(sources: dict[str, dict[str, str]]) -> str:
         for key, entry in sources.items()
     ]
     return table(rows, ("the bench", "value", f"from {file}" if file else "from"))
-
-
-def _texts(title: str, texts: Sequence[str]) -> str:
-    """Return texts under a heading, long ones over several lines."""
-    wrapped = [
-        textwrap.fill(
-            text,
-            _WIDTH,
-            initial_indent="  ",
-            subsequent_indent="    ",
-            break_long_words=False,
-            break_on_hyphens=False,
-        )
-        for text in texts
-    ]
-    return "\n".join([title, *wrapped]) if wrapped else ""

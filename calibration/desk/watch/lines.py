@@ -18,6 +18,7 @@ FloatArray = NDArray[np.float64]
 
 _FEWEST_CYCLES = 8  # of the lowest line in a block, and as many between two neighbours
 _LONGEST_BLOCK_S = 60.0
+_LONG = 1.5  # times the block asked for: to be told
 _POINTS = 150  # of each line: ten minutes of four-second blocks
 
 
@@ -54,7 +55,7 @@ class LineWatch:
         self.clock: tuple[float, float] | None = None
         """Relative frequency error of all lines and its expanded uncertainty (95 %)."""
         self.remarks: tuple[str, ...] = ()
-        """Why a line that was asked for is not fitted."""
+        """Why a line that was asked for is not fitted, or seldom."""
         self._points: dict[float, deque[LinePoint]] = {}
         self._quiet_until = 0
         self._reset()
@@ -81,6 +82,11 @@ class LineWatch:
         self.clock = None
         self._quiet_until = self._next + round(settle_s * self._rate_hz)
         self._reset()
+        block_s = self._length / self._rate_hz
+        if wanted and block_s > _LONG * self._wanted_s:
+            spacing = float(np.diff([0.0, *wanted]).min())
+            close = f"lines are {spacing:.3g} Hz apart" if spacing < wanted[0] else "a line is slow"
+            self.remarks += (f"{close}: each fit takes {block_s:.3g} s",)
 
     def restart(self) -> None:
         """Forget every point and every sample: another stream begins, with a phase of its own."""

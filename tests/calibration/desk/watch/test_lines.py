@@ -131,6 +131,23 @@ def test_a_fit_of_lines_that_have_changed_is_dropped():
     assert watch.points(31.7) == watch.points(87.1) == ()
 
 
+@pytest.mark.parametrize(
+    ("lines_hz", "told"),
+    [
+        ((31.7, 87.1), ()),
+        ((31.7, 31.9), ("lines are 0.2 Hz apart: each fit takes 40 s",)),
+        ((31.7, 31.75), ("lines are 0.05 Hz apart: each fit takes 60 s",)),
+        ((0.5, 31.7), ("a line is slow: each fit takes 16 s",)),
+        ((), ()),
+    ],
+)
+def test_long_blocks_are_told(lines_hz, told):
+    """Eight cycles of the lowest line, and eight between neighbours; a minute at most."""
+    watch = LineWatch(1000.0)
+    watch.set_lines(lines_hz)
+    assert watch.remarks == told
+
+
 def test_lines_beyond_half_the_rate_are_named_and_left_out():
     watch = LineWatch(RATE_HZ)
     watch.set_lines([600.0, 31.7])

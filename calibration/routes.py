@@ -25,6 +25,7 @@ _SLOPE_RANGE = (
     "each line below 1 rad, working point within 45° of mid-fringe and moving by less than 0.5 rad, "
     "extremes known"
 )
+_STEADY_RAD = 0.1
 _RATIO_RANGE = (
     "0.3 rad to 3.8 rad, working point neither near mid-fringe nor near an extreme, and steady"
 )
@@ -75,12 +76,29 @@ def _solved_slope(
     return depths, sine
 
 
+def _mean(values: NDArray[np.float64], *, steady: bool) -> tuple[float, float]:
+    """Return the mean of a record of lines that need not be whole periods, and its uncertainty.
+
+    Tapered, since a piece of a period at the ends would shift it; over the whole record alike but for a
+    tenth at each end where the working point moves.
+    """
+    good = np.isfinite(values)
+    place = (np.arange(len(values)) + 0.5) / len(values)
+    edge = np.minimum(place, 1.0 - place)
+    means = []
+    for taper in (0.5, 0.1):
+        weight = np.where(good, np.sin(0.5 * np.pi * np.minimum(edge / taper, 1.0)) ** 2, 0.0)
+        means.append(float(weight @ np.where(good, values, 0.0) / weight.sum()))
+    return means[0] if steady else means[1], abs(means[0] - means[1])
+
+
 def _slope(
     values: NDArray[np.float64], fit: FringeFit, amplitudes: list[Measured], ruler: Ruler | None
 ) -> Route:
     """Return the route over the slope at mid-fringe."""
     name = "mid-fringe slope"
-    mean = float(np.nanmean(values))
+    moved = fit.working_range_rad[1] - fit.working_range_rad[0]
+    mean, mean_u = _mean(values, steady=moved < _STEADY_RAD)
     solved = _solved_slope([float(a.magnitude) for a in amplitudes], mean, fit)
     if solved is None:
         reason = "the lines and the mean do not fit one slope: too deep, or not near mid-fringe"
@@ -93,13 +111,13 @@ def _slope(
     if sine < math.sin(math.pi / 4):
         off = math.degrees(math.acos(sine))
         reasons.append(f"outside its range: the working point is {off:.0f}° off mid-fringe")
-    moved = fit.working_range_rad[1] - fit.working_range_rad[0]
     if moved > 0.5:
         reasons.append(f"outside its range: the working point moved by {moved:.2g} rad")
     reasons += [r for r in fit.reasons if r.startswith("depth not determined")]
     span_u = math.hypot(float(fit.low.u_magnitude), float(fit.high.u_magnitude))
     span = span_u / float(fit.high.magnitude - fit.low.magnitude)
-    lean = math.sqrt(1.0 - sine**2) / sine**2 * span  # cot φ0 · u(cos φ0)/sin φ0, u(cos) ≈ span
+    cosine_u = math.hypot(span, 2.0 * mean_u / float(fit.high.magnitude - fit.low.magnitude))
+    lean = math.sqrt(1.0 - sine**2) / sine**2 * cosine_u  # cot φ0 · u(cos φ0)/sin φ0
     out = [
         Measured.of(
             m,

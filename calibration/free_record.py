@@ -1,6 +1,6 @@
 """A lines recording of a bench that runs freely: tracked by a pilot, inverted on both slopes, fitted."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from math import pi
 from pathlib import Path
@@ -102,6 +102,7 @@ class FreeRecord:
         pilot_hz: float,
         motion_rad: float,
         fit: Callable[[RoleRecord, FloatArray], LineFit],
+        lines_hz: Sequence[float] = (),
     ) -> "FreeRecord":
         """Return a recording tracked and fitted.
 
@@ -117,6 +118,8 @@ class FreeRecord:
             Phase of the motion over the drive at the pilot, to half a turn [rad].
         fit : callable
             Fits lines to a record's phase.
+        lines_hz : sequence of float
+            All lines that may be driven [Hz].
 
         Raises
         ------
@@ -130,7 +133,12 @@ class FreeRecord:
         trace = record.photodiode
         levels = extremes.low_v, extremes.high_v
         tracked = track_phase(
-            trace.values, trace.rate_hz, *levels, seen_hz, pilot_phase_rad=phase_rad
+            trace.values,
+            trace.rate_hz,
+            *levels,
+            seen_hz,
+            pilot_phase_rad=phase_rad,
+            others_hz=[line_hz * seen_hz / pilot_hz for line_hz in lines_hz],
         )
         means = FreeMeans.of(tracked.phase_rad[tracked.inverted])
         lines = fit(record, tracked.for_lines)

@@ -158,6 +158,7 @@ class SessionFits:
                 pilot_hz,
                 self._motion_rad(pilot_hz),
                 lambda r, phase: self.fit(r, phase, "rad"),
+                self.frequencies_hz,
             )
             for record in records
         ]

@@ -5,7 +5,7 @@ see in the whole record; neighbours are joined by whole fringes where they overl
 pieces is the pilot and the count of fringes.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from functools import lru_cache
 
 import numpy as np
@@ -28,6 +28,9 @@ _REACH = (
     12  # half blocks that a piece sees beyond its ends: a round's course reaches over one or two
 )
 _LONGEST = 1 << 21  # samples: longer blocks are left out, the pieces would not fit into memory
+_SLOWEST = 0.3  # periods of a further line in a block: the course follows slower ones
+_FASTEST = 0.45  # of the rate
+_APART = 0.02  # relative: a nearer one is the pilot itself
 _ROOM = 0.2  # rad between an extreme and what 99 of 100 samples move beside the pilot
 _PROBES = 6  # pieces from which frequency, noise and length of the blocks are found
 
@@ -48,6 +51,8 @@ class TrackedCourse:
         Of the pilot's motion at sample 0, to half a turn: sets the sign.
     piece : int, optional
         Samples of a piece, about.
+    others_hz : sequence of float, optional
+        Further lines that may move the mirror [Hz]: samples at the extremes are carried with them.
     length : int, optional
         Samples in a block, even; by default that of three with which most of the phase is known.
 
@@ -65,15 +70,18 @@ class TrackedCourse:
         pilot_hz: float,
         phase_rad: float | None = None,
         piece: int = PIECE,
+        others_hz: Sequence[float] = (),
         length: int | None = None,
     ) -> None:
         self._read, self.count, self.rate_hz = read, count, rate_hz
         self._piece, self._pilot_hz, self._phase_rad = piece, pilot_hz, phase_rad
+        self._others_hz = tuple(others_hz)
         pilot_block(rate_hz, pilot_hz, count, _PERIODS[0])
         self.tally, self.margin_rad = CourseTally(), MARGIN
         probes = self._probes()
         self._set(self._best_length(probes) if length is None else length)
-        reaches = [fast_reach(piece) for piece in self._probed(probes, self.length)]
+        others_hz = self._seen_others(self.length)
+        reaches = [fast_reach(piece) for piece in self._probed(probes, self.length, others_hz)]
         self.margin_rad = max(MARGIN, float(np.median(reaches or [0.0])) + _ROOM)
         self.pilot = self._pilot_course()
         self._turns: list[int] = []
@@ -155,22 +163,29 @@ class TrackedCourse:
 
     def _tried(self, probes: list[tuple[int, FloatArray]], length: int) -> tuple[int, int]:
         """Return how many samples are known, and how many inverted, with blocks of a length."""
-        pieces = self._probed(probes, length)
+        pieces = self._probed(probes, length, ())
         known = sum(int(np.count_nonzero(piece.known)) for piece in pieces)
         return known, sum(int(np.count_nonzero(piece.inverted)) for piece in pieces)
 
-    def _probed(self, probes: list[tuple[int, FloatArray]], length: int) -> list[TrackedPiece]:
+    def _probed(
+        self, probes: list[tuple[int, FloatArray]], length: int, others_hz: tuple[float, ...]
+    ) -> list[TrackedPiece]:
         """Return the probes followed, each by a pilot of its own."""
         pieces = []
         for first, cosine in probes:
             if len(cosine) >= 2 * length:
-                knot = self._knot(cosine, first, length, [])
-                course = PilotCourse(self.frequency_hz, (knot,))
+                knot = self._knot(cosine, first, length, [], others_hz)
+                course = PilotCourse(self.frequency_hz, (knot,), others_hz)
                 pieces.append(self._followed(cosine, first, course, length))
         return pieces
 
     def _knot(
-        self, cosine: FloatArray, first: int, length: int, before: list[PilotKnot]
+        self,
+        cosine: FloatArray,
+        first: int,
+        length: int,
+        before: list[PilotKnot],
+        others_hz: tuple[float, ...],
     ) -> PilotKnot:
         return pilot_knot(
             cosine,
@@ -181,6 +196,17 @@ class TrackedCourse:
             self.noise,
             before,
             self._phase_rad,
+            others_hz,
+        )
+
+    def _seen_others(self, length: int) -> tuple[float, ...]:
+        """Return the further lines that the slow course does not follow, in the board's time."""
+        stretch = self.frequency_hz / self._pilot_hz
+        return tuple(
+            line_hz * stretch
+            for line_hz in self._others_hz
+            if _SLOWEST * self.rate_hz / length < line_hz < _FASTEST * self.rate_hz
+            and abs(line_hz / self._pilot_hz - 1.0) > _APART
         )
 
     def _followed(
@@ -192,14 +218,15 @@ class TrackedCourse:
     def _pilot_course(self) -> PilotCourse:
         """Return the pilot, one knot a piece."""
         knots: list[PilotKnot] = []
+        others_hz = self._seen_others(self.length)
         for number in range(self.pieces):
             first, last = self._segment(number)
             cosine = self._read(first, last)
             if np.count_nonzero(np.isfinite(cosine)) > 2 * self.length:
-                knots.append(self._knot(cosine, first, self.length, knots))
+                knots.append(self._knot(cosine, first, self.length, knots, others_hz))
         if not knots:
             raise CalibrationError("no piece of the record holds two blocks of samples")
-        return PilotCourse(self.frequency_hz, tuple(knots))
+        return PilotCourse(self.frequency_hz, tuple(knots), others_hz)
 
     def _join(self) -> None:
         """Count the whole fringes of each piece from the one before, and what there is."""

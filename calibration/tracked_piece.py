@@ -13,6 +13,7 @@ FloatArray = NDArray[np.float64]
 
 _ROUNDS = 3
 MARGIN = 0.45  # rad from an extreme within which no sample is inverted: room for the other lines
+_LEAST_SINE = 0.2  # of the expected phase: nearer to an extreme the noise is five times as large
 _PARTS = 8
 _NEAR = 0.95  # |sin φ| of a sample near mid-fringe
 _ENDS = 0.35  # rad more within half a block of either end
@@ -168,7 +169,7 @@ def _margin(count: int, length: int, margin_rad: float) -> FloatArray:
     margin = np.full(count, margin_rad)
     margin[: length // 2] += _ENDS
     margin[(count // (length // 2) - 1) * (length // 2) :] += _ENDS
-    return np.minimum(margin, 0.5 * np.pi)
+    return np.asarray(np.minimum(margin, 0.5 * np.pi))
 
 
 def _inside(
@@ -180,9 +181,9 @@ def _inside(
     the pilot; a deep one leaves no whole period.
     """
     if depth_rad < _SHALLOW:
-        return np.asarray(
-            np.abs(np.sin(course)) > np.sin(np.minimum(margin + depth_rad, 0.5 * np.pi))
-        )
+        reach = np.minimum(margin + depth_rad, 0.5 * np.pi)
+        near = np.abs(np.sin(expected)) < _LEAST_SINE  # by further lines that are known
+        return np.asarray((np.abs(np.sin(course)) > np.sin(reach)) & ~near)
     return np.asarray(np.abs(np.sin(expected)) > np.sin(margin))
 
 

@@ -180,6 +180,7 @@ def read_tracked(
         seen_hz,
         pilot_phase_rad=phase,
         start_index=trace.start_index,
+        others_hz=[line_hz * seen_hz / pilot_hz for line_hz in frequencies_hz],
     )
     wanted = list(frequencies_hz) or [pilot_hz]
     lines = fit_lines_si(

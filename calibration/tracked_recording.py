@@ -1,8 +1,8 @@
 """A free-running recording run backwards through a calibration: its phase tracked by a pilot line.
 
 Beside the quantity stands a channel ``carried``: 0 where a sample was inverted between the fringe's
-extremes, 1 where it lies at one and shows the slow course and the pilot only, NaN where the phase is not
-known. All is done piece by piece, as it is read.
+extremes, 1 where it lies at one and shows the slow course, the pilot and the calibration's lines only, NaN
+where the phase is not known. All is done piece by piece, as it is read.
 """
 
 from collections.abc import Sequence
@@ -52,7 +52,7 @@ class TrackedConversion(Conversion):
     periodic_u : float
         Standard uncertainty from the extremes, which comes again in every fringe, in ``unit``.
     carried_noise : float
-        Rms of what carried samples leave out beside, in ``unit``.
+        Rms of what carried samples leave out, in ``unit``.
     carried_fraction : float
         Part of the samples that is carried.
     assumptions : list of str
@@ -143,8 +143,15 @@ class TrackedRecording(Recording):
         self.extremes = found.mean(source.path) if own else calibration.extremes
         self._extremes_reasons = [] if own else found.reasons(calibration)
         seen_hz, self._phase_rad, self._said = self._sign(pilot_hz, drive)
+        lines_hz = [float(entry.frequency.magnitude) for entry in calibration.actuator]
         self.course = TrackedCourse(
-            self._cosine, span[1] - span[0], source.rate_hz, seen_hz, self._phase_rad, piece
+            self._cosine,
+            span[1] - span[0],
+            source.rate_hz,
+            seen_hz,
+            self._phase_rad,
+            piece,
+            [line_hz * seen_hz / pilot_hz for line_hz in lines_hz],
         )
 
     def _sign(self, pilot_hz: float, drive: str | None) -> tuple[float, float | None, str]:

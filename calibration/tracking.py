@@ -6,6 +6,7 @@ its odd ones as sin φ.
 """
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -38,7 +39,7 @@ class TrackedPhase:
         Samples whose phase comes from the fringe itself: exact for any number of lines. Fit lines to
         these alone.
     carried : ndarray of bool, shape (n,)
-        Samples at an extreme, whose phase is the slow course and the pilot only.
+        Samples at an extreme, whose phase is the slow course, the pilot and what other lines were named.
     pilot : Pilot or None
         The pilot line as found; None without one.
     assumptions : list of str
@@ -96,6 +97,7 @@ def track_phase(
     *,
     pilot_phase_rad: float | None = None,
     start_index: int = 0,
+    others_hz: Sequence[float] = (),
 ) -> TrackedPhase:
     """Track the phase of a record through its fringes.
 
@@ -115,6 +117,8 @@ def track_phase(
         sets the sign. Without it the phase is known up to its sign.
     start_index : int, optional
         Number of ``values[0]`` counted from the recording's first sample, where t = 0.
+    others_hz : sequence of float, optional
+        Further driven lines [Hz]: samples at the extremes are carried with them, and fewer are.
 
     Returns
     -------
@@ -145,7 +149,9 @@ def track_phase(
         )
     start_s = start_index / rate_hz
     phase = None if pilot_phase_rad is None else pilot_phase_rad + 2 * math.pi * pilot_hz * start_s
-    course = TrackedCourse(lambda k, n: cosine[k:n], len(cosine), rate_hz, pilot_hz, phase)
+    course = TrackedCourse(
+        lambda k, n: cosine[k:n], len(cosine), rate_hz, pilot_hz, phase, others_hz=others_hz
+    )
     whole, pilot = course.read(0, len(cosine)), course.pilot.pilot(start_s)
     return TrackedPhase(
         whole.phase_rad,

@@ -95,8 +95,8 @@ def convert(
     printed, and kept in NPZ and HDF5, as a systematic part, common to all samples, and a random one.
 
     With --pilot the recording may run freely through its fringes. A column "carried" then stands beside
-    the values: 0 where a sample was inverted, 1 where it lies at an extreme and shows the slow course and
-    the pilot only, empty or NaN where the phase is not known.
+    the values: 0 where a sample was inverted, 1 where it lies at an extreme and shows the slow course, the
+    pilot and the calibration's lines only, empty or NaN where the phase is not known.
     """
     from calibration.record import load
     from firmware_bridge.export import export_recording

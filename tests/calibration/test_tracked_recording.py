@@ -20,7 +20,7 @@ from metro.commandline import run
 from metro.kernel.phase import phase_per_metre
 
 SAMPLE = Path(__file__).parent / "samples" / "calibration-1.json"
-RATE_HZ, COUNT, PILOT_HZ = 4000.0, 24_000, 401.3
+RATE_HZ, COUNT, PILOT_HZ = 4000.0, 12_000, 401.3
 TIME = np.arange(COUNT) / RATE_HZ
 
 
@@ -63,7 +63,7 @@ def metres_per_rad(kept):
 
 @pytest.fixture(scope="module")
 def recording(tmp_path_factory):
-    return written(tmp_path_factory.mktemp("free") / "free.npz", moved(), gap=slice(9000, 9040))
+    return written(tmp_path_factory.mktemp("free") / "free.npz", moved(), gap=slice(4500, 4540))
 
 
 def tracked(path, kept=None, **options):
@@ -84,8 +84,8 @@ def test_displacement_is_the_motion(recording):
     error = values / metres_per_rad(kept) - moved()
     worth = converted.judge()
     assert worth.reasons == []
-    assert np.isnan(values[9000:9040]).all()
-    assert np.isnan(carried[9000:9040]).all()
+    assert np.isnan(values[4500:4540]).all()
+    assert np.isnan(carried[4500:4540]).all()
     inverted = carried == 0
     assert 0.3 < inverted.mean() < 0.7
     assert worth.used_fraction == pytest.approx(1 - 40 / COUNT)
@@ -123,15 +123,15 @@ def test_no_boundary_shows(recording):
     np.testing.assert_array_equal(np.isnan(values), np.isnan(whole[0]))
     same = (carried == 0) & (whole[1] == 0)
     assert same.sum() > 0.999 * np.count_nonzero(whole[1] == 0)
-    np.testing.assert_allclose(values[same], whole[0][same], atol=2e-12)
+    np.testing.assert_allclose(values[same], whole[0][same], atol=1e-11)
 
 
 def test_a_stretch_is_the_whole_but_for_whole_fringes(recording):
     whole, _ = both_of(tracked(recording, quantity="phase"))
-    stretch = tracked(recording, quantity="phase", from_s=1.5, to_s=4.0)
+    stretch = tracked(recording, quantity="phase", from_s=0.75, to_s=2.5)
     values, carried = both_of(stretch)
-    assert np.isnan(values[:6000]).all()
-    assert np.isnan(values[16_000:]).all()
+    assert np.isnan(values[:3000]).all()
+    assert np.isnan(values[10_000:]).all()
     inverted = np.flatnonzero(carried == 0)
     turns = (whole[inverted] - values[inverted]) / (2 * np.pi)
     assert np.ptp(turns) < 1e-3
@@ -176,7 +176,7 @@ def test_every_file_marks_what_is_carried(recording, tmp_path, suffix, capsys):
     assert document["uncertainty"]["systematic"]["value"] < 1e-5  # wavelength and index alone
     assert document["uncertainty"]["small_motion"]["value"] > 1e-4
     back = open_recording(out)
-    assert [(gap.index, gap.length) for gap in back.gaps] == [(9000, 40)]
+    assert [(gap.index, gap.length) for gap in back.gaps] == [(4500, 40)]
     values, carried = both_of(tracked(recording))
     np.testing.assert_array_equal(back.trace("displacement").values, values)
     np.testing.assert_array_equal(back.trace("carried").values, carried)

@@ -119,7 +119,9 @@ def test_a_board_whose_clock_is_off_is_followed(parts_per_million):
 
 def tracked_in_pieces(record, piece):
     cosine = (record - 2.0) / 1.5
-    course = TrackedCourse(lambda k, n: cosine[k:n], COUNT, RATE_HZ, PILOT_HZ, 0.6, piece, 40)
+    course = TrackedCourse(
+        lambda k, n: cosine[k:n], COUNT, RATE_HZ, PILOT_HZ, 0.6, piece, length=40
+    )
     return course, course.read(0, COUNT)
 
 
@@ -167,3 +169,18 @@ def test_deep_lines_beside_the_pilot_are_kept_clear_of_the_extremes(size):
     got = track_phase(volts(phase, 0.002), RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6)
     assert got.inverted.any()
     assert np.abs(got.phase_rad - phase)[got.inverted].max() < 0.05
+
+
+def test_named_lines_are_carried_over_the_extremes():
+    """Three lines of 0.35 rad beside the pilot: known, they neither narrow nor blur what is carried."""
+    lines = sum(0.35 * np.cos(2 * np.pi * f * TIME + f) for f in (87.1, 31.7, 141.3))
+    phase = 0.4 + 3.0 * TIME + 0.2 * np.cos(2 * np.pi * PILOT_HZ * TIME + 0.6) + lines
+    record, drive = volts(phase, 0.002), {"pilot_phase_rad": 0.6}
+    bare = track_phase(record, RATE_HZ, 0.5, 3.5, PILOT_HZ, **drive)
+    named = track_phase(
+        record, RATE_HZ, 0.5, 3.5, PILOT_HZ, **drive, others_hz=(31.7, 87.1, 141.3, 233.9)
+    )
+    assert named.inverted.mean() > bare.inverted.mean() + 0.2
+    rms = [np.sqrt(np.mean((one.phase_rad - phase)[one.carried] ** 2)) for one in (bare, named)]
+    assert rms[1] < 0.1 * rms[0]
+    assert np.abs(named.phase_rad - phase)[named.inverted].max() < 0.05

@@ -139,6 +139,7 @@ class FreeRecord:
             seen_hz,
             pilot_phase_rad=phase_rad,
             others_hz=[line_hz * seen_hz / pilot_hz for line_hz in lines_hz],
+            in_board_time=phase_rad is not None,
         )
         means = FreeMeans.of(tracked.phase_rad[tracked.inverted])
         lines = fit(record, tracked.for_lines)

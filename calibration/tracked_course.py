@@ -53,6 +53,9 @@ class TrackedCourse:
         Samples of a piece, about.
     others_hz : sequence of float, optional
         Further lines that may move the mirror [Hz]: samples at the extremes are carried with them.
+    in_board_time : bool, optional
+        Whether ``pilot_hz`` is as the board's clock has it, from the drive's channel: else it is looked
+        for within 2 %.
     length : int, optional
         Samples in a block, even; by default that of three with which most of the phase is known.
 
@@ -71,17 +74,22 @@ class TrackedCourse:
         phase_rad: float | None = None,
         piece: int = PIECE,
         others_hz: Sequence[float] = (),
+        *,
+        in_board_time: bool = False,
         length: int | None = None,
     ) -> None:
         self._read, self.count, self.rate_hz = read, count, rate_hz
         self._piece, self._pilot_hz, self._phase_rad = piece, pilot_hz, phase_rad
-        self._others_hz = tuple(others_hz)
+        self._others_hz, self.frequency_hz = tuple(others_hz), pilot_hz
         pilot_block(rate_hz, pilot_hz, count, _PERIODS[0])
         self.tally, self.margin_rad = CourseTally(), MARGIN
         probes = self._probes()
+        if not in_board_time:
+            seen = [pilot_frequency(c, rate_hz, pilot_hz, first) for first, c in probes]
+            self.frequency_hz = float(np.median(seen))
         self._set(self._best_length(probes) if length is None else length)
         others_hz = self._seen_others(self.length)
-        reaches = [fast_reach(piece) for piece in self._probed(probes, self.length, others_hz)]
+        reaches = [fast_reach(piece) for _, piece in self._probed(probes, self.length, others_hz)]
         self.margin_rad = max(MARGIN, float(np.median(reaches or [0.0])) + _ROOM)
         self.pilot = self._pilot_course()
         self._turns: list[int] = []
@@ -131,7 +139,7 @@ class TrackedCourse:
         return max(0, first - self._reach), min(self.count, last + self._reach)
 
     def _probes(self) -> list[tuple[int, FloatArray]]:
-        """Return some pieces of the record, and set frequency and noise as they have them."""
+        """Return some pieces of the record, and set the noise as they have it."""
         self._set(pilot_block(self.rate_hz, self._pilot_hz, self.count, _PERIODS[0]))
         chosen = np.unique(np.linspace(0, self.pieces - 1, _PROBES).astype(int)).tolist()
         segments = [self._segment(number) for number in chosen]
@@ -140,13 +148,11 @@ class TrackedCourse:
         if not probes:
             raise CalibrationError("no sample of the record is there")
         self.noise = float(np.median([_noise(cosine) for _, cosine in probes]))
-        seen = [pilot_frequency(c, self.rate_hz, self._pilot_hz, k) for k, c in probes]
-        self.frequency_hz = float(np.median(seen))
         return probes
 
     def _best_length(self, probes: list[tuple[int, FloatArray]]) -> int:
         """Return the length of blocks with which most of the phase is known."""
-        best, kept = (-1, -1), 0
+        best, kept = (-1.0, -np.inf), 0
         for periods in _PERIODS:
             try:
                 length = pilot_block(self.rate_hz, self._pilot_hz, self.count, periods)
@@ -161,22 +167,28 @@ class TrackedCourse:
             raise CalibrationError(f"the pilot at {self._pilot_hz:g} Hz shows in no two blocks")
         return kept
 
-    def _tried(self, probes: list[tuple[int, FloatArray]], length: int) -> tuple[int, int]:
-        """Return how many samples are known, and how many inverted, with blocks of a length."""
-        pieces = self._probed(probes, length, ())
-        known = sum(int(np.count_nonzero(piece.known)) for piece in pieces)
-        return known, sum(int(np.count_nonzero(piece.inverted)) for piece in pieces)
+    def _tried(self, probes: list[tuple[int, FloatArray]], length: int) -> tuple[float, float]:
+        """Return the share that is known with blocks of a length, in steps of 5 %, and how well it fits."""
+        known = present = left = 0.0
+        for cosine, piece in self._probed(probes, length, ()):
+            known += np.count_nonzero(piece.known)
+            present += np.count_nonzero(np.isfinite(cosine))
+            left += float(np.sum((cosine - np.cos(piece.expected_rad))[piece.known] ** 2))
+        if not known:
+            return 0.0, -np.inf
+        # a half block has two parameters, which take some of the noise with them
+        return round(20.0 * known / present), -left / known / (1.0 - 4.0 / length)
 
     def _probed(
         self, probes: list[tuple[int, FloatArray]], length: int, others_hz: tuple[float, ...]
-    ) -> list[TrackedPiece]:
-        """Return the probes followed, each by a pilot of its own."""
+    ) -> list[tuple[FloatArray, TrackedPiece]]:
+        """Return the probes and what they are followed, each by a pilot of its own."""
         pieces = []
         for first, cosine in probes:
             if len(cosine) >= 2 * length:
                 knot = self._knot(cosine, first, length, [], others_hz)
                 course = PilotCourse(self.frequency_hz, (knot,), others_hz)
-                pieces.append(self._followed(cosine, first, course, length))
+                pieces.append((cosine, self._followed(cosine, first, course, length)))
         return pieces
 
     def _knot(

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.working_phase import working_phases
+from calibration.working_phase import block_rms, working_phases
 
 __all__ = ["MARGIN", "TrackedPiece", "fast_reach", "follow"]
 
@@ -19,6 +19,9 @@ _NEAR = 0.95  # |sin φ| of a sample near mid-fringe
 _ENDS = 0.35  # rad more within half a block of either end
 _SHALLOW = 0.7  # rad: up to here the pilot's whole swing is kept clear of the extremes
 _LARGEST_STEP = 1.6  # rad between blocks that overlap by half: beyond, the count of fringes is lost
+_WORST = (
+    0.5  # rms of what a block leaves of the record: 0.7 where motion beside the pilot is 1 rad rms
+)
 _WEAKEST = 0.5  # size of (cos φ, sin φ) that a block must show; 1 where nothing moves fast
 
 
@@ -114,6 +117,7 @@ def follow(
         course = course + blocks.course(count)
     expected = course + swing
     lost = blocks.lost(count, _WEAKEST) | _torn(course, length)
+    lost |= block_rms(cosine - np.cos(expected), length) > _WORST
     present = np.isfinite(cosine)
     phase = _branches(cosine, expected, noise)
     # whether a sample is used rests on the expected phase, not on the sample: where noise chose, it

@@ -181,14 +181,16 @@ def read_tracked(
         pilot_phase_rad=phase,
         start_index=trace.start_index,
         others_hz=[line_hz * seen_hz / pilot_hz for line_hz in frequencies_hz],
+        in_board_time=drive is not None,
     )
     wanted = list(frequencies_hz) or [pilot_hz]
     lines = fit_lines_si(
         tracked.for_lines,
         trace.rate_hz,
-        wanted,
+        [line_hz * seen_hz / pilot_hz for line_hz in wanted],
         start_index=trace.start_index,
         value_unit="rad",
+        search_clock=drive is None,  # else the drive has told it
     )
     return TrackedReading(
         tracked,

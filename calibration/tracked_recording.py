@@ -152,6 +152,7 @@ class TrackedRecording(Recording):
             self._phase_rad,
             piece,
             [line_hz * seen_hz / pilot_hz for line_hz in lines_hz],
+            in_board_time=self._phase_rad is not None,
         )
 
     def _sign(self, pilot_hz: float, drive: str | None) -> tuple[float, float | None, str]:

@@ -98,6 +98,7 @@ def track_phase(
     pilot_phase_rad: float | None = None,
     start_index: int = 0,
     others_hz: Sequence[float] = (),
+    in_board_time: bool = False,
 ) -> TrackedPhase:
     """Track the phase of a record through its fringes.
 
@@ -119,6 +120,9 @@ def track_phase(
         Number of ``values[0]`` counted from the recording's first sample, where t = 0.
     others_hz : sequence of float, optional
         Further driven lines [Hz]: samples at the extremes are carried with them, and fewer are.
+    in_board_time : bool, optional
+        Whether the frequencies are as the board's clock has them, from the drive's channel: else the
+        pilot is looked for within 2 %.
 
     Returns
     -------
@@ -150,7 +154,13 @@ def track_phase(
     start_s = start_index / rate_hz
     phase = None if pilot_phase_rad is None else pilot_phase_rad + 2 * math.pi * pilot_hz * start_s
     course = TrackedCourse(
-        lambda k, n: cosine[k:n], len(cosine), rate_hz, pilot_hz, phase, others_hz=others_hz
+        lambda k, n: cosine[k:n],
+        len(cosine),
+        rate_hz,
+        pilot_hz,
+        phase,
+        others_hz=others_hz,
+        in_board_time=in_board_time,
     )
     whole, pilot = course.read(0, len(cosine)), course.pilot.pilot(start_s)
     return TrackedPhase(

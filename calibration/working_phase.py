@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["WorkingPhases", "block_sums", "working_phases"]
+__all__ = ["WorkingPhases", "block_rms", "block_sums", "working_phases"]
 
 FloatArray = NDArray[np.float64]
 
@@ -69,6 +69,29 @@ class WorkingPhases:
         """
         size = np.interp(np.arange(count), self.middle, np.minimum(self.size, 2.0))
         return np.asarray((size < weakest) | (size > 1.6))
+
+
+def block_rms(values: FloatArray, length: int) -> FloatArray:
+    """Return the rms about each sample, over blocks that overlap by half.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Samples; NaN where missing; two half blocks and more.
+    length : int
+        Samples in a block, even.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+        0 where a block holds no sample.
+    """
+    good = np.isfinite(values)
+    square, count = block_sums(
+        np.stack([np.where(good, values, 0.0) ** 2, good.astype(float)]), length
+    )
+    rms = np.sqrt(square / np.maximum(count, 1.0))
+    return np.asarray(np.interp(np.arange(len(values)), _middles(len(values), length), rms))
 
 
 def block_sums(parts: FloatArray, length: int) -> FloatArray:

@@ -424,3 +424,21 @@ def test_json_has_the_recordings_own_reasons(capsys, driven, tmp_path):
     own = [text for text in document["reasons"] if text.startswith(str(holed))]
     assert own
     assert own[0] in err
+
+
+def test_a_real_sweep_is_followed_by_its_line(capsys):
+    """From a fringe's top through a sweep of a whole fringe to the lock, by the 30 Hz line alone.
+
+    Depth 0.555 to 0.590 rad is what independent fits of the locked part find with these extremes.
+    """
+    path = real_data("fiber-modulator-calline/fom-pa/fom-pa-control-actuation.csv")
+    code, out, _ = run(
+        capsys, path, "--channel", "2", "--drive", "3", "--pilot", "30Hz", "--low", "0.44V",
+        "--high", "9.69V", "--json",
+    )  # fmt: skip
+    document = json.loads(out)
+    assert code == 1  # the sweep is too fast for a line of 30 Hz, which is said
+    assert "the phase is lost for" in document["reasons"][0]
+    assert 0.555 < document["phase_amplitude"][0]["value"] < 0.590
+    assert document["pilot"]["frequency"]["value"] == pytest.approx(30.0001, abs=2e-3)
+    assert document["known_fraction"] > 0.9

@@ -84,15 +84,12 @@ class FreeRecord:
         Lines in the inverted samples.
     means : FreeMeans
         Averages over them.
-    has_sign : bool
-        Whether the drive was recorded, which sets the sign.
     """
 
     record: RoleRecord
     tracked: TrackedPhase
     fit: LineFit
     means: FreeMeans
-    has_sign: bool
 
     @classmethod
     def of(
@@ -143,7 +140,7 @@ class FreeRecord:
         )
         means = FreeMeans.of(tracked.phase_rad[tracked.inverted])
         lines = fit(record, tracked.for_lines)
-        return cls(record, tracked, lines, means, phase_rad is not None)
+        return cls(record, tracked, lines, means)
 
     @property
     def name(self) -> str:

@@ -200,7 +200,7 @@ class TrackedRecording(Recording):
             tally.add(course.piece(number))
         calibration, size, drifts = self.calibration, abs(self._per_radian), not self.own
         known = tally.sums.converted / course.count
-        reasons = [*self._extremes_reasons, *tracking_reasons(course)]
+        reasons = [*self._extremes_reasons, *tracking_reasons(course, self._phase_rad)]
         if known < _LEAST_SHARE:
             reasons.append(f"the phase is known for {known:.0%} of the samples only")
         return TrackedConversion(

@@ -21,6 +21,7 @@ __all__ = ["TrackedPhase", "track_phase", "tracking_assumptions", "tracking_reas
 
 FloatArray = NDArray[np.float64]
 
+_UNSURE = math.radians(60.0)
 DECLARED = (
     "the mirror moves with the pilot's drive, its polarity as declared, well below the actuator's "
     "resonance"
@@ -169,7 +170,7 @@ def track_phase(
         whole.carried,
         pilot,
         tracking_assumptions(course, phase),
-        tracking_reasons(course),
+        tracking_reasons(course, phase),
     )
 
 
@@ -195,20 +196,27 @@ def tracking_assumptions(
     whole = "whole fringes: the slow phase moves by less than 1.6 rad within half a block, two periods of the pilot and more"
     if phase_rad is None:
         return [whole, "the sign is not known: phase and −phase fit alike"]
-    off = abs(math.remainder(course.pilot.knots[0].phase_rad - phase_rad, 2.0 * math.pi))
+    off = math.degrees(_off_rad(course, phase_rad))
     return [
         whole,
-        f"sign: {said} (the pilot's phase is off that by {math.degrees(off):.0f}°)",
+        f"sign: {said} (the pilot's phase is off that by {off:.0f}°)",
     ]
 
 
-def tracking_reasons(course: TrackedCourse) -> list[str]:
+def _off_rad(course: TrackedCourse, phase_rad: float) -> float:
+    """Return how far the pilot's motion is off what its drive says, up to a quarter turn [rad]."""
+    return abs(math.remainder(course.pilot.knots[0].phase_rad - phase_rad, 2.0 * math.pi))
+
+
+def tracking_reasons(course: TrackedCourse, phase_rad: float | None = None) -> list[str]:
     """Return why a tracked phase must not be trusted.
 
     Parameters
     ----------
     course : TrackedCourse
         As tracked.
+    phase_rad : float or None
+        As for `tracking_assumptions`.
 
     Returns
     -------
@@ -216,6 +224,12 @@ def tracking_reasons(course: TrackedCourse) -> list[str]:
         Empty where nothing was found.
     """
     tally, reasons = course.tally, course.pilot.pilot(0.0).reasons
+    if phase_rad is not None and _off_rad(course, phase_rad) > _UNSURE:
+        off = math.degrees(_off_rad(course, phase_rad))
+        reasons.append(
+            f"the sign is not sure: the pilot moves {off:.0f}° off what its drive says (at most "
+            f"{math.degrees(_UNSURE):.0f}°; a quarter turn fits either sign)"
+        )
     if tally.lost:
         reasons.append(
             f"the phase is lost for {tally.lost} of {tally.present} samples, first at sample "

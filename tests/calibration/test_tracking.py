@@ -67,6 +67,13 @@ def test_the_sign_is_the_pilots():
     assert any("sign is not known" in one for one in unknown.assumptions)
 
 
+def test_a_pilot_a_quarter_turn_off_its_drive_has_no_sure_sign():
+    got = track_phase(
+        volts(moved(5.0)), RATE_HZ, 0.5, 3.5, PILOT_HZ, pilot_phase_rad=0.6 + np.radians(75)
+    )
+    assert any("the sign is not sure: the pilot moves 75° off" in one for one in got.reasons)
+
+
 def test_a_drift_too_fast_for_the_pilot_is_lost_and_says_so():
     phase = moved(1.0)
     phase[30_000:] += 3000.0 * (TIME[30_000:] - TIME[30_000]) ** 2

@@ -6,6 +6,7 @@ from numpy.typing import NDArray
 from calibration.descent import Prior, descend
 from calibration.fringe_model import FringeModel, Sums
 from calibration.fringe_search import Found
+from calibration.residual_colour import colour_of
 from calibration.residual_noise import whitening_filter
 
 __all__ = ["finish"]
@@ -50,17 +51,34 @@ def _solved(
     return out
 
 
-def _informed(
-    model: FringeModel, sums: Sums, variance: float, prior: Prior | None
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Return Σ j jᵀ/σ² plus what was known, and the variance of the gradient."""
+def _informed(sums: Sums, variance: float, prior: Prior | None) -> NDArray[np.float64]:
+    """Return Σ j jᵀ/σ² plus what was known."""
     matrix = sums.matrix / variance
-    many = sums.count > 50 * model.size
-    spread = sums.scatter / variance**2 if many else matrix.copy()
     if prior is not None and not prior.fixed:
         matrix[:2, :2] += prior.information
-        spread[:2, :2] += prior.information
-    return matrix, spread
+    return matrix
+
+
+def _covariance(
+    model: FringeModel,
+    theta: NDArray[np.float64],
+    whitening: NDArray[np.float64],
+    prior: Prior | None,
+    free: NDArray[np.bool_],
+    values: NDArray[np.float64],
+) -> tuple[NDArray[np.float64], float]:
+    """Return the covariance by unequal and coloured residuals, with what was known, and its dof."""
+    sums = model.sums(theta, whitening, scatter=True)
+    variance = _variance(sums, free, values)
+    inverse = _solved(_informed(sums, variance, prior), np.eye(model.size), free)
+    many = sums.count > 50 * model.size
+    spread = sums.scatter / variance**2 if many else sums.matrix / variance
+    colour, dof = colour_of(model, theta, whitening, inverse)
+    covariance = inverse @ spread @ inverse.T * np.multiply.outer(colour, colour)
+    if prior is not None and not prior.fixed:
+        covariance += inverse[:, :2] @ prior.information @ inverse[:, :2].T
+    own_dof = float(max(sums.count - int(free.sum()) - len(whitening) + 1, 1))
+    return (covariance + covariance.T) / 2, min(own_dof, dof)
 
 
 def finish(values: NDArray[np.float64], found: Found, prior: Prior | None) -> Found:
@@ -94,7 +112,7 @@ def finish(values: NDArray[np.float64], found: Found, prior: Prior | None) -> Fo
             break
         sums = model.sums(theta, whitening)
         variance = _variance(sums, free, values)
-        matrix, _ = _informed(model, sums, variance, prior)
+        matrix = _informed(sums, variance, prior)
         right = sums.gradient / variance
         if prior is not None and not prior.fixed:
             right[:2] += prior.information @ (prior.value - theta[:2])
@@ -102,15 +120,8 @@ def finish(values: NDArray[np.float64], found: Found, prior: Prior | None) -> Fo
         theta = theta + step
         if float(step @ matrix @ step) < 1e-6:
             break
-    sums = model.sums(theta, whitening, scatter=True)
-    variance = _variance(sums, free, values)
-    matrix, spread = _informed(model, sums, variance, prior)
-    half = _solved(matrix, spread, free)
-    covariance = _solved(matrix, half.T, free)
-    dof = float(max(sums.count - int(free.sum()) - len(whitening) + 1, 1))
-    return Found(
-        model, theta, model.squares(theta), (covariance + covariance.T) / 2, dof, whitening
-    )
+    covariance, dof = _covariance(model, theta, whitening, prior, free, values)
+    return Found(model, theta, model.squares(theta), covariance, dof, whitening)
 
 
 def _variance(sums: Sums, free: NDArray[np.bool_], values: NDArray[np.float64]) -> float:

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from calibration.spline import spline_size, spline_span, spline_weights
 
-__all__ = ["FringeModel", "Sums"]
+__all__ = ["FringeModel", "Sums", "filtered"]
 
 _CHUNK = 1 << 12  # small enough for the cache, and for products that one core does alone
 _CACHE_CELLS = 4_000_000
@@ -269,8 +269,8 @@ class FringeModel:
         for start, stop in self.chunks(lead):
             rest, parts, where = self.rows(theta, start, stop)
             if whitening is not None and lead:
-                rest = _filtered(rest[:, None], whitening)[:, 0]
-                parts = _filtered(parts, whitening)
+                rest = filtered(rest[:, None], whitening)[:, 0]
+                parts = filtered(parts, whitening)
             good = np.isfinite(rest)
             if not good.all():
                 rest, parts = rest[good], parts[good]
@@ -285,8 +285,21 @@ class FringeModel:
         return total
 
 
-def _filtered(columns: NDArray[np.float64], weights: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return the columns after a prediction-error filter, shorter by its order."""
+def filtered(columns: NDArray[np.float64], weights: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the columns after a prediction-error filter.
+
+    Parameters
+    ----------
+    columns : ndarray, shape (n, k)
+        Side by side.
+    weights : ndarray, shape (order + 1,)
+        The filter, first weight 1.
+
+    Returns
+    -------
+    ndarray, shape (n - order, k)
+        Shorter by its order.
+    """
     order = len(weights) - 1
     out = columns[order:].copy()
     for lag in range(1, order + 1):

@@ -19,6 +19,7 @@ from firmware_bridge.steady_rate import (
 
 __all__ = ["Grid", "StampsError", "fit_grid"]
 
+_FEW_MOVE = 0.3  # of the stamps differ from the one before: the others were made by the same tick
 _SHORT_GAP = 3  # steps: over longer gaps the grid is not taken to hold
 _LONGEST = 2_000_000_000  # samples: a grid longer than that comes of a wrong stamp
 
@@ -91,10 +92,17 @@ def fit_grid(stamps_s: NDArray[np.float64], resolution_s: float, name: str) -> G
     if not 1e-15 < (stamps[-1] - stamps[0]) / rows.size < 1e15:
         raise StampsError(f"{name}: the time stamps must be between 1e-15 s and 1e15 s apart")
     # Rounding in the computer limits stamps too, such as seconds since 1970 with decimals.
-    resolution_s = max(resolution_s, float(np.spacing(np.abs(stamps).max())))
+    resolution_s = max(resolution_s, float(np.spacing(np.abs(stamps).max())), _tick_s(stamps))
     index, kept = _places(stamps, resolution_s, name, remarks)
     rows, stamps, index = rows[kept], stamps[kept], index[kept]
     return _grid(rows, stamps, index, resolution_s, remarks)
+
+
+def _tick_s(stamps: NDArray[np.float64]) -> float:
+    """Return the tick of a clock too slow for the samples, whatever digits it prints; else 0."""
+    steps = np.diff(stamps)
+    moved = steps[steps > 0.0]
+    return float(np.median(moved)) if len(moved) < _FEW_MOVE * len(steps) else 0.0
 
 
 def _places(

@@ -176,3 +176,12 @@ def test_a_wrong_last_stamp_is_refused_and_not_a_grid_of_all_memory():
 def test_gaps_are_the_bridges():
     grid = fit_grid(np.array([0, 1, 2, 3, 6, 7, 8, 9, 10.0]), 0.0, "x")
     assert isinstance(grid.gaps[0], Gap)
+
+
+@pytest.mark.parametrize("tick_s", [1e-3, 16e-3])
+def test_a_clock_that_ticks_once_in_many_samples_tells_the_rate(tick_s):
+    times = 3.2345 + np.arange(5000) / 20e3
+    grid = fit_grid(np.floor(times / tick_s) * tick_s, 1e-6, "x")  # though microseconds are printed
+    assert abs(grid.rate_hz - 20e3) < 4 * grid.rate_u_hz < 4000
+    assert grid.gaps == []
+    assert grid.index[-1] == 4999

@@ -7,11 +7,14 @@ fitted at once to V = (high+low)/2 + (high−low)/2·cos(φ(t) + Σ m_i cos(2πf
 
 import math
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, cast
 
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.comb_stretch import likely_stretches
+from calibration.descent import Prior
 from calibration.fringe_finish import finish
 from calibration.fringe_fit import FringeFit
 from calibration.fringe_input import checked_prior, checked_turns, checked_values
@@ -96,9 +99,11 @@ def fit_driven_fringe_si(
         other = search(values, turns, starts, prior)
         if other[0].squares < best.squares:
             best, rival = other
+    stretch = 0.0
+    if _is_poor(best):  # or the frequencies are not quite those of the record
+        best, rival, stretch = _stretched(values, turns, low, high, prior, best, rival)
     found = finish(values, best, prior)
-
-    return fringe_result(
+    fit = fringe_result(
         found,
         start_index=start_index,
         value_unit=value_unit,
@@ -107,6 +112,34 @@ def fit_driven_fringe_si(
         dark_u=dark_u,
         reasons=lambda fit: fringe_reasons(fit, prior, depths_of(fit), rival, values),
     )
+    if not stretch:
+        return fit
+    from metro.measured import Measured
+
+    more = fit.clock_offset or Measured.of(0.0, "1", 1.0 / (float(turns.max()) * len(values)))
+    offset = stretch + (1.0 + stretch) * float(more.magnitude)
+    return replace(fit, clock_offset=Measured.of(offset, "1", more.u_magnitude, more.dof))
+
+
+def _stretched(
+    values: NDArray[np.float64],
+    turns: NDArray[np.float64],
+    low: float | None,
+    high: float | None,
+    prior: Prior | None,
+    best: Found,
+    rival: float | None,
+) -> tuple[Found, float | None, float]:
+    """Return the best fit with all frequencies off by a share that the comb shows, and that share."""
+    stretch = 0.0
+    for share in likely_stretches(values, turns):
+        moved = turns * (1.0 + share)
+        other = search(values, moved, find_starts(values, moved, low, high), prior)
+        if other[0].squares < best.squares:
+            (best, rival), stretch = other, share
+        if not _is_poor(best):
+            break
+    return best, rival, stretch
 
 
 def _is_poor(found: Found) -> bool:

@@ -6,6 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.descent import Prior
+from calibration.fringe_change import change_reasons
 from calibration.fringe_search import Found
 from calibration.scan import clipping
 
@@ -160,7 +161,7 @@ def fringe_reasons(
     poor = math.sqrt(found.squares / np.count_nonzero(np.isfinite(values))) > 0.35 * half_span
     if prior is None and poor and not any("not determined" in one for one in reasons):
         reasons.insert(0, _NO_FRINGE)
-    return reasons + clipping(values) + misfit
+    return reasons + clipping(values) + misfit + change_reasons(found)
 
 
 def _misfit(

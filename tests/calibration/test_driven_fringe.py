@@ -284,3 +284,22 @@ def test_clipping_is_named_on_either_side_and_where_there_is_none_is_not():
     assert fit_driven_fringe_si(volts, 2000.0, [17.3, 5.1]).reasons == []
     rough = np.round(volts / 0.05) * 0.05
     assert fit_driven_fringe_si(rough, 2000.0, [17.3, 5.1]).reasons == []
+
+
+@pytest.mark.parametrize("off", [pytest.param(-0.01, marks=pytest.mark.slow), 0.004])
+def test_frequencies_given_a_little_wrong_are_put_right(off):
+    volts, f, _, _ = record(5, 2.5)
+    fit = fit_driven_fringe_si(volts, RATE_HZ, np.asarray(f) * (1.0 - off))
+    assert fit.is_trustworthy, fit.reasons
+    assert fit.clock_offset is not None
+    assert float(fit.clock_offset.magnitude) == pytest.approx(1.0 / (1.0 - off) - 1.0, abs=1e-5)
+    assert abs(pull(fit.phase_amplitude[0], 2.5)) < 4
+
+
+def test_a_fringe_that_changes_within_the_record_is_named():
+    volts, f, _, _ = record(7, 2.5)
+    rise = np.linspace(-0.5, 0.5, len(volts))
+    for share in (0.1, -0.3):
+        changed = volts.mean() + (volts - volts.mean()) * (1.0 + share * rise)
+        reasons = fit_driven_fringe_si(changed, RATE_HZ, f).reasons
+        assert any("amplitude changes within the record" in reason for reason in reasons)

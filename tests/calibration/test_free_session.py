@@ -216,11 +216,11 @@ def test_a_page_without_slopes_is_drawn(session, tmp_path):
 def test_free_benches_are_covered(tmp_path):
     """Magnitudes and phases by free-running lines alone against the truth, and beside the slopes.
 
-    The rms of 6 × 4 pulls, four of which share drive reading and extremes, has a standard deviation of
-    some 25 %.
+    The rms of 4 × 4 pulls, four of which share drive reading and extremes, has a standard deviation of
+    some 30 %; of 30 × 4 it was 0.95, by the recordings' own extremes 0.98.
     """
     bench, sizes, turns, errors = built_in_bench(), [], [], []
-    for seed in range(20, 26):
+    for seed in range(20, 24):
         simulated, files, _ = free_session(bench, seed, tmp_path / str(seed))
         both = calibrate(bench, **files)
         alone = calibrate(bench, **{r: p for r, p in files.items() if "ing" not in r})

@@ -217,7 +217,7 @@ def test_free_benches_are_covered(tmp_path):
     """Magnitudes and phases by free-running lines alone against the truth, and beside the slopes.
 
     The rms of 4 × 4 pulls, four of which share drive reading and extremes, has a standard deviation of
-    some 30 %; of 30 × 4 it was 0.95, by the recordings' own extremes 0.98.
+    some 30 %; of 30 × 4 it was 0.94, by the recordings' own extremes 0.98.
     """
     bench, sizes, turns, errors = built_in_bench(), [], [], []
     for seed in range(20, 24):

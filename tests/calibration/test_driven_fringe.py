@@ -303,3 +303,13 @@ def test_a_fringe_that_changes_within_the_record_is_named():
         changed = volts.mean() + (volts - volts.mean()) * (1.0 + share * rise)
         reasons = fit_driven_fringe_si(changed, RATE_HZ, f).reasons
         assert any("amplitude changes within the record" in reason for reason in reasons)
+
+
+def test_fixed_extremes_that_are_not_the_records_are_named():
+    volts, f, _, _ = record(8, 2.5)
+    fit = fit_driven_fringe_si(volts, RATE_HZ, f)
+    low, high = (float(one.magnitude) for one in (fit.low, fit.high))
+    moved = 0.05 * (high - low)
+    assert fit_driven_fringe_si(volts, RATE_HZ, f, low=low, high=high).reasons == []
+    reasons = fit_driven_fringe_si(volts, RATE_HZ, f, low=low + moved, high=high + moved).reasons
+    assert any("the given extremes disagree with the record" in reason for reason in reasons)

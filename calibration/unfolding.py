@@ -22,6 +22,7 @@ FloatArray = NDArray[np.float64]
 
 _LEAST_BAND = 0.1  # of the span: vibration of up to 0.6 rad makes no turn next to an extreme
 _LEAST_DRIVEN_BAND = 0.005  # the drive, not the band, tells vibration from a turn
+_LITTLE = 0.5  # rad
 _NEAR_END = 0.95  # of cos φ
 _UP_TO = 0.15  # rad: what an extreme known to 1 % leaves open
 _SHORT = 0.12  # a top this much below the extreme still counts as gone over: 28° of phase
@@ -190,6 +191,11 @@ def _sides(
     for k in range(1, len(side)):
         onward = -side[k - 1] if off[k] < _UP_TO else side[k - 1]
         side[k] = np.sign(driven[k]) if abs(driven[k]) > 0.2 else onward
+    # at an end of the record a little way back from a top that is none is vibration
+    for end, next_one, top in ((0, 1, 1), (-1, -2, -1)):
+        first, stop = bounds[end - (end < 0)], bounds[end + (end == 0)]
+        if len(side) > 1 and off[top] > _UP_TO and np.ptp(angle[first : stop + 1]) < _LITTLE:
+            side[end] = side[next_one]
     return np.asarray(side[own])
 
 

@@ -85,6 +85,16 @@ def test_a_slow_scan_that_shakes_is_counted():
     assert [one.fringes for one in got.passes[1:]] == pytest.approx([5.9] * 7, abs=0.1)
 
 
+@pytest.mark.parametrize("end", [0.46, 0.41, -0.41, -0.46])
+def test_shaking_next_to_an_extreme_at_the_end_goes_not_over_it(end):
+    way = 20.0 + end / (2 * np.pi)
+    slowing = way * (1 - (1 - TIME / 12.0) ** 4)  # comes to rest there
+    record = 1.0 + 0.8 * np.cos(2 * np.pi * slowing + 0.1 * np.sin(2 * np.pi * 81.0 * TIME))
+    got = count_fringes(record, 1000.0, slowing)
+    assert got.net_fringes == pytest.approx(way, abs=3 * got.net_u)
+    assert got.net_u < 0.08
+
+
 def test_a_mirror_that_turns_later_than_its_drive_and_shakes_follows_it():
     drive = np.sin(2 * np.pi * 0.2 * TIME)
     late = np.sin(2 * np.pi * 0.2 * TIME - 0.15) + 0.007 * np.sin(2 * np.pi * 71.0 * TIME)

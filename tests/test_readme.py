@@ -17,6 +17,7 @@ import pytest
 from calibration.rehearsal_script import session_steps
 from firmware_bridge.simulated.bench import SimulatedBench
 from firmware_bridge.simulated.board import SimulatedBoard
+from firmware_bridge.simulated.setup import Drift
 from metro.bench import load_bench
 from metro.commandline import cli, run
 
@@ -79,7 +80,7 @@ def test_every_option_of_the_bench_session_exists(arguments):
 STATES = {  # what stands on the bench when the page says to record a file
     "dark": ("blocked", False), "pickup": ("blocked", True), "no-x": ("y", True), "no-y": ("x", True),
     "first": ("both", False), "scan": ("both", False), "scan2": ("both", False),
-    "rising": ("both", True), "falling": ("both", True),
+    "rising": ("both", True), "falling": ("both", True), "free": ("both", True),
 }  # fmt: skip
 ENDLESS = ("watch", "log")
 
@@ -87,11 +88,13 @@ ENDLESS = ("watch", "log")
 def setup_for(name, bench):
     """Return the simulated bench's state for a recording of the page, as the page describes it."""
     beam, driven = STATES[name]
-    steps = {step.role: step.setup for step in session_steps(bench)}
+    steps = {step.role: step.setup for step in reversed(session_steps(bench))}  # the first of each
     if name.startswith("scan"):
         return steps["scan"]
     slope = "falling" if name == "falling" else "rising"
     setup = replace(steps[f"lines-{slope}"], beam=beam)
+    if name == "free":
+        setup = replace(setup, slope=None, drift=Drift(150e-9, 200e-9, 8.0))
     return setup if driven else replace(setup, tones=())
 
 
@@ -129,7 +132,8 @@ def test_the_bench_session_runs_on_a_simulated_board(session, monkeypatch, tmp_p
     for arguments in commands("text"):
         out = arguments[arguments.index("--out") + 1] if "--out" in arguments else "first.mfr"
         live = arguments[0] in ENDLESS
-        setup = setup_for(Path(out).stem if Path(out).stem in STATES else "rising", bench)
+        recorded = Path(out).suffix == ".mfr" and Path(out).stem in STATES
+        setup = setup_for(Path(out).stem if recorded else "rising", bench)
         simulated = SimulatedBench(bench, 1)
         with SimulatedBoard(simulated, setup, speed=1.0 if live else None) as board:
             called = [board.port if word == "/dev/ttyACM0" else word for word in arguments]

@@ -117,8 +117,8 @@ class TrackedRecording(Recording):
             raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
         if not 0.0 < pilot_hz < 0.45 * source.rate_hz:
             raise CalibrationError(
-                f"pilot_hz must be above 0 and below 0.45 of the rate of {source.rate_hz:g} Hz, "
-                f"got {pilot_hz:g}"
+                f"the pilot must lie above 0 and below 0.45 of the rate of {source.rate_hz:g} Hz, "
+                f"got {pilot_hz:g} Hz"
             )
         self.quantity, self.calibration, self.own = quantity, calibration, own
         self._source, self._position = source, source.find(channel)

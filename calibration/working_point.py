@@ -74,7 +74,7 @@ def edge_reasons(edge_fraction: float) -> list[str]:
         (
             f"the working point wandered off mid-fringe: {100 * edge_fraction:.1f} % of the "
             f"samples lie within {np.degrees(np.arccos(EDGE)):.0f}° of an extreme "
-            f"(at most {100 * EDGE_FRACTION_MAX:g} %)"
+            f"(at most {100 * EDGE_FRACTION_MAX:g} %); a bench that runs freely is tracked by a pilot line"
         )
     ]
 

@@ -127,7 +127,8 @@ def maybe_find_time(
 
 def _one_column(table: Table, position: int, factor: float, stated: bool) -> TimeColumn:  # private
     remarks = []
-    if not stated:
+    known = np.nanmedian(table.columns[position]) if factor == 1.0 else 0.0
+    if not stated and not _UNIX_S[0] < known < _UNIX_S[1]:  # calendar stamps leave no doubt
         label = table.names[position]
         remarks.append(f"the time column {label!r} states no unit: taken as seconds")
     stamps = table.columns[position] * factor

@@ -214,7 +214,7 @@ def test_a_date_that_is_none_is_a_damaged_line(opened):
     rows[20] = "2024-02-31 23:59:20,20\n"
     recording = opened("time,pd\n" + "".join(rows))
     assert recording.gaps == [Gap(20, 1, exact=False, length_u=recording.gaps[0].length_u)]
-    assert recording.remarks[1:] == [
+    assert recording.remarks == [
         "1 line with a value that could not be read is kept, that value missing (first: line 22, '2024-02-31 23:59:20,20')",
         "1 of 50 rows has no readable time stamp and is left out",
     ]

@@ -3,6 +3,7 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.half_fringes import slow_spots
 from calibration.smoother import noise_std
 from calibration.turning_points import turning_points
 
@@ -29,7 +30,7 @@ def drive_turns(drive: FloatArray) -> NDArray[np.int64]:
     ndarray of int, shape (k,)
         Samples.
     """
-    band = max(0.01 * float(np.ptp(drive)), 7.0 * noise_std(drive)) + 1e-12
+    band = max(0.02 * float(np.ptp(drive)), 7.0 * noise_std(drive)) + 1e-12
     return turning_points(drive, band)
 
 
@@ -62,7 +63,10 @@ def unfollowed_turns(drive: FloatArray | None, level: FloatArray, band: float) -
     after = np.clip(np.searchsorted(turns, driven), 1, len(turns) - 1)
     leg = turns[after] - turns[after - 1]
     off = np.minimum(np.abs(turns[after] - driven), np.abs(driven - turns[after - 1]))
-    own = turns[np.abs(level[turns]) < _AT_EXTREME]
+    away = np.abs(level[turns]) < _AT_EXTREME
+    own = turns[
+        away | np.isin(turns, slow_spots(turns, len(level)))
+    ]  # or so slowly over an extreme
     near = np.searchsorted(own, driven + late, "right") > np.searchsorted(own, driven - late)
     return int(np.count_nonzero((off > 0.3 * leg) & ~near)), len(driven)
 

@@ -6,9 +6,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calibration.half_fringes import half_fringe_samples
+from calibration.half_fringes import half_fringe_samples, slow_spots
 from calibration.turning_points import turning_points
-from calibration.unfolding import Unfolded, slow_spots
+from calibration.unfolding import Unfolded
 
 __all__ = ["Pass", "cut_passes", "end_u"]
 

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from calibration.envelope import running_median
 from calibration.turning_points import turning_points
 
-__all__ = ["half_fringe_samples", "whole_swings"]
+__all__ = ["half_fringe_samples", "slow_spots", "whole_swings"]
 
 FloatArray = NDArray[np.float64]
 
@@ -65,3 +65,26 @@ def half_fringe_samples(
     legs = running_median(np.diff(swings).astype(float), 7)
     middles = 0.5 * (swings[1:] + swings[:-1])
     return np.asarray(np.maximum(np.interp(places, middles, legs), 1.0))
+
+
+def slow_spots(turns: NDArray[np.int64], count: int, times: float = 3.0) -> NDArray[np.int64]:
+    """Return the turns about which the fringes go by far more slowly than before and after.
+
+    Parameters
+    ----------
+    turns : ndarray of int, shape (k,)
+        Samples at which a record turns after a whole swing.
+    count : int
+        Samples of the record.
+    times : float, optional
+        How much longer than usual both half fringes there are together, against one.
+
+    Returns
+    -------
+    ndarray of int
+        Samples; the mirror may have turned there unseen.
+    """
+    legs = np.diff(np.concatenate([[0], turns, [count - 1]])).astype(float)
+    if len(legs) < 9:
+        return np.zeros(0, dtype=np.int64)
+    return np.asarray(turns[legs[:-1] + legs[1:] > times * running_median(legs, 9)[:-1]])

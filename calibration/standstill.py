@@ -3,6 +3,7 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.driven_way import drive_turns
 from calibration.envelope import Envelope
 from calibration.half_fringes import half_fringe_samples
 from calibration.swept_record import SweptRecord
@@ -62,9 +63,12 @@ def _jump(cosine: FloatArray, at: int) -> float:
     return abs(float(np.median(cosine[at + 1 : at + 4]) - np.median(cosine[at - 4 : at - 1])))
 
 
-def _moved_on(got: Unfolded, drive: FloatArray | None, start: int, end: int) -> bool:
-    """Return whether the drive moves meanwhile by what is a fringe elsewhere."""
-    if drive is None:
+def _moved_on(got: Unfolded, drive: FloatArray | None, start: int, end: int, half: float) -> bool:
+    """Return whether the drive moves meanwhile by what is a fringe elsewhere.
+
+    Where the drive has just turned, a screw takes up its backlash, and the mirror does stand.
+    """
+    if drive is None or np.any(np.abs(drive_turns(drive) - start) < 3.0 * half):
         return False
     way = float(np.abs(np.diff(drive[got.swings])).sum())
     fringes = 0.5 * max(len(got.swings) - 1, 1)
@@ -113,14 +117,14 @@ def standing_reasons(
     if spread > 0.8:
         return []
     suspect, below = [], -1.0 if float(np.median(record.values)) > 0.0 else 1.0
-    for start, end in standing_stretches(cosine, max(int(3.0 * half), _LEAST), spread).tolist():
+    for start, end in standing_stretches(cosine, max(int(1.5 * half), _LEAST), spread).tolist():
         level = float(np.median(cosine[start:end]))
         leap = 0.3 + 8.0 * np.pi / half + 8.0 * got.cosine_u
         leaps = half > _FEW and max(_jump(raw, start), _jump(raw, end)) > leap
         legs = np.diff(got.swings[got.swings <= start])[-3:]
         abrupt = len(legs) > 2 and start - got.swings[got.swings <= start][-1] < 2.0 * half
         abrupt = abrupt and float(legs.max()) < 1.5 * half
-        why = "the drive moves on meanwhile" if _moved_on(got, drive, start, end) else ""
+        why = "the drive moves on meanwhile" if _moved_on(got, drive, start, end, half) else ""
         if leaps:
             why = why or "it gets there, or away, in a leap"
         if abrupt and below * level > _DARK and drive is None:

@@ -11,12 +11,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.driven_way import against_drive, driven_sides, unfollowed_turns
-from calibration.envelope import Envelope, running_median
-from calibration.half_fringes import half_fringe_samples, whole_swings
+from calibration.envelope import Envelope
+from calibration.half_fringes import half_fringe_samples, slow_spots, whole_swings
 from calibration.swept_record import averaged
 from calibration.turning_points import turning_points
 
-__all__ = ["Unfolded", "slow_spots", "unfold_fringe"]
+__all__ = ["Unfolded", "unfold_fringe"]
 
 FloatArray = NDArray[np.float64]
 
@@ -137,29 +137,6 @@ def _one_of_each_group(
         if short[low] > near[low] and short[low] > short[high] + 0.5 * near[high]:
             out[low] = False
     return out
-
-
-def slow_spots(turns: NDArray[np.int64], count: int, times: float = 3.0) -> NDArray[np.int64]:
-    """Return the turns about which the fringes go by far more slowly than before and after.
-
-    Parameters
-    ----------
-    turns : ndarray of int, shape (k,)
-        Samples at which a record turns after a whole swing.
-    count : int
-        Samples of the record.
-    times : float, optional
-        How much longer than usual both half fringes there are together, against one.
-
-    Returns
-    -------
-    ndarray of int
-        Samples; the mirror may have turned there unseen.
-    """
-    legs = np.diff(np.concatenate([[0], turns, [count - 1]])).astype(float)
-    if len(legs) < 9:
-        return np.zeros(0, dtype=np.int64)
-    return np.asarray(turns[legs[:-1] + legs[1:] > times * running_median(legs, 9)[:-1]])
 
 
 def _hidden_turns(ends: NDArray[np.int64], swings: NDArray[np.int64]) -> NDArray[np.bool_]:

@@ -280,6 +280,9 @@ def test_a_laser_that_goes_off_midway_is_named_and_a_motor_that_rests_is_not(fri
         off = np.where(TIME > 7.0, dark, record)
         reasons = count_fringes(off, 1000.0, np.linspace(0, 1, COUNT)).reasons
         assert any("the drive moves on meanwhile" in reason for reason in reasons)
+    slow = volts(2 * np.pi * 7.3 * triangle(4), 2)
+    slow[5000:6000] = 0.05  # shorter than a pass
+    assert any("laser off" in reason for reason in count_fringes(slow, 1000.0, triangle(4)).reasons)
     reasons = count_fringes(np.where(TIME > 7.0, 0.2, record), 1000.0).reasons
     assert any("laser off, beam blocked" in reason for reason in reasons)
 
@@ -290,6 +293,15 @@ def behind_a_capacitor(record, samples):
     for k in range(1, len(record)):
         out[k] = keep * (out[k - 1] + record[k] - record[k - 1])
     return out
+
+
+def test_a_screw_that_takes_up_its_backlash_is_no_laser_that_goes_off():
+    drive = triangle(2)
+    rises = np.diff(drive, append=drive[-1]) >= 0
+    way = np.where(rises, drive, np.minimum(drive + 0.01, 1.0))  # stands after the turn
+    got = count_fringes(volts(2 * np.pi * 430.2 * way, 5), 1000.0, drive)
+    assert got.reasons == []
+    assert [one.fringes for one in got.passes] == pytest.approx([430.2, 0.99 * 430.2], abs=0.4)
 
 
 def test_ac_coupling_is_named_where_fringes_slow_down():

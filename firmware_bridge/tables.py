@@ -202,6 +202,15 @@ def _losses(table: Table, grid: Grid, *, has_stamps: bool) -> list[str]:
     return [f"{left} of {total} rows of the file are left out ({100 * left / total:.3g} %)"]
 
 
+def _rising(table: Table) -> str:
+    """Return a hint at the first column that rises throughout, as unnamed and uneven stamps do."""
+    for number, column in enumerate(table.columns, start=1):
+        steps = np.diff(column[np.isfinite(column)])
+        if len(steps) > 2 and np.mean(steps >= 0.0) > 0.99 and np.any(steps > 0.0):
+            return f" ({number} rises throughout)"
+    return ""
+
+
 def _grid(
     table: Table, found: TimeColumn | None, rate_hz: float | None, path: str, remarks: list[str]
 ) -> Grid:
@@ -215,8 +224,9 @@ def _grid(
         remarks.append(f"rate {rate_hz:.10g} Hz as the file states it")
     if rate_hz is None:
         what = "the first column counts samples" if found else "it has no time column"
+        rising = "" if found else _rising(table)
         raise RateError(
-            f"{path}: {what}; give --rate, or --time and one of its columns: {_names(table)}"
+            f"{path}: {what}; give --rate, or --time and one of its columns{rising}: {_names(table)}"
         )
     if found is not None:
         grid = fit_grid(found.stamps_s, 0.0, path)

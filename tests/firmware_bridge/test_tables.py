@@ -218,3 +218,10 @@ def test_a_date_that_is_none_is_a_damaged_line(opened):
         "1 line with a value that could not be read is kept, that value missing (first: line 22, '2024-02-31 23:59:20,20')",
         "1 of 50 rows has no readable time stamp and is left out",
     ]
+
+
+def test_uneven_stamps_without_a_name_are_hinted_at(opened):
+    times = np.cumsum(np.random.default_rng(2).uniform(900, 1100, 60)).astype(int)
+    rows = [f"{k % 7},{t},{k % 5}\n" for k, t in enumerate(times)]
+    with pytest.raises(BridgeError, match=r"one of its columns \(2 rises throughout\): 1, 2, 3$"):
+        opened("".join(rows))

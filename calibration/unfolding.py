@@ -170,8 +170,11 @@ def _sides(
         side[k] = np.sign(driven[k]) if abs(driven[k]) > 0.2 else onward
     # at an end of the record a little way back from a top that is none is vibration
     for end, next_one, top in ((0, 1, 1), (-1, -2, -1)):
+        if len(side) < 2:
+            break
         first, stop = bounds[end - (end < 0)], bounds[end + (end == 0)]
-        if len(side) > 1 and off[top] > _UP_TO and np.ptp(angle[first : stop + 1]) < _LITTLE:
+        step = np.pi / float(half_fringe_samples(swings, bounds[:-1][[top]], len(angle))[0])
+        if off[top] > _UP_TO + step and np.ptp(angle[first : stop + 1]) < _LITTLE:
             side[end] = side[next_one]
     return np.asarray(side[own])
 

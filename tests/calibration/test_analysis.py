@@ -102,6 +102,7 @@ def test_one_slope_alone_says_so_and_budgets_the_pickup(tmp_path):
     assert abs(entry.magnitude.magnitude - true) < 4.5 * entry.magnitude.u_magnitude
 
 
+@pytest.mark.slow
 def test_one_slope_with_pickup_measured_is_corrected(tmp_path):
     """A pick-up of 3 % of the line: with one slope and the beam-blocked records it is taken off."""
     bench = built_in_bench().replace({"drive.pickup": Measured.of(0.0, "1", 0.02)})

@@ -42,6 +42,7 @@ def test_a_rayleigh_loop_gives_back_its_parameters():
     assert found.reasons == []
 
 
+@pytest.mark.slow
 def test_small_signal_and_slope_cover():
     """400 draws: coverage within 3.3 % of 95 %, 3 standard deviations (1.09 %)."""
     rng, inside = np.random.default_rng(12), []

@@ -104,6 +104,7 @@ def test_deep_tones_from_the_record_alone(depths):
             assert abs(pull(got, m)) < 4, (seed, fit.phase_amplitude)
 
 
+@pytest.mark.slow
 def test_uncertainty_of_given_extremes_reaches_the_depth():
     pulls = []
     for seed in range(8):

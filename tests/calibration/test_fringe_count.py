@@ -95,6 +95,7 @@ def test_shaking_next_to_an_extreme_at_the_end_goes_not_over_it(end):
     assert got.net_u < 0.08
 
 
+@pytest.mark.slow
 def test_a_mirror_that_turns_later_than_its_drive_and_shakes_follows_it():
     drive = np.sin(2 * np.pi * 0.2 * TIME)
     late = np.sin(2 * np.pi * 0.2 * TIME - 0.15) + 0.007 * np.sin(2 * np.pi * 71.0 * TIME)
@@ -268,6 +269,7 @@ def test_a_flyback_within_a_sample_is_named():
     assert [one.direction for one in got.passes[:4]] == [1, -1, 1, -1]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("fringes", [30.3, 1400.7])
 def test_a_laser_that_goes_off_midway_is_named_and_a_motor_that_rests_is_not(fringes):
     ramp = np.clip(1.6 * np.linspace(0, 1, COUNT) - 0.3, 0, 1)  # rests before and after
@@ -314,6 +316,7 @@ def test_ac_coupling_is_named_where_fringes_slow_down():
     assert any("AC-coupled" in reason for reason in count_fringes(sunk, 1000.0).reasons)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("hertz", [2.3, 9.7, 31.0])
 def test_lamp_light_on_top_is_in_the_u_or_named(hertz):
     for seed in range(4):

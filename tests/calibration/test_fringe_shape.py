@@ -81,6 +81,7 @@ def test_without_a_drive_the_direction_is_unknown():
     assert got.to_dict()["net_fringes"] is None
 
 
+@pytest.mark.slow
 def test_the_law_of_a_shaken_scan_is_a_cosine_within_its_u():
     # eight seconds of a triangle over five fringes, shaken slowly: a dozen stretches a direction
     count, rate_hz = 32_000, 4000.0

@@ -127,6 +127,7 @@ def test_phases_count_from_the_first_sample_of_the_recording():
 # Coverage in six kinds of noise and the bounds: long_runs/line_statistics.py.
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     ("records", "within"), [(20, 0.15), pytest.param(600, 0.04, marks=pytest.mark.trials)]
 )
@@ -219,6 +220,7 @@ def test_clock_offset_intervals_cover():
     assert np.std(pulls) == pytest.approx(1.0, abs=0.33)
 
 
+@pytest.mark.slow
 def test_free_frequency_and_its_u():
     # Cramér–Rao: u(f) = √(6/(π²·N·T²))·σ/A, here √(6/(π²·N))·0.1/T. 50 records: 10 % of it.
     n, pulls, errors = 4000, [], []

@@ -48,6 +48,7 @@ def test_twenty_sessions_keep_their_plan(tmp_path, wanted):
     check(made(tmp_path, wanted), range(1, 21), tmp_path, 1.2)
 
 
+@pytest.mark.slow
 def test_command_takes_the_plan(tmp_path, capsys):
     plan = made(tmp_path, "0.5%")
     capsys.readouterr()

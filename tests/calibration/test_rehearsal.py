@@ -114,6 +114,7 @@ def same_through_the_port(seed, tmp_path, lines_s):
         assert a.truth == b.truth
 
 
+@pytest.mark.slow
 def test_the_serial_port_changes_nothing(tmp_path):
     same_through_the_port(5, tmp_path, lines_s=4.0)
 
@@ -156,6 +157,7 @@ def test_command_refuses_a_folder_that_holds_something(tmp_path, capsys):
     assert [path.name for path in tmp_path.iterdir()] == ["mine.txt"]
 
 
+@pytest.mark.slow
 def test_trials_print_coverage(capsys):
     arguments = ["rehearse", "--trials", "1", "--seed", "3", "--json"]
     assert run([*arguments, "--trial-bench", "short", "--trial-bench", "clipped"]) == 0

@@ -99,6 +99,7 @@ def test_interpolation_covers_and_chi_square_is_one(at_hz, model):
     assert 0.35 < np.mean(squares) < 0.6  # uniform about 0.5; choosing the order takes some off
 
 
+@pytest.mark.slow
 def test_draws_lie_where_their_u_says():
     """12 draws between four lines: rms of the normalised errors within 3 of its deviations."""
     rng, between = np.random.default_rng(8), np.array([50.0, 110.0, 190.0])

@@ -95,6 +95,7 @@ def test_routes_agree_where_they_are_valid():
     assert agreement.compared == ("mid-fringe slope", "harmonic ratios")
 
 
+@pytest.mark.slow
 def test_slope_counts_the_other_lines():
     # Six lines at 0.2 rad lose 5.4 % (product of J0 and J1): a rule without Bessel functions is wrong.
     f = [31.0, 37.7, 44.1, 52.9, 61.3, 70.7]
@@ -108,6 +109,7 @@ def test_slope_counts_the_other_lines():
     assert naive / 0.2 == pytest.approx(1 - 0.054, abs=1e-3)
 
 
+@pytest.mark.slow
 def test_slope_follows_the_clock():
     # 9 ppm over 60 s turn 233.9 Hz by 0.8 rad: a fit at the nominal frequency loses 2.5 %, and the
     # scatter of its blocks grows with the frequency

@@ -107,6 +107,7 @@ def with_units(path):
     return out
 
 
+@pytest.mark.slow
 def test_a_servo_is_undone(session, tmp_path):
     """Lines read before the servo's own signal are small by 1 + G: the table brings them back."""
     _, files, free = session

@@ -152,6 +152,7 @@ def test_the_error_of_the_extremes_is_covered(tmp_path):
     assert 0.7 < spread(pulls) < 1.35
 
 
+@pytest.mark.slow
 def test_other_extremes_than_the_calibrations_are_told(recording):
     kept = calibration(0.45, 3.2)
     worth = tracked(recording, kept).judge()

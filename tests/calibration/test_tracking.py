@@ -43,6 +43,7 @@ def test_phase_is_carried_over_the_extremes(speed, depth):
     assert got.pilot.phase_rad == pytest.approx(0.6, abs=0.02)
 
 
+@pytest.mark.slow
 def test_lines_in_phase_have_pulls_within_four():
     for seed in range(4):
         got = track_phase(

@@ -180,6 +180,7 @@ def test_after_a_reset_the_lines_are_set_again(tmp_path):
     assert codes.count(CommandCode.SET_LINE) == 2 + 2 + 18
 
 
+@pytest.mark.slow
 def test_the_command_drives_a_simulated_bench_within_its_limit(tmp_path):
     bench = SimulatedBench(load_bench(BENCH), 5)
     path = str(tmp_path / "a.mfr")

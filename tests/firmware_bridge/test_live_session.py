@@ -74,6 +74,7 @@ def check_ramps(paths, total):
     assert all(recording.has_end and not recording.gaps for recording in recordings)
 
 
+@pytest.mark.slow
 def test_channels_values_and_recordings_without_a_lost_sample(tmp_path):
     with asked_board() as board, LiveSession(board.link.port, folder=tmp_path) as live:
         viewer = Viewer(live)
@@ -152,6 +153,7 @@ def test_an_existing_file_is_not_written_over(tmp_path):
             live.start_recording(name)
 
 
+@pytest.mark.slow
 def test_a_port_that_goes_is_seen_at_once_and_comes_back_by_itself(tmp_path):
     name = tmp_path / "port"
     with contextlib.closing(PtyLink()) as second:
@@ -297,6 +299,7 @@ PARENT = """
 """
 
 
+@pytest.mark.slow
 def test_if_the_viewer_is_killed_the_drive_rests_and_the_recording_ends(tmp_path):
     script = tmp_path / "parent.py"
     script.write_text(textwrap.dedent(PARENT))

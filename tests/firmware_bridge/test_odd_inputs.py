@@ -60,6 +60,7 @@ def test_the_drive_is_the_channel_of_that_name_for_every_command(table):
     assert Reading(channel="Drive").with_drive(recording).drive_channel is None
 
 
+@pytest.mark.slow
 def test_a_phase_that_nothing_bounds_is_unknown(tmp_path, capsys):
     t = np.arange(2000) / 1000
     rows = np.column_stack((t, np.random.default_rng(4).normal(size=2000)))

@@ -111,6 +111,7 @@ def test_ctrl_c_ends_a_recording_cleanly(tmp_path, how):
     assert (recording.gaps, recording.remarks) == ([], [])
 
 
+@pytest.mark.slow
 def test_sigkill_costs_at_most_the_last_second(tmp_path):
     path = tmp_path / "a.mfr"
     with board_on(PtyLink(), 10_000, paced=True) as board:

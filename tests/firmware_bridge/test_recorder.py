@@ -414,6 +414,7 @@ def test_noise_where_lines_are_expected_is_named(pty, tmp_path, monkeypatch, bac
     )
 
 
+@pytest.mark.slow
 def test_lines_stay_in_one_recording_across_a_reconnection(tmp_path, background):
     with contextlib.closing(SocketLink()) as link:
 

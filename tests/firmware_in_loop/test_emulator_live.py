@@ -86,6 +86,7 @@ def midfringe(*words):
     return done, json.loads(done.stdout) if done.stdout else None
 
 
+@pytest.mark.slow
 def test_a_recording_goes_through_inspect_and_lines(elf, tmp_path):
     path = tmp_path / "live.mfr"
     with Emulator(elf, seed=int.from_bytes(os.urandom(3), "little")) as board:

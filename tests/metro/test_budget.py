@@ -80,6 +80,7 @@ def test_group_enters_welch_satterthwaite_as_one():
     assert Budget([a, b]).combined() == (2.0, 4.0)
 
 
+@pytest.mark.slow
 def test_coverage_of_a_budget_by_trial():
     """Two means of few readings, weighted: the 95 % interval holds the truth in 95 % of trials."""
     rng = np.random.default_rng(11)

@@ -123,6 +123,7 @@ def test_a_board_that_comes_back_with_other_channels_is_recorded_on(tmp_path, ca
     assert "no channel 'pd'; the board has 'a'; recorded without line results" in caplog.text
 
 
+@pytest.mark.slow
 def test_every_step_is_one_line_on_standard_error(board, tmp_path, capsys):
     assert run(arguments(board, tmp_path, "--duration=1.2s", "--rotate-every=0.5s")) == 0
     _, err = capsys.readouterr()

@@ -145,6 +145,7 @@ def session(tmp_path_factory):
     return files, calibrate(built_in_bench(), **files)
 
 
+@pytest.mark.slow
 def test_the_wrong_slope_does_not_agree(session):
     """A simulated bench whose polarity is declared: the falling slope read as rising turns the sign."""
     files, calibration = session

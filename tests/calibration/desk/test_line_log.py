@@ -76,6 +76,7 @@ def put_all(log, stretches):
     log.close()
 
 
+@pytest.mark.slow
 def test_a_step_raises_one_alarm_with_a_log_line(ledger, caplog):
     told = []
     log = LineLog(ledger, PLAN, told.append)
@@ -91,6 +92,7 @@ def test_a_step_raises_one_alarm_with_a_log_line(ledger, caplog):
     assert "\n" not in warnings[0]
 
 
+@pytest.mark.slow
 def test_after_a_restart_the_results_before_count(ledger):
     put_all(LineLog(ledger, PLAN), (stretch(k, 0.3) for k in range(30)))
     again = LineLog(ledger, PLAN)

@@ -134,6 +134,7 @@ def test_where_nothing_is_known_no_noise_is_expected():
     assert WatchSetup("test", built_in_bench()).noise(4000.0, plain, frequency_hz) is None
 
 
+@pytest.mark.slow
 def test_a_calibration_goes_before_the_bench(tmp_path):
     _, calibration = calibrated(built_in_bench(), 1, tmp_path)
     setup = WatchSetup("test", Bench.of(low="0.44 V", high="9.69 V"), calibration)

@@ -127,11 +127,13 @@ def maybe_find_time(
 
 def _one_column(table: Table, position: int, factor: float, stated: bool) -> TimeColumn:  # private
     remarks = []
-    known = np.nanmedian(table.columns[position]) if factor == 1.0 else 0.0
+    column = table.columns[position]
+    present = column[~np.isnan(column)]
+    known = float(np.median(present)) if factor == 1.0 and present.size else 0.0
     if not stated and not _UNIX_S[0] < known < _UNIX_S[1]:  # calendar stamps leave no doubt
         label = table.names[position]
         remarks.append(f"the time column {label!r} states no unit: taken as seconds")
-    stamps = table.columns[position] * factor
+    stamps = column * factor
     return TimeColumn((position,), stamps, table.resolutions[position] * factor, remarks=remarks)
 
 

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from calibration.channel_volts import channel_volts
 from calibration.conversion_filter import UNREACHED, FilterStage
 from calibration.conversion_tally import ConversionTally, relative_us
+from calibration.derived_recording import DerivedRecording
 from calibration.errors import CalibrationError
 from calibration.kept_readout import CORNERS
 from calibration.record import Calibration
@@ -66,7 +67,7 @@ class Conversion:
         return hypot(self.scale_u, self.drift_u)
 
 
-class ConvertedRecording(Recording):
+class ConvertedRecording(DerivedRecording):
     """A recording in other units, converted block by block as it is read.
 
     Parameters
@@ -100,27 +101,13 @@ class ConvertedRecording(Recording):
         slope: str = "rising",
         stages: Sequence[FilterStage] = (),
     ) -> None:
-        if quantity not in QUANTITIES:
-            names = ", ".join(QUANTITIES)
-            raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
         self.quantity, self.slope, self.calibration = quantity, slope, calibration
         self.stages = tuple(stages)
         self._reach = sum(stage.filter.reach for stage in self.stages)
-        self._source, self._position = source, source.find(channel)
+        self._position = source.find(channel)
         self._per_radian = per_radian(calibration, quantity)
         self._volts = channel_volts(source, self._position, calibration)
-        super().__init__(
-            path=source.path,
-            format=source.format,
-            rate_hz=source.rate_hz,
-            channels=[Channel(quantity, QUANTITIES[quantity])],
-            length=source.length,
-            rate_u_hz=source.rate_u_hz,
-            gaps=source.gaps,
-            over_range=source.over_range,
-            remarks=source.remarks,
-            start_unix_s=source.start_unix_s,
-        )
+        super().__init__(source, [Channel(quantity, QUANTITIES[quantity])])
 
     def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
         """Return converted samples; see `Recording.read`."""
@@ -210,8 +197,11 @@ def per_radian(calibration: Calibration, quantity: str) -> float:
     Raises
     ------
     CalibrationError
-        If strain is asked for without an arm length.
+        If the quantity has another name, or strain is asked for without an arm length.
     """
+    if quantity not in QUANTITIES:
+        names = ", ".join(QUANTITIES)
+        raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
     if quantity == "phase":
         return 1.0
     chain = calibration.chain

@@ -8,6 +8,7 @@ from calibration.channel_volts import channel_volts
 from calibration.conversion_filter import UNREACHED, actuator_stage
 from calibration.conversion_tally import ConversionTally
 from calibration.convert import Conversion
+from calibration.derived_recording import DerivedRecording
 from calibration.record import Calibration
 from firmware_bridge.channel import Channel
 from firmware_bridge.span import Span
@@ -18,7 +19,7 @@ __all__ = ["DrivenDisplacement"]
 _BLOCK = 1 << 18
 
 
-class DrivenDisplacement(Recording):
+class DrivenDisplacement(DerivedRecording):
     """What the actuator moves, from the recorded drive through the response between the lines.
 
     Parameters
@@ -37,22 +38,11 @@ class DrivenDisplacement(Recording):
     """
 
     def __init__(self, source: Recording, channel: str, calibration: Calibration) -> None:
-        self._source, self._position = source, source.find(channel)
+        self._position = source.find(channel)
         self._volts = channel_volts(source, self._position, calibration)
         self._calibration = calibration
         self.stage = actuator_stage(calibration, source.rate_hz)
-        super().__init__(
-            path=source.path,
-            format=source.format,
-            rate_hz=source.rate_hz,
-            channels=[Channel("displacement", "m")],
-            length=source.length,
-            rate_u_hz=source.rate_u_hz,
-            gaps=source.gaps,
-            over_range=source.over_range,
-            remarks=source.remarks,
-            start_unix_s=source.start_unix_s,
-        )
+        super().__init__(source, [Channel("displacement", "m")])
 
     def read(self, channels: Sequence[int], start: int, stop: int) -> Span:
         """Return displacements [m]; see `Recording.read`."""

@@ -10,11 +10,12 @@ from calibration.errors import CalibrationError
 from calibration.working_phase import block_sums
 from metro.kernel.bessel import bessels
 
-__all__ = ["Pilot", "find_pilot", "pilot_block", "pilot_frequency", "seen_pilot"]
+__all__ = ["Pilot", "check_pilot", "find_pilot", "pilot_block", "pilot_frequency", "seen_pilot"]
 
 FloatArray = NDArray[np.float64]
 
 _FEWEST = 16
+_HIGHEST = 0.45  # of the rate
 _LEAST_DEPTH = 0.03
 _DEEPEST = 2.3  # J0 and J1 both well away from zero below that
 _CLOCK = 0.02  # relative: boards on an RC oscillator are 1 % off
@@ -42,6 +43,28 @@ class Pilot:
     depth_rad: float
     phase_rad: float
     reasons: list[str] = field(default_factory=list)
+
+
+def check_pilot(pilot_hz: float, rate_hz: float) -> None:
+    """Refuse a pilot that a record at this rate cannot show.
+
+    Parameters
+    ----------
+    pilot_hz : float
+        The line [Hz].
+    rate_hz : float
+        Sample rate [Hz].
+
+    Raises
+    ------
+    CalibrationError
+        If it is not above 0 and below 0.45 of the rate.
+    """
+    if not 0.0 < pilot_hz < _HIGHEST * rate_hz:
+        raise CalibrationError(
+            f"the pilot must lie above 0 and below {_HIGHEST:g} of the rate of {rate_hz:g} Hz, "
+            f"got {pilot_hz:g} Hz"
+        )
 
 
 def pilot_block(rate_hz: float, pilot_hz: float, count: int, periods: float) -> int:

@@ -14,10 +14,11 @@ from numpy.typing import NDArray
 
 from calibration.channel_volts import channel_volts
 from calibration.convert import QUANTITIES, Conversion, per_radian
-from calibration.errors import CalibrationError
+from calibration.derived_recording import DerivedRecording
 from calibration.kept_readout import CORNERS
 from calibration.motion_sign import motion_sign
 from calibration.own_extremes import own_extremes
+from calibration.pilot import check_pilot
 from calibration.pilot_drive import driven_pilot
 from calibration.record import Calibration
 from calibration.tracked_course import PIECE, TrackedCourse
@@ -66,7 +67,7 @@ class TrackedConversion(Conversion):
     assumptions: list[str] = field(default_factory=list)
 
 
-class TrackedRecording(Recording):
+class TrackedRecording(DerivedRecording):
     """A free-running recording in other units, converted piece by piece as it is read.
 
     Parameters
@@ -112,32 +113,13 @@ class TrackedRecording(Recording):
         own: bool = False,
         piece: int = PIECE,
     ) -> None:
-        if quantity not in QUANTITIES:
-            names = ", ".join(QUANTITIES)
-            raise CalibrationError(f"quantity must be one of {names}, got {quantity!r}")
-        if not 0.0 < pilot_hz < 0.45 * source.rate_hz:
-            raise CalibrationError(
-                f"the pilot must lie above 0 and below 0.45 of the rate of {source.rate_hz:g} Hz, "
-                f"got {pilot_hz:g} Hz"
-            )
+        check_pilot(pilot_hz, source.rate_hz)
         self.quantity, self.calibration, self.own = quantity, calibration, own
-        self._source, self._position = source, source.find(channel)
+        self._position = source.find(channel)
         self._per_radian = per_radian(calibration, quantity)
         self._volts = channel_volts(source, self._position, calibration)
         self._start, self._stop = source.span(from_s, to_s)
-        super().__init__(
-            path=source.path,
-            format=source.format,
-            rate_hz=source.rate_hz,
-            channels=[Channel(quantity, QUANTITIES[quantity]), Channel(CARRIED, "1")],
-            length=source.length,
-            rate_u_hz=source.rate_u_hz,
-            gaps=source.gaps,
-            over_range=source.over_range,
-            remarks=source.remarks,
-            start_unix_s=source.start_unix_s,
-            timing=source.timing,
-        )
+        super().__init__(source, [Channel(quantity, QUANTITIES[quantity]), Channel(CARRIED, "1")])
         span = self._start, self._stop
         found = own_extremes(source, self._position, self._volts, *span)
         self.extremes = found.mean(source.path) if own else calibration.extremes

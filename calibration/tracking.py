@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibration.errors import CalibrationError
-from calibration.pilot import Pilot
+from calibration.pilot import Pilot, check_pilot
 from calibration.tracked_course import TrackedCourse
 from calibration.working_point import EDGE
 
@@ -148,10 +148,7 @@ def track_phase(
     cosine = (values - (high + low) / 2.0) / ((high - low) / 2.0)
     if pilot_hz is None:
         return _without_pilot(cosine)
-    if not 0.0 < pilot_hz < 0.45 * rate_hz:
-        raise CalibrationError(
-            f"pilot_hz must be above 0 and below 0.45 of the rate of {rate_hz:g} Hz, got {pilot_hz:g}"
-        )
+    check_pilot(pilot_hz, rate_hz)
     start_s = start_index / rate_hz
     phase = None if pilot_phase_rad is None else pilot_phase_rad + 2 * math.pi * pilot_hz * start_s
     course = TrackedCourse(

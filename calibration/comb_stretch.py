@@ -10,6 +10,8 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
+from calibration.record_band import tapered_power
+
 __all__ = ["likely_stretches"]
 
 FloatArray = NDArray[np.float64]
@@ -36,11 +38,8 @@ def likely_stretches(values: FloatArray, turns: FloatArray) -> list[float]:
     list of float
         At most three relative shifts within ±1.2 %; empty where none meets clearly more power.
     """
-    good = np.flatnonzero(np.isfinite(values))
-    filled = np.interp(np.arange(len(values)), good, values[good])
-    window = np.hanning(len(filled))
-    size = 1 << math.ceil(math.log2(4 * len(filled)))
-    power = np.abs(np.fft.rfft((filled - filled.mean()) * window, size)) ** 2
+    size = 1 << math.ceil(math.log2(4 * len(values)))
+    power = tapered_power(values, size)
     tones = _tones(turns)
     reach = int(_MOST * float(tones.max()) * len(values) / (2.0 * np.pi) / _STEP)
     shares = np.linspace(-_MOST, _MOST, 2 * min(max(reach, 8), _MOST_STEPS // 2) + 1)

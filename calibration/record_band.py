@@ -8,7 +8,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["highest_turn", "thinned"]
+__all__ = ["highest_turn", "tapered_power", "thinned"]
 
 FloatArray = NDArray[np.float64]
 
@@ -17,6 +17,28 @@ _ABOVE_FLOOR = 6.0
 _LEAST_SHARE = 1e-6  # of the strongest band's power
 _ENOUGH = 4000  # samples that cost little
 _WIDTH = 2.5  # samples per half period of the highest turn that are kept
+
+
+def tapered_power(values: FloatArray, size: int | None = None) -> FloatArray:
+    """Return the power spectrum of a record without its mean, under a Hann window.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        Any unit; NaN where samples are missing: the line between their neighbours stands for them.
+    size : int, optional
+        Samples transformed, with zeros behind the record; n by default.
+
+    Returns
+    -------
+    ndarray, shape (size // 2 + 1,)
+        Unit² times samples².
+    """
+    good = np.flatnonzero(np.isfinite(values))
+    filled = np.interp(np.arange(len(values)), good, values[good])
+    return np.asarray(
+        np.abs(np.fft.rfft((filled - filled.mean()) * np.hanning(len(filled)), size)) ** 2
+    )
 
 
 def highest_turn(values: FloatArray) -> float:
@@ -32,12 +54,9 @@ def highest_turn(values: FloatArray) -> float:
     float
         Phase per sample [rad], at most π.
     """
-    good = np.flatnonzero(np.isfinite(values))
-    if len(good) < 4 * _BANDS:
+    if np.count_nonzero(np.isfinite(values)) < 4 * _BANDS:
         return math.pi
-    filled = np.interp(np.arange(len(values)), good, values[good])
-    taper = np.hanning(len(filled))
-    power = np.abs(np.fft.rfft((filled - filled.mean()) * taper)) ** 2
+    power = tapered_power(values)
     width = len(power) // _BANDS
     bands = power[: width * _BANDS].reshape(_BANDS, width).mean(axis=1)
     floor = float(np.quantile(bands, 0.2))

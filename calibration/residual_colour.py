@@ -51,9 +51,7 @@ def colour_of(
     ratios, segments = _ratios(model, theta, whitening, inverse, length)
     told = [_ratio_at_zero(column, segments) for column in ratios.T]
     factors[: model.fixed] = np.sqrt([ratio for ratio, _ in told])
-    factors[:2] = np.maximum(
-        factors[:2], 1.0
-    )  # the drift takes up the slowest noise of the extremes
+    factors[:2] = np.maximum(factors[:2], 1.0)  # extremes: the drift takes up their slowest noise
     return factors, min(dof for _, dof in told)
 
 
@@ -82,13 +80,13 @@ def _ratios(
     length: int,
 ) -> tuple[FloatArray, int]:
     """Return the power of the samples' effects from zero up over the mean, and the segments."""
-    lead, n = len(whitening) - 1, len(model.values)
+    lead, n, chunks = len(whitening) - 1, len(model.values), model.chunks()
     window = np.hanning(length + 2)[1:-1, None]
     starts = range(0, n - lead - length + 1, length)
     bins = min(_FIRST + max(_WIDTHS), length // 4)
     power, mean = np.zeros((bins, model.fixed)), np.zeros(model.fixed)
     for start in starts:
-        columns = _columns(model, theta, inverse, start, start + lead + length)
+        columns = _columns(model, theta, inverse, chunks, slice(start, start + lead + length))
         columns = filtered(columns, whitening)
         effect = np.nan_to_num(columns[:, 1:] * columns[:, :1]) * window
         power += np.abs(np.fft.rfft(effect, axis=0)[:bins]) ** 2
@@ -97,14 +95,18 @@ def _ratios(
 
 
 def _columns(
-    model: FringeModel, theta: FloatArray, inverse: FloatArray, start: int, stop: int
+    model: FringeModel,
+    theta: FloatArray,
+    inverse: FloatArray,
+    chunks: list[tuple[int, int]],
+    part: slice,
 ) -> FloatArray:
     """Return residuals and, for all parameters but the drift's, what they are weighted with."""
+    start, stop, step = part.start, part.stop, chunks[0][1]
     out = np.empty((stop - start, 1 + model.fixed))
-    for begin, end in model.chunks():
+    for begin, end in chunks[start // step : -(-stop // step)]:
         first, last = max(begin, start), min(end, stop)
-        if first < last:
-            rest, parts, where = model.rows(theta, first, last)
-            out[first - start : last - start, 0] = rest
-            out[first - start : last - start, 1:] = parts @ inverse[where, : model.fixed]
+        rest, parts, where = model.rows(theta, first, last)
+        out[first - start : last - start, 0] = rest
+        out[first - start : last - start, 1:] = parts @ inverse[where, : model.fixed]
     return out

@@ -57,7 +57,7 @@ def test_white_noise_that_comes_and_goes_is_not_counted_twice(seed):
     step = np.cos(TURN * (np.arange(N) - (N - 1) / 2))
     model, theta = record(coloured(np.ones_like, seed) * step)
     factors, _ = colour_of(model, theta, WHITE, EACH)
-    assert factors[2] == pytest.approx(1.0, abs=0.48 * np.sqrt(2))
+    assert factors[2] == pytest.approx(1.0, abs=0.24)
 
 
 def test_a_short_record_tells_nothing():

@@ -69,7 +69,7 @@ class BoardTalk:
         if self._desk is not None:
             complaint = Farewell(self._port, self._say).rest(self._desk, self._intake)
             if complaint:
-                self._watch.notice(f"{self._watch.name}: {complaint}")
+                self._watch.alarm(f"{self._watch.name}: {complaint}")
         self._say(CommandCode.STOP)
 
     def _ask(self, *, is_first: bool) -> None:

@@ -2,9 +2,13 @@
 
 from firmware_bridge.message import CommandCode, Reply
 
-__all__ = ["answer_text", "drive_command"]
+__all__ = ["ANSWER_S", "UNKNOWN", "answer_text", "drive_command"]
 
-_UNKNOWN = 1  # status of a reply
+UNKNOWN = 1
+"""Status of a reply: the board does not know the command."""
+
+ANSWER_S = 5.0
+"""How long a board may owe an answer [s]."""
 _NAMES = {
     CommandCode.SET_LINE: "set line",
     CommandCode.CLEAR_LINE: "clear line",
@@ -45,8 +49,8 @@ def answer_text(code: CommandCode, status: int, reason: str) -> tuple[str, bool]
     """
     if not status:
         return f"{_NAMES[code]}: done", False
-    if status == _UNKNOWN and code == CommandCode.RAMP:
+    if status == UNKNOWN and code == CommandCode.RAMP:
         return "the board's drive has no offset", False
-    if status == _UNKNOWN:
+    if status == UNKNOWN:
         return "the board has no drive lines", True
     return f"the board refuses to {_NAMES[code]}: {reason or 'without a reason'}", True

@@ -1,5 +1,6 @@
 """The rest of a drive: wanted until the board has confirmed all of it."""
 
+from firmware_bridge.drive_answer import UNKNOWN
 from firmware_bridge.drive_lines import Request, rest_requests
 from firmware_bridge.message import CommandCode
 
@@ -7,8 +8,6 @@ __all__ = ["REST", "DriveRest", "is_confirmed"]
 
 REST = frozenset((CommandCode.CLEAR_LINE, CommandCode.RAMP))
 """What a rest is made of: all lines cleared, the offset at zero."""
-
-_UNKNOWN = 1  # status of a reply
 
 
 def is_confirmed(status: int) -> bool:
@@ -24,7 +23,7 @@ def is_confirmed(status: int) -> bool:
     bool
         Also for a board that knows no such command: it has nothing that could be brought to rest.
     """
-    return status in (0, _UNKNOWN)
+    return status in (0, UNKNOWN)
 
 
 class DriveRest:

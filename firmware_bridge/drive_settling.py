@@ -2,12 +2,12 @@
 
 import time
 
+from firmware_bridge.drive_answer import ANSWER_S
 from firmware_bridge.drive_lines import DriveError
 
 __all__ = ["DriveSettling"]
 
 _SETTLE_S = 0.3  # slew, and the filters behind the drive
-_ANSWER_S = 5.0
 
 
 class DriveSettling:
@@ -62,8 +62,8 @@ class DriveSettling:
         now_s = time.monotonic()
         if not is_done:
             self._begin = None
-            if now_s - (self._first_s or now_s) > _ANSWER_S:
-                raise DriveError(f"the board does not answer to set line for {_ANSWER_S:g} s")
+            if now_s - (self._first_s or now_s) > ANSWER_S:
+                raise DriveError(f"the board does not answer to set line for {ANSWER_S:g} s")
             return False
         if at is not None and (self._begin is None or self._begin[0] != at[0]):
             self._begin = at

@@ -135,3 +135,16 @@ class PortWatch:
             _log.warning("%s", text)
         else:
             self._watcher.reply(text, refused=True)
+
+    def alarm(self, text: str) -> None:
+        """Tell that the drive may not be at rest; ``--quiet`` does not hide it.
+
+        Parameters
+        ----------
+        text : str
+            One line.
+        """
+        if self._watcher is None:
+            _log.error("%s", text)
+        else:
+            self._watcher.reply(text, refused=True)

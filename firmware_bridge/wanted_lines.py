@@ -3,13 +3,13 @@
 from firmware_bridge.announcement import Announcement
 from firmware_bridge.arguments import clear_arguments
 from firmware_bridge.board_lines import BoardLines, SentLine
+from firmware_bridge.drive_answer import ANSWER_S
 from firmware_bridge.drive_lines import DriveLine, DriveLines, Request
 from firmware_bridge.errors import BridgeError
 from firmware_bridge.message import CommandCode
 
 __all__ = ["WantedLines"]
 
-_ANSWER_S = 5.0
 _ROUNDING = 1e-12  # sums of the same amplitudes in another order
 
 
@@ -179,11 +179,11 @@ class WantedLines:
     def _give_up(self, now_s: float) -> None:
         """Clear a line to which the board does not answer; a held one ends the recording."""
         for slot, since_s in list(self._asked_s.items()):
-            if self._is_patient or now_s - since_s < _ANSWER_S:
+            if self._is_patient or now_s - since_s < ANSWER_S:
                 continue
             del self._asked_s[slot]
             self._lines.clear(slot)
             self._due = list(dict.fromkeys([*self._due, slot]))
             self._refusals.append(
-                f"the board does not answer to set line for {_ANSWER_S:g} s; it is cleared"
+                f"the board does not answer to set line for {ANSWER_S:g} s; it is cleared"
             )

@@ -9,13 +9,13 @@ from calibration.caution_lines import caution_lines
 from firmware_bridge.reading import Reading, recording_options
 from metro.figure_file import check_figure
 from metro.options import ValueType, command, distrust, is_quiet, is_verbose, output_options
-from metro.output import check_writable, table, to_json
+from metro.output import check_writable, to_json
 
 if TYPE_CHECKING:
     from calibration.convert import ConvertedRecording
     from calibration.driven_displacement import DrivenDisplacement
     from calibration.record import Calibration
-    from calibration.tracked_recording import TrackedConversion, TrackedRecording
+    from calibration.tracked_recording import TrackedRecording
     from firmware_bridge.trace import Recording
 
 __all__ = ["convert"]
@@ -98,6 +98,7 @@ def convert(
     the values: 0 where a sample was inverted, 1 where it lies at an extreme and shows the slow course, the
     pilot and the calibration's lines only, empty or NaN where the phase is not known.
     """
+    from calibration.conversion_page import page, plot_note, uncertainty_of
     from calibration.record import load
     from firmware_bridge.export import export_recording
 
@@ -123,13 +124,9 @@ def convert(
         side = _side(source, reading, calibration, slope)
     stretch = () if pilot_hz is not None else (reading.from_s, reading.to_s)
     worth = converted.judge(*stretch)
-    uncertainty = {
-        "systematic": {"value": worth.relative_u, "unit": "1", "u": None},
-        "random": {"value": worth.noise, "unit": worth.unit, "u": None},
-    }
+    uncertainty = uncertainty_of(worth)
     more: dict[str, Any] = {}
     if pilot_hz is not None:
-        uncertainty |= _tracked_uncertainty(worth)
         more = {"carried_fraction": worth.carried_fraction, "assumptions": worth.assumptions}
     samples = export_recording(
         converted,
@@ -156,11 +153,8 @@ def convert(
         **more,
     }
     if plot is not None:
-        common = f"u {_percent(worth.relative_u)} common"
-        if pilot_hz is not None:
-            common += f", {_shown(uncertainty['periodic'])} in every fringe; extremes carried"
-        _draw(converted, reading, plot, common, overwrite)
-    click.echo(to_json(document) if as_json else _text(document))
+        _draw(converted, reading, plot, plot_note(uncertainty), overwrite)
+    click.echo(to_json(document) if as_json else page(document))
     if not is_quiet():
         reading.tell(source)
         cautions = (*worth.cautions, *side)
@@ -216,14 +210,6 @@ def _tracked(
     )
 
 
-def _tracked_uncertainty(worth: "TrackedConversion") -> dict[str, Any]:
-    return {
-        "small_motion": {"value": worth.small_u, "unit": "1", "u": None},
-        "periodic": {"value": worth.periodic_u, "unit": worth.unit, "u": None},
-        "carried": {"value": worth.carried_noise, "unit": worth.unit, "u": None},
-    }
-
-
 def _converted(
     source: "Recording",
     reading: Reading,
@@ -270,39 +256,3 @@ def _draw(
 
     course = course_of(converted, reading.from_s, reading.to_s)
     save_course(converted, course, u_text, plot, overwrite=overwrite)
-
-
-def _percent(relative: float) -> str:
-    return f"{100 * relative:.2g} %"
-
-
-def _text(document: dict[str, Any]) -> str:
-
-    uncertainty = document["uncertainty"]
-    is_tracked = "periodic" in uncertainty
-    common = "systematic u, over many fringes" if is_tracked else "systematic u, all samples alike"
-    rows: list[list[object]] = [
-        ["file", document["file"]],
-        ["samples", document["samples"]],
-        ["gaps", document["gaps"]],
-        ["quantity", document["quantity"]],
-        [common, _percent(uncertainty["systematic"]["value"])],
-        ["random, rms from sample to sample", _shown(uncertainty["random"])],
-        ["used", f"{100 * float(document['used_fraction']):.4g} %"],
-    ]
-    if is_tracked:
-        rows[5:5] = [
-            ["systematic u, small motions", _percent(uncertainty["small_motion"]["value"])],
-            ["u that comes again in every fringe", _shown(uncertainty["periodic"])],
-        ]
-        share = f"{100 * float(document['carried_fraction']):.3g} %"
-        left_out = f"{_shown(uncertainty['carried'])} rms of faster motion left out"
-        rows.append(["of it carried over extremes", f"{share}, {left_out}"])
-    assumed = [f"assumed: {one}" for one in document.get("assumptions", ())]
-    return "\n".join([table(rows), *assumed])
-
-
-def _shown(quantity: dict[str, Any]) -> str:
-    from metro.display import show
-
-    return show(quantity["value"], quantity["unit"], 2)

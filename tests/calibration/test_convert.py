@@ -19,6 +19,7 @@ from calibration.errors import CalibrationError
 from calibration.open_loop import load_open_loop
 from calibration.record import load
 from firmware_bridge.opening import open_recording
+from firmware_bridge.timing import Timing
 from metro.commandline import run
 from metro.measured import Measured
 
@@ -65,6 +66,15 @@ def test_blocks_make_what_the_whole_makes(session):
     for size in (997, 4000):
         parts = [block.values for block in moved.blocks(size)]
         np.testing.assert_allclose(np.concatenate(parts), whole, rtol=1e-9, atol=1e-16)
+
+
+def test_what_the_times_rest_on_is_kept(session):
+    """Else lines fitted in what was converted would not allow for the jitter of the samples."""
+    _, files, calibration, _ = session
+    source = open_recording(files["lines_rising"][0])
+    source.timing = Timing(jitter_s=1e-5)
+    assert ConvertedRecording(source, "photodiode", calibration).timing == source.timing
+    assert DrivenDisplacement(source, "drive", calibration).timing == source.timing
 
 
 def test_the_readout_is_undone(session):

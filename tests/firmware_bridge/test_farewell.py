@@ -1,5 +1,6 @@
 """How a board is left: it is heard whether the drive is at rest, for a second and no longer."""
 
+import logging
 import threading
 import time
 
@@ -122,5 +123,6 @@ def test_a_recording_says_whether_its_drive_came_to_rest(tmp_path, caplog):
                 on_block=deaf_later,
             )
             said = [r.getMessage() for r in caplog.records]
+            assert all(r.levelno == logging.ERROR for r in caplog.records)  # --quiet hides less
             assert said == ([f"{there.link.port}: {NOT_CONFIRMED}"] if is_deaf else [])
             assert CommandCode.CLEAR_LINE in there.codes()
